@@ -1,0 +1,2 @@
+//! Envelopes and carriers on a timeline.
+pub mod envelope;
