@@ -1,6 +1,7 @@
 //! nutate: settle the pulses that drive a few-level quantum system.
 #![deny(unsafe_code)]
 
+pub mod config;
 pub mod drive;
 pub mod problem;
 pub mod units;

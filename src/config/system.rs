@@ -1,0 +1,302 @@
+//! `system:` and `operators:`.
+
+use super::matrix::{self, MatrixEntry, Rows};
+use super::messages::{short_with_unit, Fault};
+use super::place::Place;
+use super::reader::{ComplexQuantity, LevelSource, Reader, Rungs};
+use super::tape::Register;
+use super::tree::Node;
+
+/// Most levels accepted: a dense matrix of that size is 16 MB.
+pub const MOST_LEVELS: usize = 1024;
+
+/// The static system: names, and the entries of its matrix in Hz.
+#[derive(Debug, Clone)]
+pub struct System {
+    /// Where the section stands.
+    pub place: Place,
+    /// Which key described it: `levels`, `hamiltonian` or `ladder`.
+    pub kind: &'static str,
+    /// Names of the basis states, in order.
+    pub names: Vec<String>,
+    /// Written entries, both triangles, in Hz.
+    pub entries: Vec<MatrixEntry>,
+    /// Of a ladder: the relative coupling of rungs n and n + 1.
+    pub rungs: Option<Vec<Register>>,
+}
+
+/// A named matrix without dimension.
+#[derive(Debug, Clone)]
+pub struct Operator {
+    /// Its name.
+    pub name: String,
+    /// Where the name stands.
+    pub place: Place,
+    /// Written entries.
+    pub entries: Vec<MatrixEntry>,
+}
+
+const LATER_KINDS: [&str; 6] = ["spin", "mode", "well", "functions", "atom", "parts"];
+
+/// Reads `system:`.
+pub fn read_system(reader: &mut Reader, node: &Node) -> Option<System> {
+    let mut known = vec!["levels", "ladder", "hamiltonian", "name_states_by"];
+    known.extend(LATER_KINDS);
+    let entries = reader.fields(node, "system", &known, &[])?;
+    if let Some(later) = entries.iter().find(|entry| LATER_KINDS.contains(&entry.key.as_str()) || entry.key == "name_states_by") {
+        reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: "system".to_string() });
+        return None;
+    }
+    let entry = reader.one_of(node, &["levels", "ladder", "hamiltonian"], "system", None)?;
+    match entry.key.as_str() {
+        "levels" => read_levels(reader, &entry.value),
+        "ladder" => read_ladder(reader, &entry.value, entry.place),
+        _ => read_hamiltonian(reader, &entry.value),
+    }
+}
+
+fn too_many(reader: &mut Reader, place: Place, levels: f64) -> bool {
+    if levels <= MOST_LEVELS as f64 {
+        return false;
+    }
+    let bytes = 16.0 * levels * levels * 4.0;
+    reader.error(place, Fault::TooManyLevels { levels, bytes, limit: MOST_LEVELS });
+    true
+}
+
+fn read_levels(reader: &mut Reader, node: &Node) -> Option<System> {
+    let Some(entries) = node.entries().filter(|entries| !entries.is_empty()) else {
+        reader.error(node.place, Fault::EmptySystem { what: "levels".to_string() });
+        return None;
+    };
+    if too_many(reader, node.place, entries.len() as f64) {
+        return None;
+    }
+    let names: Vec<String> = entries.iter().map(|entry| entry.key.clone()).collect();
+    warn_of_case(reader, "level", &names, node.place);
+    let sources = entries.iter().map(|entry| LevelSource::Written(entry.value.clone(), None)).collect();
+    reader.define_levels(names.clone(), sources, Rungs::default());
+    let entries = diagonal(reader, names.len(), |k| entries[k].value.place)?;
+    Some(System { place: node.place, kind: "levels", names, entries, rungs: None })
+}
+
+/// The diagonal entries, compiled; `None` if one cannot be.
+fn diagonal(reader: &mut Reader, size: usize, place: impl Fn(usize) -> Place) -> Option<Vec<MatrixEntry>> {
+    let energies: Vec<Option<Register>> = (0..size).map(|k| reader.level_energy(k)).collect();
+    energies
+        .into_iter()
+        .enumerate()
+        .map(|(k, re)| re.map(|re| MatrixEntry { row: k, column: k, value: ComplexQuantity { re, im: None, place: place(k) } }))
+        .collect()
+}
+
+fn read_ladder(reader: &mut Reader, node: &Node, place: Place) -> Option<System> {
+    reader.fields(node, "system / ladder", &["levels", "first_gap", "anharmonicity", "couplings_grow"], &[])?;
+    let count = reader.need(node, "levels", "system / ladder", "4");
+    let levels = count.and_then(|count| reader.whole(count, "system / ladder / levels", 1.0).map(|levels| (levels, count.place)));
+    let first = reader.need(node, "first_gap", "system / ladder", "5.02 GHz").cloned();
+    let (levels, count_place) = levels?;
+    if too_many(reader, count_place, levels) {
+        return None;
+    }
+    let size = levels as usize;
+    let bend = node.get("anharmonicity").cloned();
+    if size > 2 && bend.is_none() {
+        let why = Some("Beyond two levels it decides every higher gap; 0 Hz makes the ladder harmonic.".to_string());
+        let fault = Fault::MissingKey { key: "anharmonicity".to_string(), section: "system / ladder".to_string(), write: "anharmonicity: -240 MHz".to_string(), why };
+        reader.error(node.place, fault);
+    }
+    let names: Vec<String> = (0..size).map(|n| n.to_string()).collect();
+    let sources = (0..size).map(LevelSource::Rung).collect();
+    let harmless = bend.is_none() && size <= 2;
+    // with two levels the bend is read all the same, so that a slip in it is found
+    if let (Some(bend), true) = (&bend, size <= 2) {
+        reader.energy(bend, "system / ladder / anharmonicity");
+    }
+    reader.define_levels(names.clone(), sources, Rungs { first, bend: bend.clone() });
+    let rungs = read_rungs(reader, node, size);
+    if bend.is_none() && !harmless {
+        return None;
+    }
+    let entries = diagonal(reader, size, |_| place)?;
+    Some(System { place: node.place, kind: "ladder", names, entries, rungs: Some(rungs?) })
+}
+
+/// Relative couplings of the rungs, from `couplings_grow`.
+fn read_rungs(reader: &mut Reader, node: &Node, size: usize) -> Option<Vec<Register>> {
+    let grow = reader.need(node, "couplings_grow", "system / ladder", "sqrt")?;
+    if let Some(items) = grow.items() {
+        if items.len() != size - 1 {
+            let expected = format!("a list of {} relative sizes, one for each step of the ladder", size - 1);
+            reader.error(grow.place, Fault::Shape { what: "couplings_grow".to_string(), expected, example: "couplings_grow: sqrt".to_string() });
+            return None;
+        }
+        return items.iter().map(|item| reader.plain(item, "a relative coupling").map(|quantity| quantity.register)).collect();
+    }
+    reader.word(grow, "couplings_grow", &[("sqrt", ())])?;
+    Some((1..size).map(|n| reader.constant((n as f64).sqrt(), grow.place)).collect())
+}
+
+fn read_hamiltonian(reader: &mut Reader, node: &Node) -> Option<System> {
+    let section = "system / hamiltonian";
+    reader.fields(node, section, &["names", "unit", "rows", "rows_from", "lower"], &[])?;
+    let names_node = reader.need(node, "names", section, "[left, right]");
+    let unit = reader.need(node, "unit", section, "MHz").and_then(|unit| reader.energy_unit(unit, "system / hamiltonian / unit"));
+    let mut names = Vec::new();
+    for item in names_node.and_then(|names| reader.list(names, "names", "[left, right]")).unwrap_or_default() {
+        let name = reader.text(item, "the name of a level", "left").unwrap_or_default().to_string();
+        if names.contains(&name) {
+            reader.error(item.place, Fault::SameLevel { name: name.clone() });
+        }
+        names.push(name);
+    }
+    if let (Some(names_node), true) = (names_node, names.is_empty()) {
+        reader.error(names_node.place, Fault::EmptySystem { what: "names".to_string() });
+    }
+    let size = names.len();
+    if size == 0 || too_many(reader, node.place, size as f64) {
+        return None;
+    }
+    warn_of_case(reader, "level", &names, node.place);
+    let mirror = matrix::mirrored(reader, node, section);
+    let unit = unit?;
+    match matrix::rows(reader, node, section)? {
+        Rows::Binary(rows, place) => {
+            let sources = (0..size).map(|k| LevelSource::Value(rows.get(k).and_then(|row| row.get(k)).map_or(0.0, |v| v.0 * unit), place)).collect();
+            reader.define_levels(names.clone(), sources, Rungs::default());
+            let entries = matrix::binary_entries(reader, &rows, size, unit, place)?;
+            hermitian(reader, &names, &entries, unit)?;
+            Some(System { place: node.place, kind: "hamiltonian", names, entries, rungs: None })
+        }
+        Rows::Text(rows) => {
+            let rows_place = node.get("rows").map_or(node.place, |rows| rows.place);
+            let cells = matrix::cells(reader, &rows, size, mirror, rows_place);
+            let Some(cells) = cells else {
+                // the names are known all the same, so that the other sections can be judged
+                reader.define_levels(names, Vec::new(), Rungs::default());
+                return None;
+            };
+            let sources: Vec<LevelSource> =
+                cells.iter().filter(|(row, column, _)| row == column).map(|(.., cell)| LevelSource::Written((*cell).clone(), Some(unit))).collect();
+            reader.define_levels(names.clone(), sources, Rungs::default());
+            let mut entries = Vec::new();
+            let mut good = true;
+            for (row, column, cell) in cells {
+                if row != column && cell.text() == Some("0") {
+                    continue;
+                }
+                if row == column && !cell.text().is_some_and(|text| text.contains('i')) {
+                    match reader.level_energy(row) {
+                        Some(re) => entries.push(MatrixEntry { row, column, value: ComplexQuantity { re, im: None, place: cell.place } }),
+                        None => good = false,
+                    }
+                    continue;
+                }
+                match reader.energy_entry(cell, "an entry of the Hamiltonian", Some(unit)) {
+                    Some(value) => entries.push(MatrixEntry { row, column, value }),
+                    None => good = false,
+                }
+            }
+            if !good {
+                return None;
+            }
+            if mirror {
+                matrix::mirror_entries(reader, &mut entries);
+            }
+            hermitian(reader, &names, &entries, unit)?;
+            Some(System { place: node.place, kind: "hamiltonian", names, entries, rungs: None })
+        }
+    }
+}
+
+/// Reports the first pair of entries that are not complex conjugates, with the numbers as written.
+fn hermitian(reader: &mut Reader, names: &[String], entries: &[MatrixEntry], unit: f64) -> Option<()> {
+    let values = reader.tape.evaluate(&[]);
+    let value = |entry: &MatrixEntry| (values[entry.value.re as usize], entry.value.im.map_or(0.0, |im| values[im as usize]));
+    let largest = entries.iter().map(|entry| value(entry).0.hypot(value(entry).1)).fold(0.0, f64::max);
+    let by_cell: std::collections::HashMap<(usize, usize), &MatrixEntry> = entries.iter().map(|entry| ((entry.row, entry.column), entry)).collect();
+    let words = |(re, im): (f64, f64)| match (re == 0.0, im == 0.0) {
+        (_, true) => short_with_unit(re, "Hz"),
+        (true, _) => format!("{} i", short_with_unit(im, "Hz")),
+        _ => format!("{} {} {} i", short_with_unit(re, "Hz"), if im < 0.0 { '-' } else { '+' }, short_with_unit(im.abs(), "Hz")),
+    };
+    for entry in entries.iter().filter(|entry| entry.row <= entry.column) {
+        let upper = value(entry);
+        let partner = by_cell.get(&(entry.column, entry.row));
+        let lower = partner.map_or((0.0, 0.0), |partner| value(partner));
+        if (upper.0 - lower.0).hypot(upper.1 + lower.1) > 1e-12 * largest {
+            let line = entry.value.place.line;
+            // a lower entry written as 0 is not among the entries; its line is that of its row
+            let lower_place = partner.map_or(entry.value.place, |partner| partner.value.place);
+            let lower_line = partner.map_or(line + (entry.column - entry.row) as u32, |partner| partner.value.place.line);
+            let (re, im) = (upper.0 / unit, -upper.1 / unit);
+            let text = match (re == 0.0, im == 0.0) {
+                (_, true) => super::messages::short(re),
+                (true, _) => format!("{}i", super::messages::short(im)),
+                _ => format!("{} {} {}i", super::messages::short(re), if im < 0.0 { '-' } else { '+' }, super::messages::short(im.abs())),
+            };
+            let write = if entry.row == entry.column {
+                format!("{}      (a diagonal entry is real)", super::messages::short(re))
+            } else {
+                format!("{text} as entry {} of row {} (line {lower_line})", entry.row + 1, entry.column + 1)
+            };
+            let (row, column) = (names[entry.row].clone(), names[entry.column].clone());
+            let fault = Fault::NotHermitian { row, column, upper: words(upper), lower: words(lower), lines: [line, lower_line], write };
+            reader.error(if line <= lower_place.line { entry.value.place } else { lower_place }, fault);
+            return None;
+        }
+    }
+    // an entry below the diagonal without a partner above
+    for entry in entries.iter().filter(|entry| entry.row > entry.column && !by_cell.contains_key(&(entry.column, entry.row))) {
+        let lower = value(entry);
+        if lower.0.hypot(lower.1) > 1e-12 * largest {
+            let (row, column) = (names[entry.column].clone(), names[entry.row].clone());
+            let line = entry.value.place.line;
+            let fault = Fault::NotHermitian {
+                row,
+                column,
+                upper: words((0.0, 0.0)),
+                lower: words(lower),
+                lines: [line.saturating_sub((entry.row - entry.column) as u32).max(1), line],
+                write: "the complex conjugate in its place above the diagonal".to_string(),
+            };
+            reader.error(entry.value.place, fault);
+            return None;
+        }
+    }
+    Some(())
+}
+
+/// Warns of two names that differ only by case.
+pub fn warn_of_case(reader: &mut Reader, kind: &'static str, names: &[String], place: Place) {
+    for (k, name) in names.iter().enumerate() {
+        if let Some(other) = names[..k].iter().find(|other| other.to_lowercase() == name.to_lowercase()) {
+            reader.warn(place, Fault::SameButForCase { kind, name: other.clone(), other: name.clone() });
+        }
+    }
+}
+
+/// Reads `operators:`; an operator that cannot be read leaves its name with no entries.
+pub fn read_operators(reader: &mut Reader, node: &Node, size: usize) -> Vec<Operator> {
+    let Some(entries) = node.entries() else {
+        let fault = Fault::Shape { what: "operators".to_string(), expected: "a block of names".to_string(), example: "x: {rows: [[0, 1], [1, 0]]}".to_string() };
+        reader.error(node.place, fault);
+        return Vec::new();
+    };
+    let names: Vec<String> = entries.iter().map(|entry| entry.key.clone()).collect();
+    warn_of_case(reader, "operator", &names, node.place);
+    let mut found = Vec::new();
+    for entry in entries {
+        let section = format!("operators / {}", entry.key);
+        if let Some(later) = entry.value.entries().and_then(|keys| keys.iter().find(|key| matches!(key.key.as_str(), "derivatives" | "in"))) {
+            reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: section.clone() });
+            continue;
+        }
+        let matrix = match reader.fields(&entry.value, &section, &["rows", "rows_from", "lower"], &[]) {
+            Some(_) => matrix::plain_matrix(reader, &entry.value, &section, size),
+            None => None,
+        };
+        found.push(Operator { name: entry.key.clone(), place: entry.place, entries: matrix.unwrap_or_default() });
+    }
+    found
+}

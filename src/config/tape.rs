@@ -1,0 +1,333 @@
+//! Arithmetic as a flat tape: each entry computes one register from earlier ones, so a point of a scan replays only the entries
+//! that depend on the numbers it moves. The same tape runs on any [`Real`]: doubles, and dual numbers for derivatives.
+
+use super::place::Place;
+use crate::units::{sin_cos_turns, RAD_PER_TURN};
+
+/// The number of a register.
+pub type Register = u32;
+
+/// Functions of one argument; angles are in turns.
+#[derive(Debug, Clone, Copy, PartialEq)]
+#[allow(missing_docs)] // named as in the language
+pub enum One {
+    Negative,
+    Sqrt,
+    Exp,
+    Log,
+    Log10,
+    Sin,
+    Cos,
+    Tan,
+    Asin,
+    Acos,
+    Atan,
+    Sinh,
+    Cosh,
+    Tanh,
+    Abs,
+    Floor,
+    Round,
+}
+
+/// Operations on two arguments.
+#[derive(Debug, Clone, Copy, PartialEq)]
+#[allow(missing_docs)] // named as in the language
+pub enum Two {
+    Add,
+    Subtract,
+    Multiply,
+    Divide,
+    Power,
+    Min,
+    Max,
+    Atan2,
+}
+
+/// One entry of a tape.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub enum Entry {
+    /// A constant, in SI.
+    Constant(f64),
+    /// The named number of this index, whose written value is in the register; a point may move it.
+    Number(u32, Register),
+    /// A function of one register.
+    One(One, Register),
+    /// An operation on two registers.
+    Two(Two, Register, Register),
+    /// In a formula of time: a register of the tape outside.
+    Outer(Register),
+    /// In a formula of time: t, in s.
+    Time,
+}
+
+/// What arithmetic needs of a number.
+pub trait Real: Copy {
+    /// A constant.
+    fn constant(value: f64) -> Self;
+    /// Applies a function.
+    fn one(self, function: One) -> Self;
+    /// Applies an operation.
+    fn two(self, operation: Two, other: Self) -> Self;
+}
+
+impl Real for f64 {
+    fn constant(value: f64) -> f64 {
+        value
+    }
+
+    fn one(self, function: One) -> f64 {
+        match function {
+            One::Negative => -self,
+            One::Sqrt => self.sqrt(),
+            One::Exp => self.exp(),
+            One::Log => self.ln(),
+            One::Log10 => self.log10(),
+            One::Sin => sin_cos_turns(self).0,
+            One::Cos => sin_cos_turns(self).1,
+            One::Tan => {
+                let (sin, cos) = sin_cos_turns(self);
+                sin / cos
+            }
+            One::Asin => self.asin() / RAD_PER_TURN,
+            One::Acos => self.acos() / RAD_PER_TURN,
+            One::Atan => self.atan() / RAD_PER_TURN,
+            One::Sinh => self.sinh(),
+            One::Cosh => self.cosh(),
+            One::Tanh => self.tanh(),
+            One::Abs => self.abs(),
+            One::Floor => self.floor(),
+            One::Round => self.round(),
+        }
+    }
+
+    fn two(self, operation: Two, other: f64) -> f64 {
+        match operation {
+            Two::Add => self + other,
+            Two::Subtract => self - other,
+            Two::Multiply => self * other,
+            Two::Divide => self / other,
+            Two::Power if other == 2.0 => self * self,
+            Two::Power if other == other.trunc() && other.abs() < 64.0 => self.powi(other as i32),
+            Two::Power => self.powf(other),
+            Two::Min => self.min(other),
+            Two::Max => self.max(other),
+            Two::Atan2 => self.atan2(other) / RAD_PER_TURN,
+        }
+    }
+}
+
+/// A value with its derivative, for slopes in time and for sensitivities (forward mode; R. E. Wengert, Communications of the ACM 7, 463 (1964)).
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Dual {
+    /// The value.
+    pub value: f64,
+    /// Its derivative.
+    pub slope: f64,
+}
+
+impl Real for Dual {
+    fn constant(value: f64) -> Dual {
+        Dual { value, slope: 0.0 }
+    }
+
+    fn one(self, function: One) -> Dual {
+        let value = self.value.one(function);
+        let x = self.value;
+        let slope = match function {
+            One::Negative => -1.0,
+            One::Sqrt => 0.5 / value,
+            One::Exp => value,
+            One::Log => 1.0 / x,
+            One::Log10 => std::f64::consts::LOG10_E / x,
+            One::Sin => sin_cos_turns(x).1 * RAD_PER_TURN,
+            One::Cos => -sin_cos_turns(x).0 * RAD_PER_TURN,
+            One::Tan => (1.0 + value * value) * RAD_PER_TURN,
+            One::Asin => 1.0 / ((1.0 - x * x).sqrt() * RAD_PER_TURN),
+            One::Acos => -1.0 / ((1.0 - x * x).sqrt() * RAD_PER_TURN),
+            One::Atan => 1.0 / ((1.0 + x * x) * RAD_PER_TURN),
+            One::Sinh => x.cosh(),
+            One::Cosh => x.sinh(),
+            One::Tanh => 1.0 - value * value,
+            One::Abs => x.signum(),
+            One::Floor | One::Round => 0.0,
+        };
+        Dual { value, slope: if self.slope == 0.0 { 0.0 } else { slope * self.slope } }
+    }
+
+    fn two(self, operation: Two, other: Dual) -> Dual {
+        let (a, b) = (self.value, other.value);
+        let value = a.two(operation, b);
+        let slope = match operation {
+            Two::Add => self.slope + other.slope,
+            Two::Subtract => self.slope - other.slope,
+            Two::Multiply => self.slope * b + a * other.slope,
+            Two::Divide => (self.slope - value * other.slope) / b,
+            Two::Power => {
+                let base = if self.slope == 0.0 || b == 0.0 { 0.0 } else { b * a.two(Two::Power, b - 1.0) * self.slope };
+                base + if other.slope == 0.0 { 0.0 } else { value * a.ln() * other.slope }
+            }
+            Two::Min => {
+                if a <= b {
+                    self.slope
+                } else {
+                    other.slope
+                }
+            }
+            Two::Max => {
+                if a >= b {
+                    self.slope
+                } else {
+                    other.slope
+                }
+            }
+            Two::Atan2 => (self.slope * b - a * other.slope) / ((a * a + b * b) * RAD_PER_TURN),
+        };
+        Dual { value, slope }
+    }
+}
+
+/// Entries in an order in which each reads only earlier registers, and the place in the config each comes from.
+#[derive(Debug, Clone, Default)]
+pub struct Tape {
+    entries: Vec<Entry>,
+    places: Vec<Place>,
+}
+
+impl Tape {
+    /// Appends an entry and returns its register.
+    pub fn push(&mut self, entry: Entry, place: Place) -> Register {
+        self.entries.push(entry);
+        self.places.push(place);
+        (self.entries.len() - 1) as Register
+    }
+
+    /// The entries.
+    pub fn entries(&self) -> &[Entry] {
+        &self.entries
+    }
+
+    /// Where in the config an entry comes from.
+    pub fn place(&self, register: Register) -> Place {
+        self.places[register as usize]
+    }
+
+    /// Registers that change when the given numbers move, in order.
+    pub fn dependents(&self, numbers: &[u32]) -> Vec<Register> {
+        let mut moved = vec![false; self.entries.len()];
+        for (register, entry) in self.entries.iter().enumerate() {
+            moved[register] = match entry {
+                Entry::Constant(_) | Entry::Outer(_) | Entry::Time => false,
+                Entry::Number(index, from) => numbers.contains(index) || moved[*from as usize],
+                Entry::One(_, a) => moved[*a as usize],
+                Entry::Two(_, a, b) => moved[*a as usize] || moved[*b as usize],
+            };
+        }
+        (0..self.entries.len() as Register).filter(|register| moved[*register as usize]).collect()
+    }
+
+    /// Runs one entry on the registers before it.
+    fn run<T: Real>(&self, register: Register, values: &[T], set: &[Option<T>], outer: &[f64], t: T) -> T {
+        match self.entries[register as usize] {
+            Entry::Constant(value) => T::constant(value),
+            Entry::Number(index, from) => set.get(index as usize).copied().flatten().unwrap_or(values[from as usize]),
+            Entry::One(function, a) => values[a as usize].one(function),
+            Entry::Two(operation, a, b) => values[a as usize].two(operation, values[b as usize]),
+            Entry::Outer(from) => T::constant(outer[from as usize]),
+            Entry::Time => t,
+        }
+    }
+
+    /// All registers, `set[k]` standing in for named number k where it is given.
+    pub fn evaluate(&self, set: &[Option<f64>]) -> Vec<f64> {
+        let mut values = Vec::with_capacity(self.entries.len());
+        for register in 0..self.entries.len() as Register {
+            let value = self.run(register, &values, set, &[], 0.0);
+            values.push(value);
+        }
+        values
+    }
+
+    /// Replays some registers in place.
+    pub fn replay(&self, which: &[Register], set: &[Option<f64>], values: &mut [f64]) {
+        for register in which {
+            values[*register as usize] = self.run(*register, values, set, &[], 0.0);
+        }
+    }
+}
+
+/// A formula of the time since the start of its pulse, as written.
+#[derive(Debug, Clone)]
+pub struct Formula {
+    /// Its own tape; what does not depend on t is read from the tape outside.
+    pub tape: Tape,
+    /// The register of the result.
+    pub result: Register,
+    /// Where the formula stands.
+    pub place: Place,
+}
+
+/// A formula with the numbers of one point filled in.
+#[derive(Debug, Clone)]
+pub struct BoundFormula {
+    entries: std::sync::Arc<[Entry]>,
+    outer: Vec<f64>,
+    result: usize,
+}
+
+/// Registers of a formula that fit on the stack; longer formulas take the heap.
+const ON_STACK: usize = 48;
+
+impl Formula {
+    /// Fills in the values of the tape outside.
+    pub fn bind(&self, values: &[f64]) -> BoundFormula {
+        let mut outer = Vec::new();
+        let entries = self
+            .tape
+            .entries
+            .iter()
+            .map(|entry| match entry {
+                Entry::Outer(from) => {
+                    outer.push(values[*from as usize]);
+                    Entry::Outer((outer.len() - 1) as Register)
+                }
+                other => *other,
+            })
+            .collect();
+        BoundFormula { entries, outer, result: self.result as usize }
+    }
+}
+
+impl BoundFormula {
+    fn run<T: Real>(&self, t: T) -> T {
+        let mut stack = [T::constant(0.0); ON_STACK];
+        let mut heap = Vec::new();
+        let values: &mut [T] = if self.entries.len() <= ON_STACK {
+            &mut stack
+        } else {
+            heap.resize(self.entries.len(), T::constant(0.0));
+            &mut heap
+        };
+        for (register, entry) in self.entries.iter().enumerate() {
+            values[register] = match *entry {
+                Entry::Constant(value) => T::constant(value),
+                Entry::Number(_, from) => values[from as usize],
+                Entry::One(function, a) => values[a as usize].one(function),
+                Entry::Two(operation, a, b) => values[a as usize].two(operation, values[b as usize]),
+                Entry::Outer(from) => T::constant(self.outer[from as usize]),
+                Entry::Time => t,
+            };
+        }
+        values[self.result]
+    }
+
+    /// Value at t, in SI.
+    pub fn at(&self, t_s: f64) -> f64 {
+        self.run(t_s)
+    }
+
+    /// d/dt of the value at t.
+    pub fn slope(&self, t_s: f64) -> f64 {
+        self.run(Dual { value: t_s, slope: 1.0 }).slope
+    }
+}
