@@ -1,0 +1,1 @@
+//! Areas of every shape against the numbers of an outside calculation.
