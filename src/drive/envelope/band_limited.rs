@@ -185,3 +185,60 @@ impl Curve for BandLimited {
         Pieces::Smooth { kinks_s: Arc::from([]) }
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use proptest::prelude::*;
+
+    /// The sum as it is defined, term by term.
+    fn plain(values: &[f64], x: f64) -> f64 {
+        let term = |(k, value): (usize, &f64)| {
+            let z = std::f64::consts::PI * (x - k as f64);
+            value * if z == 0.0 { 1.0 } else { z.sin() / z }
+        };
+        values.iter().enumerate().map(term).sum()
+    }
+
+    proptest! {
+        /// Against the plain sum anywhere, and through the samples, from either side of 0/0.
+        #[test]
+        fn prop_the_plain_sum(values in proptest::collection::vec(-1.0..1.0f64, 2..40), share in 0.0..1.0f64) {
+            let steps = (values.len() - 1) as f64;
+            let curve = BandLimited::new(Arc::from(values.as_slice()), steps);
+            let t = share * steps;
+            prop_assert!((curve.at(t) - plain(&values, t)).abs() < 2e-14);
+            for (k, value) in values.iter().enumerate() {
+                for aside in [0.0, 1e-300, 1e-17, -1e-13, 1e-13] {
+                    let t = (k as f64 + aside).clamp(0.0, steps);
+                    prop_assert!((curve.at(t) - value).abs() < 2e-12);
+                    prop_assert!(curve.slope(t).is_finite());
+                }
+                prop_assert_eq!(curve.at(k as f64), *value);
+            }
+        }
+    }
+
+    /// sinc(1/2) = 2/pi and its slope -4/pi; near 0 the slope is -pi^2 y/3; both forms meet where they change over.
+    #[test]
+    fn exact_sinc() {
+        let pi = std::f64::consts::PI;
+        assert!((sinc(0.5) - 2.0 / pi).abs() < 2e-16);
+        assert!((sinc_slope(0.5) + 4.0 / pi).abs() < 5e-16);
+        assert!((sinc_slope(1e-9) / (-pi * pi / 3.0 * 1e-9) - 1.0).abs() < 1e-15);
+        assert!((sinc_slope(0.25) - sinc_slope(0.25 + 1e-15)).abs() < 1e-14);
+        assert_eq!((sinc(0.0), sinc_slope(0.0)), (1.0, 0.0));
+    }
+
+    /// The sine integral: from 0 to n pi, over pi, for n = 1 and 2 (SciPy, scipy.special.sici; also M. Abramowitz and I. A. Stegun,
+    /// Handbook of Mathematical Functions (1964), table 5.1): a list 1, 0, .. has that area.
+    #[test]
+    fn ref_sine_integral() {
+        for (values, want) in [(vec![1.0, 0.0], SI_PI), (vec![1.0, 0.0, 0.0], SI_2_PI)] {
+            let got = area(&values);
+            assert!((got - want / std::f64::consts::PI).abs() < 4e-16, "{got}");
+        }
+    }
+    const SI_PI: f64 = 1.8519370519824658;
+    const SI_2_PI: f64 = 1.4181515761326284;
+}

@@ -3,7 +3,8 @@
 //!
 //! Area: with G(x) = exp(-x^2)/sqrt(pi) - x erfc(x), the integral of erf from 0 to x is x + G(x) - 1/sqrt(pi)
 //! (M. Abramowitz and I. A. Stegun, Handbook of Mathematical Functions (1964), 7.2), so the area is
-//! min(L, 2 c) + w (G((c + L/2)/w) - G(abs(c - L/2)/w)). Lifted values and areas carry about 1e-16 of peak/(peak - pedestal).
+//! min(L, 2 c) + w (G((c + L/2)/w) - G(abs(c - L/2)/w)). A lifted value is a plain difference:
+//! it is off by about 1e-16 of peak/(peak - pedestal), also where it is near 0.
 
 use std::sync::Arc;
 

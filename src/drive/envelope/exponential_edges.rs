@@ -53,7 +53,8 @@ impl Curve for ExponentialEdges {
     }
 
     fn slope(&self, t_s: f64) -> f64 {
-        if t_s < self.on_s {
+        // Without a tail the end has no right side.
+        if t_s < self.on_s || self.end_s == self.on_s {
             (-t_s / self.tau_s).exp() / self.tau_s
         } else {
             -self.at(t_s) / self.tau_s
