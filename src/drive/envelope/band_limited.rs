@@ -81,9 +81,9 @@ impl BandLimited {
         self.values[m] * sinc_slope(d) + cos * first - sin / PI * second
     }
 
-    /// The largest modulus. On the line it cannot fall faster from its peak than cos(pi d) does (Bernstein's bound for a band of
-    /// half a turn per step; R. P. Boas, Entire Functions (1954), 11.4), so one of the places next to it has nearly its size;
-    /// every such place is refined by halving the interval in which the slope changes its sign.
+    /// The largest modulus. On the whole line it cannot fall faster from its peak than cos(pi d) does, d in steps (R. J. Duffin and
+    /// A. C. Schaeffer, Bulletin of the American Mathematical Society 44, 236 (1938), cited from memory), so one of the places
+    /// next to it has 0.98 of its size. Every place above 0.9 is refined by halving the interval in which the slope changes sign.
     fn search(&self) -> f64 {
         let last = (self.values.len() - 1) * PLACES;
         let place = |i: usize| i as f64 / PLACES as f64;

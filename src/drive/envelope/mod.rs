@@ -26,6 +26,8 @@ mod error_function_edges;
 mod exponential_edges;
 mod gaussian;
 mod held;
+#[cfg(test)]
+mod law_tests;
 mod lift;
 mod linear;
 mod parameters;
@@ -33,6 +35,8 @@ mod quadrature;
 mod raised_cosine;
 #[cfg(test)]
 mod reference_tests;
+#[cfg(test)]
+mod refusal_tests;
 mod samples;
 mod sech;
 mod square;
