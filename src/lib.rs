@@ -3,5 +3,7 @@
 
 pub mod config;
 pub mod drive;
+pub mod model;
+pub mod plan;
 pub mod problem;
 pub mod units;

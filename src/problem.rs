@@ -96,6 +96,15 @@ impl Instant {
         }
     }
 
+    /// This moment counted from `earlier`.
+    pub fn minus(self, earlier: Instant) -> Instant {
+        Instant::default()
+            .after(self.high)
+            .after(-earlier.high)
+            .after(self.low)
+            .after(-earlier.low)
+    }
+
     /// Seconds from `earlier` to this moment.
     pub fn since(self, earlier: Instant) -> f64 {
         (self.high - earlier.high) + (self.low - earlier.low)

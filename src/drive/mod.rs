@@ -1,2 +1,11 @@
-//! Envelopes and carriers on a timeline.
+//! Envelopes and carriers on a timeline: from the checked config and the values of its numbers to pulses with exact times.
+//!
+//! `envelope/` holds the shapes, `chirp` the phase of a swept carrier, `signal` all three quadratures of one pulse, `coupling`
+//! a drive's matrix, `timeline` the sequence laid out, `segments` its cut into stretches that a method can take whole.
+
+pub mod chirp;
+pub mod coupling;
 pub mod envelope;
+pub mod segments;
+pub mod signal;
+pub mod timeline;

@@ -14,6 +14,7 @@
 //! | `sech` | 1/cosh(u/T) |
 //! | `error_function_edges` | (erf((u + L/2)/w) - erf((u - L/2)/w))/2 |
 //! | `exponential_edges` | 1 - exp(-t/tau), then (1 - exp(-L/tau)) exp(-(t - L)/tau) |
+//! | `formula` | ordinary arithmetic in t |
 //! | `samples` | reads a list, then one of `held`, `linear`, `band_limited` |
 //!
 //! `parameters` holds what a builder reads and refuses, `lift` the rule of a lifted edge, `quadrature` a Gauss rule for areas
@@ -24,6 +25,7 @@ mod blackman;
 mod cosine_edges;
 mod error_function_edges;
 mod exponential_edges;
+mod formula;
 mod gaussian;
 mod held;
 #[cfg(test)]
@@ -31,7 +33,7 @@ mod law_tests;
 mod lift;
 mod linear;
 mod parameters;
-mod quadrature;
+pub(crate) mod quadrature;
 mod raised_cosine;
 #[cfg(test)]
 mod reference_tests;
@@ -45,6 +47,7 @@ mod trapezoid;
 use std::fmt::Debug;
 use std::sync::Arc;
 
+pub use formula::FormulaCurve;
 pub use parameters::{Between, Edge, Parameters, ShapeFault};
 
 /// How a curve is cut into stretches that a method can take whole.

@@ -2,25 +2,7 @@
 
 use std::sync::Arc;
 
-/// What becomes of the pedestal where a curve is cut.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum Edge {
-    /// The step at the cut stays.
-    Step,
-    /// The pedestal is taken off and the rest brought back to 1: (g(t) - g(0))/(g(c) - g(0)).
-    Lift,
-}
-
-/// What a list of samples does between two of them.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum Between {
-    /// Each value until the next.
-    Hold,
-    /// A straight line.
-    Linear,
-    /// The sum of v_k sinc(t/step - k), nothing outside the list.
-    BandLimited,
-}
+pub use crate::config::envelopes::{Between, Edge};
 
 /// The keys of an envelope that give its shape, in SI; a shape reads those it knows.
 #[derive(Debug, Clone, Default, PartialEq)]

@@ -1,0 +1,534 @@
+//! A whole config, read and judged: what every later stage starts from.
+
+use std::path::Path;
+
+use super::drives::{CarrierPhase, Drive, Form};
+use super::envelopes::Envelope;
+use super::messages::{Fault, Mistake};
+use super::place::{Place, Sources};
+use super::reader::{near, NamedNumber, Reader};
+use super::record::{Item, Record};
+use super::sequence::{self, Known, Step};
+use super::settings::{Accuracy, Output};
+use super::state::State;
+use super::system::{Operator, System};
+use super::tape::{Register, Tape};
+use super::tree::{self, Kind, Node};
+
+/// Sections of the language; those that this version cannot read are refused, never skipped.
+const SECTIONS: [&str; 25] = [
+    "format",
+    "title",
+    "numbers",
+    "numbers_from",
+    "system",
+    "operators",
+    "basis",
+    "drives",
+    "envelopes",
+    "blocks",
+    "sequence",
+    "decay",
+    "dephasing",
+    "noise",
+    "start",
+    "frame",
+    "accuracy",
+    "record",
+    "compare",
+    "scan",
+    "tune",
+    "fit",
+    "run",
+    "hardware",
+    "output",
+];
+const LATER: [&str; 10] = [
+    "basis",
+    "decay",
+    "dephasing",
+    "noise",
+    "compare",
+    "scan",
+    "tune",
+    "fit",
+    "run",
+    "hardware",
+];
+
+/// A config that holds no mistake.
+#[derive(Debug, Clone)]
+pub struct Document {
+    /// The files it is made of, the config first.
+    pub sources: Sources,
+    /// `title:`, or the name of the file.
+    pub title: String,
+    /// All arithmetic.
+    pub tape: Tape,
+    /// Named numbers.
+    pub numbers: Vec<NamedNumber>,
+    /// Registers that shaped the reading: a point that moves one of them is another reading.
+    pub structural: Vec<Register>,
+    /// The static system.
+    pub system: System,
+    /// Named matrices.
+    pub operators: Vec<Operator>,
+    /// Drives.
+    pub drives: Vec<Drive>,
+    /// Envelopes.
+    pub envelopes: Vec<Envelope>,
+    /// Steps in order.
+    pub sequence: Vec<Step>,
+    /// Where the sequence stands.
+    pub sequence_place: Place,
+    /// The state at time zero.
+    pub start: State,
+    /// What to keep.
+    pub record: Record,
+    /// How exactly.
+    pub accuracy: Accuracy,
+    /// Where to.
+    pub output: Output,
+    /// Defaults that were used: path of keys, value.
+    pub defaults: Vec<(String, String)>,
+    /// Warnings.
+    pub warnings: Vec<Mistake>,
+    /// The values given in place of written ones.
+    pub set: Vec<(String, String)>,
+}
+
+/// What reading a file that cannot be used leaves: the mistakes, and the text to show them in.
+#[derive(Debug, Clone)]
+pub struct Refusal {
+    /// Files read so far.
+    pub sources: Sources,
+    /// All mistakes found, warnings among them.
+    pub mistakes: Vec<Mistake>,
+}
+
+impl Refusal {
+    /// The messages as one text.
+    pub fn text(&self) -> String {
+        super::messages::render(&self.sources, &self.mistakes)
+    }
+}
+
+/// Reads and judges the config at `path`; `set` puts other values in place of named numbers, as `name`, `value`.
+pub fn read(path: &Path, set: &[(String, String)]) -> Result<Document, Refusal> {
+    let mut sources = Sources::default();
+    let file = match tree::read_text(path, &mut sources) {
+        Ok(file) => file,
+        Err(mistake) => {
+            return Err(Refusal {
+                sources,
+                mistakes: vec![mistake],
+            })
+        }
+    };
+    read_sources(sources, file, path.parent().unwrap_or(Path::new("")), set)
+}
+
+/// The same from a text; files that it names lie in `folder`.
+pub fn read_str(name: &str, text: &str, folder: &Path, set: &[(String, String)]) -> Result<Document, Refusal> {
+    let mut sources = Sources::default();
+    let file = sources.add(Path::new(name), text.as_bytes().to_vec(), text.to_string());
+    read_sources(sources, file, folder, set)
+}
+
+fn read_sources(sources: Sources, file: u16, folder: &Path, set: &[(String, String)]) -> Result<Document, Refusal> {
+    let mut mistakes = Vec::new();
+    let root = match tree::parse(&sources, file, &mut mistakes) {
+        Ok(root) => root,
+        Err(mistake) => {
+            mistakes.push(mistake);
+            return Err(Refusal { sources, mistakes });
+        }
+    };
+    let mut reader = Reader::new(sources, folder.to_path_buf());
+    reader.mistakes = mistakes;
+    let document = sections(&mut reader, &root, file, set);
+    let refused = reader.mistakes.iter().any(|mistake| !mistake.warning);
+    match document {
+        Some(document) if !refused => Ok(document),
+        _ => Err(Refusal {
+            sources: reader.sources,
+            mistakes: reader.mistakes,
+        }),
+    }
+}
+
+fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)]) -> Option<Document> {
+    if root.entries().is_none() {
+        reader.error(
+            root.place,
+            Fault::Shape {
+                what: "a config".to_string(),
+                expected: "a block of sections".to_string(),
+                example: "format: 1".to_string(),
+            },
+        );
+        return None;
+    }
+    match root.get("format") {
+        None => reader.error(
+            Place {
+                file,
+                line: 1,
+                column: 1,
+                length: 1,
+            },
+            Fault::NoFormat,
+        ),
+        Some(node) if node.text() == Some("1") => {}
+        Some(node) => {
+            let found = node.text().unwrap_or("a list or block").to_string();
+            reader.error(node.place, Fault::OtherFormat { found });
+            // another version may mean anything by its words
+            return None;
+        }
+    }
+    let entries = reader.fields(root, "a config", &SECTIONS, &[])?;
+    for entry in entries.iter().filter(|entry| LATER.contains(&entry.key.as_str())) {
+        reader.error(
+            entry.place,
+            Fault::NotNow {
+                key: entry.key.clone(),
+                section: "a section".to_string(),
+            },
+        );
+    }
+    let title = match root.get("title") {
+        Some(title) => reader
+            .text(title, "title", "title: what this run is for")
+            .unwrap_or_default()
+            .to_string(),
+        None => reader.sources.files()[usize::from(file)]
+            .path
+            .file_stem()
+            .map_or(String::new(), |stem| stem.to_string_lossy().into_owned()),
+    };
+    numbers(reader, root, set);
+
+    let system = match root.get("system") {
+        Some(node) => super::system::read_system(reader, node),
+        None => {
+            let why = Some("It names the levels and their energies.".to_string());
+            let fault = Fault::MissingKey {
+                key: "system".to_string(),
+                section: "a config".to_string(),
+                write: "system: {levels: {down: 0 MHz, up: 80 MHz}}".to_string(),
+                why,
+            };
+            reader.error(
+                Place {
+                    file,
+                    line: 1,
+                    column: 1,
+                    length: 1,
+                },
+                fault,
+            );
+            None
+        }
+    };
+    let size = reader.level_names().len();
+    // with the names of the levels known, the other sections can be judged even where an energy is wrong
+    let stand_in = System {
+        place: root.place,
+        kind: "levels",
+        names: reader.level_names(),
+        entries: Vec::new(),
+        rungs: None,
+    };
+    let readable = system.is_some() || size > 0;
+    let known_system = system.clone().unwrap_or(stand_in);
+    let operators = match root.get("operators") {
+        Some(node) if readable => super::system::read_operators(reader, node, size),
+        _ => Vec::new(),
+    };
+    let (drives, drive_names) = match root.get("drives") {
+        Some(node) if readable => super::drives::read_drives(reader, node, &known_system, &operators),
+        _ => (Vec::new(), Vec::new()),
+    };
+    let (envelopes, envelope_names) = match root.get("envelopes") {
+        Some(node) => super::envelopes::read_envelopes(reader, node),
+        None => (Vec::new(), Vec::new()),
+    };
+    let known = Known {
+        drives: (&drive_names, &drives),
+        envelopes: (&envelope_names, &envelopes),
+        blocks: root.get("blocks"),
+    };
+    let sequence_node = match root.get("sequence") {
+        Some(node) => Some(node),
+        None => {
+            let fault = Fault::MissingKey {
+                key: "sequence".to_string(),
+                section: "a config".to_string(),
+                write: "sequence: [{wait: 1 us}]".to_string(),
+                why: None,
+            };
+            reader.error(
+                Place {
+                    file,
+                    line: 1,
+                    column: 1,
+                    length: 1,
+                },
+                fault,
+            );
+            None
+        }
+    };
+    let (steps, used) = match sequence_node {
+        Some(node) if readable => sequence::read_sequence(reader, node, &known),
+        _ => (None, sequence::Used::default()),
+    };
+    let start = match root.get("start") {
+        Some(node) if readable => super::state::read_start(reader, node),
+        Some(_) => None,
+        None => {
+            let why = Some("It names the level, or the superposition, at time zero.".to_string());
+            let fault = Fault::MissingKey {
+                key: "start".to_string(),
+                section: "a config".to_string(),
+                write: "start: down".to_string(),
+                why,
+            };
+            reader.error(
+                Place {
+                    file,
+                    line: 1,
+                    column: 1,
+                    length: 1,
+                },
+                fault,
+            );
+            None
+        }
+    };
+    let frame = super::settings::read_frame(reader, root.get("frame"));
+    let mut used_operators = Vec::new();
+    let record = if readable {
+        super::record::read_record(reader, root.get("record"), &operators, &mut used_operators)
+    } else {
+        None
+    };
+    let accuracy = super::settings::read_accuracy(reader, root.get("accuracy"));
+    let output = super::settings::read_output(reader, root.get("output"));
+
+    if let Some(steps) = &steps {
+        phases_said(reader, steps, &drives);
+        unused(reader, root, &used, &operators, &mut used_operators);
+    }
+    let numbers = reader.finish_numbers();
+    finite(reader, &numbers)?;
+    if let Some(record) = &record {
+        free_turns(reader, record, &operators);
+    }
+    let (system, steps, start, record, accuracy, output) = (system?, steps?, start?, record?, accuracy?, output?);
+    frame?;
+    Some(Document {
+        sources: reader.sources.clone(),
+        title,
+        tape: reader.tape.clone(),
+        numbers,
+        structural: reader.structural.clone(),
+        system,
+        operators,
+        drives,
+        envelopes,
+        sequence: steps,
+        sequence_place: sequence_node.map_or(root.place, |node| node.place),
+        start,
+        record,
+        accuracy,
+        output,
+        defaults: std::mem::take(&mut reader.defaults),
+        warnings: reader.mistakes.iter().filter(|mistake| mistake.warning).cloned().collect(),
+        set: set.to_vec(),
+    })
+}
+
+/// `numbers:`, `numbers_from:` and the values set from outside.
+fn numbers(reader: &mut Reader, root: &Node, set: &[(String, String)]) {
+    if let Some(node) = root.get("numbers") {
+        reader.define_numbers(node);
+    }
+    if let Some(node) = root.get("numbers_from") {
+        if let Some(name) = reader.text(node, "numbers_from", "numbers_from: chip.yaml").map(str::to_string) {
+            let path = reader.folder.join(&name);
+            match tree::read_text(&path, &mut reader.sources) {
+                Ok(file) => {
+                    let mut found = Vec::new();
+                    let parsed = tree::parse(&reader.sources, file, &mut found);
+                    reader.mistakes.extend(found);
+                    match parsed {
+                        Ok(list) => reader.define_numbers(&list),
+                        Err(mistake) => reader.mistakes.push(mistake),
+                    }
+                }
+                Err(mut mistake) => {
+                    if mistake.place.line == 0 {
+                        mistake.place = node.place;
+                    }
+                    reader.mistakes.push(mistake);
+                }
+            }
+        }
+    }
+    for (name, value) in set {
+        let text = format!("{name}={value}");
+        let file = reader.sources.add(Path::new("--set"), Vec::new(), text.clone());
+        let column = name.chars().count() as u32 + 2;
+        let place = Place {
+            file,
+            line: 1,
+            column,
+            length: value.chars().count().max(1) as u32,
+        };
+        let node = Node {
+            place,
+            kind: Kind::Scalar {
+                text: value.clone(),
+                quoted: false,
+                exact: true,
+            },
+        };
+        if !reader.set_number(name, node) {
+            let known = reader.number_names();
+            let near = near(name, known.iter().map(String::as_str));
+            reader.error(
+                Place {
+                    column: 1,
+                    length: name.chars().count().max(1) as u32,
+                    ..place
+                },
+                Fault::NoSuchNumber {
+                    name: name.clone(),
+                    near,
+                    known,
+                },
+            );
+        }
+    }
+}
+
+/// A drive whose phase could be meant in two ways must say which.
+fn phases_said(reader: &mut Reader, steps: &[Step], drives: &[Drive]) {
+    for (drive, (times, first)) in drives.iter().zip(sequence::uses(steps, drives.len())) {
+        if drive.form == Form::Direct || drive.carrier_phase.is_some() || times == 0 || (times == 1 && first) {
+            continue;
+        }
+        reader.error(
+            drive.place,
+            Fault::PhaseUnsaid {
+                drive: drive.name.clone(),
+                times,
+                why_first: times == 1,
+            },
+        );
+    }
+}
+
+fn unused(reader: &mut Reader, root: &Node, used: &sequence::Used, operators: &[Operator], used_operators: &mut Vec<String>) {
+    for entry in root.get("drives").and_then(Node::entries).unwrap_or_default() {
+        if let Some(operator) = entry.value.get("operator").and_then(Node::text) {
+            used_operators.push(operator.to_string());
+        }
+    }
+    let sections: [(&'static str, &str, &std::collections::HashSet<String>); 3] = [
+        ("drive", "drives", &used.drives),
+        ("envelope", "envelopes", &used.envelopes),
+        ("block", "blocks", &used.blocks),
+    ];
+    for (kind, section, used) in sections {
+        for entry in root.get(section).and_then(Node::entries).unwrap_or_default() {
+            if !used.contains(&entry.key) {
+                reader.warn(
+                    entry.place,
+                    Fault::Unused {
+                        kind,
+                        name: entry.key.clone(),
+                    },
+                );
+            }
+        }
+    }
+    for operator in operators.iter().filter(|operator| !used_operators.contains(&operator.name)) {
+        reader.warn(
+            operator.place,
+            Fault::Unused {
+                kind: "operator",
+                name: operator.name.clone(),
+            },
+        );
+    }
+}
+
+/// Every register has a finite value with the numbers as written; the first that has not is reported.
+fn finite(reader: &mut Reader, _numbers: &[NamedNumber]) -> Option<()> {
+    let values = reader.tape.evaluate(&[]);
+    match not_finite(&reader.tape, &values, &reader.sources) {
+        None => Some(()),
+        Some(mistake) => {
+            reader.mistakes.push(mistake);
+            None
+        }
+    }
+}
+
+/// The first register without a finite value, as a mistake.
+pub fn not_finite(tape: &Tape, values: &[f64], sources: &Sources) -> Option<Mistake> {
+    use super::tape::{Entry, Two};
+    let bad = values.iter().position(|value| !value.is_finite())?;
+    let place = tape.place(bad as Register);
+    let line = sources.line(place.file, place.line).unwrap_or_default();
+    let text: String = line
+        .chars()
+        .skip(place.column.saturating_sub(1) as usize)
+        .take(place.length as usize)
+        .collect();
+    let fault = match tape.entries()[bad] {
+        Entry::Two(Two::Divide, _, divisor) if values[divisor as usize] == 0.0 => Fault::ZeroDivision { text },
+        _ => Fault::NotFinite { text },
+    };
+    Some(Mistake::error(place, fault))
+}
+
+/// Operators under `free_z` must be diagonal and real.
+fn free_turns(reader: &mut Reader, record: &Record, operators: &[Operator]) {
+    for item in &record.items {
+        let Item::Gate(gate) = item else { continue };
+        let super::record::FreeZ::Operators(free) = &gate.free_z else {
+            continue;
+        };
+        for index in free {
+            let values = reader.tape.evaluate(&[]);
+            let off = operators[*index].entries.iter().any(|entry| {
+                let im = entry.value.im.map_or(0.0, |im| values[im as usize]);
+                im != 0.0 || (entry.row != entry.column && values[entry.value.re as usize] != 0.0)
+            });
+            if off {
+                reader.error(
+                    gate.place,
+                    Fault::NotDiagonal {
+                        operator: operators[*index].name.clone(),
+                    },
+                );
+            }
+        }
+    }
+}
+
+impl Document {
+    /// How the phase of a drive's carrier counts; where it was not said both ways agree.
+    pub fn carrier_phase(&self, drive: usize) -> CarrierPhase {
+        self.drives[drive].carrier_phase.unwrap_or(CarrierPhase::RunsOn)
+    }
+
+    /// The file of the config itself.
+    pub fn source(&self) -> &super::place::SourceFile {
+        &self.sources.files()[0]
+    }
+}

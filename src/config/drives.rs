@@ -1,0 +1,369 @@
+//! `drives:`.
+
+use super::matrix::MatrixEntry;
+use super::messages::Fault;
+use super::place::Place;
+use super::reader::{ComplexQuantity, Quantity, Reader};
+use super::system::{Operator, System};
+use super::tape::{Formula, Register};
+use super::tree::Node;
+use crate::units::Dim;
+
+/// How the envelope enters the Hamiltonian.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Form {
+    /// A real cosine.
+    Linear,
+    /// One rotation sense only.
+    OneSided,
+    /// No carrier: the envelope itself multiplies the matrix.
+    Direct,
+}
+
+impl Form {
+    /// The word of the language.
+    pub fn word(self) -> &'static str {
+        FORMS[self as usize].0
+    }
+}
+
+const FORMS: [(&str, Form); 3] = [("linear", Form::Linear), ("one_sided", Form::OneSided), ("direct", Form::Direct)];
+
+/// What the phase of a carrier counts from.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum CarrierPhase {
+    /// The start of the sequence.
+    RunsOn,
+    /// The start of each pulse.
+    Restarts,
+}
+
+/// A carrier frequency, with its chirp.
+#[derive(Debug, Clone)]
+pub struct Carrier {
+    /// The frequency, or the centre of the chirp, Hz.
+    pub centre: Quantity,
+    /// The instantaneous frequency, Hz, as a formula of the time since the start of the pulse.
+    pub instantaneous: Option<Formula>,
+}
+
+/// Rabi frequency per peak voltage.
+#[derive(Debug, Clone, Copy)]
+pub struct Calibration {
+    /// Rabi frequency, Hz.
+    pub rabi: Quantity,
+    /// At this peak voltage, V.
+    pub volts: Quantity,
+}
+
+/// A drive.
+#[derive(Debug, Clone)]
+pub struct Drive {
+    /// Its name.
+    pub name: String,
+    /// Where the name stands.
+    pub place: Place,
+    /// The matrix as typed, not yet scaled by its reference entry.
+    pub entries: Vec<MatrixEntry>,
+    /// The pair to which `peak` and `turn` refer.
+    pub reference: Option<[usize; 2]>,
+    /// Where the reference pair stands.
+    pub reference_place: Place,
+    /// How the envelope enters.
+    pub form: Form,
+    /// The sense that cannot be resonant.
+    pub opposite: bool,
+    /// The carrier; none for a direct drive.
+    pub carrier: Option<Carrier>,
+    /// What its phase counts from, if said.
+    pub carrier_phase: Option<CarrierPhase>,
+    /// Volts to Rabi frequency.
+    pub calibration: Option<Calibration>,
+}
+
+const KEYS: [&str; 12] = [
+    "pair",
+    "operator",
+    "acts_on",
+    "strengths",
+    "reference_pair",
+    "form",
+    "sense",
+    "carrier",
+    "carrier_phase",
+    "calibration",
+    "field_direction",
+    "polarisation",
+];
+
+const HINTS: [(&str, &str); 8] = [
+    ("detuning", "The carrier itself says it: carrier: 0.3 MHz above gap(a, b)."),
+    ("frequency", "The frequency of a drive is its carrier."),
+    ("rabi", "The strength stands in the envelope, as peak or turn."),
+    ("peak", "The strength stands in the envelope, as peak or turn."),
+    ("amplitude", "The strength stands in the envelope, as peak or turn."),
+    ("phase", "The phase stands in the pulse of the sequence."),
+    ("levels", "The levels that a drive couples stand under pair."),
+    ("polarization", "Written polarisation."),
+];
+
+/// Reads `drives:`. A drive that cannot be read whole is left out, but its name is in the second list.
+pub fn read_drives(reader: &mut Reader, node: &Node, system: &System, operators: &[Operator]) -> (Vec<Drive>, Vec<String>) {
+    let Some(entries) = node.entries() else {
+        let fault = Fault::Shape {
+            what: "drives".to_string(),
+            expected: "a block of names".to_string(),
+            example: "rf: {pair: [down, up], carrier: 80 MHz}".to_string(),
+        };
+        reader.error(node.place, fault);
+        return (Vec::new(), Vec::new());
+    };
+    let names: Vec<String> = entries.iter().map(|entry| entry.key.clone()).collect();
+    super::system::warn_of_case(reader, "drive", &names, node.place);
+    let drives = entries
+        .iter()
+        .filter_map(|entry| read_drive(reader, &entry.key, entry.place, &entry.value, system, operators))
+        .collect();
+    (drives, names)
+}
+
+fn read_drive(reader: &mut Reader, name: &str, place: Place, node: &Node, system: &System, operators: &[Operator]) -> Option<Drive> {
+    let section = format!("drives / {name}");
+    let keys = reader.fields(node, &section, &KEYS, &HINTS)?;
+    for later in keys
+        .iter()
+        .filter(|key| matches!(key.key.as_str(), "field_direction" | "polarisation"))
+    {
+        reader.error(
+            later.place,
+            Fault::NotNow {
+                key: later.key.clone(),
+                section: section.clone(),
+            },
+        );
+    }
+    let form = match node.get("form") {
+        Some(form) => reader.word(form, &format!("{section} / form"), &FORMS),
+        None => {
+            reader.default(format!("{section} / form").replace(" / ", "."), "linear");
+            Some(Form::Linear)
+        }
+    };
+    let opposite = match node.get("sense") {
+        Some(sense) => reader
+            .word(sense, &format!("{section} / sense"), &[("opposite", true), ("resonant", false)])
+            .unwrap_or(false),
+        None => false,
+    };
+    let coupling = read_coupling(reader, name, node, &section, system, operators, form);
+    let carrier = node
+        .get("carrier")
+        .map(|carrier| read_carrier(reader, carrier, &format!("{section} / carrier")));
+    let carrier_phase = node.get("carrier_phase").map(|phase| {
+        let words = [("runs on", CarrierPhase::RunsOn), ("restarts", CarrierPhase::Restarts)];
+        reader.word(phase, &format!("{section} / carrier_phase"), &words)
+    });
+    let calibration = node
+        .get("calibration")
+        .map(|calibration| read_calibration(reader, calibration, &section));
+    match (form, &carrier) {
+        (Some(Form::Direct), Some(_)) => {
+            let at = node.get("carrier").map_or(place, |carrier| carrier.place);
+            reader.error(at, Fault::CarrierOfDirect { drive: name.to_string() });
+            return None;
+        }
+        (Some(Form::Linear | Form::OneSided), None) => {
+            reader.error(place, Fault::NeedsCarrier { drive: name.to_string() });
+            return None;
+        }
+        _ => {}
+    }
+    let (entries, reference, reference_place) = coupling?;
+    Some(Drive {
+        name: name.to_string(),
+        place,
+        entries,
+        reference,
+        reference_place,
+        form: form?,
+        opposite,
+        carrier: carrier.map_or(Some(None), |carrier| carrier.map(Some))?,
+        carrier_phase: carrier_phase.map_or(Some(None), |phase| phase.map(Some))?,
+        calibration: calibration.map_or(Some(None), |calibration| calibration.map(Some))?,
+    })
+}
+
+fn constant_entry(register: Register, row: usize, column: usize, place: Place) -> MatrixEntry {
+    MatrixEntry {
+        row,
+        column,
+        value: ComplexQuantity {
+            re: register,
+            im: None,
+            place,
+        },
+    }
+}
+
+/// The matrix as typed and its reference pair.
+fn read_coupling(
+    reader: &mut Reader,
+    name: &str,
+    node: &Node,
+    section: &str,
+    system: &System,
+    operators: &[Operator],
+    form: Option<Form>,
+) -> Option<(Vec<MatrixEntry>, Option<[usize; 2]>, Place)> {
+    let hint = Some("pair: [a, b] couples two levels; operator: name a named matrix; acts_on: ladder the natural coupling.");
+    let source = reader.one_of(node, &["pair", "operator", "acts_on", "strengths"], section, hint)?;
+    let reference = node
+        .get("reference_pair")
+        .map(|pair| (reader.pair(pair, "reference_pair"), pair.place));
+    let place = source.value.place;
+    let entries = match source.key.as_str() {
+        "pair" => {
+            let [a, b] = reader.pair(&source.value, &format!("{section} / pair"))?;
+            let one = reader.constant(1.0, place);
+            vec![constant_entry(one, a, b, place), constant_entry(one, b, a, place)]
+        }
+        "operator" => {
+            let names: Vec<String> = operators.iter().map(|operator| operator.name.clone()).collect();
+            operators[reader.name_among(&source.value, "operator", &names)?].entries.clone()
+        }
+        "strengths" => {
+            let mut entries = Vec::new();
+            for item in reader.list(&source.value, "strengths", "- {pair: [a, b], strength: 1}")? {
+                reader.fields(item, &format!("{section} / strengths"), &["pair", "strength"], &[])?;
+                let pair = reader
+                    .need(item, "pair", "strengths", "[a, b]")
+                    .and_then(|pair| reader.pair(pair, "pair"));
+                let strength = reader
+                    .need(item, "strength", "strengths", "1")
+                    .and_then(|strength| reader.plain(strength, "strength"));
+                let ([a, b], strength) = (pair?, strength?);
+                entries.push(constant_entry(strength.register, a, b, item.place));
+                entries.push(constant_entry(strength.register, b, a, item.place));
+            }
+            entries
+        }
+        _ => {
+            let what = reader.text(&source.value, &format!("{section} / acts_on"), "ladder")?;
+            let Some(rungs) = system.rungs.as_ref().filter(|_| what == "ladder") else {
+                let known = if system.rungs.is_some() {
+                    vec!["ladder".to_string()]
+                } else {
+                    Vec::new()
+                };
+                let hint = Some(format!(
+                    "This system is given by its {}; a natural coupling belongs to a ladder.",
+                    system.kind
+                ));
+                let fault = Fault::UnknownWord {
+                    what: "acts_on".to_string(),
+                    found: what.to_string(),
+                    known,
+                    near: None,
+                    hint,
+                };
+                reader.error(place, fault);
+                return None;
+            };
+            rungs
+                .iter()
+                .enumerate()
+                .flat_map(|(n, rung)| [constant_entry(*rung, n, n + 1, place), constant_entry(*rung, n + 1, n, place)])
+                .collect()
+        }
+    };
+    let mut pairs: Vec<[usize; 2]> = entries.iter().map(|e| [e.row.min(e.column), e.row.max(e.column)]).collect();
+    pairs.sort_unstable();
+    pairs.dedup();
+    let reference = match reference {
+        Some((pair, at)) => Some((pair?, at)),
+        // one pair alone is its own reference, in the order written
+        None if pairs.len() == 1 && pairs[0][0] != pairs[0][1] && (source.key != "operator" || form != Some(Form::Direct)) => {
+            Some(([entries[0].row, entries[0].column], place))
+        }
+        None => None,
+    };
+    // a drive of several pairs needs a reference unless its sizes are matrix elements; that is judged where it is used
+    if let Some((pair, at)) = reference {
+        if !pairs.contains(&[pair[0].min(pair[1]), pair[0].max(pair[1])]) && !pairs.is_empty() {
+            let (from, to) = (system.names[pair[0]].clone(), system.names[pair[1]].clone());
+            reader.error(
+                at,
+                Fault::NoSuchCoupling {
+                    drive: name.to_string(),
+                    from,
+                    to,
+                },
+            );
+            return None;
+        }
+    }
+    if source.key == "operator" && form != Some(Form::OneSided) {
+        hermitian(reader, name, &source.value, &entries)?;
+    }
+    Some((entries, reference.map(|(pair, _)| pair), reference.map_or(place, |(_, at)| at)))
+}
+
+fn hermitian(reader: &mut Reader, drive: &str, operator: &Node, entries: &[MatrixEntry]) -> Option<()> {
+    let values = reader.tape.evaluate(&[]);
+    let value = |e: &MatrixEntry| (values[e.value.re as usize], e.value.im.map_or(0.0, |im| values[im as usize]));
+    let largest = entries.iter().map(|e| value(e).0.hypot(value(e).1)).fold(0.0, f64::max);
+    let cells: std::collections::HashMap<_, _> = entries.iter().map(|e| ((e.row, e.column), value(e))).collect();
+    let off = cells.iter().any(|((row, column), (re, im))| {
+        let (other_re, other_im) = cells.get(&(*column, *row)).copied().unwrap_or((0.0, 0.0));
+        (re - other_re).hypot(im + other_im) > 1e-12 * largest
+    });
+    if off {
+        let operator_name = operator.text().unwrap_or_default().to_string();
+        reader.error(
+            operator.place,
+            Fault::NotHermitianDrive {
+                drive: drive.to_string(),
+                operator: operator_name,
+            },
+        );
+        return None;
+    }
+    Some(())
+}
+
+/// A carrier: a frequency, or `{centre, instantaneous}`.
+pub fn read_carrier(reader: &mut Reader, node: &Node, section: &str) -> Option<Carrier> {
+    if node.entries().is_none() {
+        let centre = reader.quantity(node, section, Dim::FREQUENCY)?;
+        return Some(Carrier {
+            centre,
+            instantaneous: None,
+        });
+    }
+    reader.fields(node, section, &["centre", "instantaneous"], &[("center", "Written centre.")])?;
+    let centre = reader
+        .need(node, "centre", section, "80 MHz")
+        .and_then(|centre| reader.quantity(centre, &format!("{section} / centre"), Dim::FREQUENCY));
+    let formula = reader
+        .need(node, "instantaneous", section, "line + reach * (2 * t / length - 1)")
+        .and_then(|formula| reader.formula(formula, &format!("{section} / instantaneous"), Dim::FREQUENCY));
+    Some(Carrier {
+        centre: centre?,
+        instantaneous: Some(formula?),
+    })
+}
+
+fn read_calibration(reader: &mut Reader, node: &Node, section: &str) -> Option<Calibration> {
+    let section = format!("{section} / calibration");
+    reader.fields(node, &section, &["rabi", "volts"], &[])?;
+    let rabi = reader
+        .need(node, "rabi", &section, "100 MHz")
+        .and_then(|rabi| reader.quantity(rabi, &format!("{section} / rabi"), Dim::FREQUENCY));
+    let volts = reader
+        .need(node, "volts", &section, "0.31 V peak")
+        .and_then(|volts| reader.sine_volts(volts, &format!("{section} / volts")));
+    Some(Calibration {
+        rabi: rabi?,
+        volts: volts?,
+    })
+}

@@ -1,0 +1,676 @@
+//! The only file that knows all stages: a checked [`Document`] becomes a [`Problem`], and its answer an outcome.
+//!
+//! The text is read, checked and laid out once, into a [`Plan`]. A point of a scan, a draw of noise and a step of a tune are
+//! then the same act: some named numbers get other values. [`Plan::mover`] finds out once which registers, matrices and curves
+//! these numbers touch; [`Mover::at`] replays those alone and keeps everything else.
+
+use std::collections::hash_map::Entry as MapEntry;
+use std::collections::HashMap;
+use std::sync::Arc;
+
+use crate::config::document::{not_finite, Document};
+use crate::config::drives::Form;
+use crate::config::envelopes::{Envelope, Samples, SizeWord};
+use crate::config::messages::{Fault, Mistake};
+use crate::config::record::Rows;
+use crate::config::state::State;
+use crate::config::tape::{Entry, Formula, Register};
+use crate::drive::chirp::Chirp;
+use crate::drive::coupling::{coupling, Coupling, CouplingFault};
+use crate::drive::envelope::{self, Curve, FormulaCurve, Parameters, Pieces, ShapeFault};
+use crate::drive::segments::{cut, PulseParts};
+use crate::drive::signal::Signal;
+use crate::drive::timeline::{lay_out, PlacedPulse, Timeline};
+use crate::model;
+use crate::problem::{Matrix, Moment, Problem, Segment, Vector};
+use crate::units::{cis_turns, rad_s, RAD_PER_TURN};
+
+/// Rows of the traces where the config does not say.
+const USUAL_ROWS: usize = 500;
+/// Most rows of the traces.
+const MOST_ROWS: f64 = 1e7;
+
+/// A config laid out once, ready for any number of points.
+#[derive(Debug)]
+pub struct Plan {
+    document: Document,
+}
+
+/// Everything that is known of one point before it is computed.
+#[derive(Debug, Clone)]
+pub struct Point<'p> {
+    /// Registers of the tape.
+    pub values: Vec<f64>,
+    /// Diagonal of the static Hamiltonian, Hz.
+    pub energies_hz: Vec<f64>,
+    /// Matrices of the drives.
+    pub couplings: Vec<Coupling>,
+    /// Curves of the envelopes.
+    pub curves: Vec<Arc<dyn Curve>>,
+    /// The sequence in time.
+    pub timeline: Timeline<'p>,
+    /// What the methods see.
+    pub problem: Problem,
+}
+
+/// Which parts of a point the moved numbers touch.
+#[derive(Debug, Clone)]
+struct Touched {
+    registers: Vec<Register>,
+    statics: bool,
+    couplings: bool,
+    curves: Vec<bool>,
+    start: bool,
+}
+
+/// A point whose numbers can be moved again and again.
+#[derive(Debug)]
+pub struct Mover<'p> {
+    document: &'p Document,
+    numbers: Vec<u32>,
+    touched: Touched,
+    set: Vec<Option<f64>>,
+    point: Point<'p>,
+}
+
+impl Plan {
+    /// Lays out a document.
+    pub fn new(document: Document) -> Plan {
+        Plan { document }
+    }
+
+    /// The document it was made from.
+    pub fn document(&self) -> &Document {
+        &self.document
+    }
+
+    /// The point with the numbers as written.
+    pub fn point(&self) -> Result<Point<'_>, Mistake> {
+        Ok(self.mover(&[])?.point)
+    }
+
+    /// A point in which the numbers of these names will be moved. `None` inside the error's place is never met: names that do
+    /// not exist are refused with the names that do.
+    pub fn mover(&self, names: &[&str]) -> Result<Mover<'_>, Mistake> {
+        let document = &self.document;
+        let mut numbers = Vec::new();
+        for name in names {
+            match document.numbers.iter().find(|number| number.name == *name) {
+                Some(number) => numbers.push(number_of(document, number.register)),
+                None => {
+                    let known: Vec<String> = document.numbers.iter().map(|number| number.name.clone()).collect();
+                    let near = crate::config::reader::near(name, known.iter().map(String::as_str));
+                    let fault = Fault::NoSuchNumber {
+                        name: (*name).to_string(),
+                        near,
+                        known,
+                    };
+                    return Err(Mistake::error(Default::default(), fault));
+                }
+            }
+        }
+        let values = document.tape.evaluate(&[]);
+        if let Some(mistake) = not_finite(&document.tape, &values, &document.sources) {
+            return Err(mistake);
+        }
+        let (statics, energies_hz) = statics(document, &values);
+        let couplings = couplings(document, &energies_hz, &values)?;
+        let curves: Vec<Arc<dyn Curve>> = document
+            .envelopes
+            .iter()
+            .map(|envelope| curve(envelope, &values))
+            .collect::<Result<_, _>>()?;
+        let problem = Problem {
+            statics: Arc::new(statics),
+            matrices: Arc::new(couplings.iter().map(|coupling| coupling.turning.clone()).collect()),
+            segments: Vec::new(),
+            terms: Vec::new(),
+            start: start_state(document, &values),
+            moments: Vec::new(),
+        };
+        let timeline = timeline(document, &values, &couplings, &curves)?;
+        let mut point = Point {
+            values,
+            energies_hz,
+            couplings,
+            curves,
+            timeline,
+            problem,
+        };
+        point.segment(document)?;
+        let touched = Touched::by(document, &numbers);
+        let size = document
+            .tape
+            .entries()
+            .iter()
+            .filter_map(|entry| {
+                if let Entry::Number(index, _) = entry {
+                    Some(index + 1)
+                } else {
+                    None
+                }
+            })
+            .max()
+            .unwrap_or(0);
+        Ok(Mover {
+            document,
+            numbers,
+            touched,
+            set: vec![None; size as usize],
+            point,
+        })
+    }
+
+    /// Whether moving these numbers changes the structure (a count of levels or of repeats), so that the file must be read anew.
+    pub fn is_structural(&self, names: &[&str]) -> bool {
+        let numbers: Vec<u32> = self
+            .document
+            .numbers
+            .iter()
+            .filter(|n| names.contains(&n.name.as_str()))
+            .map(|n| number_of(&self.document, n.register))
+            .collect();
+        let moved = self.document.tape.dependents(&numbers);
+        self.document.structural.iter().any(|register| moved.contains(register))
+    }
+}
+
+fn number_of(document: &Document, register: Register) -> u32 {
+    match document.tape.entries()[register as usize] {
+        Entry::Number(index, _) => index,
+        _ => u32::MAX,
+    }
+}
+
+impl<'p> Mover<'p> {
+    /// The point as it stands.
+    pub fn point(&self) -> &Point<'p> {
+        &self.point
+    }
+
+    /// Moves the numbers to `values` (SI, in the order of the names) and replays what they touch.
+    pub fn at(&mut self, values: &[f64]) -> Result<&Point<'p>, Mistake> {
+        for (number, value) in self.numbers.iter().zip(values) {
+            self.set[*number as usize] = Some(*value);
+        }
+        let (document, point, touched) = (self.document, &mut self.point, &self.touched);
+        document.tape.replay(&touched.registers, &self.set, &mut point.values);
+        if touched
+            .registers
+            .iter()
+            .any(|register| !point.values[*register as usize].is_finite())
+        {
+            if let Some(mistake) = not_finite(&document.tape, &point.values, &document.sources) {
+                return Err(mistake);
+            }
+        }
+        if touched.statics {
+            let (statics, energies) = statics(document, &point.values);
+            point.problem.statics = Arc::new(statics);
+            point.energies_hz = energies;
+        }
+        if touched.statics || touched.couplings {
+            point.couplings = couplings(document, &point.energies_hz, &point.values)?;
+            point.problem.matrices = Arc::new(point.couplings.iter().map(|coupling| coupling.turning.clone()).collect());
+        }
+        for (k, envelope) in document.envelopes.iter().enumerate().filter(|(k, _)| touched.curves[*k]) {
+            point.curves[k] = curve(envelope, &point.values)?;
+        }
+        if touched.start {
+            point.problem.start = start_state(document, &point.values);
+        }
+        point.timeline = timeline(document, &point.values, &point.couplings, &point.curves)?;
+        point.segment(document)?;
+        Ok(point)
+    }
+}
+
+impl Touched {
+    fn by(document: &Document, numbers: &[u32]) -> Touched {
+        let registers = document.tape.dependents(numbers);
+        let mut moved = vec![false; document.tape.entries().len()];
+        for register in &registers {
+            moved[*register as usize] = true;
+        }
+        let is = |register: Register| moved[register as usize];
+        let entries = |entries: &[crate::config::matrix::MatrixEntry]| entries.iter().any(|e| is(e.value.re) || e.value.im.is_some_and(is));
+        let formula = |formula: &Formula| {
+            formula
+                .tape
+                .entries()
+                .iter()
+                .any(|entry| matches!(entry, Entry::Outer(from) if is(*from)))
+        };
+        let curves = document
+            .envelopes
+            .iter()
+            .map(|envelope| {
+                envelope.times.iter().any(|(_, time)| is(time.register))
+                    || envelope.formula.as_ref().is_some_and(formula)
+                    || matches!(&envelope.samples, Some(Samples::List(list)) if list.iter().any(|register| is(*register)))
+            })
+            .collect();
+        let start = match &document.start {
+            State::Superposition(parts, _) => parts.iter().any(|(_, size, phase)| is(size.register) || is(phase.register)),
+            State::Level(_) | State::Amplitudes(_) => false,
+        };
+        Touched {
+            statics: entries(&document.system.entries),
+            couplings: document.drives.iter().any(|drive| entries(&drive.entries)),
+            curves,
+            start,
+            registers,
+        }
+    }
+}
+
+/// Drive, envelope and carrier of a pulse.
+type PartKey = (usize, usize, Option<usize>);
+
+fn part_key(pulse: &PlacedPulse) -> PartKey {
+    (pulse.drive, pulse.envelope, pulse.carrier)
+}
+
+impl Point<'_> {
+    /// Cuts the timeline into segments and finds the moments to record.
+    fn segment(&mut self, document: &Document) -> Result<(), Mistake> {
+        let parts = self.parts(document)?;
+        let (segments, terms) = cut(&self.timeline, &|pulse| parts[&part_key(pulse)].clone());
+        self.problem.moments = moments(document, &self.values, &segments, self.timeline.end.seconds())?;
+        self.problem.segments = segments;
+        self.problem.terms = terms;
+        Ok(())
+    }
+
+    /// What each combination of drive, envelope and carrier in use is made of.
+    fn parts(&self, document: &Document) -> Result<HashMap<PartKey, Arc<PulseParts>>, Mistake> {
+        let mut parts = HashMap::new();
+        for pulse in &self.timeline.pulses {
+            if let MapEntry::Vacant(vacant) = parts.entry(part_key(pulse)) {
+                vacant.insert(Arc::new(self.part(document, pulse)?));
+            }
+        }
+        Ok(parts)
+    }
+
+    fn part(&self, document: &Document, pulse: &PlacedPulse) -> Result<PulseParts, Mistake> {
+        let envelope = &document.envelopes[pulse.envelope];
+        let curve = self.curves[pulse.envelope].clone();
+        let peak_hz = self.peak_hz(document, pulse.drive, pulse.envelope)?;
+        let form = document.drives[pulse.drive].form;
+        // R/2 turns with the carrier; a direct drive's entry is halved in its matrix instead
+        let half_rabi_hz = if form == Form::Direct { peak_hz } else { 0.5 * peak_hz };
+        let quadrature_s = envelope.derivative.map_or(0.0, |derivative| {
+            let (factor, against) = (
+                self.values[derivative.factor.register as usize],
+                self.values[derivative.against.register as usize],
+            );
+            -factor / (RAD_PER_TURN * against)
+        });
+        if !quadrature_s.is_finite() {
+            let place = envelope.derivative.map_or(envelope.place, |derivative| derivative.against.place);
+            return Err(Mistake::error(
+                place,
+                Fault::ZeroDivision {
+                    text: "against is 0".to_string(),
+                },
+            ));
+        }
+        let chirp = pulse.carrier.and_then(|index| {
+            let carrier = &self.timeline.carriers[index];
+            let formula = carrier.written.instantaneous.as_ref()?;
+            Some(Arc::new(Chirp::new(formula.bind(&self.values), carrier.centre_hz, pulse.length_s)))
+        });
+        let mut pieces = curve.pieces();
+        if chirp.is_some() {
+            if let Pieces::Constant(value) = pieces {
+                // constant in size, but its phase is not
+                pieces = Pieces::Held {
+                    starts_s: [0.0].into(),
+                    values: [value].into(),
+                };
+            }
+        }
+        let signal = matches!(pieces, Pieces::Smooth { .. }).then(|| {
+            Arc::new(Signal {
+                curve: curve.clone(),
+                held: None,
+                quadrature_s,
+                chirp: chirp.clone(),
+            })
+        });
+        Ok(PulseParts {
+            curve,
+            pieces,
+            half_rabi_hz,
+            quadrature_s,
+            chirp,
+            signal,
+        })
+    }
+
+    /// The size of an envelope on a drive at envelope 1: the Rabi frequency R of the reference pair, or the entry itself of a
+    /// direct drive, Hz.
+    pub fn peak_hz(&self, document: &Document, drive: usize, envelope: usize) -> Result<f64, Mistake> {
+        let (drive, written) = (&document.drives[drive], &document.envelopes[envelope]);
+        let size = self.values[written.size.register as usize];
+        match written.size_word {
+            SizeWord::Peak => Ok(size),
+            SizeWord::MatrixElement if drive.form == Form::OneSided => Ok(2.0 * size),
+            SizeWord::MatrixElement => Ok(size),
+            SizeWord::Turn => {
+                let area = self.curves[envelope].area_s();
+                let whole = self.curves[envelope].length_s() * self.curves[envelope].largest();
+                if size != 0.0 && !(area.abs() > 1e-12 * whole) {
+                    return Err(Mistake::error(
+                        written.size_place,
+                        Fault::NoArea {
+                            envelope: written.name.clone(),
+                        },
+                    ));
+                }
+                Ok(if size == 0.0 { 0.0 } else { size / area })
+            }
+            SizeWord::Volts => match drive.calibration {
+                Some(calibration) => {
+                    let per_volt = self.values[calibration.rabi.register as usize] / self.values[calibration.volts.register as usize];
+                    if !per_volt.is_finite() {
+                        return Err(Mistake::error(
+                            calibration.volts.place,
+                            Fault::ZeroDivision {
+                                text: "volts of the calibration are 0".to_string(),
+                            },
+                        ));
+                    }
+                    Ok(size * per_volt)
+                }
+                None => Err(Mistake::error(
+                    written.size_place,
+                    Fault::NoCalibration {
+                        envelope: written.name.clone(),
+                        drive: drive.name.clone(),
+                    },
+                )),
+            },
+        }
+    }
+}
+
+/// The static Hamiltonian in rad/s, and its diagonal in Hz.
+fn statics(document: &Document, values: &[f64]) -> (Matrix, Vec<f64>) {
+    let hz = model::dense(document.system.names.len(), &document.system.entries, values);
+    let energies = hz.diagonal().iter().map(|entry| entry.re).collect();
+    (hz.map(|entry| entry * rad_s(1.0)), energies)
+}
+
+fn couplings(document: &Document, energies: &[f64], values: &[f64]) -> Result<Vec<Coupling>, Mistake> {
+    let one = |drive: &crate::config::drives::Drive| {
+        coupling(drive, energies, values).map_err(|fault| match fault {
+            CouplingFault::ReferenceZero([from, to]) => {
+                let names = &document.system.names;
+                let fault = Fault::NoSuchCoupling {
+                    drive: drive.name.clone(),
+                    from: names[from].clone(),
+                    to: names[to].clone(),
+                };
+                Mistake::error(drive.reference_place, fault)
+            }
+            CouplingFault::NotHermitian => Mistake::error(
+                drive.place,
+                Fault::NotHermitianDrive {
+                    drive: drive.name.clone(),
+                    operator: "its operator".to_string(),
+                },
+            ),
+        })
+    };
+    document.drives.iter().map(one).collect()
+}
+
+/// The curve of an envelope.
+fn curve(envelope: &Envelope, values: &[f64]) -> Result<Arc<dyn Curve>, Mistake> {
+    let time = |key: &str| envelope.time(key).map(|quantity| values[quantity.register as usize]);
+    if let Some(formula) = &envelope.formula {
+        let length = time("length").unwrap_or(0.0);
+        if !(length > 0.0) {
+            return Err(shape_mistake(
+                envelope,
+                ShapeFault::NotPositive {
+                    key: "length",
+                    value: length,
+                },
+            ));
+        }
+        let curve = FormulaCurve::new(formula.bind(values), length);
+        if let Some(t) = curve.gap_s() {
+            let text = format!("the formula at t = {}", crate::config::messages::short_with_unit(t, "s"));
+            return Err(Mistake::error(formula.place, Fault::NotFinite { text }));
+        }
+        return Ok(Arc::new(curve));
+    }
+    let (samples, sample_times_s) = match &envelope.samples {
+        Some(Samples::List(list)) => (Some(list.iter().map(|register| values[*register as usize]).collect()), None),
+        Some(Samples::File { times_s, values }) => (Some(values.clone()), Some(times_s.clone())),
+        None => (None, None),
+    };
+    let parameters = Parameters {
+        length_s: time("length"),
+        rise_s: time("rise"),
+        field_sigma_s: time("field_sigma"),
+        field_fwhm_s: time("field_fwhm"),
+        intensity_fwhm_s: time("intensity_fwhm"),
+        sech_time_s: time("sech_time"),
+        rise_10_90_s: time("rise_10_90"),
+        cut_at_s: time("cut_at"),
+        edge: envelope.edge,
+        samples,
+        sample_times_s,
+        between: envelope.between,
+    };
+    envelope::build(envelope.shape, &parameters).map_err(|fault| shape_mistake(envelope, fault))
+}
+
+/// A shape's refusal at the line of the key it concerns.
+fn shape_mistake(envelope: &Envelope, fault: ShapeFault) -> Mistake {
+    let name = envelope.name.clone();
+    let at = |key: &str| envelope.time(key).map_or(envelope.place, |quantity| quantity.place);
+    let samples = |reason: String| Mistake::error(envelope.place, Fault::Samples { reason });
+    match fault {
+        ShapeFault::NotPositive { key, value } => Mistake::error(
+            at(key),
+            Fault::NotPositive {
+                what: format!("envelopes / {name} / {key}"),
+                value,
+                unit: "s".to_string(),
+            },
+        ),
+        ShapeFault::EdgesTooLong { rise_s, length_s } => Mistake::error(at("rise"), Fault::EdgesTooLong { rise_s, length_s }),
+        ShapeFault::FlatLift { .. } => Mistake::error(at("cut_at"), Fault::FlatLift { envelope: name }),
+        ShapeFault::NothingToLift => {
+            let known = vec!["step".to_string()];
+            let hint = Some("This curve starts at 0, so there is no pedestal to take off.".to_string());
+            Mistake::error(
+                envelope.place,
+                Fault::UnknownWord {
+                    what: "edge".to_string(),
+                    found: "lift".to_string(),
+                    known,
+                    near: None,
+                    hint,
+                },
+            )
+        }
+        ShapeFault::UnknownShape { word } => Mistake::error(
+            envelope.place,
+            Fault::UnknownWord {
+                what: "shape".to_string(),
+                found: word,
+                known: Vec::new(),
+                near: None,
+                hint: None,
+            },
+        ),
+        ShapeFault::Missing { key } => {
+            let fault = Fault::MissingKey {
+                key: key.to_string(),
+                section: format!("envelopes / {name}"),
+                write: format!("{key}: value"),
+                why: None,
+            };
+            Mistake::error(envelope.place, fault)
+        }
+        ShapeFault::NotOneOf { keys, .. } => {
+            let keys = keys.iter().map(|key| (*key).to_string()).collect();
+            Mistake::error(
+                envelope.place,
+                Fault::OneOfMissing {
+                    keys,
+                    section: format!("envelopes / {name}"),
+                    hint: None,
+                },
+            )
+        }
+        ShapeFault::TooFewSamples { found, needed } => samples(format!("there are {found}, and at least {needed} are needed")),
+        ShapeFault::SampleNotFinite { index, .. } => samples(format!("sample number {} is not finite", index + 1)),
+        ShapeFault::TimesNotAsMany { times, samples: count } => samples(format!("there are {times} times for {count} samples")),
+        ShapeFault::FirstTimeNotZero { .. } => samples("the first time must be 0".to_string()),
+        ShapeFault::TimesNotAscending { index, .. } => {
+            samples(format!("the time of sample number {} is not later than the one before", index + 1))
+        }
+        ShapeFault::UnequalSteps { index, .. } => samples(format!(
+            "band limited needs equal steps, and the step before sample number {} differs",
+            index + 1
+        )),
+        ShapeFault::EndsBeforeLastSample { length_s, last_s } => {
+            let length = crate::config::messages::short_with_unit(length_s, "s");
+            samples(format!(
+                "length is {length}, but the last sample starts at {}",
+                crate::config::messages::short_with_unit(last_s, "s")
+            ))
+        }
+        ShapeFault::LengthDisagrees { length_s, last_s } => {
+            let length = crate::config::messages::short_with_unit(length_s, "s");
+            samples(format!(
+                "length is {length}, but the last sample stands at {}",
+                crate::config::messages::short_with_unit(last_s, "s")
+            ))
+        }
+    }
+}
+
+fn timeline<'p>(
+    document: &'p Document,
+    values: &[f64],
+    couplings: &[Coupling],
+    curves: &[Arc<dyn Curve>],
+) -> Result<Timeline<'p>, Mistake> {
+    let reference: Vec<f64> = couplings.iter().map(|coupling| coupling.reference_turns).collect();
+    let lengths: Vec<f64> = curves.iter().map(|curve| curve.length_s()).collect();
+    lay_out(document, values, &reference, &lengths)
+}
+
+/// Amplitudes of a state, norm 1.
+pub fn amplitudes(size: usize, state: &State, values: &[f64]) -> Vector {
+    let mut vector = Vector::zeros(size);
+    match state {
+        State::Level(level) => vector[*level] = 1.0.into(),
+        State::Superposition(parts, _) => {
+            for (level, amplitude, phase) in parts {
+                vector[*level] += cis_turns(values[phase.register as usize]) * values[amplitude.register as usize];
+            }
+            vector.normalize_mut();
+        }
+        State::Amplitudes(list) => {
+            for (k, (re, im)) in list.iter().enumerate() {
+                vector[k] = num_complex::Complex64::new(*re, *im);
+            }
+        }
+    }
+    vector
+}
+
+fn start_state(document: &Document, values: &[f64]) -> Vector {
+    amplitudes(document.system.names.len(), &document.start, values)
+}
+
+/// The moments to record: those asked for, and the end of the sequence.
+fn moments(document: &Document, values: &[f64], segments: &[Segment], end_s: f64) -> Result<Vec<Moment>, Mistake> {
+    let close = 1e-12 * end_s;
+    let steps = |step: f64, count: usize| {
+        let mut times: Vec<f64> = (0..=count).map(|k| k as f64 * step).collect();
+        match times.last_mut() {
+            Some(last) if *last >= end_s - close => *last = end_s,
+            _ => times.push(end_s),
+        }
+        times
+    };
+    let mut times = match &document.record.rows {
+        Rows::Unsaid => steps(end_s / USUAL_ROWS as f64, USUAL_ROWS),
+        Rows::Every(every) => {
+            let step = values[every.register as usize];
+            if !(step > 0.0) {
+                return Err(Mistake::error(
+                    every.place,
+                    Fault::NotPositive {
+                        what: "record / every".to_string(),
+                        value: step,
+                        unit: "s".to_string(),
+                    },
+                ));
+            }
+            let rows = (end_s + close) / step;
+            if rows > MOST_ROWS {
+                return Err(Mistake::error(every.place, Fault::TooManyRows { rows, limit: MOST_ROWS }));
+            }
+            steps(step, rows.floor() as usize)
+        }
+        Rows::At(list) => {
+            let mut times = Vec::new();
+            for at in list {
+                let time_s = values[at.register as usize];
+                if time_s < 0.0 {
+                    let found = crate::config::messages::short_with_unit(time_s, "s");
+                    return Err(Mistake::error(
+                        at.place,
+                        Fault::OutOfRange {
+                            what: "a recorded time".to_string(),
+                            found,
+                            wanted: "0 or later".to_string(),
+                        },
+                    ));
+                }
+                if time_s > end_s + close {
+                    return Err(Mistake::error(at.place, Fault::AfterEnd { time_s, end_s }));
+                }
+                times.push(time_s);
+            }
+            times.sort_by(f64::total_cmp);
+            times.dedup();
+            times
+        }
+    };
+    match times.last() {
+        Some(last) if *last >= end_s - close => {}
+        _ => times.push(end_s),
+    }
+    let mut segment = 0;
+    let last = segments.len() - 1;
+    Ok(times
+        .into_iter()
+        .map(|time_s| {
+            let at = crate::problem::Instant::at(time_s);
+            while segment < last && at.since(segments[segment].start) > segments[segment].length_s - close {
+                segment += 1;
+            }
+            // at the very end the exact length counts, not the rounded time
+            let here = &segments[segment];
+            let offset = at.since(here.start).clamp(0.0, here.length_s);
+            let offset_s = if segment == last && here.length_s - offset <= close {
+                here.length_s
+            } else {
+                offset
+            };
+            Moment { segment, offset_s, time_s }
+        })
+        .collect())
+}
