@@ -141,8 +141,9 @@ impl Load {
         load
     }
 
-    /// What rounding leaves uncertain in any recorded number: that of the entries of H over the whole time, that of the sums over the stretches.
-    pub(super) fn floor(&self) -> f64 {
-        f64::EPSILON * (4.0 + 0.5 * self.lab_rad + 0.25 * (self.segments as f64) + (self.moments as f64).sqrt() * 0.0)
+    /// What rounding leaves uncertain in any recorded number: that of the entries of H over the whole time, and that of `sums`
+    /// products one after the other, which all err in the same sense where the factors are alike.
+    pub(super) fn floor(&self, sums: u64) -> f64 {
+        f64::EPSILON * (4.0 + 0.5 * self.lab_rad + 0.25 * sums as f64)
     }
 }

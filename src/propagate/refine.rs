@@ -43,7 +43,8 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
     let mut pictures = Pictures::new(problem);
     let load = Load::of(problem, demand, asked.accuracy, &mut pictures);
     let (method, reason) = choose(&load, asked.method);
-    let floor = load.floor();
+    // Runge-Kutta sums are compensated; all other steps are products, one after the other.
+    let floor_of = |work: &Work| load.floor(if load.changing > 0 && method != Method::Smooth { work.steps } else { load.segments as u64 });
     let mut left = MOST_MULTIPLICATIONS;
     let mut products = 0;
     let mut go = |fineness: Fineness| {
@@ -57,24 +58,25 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
     let start = Fineness { tolerance: (0.1 * asked.accuracy).max(least), pieces: 1, doublings: 0 };
     let mut coarse = go(start);
     let mut fine = go(finer(start, method, least));
-    let error_figure = loop {
+    let (error_figure, floor) = loop {
+        let floor = floor_of(&coarse.work);
         let spoilt = coarse.work.exhausted() || fine.work.exhausted();
         let error_figure = if spoilt { f64::INFINITY } else { largest_figure(coarse.recorder.numbers(), fine.recorder.numbers(), floor) };
         if error_figure <= asked.accuracy || spoilt || !error_figure.is_finite() || load.changing == 0 {
-            break error_figure;
+            break (error_figure, floor);
         }
         let Some(wanted) = tighten(&coarse, &fine, error_figure / asked.accuracy, method, least) else {
-            break error_figure;
+            break (error_figure, floor);
         };
         let ahead = expected_cost(&coarse, &fine, wanted, method);
         if ahead > fine.work.left {
-            break error_figure;
+            break (error_figure, floor);
         }
         let (next_coarse, reused) = if wanted == fine.fineness { (None, true) } else { (Some(go(wanted)), false) };
         let next_fine = go(finer(wanted, method, least));
         let worse = next_fine.work.exhausted() || next_coarse.as_ref().is_some_and(|ran| ran.work.exhausted());
         if worse {
-            break error_figure;
+            break (error_figure, floor);
         }
         coarse = match next_coarse {
             Some(ran) if !reused => ran,

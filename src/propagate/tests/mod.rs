@@ -1,6 +1,7 @@
 //! Tests of the whole room: problems are built by hand here, without any other room.
 
 mod closed_forms;
+mod collocation;
 mod laws;
 mod reference;
 mod speed;
