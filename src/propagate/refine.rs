@@ -11,6 +11,8 @@ use crate::problem::Problem;
 
 /// Multiplications that all runs of one problem may use together: a minute or so on one core.
 const MOST_MULTIPLICATIONS: f64 = 2e10;
+/// First tolerance of the step control over the accuracy asked for: the estimates of order 5 and 3 exceed the error by some 1e4.
+const FIRST_TOLERANCE: f64 = 10.0;
 /// Most doublings of equal steps.
 const MOST_DOUBLINGS: u32 = 22;
 
@@ -55,7 +57,7 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         Ran { recorder, fineness, work }
     };
     let least = least_tolerance(&load);
-    let start = Fineness { tolerance: (0.1 * asked.accuracy).max(least), pieces: 1, doublings: 0 };
+    let start = Fineness { tolerance: (FIRST_TOLERANCE * asked.accuracy).max(least), pieces: 1, doublings: 0 };
     let mut coarse = go(start);
     let mut fine = go(finer(start, method, least));
     let (error_figure, floor) = loop {
