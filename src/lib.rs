@@ -6,4 +6,5 @@ pub mod drive;
 pub mod model;
 pub mod plan;
 pub mod problem;
+pub mod propagate;
 pub mod units;

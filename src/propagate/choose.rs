@@ -1,0 +1,147 @@
+//! The table of methods and the automatic choice between them.
+
+use super::load::Load;
+
+/// How stretches are carried where H changes; constant ones are always done by their exponential.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Method {
+    /// Matrix exponentials; where H changes, of its midpoint values.
+    ConstantSteps,
+    /// Runge-Kutta 8(5,3) with step control.
+    Smooth,
+    /// Magnus expansion of order 6.
+    Geometric,
+}
+
+impl Method {
+    /// The word for it in a config and in results.
+    pub fn word(self) -> &'static str {
+        match self {
+            Method::ConstantSteps => "constant steps",
+            Method::Smooth => "smooth",
+            Method::Geometric => "geometric",
+        }
+    }
+
+    /// The method of a word, if there is one.
+    pub fn from_word(word: &str) -> Option<Method> {
+        METHODS.iter().map(|row| row.method).find(|method| method.word() == word)
+    }
+}
+
+/// What one method can do and costs.
+#[derive(Debug, Clone, Copy)]
+pub struct Row {
+    /// The method.
+    pub method: Method,
+    /// Its word.
+    pub word: &'static str,
+    /// What it is, in a sentence.
+    pub about: &'static str,
+    /// Whether it gives integrals of populations over time.
+    pub time_in: bool,
+    /// Whether it is exact to rounding as long as H is constant in the stillest picture.
+    pub exact_when_constant: bool,
+    /// Order of the error in the step where H changes.
+    pub order: u32,
+    /// Estimated cost of one run in ns on the machine it was calibrated on; only ratios matter.
+    pub cost_ns: fn(&Load) -> f64,
+}
+
+/// All methods.
+pub const METHODS: &[Row] = &[
+    Row {
+        method: Method::ConstantSteps,
+        word: "constant steps",
+        about: "matrix exponentials of constant stretches; where H changes, midpoint slices",
+        time_in: true,
+        exact_when_constant: true,
+        order: 2,
+        cost_ns: slices_ns,
+    },
+    Row {
+        method: Method::Smooth,
+        word: "smooth",
+        about: "Runge-Kutta 8(5,3) with step control",
+        time_in: true,
+        exact_when_constant: true,
+        order: 8,
+        cost_ns: smooth_ns,
+    },
+    Row {
+        method: Method::Geometric,
+        word: "geometric",
+        about: "Magnus expansion of order 6, unitary at every step",
+        time_in: false,
+        exact_when_constant: true,
+        order: 6,
+        cost_ns: geometric_ns,
+    },
+];
+
+/// How many times more steps an accuracy takes than 1e-8 does, at an order.
+fn accuracy_factor(load: &Load, order: f64) -> f64 {
+    (1e-8 / load.accuracy.max(1e-14)).powf(1.0 / order)
+}
+
+fn slices_ns(load: &Load) -> f64 {
+    let levels = load.levels as f64;
+    let exact = 200.0 * (load.segments as f64) + 50.0 * load.moments as f64;
+    let slices = 1e3 * (load.still_turns + load.rises) * (1.0 + load.swing_turns).sqrt() * accuracy_factor(load, 2.0);
+    exact + slices * (60.0 + 15.0 * levels.powi(3))
+}
+
+fn smooth_ns(load: &Load) -> f64 {
+    let levels = load.levels as f64;
+    let steps = (4.0 * load.coupling_turns + 3.0 * load.entry_turns + 4.0 * load.rises + 4.0 * load.changing as f64) * accuracy_factor(load, 8.0);
+    let dense = 12.0 * (30.0 + 40.0 * levels + 10.0 * levels * load.columns as f64);
+    (steps + load.moments as f64) * dense
+}
+
+fn geometric_ns(load: &Load) -> f64 {
+    let levels = load.levels as f64;
+    let steps = (1.0 * load.swing_turns + 4.0 * load.still_turns + 6.0 * load.rises + 8.0 * load.changing as f64) * accuracy_factor(load, 6.0);
+    let exponential = if load.levels == 2 { 250.0 } else { 600.0 + 60.0 * levels.powi(3) };
+    (steps + load.moments as f64) * (exponential + 10.0 * levels * load.columns as f64)
+}
+
+/// The method for a problem, and why.
+pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
+    let spent = |method: Method| METHODS.iter().any(|row| row.method == method && row.time_in);
+    if let Some(method) = wished {
+        if load.time_in && load.changing > 0 && !spent(method) {
+            return (Method::Smooth, format!("{} was asked for, but it gives no time spent in a level; smooth does", method.word()));
+        }
+        return (method, "asked for in the config".to_string());
+    }
+    if load.changing == 0 {
+        let stretches = if load.segments == 1 { "the one stretch" } else { "each stretch" };
+        return (Method::ConstantSteps, format!("H is constant through {stretches} of {} (in a turning picture where a carrier is on), so exponentials are exact", load.segments));
+    }
+    let (smooth, geometric) = (smooth_ns(load), geometric_ns(load));
+    if geometric < smooth && !load.time_in {
+        let why = format!(
+            "H swings the state through {} turns but turns through only {} itself and its envelopes rise or fall {} times, with {} levels",
+            round(load.swing_turns), round(load.still_turns), round(load.rises), load.levels
+        );
+        return (Method::Geometric, why);
+    }
+    let mut why = format!(
+        "the couplings swing the state through {} turns while H itself turns {} times and its envelopes rise or fall {} times, with {} levels",
+        round(load.coupling_turns), round(load.entry_turns), round(load.rises), load.levels
+    );
+    if geometric < smooth {
+        why += "; geometric steps would be cheaper but give no time spent in a level";
+    }
+    (Method::Smooth, why)
+}
+
+fn round(number: f64) -> String {
+    if number >= 100.0 || number == 0.0 {
+        format!("{number:.0}")
+    } else if number >= 1.0 {
+        format!("{number:.1}")
+    } else {
+        format!("{number:.1e}")
+    }
+}

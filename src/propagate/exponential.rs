@@ -1,0 +1,205 @@
+//! exp(-i H tau) of a constant Hermitian H, acting on columns.
+//!
+//! H in rad/s, `dim` x `dim`, column after column; tau in s; columns of `dim` amplitudes. The mean of the diagonal is taken off first and
+//! comes back as a phase in turns. Error: a few units of rounding times (1 + ||H - mean|| tau), the second part being the rounding of H itself.
+//!
+//! * diagonal H: phases;
+//! * two levels: cos(w tau) - i sin(w tau)/w (H - mean), w the half distance of the eigenvalues; small entries keep their relative accuracy;
+//! * ||H - mean|| tau up to 1: Taylor series to rounding;
+//! * else: eigenvectors and phases reduced in turns, so that the norm may be as large as it likes.
+
+use nalgebra::SymmetricEigen;
+use num_complex::Complex64;
+
+use crate::problem::Matrix;
+use crate::units::{cis_turns, sin_cos_turns, RAD_PER_TURN};
+
+const ZERO: Complex64 = Complex64::new(0.0, 0.0);
+
+/// exp(-i H tau), prepared for any tau up to the one it was made for.
+#[derive(Debug, Clone)]
+pub(super) enum Flow {
+    Phases {
+        turns_hz: Vec<f64>,
+    },
+    Two {
+        mean_hz: f64,
+        half_gap: f64,
+        coupling: Complex64,
+        rate: f64,
+    },
+    Series {
+        mean_hz: f64,
+        /// -i (H - mean), column after column.
+        generator: Vec<Complex64>,
+        dim: usize,
+    },
+    Modes {
+        turns_hz: Vec<f64>,
+        vectors: Matrix,
+    },
+    /// The eigenvectors were not found: H holds what is not a number.
+    Broken,
+}
+
+/// Largest norm times tau for which the Taylor series is summed.
+const SERIES_UP_TO_RAD: f64 = 1.0;
+
+impl Flow {
+    /// Prepares exp(-i `h` tau) for tau up to `longest_s`; `modes` asks for eigenvectors whatever the size (needed by [`Flow::dwell`]).
+    pub fn new(h: &[Complex64], dim: usize, longest_s: f64, modes: bool) -> Self {
+        if dim == 2 && !modes {
+            let (a, b) = (h[0].re, h[3].re);
+            let half_gap = 0.5 * (a - b);
+            let rate = half_gap.hypot(h[2].re.hypot(h[2].im));
+            return Flow::Two { mean_hz: 0.5 * (a + b) / RAD_PER_TURN, half_gap, coupling: h[2], rate };
+        }
+        let mean = (0..dim).map(|j| h[j * (dim + 1)].re).sum::<f64>() / dim as f64;
+        let mut bound: f64 = 0.0;
+        let mut diagonal = true;
+        for column in 0..dim {
+            let mut sum = 0.0;
+            for row in 0..dim {
+                let entry = h[row + dim * column];
+                if row == column {
+                    sum += (entry.re - mean).abs();
+                } else {
+                    sum += entry.re.abs() + entry.im.abs();
+                    diagonal &= entry == ZERO;
+                }
+            }
+            bound = if sum > bound || sum.is_nan() { sum } else { bound };
+        }
+        if !bound.is_finite() {
+            return Flow::Broken;
+        }
+        if diagonal {
+            return Flow::Phases { turns_hz: (0..dim).map(|j| h[j * (dim + 1)].re / RAD_PER_TURN).collect() };
+        }
+        if bound * longest_s <= SERIES_UP_TO_RAD && !modes {
+            let mut generator: Vec<Complex64> = h.iter().map(|entry| Complex64::new(entry.im, -entry.re)).collect();
+            for j in 0..dim {
+                generator[j * (dim + 1)] = Complex64::new(0.0, mean - h[j * (dim + 1)].re);
+            }
+            return Flow::Series { mean_hz: mean / RAD_PER_TURN, generator, dim };
+        }
+        let mut centred = Matrix::from_column_slice(dim, dim, h);
+        for j in 0..dim {
+            centred[(j, j)] = Complex64::new(centred[(j, j)].re - mean, 0.0);
+        }
+        match SymmetricEigen::try_new(centred, f64::EPSILON, 200 * dim) {
+            Some(eigen) => Flow::Modes { turns_hz: eigen.eigenvalues.iter().map(|value| (value + mean) / RAD_PER_TURN).collect(), vectors: eigen.eigenvectors },
+            None => Flow::Broken,
+        }
+    }
+
+    /// `to` = exp(-i H tau) `from`, one column; `room` is scratch of any length. Gives the matrix-vector products used.
+    pub fn act(&self, tau_s: f64, from: &[Complex64], to: &mut [Complex64], room: &mut Vec<Complex64>) -> u64 {
+        match self {
+            Flow::Phases { turns_hz } => {
+                for ((out, f), psi) in to.iter_mut().zip(turns_hz).zip(from) {
+                    *out = psi * cis_turns(-super::picture::turns(*f, tau_s));
+                }
+                1
+            }
+            Flow::Two { mean_hz, half_gap, coupling, rate } => {
+                let (sin, cos) = sin_cos_turns(super::picture::turns(rate / RAD_PER_TURN, tau_s));
+                let s = if *rate == 0.0 { tau_s } else { sin / rate };
+                let phase = cis_turns(-super::picture::turns(*mean_hz, tau_s));
+                let off = coupling * s;
+                let lean = s * half_gap;
+                let (a, b) = (from[0], from[1]);
+                to[0] = phase * (Complex64::new(cos, -lean) * a + Complex64::new(off.im, -off.re) * b);
+                to[1] = phase * (Complex64::new(-off.im, -off.re) * a + Complex64::new(cos, lean) * b);
+                1
+            }
+            Flow::Series { mean_hz, generator, dim } => series(*mean_hz, generator, *dim, tau_s, from, to, room),
+            Flow::Modes { turns_hz, vectors } => {
+                let dim = turns_hz.len();
+                let columns = vectors.as_slice();
+                to.fill(ZERO);
+                for (mode, f) in columns.chunks_exact(dim).zip(turns_hz) {
+                    let mut share = ZERO;
+                    for (v, psi) in mode.iter().zip(from) {
+                        share += v.conj() * psi;
+                    }
+                    share *= cis_turns(-super::picture::turns(*f, tau_s));
+                    for (out, v) in to.iter_mut().zip(mode) {
+                        *out += v * share;
+                    }
+                }
+                2
+            }
+            Flow::Broken => {
+                to.fill(Complex64::new(f64::NAN, f64::NAN));
+                1
+            }
+        }
+    }
+
+    /// Adds the integral of |(exp(-i H t) from)_j|^2 over t from 0 to tau, in s; made with `modes`.
+    pub fn dwell(&self, tau_s: f64, from: &[Complex64], into_s: &mut [f64]) {
+        let Flow::Modes { turns_hz, vectors } = self else {
+            // Made with `modes`, what is not `Modes` is diagonal (or broken, and the state shows that).
+            for (time, psi) in into_s.iter_mut().zip(from) {
+                *time += psi.norm_sqr() * tau_s;
+            }
+            return;
+        };
+        let dim = turns_hz.len();
+        let shares: Vec<Complex64> = (0..dim).map(|a| (0..dim).map(|j| vectors[(j, a)].conj() * from[j]).sum()).collect();
+        for a in 0..dim {
+            for (j, time) in into_s.iter_mut().enumerate() {
+                *time += (vectors[(j, a)] * shares[a]).norm_sqr() * tau_s;
+            }
+            for b in 0..a {
+                // Integral of exp(-2 pi i f t) over t from 0 to tau: tau exp(-pi i f tau) sin(pi f tau)/(pi f tau).
+                let half = super::picture::turns(0.5 * (turns_hz[a] - turns_hz[b]), tau_s);
+                let whole = 0.5 * (turns_hz[a] - turns_hz[b]) * tau_s;
+                let sinc = if whole.abs() < 1e-9 { 1.0 } else { sin_cos_turns(half).0 / (RAD_PER_TURN * whole) };
+                let integral = cis_turns(-half) * (tau_s * sinc);
+                for (j, time) in into_s.iter_mut().enumerate() {
+                    *time += 2.0 * (vectors[(j, a)] * shares[a] * (vectors[(j, b)] * shares[b]).conj() * integral).re;
+                }
+            }
+        }
+    }
+}
+
+fn series(mean_hz: f64, generator: &[Complex64], dim: usize, tau_s: f64, from: &[Complex64], to: &mut [Complex64], room: &mut Vec<Complex64>) -> u64 {
+    room.clear();
+    room.extend_from_slice(from);
+    room.resize(2 * dim, ZERO);
+    to.copy_from_slice(from);
+    let (mut power, mut next) = room.split_at_mut(dim);
+    let mut products = 0;
+    for order in 1..=40 {
+        next.fill(ZERO);
+        let scale = tau_s / f64::from(order);
+        for (column, psi) in generator.chunks_exact(dim).zip(power.iter()) {
+            if *psi == ZERO {
+                continue;
+            }
+            let psi = psi * scale;
+            for (out, entry) in next.iter_mut().zip(column) {
+                *out += entry * psi;
+            }
+        }
+        products += 1;
+        let mut largest: f64 = 0.0;
+        for (out, term) in to.iter_mut().zip(next.iter()) {
+            *out += term;
+            largest = largest.max(term.re.abs()).max(term.im.abs());
+        }
+        std::mem::swap(&mut power, &mut next);
+        // Entries that only higher orders reach must keep their relative accuracy when tiny, hence a threshold far below rounding.
+        if largest < 1e-30 {
+            break;
+        }
+    }
+    let phase = cis_turns(-super::picture::turns(mean_hz, tau_s));
+    for out in to.iter_mut() {
+        *out *= phase;
+    }
+    products
+}

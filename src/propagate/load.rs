@@ -1,0 +1,149 @@
+//! How large, fast and long a problem is: the numbers that the choice of a method compares, and that bound the rounding error.
+
+use super::asked::Demand;
+use super::picture::{Kind, Picture, Pictures};
+use crate::problem::{Envelope, Matrix, Problem, Term};
+use crate::units::RAD_PER_TURN;
+
+/// Sizes of a problem; turns are dimensionless, summed over the stretches where H changes in every picture.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Load {
+    /// Levels.
+    pub levels: usize,
+    /// Columns carried: the state, and the propagator if wanted.
+    pub columns: usize,
+    /// Whether times spent are wanted.
+    pub time_in: bool,
+    /// Segments.
+    pub segments: usize,
+    /// Moments to record.
+    pub moments: usize,
+    /// Accuracy asked for.
+    pub accuracy: f64,
+    /// Segments in which H changes.
+    pub changing: usize,
+    /// How long H changes, s.
+    pub changing_s: f64,
+    /// Turns through which the couplings alone swing the state.
+    pub coupling_turns: f64,
+    /// Turns of the fastest entry where nothing is left on the diagonal.
+    pub entry_turns: f64,
+    /// Turns through which the whole of H swings the state in the stillest picture.
+    pub swing_turns: f64,
+    /// Turns of H itself in the stillest picture.
+    pub still_turns: f64,
+    /// How often the envelopes rise or fall by all of their height.
+    pub rises: f64,
+    /// Size of H in the frame of the problem, its mean taken off, times time, over everything, rad.
+    pub lab_rad: f64,
+    /// Largest turning frequency times time, over everything, turns.
+    pub carrier_turns: f64,
+}
+
+/// Bound of ||H - middle of the diagonal|| of a picture over the segment, in Hz; smooth envelopes by samples.
+pub(super) fn size_hz(picture: &Picture, terms: &[Term], length_s: f64) -> f64 {
+    let heights: Vec<f64> = terms.iter().map(|term| height(&term.envelope, length_s).0).collect();
+    let mut rows = vec![0.0; picture.dim];
+    for turning in &picture.turnings {
+        let most = turning.term.map_or(1.0, |k| heights[k]);
+        for part in &turning.parts {
+            rows[part.row] += most * part.value.norm();
+            rows[part.column] += most * part.value.norm();
+        }
+    }
+    let coupling = rows.into_iter().fold(0.0, f64::max);
+    (coupling + half_range(picture.diagonal.iter().copied())) / RAD_PER_TURN
+}
+
+const SAMPLES: u32 = 32;
+
+/// Largest sampled |c| in rad/s, and the sampled way of c over that.
+fn height(envelope: &Envelope, length_s: f64) -> (f64, f64) {
+    match envelope {
+        Envelope::Constant(value) => (value.norm(), 0.0),
+        Envelope::Smooth { .. } => {
+            let values: Vec<_> = (0..=SAMPLES).map(|i| envelope.at(length_s * f64::from(i) / f64::from(SAMPLES))).collect();
+            let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
+            let way: f64 = values.windows(2).map(|pair| (pair[1] - pair[0]).norm()).sum();
+            (most, if most > 0.0 { way / most } else { 0.0 })
+        }
+    }
+}
+
+fn half_range(values: impl Iterator<Item = f64>) -> f64 {
+    let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), value| (value.min(low), value.max(high)));
+    if high >= low {
+        0.5 * (high - low)
+    } else {
+        0.0
+    }
+}
+
+/// Largest sum of moduli in a row of B + adjoint, the diagonal counted too.
+fn row_bound(b: &Matrix) -> f64 {
+    (0..b.nrows()).map(|j| (0..b.ncols()).map(|k| b[(j, k)].norm() + b[(k, j)].norm()).sum::<f64>()).fold(0.0, f64::max)
+}
+
+impl Load {
+    pub(super) fn of(problem: &Problem, demand: &Demand, accuracy: f64, pictures: &mut Pictures) -> Self {
+        let n = problem.dim();
+        let a = &problem.statics;
+        let bounds: Vec<f64> = problem.matrices.iter().map(row_bound).collect();
+        let off = (0..n).map(|j| (0..n).filter(|k| *k != j).map(|k| a[(j, k)].norm()).sum::<f64>()).fold(0.0, f64::max);
+        let resting_rad_s = off + half_range((0..n).map(|j| a[(j, j)].re));
+        let mut load = Load {
+            levels: n,
+            columns: if demand.propagator { n + 1 } else { 1 },
+            time_in: demand.time_in,
+            segments: problem.segments.len(),
+            moments: problem.moments.len(),
+            accuracy,
+            changing: 0,
+            changing_s: 0.0,
+            coupling_turns: 0.0,
+            entry_turns: 0.0,
+            swing_turns: 0.0,
+            still_turns: 0.0,
+            rises: 0.0,
+            lab_rad: 0.0,
+            carrier_turns: 0.0,
+        };
+        for segment in &problem.segments {
+            let (terms, length_s) = (problem.terms_of(segment), segment.length_s);
+            let tied = pictures.of(segment, Kind::Tied);
+            let mut rad_s = resting_rad_s;
+            let mut carrier: f64 = 0.0;
+            if tied.constant(terms) {
+                for term in terms {
+                    rad_s += bounds[term.matrix] * height(&term.envelope, length_s).0;
+                    carrier = carrier.max(term.turns_hz.abs());
+                }
+            } else {
+                let mut rises: f64 = 0.0;
+                for term in terms {
+                    let (most, way) = height(&term.envelope, length_s);
+                    rad_s += bounds[term.matrix] * most;
+                    rises = rises.max(way);
+                    carrier = carrier.max(term.turns_hz.abs());
+                }
+                let free = pictures.of(segment, Kind::Free);
+                load.changing += 1;
+                load.changing_s += length_s;
+                load.coupling_turns += size_hz(&free, terms, length_s) * length_s;
+                load.entry_turns += free.fastest_hz * length_s;
+                load.swing_turns += size_hz(&tied, terms, length_s) * length_s;
+                load.still_turns += tied.fastest_hz * length_s;
+                load.rises += rises;
+            }
+            load.lab_rad += rad_s * length_s;
+            load.carrier_turns += carrier * length_s;
+        }
+        load
+    }
+
+    /// What rounding leaves uncertain in any recorded number: that of the entries of H over the whole time, and that of `sums`
+    /// products one after the other, which all err in the same sense where the factors are alike.
+    pub(super) fn floor(&self, sums: u64) -> f64 {
+        f64::EPSILON * (4.0 + 0.5 * self.lab_rad + 0.25 * sums as f64)
+    }
+}

@@ -1,0 +1,43 @@
+//! A [`Problem`](crate::problem::Problem) (rad/s, s) and a wanted accuracy come in; recorded numbers at two resolutions, their
+//! measured error figure, the method and the reason for it leave. States reach the caller's [`Recorder`] one moment at a time in
+//! the frame of the problem, so nothing here grows with the number of rows.
+//!
+//! | file | what it does |
+//! |---|---|
+//! | `asked.rs`, `solved.rs` | what a caller hands over, what he gets back |
+//! | `choose.rs` | the table [`METHODS`] and the automatic choice |
+//! | `refine.rs` | [`solve`]: two resolutions, error figure, tightening |
+//! | `run.rs` | one run over all segments at one resolution |
+//! | `picture.rs` | the turning diagonal picture of a segment |
+//! | `load.rs` | how large, fast and long a problem is |
+//! | `exponential.rs` | exp(-i H tau) of a constant Hermitian H |
+//! | `constant.rs` | stretches of constant H |
+//! | `even_steps.rs` | equal steps between moments, shared by the next two |
+//! | `slices.rs` | midpoint slices, order 2 |
+//! | `geometric.rs` | Magnus expansion, order 6 |
+//! | `smooth.rs`, `dormand_prince.rs` | Runge-Kutta 8(5,3) and its coefficients |
+//! | `cross_check.rs` | the independent second route |
+
+mod asked;
+mod choose;
+mod constant;
+mod cross_check;
+mod dormand_prince;
+mod even_steps;
+mod exponential;
+mod geometric;
+mod load;
+mod picture;
+mod refine;
+mod run;
+mod slices;
+mod smooth;
+mod solved;
+#[cfg(test)]
+mod tests;
+
+pub use asked::{Asked, Demand, Recorder};
+pub use choose::{Method, Row, METHODS};
+pub use load::Load;
+pub use refine::{figure, solve};
+pub use solved::{CrossCheck, Resolution, Solved};

@@ -1,0 +1,191 @@
+//! The error figure against the true error over random problems.
+
+use super::*;
+use crate::problem::Envelope;
+
+/// A small generator of random numbers (G. Marsaglia, Journal of Statistical Software 8, 14 (2003)), so that failures replay.
+pub struct Random(pub u64);
+
+impl Random {
+    fn next(&mut self) -> u64 {
+        self.0 ^= self.0 << 13;
+        self.0 ^= self.0 >> 7;
+        self.0 ^= self.0 << 17;
+        self.0
+    }
+
+    /// Even between 0 and 1.
+    pub fn unit(&mut self) -> f64 {
+        (self.next() >> 11) as f64 / 9_007_199_254_740_992.0
+    }
+
+    pub fn between(&mut self, low: f64, high: f64) -> f64 {
+        low + (high - low) * self.unit()
+    }
+
+    /// Even in the logarithm.
+    pub fn size(&mut self, low: f64, high: f64) -> f64 {
+        low * (high / low).powf(self.unit())
+    }
+
+    pub fn chance(&mut self, of: f64) -> bool {
+        self.unit() < of
+    }
+
+    pub fn below(&mut self, count: usize) -> usize {
+        (self.next() >> 33) as usize % count
+    }
+
+    fn complex(&mut self) -> Complex64 {
+        Complex64::new(self.between(-1.0, 1.0), self.between(-1.0, 1.0))
+    }
+}
+
+fn envelope(random: &mut Random, length: f64) -> Envelope {
+    let peak = random.size(0.03, 8.0);
+    let wide = length * random.size(0.1, 1.0);
+    let middle = length * random.between(0.2, 0.8);
+    let sweep = random.between(-6.0, 6.0) / (length * length);
+    match random.below(6) {
+        0 | 1 => Envelope::Constant(random.complex() * rad_s(peak)),
+        2 => shaped(peak, move |t| crate::units::sin_cos_turns(0.5 * t / length).0.powi(2)),
+        3 => shaped(peak, move |t| (-((t - middle) / wide).powi(2)).exp()),
+        4 => shaped(peak, move |t| 1.0 / ((t - middle) / (0.3 * wide)).cosh()),
+        _ => Envelope::Smooth {
+            shape: Arc::new(Shape(Box::new(move |t| {
+                crate::units::cis_turns(sweep * (t - middle).powi(2)) * crate::units::sin_cos_turns(0.5 * t / length).0.powi(2)
+            }))),
+            since_s: 0.0,
+            scale: re(rad_s(peak)),
+        },
+    }
+}
+
+/// Two to six levels, one to four segments, drives of every kind; times of order 1 s, frequencies up to some tens of Hz.
+pub fn random_problem(random: &mut Random) -> Problem {
+    let dim = 2 + random.below(5);
+    let spread = random.size(0.5, 30.0);
+    let energies: Vec<f64> = (0..dim).map(|_| random.between(-spread, spread)).collect();
+    let mut statics = diagonal(&energies);
+    if random.chance(0.3) {
+        for j in 0..dim - 1 {
+            let v = random.complex() * random.size(0.03, 3.0);
+            statics[(j, j + 1)] = v;
+            statics[(j + 1, j)] = v.conj();
+        }
+    }
+    let mut matrices = Vec::new();
+    let mut carriers = Vec::new();
+    for _ in 0..1 + random.below(2) {
+        let kind = random.below(4);
+        let mut b = Matrix::zeros(dim, dim);
+        for j in 0..dim - 1 {
+            let v = random.complex();
+            b[(j + 1, j)] = v;
+            if kind == 1 {
+                b[(j, j + 1)] = v.conj();
+            }
+        }
+        if kind == 3 {
+            b = Matrix::from_fn(dim, dim, |_, _| random.complex() * 0.5);
+        }
+        let gap = energies[1] - energies[0];
+        carriers.push(match kind {
+            2 => 0.0,
+            _ if random.chance(0.4) => gap + random.between(-1.0, 1.0),
+            _ => random.size(0.1, 30.0),
+        });
+        matrices.push(b);
+    }
+    let segments = (0..1 + random.below(4))
+        .map(|_| {
+            let length = random.between(0.1, 0.8);
+            let terms: Vec<Term> = (0..matrices.len())
+                .filter(|_| random.unit() < 0.75)
+                .collect::<Vec<_>>()
+                .into_iter()
+                .map(|k| term(k, carriers[k], random.between(-0.5, 0.5), envelope(random, length)))
+                .collect();
+            let mut offsets: Vec<f64> = (0..random.below(4)).map(|_| length * random.unit()).collect();
+            offsets.sort_by(f64::total_cmp);
+            (length, terms, offsets)
+        })
+        .collect();
+    problem(&statics, matrices, segments)
+}
+
+struct Tally {
+    problems: u32,
+    dishonest: u32,
+    loose: u32,
+    missed: u32,
+    /// Figure over accuracy of each problem.
+    filled: Vec<f64>,
+    worst: f64,
+    runs: [u32; 3],
+}
+
+fn tally(seed: u64, problems: u32, wish: impl Fn(&mut Random) -> Option<Method>) -> Tally {
+    let mut random = Random(seed);
+    let mut tally = Tally { problems, dishonest: 0, loose: 0, missed: 0, filled: Vec::new(), worst: 0.0, runs: [0; 3] };
+    for number in 0..problems {
+        let case = random_problem(&mut random);
+        let method = wish(&mut random);
+        let accuracy = if method == Some(Method::ConstantSteps) { random.size(1e-7, 1e-4) } else { random.size(1e-11, 1e-6) };
+        let mut exact = Kept::default();
+        collocation::solve(&case, 0.8, &mut exact);
+        let solved = solve(&case, accuracy, method);
+        let pairs = solved.recorded.numbers().iter().zip(exact.numbers());
+        let error = pairs.map(|(a, b)| (a - b).abs()).fold(0.0, f64::max);
+        tally.runs[match solved.method {
+            Method::ConstantSteps => 0,
+            Method::Smooth => 1,
+            Method::Geometric => 2,
+        }] += 1;
+        // 3e-14 is what the collocation itself loses to rounding.
+        if error > solved.error_figure + 3e-14 {
+            tally.dishonest += 1;
+            eprintln!(
+                "number {number}, {:?} of {} levels at {accuracy:.1e}: error {error:.2e}, figure {:.2e}, {:?}",
+                solved.method, case.dim(), solved.error_figure, solved.resolutions
+            );
+        }
+        tally.filled.push(solved.error_figure / accuracy);
+        tally.worst = tally.worst.max(error / solved.error_figure);
+        tally.loose += u32::from(solved.error_figure > 10.0 * error.max(1e-12));
+        if !solved.reached {
+            tally.missed += 1;
+            eprintln!(
+                "number {number}, {:?} of {} levels at {accuracy:.1e}: not reached, figure {:.2e}, floor {:.1e}, {:?}",
+                solved.method, case.dim(), solved.error_figure, solved.floor, solved.resolutions
+            );
+        }
+    }
+    tally
+}
+
+#[test]
+fn prop_error_figure_is_honest_and_close() {
+    let all = tally(0x9e37_79b9_7f4a_7c15, 60, |random| match random.below(6) {
+        0 => Some(Method::Smooth),
+        1 => Some(Method::Geometric),
+        _ => None,
+    });
+    assert!(all.dishonest <= 1 && all.loose <= 12 && all.missed == 0, "{} dishonest, {} loose, {} missed", all.dishonest, all.loose, all.missed);
+}
+
+/// The calibration itself: `cargo test --release calibrate -- --ignored --nocapture`.
+#[test]
+#[ignore = "takes minutes; prints the table that the tolerances come from"]
+fn calibrate_error_figure() {
+    for method in [None, Some(Method::Smooth), Some(Method::Geometric), Some(Method::ConstantSteps)] {
+        let mut all = tally(0x1234_5678_9abc_def1, 400, |_| method);
+        all.filled.sort_by(f64::total_cmp);
+        let part = |of: f64| all.filled[(of * (all.filled.len() - 1) as f64) as usize];
+        let percent = |count: u32| 100.0 * f64::from(count) / f64::from(all.problems);
+        println!(
+            "{method:?}: {} problems, {:?} by [slices, smooth, geometric], honest {:.1} %, within ten times {:.1} %, missed {}, worst error over figure {:.2}, figure over accuracy {:.1e} {:.1e} {:.1e} (tenth, half, nine tenths)",
+            all.problems, all.runs, 100.0 - percent(all.dishonest), 100.0 - percent(all.loose), all.missed, all.worst, part(0.1), part(0.5), part(0.9)
+        );
+    }
+}
