@@ -3,6 +3,7 @@
 
 pub mod config;
 pub mod drive;
+pub mod measure;
 pub mod model;
 pub mod plan;
 pub mod problem;

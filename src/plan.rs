@@ -23,7 +23,7 @@ use crate::drive::signal::Signal;
 use crate::drive::timeline::{lay_out, PlacedPulse, Timeline};
 use crate::model;
 use crate::problem::{Matrix, Moment, Problem, Segment, Vector};
-use crate::units::{cis_turns, rad_s, RAD_PER_TURN};
+use crate::units::{rad_s, RAD_PER_TURN};
 
 /// Rows of the traces where the config does not say.
 const USUAL_ROWS: usize = 500;
@@ -569,28 +569,8 @@ fn timeline<'p>(
     lay_out(document, values, &reference, &lengths)
 }
 
-/// Amplitudes of a state, norm 1.
-pub fn amplitudes(size: usize, state: &State, values: &[f64]) -> Vector {
-    let mut vector = Vector::zeros(size);
-    match state {
-        State::Level(level) => vector[*level] = 1.0.into(),
-        State::Superposition(parts, _) => {
-            for (level, amplitude, phase) in parts {
-                vector[*level] += cis_turns(values[phase.register as usize]) * values[amplitude.register as usize];
-            }
-            vector.normalize_mut();
-        }
-        State::Amplitudes(list) => {
-            for (k, (re, im)) in list.iter().enumerate() {
-                vector[k] = num_complex::Complex64::new(*re, *im);
-            }
-        }
-    }
-    vector
-}
-
 fn start_state(document: &Document, values: &[f64]) -> Vector {
-    amplitudes(document.system.names.len(), &document.start, values)
+    model::amplitudes(document.system.names.len(), &document.start, values)
 }
 
 /// The moments to record: those asked for, and the end of the sequence.

@@ -1,0 +1,135 @@
+//! From states to the recorded numbers, one file per quantity.
+//!
+//! Comes in: the state at each moment, in the frame of the run, and at the end the propagator. Leaves: one row of numbers per
+//! moment and a list of final numbers, each with its name (the heading of its column) and unit. Nothing is integrated here.
+
+mod adiabatic;
+mod bloch;
+mod coherence;
+mod energy;
+mod fidelity;
+mod gate;
+mod mean;
+mod outside;
+mod population;
+mod propagator;
+mod recorder;
+mod time_in;
+
+use crate::config::document::Document;
+use crate::config::record::Item;
+use crate::problem::{Matrix, Moment, Problem, Vector};
+use crate::propagate::Demand;
+
+pub use gate::GateFigures;
+pub use recorder::TraceRecorder;
+
+/// What a quantity sees at a moment.
+pub struct Seen<'a> {
+    /// The moment.
+    pub moment: &'a Moment,
+    /// Amplitudes in the frame of the run.
+    pub state: &'a Vector,
+    /// Seconds spent in each level so far; empty unless asked for.
+    pub time_in_s: &'a [f64],
+}
+
+/// One column of the traces.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Column {
+    /// Heading, such as `population_up`.
+    pub name: String,
+    /// `1`, `Hz` or `s`.
+    pub unit: &'static str,
+    /// What an error is judged against: 1, or a power of two near the size of the operator or the length of the run.
+    pub scale: f64,
+    /// Path in `final` of result.json, such as `["populations", "up"]`; several columns of one path make a list.
+    pub path: Vec<String>,
+    /// Which panel of the plot it belongs to.
+    pub panel: &'static str,
+    /// How the plot calls it.
+    pub label: String,
+}
+
+impl Column {
+    /// A column without dimension.
+    pub fn plain(name: String, path: &[&str], panel: &'static str, label: String) -> Column {
+        Column { name, unit: "1", scale: 1.0, path: path.iter().map(|part| (*part).to_string()).collect(), panel, label }
+    }
+}
+
+/// A recorded quantity: its columns, and their numbers at a moment.
+pub trait Quantity {
+    /// Its columns, in order.
+    fn columns(&self) -> Vec<Column>;
+    /// Appends one number per column.
+    fn see(&self, seen: &Seen, row: &mut Vec<f64>);
+}
+
+/// A quantity of the whole sequence, made from its propagator.
+pub trait Last {
+    /// Names and scales of its numbers.
+    fn names(&self) -> Vec<String>;
+    /// Appends one number per name.
+    fn see(&self, propagator: &Matrix, numbers: &mut Vec<f64>);
+}
+
+/// Everything that one run records.
+pub struct Observables<'a> {
+    /// Quantities of each moment, in the order written.
+    pub quantities: Vec<Box<dyn Quantity + 'a>>,
+    /// Quantities of the propagator.
+    pub last: Vec<Box<dyn Last + 'a>>,
+    /// The gate, if one is judged.
+    pub gate: Option<gate::GateJudge>,
+    /// Whether the propagator is written out.
+    pub propagator: bool,
+    /// What the methods must supply.
+    pub demand: Demand,
+}
+
+/// The quantities that a config records, with the numbers of one point.
+pub fn observables<'a>(document: &Document, values: &[f64], energies_hz: &[f64], problem: &'a Problem) -> Observables<'a> {
+    let names = &document.system.names;
+    let mut found = Observables { quantities: Vec::new(), last: Vec::new(), gate: None, propagator: false, demand: Demand::default() };
+    for item in &document.record.items {
+        let quantity: Box<dyn Quantity> = match item {
+            Item::Populations(levels) => Box::new(population::Populations::new(names, levels)),
+            Item::OutsideOf(levels) => Box::new(outside::Outside::new(levels.clone())),
+            Item::Coherence(pairs) => Box::new(coherence::Coherences::new(names, pairs)),
+            Item::Bloch(pairs) => Box::new(bloch::BlochVectors::new(names, pairs)),
+            Item::MeanOf(operators) => Box::new(mean::Means::new(document, values, operators)),
+            Item::Energy => Box::new(energy::Energy::new(problem)),
+            Item::TimeIn(levels) => {
+                found.demand.time_in = true;
+                Box::new(time_in::TimeIn::new(names, levels, problem.length_s()))
+            }
+            Item::AdiabaticPopulations => Box::new(adiabatic::AdiabaticPopulations::new(names, problem)),
+            Item::Fidelity(state) => Box::new(fidelity::Fidelity::new(crate::model::amplitudes(names.len(), state, values))),
+            Item::Propagator => {
+                found.demand.propagator = true;
+                found.propagator = true;
+                found.last.push(Box::new(propagator::WholePropagator::new(names.len())));
+                continue;
+            }
+            Item::Gate(gate) => {
+                found.demand.propagator = true;
+                let judge = gate::GateJudge::new(document, gate, values, energies_hz);
+                found.last.push(Box::new(judge.clone()));
+                found.gate = Some(judge);
+                continue;
+            }
+        };
+        found.quantities.push(quantity);
+    }
+    found
+}
+
+/// The power of two at or above a size, so that scaling by it is exact; 1 for 0.
+fn binary_scale(size: f64) -> f64 {
+    if size > 0.0 && size.is_finite() {
+        size.log2().ceil().exp2()
+    } else {
+        1.0
+    }
+}
