@@ -3,4 +3,5 @@
 
 pub mod drive;
 pub mod problem;
+pub mod report;
 pub mod units;
