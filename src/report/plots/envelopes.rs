@@ -96,12 +96,13 @@ pub fn envelopes(figure: &EnvelopesFigure) -> Result<Drawn, PlotError> {
     let marks = Marks::lay(&figure.marks, &view.windows);
     scene.height = heights(&mut rows, top, marks.height(), drives.len() > ROWS);
     let (first, bottom) = (rows[0].vertical.top, rows[rows.len() - 1].vertical.bottom);
-    marks.guides(&mut scene, first, bottom + marks.height());
+    marks.guides(&mut scene, first, bottom);
     for row in &rows {
         row.draw(&mut scene, &view, right);
     }
-    time_axis(&mut scene, &view, bottom);
-    marks.draw(&mut scene, bottom + FOOT - 36.0);
+    name_gaps(&mut scene, &view, &rows[0].vertical);
+    marks.draw(&mut scene, bottom + 8.0);
+    time_axis(&mut scene, &view, bottom + marks.height());
     foot(&mut scene, figure, &view, drives.len());
     scene.finish()
 }
@@ -200,7 +201,7 @@ fn holder(view: &View, pulse: &EnvelopeCurve) -> Option<usize> {
 }
 
 fn stretches(pulse: &EnvelopeCurve, values: &[f64], window: &Window, budget: usize, from_zero: bool) -> Vec<Run> {
-    let length = pulse.end_s() - pulse.start_s;
+    let length = pulse.time_s[pulse.time_s.len() - 1];
     let width = (window.x(pulse.end_s()) - window.x(pulse.start_s)).max(8.0);
     let bounds = columns(&pulse.time_s, f64::MIN, f64::MAX, 1);
     let bounds = match column_count(pulse.time_s.len(), budget, width) {
@@ -308,7 +309,7 @@ fn sweep_row(drive: &str, mine: &[(usize, &EnvelopeCurve)], view: &View, budget:
         }]);
     }
     let whole = extent(in_windows.iter().flatten().flat_map(|curve| &curve.runs));
-    let label = format!("{}: frequency less that at the centre", font::fit(drive, LABEL, 500.0));
+    let label = format!("{}: carrier sweep", font::fit(drive, LABEL, 500.0));
     Row {
         label,
         vertical: Vertical::linear(None, whole, "Hz"),
@@ -324,7 +325,6 @@ fn timings(mine: &[(usize, &EnvelopeCurve)], view: &View) -> (Vec<Timing>, usize
         view.windows[0].left,
         view.windows[view.windows.len() - 1].right + if view.after.is_some() { GAP } else { 0.0 },
     );
-    // Each text may reach half way to the next pulse: the shortest form that all of a row need is seldom the longest.
     let mut lanes = Lanes::new(2, 16.0);
     let mut timings = Vec::new();
     for (holder, pulse) in mine {
@@ -334,7 +334,6 @@ fn timings(mine: &[(usize, &EnvelopeCurve)], view: &View) -> (Vec<Timing>, usize
         let text = forms(pulse, start - origin, end - origin).into_iter().find_map(|text| {
             let width = font::width(&text, TICK);
             let begin = (at[1] - width / 2.0).clamp(left, (right - width).max(left));
-            // Only the last form may be wider than its pulse by more than a little, else long texts crowd out their neighbours.
             lanes.take(begin, begin + width).map(|lane| (lane, begin, text))
         });
         timings.push(Timing { at, text });
@@ -349,18 +348,19 @@ fn forms(pulse: &EnvelopeCurve, start: f64, end: f64) -> Vec<String> {
     let name = font::fit(&pulse.envelope, TICK, 300.0);
     let length = with_digits(end - start, "s", 4);
     let times = format!(
-        "{} to {} {}, centre {}",
+        "{} to {} {}, centre {} {}",
         text(start),
         text(end),
         display.unit,
-        text(start / 2.0 + end / 2.0)
+        text(start / 2.0 + end / 2.0),
+        display.unit
     );
     vec![format!("{name}: {times}"), format!("{name}, {length}"), length]
 }
 
 fn heights(rows: &mut [Row], top: f64, marks: f64, more: bool) -> f64 {
     let head = |row: &Row| LINE + 12.0 + LINE * row.lanes as f64;
-    let fixed = top + rows.iter().map(head).sum::<f64>() + FOOT + marks + if more { LINE } else { 0.0 };
+    let fixed = top - 6.0 + rows.iter().map(head).sum::<f64>() + FOOT + marks + if more { LINE } else { 0.0 };
     let height = ((HEIGHT - fixed) / rows.len() as f64).max(120.0).floor();
     let mut y = top;
     for row in rows.iter_mut() {
@@ -368,7 +368,7 @@ fn heights(rows: &mut [Row], top: f64, marks: f64, more: bool) -> f64 {
         row.vertical = row.vertical.clone().between(start, start + height);
         y = start + height + 6.0;
     }
-    y - 6.0 + FOOT + marks + if more { LINE } else { 0.0 }
+    (y - 6.0 + FOOT + marks + if more { LINE } else { 0.0 }).max(HEIGHT)
 }
 
 impl Row {
@@ -385,18 +385,6 @@ impl Row {
         }
         for (window, here) in view.windows.iter().zip(&self.curves) {
             curves(scene, window, &self.vertical, here);
-        }
-        let gaps = view.gaps.iter().chain(view.after.iter());
-        for (window, gap) in view.windows.iter().zip(gaps) {
-            let middle = (window.right + GAP / 2.0, (top + bottom) / 2.0);
-            scene.text(&font::fit(gap, TICK, GAP - 12.0), middle, TICK, INK, Anchor::Middle);
-            if !gap.starts_with('…') {
-                let y = middle.1 + 22.0;
-                for (tip, way) in [(window.right + 14.0, 8.0), (window.right + GAP - 14.0, -8.0)] {
-                    scene.line(vec![(tip + way, y - 5.0), (tip, y), (tip + way, y + 5.0)], 1.4, AXIS);
-                }
-                scene.line(vec![(window.right + 14.0, y), (window.right + GAP - 14.0, y)], 1.4, AXIS);
-            }
         }
         if let Some(last) = self.curves.last() {
             names(scene, right, &self.vertical, last, NAME_LIMIT);
@@ -424,6 +412,22 @@ impl Row {
     }
 }
 
+/// Says in the first row how much time, or how many windows, lie between the windows.
+fn name_gaps(scene: &mut Scene, view: &View, vertical: &Vertical) {
+    let gaps = view.gaps.iter().chain(view.after.iter());
+    for (window, gap) in view.windows.iter().zip(gaps) {
+        let middle = (window.right + GAP / 2.0, (vertical.top + vertical.bottom) / 2.0);
+        scene.text(&font::fit(gap, TICK, GAP - 12.0), middle, TICK, INK, Anchor::Middle);
+        if !gap.starts_with('…') {
+            let y = middle.1 + 22.0;
+            for (tip, way) in [(window.right + 14.0, 8.0), (window.right + GAP - 14.0, -8.0)] {
+                scene.line(vec![(tip + way, y - 5.0), (tip, y), (tip + way, y + 5.0)], 1.4, AXIS);
+            }
+            scene.line(vec![(window.right + 14.0, y), (window.right + GAP - 14.0, y)], 1.4, AXIS);
+        }
+    }
+}
+
 fn time_axis(scene: &mut Scene, view: &View, y: f64) {
     for (window, origin) in view.windows.iter().zip(&view.origins) {
         let display = engineering((window.high - origin).abs().max((window.low - origin).abs()), "s");
@@ -432,8 +436,6 @@ fn time_axis(scene: &mut Scene, view: &View, y: f64) {
         let middle = ((window.left + window.right) / 2.0, y + 52.0);
         let label = if view.broken && *origin != 0.0 {
             format!("{} after {}", display.unit, with_digits(*origin, "s", 9))
-        } else if view.broken {
-            display.unit.clone()
         } else {
             with_unit("time", &display.unit)
         };

@@ -94,7 +94,12 @@ impl Vertical {
                 .map(|decade| (10f64.powf(decade), format!("10{}", superscript(decade.round() as i32))))
                 .collect();
         }
-        let shown = ticks(self.display.shown(self.low), self.display.shown(self.high), wanted);
+        let (low, high) = (self.display.shown(self.low), self.display.shown(self.high));
+        // One tick tells no scale: finer steps until there are three.
+        let shown = (wanted..wanted + 4)
+            .map(|wanted| ticks(low, high, wanted))
+            .find(|shown| shown.len() >= 3);
+        let shown = shown.unwrap_or_else(|| ticks(low, high, wanted));
         shown.into_iter().map(|(value, text)| (self.display.si(value), text)).collect()
     }
 

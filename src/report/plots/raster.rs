@@ -114,9 +114,14 @@ impl Raster {
             }
             self.touch(row, first, past);
             for (column, cell) in self.mask[row * self.width + first..row * self.width + past].iter_mut().enumerate() {
+                if *cell >= 1.0 {
+                    continue;
+                }
                 let (px, py) = ((first + column) as f64 + 0.5 - ax, y - ay);
                 let along = (px * ux + py * uy).clamp(0.0, length);
-                let distance = (px - along * ux).hypot(py - along * uy);
+                let (off_x, off_y) = (px - along * ux, py - along * uy);
+                let distance = (off_x * off_x + off_y * off_y).sqrt();
+
                 *cell = cell.max((reach - distance).clamp(0.0, 1.0) as f32);
             }
         }
@@ -124,21 +129,22 @@ impl Raster {
 
     /// Covers the inside (even-odd rule) of a closed polygon.
     fn polygon(&mut self, points: &[(f64, f64)]) {
-        let lines = self.height * SUBROWS;
-        let mut crossings: Vec<Vec<f64>> = vec![Vec::new(); lines];
+        let at = |y: f64| (y * SUBROWS as f64 - 0.5).ceil().clamp(0.0, (self.height * SUBROWS) as f64) as usize;
+        let top = at(points.iter().map(|point| point.1).fold(f64::INFINITY, f64::min));
+        let bottom = at(points.iter().map(|point| point.1).fold(f64::NEG_INFINITY, f64::max));
+        let mut crossings: Vec<Vec<f64>> = vec![Vec::new(); bottom.saturating_sub(top)];
         for (k, &(ax, ay)) in points.iter().enumerate() {
             let (bx, by) = points[(k + 1) % points.len()];
             let ((x0, y0), (x1, y1)) = if ay <= by { ((ax, ay), (bx, by)) } else { ((bx, by), (ax, ay)) };
-            let at = |y: f64| (y * SUBROWS as f64 - 0.5).ceil().clamp(0.0, lines as f64) as usize;
-            for (line, row) in crossings.iter_mut().enumerate().take(at(y1)).skip(at(y0)) {
-                let y = (line as f64 + 0.5) / SUBROWS as f64;
+            for (line, row) in crossings.iter_mut().enumerate().take(at(y1) - top).skip(at(y0) - top) {
+                let y = ((top + line) as f64 + 0.5) / SUBROWS as f64;
                 row.push(x0 + (x1 - x0) * (y - y0) / (y1 - y0));
             }
         }
         for (line, row) in crossings.iter_mut().enumerate() {
             row.sort_by(f64::total_cmp);
             for span in row.chunks_exact(2) {
-                self.span(line / SUBROWS, span[0], span[1]);
+                self.span((top + line) / SUBROWS, span[0], span[1]);
             }
         }
     }
@@ -196,6 +202,15 @@ impl DrawingBackend for Raster {
 
     fn draw_rect<S: BackendStyle>(&mut self, (x0, y0): BackendCoord, (x1, y1): BackendCoord, style: &S, fill: bool) -> Outcome {
         let corners = [(x0, y0), (x1, y0), (x1, y1), (x0, y1)];
+        let (wide, high) = self.get_size();
+        if fill && (x0, y0) == (0, 0) && (x1, y1) == (wide as i32, high as i32) && style.color().alpha == 1.0 {
+            // The background.
+            let (red, green, blue) = style.color().rgb;
+            self.pixels
+                .chunks_exact_mut(3)
+                .for_each(|pixel| pixel.copy_from_slice(&[red, green, blue]));
+            return Ok(());
+        }
         if fill {
             return self.fill_polygon(corners, style);
         }

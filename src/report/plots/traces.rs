@@ -100,22 +100,23 @@ pub fn traces(figure: &TracesFigure) -> Result<Drawn, PlotError> {
     let strip = ROW * drives.len().min(ROWS) as f64 + if drives.len() > ROWS { LINE } else { 0.0 } + marks.height();
     scene.height = heights(&mut panels, top, strip);
 
-    let bottom = panels.last().map_or(top + 20.0, |panel| panel.vertical.bottom) + if strip > 0.0 { 12.0 + strip } else { 0.0 };
+    let last_panel = panels.last().map_or(top + 20.0, |panel| panel.vertical.bottom);
+    let bottom = last_panel + if strip > 0.0 { 12.0 + strip } else { 0.0 };
     let display = engineering(window.low.abs().max(window.high.abs()), "s");
     let first = panels.first().map_or(top, |panel| panel.vertical.top);
     let numbers = x_grid(&mut scene, &window, &display, 0.0, first, bottom);
-    marks.guides(&mut scene, first, bottom);
-    for panel in &panels {
+    marks.guides(&mut scene, first, last_panel);
+    for pair in panels.windows(2) {
         // White between the panels, so that the grid belongs to them alone.
-        let above = panel.vertical.top - LINE - 18.0;
-        if above > first {
-            scene.rectangle((left - 2.0, above), (right + 1.0, panel.vertical.top), (255, 255, 255), 1.0);
-        }
+        let corners = ((left - 2.0, pair[0].vertical.bottom), (right + 2.0, pair[1].vertical.top));
+        scene.rectangle(corners.0, corners.1, (255, 255, 255), 1.0);
+    }
+    for panel in &panels {
         panel.draw(&mut scene, &window);
     }
-    let below = panels.last().map_or(top + 20.0, |panel| panel.vertical.bottom) + 12.0;
-    let below = bars(&mut scene, figure, &drives, &window, below);
+    let below = last_panel + 12.0;
     marks.draw(&mut scene, below);
+    bars(&mut scene, figure, &drives, &window, below + marks.height());
     x_numbers(&mut scene, &window, &numbers, bottom);
     foot(&mut scene, &window, &display, &figure.fingerprint);
     scene.finish()
@@ -353,8 +354,8 @@ fn heights(panels: &mut [Prepared], top: f64, strip: f64) -> f64 {
     let head = |panel: &Prepared| LINE + 12.0 + if panel.unnamed > 0 { 14.0 } else { 0.0 };
     let least = |panel: &Prepared| (panel.named() as f64 * LINE).max(130.0);
     let heads: f64 = panels.iter().map(head).sum();
-    let fixed = top + heads + FOOT + if strip > 0.0 { strip + 12.0 } else { 0.0 };
-    let free = HEIGHT - fixed;
+    let fixed = top + heads - 8.0 + FOOT + if strip > 0.0 { strip + 12.0 } else { 0.0 };
+    let free = (HEIGHT - fixed).max(0.0);
     let share = free / (panels.len() + 1) as f64;
     let mut y = top;
     let count = panels.len();
@@ -372,7 +373,7 @@ fn heights(panels: &mut [Prepared], top: f64, strip: f64) -> f64 {
         y = start + height + head(panel) - LINE - 4.0;
     }
     let end = panels.last().map_or(top + 20.0, |panel| panel.vertical.bottom);
-    end + if strip > 0.0 { strip + 12.0 } else { 0.0 } + FOOT
+    (end + if strip > 0.0 { strip + 12.0 } else { 0.0 } + FOOT).ceil()
 }
 
 fn drives(figure: &TracesFigure) -> Vec<&str> {
@@ -385,8 +386,8 @@ fn drives(figure: &TracesFigure) -> Vec<&str> {
         .collect()
 }
 
-/// Draws the strip from `y` on; gives the y below it.
-fn bars(scene: &mut Scene, figure: &TracesFigure, drives: &[&str], window: &Window, mut y: f64) -> f64 {
+/// Draws the strip from `y` on.
+fn bars(scene: &mut Scene, figure: &TracesFigure, drives: &[&str], window: &Window, mut y: f64) {
     for (index, drive) in drives.iter().take(ROWS).enumerate() {
         let middle = y + ROW / 2.0;
         scene.line(vec![(window.left, middle), (window.right, middle)], 1.0, GRID);
@@ -404,9 +405,7 @@ fn bars(scene: &mut Scene, figure: &TracesFigure, drives: &[&str], window: &Wind
             Anchor::Start,
             window.right - window.left,
         );
-        y += LINE;
     }
-    y
 }
 
 /// A bar on the canvas: pulses closer together than half a pixel share one.
@@ -441,6 +440,8 @@ fn row_of_bars(scene: &mut Scene, figure: &TracesFigure, drive: &str, color: Rgb
             }),
         }
     }
+    // Right end of the last text that stands beside its bar.
+    let mut taken = f64::NEG_INFINITY;
     for (index, bar) in row.iter().enumerate() {
         let half = ((bar.right - bar.left) / 2.0).max(1.3);
         let centre = (bar.left + bar.right) / 2.0;
@@ -459,6 +460,9 @@ fn row_of_bars(scene: &mut Scene, figure: &TracesFigure, drive: &str, color: Rgb
             scene.text(&label, (centre, middle), TICK, INK, Anchor::Middle);
         } else if centre + half + width + 16.0 <= after.unwrap_or(window.right) {
             scene.text(&label, (centre + half + 7.0, middle), TICK, INK, Anchor::Start);
+            taken = centre + half + width + 16.0;
+        } else if centre - half - width - 16.0 >= before.unwrap_or(window.left).max(taken) {
+            scene.text(&label, (centre - half - 7.0, middle), TICK, INK, Anchor::End);
         }
     }
 }

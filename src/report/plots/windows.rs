@@ -34,7 +34,7 @@ pub struct View {
 }
 
 /// Pixels between two windows.
-pub const GAP: f64 = 116.0;
+pub const GAP: f64 = 136.0;
 /// A pulse narrower than this (pixels) breaks the axis.
 const NARROW: f64 = 40.0;
 /// Pulses of one drive in a window at most.
