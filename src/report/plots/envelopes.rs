@@ -94,15 +94,16 @@ pub fn envelopes(figure: &EnvelopesFigure) -> Result<Drawn, PlotError> {
     let mut scene = Scene::new(WIDTH, HEIGHT);
     let top = frame::title(&mut scene, &figure.title);
     let marks = Marks::lay(&figure.marks, &view.windows);
-    scene.height = heights(&mut rows, top, marks.height(), drives.len() > ROWS);
-    let (first, bottom) = (rows[0].vertical.top, rows[rows.len() - 1].vertical.bottom);
-    marks.guides(&mut scene, first, bottom);
+    let lift = if marks.height() > 0.0 { marks.height() + 14.0 } else { 0.0 };
+    scene.height = heights(&mut rows, top, lift, drives.len() > ROWS);
+    let bottom = rows[rows.len() - 1].vertical.bottom;
     for row in &rows {
+        marks.guides(&mut scene, row.vertical.top, row.vertical.bottom);
         row.draw(&mut scene, &view, right);
     }
     name_gaps(&mut scene, &view, &rows[0].vertical);
     marks.draw(&mut scene, bottom + 8.0);
-    time_axis(&mut scene, &view, bottom + marks.height());
+    time_axis(&mut scene, &view, bottom + lift);
     foot(&mut scene, figure, &view, drives.len());
     scene.finish()
 }

@@ -24,7 +24,7 @@ pub const LINE: f64 = 27.0;
 pub const KEY: f64 = 52.0;
 
 /// Space in pixels under a plot for ticks, axis label and fingerprint.
-pub const FOOT: f64 = 96.0;
+pub const FOOT: f64 = 104.0;
 
 /// Part of the horizontal axis: from `low` to `high` (s or Hz) between pixels `left` and `right`.
 #[derive(Clone, Copy, Debug)]

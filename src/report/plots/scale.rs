@@ -56,9 +56,9 @@ pub fn engineering(largest: f64, unit: &str) -> Display {
     }
     // The small allowance keeps 1e-6 s from being shown as 1000 ns.
     let decade = (size * (1.0 + 1e-9)).log10().floor() as i32;
-    if unit == "s" || unit == "Hz" {
-        // No kiloseconds: 3600 s is read at once.
-        let top = if unit == "s" { 0 } else { 12 };
+    // No kiloseconds: 3600 s is read at once.
+    let top = if unit == "s" { 0 } else { 12 };
+    if (unit == "s" || unit == "Hz") && (-18..top + 5).contains(&decade) {
         let fitting = PREFIXES.iter().rev().find(|(power, _)| *power <= decade && *power <= top);
         let (exponent, prefix) = *fitting.unwrap_or(&PREFIXES[0]);
         return Display {

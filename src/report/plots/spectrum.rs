@@ -1,8 +1,8 @@
 //! Spectra of pulses against the offset from their carrier, with the transitions of the system.
-use super::frame::{self, right_edge, with_unit, x_grid, x_numbers, Window, EDGE, FOOT, HEIGHT, LABEL, LINE, TICK, WIDTH};
+use super::frame::{self, right_edge, with_unit, x_grid, x_numbers, Window, EDGE, FOOT, HEIGHT, LABEL, LINE, WIDTH};
+use super::marks::{in_lanes, Tick};
 use super::palette::{look, Look, INK, SOFT_INK};
 use super::panel::{curves, names, remark, Curve, Vertical};
-use super::place::Lanes;
 use super::scale::engineering;
 use super::scene::{Anchor, Drawn, Scene};
 use super::thin::{check_axis, check_length, column_count, columns, extent, thin};
@@ -72,10 +72,10 @@ pub fn spectrum(figure: &SpectrumFigure) -> Result<Drawn, PlotError> {
     let window = Window { low, high, left, right };
     let mut scene = Scene::new(WIDTH, HEIGHT);
     let top = frame::title(&mut scene, &figure.title);
-    let named = name_lines(figure, &window);
+    let named = in_lanes(&figure.lines, &[window], 4);
     let lanes = named
         .iter()
-        .filter_map(|line| line.1.as_ref().map(|place| place.0 + 1))
+        .filter_map(|line| line.name.as_ref().map(|name| name.lane + 1))
         .max()
         .unwrap_or(0);
     let start = top + LINE + 4.0 + LINE * lanes as f64 + if lanes > 0 { 8.0 } else { 0.0 };
@@ -98,7 +98,7 @@ pub fn spectrum(figure: &SpectrumFigure) -> Result<Drawn, PlotError> {
         INK,
         Anchor::Middle,
     );
-    remarks(&mut scene, figure, named.iter().filter(|line| line.1.is_none()).count());
+    remarks(&mut scene, figure, named.iter().filter(|line| line.name.is_none()).count());
     frame::fingerprint(&mut scene, &figure.fingerprint);
     scene.finish()
 }
@@ -121,45 +121,20 @@ fn curve(pulse: &PulseSpectrum, index: usize, count: usize, low: f64, high: f64)
     }
 }
 
-/// A line of the system: its pixel, and where its name stands (lane, start, text) if there is room.
-type NamedLine = (f64, Option<(usize, f64, String)>);
-
-fn name_lines(figure: &SpectrumFigure, window: &Window) -> Vec<NamedLine> {
-    let mut inside: Vec<&(String, f64)> = figure.lines.iter().filter(|line| window.holds(line.1)).collect();
-    inside.sort_by(|a, b| a.1.total_cmp(&b.1));
-    let mut lanes = Lanes::new(4, 12.0);
-    let place = |(name, offset): &(String, f64)| {
-        let x = window.x(*offset);
-        let text = font::fit(name, TICK, 260.0);
-        let width = font::width(&text, TICK);
-        let start = (x - width / 2.0).clamp(window.left, (window.right - width).max(window.left));
-        (x, lanes.take(start, start + width).map(|lane| (lane, start, text)))
-    };
-    inside.into_iter().map(place).collect()
-}
-
-fn draw_lines(scene: &mut Scene, named: &[NamedLine], top: f64, bottom: f64) {
-    for (x, name) in named {
-        // Lane 0 is the lowest, next to the plot.
-        let lane = name.as_ref().map_or(0, |name| name.0);
-        let reach = top - 8.0 - LINE * lane as f64;
+fn draw_lines(scene: &mut Scene, lines: &[Tick], top: f64, bottom: f64) {
+    let lane = |line: &Tick| line.name.as_ref().map_or(0, |name| name.lane) as f64;
+    for line in lines {
         let look = Look {
             color: SOFT_INK,
             marker: None,
             dash: Some((7.0, 5.0)),
         };
-        scene.curve(vec![(*x, reach.min(top)), (*x, bottom)], 1.4, look);
+        scene.curve(vec![(line.x, top - 8.0 - LINE * lane(line)), (line.x, bottom)], 1.4, look);
     }
-    for (lane, start, text) in named.iter().filter_map(|line| line.1.as_ref()) {
-        let middle = top - 8.0 - LINE * (*lane as f64 + 0.5);
-        let width = font::width(text, TICK);
-        scene.rectangle(
-            (start - 3.0, middle - LINE / 2.0),
-            (start + width + 3.0, middle + LINE / 2.0),
-            (255, 255, 255),
-            1.0,
-        );
-        scene.text(text, (*start, middle), TICK, SOFT_INK, Anchor::Start);
+    for line in lines {
+        if let Some(name) = &line.name {
+            name.draw(scene, top - 8.0 - LINE * (lane(line) + 0.5));
+        }
     }
 }
 

@@ -65,6 +65,8 @@ pub struct PulseBar {
     pub end_s: f64,
 }
 
+/// Panels in one figure; further ones are counted.
+const PANELS: usize = 12;
 /// Named curves in one panel; the others are drawn in grey.
 const NAMED: usize = 16;
 /// Rows of the strip; further drives are counted.
@@ -83,8 +85,9 @@ pub fn traces(figure: &TracesFigure) -> Result<Drawn, PlotError> {
     let mut panels: Vec<Prepared> = prepare(figure, &window);
     let drives = drives(figure);
 
-    let all = panels.iter().flat_map(|panel| &panel.curves).map(|curve| curve.name.as_str());
-    let right = right_edge(all, NAME_LIMIT);
+    let all = panels.iter().flat_map(|panel| &panel.curves).map(|curve| curve.name.clone());
+    let all: Vec<String> = all.chain(panels.iter().filter_map(|panel| panel.remark())).collect();
+    let right = right_edge(all.iter().map(String::as_str), NAME_LIMIT);
     let drive_width = drives
         .iter()
         .take(ROWS)
@@ -119,6 +122,11 @@ pub fn traces(figure: &TracesFigure) -> Result<Drawn, PlotError> {
     bars(&mut scene, figure, &drives, &window, below + marks.height());
     x_numbers(&mut scene, &window, &numbers, bottom);
     foot(&mut scene, &window, &display, &figure.fingerprint);
+    if figure.panels.len() > PANELS {
+        let text = format!("… {} more panels", figure.panels.len() - PANELS);
+        let place = (EDGE, scene.height - 20.0);
+        remark(&mut scene, &text, place, Anchor::Start, 300.0);
+    }
     scene.finish()
 }
 
@@ -180,12 +188,16 @@ impl Prepared<'_> {
         self.curves.iter().filter(|curve| !curve.name.is_empty()).count()
     }
 
+    /// What is said about curves without a name.
+    fn remark(&self) -> Option<String> {
+        (self.unnamed > 0).then(|| format!("… {} more, in grey", self.unnamed))
+    }
+
     fn draw(&self, scene: &mut Scene, window: &Window) {
         self.vertical.draw(scene, std::slice::from_ref(window), &self.source.y_label, 0.0);
         curves(scene, window, &self.vertical, &self.curves);
         names(scene, window.right, &self.vertical, &self.curves, NAME_LIMIT);
-        if self.unnamed > 0 {
-            let text = format!("… {} more, in grey", self.unnamed);
+        if let Some(text) = self.remark() {
             let place = (window.right + KEY, self.vertical.bottom + 21.0);
             remark(scene, &text, place, Anchor::Start, WIDTH - EDGE - place.0);
         }
@@ -194,8 +206,8 @@ impl Prepared<'_> {
 
 /// Thins all curves and settles the axes; pixels are settled by `heights`.
 fn prepare<'a>(figure: &'a TracesFigure, window: &Window) -> Vec<Prepared<'a>> {
-    let count = figure
-        .panels
+    let shown = &figure.panels[..figure.panels.len().min(PANELS)];
+    let count = shown
         .iter()
         .flat_map(|panel| &panel.series)
         .map(|series| if series.band.is_some() { 2 } else { 1 })
@@ -206,11 +218,7 @@ fn prepare<'a>(figure: &'a TracesFigure, window: &Window) -> Vec<Prepared<'a>> {
         window.high,
         column_count(figure.time_s.len(), count, 1400.0),
     );
-    figure
-        .panels
-        .iter()
-        .map(|panel| prepare_panel(panel, &figure.time_s, &bounds))
-        .collect()
+    shown.iter().map(|panel| prepare_panel(panel, &figure.time_s, &bounds)).collect()
 }
 
 fn prepare_panel<'a>(panel: &'a Panel, time: &[f64], bounds: &[usize]) -> Prepared<'a> {
@@ -304,7 +312,7 @@ fn rest_in_grey(curves: &mut [Curve]) -> usize {
 /// and a quarter of the values more than two decades below the largest.
 fn log_floor(panel: &Panel, curves: &[Curve], whole: Option<(f64, f64)>) -> Option<(f64, f64)> {
     let (low, high) = whole?;
-    if panel.range.is_some() || !panel.unit.is_empty() || low < 0.0 || high > 0.1 || high < 1e-190 {
+    if panel.range.is_some() || !panel.unit.is_empty() || low < 0.0 || !(1e-190..=0.1).contains(&high) {
         return None;
     }
     let mut positive: Vec<f64> = curves
