@@ -8,4 +8,5 @@ pub mod model;
 pub mod plan;
 pub mod problem;
 pub mod propagate;
+pub mod report;
 pub mod units;

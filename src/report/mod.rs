@@ -1,0 +1,2 @@
+//! Numbers into files, plots and text for people.
+pub mod plots;
