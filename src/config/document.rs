@@ -1,6 +1,6 @@
 //! A whole config, read and judged: what every later stage starts from.
 
-use std::path::Path;
+use std::path::{Path, PathBuf};
 
 use super::drives::{CarrierPhase, Drive, Form};
 use super::envelopes::Envelope;
@@ -125,17 +125,26 @@ pub fn read(path: &Path, set: &[(String, String)]) -> Result<Document, Refusal> 
             })
         }
     };
-    read_sources(sources, file, path.parent().unwrap_or(Path::new("")), set)
+    read_sources(sources, file, path.parent().unwrap_or(Path::new("")), None, set)
+}
+
+/// Reads the config that a result folder keeps; the files it names lie in `inputs/`.
+pub fn read_archived(folder: &Path, set: &[(String, String)]) -> Result<Document, Refusal> {
+    let mut sources = Sources::default();
+    match tree::read_text(&folder.join("config.yaml"), &mut sources) {
+        Ok(file) => read_sources(sources, file, folder, Some(folder.join("inputs")), set),
+        Err(mistake) => Err(Refusal { sources, mistakes: vec![mistake] }),
+    }
 }
 
 /// The same from a text; files that it names lie in `folder`.
 pub fn read_str(name: &str, text: &str, folder: &Path, set: &[(String, String)]) -> Result<Document, Refusal> {
     let mut sources = Sources::default();
     let file = sources.add(Path::new(name), text.as_bytes().to_vec(), text.to_string());
-    read_sources(sources, file, folder, set)
+    read_sources(sources, file, folder, None, set)
 }
 
-fn read_sources(sources: Sources, file: u16, folder: &Path, set: &[(String, String)]) -> Result<Document, Refusal> {
+fn read_sources(sources: Sources, file: u16, folder: &Path, archive: Option<PathBuf>, set: &[(String, String)]) -> Result<Document, Refusal> {
     let mut mistakes = Vec::new();
     let root = match tree::parse(&sources, file, &mut mistakes) {
         Ok(root) => root,
@@ -146,6 +155,7 @@ fn read_sources(sources: Sources, file: u16, folder: &Path, set: &[(String, Stri
     };
     let mut reader = Reader::new(sources, folder.to_path_buf());
     reader.mistakes = mistakes;
+    reader.archive = archive;
     let document = sections(&mut reader, &root, file, set);
     let refused = reader.mistakes.iter().any(|mistake| !mistake.warning);
     match document {
@@ -357,7 +367,7 @@ fn numbers(reader: &mut Reader, root: &Node, set: &[(String, String)]) {
     }
     if let Some(node) = root.get("numbers_from") {
         if let Some(name) = reader.text(node, "numbers_from", "numbers_from: chip.yaml").map(str::to_string) {
-            let path = reader.folder.join(&name);
+            let path = reader.beside(&name);
             match tree::read_text(&path, &mut reader.sources) {
                 Ok(file) => {
                     let mut found = Vec::new();

@@ -476,7 +476,7 @@ fn read_samples(reader: &mut Reader, node: &Node, section: &str) -> Option<Sampl
     let column = node
         .get("column")
         .and_then(|column| reader.text(column, "column", "column: envelope").map(str::to_string));
-    let path = reader.folder.join(&name);
+    let path = reader.beside(&name);
     let file = match read_text(&path, &mut reader.sources) {
         Ok(file) => file,
         Err(mut mistake) => {

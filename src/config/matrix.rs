@@ -51,7 +51,7 @@ pub fn rows(reader: &mut Reader, node: &Node, section: &str) -> Option<Rows> {
     let name = reader
         .text(&entry.value, &format!("{section} / rows_from"), "rows_from: matrix.csv")?
         .to_string();
-    let path = reader.folder.join(&name);
+    let path = reader.beside(&name);
     if path.extension().is_some_and(|end| end == "npy") {
         return match npy::read(&path) {
             Ok(npy::Array {

@@ -1093,3 +1093,10 @@ fn window(line: &str, column: usize) -> (String, usize) {
     let part: String = line.chars().skip(from).take(WIDE).collect();
     (part, (column - from).max(1))
 }
+
+/// A mistake as one line, for lists of warnings.
+pub fn one_line(sources: &Sources, mistake: &Mistake) -> String {
+    let words = mistake.fault.words();
+    let write = words.write.first().map_or(String::new(), |write| format!(" Write: {write}"));
+    format!("{}, line {}: {}{write}", sources.name(mistake.place.file), mistake.place.line, words.fact)
+}

@@ -120,6 +120,8 @@ pub struct Reader {
     pub tape: Tape,
     /// Folder of the config, where the files it names lie.
     pub folder: PathBuf,
+    /// Where a result folder keeps its inputs, if it is one that is read.
+    pub archive: Option<PathBuf>,
     /// Defaults used: path of keys, value.
     pub defaults: Vec<(String, String)>,
     /// Registers whose value shaped the reading itself: counts of levels and repeats.
@@ -151,6 +153,7 @@ impl Reader {
             mistakes: Vec::new(),
             tape: Tape::default(),
             folder,
+            archive: None,
             defaults: Vec::new(),
             structural: Vec::new(),
             numbers: Vec::new(),
@@ -162,6 +165,14 @@ impl Reader {
             reported_unitless: HashSet::new(),
             millihertz: Vec::new(),
             kilohertz: false,
+        }
+    }
+
+    /// The path of a file that the config names: beside the config.
+    pub fn beside(&self, name: &str) -> PathBuf {
+        match &self.archive {
+            Some(folder) => folder.join(archived(std::path::Path::new(name))),
+            None => self.folder.join(name),
         }
     }
 
@@ -1458,6 +1469,19 @@ const ONES: [(&str, One, Takes); 16] = [
 ];
 
 const TWOS: [(&str, Two); 3] = [("min", Two::Min), ("max", Two::Max), ("atan2", Two::Atan2)];
+
+/// The name in an archive of a file that a config names: its path, without steps upwards or a root.
+pub fn archived(named: &std::path::Path) -> PathBuf {
+    use std::path::Component;
+    named
+        .components()
+        .filter_map(|part| match part {
+            Component::Normal(name) => Some(name.to_os_string()),
+            Component::ParentDir => Some("up".into()),
+            Component::CurDir | Component::RootDir | Component::Prefix(_) => None,
+        })
+        .collect()
+}
 
 /// Why a number cannot bear this name.
 fn not_free(name: &str) -> Option<String> {

@@ -148,7 +148,7 @@ fn read_superposition(reader: &mut Reader, node: &Node) -> Option<State> {
 
 fn read_state_file(reader: &mut Reader, node: &Node) -> Option<State> {
     let name = reader.text(node, "state_from", "state_from: ../other-run/result.json")?.to_string();
-    let path = reader.folder.join(&name);
+    let path = reader.beside(&name);
     let found = if path.extension().is_some_and(|end| end == "npy") {
         npy::read(&path).and_then(|array| match (array.rows, array.columns) {
             (1, _) | (_, 1) => Ok((array.bytes, array.values)),

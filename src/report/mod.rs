@@ -1,2 +1,8 @@
-//! Numbers into files, plots and text for people.
+//! Numbers into files, plots and text for people. Only this room writes result files.
+pub mod figures;
+pub mod fingerprint;
+pub mod folder;
 pub mod plots;
+pub mod result_json;
+pub mod summary;
+pub mod traces_csv;

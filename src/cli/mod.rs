@@ -1,0 +1,120 @@
+//! Words to library calls to an exit status; one file per verb. Only this room prints.
+
+mod check;
+mod run;
+
+use std::io::Write;
+use std::path::PathBuf;
+use std::process::ExitCode;
+
+use clap::{Args, Parser, Subcommand};
+
+use crate::config::document::{read, Document, Refusal};
+use crate::config::messages::{render, Mistake};
+use crate::plan::{Plan, Point};
+
+/// What a verb ends in; the number is the exit status.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Status {
+    /// All is well.
+    Good = 0,
+    /// The machine failed: an I/O error, memory.
+    Machine = 1,
+    /// Refused before work.
+    Refused = 2,
+    /// Ran, but did not reach its accuracy.
+    NotAccurate = 3,
+}
+
+/// Settle the pulses that drive a few-level quantum system: populations, leakage and gate errors, each with its measured error.
+#[derive(Parser)]
+#[command(name = "nutate", version, about, disable_help_subcommand = true)]
+struct Words {
+    #[command(subcommand)]
+    verb: Verb,
+}
+
+#[derive(Subcommand)]
+enum Verb {
+    /// Read and judge a config without running it
+    Check(check::Words),
+    /// Evolve, record, and write numbers and plots
+    Run(run::Words),
+}
+
+/// What most verbs take.
+#[derive(Args)]
+struct Common {
+    /// The config, a YAML file
+    config: PathBuf,
+    /// Another value for a named number, such as rabi=3MHz; may be repeated
+    #[arg(long = "set", value_name = "NAME=VALUE")]
+    set: Vec<String>,
+}
+
+/// Runs the program.
+pub fn main() -> ExitCode {
+    let words = match Words::try_parse() {
+        Ok(words) => words,
+        Err(error) => {
+            // help and version are no mistakes; anything else is refused before work
+            let _ = error.print();
+            return ExitCode::from(if error.use_stderr() { Status::Refused as u8 } else { Status::Good as u8 });
+        }
+    };
+    let status = match words.verb {
+        Verb::Check(words) => check::check(&words),
+        Verb::Run(words) => run::run(&words),
+    };
+    ExitCode::from(status as u8)
+}
+
+/// Prints to standard output; a reader that has gone away is no failure.
+fn print(text: &str) {
+    let mut out = std::io::stdout().lock();
+    let _ = out.write_all(text.as_bytes()).and_then(|()| out.flush());
+}
+
+/// Prints to standard error.
+fn complain(text: &str) {
+    let _ = std::io::stderr().lock().write_all(text.as_bytes());
+}
+
+/// Splits the `--set` words; one without `=` is refused.
+fn settings(words: &[String]) -> Result<Vec<(String, String)>, Status> {
+    words
+        .iter()
+        .map(|word| match word.split_once('=') {
+            Some((name, value)) if !name.trim().is_empty() && !value.trim().is_empty() => Ok((name.trim().to_string(), value.trim().to_string())),
+            _ => {
+                complain(&format!("error: --set {word} is not NAME=VALUE.\n  Write: --set rabi=3MHz\n"));
+                Err(Status::Refused)
+            }
+        })
+        .collect()
+}
+
+/// Reads a config, or complains of all its mistakes.
+fn read_config(common: &Common) -> Result<Document, Status> {
+    let set = settings(&common.set)?;
+    read(&common.config, &set).map_err(|refusal| {
+        refuse(&refusal);
+        Status::Refused
+    })
+}
+
+fn refuse(refusal: &Refusal) {
+    complain(&refusal.text());
+}
+
+/// The point of a plan with the numbers as written, or a complaint.
+fn point(plan: &Plan) -> Result<Point<'_>, Status> {
+    plan.point().map_err(|mistake| {
+        complain_of(plan.document(), &[mistake]);
+        Status::Refused
+    })
+}
+
+fn complain_of(document: &Document, mistakes: &[Mistake]) {
+    complain(&render(&document.sources, mistakes));
+}

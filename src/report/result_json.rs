@@ -1,0 +1,127 @@
+//! result.json: the numbers of a run with method, error and warnings, for programs to read.
+
+use serde_json::{json, Map, Value};
+
+use crate::config::document::Document;
+use crate::config::messages::one_line;
+use crate::outcome::Outcome;
+
+/// A number; what is not finite becomes null.
+pub fn number(value: f64) -> Value {
+    serde_json::Number::from_f64(value).map_or(Value::Null, Value::Number)
+}
+
+/// Name and version of the program.
+pub fn program() -> Value {
+    json!({"name": "nutate", "version": env!("CARGO_PKG_VERSION")})
+}
+
+/// Title, fingerprint and replaced numbers of a config.
+pub fn config(document: &Document) -> Value {
+    let set: Map<String, Value> = document.set.iter().map(|(name, value)| (name.clone(), json!(value))).collect();
+    json!({"title": document.title, "fingerprint": super::fingerprint::fingerprint(document), "set": set})
+}
+
+/// Warnings of the config and of the run.
+pub fn warnings(document: &Document, outcome: &Outcome) -> Vec<String> {
+    let mut texts: Vec<String> = document.warnings.iter().map(|warning| one_line(&document.sources, warning)).collect();
+    if !outcome.reached {
+        texts.push(super::summary::not_reached(document, outcome));
+    }
+    if let Some((method, reason)) = outcome.cross_check.as_ref().and_then(|check| Some((&check.method, check.difference.as_ref().err()?))) {
+        texts.push(format!("the cross-check ({method}) was not made: {reason}"));
+    }
+    texts
+}
+
+/// The whole object.
+pub fn result(document: &Document, outcome: &Outcome) -> Value {
+    let method = json!({
+        "name": outcome.method.word(),
+        "reason": outcome.reason,
+        "steps": outcome.steps,
+        "refinement": {
+            "resolutions": outcome.resolutions,
+            "results": [
+                outcome.finals.iter().map(|f| (f.name.clone(), number(f.value))).collect::<Map<_, _>>(),
+                outcome.finals.iter().map(|f| (f.name.clone(), number(f.finer))).collect::<Map<_, _>>(),
+            ],
+        },
+        "rounding_floor": number(outcome.floor),
+    });
+    let mut errors: Map<String, Value> = outcome.finals.iter().map(|f| (f.name.clone(), number(f.error))).collect();
+    if let Some((_, error)) = &outcome.propagator {
+        errors.insert("propagator".to_string(), number(*error));
+    }
+    let mut result = Map::new();
+    let mut put = |key: &str, value: Value| result.insert(key.to_string(), value);
+    put("program", program());
+    put("config", config(document));
+    put("frame", json!({"kind": "lab"}));
+    put("method", method);
+    put("error_figure", number(outcome.error_figure));
+    put("accuracy", json!({"final": document.accuracy.last, "reached": outcome.reached}));
+    put("errors", Value::Object(errors));
+    if let Some(check) = &outcome.cross_check {
+        let found = match &check.difference {
+            Ok(difference) => json!({"method": check.method, "difference": number(*difference)}),
+            Err(reason) => json!({"method": check.method, "difference": null, "reason": reason}),
+        };
+        put("cross_check", found);
+    }
+    put("final", finals(outcome));
+    put("end_state", json!({"levels": document.system.names, "amplitudes": outcome.end_state.iter().map(|z| json!([number(z.re), number(z.im)])).collect::<Vec<_>>()}));
+    put("ledger", json!([]));
+    put("warnings", json!(warnings(document, outcome)));
+    put("seconds", number(outcome.seconds));
+    Value::Object(result)
+}
+
+/// Everything recorded, at the last time.
+fn finals(outcome: &Outcome) -> Value {
+    let mut found = Map::new();
+    found.insert("time_s".to_string(), number(outcome.times_s.last().copied().unwrap_or(0.0)));
+    for (column, value) in outcome.columns.iter().zip(&outcome.finals) {
+        insert(&mut found, &column.path, number(value.value));
+    }
+    if let Some((propagator, _)) = &outcome.propagator {
+        let rows: Vec<Value> = propagator.row_iter().map(|row| row.iter().map(|z| json!([number(z.re), number(z.im)])).collect()).collect();
+        found.insert("propagator".to_string(), Value::Array(rows));
+    }
+    if let Some(gate) = &outcome.gate {
+        found.insert("gate_error".to_string(), number(gate.error));
+        found.insert("gate_leakage".to_string(), number(gate.leakage));
+        match gate.free_z_turns.as_slice() {
+            [] => {}
+            [one] => {
+                found.insert("gate_free_z".to_string(), number(*one));
+            }
+            several => {
+                found.insert("gate_free_z".to_string(), several.iter().map(|turns| number(*turns)).collect());
+            }
+        }
+        if let Some((turn, axis)) = gate.residual {
+            found.insert("gate_residual".to_string(), json!({"turn": number(turn), "axis": axis.map(number)}));
+        }
+    }
+    Value::Object(found)
+}
+
+/// Puts a number at its path; the second number of one path makes a list.
+fn insert(into: &mut Map<String, Value>, path: &[String], value: Value) {
+    let Some((first, rest)) = path.split_first() else { return };
+    if rest.is_empty() {
+        match into.get_mut(first) {
+            None => {
+                into.insert(first.clone(), value);
+            }
+            Some(Value::Array(list)) => list.push(value),
+            Some(other) => *other = json!([other.take(), value]),
+        }
+        return;
+    }
+    let inner = into.entry(first.clone()).or_insert_with(|| Value::Object(Map::new()));
+    if let Value::Object(inner) = inner {
+        insert(inner, rest, value);
+    }
+}

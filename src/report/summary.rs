@@ -1,0 +1,84 @@
+//! The one screen a run prints: what was computed, the headline numbers with error, how, and where the files are.
+
+use crate::config::document::Document;
+use crate::config::messages::{short, short_with_unit};
+use crate::outcome::Outcome;
+
+/// Final numbers shown; the rest is in the files.
+const SHOWN: usize = 16;
+
+/// A value with its error: digits down to the error's second digit, and the error with two.
+pub fn with_error(value: f64, error: f64) -> String {
+    if !value.is_finite() {
+        return value.to_string();
+    }
+    if !(error.is_finite() && error > 0.0) {
+        return format!("{value}");
+    }
+    let first = error.log10().floor() as i32;
+    let decimals = (1 - first).clamp(0, 17) as usize;
+    if value != 0.0 && value.abs() < 1e-4 {
+        // small numbers keep their power of ten; as many digits as the error leaves meaning
+        let digits = (value.abs().log10().floor() as i32 - first + 1).clamp(1, 15) as usize;
+        return format!("{value:.digits$e} +- {error:.1e}");
+    }
+    format!("{value:.decimals$} +- {error:.1e}")
+}
+
+/// Why the accuracy was not reached and what to do.
+pub fn not_reached(document: &Document, outcome: &Outcome) -> String {
+    let asked = document.accuracy.last;
+    let advice = if outcome.floor > asked {
+        format!(
+            "rounding alone leaves about {} here (the phases turn very far); ask for accuracy: {{final: {}}} or shorten the sequence",
+            short(outcome.floor),
+            short(10f64.powf(outcome.floor.log10().ceil()))
+        )
+    } else if document.accuracy.method != crate::config::settings::MethodWord::Automatic {
+        "let the program choose with method: automatic, or ask for less".to_string()
+    } else {
+        format!("ask for accuracy: {{final: {}}}, or cut the sequence into parts with start: {{state_from: ..}}", short(10f64.powf(outcome.error_figure.log10().ceil())))
+    };
+    format!("the accuracy of {} that was asked for is not reached: the error figure is {}; {advice}", short(asked), short(outcome.error_figure))
+}
+
+/// The screen.
+pub fn summary(document: &Document, outcome: &Outcome, place: Option<&str>) -> String {
+    let mut text = format!("{}\n", document.title);
+    let end = outcome.times_s.last().copied().unwrap_or(0.0);
+    text.push_str(&format!("at the end of the sequence, {}, laboratory frame, nothing dropped:\n", short_with_unit(end, "s")));
+    let wide = outcome.finals.iter().take(SHOWN).map(|f| f.name.chars().count()).max().unwrap_or(0);
+    for f in outcome.finals.iter().take(SHOWN) {
+        let unit = if f.unit == "1" || f.name.ends_with(f.unit) { String::new() } else { format!(" {}", f.unit) };
+        text.push_str(&format!("  {:<wide$}  {}{unit}\n", f.name, with_error(f.value, f.error)));
+    }
+    if outcome.finals.len() > SHOWN {
+        text.push_str(&format!("  and {} more in result.json\n", outcome.finals.len() - SHOWN));
+    }
+    if let Some(gate) = &outcome.gate {
+        for turns in &gate.free_z_turns {
+            text.push_str(&format!("  free turn about z after the target: {} deg\n", short(turns * 360.0)));
+        }
+        if let Some((turn, [x, y, z])) = gate.residual {
+            text.push_str(&format!("  residual turn: {} deg about ({x:.3}, {y:.3}, {z:.3})\n", short(turn * 360.0)));
+        }
+    }
+    text.push_str(&format!("method: {}: {}\n", outcome.method.word(), outcome.reason));
+    text.push_str(&format!(
+        "error figure {:.1e} ({} asked), measured as the change from {} to {}\n",
+        outcome.error_figure,
+        short(document.accuracy.last),
+        outcome.resolutions[0],
+        outcome.resolutions[1]
+    ));
+    if let Some(check) = &outcome.cross_check {
+        text.push_str(&match &check.difference {
+            Ok(difference) => format!("cross-check by {}: differs by {difference:.1e}\n", check.method),
+            Err(reason) => format!("cross-check by {} was not made: {reason}\n", check.method),
+        });
+    }
+    if let Some(place) = place {
+        text.push_str(&format!("files: {place}\n"));
+    }
+    text
+}
