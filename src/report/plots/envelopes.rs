@@ -326,37 +326,42 @@ fn timings(mine: &[(usize, &EnvelopeCurve)], view: &View) -> (Vec<Timing>, usize
         view.windows[0].left,
         view.windows[view.windows.len() - 1].right + if view.after.is_some() { GAP } else { 0.0 },
     );
-    let mut lanes = Lanes::new(2, 16.0);
-    let mut timings = Vec::new();
-    for (holder, pulse) in mine {
-        let (window, origin) = (&view.windows[*holder], view.origins[*holder]);
-        let (start, end) = (pulse.start_s, pulse.end_s());
-        let at = [start, start / 2.0 + end / 2.0, end].map(|time| window.x(time));
-        let text = forms(pulse, start - origin, end - origin).into_iter().find_map(|text| {
+    // The longest form for which all pulses of the row have room; the shortest is written where it can be.
+    for form in 0..FORMS {
+        let mut lanes = Lanes::new(2, 16.0);
+        let mut timings = Vec::new();
+        for (holder, pulse) in mine {
+            let (window, origin) = (&view.windows[*holder], view.origins[*holder]);
+            let (start, end) = (pulse.start_s, pulse.end_s());
+            let at = [start, start / 2.0 + end / 2.0, end].map(|time| window.x(time));
+            let text = wording(pulse, start - origin, end - origin, form);
             let width = font::width(&text, TICK);
             let begin = (at[1] - width / 2.0).clamp(left, (right - width).max(left));
-            lanes.take(begin, begin + width).map(|lane| (lane, begin, text))
-        });
-        timings.push(Timing { at, text });
+            let text = lanes.take(begin, begin + width).map(|lane| (lane, begin, text));
+            timings.push(Timing { at, text });
+        }
+        if form + 1 == FORMS || timings.iter().all(|timing| timing.text.is_some()) {
+            return (timings, lanes.used());
+        }
     }
-    (timings, lanes.used())
+    (Vec::new(), 0)
 }
 
-/// What to say about a pulse from `start` to `end` (s), from long to short.
-fn forms(pulse: &EnvelopeCurve, start: f64, end: f64) -> Vec<String> {
+/// Forms of the text about a pulse.
+const FORMS: usize = 4;
+
+/// What to say about a pulse from `start` to `end` (s), in a form from long (0) to short.
+fn wording(pulse: &EnvelopeCurve, start: f64, end: f64, form: usize) -> String {
     let display = engineering(start.abs().max(end.abs()), "s");
     let text = |time: f64| number(display.shown(time), 7);
     let name = font::fit(&pulse.envelope, TICK, 300.0);
-    let length = with_digits(end - start, "s", 4);
-    let times = format!(
-        "{} to {} {}, centre {} {}",
-        text(start),
-        text(end),
-        display.unit,
-        text(start / 2.0 + end / 2.0),
-        display.unit
-    );
-    vec![format!("{name}: {times}"), format!("{name}, {length}"), length]
+    let range = format!("{} to {} {}", text(start), text(end), display.unit);
+    match form {
+        0 => format!("{name}: {range}, centre {} {}", text(start / 2.0 + end / 2.0), display.unit),
+        1 => format!("{name}: {range}"),
+        2 => range,
+        _ => with_digits(end - start, "s", 4),
+    }
 }
 
 fn heights(rows: &mut [Row], top: f64, marks: f64, more: bool) -> f64 {

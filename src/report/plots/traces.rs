@@ -381,7 +381,7 @@ fn heights(panels: &mut [Prepared], top: f64, strip: f64) -> f64 {
         y = start + height + head(panel) - LINE - 4.0;
     }
     let end = panels.last().map_or(top + 20.0, |panel| panel.vertical.bottom);
-    (end + if strip > 0.0 { strip + 12.0 } else { 0.0 } + FOOT).ceil()
+    (end + if strip > 0.0 { strip + 12.0 } else { 0.0 } + FOOT).ceil().max(HEIGHT)
 }
 
 fn drives(figure: &TracesFigure) -> Vec<&str> {
