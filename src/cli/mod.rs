@@ -59,7 +59,11 @@ pub fn main() -> ExitCode {
         Err(error) => {
             // help and version are no mistakes; anything else is refused before work
             let _ = error.print();
-            return ExitCode::from(if error.use_stderr() { Status::Refused as u8 } else { Status::Good as u8 });
+            return ExitCode::from(if error.use_stderr() {
+                Status::Refused as u8
+            } else {
+                Status::Good as u8
+            });
         }
     };
     let status = match words.verb {
@@ -85,7 +89,9 @@ fn settings(words: &[String]) -> Result<Vec<(String, String)>, Status> {
     words
         .iter()
         .map(|word| match word.split_once('=') {
-            Some((name, value)) if !name.trim().is_empty() && !value.trim().is_empty() => Ok((name.trim().to_string(), value.trim().to_string())),
+            Some((name, value)) if !name.trim().is_empty() && !value.trim().is_empty() => {
+                Ok((name.trim().to_string(), value.trim().to_string()))
+            }
             _ => {
                 complain(&format!("error: --set {word} is not NAME=VALUE.\n  Write: --set rabi=3MHz\n"));
                 Err(Status::Refused)

@@ -133,7 +133,10 @@ pub fn read_archived(folder: &Path, set: &[(String, String)]) -> Result<Document
     let mut sources = Sources::default();
     match tree::read_text(&folder.join("config.yaml"), &mut sources) {
         Ok(file) => read_sources(sources, file, folder, Some(folder.join("inputs")), set),
-        Err(mistake) => Err(Refusal { sources, mistakes: vec![mistake] }),
+        Err(mistake) => Err(Refusal {
+            sources,
+            mistakes: vec![mistake],
+        }),
     }
 }
 
@@ -144,7 +147,13 @@ pub fn read_str(name: &str, text: &str, folder: &Path, set: &[(String, String)])
     read_sources(sources, file, folder, None, set)
 }
 
-fn read_sources(sources: Sources, file: u16, folder: &Path, archive: Option<PathBuf>, set: &[(String, String)]) -> Result<Document, Refusal> {
+fn read_sources(
+    sources: Sources,
+    file: u16,
+    folder: &Path,
+    archive: Option<PathBuf>,
+    set: &[(String, String)],
+) -> Result<Document, Refusal> {
     let mut mistakes = Vec::new();
     let root = match tree::parse(&sources, file, &mut mistakes) {
         Ok(root) => root,

@@ -1098,5 +1098,10 @@ fn window(line: &str, column: usize) -> (String, usize) {
 pub fn one_line(sources: &Sources, mistake: &Mistake) -> String {
     let words = mistake.fault.words();
     let write = words.write.first().map_or(String::new(), |write| format!(" Write: {write}"));
-    format!("{}, line {}: {}{write}", sources.name(mistake.place.file), mistake.place.line, words.fact)
+    format!(
+        "{}, line {}: {}{write}",
+        sources.name(mistake.place.file),
+        mistake.place.line,
+        words.fact
+    )
 }

@@ -974,7 +974,7 @@ impl Reader {
             }
             Gap(a, b) => {
                 let names = self.level_names();
-                let mut energy = |reader: &mut Self, name: &String| match names.iter().position(|known| known == name) {
+                let energy = |reader: &mut Self, name: &String| match names.iter().position(|known| known == name) {
                     Some(index) => reader.level_energy(index),
                     None => {
                         reader.unknown(place, "level", name, &names);

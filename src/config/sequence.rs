@@ -516,7 +516,7 @@ pub fn uses(steps: &[Step], drives: usize) -> Vec<(usize, bool)> {
 }
 
 fn walk(steps: &[Step], times: usize, found: &mut [(usize, bool)], started: &mut bool) {
-    let mut note = |pulse: &Pulse, started: bool, found: &mut [(usize, bool)]| {
+    let note = |pulse: &Pulse, started: bool, found: &mut [(usize, bool)]| {
         let entry = &mut found[pulse.drive];
         if entry.0 == 0 {
             entry.1 = !started && matches!(pulse.align, Align::Start);

@@ -11,18 +11,38 @@ pub struct BlochVectors {
 impl BlochVectors {
     /// Those of `pairs`; with one pair alone the columns bear no names.
     pub fn new(names: &[String], pairs: &[[usize; 2]]) -> BlochVectors {
-        let name = |[a, b]: &[usize; 2]| if pairs.len() == 1 { String::new() } else { format!("_{}_{}", names[*a], names[*b]) };
-        BlochVectors { pairs: pairs.iter().map(|pair| (*pair, name(pair))).collect() }
+        let name = |[a, b]: &[usize; 2]| {
+            if pairs.len() == 1 {
+                String::new()
+            } else {
+                format!("_{}_{}", names[*a], names[*b])
+            }
+        };
+        BlochVectors {
+            pairs: pairs.iter().map(|pair| (*pair, name(pair))).collect(),
+        }
     }
 }
 
 impl Quantity for BlochVectors {
     fn columns(&self) -> Vec<Column> {
         let column = |name: &str, axis: &str| {
-            let path = if name.is_empty() { vec!["bloch"] } else { vec!["bloch", &name[1..]] };
-            Column::plain(format!("bloch{name}_{axis}"), &path, "Bloch vector", format!("{axis}{}", name.replace('_', " ")))
+            let path = if name.is_empty() {
+                vec!["bloch"]
+            } else {
+                vec!["bloch", &name[1..]]
+            };
+            Column::plain(
+                format!("bloch{name}_{axis}"),
+                &path,
+                "Bloch vector",
+                format!("{axis}{}", name.replace('_', " ")),
+            )
         };
-        self.pairs.iter().flat_map(|(_, name)| ["x", "y", "z"].map(|axis| column(name, axis))).collect()
+        self.pairs
+            .iter()
+            .flat_map(|(_, name)| ["x", "y", "z"].map(|axis| column(name, axis)))
+            .collect()
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {

@@ -10,13 +10,16 @@ pub struct Populations {
 impl Populations {
     /// Those of `levels`.
     pub fn new(names: &[String], levels: &[usize]) -> Populations {
-        Populations { levels: levels.iter().map(|level| (*level, names[*level].clone())).collect() }
+        Populations {
+            levels: levels.iter().map(|level| (*level, names[*level].clone())).collect(),
+        }
     }
 }
 
 impl Quantity for Populations {
     fn columns(&self) -> Vec<Column> {
-        let column = |(_, name): &(usize, String)| Column::plain(format!("population_{name}"), &["populations", name], "population", name.clone());
+        let column =
+            |(_, name): &(usize, String)| Column::plain(format!("population_{name}"), &["populations", name], "population", name.clone());
         self.levels.iter().map(column).collect()
     }
 

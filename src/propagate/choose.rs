@@ -93,14 +93,16 @@ fn slices_ns(load: &Load) -> f64 {
 
 fn smooth_ns(load: &Load) -> f64 {
     let levels = load.levels as f64;
-    let steps = (4.0 * load.coupling_turns + 3.0 * load.entry_turns + 4.0 * load.rises + 4.0 * load.changing as f64) * accuracy_factor(load, 8.0);
+    let steps =
+        (4.0 * load.coupling_turns + 3.0 * load.entry_turns + 4.0 * load.rises + 4.0 * load.changing as f64) * accuracy_factor(load, 8.0);
     let dense = 12.0 * (30.0 + 40.0 * levels + 10.0 * levels * load.columns as f64);
     (steps + load.moments as f64) * dense
 }
 
 fn geometric_ns(load: &Load) -> f64 {
     let levels = load.levels as f64;
-    let steps = (1.0 * load.swing_turns + 4.0 * load.still_turns + 6.0 * load.rises + 8.0 * load.changing as f64) * accuracy_factor(load, 6.0);
+    let steps =
+        (1.0 * load.swing_turns + 4.0 * load.still_turns + 6.0 * load.rises + 8.0 * load.changing as f64) * accuracy_factor(load, 6.0);
     let exponential = if load.levels == 2 { 250.0 } else { 600.0 + 60.0 * levels.powi(3) };
     (steps + load.moments as f64) * (exponential + 10.0 * levels * load.columns as f64)
 }
@@ -110,17 +112,30 @@ pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
     let spent = |method: Method| METHODS.iter().any(|row| row.method == method && row.time_in);
     if let Some(method) = wished {
         if load.time_in && load.changing > 0 && !spent(method) {
-            return (Method::Smooth, format!("{} was asked for, but it gives no time spent in a level; smooth does", method.word()));
+            return (
+                Method::Smooth,
+                format!(
+                    "{} was asked for, but it gives no time spent in a level; smooth does",
+                    method.word()
+                ),
+            );
         }
         return (method, "asked for in the config".to_string());
     }
     if load.changing == 0 {
         let stretches = if load.segments == 1 { "the one stretch" } else { "each stretch" };
-        return (Method::ConstantSteps, format!("H is constant through {stretches} of {} (in a turning picture where a carrier is on), so exponentials are exact", load.segments));
+        return (
+            Method::ConstantSteps,
+            format!(
+                "H is constant through {stretches} of {} (in a turning picture where a carrier is on), so exponentials are exact",
+                load.segments
+            ),
+        );
     }
     let (smooth, geometric) = (smooth_ns(load), geometric_ns(load));
     if geometric < smooth && !load.time_in {
-        let why = format!(
+        let why =
+            format!(
             "H swings the state through {} turns but turns through only {} itself and its envelopes rise or fall {} times, with {} levels",
             round(load.swing_turns), round(load.still_turns), round(load.rises), load.levels
         );

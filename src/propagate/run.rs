@@ -83,11 +83,21 @@ impl Eye<'_> {
 
 /// Runs the whole problem once. `changing_s` is how long H changes altogether (the step control spreads its tolerance over it).
 pub(super) fn run<'p>(
-    problem: &'p Problem, demand: &Demand, method: Method, fineness: &Fineness, changing_s: f64, pictures: &mut Pictures<'p>, left: f64,
+    problem: &'p Problem,
+    demand: &Demand,
+    method: Method,
+    fineness: &Fineness,
+    changing_s: f64,
+    pictures: &mut Pictures<'p>,
+    left: f64,
     recorder: &mut dyn Recorder,
 ) -> Work {
     let dim = problem.dim();
-    let mut work = Work { steps: 0, products: 0, left };
+    let mut work = Work {
+        steps: 0,
+        products: 0,
+        left,
+    };
     let mut state = State {
         dim,
         amplitudes: problem.start.as_slice().to_vec(),
@@ -96,7 +106,10 @@ pub(super) fn run<'p>(
     if demand.propagator {
         state.amplitudes.extend_from_slice(Matrix::identity(dim, dim).as_slice());
     }
-    let mut eye = Eye { recorder, lab: problem.start.clone() };
+    let mut eye = Eye {
+        recorder,
+        lab: problem.start.clone(),
+    };
     let mut flows = Flows::new(dim);
     let mut smooth = Smooth::new(dim, state.amplitudes.len(), demand.time_in);
     let mut next = 0;
@@ -108,8 +121,18 @@ pub(super) fn run<'p>(
         let terms = problem.terms_of(segment);
         let tied = pictures.of(segment, Kind::Tied);
         let still = tied.constant(terms);
-        let picture = if still || method != Method::Smooth { tied } else { pictures.of(segment, Kind::Free) };
-        let stretch = Stretch { picture: &picture, terms, length_s: segment.length_s, moments: &problem.moments[first..next], first };
+        let picture = if still || method != Method::Smooth {
+            tied
+        } else {
+            pictures.of(segment, Kind::Free)
+        };
+        let stretch = Stretch {
+            picture: &picture,
+            terms,
+            length_s: segment.length_s,
+            moments: &problem.moments[first..next],
+            first,
+        };
         if still {
             constant::pass(&stretch, fineness.pieces, &mut flows, &mut state, &mut eye, &mut work);
         } else {
@@ -125,7 +148,9 @@ pub(super) fn run<'p>(
         eye.lab.as_mut_slice().copy_from_slice(&state.amplitudes[..dim]);
         eye.recorder.see(moment, &eye.lab, &state.time_in_s);
     }
-    let propagator = demand.propagator.then(|| Matrix::from_column_slice(dim, dim, &state.amplitudes[dim..]));
+    let propagator = demand
+        .propagator
+        .then(|| Matrix::from_column_slice(dim, dim, &state.amplitudes[dim..]));
     eye.recorder.finish(propagator.as_ref());
     work
 }

@@ -37,19 +37,33 @@ pub fn not_reached(document: &Document, outcome: &Outcome) -> String {
     } else if document.accuracy.method != crate::config::settings::MethodWord::Automatic {
         "let the program choose with method: automatic, or ask for less".to_string()
     } else {
-        format!("ask for accuracy: {{final: {}}}, or cut the sequence into parts with start: {{state_from: ..}}", short(10f64.powf(outcome.error_figure.log10().ceil())))
+        format!(
+            "ask for accuracy: {{final: {}}}, or cut the sequence into parts with start: {{state_from: ..}}",
+            short(10f64.powf(outcome.error_figure.log10().ceil()))
+        )
     };
-    format!("the accuracy of {} that was asked for is not reached: the error figure is {}; {advice}", short(asked), short(outcome.error_figure))
+    format!(
+        "the accuracy of {} that was asked for is not reached: the error figure is {}; {advice}",
+        short(asked),
+        short(outcome.error_figure)
+    )
 }
 
 /// The screen.
 pub fn summary(document: &Document, outcome: &Outcome, place: Option<&str>) -> String {
     let mut text = format!("{}\n", document.title);
     let end = outcome.times_s.last().copied().unwrap_or(0.0);
-    text.push_str(&format!("at the end of the sequence, {}, laboratory frame, nothing dropped:\n", short_with_unit(end, "s")));
+    text.push_str(&format!(
+        "at the end of the sequence, {}, laboratory frame, nothing dropped:\n",
+        short_with_unit(end, "s")
+    ));
     let wide = outcome.finals.iter().take(SHOWN).map(|f| f.name.chars().count()).max().unwrap_or(0);
     for f in outcome.finals.iter().take(SHOWN) {
-        let unit = if f.unit == "1" || f.name.ends_with(f.unit) { String::new() } else { format!(" {}", f.unit) };
+        let unit = if f.unit == "1" || f.name.ends_with(f.unit) {
+            String::new()
+        } else {
+            format!(" {}", f.unit)
+        };
         text.push_str(&format!("  {:<wide$}  {}{unit}\n", f.name, with_error(f.value, f.error)));
     }
     if outcome.finals.len() > SHOWN {
@@ -60,7 +74,10 @@ pub fn summary(document: &Document, outcome: &Outcome, place: Option<&str>) -> S
             text.push_str(&format!("  free turn about z after the target: {} deg\n", short(turns * 360.0)));
         }
         if let Some((turn, [x, y, z])) = gate.residual {
-            text.push_str(&format!("  residual turn: {} deg about ({x:.3}, {y:.3}, {z:.3})\n", short(turn * 360.0)));
+            text.push_str(&format!(
+                "  residual turn: {} deg about ({x:.3}, {y:.3}, {z:.3})\n",
+                short(turn * 360.0)
+            ));
         }
     }
     text.push_str(&format!("method: {}: {}\n", outcome.method.word(), outcome.reason));

@@ -127,11 +127,23 @@ struct Tally {
 
 fn tally(seed: u64, problems: u32, wish: impl Fn(&mut Random) -> Option<Method>) -> Tally {
     let mut random = Random(seed);
-    let mut tally = Tally { problems, dishonest: 0, loose: 0, missed: 0, filled: Vec::new(), worst: 0.0, runs: [0; 3] };
+    let mut tally = Tally {
+        problems,
+        dishonest: 0,
+        loose: 0,
+        missed: 0,
+        filled: Vec::new(),
+        worst: 0.0,
+        runs: [0; 3],
+    };
     for number in 0..problems {
         let case = random_problem(&mut random);
         let method = wish(&mut random);
-        let accuracy = if method == Some(Method::ConstantSteps) { random.size(1e-7, 1e-4) } else { random.size(1e-11, 1e-6) };
+        let accuracy = if method == Some(Method::ConstantSteps) {
+            random.size(1e-7, 1e-4)
+        } else {
+            random.size(1e-11, 1e-6)
+        };
         let mut exact = Kept::default();
         collocation::solve(&case, 0.8, &mut exact);
         let solved = solve(&case, accuracy, method);
@@ -147,7 +159,10 @@ fn tally(seed: u64, problems: u32, wish: impl Fn(&mut Random) -> Option<Method>)
             tally.dishonest += 1;
             eprintln!(
                 "number {number}, {:?} of {} levels at {accuracy:.1e}: error {error:.2e}, figure {:.2e}, {:?}",
-                solved.method, case.dim(), solved.error_figure, solved.resolutions
+                solved.method,
+                case.dim(),
+                solved.error_figure,
+                solved.resolutions
             );
         }
         tally.filled.push(solved.error_figure / accuracy);
@@ -157,7 +172,11 @@ fn tally(seed: u64, problems: u32, wish: impl Fn(&mut Random) -> Option<Method>)
             tally.missed += 1;
             eprintln!(
                 "number {number}, {:?} of {} levels at {accuracy:.1e}: not reached, figure {:.2e}, floor {:.1e}, {:?}",
-                solved.method, case.dim(), solved.error_figure, solved.floor, solved.resolutions
+                solved.method,
+                case.dim(),
+                solved.error_figure,
+                solved.floor,
+                solved.resolutions
             );
         }
     }
@@ -171,7 +190,13 @@ fn prop_error_figure_is_honest_and_close() {
         1 => Some(Method::Geometric),
         _ => None,
     });
-    assert!(all.dishonest <= 1 && all.loose <= 12 && all.missed == 0, "{} dishonest, {} loose, {} missed", all.dishonest, all.loose, all.missed);
+    assert!(
+        all.dishonest <= 1 && all.loose <= 12 && all.missed == 0,
+        "{} dishonest, {} loose, {} missed",
+        all.dishonest,
+        all.loose,
+        all.missed
+    );
 }
 
 /// The calibration itself: `cargo test --release calibrate -- --ignored --nocapture`.
