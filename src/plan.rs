@@ -321,29 +321,11 @@ impl Point<'_> {
             let formula = carrier.written.instantaneous.as_ref()?;
             Some(Arc::new(Chirp::new(formula.bind(&self.values), carrier.centre_hz, pulse.length_s)))
         });
-        let mut pieces = curve.pieces();
-        if chirp.is_some() {
-            if let Pieces::Constant(value) = pieces {
-                // constant in size, but its phase is not
-                pieces = Pieces::Held {
-                    starts_s: [0.0].into(),
-                    values: [value].into(),
-                };
-            }
-        }
-        let signal = matches!(pieces, Pieces::Smooth { .. }).then(|| {
-            Arc::new(Signal {
-                curve: curve.clone(),
-                held: None,
-                quadrature_s,
-                chirp: chirp.clone(),
-            })
-        });
+        let pieces = curve.pieces();
+        let signal = matches!(pieces, Pieces::Smooth { .. }).then(|| Arc::new(Signal { curve, quadrature_s }));
         Ok(PulseParts {
-            curve,
             pieces,
             half_rabi_hz,
-            quadrature_s,
             chirp,
             signal,
         })

@@ -4,6 +4,7 @@
 //! integral is then a polynomial too (C. W. Clenshaw and A. R. Curtis, Numerische Mathematik 2, 197 (1960)).
 
 use crate::config::tape::BoundFormula;
+use crate::problem::Sweep;
 use crate::units::sin_cos_turns;
 
 /// Coefficients per piece.
@@ -59,28 +60,32 @@ impl Chirp {
         chirp
     }
 
-    /// Instantaneous frequency less the centre, Hz.
-    pub fn offset_hz(&self, t_s: f64) -> f64 {
+    fn frequency_hz(&self, t_s: f64) -> f64 {
         self.formula.at(t_s) - self.centre_hz
-    }
-
-    /// Turns since the start of the pulse beyond those of the centre.
-    pub fn turns(&self, t_s: f64) -> f64 {
-        let index = self.pieces.partition_point(|piece| piece.start_s <= t_s).saturating_sub(1);
-        self.pieces.get(index).map_or(0.0, |piece| {
-            piece.before_turns + piece.at(((t_s - piece.start_s) / piece.half_s - 1.0).clamp(-1.0, 1.0))
-        })
     }
 
     fn expand(&self, from: f64, to: f64) -> [f64; ORDER] {
         let (middle, half) = (0.5 * (from + to), 0.5 * (to - from));
         // Chebyshev points of the first kind at (k + 1/2)/(2 ORDER) of a turn
         let angle = |k: usize| (k as f64 + 0.5) / (2 * ORDER) as f64;
-        let values: [f64; ORDER] = std::array::from_fn(|k| self.offset_hz(middle + half * sin_cos_turns(angle(k)).1));
+        let values: [f64; ORDER] = std::array::from_fn(|k| self.frequency_hz(middle + half * sin_cos_turns(angle(k)).1));
         std::array::from_fn(|n| {
             let sum: f64 = (0..ORDER).map(|k| values[k] * sin_cos_turns(n as f64 * angle(k)).1).sum();
             sum * if n == 0 { 1.0 } else { 2.0 } / ORDER as f64
         })
+    }
+}
+
+impl Sweep for Chirp {
+    fn turns(&self, t_s: f64) -> f64 {
+        let index = self.pieces.partition_point(|piece| piece.start_s <= t_s).saturating_sub(1);
+        self.pieces.get(index).map_or(0.0, |piece| {
+            piece.before_turns + piece.at(((t_s - piece.start_s) / piece.half_s - 1.0).clamp(-1.0, 1.0))
+        })
+    }
+
+    fn offset_hz(&self, t_s: f64) -> f64 {
+        self.frequency_hz(t_s)
     }
 }
 

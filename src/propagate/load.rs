@@ -2,7 +2,7 @@
 
 use super::asked::Demand;
 use super::picture::{Kind, Picture, Pictures};
-use crate::problem::{Envelope, Matrix, Problem, Term};
+use crate::problem::{Matrix, Problem, Term};
 use crate::units::RAD_PER_TURN;
 
 /// Sizes of a problem; turns are dimensionless, summed over the stretches where H changes in every picture.
@@ -42,7 +42,7 @@ pub struct Load {
 
 /// Bound of ||H - middle of the diagonal|| of a picture over the segment, in Hz; smooth envelopes by samples.
 pub(super) fn size_hz(picture: &Picture, terms: &[Term], length_s: f64) -> f64 {
-    let heights: Vec<f64> = terms.iter().map(|term| height(&term.envelope, length_s).0).collect();
+    let heights: Vec<f64> = terms.iter().map(|term| height(term, length_s).0).collect();
     let mut rows = vec![0.0; picture.dim];
     for turning in &picture.turnings {
         let most = turning.term.map_or(1.0, |k| heights[k]);
@@ -58,18 +58,16 @@ pub(super) fn size_hz(picture: &Picture, terms: &[Term], length_s: f64) -> f64 {
 const SAMPLES: u32 = 32;
 
 /// Largest sampled |c| in rad/s, and the sampled way of c over that.
-fn height(envelope: &Envelope, length_s: f64) -> (f64, f64) {
-    match envelope {
-        Envelope::Constant(value) => (value.norm(), 0.0),
-        Envelope::Smooth { .. } => {
-            let values: Vec<_> = (0..=SAMPLES)
-                .map(|i| envelope.at(length_s * f64::from(i) / f64::from(SAMPLES)))
-                .collect();
-            let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
-            let way: f64 = values.windows(2).map(|pair| (pair[1] - pair[0]).norm()).sum();
-            (most, if most > 0.0 { way / most } else { 0.0 })
-        }
+fn height(term: &Term, length_s: f64) -> (f64, f64) {
+    if term.is_constant() {
+        return (term.slow(0.0).norm(), 0.0);
     }
+    let values: Vec<_> = (0..=SAMPLES)
+        .map(|i| term.slow(length_s * f64::from(i) / f64::from(SAMPLES)))
+        .collect();
+    let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
+    let way: f64 = values.windows(2).map(|pair| (pair[1] - pair[0]).norm()).sum();
+    (most, if most > 0.0 { way / most } else { 0.0 })
 }
 
 fn half_range(values: impl Iterator<Item = f64>) -> f64 {
@@ -123,13 +121,13 @@ impl Load {
             let mut carrier: f64 = 0.0;
             if tied.constant(terms) {
                 for term in terms {
-                    rad_s += bounds[term.matrix] * height(&term.envelope, length_s).0;
+                    rad_s += bounds[term.matrix] * height(term, length_s).0;
                     carrier = carrier.max(term.turns_hz.abs());
                 }
             } else {
                 let mut rises: f64 = 0.0;
                 for term in terms {
-                    let (most, way) = height(&term.envelope, length_s);
+                    let (most, way) = height(term, length_s);
                     rad_s += bounds[term.matrix] * most;
                     rises = rises.max(way);
                     carrier = carrier.max(term.turns_hz.abs());

@@ -64,10 +64,7 @@ pub(super) struct Picture {
 impl Picture {
     /// Whether H of this picture is constant with these terms.
     pub fn constant(&self, terms: &[Term]) -> bool {
-        self.fastest_hz == 0.0
-            && terms
-                .iter()
-                .all(|term| matches!(term.envelope, crate::problem::Envelope::Constant(_)))
+        self.fastest_hz == 0.0 && terms.iter().all(Term::is_constant)
     }
 
     /// The factor of one group at `tau_s`: rad/s for a term, no dimension for the static matrix.
@@ -75,7 +72,7 @@ impl Picture {
         let turned = turns(turning.turns_hz, tau_s);
         match turning.term {
             None => cis_turns(-turned),
-            Some(k) => terms[k].envelope.at(tau_s) * cis_turns(-(terms[k].phase_turns + turned)),
+            Some(k) => terms[k].slow(tau_s) * cis_turns(-(terms[k].phase_turns + turned)),
         }
     }
 

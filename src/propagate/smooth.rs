@@ -230,7 +230,7 @@ fn derivative(
     envelopes: &mut Vec<Complex64>,
 ) {
     envelopes.clear();
-    envelopes.extend(terms.iter().map(|term| term.envelope.at(tau_s)));
+    envelopes.extend(terms.iter().map(|term| term.slow(tau_s)));
     for (slope, (j, psi)) in slopes.iter_mut().zip((0..dim).cycle().zip(columns)) {
         let rest = picture.diagonal[j];
         *slope = if rest == 0.0 {

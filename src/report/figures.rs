@@ -7,6 +7,7 @@ use crate::drive::envelope::Pieces;
 use crate::measure::Column;
 use crate::outcome::Outcome;
 use crate::plan::Point;
+use crate::problem::Sweep;
 use crate::report::fingerprint::fingerprint;
 use crate::report::plots::{
     envelopes, spectrum, traces, Drawn, EnvelopeCurve, EnvelopesFigure, Panel, PlotError, PulseBar, PulseSpectrum, Series, SpectrumFigure,

@@ -99,6 +99,7 @@ pub fn term(matrix: usize, turns_hz: f64, phase_turns: f64, envelope: Envelope) 
         turns_hz,
         phase_turns,
         envelope,
+        chirps: Vec::new(),
     }
 }
 
