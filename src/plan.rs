@@ -109,7 +109,7 @@ impl Plan {
                 }
             }
         }
-        let values = document.tape.evaluate(&[]);
+        let values = document.tape.as_written();
         if let Some(mistake) = not_finite(&document.tape, &values, &document.sources) {
             return Err(mistake);
         }

@@ -9,7 +9,7 @@ use super::place::{Place, Sources};
 use super::reader::{near, NamedNumber, Reader};
 use super::record::{Item, Record};
 use super::sequence::{self, Known, Step};
-use super::settings::{Accuracy, Output};
+use super::settings::{Accuracy, Frame, Output};
 use super::state::State;
 use super::system::{Operator, System};
 use super::tape::{Register, Tape};
@@ -85,6 +85,8 @@ pub struct Document {
     pub start: State,
     /// What to keep.
     pub record: Record,
+    /// In which frame.
+    pub frame: Frame,
     /// How exactly.
     pub accuracy: Accuracy,
     /// Where to.
@@ -345,8 +347,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     if let Some(record) = &record {
         free_turns(reader, record, &operators);
     }
-    let (system, steps, start, record, accuracy, output) = (system?, steps?, start?, record?, accuracy?, output?);
-    frame?;
+    let (system, steps, start, record, accuracy, output, frame) = (system?, steps?, start?, record?, accuracy?, output?, frame?);
     Some(Document {
         sources: reader.sources.clone(),
         title,
@@ -361,6 +362,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         sequence_place: sequence_node.map_or(root.place, |node| node.place),
         start,
         record,
+        frame,
         accuracy,
         output,
         defaults: std::mem::take(&mut reader.defaults),
@@ -487,7 +489,7 @@ fn unused(reader: &mut Reader, root: &Node, used: &sequence::Used, operators: &[
 
 /// Every register has a finite value with the numbers as written; the first that has not is reported.
 fn finite(reader: &mut Reader, _numbers: &[NamedNumber]) -> Option<()> {
-    let values = reader.tape.evaluate(&[]);
+    let values = reader.tape.as_written();
     match not_finite(&reader.tape, &values, &reader.sources) {
         None => Some(()),
         Some(mistake) => {
@@ -523,7 +525,7 @@ fn free_turns(reader: &mut Reader, record: &Record, operators: &[Operator]) {
             continue;
         };
         for index in free {
-            let values = reader.tape.evaluate(&[]);
+            let values = reader.tape.as_written();
             let off = operators[*index].entries.iter().any(|entry| {
                 let im = entry.value.im.map_or(0.0, |im| values[im as usize]);
                 im != 0.0 || (entry.row != entry.column && values[entry.value.re as usize] != 0.0)

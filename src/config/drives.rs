@@ -309,7 +309,7 @@ fn read_coupling(
 }
 
 fn hermitian(reader: &mut Reader, drive: &str, operator: &Node, entries: &[MatrixEntry]) -> Option<()> {
-    let values = reader.tape.evaluate(&[]);
+    let values = reader.tape.as_written();
     let value = |e: &MatrixEntry| (values[e.value.re as usize], e.value.im.map_or(0.0, |im| values[im as usize]));
     let largest = entries.iter().map(|e| value(e).0.hypot(value(e).1)).fold(0.0, f64::max);
     let cells: std::collections::HashMap<_, _> = entries.iter().map(|e| ((e.row, e.column), value(e))).collect();

@@ -721,7 +721,7 @@ impl Reader {
 
     /// The value of a register with the numbers as written.
     pub fn value_now(&self, register: Register) -> f64 {
-        self.tape.evaluate(&[])[register as usize]
+        self.tape.as_written()[register as usize]
     }
 
     /// A register that holds a constant.
@@ -1237,7 +1237,7 @@ impl Reader {
     }
 
     fn cyclic_times_pi(&mut self, sign: char, l: Known, r: Known, place: Place, right: &Expression) {
-        let values = self.tape.evaluate(&[]);
+        let values = self.tape.as_written();
         let value = |known: Known| {
             known
                 .constant

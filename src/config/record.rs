@@ -323,7 +323,7 @@ fn read_target(reader: &mut Reader, node: &Node, size: usize) -> Option<Target> 
     reader.fields(node, "target", &["turn", "about", "rows", "rows_from", "lower"], &[])?;
     if node.get("turn").is_none() && node.get("about").is_none() {
         let entries = matrix::plain_matrix(reader, node, "target", size)?;
-        let values = reader.tape.evaluate(&[]);
+        let values = reader.tape.as_written();
         let mut m = crate::problem::Matrix::zeros(size, size);
         for entry in &entries {
             let im = entry.value.im.map_or(0.0, |im| values[im as usize]);

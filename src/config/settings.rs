@@ -1,8 +1,10 @@
 //! `accuracy:`, `frame:` and `output:`.
 
 use super::messages::Fault;
-use super::reader::Reader;
+use super::place::Place;
+use super::reader::{Quantity, Reader};
 use super::tree::Node;
+use crate::units::Dim;
 
 /// Below this, rounding alone exceeds what is asked.
 pub const FINEST: f64 = 1e-13;
@@ -89,42 +91,127 @@ pub fn read_accuracy(reader: &mut Reader, node: Option<&Node>) -> Option<Accurac
     Some(accuracy)
 }
 
-/// Reads `frame:`; so far the laboratory frame alone.
-pub fn read_frame(reader: &mut Reader, node: Option<&Node>) -> Option<()> {
+/// What a rotating frame follows.
+#[derive(Debug, Clone)]
+pub enum Follows {
+    /// The drives: each ties the pairs that it couples.
+    Drives,
+    /// A table: level, frequency in Hz; levels left out stand still.
+    Table(Vec<(usize, Quantity)>),
+}
+
+/// The rotating frame.
+#[derive(Debug, Clone)]
+pub struct Rotating {
+    /// What it follows.
+    pub follows: Follows,
+    /// Terms that turn faster are dropped, Hz; none keeps every term.
+    pub limit: Option<Quantity>,
+    /// Levels to eliminate.
+    pub eliminate: Vec<usize>,
+    /// A kept resonant half that still turns is allowed.
+    pub allow_beat: bool,
+    /// Where the section stands.
+    pub place: Place,
+}
+
+/// `frame:`.
+#[derive(Debug, Clone)]
+pub enum Frame {
+    /// Nothing rewritten, nothing dropped.
+    Lab,
+    /// A rotating frame.
+    Rotating(Box<Rotating>),
+}
+
+/// Reads `frame:`.
+pub fn read_frame(reader: &mut Reader, node: Option<&Node>) -> Option<Frame> {
     let Some(node) = node else {
         reader.default("frame.kind", "lab");
-        return Some(());
+        return Some(Frame::Lab);
     };
     let known = ["kind", "follows", "drop_terms_faster_than", "eliminate", "allow_beat"];
-    reader.fields(node, "frame", &known, &[])?;
+    let entries = reader.fields(node, "frame", &known, &[])?;
     let kind = reader.need(node, "kind", "frame", "lab")?;
     let rotating = reader.word(kind, "frame / kind", &[("lab", false), ("rotating", true)])?;
-    if rotating {
-        reader.error(
-            kind.place,
-            Fault::NotNow {
-                key: "rotating".to_string(),
-                section: "frame / kind".to_string(),
-            },
-        );
-        return None;
-    }
-    if let Some(entry) = node.entries()?.iter().find(|entry| known[1..].contains(&entry.key.as_str())) {
-        let known = vec!["kind".to_string()];
-        let hint = Some("It belongs to a rotating frame; in the laboratory frame nothing is dropped.".to_string());
-        reader.error(
-            entry.place,
-            Fault::UnknownKey {
+    if !rotating {
+        if let Some(entry) = entries.iter().find(|entry| known[1..].contains(&entry.key.as_str())) {
+            let known = vec!["kind".to_string()];
+            let hint = Some("It belongs to a rotating frame; in the laboratory frame nothing is dropped.".to_string());
+            let fault = Fault::UnknownKey {
                 key: entry.key.clone(),
                 section: "frame (kind: lab)".to_string(),
                 near: None,
                 known,
                 hint,
-            },
-        );
-        return None;
+            };
+            reader.error(entry.place, fault);
+            return None;
+        }
+        return Some(Frame::Lab);
     }
-    Some(())
+    let follows = reader
+        .need(node, "follows", "frame", "drives")
+        .and_then(|follows| read_follows(reader, follows));
+    let limit = match node.get("drop_terms_faster_than") {
+        None => {
+            let why = Some("Terms that turn faster are dropped and listed; nothing keeps every term.".to_string());
+            let fault = Fault::MissingKey {
+                key: "drop_terms_faster_than".to_string(),
+                section: "frame".to_string(),
+                write: "drop_terms_faster_than: 1 GHz".to_string(),
+                why,
+            };
+            reader.error(kind.place, fault);
+            None
+        }
+        Some(limit) if limit.text() == Some("nothing") => Some(None),
+        Some(limit) => reader.quantity(limit, "drop_terms_faster_than", Dim::FREQUENCY).map(Some),
+    };
+    let eliminate = match node.get("eliminate") {
+        None => Some(Vec::new()),
+        Some(list) => {
+            let found: Vec<Option<usize>> = reader
+                .list(list, "eliminate", "eliminate: [upper]")?
+                .iter()
+                .map(|level| reader.level(level))
+                .collect();
+            found.into_iter().collect()
+        }
+    };
+    let allow_beat = match node.get("allow_beat") {
+        None => false,
+        Some(truth) => reader.truth(truth, "allow_beat")?,
+    };
+    let frame = Rotating {
+        follows: follows?,
+        limit: limit?,
+        eliminate: eliminate?,
+        allow_beat,
+        place: node.place,
+    };
+    Some(Frame::Rotating(Box::new(frame)))
+}
+
+fn read_follows(reader: &mut Reader, node: &Node) -> Option<Follows> {
+    let Some(entries) = node.entries() else {
+        return reader.word(node, "frame / follows", &[("drives", ())]).map(|()| Follows::Drives);
+    };
+    let names = reader.level_names();
+    let mut table = Vec::new();
+    let mut good = true;
+    for entry in entries {
+        let frequency = reader.quantity(&entry.value, "a frequency of the frame", Dim::FREQUENCY);
+        match (names.iter().position(|name| *name == entry.key), frequency) {
+            (Some(level), Some(frequency)) => table.push((level, frequency)),
+            (None, _) => {
+                reader.unknown(entry.place, "level", &entry.key, &names);
+                good = false;
+            }
+            _ => good = false,
+        }
+    }
+    good.then_some(Follows::Table(table))
 }
 
 /// A plot that a run can draw.

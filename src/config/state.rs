@@ -120,7 +120,7 @@ fn read_superposition(reader: &mut Reader, node: &Node) -> Option<State> {
     if !good {
         return None;
     }
-    let values = reader.tape.evaluate(&[]);
+    let values = reader.tape.as_written();
     let sum: f64 = parts.iter().map(|(_, size, _)| values[size.register as usize].powi(2)).sum();
     if !(sum.is_finite() && (sum - 1.0).abs() <= 1e-6) {
         let scaled: Vec<String> = entries

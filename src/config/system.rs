@@ -311,7 +311,7 @@ fn read_hamiltonian(reader: &mut Reader, node: &Node) -> Option<System> {
 
 /// Reports the first pair of entries that are not complex conjugates, with the numbers as written.
 fn hermitian(reader: &mut Reader, names: &[String], entries: &[MatrixEntry], unit: f64) -> Option<()> {
-    let values = reader.tape.evaluate(&[]);
+    let values = reader.tape.as_written();
     let value = |entry: &MatrixEntry| {
         (
             values[entry.value.re as usize],

@@ -50,8 +50,19 @@ pub struct PlacedCarrier<'d> {
     pub written: &'d Carrier,
 }
 
+/// A carrier set anew.
+#[derive(Debug, Clone, Copy)]
+pub struct CarrierChange {
+    /// When.
+    pub at: Instant,
+    /// Index of the drive.
+    pub drive: usize,
+    /// Which of [`Timeline::carriers`] it has from then on.
+    pub carrier: usize,
+}
+
 /// The sequence of one point.
-#[derive(Debug, Clone)]
+#[derive(Debug, Clone, Default)]
 pub struct Timeline<'d> {
     /// Pulses in the order written, repeats and blocks unrolled.
     pub pulses: Vec<PlacedPulse>,
@@ -59,6 +70,10 @@ pub struct Timeline<'d> {
     pub groups: Vec<Group>,
     /// Carriers in use.
     pub carriers: Vec<PlacedCarrier<'d>>,
+    /// Carriers that drives have at the start, by drive; none for a direct one.
+    pub first_carriers: Vec<Option<usize>>,
+    /// Carriers set anew, in order.
+    pub changes: Vec<CarrierChange>,
     /// Marks.
     pub marks: Vec<(String, Instant)>,
     /// The end.
@@ -95,13 +110,7 @@ pub fn lay_out<'d>(document: &'d Document, values: &[f64], reference_turns: &[f6
         values,
         reference_turns,
         lengths: lengths_s,
-        timeline: Timeline {
-            pulses: Vec::new(),
-            groups: Vec::new(),
-            carriers: Vec::new(),
-            marks: Vec::new(),
-            end: Instant::default(),
-        },
+        timeline: Timeline::default(),
         now: Instant::default(),
         frame_turns: vec![0.0; document.drives.len()],
         running: Vec::new(),
@@ -120,6 +129,7 @@ pub fn lay_out<'d>(document: &'d Document, values: &[f64], reference_turns: &[f6
                 turns: 0.0,
             }
         });
+        walk.timeline.first_carriers.push(running.map(|running| running.carrier));
         walk.running.push(running);
     }
     walk.steps(&document.sequence)?;
@@ -307,6 +317,11 @@ impl<'d> Walk<'d, '_> {
             }
             _ => (Instant::default(), 0.0),
         };
+        self.timeline.changes.push(CarrierChange {
+            at: self.now,
+            drive,
+            carrier,
+        });
         self.running[drive] = Some(Running { carrier, since, turns });
     }
 }
