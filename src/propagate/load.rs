@@ -36,6 +36,8 @@ pub struct Load {
     pub rises: f64,
     /// Size of H in the frame of the problem, its mean taken off, times time, over everything, rad.
     pub lab_rad: f64,
+    /// The same with the diagonal as it stands, to which the rounding of its entries is relative, rad.
+    pub entries_rad: f64,
     /// Largest turning frequency times time, over everything, turns.
     pub carrier_turns: f64,
 }
@@ -91,6 +93,7 @@ impl Load {
         let bounds: Vec<f64> = problem.matrices.iter().map(row_bound).collect();
         let off = (0..n).map(|j| (0..n).filter(|k| *k != j).map(|k| a[(j, k)].norm()).sum::<f64>()).fold(0.0, f64::max);
         let resting_rad_s = off + half_range((0..n).map(|j| a[(j, j)].re));
+        let entries_rad_s = off + (0..n).map(|j| a[(j, j)].re.abs()).fold(0.0, f64::max);
         let mut load = Load {
             levels: n,
             columns: if demand.propagator { n + 1 } else { 1 },
@@ -106,6 +109,7 @@ impl Load {
             still_turns: 0.0,
             rises: 0.0,
             lab_rad: 0.0,
+            entries_rad: 0.0,
             carrier_turns: 0.0,
         };
         for segment in &problem.segments {
@@ -136,6 +140,7 @@ impl Load {
                 load.rises += rises;
             }
             load.lab_rad += rad_s * length_s;
+            load.entries_rad += (rad_s - resting_rad_s + entries_rad_s) * length_s;
             load.carrier_turns += carrier * length_s;
         }
         load
@@ -144,6 +149,6 @@ impl Load {
     /// What rounding leaves uncertain in any recorded number: that of the entries of H over the whole time, and that of `sums`
     /// products one after the other, which all err in the same sense where the factors are alike.
     pub(super) fn floor(&self, sums: u64) -> f64 {
-        f64::EPSILON * (4.0 + 0.5 * self.lab_rad + 0.25 * sums as f64)
+        f64::EPSILON * (4.0 + 0.7 * self.entries_rad + 0.25 * sums as f64)
     }
 }

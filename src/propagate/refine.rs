@@ -10,7 +10,7 @@ use super::solved::{Resolution, Solved};
 use crate::problem::Problem;
 
 /// Multiplications that all runs of one problem may use together: a minute or so on one core.
-const MOST_MULTIPLICATIONS: f64 = 2e10;
+const MOST_MULTIPLICATIONS: f64 = 8e9;
 /// First tolerance of the step control over the accuracy asked for: the estimates of order 5 and 3 exceed the error by some 1e4.
 const FIRST_TOLERANCE: f64 = 10.0;
 /// Most doublings of equal steps.

@@ -189,3 +189,48 @@ fn calibrate_error_figure() {
         );
     }
 }
+
+/// What the choice between smooth and geometric was fitted to: a line of numbers for each problem and method.
+#[test]
+#[ignore = "prints a table of loads and seconds, asserts nothing"]
+fn print_loads_and_seconds() {
+    let mut random = Random(77);
+    for _ in 0..400 {
+        let mut case = random_problem(&mut random);
+        let longer = random.size(0.3, 60.0);
+        for segment in &mut case.segments {
+            for term in &mut case.terms[segment.terms.clone()] {
+                let old = term.envelope.clone();
+                if let Envelope::Smooth { .. } = old {
+                    term.envelope = Envelope::Smooth { shape: Arc::new(Shape(Box::new(move |t| old.at(t / longer)))), since_s: 0.0, scale: re(1.0) };
+                }
+            }
+            segment.length_s *= longer;
+        }
+        for moment in &mut case.moments {
+            moment.offset_s *= longer;
+        }
+        let mut at = Instant::at(0.0);
+        for segment in &mut case.segments {
+            segment.start = at;
+            at = at.after(segment.length_s);
+        }
+        let accuracy = random.size(1e-11, 1e-6);
+        let demand = Demand { propagator: random.chance(0.3), time_in: false };
+        let mut pictures = crate::propagate::picture::Pictures::new(&case);
+        let load = crate::propagate::Load::of(&case, &demand, accuracy, &mut pictures);
+        if load.changing == 0 {
+            continue;
+        }
+        let mut line = format!(
+            "LOAD {} {} {} {} {:e} {:e} {:e} {:e} {:e} {:e}",
+            load.levels, load.columns, load.changing, load.moments, load.accuracy, load.coupling_turns, load.entry_turns, load.swing_turns, load.still_turns, load.rises
+        );
+        for method in [Method::Smooth, Method::Geometric] {
+            let clock = std::time::Instant::now();
+            let solved = crate::propagate::solve(&case, &demand, &asked(accuracy, Some(method)), Kept::default);
+            line += &format!(" {:e} {}", clock.elapsed().as_secs_f64() * 1e9, solved.steps);
+        }
+        println!("{line}");
+    }
+}
