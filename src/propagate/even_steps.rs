@@ -6,7 +6,7 @@ use super::run::{Eye, State, Stretch, Work};
 fn first_steps(stretch: &Stretch) -> f64 {
     let turning = stretch.picture.fastest_hz * stretch.length_s;
     let swing = super::load::size_hz(stretch.picture, stretch.terms, stretch.length_s) * stretch.length_s;
-    4.0 + turning + 0.5 * swing
+    4.0 / super::load::busy_part(stretch.terms, stretch.length_s) + turning + 0.5 * swing
 }
 
 /// Carries the state through the stretch; `step(tau, h, state)` does one step of h seconds from tau and gives its matrix-vector products.

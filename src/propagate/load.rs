@@ -72,6 +72,22 @@ fn height(envelope: &Envelope, length_s: f64) -> (f64, f64) {
     }
 }
 
+/// Part of the segment, above 0 and up to 1, in which the smooth envelopes rise or fall; keeps a narrow pulse in a long segment from being stepped over.
+pub(super) fn busy_part(terms: &[Term], length_s: f64) -> f64 {
+    let mut part: f64 = 1.0;
+    for term in terms.iter().filter(|term| matches!(term.envelope, Envelope::Smooth { .. })) {
+        let values: Vec<_> = (0..=CELLS).map(|i| term.envelope.at(length_s * f64::from(i) / f64::from(CELLS))).collect();
+        let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
+        let busy = values.windows(2).filter(|pair| (pair[1] - pair[0]).norm() > 1e-3 * most).count();
+        if busy > 0 {
+            part = part.min(busy as f64 / f64::from(CELLS));
+        }
+    }
+    part
+}
+
+const CELLS: u32 = 128;
+
 fn half_range(values: impl Iterator<Item = f64>) -> f64 {
     let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), value| (value.min(low), value.max(high)));
     if high >= low {

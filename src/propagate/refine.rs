@@ -1,7 +1,7 @@
 //! Solving at two resolutions, and tightening until the measured error is small enough.
 
 use super::asked::{Asked, Demand, Recorder};
-use super::choose::{choose, Method};
+use super::choose::{choose, Method, METHODS};
 use super::cross_check::cross_check;
 use super::load::Load;
 use super::picture::Pictures;
@@ -13,6 +13,8 @@ use crate::problem::Problem;
 const MOST_MULTIPLICATIONS: f64 = 8e9;
 /// First tolerance of the step control over the accuracy asked for: the estimates of order 5 and 3 exceed the error by some 1e4.
 const FIRST_TOLERANCE: f64 = 10.0;
+/// Where the estimate is beyond this, nothing is computed: an hour.
+const HOPELESS_NS: f64 = 3.6e12;
 /// Most doublings of equal steps.
 const MOST_DOUBLINGS: u32 = 22;
 
@@ -44,10 +46,16 @@ struct Ran<R> {
 pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new_recorder: impl Fn() -> R) -> Solved<R> {
     let mut pictures = Pictures::new(problem);
     let load = Load::of(problem, demand, asked.accuracy, &mut pictures);
-    let (method, reason) = choose(&load, asked.method);
+    let (method, mut reason) = choose(&load, asked.method);
     // Runge-Kutta sums are compensated; all other steps are products, one after the other.
     let floor_of = |work: &Work| load.floor(if load.changing > 0 && method != Method::Smooth { work.steps } else { load.segments as u64 });
     let mut left = MOST_MULTIPLICATIONS;
+    let hopeless = METHODS.iter().filter(|row| row.method == method && load.changing > 0).map(|row| (row.cost_ns)(&load)).find(|ns| *ns > HOPELESS_NS);
+    if let (Some(ns), true) = (hopeless, method != Method::ConstantSteps) {
+        // Only walks through the moments, so that the caller has his rows, and says so with an infinite figure.
+        left = 0.0;
+        reason += &format!("; it was not run, since it would take about {:.0e} s", ns * 1e-9);
+    }
     let mut products = 0;
     let mut go = |fineness: Fineness| {
         let mut recorder = new_recorder();

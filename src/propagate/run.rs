@@ -28,7 +28,7 @@ pub(super) struct Work {
     pub steps: u64,
     /// Matrix-vector products of this run.
     pub products: u64,
-    /// Multiplications left; below zero the run is cut short and worthless.
+    /// Multiplications left; at zero the run is cut short and worthless.
     pub left: f64,
 }
 
@@ -43,7 +43,7 @@ impl Work {
 
     /// Whether nothing is left.
     pub fn exhausted(&self) -> bool {
-        self.left < 0.0
+        self.left <= 0.0
     }
 }
 

@@ -52,7 +52,8 @@ impl Smooth {
         let columns = (state.amplitudes.len() / dim) as u64;
         let timed = !state.time_in_s.is_empty();
         // No step may pass over a whole turn of H or much of an envelope, whatever the error estimate says there.
-        let cap_s = (length_s / (6.0 + 4.0 * f64::from(fineness.pieces))).min(1.0 / picture.fastest_hz);
+        let busy = super::load::busy_part(stretch.terms, length_s);
+        let cap_s = (length_s * busy / (6.0 + 4.0 * f64::from(fineness.pieces))).min(1.0 / picture.fastest_hz);
         let rate = super::load::size_hz(picture, stretch.terms, length_s) + picture.fastest_hz;
         let mut wish_s = if rate > 0.0 { cap_s.min(0.05 / rate) } else { cap_s };
         let mut tau_s = 0.0;

@@ -41,12 +41,13 @@ fn table(nodes: &[f64; NODES], weights: &[f64; NODES]) -> [[f64; NODES]; NODES] 
 }
 
 /// Shows every moment to `kept`, in steps through which H and its turning go by at most `most_rad`.
-pub fn solve(problem: &Problem, most_rad: f64, kept: &mut Kept) {
+pub fn solve(problem: &Problem, most_rad: f64, timed: bool, kept: &mut Kept) {
     let (nodes, weights) = gauss();
     let a = table(&nodes, &weights);
     let n = problem.dim();
     let mut psi = problem.start.clone();
     let mut next = 0;
+    let mut spent = vec![0.0; n];
     for (index, segment) in problem.segments.iter().enumerate() {
         let turning = problem.terms_of(segment).iter().map(|term| rad_s(term.turns_hz.abs())).fold(0.0, f64::max);
         let size = (0..=20).map(|i| problem.hamiltonian(segment, segment.length_s * i as f64 / 20.0).norm()).fold(0.0, f64::max);
@@ -71,6 +72,15 @@ pub fn solve(problem: &Problem, most_rad: f64, kept: &mut Kept) {
                 }
                 let k = system.lu().solve(&right).expect("close to the identity");
                 for i in 0..NODES {
+                    let mut inner = psi.clone();
+                    for j in 0..NODES {
+                        inner += k.view((j * n, 0), (n, 1)) * re(h * a[i][j]);
+                    }
+                    for (time, amplitude) in spent.iter_mut().zip(inner.iter()) {
+                        *time += h * weights[i] * amplitude.norm_sqr();
+                    }
+                }
+                for i in 0..NODES {
                     psi += k.view((i * n, 0), (n, 1)) * re(h * weights[i]);
                 }
             }
@@ -78,7 +88,7 @@ pub fn solve(problem: &Problem, most_rad: f64, kept: &mut Kept) {
             if !here {
                 break;
             }
-            kept.see(next, &psi, &[]);
+            kept.see(next, &psi, if timed { &spent } else { &[] });
             next += 1;
         }
     }

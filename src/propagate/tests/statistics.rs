@@ -131,10 +131,12 @@ fn tally(seed: u64, problems: u32, wish: impl Fn(&mut Random) -> Option<Method>)
     for number in 0..problems {
         let case = random_problem(&mut random);
         let method = wish(&mut random);
-        let accuracy = if method == Some(Method::ConstantSteps) { random.size(1e-7, 1e-4) } else { random.size(1e-11, 1e-6) };
-        let mut exact = Kept::default();
-        collocation::solve(&case, 0.8, &mut exact);
-        let solved = solve(&case, accuracy, method);
+        let accuracy = if method == Some(Method::ConstantSteps) { random.size(1e-7, 1e-4) } else { random.size(1e-11, 1e-4) };
+        let demand = Demand { propagator: false, time_in: method != Some(Method::Geometric) && random.chance(0.3) };
+        let kept = || Kept { scale_s: case.length_s(), ..Kept::default() };
+        let mut exact = kept();
+        collocation::solve(&case, 0.8, demand.time_in, &mut exact);
+        let solved = crate::propagate::solve(&case, &demand, &asked(accuracy, method), kept);
         let pairs = solved.recorded.numbers().iter().zip(exact.numbers());
         let error = pairs.map(|(a, b)| (a - b).abs()).fold(0.0, f64::max);
         tally.runs[match solved.method {
