@@ -15,8 +15,8 @@ const MOST_MULTIPLICATIONS: f64 = 8e9;
 const FIRST_TOLERANCE: f64 = 10.0;
 /// Where the estimate is beyond this, nothing is computed: an hour.
 const HOPELESS_NS: f64 = 3.6e12;
-/// Most doublings of equal steps.
-const MOST_DOUBLINGS: u32 = 22;
+/// Most equal steps of the coarser run.
+const MOST_EVEN_STEPS: f64 = 4_194_304.0;
 
 /// The error figure of one number: its change under refinement with a fifth on top, at least the floor of rounding.
 pub fn figure(coarse: f64, fine: f64, floor: f64) -> f64 {
@@ -72,16 +72,12 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         let floor = floor_of(&coarse.work);
         let spoilt = coarse.work.exhausted() || fine.work.exhausted();
         let error_figure = if spoilt { f64::INFINITY } else { largest_figure(coarse.recorder.numbers(), fine.recorder.numbers(), floor) };
-        if error_figure <= asked.accuracy || spoilt || !error_figure.is_finite() || load.changing == 0 {
+        if error_figure <= asked.accuracy.max(floor) || spoilt || !error_figure.is_finite() || load.changing == 0 {
             break (error_figure, floor);
         }
         let Some(wanted) = tighten(&coarse, &fine, error_figure / asked.accuracy, method, least) else {
             break (error_figure, floor);
         };
-        let ahead = expected_cost(&coarse, &fine, wanted, method);
-        if ahead > fine.work.left {
-            break (error_figure, floor);
-        }
         let (next_coarse, reused) = if wanted == fine.fineness { (None, true) } else { (Some(go(wanted)), false) };
         let next_fine = go(finer(wanted, method, least));
         let worse = next_fine.work.exhausted() || next_coarse.as_ref().is_some_and(|ran| ran.work.exhausted());
@@ -131,6 +127,10 @@ fn tighten<R>(coarse: &Ran<R>, fine: &Ran<R>, excess: f64, method: Method, least
             if fine.fineness.tolerance <= least && coarse.fineness.tolerance <= least && coarse.fineness.pieces > 3 {
                 return None;
             }
+            // The next runs cost about twice as much as the last one.
+            if 4.0 * (coarse.work.left - fine.work.left) > fine.work.left {
+                return None;
+            }
             if excess < 20.0 || coarse.fineness.tolerance <= least {
                 return Some(fine.fineness);
             }
@@ -138,22 +138,16 @@ fn tighten<R>(coarse: &Ran<R>, fine: &Ran<R>, excess: f64, method: Method, least
         }
         Method::Geometric | Method::ConstantSteps => {
             let (order, stride) = if method == Method::Geometric { (6.0, 1) } else { (2.0, 2) };
-            let more = ((1.1 * excess).log2() / order).ceil().clamp(1.0, 8.0) as u32;
-            let doublings = coarse.fineness.doublings + more.max(stride);
-            if doublings + stride > MOST_DOUBLINGS {
-                return None;
-            }
-            Some(Fineness { doublings, ..fine.fineness })
+            let more = ((1.1 * excess).log2() / order).ceil().clamp(1.0, 40.0) as u32;
+            // As many doublings as are wanted, or as can be afforded.
+            let cost_now = (coarse.work.left - fine.work.left) / 2f64.powi(stride as i32);
+            let affordable = |more: &u32| {
+                let times = 2f64.powi(*more as i32);
+                coarse.work.steps as f64 * times <= MOST_EVEN_STEPS && cost_now * times * (1.0 + 2f64.powi(stride as i32)) <= fine.work.left
+            };
+            let more = (stride..=more.max(stride)).rev().find(affordable)?;
+            Some(Fineness { doublings: coarse.fineness.doublings + more, pieces: fine.fineness.pieces, tolerance: fine.fineness.tolerance })
         }
-    }
-}
-
-/// Multiplications of the next coarse and fine run, as far as they can be known beforehand.
-fn expected_cost<R>(coarse: &Ran<R>, fine: &Ran<R>, wanted: Fineness, method: Method) -> f64 {
-    let last = coarse.work.left - fine.work.left;
-    match method {
-        Method::Smooth => 2.0 * last,
-        _ => last * 2f64.powi(wanted.doublings as i32 - fine.fineness.doublings as i32) * if method == Method::Geometric { 3.0 } else { 5.0 },
     }
 }
 

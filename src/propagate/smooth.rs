@@ -28,6 +28,12 @@ pub(super) struct Smooth {
     /// What the compensated sum has not yet carried over.
     lost: Vec<Complex64>,
     envelopes: Vec<Complex64>,
+    /// Of each group of entries: its phase at the start of the step, what it turns by up to each stage, its factor at the stage at hand.
+    phases: Vec<Complex64>,
+    turned: Vec<Complex64>,
+    factors: Vec<Complex64>,
+    /// The step for which `turned` was made, s.
+    turned_for_s: f64,
 }
 
 impl Smooth {
@@ -41,6 +47,10 @@ impl Smooth {
             next: zero(),
             lost: zero(),
             envelopes: Vec::new(),
+            phases: Vec::new(),
+            turned: Vec::new(),
+            factors: Vec::new(),
+            turned_for_s: f64::NAN,
         }
     }
 
@@ -58,22 +68,28 @@ impl Smooth {
         let mut wish_s = if rate > 0.0 { cap_s.min(0.05 / rate) } else { cap_s };
         let mut tau_s = 0.0;
         self.lost.fill(Complex64::default());
-        derivative(picture, stretch.terms, 0.0, dim, &state.amplitudes, &mut self.slopes[0], &mut self.envelopes);
+        self.turned_for_s = f64::NAN;
+        self.restart(picture, stretch.terms, 0.0, state);
         for k in 0..=stretch.moments.len() {
             let stop_s = stretch.moments.get(k).map_or(length_s, |moment| moment.offset_s.min(length_s));
             let most_s = cap_s.min((stop_s - tau_s) / f64::from(fineness.pieces));
             while tau_s < stop_s && !work.exhausted() {
                 let left_s = stop_s - tau_s;
-                let mut h = wish_s.min(most_s);
+                let mut nominal_s = wish_s.min(most_s);
+                let mut h = nominal_s;
                 let mut to_s = tau_s + h;
                 if h >= 0.999 * left_s || to_s <= tau_s {
-                    (h, to_s) = (left_s, stop_s);
+                    (nominal_s, h, to_s) = (left_s, left_s, stop_s);
                 } else if h > 0.5 * left_s {
                     to_s = tau_s + 0.5 * left_s;
                     h = to_s - tau_s;
+                    nominal_s = h;
                 } else {
                     // The step that the clock really makes, or its rounding would add up.
                     h = to_s - tau_s;
+                }
+                if nominal_s != self.turned_for_s {
+                    self.turn(picture, nominal_s);
                 }
                 let error = self.step(picture, stretch.terms, tau_s, h, changing_s, state, timed);
                 work.step(12 * columns, multiplications);
@@ -87,11 +103,13 @@ impl Smooth {
                     wish_s = h * factor;
                     continue;
                 }
-                wish_s = if h < wish_s.min(most_s) { wish_s.max(h * factor) } else { h * factor };
+                // Small changes are not worth the new phases of every stage that they need.
+                let factor = if (1.0..1.2).contains(&factor) { 1.0 } else { factor };
+                wish_s = if nominal_s < wish_s.min(most_s) { wish_s.max(nominal_s * factor) } else { nominal_s * factor };
                 wish_s = wish_s.min(cap_s);
                 self.accept(h, state, timed);
                 tau_s = to_s;
-                derivative(picture, stretch.terms, tau_s, dim, &state.amplitudes, &mut self.slopes[0], &mut self.envelopes);
+                self.restart(picture, stretch.terms, tau_s, state);
             }
             if k < stretch.moments.len() {
                 eye.see(stretch, k, &state.amplitudes[..dim], &state.time_in_s);
@@ -99,6 +117,38 @@ impl Smooth {
         }
         for (amplitude, lost) in state.amplitudes.iter_mut().zip(&self.lost) {
             *amplitude -= lost;
+        }
+    }
+
+    /// Slope at the start of a step, and the phases that its stages begin from.
+    fn restart(&mut self, picture: &Picture, terms: &[Term], tau_s: f64, state: &State) {
+        self.phases.clear();
+        self.phases.extend(picture.turnings.iter().map(|turning| {
+            let turned = turns(turning.turns_hz, tau_s);
+            cis_turns(-turning.term.map_or(turned, |k| terms[k].phase_turns + turned))
+        }));
+        self.factors_at(picture, terms, tau_s, None);
+        derivative(picture, &self.factors, self.dim, &state.amplitudes, &mut self.slopes[0]);
+    }
+
+    /// What each group turns by up to each stage of a step of `h` seconds.
+    fn turn(&mut self, picture: &Picture, h: f64) {
+        self.turned.clear();
+        for node in NODES {
+            self.turned.extend(picture.turnings.iter().map(|turning| cis_turns(-turning.turns_hz * node * h)));
+        }
+        self.turned_for_s = h;
+    }
+
+    /// Factors of all groups at `tau_s`, the given stage of the step or its start.
+    fn factors_at(&mut self, picture: &Picture, terms: &[Term], tau_s: f64, stage: Option<usize>) {
+        self.envelopes.clear();
+        self.envelopes.extend(terms.iter().map(|term| term.envelope.at(tau_s)));
+        self.factors.clear();
+        let groups = picture.turnings.len();
+        for (g, (turning, phase)) in picture.turnings.iter().zip(&self.phases).enumerate() {
+            let phase = stage.map_or(*phase, |stage| phase * self.turned[stage * groups + g]);
+            self.factors.push(turning.term.map_or(phase, |k| self.envelopes[k] * phase));
         }
     }
 
@@ -115,8 +165,11 @@ impl Smooth {
                         *out += slope * scale;
                     }
                 }
-                let slope = &mut self.slopes[stage];
-                derivative(picture, terms, tau_s + NODES[stage] * h, dim, &self.trial, slope, &mut self.envelopes);
+                // The last two stages share their node.
+                if NODES[stage] != NODES[stage - 1] {
+                    self.factors_at(picture, terms, tau_s + NODES[stage] * h, Some(stage));
+                }
+                derivative(picture, &self.factors, dim, &self.trial, &mut self.slopes[stage]);
             }
             if timed {
                 let psi = if stage > 0 { &self.trial } else { &state.amplitudes };
@@ -189,22 +242,14 @@ fn blend(five: f64, three: f64) -> f64 {
     }
 }
 
-/// `slopes` = -i H(tau) `columns`.
-fn derivative(
-    picture: &Picture, terms: &[Term], tau_s: f64, dim: usize, columns: &[Complex64], slopes: &mut [Complex64], envelopes: &mut Vec<Complex64>,
-) {
-    envelopes.clear();
-    envelopes.extend(terms.iter().map(|term| term.envelope.at(tau_s)));
-    for (slope, (j, psi)) in slopes.iter_mut().zip((0..dim).cycle().zip(columns)) {
-        let rest = picture.diagonal[j];
-        *slope = if rest == 0.0 { Complex64::default() } else { Complex64::new(psi.im * rest, -psi.re * rest) };
+/// `slopes` = -i H `columns`, H with these factors of its groups of entries.
+fn derivative(picture: &Picture, factors: &[Complex64], dim: usize, columns: &[Complex64], slopes: &mut [Complex64]) {
+    for (slope, psi) in slopes.chunks_exact_mut(dim).zip(columns.chunks_exact(dim)) {
+        for ((out, amplitude), rest) in slope.iter_mut().zip(psi).zip(&picture.diagonal) {
+            *out = Complex64::new(amplitude.im * rest, -amplitude.re * rest);
+        }
     }
-    for turning in &picture.turnings {
-        let turned = turns(turning.turns_hz, tau_s);
-        let factor = match turning.term {
-            None => cis_turns(-turned),
-            Some(k) => envelopes[k] * cis_turns(-(terms[k].phase_turns + turned)),
-        };
+    for (turning, factor) in picture.turnings.iter().zip(factors) {
         for part in &turning.parts {
             let entry = factor * part.value;
             let (forth, back) = (Complex64::new(entry.im, -entry.re), Complex64::new(-entry.im, -entry.re));

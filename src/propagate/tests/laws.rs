@@ -134,7 +134,8 @@ fn prop_what_cannot_be_reached_stops_and_says_so() {
                 continue; // Millions of slices: true, but slow.
             }
             let solved = solve(&case, 1e-16, method);
-            assert!(!solved.reached && solved.error_figure < 1e-9, "{name} {method:?}: {:e}", solved.error_figure);
+            let best = if method == Some(Method::ConstantSteps) { 5e-9 } else { 1e-10 };
+            assert!(!solved.reached && solved.error_figure < best, "{name} {method:?}: {:e}", solved.error_figure);
         }
     }
     let pair = sparse(2, &[(1, 0, 1.0), (0, 1, 1.0)]);
