@@ -22,27 +22,11 @@ pub(super) const NODES: [f64; 12] = [
 /// Rows of the matrix a: (stage, weight).
 pub(super) const STAGES: [&[(usize, f64)]; 12] = [
     &[],
-    &[
-        (0, 0.05260015195876773),
-    ],
-    &[
-        (0, 0.0197250569845379),
-        (1, 0.0591751709536137),
-    ],
-    &[
-        (0, 0.02958758547680685),
-        (2, 0.08876275643042054),
-    ],
-    &[
-        (0, 0.2413651341592667),
-        (2, -0.8845494793282861),
-        (3, 0.924834003261792),
-    ],
-    &[
-        (0, 0.037037037037037035),
-        (3, 0.17082860872947386),
-        (4, 0.12546768756682242),
-    ],
+    &[(0, 0.05260015195876773)],
+    &[(0, 0.0197250569845379), (1, 0.0591751709536137)],
+    &[(0, 0.02958758547680685), (2, 0.08876275643042054)],
+    &[(0, 0.2413651341592667), (2, -0.8845494793282861), (3, 0.924834003261792)],
+    &[(0, 0.037037037037037035), (3, 0.17082860872947386), (4, 0.12546768756682242)],
     &[
         (0, 0.037109375),
         (3, 0.17025221101954405),
@@ -149,9 +133,14 @@ mod tests {
         }
         // sum b a c^k = 1/((k+1)(k+2)), the conditions of bushy trees with one branch, up to order 8.
         for power in 1..7 {
-            let sum: f64 =
-                WEIGHTS.iter().map(|(stage, b)| b * STAGES[*stage].iter().map(|(j, a)| a * NODES[*j].powi(power)).sum::<f64>()).sum();
-            assert!((sum - 1.0 / f64::from((power + 1) * (power + 2))).abs() < 4e-15, "b a c^{power} sums to {sum}");
+            let sum: f64 = WEIGHTS
+                .iter()
+                .map(|(stage, b)| b * STAGES[*stage].iter().map(|(j, a)| a * NODES[*j].powi(power)).sum::<f64>())
+                .sum();
+            assert!(
+                (sum - 1.0 / f64::from((power + 1) * (power + 2))).abs() < 4e-15,
+                "b a c^{power} sums to {sum}"
+            );
         }
         for (order, error) in [(5, ERROR_5), (3, ERROR_3)] {
             for power in 0..order {

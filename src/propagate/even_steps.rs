@@ -11,13 +11,21 @@ fn first_steps(stretch: &Stretch) -> f64 {
 
 /// Carries the state through the stretch; `step(tau, h, state)` does one step of h seconds from tau and gives its matrix-vector products.
 pub(super) fn pass(
-    stretch: &Stretch, doublings: u32, state: &mut State, eye: &mut Eye, work: &mut Work, mut step: impl FnMut(f64, f64, &mut State) -> u64,
+    stretch: &Stretch,
+    doublings: u32,
+    state: &mut State,
+    eye: &mut Eye,
+    work: &mut Work,
+    mut step: impl FnMut(f64, f64, &mut State) -> u64,
 ) {
     let dim = state.dim;
     let rate = first_steps(stretch) / stretch.length_s;
     let mut tau_s = 0.0;
     for k in 0..=stretch.moments.len() {
-        let stop_s = stretch.moments.get(k).map_or(stretch.length_s, |moment| moment.offset_s.min(stretch.length_s));
+        let stop_s = stretch
+            .moments
+            .get(k)
+            .map_or(stretch.length_s, |moment| moment.offset_s.min(stretch.length_s));
         let gap_s = stop_s - tau_s;
         if gap_s > 0.0 {
             let steps = (gap_s * rate).ceil().max(1.0) * 2f64.powi(doublings as i32);

@@ -64,7 +64,9 @@ fn height(envelope: &Envelope, length_s: f64) -> (f64, f64) {
     match envelope {
         Envelope::Constant(value) => (value.norm(), 0.0),
         Envelope::Smooth { .. } => {
-            let values: Vec<_> = (0..=SAMPLES).map(|i| envelope.at(length_s * f64::from(i) / f64::from(SAMPLES))).collect();
+            let values: Vec<_> = (0..=SAMPLES)
+                .map(|i| envelope.at(length_s * f64::from(i) / f64::from(SAMPLES)))
+                .collect();
             let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
             let way: f64 = values.windows(2).map(|pair| (pair[1] - pair[0]).norm()).sum();
             (most, if most > 0.0 { way / most } else { 0.0 })
@@ -76,7 +78,9 @@ fn height(envelope: &Envelope, length_s: f64) -> (f64, f64) {
 pub(super) fn busy_part(terms: &[Term], length_s: f64) -> f64 {
     let mut part: f64 = 1.0;
     for term in terms.iter().filter(|term| matches!(term.envelope, Envelope::Smooth { .. })) {
-        let values: Vec<_> = (0..=CELLS).map(|i| term.envelope.at(length_s * f64::from(i) / f64::from(CELLS))).collect();
+        let values: Vec<_> = (0..=CELLS)
+            .map(|i| term.envelope.at(length_s * f64::from(i) / f64::from(CELLS)))
+            .collect();
         let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
         let busy = values.windows(2).filter(|pair| (pair[1] - pair[0]).norm() > 1e-3 * most).count();
         if busy > 0 {
@@ -89,7 +93,9 @@ pub(super) fn busy_part(terms: &[Term], length_s: f64) -> f64 {
 const CELLS: u32 = 128;
 
 fn half_range(values: impl Iterator<Item = f64>) -> f64 {
-    let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), value| (value.min(low), value.max(high)));
+    let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), value| {
+        (value.min(low), value.max(high))
+    });
     if high >= low {
         0.5 * (high - low)
     } else {
@@ -99,7 +105,9 @@ fn half_range(values: impl Iterator<Item = f64>) -> f64 {
 
 /// Largest sum of moduli in a row of B + adjoint, the diagonal counted too.
 fn row_bound(b: &Matrix) -> f64 {
-    (0..b.nrows()).map(|j| (0..b.ncols()).map(|k| b[(j, k)].norm() + b[(k, j)].norm()).sum::<f64>()).fold(0.0, f64::max)
+    (0..b.nrows())
+        .map(|j| (0..b.ncols()).map(|k| b[(j, k)].norm() + b[(k, j)].norm()).sum::<f64>())
+        .fold(0.0, f64::max)
 }
 
 impl Load {
@@ -107,7 +115,9 @@ impl Load {
         let n = problem.dim();
         let a = &problem.statics;
         let bounds: Vec<f64> = problem.matrices.iter().map(row_bound).collect();
-        let off = (0..n).map(|j| (0..n).filter(|k| *k != j).map(|k| a[(j, k)].norm()).sum::<f64>()).fold(0.0, f64::max);
+        let off = (0..n)
+            .map(|j| (0..n).filter(|k| *k != j).map(|k| a[(j, k)].norm()).sum::<f64>())
+            .fold(0.0, f64::max);
         let resting_rad_s = off + half_range((0..n).map(|j| a[(j, j)].re));
         let entries_rad_s = off + (0..n).map(|j| a[(j, j)].re.abs()).fold(0.0, f64::max);
         let mut load = Load {

@@ -19,6 +19,9 @@ use crate::units::cis_turns;
 /// Scratch of the method, kept over the whole run.
 pub(super) struct Smooth {
     dim: usize,
+    timed: bool,
+    /// How long H changes altogether, s.
+    changing_s: f64,
     /// Slopes of the stages, d(phi)/dt.
     slopes: Vec<Vec<Complex64>>,
     /// Populations of the first column at the stages; empty unless time spent is wanted.
@@ -37,10 +40,12 @@ pub(super) struct Smooth {
 }
 
 impl Smooth {
-    pub fn new(dim: usize, size: usize, timed: bool) -> Self {
+    pub fn new(dim: usize, size: usize, timed: bool, changing_s: f64) -> Self {
         let zero = || vec![Complex64::default(); size];
         Smooth {
             dim,
+            timed,
+            changing_s,
             slopes: (0..12).map(|_| zero()).collect(),
             populations: (0..12).map(|_| vec![0.0; if timed { dim } else { 0 }]).collect(),
             trial: zero(),
@@ -55,12 +60,11 @@ impl Smooth {
     }
 
     /// Carries the state through the stretch.
-    pub fn pass(&mut self, stretch: &Stretch, fineness: &Fineness, changing_s: f64, state: &mut State, eye: &mut Eye, work: &mut Work) {
+    pub fn pass(&mut self, stretch: &Stretch, fineness: &Fineness, state: &mut State, eye: &mut Eye, work: &mut Work) {
         let dim = self.dim;
         let (picture, length_s) = (stretch.picture, stretch.length_s);
         let multiplications = 2 * picture.turnings.iter().map(|turning| turning.parts.len()).sum::<usize>() + 10 * picture.turnings.len();
         let columns = (state.amplitudes.len() / dim) as u64;
-        let timed = !state.time_in_s.is_empty();
         // No step may pass over a whole turn of H or much of an envelope, whatever the error estimate says there.
         let busy = super::load::busy_part(stretch.terms, length_s);
         let cap_s = (length_s * busy / (6.0 + 4.0 * f64::from(fineness.pieces))).min(1.0 / picture.fastest_hz);
@@ -91,13 +95,13 @@ impl Smooth {
                 if nominal_s != self.turned_for_s {
                     self.turn(picture, nominal_s);
                 }
-                let error = self.step(picture, stretch.terms, tau_s, h, changing_s, state, timed);
+                let error = self.step(picture, stretch.terms, tau_s, h, state);
                 work.step(12 * columns, multiplications);
                 if error.is_nan() {
                     work.left = -1.0;
                     break;
                 }
-                let allowed = fineness.tolerance * (h / changing_s);
+                let allowed = fineness.tolerance * (h / self.changing_s);
                 let factor = (0.9 * (allowed / error).powf(1.0 / 7.0)).clamp(0.2, 5.0);
                 if error > allowed && h > 1e-12 * length_s {
                     wish_s = h * factor;
@@ -105,9 +109,13 @@ impl Smooth {
                 }
                 // Small changes are not worth the new phases of every stage that they need.
                 let factor = if (1.0..1.2).contains(&factor) { 1.0 } else { factor };
-                wish_s = if nominal_s < wish_s.min(most_s) { wish_s.max(nominal_s * factor) } else { nominal_s * factor };
+                wish_s = if nominal_s < wish_s.min(most_s) {
+                    wish_s.max(nominal_s * factor)
+                } else {
+                    nominal_s * factor
+                };
                 wish_s = wish_s.min(cap_s);
-                self.accept(h, state, timed);
+                self.accept(h, state);
                 tau_s = to_s;
                 self.restart(picture, stretch.terms, tau_s, state);
             }
@@ -135,7 +143,8 @@ impl Smooth {
     fn turn(&mut self, picture: &Picture, h: f64) {
         self.turned.clear();
         for node in NODES {
-            self.turned.extend(picture.turnings.iter().map(|turning| cis_turns(-turning.turns_hz * node * h)));
+            self.turned
+                .extend(picture.turnings.iter().map(|turning| cis_turns(-turning.turns_hz * node * h)));
         }
         self.turned_for_s = h;
     }
@@ -153,8 +162,7 @@ impl Smooth {
     }
 
     /// Stages of one step; leaves the increment over h in `next` and gives the estimated error.
-    #[allow(clippy::too_many_arguments)]
-    fn step(&mut self, picture: &Picture, terms: &[Term], tau_s: f64, h: f64, changing_s: f64, state: &State, timed: bool) -> f64 {
+    fn step(&mut self, picture: &Picture, terms: &[Term], tau_s: f64, h: f64, state: &State) -> f64 {
         let dim = self.dim;
         for stage in 0..12 {
             if stage > 0 {
@@ -171,7 +179,7 @@ impl Smooth {
                 }
                 derivative(picture, &self.factors, dim, &self.trial, &mut self.slopes[stage]);
             }
-            if timed {
+            if self.timed {
                 let psi = if stage > 0 { &self.trial } else { &state.amplitudes };
                 for (population, amplitude) in self.populations[stage].iter_mut().zip(psi) {
                     *population = amplitude.norm_sqr();
@@ -193,28 +201,31 @@ impl Smooth {
             }
             worst = larger(worst, h * blend(five, three));
         }
-        if timed {
+        if self.timed {
             let (mut five, mut three) = (0.0, 0.0);
             for j in 0..dim {
                 five += estimate(ERROR_5, |stage| Complex64::new(self.populations[stage][j], 0.0)).norm_sqr();
                 three += estimate(ERROR_3, |stage| Complex64::new(self.populations[stage][j], 0.0)).norm_sqr();
             }
-            worst = larger(worst, h / changing_s * blend(five, three));
+            worst = larger(worst, h / self.changing_s * blend(five, three));
         }
         worst
     }
 
     /// Adds the increment to the state (compensated) and to the times spent.
-    fn accept(&mut self, h: f64, state: &mut State, timed: bool) {
+    fn accept(&mut self, h: f64, state: &mut State) {
         for ((amplitude, slope), lost) in state.amplitudes.iter_mut().zip(&self.next).zip(&mut self.lost) {
             let increment = slope * h - *lost;
             let sum = *amplitude + increment;
             *lost = (sum - *amplitude) - increment;
             *amplitude = sum;
         }
-        if timed {
+        if self.timed {
             for (j, time) in state.time_in_s.iter_mut().enumerate() {
-                *time += h * WEIGHTS.iter().map(|(stage, weight)| weight * self.populations[*stage][j]).sum::<f64>();
+                *time += h * WEIGHTS
+                    .iter()
+                    .map(|(stage, weight)| weight * self.populations[*stage][j])
+                    .sum::<f64>();
             }
         }
     }

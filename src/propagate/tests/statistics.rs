@@ -127,13 +127,31 @@ struct Tally {
 
 fn tally(seed: u64, problems: u32, wish: impl Fn(&mut Random) -> Option<Method>) -> Tally {
     let mut random = Random(seed);
-    let mut tally = Tally { problems, dishonest: 0, loose: 0, missed: 0, filled: Vec::new(), worst: 0.0, runs: [0; 3] };
+    let mut tally = Tally {
+        problems,
+        dishonest: 0,
+        loose: 0,
+        missed: 0,
+        filled: Vec::new(),
+        worst: 0.0,
+        runs: [0; 3],
+    };
     for number in 0..problems {
         let case = random_problem(&mut random);
         let method = wish(&mut random);
-        let accuracy = if method == Some(Method::ConstantSteps) { random.size(1e-7, 1e-4) } else { random.size(1e-11, 1e-4) };
-        let demand = Demand { propagator: false, time_in: method != Some(Method::Geometric) && random.chance(0.3) };
-        let kept = || Kept { scale_s: case.length_s(), ..Kept::default() };
+        let accuracy = if method == Some(Method::ConstantSteps) {
+            random.size(1e-7, 1e-4)
+        } else {
+            random.size(1e-11, 1e-4)
+        };
+        let demand = Demand {
+            propagator: false,
+            time_in: method != Some(Method::Geometric) && random.chance(0.3),
+        };
+        let kept = || Kept {
+            scale_s: case.length_s(),
+            ..Kept::default()
+        };
         let mut exact = kept();
         collocation::solve(&case, 0.8, demand.time_in, &mut exact);
         let solved = crate::propagate::solve(&case, &demand, &asked(accuracy, method), kept);
@@ -149,7 +167,10 @@ fn tally(seed: u64, problems: u32, wish: impl Fn(&mut Random) -> Option<Method>)
             tally.dishonest += 1;
             eprintln!(
                 "number {number}, {:?} of {} levels at {accuracy:.1e}: error {error:.2e}, figure {:.2e}, {:?}",
-                solved.method, case.dim(), solved.error_figure, solved.resolutions
+                solved.method,
+                case.dim(),
+                solved.error_figure,
+                solved.resolutions
             );
         }
         tally.filled.push(solved.error_figure / accuracy);
@@ -159,7 +180,11 @@ fn tally(seed: u64, problems: u32, wish: impl Fn(&mut Random) -> Option<Method>)
             tally.missed += 1;
             eprintln!(
                 "number {number}, {:?} of {} levels at {accuracy:.1e}: not reached, figure {:.2e}, floor {:.1e}, {:?}",
-                solved.method, case.dim(), solved.error_figure, solved.floor, solved.resolutions
+                solved.method,
+                case.dim(),
+                solved.error_figure,
+                solved.floor,
+                solved.resolutions
             );
         }
     }
@@ -173,7 +198,13 @@ fn prop_error_figure_is_honest_and_close() {
         1 => Some(Method::Geometric),
         _ => None,
     });
-    assert!(all.dishonest <= 1 && all.loose <= 12 && all.missed == 0, "{} dishonest, {} loose, {} missed", all.dishonest, all.loose, all.missed);
+    assert!(
+        all.dishonest <= 1 && all.loose <= 12 && all.missed == 0,
+        "{} dishonest, {} loose, {} missed",
+        all.dishonest,
+        all.loose,
+        all.missed
+    );
 }
 
 /// The calibration itself: `cargo test --release calibrate -- --ignored --nocapture`.
@@ -204,7 +235,11 @@ fn print_loads_and_seconds() {
             for term in &mut case.terms[segment.terms.clone()] {
                 let old = term.envelope.clone();
                 if let Envelope::Smooth { .. } = old {
-                    term.envelope = Envelope::Smooth { shape: Arc::new(Shape(Box::new(move |t| old.at(t / longer)))), since_s: 0.0, scale: re(1.0) };
+                    term.envelope = Envelope::Smooth {
+                        shape: Arc::new(Shape(Box::new(move |t| old.at(t / longer)))),
+                        since_s: 0.0,
+                        scale: re(1.0),
+                    };
                 }
             }
             segment.length_s *= longer;
@@ -218,7 +253,10 @@ fn print_loads_and_seconds() {
             at = at.after(segment.length_s);
         }
         let accuracy = random.size(1e-11, 1e-6);
-        let demand = Demand { propagator: random.chance(0.3), time_in: false };
+        let demand = Demand {
+            propagator: random.chance(0.3),
+            time_in: false,
+        };
         let mut pictures = crate::propagate::picture::Pictures::new(&case);
         let load = crate::propagate::Load::of(&case, &demand, accuracy, &mut pictures);
         if load.changing == 0 {
@@ -226,7 +264,16 @@ fn print_loads_and_seconds() {
         }
         let mut line = format!(
             "LOAD {} {} {} {} {:e} {:e} {:e} {:e} {:e} {:e}",
-            load.levels, load.columns, load.changing, load.moments, load.accuracy, load.coupling_turns, load.entry_turns, load.swing_turns, load.still_turns, load.rises
+            load.levels,
+            load.columns,
+            load.changing,
+            load.moments,
+            load.accuracy,
+            load.coupling_turns,
+            load.entry_turns,
+            load.swing_turns,
+            load.still_turns,
+            load.rises
         );
         for method in [Method::Smooth, Method::Geometric] {
             let clock = std::time::Instant::now();
