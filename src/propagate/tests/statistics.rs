@@ -114,6 +114,31 @@ pub fn random_problem(random: &mut Random) -> Problem {
     problem(&statics, matrices, segments)
 }
 
+/// The same problem with all times `longer` times as long.
+fn lengthened(mut case: Problem, longer: f64) -> Problem {
+    let mut at = Instant::at(0.0);
+    for segment in &mut case.segments {
+        for term in &mut case.terms[segment.terms.clone()] {
+            let old = term.envelope.clone();
+            if let Envelope::Smooth { .. } = old {
+                let shape = Arc::new(Shape(Box::new(move |t| old.at(t / longer))));
+                term.envelope = Envelope::Smooth {
+                    shape,
+                    since_s: 0.0,
+                    scale: re(1.0),
+                };
+            }
+        }
+        segment.length_s *= longer;
+        segment.start = at;
+        at = at.after(segment.length_s);
+    }
+    for moment in &mut case.moments {
+        moment.offset_s *= longer;
+    }
+    case
+}
+
 struct Tally {
     problems: u32,
     dishonest: u32,
@@ -125,7 +150,7 @@ struct Tally {
     runs: [u32; 3],
 }
 
-fn tally(seed: u64, problems: u32, wish: impl Fn(&mut Random) -> Option<Method>) -> Tally {
+fn tally(seed: u64, problems: u32, longest: f64, wish: impl Fn(&mut Random) -> Option<Method>) -> Tally {
     let mut random = Random(seed);
     let mut tally = Tally {
         problems,
@@ -137,7 +162,8 @@ fn tally(seed: u64, problems: u32, wish: impl Fn(&mut Random) -> Option<Method>)
         runs: [0; 3],
     };
     for number in 0..problems {
-        let case = random_problem(&mut random);
+        let longer = random.size(0.3, longest);
+        let case = lengthened(random_problem(&mut random), longer);
         let method = wish(&mut random);
         let accuracy = if method == Some(Method::ConstantSteps) {
             random.size(1e-7, 1e-4)
@@ -193,7 +219,7 @@ fn tally(seed: u64, problems: u32, wish: impl Fn(&mut Random) -> Option<Method>)
 
 #[test]
 fn prop_error_figure_is_honest_and_close() {
-    let all = tally(0x9e37_79b9_7f4a_7c15, 60, |random| match random.below(6) {
+    let all = tally(0x9e37_79b9_7f4a_7c15, 60, 2.0, |random| match random.below(6) {
         0 => Some(Method::Smooth),
         1 => Some(Method::Geometric),
         _ => None,
@@ -211,8 +237,15 @@ fn prop_error_figure_is_honest_and_close() {
 #[test]
 #[ignore = "takes minutes; prints the table that the tolerances come from"]
 fn calibrate_error_figure() {
-    for method in [None, Some(Method::Smooth), Some(Method::Geometric), Some(Method::ConstantSteps)] {
-        let mut all = tally(0x1234_5678_9abc_def1, 400, |_| method);
+    let rows = [
+        (400, 2.0, None),
+        (400, 2.0, Some(Method::Smooth)),
+        (400, 2.0, Some(Method::Geometric)),
+        (400, 2.0, Some(Method::ConstantSteps)),
+        (300, 40.0, None),
+    ];
+    for (problems, longest, method) in rows {
+        let mut all = tally(0x1234_5678_9abc_def1, problems, longest, |_| method);
         all.filled.sort_by(f64::total_cmp);
         let part = |of: f64| all.filled[(of * (all.filled.len() - 1) as f64) as usize];
         let percent = |count: u32| 100.0 * f64::from(count) / f64::from(all.problems);
@@ -229,29 +262,8 @@ fn calibrate_error_figure() {
 fn print_loads_and_seconds() {
     let mut random = Random(77);
     for _ in 0..400 {
-        let mut case = random_problem(&mut random);
         let longer = random.size(0.3, 60.0);
-        for segment in &mut case.segments {
-            for term in &mut case.terms[segment.terms.clone()] {
-                let old = term.envelope.clone();
-                if let Envelope::Smooth { .. } = old {
-                    term.envelope = Envelope::Smooth {
-                        shape: Arc::new(Shape(Box::new(move |t| old.at(t / longer)))),
-                        since_s: 0.0,
-                        scale: re(1.0),
-                    };
-                }
-            }
-            segment.length_s *= longer;
-        }
-        for moment in &mut case.moments {
-            moment.offset_s *= longer;
-        }
-        let mut at = Instant::at(0.0);
-        for segment in &mut case.segments {
-            segment.start = at;
-            at = at.after(segment.length_s);
-        }
+        let case = lengthened(random_problem(&mut random), longer);
         let accuracy = random.size(1e-11, 1e-6);
         let demand = Demand {
             propagator: random.chance(0.3),
