@@ -200,7 +200,7 @@ fn tally(seed: u64, problems: u32, longest: f64, wish: impl Fn(&mut Random) -> O
             );
         }
         tally.filled.push(solved.error_figure / accuracy);
-        tally.worst = tally.worst.max(error / solved.error_figure);
+        tally.worst = tally.worst.max(error / (solved.error_figure + 3e-14));
         tally.loose += u32::from(solved.error_figure > 10.0 * error.max(1e-12));
         if !solved.reached {
             tally.missed += 1;
