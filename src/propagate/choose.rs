@@ -137,7 +137,11 @@ pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
                 ),
             );
         }
-        return (method, "asked for by name".to_string());
+        let asked = "asked for by name".to_string();
+        if load.changing == 0 && method != Method::ConstantSteps {
+            return (method, asked + "; H is constant throughout, so exponentials serve here too");
+        }
+        return (method, asked);
     }
     if load.changing == 0 {
         let where_ = if load.segments == 1 {
@@ -165,8 +169,12 @@ pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
         return (Method::Geometric, why);
     }
     let mut why = format!(
-        "the couplings swing the state through {} turns while H itself turns {} times and its envelopes rise or fall {} times, with {} levels",
-        round(load.coupling_turns), round(load.entry_turns), round(load.rises), load.levels
+        "the couplings swing the state through {} turns while H itself turns {} times and its envelopes rise or fall {} times, \
+         with {} levels",
+        round(load.coupling_turns),
+        round(load.entry_turns),
+        round(load.rises),
+        load.levels
     );
     if geometric < smooth {
         why += "; geometric steps would be cheaper but give no time spent in a level";

@@ -74,7 +74,8 @@ pub(super) fn cross_check<R: Recorder>(
     if evaluations > MOST_EVALUATIONS || load.levels * load.columns > 1024 || evaluations * (load.levels.pow(2) * load.columns) as f64 > 4e9
     {
         let reason = format!(
-            "it would take about {evaluations:.1e} evaluations of H ({turns:.0} turns in {} stretches with {} moments), more than is worth waiting for",
+            "it would take about {evaluations:.1e} evaluations of H ({turns:.0} turns in {} stretches with {} moments), \
+             more than is worth waiting for",
             load.segments, load.moments
         );
         return CrossCheck::Skipped { method, reason };

@@ -1,10 +1,12 @@
 //! exp(-i H tau) of a constant Hermitian H, acting on columns.
 //!
 //! H in rad/s, `dim` x `dim`, column after column; tau in s; columns of `dim` amplitudes. The mean of the diagonal is taken off first and
-//! comes back as a phase in turns. Error: a few units of rounding times (1 + ||H - mean|| tau), the second part being the rounding of H itself.
+//! comes back as a phase in turns. Error: a few units of rounding times (1 + ||H|| tau), the second part being the rounding of H
+//! itself.
 //!
 //! * diagonal H: phases;
-//! * two levels: cos(w tau) - i sin(w tau)/w (H - mean), w the half distance of the eigenvalues; small entries keep their relative accuracy;
+//! * two levels: cos(w tau) - i sin(w tau)/w (H - mean), w the half distance of the eigenvalues; small entries keep their
+//!   relative accuracy;
 //! * ||H - mean|| tau up to 1: Taylor series to rounding;
 //! * else: eigenvectors and phases reduced in turns, so that the norm may be as large as it likes.
 

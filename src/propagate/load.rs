@@ -74,7 +74,8 @@ fn height(envelope: &Envelope, length_s: f64) -> (f64, f64) {
     }
 }
 
-/// Part of the segment, above 0 and up to 1, in which the smooth envelopes rise or fall; keeps a narrow pulse in a long segment from being stepped over.
+/// Part of the segment, above 0 and up to 1, in which the smooth envelopes rise or fall; keeps a narrow pulse in a long segment
+/// from being stepped over.
 pub(super) fn busy_part(terms: &[Term], length_s: f64) -> f64 {
     let mut part: f64 = 1.0;
     for term in terms.iter().filter(|term| matches!(term.envelope, Envelope::Smooth { .. })) {

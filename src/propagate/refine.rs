@@ -1,4 +1,10 @@
 //! Solving at two resolutions, and tightening until the measured error is small enough.
+//!
+//! The coarser run is the result; its figure is its largest change under refinement with a fifth on top: tolerance over 30 and more
+//! steps between moments (Runge-Kutta), twice the steps (Magnus), four times the slices (midpoint), two pieces for one (constant stretches).
+//! At least it is the floor of rounding. Held against an independent collocation of order 16 over 1900 random problems of 2 to 6
+//! levels (test `calibrate_error_figure`): the true error never exceeded the figure by more than the 3e-14 that the collocation
+//! loses itself, and the figure was never more than ten times the larger of the true error and 1e-12.
 
 use super::asked::{Asked, Demand, Recorder};
 use super::choose::{choose, Method, METHODS};

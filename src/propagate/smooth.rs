@@ -4,8 +4,8 @@
 //! (coefficients in `dormand_prince.rs`). Amplitudes without dimension, tau in s, H in rad/s; H is applied entry by entry, the
 //! entries that turn alike sharing one factor.
 //!
-//! The estimated error of a step of h seconds is held below tolerance h / T, T the time over which H changes, so that the errors of all steps add
-//! up to about the tolerance. The sum of steps is compensated (W. Kahan, Communications of the ACM 8, 40 (1965)). Integrals of
+//! The estimated error of a step of h seconds is held below tolerance h / T, T the time over which H changes, so that the errors
+//! of all steps add up to about the tolerance (in fact to far less: the estimates are of order 5 and 3). The sum of steps is compensated (W. Kahan, Communications of the ACM 8, 40 (1965)). Integrals of
 //! populations over time are further components of the same steps. Measured floor: 1e-15 (1 + coupling times time in rad).
 
 use num_complex::Complex64;

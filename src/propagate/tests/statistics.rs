@@ -250,8 +250,17 @@ fn calibrate_error_figure() {
         let part = |of: f64| all.filled[(of * (all.filled.len() - 1) as f64) as usize];
         let percent = |count: u32| 100.0 * f64::from(count) / f64::from(all.problems);
         println!(
-            "{method:?}: {} problems, {:?} by [slices, smooth, geometric], honest {:.1} %, within ten times {:.1} %, missed {}, worst error over figure {:.2}, figure over accuracy {:.1e} {:.1e} {:.1e} (tenth, half, nine tenths)",
-            all.problems, all.runs, 100.0 - percent(all.dishonest), 100.0 - percent(all.loose), all.missed, all.worst, part(0.1), part(0.5), part(0.9)
+            "{method:?}: {} problems, {:?} by [slices, smooth, geometric], honest {:.1} %, within ten times {:.1} %, missed {}, \
+             worst error over figure {:.2}, figure over accuracy {:.1e} {:.1e} {:.1e} (tenth, half, nine tenths)",
+            all.problems,
+            all.runs,
+            100.0 - percent(all.dishonest),
+            100.0 - percent(all.loose),
+            all.missed,
+            all.worst,
+            part(0.1),
+            part(0.5),
+            part(0.9)
         );
     }
 }
