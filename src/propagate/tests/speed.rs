@@ -105,6 +105,7 @@ fn exact_million_slices_keep_to_their_figure() {
 #[test]
 fn ref_steps_of_long_pulses_are_few() {
     let delayed = solve(&delayed_pulses(), 1e-10, None);
+    assert_eq!(delayed.method, Method::Smooth, "{}", delayed.reason);
     assert!(
         delayed.reached && delayed.steps < 1100,
         "{:?} {:?}",
