@@ -1,7 +1,8 @@
 //! Stretches in which H of the picture is constant: one exponential each, any length, exact to rounding.
 //!
-//! Every moment is reached from the start of the stretch (or of its piece) in one go, O(dim^2) each, so that rounding does not grow with their number. A
-//! second resolution cuts the stretch into pieces. Stretches with the same terms share their exponential.
+//! Every moment is reached from the start of the stretch (or of its piece) in one go, O(dim^2) each, so that rounding does not
+//! grow with their number. A second resolution cuts the stretch into pieces. Stretches with the same terms and length share their
+//! exponential.
 
 use std::collections::HashMap;
 use std::rc::Rc;
@@ -10,7 +11,6 @@ use num_complex::Complex64;
 
 use super::exponential::Flow;
 use super::run::{Eye, State, Stretch, Work};
-use crate::problem::Envelope;
 
 /// The exponentials of the run so far, found by the bits of the terms.
 pub(super) struct Flows {
@@ -40,10 +40,7 @@ impl Flows {
         self.key.clear();
         self.key.push(stretch.length_s.to_bits());
         for term in stretch.terms {
-            let value = match &term.envelope {
-                Envelope::Constant(value) => *value,
-                Envelope::Smooth { .. } => unreachable_smooth(),
-            };
+            let value = term.slow(0.0);
             let bits = [
                 term.matrix as u64,
                 term.turns_hz.to_bits(),
@@ -63,11 +60,6 @@ impl Flows {
         }
         flow
     }
-}
-
-/// A smooth envelope never makes a constant stretch; its value would not be a number here, which the caller reports as a breakdown.
-fn unreachable_smooth() -> Complex64 {
-    Complex64::new(f64::NAN, f64::NAN)
 }
 
 /// Carries the state through the stretch in `pieces` equal pieces.

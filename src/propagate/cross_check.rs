@@ -17,7 +17,7 @@ use crate::units::{cis_turns, RAD_PER_TURN};
 /// Most evaluations of H.
 const MOST_EVALUATIONS: f64 = 2e7;
 /// Longest part in expected steps, since the crate keeps every step of an integration.
-const PART_STEPS: f64 = 2000.0;
+const PART_STEPS: f64 = 200.0;
 
 /// Columns of amplitudes, then times spent, then tau; all real.
 struct Lab<'a> {
@@ -66,17 +66,25 @@ pub(super) fn cross_check<R: Recorder>(
     new_recorder: &impl Fn() -> R,
 ) -> CrossCheck<R> {
     let method = "Runge-Kutta 8(5,3) of another library, in the frame of the problem with nothing turned away".to_string();
-    let tolerance = (0.01 * accuracy).clamp(1e-14, 1e-6);
     let turns = load.lab_rad / RAD_PER_TURN + load.carrier_turns;
+    // What each step may err by; some steps for each turn add up.
+    let tolerance = (0.1 * accuracy / (1.0 + turns)).clamp(1e-14, 1e-6);
     let steps = 3.0 * turns * (1e-8 / tolerance).powf(0.125) + 4.0 * (load.segments + load.moments) as f64 + 20.0;
     let evaluations = 12.0 * steps;
-    if evaluations > MOST_EVALUATIONS || load.levels * load.columns > 4096 || evaluations * (load.levels.pow(2) * load.columns) as f64 > 4e9
+    if evaluations > MOST_EVALUATIONS || load.levels * load.columns > 1024 || evaluations * (load.levels.pow(2) * load.columns) as f64 > 4e9
     {
         let reason = format!(
-            "it would take about {evaluations:.1e} evaluations of H ({turns:.0} turns in {} stretches with {} moments), more than is worth waiting for",
+            "it would take about {evaluations:.1e} evaluations of H ({turns:.0} turns in {} stretches with {} moments), \
+             more than is worth waiting for",
             load.segments, load.moments
         );
         return CrossCheck::Skipped { method, reason };
+    }
+    if numbers.iter().any(|number| !number.is_finite()) {
+        return CrossCheck::Skipped {
+            method,
+            reason: "the result itself holds what is not a number".to_string(),
+        };
     }
     let mut recorder = new_recorder();
     match walk(problem, demand, tolerance, steps, &mut recorder) {
@@ -182,7 +190,7 @@ fn integrate(lab: Lab, tau_s: f64, tolerance: f64, amplitudes: &mut [Complex64],
         6.0,
         1.0,
         0.0,
-        1_000_000,
+        20_000,
         u32::MAX,
         OutputType::Sparse,
     );

@@ -95,15 +95,15 @@ impl Magnus {
     fn exponent(&mut self, nodes: &[Vec<Complex64>; 3], h: f64, k: &mut [Complex64]) {
         let n = self.dim;
         let [a1, a2, a3] = &mut self.a;
-        for i in 0..n * n {
+        for (i, curvature) in a3.iter_mut().enumerate() {
             let (h1, h2, h3) = (nodes[0][i], nodes[1][i], nodes[2][i]);
             a1[i] = h2 * h;
             a2[i] = (h3 - h1) * (SLOPE * h);
-            a3[i] = (h3 - h2 * 2.0 + h1) * (10.0 / 3.0 * h);
+            *curvature = (h3 - h2 * 2.0 + h1) * (10.0 / 3.0 * h);
         }
         bracket(n, a1, a2, &mut self.product, &mut self.c1);
-        for i in 0..n * n {
-            self.left[i] = -(a3[i] * 2.0 + self.c1[i]) / 60.0;
+        for (i, curvature) in a3.iter().enumerate() {
+            self.left[i] = -(curvature * 2.0 + self.c1[i]) / 60.0;
         }
         bracket(n, a1, &self.left, &mut self.product, &mut self.c2);
         for i in 0..n * n {

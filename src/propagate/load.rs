@@ -36,6 +36,8 @@ pub struct Load {
     pub rises: f64,
     /// Size of H in the frame of the problem, its mean taken off, times time, over everything, rad.
     pub lab_rad: f64,
+    /// The same with the diagonal as it stands, to which the rounding of its entries is relative, rad.
+    pub entries_rad: f64,
     /// Largest turning frequency times time, over everything, turns.
     pub carrier_turns: f64,
 }
@@ -70,6 +72,23 @@ fn height(term: &Term, length_s: f64) -> (f64, f64) {
     (most, if most > 0.0 { way / most } else { 0.0 })
 }
 
+/// Part of the segment, above 0 and up to 1, in which the smooth envelopes rise or fall; keeps a narrow pulse in a long segment
+/// from being stepped over.
+pub(super) fn busy_part(terms: &[Term], length_s: f64) -> f64 {
+    let mut part: f64 = 1.0;
+    for term in terms.iter().filter(|term| !term.is_constant()) {
+        let values: Vec<_> = (0..=CELLS).map(|i| term.slow(length_s * f64::from(i) / f64::from(CELLS))).collect();
+        let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
+        let busy = values.windows(2).filter(|pair| (pair[1] - pair[0]).norm() > 1e-3 * most).count();
+        if busy > 0 {
+            part = part.min(busy as f64 / f64::from(CELLS));
+        }
+    }
+    part
+}
+
+const CELLS: u32 = 128;
+
 fn half_range(values: impl Iterator<Item = f64>) -> f64 {
     let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), value| {
         (value.min(low), value.max(high))
@@ -97,6 +116,7 @@ impl Load {
             .map(|j| (0..n).filter(|k| *k != j).map(|k| a[(j, k)].norm()).sum::<f64>())
             .fold(0.0, f64::max);
         let resting_rad_s = off + half_range((0..n).map(|j| a[(j, j)].re));
+        let entries_rad_s = off + (0..n).map(|j| a[(j, j)].re.abs()).fold(0.0, f64::max);
         let mut load = Load {
             levels: n,
             columns: if demand.propagator { n + 1 } else { 1 },
@@ -112,6 +132,7 @@ impl Load {
             still_turns: 0.0,
             rises: 0.0,
             lab_rad: 0.0,
+            entries_rad: 0.0,
             carrier_turns: 0.0,
         };
         for segment in &problem.segments {
@@ -142,6 +163,7 @@ impl Load {
                 load.rises += rises;
             }
             load.lab_rad += rad_s * length_s;
+            load.entries_rad += (rad_s - resting_rad_s + entries_rad_s) * length_s;
             load.carrier_turns += carrier * length_s;
         }
         load
@@ -150,6 +172,6 @@ impl Load {
     /// What rounding leaves uncertain in any recorded number: that of the entries of H over the whole time, and that of `sums`
     /// products one after the other, which all err in the same sense where the factors are alike.
     pub(super) fn floor(&self, sums: u64) -> f64 {
-        f64::EPSILON * (4.0 + 0.5 * self.lab_rad + 0.25 * sums as f64)
+        f64::EPSILON * (4.0 + 0.7 * self.entries_rad + 0.25 * sums as f64)
     }
 }

@@ -3,8 +3,8 @@
 //! psi(tau) = exp(-2 pi i F tau) phi(tau) with a real diagonal F in Hz, exact: nothing is dropped. phi obeys the same equation
 //! with A_jj - 2 pi F_j on the diagonal, and entry (j, k) of a term turning at f turns at nu = f - (F_j - F_k) instead.
 //!
-//! * [`Kind::Tied`]: each entry that turns at f ties F_j - F_k = f where j and k are not joined yet, entries of earlier terms first and larger
-//!   ones first; entries that stand still tie F_j = F_k. One-sided drives on a tree of levels then stand still altogether.
+//! * [`Kind::Tied`]: each entry that turns at f ties F_j - F_k = f where j and k are not joined yet, entries of earlier terms
+//!   first and larger ones first; entries that stand still tie F_j = F_k. One-sided drives on a tree of levels then stand still altogether.
 //!   Where that is not the case, F = 0 is taken if less turns in it.
 //! * [`Kind::Free`]: F_j = A_jj / (2 pi), nothing is left on the diagonal (the interaction picture); best for Runge-Kutta, whose
 //!   error then grows with the couplings and not with the level distances.

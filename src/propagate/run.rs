@@ -28,7 +28,7 @@ pub(super) struct Work {
     pub steps: u64,
     /// Matrix-vector products of this run.
     pub products: u64,
-    /// Multiplications left; below zero the run is cut short and worthless.
+    /// Multiplications left; at zero the run is cut short and worthless.
     pub left: f64,
 }
 
@@ -43,7 +43,7 @@ impl Work {
 
     /// Whether nothing is left.
     pub fn exhausted(&self) -> bool {
-        self.left < 0.0
+        self.left <= 0.0
     }
 }
 
@@ -81,17 +81,26 @@ impl Eye<'_> {
     }
 }
 
-/// Runs the whole problem once. `changing_s` is how long H changes altogether (the step control spreads its tolerance over it).
-pub(super) fn run<'p>(
-    problem: &'p Problem,
-    demand: &Demand,
-    method: Method,
-    fineness: &Fineness,
-    changing_s: f64,
-    pictures: &mut Pictures<'p>,
-    left: f64,
-    recorder: &mut dyn Recorder,
-) -> Work {
+/// What all runs of one problem have in common.
+pub(super) struct Route<'p> {
+    pub problem: &'p Problem,
+    pub demand: Demand,
+    pub method: Method,
+    /// How long H changes altogether, s; the step control spreads its tolerance over it.
+    pub changing_s: f64,
+    pub pictures: Pictures<'p>,
+}
+
+/// Runs the whole problem once, with `left` multiplications to spend at most.
+pub(super) fn run(route: &mut Route, fineness: &Fineness, left: f64, recorder: &mut dyn Recorder) -> Work {
+    let Route {
+        problem,
+        demand,
+        method,
+        changing_s,
+        pictures,
+    } = route;
+    let (problem, demand, method) = (*problem, *demand, *method);
     let dim = problem.dim();
     let mut work = Work {
         steps: 0,
@@ -111,7 +120,7 @@ pub(super) fn run<'p>(
         lab: problem.start.clone(),
     };
     let mut flows = Flows::new(dim);
-    let mut smooth = Smooth::new(dim, state.amplitudes.len(), demand.time_in);
+    let mut smooth = Smooth::new(dim, state.amplitudes.len(), demand.time_in, *changing_s);
     let mut next = 0;
     for (index, segment) in problem.segments.iter().enumerate() {
         let first = next;
@@ -137,7 +146,7 @@ pub(super) fn run<'p>(
             constant::pass(&stretch, fineness.pieces, &mut flows, &mut state, &mut eye, &mut work);
         } else {
             match method {
-                Method::Smooth => smooth.pass(&stretch, fineness, changing_s, &mut state, &mut eye, &mut work),
+                Method::Smooth => smooth.pass(&stretch, fineness, &mut state, &mut eye, &mut work),
                 Method::Geometric => geometric::pass(&stretch, fineness.doublings, &mut state, &mut eye, &mut work),
                 Method::ConstantSteps => slices::pass(&stretch, fineness.doublings, &mut state, &mut eye, &mut work),
             }

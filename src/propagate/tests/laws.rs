@@ -210,3 +210,82 @@ fn prop_geometric_is_of_order_six_and_slices_of_order_two() {
         }
     }
 }
+
+#[test]
+fn prop_what_cannot_be_reached_stops_and_says_so() {
+    for (name, case) in table() {
+        for method in [None, Some(Method::Smooth), Some(Method::Geometric), Some(Method::ConstantSteps)] {
+            if method == Some(Method::ConstantSteps) && !name.starts_with("smooth") {
+                continue; // Millions of slices: true, but slow.
+            }
+            let solved = solve(&case, 1e-16, method);
+            let best = if method == Some(Method::ConstantSteps) { 5e-9 } else { 1e-10 };
+            assert!(
+                !solved.reached && solved.error_figure < best,
+                "{name} {method:?}: {:e}",
+                solved.error_figure
+            );
+        }
+    }
+    let pair = sparse(2, &[(1, 0, 1.0), (0, 1, 1.0)]);
+    let endless = problem(
+        &diagonal(&[0.0, 5e9]),
+        vec![pair],
+        vec![(1e3, vec![term(0, 5e9, 0.0, flat(1e6))], vec![1.0, 2.0])],
+    );
+    let solved = solve(&endless, 1e-8, None);
+    assert!(!solved.reached && solved.error_figure.is_infinite() && solved.recorded.amplitudes.len() == 3);
+    assert!(solved.reason.contains("it was not run"), "{}", solved.reason);
+}
+
+#[test]
+fn prop_a_narrow_pulse_in_a_long_segment_is_seen() {
+    // Half a turn by a Gaussian of 1/100 of the segment, far from its start.
+    let (width, at) = (0.01, 0.8137);
+    let area = width * (0.5 * crate::units::RAD_PER_TURN).sqrt();
+    let bell = shaped(0.25 / area, move |t| (-((t - at) / width).powi(2)).exp());
+    let case = problem(
+        &diagonal(&[0.0, 0.0]),
+        vec![sparse(2, &[(1, 0, 1.0)])],
+        vec![(1.0, vec![term(0, 0.0, 0.0, bell)], vec![])],
+    );
+    for method in [None, Some(Method::Smooth), Some(Method::Geometric), Some(Method::ConstantSteps)] {
+        let solved = solve(&case, 1e-6, method);
+        assert!(
+            solved.reached && (solved.recorded.population(1) - 1.0).abs() <= solved.error_figure,
+            "{method:?} {}",
+            solved.recorded.population(1)
+        );
+    }
+}
+
+#[test]
+fn prop_second_route_agrees_on_the_table() {
+    for (name, case) in table() {
+        if name == "resonant square" {
+            continue; // 5000 turns of the carrier for the same test as the others.
+        }
+        let ask = Asked {
+            accuracy: 1e-9,
+            method: None,
+            cross_check: true,
+        };
+        let kept = || Kept {
+            scale_s: case.length_s(),
+            ..Kept::default()
+        };
+        let solved = crate::propagate::solve(
+            &case,
+            &Demand {
+                propagator: true,
+                time_in: true,
+            },
+            &ask,
+            kept,
+        );
+        match solved.cross_check {
+            Some(crate::propagate::CrossCheck::Done { difference, .. }) => assert!(difference < 1e-9, "{name}: {difference:e}"),
+            other => panic!("{name}: {other:?}"),
+        }
+    }
+}

@@ -176,21 +176,19 @@ pub fn solve(problem: &Problem, accuracy: f64, method: Option<Method>) -> super:
 /// The last state of a run with equal steps doubled so many times.
 pub fn at_doublings(problem: &Problem, method: Method, doublings: u32) -> Vec<Complex64> {
     let mut kept = Kept::default();
-    let mut pictures = super::picture::Pictures::new(problem);
+    let pictures = super::picture::Pictures::new(problem);
+    let mut route = super::run::Route {
+        problem,
+        demand: Demand::default(),
+        method,
+        changing_s: problem.length_s(),
+        pictures,
+    };
     let fineness = super::run::Fineness {
         tolerance: 1e-10,
         pieces: 1,
         doublings,
     };
-    super::run::run(
-        problem,
-        &Demand::default(),
-        method,
-        &fineness,
-        problem.length_s(),
-        &mut pictures,
-        1e12,
-        &mut kept,
-    );
+    super::run::run(&mut route, &fineness, 1e12, &mut kept);
     kept.last().to_vec()
 }
