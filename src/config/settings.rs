@@ -37,11 +37,7 @@ pub struct Accuracy {
 
 /// Reads `accuracy:`.
 pub fn read_accuracy(reader: &mut Reader, node: Option<&Node>) -> Option<Accuracy> {
-    let mut accuracy = Accuracy {
-        last: USUAL_ACCURACY,
-        method: MethodWord::Automatic,
-        cross_check: false,
-    };
+    let mut accuracy = Accuracy { last: USUAL_ACCURACY, method: MethodWord::Automatic, cross_check: false };
     let words = [
         ("automatic", MethodWord::Automatic),
         ("constant steps", MethodWord::ConstantSteps),
@@ -56,13 +52,7 @@ pub fn read_accuracy(reader: &mut Reader, node: Option<&Node>) -> Option<Accurac
             &[("tolerance", "The largest allowed error is called final.")],
         )?;
         if let Some(seed) = entries.iter().find(|entry| entry.key == "seed") {
-            reader.error(
-                seed.place,
-                Fault::NotNow {
-                    key: "seed".to_string(),
-                    section: "accuracy".to_string(),
-                },
-            );
+            reader.error(seed.place, Fault::NotNow { key: "seed".to_string(), section: "accuracy".to_string() });
             return None;
         }
     }
@@ -138,21 +128,13 @@ pub fn read_frame(reader: &mut Reader, node: Option<&Node>) -> Option<Frame> {
         if let Some(entry) = entries.iter().find(|entry| known[1..].contains(&entry.key.as_str())) {
             let known = vec!["kind".to_string()];
             let hint = Some("It belongs to a rotating frame; in the laboratory frame nothing is dropped.".to_string());
-            let fault = Fault::UnknownKey {
-                key: entry.key.clone(),
-                section: "frame (kind: lab)".to_string(),
-                near: None,
-                known,
-                hint,
-            };
+            let fault = Fault::UnknownKey { key: entry.key.clone(), section: "frame (kind: lab)".to_string(), near: None, known, hint };
             reader.error(entry.place, fault);
             return None;
         }
         return Some(Frame::Lab);
     }
-    let follows = reader
-        .need(node, "follows", "frame", "drives")
-        .and_then(|follows| read_follows(reader, follows));
+    let follows = reader.need(node, "follows", "frame", "drives").and_then(|follows| read_follows(reader, follows));
     let limit = match node.get("drop_terms_faster_than") {
         None => {
             let why = Some("Terms that turn faster are dropped and listed; nothing keeps every term.".to_string());
@@ -171,11 +153,8 @@ pub fn read_frame(reader: &mut Reader, node: Option<&Node>) -> Option<Frame> {
     let eliminate = match node.get("eliminate") {
         None => Some(Vec::new()),
         Some(list) => {
-            let found: Vec<Option<usize>> = reader
-                .list(list, "eliminate", "eliminate: [upper]")?
-                .iter()
-                .map(|level| reader.level(level))
-                .collect();
+            let found: Vec<Option<usize>> =
+                reader.list(list, "eliminate", "eliminate: [upper]")?.iter().map(|level| reader.level(level)).collect();
             found.into_iter().collect()
         }
     };
@@ -183,13 +162,7 @@ pub fn read_frame(reader: &mut Reader, node: Option<&Node>) -> Option<Frame> {
         None => false,
         Some(truth) => reader.truth(truth, "allow_beat")?,
     };
-    let frame = Rotating {
-        follows: follows?,
-        limit: limit?,
-        eliminate: eliminate?,
-        allow_beat,
-        place: node.place,
-    };
+    let frame = Rotating { follows: follows?, limit: limit?, eliminate: eliminate?, allow_beat, place: node.place };
     Some(Frame::Rotating(Box::new(frame)))
 }
 
@@ -240,17 +213,8 @@ pub fn read_output(reader: &mut Reader, node: Option<&Node>) -> Option<Output> {
     let mut output = Output { folder: None, plots: all };
     if let Some(node) = node {
         let entries = reader.fields(node, "output", &["folder", "plots", "tables", "waveform_files", "report"], &[])?;
-        for later in entries
-            .iter()
-            .filter(|entry| matches!(entry.key.as_str(), "waveform_files" | "report"))
-        {
-            reader.error(
-                later.place,
-                Fault::NotNow {
-                    key: later.key.clone(),
-                    section: "output".to_string(),
-                },
-            );
+        for later in entries.iter().filter(|entry| matches!(entry.key.as_str(), "waveform_files" | "report")) {
+            reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: "output".to_string() });
         }
         if let Some(folder) = node.get("folder") {
             output.folder = Some(reader.text(folder, "output / folder", "folder: outputs/first-run")?.to_string());
@@ -265,21 +229,11 @@ pub fn read_output(reader: &mut Reader, node: Option<&Node>) -> Option<Output> {
             for plot in reader.list(plots, "output / plots", "plots: [traces, envelopes]")? {
                 let later = ["ledger", "level diagram", "map", "scan lines"];
                 if let Some(key) = plot.text().filter(|text| later.contains(text)) {
-                    reader.error(
-                        plot.place,
-                        Fault::NotNow {
-                            key: key.to_string(),
-                            section: "output / plots".to_string(),
-                        },
-                    );
+                    reader.error(plot.place, Fault::NotNow { key: key.to_string(), section: "output / plots".to_string() });
                     return None;
                 }
-                let words = [
-                    ("traces", Plot::Traces),
-                    ("envelopes", Plot::Envelopes),
-                    ("timing", Plot::Envelopes),
-                    ("spectrum", Plot::Spectrum),
-                ];
+                let words =
+                    [("traces", Plot::Traces), ("envelopes", Plot::Envelopes), ("timing", Plot::Envelopes), ("spectrum", Plot::Spectrum)];
                 let plot = reader.word(plot, "a plot", &words)?;
                 if !output.plots.contains(&plot) {
                     output.plots.push(plot);

@@ -152,10 +152,7 @@ impl Real for Dual {
             One::Abs => x.signum(),
             One::Floor | One::Round => 0.0,
         };
-        Dual {
-            value,
-            slope: if self.slope == 0.0 { 0.0 } else { slope * self.slope },
-        }
+        Dual { value, slope: if self.slope == 0.0 { 0.0 } else { slope * self.slope } }
     }
 
     fn two(self, operation: Two, other: Dual) -> Dual {
@@ -167,11 +164,7 @@ impl Real for Dual {
             Two::Multiply => self.slope * b + a * other.slope,
             Two::Divide => (self.slope - value * other.slope) / b,
             Two::Power => {
-                let base = if self.slope == 0.0 || b == 0.0 {
-                    0.0
-                } else {
-                    b * a.two(Two::Power, b - 1.0) * self.slope
-                };
+                let base = if self.slope == 0.0 || b == 0.0 { 0.0 } else { b * a.two(Two::Power, b - 1.0) * self.slope };
                 base + if other.slope == 0.0 { 0.0 } else { value * a.ln() * other.slope }
             }
             Two::Min => {
@@ -208,18 +201,12 @@ impl Wide {
     fn sum(a: f64, b: f64) -> Wide {
         let high = a + b;
         let part = high - a;
-        Wide {
-            high,
-            low: (a - (high - part)) + (b - part),
-        }
+        Wide { high, low: (a - (high - part)) + (b - part) }
     }
 
     fn product(a: f64, b: f64) -> Wide {
         let high = a * b;
-        Wide {
-            high,
-            low: a.mul_add(b, -high),
-        }
+        Wide { high, low: a.mul_add(b, -high) }
     }
 
     /// a + b.
@@ -247,14 +234,8 @@ impl Real for Wide {
 
     fn one(self, function: One) -> Wide {
         match function {
-            One::Negative => Wide {
-                high: -self.high,
-                low: -self.low,
-            },
-            One::Abs if self.high < 0.0 => Wide {
-                high: -self.high,
-                low: -self.low,
-            },
+            One::Negative => Wide { high: -self.high, low: -self.low },
+            One::Abs if self.high < 0.0 => Wide { high: -self.high, low: -self.low },
             One::Abs => self,
             _ => Wide::constant(self.high.one(function)),
         }
@@ -321,9 +302,7 @@ impl Tape {
                 Entry::Two(_, a, b) => moved[*a as usize] || moved[*b as usize],
             };
         }
-        (0..self.entries.len() as Register)
-            .filter(|register| moved[*register as usize])
-            .collect()
+        (0..self.entries.len() as Register).filter(|register| moved[*register as usize]).collect()
     }
 
     /// Runs one entry on the registers before it.
@@ -399,11 +378,7 @@ impl Formula {
                 other => *other,
             })
             .collect();
-        BoundFormula {
-            entries,
-            outer,
-            result: self.result as usize,
-        }
+        BoundFormula { entries, outer, result: self.result as usize }
     }
 }
 

@@ -50,11 +50,7 @@ pub fn cut(timeline: &Timeline, parts: &dyn Fn(&PlacedPulse) -> Arc<PulseParts>)
                     terms.push(term(pulse, parts, from, middle, timeline));
                 }
             }
-            segments.push(Segment {
-                start: group.start.after(from),
-                length_s: to - from,
-                terms: first..terms.len(),
-            });
+            segments.push(Segment { start: group.start.after(from), length_s: to - from, terms: first..terms.len() });
         }
     }
     (segments, terms)
@@ -80,37 +76,17 @@ fn term(pulse: &PlacedPulse, parts: &Arc<PulseParts>, from_s: f64, middle_s: f64
     let held = match &parts.pieces {
         Pieces::Constant(value) => Some(*value),
         Pieces::Held { starts_s, values } => {
-            let index = starts_s
-                .partition_point(|start| *start <= middle_s - pulse.offset_s)
-                .saturating_sub(1);
+            let index = starts_s.partition_point(|start| *start <= middle_s - pulse.offset_s).saturating_sub(1);
             Some(values[index])
         }
         Pieces::Smooth { .. } => None,
     };
     let envelope = match (held, &parts.signal) {
         (Some(value), _) => Envelope::Constant(size * value),
-        (None, Some(signal)) => Envelope::Smooth {
-            shape: signal.clone(),
-            since_s,
-            scale: size,
-        },
+        (None, Some(signal)) => Envelope::Smooth { shape: signal.clone(), since_s, scale: size },
         (None, None) => Envelope::Constant(Default::default()),
     };
-    let chirps = parts
-        .chirp
-        .iter()
-        .map(|chirp| Chirped {
-            sweep: chirp.clone(),
-            since_s,
-            times: 1.0,
-        })
-        .collect();
+    let chirps = parts.chirp.iter().map(|chirp| Chirped { sweep: chirp.clone(), since_s, times: 1.0 }).collect();
     let turned = pulse.turned + Instant::at(since_s).turns(turns_hz);
-    Term {
-        matrix: pulse.drive,
-        turns_hz,
-        phase_turns: turned - turned.round(),
-        envelope,
-        chirps,
-    }
+    Term { matrix: pulse.drive, turns_hz, phase_turns: turned - turned.round(), envelope, chirps }
 }

@@ -23,11 +23,7 @@ impl Slow for Signal {
     fn at(&self, t_s: f64) -> Complex64 {
         // rounding may put the end of the last segment a bit past the end of the pulse
         let t = t_s.clamp(0.0, self.curve.length_s());
-        let quadrature = if self.quadrature_s == 0.0 {
-            0.0
-        } else {
-            self.quadrature_s * self.curve.slope(t)
-        };
+        let quadrature = if self.quadrature_s == 0.0 { 0.0 } else { self.quadrature_s * self.curve.slope(t) };
         Complex64::new(self.curve.at(t), quadrature)
     }
 }

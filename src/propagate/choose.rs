@@ -89,12 +89,7 @@ fn slices_ns(load: &Load) -> f64 {
     let exact = 250.0 * (load.segments as f64) + 250.0 * load.moments as f64;
     // A rough count: second order needs some ten thousand slices for each turn at 1e-8. Automatic never takes them.
     let slices = 1e4 * (load.still_turns + load.rises + load.swing_turns) * accuracy_factor(load, 2.0);
-    exact
-        + if load.changing > 0 {
-            slices * (150.0 + 15.0 * levels.powi(3))
-        } else {
-            0.0
-        }
+    exact + if load.changing > 0 { slices * (150.0 + 15.0 * levels.powi(3)) } else { 0.0 }
 }
 
 // The numbers of the next two functions were fitted to the seconds of 363 random problems of 2 to 6 levels, 0.1 to 50 s at some Hz,
@@ -104,11 +99,8 @@ fn smooth_ns(load: &Load) -> f64 {
     let levels = load.levels as f64;
     let more_columns = (load.columns - 1) as f64;
     let steps = (89.0 * load.coupling_turns + 43.0 * load.entry_turns + 45.0 * load.changing as f64) * accuracy_factor(load, 10.0);
-    let step_ns = if load.levels == 2 {
-        1000.0 + 130.0 * more_columns
-    } else {
-        900.0 + 60.0 * levels * levels + 66.0 * levels * more_columns
-    };
+    let step_ns =
+        if load.levels == 2 { 1000.0 + 130.0 * more_columns } else { 900.0 + 60.0 * levels * levels + 66.0 * levels * more_columns };
     (steps + load.moments as f64) * step_ns
 }
 
@@ -116,11 +108,8 @@ fn geometric_ns(load: &Load) -> f64 {
     let levels = load.levels as f64;
     let more_columns = (load.columns - 1) as f64;
     let steps = (44.0 * load.swing_turns + 51.0 * load.still_turns + 18.5 * load.rises) * accuracy_factor(load, 6.0);
-    let step_ns = if load.levels == 2 {
-        1000.0 + 25.0 * more_columns
-    } else {
-        1800.0 + 14.0 * levels.powi(3) + 330.0 * levels * more_columns
-    };
+    let step_ns =
+        if load.levels == 2 { 1000.0 + 25.0 * more_columns } else { 1800.0 + 14.0 * levels.powi(3) + 330.0 * levels * more_columns };
     (steps + load.moments as f64) * step_ns
 }
 
@@ -129,13 +118,7 @@ pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
     let spent = |method: Method| METHODS.iter().any(|row| row.method == method && row.time_in);
     if let Some(method) = wished {
         if load.time_in && load.changing > 0 && !spent(method) {
-            return (
-                Method::Smooth,
-                format!(
-                    "{} was asked for, but it gives no time spent in a level; smooth does",
-                    method.word()
-                ),
-            );
+            return (Method::Smooth, format!("{} was asked for, but it gives no time spent in a level; smooth does", method.word()));
         }
         let asked = "asked for by name".to_string();
         if load.changing == 0 && method != Method::ConstantSteps {
@@ -149,15 +132,8 @@ pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
         } else {
             format!("within each of {} stretches", load.segments)
         };
-        let how = if load.carrier_turns > 0.0 {
-            ", seen in a picture that turns with the carrier"
-        } else {
-            ""
-        };
-        return (
-            Method::ConstantSteps,
-            format!("H is constant {where_}{how}, so exponentials are exact however long they last"),
-        );
+        let how = if load.carrier_turns > 0.0 { ", seen in a picture that turns with the carrier" } else { "" };
+        return (Method::ConstantSteps, format!("H is constant {where_}{how}, so exponentials are exact however long they last"));
     }
     let (smooth, geometric) = (smooth_ns(load), geometric_ns(load));
     if geometric < smooth && !load.time_in {

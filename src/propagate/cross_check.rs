@@ -81,10 +81,7 @@ pub(super) fn cross_check<R: Recorder>(
         return CrossCheck::Skipped { method, reason };
     }
     if numbers.iter().any(|number| !number.is_finite()) {
-        return CrossCheck::Skipped {
-            method,
-            reason: "the result itself holds what is not a number".to_string(),
-        };
+        return CrossCheck::Skipped { method, reason: "the result itself holds what is not a number".to_string() };
     }
     let mut recorder = new_recorder();
     match walk(problem, demand, tolerance, steps, &mut recorder) {
@@ -96,11 +93,7 @@ pub(super) fn cross_check<R: Recorder>(
                 let apart = (a - b).abs();
                 difference = if apart.is_nan() { f64::INFINITY } else { difference.max(apart) };
             }
-            CrossCheck::Done {
-                method: format!("{method}, tolerance {tolerance:.0e}"),
-                recorded: recorder,
-                difference,
-            }
+            CrossCheck::Done { method: format!("{method}, tolerance {tolerance:.0e}"), recorded: recorder, difference }
         }
     }
 }
@@ -108,9 +101,7 @@ pub(super) fn cross_check<R: Recorder>(
 fn walk(problem: &Problem, demand: &Demand, tolerance: f64, steps: f64, recorder: &mut impl Recorder) -> Result<(), String> {
     let n = problem.dim();
     let diagonal: Vec<f64> = (0..n).map(|j| problem.statics[(j, j)].re).collect();
-    let (low, high) = diagonal
-        .iter()
-        .fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), v| (v.min(low), v.max(high)));
+    let (low, high) = diagonal.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), v| (v.min(low), v.max(high)));
     let middle_rad_s = if high >= low { low + 0.5 * (high - low) } else { 0.0 };
     let mut amplitudes: Vec<Complex64> = problem.start.as_slice().to_vec();
     if demand.propagator {
@@ -123,29 +114,15 @@ fn walk(problem: &Problem, demand: &Demand, tolerance: f64, steps: f64, recorder
         let mut tau_s = 0.0;
         loop {
             let here = next < problem.moments.len() && problem.moments[next].segment <= index;
-            let stop_s = if here {
-                problem.moments[next].offset_s.min(segment.length_s)
-            } else {
-                segment.length_s
-            };
+            let stop_s = if here { problem.moments[next].offset_s.min(segment.length_s) } else { segment.length_s };
             let parts = (steps * (stop_s - tau_s) / total_s / PART_STEPS).ceil().max(1.0);
             let from_s = tau_s;
             let mut part = 0.0;
             while part < parts && stop_s > from_s {
                 part += 1.0;
-                let to_s = if part == parts {
-                    stop_s
-                } else {
-                    from_s + (stop_s - from_s) * (part / parts)
-                };
-                let lab = Lab {
-                    problem,
-                    segment,
-                    middle_rad_s,
-                    columns: amplitudes.len() / n,
-                    timed: demand.time_in,
-                    unit_s: to_s - tau_s,
-                };
+                let to_s = if part == parts { stop_s } else { from_s + (stop_s - from_s) * (part / parts) };
+                let lab =
+                    Lab { problem, segment, middle_rad_s, columns: amplitudes.len() / n, timed: demand.time_in, unit_s: to_s - tau_s };
                 integrate(lab, tau_s, tolerance, &mut amplitudes, &mut time_in_s)?;
                 tau_s = to_s;
             }
@@ -176,24 +153,8 @@ fn integrate(lab: Lab, tau_s: f64, tolerance: f64, amplitudes: &mut [Complex64],
     y.extend(time_in_s.iter().map(|_| 0.0));
     y.push(tau_s / unit_s);
     let start = RealVector::from_vec(y);
-    let mut solver = Dop853::from_param(
-        lab,
-        0.0,
-        1.0,
-        1.0,
-        start,
-        0.0,
-        tolerance,
-        0.9,
-        0.0,
-        0.333,
-        6.0,
-        1.0,
-        0.0,
-        20_000,
-        u32::MAX,
-        OutputType::Sparse,
-    );
+    let mut solver =
+        Dop853::from_param(lab, 0.0, 1.0, 1.0, start, 0.0, tolerance, 0.9, 0.0, 0.333, 6.0, 1.0, 0.0, 20_000, u32::MAX, OutputType::Sparse);
     solver.integrate().map_err(|error| format!("the second route broke off: {error}"))?;
     let Some(end) = solver.y_out().last() else {
         return Err("the second route gave no result".to_string());

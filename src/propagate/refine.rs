@@ -55,32 +55,17 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
     let load = Load::of(problem, demand, asked.accuracy, &mut pictures);
     let (method, mut reason) = choose(&load, asked.method);
     // Runge-Kutta sums are compensated; all other steps are products, one after the other.
-    let floor_of = |work: &Work| {
-        load.floor(if load.changing > 0 && method != Method::Smooth {
-            work.steps
-        } else {
-            load.segments as u64
-        })
-    };
+    let floor_of = |work: &Work| load.floor(if load.changing > 0 && method != Method::Smooth { work.steps } else { load.segments as u64 });
     let mut left = MOST_MULTIPLICATIONS;
-    let hopeless = METHODS
-        .iter()
-        .filter(|row| row.method == method && load.changing > 0)
-        .map(|row| (row.cost_ns)(&load))
-        .find(|ns| *ns > HOPELESS_NS);
+    let hopeless =
+        METHODS.iter().filter(|row| row.method == method && load.changing > 0).map(|row| (row.cost_ns)(&load)).find(|ns| *ns > HOPELESS_NS);
     if let (Some(ns), true) = (hopeless, method != Method::ConstantSteps) {
         // Only walks through the moments, so that the caller has his rows, and says so with an infinite figure.
         left = 0.0;
         reason += &format!("; it was not run, since it would take about {:.0e} s", ns * 1e-9);
     }
     let mut products = 0;
-    let mut route = Route {
-        problem,
-        demand: *demand,
-        method,
-        changing_s: load.changing_s,
-        pictures,
-    };
+    let mut route = Route { problem, demand: *demand, method, changing_s: load.changing_s, pictures };
     let mut go = |fineness: Fineness| {
         let mut recorder = new_recorder();
         let work = run(&mut route, &fineness, left, &mut recorder);
@@ -89,32 +74,20 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         Ran { recorder, fineness, work }
     };
     let least = least_tolerance(&load);
-    let start = Fineness {
-        tolerance: (FIRST_TOLERANCE * asked.accuracy).max(least),
-        pieces: 1,
-        doublings: 0,
-    };
+    let start = Fineness { tolerance: (FIRST_TOLERANCE * asked.accuracy).max(least), pieces: 1, doublings: 0 };
     let mut coarse = go(start);
     let mut fine = go(finer(start, method, least));
     let (error_figure, floor) = loop {
         let floor = floor_of(&coarse.work);
         let spoilt = coarse.work.exhausted() || fine.work.exhausted();
-        let error_figure = if spoilt {
-            f64::INFINITY
-        } else {
-            largest_figure(coarse.recorder.numbers(), fine.recorder.numbers(), floor)
-        };
+        let error_figure = if spoilt { f64::INFINITY } else { largest_figure(coarse.recorder.numbers(), fine.recorder.numbers(), floor) };
         if error_figure <= asked.accuracy.max(floor) || spoilt || !error_figure.is_finite() || load.changing == 0 {
             break (error_figure, floor);
         }
         let Some(wanted) = tighten(&coarse, &fine, error_figure / asked.accuracy.max(floor), method, least) else {
             break (error_figure, floor);
         };
-        let (next_coarse, reused) = if wanted == fine.fineness {
-            (None, true)
-        } else {
-            (Some(go(wanted)), false)
-        };
+        let (next_coarse, reused) = if wanted == fine.fineness { (None, true) } else { (Some(go(wanted)), false) };
         let next_fine = go(finer(wanted, method, least));
         let worse = next_fine.work.exhausted() || next_coarse.as_ref().is_some_and(|ran| ran.work.exhausted());
         if worse {
@@ -126,15 +99,11 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         };
         fine = next_fine;
     };
-    let resolution = |ran: &Ran<R>| Resolution {
-        words: words(method, &load, ran),
-        steps: ran.work.steps,
-    };
+    let resolution = |ran: &Ran<R>| Resolution { words: words(method, &load, ran), steps: ran.work.steps };
     let resolutions = [resolution(&coarse), resolution(&fine)];
     let steps = coarse.work.steps;
-    let cross_check = asked
-        .cross_check
-        .then(|| cross_check(problem, demand, &load, asked.accuracy, coarse.recorder.numbers(), &new_recorder));
+    let cross_check =
+        asked.cross_check.then(|| cross_check(problem, demand, &load, asked.accuracy, coarse.recorder.numbers(), &new_recorder));
     Solved {
         recorded: coarse.recorder,
         finer: fine.recorder,
@@ -158,11 +127,7 @@ fn least_tolerance(load: &Load) -> f64 {
 /// The next finer resolution.
 fn finer(of: Fineness, method: Method, least: f64) -> Fineness {
     let doublings = if method == Method::ConstantSteps { 2 } else { 1 };
-    Fineness {
-        tolerance: (of.tolerance / 30.0).max(least),
-        pieces: of.pieces + 1,
-        doublings: of.doublings + doublings,
-    }
+    Fineness { tolerance: (of.tolerance / 30.0).max(least), pieces: of.pieces + 1, doublings: of.doublings + doublings }
 }
 
 /// The coarse resolution to try next where the error is `excess` times too large; `None` where nothing finer is left.
@@ -179,10 +144,7 @@ fn tighten<R>(coarse: &Ran<R>, fine: &Ran<R>, excess: f64, method: Method, least
             if excess < 20.0 || coarse.fineness.tolerance <= least {
                 return Some(fine.fineness);
             }
-            Some(Fineness {
-                tolerance: (coarse.fineness.tolerance / (3.0 * excess)).max(least),
-                ..fine.fineness
-            })
+            Some(Fineness { tolerance: (coarse.fineness.tolerance / (3.0 * excess)).max(least), ..fine.fineness })
         }
         Method::Geometric | Method::ConstantSteps => {
             let (order, stride) = if method == Method::Geometric { (6.0, 1) } else { (2.0, 2) };
@@ -194,11 +156,7 @@ fn tighten<R>(coarse: &Ran<R>, fine: &Ran<R>, excess: f64, method: Method, least
                 coarse.work.steps as f64 * times <= MOST_EVEN_STEPS && cost_now * times * (1.0 + 2f64.powi(stride as i32)) <= fine.work.left
             };
             let more = (stride..=more.max(stride)).rev().find(affordable)?;
-            Some(Fineness {
-                doublings: coarse.fineness.doublings + more,
-                pieces: fine.fineness.pieces,
-                tolerance: fine.fineness.tolerance,
-            })
+            Some(Fineness { doublings: coarse.fineness.doublings + more, pieces: fine.fineness.pieces, tolerance: fine.fineness.tolerance })
         }
     }
 }

@@ -109,11 +109,7 @@ impl Smooth {
                 }
                 // Small changes are not worth the new phases of every stage that they need.
                 let factor = if (1.0..1.2).contains(&factor) { 1.0 } else { factor };
-                wish_s = if nominal_s < wish_s.min(most_s) {
-                    wish_s.max(nominal_s * factor)
-                } else {
-                    nominal_s * factor
-                };
+                wish_s = if nominal_s < wish_s.min(most_s) { wish_s.max(nominal_s * factor) } else { nominal_s * factor };
                 wish_s = wish_s.min(cap_s);
                 self.accept(h, state);
                 tau_s = to_s;
@@ -143,8 +139,7 @@ impl Smooth {
     fn turn(&mut self, picture: &Picture, h: f64) {
         self.turned.clear();
         for node in NODES {
-            self.turned
-                .extend(picture.turnings.iter().map(|turning| cis_turns(-turning.turns_hz * node * h)));
+            self.turned.extend(picture.turnings.iter().map(|turning| cis_turns(-turning.turns_hz * node * h)));
         }
         self.turned_for_s = h;
     }
@@ -222,10 +217,7 @@ impl Smooth {
         }
         if self.timed {
             for (j, time) in state.time_in_s.iter_mut().enumerate() {
-                *time += h * WEIGHTS
-                    .iter()
-                    .map(|(stage, weight)| weight * self.populations[*stage][j])
-                    .sum::<f64>();
+                *time += h * WEIGHTS.iter().map(|(stage, weight)| weight * self.populations[*stage][j]).sum::<f64>();
             }
         }
     }

@@ -122,11 +122,7 @@ fn lengthened(mut case: Problem, longer: f64) -> Problem {
             let old = term.envelope.clone();
             if let Envelope::Smooth { .. } = old {
                 let shape = Arc::new(Shape(Box::new(move |t| old.at(t / longer))));
-                term.envelope = Envelope::Smooth {
-                    shape,
-                    since_s: 0.0,
-                    scale: re(1.0),
-                };
+                term.envelope = Envelope::Smooth { shape, since_s: 0.0, scale: re(1.0) };
             }
         }
         segment.length_s *= longer;
@@ -152,32 +148,14 @@ struct Tally {
 
 fn tally(seed: u64, problems: u32, longest: f64, wish: impl Fn(&mut Random) -> Option<Method>) -> Tally {
     let mut random = Random(seed);
-    let mut tally = Tally {
-        problems,
-        dishonest: 0,
-        loose: 0,
-        missed: 0,
-        filled: Vec::new(),
-        worst: 0.0,
-        runs: [0; 3],
-    };
+    let mut tally = Tally { problems, dishonest: 0, loose: 0, missed: 0, filled: Vec::new(), worst: 0.0, runs: [0; 3] };
     for number in 0..problems {
         let longer = random.size(0.3, longest);
         let case = lengthened(random_problem(&mut random), longer);
         let method = wish(&mut random);
-        let accuracy = if method == Some(Method::ConstantSteps) {
-            random.size(1e-7, 1e-4)
-        } else {
-            random.size(1e-11, 1e-4)
-        };
-        let demand = Demand {
-            propagator: false,
-            time_in: method != Some(Method::Geometric) && random.chance(0.3),
-        };
-        let kept = || Kept {
-            scale_s: case.length_s(),
-            ..Kept::default()
-        };
+        let accuracy = if method == Some(Method::ConstantSteps) { random.size(1e-7, 1e-4) } else { random.size(1e-11, 1e-4) };
+        let demand = Demand { propagator: false, time_in: method != Some(Method::Geometric) && random.chance(0.3) };
+        let kept = || Kept { scale_s: case.length_s(), ..Kept::default() };
         let mut exact = kept();
         collocation::solve(&case, 0.8, demand.time_in, &mut exact);
         let solved = crate::propagate::solve(&case, &demand, &asked(accuracy, method), kept);
@@ -275,10 +253,7 @@ fn print_loads_and_seconds() {
         let longer = random.size(0.3, 60.0);
         let case = lengthened(random_problem(&mut random), longer);
         let accuracy = random.size(1e-11, 1e-6);
-        let demand = Demand {
-            propagator: random.chance(0.3),
-            time_in: false,
-        };
+        let demand = Demand { propagator: random.chance(0.3), time_in: false };
         let mut pictures = crate::propagate::picture::Pictures::new(&case);
         let load = crate::propagate::Load::of(&case, &demand, accuracy, &mut pictures);
         if load.changing == 0 {
