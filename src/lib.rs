@@ -2,6 +2,7 @@
 #![deny(unsafe_code)]
 
 pub mod cli;
+pub mod compare;
 pub mod config;
 pub mod drive;
 pub mod frame;

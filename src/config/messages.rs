@@ -150,6 +150,9 @@ pub enum Fault {
     DoubtfulDrop { drive: String, levels: [String; 2], size_hz: f64, turns_hz: f64 },
     StartEliminated { level: String },
     TooNear { levels: Vec<String>, validity: f64, limit: f64 },
+    VariantTwice { name: String },
+    VariantChangesNothing { name: String },
+    NothingToCompare,
     PeriodTooLong { period_s: f64, end_s: f64 },
     NotPeriodic { period_s: f64, at_s: f64 },
     // from the command line
@@ -652,6 +655,13 @@ impl Fault {
                     short_with_unit(*at_s, "s")
                 ))
             }
+            VariantTwice { name } => say(format!("a variant called \"{name}\" is there already."))
+                .why("The file itself is the variant \"as written\".")
+                .write("another name"),
+            VariantChangesNothing { name } => say(format!("the variant \"{name}\" changes nothing."))
+                .why("Its numbers and sections are those of the file as written.")
+                .write("set: {name of a number: another value}"),
+            NothingToCompare => say("the file has no section \"compare\".").write("compare: [{name: laboratory, frame: {kind: lab}}]"),
             StartEliminated { level } => say(format!("the run starts in \"{level}\", which is eliminated."))
                 .write("a start in the levels that stay, or no eliminate"),
             TooNear { levels, validity, limit } => {
