@@ -1,6 +1,7 @@
 //! Words to library calls to an exit status; one file per verb. Only this room prints.
 
 mod check;
+mod explain;
 mod run;
 
 use std::io::Write;
@@ -38,6 +39,8 @@ struct Words {
 enum Verb {
     /// Read and judge a config without running it
     Check(check::Words),
+    /// Say in words and numbers what a config means, without running it
+    Explain(explain::Words),
     /// Evolve, record, and write numbers and plots
     Run(run::Words),
 }
@@ -68,6 +71,7 @@ pub fn main() -> ExitCode {
     };
     let status = match words.verb {
         Verb::Check(words) => check::check(&words),
+        Verb::Explain(words) => explain::explain(&words),
         Verb::Run(words) => run::run(&words),
     };
     ExitCode::from(status as u8)

@@ -1,4 +1,5 @@
 //! Numbers into files, plots and text for people. Only this room writes result files.
+pub mod explain;
 pub mod figures;
 pub mod fingerprint;
 pub mod folder;
