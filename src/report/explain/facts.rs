@@ -13,6 +13,7 @@ use crate::drive::timeline::PlacedPulse;
 use crate::model::commutators::commutators;
 use crate::model::gaps::{gaps, Gap};
 use crate::plan::Point;
+use crate::problem::Matrix;
 
 /// One drive.
 #[derive(Debug, Clone)]
@@ -63,6 +64,8 @@ pub struct Facts<'a> {
     pub two_photon: Vec<(usize, usize, f64)>,
     /// Names of two terms and how far they are from commuting.
     pub commutators: Vec<(String, String, f64)>,
+    /// Whether the static matrix has off-diagonal entries.
+    pub mixed: bool,
     /// Warnings as one line each.
     pub warnings: Vec<String>,
 }
@@ -110,6 +113,7 @@ impl<'a> Facts<'a> {
             strengths,
             two_photon: two,
             commutators: terms_that_commute(document, point),
+            mixed: is_mixed(&point.problem.statics),
             warnings: document
                 .warnings
                 .iter()
@@ -156,6 +160,11 @@ fn drive_fact(document: &Document, point: &Point, drive: usize, strengths: &Hash
         reference_turns: coupling.reference_turns,
         pairs: coupled_pairs(coupling, &point.energies_hz),
     }
+}
+
+fn is_mixed(statics: &Matrix) -> bool {
+    let mut entries = statics.column_iter().enumerate();
+    entries.any(|(j, column)| column.iter().enumerate().any(|(i, entry)| i != j && entry.norm() > 0.0))
 }
 
 /// The static matrix and each drive's, against each other.

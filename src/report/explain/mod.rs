@@ -1,4 +1,10 @@
-//! What a config means, for a reviewer: [`facts`] gathers the numbers, [`json`] and [`text`] write them.
+//! What a config means, for a reviewer: `facts` gathers the numbers as plain data; `json` writes them for programs, `text` as
+//! a page for people, with `drives` and `timetable` for its larger sections, `words` for what is no number, and `page` for
+//! the layout.
+mod drives;
 pub mod facts;
 pub mod json;
+mod page;
 pub mod text;
+mod timetable;
+mod words;
