@@ -1,5 +1,7 @@
 //! The sections about drives: carrier, every line against it, strength; and what each envelope does on its drive.
 
+use std::collections::HashMap;
+
 use super::facts::{DriveFact, Facts};
 use super::page::{count, degrees, digits, quantity, short, Page};
 use super::words;
@@ -98,10 +100,11 @@ fn drive(page: &mut Page, facts: &Facts, index: usize, fact: &DriveFact) {
         (None, _) => page.labelled("peak Rabi", "no pulse uses this drive"),
     }
     lines(page, facts, fact, carrier_hz);
+    set_carriers(page, facts, index);
     shaken(page, facts, index, fact);
 }
 
-/// The carrier, what it sweeps over, and carriers that the sequence sets later.
+/// The carrier, what it sweeps over, and what its phase counts from.
 fn carrier(facts: &Facts, index: usize, carrier_hz: f64) -> String {
     let written = &facts.document.drives[index];
     let timeline = &facts.point.timeline;
@@ -122,19 +125,41 @@ fn carrier(facts: &Facts, index: usize, carrier_hz: f64) -> String {
         }
     }
     text.push_str(&format!("; {}", words::carrier_phase(facts.document, index)));
-    let own = written.carrier.as_ref();
-    let set = timeline.carriers.iter().enumerate().filter(|(k, carrier)| {
-        own.is_some_and(|own| !std::ptr::eq(own, carrier.written))
-            && timeline
-                .pulses
-                .iter()
-                .any(|pulse| pulse.drive == index && pulse.carrier == Some(*k))
-    });
-    let set: Vec<String> = set.map(|(_, carrier)| quantity(carrier.centre_hz, "Hz", 12)).collect();
-    if !set.is_empty() {
-        text.push_str(&format!("; set to {} later in the sequence", set.join(", ")));
-    }
     text
+}
+
+/// Carriers that the sequence sets later, each with its nearest line.
+fn set_carriers(page: &mut Page, facts: &Facts, index: usize) {
+    let own = facts.document.drives[index].carrier.as_ref();
+    let timeline = &facts.point.timeline;
+    let mut used: Vec<usize> = timeline
+        .pulses
+        .iter()
+        .filter(|pulse| pulse.drive == index)
+        .filter_map(|pulse| pulse.carrier)
+        .collect();
+    used.sort_unstable();
+    used.dedup();
+    used.retain(|k| own.is_some_and(|own| !std::ptr::eq(own, timeline.carriers[*k].written)));
+    for carrier in used.iter().take(LINES).map(|k| timeline.carriers[*k].centre_hz) {
+        let nearest = facts
+            .gaps
+            .iter()
+            .filter(|gap| gap.hz > 0.0)
+            .map(|gap| (*gap, detuning(carrier, *gap)));
+        let nearest = nearest.min_by(|a, b| a.1 .0.abs().total_cmp(&b.1 .0.abs()));
+        let against = nearest.map_or(String::new(), |(gap, (hz, side))| {
+            let off = match side {
+                Side::On => "on".to_string(),
+                side => format!("{} {}", size_of(hz), side.word()),
+            };
+            format!(", {off} its nearest line {}", pair(facts, gap))
+        });
+        page.labelled("later", &format!("{}{against}", quantity(carrier, "Hz", 12)));
+    }
+    if used.len() > LINES {
+        page.labelled("", &format!("and {} more carriers", used.len() - LINES));
+    }
 }
 
 /// The lines of the system, the nearest first.
@@ -148,12 +173,17 @@ fn lines(page: &mut Page, facts: &Facts, fact: &DriveFact, carrier_hz: f64) {
             (*gap, hz, side)
         })
         .collect();
-    lines.sort_by(|a, b| a.1.abs().total_cmp(&b.1.abs()));
+    let coupled: HashMap<(usize, usize), f64> = fact.pairs.iter().map(|(gap, entry)| ((gap.lower, gap.upper), *entry)).collect();
+    let is_coupled = |gap: &Gap| coupled.get(&(gap.lower, gap.upper)).copied();
+    lines.sort_by(|a, b| {
+        a.1.abs()
+            .total_cmp(&b.1.abs())
+            .then(is_coupled(&b.0).is_some().cmp(&is_coupled(&a.0).is_some()))
+    });
     if lines.is_empty() {
         page.labelled("lines", "none: all levels have the same energy");
         return;
     }
-    let is_coupled = |gap: &Gap| fact.pairs.iter().find(|(pair, _)| pair == gap).map(|(_, entry)| *entry);
     let row = |(k, (gap, hz, side)): (usize, &(Gap, f64, Side))| {
         let off = match side {
             Side::On => "on the line".to_string(),

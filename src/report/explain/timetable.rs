@@ -77,13 +77,9 @@ pub fn timetable(page: &mut Page, facts: &Facts) {
         })
         .collect();
     let decimals = decimals(&times);
-    let wide = times
-        .iter()
-        .map(|time| format!("{time:.decimals$}").len())
-        .max()
-        .unwrap_or(0)
-        .max(6);
     let unit = format!("{prefix}s");
+    let widest = times.iter().map(|time| format!("{time:.decimals$}").len()).max().unwrap_or(0);
+    let wide = widest.max(format!("centre/{unit}").len());
     let mut rows = Vec::new();
     let mut heads = ["start", "centre", "end"]
         .map(|head| format!("{:>wide$}", format!("{head}/{unit}")))
