@@ -7,6 +7,8 @@ use crate::model::gaps::Gap;
 /// An envelope on a drive. Everything refers to the in-phase quadrature.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Strength {
+    /// Size at envelope 1 with its sign, Hz.
+    pub size_hz: f64,
     /// Largest modulus, Hz: of the Rabi frequency on the reference pair, or of the entry of a direct drive.
     pub peak_hz: f64,
     /// Signed integral, turns.
@@ -21,12 +23,20 @@ pub struct Strength {
     pub missing_area: f64,
 }
 
+impl Strength {
+    /// The peak with the sign of the size, Hz.
+    pub fn signed_peak_hz(&self) -> f64 {
+        self.peak_hz.copysign(self.size_hz)
+    }
+}
+
 /// The strength of `curve` whose size at envelope 1 is `size_hz`.
 pub fn strength(curve: &dyn Curve, size_hz: f64) -> Strength {
     let (largest, length_s) = (curve.largest(), curve.length_s());
     let (area, uncut) = (curve.area_s(), curve.uncut_area_s());
     let share = |value: f64| if largest > 0.0 { value.abs() / largest } else { 0.0 };
     Strength {
+        size_hz,
         peak_hz: (size_hz * largest).abs(),
         turns: size_hz * area,
         length_s,

@@ -83,7 +83,7 @@ fn drive(page: &mut Page, facts: &Facts, index: usize, fact: &DriveFact) {
             (Some(peak), None) => page.labelled("peak entry", &format!("{} times the matrix as typed", short(peak, "Hz"))),
             (None, _) => page.labelled("peak entry", "no pulse uses this drive"),
         }
-        entries(page, facts, index, fact);
+        entries(page, facts, index);
         return;
     };
     page.labelled("carrier", &carrier(facts, index, carrier_hz));
@@ -233,10 +233,15 @@ fn shaken(page: &mut Page, facts: &Facts, index: usize, fact: &DriveFact) {
 }
 
 /// The entries of a direct drive at its peak.
-fn entries(page: &mut Page, facts: &Facts, index: usize, fact: &DriveFact) {
+fn entries(page: &mut Page, facts: &Facts, index: usize) {
     let matrix = &facts.point.couplings[index].matrix;
     let names = &facts.document.system.names;
-    let Some(peak) = fact.peak_hz else { return };
+    // of several pulses the largest, with its sign
+    let mine = facts.strengths.iter().filter(|((drive, _), _)| *drive == index);
+    let strongest = mine.map(|(_, (strength, _))| strength.signed_peak_hz());
+    let Some(peak) = strongest.max_by(|a, b| a.abs().total_cmp(&b.abs()).then(a.total_cmp(b))) else {
+        return;
+    };
     let mut found = Vec::new();
     for row in 0..names.len() {
         for column in row..names.len() {
@@ -281,7 +286,7 @@ pub fn pulses(page: &mut Page, facts: &Facts) {
             format!("{times} x"),
             envelope.shape.to_string(),
             short(strength.length_s, "s"),
-            short(strength.peak_hz, "Hz"),
+            short(strength.signed_peak_hz(), "Hz"),
             area,
             steps(strength),
             share(strength.missing_area),

@@ -47,6 +47,9 @@ pub struct PulseFact {
     pub axis_turns: Option<f64>,
 }
 
+/// By (drive, envelope): what the envelope does there, and how many pulses are so.
+pub type Strengths = HashMap<(usize, usize), (Strength, usize)>;
+
 /// Everything that is known of a config before it runs.
 #[derive(Debug)]
 pub struct Facts<'a> {
@@ -58,8 +61,8 @@ pub struct Facts<'a> {
     pub gaps: Vec<Gap>,
     /// Drives in the order of the config.
     pub drives: Vec<DriveFact>,
-    /// What an envelope does on a drive (drive, envelope), for those in use, and how often it is used.
-    pub strengths: HashMap<(usize, usize), (Strength, usize)>,
+    /// What each envelope in use does on its drive.
+    pub strengths: Strengths,
     /// Two drives that share their upper level, and the two-photon detuning, Hz.
     pub two_photon: Vec<(usize, usize, f64)>,
     /// Names of two terms and how far they are from commuting.
@@ -83,7 +86,7 @@ fn within_a_turn(turns: f64) -> f64 {
 impl<'a> Facts<'a> {
     /// Gathers the facts of a config at a point of it.
     pub fn gather(document: &'a Document, point: &'a Point<'a>) -> Result<Facts<'a>, Mistake> {
-        let mut strengths: HashMap<(usize, usize), (Strength, usize)> = HashMap::new();
+        let mut strengths: Strengths = HashMap::new();
         for pulse in &point.timeline.pulses {
             let key = (pulse.drive, pulse.envelope);
             if let Some((_, times)) = strengths.get_mut(&key) {
@@ -147,7 +150,7 @@ impl<'a> Facts<'a> {
     }
 }
 
-fn drive_fact(document: &Document, point: &Point, drive: usize, strengths: &HashMap<(usize, usize), (Strength, usize)>) -> DriveFact {
+fn drive_fact(document: &Document, point: &Point, drive: usize, strengths: &Strengths) -> DriveFact {
     let (written, coupling) = (&document.drives[drive], &point.couplings[drive]);
     let peaks = strengths.iter().filter(|((of, _), _)| *of == drive);
     DriveFact {

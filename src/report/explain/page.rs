@@ -128,7 +128,7 @@ fn trim(text: &str) -> String {
     }
 }
 
-/// A prefix by its factor; times take none above one.
+/// The prefix for a value: its factor and letter; times take none above one, lengths none above kilo.
 pub fn prefix(value: f64, unit: &str) -> (f64, &'static str) {
     const PREFIXES: [(f64, &str); 10] = [
         (1e12, "T"),
@@ -142,18 +142,23 @@ pub fn prefix(value: f64, unit: &str) -> (f64, &'static str) {
         (1e-12, "p"),
         (1e-15, "f"),
     ];
-    // millihertz are hardly ever meant beside megahertz, but readable; powers of ten would not be
-    let found = PREFIXES
-        .iter()
-        .filter(|(factor, _)| !matches!(unit, "s" | "m") || *factor <= 1.0 || (unit == "m" && *factor <= 1e3));
+    let largest = match unit {
+        "s" => 1.0,
+        "m" => 1e3,
+        _ => f64::MAX,
+    };
     if value == 0.0 || !value.is_finite() {
         return (1.0, "");
     }
+    let fitting = PREFIXES.iter().filter(|(factor, _)| *factor <= largest);
+    let mut found = PREFIXES[PREFIXES.len() - 1];
+    for prefix in fitting.rev() {
+        // a value one rounding below a prefix still takes it
+        if value.abs() >= prefix.0 * (1.0 - 1e-9) {
+            found = *prefix;
+        }
+    }
     found
-        .clone()
-        .find(|(factor, _)| value.abs() >= factor * (1.0 - 1e-9))
-        .or_else(|| found.clone().last())
-        .map_or((1.0, ""), |(factor, prefix)| (*factor, prefix))
 }
 
 /// A quantity in SI with the prefix that suits it and at most `most` digits.
