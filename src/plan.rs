@@ -100,11 +100,7 @@ impl Plan {
                 None => {
                     let known: Vec<String> = document.numbers.iter().map(|number| number.name.clone()).collect();
                     let near = crate::config::reader::near(name, known.iter().map(String::as_str));
-                    let fault = Fault::NoSuchNumber {
-                        name: (*name).to_string(),
-                        near,
-                        known,
-                    };
+                    let fault = Fault::NoSuchNumber { name: (*name).to_string(), near, known };
                     return Err(Mistake::error(Default::default(), fault));
                 }
             }
@@ -115,11 +111,7 @@ impl Plan {
         }
         let (statics, energies_hz) = statics(document, &values);
         let couplings = couplings(document, &energies_hz, &values)?;
-        let curves: Vec<Arc<dyn Curve>> = document
-            .envelopes
-            .iter()
-            .map(|envelope| curve(envelope, &values))
-            .collect::<Result<_, _>>()?;
+        let curves: Vec<Arc<dyn Curve>> = document.envelopes.iter().map(|envelope| curve(envelope, &values)).collect::<Result<_, _>>()?;
         let problem = Problem {
             statics: Arc::new(statics),
             matrices: Arc::new(couplings.iter().map(|coupling| coupling.turning.clone()).collect()),
@@ -129,36 +121,17 @@ impl Plan {
             moments: Vec::new(),
         };
         let timeline = timeline(document, &values, &couplings, &curves)?;
-        let mut point = Point {
-            values,
-            energies_hz,
-            couplings,
-            curves,
-            timeline,
-            problem,
-        };
+        let mut point = Point { values, energies_hz, couplings, curves, timeline, problem };
         point.segment(document)?;
         let touched = Touched::by(document, &numbers);
         let size = document
             .tape
             .entries()
             .iter()
-            .filter_map(|entry| {
-                if let Entry::Number(index, _) = entry {
-                    Some(index + 1)
-                } else {
-                    None
-                }
-            })
+            .filter_map(|entry| if let Entry::Number(index, _) = entry { Some(index + 1) } else { None })
             .max()
             .unwrap_or(0);
-        Ok(Mover {
-            document,
-            numbers,
-            touched,
-            set: vec![None; size as usize],
-            point,
-        })
+        Ok(Mover { document, numbers, touched, set: vec![None; size as usize], point })
     }
 
     /// Whether moving these numbers changes the structure (a count of levels or of repeats), so that the file must be read anew.
@@ -195,11 +168,7 @@ impl<'p> Mover<'p> {
         }
         let (document, point, touched) = (self.document, &mut self.point, &self.touched);
         document.tape.replay(&touched.registers, &self.set, &mut point.values);
-        if touched
-            .registers
-            .iter()
-            .any(|register| !point.values[*register as usize].is_finite())
-        {
+        if touched.registers.iter().any(|register| !point.values[*register as usize].is_finite()) {
             if let Some(mistake) = not_finite(&document.tape, &point.values, &document.sources) {
                 return Err(mistake);
             }
@@ -234,13 +203,7 @@ impl Touched {
         }
         let is = |register: Register| moved[register as usize];
         let entries = |entries: &[crate::config::matrix::MatrixEntry]| entries.iter().any(|e| is(e.value.re) || e.value.im.is_some_and(is));
-        let formula = |formula: &Formula| {
-            formula
-                .tape
-                .entries()
-                .iter()
-                .any(|entry| matches!(entry, Entry::Outer(from) if is(*from)))
-        };
+        let formula = |formula: &Formula| formula.tape.entries().iter().any(|entry| matches!(entry, Entry::Outer(from) if is(*from)));
         let curves = document
             .envelopes
             .iter()
@@ -301,20 +264,12 @@ impl Point<'_> {
         // R/2 turns with the carrier; a direct drive's entry is halved in its matrix instead
         let half_rabi_hz = if form == Form::Direct { peak_hz } else { 0.5 * peak_hz };
         let quadrature_s = envelope.derivative.map_or(0.0, |derivative| {
-            let (factor, against) = (
-                self.values[derivative.factor.register as usize],
-                self.values[derivative.against.register as usize],
-            );
+            let (factor, against) = (self.values[derivative.factor.register as usize], self.values[derivative.against.register as usize]);
             -factor / (RAD_PER_TURN * against)
         });
         if !quadrature_s.is_finite() {
             let place = envelope.derivative.map_or(envelope.place, |derivative| derivative.against.place);
-            return Err(Mistake::error(
-                place,
-                Fault::ZeroDivision {
-                    text: "against is 0".to_string(),
-                },
-            ));
+            return Err(Mistake::error(place, Fault::ZeroDivision { text: "against is 0".to_string() }));
         }
         let chirp = pulse.carrier.and_then(|index| {
             let carrier = &self.timeline.carriers[index];
@@ -325,28 +280,12 @@ impl Point<'_> {
         if chirp.is_some() {
             if let Pieces::Constant(value) = pieces {
                 // constant in size, but its phase is not
-                pieces = Pieces::Held {
-                    starts_s: [0.0].into(),
-                    values: [value].into(),
-                };
+                pieces = Pieces::Held { starts_s: [0.0].into(), values: [value].into() };
             }
         }
-        let signal = matches!(pieces, Pieces::Smooth { .. }).then(|| {
-            Arc::new(Signal {
-                curve: curve.clone(),
-                held: None,
-                quadrature_s,
-                chirp: chirp.clone(),
-            })
-        });
-        Ok(PulseParts {
-            curve,
-            pieces,
-            half_rabi_hz,
-            quadrature_s,
-            chirp,
-            signal,
-        })
+        let signal = matches!(pieces, Pieces::Smooth { .. })
+            .then(|| Arc::new(Signal { curve: curve.clone(), held: None, quadrature_s, chirp: chirp.clone() }));
+        Ok(PulseParts { curve, pieces, half_rabi_hz, quadrature_s, chirp, signal })
     }
 
     /// The size of an envelope on a drive at envelope 1: the Rabi frequency R of the reference pair, or the entry itself of a
@@ -362,12 +301,7 @@ impl Point<'_> {
                 let area = self.curves[envelope].area_s();
                 let whole = self.curves[envelope].length_s() * self.curves[envelope].largest();
                 if size != 0.0 && !(area.abs() > 1e-12 * whole) {
-                    return Err(Mistake::error(
-                        written.size_place,
-                        Fault::NoArea {
-                            envelope: written.name.clone(),
-                        },
-                    ));
+                    return Err(Mistake::error(written.size_place, Fault::NoArea { envelope: written.name.clone() }));
                 }
                 Ok(if size == 0.0 { 0.0 } else { size / area })
             }
@@ -377,19 +311,14 @@ impl Point<'_> {
                     if !per_volt.is_finite() {
                         return Err(Mistake::error(
                             calibration.volts.place,
-                            Fault::ZeroDivision {
-                                text: "volts of the calibration are 0".to_string(),
-                            },
+                            Fault::ZeroDivision { text: "volts of the calibration are 0".to_string() },
                         ));
                     }
                     Ok(size * per_volt)
                 }
                 None => Err(Mistake::error(
                     written.size_place,
-                    Fault::NoCalibration {
-                        envelope: written.name.clone(),
-                        drive: drive.name.clone(),
-                    },
+                    Fault::NoCalibration { envelope: written.name.clone(), drive: drive.name.clone() },
                 )),
             },
         }
@@ -408,20 +337,12 @@ fn couplings(document: &Document, energies: &[f64], values: &[f64]) -> Result<Ve
         coupling(drive, energies, values).map_err(|fault| match fault {
             CouplingFault::ReferenceZero([from, to]) => {
                 let names = &document.system.names;
-                let fault = Fault::NoSuchCoupling {
-                    drive: drive.name.clone(),
-                    from: names[from].clone(),
-                    to: names[to].clone(),
-                };
+                let fault = Fault::NoSuchCoupling { drive: drive.name.clone(), from: names[from].clone(), to: names[to].clone() };
                 Mistake::error(drive.reference_place, fault)
             }
-            CouplingFault::NotHermitian => Mistake::error(
-                drive.place,
-                Fault::NotHermitianDrive {
-                    drive: drive.name.clone(),
-                    operator: "its operator".to_string(),
-                },
-            ),
+            CouplingFault::NotHermitian => {
+                Mistake::error(drive.place, Fault::NotHermitianDrive { drive: drive.name.clone(), operator: "its operator".to_string() })
+            }
         })
     };
     document.drives.iter().map(one).collect()
@@ -433,13 +354,7 @@ fn curve(envelope: &Envelope, values: &[f64]) -> Result<Arc<dyn Curve>, Mistake>
     if let Some(formula) = &envelope.formula {
         let length = time("length").unwrap_or(0.0);
         if !(length > 0.0) {
-            return Err(shape_mistake(
-                envelope,
-                ShapeFault::NotPositive {
-                    key: "length",
-                    value: length,
-                },
-            ));
+            return Err(shape_mistake(envelope, ShapeFault::NotPositive { key: "length", value: length }));
         }
         let curve = FormulaCurve::new(formula.bind(values), length);
         if let Some(t) = curve.gap_s() {
@@ -476,14 +391,9 @@ fn shape_mistake(envelope: &Envelope, fault: ShapeFault) -> Mistake {
     let at = |key: &str| envelope.time(key).map_or(envelope.place, |quantity| quantity.place);
     let samples = |reason: String| Mistake::error(envelope.place, Fault::Samples { reason });
     match fault {
-        ShapeFault::NotPositive { key, value } => Mistake::error(
-            at(key),
-            Fault::NotPositive {
-                what: format!("envelopes / {name} / {key}"),
-                value,
-                unit: "s".to_string(),
-            },
-        ),
+        ShapeFault::NotPositive { key, value } => {
+            Mistake::error(at(key), Fault::NotPositive { what: format!("envelopes / {name} / {key}"), value, unit: "s".to_string() })
+        }
         ShapeFault::EdgesTooLong { rise_s, length_s } => Mistake::error(at("rise"), Fault::EdgesTooLong { rise_s, length_s }),
         ShapeFault::FlatLift { .. } => Mistake::error(at("cut_at"), Fault::FlatLift { envelope: name }),
         ShapeFault::NothingToLift => {
@@ -491,24 +401,12 @@ fn shape_mistake(envelope: &Envelope, fault: ShapeFault) -> Mistake {
             let hint = Some("This curve starts at 0, so there is no pedestal to take off.".to_string());
             Mistake::error(
                 envelope.place,
-                Fault::UnknownWord {
-                    what: "edge".to_string(),
-                    found: "lift".to_string(),
-                    known,
-                    near: None,
-                    hint,
-                },
+                Fault::UnknownWord { what: "edge".to_string(), found: "lift".to_string(), known, near: None, hint },
             )
         }
         ShapeFault::UnknownShape { word } => Mistake::error(
             envelope.place,
-            Fault::UnknownWord {
-                what: "shape".to_string(),
-                found: word,
-                known: Vec::new(),
-                near: None,
-                hint: None,
-            },
+            Fault::UnknownWord { what: "shape".to_string(), found: word, known: Vec::new(), near: None, hint: None },
         ),
         ShapeFault::Missing { key } => {
             let fault = Fault::MissingKey {
@@ -521,14 +419,7 @@ fn shape_mistake(envelope: &Envelope, fault: ShapeFault) -> Mistake {
         }
         ShapeFault::NotOneOf { keys, .. } => {
             let keys = keys.iter().map(|key| (*key).to_string()).collect();
-            Mistake::error(
-                envelope.place,
-                Fault::OneOfMissing {
-                    keys,
-                    section: format!("envelopes / {name}"),
-                    hint: None,
-                },
-            )
+            Mistake::error(envelope.place, Fault::OneOfMissing { keys, section: format!("envelopes / {name}"), hint: None })
         }
         ShapeFault::TooFewSamples { found, needed } => samples(format!("there are {found}, and at least {needed} are needed")),
         ShapeFault::SampleNotFinite { index, .. } => samples(format!("sample number {} is not finite", index + 1)),
@@ -537,23 +428,16 @@ fn shape_mistake(envelope: &Envelope, fault: ShapeFault) -> Mistake {
         ShapeFault::TimesNotAscending { index, .. } => {
             samples(format!("the time of sample number {} is not later than the one before", index + 1))
         }
-        ShapeFault::UnequalSteps { index, .. } => samples(format!(
-            "band limited needs equal steps, and the step before sample number {} differs",
-            index + 1
-        )),
+        ShapeFault::UnequalSteps { index, .. } => {
+            samples(format!("band limited needs equal steps, and the step before sample number {} differs", index + 1))
+        }
         ShapeFault::EndsBeforeLastSample { length_s, last_s } => {
             let length = crate::config::messages::short_with_unit(length_s, "s");
-            samples(format!(
-                "length is {length}, but the last sample starts at {}",
-                crate::config::messages::short_with_unit(last_s, "s")
-            ))
+            samples(format!("length is {length}, but the last sample starts at {}", crate::config::messages::short_with_unit(last_s, "s")))
         }
         ShapeFault::LengthDisagrees { length_s, last_s } => {
             let length = crate::config::messages::short_with_unit(length_s, "s");
-            samples(format!(
-                "length is {length}, but the last sample stands at {}",
-                crate::config::messages::short_with_unit(last_s, "s")
-            ))
+            samples(format!("length is {length}, but the last sample stands at {}", crate::config::messages::short_with_unit(last_s, "s")))
         }
     }
 }
@@ -591,11 +475,7 @@ fn moments(document: &Document, values: &[f64], segments: &[Segment], end_s: f64
             if !(step > 0.0) {
                 return Err(Mistake::error(
                     every.place,
-                    Fault::NotPositive {
-                        what: "record / every".to_string(),
-                        value: step,
-                        unit: "s".to_string(),
-                    },
+                    Fault::NotPositive { what: "record / every".to_string(), value: step, unit: "s".to_string() },
                 ));
             }
             let rows = (end_s + close) / step;
@@ -612,11 +492,7 @@ fn moments(document: &Document, values: &[f64], segments: &[Segment], end_s: f64
                     let found = crate::config::messages::short_with_unit(time_s, "s");
                     return Err(Mistake::error(
                         at.place,
-                        Fault::OutOfRange {
-                            what: "a recorded time".to_string(),
-                            found,
-                            wanted: "0 or later".to_string(),
-                        },
+                        Fault::OutOfRange { what: "a recorded time".to_string(), found, wanted: "0 or later".to_string() },
                     ));
                 }
                 if time_s > end_s + close {
@@ -645,11 +521,7 @@ fn moments(document: &Document, values: &[f64], segments: &[Segment], end_s: f64
             // at the very end the exact length counts, not the rounded time
             let here = &segments[segment];
             let offset = at.since(here.start).clamp(0.0, here.length_s);
-            let offset_s = if segment == last && here.length_s - offset <= close {
-                here.length_s
-            } else {
-                offset
-            };
+            let offset_s = if segment == last && here.length_s - offset <= close { here.length_s } else { offset };
             Moment { segment, offset_s, time_s }
         })
         .collect())

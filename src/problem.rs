@@ -90,19 +90,12 @@ impl Instant {
         let part = sum - self.high;
         let lost = (self.high - (sum - part)) + (s - part) + self.low;
         let high = sum + lost;
-        Instant {
-            high,
-            low: lost - (high - sum),
-        }
+        Instant { high, low: lost - (high - sum) }
     }
 
     /// This moment counted from `earlier`.
     pub fn minus(self, earlier: Instant) -> Instant {
-        Instant::default()
-            .after(self.high)
-            .after(-earlier.high)
-            .after(self.low)
-            .after(-earlier.low)
+        Instant::default().after(self.high).after(-earlier.high).after(self.low).after(-earlier.low)
     }
 
     /// Seconds from `earlier` to this moment.

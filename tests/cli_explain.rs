@@ -48,9 +48,7 @@ fn holds(page: &str, words: &str) {
 /// The object of a list that goes from one level to another.
 fn between<'v>(list: &'v Value, from: &str, to: &str) -> &'v Value {
     let mut items = list.as_array().expect("a list stands here").iter();
-    items
-        .find(|item| item["from"] == from && item["to"] == to)
-        .expect("the pair is there")
+    items.find(|item| item["from"] == from && item["to"] == to).expect("the pair is there")
 }
 
 const LADDER: &str = "
@@ -102,9 +100,7 @@ fn exact_numbers_of_a_ladder() {
     // turn_about y is the phase of -90 deg, three quarters of a turn
     assert_eq!((pulse["phase"].as_f64(), pulse["axis"].as_f64()), (Some(0.75), Some(0.25)));
     close(&found["end_s"], 8.0 * 26e-9, 1e-14);
-    let accuracy = found["defaults"]
-        .as_array()
-        .and_then(|list| list.iter().find(|default| default["name"] == "accuracy.final"));
+    let accuracy = found["defaults"].as_array().and_then(|list| list.iter().find(|default| default["name"] == "accuracy.final"));
     assert_eq!(accuracy.map(|default| default["value"].as_f64()), Some(Some(1e-8)));
 }
 
@@ -125,11 +121,7 @@ fn exact_commutator_of_a_ladder() {
     let static_norm = energies.iter().map(|e| (e - mean).powi(2)).sum::<f64>().sqrt();
     let commutator = (2.0 * (25.0 + 2.0 * 4.75 * 4.75) as f64).sqrt();
     assert_eq!(found["commutators"][0]["name"], "static and xy");
-    close(
-        &found["commutators"][0]["size"],
-        commutator / (2.0 * static_norm * 6f64.sqrt()),
-        1e-14,
-    );
+    close(&found["commutators"][0]["size"], commutator / (2.0 * static_norm * 6f64.sqrt()), 1e-14);
 }
 
 #[test]
@@ -178,22 +170,12 @@ start: a
 fn exact_a_direct_drive_has_no_rabi_frequency() {
     let found = json("direct", DIRECT, &[]);
     let (drive, pulse) = (&found["drives"]["bias"], &found["pulses"][0]);
-    for empty in [
-        &drive["carrier_Hz"],
-        &drive["peak_rabi_Hz"],
-        &drive["flip_s"],
-        &pulse["turn"],
-        &pulse["phase"],
-        &pulse["axis"],
-    ] {
+    for empty in [&drive["carrier_Hz"], &drive["peak_rabi_Hz"], &drive["flip_s"], &pulse["turn"], &pulse["phase"], &pulse["axis"]] {
         assert!(empty.is_null(), "{found}");
     }
     assert_eq!(drive["peak_element_Hz"].as_f64(), Some(2e6));
     assert!(found["detunings"].as_object().is_some_and(|detunings| detunings.is_empty()));
-    assert_eq!(
-        (found["marks"][0]["name"].as_str(), found["marks"][0]["at_s"].as_f64()),
-        (Some("done"), Some(1e-6))
-    );
+    assert_eq!((found["marks"][0]["name"].as_str(), found["marks"][0]["at_s"].as_f64()), (Some("done"), Some(1e-6)));
     assert_eq!(found["end_s"], found["marks"][0]["at_s"]);
     let page = page("direct-page", DIRECT);
     holds(&page, "direct: no carrier, the envelope itself multiplies the matrix");

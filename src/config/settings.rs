@@ -35,11 +35,7 @@ pub struct Accuracy {
 
 /// Reads `accuracy:`.
 pub fn read_accuracy(reader: &mut Reader, node: Option<&Node>) -> Option<Accuracy> {
-    let mut accuracy = Accuracy {
-        last: USUAL_ACCURACY,
-        method: MethodWord::Automatic,
-        cross_check: false,
-    };
+    let mut accuracy = Accuracy { last: USUAL_ACCURACY, method: MethodWord::Automatic, cross_check: false };
     let words = [
         ("automatic", MethodWord::Automatic),
         ("constant steps", MethodWord::ConstantSteps),
@@ -54,13 +50,7 @@ pub fn read_accuracy(reader: &mut Reader, node: Option<&Node>) -> Option<Accurac
             &[("tolerance", "The largest allowed error is called final.")],
         )?;
         if let Some(seed) = entries.iter().find(|entry| entry.key == "seed") {
-            reader.error(
-                seed.place,
-                Fault::NotNow {
-                    key: "seed".to_string(),
-                    section: "accuracy".to_string(),
-                },
-            );
+            reader.error(seed.place, Fault::NotNow { key: "seed".to_string(), section: "accuracy".to_string() });
             return None;
         }
     }
@@ -100,13 +90,7 @@ pub fn read_frame(reader: &mut Reader, node: Option<&Node>) -> Option<()> {
     let kind = reader.need(node, "kind", "frame", "lab")?;
     let rotating = reader.word(kind, "frame / kind", &[("lab", false), ("rotating", true)])?;
     if rotating {
-        reader.error(
-            kind.place,
-            Fault::NotNow {
-                key: "rotating".to_string(),
-                section: "frame / kind".to_string(),
-            },
-        );
+        reader.error(kind.place, Fault::NotNow { key: "rotating".to_string(), section: "frame / kind".to_string() });
         return None;
     }
     if let Some(entry) = node.entries()?.iter().find(|entry| known[1..].contains(&entry.key.as_str())) {
@@ -114,13 +98,7 @@ pub fn read_frame(reader: &mut Reader, node: Option<&Node>) -> Option<()> {
         let hint = Some("It belongs to a rotating frame; in the laboratory frame nothing is dropped.".to_string());
         reader.error(
             entry.place,
-            Fault::UnknownKey {
-                key: entry.key.clone(),
-                section: "frame (kind: lab)".to_string(),
-                near: None,
-                known,
-                hint,
-            },
+            Fault::UnknownKey { key: entry.key.clone(), section: "frame (kind: lab)".to_string(), near: None, known, hint },
         );
         return None;
     }
@@ -153,17 +131,8 @@ pub fn read_output(reader: &mut Reader, node: Option<&Node>) -> Option<Output> {
     let mut output = Output { folder: None, plots: all };
     if let Some(node) = node {
         let entries = reader.fields(node, "output", &["folder", "plots", "tables", "waveform_files", "report"], &[])?;
-        for later in entries
-            .iter()
-            .filter(|entry| matches!(entry.key.as_str(), "waveform_files" | "report"))
-        {
-            reader.error(
-                later.place,
-                Fault::NotNow {
-                    key: later.key.clone(),
-                    section: "output".to_string(),
-                },
-            );
+        for later in entries.iter().filter(|entry| matches!(entry.key.as_str(), "waveform_files" | "report")) {
+            reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: "output".to_string() });
         }
         if let Some(folder) = node.get("folder") {
             output.folder = Some(reader.text(folder, "output / folder", "folder: outputs/first-run")?.to_string());
@@ -178,21 +147,11 @@ pub fn read_output(reader: &mut Reader, node: Option<&Node>) -> Option<Output> {
             for plot in reader.list(plots, "output / plots", "plots: [traces, envelopes]")? {
                 let later = ["ledger", "level diagram", "map", "scan lines"];
                 if let Some(key) = plot.text().filter(|text| later.contains(text)) {
-                    reader.error(
-                        plot.place,
-                        Fault::NotNow {
-                            key: key.to_string(),
-                            section: "output / plots".to_string(),
-                        },
-                    );
+                    reader.error(plot.place, Fault::NotNow { key: key.to_string(), section: "output / plots".to_string() });
                     return None;
                 }
-                let words = [
-                    ("traces", Plot::Traces),
-                    ("envelopes", Plot::Envelopes),
-                    ("timing", Plot::Envelopes),
-                    ("spectrum", Plot::Spectrum),
-                ];
+                let words =
+                    [("traces", Plot::Traces), ("envelopes", Plot::Envelopes), ("timing", Plot::Envelopes), ("spectrum", Plot::Spectrum)];
                 let plot = reader.word(plot, "a plot", &words)?;
                 if !output.plots.contains(&plot) {
                     output.plots.push(plot);

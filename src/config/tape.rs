@@ -152,10 +152,7 @@ impl Real for Dual {
             One::Abs => x.signum(),
             One::Floor | One::Round => 0.0,
         };
-        Dual {
-            value,
-            slope: if self.slope == 0.0 { 0.0 } else { slope * self.slope },
-        }
+        Dual { value, slope: if self.slope == 0.0 { 0.0 } else { slope * self.slope } }
     }
 
     fn two(self, operation: Two, other: Dual) -> Dual {
@@ -167,11 +164,7 @@ impl Real for Dual {
             Two::Multiply => self.slope * b + a * other.slope,
             Two::Divide => (self.slope - value * other.slope) / b,
             Two::Power => {
-                let base = if self.slope == 0.0 || b == 0.0 {
-                    0.0
-                } else {
-                    b * a.two(Two::Power, b - 1.0) * self.slope
-                };
+                let base = if self.slope == 0.0 || b == 0.0 { 0.0 } else { b * a.two(Two::Power, b - 1.0) * self.slope };
                 base + if other.slope == 0.0 { 0.0 } else { value * a.ln() * other.slope }
             }
             Two::Min => {
@@ -230,9 +223,7 @@ impl Tape {
                 Entry::Two(_, a, b) => moved[*a as usize] || moved[*b as usize],
             };
         }
-        (0..self.entries.len() as Register)
-            .filter(|register| moved[*register as usize])
-            .collect()
+        (0..self.entries.len() as Register).filter(|register| moved[*register as usize]).collect()
     }
 
     /// Runs one entry on the registers before it.
@@ -303,11 +294,7 @@ impl Formula {
                 other => *other,
             })
             .collect();
-        BoundFormula {
-            entries,
-            outer,
-            result: self.result as usize,
-        }
+        BoundFormula { entries, outer, result: self.result as usize }
     }
 }
 

@@ -54,11 +54,7 @@ pub fn cut(timeline: &Timeline, parts: &dyn Fn(&PlacedPulse) -> Arc<PulseParts>)
                     terms.push(term(pulse, parts, from, middle, timeline));
                 }
             }
-            segments.push(Segment {
-                start: group.start.after(from),
-                length_s: to - from,
-                terms: first..terms.len(),
-            });
+            segments.push(Segment { start: group.start.after(from), length_s: to - from, terms: first..terms.len() });
         }
     }
     (segments, terms)
@@ -84,9 +80,7 @@ fn term(pulse: &PlacedPulse, parts: &Arc<PulseParts>, from_s: f64, middle_s: f64
     let held = match &parts.pieces {
         Pieces::Constant(value) => Some(*value),
         Pieces::Held { starts_s, values } => {
-            let index = starts_s
-                .partition_point(|start| *start <= middle_s - pulse.offset_s)
-                .saturating_sub(1);
+            let index = starts_s.partition_point(|start| *start <= middle_s - pulse.offset_s).saturating_sub(1);
             Some(values[index])
         }
         Pieces::Smooth { .. } => None,
@@ -94,38 +88,19 @@ fn term(pulse: &PlacedPulse, parts: &Arc<PulseParts>, from_s: f64, middle_s: f64
     let envelope = match (held, &parts.chirp) {
         (Some(value), None) => Envelope::Constant(size * value),
         (Some(value), Some(_)) => Envelope::Smooth {
-            shape: Arc::new(Signal {
-                curve: parts.curve.clone(),
-                held: Some(value),
-                quadrature_s: 0.0,
-                chirp: parts.chirp.clone(),
-            }),
+            shape: Arc::new(Signal { curve: parts.curve.clone(), held: Some(value), quadrature_s: 0.0, chirp: parts.chirp.clone() }),
             since_s,
             scale: size,
         },
-        (None, _) => Envelope::Smooth {
-            shape: smooth(parts),
-            since_s,
-            scale: size,
-        },
+        (None, _) => Envelope::Smooth { shape: smooth(parts), since_s, scale: size },
     };
     let turned = pulse.turned + Instant::at(since_s).turns(turns_hz);
-    Term {
-        matrix: pulse.drive,
-        turns_hz,
-        phase_turns: turned - turned.round(),
-        envelope,
-    }
+    Term { matrix: pulse.drive, turns_hz, phase_turns: turned - turned.round(), envelope }
 }
 
 fn smooth(parts: &PulseParts) -> Arc<dyn Slow> {
     match &parts.signal {
         Some(signal) => signal.clone(),
-        None => Arc::new(Signal {
-            curve: parts.curve.clone(),
-            held: None,
-            quadrature_s: parts.quadrature_s,
-            chirp: parts.chirp.clone(),
-        }),
+        None => Arc::new(Signal { curve: parts.curve.clone(), held: None, quadrature_s: parts.quadrature_s, chirp: parts.chirp.clone() }),
     }
 }

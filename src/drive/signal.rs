@@ -30,11 +30,7 @@ impl Slow for Signal {
         // rounding may put the end of the last segment a bit past the end of the pulse
         let t = t_s.clamp(0.0, self.curve.length_s());
         let in_phase = self.held.unwrap_or_else(|| self.curve.at(t));
-        let quadrature = if self.quadrature_s == 0.0 {
-            0.0
-        } else {
-            self.quadrature_s * self.curve.slope(t)
-        };
+        let quadrature = if self.quadrature_s == 0.0 { 0.0 } else { self.quadrature_s * self.curve.slope(t) };
         let value = Complex64::new(in_phase, quadrature);
         match &self.chirp {
             Some(chirp) => value * cis_turns(-chirp.turns(t)),

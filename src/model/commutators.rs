@@ -47,11 +47,7 @@ mod tests {
     /// [z, x] = 2 i y: norm sqrt(8) over 2 sqrt(2) sqrt(2), the largest there is.
     #[test]
     fn exact_pauli_z_and_x_with_any_zero_of_energy() {
-        let found = commutators(&[
-            matrix([10e6, 0.0, 0.0, 35e6]),
-            matrix([1.0, 0.0, 0.0, 0.0]),
-            matrix([0.0, 1.0, 1.0, 0.0]),
-        ]);
+        let found = commutators(&[matrix([10e6, 0.0, 0.0, 35e6]), matrix([1.0, 0.0, 0.0, 0.0]), matrix([0.0, 1.0, 1.0, 0.0])]);
         let sizes: Vec<f64> = found.iter().map(|(_, _, size)| *size).collect();
         let most = 0.5f64.sqrt();
         assert_eq!(sizes[0], 0.0);

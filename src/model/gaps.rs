@@ -17,16 +17,8 @@ impl Gap {
     /// The gap between levels `a` and `b`; `energies_hz` is the diagonal of the static Hamiltonian.
     pub fn between(energies_hz: &[f64], a: usize, b: usize) -> Gap {
         let (first, second) = (a.min(b), a.max(b));
-        let (lower, upper) = if energies_hz[second] < energies_hz[first] {
-            (second, first)
-        } else {
-            (first, second)
-        };
-        Gap {
-            lower,
-            upper,
-            hz: energies_hz[upper] - energies_hz[lower],
-        }
+        let (lower, upper) = if energies_hz[second] < energies_hz[first] { (second, first) } else { (first, second) };
+        Gap { lower, upper, hz: energies_hz[upper] - energies_hz[lower] }
     }
 
     /// In eV.
@@ -53,10 +45,7 @@ impl Gap {
 /// Every pair of levels, in basis order; `energies_hz` is the diagonal of the static Hamiltonian.
 pub fn gaps(energies_hz: &[f64]) -> Vec<Gap> {
     let size = energies_hz.len();
-    (0..size)
-        .flat_map(|a| (a + 1..size).map(move |b| (a, b)))
-        .map(|(a, b)| Gap::between(energies_hz, a, b))
-        .collect()
+    (0..size).flat_map(|a| (a + 1..size).map(move |b| (a, b))).map(|(a, b)| Gap::between(energies_hz, a, b)).collect()
 }
 
 #[cfg(test)]

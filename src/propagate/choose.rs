@@ -112,13 +112,7 @@ pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
     let spent = |method: Method| METHODS.iter().any(|row| row.method == method && row.time_in);
     if let Some(method) = wished {
         if load.time_in && load.changing > 0 && !spent(method) {
-            return (
-                Method::Smooth,
-                format!(
-                    "{} was asked for, but it gives no time spent in a level; smooth does",
-                    method.word()
-                ),
-            );
+            return (Method::Smooth, format!("{} was asked for, but it gives no time spent in a level; smooth does", method.word()));
         }
         return (method, "asked for in the config".to_string());
     }

@@ -44,13 +44,7 @@ impl Flows {
                 Envelope::Constant(value) => *value,
                 Envelope::Smooth { .. } => unreachable_smooth(),
             };
-            let bits = [
-                term.matrix as u64,
-                term.turns_hz.to_bits(),
-                term.phase_turns.to_bits(),
-                value.re.to_bits(),
-                value.im.to_bits(),
-            ];
+            let bits = [term.matrix as u64, term.turns_hz.to_bits(), term.phase_turns.to_bits(), value.re.to_bits(), value.im.to_bits()];
             self.key.extend_from_slice(&bits);
         }
         if let Some(flow) = self.kept.get(&self.key) {
@@ -81,10 +75,7 @@ pub(super) fn pass(stretch: &Stretch, pieces: u32, flows: &mut Flows, state: &mu
         let to_s = stretch.length_s * f64::from(piece) / f64::from(pieces);
         while next < stretch.moments.len() && (piece == pieces || stretch.moments[next].offset_s <= to_s) {
             let since_s = stretch.moments[next].offset_s - from_s;
-            work.step(
-                flow.act(since_s, &state.amplitudes[..dim], &mut flows.psi, &mut flows.room),
-                dim * dim,
-            );
+            work.step(flow.act(since_s, &state.amplitudes[..dim], &mut flows.psi, &mut flows.room), dim * dim);
             let mut time_in_s = state.time_in_s.clone();
             if timed {
                 flow.dwell(since_s, &state.amplitudes[..dim], &mut time_in_s);

@@ -88,11 +88,7 @@ pub(super) fn cross_check<R: Recorder>(
                 let apart = (a - b).abs();
                 difference = if apart.is_nan() { f64::INFINITY } else { difference.max(apart) };
             }
-            CrossCheck::Done {
-                method: format!("{method}, tolerance {tolerance:.0e}"),
-                recorded: recorder,
-                difference,
-            }
+            CrossCheck::Done { method: format!("{method}, tolerance {tolerance:.0e}"), recorded: recorder, difference }
         }
     }
 }
@@ -100,9 +96,7 @@ pub(super) fn cross_check<R: Recorder>(
 fn walk(problem: &Problem, demand: &Demand, tolerance: f64, steps: f64, recorder: &mut impl Recorder) -> Result<(), String> {
     let n = problem.dim();
     let diagonal: Vec<f64> = (0..n).map(|j| problem.statics[(j, j)].re).collect();
-    let (low, high) = diagonal
-        .iter()
-        .fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), v| (v.min(low), v.max(high)));
+    let (low, high) = diagonal.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), v| (v.min(low), v.max(high)));
     let middle_rad_s = if high >= low { low + 0.5 * (high - low) } else { 0.0 };
     let mut amplitudes: Vec<Complex64> = problem.start.as_slice().to_vec();
     if demand.propagator {
@@ -115,29 +109,15 @@ fn walk(problem: &Problem, demand: &Demand, tolerance: f64, steps: f64, recorder
         let mut tau_s = 0.0;
         loop {
             let here = next < problem.moments.len() && problem.moments[next].segment <= index;
-            let stop_s = if here {
-                problem.moments[next].offset_s.min(segment.length_s)
-            } else {
-                segment.length_s
-            };
+            let stop_s = if here { problem.moments[next].offset_s.min(segment.length_s) } else { segment.length_s };
             let parts = (steps * (stop_s - tau_s) / total_s / PART_STEPS).ceil().max(1.0);
             let from_s = tau_s;
             let mut part = 0.0;
             while part < parts && stop_s > from_s {
                 part += 1.0;
-                let to_s = if part == parts {
-                    stop_s
-                } else {
-                    from_s + (stop_s - from_s) * (part / parts)
-                };
-                let lab = Lab {
-                    problem,
-                    segment,
-                    middle_rad_s,
-                    columns: amplitudes.len() / n,
-                    timed: demand.time_in,
-                    unit_s: to_s - tau_s,
-                };
+                let to_s = if part == parts { stop_s } else { from_s + (stop_s - from_s) * (part / parts) };
+                let lab =
+                    Lab { problem, segment, middle_rad_s, columns: amplitudes.len() / n, timed: demand.time_in, unit_s: to_s - tau_s };
                 integrate(lab, tau_s, tolerance, &mut amplitudes, &mut time_in_s)?;
                 tau_s = to_s;
             }

@@ -22,10 +22,7 @@ pub(super) fn pass(
     let rate = first_steps(stretch) / stretch.length_s;
     let mut tau_s = 0.0;
     for k in 0..=stretch.moments.len() {
-        let stop_s = stretch
-            .moments
-            .get(k)
-            .map_or(stretch.length_s, |moment| moment.offset_s.min(stretch.length_s));
+        let stop_s = stretch.moments.get(k).map_or(stretch.length_s, |moment| moment.offset_s.min(stretch.length_s));
         let gap_s = stop_s - tau_s;
         if gap_s > 0.0 {
             let steps = (gap_s * rate).ceil().max(1.0) * 2f64.powi(doublings as i32);

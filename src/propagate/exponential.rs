@@ -52,12 +52,7 @@ impl Flow {
             let (a, b) = (h[0].re, h[3].re);
             let half_gap = 0.5 * (a - b);
             let rate = half_gap.hypot(h[2].re.hypot(h[2].im));
-            return Flow::Two {
-                mean_hz: 0.5 * (a + b) / RAD_PER_TURN,
-                half_gap,
-                coupling: h[2],
-                rate,
-            };
+            return Flow::Two { mean_hz: 0.5 * (a + b) / RAD_PER_TURN, half_gap, coupling: h[2], rate };
         }
         let mean = (0..dim).map(|j| h[j * (dim + 1)].re).sum::<f64>() / dim as f64;
         let mut bound: f64 = 0.0;
@@ -79,20 +74,14 @@ impl Flow {
             return Flow::Broken;
         }
         if diagonal {
-            return Flow::Phases {
-                turns_hz: (0..dim).map(|j| h[j * (dim + 1)].re / RAD_PER_TURN).collect(),
-            };
+            return Flow::Phases { turns_hz: (0..dim).map(|j| h[j * (dim + 1)].re / RAD_PER_TURN).collect() };
         }
         if bound * longest_s <= SERIES_UP_TO_RAD && !modes {
             let mut generator: Vec<Complex64> = h.iter().map(|entry| Complex64::new(entry.im, -entry.re)).collect();
             for j in 0..dim {
                 generator[j * (dim + 1)] = Complex64::new(0.0, mean - h[j * (dim + 1)].re);
             }
-            return Flow::Series {
-                mean_hz: mean / RAD_PER_TURN,
-                generator,
-                dim,
-            };
+            return Flow::Series { mean_hz: mean / RAD_PER_TURN, generator, dim };
         }
         let mut centred = Matrix::from_column_slice(dim, dim, h);
         for j in 0..dim {
@@ -116,12 +105,7 @@ impl Flow {
                 }
                 1
             }
-            Flow::Two {
-                mean_hz,
-                half_gap,
-                coupling,
-                rate,
-            } => {
+            Flow::Two { mean_hz, half_gap, coupling, rate } => {
                 let (sin, cos) = sin_cos_turns(super::picture::turns(rate / RAD_PER_TURN, tau_s));
                 let s = if *rate == 0.0 { tau_s } else { sin / rate };
                 let phase = cis_turns(-super::picture::turns(*mean_hz, tau_s));
@@ -175,11 +159,7 @@ impl Flow {
                 // Integral of exp(-2 pi i f t) over t from 0 to tau: tau exp(-pi i f tau) sin(pi f tau)/(pi f tau).
                 let half = super::picture::turns(0.5 * (turns_hz[a] - turns_hz[b]), tau_s);
                 let whole = 0.5 * (turns_hz[a] - turns_hz[b]) * tau_s;
-                let sinc = if whole.abs() < 1e-9 {
-                    1.0
-                } else {
-                    sin_cos_turns(half).0 / (RAD_PER_TURN * whole)
-                };
+                let sinc = if whole.abs() < 1e-9 { 1.0 } else { sin_cos_turns(half).0 / (RAD_PER_TURN * whole) };
                 let integral = cis_turns(-half) * (tau_s * sinc);
                 for (j, time) in into_s.iter_mut().enumerate() {
                     *time += 2.0 * (vectors[(j, a)] * shares[a] * (vectors[(j, b)] * shares[b]).conj() * integral).re;

@@ -28,9 +28,7 @@ pub(super) fn pass(stretch: &Stretch, doublings: u32, state: &mut State, eye: &m
     let mut magnus = Magnus::new(dim);
     even_steps::pass(stretch, doublings, state, eye, work, |tau_s, step_s, state| {
         for (node, h) in nodes.iter_mut().enumerate() {
-            stretch
-                .picture
-                .fill(stretch.terms, tau_s + step_s * (0.5 + OUTER * (node as f64 - 1.0)), h);
+            stretch.picture.fill(stretch.terms, tau_s + step_s * (0.5 + OUTER * (node as f64 - 1.0)), h);
         }
         if dim == 2 {
             two_levels(&nodes, step_s, &mut k);
@@ -81,15 +79,7 @@ struct Magnus {
 impl Magnus {
     fn new(dim: usize) -> Self {
         let zero = || vec![Complex64::default(); dim * dim];
-        Magnus {
-            dim,
-            a: [zero(), zero(), zero()],
-            c1: zero(),
-            c2: zero(),
-            left: zero(),
-            right: zero(),
-            product: zero(),
-        }
+        Magnus { dim, a: [zero(), zero(), zero()], c1: zero(), c2: zero(), left: zero(), right: zero(), product: zero() }
     }
 
     fn exponent(&mut self, nodes: &[Vec<Complex64>; 3], h: f64, k: &mut [Complex64]) {

@@ -62,9 +62,7 @@ fn height(envelope: &Envelope, length_s: f64) -> (f64, f64) {
     match envelope {
         Envelope::Constant(value) => (value.norm(), 0.0),
         Envelope::Smooth { .. } => {
-            let values: Vec<_> = (0..=SAMPLES)
-                .map(|i| envelope.at(length_s * f64::from(i) / f64::from(SAMPLES)))
-                .collect();
+            let values: Vec<_> = (0..=SAMPLES).map(|i| envelope.at(length_s * f64::from(i) / f64::from(SAMPLES))).collect();
             let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
             let way: f64 = values.windows(2).map(|pair| (pair[1] - pair[0]).norm()).sum();
             (most, if most > 0.0 { way / most } else { 0.0 })
@@ -73,9 +71,7 @@ fn height(envelope: &Envelope, length_s: f64) -> (f64, f64) {
 }
 
 fn half_range(values: impl Iterator<Item = f64>) -> f64 {
-    let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), value| {
-        (value.min(low), value.max(high))
-    });
+    let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), value| (value.min(low), value.max(high)));
     if high >= low {
         0.5 * (high - low)
     } else {
@@ -85,9 +81,7 @@ fn half_range(values: impl Iterator<Item = f64>) -> f64 {
 
 /// Largest sum of moduli in a row of B + adjoint, the diagonal counted too.
 fn row_bound(b: &Matrix) -> f64 {
-    (0..b.nrows())
-        .map(|j| (0..b.ncols()).map(|k| b[(j, k)].norm() + b[(k, j)].norm()).sum::<f64>())
-        .fold(0.0, f64::max)
+    (0..b.nrows()).map(|j| (0..b.ncols()).map(|k| b[(j, k)].norm() + b[(k, j)].norm()).sum::<f64>()).fold(0.0, f64::max)
 }
 
 impl Load {
@@ -95,9 +89,7 @@ impl Load {
         let n = problem.dim();
         let a = &problem.statics;
         let bounds: Vec<f64> = problem.matrices.iter().map(row_bound).collect();
-        let off = (0..n)
-            .map(|j| (0..n).filter(|k| *k != j).map(|k| a[(j, k)].norm()).sum::<f64>())
-            .fold(0.0, f64::max);
+        let off = (0..n).map(|j| (0..n).filter(|k| *k != j).map(|k| a[(j, k)].norm()).sum::<f64>()).fold(0.0, f64::max);
         let resting_rad_s = off + half_range((0..n).map(|j| a[(j, j)].re));
         let mut load = Load {
             levels: n,

@@ -46,47 +46,24 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
     let load = Load::of(problem, demand, asked.accuracy, &mut pictures);
     let (method, reason) = choose(&load, asked.method);
     // Runge-Kutta sums are compensated; all other steps are products, one after the other.
-    let floor_of = |work: &Work| {
-        load.floor(if load.changing > 0 && method != Method::Smooth {
-            work.steps
-        } else {
-            load.segments as u64
-        })
-    };
+    let floor_of = |work: &Work| load.floor(if load.changing > 0 && method != Method::Smooth { work.steps } else { load.segments as u64 });
     let mut left = MOST_MULTIPLICATIONS;
     let mut products = 0;
     let mut go = |fineness: Fineness| {
         let mut recorder = new_recorder();
-        let work = run(
-            problem,
-            demand,
-            method,
-            &fineness,
-            load.changing_s,
-            &mut pictures,
-            left,
-            &mut recorder,
-        );
+        let work = run(problem, demand, method, &fineness, load.changing_s, &mut pictures, left, &mut recorder);
         left = work.left;
         products += work.products;
         Ran { recorder, fineness, work }
     };
     let least = least_tolerance(&load);
-    let start = Fineness {
-        tolerance: (FIRST_TOLERANCE * asked.accuracy).max(least),
-        pieces: 1,
-        doublings: 0,
-    };
+    let start = Fineness { tolerance: (FIRST_TOLERANCE * asked.accuracy).max(least), pieces: 1, doublings: 0 };
     let mut coarse = go(start);
     let mut fine = go(finer(start, method, least));
     let (error_figure, floor) = loop {
         let floor = floor_of(&coarse.work);
         let spoilt = coarse.work.exhausted() || fine.work.exhausted();
-        let error_figure = if spoilt {
-            f64::INFINITY
-        } else {
-            largest_figure(coarse.recorder.numbers(), fine.recorder.numbers(), floor)
-        };
+        let error_figure = if spoilt { f64::INFINITY } else { largest_figure(coarse.recorder.numbers(), fine.recorder.numbers(), floor) };
         if error_figure <= asked.accuracy || spoilt || !error_figure.is_finite() || load.changing == 0 {
             break (error_figure, floor);
         }
@@ -97,11 +74,7 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         if ahead > fine.work.left {
             break (error_figure, floor);
         }
-        let (next_coarse, reused) = if wanted == fine.fineness {
-            (None, true)
-        } else {
-            (Some(go(wanted)), false)
-        };
+        let (next_coarse, reused) = if wanted == fine.fineness { (None, true) } else { (Some(go(wanted)), false) };
         let next_fine = go(finer(wanted, method, least));
         let worse = next_fine.work.exhausted() || next_coarse.as_ref().is_some_and(|ran| ran.work.exhausted());
         if worse {
@@ -113,15 +86,11 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         };
         fine = next_fine;
     };
-    let resolution = |ran: &Ran<R>| Resolution {
-        words: words(method, &load, ran),
-        steps: ran.work.steps,
-    };
+    let resolution = |ran: &Ran<R>| Resolution { words: words(method, &load, ran), steps: ran.work.steps };
     let resolutions = [resolution(&coarse), resolution(&fine)];
     let steps = coarse.work.steps;
-    let cross_check = asked
-        .cross_check
-        .then(|| cross_check(problem, demand, &load, asked.accuracy, coarse.recorder.numbers(), &new_recorder));
+    let cross_check =
+        asked.cross_check.then(|| cross_check(problem, demand, &load, asked.accuracy, coarse.recorder.numbers(), &new_recorder));
     Solved {
         recorded: coarse.recorder,
         finer: fine.recorder,
@@ -145,11 +114,7 @@ fn least_tolerance(load: &Load) -> f64 {
 /// The next finer resolution.
 fn finer(of: Fineness, method: Method, least: f64) -> Fineness {
     let doublings = if method == Method::ConstantSteps { 2 } else { 1 };
-    Fineness {
-        tolerance: (of.tolerance / 30.0).max(least),
-        pieces: of.pieces + 1,
-        doublings: of.doublings + doublings,
-    }
+    Fineness { tolerance: (of.tolerance / 30.0).max(least), pieces: of.pieces + 1, doublings: of.doublings + doublings }
 }
 
 /// The coarse resolution to try next where the error is `excess` times too large; `None` where nothing finer is left.
@@ -162,10 +127,7 @@ fn tighten<R>(coarse: &Ran<R>, fine: &Ran<R>, excess: f64, method: Method, least
             if excess < 20.0 || coarse.fineness.tolerance <= least {
                 return Some(fine.fineness);
             }
-            Some(Fineness {
-                tolerance: (coarse.fineness.tolerance / (3.0 * excess)).max(least),
-                ..fine.fineness
-            })
+            Some(Fineness { tolerance: (coarse.fineness.tolerance / (3.0 * excess)).max(least), ..fine.fineness })
         }
         Method::Geometric | Method::ConstantSteps => {
             let (order, stride) = if method == Method::Geometric { (6.0, 1) } else { (2.0, 2) };
@@ -174,10 +136,7 @@ fn tighten<R>(coarse: &Ran<R>, fine: &Ran<R>, excess: f64, method: Method, least
             if doublings + stride > MOST_DOUBLINGS {
                 return None;
             }
-            Some(Fineness {
-                doublings,
-                ..fine.fineness
-            })
+            Some(Fineness { doublings, ..fine.fineness })
         }
     }
 }

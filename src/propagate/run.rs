@@ -93,23 +93,13 @@ pub(super) fn run<'p>(
     recorder: &mut dyn Recorder,
 ) -> Work {
     let dim = problem.dim();
-    let mut work = Work {
-        steps: 0,
-        products: 0,
-        left,
-    };
-    let mut state = State {
-        dim,
-        amplitudes: problem.start.as_slice().to_vec(),
-        time_in_s: vec![0.0; if demand.time_in { dim } else { 0 }],
-    };
+    let mut work = Work { steps: 0, products: 0, left };
+    let mut state =
+        State { dim, amplitudes: problem.start.as_slice().to_vec(), time_in_s: vec![0.0; if demand.time_in { dim } else { 0 }] };
     if demand.propagator {
         state.amplitudes.extend_from_slice(Matrix::identity(dim, dim).as_slice());
     }
-    let mut eye = Eye {
-        recorder,
-        lab: problem.start.clone(),
-    };
+    let mut eye = Eye { recorder, lab: problem.start.clone() };
     let mut flows = Flows::new(dim);
     let mut smooth = Smooth::new(dim, state.amplitudes.len(), demand.time_in);
     let mut next = 0;
@@ -121,18 +111,8 @@ pub(super) fn run<'p>(
         let terms = problem.terms_of(segment);
         let tied = pictures.of(segment, Kind::Tied);
         let still = tied.constant(terms);
-        let picture = if still || method != Method::Smooth {
-            tied
-        } else {
-            pictures.of(segment, Kind::Free)
-        };
-        let stretch = Stretch {
-            picture: &picture,
-            terms,
-            length_s: segment.length_s,
-            moments: &problem.moments[first..next],
-            first,
-        };
+        let picture = if still || method != Method::Smooth { tied } else { pictures.of(segment, Kind::Free) };
+        let stretch = Stretch { picture: &picture, terms, length_s: segment.length_s, moments: &problem.moments[first..next], first };
         if still {
             constant::pass(&stretch, fineness.pieces, &mut flows, &mut state, &mut eye, &mut work);
         } else {
@@ -148,9 +128,7 @@ pub(super) fn run<'p>(
         eye.lab.as_mut_slice().copy_from_slice(&state.amplitudes[..dim]);
         eye.recorder.see(moment, &eye.lab, &state.time_in_s);
     }
-    let propagator = demand
-        .propagator
-        .then(|| Matrix::from_column_slice(dim, dim, &state.amplitudes[dim..]));
+    let propagator = demand.propagator.then(|| Matrix::from_column_slice(dim, dim, &state.amplitudes[dim..]));
     eye.recorder.finish(propagator.as_ref());
     work
 }

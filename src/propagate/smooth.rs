@@ -57,15 +57,7 @@ impl Smooth {
         let mut wish_s = if rate > 0.0 { cap_s.min(0.05 / rate) } else { cap_s };
         let mut tau_s = 0.0;
         self.lost.fill(Complex64::default());
-        derivative(
-            picture,
-            stretch.terms,
-            0.0,
-            dim,
-            &state.amplitudes,
-            &mut self.slopes[0],
-            &mut self.envelopes,
-        );
+        derivative(picture, stretch.terms, 0.0, dim, &state.amplitudes, &mut self.slopes[0], &mut self.envelopes);
         for k in 0..=stretch.moments.len() {
             let stop_s = stretch.moments.get(k).map_or(length_s, |moment| moment.offset_s.min(length_s));
             let most_s = cap_s.min((stop_s - tau_s) / f64::from(fineness.pieces));
@@ -94,23 +86,11 @@ impl Smooth {
                     wish_s = h * factor;
                     continue;
                 }
-                wish_s = if h < wish_s.min(most_s) {
-                    wish_s.max(h * factor)
-                } else {
-                    h * factor
-                };
+                wish_s = if h < wish_s.min(most_s) { wish_s.max(h * factor) } else { h * factor };
                 wish_s = wish_s.min(cap_s);
                 self.accept(h, state, timed);
                 tau_s = to_s;
-                derivative(
-                    picture,
-                    stretch.terms,
-                    tau_s,
-                    dim,
-                    &state.amplitudes,
-                    &mut self.slopes[0],
-                    &mut self.envelopes,
-                );
+                derivative(picture, stretch.terms, tau_s, dim, &state.amplitudes, &mut self.slopes[0], &mut self.envelopes);
             }
             if k < stretch.moments.len() {
                 eye.see(stretch, k, &state.amplitudes[..dim], &state.time_in_s);
@@ -135,15 +115,7 @@ impl Smooth {
                     }
                 }
                 let slope = &mut self.slopes[stage];
-                derivative(
-                    picture,
-                    terms,
-                    tau_s + NODES[stage] * h,
-                    dim,
-                    &self.trial,
-                    slope,
-                    &mut self.envelopes,
-                );
+                derivative(picture, terms, tau_s + NODES[stage] * h, dim, &self.trial, slope, &mut self.envelopes);
             }
             if timed {
                 let psi = if stage > 0 { &self.trial } else { &state.amplitudes };
@@ -188,10 +160,7 @@ impl Smooth {
         }
         if timed {
             for (j, time) in state.time_in_s.iter_mut().enumerate() {
-                *time += h * WEIGHTS
-                    .iter()
-                    .map(|(stage, weight)| weight * self.populations[*stage][j])
-                    .sum::<f64>();
+                *time += h * WEIGHTS.iter().map(|(stage, weight)| weight * self.populations[*stage][j]).sum::<f64>();
             }
         }
     }
@@ -233,11 +202,7 @@ fn derivative(
     envelopes.extend(terms.iter().map(|term| term.envelope.at(tau_s)));
     for (slope, (j, psi)) in slopes.iter_mut().zip((0..dim).cycle().zip(columns)) {
         let rest = picture.diagonal[j];
-        *slope = if rest == 0.0 {
-            Complex64::default()
-        } else {
-            Complex64::new(psi.im * rest, -psi.re * rest)
-        };
+        *slope = if rest == 0.0 { Complex64::default() } else { Complex64::new(psi.im * rest, -psi.re * rest) };
     }
     for turning in &picture.turnings {
         let turned = turns(turning.turns_hz, tau_s);

@@ -30,12 +30,7 @@ fn gauss() -> ([f64; NODES], [f64; NODES]) {
 
 /// Integrals of the Lagrange polynomials from 0 to each node.
 fn table(nodes: &[f64; NODES], weights: &[f64; NODES]) -> [[f64; NODES]; NODES] {
-    let lagrange = |j: usize, x: f64| {
-        (0..NODES)
-            .filter(|m| *m != j)
-            .map(|m| (x - nodes[m]) / (nodes[j] - nodes[m]))
-            .product::<f64>()
-    };
+    let lagrange = |j: usize, x: f64| (0..NODES).filter(|m| *m != j).map(|m| (x - nodes[m]) / (nodes[j] - nodes[m])).product::<f64>();
     let mut a = [[0.0; NODES]; NODES];
     for i in 0..NODES {
         for (j, entry) in a[i].iter_mut().enumerate() {
@@ -53,14 +48,8 @@ pub fn solve(problem: &Problem, most_rad: f64, kept: &mut Kept) {
     let mut psi = problem.start.clone();
     let mut next = 0;
     for (index, segment) in problem.segments.iter().enumerate() {
-        let turning = problem
-            .terms_of(segment)
-            .iter()
-            .map(|term| rad_s(term.turns_hz.abs()))
-            .fold(0.0, f64::max);
-        let size = (0..=20)
-            .map(|i| problem.hamiltonian(segment, segment.length_s * i as f64 / 20.0).norm())
-            .fold(0.0, f64::max);
+        let turning = problem.terms_of(segment).iter().map(|term| rad_s(term.turns_hz.abs())).fold(0.0, f64::max);
+        let size = (0..=20).map(|i| problem.hamiltonian(segment, segment.length_s * i as f64 / 20.0).norm()).fold(0.0, f64::max);
         let mut tau = 0.0;
         loop {
             let here = next < problem.moments.len() && problem.moments[next].segment == index;

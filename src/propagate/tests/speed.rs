@@ -26,19 +26,13 @@ fn repeated_slices() -> Problem {
 fn sampled_waveform(dim: usize) -> Problem {
     let levels: Vec<f64> = (0..dim).map(|j| 1e6 * j as f64).collect();
     let hop = sparse(dim, &(1..dim).map(|j| (j, j - 1, 1.0)).collect::<Vec<_>>());
-    let segments = (0..1_000_000)
-        .map(|k| (1e-9, vec![term(0, 0.0, 0.0, flat(1e6 * (1.0 + 1e-6 * f64::from(k))))], vec![]))
-        .collect();
+    let segments = (0..1_000_000).map(|k| (1e-9, vec![term(0, 0.0, 0.0, flat(1e6 * (1.0 + 1e-6 * f64::from(k))))], vec![])).collect();
     problem(&diagonal(&levels), vec![hop], segments)
 }
 
 fn resonant_rows(rows: usize) -> Problem {
     let offsets = (0..rows).map(|k| 1e-6 * k as f64 / rows as f64).collect();
-    problem(
-        &diagonal(&[0.0, 5e9]),
-        vec![sparse(2, &[(1, 0, 1.0)])],
-        vec![(1e-6, vec![term(0, 5e9, 0.0, flat(1e6))], offsets)],
-    )
+    problem(&diagonal(&[0.0, 5e9]), vec![sparse(2, &[(1, 0, 1.0)])], vec![(1e-6, vec![term(0, 5e9, 0.0, flat(1e6))], offsets)])
 }
 
 /// Three levels, linear drive at 5 GHz for 100 ns, raised cosine, everything kept.
@@ -46,26 +40,15 @@ fn lab_pulse() -> Problem {
     let length = 100e-9;
     let hump = move |t: f64| crate::units::sin_cos_turns(0.5 * t / length).0.powi(2);
     let x = sparse(3, &[(1, 0, 1.0), (0, 1, 1.0), (2, 1, 1.41), (1, 2, 1.41)]);
-    problem(
-        &diagonal(&[0.0, 5e9, 9.7e9]),
-        vec![x],
-        vec![(length, vec![term(0, 5e9, 0.0, shaped(5e6, hump))], vec![])],
-    )
+    problem(&diagonal(&[0.0, 5e9, 9.7e9]), vec![x], vec![(length, vec![term(0, 5e9, 0.0, shaped(5e6, hump))], vec![])])
 }
 
 /// Two delayed Gaussian pulses, 900 MHz carriers, 3.3 us.
 fn delayed_pulses() -> Problem {
     let bell = |at: f64| move |t: f64| (-((t - at) / 0.5e-6).powi(2)).exp();
     let (pump, dump) = (sparse(3, &[(2, 0, 1.0)]), sparse(3, &[(2, 1, 1.0)]));
-    let terms = vec![
-        term(0, 920e6, 0.0, shaped(13e6, bell(1.95e-6))),
-        term(1, 770.02e6, 0.0, shaped(12e6, bell(1.35e-6))),
-    ];
-    problem(
-        &diagonal(&[0.0, 150e6, 900e6]),
-        vec![pump, dump],
-        vec![(3.3e-6, terms, vec![1.7e-6])],
-    )
+    let terms = vec![term(0, 920e6, 0.0, shaped(13e6, bell(1.95e-6))), term(1, 770.02e6, 0.0, shaped(12e6, bell(1.35e-6)))];
+    problem(&diagonal(&[0.0, 150e6, 900e6]), vec![pump, dump], vec![(3.3e-6, terms, vec![1.7e-6])])
 }
 
 /// A slow sweep of two strongly coupled levels: large swing, slowly changing H.
@@ -83,22 +66,13 @@ fn exact_million_slices_keep_to_their_figure() {
     let solved = solve(&case, 1e-8, None);
     // 2 x 2 closed forms, their product raised to the power 100000 at 50 digits: tests/reference/slices.py.
     let error = (solved.recorded.population(1) - super::reference::HUNDRED_THOUSAND_REPEATS).abs();
-    assert!(
-        error <= solved.error_figure && solved.error_figure < 1e-9,
-        "{error:e} {:e}",
-        solved.error_figure
-    );
+    assert!(error <= solved.error_figure && solved.error_figure < 1e-9, "{error:e} {:e}", solved.error_figure);
 }
 
 #[test]
 fn ref_steps_of_long_pulses_are_few() {
     let delayed = solve(&delayed_pulses(), 1e-10, None);
-    assert!(
-        delayed.reached && delayed.steps < 4000,
-        "{:?} {:?}",
-        delayed.method,
-        delayed.resolutions
-    );
+    assert!(delayed.reached && delayed.steps < 4000, "{:?} {:?}", delayed.method, delayed.resolutions);
     let lab = solve(&lab_pulse(), 1e-8, None);
     assert!(lab.reached && lab.steps < 6000, "{:?} {:?}", lab.method, lab.resolutions);
     let sweep = solve(&slow_sweep(300.0), 1e-8, None);
@@ -111,10 +85,8 @@ fn ref_steps_of_long_pulses_are_few() {
 fn timings() {
     let say = |name: &str, case: &Problem, accuracy: f64, method: Option<Method>| {
         let clock = Clock::now();
-        let solved = super::super::solve(case, &Demand::default(), &asked(accuracy, method), || Kept {
-            populations_only: true,
-            ..Kept::default()
-        });
+        let solved =
+            super::super::solve(case, &Demand::default(), &asked(accuracy, method), || Kept { populations_only: true, ..Kept::default() });
         println!(
             "{name}: {:.3e} s, {} ({}), figure {:.1e}, floor {:.1e}, {} / {}, {} products",
             clock.elapsed().as_secs_f64(),

@@ -127,23 +127,11 @@ struct Tally {
 
 fn tally(seed: u64, problems: u32, wish: impl Fn(&mut Random) -> Option<Method>) -> Tally {
     let mut random = Random(seed);
-    let mut tally = Tally {
-        problems,
-        dishonest: 0,
-        loose: 0,
-        missed: 0,
-        filled: Vec::new(),
-        worst: 0.0,
-        runs: [0; 3],
-    };
+    let mut tally = Tally { problems, dishonest: 0, loose: 0, missed: 0, filled: Vec::new(), worst: 0.0, runs: [0; 3] };
     for number in 0..problems {
         let case = random_problem(&mut random);
         let method = wish(&mut random);
-        let accuracy = if method == Some(Method::ConstantSteps) {
-            random.size(1e-7, 1e-4)
-        } else {
-            random.size(1e-11, 1e-6)
-        };
+        let accuracy = if method == Some(Method::ConstantSteps) { random.size(1e-7, 1e-4) } else { random.size(1e-11, 1e-6) };
         let mut exact = Kept::default();
         collocation::solve(&case, 0.8, &mut exact);
         let solved = solve(&case, accuracy, method);

@@ -27,20 +27,13 @@ pub fn drives(page: &mut Page, facts: &Facts) {
     page.heading("two-photon detuning");
     for (a, b, hz) in facts.two_photon.iter().take(MOST) {
         let drives = &facts.document.drives;
-        let carrier = facts.drives[*a]
-            .carrier_hz
-            .unwrap_or(0.0)
-            .max(facts.drives[*b].carrier_hz.unwrap_or(0.0));
+        let carrier = facts.drives[*a].carrier_hz.unwrap_or(0.0).max(facts.drives[*b].carrier_hz.unwrap_or(0.0));
         // carriers that cancel leave their rounding
         let size = match side(0.5 * hz, carrier) {
             Side::On => "on resonance".to_string(),
             side => format!("{} {}", size_of(*hz), side.word()),
         };
-        let lower = |drive: usize| {
-            facts.drives[drive]
-                .reference
-                .map_or("", |[lower, _]| facts.document.system.names[lower].as_str())
-        };
+        let lower = |drive: usize| facts.drives[drive].reference.map_or("", |[lower, _]| facts.document.system.names[lower].as_str());
         page.line(
             2,
             &format!(
@@ -93,10 +86,7 @@ fn drive(page: &mut Page, facts: &Facts, index: usize, fact: &DriveFact) {
             let text = format!("{} = {} rad/us on {pair}{flip}", short(peak, "Hz"), digits(rad_s(peak) * 1e-6, 6));
             page.labelled("peak Rabi", &text);
         }
-        (Some(peak), None) => page.labelled(
-            "peak",
-            &format!("{} times the matrix as typed (no reference pair)", short(peak, "Hz")),
-        ),
+        (Some(peak), None) => page.labelled("peak", &format!("{} times the matrix as typed (no reference pair)", short(peak, "Hz"))),
         (None, _) => page.labelled("peak Rabi", "no pulse uses this drive"),
     }
     lines(page, facts, fact, carrier_hz);
@@ -117,11 +107,7 @@ fn carrier(facts: &Facts, index: usize, carrier_hz: f64) -> String {
                 let off = formula.at(t) - carrier_hz;
                 format!("{}{}", if off < 0.0 { "-" } else { "+" }, size_of(off))
             };
-            text.push_str(&format!(
-                ", swept from {} at the start to {} at the end of its first pulse",
-                at(0.0),
-                at(pulse.length_s)
-            ));
+            text.push_str(&format!(", swept from {} at the start to {} at the end of its first pulse", at(0.0), at(pulse.length_s)));
         }
     }
     text.push_str(&format!("; {}", words::carrier_phase(facts.document, index)));
@@ -132,21 +118,12 @@ fn carrier(facts: &Facts, index: usize, carrier_hz: f64) -> String {
 fn set_carriers(page: &mut Page, facts: &Facts, index: usize) {
     let own = facts.document.drives[index].carrier.as_ref();
     let timeline = &facts.point.timeline;
-    let mut used: Vec<usize> = timeline
-        .pulses
-        .iter()
-        .filter(|pulse| pulse.drive == index)
-        .filter_map(|pulse| pulse.carrier)
-        .collect();
+    let mut used: Vec<usize> = timeline.pulses.iter().filter(|pulse| pulse.drive == index).filter_map(|pulse| pulse.carrier).collect();
     used.sort_unstable();
     used.dedup();
     used.retain(|k| own.is_some_and(|own| !std::ptr::eq(own, timeline.carriers[*k].written)));
     for carrier in used.iter().take(LINES).map(|k| timeline.carriers[*k].centre_hz) {
-        let nearest = facts
-            .gaps
-            .iter()
-            .filter(|gap| gap.hz > 0.0)
-            .map(|gap| (*gap, detuning(carrier, *gap)));
+        let nearest = facts.gaps.iter().filter(|gap| gap.hz > 0.0).map(|gap| (*gap, detuning(carrier, *gap)));
         let nearest = nearest.min_by(|a, b| a.1 .0.abs().total_cmp(&b.1 .0.abs()));
         let against = nearest.map_or(String::new(), |(gap, (hz, side))| {
             let off = match side {
@@ -175,11 +152,7 @@ fn lines(page: &mut Page, facts: &Facts, fact: &DriveFact, carrier_hz: f64) {
         .collect();
     let coupled: HashMap<(usize, usize), f64> = fact.pairs.iter().map(|(gap, entry)| ((gap.lower, gap.upper), *entry)).collect();
     let is_coupled = |gap: &Gap| coupled.get(&(gap.lower, gap.upper)).copied();
-    lines.sort_by(|a, b| {
-        a.1.abs()
-            .total_cmp(&b.1.abs())
-            .then(is_coupled(&b.0).is_some().cmp(&is_coupled(&a.0).is_some()))
-    });
+    lines.sort_by(|a, b| a.1.abs().total_cmp(&b.1.abs()).then(is_coupled(&b.0).is_some().cmp(&is_coupled(&a.0).is_some())));
     if lines.is_empty() {
         page.labelled("lines", "none: all levels have the same energy");
         return;
@@ -202,13 +175,7 @@ fn lines(page: &mut Page, facts: &Facts, fact: &DriveFact, carrier_hz: f64) {
     page.table(15, &[], &rows);
     if lines.len() > LINES {
         let coupled = lines.iter().skip(LINES).filter(|(gap, ..)| is_coupled(gap).is_some()).count();
-        page.line(
-            15,
-            &format!(
-                "and {} farther away, {coupled} of them coupled; --json lists all",
-                count(lines.len() - LINES, "line")
-            ),
-        );
+        page.line(15, &format!("and {} farther away, {coupled} of them coupled; --json lists all", count(lines.len() - LINES, "line")));
     }
 }
 
@@ -217,17 +184,12 @@ fn shaken(page: &mut Page, facts: &Facts, index: usize, fact: &DriveFact) {
     let matrix = &facts.point.couplings[index].matrix;
     let names = &facts.document.system.names;
     let diagonal = (0..names.len()).filter(|k| matrix[(*k, *k)].norm() > 0.0);
-    let moved: Vec<String> = diagonal
-        .map(|k| format!("{} by {}", names[k], short(matrix[(k, k)].re * fact.peak_hz.unwrap_or(0.0), "Hz")))
-        .collect();
+    let moved: Vec<String> =
+        diagonal.map(|k| format!("{} by {}", names[k], short(matrix[(k, k)].re * fact.peak_hz.unwrap_or(0.0), "Hz"))).collect();
     if !moved.is_empty() {
         let shown = moved.iter().take(MOST).cloned().collect::<Vec<_>>().join(", ");
         let rest = moved.len().saturating_sub(MOST);
-        let rest = if rest > 0 {
-            format!(", and {rest} more levels")
-        } else {
-            String::new()
-        };
+        let rest = if rest > 0 { format!(", and {rest} more levels") } else { String::new() };
         page.labelled("shakes", &format!("at its peak it also moves the levels {shown}{rest}"));
     }
 }
@@ -248,11 +210,8 @@ fn entries(page: &mut Page, facts: &Facts, index: usize) {
             let entry = matrix[(row, column)] * peak;
             if entry.norm() > 0.0 {
                 let phase = entry.arg() / rad_s(1.0);
-                let size = if entry.im == 0.0 {
-                    short(entry.re, "Hz")
-                } else {
-                    format!("{} at {}", short(entry.norm(), "Hz"), degrees(phase))
-                };
+                let size =
+                    if entry.im == 0.0 { short(entry.re, "Hz") } else { format!("{} at {}", short(entry.norm(), "Hz"), degrees(phase)) };
                 found.push(format!("<{}|H|{}> {size}", names[row], names[column]));
             }
         }
@@ -276,11 +235,8 @@ pub fn pulses(page: &mut Page, facts: &Facts) {
         let (strength, times) = &facts.strengths[key];
         let (drive, envelope) = (&document.drives[key.0], &document.envelopes[key.1]);
         let direct = facts.is_direct(key.0) || facts.drives[key.0].reference.is_none();
-        let area = if direct {
-            "-".to_string()
-        } else {
-            format!("{} = {} deg", count_turns(strength.turns), digits(strength.turns * 360.0, 6))
-        };
+        let area =
+            if direct { "-".to_string() } else { format!("{} = {} deg", count_turns(strength.turns), digits(strength.turns * 360.0, 6)) };
         vec![
             format!("{} on {}", envelope.name, drive.name),
             format!("{times} x"),

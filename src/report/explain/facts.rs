@@ -96,9 +96,7 @@ impl<'a> Facts<'a> {
             let size_hz = point.peak_hz(document, pulse.drive, pulse.envelope)?;
             strengths.insert(key, (strength(point.curves[pulse.envelope].as_ref(), size_hz), 1));
         }
-        let drives: Vec<DriveFact> = (0..document.drives.len())
-            .map(|drive| drive_fact(document, point, drive, &strengths))
-            .collect();
+        let drives: Vec<DriveFact> = (0..document.drives.len()).map(|drive| drive_fact(document, point, drive, &strengths)).collect();
         let mut two = Vec::new();
         for (a, first) in drives.iter().enumerate() {
             for (b, second) in drives.iter().enumerate().skip(a + 1) {
@@ -117,11 +115,7 @@ impl<'a> Facts<'a> {
             two_photon: two,
             commutators: terms_that_commute(document, point),
             mixed: is_mixed(&point.problem.statics),
-            warnings: document
-                .warnings
-                .iter()
-                .map(|warning| one_line(&document.sources, warning))
-                .collect(),
+            warnings: document.warnings.iter().map(|warning| one_line(&document.sources, warning)).collect(),
         })
     }
 
@@ -154,10 +148,7 @@ fn drive_fact(document: &Document, point: &Point, drive: usize, strengths: &Stre
     let (written, coupling) = (&document.drives[drive], &point.couplings[drive]);
     let peaks = strengths.iter().filter(|((of, _), _)| *of == drive);
     DriveFact {
-        carrier_hz: written
-            .carrier
-            .as_ref()
-            .map(|carrier| point.values[carrier.centre.register as usize]),
+        carrier_hz: written.carrier.as_ref().map(|carrier| point.values[carrier.centre.register as usize]),
         peak_hz: peaks.map(|(_, (strength, _))| strength.peak_hz).reduce(f64::max),
         reference: coupling.reference,
         reference_turns: coupling.reference_turns,

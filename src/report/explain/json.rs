@@ -43,15 +43,9 @@ pub fn write(facts: &Facts, out: &mut dyn Write) -> io::Result<()> {
     });
     object.list("two_photon", two)?;
     let commutators = facts.commutators.iter();
-    object.list(
-        "commutators",
-        commutators.map(|(a, b, size)| json!({"name": format!("{a} and {b}"), "size": number(*size)})),
-    )?;
+    object.list("commutators", commutators.map(|(a, b, size)| json!({"name": format!("{a} and {b}"), "size": number(*size)})))?;
     let defaults = document.defaults.iter();
-    object.list(
-        "defaults",
-        defaults.map(|(name, value)| json!({"name": name, "value": as_written(value)})),
-    )?;
+    object.list("defaults", defaults.map(|(name, value)| json!({"name": name, "value": as_written(value)})))?;
     object.list("warnings", facts.warnings.iter().map(|text| json!(text)))?;
     object.end()
 }

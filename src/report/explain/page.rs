@@ -130,18 +130,8 @@ fn trim(text: &str) -> String {
 
 /// The prefix for a value: its factor and letter; times take none above one, lengths none above kilo.
 pub fn prefix(value: f64, unit: &str) -> (f64, &'static str) {
-    const PREFIXES: [(f64, &str); 10] = [
-        (1e12, "T"),
-        (1e9, "G"),
-        (1e6, "M"),
-        (1e3, "k"),
-        (1.0, ""),
-        (1e-3, "m"),
-        (1e-6, "u"),
-        (1e-9, "n"),
-        (1e-12, "p"),
-        (1e-15, "f"),
-    ];
+    const PREFIXES: [(f64, &str); 10] =
+        [(1e12, "T"), (1e9, "G"), (1e6, "M"), (1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, "u"), (1e-9, "n"), (1e-12, "p"), (1e-15, "f")];
     let largest = match unit {
         "s" => 1.0,
         "m" => 1e3,

@@ -28,20 +28,8 @@ pub fn text(facts: &Facts) -> String {
         page.line(2, &convention);
     }
     page.heading("defaults used");
-    let defaults: Vec<String> = facts
-        .document
-        .defaults
-        .iter()
-        .map(|(name, value)| format!("{name}: {value}"))
-        .collect();
-    page.line(
-        2,
-        &if defaults.is_empty() {
-            "none".to_string()
-        } else {
-            defaults.join("; ")
-        },
-    );
+    let defaults: Vec<String> = facts.document.defaults.iter().map(|(name, value)| format!("{name}: {value}")).collect();
+    page.line(2, &if defaults.is_empty() { "none".to_string() } else { defaults.join("; ") });
     page.heading("warnings");
     for warning in &facts.warnings {
         page.line(2, warning);
@@ -88,10 +76,7 @@ fn levels(page: &mut Page, facts: &Facts) {
     let names = &facts.document.system.names;
     page.heading(&format!("{}, energies over h", count(names.len(), "level")));
     let levels = names.iter().zip(&facts.point.energies_hz);
-    let rows: Vec<Vec<String>> = levels
-        .take(LEVELS)
-        .map(|(name, hz)| vec![name.clone(), quantity(*hz, "Hz", 15)])
-        .collect();
+    let rows: Vec<Vec<String>> = levels.take(LEVELS).map(|(name, hz)| vec![name.clone(), quantity(*hz, "Hz", 15)]).collect();
     page.table(2, &[], &rows);
     if names.len() > LEVELS {
         let last = facts.point.energies_hz.last().copied().unwrap_or(0.0);
@@ -117,11 +102,8 @@ fn gaps(page: &mut Page, facts: &Facts) {
     let mut shown: Vec<crate::model::gaps::Gap> = facts.gaps.clone();
     let folded = shown.len() > GAPS;
     if folded {
-        let coupled: std::collections::HashSet<(usize, usize)> = facts
-            .drives
-            .iter()
-            .flat_map(|drive| drive.pairs.iter().map(|(gap, _)| (gap.lower, gap.upper)))
-            .collect();
+        let coupled: std::collections::HashSet<(usize, usize)> =
+            facts.drives.iter().flat_map(|drive| drive.pairs.iter().map(|(gap, _)| (gap.lower, gap.upper))).collect();
         // stable: basis order among those that are coupled, then among the others
         shown.sort_by_key(|gap| !coupled.contains(&(gap.lower, gap.upper)));
         shown.truncate(GAPS);
@@ -138,16 +120,9 @@ fn gaps(page: &mut Page, facts: &Facts) {
         ]
     };
     let rows: Vec<Vec<String>> = shown.iter().map(row).collect();
-    page.table(
-        2,
-        &["line", "frequency", "energy", "temperature", "wavenumber", "wavelength"],
-        &rows,
-    );
+    page.table(2, &["line", "frequency", "energy", "temperature", "wavenumber", "wavelength"], &rows);
     if folded {
-        page.line(
-            2,
-            &format!("and {} more, coupled ones stand first; --json lists all", facts.gaps.len() - GAPS),
-        );
+        page.line(2, &format!("and {} more, coupled ones stand first; --json lists all", facts.gaps.len() - GAPS));
     }
 }
 
@@ -186,8 +161,5 @@ fn terms(page: &mut Page, facts: &Facts) {
     let rest = apart.len().saturating_sub(12);
     let rest = if rest > 0 { format!("; and {rest} more") } else { String::new() };
     page.line(2, &format!("{}{rest}", apart.into_iter().take(12).collect::<Vec<_>>().join("; ")));
-    page.line(
-        2,
-        "(norm of AB - BA over twice the product of the norms: 0 commute, 0.7071 at most)",
-    );
+    page.line(2, "(norm of AB - BA over twice the product of the norms: 0 commute, 0.7071 at most)");
 }

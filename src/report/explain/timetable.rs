@@ -49,17 +49,8 @@ fn unrolled(steps: &[Step]) -> (usize, usize) {
 pub fn timetable(page: &mut Page, facts: &Facts) {
     let timeline = &facts.point.timeline;
     let end_s = timeline.end.seconds();
-    page.heading(&format!(
-        "sequence: {}, {} long",
-        count(timeline.pulses.len(), "pulse"),
-        quantity(end_s, "s", 10)
-    ));
-    let mut walk = Walk {
-        facts,
-        rows: Vec::new(),
-        pulse: 0,
-        mark: 0,
-    };
+    page.heading(&format!("sequence: {}, {} long", count(timeline.pulses.len(), "pulse"), quantity(end_s, "s", 10)));
+    let mut walk = Walk { facts, rows: Vec::new(), pulse: 0, mark: 0 };
     walk.steps(&facts.document.sequence, 0);
     let left = timeline.pulses.len() - walk.pulse;
     // one unit for all times, that of the shortest pulse shown
@@ -81,9 +72,7 @@ pub fn timetable(page: &mut Page, facts: &Facts) {
     let widest = times.iter().map(|time| format!("{time:.decimals$}").len()).max().unwrap_or(0);
     let wide = widest.max(format!("centre/{unit}").len());
     let mut rows = Vec::new();
-    let mut heads = ["start", "centre", "end"]
-        .map(|head| format!("{:>wide$}", format!("{head}/{unit}")))
-        .to_vec();
+    let mut heads = ["start", "centre", "end"].map(|head| format!("{:>wide$}", format!("{head}/{unit}"))).to_vec();
     heads.extend(["drive", "envelope", "turn", "phase", "axis of turn"].map(String::from));
     let heads: Vec<&str> = heads.iter().map(String::as_str).collect();
     for row in walk.rows {
@@ -142,11 +131,8 @@ impl Walk<'_> {
                 Step::Block(inner) => self.steps(inner, depth),
                 Step::Repeat(times, inner) => self.repeat(*times, inner, depth),
                 Step::TurnFrame(drive, angle) => {
-                    let words = format!(
-                        "turn frame of {} by {} deg",
-                        drives[*drive].name,
-                        super::page::digits(value(angle.register) * 360.0, 6)
-                    );
+                    let words =
+                        format!("turn frame of {} by {} deg", drives[*drive].name, super::page::digits(value(angle.register) * 360.0, 6));
                     self.say(depth, words);
                 }
                 Step::SetCarrier(drive, carrier, change) => {
@@ -204,10 +190,7 @@ impl Walk<'_> {
             };
             words = format!("x {times}, a round every {}, the first one:", short(every, "s"));
             if !(pulses..times * pulses).all(same) {
-                words = format!(
-                    "x {times}, a round every {}, phases differ from round to round; the first one:",
-                    short(every, "s")
-                );
+                words = format!("x {times}, a round every {}, phases differ from round to round; the first one:", short(every, "s"));
             }
         }
         self.say(depth, words);

@@ -66,10 +66,7 @@ pub fn rows(facts: &Facts) -> String {
     let rows = count(facts.point.problem.moments.len(), "row");
     match &facts.document.record.rows {
         Rows::Unsaid => format!("{rows} in equal steps"),
-        Rows::Every(every) => format!(
-            "{rows}, every {} and at the end",
-            short(facts.point.values[every.register as usize], "s")
-        ),
+        Rows::Every(every) => format!("{rows}, every {} and at the end", short(facts.point.values[every.register as usize], "s")),
         Rows::At(_) => format!("{rows}, at the times written and at the end"),
     }
 }
@@ -117,11 +114,7 @@ fn gate_words(facts: &Facts, gate: &Gate, within: &str) -> String {
     let target = match &gate.target {
         Target::Equator(turn, about) => {
             let about = value(about);
-            format!(
-                "a turn by {} deg about {}",
-                digits(value(turn) * 360.0, 6),
-                axis(about - about.floor())
-            )
+            format!("a turn by {} deg about {}", digits(value(turn) * 360.0, 6), axis(about - about.floor()))
         }
         Target::AboutZ(turn, sign) => format!("a turn by {} deg about z", digits(value(turn) * sign * 360.0, 6)),
         Target::Rows(_) => "the matrix that is written".to_string(),
@@ -145,15 +138,8 @@ pub fn accuracy(document: &Document) -> String {
         MethodWord::Smooth => "smooth",
         MethodWord::Geometric => "geometric",
     };
-    let check = if document.accuracy.cross_check {
-        ", checked by a second method"
-    } else {
-        ""
-    };
-    format!(
-        "at most {} on every recorded number; method {method}{check}",
-        digits(document.accuracy.last, 6)
-    )
+    let check = if document.accuracy.cross_check { ", checked by a second method" } else { "" };
+    format!("at most {} on every recorded number; method {method}{check}", digits(document.accuracy.last, 6))
 }
 
 /// The conventions that this config leans on.
@@ -172,12 +158,7 @@ pub fn conventions(facts: &Facts) -> Vec<String> {
              Frame turns are included in both."
                 .to_string(),
         );
-        for (drive, fact) in document
-            .drives
-            .iter()
-            .zip(&facts.drives)
-            .filter(|(_, fact)| fact.carrier_hz.is_some())
-        {
+        for (drive, fact) in document.drives.iter().zip(&facts.drives).filter(|(_, fact)| fact.carrier_hz.is_some()) {
             if let Some([lower, upper]) = fact.reference.filter(|_| fact.reference_turns.abs() > 1e-12) {
                 let names = &document.system.names;
                 said.push(format!(
