@@ -2,6 +2,7 @@
 
 mod check;
 mod compare;
+mod explain;
 mod plot;
 mod run;
 mod selftest;
@@ -41,6 +42,8 @@ struct Words {
 enum Verb {
     /// Read and judge a config without running it
     Check(check::Words),
+    /// Say in words and numbers what a config means, without running it
+    Explain(explain::Words),
     /// Evolve, record, and write numbers and plots
     Run(run::Words),
     /// Run the file and its variants, and show how far apart they are
@@ -73,6 +76,7 @@ pub fn main() -> ExitCode {
     };
     let status = match words.verb {
         Verb::Check(words) => check::check(&words),
+        Verb::Explain(words) => explain::explain(&words),
         Verb::Run(words) => run::run(&words),
         Verb::Compare(words) => compare::run(&words),
         Verb::Plot(words) => plot::plot(&words),

@@ -1,6 +1,7 @@
 //! Numbers into files, plots and text for people. Only this room writes result files.
 pub mod compare_json;
 pub mod compare_text;
+pub mod explain;
 pub mod figures;
 pub mod fingerprint;
 pub mod folder;
