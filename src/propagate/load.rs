@@ -164,6 +164,6 @@ impl Load {
     /// What rounding leaves uncertain in any recorded number: that of the entries of H over the whole time, and that of `sums`
     /// products one after the other, which all err in the same sense where the factors are alike.
     pub(super) fn floor(&self, sums: u64) -> f64 {
-        f64::EPSILON * (4.0 + 0.7 * self.entries_rad + 0.25 * sums as f64)
+        f64::EPSILON * (4.0 + 1.05 * self.entries_rad + 0.25 * sums as f64)
     }
 }
