@@ -1,7 +1,9 @@
 //! Words to library calls to an exit status; one file per verb. Only this room prints.
 
 mod check;
+mod plot;
 mod run;
+mod selftest;
 
 use std::io::Write;
 use std::path::PathBuf;
@@ -40,6 +42,10 @@ enum Verb {
     Check(check::Words),
     /// Evolve, record, and write numbers and plots
     Run(run::Words),
+    /// Draw the plots of a result folder again
+    Plot(plot::Words),
+    /// Check the program on this machine against closed forms
+    Selftest(selftest::Words),
 }
 
 /// What most verbs take.
@@ -69,6 +75,8 @@ pub fn main() -> ExitCode {
     let status = match words.verb {
         Verb::Check(words) => check::check(&words),
         Verb::Run(words) => run::run(&words),
+        Verb::Plot(words) => plot::plot(&words),
+        Verb::Selftest(words) => selftest::selftest(&words),
     };
     ExitCode::from(status as u8)
 }

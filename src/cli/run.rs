@@ -79,9 +79,7 @@ fn write(staging: Staging, plan: &Plan, point: &Point, outcome: &Outcome) -> io:
     for (name, figure) in figures::of_run(document, point, outcome) {
         match figure {
             Ok(drawn) => {
-                std::fs::write(side.join(format!("{name}.png")), &drawn.png)?;
-                std::fs::write(side.join(format!("{name}.svg")), &drawn.svg)?;
-                names.push(format!("{name}.png"));
+                names.extend(figures::save(&side, name, &drawn)?.into_iter().take(1));
             }
             Err(reason) => complain(&format!("warning: the plot {name} was not drawn: {reason}.\n")),
         }

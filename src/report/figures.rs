@@ -51,6 +51,17 @@ pub fn of_columns(document: &Document, point: &Point, columns: &[Column], times_
     drawn
 }
 
+/// Writes a plot in both forms, each to the side first and then renamed; gives the file names.
+pub fn save(folder: &std::path::Path, name: &str, drawn: &Drawn) -> std::io::Result<[String; 2]> {
+    let names = [format!("{name}.png"), format!("{name}.svg")];
+    for (name, bytes) in names.iter().zip([drawn.png.as_slice(), drawn.svg.as_bytes()]) {
+        let side = folder.join(format!(".{name}.unfinished"));
+        std::fs::write(&side, bytes)?;
+        std::fs::rename(&side, folder.join(name))?;
+    }
+    Ok(names)
+}
+
 fn marks(point: &Point) -> Vec<(String, f64)> {
     point.timeline.marks.iter().map(|(name, at)| (name.clone(), at.seconds())).collect()
 }
