@@ -1,6 +1,7 @@
 //! Words to library calls to an exit status; one file per verb. Only this room prints.
 
 mod check;
+mod new;
 mod plot;
 mod run;
 mod selftest;
@@ -38,6 +39,8 @@ struct Words {
 
 #[derive(Subcommand)]
 enum Verb {
+    /// Write a worked config to begin with; without a kind, list the kinds
+    New(new::Words),
     /// Read and judge a config without running it
     Check(check::Words),
     /// Evolve, record, and write numbers and plots
@@ -73,6 +76,7 @@ pub fn main() -> ExitCode {
         }
     };
     let status = match words.verb {
+        Verb::New(words) => new::new(&words),
         Verb::Check(words) => check::check(&words),
         Verb::Run(words) => run::run(&words),
         Verb::Plot(words) => plot::plot(&words),

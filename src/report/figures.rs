@@ -8,6 +8,7 @@ use crate::measure::Column;
 use crate::outcome::Outcome;
 use crate::plan::Point;
 use crate::report::fingerprint::fingerprint;
+use crate::report::heading::heading;
 use crate::report::plots::{
     envelopes, spectrum, traces, Drawn, EnvelopeCurve, EnvelopesFigure, Panel, PlotError, PulseBar, PulseSpectrum, Series, SpectrumFigure,
     TracesFigure,
@@ -106,7 +107,7 @@ fn traces_figure(document: &Document, point: &Point, columns: &[Column], times_s
         end_s: pulse.start.after(pulse.length_s).seconds(),
     };
     TracesFigure {
-        title: document.title.clone(),
+        title: heading(document),
         fingerprint: fingerprint(document),
         time_s: times_s.to_vec(),
         panels: panels.into_iter().map(|(_, panel)| panel).collect(),
@@ -161,7 +162,7 @@ fn envelopes_figure(document: &Document, point: &Point) -> EnvelopesFigure {
         }
     };
     EnvelopesFigure {
-        title: document.title.clone(),
+        title: heading(document),
         fingerprint: fingerprint(document),
         pulses: point.timeline.pulses.iter().take(MOST_PULSES / 10).map(curve).collect(),
         marks: marks(point),
@@ -205,8 +206,9 @@ fn spectrum_figure(document: &Document, point: &Point) -> SpectrumFigure {
             .collect()
     });
     SpectrumFigure {
-        title: document.title.clone(),
+        title: heading(document),
         fingerprint: fingerprint(document),
+        from_zero: carrier_hz.is_none(),
         pulses,
         lines,
     }
@@ -230,8 +232,9 @@ fn pulse_spectrum(document: &Document, point: &Point, pulse: &crate::drive::time
             .map(|k| chirp.offset_hz(pulse.length_s * f64::from(k) / 64.0).abs())
             .fold(0.0, f64::max)
     });
-    // wide enough for the main lobe of the shortest feature and the whole chirp
-    let range = 1.5 * reach + 12.0 / pulse.length_s;
+    // wide enough for the main lobe of the shortest feature and the whole chirp; not a whole number over the length, so that the
+    // grid does not fall on the zeros of a square pulse, which dip without end
+    let range = 1.5 * reach + 12.47 / pulse.length_s;
     let samples = 2048usize.max((8.0 * range * pulse.length_s) as usize).min(16_384);
     let step = pulse.length_s / samples as f64;
     // X - i Y turns with exp(+2 pi i f t)

@@ -3,6 +3,7 @@
 use crate::config::document::Document;
 use crate::config::messages::{short, short_with_unit};
 use crate::outcome::Outcome;
+use crate::report::heading::heading;
 
 /// Final numbers shown; the rest is in the files.
 const SHOWN: usize = 16;
@@ -49,9 +50,14 @@ pub fn not_reached(document: &Document, outcome: &Outcome) -> String {
     )
 }
 
+/// A component of a unit vector, with three decimals and no minus before zero.
+fn component(value: f64) -> String {
+    format!("{:.3}", (value * 1e3).round() / 1e3 + 0.0)
+}
+
 /// The screen.
 pub fn summary(document: &Document, outcome: &Outcome, place: Option<&str>) -> String {
-    let mut text = format!("{}\n", document.title);
+    let mut text = format!("{}\n", heading(document));
     let end = outcome.times_s.last().copied().unwrap_or(0.0);
     text.push_str(&format!(
         "at the end of the sequence, {}, laboratory frame, nothing dropped:\n",
@@ -75,14 +81,17 @@ pub fn summary(document: &Document, outcome: &Outcome, place: Option<&str>) -> S
         }
         if let Some((turn, [x, y, z])) = gate.residual {
             text.push_str(&format!(
-                "  residual turn: {} deg about ({x:.3}, {y:.3}, {z:.3})\n",
-                short(turn * 360.0)
+                "  residual turn: {} deg about ({}, {}, {})\n",
+                short(turn * 360.0),
+                component(x),
+                component(y),
+                component(z)
             ));
         }
     }
-    text.push_str(&format!("method: {}: {}\n", outcome.method.word(), outcome.reason));
+    text.push_str(&format!("method {}: {}\n", outcome.method.word(), outcome.reason));
     text.push_str(&format!(
-        "error figure {:.1e} ({} asked), measured as the change from {} to {}\n",
+        "error figure {:.1e} ({} asked), measured by two runs: {}; {}\n",
         outcome.error_figure,
         short(document.accuracy.last),
         outcome.resolutions[0],

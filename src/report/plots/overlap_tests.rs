@@ -268,6 +268,7 @@ fn exact_short_pulses_beside_long_waits_can_be_seen() {
     let figure = EnvelopesFigure {
         title: LONG.into(),
         fingerprint: "f00".into(),
+        from_zero: false,
         pulses,
         marks,
         end_s: 7.0,
@@ -313,6 +314,7 @@ fn exact_spectrum_names_its_lines_and_draws_zeros_at_the_edge() {
     let texts = checked(spectrum(&SpectrumFigure {
         title: "Spectra".into(),
         fingerprint: "f00".into(),
+        from_zero: false,
         pulses,
         lines,
     }));
