@@ -64,12 +64,7 @@ impl Known {
             let found = value(&outcome, answer.name).ok_or_else(|| format!("{} is not recorded", answer.name))?;
             deviation = deviation.max((found - answer.value).abs());
         }
-        Ok(Verdict {
-            deviation,
-            error_figure: outcome.error_figure,
-            method: outcome.method.word(),
-            seconds,
-        })
+        Ok(Verdict { deviation, error_figure: outcome.error_figure, method: outcome.method.word(), seconds })
     }
 }
 
@@ -150,12 +145,7 @@ mod tests {
     #[test]
     fn exact_known_problems_by_every_method() {
         for known in KNOWN {
-            for (method, accuracy) in [
-                ("automatic", 1e-10),
-                ("smooth", 1e-10),
-                ("geometric", 1e-10),
-                ("constant steps", 1e-7),
-            ] {
+            for (method, accuracy) in [("automatic", 1e-10), ("smooth", 1e-10), ("geometric", 1e-10), ("constant steps", 1e-7)] {
                 let verdict = known.run(method, accuracy).unwrap();
                 assert!(
                     verdict.good(),
@@ -164,12 +154,7 @@ mod tests {
                     verdict.deviation,
                     verdict.error_figure
                 );
-                assert!(
-                    verdict.error_figure <= accuracy,
-                    "{} by {method}: error figure {:.2e}",
-                    known.name,
-                    verdict.error_figure
-                );
+                assert!(verdict.error_figure <= accuracy, "{} by {method}: error figure {:.2e}", known.name, verdict.error_figure);
             }
         }
     }

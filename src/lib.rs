@@ -4,6 +4,7 @@
 pub mod cli;
 pub mod config;
 pub mod drive;
+pub mod frame;
 pub mod known;
 pub mod measure;
 pub mod model;

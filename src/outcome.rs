@@ -74,7 +74,7 @@ pub struct Outcome {
 /// Computes a point.
 pub fn compute(document: &Document, point: &Point) -> Outcome {
     let clock = Clock::now();
-    let problem = &point.problem;
+    let problem = point.problem();
     let observables = observables(document, &point.values, &point.energies_hz, problem);
     let columns = observables.columns();
     let scales: Vec<f64> = columns.iter().map(|column| column.scale).collect();
@@ -88,9 +88,7 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
         },
         cross_check: document.accuracy.cross_check,
     };
-    let solved = solve(problem, &observables.demand, &asked, || {
-        TraceRecorder::new(&observables, problem, &scales)
-    });
+    let solved = solve(problem, &observables.demand, &asked, || TraceRecorder::new(&observables, problem, &scales));
 
     let (recorded, finer) = (&solved.recorded, &solved.finer);
     let end = problem.moments.len() - 1;
@@ -100,13 +98,7 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
         .map(|(k, column)| {
             let (value, finer) = (recorded.value(end, k), finer.value(end, k));
             let error = figure(value / column.scale, finer / column.scale, solved.floor) * column.scale;
-            Final {
-                name: column.name.clone(),
-                unit: column.unit,
-                value,
-                finer,
-                error,
-            }
+            Final { name: column.name.clone(), unit: column.unit, value, finer, error }
         })
         .collect();
     let (last, finer_last) = (recorded.last(), finer.last());
@@ -117,39 +109,16 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
         if name.starts_with("propagator_") {
             whole_error = whole_error.max(error);
         } else {
-            finals.push(Final {
-                name,
-                unit: "1",
-                value: *value,
-                finer: *finer,
-                error,
-            });
+            finals.push(Final { name, unit: "1", value: *value, finer: *finer, error });
         }
     }
-    let gate = observables
-        .gate
-        .as_ref()
-        .zip(recorded.propagator.as_ref())
-        .map(|(judge, propagator)| judge.judge(propagator));
-    let propagator = recorded
-        .propagator
-        .clone()
-        .filter(|_| observables.propagator)
-        .map(|propagator| (propagator, whole_error));
-    let rows = recorded.numbers()[..(end + 1) * columns.len()]
-        .iter()
-        .enumerate()
-        .map(|(k, number)| number * scales[k % scales.len()])
-        .collect();
+    let gate = observables.gate.as_ref().zip(recorded.propagator.as_ref()).map(|(judge, propagator)| judge.judge(propagator));
+    let propagator = recorded.propagator.clone().filter(|_| observables.propagator).map(|propagator| (propagator, whole_error));
+    let rows =
+        recorded.numbers()[..(end + 1) * columns.len()].iter().enumerate().map(|(k, number)| number * scales[k % scales.len()]).collect();
     let cross_check = solved.cross_check.as_ref().map(|check| match check {
-        CrossCheck::Done { method, difference, .. } => Crossing {
-            method: method.clone(),
-            difference: Ok(*difference),
-        },
-        CrossCheck::Skipped { method, reason } => Crossing {
-            method: method.clone(),
-            difference: Err(reason.clone()),
-        },
+        CrossCheck::Done { method, difference, .. } => Crossing { method: method.clone(), difference: Ok(*difference) },
+        CrossCheck::Skipped { method, reason } => Crossing { method: method.clone(), difference: Err(reason.clone()) },
     });
     Outcome {
         times_s: problem.moments.iter().map(|moment| moment.time_s).collect(),

@@ -33,14 +33,7 @@ fn run_of(kind: &str) -> serde_json::Value {
     assert_eq!(ran.status.code(), Some(0), "{kind}: {}{}", text(&ran.stdout), text(&ran.stderr));
     assert_eq!(text(&ran.stderr), "", "{kind} runs without a warning");
     let results = folder.path().join("outputs").join(kind);
-    for file in [
-        "traces.csv",
-        "traces.png",
-        "traces.svg",
-        "envelopes.png",
-        "spectrum.png",
-        "config.yaml",
-    ] {
+    for file in ["traces.csv", "traces.png", "traces.svg", "envelopes.png", "spectrum.png", "config.yaml"] {
         assert!(results.join(file).is_file(), "{kind} leaves {file}");
     }
     let bytes = fs::read(results.join("result.json")).expect("a run leaves result.json");
@@ -48,18 +41,12 @@ fn run_of(kind: &str) -> serde_json::Value {
 }
 
 fn number(result: &serde_json::Value, path: &str) -> f64 {
-    result
-        .pointer(path)
-        .and_then(serde_json::Value::as_f64)
-        .unwrap_or_else(|| panic!("{path} is a number of the result"))
+    result.pointer(path).and_then(serde_json::Value::as_f64).unwrap_or_else(|| panic!("{path} is a number of the result"))
 }
 
 /// What `accuracy: final` says in a config, 1e-8 where it says nothing.
 fn accuracy(text: &str) -> f64 {
-    let written = text
-        .lines()
-        .find_map(|line| line.trim().strip_prefix("final:"))
-        .and_then(|rest| rest.split_whitespace().next());
+    let written = text.lines().find_map(|line| line.trim().strip_prefix("final:")).and_then(|rest| rest.split_whitespace().next());
     written.map_or(1e-8, |word| word.parse().expect("the accuracy of a starter is a plain number"))
 }
 
@@ -138,10 +125,7 @@ fn cli_new_leaves_no_half_of_a_starter() {
     fs::write(folder.path().join("waveform.yaml"), "mine").expect("a temporary folder can be written");
     assert_eq!(nutate(folder.path(), &["new", "waveform"]).status.code(), Some(2));
     assert!(!folder.path().join("waveform.csv").exists());
-    assert_eq!(
-        fs::read_to_string(folder.path().join("waveform.yaml")).ok().as_deref(),
-        Some("mine")
-    );
+    assert_eq!(fs::read_to_string(folder.path().join("waveform.yaml")).ok().as_deref(), Some("mine"));
 }
 
 #[test]

@@ -83,16 +83,10 @@ fn program_lines(text: &str) -> Vec<(usize, &str)> {
     let lines: Vec<&str> = text.lines().collect();
     let tests = (0..lines.len()).find(|k| {
         lines[*k].trim() == "#[cfg(test)]"
-            && lines
-                .get(k + 1)
-                .is_some_and(|next| next.starts_with("mod ") && next.trim_end().ends_with('{'))
+            && lines.get(k + 1).is_some_and(|next| next.starts_with("mod ") && next.trim_end().ends_with('{'))
     });
     let end = tests.unwrap_or(lines.len());
-    lines[..end]
-        .iter()
-        .enumerate()
-        .map(|(k, line)| (k + 1, line.split("//").next().unwrap_or("")))
-        .collect()
+    lines[..end].iter().enumerate().map(|(k, line)| (k + 1, line.split("//").next().unwrap_or(""))).collect()
 }
 
 /// The rooms that a file names by `crate::`, with the line.
@@ -157,16 +151,7 @@ fn prop_two_pi_lives_in_units() {
 #[test]
 fn prop_constants_of_nature_live_in_units() {
     // digits of h, e, k, c, the masses and their quotients, however they are grouped
-    let digits = [
-        "6626070",
-        "1602176",
-        "1380649",
-        "299792458",
-        "9109383",
-        "1660539",
-        "2083661",
-        "2417989",
-    ];
+    let digits = ["6626070", "1602176", "1380649", "299792458", "9109383", "1660539", "2083661", "2417989"];
     let mut wrong = Vec::new();
     for (path, text) in sources() {
         let file = below_src(&path);
@@ -188,10 +173,7 @@ fn prop_no_unsafe() {
     let mut wrong = Vec::new();
     for (path, text) in sources() {
         for (line, code) in program_lines(&text) {
-            if code
-                .split(|c: char| !(c.is_alphanumeric() || c == '_'))
-                .any(|word| word == "unsafe")
-            {
+            if code.split(|c: char| !(c.is_alphanumeric() || c == '_')).any(|word| word == "unsafe") {
                 wrong.push(format!("src/{}, line {line}: {}", below_src(&path), code.trim()));
             }
         }
@@ -207,9 +189,7 @@ fn prop_no_file_for_odds_and_ends() {
         .iter()
         .map(|(path, _)| below_src(path))
         .filter(|file| {
-            file.trim_end_matches(".rs")
-                .split('/')
-                .any(|part| matches!(part, "util" | "utils" | "helper" | "helpers" | "common" | "misc"))
+            file.trim_end_matches(".rs").split('/').any(|part| matches!(part, "util" | "utils" | "helper" | "helpers" | "common" | "misc"))
         })
         .collect();
     none(&wrong);
@@ -255,11 +235,7 @@ fn prop_every_worked_config_is_a_starter() {
     for starter in STARTERS {
         let on_disk = fs::read_to_string(folder.join(format!("{}.yaml", starter.kind))).expect("it is in the list above");
         assert_eq!(on_disk, starter.text, "{}", starter.kind);
-        assert!(
-            on_disk.contains("A scenario of our own; every number in it"),
-            "{} says whose numbers it holds",
-            starter.kind
-        );
+        assert!(on_disk.contains("A scenario of our own; every number in it"), "{} says whose numbers it holds", starter.kind);
     }
 }
 

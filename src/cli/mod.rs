@@ -68,11 +68,7 @@ pub fn main() -> ExitCode {
         Err(error) => {
             // help and version are no mistakes; anything else is refused before work
             let _ = error.print();
-            return ExitCode::from(if error.use_stderr() {
-                Status::Refused as u8
-            } else {
-                Status::Good as u8
-            });
+            return ExitCode::from(if error.use_stderr() { Status::Refused as u8 } else { Status::Good as u8 });
         }
     };
     let status = match words.verb {

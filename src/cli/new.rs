@@ -49,10 +49,7 @@ pub(super) fn new(words: &Words) -> Status {
 /// One line for each kind.
 fn list() -> String {
     let wide = STARTERS.iter().map(|starter| starter.kind.len()).max().unwrap_or(0);
-    STARTERS
-        .iter()
-        .map(|starter| format!("  {:<wide$}  {}\n", starter.kind, starter.about))
-        .collect()
+    STARTERS.iter().map(|starter| format!("  {:<wide$}  {}\n", starter.kind, starter.about)).collect()
 }
 
 /// Writes all files or none; one that is there already is left as it is.
@@ -73,9 +70,7 @@ fn write_all(files: &[(PathBuf, &str)]) -> Result<(), Status> {
                 Status::Refused
             }
             ErrorKind::NotFound => {
-                complain(&format!(
-                    "error: the folder of {path} does not exist.\n  Write: a file in a folder that does\n"
-                ));
+                complain(&format!("error: the folder of {path} does not exist.\n  Write: a file in a folder that does\n"));
                 Status::Refused
             }
             _ => {
@@ -91,14 +86,6 @@ fn write_all(files: &[(PathBuf, &str)]) -> Result<(), Status> {
 fn written(starter: &Starter, file: &Path, files: &[(PathBuf, &str)]) -> String {
     let names: Vec<String> = files.iter().rev().map(|(path, _)| path.display().to_string()).collect();
     let name = file.display().to_string();
-    let quoted = if name.contains(char::is_whitespace) {
-        format!("'{name}'")
-    } else {
-        name
-    };
-    format!(
-        "wrote {}: {}\nread it, then type: nutate run {quoted}\n",
-        names.join(" and "),
-        starter.about
-    )
+    let quoted = if name.contains(char::is_whitespace) { format!("'{name}'") } else { name };
+    format!("wrote {}: {}\nread it, then type: nutate run {quoted}\n", names.join(" and "), starter.about)
 }

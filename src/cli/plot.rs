@@ -30,9 +30,7 @@ pub(super) fn plot(words: &Words) -> Status {
 fn try_plot(words: &Words) -> Result<Status, Status> {
     let shown = words.folder.display();
     let no_result = |reason: String| {
-        complain(&format!(
-            "error: {shown} is no folder of a result: {reason}.\n  Write: the folder that nutate run has written\n"
-        ));
+        complain(&format!("error: {shown} is no folder of a result: {reason}.\n  Write: the folder that nutate run has written\n"));
         Status::Refused
     };
     let bytes = std::fs::read(words.folder.join("result.json")).map_err(|_| no_result("it has no result.json".to_string()))?;
@@ -40,11 +38,7 @@ fn try_plot(words: &Words) -> Result<Status, Status> {
     let set: Vec<(String, String)> = json
         .pointer("/config/set")
         .and_then(|set| set.as_object())
-        .map(|set| {
-            set.iter()
-                .filter_map(|(name, value)| Some((name.clone(), value.as_str()?.to_string())))
-                .collect()
-        })
+        .map(|set| set.iter().filter_map(|(name, value)| Some((name.clone(), value.as_str()?.to_string()))).collect())
         .unwrap_or_default();
     let document = read_archived(&words.folder, &set).map_err(|refusal| {
         refuse(&refusal);
@@ -53,12 +47,10 @@ fn try_plot(words: &Words) -> Result<Status, Status> {
     let plan = Plan::new(document);
     let point = point(&plan)?;
     let document = plan.document();
-    let columns = observables(document, &point.values, &point.energies_hz, &point.problem).columns();
+    let columns = observables(document, &point.values, &point.energies_hz, point.problem()).columns();
     let (headings, mut values) = traces_csv::read(&words.folder.join("traces.csv"))
         .map_err(|reason| no_result(format!("its traces.csv cannot be read ({reason})")))?;
-    let wanted: Vec<&str> = std::iter::once("time_s")
-        .chain(columns.iter().map(|column| column.name.as_str()))
-        .collect();
+    let wanted: Vec<&str> = std::iter::once("time_s").chain(columns.iter().map(|column| column.name.as_str())).collect();
     if headings != wanted {
         return Err(no_result("traces.csv has other columns than its config records".to_string()));
     }

@@ -50,10 +50,7 @@ fn try_run(words: &Words) -> Result<Status, Status> {
     complain_of(document, &document.warnings);
     let outcome = compute(document, &point);
     let written = write(staging, &plan, &point, &outcome).map_err(|error| {
-        complain(&format!(
-            "error: the results could not be written to {}: {error}.\n",
-            folder.display()
-        ));
+        complain(&format!("error: the results could not be written to {}: {error}.\n", folder.display()));
         Status::Machine
     })?;
     if words.json {

@@ -98,33 +98,14 @@ pub fn read_text(path: &Path, sources: &mut Sources) -> Result<u16, Mistake> {
     let bytes = match std::fs::metadata(path) {
         Ok(data) if data.is_dir() => return refuse(sources, Vec::new(), String::new(), nowhere, Fault::IsFolder { path: shown }),
         Ok(data) if data.len() > LONGEST => {
-            return refuse(
-                sources,
-                Vec::new(),
-                String::new(),
-                nowhere,
-                Fault::TooLong {
-                    path: shown,
-                    bytes: data.len(),
-                    limit: LONGEST,
-                },
-            )
+            return refuse(sources, Vec::new(), String::new(), nowhere, Fault::TooLong { path: shown, bytes: data.len(), limit: LONGEST })
         }
         _ => match std::fs::read(path) {
             Ok(bytes) => bytes,
             Err(reason) => {
-                let reason = if reason.kind() == std::io::ErrorKind::NotFound {
-                    "no such file exists".to_string()
-                } else {
-                    reason.to_string()
-                };
-                return refuse(
-                    sources,
-                    Vec::new(),
-                    String::new(),
-                    nowhere,
-                    Fault::CannotRead { path: shown, reason },
-                );
+                let reason =
+                    if reason.kind() == std::io::ErrorKind::NotFound { "no such file exists".to_string() } else { reason.to_string() };
+                return refuse(sources, Vec::new(), String::new(), nowhere, Fault::CannotRead { path: shown, reason });
             }
         },
     };
@@ -143,26 +124,13 @@ fn text_of(bytes: &[u8]) -> Result<String, (Place, Fault)> {
     let at = |before: &str| {
         let line = lines(before).count().max(1);
         let column = lines(before).last().map_or(0, |last| last.chars().count()) + 1;
-        Place {
-            file: 0,
-            line: line as u32,
-            column: column as u32,
-            length: 1,
-        }
+        Place { file: 0, line: line as u32, column: column as u32, length: 1 }
     };
     let text = std::str::from_utf8(bytes).map_err(|bad| {
         let good = std::str::from_utf8(&bytes[..bad.valid_up_to()]).unwrap_or_default();
-        (
-            at(good),
-            Fault::NotUtf8 {
-                byte: bytes[bad.valid_up_to()],
-            },
-        )
+        (at(good), Fault::NotUtf8 { byte: bytes[bad.valid_up_to()] })
     })?;
-    match text
-        .char_indices()
-        .find(|(_, c)| (c.is_control() && !matches!(c, '\n' | '\r' | '\t' | '\u{85}')) || *c == '\u{feff}')
-    {
+    match text.char_indices().find(|(_, c)| (c.is_control() && !matches!(c, '\n' | '\r' | '\t' | '\u{85}')) || *c == '\u{feff}') {
         Some((index, c)) => Err((at(&text[..index]), Fault::Control { code: c as u32 })),
         None => Ok(text.to_string()),
     }
@@ -174,13 +142,7 @@ pub fn parse(sources: &Sources, file: u16, mistakes: &mut Vec<Mistake>) -> Resul
     if let Some(place) = first_tab(text, file) {
         return Err(Mistake::error(place, Fault::Tab));
     }
-    Builder {
-        sources,
-        file,
-        parser: Parser::new_from_str(text),
-        mistakes,
-    }
-    .document()
+    Builder { sources, file, parser: Parser::new_from_str(text), mistakes }.document()
 }
 
 /// The first tab that is neither in a comment nor in quotes.
@@ -191,14 +153,7 @@ fn first_tab(text: &str, file: u16) -> Option<Place> {
         for (column, c) in line.chars().enumerate() {
             match (quote, c) {
                 (None, '#') if before.is_whitespace() => break,
-                (None, '\t') => {
-                    return Some(Place {
-                        file,
-                        line: number as u32 + 1,
-                        column: column as u32 + 1,
-                        length: 1,
-                    })
-                }
+                (None, '\t') => return Some(Place { file, line: number as u32 + 1, column: column as u32 + 1, length: 1 }),
                 (None, '"' | '\'') if matches!(before, ' ' | '[' | '{' | ',' | '(') => quote = Some(c),
                 (Some(open), c) if c == open => quote = None,
                 _ => {}
@@ -219,17 +174,8 @@ struct Builder<'a> {
 impl Builder<'_> {
     fn place(&self, span: Span) -> Place {
         let one_line = span.start.line() == span.end.line();
-        let length = if one_line {
-            span.end.col().saturating_sub(span.start.col()).max(1)
-        } else {
-            1
-        };
-        Place {
-            file: self.file,
-            line: span.start.line() as u32,
-            column: span.start.col() as u32 + 1,
-            length: length as u32,
-        }
+        let length = if one_line { span.end.col().saturating_sub(span.start.col()).max(1) } else { 1 };
+        Place { file: self.file, line: span.start.line() as u32, column: span.start.col() as u32 + 1, length: length as u32 }
     }
 
     fn next(&mut self) -> Result<(Event<'static>, Span), Mistake> {
@@ -237,12 +183,7 @@ impl Builder<'_> {
             Some(Ok((event, span))) => Ok((owned(event), span)),
             Some(Err(error)) => {
                 let mark = error.marker();
-                let place = Place {
-                    file: self.file,
-                    line: mark.line() as u32,
-                    column: mark.col() as u32 + 1,
-                    length: 1,
-                };
+                let place = Place { file: self.file, line: mark.line() as u32, column: mark.col() as u32 + 1, length: 1 };
                 Err(Mistake::error(place, self.translate(error.info(), place)))
             }
             None => Ok((Event::StreamEnd, Span::default())),
@@ -254,9 +195,7 @@ impl Builder<'_> {
         let lower = info.to_lowercase();
         let line = self.sources.line(place.file, place.line).unwrap_or_default();
         if lower.contains("anchor") || lower.contains("alias") {
-            return Fault::Alias {
-                text: word_at(line, place.column),
-            };
+            return Fault::Alias { text: word_at(line, place.column) };
         }
         let reason = if lower.contains("quote") {
             "a quoted text is not closed (or its next line is indented less)".to_string()
@@ -299,23 +238,12 @@ impl Builder<'_> {
         let before: String = line.chars().take(place.column as usize - 1 + place.length as usize).collect();
         if tagged {
             let (column, text) = last_word(&before, '!').unwrap_or((place.column as usize, "!".to_string()));
-            return Err(Mistake::error(
-                Place {
-                    column: column as u32,
-                    length: text.chars().count() as u32,
-                    ..place
-                },
-                Fault::Tag { text },
-            ));
+            return Err(Mistake::error(Place { column: column as u32, length: text.chars().count() as u32, ..place }, Fault::Tag { text }));
         }
         if anchor > 0 {
             let (column, text) = last_word(&before, '&').unwrap_or((place.column as usize, "&".to_string()));
             return Err(Mistake::error(
-                Place {
-                    column: column as u32,
-                    length: text.chars().count() as u32,
-                    ..place
-                },
+                Place { column: column as u32, length: text.chars().count() as u32, ..place },
                 Fault::Anchor { text },
             ));
         }
@@ -333,28 +261,12 @@ impl Builder<'_> {
                 let quoted = style != ScalarStyle::Plain;
                 let raw = self.sources.line(self.file, place.line).unwrap_or_default();
                 let inside: String = raw.chars().skip(place.column as usize - 1).take(place.length as usize).collect();
-                let exact = if quoted {
-                    inside.get(1..inside.len().saturating_sub(1)) == Some(&*text)
-                } else {
-                    inside == *text
-                };
-                Ok(Node {
-                    place,
-                    kind: Kind::Scalar {
-                        text: text.into_owned(),
-                        quoted,
-                        exact,
-                    },
-                })
+                let exact = if quoted { inside.get(1..inside.len().saturating_sub(1)) == Some(&*text) } else { inside == *text };
+                Ok(Node { place, kind: Kind::Scalar { text: text.into_owned(), quoted, exact } })
             }
             Event::Alias(_) => {
                 let line = self.sources.line(self.file, place.line).unwrap_or_default();
-                Err(Mistake::error(
-                    place,
-                    Fault::Alias {
-                        text: word_at(line, place.column),
-                    },
-                ))
+                Err(Mistake::error(place, Fault::Alias { text: word_at(line, place.column) }))
             }
             Event::SequenceStart(anchor, tag) => {
                 self.refuse_tricks(anchor, tag.is_some(), span)?;
@@ -362,10 +274,7 @@ impl Builder<'_> {
                 loop {
                     let (event, end) = self.next()?;
                     if event == Event::SequenceEnd {
-                        return Ok(Node {
-                            place: self.spanning(span, end),
-                            kind: Kind::List(items),
-                        });
+                        return Ok(Node { place: self.spanning(span, end), kind: Kind::List(items) });
                     }
                     items.push(self.node(event, end, depth + 1)?);
                 }
@@ -377,10 +286,7 @@ impl Builder<'_> {
                 loop {
                     let (event, at) = self.next()?;
                     if event == Event::MappingEnd {
-                        return Ok(Node {
-                            place: self.spanning(span, at),
-                            kind: Kind::Map(entries),
-                        });
+                        return Ok(Node { place: self.spanning(span, at), kind: Kind::Map(entries) });
                     }
                     let key_node = self.node(event, at, depth + 1)?;
                     let (event, at) = self.next()?;
@@ -390,9 +296,7 @@ impl Builder<'_> {
                     };
                     let place = key_node.place;
                     match first_lines.get(&key) {
-                        Some(first) => self
-                            .mistakes
-                            .push(Mistake::error(place, Fault::DuplicateKey { key, first: *first })),
+                        Some(first) => self.mistakes.push(Mistake::error(place, Fault::DuplicateKey { key, first: *first })),
                         None => {
                             first_lines.insert(key.clone(), place.line);
                             entries.push(Entry { key, place, value });
@@ -400,12 +304,7 @@ impl Builder<'_> {
                     }
                 }
             }
-            other => Err(Mistake::error(
-                place,
-                Fault::NotYaml {
-                    reason: format!("{other:?} is out of place"),
-                },
-            )),
+            other => Err(Mistake::error(place, Fault::NotYaml { reason: format!("{other:?} is out of place") })),
         }
     }
 
@@ -413,10 +312,7 @@ impl Builder<'_> {
     fn spanning(&self, start: Span, end: Span) -> Place {
         let place = self.place(start);
         if start.start.line() == end.end.line() {
-            Place {
-                length: end.end.col().saturating_sub(start.start.col()).max(1) as u32,
-                ..place
-            }
+            Place { length: end.end.col().saturating_sub(start.start.col()).max(1) as u32, ..place }
         } else {
             place
         }
@@ -426,12 +322,9 @@ impl Builder<'_> {
 fn owned(event: Event<'_>) -> Event<'static> {
     use std::borrow::Cow;
     match event {
-        Event::Scalar(text, style, anchor, tag) => Event::Scalar(
-            Cow::Owned(text.into_owned()),
-            style,
-            anchor,
-            tag.map(|tag| Cow::Owned(tag.into_owned())),
-        ),
+        Event::Scalar(text, style, anchor, tag) => {
+            Event::Scalar(Cow::Owned(text.into_owned()), style, anchor, tag.map(|tag| Cow::Owned(tag.into_owned())))
+        }
         Event::SequenceStart(anchor, tag) => Event::SequenceStart(anchor, tag.map(|tag| Cow::Owned(tag.into_owned()))),
         Event::MappingStart(anchor, tag) => Event::MappingStart(anchor, tag.map(|tag| Cow::Owned(tag.into_owned()))),
         Event::Nothing => Event::Nothing,
@@ -447,10 +340,7 @@ fn owned(event: Event<'_>) -> Event<'static> {
 
 /// The word that starts at a column (from 1).
 fn word_at(line: &str, column: u32) -> String {
-    line.chars()
-        .skip(column.max(1) as usize - 1)
-        .take_while(|c| !c.is_whitespace() && !matches!(c, ',' | ']' | '}'))
-        .collect()
+    line.chars().skip(column.max(1) as usize - 1).take_while(|c| !c.is_whitespace() && !matches!(c, ',' | ']' | '}')).collect()
 }
 
 /// The last word beginning with `sign`, and its column from 1.
@@ -462,8 +352,5 @@ fn last_word(text: &str, sign: char) -> Option<(usize, String)> {
         .map(|(at, _)| *at)
         .collect();
     let start = *starts.last()?;
-    Some((
-        start + 1,
-        words[start..].iter().map(|(_, c)| *c).take_while(|c| !c.is_whitespace()).collect(),
-    ))
+    Some((start + 1, words[start..].iter().map(|(_, c)| *c).take_while(|c| !c.is_whitespace()).collect()))
 }

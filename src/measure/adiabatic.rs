@@ -38,32 +38,20 @@ impl<'a> AdiabaticPopulations<'a> {
                 taken[state] = true;
             }
         }
-        AdiabaticPopulations {
-            problem,
-            names: names.to_vec(),
-            order,
-        }
+        AdiabaticPopulations { problem, names: names.to_vec(), order }
     }
 }
 
 impl Quantity for AdiabaticPopulations<'_> {
     fn columns(&self) -> Vec<Column> {
         let column = |name: &String| {
-            Column::plain(
-                format!("adiabatic_population_{name}"),
-                &["adiabatic_populations", name],
-                "adiabatic population",
-                name.clone(),
-            )
+            Column::plain(format!("adiabatic_population_{name}"), &["adiabatic_populations", name], "adiabatic population", name.clone())
         };
         self.names.iter().map(column).collect()
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {
-        let states = eigenstates(
-            self.problem
-                .hamiltonian(&self.problem.segments[seen.moment.segment], seen.moment.offset_s),
-        );
+        let states = eigenstates(self.problem.hamiltonian(&self.problem.segments[seen.moment.segment], seen.moment.offset_s));
         row.extend(self.order.iter().map(|state| states.column(*state).dotc(seen.state).norm_sqr()));
     }
 }

@@ -54,14 +54,7 @@ pub struct Column {
 impl Column {
     /// A column without dimension.
     pub fn plain(name: String, path: &[&str], panel: &'static str, label: String) -> Column {
-        Column {
-            name,
-            unit: "1",
-            scale: 1.0,
-            path: path.iter().map(|part| (*part).to_string()).collect(),
-            panel,
-            label,
-        }
+        Column { name, unit: "1", scale: 1.0, path: path.iter().map(|part| (*part).to_string()).collect(), panel, label }
     }
 }
 
@@ -98,13 +91,7 @@ pub struct Observables<'a> {
 /// The quantities that a config records, with the numbers of one point.
 pub fn observables<'a>(document: &Document, values: &[f64], energies_hz: &[f64], problem: &'a Problem) -> Observables<'a> {
     let names = &document.system.names;
-    let mut found = Observables {
-        quantities: Vec::new(),
-        last: Vec::new(),
-        gate: None,
-        propagator: false,
-        demand: Demand::default(),
-    };
+    let mut found = Observables { quantities: Vec::new(), last: Vec::new(), gate: None, propagator: false, demand: Demand::default() };
     for item in &document.record.items {
         let quantity: Box<dyn Quantity> = match item {
             Item::Populations(levels) => Box::new(population::Populations::new(names, levels)),

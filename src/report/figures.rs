@@ -7,6 +7,7 @@ use crate::drive::envelope::Pieces;
 use crate::measure::Column;
 use crate::outcome::Outcome;
 use crate::plan::Point;
+use crate::problem::Sweep;
 use crate::report::fingerprint::fingerprint;
 use crate::report::heading::heading;
 use crate::report::plots::{
@@ -24,13 +25,13 @@ const MOST_PULSES: usize = 20_000;
 const CURVE_POINTS: usize = 257;
 /// Points on the spectrum of one pulse, on each side.
 const SPECTRUM_POINTS: usize = 400;
+/// The same for a pulse that is much longer than another in its plot.
+const MOST_SPECTRUM_POINTS: usize = 1600;
 
 /// The plots of a run.
 pub fn of_run(document: &Document, point: &Point, outcome: &Outcome) -> Vec<Named> {
     let wide = outcome.columns.len();
-    let columns = (0..wide)
-        .map(|k| outcome.rows.iter().skip(k).step_by(wide.max(1)).copied().collect())
-        .collect();
+    let columns = (0..wide).map(|k| outcome.rows.iter().skip(k).step_by(wide.max(1)).copied().collect()).collect();
     of_columns(document, point, &outcome.columns, &outcome.times_s, columns)
 }
 
@@ -70,11 +71,7 @@ fn marks(point: &Point) -> Vec<(String, f64)> {
 fn traces_figure(document: &Document, point: &Point, columns: &[Column], times_s: &[f64], values: &[Vec<f64>]) -> TracesFigure {
     let mut panels: Vec<(&str, Panel)> = Vec::new();
     for (column, values) in columns.iter().zip(values) {
-        let series = Series {
-            name: column.label.clone(),
-            values: values.clone(),
-            band: None,
-        };
+        let series = Series { name: column.label.clone(), values: values.clone(), band: None };
         match panels.iter_mut().find(|(name, _)| *name == column.panel) {
             Some((_, panel)) => panel.series.push(series),
             None => {
@@ -83,20 +80,8 @@ fn traces_figure(document: &Document, point: &Point, columns: &[Column], times_s
                     "Bloch vector" => Some((-1.0, 1.0)),
                     _ => None,
                 };
-                let unit = if column.unit == "1" {
-                    String::new()
-                } else {
-                    column.unit.to_string()
-                };
-                panels.push((
-                    column.panel,
-                    Panel {
-                        y_label: column.panel.to_string(),
-                        unit,
-                        series: vec![series],
-                        range,
-                    },
-                ));
+                let unit = if column.unit == "1" { String::new() } else { column.unit.to_string() };
+                panels.push((column.panel, Panel { y_label: column.panel.to_string(), unit, series: vec![series], range }));
             }
         }
     }
@@ -149,11 +134,7 @@ fn envelopes_figure(document: &Document, point: &Point) -> EnvelopesFigure {
         EnvelopeCurve {
             drive: drive.name.clone(),
             envelope: envelope.name.clone(),
-            size_label: if drive.form == Form::Direct {
-                "matrix element".to_string()
-            } else {
-                "Rabi frequency".to_string()
-            },
+            size_label: if drive.form == Form::Direct { "matrix element".to_string() } else { "Rabi frequency".to_string() },
             start_s: pulse.start.seconds(),
             in_phase_hz: times.iter().map(|t| peak * curve.at(*t)).collect(),
             quadrature_hz: weight.map(|weight| times.iter().map(|t| weight * peak * curve.slope(*t)).collect()),
@@ -173,7 +154,7 @@ fn envelopes_figure(document: &Document, point: &Point) -> EnvelopesFigure {
 /// Spectrum of each different pulse, in dB below its largest, against the offset from the carrier (from zero for a direct drive).
 fn spectrum_figure(document: &Document, point: &Point) -> SpectrumFigure {
     let mut seen: Vec<(usize, usize)> = Vec::new();
-    let mut pulses = Vec::new();
+    let mut shown = Vec::new();
     let mut carrier_hz = None;
     for pulse in &point.timeline.pulses {
         if seen.contains(&(pulse.drive, pulse.envelope)) || seen.len() >= 6 {
@@ -183,58 +164,62 @@ fn spectrum_figure(document: &Document, point: &Point) -> SpectrumFigure {
         if let Some(carrier) = pulse.carrier {
             carrier_hz.get_or_insert(point.timeline.carriers[carrier].centre_hz);
         }
-        let (drive, envelope) = (&document.drives[pulse.drive].name, &document.envelopes[pulse.envelope].name);
-        let (offset_hz, amplitude_db) = pulse_spectrum(document, point, pulse);
-        pulses.push(PulseSpectrum {
-            label: format!("{envelope} on {drive}"),
-            offset_hz,
-            amplitude_db,
-        });
+        shown.push(pulse);
     }
+    // one range for all, so that no curve ends inside the plot
+    let widths: Vec<f64> = shown.iter().map(|pulse| spectrum_width_hz(point, pulse)).collect();
+    let range = widths.iter().copied().fold(0.0, f64::max);
+    let one = |(pulse, width): (&&crate::drive::timeline::PlacedPulse, &f64)| {
+        let (drive, envelope) = (&document.drives[pulse.drive].name, &document.envelopes[pulse.envelope].name);
+        let points = ((SPECTRUM_POINTS as f64 * range / width) as usize).min(MOST_SPECTRUM_POINTS);
+        let (offset_hz, amplitude_db) = pulse_spectrum(document, point, pulse, range, points);
+        PulseSpectrum { label: format!("{envelope} on {drive}"), offset_hz, amplitude_db }
+    };
+    let pulses = shown.iter().zip(&widths).map(one).collect();
     // the lines of the system, as offsets from the first carrier
     let names = &document.system.names;
     let lines = carrier_hz.map_or(Vec::new(), |carrier| {
         let size = names.len().min(12);
         let pairs = (0..size).flat_map(|a| (a + 1..size).map(move |b| (a, b)));
         pairs
-            .map(|(a, b)| {
-                (
-                    format!("{} to {}", names[a], names[b]),
-                    (point.energies_hz[b] - point.energies_hz[a]).abs() - carrier,
-                )
-            })
+            .map(|(a, b)| (format!("{} to {}", names[a], names[b]), (point.energies_hz[b] - point.energies_hz[a]).abs() - carrier))
             .collect()
     });
-    SpectrumFigure {
-        title: heading(document),
-        fingerprint: fingerprint(document),
-        from_zero: carrier_hz.is_none(),
-        pulses,
-        lines,
-    }
+    SpectrumFigure { title: heading(document), fingerprint: fingerprint(document), from_zero: carrier_hz.is_none(), pulses, lines }
+}
+
+/// The sweep of a pulse, if its carrier has one.
+fn chirp_of(point: &Point, pulse: &crate::drive::timeline::PlacedPulse) -> Option<crate::drive::chirp::Chirp> {
+    let carrier = &point.timeline.carriers[pulse.carrier?];
+    let formula = carrier.written.instantaneous.as_ref()?.bind(&point.values);
+    Some(crate::drive::chirp::Chirp::new(formula, carrier.centre_hz, pulse.length_s))
+}
+
+/// Half the range in Hz in which the spectrum of a pulse is worth seeing: its first lobes and the whole chirp.
+///
+/// It is no whole number over the length, so that the grid does not fall on the zeros of a square pulse, which dip without end.
+fn spectrum_width_hz(point: &Point, pulse: &crate::drive::timeline::PlacedPulse) -> f64 {
+    let offsets = |chirp: crate::drive::chirp::Chirp| {
+        (0..=64).map(|k| chirp.offset_hz(pulse.length_s * f64::from(k) / 64.0).abs()).fold(0.0, f64::max)
+    };
+    1.5 * chirp_of(point, pulse).map_or(0.0, offsets) + 12.47 / pulse.length_s
 }
 
 /// Fourier transform of the complex envelope by the trapezium rule, which for a pulse that is 0 outside converges fast.
-fn pulse_spectrum(document: &Document, point: &Point, pulse: &crate::drive::timeline::PlacedPulse) -> (Vec<f64>, Vec<f64>) {
+fn pulse_spectrum(
+    document: &Document,
+    point: &Point,
+    pulse: &crate::drive::timeline::PlacedPulse,
+    range: f64,
+    points: usize,
+) -> (Vec<f64>, Vec<f64>) {
     let envelope = &document.envelopes[pulse.envelope];
     let curve = &point.curves[pulse.envelope];
     let weight = envelope.derivative.map_or(0.0, |derivative| {
         let value = |quantity: crate::config::reader::Quantity| point.values[quantity.register as usize];
         -value(derivative.factor) / (crate::units::RAD_PER_TURN * value(derivative.against))
     });
-    let chirp = pulse.carrier.and_then(|index| {
-        let carrier = &point.timeline.carriers[index];
-        let formula = carrier.written.instantaneous.as_ref()?.bind(&point.values);
-        Some(crate::drive::chirp::Chirp::new(formula, carrier.centre_hz, pulse.length_s))
-    });
-    let reach = chirp.as_ref().map_or(0.0, |chirp| {
-        (0..=64)
-            .map(|k| chirp.offset_hz(pulse.length_s * f64::from(k) / 64.0).abs())
-            .fold(0.0, f64::max)
-    });
-    // wide enough for the main lobe of the shortest feature and the whole chirp; not a whole number over the length, so that the
-    // grid does not fall on the zeros of a square pulse, which dip without end
-    let range = 1.5 * reach + 12.47 / pulse.length_s;
+    let chirp = chirp_of(point, pulse);
     let samples = 2048usize.max((8.0 * range * pulse.length_s) as usize).min(16_384);
     let step = pulse.length_s / samples as f64;
     // X - i Y turns with exp(+2 pi i f t)
@@ -245,9 +230,7 @@ fn pulse_spectrum(document: &Document, point: &Point, pulse: &crate::drive::time
             num_complex::Complex64::new(curve.at(t), if weight == 0.0 { 0.0 } else { -weight * curve.slope(t) }) * cis_turns(turns)
         })
         .collect();
-    let offsets: Vec<f64> = (0..=2 * SPECTRUM_POINTS)
-        .map(|k| range * (k as f64 / SPECTRUM_POINTS as f64 - 1.0))
-        .collect();
+    let offsets: Vec<f64> = (0..=2 * points).map(|k| range * (k as f64 / points as f64 - 1.0)).collect();
     let sizes: Vec<f64> = offsets
         .iter()
         .map(|offset| {

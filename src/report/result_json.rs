@@ -24,19 +24,11 @@ pub fn config(document: &Document) -> Value {
 
 /// Warnings of the config and of the run.
 pub fn warnings(document: &Document, outcome: &Outcome) -> Vec<String> {
-    let mut texts: Vec<String> = document
-        .warnings
-        .iter()
-        .map(|warning| one_line(&document.sources, warning))
-        .collect();
+    let mut texts: Vec<String> = document.warnings.iter().map(|warning| one_line(&document.sources, warning)).collect();
     if !outcome.reached {
         texts.push(super::summary::not_reached(document, outcome));
     }
-    if let Some((method, reason)) = outcome
-        .cross_check
-        .as_ref()
-        .and_then(|check| Some((&check.method, check.difference.as_ref().err()?)))
-    {
+    if let Some((method, reason)) = outcome.cross_check.as_ref().and_then(|check| Some((&check.method, check.difference.as_ref().err()?))) {
         texts.push(format!("the cross-check ({method}) was not made: {reason}"));
     }
     texts
@@ -96,10 +88,7 @@ fn finals(outcome: &Outcome) -> Value {
         insert(&mut found, &column.path, number(value.value));
     }
     if let Some((propagator, _)) = &outcome.propagator {
-        let rows: Vec<Value> = propagator
-            .row_iter()
-            .map(|row| row.iter().map(|z| json!([number(z.re), number(z.im)])).collect())
-            .collect();
+        let rows: Vec<Value> = propagator.row_iter().map(|row| row.iter().map(|z| json!([number(z.re), number(z.im)])).collect()).collect();
         found.insert("propagator".to_string(), Value::Array(rows));
     }
     if let Some(gate) = &outcome.gate {

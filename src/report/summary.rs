@@ -59,17 +59,10 @@ fn component(value: f64) -> String {
 pub fn summary(document: &Document, outcome: &Outcome, place: Option<&str>) -> String {
     let mut text = format!("{}\n", heading(document));
     let end = outcome.times_s.last().copied().unwrap_or(0.0);
-    text.push_str(&format!(
-        "at the end of the sequence, {}, laboratory frame, nothing dropped:\n",
-        short_with_unit(end, "s")
-    ));
+    text.push_str(&format!("at the end of the sequence, {}, laboratory frame, nothing dropped:\n", short_with_unit(end, "s")));
     let wide = outcome.finals.iter().take(SHOWN).map(|f| f.name.chars().count()).max().unwrap_or(0);
     for f in outcome.finals.iter().take(SHOWN) {
-        let unit = if f.unit == "1" || f.name.ends_with(f.unit) {
-            String::new()
-        } else {
-            format!(" {}", f.unit)
-        };
+        let unit = if f.unit == "1" || f.name.ends_with(f.unit) { String::new() } else { format!(" {}", f.unit) };
         text.push_str(&format!("  {:<wide$}  {}{unit}\n", f.name, with_error(f.value, f.error)));
     }
     if outcome.finals.len() > SHOWN {
@@ -80,13 +73,8 @@ pub fn summary(document: &Document, outcome: &Outcome, place: Option<&str>) -> S
             text.push_str(&format!("  free turn about z after the target: {} deg\n", short(turns * 360.0)));
         }
         if let Some((turn, [x, y, z])) = gate.residual {
-            text.push_str(&format!(
-                "  residual turn: {} deg about ({}, {}, {})\n",
-                short(turn * 360.0),
-                component(x),
-                component(y),
-                component(z)
-            ));
+            let [x, y, z] = [x, y, z].map(component);
+            text.push_str(&format!("  residual turn: {} deg about ({x}, {y}, {z})\n", short(turn * 360.0)));
         }
     }
     text.push_str(&format!("method {}: {}\n", outcome.method.word(), outcome.reason));
