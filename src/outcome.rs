@@ -4,11 +4,12 @@
 use std::time::Instant as Clock;
 
 use crate::config::document::Document;
+use crate::config::record::Item;
 use crate::config::settings::MethodWord;
-use crate::measure::{observables, Column, GateFigures, TraceRecorder};
+use crate::measure::{observables, Column, GateFigures, QuasiEnergy, QuasiRecorder, TraceRecorder};
 use crate::plan::Point;
 use crate::problem::{Matrix, Vector};
-use crate::propagate::{figure, solve, Asked, CrossCheck, Method, Recorder};
+use crate::propagate::{figure, solve, Asked, CrossCheck, Demand, Method, Recorder};
 
 /// A final number with its error.
 #[derive(Debug, Clone, PartialEq)]
@@ -49,6 +50,8 @@ pub struct Outcome {
     pub gate: Option<GateFigures>,
     /// The propagator, where it is recorded, and its error figure.
     pub propagator: Option<(Matrix, f64)>,
+    /// Levels of the driven system: period in s, what was found, and the error of q in turns.
+    pub quasi_energies: Option<(f64, Vec<QuasiEnergy>, f64)>,
     /// Amplitudes at the end.
     pub end_state: Vector,
     /// The method where H changes.
@@ -89,6 +92,16 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
         cross_check: document.accuracy.cross_check,
     };
     let solved = solve(problem, &observables.demand, &asked, || TraceRecorder::new(&observables, problem, &scales));
+
+    let quasi = document.record.items.iter().find_map(|item| match item {
+        Item::QuasiEnergies(period) => Some(point.values[period.register as usize]),
+        _ => None,
+    });
+    let quasi = quasi.map(|period_s| {
+        let one = problem.first(period_s);
+        let demand = Demand { propagator: true, time_in: false };
+        (period_s, solve(&one, &demand, &Asked { cross_check: false, ..asked }, QuasiRecorder::default))
+    });
 
     let (recorded, finer) = (&solved.recorded, &solved.finer);
     let end = problem.moments.len() - 1;
@@ -131,9 +144,10 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
         reason: solved.reason.clone(),
         steps: solved.steps,
         resolutions: solved.resolutions.clone().map(|resolution| resolution.words),
-        error_figure: solved.error_figure,
+        error_figure: quasi.as_ref().map_or(solved.error_figure, |(_, quasi)| quasi.error_figure.max(solved.error_figure)),
         floor: solved.floor,
-        reached: solved.reached,
+        reached: solved.reached && quasi.as_ref().is_none_or(|(_, quasi)| quasi.reached),
+        quasi_energies: quasi.map(|(period_s, quasi)| (period_s, quasi.recorded.found.unwrap_or_default(), quasi.error_figure)),
         cross_check,
         seconds: clock.elapsed().as_secs_f64(),
         columns,

@@ -12,7 +12,7 @@ use crate::config::document::{not_finite, Document};
 use crate::config::drives::Form;
 use crate::config::envelopes::{Envelope, Samples, SizeWord};
 use crate::config::messages::{short_with_unit, Fault, Mistake};
-use crate::config::record::Rows;
+use crate::config::record::{Item, Rows};
 use crate::config::settings::{Follows, Frame, Rotating};
 use crate::config::state::State;
 use crate::config::tape::{Entry, Formula, Register, Wide};
@@ -26,6 +26,7 @@ use crate::frame::eliminate::{eliminate, Elimination, LARGEST_VALIDITY};
 use crate::frame::follow::level_turning;
 use crate::frame::ledger::{Source, TermKey};
 use crate::frame::rotating::{rotate, Beat, Rotated, Setting};
+use crate::measure::breaks_period;
 use crate::model;
 use crate::problem::{Matrix, Moment, Problem, Segment, Vector};
 use crate::units::{rad_s, RAD_PER_TURN};
@@ -319,6 +320,26 @@ impl Point<'_> {
             Frame::Lab => None,
             Frame::Rotating(frame) => Some(self.rotate(document, frame, &parts, put_back)?),
         };
+        self.judge_periods(document)
+    }
+
+    /// Quasi-energies need a drive that repeats, in the frame of the run.
+    fn judge_periods(&self, document: &Document) -> Result<(), Mistake> {
+        for item in &document.record.items {
+            let Item::QuasiEnergies(period) = item else { continue };
+            let period_s = self.values[period.register as usize];
+            let end_s = self.timeline.end.seconds();
+            if !(period_s > 0.0) {
+                let fault = Fault::NotPositive { what: "quasi_energies / period".to_string(), value: period_s, unit: "s".to_string() };
+                return Err(Mistake::error(period.place, fault));
+            }
+            if period_s > end_s * (1.0 + 1e-12) {
+                return Err(Mistake::error(period.place, Fault::PeriodTooLong { period_s, end_s }));
+            }
+            if let Some(at_s) = breaks_period(self.problem(), period_s) {
+                return Err(Mistake::error(period.place, Fault::NotPeriodic { period_s, at_s }));
+            }
+        }
         Ok(())
     }
 

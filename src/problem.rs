@@ -223,6 +223,30 @@ impl Problem {
         h
     }
 
+    /// The first `length_s` seconds alone, with their end as the only moment.
+    pub fn first(&self, length_s: f64) -> Problem {
+        let mut segments: Vec<Segment> = Vec::new();
+        let mut left = length_s;
+        for segment in &self.segments {
+            if left <= 0.0 {
+                break;
+            }
+            // what is left by rounding alone is no further segment
+            let cut = segment.length_s.min(left);
+            left -= cut;
+            segments.push(Segment { length_s: cut, ..segment.clone() });
+            if left <= 1e-12 * length_s {
+                break;
+            }
+        }
+        let end = Moment {
+            segment: segments.len().saturating_sub(1),
+            offset_s: segments.last().map_or(0.0, |last| last.length_s),
+            time_s: length_s,
+        };
+        Problem { segments, moments: vec![end], ..self.clone() }
+    }
+
     /// Length of the whole sequence, s.
     pub fn length_s(&self) -> f64 {
         self.segments.last().map_or(0.0, |last| last.start.after(last.length_s).seconds())

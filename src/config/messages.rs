@@ -150,6 +150,8 @@ pub enum Fault {
     DoubtfulDrop { drive: String, levels: [String; 2], size_hz: f64, turns_hz: f64 },
     StartEliminated { level: String },
     TooNear { levels: Vec<String>, validity: f64, limit: f64 },
+    PeriodTooLong { period_s: f64, end_s: f64 },
+    NotPeriodic { period_s: f64, at_s: f64 },
     // from the command line
     NoSuchNumber { name: String, near: Option<String>, known: Vec<String> },
 }
@@ -639,6 +641,17 @@ impl Fault {
             ))
             .why("More than a tenth of its turning frequency is no longer small.")
             .write(format!("drop_terms_faster_than: {}", short_with_unit(2.0 * turns_hz, "Hz"))),
+            PeriodTooLong { period_s, end_s } => say(format!(
+                "a period of {} is longer than the sequence, which is {}.",
+                short_with_unit(*period_s, "s"),
+                short_with_unit(*end_s, "s")
+            )),
+            NotPeriodic { period_s, at_s } => {
+                say(format!("the drive does not repeat after {}.", short_with_unit(*period_s, "s"))).why(format!(
+                    "At {} the Hamiltonian is not what it was one period before, so there are no quasi-energies.",
+                    short_with_unit(*at_s, "s")
+                ))
+            }
             StartEliminated { level } => say(format!("the run starts in \"{level}\", which is eliminated."))
                 .write("a start in the levels that stay, or no eliminate"),
             TooNear { levels, validity, limit } => {

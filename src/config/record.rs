@@ -80,6 +80,8 @@ pub enum Item {
     Propagator,
     /// Gate error and leakage.
     Gate(Box<Gate>),
+    /// Levels of the driven system, over this period.
+    QuasiEnergies(Quantity),
 }
 
 /// What is recorded, in the order written.
@@ -95,7 +97,7 @@ pub struct Record {
     pub place: Place,
 }
 
-const KEYS: [&str; 15] = [
+const KEYS: [&str; 16] = [
     "every",
     "at",
     "populations",
@@ -111,8 +113,9 @@ const KEYS: [&str; 15] = [
     "energy",
     "final",
     "population",
+    "quasi_energies",
 ];
-const LATER: [&str; 8] = ["part", "lost", "steady", "quasi_energies", "levels", "transitions", "shots", "error_budget"];
+const LATER: [&str; 7] = ["part", "lost", "steady", "levels", "transitions", "shots", "error_budget"];
 
 /// Reads `record:`, or fills in its defaults.
 pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operator], used: &mut Vec<String>) -> Option<Record> {
@@ -171,6 +174,7 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
             "adiabatic_populations" => switched(reader, value, "adiabatic_populations", Item::AdiabaticPopulations, &mut items),
             "propagator" => switched(reader, value, "propagator", Item::Propagator, &mut items),
             "fidelity" => read_fidelity(reader, value).map(Item::Fidelity),
+            "quasi_energies" => read_period(reader, value).map(Item::QuasiEnergies),
             "gate" => read_gate(reader, value, operators, used).map(|gate| Item::Gate(Box::new(gate))),
             _ => continue,
         };
@@ -232,6 +236,12 @@ fn read_fidelity(reader: &mut Reader, node: &Node) -> Option<State> {
     reader.fields(node, "fidelity", &["to"], &[])?;
     let to = reader.need(node, "to", "fidelity", "up")?;
     read_state(reader, to, "fidelity / to")
+}
+
+fn read_period(reader: &mut Reader, node: &Node) -> Option<Quantity> {
+    reader.fields(node, "quasi_energies", &["period"], &[])?;
+    let period = reader.need(node, "period", "quasi_energies", "1 turn / carrier")?;
+    reader.quantity(period, "quasi_energies / period", Dim::TIME)
 }
 
 fn read_gate(reader: &mut Reader, node: &Node, operators: &[Operator], used: &mut Vec<String>) -> Option<Gate> {

@@ -114,6 +114,16 @@ pub enum Frame {
     Rotating(Box<Rotating>),
 }
 
+impl Frame {
+    /// Levels that are eliminated.
+    pub fn eliminated(&self) -> &[usize] {
+        match self {
+            Frame::Lab => &[],
+            Frame::Rotating(frame) => &frame.eliminate,
+        }
+    }
+}
+
 /// Reads `frame:`.
 pub fn read_frame(reader: &mut Reader, node: Option<&Node>) -> Option<Frame> {
     let Some(node) = node else {
