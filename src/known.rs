@@ -146,7 +146,7 @@ mod tests {
     fn exact_known_problems_by_every_method() {
         for known in KNOWN {
             for (method, accuracy) in [("automatic", 1e-10), ("smooth", 1e-10), ("geometric", 1e-10), ("constant steps", 1e-7)] {
-                let verdict = known.run(method, accuracy).unwrap();
+                let verdict = known.run(method, accuracy).expect("a known problem is a lawful config");
                 assert!(
                     verdict.good(),
                     "{} by {method}: off by {:.2e}, error figure {:.2e}",

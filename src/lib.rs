@@ -15,6 +15,7 @@
 #![deny(unsafe_code)]
 
 pub mod cli;
+pub mod compare;
 pub mod config;
 pub mod drive;
 pub mod frame;

@@ -48,6 +48,8 @@ pub struct Outcome {
     pub finals: Vec<Final>,
     /// Figures of the gate.
     pub gate: Option<GateFigures>,
+    /// The propagator of the whole sequence, wherever one was computed.
+    pub whole: Option<Matrix>,
     /// The propagator, where it is recorded, and its error figure.
     pub propagator: Option<(Matrix, f64)>,
     /// Levels of the driven system: period in s, what was found, and the error of q in turns.
@@ -137,6 +139,7 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
         times_s: problem.moments.iter().map(|moment| moment.time_s).collect(),
         rows,
         finals,
+        whole: recorded.propagator.clone(),
         gate,
         propagator,
         end_state: recorded.end_state.clone().unwrap_or_else(|| problem.start.clone()),

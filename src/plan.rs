@@ -303,6 +303,11 @@ impl Point<'_> {
         self.frame.as_ref()
     }
 
+    /// Turns that each level's frame has made at the end of the sequence; 0 in the laboratory frame.
+    pub fn end_turns(&self) -> Vec<f64> {
+        self.frame.as_ref().map_or_else(|| vec![0.0; self.energies_hz.len()], |frame| frame.rotated.end_turns.clone())
+    }
+
     /// The problem of the laboratory frame.
     pub fn lab(&self) -> &Problem {
         &self.lab

@@ -22,7 +22,7 @@ const ROOMS: &[&[&str]] = &[
     &["plan"],
     &["outcome"],
     &["known"],
-    &["noise", "scan", "design"],
+    &["compare", "noise", "scan", "design"],
     &["report"],
     &["cli"],
 ];

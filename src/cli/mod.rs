@@ -1,6 +1,7 @@
 //! Words to library calls to an exit status; one file per verb. Only this room prints.
 
 mod check;
+mod compare;
 mod new;
 mod plot;
 mod run;
@@ -45,6 +46,8 @@ enum Verb {
     Check(check::Words),
     /// Evolve, record, and write numbers and plots
     Run(run::Words),
+    /// Run the file and its variants, and show how far apart they are
+    Compare(compare::Words),
     /// Draw the plots of a result folder again
     Plot(plot::Words),
     /// Check the program on this machine against closed forms
@@ -75,6 +78,7 @@ pub fn main() -> ExitCode {
         Verb::New(words) => new::new(&words),
         Verb::Check(words) => check::check(&words),
         Verb::Run(words) => run::run(&words),
+        Verb::Compare(words) => compare::run(&words),
         Verb::Plot(words) => plot::plot(&words),
         Verb::Selftest(words) => selftest::selftest(&words),
     };

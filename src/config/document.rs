@@ -1,7 +1,9 @@
 //! A whole config, read and judged: what every later stage starts from.
 
 use std::path::{Path, PathBuf};
+use std::sync::Arc;
 
+use super::compare::{self, Compare, Variant};
 use super::drives::{CarrierPhase, Drive, Form};
 use super::envelopes::Envelope;
 use super::messages::{Fault, Mistake};
@@ -43,7 +45,7 @@ const SECTIONS: [&str; 25] = [
     "hardware",
     "output",
 ];
-const LATER: [&str; 10] = ["basis", "decay", "dephasing", "noise", "compare", "scan", "tune", "fit", "run", "hardware"];
+const LATER: [&str; 9] = ["basis", "decay", "dephasing", "noise", "scan", "tune", "fit", "run", "hardware"];
 
 /// A config that holds no mistake.
 #[derive(Debug, Clone)]
@@ -84,6 +86,12 @@ pub struct Document {
     pub defaults: Vec<(String, String)>,
     /// Warnings.
     pub warnings: Vec<Mistake>,
+    /// Where a result folder keeps its inputs, if it was read from one.
+    pub archive: Option<PathBuf>,
+    /// Variants to compare, if any.
+    pub compare: Option<Compare>,
+    /// The tree that it was read from.
+    pub root: Arc<Node>,
     /// The values given in place of written ones.
     pub set: Vec<(String, String)>,
 }
@@ -148,7 +156,15 @@ fn read_sources(
     let mut reader = Reader::new(sources, folder.to_path_buf());
     reader.mistakes = mistakes;
     reader.archive = archive;
-    let document = sections(&mut reader, &root, file, set);
+    let document = sections(&mut reader, &root, file, set, &[]);
+    if let Some(document) = &document {
+        // the variants are read too, so that a slip in one is found before anything runs
+        for variant in document.compare.iter().flat_map(|compare| &compare.variants) {
+            if let Err(refusal) = read_variant(document, variant) {
+                reader.mistakes.extend(refusal.mistakes.into_iter().filter(|mistake| !mistake.warning));
+            }
+        }
+    }
     let refused = reader.mistakes.iter().any(|mistake| !mistake.warning);
     match document {
         Some(document) if !refused => Ok(document),
@@ -156,7 +172,38 @@ fn read_sources(
     }
 }
 
-fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)]) -> Option<Document> {
+/// Reads a variant of a document; what changes nothing is refused.
+pub fn read_variant(document: &Document, variant: &Variant) -> Result<Document, Refusal> {
+    let root = compare::apply(&document.root, variant);
+    let folder = document.source().path.parent().unwrap_or(Path::new("")).to_path_buf();
+    let mut reader = Reader::new(document.sources.clone(), folder);
+    reader.archive = document.archive.clone();
+    let set: Vec<(String, String)> =
+        document.set.iter().filter(|(name, _)| variant.set.iter().all(|entry| entry.key != *name)).cloned().collect();
+    let read = sections(&mut reader, &root, 0, &set, &variant.set);
+    let same_sections = variant
+        .sections
+        .iter()
+        .all(|section| document.root.get(&section.key).is_some_and(|written| compare::same(written, &section.value)));
+    if let Some(read) = &read {
+        let values = |document: &Document| -> Vec<(String, f64)> {
+            let registers = document.tape.as_written();
+            document.numbers.iter().map(|number| (number.name.clone(), registers[number.register as usize])).collect()
+        };
+        if same_sections && values(read) == values(document) {
+            reader.error(variant.place, Fault::VariantChangesNothing { name: variant.name.clone() });
+        }
+    }
+    match read {
+        Some(mut read) if !reader.mistakes.iter().any(|mistake| !mistake.warning) => {
+            read.set = set;
+            Ok(read)
+        }
+        _ => Err(Refusal { sources: reader.sources, mistakes: reader.mistakes }),
+    }
+}
+
+fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)], moved: &[super::tree::Entry]) -> Option<Document> {
     if root.entries().is_none() {
         reader.error(
             root.place,
@@ -185,6 +232,9 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         }
     };
     numbers(reader, root, set);
+    for entry in moved {
+        reader.set_number(&entry.key, entry.value.clone());
+    }
 
     let system = match root.get("system") {
         Some(node) => super::system::read_system(reader, node),
@@ -256,11 +306,16 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         phases_said(reader, steps, &drives);
         unused(reader, root, &used, &operators, &mut used_operators);
     }
+    let compare = root.get("compare").map(|node| compare::read_compare(reader, node));
     let numbers = reader.finish_numbers();
     finite(reader, &numbers)?;
     if let Some(record) = &record {
         free_turns(reader, record, &operators);
     }
+    let compare = match compare {
+        Some(compare) => Some(compare?),
+        None => None,
+    };
     let (system, steps, start, record, accuracy, output, frame) = (system?, steps?, start?, record?, accuracy?, output?, frame?);
     Some(Document {
         sources: reader.sources.clone(),
@@ -281,6 +336,9 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         output,
         defaults: std::mem::take(&mut reader.defaults),
         warnings: reader.mistakes.iter().filter(|mistake| mistake.warning).cloned().collect(),
+        compare,
+        root: Arc::new(root.clone()),
+        archive: reader.archive.clone(),
         set: set.to_vec(),
     })
 }

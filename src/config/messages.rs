@@ -150,6 +150,9 @@ pub enum Fault {
     DoubtfulDrop { drive: String, levels: [String; 2], size_hz: f64, turns_hz: f64 },
     StartEliminated { level: String },
     TooNear { levels: Vec<String>, validity: f64, limit: f64 },
+    VariantTwice { name: String },
+    VariantChangesNothing { name: String },
+    NothingToCompare,
     PeriodTooLong { period_s: f64, end_s: f64 },
     NotPeriodic { period_s: f64, at_s: f64 },
     // from the command line
@@ -224,7 +227,7 @@ pub fn short_with_unit(value: f64, unit: &str) -> String {
     let prefixes =
         [(1e12, "T"), (1e9, "G"), (1e6, "M"), (1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, "u"), (1e-9, "n"), (1e-12, "p"), (1e-15, "f")];
     if size == 0.0 || !["s", "Hz", "V", "T", "K", "W", "m"].contains(&unit) {
-        return if unit.starts_with('/') { format!("{} {unit}", short(value)) } else { format!("{} {unit}", short(value)) };
+        return format!("{} {unit}", short(value));
     }
     let (factor, prefix) = prefixes.iter().find(|(factor, _)| size >= factor * 0.999_999_9).unwrap_or(&prefixes[9]);
     let (factor, prefix) = if unit == "s" && *factor > 1.0 { (&1.0, &"") } else { (factor, prefix) };
@@ -652,6 +655,13 @@ impl Fault {
                     short_with_unit(*at_s, "s")
                 ))
             }
+            VariantTwice { name } => say(format!("a variant called \"{name}\" is there already."))
+                .why("The file itself is the variant \"as written\".")
+                .write("another name"),
+            VariantChangesNothing { name } => say(format!("the variant \"{name}\" changes nothing."))
+                .why("Its numbers and sections are those of the file as written.")
+                .write("set: {name of a number: another value}"),
+            NothingToCompare => say("the file has no section \"compare\".").write("compare: [{name: laboratory, frame: {kind: lab}}]"),
             StartEliminated { level } => say(format!("the run starts in \"{level}\", which is eliminated."))
                 .write("a start in the levels that stay, or no eliminate"),
             TooNear { levels, validity, limit } => {

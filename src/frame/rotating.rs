@@ -66,6 +66,8 @@ pub struct Rotated {
     pub beats: Vec<Beat>,
     /// Frequencies of the levels at time zero, Hz.
     pub level_hz: Vec<f64>,
+    /// Turns that each level's frame has made at the end, less the whole turns.
+    pub end_turns: Vec<f64>,
 }
 
 /// Entries of one term that turn alike: whole coefficients of the carriers, and the table's part.
@@ -457,6 +459,20 @@ impl<'a> Work<'a> {
                 followed + self.setting.turning.table_hz[j]
             })
             .collect();
+        let end = self.setting.timeline.end;
+        let end_turns = (0..self.lab.dim())
+            .map(|j| {
+                let counts = &self.setting.turning.counts[j];
+                let followed: f64 = counts
+                    .iter()
+                    .enumerate()
+                    .filter(|(_, count)| **count != 0)
+                    .map(|(d, count)| f64::from(*count) * self.turned(d, end))
+                    .sum();
+                let turns = followed + end.turns(self.setting.turning.table_hz[j]);
+                turns - turns.round()
+            })
+            .collect();
         let problem = Problem {
             statics: Arc::new(self.statics),
             matrices: Arc::new(self.matrices),
@@ -465,7 +481,7 @@ impl<'a> Work<'a> {
             start: self.lab.start.clone(),
             moments: self.lab.moments.clone(),
         };
-        Rotated { problem, ledger: self.ledger, beats: self.beats, level_hz }
+        Rotated { problem, ledger: self.ledger, beats: self.beats, level_hz, end_turns }
     }
 }
 

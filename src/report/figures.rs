@@ -1,5 +1,6 @@
 //! What a run or an old result folder shows as plots: recorded numbers, pulses and marks put into the plain data of `plots`.
 
+use crate::compare::Comparison;
 use crate::config::document::Document;
 use crate::config::drives::Form;
 use crate::config::settings::Plot;
@@ -51,6 +52,13 @@ pub fn of_columns(document: &Document, point: &Point, columns: &[Column], times_
         }
     }
     drawn
+}
+
+/// The plots of a comparison: those of the file as written.
+pub fn of_comparison(document: &Document, comparison: &Comparison) -> Vec<Named> {
+    let written = comparison.computed.first();
+    let point = written.and_then(|computed| computed.plan.point().ok());
+    written.zip(point).map_or_else(Vec::new, |(computed, point)| of_run(document, &point, &computed.outcome))
 }
 
 /// Writes a plot in both forms, each to the side first and then renamed; gives the file names.

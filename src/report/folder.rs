@@ -141,7 +141,9 @@ impl Staging {
         let old: Vec<PathBuf> = fs::read_dir(&self.folder)?.flatten().map(|entry| entry.path()).collect();
         let ours = |path: &Path| {
             let name = path.file_name().unwrap_or_default().to_string_lossy();
-            ["result.json", "traces.csv", "config.yaml"].contains(&name.as_ref()) || [".png", ".svg"].iter().any(|end| name.ends_with(end))
+            ["result.json", "traces.csv", "config.yaml"].contains(&name.as_ref())
+                || (name.starts_with("traces-") && name.ends_with(".csv"))
+                || [".png", ".svg"].iter().any(|end| name.ends_with(end))
         };
         for path in old.iter().filter(|path| ours(path)) {
             fs::remove_file(path)?;

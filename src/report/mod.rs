@@ -1,4 +1,6 @@
 //! Numbers into files, plots and text for people. Only this room writes result files.
+pub mod compare_json;
+pub mod compare_text;
 pub mod figures;
 pub mod fingerprint;
 pub mod folder;
