@@ -387,13 +387,13 @@ fn numbers(reader: &mut Reader, root: &Node, set: &[(String, String)]) {
     }
 }
 
-/// A drive whose phase could be meant in two ways must say which.
+/// A drive used more than once must say what its phase counts from; whether a single pulse starts with the sequence is judged
+/// with its time.
 fn phases_said(reader: &mut Reader, steps: &[Step], drives: &[Drive]) {
-    for (drive, (times, first)) in drives.iter().zip(sequence::uses(steps, drives.len())) {
-        if drive.form == Form::Direct || drive.carrier_phase.is_some() || times == 0 || (times == 1 && first) {
-            continue;
+    for (drive, times) in drives.iter().zip(sequence::uses(steps, drives.len())) {
+        if drive.form != Form::Direct && drive.carrier_phase.is_none() && times > 1 {
+            reader.error(drive.place, Fault::PhaseUnsaid { drive: drive.name.clone(), times, why_first: false });
         }
-        reader.error(drive.place, Fault::PhaseUnsaid { drive: drive.name.clone(), times, why_first: times == 1 });
     }
 }
 

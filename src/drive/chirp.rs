@@ -17,6 +17,7 @@ const MOST: usize = 4096;
 pub struct Chirp {
     formula: BoundFormula,
     centre_hz: f64,
+    kinks_s: Vec<f64>,
     pieces: Vec<Piece>,
 }
 
@@ -29,10 +30,17 @@ struct Piece {
 }
 
 impl Chirp {
+    /// Times at which the sweep has a kink, s.
+    pub fn kinks_s(&self) -> &[f64] {
+        &self.kinks_s
+    }
+
     /// The chirp of `instantaneous` (Hz) about `centre_hz`, from 0 to `length_s`.
     pub fn new(instantaneous: BoundFormula, centre_hz: f64, length_s: f64) -> Chirp {
-        let mut chirp = Chirp { formula: instantaneous, centre_hz, pieces: Vec::new() };
-        let mut waiting = vec![(0.0, length_s, 0u32)];
+        let kinks_s = instantaneous.kinks_s(length_s);
+        let bounds: Vec<f64> = std::iter::once(0.0).chain(kinks_s.iter().copied()).chain([length_s]).collect();
+        let mut chirp = Chirp { formula: instantaneous, centre_hz, kinks_s, pieces: Vec::new() };
+        let mut waiting: Vec<(f64, f64, u32)> = bounds.windows(2).rev().map(|pair| (pair[0], pair[1], 0)).collect();
         let mut turns = 0.0;
         while let Some((from, to, depth)) = waiting.pop() {
             let coefficients = chirp.expand(from, to);

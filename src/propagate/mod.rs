@@ -11,6 +11,7 @@
 //! | `picture.rs` | the turning diagonal picture of a segment |
 //! | `load.rs` | how large, fast and long a problem is |
 //! | `exponential.rs` | exp(-i H tau) of a constant Hermitian H |
+//! | `jacobi.rs` | eigenvectors that cannot fail |
 //! | `constant.rs` | stretches of constant H |
 //! | `even_steps.rs` | equal steps between moments, shared by the next two |
 //! | `slices.rs` | midpoint slices, order 2 |
@@ -26,6 +27,7 @@ mod dormand_prince;
 mod even_steps;
 mod exponential;
 mod geometric;
+mod jacobi;
 mod load;
 mod picture;
 mod refine;

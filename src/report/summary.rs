@@ -30,9 +30,12 @@ pub fn with_error(value: f64, error: f64) -> String {
 /// Why the accuracy was not reached and what to do.
 pub fn not_reached(document: &Document, outcome: &Outcome) -> String {
     let asked = document.accuracy.last;
+    if !outcome.error_figure.is_finite() {
+        return format!("the accuracy of {} that was asked for is not reached, and no error could be measured: the work was cut short or broke down; ask for less, or shorten the sequence", short(asked));
+    }
     let advice = if outcome.floor > asked {
         format!(
-            "rounding alone leaves about {} here (the phases turn very far); ask for accuracy: {{final: {}}} or shorten the sequence",
+            "rounding alone leaves about {} here; ask for accuracy: {{final: {}}} or shorten the sequence",
             short(outcome.floor),
             short(10f64.powf(outcome.floor.log10().ceil()))
         )
