@@ -3,6 +3,7 @@
 mod check;
 mod compare;
 mod explain;
+mod new;
 mod plot;
 mod run;
 mod selftest;
@@ -40,6 +41,8 @@ struct Words {
 
 #[derive(Subcommand)]
 enum Verb {
+    /// Write a worked config to begin with; without a kind, list the kinds
+    New(new::Words),
     /// Read and judge a config without running it
     Check(check::Words),
     /// Say in words and numbers what a config means, without running it
@@ -75,6 +78,7 @@ pub fn main() -> ExitCode {
         }
     };
     let status = match words.verb {
+        Verb::New(words) => new::new(&words),
         Verb::Check(words) => check::check(&words),
         Verb::Explain(words) => explain::explain(&words),
         Verb::Run(words) => run::run(&words),

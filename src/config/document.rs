@@ -157,15 +157,14 @@ fn read_sources(
     reader.mistakes = mistakes;
     reader.archive = archive;
     let document = sections(&mut reader, &root, file, set, &[]);
-    let document = document.map(|document| {
+    if let Some(document) = &document {
         // the variants are read too, so that a slip in one is found before anything runs
         for variant in document.compare.iter().flat_map(|compare| &compare.variants) {
-            if let Err(refusal) = read_variant(&document, variant) {
+            if let Err(refusal) = read_variant(document, variant) {
                 reader.mistakes.extend(refusal.mistakes.into_iter().filter(|mistake| !mistake.warning));
             }
         }
-        document
-    });
+    }
     let refused = reader.mistakes.iter().any(|mistake| !mistake.warning);
     match document {
         Some(document) if !refused => Ok(document),

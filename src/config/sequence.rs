@@ -158,9 +158,7 @@ impl Steps<'_> {
 
     fn step(&mut self, node: &Node) -> Option<Step> {
         let entries = self.reader.fields(node, "a step of the sequence", &STEP_KEYS, &[("delay", "A pause is called wait.")])?;
-        let Some(entry) = entries.iter().find(|entry| STEP_KEYS.contains(&entry.key.as_str())) else {
-            return None;
-        };
+        let entry = entries.iter().find(|entry| STEP_KEYS.contains(&entry.key.as_str()))?;
         if let Some(second) = entries.iter().filter(|entry| STEP_KEYS.contains(&entry.key.as_str())).nth(1) {
             let fault = Fault::OneOf {
                 found: vec![entry.key.clone(), second.key.clone()],

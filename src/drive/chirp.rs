@@ -92,9 +92,9 @@ impl Sweep for Chirp {
 fn integrate(c: &[f64; ORDER]) -> [f64; ORDER + 1] {
     let at = |n: usize| c.get(n).copied().unwrap_or(0.0);
     let mut integral = [0.0; ORDER + 1];
-    for n in 1..=ORDER {
+    for (n, coefficient) in integral.iter_mut().enumerate().skip(1) {
         let before = if n == 1 { 2.0 * at(0) } else { at(n - 1) };
-        integral[n] = (before - at(n + 1)) / (2 * n) as f64;
+        *coefficient = (before - at(n + 1)) / (2 * n) as f64;
     }
     integral[0] = -(1..=ORDER).map(|n| if n % 2 == 0 { integral[n] } else { -integral[n] }).sum::<f64>();
     integral

@@ -6,6 +6,7 @@ pub mod figures;
 pub mod fingerprint;
 pub mod folder;
 pub mod frame_json;
+pub mod heading;
 pub mod plots;
 pub mod result_json;
 pub mod summary;
