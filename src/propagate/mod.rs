@@ -13,6 +13,7 @@
 //! | `exponential.rs` | exp(-i H tau) of a constant Hermitian H |
 //! | `jacobi.rs` | eigenvectors that cannot fail |
 //! | `constant.rs` | stretches of constant H |
+//! | `commuting.rs` | stretches whose H commutes with itself |
 //! | `even_steps.rs` | equal steps between moments, shared by the next two |
 //! | `slices.rs` | midpoint slices, order 2 |
 //! | `geometric.rs` | Magnus expansion, order 6 |
@@ -21,6 +22,7 @@
 
 mod asked;
 mod choose;
+mod commuting;
 mod constant;
 mod cross_check;
 mod dormand_prince;

@@ -54,7 +54,9 @@ struct Ran<R> {
 /// Solves `problem` and measures the error of every recorded number; `new_recorder` is called once for each run.
 pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new_recorder: impl Fn() -> R) -> Solved<R> {
     let mut pictures = Pictures::new(problem);
-    let load = Load::of(problem, demand, asked.accuracy, &mut pictures);
+    // by its integral only where the choice is ours, and never where times are spent in levels
+    let integrals = asked.method.is_none() && !demand.time_in;
+    let (load, by_integral) = Load::of(problem, demand, asked.accuracy, integrals, &mut pictures);
     let (method, mut reason) = choose(&load, asked.method);
     // Runge-Kutta sums are compensated; all other steps are products, one after the other.
     let floor_of = |work: &Work| load.floor(if load.changing > 0 && method != Method::Smooth { work.steps } else { load.segments as u64 });
@@ -67,7 +69,7 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         reason += &format!("; it was not run, since it would take about {:.0e} s", ns * 1e-9);
     }
     let mut products = 0;
-    let mut route = Route { problem, demand: *demand, method, changing_s: load.changing_s, pictures };
+    let mut route = Route { problem, demand: *demand, method, by_integral, changing_s: load.changing_s, pictures };
     let mut go = |fineness: Fineness| {
         let mut recorder = new_recorder();
         let work = run(&mut route, &fineness, left, &mut recorder);
@@ -83,7 +85,7 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         let floor = floor_of(&coarse.work);
         let spoilt = coarse.work.exhausted() || fine.work.exhausted();
         let error_figure = if spoilt { f64::INFINITY } else { largest_figure(coarse.recorder.numbers(), fine.recorder.numbers(), floor) };
-        if error_figure <= asked.accuracy.max(floor) || spoilt || !error_figure.is_finite() || load.changing == 0 {
+        if error_figure <= asked.accuracy.max(floor) || spoilt || !error_figure.is_finite() || load.changing + load.commuting == 0 {
             break (error_figure, floor);
         }
         let Some(wanted) = tighten(&coarse, &fine, error_figure / asked.accuracy.max(floor), method, least) else {
