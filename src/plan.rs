@@ -432,22 +432,30 @@ impl Point<'_> {
         let form = document.drives[pulse.drive].form;
         // R/2 turns with the carrier; a direct drive's entry is halved in its matrix instead
         let half_rabi_hz = if form == Form::Direct { peak_hz } else { 0.5 * peak_hz };
-        let quadrature_s = envelope.derivative.map_or(0.0, |derivative| {
-            let (factor, against) = (self.values[derivative.factor.register as usize], self.values[derivative.against.register as usize]);
-            -factor / (RAD_PER_TURN * against)
-        });
+        let quadrature_s = self.quadrature_s(document, pulse.envelope);
         if !quadrature_s.is_finite() {
             let place = envelope.derivative.map_or(envelope.place, |derivative| derivative.against.place);
             return Err(Mistake::error(place, Fault::ZeroDivision { text: "against is 0".to_string() }));
         }
-        let chirp = pulse.carrier.and_then(|index| {
-            let carrier = &self.timeline.carriers[index];
-            let formula = carrier.written.instantaneous.as_ref()?;
-            Some(Arc::new(Chirp::new(formula.bind(&self.values), carrier.centre_hz, pulse.length_s)))
-        });
+        let chirp = self.sweep(pulse).map(Arc::new);
         let pieces = curve.pieces();
         let signal = matches!(pieces, Pieces::Smooth { .. }).then(|| Arc::new(Signal { curve, quadrature_s }));
         Ok(PulseParts { pieces, half_rabi_hz, chirp, signal })
+    }
+
+    /// Weight of the derivative quadrature, Y = quadrature_s dX/dt, s; 0 for none.
+    pub fn quadrature_s(&self, document: &Document, envelope: usize) -> f64 {
+        document.envelopes[envelope].derivative.map_or(0.0, |derivative| {
+            let (factor, against) = (self.values[derivative.factor.register as usize], self.values[derivative.against.register as usize]);
+            -factor / (RAD_PER_TURN * against)
+        })
+    }
+
+    /// The sweep of a pulse, if its carrier has one.
+    pub fn sweep(&self, pulse: &PlacedPulse) -> Option<Chirp> {
+        let carrier = &self.timeline.carriers[pulse.carrier?];
+        let formula = carrier.written.instantaneous.as_ref()?.bind(&self.values);
+        Some(Chirp::new(formula, carrier.centre_hz, pulse.length_s))
     }
 
     /// The size of an envelope on a drive at envelope 1: the Rabi frequency R of the reference pair, or the entry itself of a
