@@ -625,19 +625,27 @@ impl Fault {
             TargetSize { found, wanted } => say(format!("the target has {found} rows for {wanted} levels under within.")),
             NotDiagonal { operator } => say(format!("the operator \"{operator}\" is not diagonal and real, so it is no turn about z.")),
             Beat { drive, levels: [lower, upper], turns_hz, sum, closes_hz } => say("no rotating frame makes this time-independent.")
-                .why(format!("{lower} and {upper} are joined by other drives or carriers already: {sum}: {} remains.", short_with_unit(*turns_hz, "Hz")))
+                .why(format!(
+                    "{lower} and {upper} are joined by other drives or carriers already: {sum}: {} remains.",
+                    short_with_unit(*turns_hz, "Hz")
+                ))
                 .why(format!("The term of \"{drive}\" turns at that, slower than the limit, so it may not be dropped."))
                 .write(format!("carrier: {}      (then nothing remains)", short_with_unit(*closes_hz, "Hz")))
                 .write("allow_beat: true      under frame (keeps the term; the run is time-dependent)"),
-            DoubtfulDrop { drive, levels: [a, b], size_hz, turns_hz } => {
-                say(format!("a term of {drive} on {a} and {b} is dropped although it is large: {} turning at {}.", short_with_unit(*size_hz, "Hz"), short_with_unit(*turns_hz, "Hz")))
-                    .why("More than a tenth of its turning frequency is no longer small.")
-                    .write(format!("drop_terms_faster_than: {}", short_with_unit(2.0 * turns_hz, "Hz")))
+            DoubtfulDrop { drive, levels: [a, b], size_hz, turns_hz } => say(format!(
+                "a term of {drive} on {a} and {b} is dropped although it is large: {} turning at {}.",
+                short_with_unit(*size_hz, "Hz"),
+                short_with_unit(*turns_hz, "Hz")
+            ))
+            .why("More than a tenth of its turning frequency is no longer small.")
+            .write(format!("drop_terms_faster_than: {}", short_with_unit(2.0 * turns_hz, "Hz"))),
+            StartEliminated { level } => say(format!("the run starts in \"{level}\", which is eliminated."))
+                .write("a start in the levels that stay, or no eliminate"),
+            TooNear { levels, validity, limit } => {
+                say(format!("{} cannot be eliminated: coupling over detuning reaches {}.", list(levels), short(*validity)))
+                    .why(format!("The expansion is of second order in that ratio; from {} on it is refused.", short(*limit)))
+                    .write("the frame without eliminate, or a larger detuning")
             }
-            StartEliminated { level } => say(format!("the run starts in \"{level}\", which is eliminated.")).write("a start in the levels that stay, or no eliminate"),
-            TooNear { levels, validity, limit } => say(format!("{} cannot be eliminated: coupling over detuning reaches {}.", list(levels), short(*validity)))
-                .why(format!("The expansion is of second order in that ratio; from {} on it is refused.", short(*limit)))
-                .write("the frame without eliminate, or a larger detuning"),
             NoSuchNumber { name, near, known } => say(format!("the file has no number called \"{name}\"."))
                 .why(format!("Only named numbers can be set: {}.", list(known)))
                 .maybe(near, "--set "),

@@ -7,7 +7,7 @@ use super::scale::{engineering, superscript, ticks, Display};
 use super::scene::{Anchor, Scene};
 use super::thin::Run;
 
-/// Width of curves in pixels.
+/// Usual width of curves in pixels.
 pub const STROKE: f64 = 2.2;
 /// Pixels between markers on a curve.
 const MARKER_SPACING: f64 = 230.0;
@@ -120,6 +120,8 @@ pub struct Curve {
     pub bands: Vec<(Run, Run)>,
     /// How it looks.
     pub look: Look,
+    /// Width of its line in pixels.
+    pub width: f64,
 }
 
 /// Draws curves in one window: bands first, then curves (the first on top).
@@ -139,9 +141,9 @@ pub fn curves(scene: &mut Scene, window: &Window, vertical: &Vertical, curves: &
             let spots = marker_spots(&points, &mut next);
             if let [only] = points[..] {
                 // A lone point would be invisible as a line.
-                scene.line(vec![only, only], 3.0 * STROKE, curve.look.color);
+                scene.line(vec![only, only], 3.0 * curve.width, curve.look.color);
             } else {
-                scene.curve(straightened(points), STROKE, curve.look);
+                scene.curve(straightened(points), curve.width, curve.look);
             }
             if let Some(marker) = curve.look.marker {
                 for spot in spots {
@@ -194,7 +196,7 @@ pub fn names(scene: &mut Scene, edge: f64, vertical: &Vertical, curves: &[Curve]
     let room = (vertical.top + 4.0, vertical.bottom - 4.0);
     for ((curve, from), to) in named.iter().zip(apart(&wished, LINE, room.0, room.1)) {
         let end = edge + KEY - 10.0;
-        scene.curve(vec![(edge + 3.0, *from), (edge + 16.0, to), (end, to)], STROKE, curve.look);
+        scene.curve(vec![(edge + 3.0, *from), (edge + 16.0, to), (end, to)], curve.width, curve.look);
         if let Some(marker) = curve.look.marker {
             scene.marker((end - 11.0, to), marker, curve.look.color);
         }
