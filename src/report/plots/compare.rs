@@ -197,7 +197,7 @@ fn upper(figure: &CompareFigure, panel: &ComparePanel, window: &Window, count: u
 
 /// Look of variant `index`; 0 is the reference.
 fn variant_look(index: usize) -> Look {
-    let color: Rgb = if index == 0 { (150, 160, 178) } else { VARIANTS[(index - 1) % VARIANTS.len()] };
+    let color: Rgb = if index == 0 { (132, 144, 166) } else { VARIANTS[(index - 1) % VARIANTS.len()] };
     let Some(variant) = index.checked_sub(1) else { return Look { color, marker: None, dash: None } };
     let marker = (variant > 0).then(|| MARKERS[(variant - 1) % MARKERS.len()]);
     Look { color, marker, dash: DASHES[variant % DASHES.len()] }
@@ -218,12 +218,14 @@ fn lower(figure: &CompareFigure, panel: &ComparePanel, window: &Window, count: u
         let same = |variant: &CompareSeries| variant.name == series.name;
         let owner = panel.variants.iter().skip(1).position(same).map_or(index, |found| found);
         let runs = runs(figure, series, window, count);
+        // Differences lie apart, so that colour and marker do.
+        let look = Look { dash: None, ..variant_look(owner + 1) };
         let largest = extent(&runs).map(|(low, high)| low.abs().max(high.abs()));
         let size = largest.map_or(String::new(), |largest| {
             format!(" ≤ {}", if largest > 0.0 { quantity(round_up(largest), &panel.unit) } else { "0".into() })
         });
         let name = font::fit(&shown_name(&series.name, index), frame::LABEL, NAME_LIMIT - font::width(&size, frame::LABEL)) + &size;
-        drawn.push(Curve { name, runs, bands: Vec::new(), look: variant_look(owner + 1), width: STROKE });
+        drawn.push(Curve { name, runs, bands: Vec::new(), look, width: STROKE });
     }
     let (low, high) = extent(drawn.iter().flat_map(|curve| &curve.runs))?;
     let largest = low.abs().max(high.abs());
@@ -237,7 +239,8 @@ fn lower(figure: &CompareFigure, panel: &ComparePanel, window: &Window, count: u
             said = format!("tolerance {size}: too small to show here");
         } else {
             (low, high) = (low.min(-tolerance), high.max(tolerance));
-            drawn.extend(tolerance_lines(tolerance, &size, window));
+            // First, so that they lie on top.
+            drawn.splice(0..0, tolerance_lines(tolerance, &size, window));
         }
     }
     let vertical = Vertical::linear(None, Some((low, high)), &panel.unit);
@@ -253,7 +256,7 @@ fn tolerance_lines(tolerance: f64, size: &str, window: &Window) -> [Curve; 2] {
         let runs = vec![vec![(window.low, value), (window.high, value)]];
         Curve { name, runs, bands: Vec::new(), look, width: 1.2 }
     };
-    [line(tolerance, format!("tolerance {size}")), line(-tolerance, format!("−{size}"))]
+    [line(tolerance, format!("tolerance ±{size}")), line(-tolerance, String::new())]
 }
 
 /// Shares the height, two parts for curves and one for differences, and gives the height of the canvas.

@@ -149,12 +149,12 @@ impl<'a> Plot<'a> {
         let limit = limit.filter(near);
         let across = Decades::around(turning().chain(limit), 0.16);
         let largest = shown.iter().map(|term| size(term)).fold(0.0, f64::max);
-        // The axis reaches up to where the line of doubt meets the slowest dropped term, unless that is far above all terms.
+        // The axis reaches up to the line of doubt where dropping begins, unless that is far from all terms.
         let slowest = shown.iter().filter(|term| !term.kept && turns(term) > 0.0).map(|term| turns(term)).reduce(f64::min);
-        let tenth = slowest.map(|turns| DOUBTFUL * turns);
+        let tenth = limit.or(slowest).map(|turns| DOUBTFUL * turns);
         let seen = tenth.filter(|tenth| *tenth < 3e3 * largest && *tenth > 3e-3 * largest);
         let up = Decades::around(shown.iter().map(|term| size(term)).chain(seen), 0.16)?;
-        let tenth_above = tenth.is_some_and(|tenth| tenth.log10() > up.high);
+        let tenth_above = across.as_ref().is_some_and(|across| across.low + DOUBTFUL.log10() > up.high);
         let still: Vec<f64> = shown.iter().filter(|term| turns(term) == 0.0).map(|term| font::width(&wording(term), TICK)).collect();
         let strip = (!still.is_empty()).then(|| (0.0, still.iter().copied().fold(0.0, f64::max) + 70.0));
         Some(Plot { figure, limit, across, up, strip, top: 0.0, bottom: 0.0, left: 0.0, right: 0.0, tenth_above })
@@ -233,7 +233,7 @@ impl<'a> Plot<'a> {
         let at = |power: f64| (axis.pixel_of_power(power), self.up.pixel_of_power(power + shift));
         let doubt = (start < end).then(|| (at(start), at(end)));
         if let Some((from, to)) = doubt {
-            self.shade(scene, axis, (start, end), &at);
+            self.shade(scene, board, axis, (start, end), &at);
             scene.curve(vec![from, to], 1.6, Look { color: SOFT_INK, marker: None, dash: Some((9.0, 6.0)) });
             board.guides.push((from, to));
         }
@@ -252,7 +252,7 @@ impl<'a> Plot<'a> {
     }
 
     /// Tints where a dropped term is doubtful: beyond the limit and above the line.
-    fn shade(&self, scene: &mut Scene, axis: &Decades, (start, end): (f64, f64), at: &dyn Fn(f64) -> (f64, f64)) {
+    fn shade(&self, scene: &mut Scene, board: &mut Board, axis: &Decades, (start, end): (f64, f64), at: &dyn Fn(f64) -> (f64, f64)) {
         let low = self.limit.map_or(axis.low, f64::log10);
         let mut outline = vec![(axis.pixel_of_power(low), self.top)];
         if low < end {
@@ -267,6 +267,16 @@ impl<'a> Plot<'a> {
         }
         outline.push((axis.to, self.top));
         scene.area(outline, DROPPED.0, 0.07);
+        // At the height of the word the line of doubt must lie to the right of it.
+        let left = axis.pixel_of_power(low) + 14.0;
+        let own: Rect = (left - 4.0, left + font::width("doubtful", TICK) + 4.0, self.top + 6.0, self.top + 32.0);
+        let edge = start + (end - start) * ((at(start).1 - own.3) / (at(start).1 - at(end).1)).clamp(0.0, 1.0);
+        let room = if own.3 < at(end).1 { axis.to } else { axis.pixel_of_power(edge) };
+        let covered = |point: &(f64, f64)| point.0 + 14.0 > own.0 && point.0 - 14.0 < own.1 && point.1 - 14.0 < own.3;
+        if own.1 < room && !board.points.iter().any(covered) {
+            scene.text("doubtful", (left, self.top + 19.0), TICK, SOFT_INK, Anchor::Start);
+            board.taken.push(own);
+        }
     }
 
     /// Names of the first terms, as many as there is room for.

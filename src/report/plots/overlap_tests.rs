@@ -308,6 +308,7 @@ fn exact_each_dropped_term_has_its_cost_beside_it() {
         "size (MHz)",
         "kept",
         "dropped",
+        "doubtful",
     ];
     for said in said {
         assert!(texts.iter().any(|text| text == said), "{said} in {texts:?}");
@@ -362,7 +363,7 @@ fn exact_differences_name_reference_size_and_tolerance() {
     let said = |size: f64| checked(compare(&compare_figure(times(5, 1e-6), vec![panel(size)], Some(0.01))));
     let has = |texts: &[String], said: &str| assert!(texts.iter().any(|text| text == said), "{said} in {texts:?}");
     let texts = said(0.0123);
-    for expected in ["level 1: population", "minus lab", "lab", "rotating", "rotating ≤ 0.013", "tolerance 0.01", "−0.01"] {
+    for expected in ["level 1: population", "minus lab", "lab", "rotating", "rotating ≤ 0.013", "tolerance ±0.01"] {
         has(&texts, expected);
     }
     has(&said(1e-5), "all within the tolerance of 0.01");

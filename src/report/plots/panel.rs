@@ -196,7 +196,10 @@ pub fn names(scene: &mut Scene, edge: f64, vertical: &Vertical, curves: &[Curve]
     let room = (vertical.top + 4.0, vertical.bottom - 4.0);
     for ((curve, from), to) in named.iter().zip(apart(&wished, LINE, room.0, room.1)) {
         let end = edge + KEY - 10.0;
-        scene.curve(vec![(edge + 3.0, *from), (edge + 16.0, to), (end, to)], curve.width, curve.look);
+        scene.curve(vec![(edge + 3.0, *from), (edge + 16.0, to), (end, to)], curve.width.min(STROKE), curve.look);
+        if curve.width > STROKE {
+            scene.curve(vec![(edge + 18.0, to), (end, to)], curve.width, curve.look);
+        }
         if let Some(marker) = curve.look.marker {
             scene.marker((end - 11.0, to), marker, curve.look.color);
         }
