@@ -64,6 +64,8 @@ impl CompareSeries {
 /// Quantities in one figure, and curves in one panel; further ones are counted.
 const PANELS: usize = 4;
 const CURVES_SHOWN: usize = 9;
+/// Curves of a figure up to which variants are dashed.
+const DASHED: usize = 40;
 /// Pixels of a name at most.
 const NAME_LIMIT: f64 = 330.0;
 /// Width in pixels of the reference, which lies under the variants.
@@ -71,7 +73,7 @@ const STRONG: f64 = 5.0;
 /// Least heights in pixels of the two panels of a quantity.
 const LEAST: (f64, f64) = (170.0, 120.0);
 /// Dashes and markers of the variants, in order.
-const DASHES: [Option<(f64, f64)>; 4] = [Some((14.0, 8.0)), Some((3.0, 6.0)), Some((24.0, 7.0)), Some((8.0, 4.0))];
+const DASHES: [Option<(f64, f64)>; 4] = [Some((14.0, 8.0)), Some((4.0, 8.0)), Some((24.0, 7.0)), Some((9.0, 5.0))];
 const MARKERS: [Marker; 8] = [
     Marker::Disc(false),
     Marker::Triangle(true),
@@ -185,7 +187,10 @@ fn upper(figure: &CompareFigure, panel: &ComparePanel, window: &Window, count: u
         .map(|(index, series)| {
             let width = if index == 0 { STRONG } else { STROKE };
             let name = shown_name(&series.name, index);
-            Curve { name, runs: runs(figure, series, window, count), bands: Vec::new(), look: variant_look(index), width }
+            let look = variant_look(index);
+            // Every dash is a path of its own in the SVG; among many curves colour and marker must do.
+            let look = Look { dash: look.dash.filter(|_| count <= DASHED), ..look };
+            Curve { name, runs: runs(figure, series, window, count), bands: Vec::new(), look, width }
         })
         .collect();
     let vertical = Vertical::linear(panel.range, extent(drawn.iter().flat_map(|curve| &curve.runs)), &panel.unit);

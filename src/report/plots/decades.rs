@@ -96,7 +96,7 @@ mod tests {
     fn exact_numbers_stand_at_decades_or_at_1_2_5() {
         assert_eq!(numbers(&[1e6, 1e9]), ["0.001", "0.01", "0.1", "1"]);
         assert_eq!(numbers(&[5e6]), ["2", "5", "10"]);
-        assert_eq!(numbers(&[1.0, 1e16]), ["10⁻¹²", "10⁻¹⁰", "10⁻⁸", "10⁻⁶", "10⁻⁴", "0.01", "1", "100", "10⁴"]);
+        assert_eq!(numbers(&[1.0, 1e16]), ["10⁻¹²", "10⁻¹⁰", "10⁻⁸", "10⁻⁶", "10⁻⁴", "0.01", "1", "100", "10000"]);
         assert!(numbers(&[]).is_empty());
     }
 

@@ -94,9 +94,11 @@ pub fn ledger(figure: &LedgerFigure) -> Result<Drawn, PlotError> {
 fn shown(figure: &LedgerFigure) -> Vec<&LedgerTerm> {
     let known = |term: &&LedgerTerm| drawable(term.size_hz) && drawable(term.turns_at_hz) && size(term) > 1e-200;
     let mut terms: Vec<&LedgerTerm> = figure.terms.iter().filter(known).collect();
-    let (largest, fastest) = terms.iter().fold((0.0f64, 0.0f64), |(a, b), term| (a.max(size(term)), b.max(turns(term))));
     let floor = 10f64.powf(-LONGEST);
-    terms.retain(|term| size(term) >= floor * largest && (turns(term) == 0.0 || turns(term) >= floor * fastest));
+    let largest = terms.iter().map(|term| size(term)).fold(0.0, f64::max);
+    terms.retain(|term| size(term) >= floor * largest);
+    let fastest = terms.iter().map(|term| turns(term)).fold(0.0, f64::max);
+    terms.retain(|term| turns(term) == 0.0 || turns(term) >= floor * fastest);
     let ripple = |term: &LedgerTerm| term.ripple.map_or(size(term) / turns(term).max(1e-200), f64::abs);
     let rank = |term: &LedgerTerm| if term.kept { size(term) } else { ripple(term) };
     terms.sort_by(|a, b| a.kept.cmp(&b.kept).then(rank(b).total_cmp(&rank(a))));

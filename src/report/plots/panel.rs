@@ -169,7 +169,8 @@ fn marker_spots(points: &[(f64, f64)], next: &mut f64) -> Vec<(f64, f64)> {
     spots
 }
 
-/// Leaves out points that move the line by less than a tenth of a pixel: equal ones, and those inside flat stretches.
+/// Leaves out points that move the line by less than a fraction of a pixel: equal ones, those inside flat stretches, and those
+/// of a rise or fall that lie within a pixel of their predecessor.
 fn straightened(points: Vec<(f64, f64)>) -> Vec<(f64, f64)> {
     let near = |a: f64, b: f64| (a - b).abs() < 0.05;
     let mut kept: Vec<(f64, f64)> = Vec::with_capacity(points.len());
@@ -177,7 +178,9 @@ fn straightened(points: Vec<(f64, f64)>) -> Vec<(f64, f64)> {
         if let [.., before, last] = kept[..] {
             let level = near(before.1, last.1) && near(last.1, point.1);
             let upright = near(before.0, last.0) && near(last.0, point.0) && (last.1 - before.1) * (point.1 - last.1) >= 0.0;
-            if level || upright {
+            let (rise, next) = (last.1 - before.1, point.1 - last.1);
+            let close = rise * next > 0.0 && (last.0 - before.0).hypot(rise) + (point.0 - last.0).hypot(next) < 1.0;
+            if level || upright || close {
                 kept.pop();
             }
         }
