@@ -63,7 +63,7 @@ impl CompareSeries {
 
 /// Quantities in one figure, and curves in one panel; further ones are counted.
 const PANELS: usize = 4;
-const CURVES_SHOWN: usize = 9;
+const CURVES_SHOWN: usize = 7;
 /// Curves of a figure up to which variants are dashed.
 const DASHED: usize = 40;
 /// Pixels of a name at most.

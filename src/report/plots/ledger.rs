@@ -235,7 +235,7 @@ impl<'a> Plot<'a> {
         let at = |power: f64| (axis.pixel_of_power(power), self.up.pixel_of_power(power + shift));
         let doubt = (start < end).then(|| (at(start), at(end)));
         if let Some((from, to)) = doubt {
-            self.shade(scene, board, axis, (start, end), &at);
+            self.shade(scene, axis, (start, end), &at);
             scene.curve(vec![from, to], 1.6, Look { color: SOFT_INK, marker: None, dash: Some((9.0, 6.0)) });
             board.guides.push((from, to));
         }
@@ -250,11 +250,12 @@ impl<'a> Plot<'a> {
         }
         if let Some((from, to)) = doubt {
             name_line(scene, board, from, to, (axis.from + 6.0, axis.to - 6.0, self.top + 4.0, self.bottom - 4.0));
+            self.name_corner(scene, board, axis, from, to);
         }
     }
 
     /// Tints where a dropped term is doubtful: beyond the limit and above the line.
-    fn shade(&self, scene: &mut Scene, board: &mut Board, axis: &Decades, (start, end): (f64, f64), at: &dyn Fn(f64) -> (f64, f64)) {
+    fn shade(&self, scene: &mut Scene, axis: &Decades, (start, end): (f64, f64), at: &dyn Fn(f64) -> (f64, f64)) {
         let low = self.limit.map_or(axis.low, f64::log10);
         let mut outline = vec![(axis.pixel_of_power(low), self.top)];
         if low < end {
@@ -269,13 +270,18 @@ impl<'a> Plot<'a> {
         }
         outline.push((axis.to, self.top));
         scene.area(outline, DROPPED.0, 0.07);
-        // At the height of the word the line of doubt must lie to the right of it.
-        let left = axis.pixel_of_power(low) + 14.0;
+    }
+
+    /// Writes into the tinted corner what it means, where there is room.
+    fn name_corner(&self, scene: &mut Scene, board: &mut Board, axis: &Decades, from: (f64, f64), to: (f64, f64)) {
+        let left = self.limit.map_or(axis.from, |limit| axis.pixel(limit)) + 14.0;
         let own: Rect = (left - 4.0, left + font::width("doubtful", TICK) + 4.0, self.top + 6.0, self.top + 32.0);
-        let edge = start + (end - start) * ((at(start).1 - own.3) / (at(start).1 - at(end).1)).clamp(0.0, 1.0);
-        let room = if own.3 < at(end).1 { axis.to } else { axis.pixel_of_power(edge) };
+        // At the height of the word the line of doubt must lie to the right of it.
+        let share = ((from.1 - own.3) / (from.1 - to.1)).clamp(0.0, 1.0);
+        let room = if own.3 < to.1 { axis.to } else { from.0 + share * (to.0 - from.0) };
         let covered = |point: &(f64, f64)| point.0 + 14.0 > own.0 && point.0 - 14.0 < own.1 && point.1 - 14.0 < own.3;
-        if own.1 < room && !board.points.iter().any(covered) {
+        let overlaps = |other: &Rect| own.0 < other.1 && other.0 < own.1 && own.2 < other.3 && other.2 < own.3;
+        if own.1 < room && !board.points.iter().any(covered) && !board.taken.iter().any(overlaps) {
             scene.text("doubtful", (left, self.top + 19.0), TICK, SOFT_INK, Anchor::Start);
             board.taken.push(own);
         }
