@@ -14,8 +14,8 @@ use crate::problem::Sweep;
 use crate::report::fingerprint::fingerprint;
 use crate::report::heading::heading;
 use crate::report::plots::{
-    envelopes, spectrum, traces, Drawn, EnvelopeCurve, EnvelopesFigure, Panel, PlotError, PulseBar, PulseSpectrum, Series, SpectrumFigure,
-    TracesFigure,
+    compare, envelopes, ledger, spectrum, traces, CompareFigure, ComparePanel, CompareSeries, Drawn, EnvelopeCurve, EnvelopesFigure,
+    LedgerFigure, LedgerTerm, Panel, PlotError, PulseBar, PulseSpectrum, Series, SpectrumFigure, TracesFigure,
 };
 
 /// A plot by its file name, or why it could not be drawn.
@@ -49,17 +49,96 @@ pub fn of_columns(document: &Document, point: &Point, columns: &[Column], times_
                 drawn.push(("envelopes", envelopes(&envelopes_figure(document, point))))
             }
             Plot::Spectrum if !point.timeline.pulses.is_empty() => drawn.push(("spectrum", spectrum(&spectrum_figure(document, point)))),
+            Plot::Ledger if point.in_frame().is_some_and(|frame| !frame.rotated.ledger.lines.is_empty()) => {
+                drawn.push(("ledger", ledger(&ledger_figure(document, point))));
+            }
             _ => {}
         }
     }
     drawn
 }
 
-/// The plots of a comparison: those of the file as written.
+/// The plots of a comparison: variants over each other with their differences, and those of the file as written.
 pub fn of_comparison(document: &Document, comparison: &Comparison) -> Vec<Named> {
-    let written = comparison.computed.first();
-    let point = written.and_then(|computed| computed.plan.point().ok());
-    written.zip(point).map_or_else(Vec::new, |(computed, point)| of_run(document, &point, &computed.outcome))
+    let mut drawn = vec![("compare", compare(&compare_figure(document, comparison)))];
+    if let Some(written) = comparison.computed.first() {
+        if let Ok(point) = written.plan.point() {
+            drawn.extend(of_run(document, &point, &written.outcome));
+        }
+    }
+    drawn
+}
+
+/// The quantities that a comparison shows: those under `record: final`, or all of the reference.
+fn compare_figure(document: &Document, comparison: &Comparison) -> CompareFigure {
+    let reference = comparison.computed.iter().find(|computed| computed.name == comparison.against);
+    let mut figure = CompareFigure {
+        title: heading(document),
+        fingerprint: fingerprint(document),
+        reference: comparison.against.clone(),
+        tolerance: comparison.tolerance,
+        end_s: comparison.computed.iter().filter_map(|computed| computed.outcome.times_s.last().copied()).fold(0.0, f64::max),
+        ..CompareFigure::default()
+    };
+    let Some(reference) = reference else { return figure };
+    figure.time_s = reference.outcome.times_s.clone();
+    let compared: Vec<&str> =
+        comparison.held.iter().flat_map(|held| &held.differences).map(|difference| difference.quantity.as_str()).collect();
+    for column in reference.outcome.columns.iter().filter(|column| compared.contains(&column.name.as_str())) {
+        let of = |computed: &crate::compare::Computed| -> Option<Vec<f64>> {
+            let k = computed.outcome.columns.iter().position(|other| other.name == column.name)?;
+            Some(computed.outcome.rows.iter().skip(k).step_by(computed.outcome.columns.len()).copied().collect())
+        };
+        let Some(base) = of(reference) else { continue };
+        let mut variants = vec![CompareSeries { name: reference.name.clone(), time_s: None, values: base.clone() }];
+        let mut differences = Vec::new();
+        for computed in comparison.computed.iter().filter(|computed| computed.name != reference.name) {
+            let Some(values) = of(computed) else { continue };
+            let same = computed.outcome.times_s == reference.outcome.times_s;
+            if same {
+                let values = values.iter().zip(&base).map(|(a, b)| a - b).collect();
+                differences.push(CompareSeries { name: computed.name.clone(), time_s: None, values });
+            }
+            let time_s = (!same).then(|| computed.outcome.times_s.clone());
+            variants.push(CompareSeries { name: computed.name.clone(), time_s, values });
+        }
+        let unit = if column.unit == "1" { String::new() } else { column.unit.to_string() };
+        let range = (column.panel == "population").then_some((0.0, 1.0));
+        figure.panels.push(ComparePanel {
+            y_label: column.panel.to_string(),
+            unit,
+            quantity: column.name.clone(),
+            variants,
+            differences,
+            range,
+        });
+    }
+    figure
+}
+
+fn ledger_figure(document: &Document, point: &Point) -> LedgerFigure {
+    let names = &document.system.names;
+    let mut figure = LedgerFigure { title: heading(document), fingerprint: fingerprint(document), ..LedgerFigure::default() };
+    if let Some(frame) = point.in_frame() {
+        let ledger = &frame.rotated.ledger;
+        figure.limit_hz = ledger.limit_hz.is_finite().then_some(ledger.limit_hz);
+        figure.terms = ledger
+            .lines
+            .iter()
+            .map(|line| {
+                let [a, b] = line.levels();
+                LedgerTerm {
+                    label: format!("{}: {} to {}", crate::plan::source_name(document, line.key.source), names[a], names[b]),
+                    size_hz: line.size_hz,
+                    turns_at_hz: line.turns_at_hz,
+                    kept: line.kept,
+                    shift_hz: line.predicted_shift_hz(),
+                    ripple: line.predicted_ripple(),
+                }
+            })
+            .collect();
+    }
+    figure
 }
 
 /// Writes a plot in both forms, each to the side first and then renamed; gives the file names.
