@@ -351,6 +351,7 @@ fn time_axis(scene: &mut Scene, view: &View, y: f64) {
             with_unit("time", &display.unit)
         };
         let room = window.right - window.left + if view.broken { GAP - 16.0 } else { 0.0 };
+        let room = room.min(2.0 * (WIDTH - 4.0 - middle.0));
         scene.text(&font::fit(&label, LABEL, room), middle, LABEL, INK, Anchor::Middle);
     }
 }
