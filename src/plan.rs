@@ -59,6 +59,8 @@ pub struct Point<'p> {
     pub timeline: Timeline<'p>,
     /// The laboratory frame.
     lab: Problem,
+    /// The times of `record:` for which the moments were found.
+    rows: Vec<f64>,
     /// The frame of the run, where it is another.
     frame: Option<InFrame>,
     /// Warnings that depend on the numbers.
@@ -158,7 +160,8 @@ impl Plan {
             .max()
             .unwrap_or(0);
         let set = vec![None; size as usize];
-        let mut point = Point { values, set, energies_hz, couplings, curves, timeline, lab, frame: None, warnings: Vec::new() };
+        let mut point =
+            Point { values, set, energies_hz, couplings, curves, timeline, lab, rows: Vec::new(), frame: None, warnings: Vec::new() };
         point.segment(document, put_back)?;
         let touched = Touched::by(document, &numbers);
         Ok(Mover { document, numbers, touched, put_back: put_back.to_vec(), point })
@@ -317,7 +320,13 @@ impl Point<'_> {
     fn segment(&mut self, document: &Document, put_back: &[TermKey]) -> Result<(), Mistake> {
         let parts = self.parts(document)?;
         let (segments, terms) = cut(&self.timeline, &|pulse| parts[&part_key(pulse)].clone());
-        self.lab.moments = moments(document, &self.values, &segments, self.timeline.end.seconds())?;
+        let same_times = segments.len() == self.lab.segments.len()
+            && segments.iter().zip(&self.lab.segments).all(|(a, b)| a.start == b.start && a.length_s == b.length_s);
+        let asked = rows_of(document, &self.values);
+        if !same_times || self.lab.moments.is_empty() || asked != self.rows {
+            self.lab.moments = moments(document, &self.values, &segments, self.timeline.end.seconds())?;
+            self.rows = asked;
+        }
         self.lab.segments = segments;
         self.lab.terms = terms;
         self.warnings.clear();
@@ -626,6 +635,15 @@ fn timeline<'p>(
 
 fn start_state(document: &Document, values: &[f64]) -> Vector {
     model::amplitudes(document.system.names.len(), &document.start, values)
+}
+
+/// The numbers that `record: every` or `at` come to.
+fn rows_of(document: &Document, values: &[f64]) -> Vec<f64> {
+    match &document.record.rows {
+        Rows::Unsaid => Vec::new(),
+        Rows::Every(every) => vec![values[every.register as usize]],
+        Rows::At(list) => list.iter().map(|at| values[at.register as usize]).collect(),
+    }
 }
 
 /// The moments to record: those asked for, and the end of the sequence.
