@@ -51,6 +51,8 @@ pub type Stumble = (usize, usize, Fault);
 
 /// Deepest nesting of brackets in one value.
 const DEEPEST: usize = 64;
+/// Most operations in one value: a sum is a tree as deep as it has terms, and every later stage walks down that tree.
+const MOST_OPERATIONS: usize = 1000;
 
 /// Parses a whole value.
 pub fn parse(text: &str) -> Result<Expression, Stumble> {
@@ -59,6 +61,7 @@ pub fn parse(text: &str) -> Result<Expression, Stumble> {
         chars: &chars,
         at: 0,
         depth: 0,
+        operations: 0,
     };
     let expression = parser.whole()?;
     parser.blanks();
@@ -72,6 +75,7 @@ struct Parser<'a> {
     chars: &'a [char],
     at: usize,
     depth: usize,
+    operations: usize,
 }
 
 fn starts_word(c: char) -> bool {
@@ -146,6 +150,19 @@ impl Parser<'_> {
         }
     }
 
+    /// Two values joined by an operation, which counts.
+    fn joined(&mut self, sign: char, left: Expression, right: Expression, start: usize) -> Result<Expression, Stumble> {
+        self.operations += 1;
+        if self.operations > MOST_OPERATIONS {
+            return Err((
+                right.start.saturating_sub(1),
+                1,
+                Fault::TooManyOperations { limit: MOST_OPERATIONS },
+            ));
+        }
+        Ok(self.made(start, Kind::Binary(sign, Box::new(left), Box::new(right))))
+    }
+
     fn deeper<T>(&mut self, inner: impl FnOnce(&mut Self) -> Result<T, Stumble>) -> Result<T, Stumble> {
         self.depth += 1;
         if self.depth > DEEPEST {
@@ -166,7 +183,7 @@ impl Parser<'_> {
             self.at += 5;
             let right = self.sum()?;
             let sign = if word == "above" { 'a' } else { 'b' };
-            return Ok(self.made(start, Kind::Binary(sign, Box::new(left), Box::new(right))));
+            return self.joined(sign, left, right, start);
         }
         Ok(left)
     }
@@ -181,7 +198,7 @@ impl Parser<'_> {
                 Some(sign @ ('+' | '-')) => {
                     self.at += 1;
                     let right = self.product()?;
-                    left = self.made(start, Kind::Binary(sign, Box::new(left), Box::new(right)));
+                    left = self.joined(sign, left, right, start)?;
                 }
                 _ => return Ok(left),
             }
@@ -198,7 +215,7 @@ impl Parser<'_> {
                 Some(sign @ ('*' | '/')) => {
                     self.at += 1;
                     let right = self.signed()?;
-                    left = self.made(start, Kind::Binary(sign, Box::new(left), Box::new(right)));
+                    left = self.joined(sign, left, right, start)?;
                 }
                 _ => return Ok(left),
             }
@@ -243,7 +260,7 @@ impl Parser<'_> {
         if self.peek() == Some('^') {
             self.at += 1;
             let exponent = self.deeper(Self::signed)?;
-            return Ok(self.made(start, Kind::Binary('^', Box::new(base), Box::new(exponent))));
+            return self.joined('^', base, exponent, start);
         }
         Ok(base)
     }

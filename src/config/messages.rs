@@ -81,6 +81,9 @@ pub enum Fault {
     TooDeep {
         limit: usize,
     },
+    TooManyOperations {
+        limit: usize,
+    },
     KeyNotText,
     DuplicateKey {
         key: String,
@@ -579,6 +582,9 @@ impl Fault {
             TooDeep { limit } => {
                 say(format!("brackets or blocks are nested more than {limit} deep here.")).why("No section of a config needs that depth.")
             }
+            TooManyOperations { limit } => say(format!("more than {limit} operations stand in this one value."))
+                .why("So long a formula cannot be checked by eye. Parts of it can be named under numbers:, a curve can come from a file.")
+                .write("shape: samples, with file:   (for a curve)"),
             KeyNotText => say("a list or a block stands here where a name is expected.").write("name: value"),
             DuplicateKey { key, first } => say(format!("the key \"{key}\" appears twice in this block (first on line {first})."))
                 .why("YAML readers often keep only the last one.")
@@ -1060,7 +1066,7 @@ fn one(sources: &Sources, mistake: &Mistake, lines: &[u32]) -> String {
     if place.line > 0 {
         text.push_str(&format!(", line {}, column {}", place.line, place.column));
     }
-    text.push_str(&format!(": {}\n", words.fact));
+    text.push_str(&format!(": {}\n", shortened(&words.fact)));
     if let Some(line) = sources.line(place.file, place.line) {
         let (shown, column) = window(line, place.column as usize);
         let room = shown.chars().count().saturating_sub(column - 1).max(1);
@@ -1073,12 +1079,25 @@ fn one(sources: &Sources, mistake: &Mistake, lines: &[u32]) -> String {
         text.push_str(&format!("  The same on {}.\n", others.join(", ")));
     }
     for line in &words.why {
-        text.push_str(&format!("  {line}\n"));
+        text.push_str(&format!("  {}\n", shortened(line)));
     }
     for line in &words.write {
-        text.push_str(&format!("  Write: {line}\n"));
+        text.push_str(&format!("  Write: {}\n", shortened(line)));
     }
     text
+}
+
+/// A sentence that quotes something very long, with its middle left out.
+fn shortened(sentence: &str) -> String {
+    const LONG: usize = 400;
+    const KEPT: usize = 180;
+    let count = sentence.chars().count();
+    if count <= LONG {
+        return sentence.to_string();
+    }
+    let head: String = sentence.chars().take(KEPT).collect();
+    let tail: String = sentence.chars().skip(count - KEPT).collect();
+    format!("{head} .. {tail}")
 }
 
 /// A part of a long line around the marked column, and the column within it.
@@ -1097,11 +1116,14 @@ fn window(line: &str, column: usize) -> (String, usize) {
 /// A mistake as one line, for lists of warnings.
 pub fn one_line(sources: &Sources, mistake: &Mistake) -> String {
     let words = mistake.fault.words();
-    let write = words.write.first().map_or(String::new(), |write| format!(" Write: {write}"));
+    let write = words
+        .write
+        .first()
+        .map_or(String::new(), |write| format!(" Write: {}", shortened(write)));
     format!(
         "{}, line {}: {}{write}",
         sources.name(mistake.place.file),
         mistake.place.line,
-        words.fact
+        shortened(&words.fact)
     )
 }
