@@ -421,8 +421,12 @@ fn no_bytes_break_the_road_to_a_plan() {
     while from.elapsed().as_secs() < seconds && broken.len() < 20 {
         let seed = draws.below(seeds.len());
         let mut text = seeds[seed].text.clone();
-        // the first round takes the seeds as they are
-        let changes = if inputs < seeds.len() as u64 { 0 } else { 1 + draws.below(5) };
+        // the first round takes the seeds as they are; later half of the inputs have one change, so that many still make sense
+        let changes = match inputs {
+            round if round < seeds.len() as u64 => 0,
+            _ if draws.below(2) == 0 => 1,
+            _ => 2 + draws.below(4),
+        };
         for _ in 0..changes {
             let other = draws.below(seeds.len());
             mutate(&mut text, &seeds[other].text, &mut draws);

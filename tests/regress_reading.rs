@@ -21,3 +21,15 @@ fn regress_a_long_name_was_quoted_whole() {
     assert!(message.contains("no envelope is called \"flatflat"), "{message}");
     assert!(message.lines().all(|line| line.chars().count() <= 500), "{message}");
 }
+
+/// Found by mutation: for each value of a line the line was walked from its start, and a list of thirty thousand took 15 s.
+#[test]
+fn regress_a_long_line_took_the_square_of_its_length() {
+    let samples = vec!["0.5"; 100_000].join(", ");
+    let pulse = format!("{{shape: samples, between: hold, length: 2 us, peak: 0.7 MHz, samples: [{samples}]}}");
+    let text = rig::ONE_PULSE.replace("{shape: square, length: 2 us, peak: 0.7 MHz}", &pulse);
+    let clock = std::time::Instant::now();
+    rig::document(&text, &[]);
+    // 0.2 s; it was three minutes
+    assert!(clock.elapsed().as_secs_f64() < 5.0, "{:?}", clock.elapsed());
+}
