@@ -33,3 +33,16 @@ fn regress_a_long_line_took_the_square_of_its_length() {
     // 0.2 s; it was three minutes
     assert!(clock.elapsed().as_secs_f64() < 5.0, "{:?}", clock.elapsed());
 }
+
+/// Found by mutation: each of many mistakes kept the list of all names and was compared with all others.
+#[test]
+fn regress_a_hundred_thousand_mistakes_took_a_minute() {
+    let names: Vec<String> = (0..100_000).map(|k| format!("x{k}")).collect();
+    let text = rig::ONE_PULSE.replace("populations: all", &format!("populations: [{}]", names.join(", ")));
+    let clock = std::time::Instant::now();
+    let message = rig::refusal(&text);
+    assert!(message.contains("no level is called \"x0\""), "{message}");
+    assert!(message.contains("and at least 1980 more mistakes after these 20."), "{message}");
+    // 0.1 s; it was 78 s
+    assert!(clock.elapsed().as_secs_f64() < 5.0, "{:?}", clock.elapsed());
+}

@@ -8,6 +8,8 @@ use crate::units::Dim;
 
 /// How many mistakes are printed at once.
 pub const MOST_SHOWN: usize = 20;
+/// Most mistakes kept of one file. A hundred thousand, each with the list of all known names, would fill the memory.
+pub const MOST_KEPT: usize = 2000;
 
 /// A fault and where it stands.
 #[derive(Debug, Clone, PartialEq)]
@@ -1033,6 +1035,8 @@ impl Fault {
 pub fn render(sources: &Sources, mistakes: &[Mistake]) -> String {
     let mut sorted: Vec<&Mistake> = mistakes.iter().collect();
     sorted.sort_by_key(|mistake| (mistake.warning, mistake.place));
+    let many = if sorted.len() >= MOST_KEPT { "at least " } else { "" };
+    sorted.truncate(MOST_KEPT);
     let mut groups: Vec<(&Mistake, Vec<u32>)> = Vec::new();
     for mistake in sorted {
         match groups
@@ -1051,7 +1055,7 @@ pub fn render(sources: &Sources, mistakes: &[Mistake]) -> String {
     }
     if groups.len() > MOST_SHOWN {
         text.push_str(&format!(
-            "and {} more mistakes after these {MOST_SHOWN}.\n",
+            "and {many}{} more mistakes after these {MOST_SHOWN}.\n",
             groups.len() - MOST_SHOWN
         ));
     }

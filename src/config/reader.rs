@@ -5,7 +5,7 @@ use std::collections::{HashMap, HashSet};
 use std::path::PathBuf;
 
 use super::expression::{self, Expression};
-use super::messages::{Fault, Mistake};
+use super::messages::{Fault, Mistake, MOST_KEPT};
 use super::place::{Place, Sources};
 use super::tape::{Entry as TapeEntry, Formula, One, Register, Tape, Two};
 use super::tree::{Entry, Kind, Node};
@@ -178,12 +178,17 @@ impl Reader {
 
     /// Notes an error.
     pub fn error(&mut self, place: Place, fault: Fault) {
-        self.mistakes.push(Mistake::error(place, fault));
+        if self.mistakes.len() < MOST_KEPT {
+            self.mistakes.push(Mistake::error(place, fault));
+        }
     }
 
     /// Notes a warning.
     pub fn warn(&mut self, place: Place, fault: Fault) {
-        self.mistakes.push(Mistake::warning(place, fault));
+        // half of the room is left for errors, so that none goes unseen for warnings
+        if self.mistakes.len() < MOST_KEPT / 2 {
+            self.mistakes.push(Mistake::warning(place, fault));
+        }
     }
 
     /// Notes a default that was used.
