@@ -4,6 +4,7 @@
 //! value within its tolerance, an error figure no larger than `accuracy: final`, and an honest one (no listed absolute number is
 //! off by more than the figure, four rounding units and the uncertainty of the expected value). Of a bad config: exit status,
 //! file, line and column, the words that must be said, no more than fourteen lines a mistake, no file left.
+#![allow(clippy::unwrap_used)] // a test may end at the first surprise
 
 use std::fs;
 use std::path::{Path, PathBuf};

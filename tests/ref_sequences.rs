@@ -1,4 +1,5 @@
 //! Whole configs against numbers of mpmath and SciPy; tests/reference/sequences.py made sequences.json.
+#![allow(clippy::unwrap_used)] // a test may end at the first surprise
 
 mod rig;
 

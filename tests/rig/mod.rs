@@ -1,4 +1,5 @@
 //! From the text of a config to its numbers, in process.
+#![allow(clippy::unwrap_used)] // a test may end at the first surprise
 #![allow(dead_code)] // each test file uses its part
 
 use std::path::Path;
