@@ -2,8 +2,11 @@
 #![deny(unsafe_code)]
 
 pub mod cli;
+pub mod compare;
 pub mod config;
 pub mod drive;
+pub mod frame;
+pub mod known;
 pub mod measure;
 pub mod model;
 pub mod outcome;

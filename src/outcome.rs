@@ -4,11 +4,12 @@
 use std::time::Instant as Clock;
 
 use crate::config::document::Document;
+use crate::config::record::Item;
 use crate::config::settings::MethodWord;
-use crate::measure::{observables, Column, GateFigures, TraceRecorder};
+use crate::measure::{observables, Column, GateFigures, QuasiEnergy, QuasiRecorder, TraceRecorder};
 use crate::plan::Point;
 use crate::problem::{Matrix, Vector};
-use crate::propagate::{figure, solve, Asked, CrossCheck, Method, Recorder};
+use crate::propagate::{figure, solve, Asked, CrossCheck, Demand, Method, Recorder};
 
 /// A final number with its error.
 #[derive(Debug, Clone, PartialEq)]
@@ -47,8 +48,12 @@ pub struct Outcome {
     pub finals: Vec<Final>,
     /// Figures of the gate.
     pub gate: Option<GateFigures>,
+    /// The propagator of the whole sequence, wherever one was computed.
+    pub whole: Option<Matrix>,
     /// The propagator, where it is recorded, and its error figure.
     pub propagator: Option<(Matrix, f64)>,
+    /// Levels of the driven system: period in s, what was found, and the error of q in turns.
+    pub quasi_energies: Option<(f64, Vec<QuasiEnergy>, f64)>,
     /// Amplitudes at the end.
     pub end_state: Vector,
     /// The method where H changes.
@@ -74,7 +79,7 @@ pub struct Outcome {
 /// Computes a point.
 pub fn compute(document: &Document, point: &Point) -> Outcome {
     let clock = Clock::now();
-    let problem = &point.problem;
+    let problem = point.problem();
     let observables = observables(document, &point.values, &point.energies_hz, problem);
     let columns = observables.columns();
     let scales: Vec<f64> = columns.iter().map(|column| column.scale).collect();
@@ -88,8 +93,16 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
         },
         cross_check: document.accuracy.cross_check,
     };
-    let solved = solve(problem, &observables.demand, &asked, || {
-        TraceRecorder::new(&observables, problem, &scales)
+    let solved = solve(problem, &observables.demand, &asked, || TraceRecorder::new(&observables, problem, &scales));
+
+    let quasi = document.record.items.iter().find_map(|item| match item {
+        Item::QuasiEnergies(period) => Some(point.values[period.register as usize]),
+        _ => None,
+    });
+    let quasi = quasi.map(|period_s| {
+        let one = problem.first(period_s);
+        let demand = Demand { propagator: true, time_in: false };
+        (period_s, solve(&one, &demand, &Asked { cross_check: false, ..asked }, QuasiRecorder::default))
     });
 
     let (recorded, finer) = (&solved.recorded, &solved.finer);
@@ -100,13 +113,7 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
         .map(|(k, column)| {
             let (value, finer) = (recorded.value(end, k), finer.value(end, k));
             let error = figure(value / column.scale, finer / column.scale, solved.floor) * column.scale;
-            Final {
-                name: column.name.clone(),
-                unit: column.unit,
-                value,
-                finer,
-                error,
-            }
+            Final { name: column.name.clone(), unit: column.unit, value, finer, error }
         })
         .collect();
     let (last, finer_last) = (recorded.last(), finer.last());
@@ -117,44 +124,22 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
         if name.starts_with("propagator_") {
             whole_error = whole_error.max(error);
         } else {
-            finals.push(Final {
-                name,
-                unit: "1",
-                value: *value,
-                finer: *finer,
-                error,
-            });
+            finals.push(Final { name, unit: "1", value: *value, finer: *finer, error });
         }
     }
-    let gate = observables
-        .gate
-        .as_ref()
-        .zip(recorded.propagator.as_ref())
-        .map(|(judge, propagator)| judge.judge(propagator));
-    let propagator = recorded
-        .propagator
-        .clone()
-        .filter(|_| observables.propagator)
-        .map(|propagator| (propagator, whole_error));
-    let rows = recorded.numbers()[..(end + 1) * columns.len()]
-        .iter()
-        .enumerate()
-        .map(|(k, number)| number * scales[k % scales.len()])
-        .collect();
+    let gate = observables.gate.as_ref().zip(recorded.propagator.as_ref()).map(|(judge, propagator)| judge.judge(propagator));
+    let propagator = recorded.propagator.clone().filter(|_| observables.propagator).map(|propagator| (propagator, whole_error));
+    let rows =
+        recorded.numbers()[..(end + 1) * columns.len()].iter().enumerate().map(|(k, number)| number * scales[k % scales.len()]).collect();
     let cross_check = solved.cross_check.as_ref().map(|check| match check {
-        CrossCheck::Done { method, difference, .. } => Crossing {
-            method: method.clone(),
-            difference: Ok(*difference),
-        },
-        CrossCheck::Skipped { method, reason } => Crossing {
-            method: method.clone(),
-            difference: Err(reason.clone()),
-        },
+        CrossCheck::Done { method, difference, .. } => Crossing { method: method.clone(), difference: Ok(*difference) },
+        CrossCheck::Skipped { method, reason } => Crossing { method: method.clone(), difference: Err(reason.clone()) },
     });
     Outcome {
         times_s: problem.moments.iter().map(|moment| moment.time_s).collect(),
         rows,
         finals,
+        whole: recorded.propagator.clone(),
         gate,
         propagator,
         end_state: recorded.end_state.clone().unwrap_or_else(|| problem.start.clone()),
@@ -162,9 +147,10 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
         reason: solved.reason.clone(),
         steps: solved.steps,
         resolutions: solved.resolutions.clone().map(|resolution| resolution.words),
-        error_figure: solved.error_figure,
+        error_figure: quasi.as_ref().map_or(solved.error_figure, |(_, quasi)| quasi.error_figure.max(solved.error_figure)),
         floor: solved.floor,
-        reached: solved.reached,
+        reached: solved.reached && quasi.as_ref().is_none_or(|(_, quasi)| quasi.reached),
+        quasi_energies: quasi.map(|(period_s, quasi)| (period_s, quasi.recorded.found.unwrap_or_default(), quasi.error_figure)),
         cross_check,
         seconds: clock.elapsed().as_secs_f64(),
         columns,

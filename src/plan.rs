@@ -11,16 +11,22 @@ use std::sync::Arc;
 use crate::config::document::{not_finite, Document};
 use crate::config::drives::Form;
 use crate::config::envelopes::{Envelope, Samples, SizeWord};
-use crate::config::messages::{Fault, Mistake};
-use crate::config::record::Rows;
+use crate::config::messages::{short_with_unit, Fault, Mistake};
+use crate::config::record::{Item, Rows};
+use crate::config::settings::{Follows, Frame, Rotating};
 use crate::config::state::State;
-use crate::config::tape::{Entry, Formula, Register};
+use crate::config::tape::{Entry, Formula, Register, Wide};
 use crate::drive::chirp::Chirp;
 use crate::drive::coupling::{coupling, Coupling, CouplingFault};
 use crate::drive::envelope::{self, Curve, FormulaCurve, Parameters, Pieces, ShapeFault};
 use crate::drive::segments::{cut, PulseParts};
 use crate::drive::signal::Signal;
 use crate::drive::timeline::{lay_out, PlacedPulse, Timeline};
+use crate::frame::eliminate::{eliminate, Elimination, LARGEST_VALIDITY};
+use crate::frame::follow::level_turning;
+use crate::frame::ledger::{Source, TermKey};
+use crate::frame::rotating::{rotate, Beat, Rotated, Setting};
+use crate::measure::breaks_period;
 use crate::model;
 use crate::problem::{Matrix, Moment, Problem, Segment, Vector};
 use crate::units::{rad_s, RAD_PER_TURN};
@@ -41,6 +47,8 @@ pub struct Plan {
 pub struct Point<'p> {
     /// Registers of the tape.
     pub values: Vec<f64>,
+    /// Moved numbers, by index.
+    set: Vec<Option<f64>>,
     /// Diagonal of the static Hamiltonian, Hz.
     pub energies_hz: Vec<f64>,
     /// Matrices of the drives.
@@ -49,8 +57,21 @@ pub struct Point<'p> {
     pub curves: Vec<Arc<dyn Curve>>,
     /// The sequence in time.
     pub timeline: Timeline<'p>,
-    /// What the methods see.
-    pub problem: Problem,
+    /// The laboratory frame.
+    lab: Problem,
+    /// The frame of the run, where it is another.
+    frame: Option<InFrame>,
+    /// Warnings that depend on the numbers.
+    pub warnings: Vec<Mistake>,
+}
+
+/// A point in a rotating frame.
+#[derive(Debug, Clone)]
+pub struct InFrame {
+    /// The problem in the frame, the ledger, and how the levels turn.
+    pub rotated: Rotated,
+    /// What was eliminated, if anything.
+    pub elimination: Option<Elimination>,
 }
 
 /// Which parts of a point the moved numbers touch.
@@ -69,7 +90,7 @@ pub struct Mover<'p> {
     document: &'p Document,
     numbers: Vec<u32>,
     touched: Touched,
-    set: Vec<Option<f64>>,
+    put_back: Vec<TermKey>,
     point: Point<'p>,
 }
 
@@ -89,9 +110,17 @@ impl Plan {
         Ok(self.mover(&[])?.point)
     }
 
-    /// A point in which the numbers of these names will be moved. `None` inside the error's place is never met: names that do
-    /// not exist are refused with the names that do.
+    /// The same with some terms kept that the frame would drop.
+    pub fn point_with(&self, put_back: &[TermKey]) -> Result<Point<'_>, Mistake> {
+        Ok(self.mover_with(&[], put_back)?.point)
+    }
+
+    /// A point in which the numbers of these names will be moved; a name that does not exist is refused.
     pub fn mover(&self, names: &[&str]) -> Result<Mover<'_>, Mistake> {
+        self.mover_with(names, &[])
+    }
+
+    fn mover_with(&self, names: &[&str], put_back: &[TermKey]) -> Result<Mover<'_>, Mistake> {
         let document = &self.document;
         let mut numbers = Vec::new();
         for name in names {
@@ -100,27 +129,19 @@ impl Plan {
                 None => {
                     let known: Vec<String> = document.numbers.iter().map(|number| number.name.clone()).collect();
                     let near = crate::config::reader::near(name, known.iter().map(String::as_str));
-                    let fault = Fault::NoSuchNumber {
-                        name: (*name).to_string(),
-                        near,
-                        known,
-                    };
+                    let fault = Fault::NoSuchNumber { name: (*name).to_string(), near, known };
                     return Err(Mistake::error(Default::default(), fault));
                 }
             }
         }
-        let values = document.tape.evaluate(&[]);
+        let values = document.tape.as_written();
         if let Some(mistake) = not_finite(&document.tape, &values, &document.sources) {
             return Err(mistake);
         }
         let (statics, energies_hz) = statics(document, &values);
         let couplings = couplings(document, &energies_hz, &values)?;
-        let curves: Vec<Arc<dyn Curve>> = document
-            .envelopes
-            .iter()
-            .map(|envelope| curve(envelope, &values))
-            .collect::<Result<_, _>>()?;
-        let problem = Problem {
+        let curves: Vec<Arc<dyn Curve>> = document.envelopes.iter().map(|envelope| curve(envelope, &values)).collect::<Result<_, _>>()?;
+        let lab = Problem {
             statics: Arc::new(statics),
             matrices: Arc::new(couplings.iter().map(|coupling| coupling.turning.clone()).collect()),
             segments: Vec::new(),
@@ -129,36 +150,18 @@ impl Plan {
             moments: Vec::new(),
         };
         let timeline = timeline(document, &values, &couplings, &curves)?;
-        let mut point = Point {
-            values,
-            energies_hz,
-            couplings,
-            curves,
-            timeline,
-            problem,
-        };
-        point.segment(document)?;
-        let touched = Touched::by(document, &numbers);
         let size = document
             .tape
             .entries()
             .iter()
-            .filter_map(|entry| {
-                if let Entry::Number(index, _) = entry {
-                    Some(index + 1)
-                } else {
-                    None
-                }
-            })
+            .filter_map(|entry| if let Entry::Number(index, _) = entry { Some(index + 1) } else { None })
             .max()
             .unwrap_or(0);
-        Ok(Mover {
-            document,
-            numbers,
-            touched,
-            set: vec![None; size as usize],
-            point,
-        })
+        let set = vec![None; size as usize];
+        let mut point = Point { values, set, energies_hz, couplings, curves, timeline, lab, frame: None, warnings: Vec::new() };
+        point.segment(document, put_back)?;
+        let touched = Touched::by(document, &numbers);
+        Ok(Mover { document, numbers, touched, put_back: put_back.to_vec(), point })
     }
 
     /// Whether moving these numbers changes the structure (a count of levels or of repeats), so that the file must be read anew.
@@ -191,36 +194,32 @@ impl<'p> Mover<'p> {
     /// Moves the numbers to `values` (SI, in the order of the names) and replays what they touch.
     pub fn at(&mut self, values: &[f64]) -> Result<&Point<'p>, Mistake> {
         for (number, value) in self.numbers.iter().zip(values) {
-            self.set[*number as usize] = Some(*value);
+            self.point.set[*number as usize] = Some(*value);
         }
         let (document, point, touched) = (self.document, &mut self.point, &self.touched);
-        document.tape.replay(&touched.registers, &self.set, &mut point.values);
-        if touched
-            .registers
-            .iter()
-            .any(|register| !point.values[*register as usize].is_finite())
-        {
+        document.tape.replay(&touched.registers, &point.set, &mut point.values);
+        if touched.registers.iter().any(|register| !point.values[*register as usize].is_finite()) {
             if let Some(mistake) = not_finite(&document.tape, &point.values, &document.sources) {
                 return Err(mistake);
             }
         }
         if touched.statics {
             let (statics, energies) = statics(document, &point.values);
-            point.problem.statics = Arc::new(statics);
+            point.lab.statics = Arc::new(statics);
             point.energies_hz = energies;
         }
         if touched.statics || touched.couplings {
             point.couplings = couplings(document, &point.energies_hz, &point.values)?;
-            point.problem.matrices = Arc::new(point.couplings.iter().map(|coupling| coupling.turning.clone()).collect());
+            point.lab.matrices = Arc::new(point.couplings.iter().map(|coupling| coupling.turning.clone()).collect());
         }
         for (k, envelope) in document.envelopes.iter().enumerate().filter(|(k, _)| touched.curves[*k]) {
             point.curves[k] = curve(envelope, &point.values)?;
         }
         if touched.start {
-            point.problem.start = start_state(document, &point.values);
+            point.lab.start = start_state(document, &point.values);
         }
         point.timeline = timeline(document, &point.values, &point.couplings, &point.curves)?;
-        point.segment(document)?;
+        point.segment(document, &self.put_back)?;
         Ok(point)
     }
 }
@@ -234,13 +233,7 @@ impl Touched {
         }
         let is = |register: Register| moved[register as usize];
         let entries = |entries: &[crate::config::matrix::MatrixEntry]| entries.iter().any(|e| is(e.value.re) || e.value.im.is_some_and(is));
-        let formula = |formula: &Formula| {
-            formula
-                .tape
-                .entries()
-                .iter()
-                .any(|entry| matches!(entry, Entry::Outer(from) if is(*from)))
-        };
+        let formula = |formula: &Formula| formula.tape.entries().iter().any(|entry| matches!(entry, Entry::Outer(from) if is(*from)));
         let curves = document
             .envelopes
             .iter()
@@ -264,6 +257,34 @@ impl Touched {
     }
 }
 
+/// How a source of terms is called.
+pub fn source_name(document: &Document, source: Source) -> String {
+    match source {
+        Source::Drive(drive) => document.drives[drive].name.clone(),
+        Source::Static => "static".to_string(),
+    }
+}
+
+/// The carriers that do not close, as a mistake at the carrier of the drive whose term beats.
+fn beat_mistake(document: &Document, beat: &Beat, carrier_hz: &dyn Fn(usize) -> f64) -> Mistake {
+    let drive = &document.drives[beat.drive];
+    let place = drive.carrier.as_ref().map_or(drive.place, |carrier| carrier.centre.place);
+    let mut sum = String::new();
+    for (d, count) in beat.counts.iter().enumerate().filter(|(_, count)| **count != 0) {
+        let sign = match (count.signum(), sum.is_empty()) {
+            (1, true) => "",
+            (1, false) => " + ",
+            (_, true) => "-",
+            (_, false) => " - ",
+        };
+        let times = if count.abs() == 1 { String::new() } else { format!("{} x ", count.abs()) };
+        sum.push_str(&format!("{sign}{times}{} ({})", short_with_unit(carrier_hz(d), "Hz"), document.drives[d].name));
+    }
+    let [upper, lower] = beat.levels.map(|level| document.system.names[level].clone());
+    let closes_hz = carrier_hz(beat.drive) - beat.turns_hz;
+    Mistake::error(place, Fault::Beat { drive: drive.name.clone(), levels: [lower, upper], turns_hz: beat.turns_hz.abs(), sum, closes_hz })
+}
+
 /// Drive, envelope and carrier of a pulse.
 type PartKey = (usize, usize, Option<usize>);
 
@@ -272,14 +293,125 @@ fn part_key(pulse: &PlacedPulse) -> PartKey {
 }
 
 impl Point<'_> {
-    /// Cuts the timeline into segments and finds the moments to record.
-    fn segment(&mut self, document: &Document) -> Result<(), Mistake> {
+    /// What the methods see.
+    pub fn problem(&self) -> &Problem {
+        self.frame.as_ref().map_or(&self.lab, |frame| &frame.rotated.problem)
+    }
+
+    /// The rotating frame, if the run is in one.
+    pub fn in_frame(&self) -> Option<&InFrame> {
+        self.frame.as_ref()
+    }
+
+    /// Turns that each level's frame has made at the end of the sequence; 0 in the laboratory frame.
+    pub fn end_turns(&self) -> Vec<f64> {
+        self.frame.as_ref().map_or_else(|| vec![0.0; self.energies_hz.len()], |frame| frame.rotated.end_turns.clone())
+    }
+
+    /// The problem of the laboratory frame.
+    pub fn lab(&self) -> &Problem {
+        &self.lab
+    }
+
+    /// Cuts the timeline into segments, finds the moments to record, and goes to the frame of the run.
+    fn segment(&mut self, document: &Document, put_back: &[TermKey]) -> Result<(), Mistake> {
         let parts = self.parts(document)?;
         let (segments, terms) = cut(&self.timeline, &|pulse| parts[&part_key(pulse)].clone());
-        self.problem.moments = moments(document, &self.values, &segments, self.timeline.end.seconds())?;
-        self.problem.segments = segments;
-        self.problem.terms = terms;
+        self.lab.moments = moments(document, &self.values, &segments, self.timeline.end.seconds())?;
+        self.lab.segments = segments;
+        self.lab.terms = terms;
+        self.warnings.clear();
+        self.frame = match &document.frame {
+            Frame::Lab => None,
+            Frame::Rotating(frame) => Some(self.rotate(document, frame, &parts, put_back)?),
+        };
+        self.judge_periods(document)
+    }
+
+    /// Quasi-energies need a drive that repeats, in the frame of the run.
+    fn judge_periods(&self, document: &Document) -> Result<(), Mistake> {
+        for item in &document.record.items {
+            let Item::QuasiEnergies(period) = item else { continue };
+            let period_s = self.values[period.register as usize];
+            let end_s = self.timeline.end.seconds();
+            if !(period_s > 0.0) {
+                let fault = Fault::NotPositive { what: "quasi_energies / period".to_string(), value: period_s, unit: "s".to_string() };
+                return Err(Mistake::error(period.place, fault));
+            }
+            if period_s > end_s * (1.0 + 1e-12) {
+                return Err(Mistake::error(period.place, Fault::PeriodTooLong { period_s, end_s }));
+            }
+            if let Some(at_s) = breaks_period(self.problem(), period_s) {
+                return Err(Mistake::error(period.place, Fault::NotPeriodic { period_s, at_s }));
+            }
+        }
         Ok(())
+    }
+
+    /// The point in its rotating frame.
+    fn rotate(
+        &mut self,
+        document: &Document,
+        frame: &Rotating,
+        parts: &HashMap<PartKey, Arc<PulseParts>>,
+        put_back: &[TermKey],
+    ) -> Result<InFrame, Mistake> {
+        let set: Vec<Option<Wide>> = self.set.iter().map(|value| value.map(|value| Wide { high: value, low: 0.0 })).collect();
+        let wide = document.tape.evaluate::<Wide>(&set);
+        let mut energies = vec![Wide::default(); self.energies_hz.len()];
+        for entry in document.system.entries.iter().filter(|entry| entry.row == entry.column) {
+            energies[entry.row] = energies[entry.row].plus(wide[entry.value.re as usize]);
+        }
+        let carriers: Vec<Wide> = self.timeline.carriers.iter().map(|carrier| wide[carrier.written.centre.register as usize]).collect();
+        let mut sizes: HashMap<(usize, Option<usize>), f64> = HashMap::new();
+        for pulse in &self.timeline.pulses {
+            let size = parts[&part_key(pulse)].half_rabi_hz.abs() * self.curves[pulse.envelope].largest();
+            let largest = sizes.entry((pulse.drive, pulse.carrier)).or_insert(0.0);
+            *largest = largest.max(size);
+        }
+        let turning = level_turning(document, frame, &self.couplings, &self.energies_hz, &self.values);
+        let limit_hz = frame.limit.map_or(f64::INFINITY, |limit| self.values[limit.register as usize]);
+        let direct: Vec<bool> = document.drives.iter().map(|drive| drive.form == Form::Direct).collect();
+        let setting = Setting {
+            timeline: &self.timeline,
+            couplings: &self.couplings,
+            direct: &direct,
+            energies_hz: &energies,
+            carriers_hz: &carriers,
+            sizes_hz: &sizes,
+            turning: &turning,
+            limit_hz,
+            put_back,
+        };
+        let mut rotated = rotate(&self.lab, &setting);
+        if let (Follows::Drives, false, Some(_), Some(beat)) = (&frame.follows, frame.allow_beat, frame.limit, rotated.beats.first()) {
+            let first = &self.timeline.first_carriers;
+            return Err(beat_mistake(document, beat, &|drive| first[drive].map_or(0.0, |carrier| carriers[carrier].value())));
+        }
+        let name = |level: usize| document.system.names[level].clone();
+        for line in rotated.ledger.lines.iter().filter(|line| line.is_doubtful()) {
+            let fault = Fault::DoubtfulDrop {
+                drive: source_name(document, line.key.source),
+                levels: line.levels().map(name),
+                size_hz: line.size_hz,
+                turns_hz: line.turns_at_hz,
+            };
+            self.warnings.push(Mistake::warning(frame.place, fault));
+        }
+        let mut elimination = None;
+        if !frame.eliminate.is_empty() {
+            if let Some(level) = frame.eliminate.iter().find(|level| self.lab.start[**level].norm() > 1e-12) {
+                return Err(Mistake::error(frame.place, Fault::StartEliminated { level: name(*level) }));
+            }
+            let (problem, done) = eliminate(&rotated.problem, &frame.eliminate);
+            if !(done.validity < LARGEST_VALIDITY) {
+                let levels = frame.eliminate.iter().map(|level| name(*level)).collect();
+                return Err(Mistake::error(frame.place, Fault::TooNear { levels, validity: done.validity, limit: LARGEST_VALIDITY }));
+            }
+            rotated.problem = problem;
+            elimination = Some(done);
+        }
+        Ok(InFrame { rotated, elimination })
     }
 
     /// What each combination of drive, envelope and carrier in use is made of.
@@ -301,52 +433,21 @@ impl Point<'_> {
         // R/2 turns with the carrier; a direct drive's entry is halved in its matrix instead
         let half_rabi_hz = if form == Form::Direct { peak_hz } else { 0.5 * peak_hz };
         let quadrature_s = envelope.derivative.map_or(0.0, |derivative| {
-            let (factor, against) = (
-                self.values[derivative.factor.register as usize],
-                self.values[derivative.against.register as usize],
-            );
+            let (factor, against) = (self.values[derivative.factor.register as usize], self.values[derivative.against.register as usize]);
             -factor / (RAD_PER_TURN * against)
         });
         if !quadrature_s.is_finite() {
             let place = envelope.derivative.map_or(envelope.place, |derivative| derivative.against.place);
-            return Err(Mistake::error(
-                place,
-                Fault::ZeroDivision {
-                    text: "against is 0".to_string(),
-                },
-            ));
+            return Err(Mistake::error(place, Fault::ZeroDivision { text: "against is 0".to_string() }));
         }
         let chirp = pulse.carrier.and_then(|index| {
             let carrier = &self.timeline.carriers[index];
             let formula = carrier.written.instantaneous.as_ref()?;
             Some(Arc::new(Chirp::new(formula.bind(&self.values), carrier.centre_hz, pulse.length_s)))
         });
-        let mut pieces = curve.pieces();
-        if chirp.is_some() {
-            if let Pieces::Constant(value) = pieces {
-                // constant in size, but its phase is not
-                pieces = Pieces::Held {
-                    starts_s: [0.0].into(),
-                    values: [value].into(),
-                };
-            }
-        }
-        let signal = matches!(pieces, Pieces::Smooth { .. }).then(|| {
-            Arc::new(Signal {
-                curve: curve.clone(),
-                held: None,
-                quadrature_s,
-                chirp: chirp.clone(),
-            })
-        });
-        Ok(PulseParts {
-            curve,
-            pieces,
-            half_rabi_hz,
-            quadrature_s,
-            chirp,
-            signal,
-        })
+        let pieces = curve.pieces();
+        let signal = matches!(pieces, Pieces::Smooth { .. }).then(|| Arc::new(Signal { curve, quadrature_s }));
+        Ok(PulseParts { pieces, half_rabi_hz, chirp, signal })
     }
 
     /// The size of an envelope on a drive at envelope 1: the Rabi frequency R of the reference pair, or the entry itself of a
@@ -362,12 +463,7 @@ impl Point<'_> {
                 let area = self.curves[envelope].area_s();
                 let whole = self.curves[envelope].length_s() * self.curves[envelope].largest();
                 if size != 0.0 && !(area.abs() > 1e-12 * whole) {
-                    return Err(Mistake::error(
-                        written.size_place,
-                        Fault::NoArea {
-                            envelope: written.name.clone(),
-                        },
-                    ));
+                    return Err(Mistake::error(written.size_place, Fault::NoArea { envelope: written.name.clone() }));
                 }
                 Ok(if size == 0.0 { 0.0 } else { size / area })
             }
@@ -377,19 +473,14 @@ impl Point<'_> {
                     if !per_volt.is_finite() {
                         return Err(Mistake::error(
                             calibration.volts.place,
-                            Fault::ZeroDivision {
-                                text: "volts of the calibration are 0".to_string(),
-                            },
+                            Fault::ZeroDivision { text: "volts of the calibration are 0".to_string() },
                         ));
                     }
                     Ok(size * per_volt)
                 }
                 None => Err(Mistake::error(
                     written.size_place,
-                    Fault::NoCalibration {
-                        envelope: written.name.clone(),
-                        drive: drive.name.clone(),
-                    },
+                    Fault::NoCalibration { envelope: written.name.clone(), drive: drive.name.clone() },
                 )),
             },
         }
@@ -408,20 +499,12 @@ fn couplings(document: &Document, energies: &[f64], values: &[f64]) -> Result<Ve
         coupling(drive, energies, values).map_err(|fault| match fault {
             CouplingFault::ReferenceZero([from, to]) => {
                 let names = &document.system.names;
-                let fault = Fault::NoSuchCoupling {
-                    drive: drive.name.clone(),
-                    from: names[from].clone(),
-                    to: names[to].clone(),
-                };
+                let fault = Fault::NoSuchCoupling { drive: drive.name.clone(), from: names[from].clone(), to: names[to].clone() };
                 Mistake::error(drive.reference_place, fault)
             }
-            CouplingFault::NotHermitian => Mistake::error(
-                drive.place,
-                Fault::NotHermitianDrive {
-                    drive: drive.name.clone(),
-                    operator: "its operator".to_string(),
-                },
-            ),
+            CouplingFault::NotHermitian => {
+                Mistake::error(drive.place, Fault::NotHermitianDrive { drive: drive.name.clone(), operator: "its operator".to_string() })
+            }
         })
     };
     document.drives.iter().map(one).collect()
@@ -433,17 +516,11 @@ fn curve(envelope: &Envelope, values: &[f64]) -> Result<Arc<dyn Curve>, Mistake>
     if let Some(formula) = &envelope.formula {
         let length = time("length").unwrap_or(0.0);
         if !(length > 0.0) {
-            return Err(shape_mistake(
-                envelope,
-                ShapeFault::NotPositive {
-                    key: "length",
-                    value: length,
-                },
-            ));
+            return Err(shape_mistake(envelope, ShapeFault::NotPositive { key: "length", value: length }));
         }
         let curve = FormulaCurve::new(formula.bind(values), length);
         if let Some(t) = curve.gap_s() {
-            let text = format!("the formula at t = {}", crate::config::messages::short_with_unit(t, "s"));
+            let text = format!("the formula at t = {}", short_with_unit(t, "s"));
             return Err(Mistake::error(formula.place, Fault::NotFinite { text }));
         }
         return Ok(Arc::new(curve));
@@ -476,14 +553,9 @@ fn shape_mistake(envelope: &Envelope, fault: ShapeFault) -> Mistake {
     let at = |key: &str| envelope.time(key).map_or(envelope.place, |quantity| quantity.place);
     let samples = |reason: String| Mistake::error(envelope.place, Fault::Samples { reason });
     match fault {
-        ShapeFault::NotPositive { key, value } => Mistake::error(
-            at(key),
-            Fault::NotPositive {
-                what: format!("envelopes / {name} / {key}"),
-                value,
-                unit: "s".to_string(),
-            },
-        ),
+        ShapeFault::NotPositive { key, value } => {
+            Mistake::error(at(key), Fault::NotPositive { what: format!("envelopes / {name} / {key}"), value, unit: "s".to_string() })
+        }
         ShapeFault::EdgesTooLong { rise_s, length_s } => Mistake::error(at("rise"), Fault::EdgesTooLong { rise_s, length_s }),
         ShapeFault::FlatLift { .. } => Mistake::error(at("cut_at"), Fault::FlatLift { envelope: name }),
         ShapeFault::NothingToLift => {
@@ -491,24 +563,12 @@ fn shape_mistake(envelope: &Envelope, fault: ShapeFault) -> Mistake {
             let hint = Some("This curve starts at 0, so there is no pedestal to take off.".to_string());
             Mistake::error(
                 envelope.place,
-                Fault::UnknownWord {
-                    what: "edge".to_string(),
-                    found: "lift".to_string(),
-                    known,
-                    near: None,
-                    hint,
-                },
+                Fault::UnknownWord { what: "edge".to_string(), found: "lift".to_string(), known, near: None, hint },
             )
         }
         ShapeFault::UnknownShape { word } => Mistake::error(
             envelope.place,
-            Fault::UnknownWord {
-                what: "shape".to_string(),
-                found: word,
-                known: Vec::new(),
-                near: None,
-                hint: None,
-            },
+            Fault::UnknownWord { what: "shape".to_string(), found: word, known: Vec::new(), near: None, hint: None },
         ),
         ShapeFault::Missing { key } => {
             let fault = Fault::MissingKey {
@@ -521,14 +581,7 @@ fn shape_mistake(envelope: &Envelope, fault: ShapeFault) -> Mistake {
         }
         ShapeFault::NotOneOf { keys, .. } => {
             let keys = keys.iter().map(|key| (*key).to_string()).collect();
-            Mistake::error(
-                envelope.place,
-                Fault::OneOfMissing {
-                    keys,
-                    section: format!("envelopes / {name}"),
-                    hint: None,
-                },
-            )
+            Mistake::error(envelope.place, Fault::OneOfMissing { keys, section: format!("envelopes / {name}"), hint: None })
         }
         ShapeFault::TooFewSamples { found, needed } => samples(format!("there are {found}, and at least {needed} are needed")),
         ShapeFault::SampleNotFinite { index, .. } => samples(format!("sample number {} is not finite", index + 1)),
@@ -537,23 +590,16 @@ fn shape_mistake(envelope: &Envelope, fault: ShapeFault) -> Mistake {
         ShapeFault::TimesNotAscending { index, .. } => {
             samples(format!("the time of sample number {} is not later than the one before", index + 1))
         }
-        ShapeFault::UnequalSteps { index, .. } => samples(format!(
-            "band limited needs equal steps, and the step before sample number {} differs",
-            index + 1
-        )),
+        ShapeFault::UnequalSteps { index, .. } => {
+            samples(format!("band limited needs equal steps, and the step before sample number {} differs", index + 1))
+        }
         ShapeFault::EndsBeforeLastSample { length_s, last_s } => {
-            let length = crate::config::messages::short_with_unit(length_s, "s");
-            samples(format!(
-                "length is {length}, but the last sample starts at {}",
-                crate::config::messages::short_with_unit(last_s, "s")
-            ))
+            let length = short_with_unit(length_s, "s");
+            samples(format!("length is {length}, but the last sample starts at {}", short_with_unit(last_s, "s")))
         }
         ShapeFault::LengthDisagrees { length_s, last_s } => {
-            let length = crate::config::messages::short_with_unit(length_s, "s");
-            samples(format!(
-                "length is {length}, but the last sample stands at {}",
-                crate::config::messages::short_with_unit(last_s, "s")
-            ))
+            let length = short_with_unit(length_s, "s");
+            samples(format!("length is {length}, but the last sample stands at {}", short_with_unit(last_s, "s")))
         }
     }
 }
@@ -591,11 +637,7 @@ fn moments(document: &Document, values: &[f64], segments: &[Segment], end_s: f64
             if !(step > 0.0) {
                 return Err(Mistake::error(
                     every.place,
-                    Fault::NotPositive {
-                        what: "record / every".to_string(),
-                        value: step,
-                        unit: "s".to_string(),
-                    },
+                    Fault::NotPositive { what: "record / every".to_string(), value: step, unit: "s".to_string() },
                 ));
             }
             let rows = (end_s + close) / step;
@@ -609,14 +651,10 @@ fn moments(document: &Document, values: &[f64], segments: &[Segment], end_s: f64
             for at in list {
                 let time_s = values[at.register as usize];
                 if time_s < 0.0 {
-                    let found = crate::config::messages::short_with_unit(time_s, "s");
+                    let found = short_with_unit(time_s, "s");
                     return Err(Mistake::error(
                         at.place,
-                        Fault::OutOfRange {
-                            what: "a recorded time".to_string(),
-                            found,
-                            wanted: "0 or later".to_string(),
-                        },
+                        Fault::OutOfRange { what: "a recorded time".to_string(), found, wanted: "0 or later".to_string() },
                     ));
                 }
                 if time_s > end_s + close {
@@ -645,11 +683,7 @@ fn moments(document: &Document, values: &[f64], segments: &[Segment], end_s: f64
             // at the very end the exact length counts, not the rounded time
             let here = &segments[segment];
             let offset = at.since(here.start).clamp(0.0, here.length_s);
-            let offset_s = if segment == last && here.length_s - offset <= close {
-                here.length_s
-            } else {
-                offset
-            };
+            let offset_s = if segment == last && here.length_s - offset <= close { here.length_s } else { offset };
             Moment { segment, offset_s, time_s }
         })
         .collect())

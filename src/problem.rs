@@ -3,12 +3,12 @@
 //! Time is cut into segments. In the segment that starts at t0, with tau = t - t0,
 //!
 //! ```text
-//! H(t) = A + sum_k ( c_k(tau) exp(-2 pi i (p_k + f_k tau)) B_k + adjoint )
+//! H(t) = A + sum_k ( c_k(tau) exp(-2 pi i (p_k + f_k tau + sweeps_k(tau))) B_k + adjoint )
 //! ```
 //!
 //! with constant matrices A (Hermitian, rad/s) and B_k (no dimension, any matrix), a turning frequency f_k in turns per second
 //! (0 where nothing turns), the phase p_k in turns that the turning has reached at the start of the segment (already
-//! reduced modulo one turn), and a slow complex envelope c_k in rad/s. i d(psi)/dt = H(t) psi, hbar = 1.
+//! reduced modulo one turn), the sweeps of chirped carriers, and a slow complex envelope c_k in rad/s. i d(psi)/dt = H(t) psi, hbar = 1.
 //!
 //! The turning is kept apart from the envelope because frames rewrite it. A method never asks where a coefficient came from.
 
@@ -58,7 +58,26 @@ impl Envelope {
     }
 }
 
-/// One turning term `c exp(-2 pi i (p + f tau)) B + adjoint` of one segment.
+/// A swept turning: turns beyond those of its centre, as a smooth function of time.
+pub trait Sweep: Debug + Send + Sync {
+    /// Turns since the start of the pulse, beyond those of the centre.
+    fn turns(&self, t_s: f64) -> f64;
+    /// Their rate, Hz.
+    fn offset_hz(&self, t_s: f64) -> f64;
+}
+
+/// A sweep that a term takes part in; frames change how often.
+#[derive(Debug, Clone)]
+pub struct Chirped {
+    /// The sweep.
+    pub sweep: Arc<dyn Sweep>,
+    /// How long its pulse had lasted at the start of the segment, s.
+    pub since_s: f64,
+    /// The term turns by exp(-2 pi i times sweep).
+    pub times: f64,
+}
+
+/// One turning term `c exp(-2 pi i (p + f tau + sweeps)) B + adjoint` of one segment.
 #[derive(Debug, Clone)]
 pub struct Term {
     /// Which of [`Problem::matrices`] is B.
@@ -69,6 +88,25 @@ pub struct Term {
     pub phase_turns: f64,
     /// c, in rad/s.
     pub envelope: Envelope,
+    /// Swept carriers that it turns with; mostly none.
+    pub chirps: Vec<Chirped>,
+}
+
+impl Term {
+    /// The envelope with its sweeps, but without the even turning, in rad/s.
+    pub fn slow(&self, tau_s: f64) -> Complex64 {
+        let value = self.envelope.at(tau_s);
+        if self.chirps.is_empty() {
+            return value;
+        }
+        let turns: f64 = self.chirps.iter().map(|chirp| chirp.times * chirp.sweep.turns(chirp.since_s + tau_s)).sum();
+        value * cis_turns(-turns)
+    }
+
+    /// Whether nothing but the even turning changes within the segment.
+    pub fn is_constant(&self) -> bool {
+        self.chirps.is_empty() && matches!(self.envelope, Envelope::Constant(_))
+    }
 }
 
 /// A moment as the unevaluated sum of two doubles, so that nanoseconds stay exact beside seconds.
@@ -90,19 +128,12 @@ impl Instant {
         let part = sum - self.high;
         let lost = (self.high - (sum - part)) + (s - part) + self.low;
         let high = sum + lost;
-        Instant {
-            high,
-            low: lost - (high - sum),
-        }
+        Instant { high, low: lost - (high - sum) }
     }
 
     /// This moment counted from `earlier`.
     pub fn minus(self, earlier: Instant) -> Instant {
-        Instant::default()
-            .after(self.high)
-            .after(-earlier.high)
-            .after(self.low)
-            .after(-earlier.low)
+        Instant::default().after(self.high).after(-earlier.high).after(self.low).after(-earlier.low)
     }
 
     /// Seconds from `earlier` to this moment.
@@ -179,7 +210,7 @@ impl Problem {
     pub fn hamiltonian(&self, segment: &Segment, tau_s: f64) -> Matrix {
         let mut h = (*self.statics).clone();
         for term in self.terms_of(segment) {
-            let c = term.envelope.at(tau_s) * cis_turns(-(term.phase_turns + term.turns_hz * tau_s));
+            let c = term.slow(tau_s) * cis_turns(-(term.phase_turns + term.turns_hz * tau_s));
             let b = &self.matrices[term.matrix];
             for j in 0..b.ncols() {
                 for i in 0..b.nrows() {
@@ -190,6 +221,30 @@ impl Problem {
             }
         }
         h
+    }
+
+    /// The first `length_s` seconds alone, with their end as the only moment.
+    pub fn first(&self, length_s: f64) -> Problem {
+        let mut segments: Vec<Segment> = Vec::new();
+        let mut left = length_s;
+        for segment in &self.segments {
+            if left <= 0.0 {
+                break;
+            }
+            // what is left by rounding alone is no further segment
+            let cut = segment.length_s.min(left);
+            left -= cut;
+            segments.push(Segment { length_s: cut, ..segment.clone() });
+            if left <= 1e-12 * length_s {
+                break;
+            }
+        }
+        let end = Moment {
+            segment: segments.len().saturating_sub(1),
+            offset_s: segments.last().map_or(0.0, |last| last.length_s),
+            time_s: length_s,
+        };
+        Problem { segments, moments: vec![end], ..self.clone() }
     }
 
     /// Length of the whole sequence, s.

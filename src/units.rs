@@ -201,11 +201,7 @@ impl Dim {
         let mut under = Vec::new();
         let mut put = |name: &str, twelfths: i16| {
             let power = f64::from(twelfths.abs()) / f64::from(TWELFTHS);
-            let text = if power == 1.0 {
-                name.to_string()
-            } else {
-                format!("{name}^{power}")
-            };
+            let text = if power == 1.0 { name.to_string() } else { format!("{name}^{power}") };
             if twelfths > 0 {
                 over.push(text)
             } else if twelfths < 0 {
@@ -288,27 +284,15 @@ pub fn unit(symbol: &str) -> Option<Unit> {
     if symbol == "debye" {
         // 1e-21 C m^2/s over c; in Hz per V/m
         let dim = Dim::FREQUENCY.over(Dim::ELECTRIC_FIELD);
-        return Some(Unit {
-            dim,
-            factor: 1e-21 / LIGHT / PLANCK,
-            cyclic: false,
-        });
+        return Some(Unit { dim, factor: 1e-21 / LIGHT / PLANCK, cyclic: false });
     }
     if let Some((name, dim, factor)) = PLAIN.iter().find(|(name, ..)| *name == symbol) {
-        return Some(Unit {
-            dim: *dim,
-            factor: *factor,
-            cyclic: *name == "turn",
-        });
+        return Some(Unit { dim: *dim, factor: *factor, cyclic: *name == "turn" });
     }
     let found = |name: &str, power: f64| {
         let (_, dim, factor) = PREFIXED.iter().find(|(known, ..)| *known == name)?;
         // "S" is a sample only with a prefix or per second: a lone S is no unit
-        Some(Unit {
-            dim: *dim,
-            factor: factor * power,
-            cyclic: *dim == Dim::FREQUENCY && name == "Hz",
-        })
+        Some(Unit { dim: *dim, factor: factor * power, cyclic: *dim == Dim::FREQUENCY && name == "Hz" })
     };
     if symbol != "S" {
         if let Some(unit) = found(symbol, 1.0) {
@@ -334,14 +318,10 @@ pub fn unit(symbol: &str) -> Option<Unit> {
 /// A known unit that differs from `symbol` only in case, for messages.
 pub fn unit_of_other_case(symbol: &str) -> Option<String> {
     let lower = symbol.to_lowercase();
-    let symbols = PREFIXED
-        .iter()
-        .flat_map(|(name, ..)| ["", "f", "p", "n", "u", "m", "k", "M", "G", "T"].map(|prefix| format!("{prefix}{name}")));
+    let symbols =
+        PREFIXED.iter().flat_map(|(name, ..)| ["", "f", "p", "n", "u", "m", "k", "M", "G", "T"].map(|prefix| format!("{prefix}{name}")));
     let plain = PLAIN.iter().map(|(name, ..)| (*name).to_string());
-    let mut near: Vec<String> = symbols
-        .chain(plain)
-        .filter(|known| known.to_lowercase() == lower && unit(known).is_some())
-        .collect();
+    let mut near: Vec<String> = symbols.chain(plain).filter(|known| known.to_lowercase() == lower && unit(known).is_some()).collect();
     // of milli and mega, the one a drive is more likely to have
     near.sort_by_key(|known| usize::from(known.starts_with('m') && known.len() > 2 && lower.ends_with("hz")));
     near.into_iter().next()

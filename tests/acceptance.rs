@@ -57,11 +57,7 @@ fn call(words: &[&str], longest_s: f64) -> Result<Output, String> {
             }
             std::thread::sleep(Duration::from_millis(2));
         };
-        Ok(Output {
-            status,
-            stdout: out.join().unwrap(),
-            stderr: err.join().unwrap(),
-        })
+        Ok(Output { status, stdout: out.join().unwrap(), stderr: err.join().unwrap() })
     })
 }
 
@@ -113,15 +109,10 @@ fn at_path<'v>(tree: &'v Value, path: &str) -> Result<&'v Value, String> {
 
 /// Headings and rows of a CSV file.
 fn table(path: &Path) -> Result<(Vec<String>, Vec<Vec<String>>), String> {
-    let mut reader = csv::ReaderBuilder::new()
-        .comment(Some(b'#'))
-        .from_path(path)
-        .map_err(|error| format!("{}: {error}", path.display()))?;
+    let mut reader =
+        csv::ReaderBuilder::new().comment(Some(b'#')).from_path(path).map_err(|error| format!("{}: {error}", path.display()))?;
     let head = reader.headers().unwrap().iter().map(str::to_string).collect();
-    let rows = reader
-        .records()
-        .map(|row| row.unwrap().iter().map(str::to_string).collect())
-        .collect();
+    let rows = reader.records().map(|row| row.unwrap().iter().map(str::to_string).collect()).collect();
     Ok((head, rows))
 }
 
@@ -131,11 +122,7 @@ fn cell(folder: &Path, check: &Value) -> Result<Value, String> {
     let (head, rows) = table(&folder.join(file))?;
     let column = check["column"].as_str().unwrap();
     let at_s = check["at_s"].as_f64().unwrap();
-    let place = |name: &str| {
-        head.iter()
-            .position(|heading| heading == name)
-            .ok_or(format!("{file} has no column {name}"))
-    };
+    let place = |name: &str| head.iter().position(|heading| heading == name).ok_or(format!("{file} has no column {name}"));
     let (time, column) = (place("time_s")?, place(column)?);
     let row = rows
         .iter()
@@ -185,10 +172,7 @@ fn judge(check: &Value, found: &Value) -> Result<f64, String> {
     if good {
         Ok(number)
     } else {
-        Err(format!(
-            "{label} is {number:e}, wanted {kind} {wanted:e} (off by {:.2e})",
-            number - wanted
-        ))
+        Err(format!("{label} is {number:e}, wanted {kind} {wanted:e} (off by {:.2e})", number - wanted))
     }
 }
 
@@ -196,23 +180,14 @@ fn judge(check: &Value, found: &Value) -> Result<f64, String> {
 fn accuracy_asked(config: &str) -> Option<f64> {
     let from = config.find("accuracy:")?;
     let at = config[from..].find("final:")? + from + "final:".len();
-    let text: String = config[at..]
-        .trim_start()
-        .chars()
-        .take_while(|c| "0123456789.eE+-".contains(*c))
-        .collect();
+    let text: String = config[at..].trim_start().chars().take_while(|c| "0123456789.eE+-".contains(*c)).collect();
     text.parse().ok()
 }
 
 /// What a case falls short of.
 fn faults(folder: &Path) -> Vec<String> {
     let expect = json(&folder.join("expect.json"));
-    let words: Vec<&str> = expect["command"]
-        .as_array()
-        .unwrap()
-        .iter()
-        .map(|word| word.as_str().unwrap())
-        .collect();
+    let words: Vec<&str> = expect["command"].as_array().unwrap().iter().map(|word| word.as_str().unwrap()).collect();
     let config = folder.join("config.yaml");
     let results = tempfile::tempdir().unwrap();
     let explains = words[0] == "explain";
@@ -273,10 +248,7 @@ fn faults(folder: &Path) -> Vec<String> {
 
 /// Judges all folders of tests/cases whose verb is `verb`; `least` guards against judging none.
 fn judge_cases(verb: &str, least: usize) {
-    let mut folders: Vec<PathBuf> = fs::read_dir(tests().join("cases"))
-        .unwrap()
-        .map(|entry| entry.unwrap().path())
-        .collect();
+    let mut folders: Vec<PathBuf> = fs::read_dir(tests().join("cases")).unwrap().map(|entry| entry.unwrap().path()).collect();
     folders.retain(|folder| json(&folder.join("expect.json"))["command"][0] == verb);
     folders.sort();
     assert!(folders.len() >= least, "only {} cases of {verb}", folders.len());
@@ -288,13 +260,7 @@ fn judge_cases(verb: &str, least: usize) {
             (!faults.is_empty()).then(|| format!("{name}: {}", faults.join("\n    ")))
         })
         .collect();
-    assert!(
-        short.is_empty(),
-        "{} of {} fall short:\n{}",
-        short.len(),
-        folders.len(),
-        short.join("\n")
-    );
+    assert!(short.is_empty(), "{} of {} fall short:\n{}", short.len(), folders.len(), short.join("\n"));
 }
 
 #[test]
@@ -335,10 +301,7 @@ fn names_line(message: &str, line: u64) -> bool {
         let before = &message[..at];
         // walk back over a list of lines
         let list = before.trim_end_matches(|c: char| c.is_ascii_digit() || ", ".contains(c));
-        let list = list
-            .trim_end_matches("and")
-            .trim_end_matches("to")
-            .trim_end_matches(|c: char| c.is_ascii_digit() || ", ".contains(c));
+        let list = list.trim_end_matches("and").trim_end_matches("to").trim_end_matches(|c: char| c.is_ascii_digit() || ", ".contains(c));
         let said = before.ends_with("line ") || before.ends_with(':') || (before.ends_with(' ') && list.ends_with("lines"));
         said && whole(at)
     })
@@ -353,11 +316,7 @@ fn bad_faults(entry: &Value) -> Vec<String> {
     if inside_a_file {
         fs::write(&taken, "a file\n").unwrap();
     }
-    let folder = if inside_a_file {
-        taken.join("results")
-    } else {
-        place.path().to_path_buf()
-    };
+    let folder = if inside_a_file { taken.join("results") } else { place.path().to_path_buf() };
     let verb = entry["verb"].as_str().unwrap();
     let mut command = vec![verb, config.to_str().unwrap()];
     if verb != "check" {
@@ -379,12 +338,7 @@ fn bad_faults(entry: &Value) -> Vec<String> {
     if (exit != 0 || !says.is_empty()) && !inside_a_file && !message.contains(name) {
         faults.push("the message does not name the file".to_string());
     }
-    let lines: Vec<u64> = entry
-        .get("line")
-        .into_iter()
-        .chain(&list("lines"))
-        .map(|line| line.as_u64().unwrap())
-        .collect();
+    let lines: Vec<u64> = entry.get("line").into_iter().chain(&list("lines")).map(|line| line.as_u64().unwrap()).collect();
     for line in lines.iter().filter(|line| !names_line(&message, **line)) {
         faults.push(format!("the message does not name line {line}"));
     }
@@ -431,13 +385,7 @@ fn bad_configs() {
             (!faults.is_empty()).then(|| format!("{}: {}", entry["file"], faults.join("\n    ")))
         })
         .collect();
-    assert!(
-        short.is_empty(),
-        "{} of {} fall short:\n{}",
-        short.len(),
-        entries.len(),
-        short.join("\n")
-    );
+    assert!(short.is_empty(), "{} of {} fall short:\n{}", short.len(), entries.len(), short.join("\n"));
 }
 
 #[test]

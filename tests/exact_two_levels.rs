@@ -46,11 +46,7 @@ accuracy: {{final: 1e-11, method: automatic}}
         close(at(&outcome, "population_down", time_s), number(&digits[0]), 2e-13);
         let (r, d) = (1.25e6f64, 0.8e6f64);
         let w = r.hypot(d);
-        close(
-            number(&digits[1]),
-            (r / w * (std::f64::consts::PI * w * time_s).sin()).powi(2),
-            1e-13,
-        );
+        close(number(&digits[1]), (r / w * (std::f64::consts::PI * w * time_s).sin()).powi(2), 1e-13);
     }
     // the field that turns the other way hardly acts, so the formula is no accident of the start
     let opposite = run(&config("one_sided, sense: opposite"));
@@ -69,36 +65,12 @@ struct Sech {
 
 const SECH: [Sech; 4] = [
     // N. Rosen, C. Zener, Physical Review 40, 502 (1932)
-    Sech {
-        peak_mhz: 1.9,
-        static_mhz: 0.6,
-        swing_mhz: 0.0,
-        time_ns: 200.0,
-        name: "rosen-zener",
-    },
-    Sech {
-        peak_mhz: 39.6,
-        static_mhz: -1.7,
-        swing_mhz: 0.0,
-        time_ns: 50.0,
-        name: "rosen-zener-4pi",
-    },
+    Sech { peak_mhz: 1.9, static_mhz: 0.6, swing_mhz: 0.0, time_ns: 200.0, name: "rosen-zener" },
+    Sech { peak_mhz: 39.6, static_mhz: -1.7, swing_mhz: 0.0, time_ns: 50.0, name: "rosen-zener-4pi" },
     // L. Allen, J. H. Eberly, Optical Resonance and Two-Level Atoms (1975); F. T. Hioe, Physical Review A 30, 2100 (1984)
-    Sech {
-        peak_mhz: 4.0,
-        static_mhz: 0.0,
-        swing_mhz: 2.5,
-        time_ns: 150.0,
-        name: "allen-eberly",
-    },
+    Sech { peak_mhz: 4.0, static_mhz: 0.0, swing_mhz: 2.5, time_ns: 150.0, name: "allen-eberly" },
     // Yu. N. Demkov, M. Kunike, Vestnik Leningradskogo Universiteta 16, 39 (1969)
-    Sech {
-        peak_mhz: 3.0,
-        static_mhz: 0.9,
-        swing_mhz: 1.2,
-        time_ns: 110.0,
-        name: "demkov-kunike",
-    },
+    Sech { peak_mhz: 3.0, static_mhz: 0.9, swing_mhz: 1.2, time_ns: 110.0, name: "demkov-kunike" },
 ];
 
 fn check_sech(sech: &Sech, outcome: &Outcome, tolerance: f64) {
@@ -119,13 +91,7 @@ fn check_sech(sech: &Sech, outcome: &Outcome, tolerance: f64) {
 #[test]
 fn sech_coupling_with_moving_gap() {
     for sech in &SECH {
-        let Sech {
-            peak_mhz,
-            static_mhz,
-            swing_mhz,
-            time_ns,
-            ..
-        } = sech;
+        let Sech { peak_mhz, static_mhz, swing_mhz, time_ns, .. } = sech;
         let gap = if *swing_mhz == 0.0 {
             ["", "", ""].map(str::to_string)
         } else {
@@ -135,11 +101,7 @@ fn sech_coupling_with_moving_gap() {
                 "\n      - pulse: {drive: gap, envelope: swing}".to_string(),
             ]
         };
-        let operators = if gap[0].is_empty() {
-            ""
-        } else {
-            "operators: {sigma: {rows: [[-1, 0], [0, 1]]}}\n"
-        };
+        let operators = if gap[0].is_empty() { "" } else { "operators: {sigma: {rows: [[-1, 0], [0, 1]]}}\n" };
         let text = format!(
             "format: 1
 numbers: {{scale: {time_ns} ns, offset: {static_mhz} MHz}}
@@ -166,13 +128,7 @@ accuracy: {{final: 1e-11, method: automatic}}
 #[test]
 fn sech_pulse_of_swept_light() {
     for sech in &SECH {
-        let Sech {
-            peak_mhz,
-            static_mhz,
-            swing_mhz,
-            time_ns,
-            ..
-        } = sech;
+        let Sech { peak_mhz, static_mhz, swing_mhz, time_ns, .. } = sech;
         let sweep = if *swing_mhz == 0.0 {
             "line - offset".to_string()
         } else {
@@ -226,10 +182,7 @@ accuracy: {{final: {accuracy:e}, method: automatic}}
     };
     let finite = sweep(2.0, 0.6, 8.0, "4 us, 4.5 us, 8 us", 1e-11);
     let slow = sweep(0.4, 0.65, 16.0, "7 us, 16 us", 1e-11);
-    let checks = [
-        ("landau-zener-finite", &finite, vec![4e-6, 4.5e-6, 8e-6]),
-        ("landau-zener-slow", &slow, vec![7e-6, 16e-6]),
-    ];
+    let checks = [("landau-zener-finite", &finite, vec![4e-6, 4.5e-6, 8e-6]), ("landau-zener-slow", &slow, vec![7e-6, 16e-6])];
     for (name, outcome, times_s) in checks {
         for (k, time_s) in times_s.into_iter().enumerate() {
             let digits = &case(name)["expected"]["populations"][k];

@@ -14,15 +14,8 @@ const FORMS: [&str; 3] = ["linear", "one_sided", "direct"];
 
 #[derive(Debug, Clone)]
 enum Step {
-    Wait {
-        us: f64,
-    },
-    Pulse {
-        shape: &'static str,
-        us: f64,
-        peak_mhz: f64,
-        phase_turns: f64,
-    },
+    Wait { us: f64 },
+    Pulse { shape: &'static str, us: f64, peak_mhz: f64, phase_turns: f64 },
 }
 
 /// A config of one drive on a chain of levels.
@@ -61,10 +54,7 @@ impl Config {
     /// The config as text; `order` is the order in which the levels are written.
     fn text(&self, units: &Units, order: &[usize], start: usize, record: &str) -> String {
         let energy = |mhz: f64| (units.energy)(mhz);
-        let levels: Vec<String> = order
-            .iter()
-            .map(|k| format!("l{k}: {}", (units.level)(self.energies_mhz[*k])))
-            .collect();
+        let levels: Vec<String> = order.iter().map(|k| format!("l{k}: {}", (units.level)(self.energies_mhz[*k]))).collect();
         let strengths: Vec<String> = self
             .strengths
             .iter()
@@ -80,12 +70,7 @@ impl Config {
         for (k, step) in self.steps.iter().enumerate() {
             match step {
                 Step::Wait { us } => steps += &format!("  - wait: {}\n", (units.time)(*us)),
-                Step::Pulse {
-                    shape,
-                    us,
-                    peak_mhz,
-                    phase_turns,
-                } => {
+                Step::Pulse { shape, us, peak_mhz, phase_turns } => {
                     let time = |us: f64| (units.time)(us);
                     let times = match *shape {
                         "trapezoid" => format!("length: {}, rise: {}", time(*us), time(0.25 * us)),
@@ -134,17 +119,9 @@ accuracy: {{final: 1e-9, method: automatic}}
     fn reversed(&self) -> Config {
         let turns = self.carrier_mhz * self.length_us();
         let step = |step: &Step| match step.clone() {
-            Step::Pulse {
-                shape,
-                us,
-                peak_mhz,
-                phase_turns,
-            } => Step::Pulse {
-                shape,
-                us,
-                peak_mhz: -peak_mhz,
-                phase_turns: -phase_turns - turns,
-            },
+            Step::Pulse { shape, us, peak_mhz, phase_turns } => {
+                Step::Pulse { shape, us, peak_mhz: -peak_mhz, phase_turns: -phase_turns - turns }
+            }
             wait => wait,
         };
         Config {
@@ -156,15 +133,9 @@ accuracy: {{final: 1e-9, method: automatic}}
 
     /// The part before and the part from step `k`, each a sequence of its own.
     fn parted(&self, k: usize) -> [Config; 2] {
-        let first = Config {
-            steps: self.steps[..k].to_vec(),
-            ..self.clone()
-        };
+        let first = Config { steps: self.steps[..k].to_vec(), ..self.clone() };
         let turns = self.carrier_mhz * first.length_us();
-        let mut second = Config {
-            steps: self.steps[k..].to_vec(),
-            ..self.clone()
-        };
+        let mut second = Config { steps: self.steps[k..].to_vec(), ..self.clone() };
         for step in &mut second.steps {
             if let Step::Pulse { phase_turns, .. } = step {
                 *phase_turns += turns;
@@ -175,14 +146,8 @@ accuracy: {{final: 1e-9, method: automatic}}
 }
 
 fn pulse() -> impl Strategy<Value = Step> {
-    (prop::sample::select(&SHAPES[..]), 0.05..0.4f64, 0.2..6.0f64, -1.0..1.0f64).prop_map(|(shape, us, peak_mhz, phase_turns)| {
-        Step::Pulse {
-            shape,
-            us,
-            peak_mhz,
-            phase_turns,
-        }
-    })
+    (prop::sample::select(&SHAPES[..]), 0.05..0.4f64, 0.2..6.0f64, -1.0..1.0f64)
+        .prop_map(|(shape, us, peak_mhz, phase_turns)| Step::Pulse { shape, us, peak_mhz, phase_turns })
 }
 
 fn config() -> impl Strategy<Value = Config> {
@@ -199,11 +164,7 @@ fn config() -> impl Strategy<Value = Config> {
             form,
             carrier_mhz: gaps[0] + off,
             energies_mhz,
-            steps: steps
-                .into_iter()
-                .flat_map(|(pulse, wait)| [Some(pulse), wait.map(|us| Step::Wait { us })])
-                .flatten()
-                .collect(),
+            steps: steps.into_iter().flat_map(|(pulse, wait)| [Some(pulse), wait.map(|us| Step::Wait { us })]).flatten().collect(),
         }
     })
 }
@@ -311,8 +272,9 @@ proptest! {
         let text = config.written("populations: all, propagator: true, energy: true, coherence: [l0, l1]");
         let numbers = || {
             let plan = nutate::plan::Plan::new(rig::document(&text, &[]));
-            let outcome = nutate::outcome::compute(plan.document(), &plan.point().unwrap());
-            let mut tree = result(plan.document(), &outcome);
+            let point = plan.point().unwrap();
+            let outcome = nutate::outcome::compute(plan.document(), &point);
+            let mut tree = result(plan.document(), &point, &outcome);
             tree["seconds"] = serde_json::Value::Null;
             let rows: Vec<u64> = outcome.rows.iter().map(|number| number.to_bits()).collect();
             (serde_json::to_string(&tree).unwrap(), rows)

@@ -297,20 +297,12 @@ fn mutate(text: &mut Vec<u8>, other: &[u8], draws: &mut Draws) {
         }
         7 | 8 => {
             // what follows a colon becomes hostile
-            let colons: Vec<usize> = text
-                .windows(2)
-                .enumerate()
-                .filter(|(_, w)| *w == b": ")
-                .map(|(k, _)| k + 2)
-                .collect();
+            let colons: Vec<usize> = text.windows(2).enumerate().filter(|(_, w)| *w == b": ").map(|(k, _)| k + 2).collect();
             if colons.is_empty() {
                 return;
             }
             let from = *draws.of(&colons);
-            let to = text[from..]
-                .iter()
-                .position(|c| b",}]\n#".contains(c))
-                .map_or(text.len(), |n| from + n);
+            let to = text[from..].iter().position(|c| b",}]\n#".contains(c)).map_or(text.len(), |n| from + n);
             let new = hostile(draws);
             splice(text, (from, to), &new);
         }

@@ -25,11 +25,12 @@ pub(super) fn check(words: &Words) -> Status {
     };
     let document = plan.document();
     complain_of(document, &document.warnings);
+    complain_of(document, &point.warnings);
     let count = |n: usize, one: &str| format!("{n} {one}{}", if n == 1 { "" } else { "s" });
     print(&format!(
         "{}: no mistake, {}. {}, {}, {} over {}.\n",
         words.common.config.display(),
-        count(document.warnings.len(), "warning"),
+        count(document.warnings.len() + point.warnings.len(), "warning"),
         count(document.system.names.len(), "level"),
         count(document.drives.len(), "drive"),
         count(point.timeline.pulses.len(), "pulse"),

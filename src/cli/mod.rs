@@ -1,7 +1,10 @@
 //! Words to library calls to an exit status; one file per verb. Only this room prints.
 
 mod check;
+mod compare;
+mod plot;
 mod run;
+mod selftest;
 
 use std::io::Write;
 use std::path::PathBuf;
@@ -40,6 +43,12 @@ enum Verb {
     Check(check::Words),
     /// Evolve, record, and write numbers and plots
     Run(run::Words),
+    /// Run the file and its variants, and show how far apart they are
+    Compare(compare::Words),
+    /// Draw the plots of a result folder again
+    Plot(plot::Words),
+    /// Check the program on this machine against closed forms
+    Selftest(selftest::Words),
 }
 
 /// What most verbs take.
@@ -59,16 +68,15 @@ pub fn main() -> ExitCode {
         Err(error) => {
             // help and version are no mistakes; anything else is refused before work
             let _ = error.print();
-            return ExitCode::from(if error.use_stderr() {
-                Status::Refused as u8
-            } else {
-                Status::Good as u8
-            });
+            return ExitCode::from(if error.use_stderr() { Status::Refused as u8 } else { Status::Good as u8 });
         }
     };
     let status = match words.verb {
         Verb::Check(words) => check::check(&words),
         Verb::Run(words) => run::run(&words),
+        Verb::Compare(words) => compare::run(&words),
+        Verb::Plot(words) => plot::plot(&words),
+        Verb::Selftest(words) => selftest::selftest(&words),
     };
     ExitCode::from(status as u8)
 }

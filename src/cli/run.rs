@@ -48,19 +48,17 @@ fn try_run(words: &Words) -> Result<Status, Status> {
         Status::Refused
     })?;
     complain_of(document, &document.warnings);
+    complain_of(document, &point.warnings);
     let outcome = compute(document, &point);
     let written = write(staging, &plan, &point, &outcome).map_err(|error| {
-        complain(&format!(
-            "error: the results could not be written to {}: {error}.\n",
-            folder.display()
-        ));
+        complain(&format!("error: the results could not be written to {}: {error}.\n", folder.display()));
         Status::Machine
     })?;
     if words.json {
-        let result = result_json::result(document, &outcome);
+        let result = result_json::result(document, &point, &outcome);
         print(&format!("{}\n", serde_json::to_string_pretty(&result).unwrap_or_default()));
     } else if !words.quiet {
-        print(&summary::summary(document, &outcome, Some(&written)));
+        print(&summary::summary(document, &point, &outcome, Some(&written)));
     }
     if !outcome.reached {
         complain(&format!("warning: {}.\n", summary::not_reached(document, &outcome)));
@@ -79,14 +77,12 @@ fn write(staging: Staging, plan: &Plan, point: &Point, outcome: &Outcome) -> io:
     for (name, figure) in figures::of_run(document, point, outcome) {
         match figure {
             Ok(drawn) => {
-                std::fs::write(side.join(format!("{name}.png")), &drawn.png)?;
-                std::fs::write(side.join(format!("{name}.svg")), &drawn.svg)?;
-                names.push(format!("{name}.png"));
+                names.extend(figures::save(&side, name, &drawn)?.into_iter().take(1));
             }
             Err(reason) => complain(&format!("warning: the plot {name} was not drawn: {reason}.\n")),
         }
     }
-    let json = serde_json::to_string_pretty(&result_json::result(document, outcome))?;
+    let json = serde_json::to_string_pretty(&result_json::result(document, point, outcome))?;
     std::fs::write(side.join("result.json"), json + "\n")?;
     let folder = staging.finish()?;
     Ok(format!("{} in {}", names.join(", "), folder.display()))

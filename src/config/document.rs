@@ -1,7 +1,9 @@
 //! A whole config, read and judged: what every later stage starts from.
 
 use std::path::{Path, PathBuf};
+use std::sync::Arc;
 
+use super::compare::{self, Compare, Variant};
 use super::drives::{CarrierPhase, Drive, Form};
 use super::envelopes::Envelope;
 use super::messages::{Fault, Mistake};
@@ -9,7 +11,7 @@ use super::place::{Place, Sources};
 use super::reader::{near, NamedNumber, Reader};
 use super::record::{Item, Record};
 use super::sequence::{self, Known, Step};
-use super::settings::{Accuracy, Output};
+use super::settings::{Accuracy, Frame, Output};
 use super::state::State;
 use super::system::{Operator, System};
 use super::tape::{Register, Tape};
@@ -43,18 +45,7 @@ const SECTIONS: [&str; 25] = [
     "hardware",
     "output",
 ];
-const LATER: [&str; 10] = [
-    "basis",
-    "decay",
-    "dephasing",
-    "noise",
-    "compare",
-    "scan",
-    "tune",
-    "fit",
-    "run",
-    "hardware",
-];
+const LATER: [&str; 9] = ["basis", "decay", "dephasing", "noise", "scan", "tune", "fit", "run", "hardware"];
 
 /// A config that holds no mistake.
 #[derive(Debug, Clone)]
@@ -85,6 +76,8 @@ pub struct Document {
     pub start: State,
     /// What to keep.
     pub record: Record,
+    /// In which frame.
+    pub frame: Frame,
     /// How exactly.
     pub accuracy: Accuracy,
     /// Where to.
@@ -93,6 +86,12 @@ pub struct Document {
     pub defaults: Vec<(String, String)>,
     /// Warnings.
     pub warnings: Vec<Mistake>,
+    /// Where a result folder keeps its inputs, if it was read from one.
+    pub archive: Option<PathBuf>,
+    /// Variants to compare, if any.
+    pub compare: Option<Compare>,
+    /// The tree that it was read from.
+    pub root: Arc<Node>,
     /// The values given in place of written ones.
     pub set: Vec<(String, String)>,
 }
@@ -118,12 +117,7 @@ pub fn read(path: &Path, set: &[(String, String)]) -> Result<Document, Refusal> 
     let mut sources = Sources::default();
     let file = match tree::read_text(path, &mut sources) {
         Ok(file) => file,
-        Err(mistake) => {
-            return Err(Refusal {
-                sources,
-                mistakes: vec![mistake],
-            })
-        }
+        Err(mistake) => return Err(Refusal { sources, mistakes: vec![mistake] }),
     };
     read_sources(sources, file, path.parent().unwrap_or(Path::new("")), None, set)
 }
@@ -133,10 +127,7 @@ pub fn read_archived(folder: &Path, set: &[(String, String)]) -> Result<Document
     let mut sources = Sources::default();
     match tree::read_text(&folder.join("config.yaml"), &mut sources) {
         Ok(file) => read_sources(sources, file, folder, Some(folder.join("inputs")), set),
-        Err(mistake) => Err(Refusal {
-            sources,
-            mistakes: vec![mistake],
-        }),
+        Err(mistake) => Err(Refusal { sources, mistakes: vec![mistake] }),
     }
 }
 
@@ -165,39 +156,64 @@ fn read_sources(
     let mut reader = Reader::new(sources, folder.to_path_buf());
     reader.mistakes = mistakes;
     reader.archive = archive;
-    let document = sections(&mut reader, &root, file, set);
+    let document = sections(&mut reader, &root, file, set, &[]);
+    let document = document.map(|document| {
+        // the variants are read too, so that a slip in one is found before anything runs
+        for variant in document.compare.iter().flat_map(|compare| &compare.variants) {
+            if let Err(refusal) = read_variant(&document, variant) {
+                reader.mistakes.extend(refusal.mistakes.into_iter().filter(|mistake| !mistake.warning));
+            }
+        }
+        document
+    });
     let refused = reader.mistakes.iter().any(|mistake| !mistake.warning);
     match document {
         Some(document) if !refused => Ok(document),
-        _ => Err(Refusal {
-            sources: reader.sources,
-            mistakes: reader.mistakes,
-        }),
+        _ => Err(Refusal { sources: reader.sources, mistakes: reader.mistakes }),
     }
 }
 
-fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)]) -> Option<Document> {
+/// Reads a variant of a document; what changes nothing is refused.
+pub fn read_variant(document: &Document, variant: &Variant) -> Result<Document, Refusal> {
+    let root = compare::apply(&document.root, variant);
+    let folder = document.source().path.parent().unwrap_or(Path::new("")).to_path_buf();
+    let mut reader = Reader::new(document.sources.clone(), folder);
+    reader.archive = document.archive.clone();
+    let set: Vec<(String, String)> =
+        document.set.iter().filter(|(name, _)| variant.set.iter().all(|entry| entry.key != *name)).cloned().collect();
+    let read = sections(&mut reader, &root, 0, &set, &variant.set);
+    let same_sections = variant
+        .sections
+        .iter()
+        .all(|section| document.root.get(&section.key).is_some_and(|written| compare::same(written, &section.value)));
+    if let Some(read) = &read {
+        let values = |document: &Document| -> Vec<(String, f64)> {
+            let registers = document.tape.as_written();
+            document.numbers.iter().map(|number| (number.name.clone(), registers[number.register as usize])).collect()
+        };
+        if same_sections && values(read) == values(document) {
+            reader.error(variant.place, Fault::VariantChangesNothing { name: variant.name.clone() });
+        }
+    }
+    match read {
+        Some(mut read) if !reader.mistakes.iter().any(|mistake| !mistake.warning) => {
+            read.set = set;
+            Ok(read)
+        }
+        _ => Err(Refusal { sources: reader.sources, mistakes: reader.mistakes }),
+    }
+}
+
+fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)], moved: &[super::tree::Entry]) -> Option<Document> {
     if root.entries().is_none() {
         reader.error(
             root.place,
-            Fault::Shape {
-                what: "a config".to_string(),
-                expected: "a block of sections".to_string(),
-                example: "format: 1".to_string(),
-            },
+            Fault::Shape { what: "a config".to_string(), expected: "a block of sections".to_string(), example: "format: 1".to_string() },
         );
         return None;
     }
     match root.get("format") {
-        None => reader.error(
-            Place {
-                file,
-                line: 1,
-                column: 1,
-                length: 1,
-            },
-            Fault::NoFormat,
-        ),
+        None => reader.error(Place { file, line: 1, column: 1, length: 1 }, Fault::NoFormat),
         Some(node) if node.text() == Some("1") => {}
         Some(node) => {
             let found = node.text().unwrap_or("a list or block").to_string();
@@ -208,25 +224,18 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     }
     let entries = reader.fields(root, "a config", &SECTIONS, &[])?;
     for entry in entries.iter().filter(|entry| LATER.contains(&entry.key.as_str())) {
-        reader.error(
-            entry.place,
-            Fault::NotNow {
-                key: entry.key.clone(),
-                section: "a section".to_string(),
-            },
-        );
+        reader.error(entry.place, Fault::NotNow { key: entry.key.clone(), section: "a section".to_string() });
     }
     let title = match root.get("title") {
-        Some(title) => reader
-            .text(title, "title", "title: what this run is for")
-            .unwrap_or_default()
-            .to_string(),
-        None => reader.sources.files()[usize::from(file)]
-            .path
-            .file_stem()
-            .map_or(String::new(), |stem| stem.to_string_lossy().into_owned()),
+        Some(title) => reader.text(title, "title", "title: what this run is for").unwrap_or_default().to_string(),
+        None => {
+            reader.sources.files()[usize::from(file)].path.file_stem().map_or(String::new(), |stem| stem.to_string_lossy().into_owned())
+        }
     };
     numbers(reader, root, set);
+    for entry in moved {
+        reader.set_number(&entry.key, entry.value.clone());
+    }
 
     let system = match root.get("system") {
         Some(node) => super::system::read_system(reader, node),
@@ -238,27 +247,13 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
                 write: "system: {levels: {down: 0 MHz, up: 80 MHz}}".to_string(),
                 why,
             };
-            reader.error(
-                Place {
-                    file,
-                    line: 1,
-                    column: 1,
-                    length: 1,
-                },
-                fault,
-            );
+            reader.error(Place { file, line: 1, column: 1, length: 1 }, fault);
             None
         }
     };
     let size = reader.level_names().len();
     // with the names of the levels known, the other sections can be judged even where an energy is wrong
-    let stand_in = System {
-        place: root.place,
-        kind: "levels",
-        names: reader.level_names(),
-        entries: Vec::new(),
-        rungs: None,
-    };
+    let stand_in = System { place: root.place, kind: "levels", names: reader.level_names(), entries: Vec::new(), rungs: None };
     let readable = system.is_some() || size > 0;
     let known_system = system.clone().unwrap_or(stand_in);
     let operators = match root.get("operators") {
@@ -273,11 +268,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         Some(node) => super::envelopes::read_envelopes(reader, node),
         None => (Vec::new(), Vec::new()),
     };
-    let known = Known {
-        drives: (&drive_names, &drives),
-        envelopes: (&envelope_names, &envelopes),
-        blocks: root.get("blocks"),
-    };
+    let known = Known { drives: (&drive_names, &drives), envelopes: (&envelope_names, &envelopes), blocks: root.get("blocks") };
     let sequence_node = match root.get("sequence") {
         Some(node) => Some(node),
         None => {
@@ -287,15 +278,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
                 write: "sequence: [{wait: 1 us}]".to_string(),
                 why: None,
             };
-            reader.error(
-                Place {
-                    file,
-                    line: 1,
-                    column: 1,
-                    length: 1,
-                },
-                fault,
-            );
+            reader.error(Place { file, line: 1, column: 1, length: 1 }, fault);
             None
         }
     };
@@ -308,31 +291,15 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         Some(_) => None,
         None => {
             let why = Some("It names the level, or the superposition, at time zero.".to_string());
-            let fault = Fault::MissingKey {
-                key: "start".to_string(),
-                section: "a config".to_string(),
-                write: "start: down".to_string(),
-                why,
-            };
-            reader.error(
-                Place {
-                    file,
-                    line: 1,
-                    column: 1,
-                    length: 1,
-                },
-                fault,
-            );
+            let fault =
+                Fault::MissingKey { key: "start".to_string(), section: "a config".to_string(), write: "start: down".to_string(), why };
+            reader.error(Place { file, line: 1, column: 1, length: 1 }, fault);
             None
         }
     };
     let frame = super::settings::read_frame(reader, root.get("frame"));
     let mut used_operators = Vec::new();
-    let record = if readable {
-        super::record::read_record(reader, root.get("record"), &operators, &mut used_operators)
-    } else {
-        None
-    };
+    let record = if readable { super::record::read_record(reader, root.get("record"), &operators, &mut used_operators) } else { None };
     let accuracy = super::settings::read_accuracy(reader, root.get("accuracy"));
     let output = super::settings::read_output(reader, root.get("output"));
 
@@ -340,13 +307,17 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         phases_said(reader, steps, &drives);
         unused(reader, root, &used, &operators, &mut used_operators);
     }
+    let compare = root.get("compare").map(|node| compare::read_compare(reader, node));
     let numbers = reader.finish_numbers();
     finite(reader, &numbers)?;
     if let Some(record) = &record {
         free_turns(reader, record, &operators);
     }
-    let (system, steps, start, record, accuracy, output) = (system?, steps?, start?, record?, accuracy?, output?);
-    frame?;
+    let compare = match compare {
+        Some(compare) => Some(compare?),
+        None => None,
+    };
+    let (system, steps, start, record, accuracy, output, frame) = (system?, steps?, start?, record?, accuracy?, output?, frame?);
     Some(Document {
         sources: reader.sources.clone(),
         title,
@@ -361,10 +332,14 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         sequence_place: sequence_node.map_or(root.place, |node| node.place),
         start,
         record,
+        frame,
         accuracy,
         output,
         defaults: std::mem::take(&mut reader.defaults),
         warnings: reader.mistakes.iter().filter(|mistake| mistake.warning).cloned().collect(),
+        compare,
+        root: Arc::new(root.clone()),
+        archive: reader.archive.clone(),
         set: set.to_vec(),
     })
 }
@@ -400,34 +375,14 @@ fn numbers(reader: &mut Reader, root: &Node, set: &[(String, String)]) {
         let text = format!("{name}={value}");
         let file = reader.sources.add(Path::new("--set"), Vec::new(), text.clone());
         let column = name.chars().count() as u32 + 2;
-        let place = Place {
-            file,
-            line: 1,
-            column,
-            length: value.chars().count().max(1) as u32,
-        };
-        let node = Node {
-            place,
-            kind: Kind::Scalar {
-                text: value.clone(),
-                quoted: false,
-                exact: true,
-            },
-        };
+        let place = Place { file, line: 1, column, length: value.chars().count().max(1) as u32 };
+        let node = Node { place, kind: Kind::Scalar { text: value.clone(), quoted: false, exact: true } };
         if !reader.set_number(name, node) {
             let known = reader.number_names();
             let near = near(name, known.iter().map(String::as_str));
             reader.error(
-                Place {
-                    column: 1,
-                    length: name.chars().count().max(1) as u32,
-                    ..place
-                },
-                Fault::NoSuchNumber {
-                    name: name.clone(),
-                    near,
-                    known,
-                },
+                Place { column: 1, length: name.chars().count().max(1) as u32, ..place },
+                Fault::NoSuchNumber { name: name.clone(), near, known },
             );
         }
     }
@@ -439,14 +394,7 @@ fn phases_said(reader: &mut Reader, steps: &[Step], drives: &[Drive]) {
         if drive.form == Form::Direct || drive.carrier_phase.is_some() || times == 0 || (times == 1 && first) {
             continue;
         }
-        reader.error(
-            drive.place,
-            Fault::PhaseUnsaid {
-                drive: drive.name.clone(),
-                times,
-                why_first: times == 1,
-            },
-        );
+        reader.error(drive.place, Fault::PhaseUnsaid { drive: drive.name.clone(), times, why_first: times == 1 });
     }
 }
 
@@ -456,38 +404,23 @@ fn unused(reader: &mut Reader, root: &Node, used: &sequence::Used, operators: &[
             used_operators.push(operator.to_string());
         }
     }
-    let sections: [(&'static str, &str, &std::collections::HashSet<String>); 3] = [
-        ("drive", "drives", &used.drives),
-        ("envelope", "envelopes", &used.envelopes),
-        ("block", "blocks", &used.blocks),
-    ];
+    let sections: [(&'static str, &str, &std::collections::HashSet<String>); 3] =
+        [("drive", "drives", &used.drives), ("envelope", "envelopes", &used.envelopes), ("block", "blocks", &used.blocks)];
     for (kind, section, used) in sections {
         for entry in root.get(section).and_then(Node::entries).unwrap_or_default() {
             if !used.contains(&entry.key) {
-                reader.warn(
-                    entry.place,
-                    Fault::Unused {
-                        kind,
-                        name: entry.key.clone(),
-                    },
-                );
+                reader.warn(entry.place, Fault::Unused { kind, name: entry.key.clone() });
             }
         }
     }
     for operator in operators.iter().filter(|operator| !used_operators.contains(&operator.name)) {
-        reader.warn(
-            operator.place,
-            Fault::Unused {
-                kind: "operator",
-                name: operator.name.clone(),
-            },
-        );
+        reader.warn(operator.place, Fault::Unused { kind: "operator", name: operator.name.clone() });
     }
 }
 
 /// Every register has a finite value with the numbers as written; the first that has not is reported.
 fn finite(reader: &mut Reader, _numbers: &[NamedNumber]) -> Option<()> {
-    let values = reader.tape.evaluate(&[]);
+    let values = reader.tape.as_written();
     match not_finite(&reader.tape, &values, &reader.sources) {
         None => Some(()),
         Some(mistake) => {
@@ -503,11 +436,7 @@ pub fn not_finite(tape: &Tape, values: &[f64], sources: &Sources) -> Option<Mist
     let bad = values.iter().position(|value| !value.is_finite())?;
     let place = tape.place(bad as Register);
     let line = sources.line(place.file, place.line).unwrap_or_default();
-    let text: String = line
-        .chars()
-        .skip(place.column.saturating_sub(1) as usize)
-        .take(place.length as usize)
-        .collect();
+    let text: String = line.chars().skip(place.column.saturating_sub(1) as usize).take(place.length as usize).collect();
     let fault = match tape.entries()[bad] {
         Entry::Two(Two::Divide, _, divisor) if values[divisor as usize] == 0.0 => Fault::ZeroDivision { text },
         _ => Fault::NotFinite { text },
@@ -523,18 +452,13 @@ fn free_turns(reader: &mut Reader, record: &Record, operators: &[Operator]) {
             continue;
         };
         for index in free {
-            let values = reader.tape.evaluate(&[]);
+            let values = reader.tape.as_written();
             let off = operators[*index].entries.iter().any(|entry| {
                 let im = entry.value.im.map_or(0.0, |im| values[im as usize]);
                 im != 0.0 || (entry.row != entry.column && values[entry.value.re as usize] != 0.0)
             });
             if off {
-                reader.error(
-                    gate.place,
-                    Fault::NotDiagonal {
-                        operator: operators[*index].name.clone(),
-                    },
-                );
+                reader.error(gate.place, Fault::NotDiagonal { operator: operators[*index].name.clone() });
             }
         }
     }

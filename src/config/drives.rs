@@ -120,27 +120,15 @@ pub fn read_drives(reader: &mut Reader, node: &Node, system: &System, operators:
     };
     let names: Vec<String> = entries.iter().map(|entry| entry.key.clone()).collect();
     super::system::warn_of_case(reader, "drive", &names, node.place);
-    let drives = entries
-        .iter()
-        .filter_map(|entry| read_drive(reader, &entry.key, entry.place, &entry.value, system, operators))
-        .collect();
+    let drives = entries.iter().filter_map(|entry| read_drive(reader, &entry.key, entry.place, &entry.value, system, operators)).collect();
     (drives, names)
 }
 
 fn read_drive(reader: &mut Reader, name: &str, place: Place, node: &Node, system: &System, operators: &[Operator]) -> Option<Drive> {
     let section = format!("drives / {name}");
     let keys = reader.fields(node, &section, &KEYS, &HINTS)?;
-    for later in keys
-        .iter()
-        .filter(|key| matches!(key.key.as_str(), "field_direction" | "polarisation"))
-    {
-        reader.error(
-            later.place,
-            Fault::NotNow {
-                key: later.key.clone(),
-                section: section.clone(),
-            },
-        );
+    for later in keys.iter().filter(|key| matches!(key.key.as_str(), "field_direction" | "polarisation")) {
+        reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: section.clone() });
     }
     let form = match node.get("form") {
         Some(form) => reader.word(form, &format!("{section} / form"), &FORMS),
@@ -150,22 +138,16 @@ fn read_drive(reader: &mut Reader, name: &str, place: Place, node: &Node, system
         }
     };
     let opposite = match node.get("sense") {
-        Some(sense) => reader
-            .word(sense, &format!("{section} / sense"), &[("opposite", true), ("resonant", false)])
-            .unwrap_or(false),
+        Some(sense) => reader.word(sense, &format!("{section} / sense"), &[("opposite", true), ("resonant", false)]).unwrap_or(false),
         None => false,
     };
     let coupling = read_coupling(reader, name, node, &section, system, operators, form);
-    let carrier = node
-        .get("carrier")
-        .map(|carrier| read_carrier(reader, carrier, &format!("{section} / carrier")));
+    let carrier = node.get("carrier").map(|carrier| read_carrier(reader, carrier, &format!("{section} / carrier")));
     let carrier_phase = node.get("carrier_phase").map(|phase| {
         let words = [("runs on", CarrierPhase::RunsOn), ("restarts", CarrierPhase::Restarts)];
         reader.word(phase, &format!("{section} / carrier_phase"), &words)
     });
-    let calibration = node
-        .get("calibration")
-        .map(|calibration| read_calibration(reader, calibration, &section));
+    let calibration = node.get("calibration").map(|calibration| read_calibration(reader, calibration, &section));
     match (form, &carrier) {
         (Some(Form::Direct), Some(_)) => {
             let at = node.get("carrier").map_or(place, |carrier| carrier.place);
@@ -194,15 +176,7 @@ fn read_drive(reader: &mut Reader, name: &str, place: Place, node: &Node, system
 }
 
 fn constant_entry(register: Register, row: usize, column: usize, place: Place) -> MatrixEntry {
-    MatrixEntry {
-        row,
-        column,
-        value: ComplexQuantity {
-            re: register,
-            im: None,
-            place,
-        },
-    }
+    MatrixEntry { row, column, value: ComplexQuantity { re: register, im: None, place } }
 }
 
 /// The matrix as typed and its reference pair.
@@ -217,9 +191,7 @@ fn read_coupling(
 ) -> Option<(Vec<MatrixEntry>, Option<[usize; 2]>, Place)> {
     let hint = Some("pair: [a, b] couples two levels; operator: name a named matrix; acts_on: ladder the natural coupling.");
     let source = reader.one_of(node, &["pair", "operator", "acts_on", "strengths"], section, hint)?;
-    let reference = node
-        .get("reference_pair")
-        .map(|pair| (reader.pair(pair, "reference_pair"), pair.place));
+    let reference = node.get("reference_pair").map(|pair| (reader.pair(pair, "reference_pair"), pair.place));
     let place = source.value.place;
     let entries = match source.key.as_str() {
         "pair" => {
@@ -235,12 +207,8 @@ fn read_coupling(
             let mut entries = Vec::new();
             for item in reader.list(&source.value, "strengths", "- {pair: [a, b], strength: 1}")? {
                 reader.fields(item, &format!("{section} / strengths"), &["pair", "strength"], &[])?;
-                let pair = reader
-                    .need(item, "pair", "strengths", "[a, b]")
-                    .and_then(|pair| reader.pair(pair, "pair"));
-                let strength = reader
-                    .need(item, "strength", "strengths", "1")
-                    .and_then(|strength| reader.plain(strength, "strength"));
+                let pair = reader.need(item, "pair", "strengths", "[a, b]").and_then(|pair| reader.pair(pair, "pair"));
+                let strength = reader.need(item, "strength", "strengths", "1").and_then(|strength| reader.plain(strength, "strength"));
                 let ([a, b], strength) = (pair?, strength?);
                 entries.push(constant_entry(strength.register, a, b, item.place));
                 entries.push(constant_entry(strength.register, b, a, item.place));
@@ -250,22 +218,9 @@ fn read_coupling(
         _ => {
             let what = reader.text(&source.value, &format!("{section} / acts_on"), "ladder")?;
             let Some(rungs) = system.rungs.as_ref().filter(|_| what == "ladder") else {
-                let known = if system.rungs.is_some() {
-                    vec!["ladder".to_string()]
-                } else {
-                    Vec::new()
-                };
-                let hint = Some(format!(
-                    "This system is given by its {}; a natural coupling belongs to a ladder.",
-                    system.kind
-                ));
-                let fault = Fault::UnknownWord {
-                    what: "acts_on".to_string(),
-                    found: what.to_string(),
-                    known,
-                    near: None,
-                    hint,
-                };
+                let known = if system.rungs.is_some() { vec!["ladder".to_string()] } else { Vec::new() };
+                let hint = Some(format!("This system is given by its {}; a natural coupling belongs to a ladder.", system.kind));
+                let fault = Fault::UnknownWord { what: "acts_on".to_string(), found: what.to_string(), known, near: None, hint };
                 reader.error(place, fault);
                 return None;
             };
@@ -291,14 +246,7 @@ fn read_coupling(
     if let Some((pair, at)) = reference {
         if !pairs.contains(&[pair[0].min(pair[1]), pair[0].max(pair[1])]) && !pairs.is_empty() {
             let (from, to) = (system.names[pair[0]].clone(), system.names[pair[1]].clone());
-            reader.error(
-                at,
-                Fault::NoSuchCoupling {
-                    drive: name.to_string(),
-                    from,
-                    to,
-                },
-            );
+            reader.error(at, Fault::NoSuchCoupling { drive: name.to_string(), from, to });
             return None;
         }
     }
@@ -309,7 +257,7 @@ fn read_coupling(
 }
 
 fn hermitian(reader: &mut Reader, drive: &str, operator: &Node, entries: &[MatrixEntry]) -> Option<()> {
-    let values = reader.tape.evaluate(&[]);
+    let values = reader.tape.as_written();
     let value = |e: &MatrixEntry| (values[e.value.re as usize], e.value.im.map_or(0.0, |im| values[im as usize]));
     let largest = entries.iter().map(|e| value(e).0.hypot(value(e).1)).fold(0.0, f64::max);
     let cells: std::collections::HashMap<_, _> = entries.iter().map(|e| ((e.row, e.column), value(e))).collect();
@@ -319,13 +267,7 @@ fn hermitian(reader: &mut Reader, drive: &str, operator: &Node, entries: &[Matri
     });
     if off {
         let operator_name = operator.text().unwrap_or_default().to_string();
-        reader.error(
-            operator.place,
-            Fault::NotHermitianDrive {
-                drive: drive.to_string(),
-                operator: operator_name,
-            },
-        );
+        reader.error(operator.place, Fault::NotHermitianDrive { drive: drive.to_string(), operator: operator_name });
         return None;
     }
     Some(())
@@ -335,10 +277,7 @@ fn hermitian(reader: &mut Reader, drive: &str, operator: &Node, entries: &[Matri
 pub fn read_carrier(reader: &mut Reader, node: &Node, section: &str) -> Option<Carrier> {
     if node.entries().is_none() {
         let centre = reader.quantity(node, section, Dim::FREQUENCY)?;
-        return Some(Carrier {
-            centre,
-            instantaneous: None,
-        });
+        return Some(Carrier { centre, instantaneous: None });
     }
     reader.fields(node, section, &["centre", "instantaneous"], &[("center", "Written centre.")])?;
     let centre = reader
@@ -347,23 +286,15 @@ pub fn read_carrier(reader: &mut Reader, node: &Node, section: &str) -> Option<C
     let formula = reader
         .need(node, "instantaneous", section, "line + reach * (2 * t / length - 1)")
         .and_then(|formula| reader.formula(formula, &format!("{section} / instantaneous"), Dim::FREQUENCY));
-    Some(Carrier {
-        centre: centre?,
-        instantaneous: Some(formula?),
-    })
+    Some(Carrier { centre: centre?, instantaneous: Some(formula?) })
 }
 
 fn read_calibration(reader: &mut Reader, node: &Node, section: &str) -> Option<Calibration> {
     let section = format!("{section} / calibration");
     reader.fields(node, &section, &["rabi", "volts"], &[])?;
-    let rabi = reader
-        .need(node, "rabi", &section, "100 MHz")
-        .and_then(|rabi| reader.quantity(rabi, &format!("{section} / rabi"), Dim::FREQUENCY));
-    let volts = reader
-        .need(node, "volts", &section, "0.31 V peak")
-        .and_then(|volts| reader.sine_volts(volts, &format!("{section} / volts")));
-    Some(Calibration {
-        rabi: rabi?,
-        volts: volts?,
-    })
+    let rabi =
+        reader.need(node, "rabi", &section, "100 MHz").and_then(|rabi| reader.quantity(rabi, &format!("{section} / rabi"), Dim::FREQUENCY));
+    let volts =
+        reader.need(node, "volts", &section, "0.31 V peak").and_then(|volts| reader.sine_volts(volts, &format!("{section} / volts")));
+    Some(Calibration { rabi: rabi?, volts: volts? })
 }

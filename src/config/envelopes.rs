@@ -29,12 +29,8 @@ impl SizeWord {
     }
 }
 
-const SIZES: [(&str, SizeWord); 4] = [
-    ("peak", SizeWord::Peak),
-    ("turn", SizeWord::Turn),
-    ("matrix_element", SizeWord::MatrixElement),
-    ("volts", SizeWord::Volts),
-];
+const SIZES: [(&str, SizeWord); 4] =
+    [("peak", SizeWord::Peak), ("turn", SizeWord::Turn), ("matrix_element", SizeWord::MatrixElement), ("volts", SizeWord::Volts)];
 
 /// Values between samples.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -125,102 +121,21 @@ struct Shape {
 }
 
 const GAUSSIAN_WIDTHS: [&str; 3] = ["field_sigma", "field_fwhm", "intensity_fwhm"];
-const TIMES: [&str; 8] = [
-    "length",
-    "rise",
-    "field_sigma",
-    "field_fwhm",
-    "intensity_fwhm",
-    "sech_time",
-    "rise_10_90",
-    "cut_at",
-];
+const TIMES: [&str; 8] = ["length", "rise", "field_sigma", "field_fwhm", "intensity_fwhm", "sech_time", "rise_10_90", "cut_at"];
 
 const SHAPES: [Shape; 12] = [
-    Shape {
-        word: "square",
-        needs: &["length"],
-        one_of: &[],
-        edge: false,
-        more: &[],
-    },
-    Shape {
-        word: "raised cosine",
-        needs: &["length"],
-        one_of: &[],
-        edge: false,
-        more: &[],
-    },
-    Shape {
-        word: "sine squared",
-        needs: &["length"],
-        one_of: &[],
-        edge: false,
-        more: &[],
-    },
-    Shape {
-        word: "blackman",
-        needs: &["length"],
-        one_of: &[],
-        edge: false,
-        more: &[],
-    },
-    Shape {
-        word: "cosine edges",
-        needs: &["length", "rise"],
-        one_of: &[],
-        edge: false,
-        more: &[],
-    },
-    Shape {
-        word: "trapezoid",
-        needs: &["length", "rise"],
-        one_of: &[],
-        edge: false,
-        more: &[],
-    },
-    Shape {
-        word: "gaussian",
-        needs: &["cut_at"],
-        one_of: &GAUSSIAN_WIDTHS,
-        edge: true,
-        more: &[],
-    },
-    Shape {
-        word: "sech",
-        needs: &["sech_time", "cut_at"],
-        one_of: &[],
-        edge: true,
-        more: &[],
-    },
-    Shape {
-        word: "error-function edges",
-        needs: &["length", "rise_10_90", "cut_at"],
-        one_of: &[],
-        edge: true,
-        more: &[],
-    },
-    Shape {
-        word: "exponential edges",
-        needs: &["length", "rise_10_90", "cut_at"],
-        one_of: &[],
-        edge: false,
-        more: &["edge"],
-    },
-    Shape {
-        word: "samples",
-        needs: &[],
-        one_of: &[],
-        edge: false,
-        more: &["samples", "file", "column", "between", "length"],
-    },
-    Shape {
-        word: "formula",
-        needs: &["length"],
-        one_of: &[],
-        edge: false,
-        more: &["formula"],
-    },
+    Shape { word: "square", needs: &["length"], one_of: &[], edge: false, more: &[] },
+    Shape { word: "raised cosine", needs: &["length"], one_of: &[], edge: false, more: &[] },
+    Shape { word: "sine squared", needs: &["length"], one_of: &[], edge: false, more: &[] },
+    Shape { word: "blackman", needs: &["length"], one_of: &[], edge: false, more: &[] },
+    Shape { word: "cosine edges", needs: &["length", "rise"], one_of: &[], edge: false, more: &[] },
+    Shape { word: "trapezoid", needs: &["length", "rise"], one_of: &[], edge: false, more: &[] },
+    Shape { word: "gaussian", needs: &["cut_at"], one_of: &GAUSSIAN_WIDTHS, edge: true, more: &[] },
+    Shape { word: "sech", needs: &["sech_time", "cut_at"], one_of: &[], edge: true, more: &[] },
+    Shape { word: "error-function edges", needs: &["length", "rise_10_90", "cut_at"], one_of: &[], edge: true, more: &[] },
+    Shape { word: "exponential edges", needs: &["length", "rise_10_90", "cut_at"], one_of: &[], edge: false, more: &["edge"] },
+    Shape { word: "samples", needs: &[], one_of: &[], edge: false, more: &["samples", "file", "column", "between", "length"] },
+    Shape { word: "formula", needs: &["length"], one_of: &[], edge: false, more: &["formula"] },
 ];
 
 const HINTS: [(&str, &str); 4] = [
@@ -234,22 +149,12 @@ const HINTS: [(&str, &str); 4] = [
 pub fn read_envelopes(reader: &mut Reader, node: &Node) -> (Vec<Envelope>, Vec<String>) {
     let Some(entries) = node.entries() else {
         let example = "flat: {shape: square, length: 0.2 us, peak: 2.5 MHz}".to_string();
-        reader.error(
-            node.place,
-            Fault::Shape {
-                what: "envelopes".to_string(),
-                expected: "a block of names".to_string(),
-                example,
-            },
-        );
+        reader.error(node.place, Fault::Shape { what: "envelopes".to_string(), expected: "a block of names".to_string(), example });
         return (Vec::new(), Vec::new());
     };
     let names: Vec<String> = entries.iter().map(|entry| entry.key.clone()).collect();
     super::system::warn_of_case(reader, "envelope", &names, node.place);
-    let envelopes = entries
-        .iter()
-        .filter_map(|entry| read_envelope(reader, &entry.key, entry.place, &entry.value))
-        .collect();
+    let envelopes = entries.iter().filter_map(|entry| read_envelope(reader, &entry.key, entry.place, &entry.value)).collect();
     (envelopes, names)
 }
 
@@ -273,59 +178,26 @@ fn read_envelope(reader: &mut Reader, name: &str, place: Place, node: &Node) -> 
     for entry in entries.iter().filter(|entry| !known.contains(&entry.key.as_str())) {
         let key = entry.key.as_str();
         if matches!(key, "fwhm" | "width" | "sigma" | "full_width") {
-            reader.error(
-                entry.place,
-                Fault::WidthWord {
-                    word: key.to_string(),
-                    shape: shape.word.to_string(),
-                },
-            );
+            reader.error(entry.place, Fault::WidthWord { word: key.to_string(), shape: shape.word.to_string() });
         } else if TIMES.contains(&key) || matches!(key, "edge" | "samples" | "file" | "between" | "formula" | "column") {
             let takes = known.iter().map(|key| (*key).to_string()).collect();
-            reader.error(
-                entry.place,
-                Fault::ShapeTakesNot {
-                    key: key.to_string(),
-                    shape: shape.word.to_string(),
-                    takes,
-                },
-            );
+            reader.error(entry.place, Fault::ShapeTakesNot { key: key.to_string(), shape: shape.word.to_string(), takes });
         }
     }
     let mut all_known: Vec<&str> = known.clone();
     all_known.extend(TIMES);
-    all_known.extend([
-        "edge",
-        "samples",
-        "file",
-        "between",
-        "formula",
-        "column",
-        "fwhm",
-        "width",
-        "sigma",
-        "full_width",
-    ]);
+    all_known.extend(["edge", "samples", "file", "between", "formula", "column", "fwhm", "width", "sigma", "full_width"]);
     let unknown = entries.iter().any(|entry| !all_known.contains(&entry.key.as_str()));
     if unknown {
         // judged against what this shape takes, so that the guess of a slip fits
         let mut judged: Vec<&str> = all_known.iter().copied().filter(|key| known.contains(key)).collect();
         judged.dedup();
-        let others: Vec<_> = entries
-            .iter()
-            .filter(|entry| !all_known.contains(&entry.key.as_str()))
-            .cloned()
-            .collect();
-        let view = Node {
-            place: node.place,
-            kind: super::tree::Kind::Map(others),
-        };
+        let others: Vec<_> = entries.iter().filter(|entry| !all_known.contains(&entry.key.as_str())).cloned().collect();
+        let view = Node { place: node.place, kind: super::tree::Kind::Map(others) };
         reader.fields(&view, &section, &judged, &HINTS);
     }
 
-    let width_slip = entries
-        .iter()
-        .any(|entry| matches!(entry.key.as_str(), "fwhm" | "width" | "sigma" | "full_width"));
+    let width_slip = entries.iter().any(|entry| matches!(entry.key.as_str(), "fwhm" | "width" | "sigma" | "full_width"));
     let mut times = Vec::new();
     for key in TIMES.iter().filter(|key| known.contains(*key)) {
         if let Some(value) = node.get(key) {
@@ -343,33 +215,17 @@ fn read_envelope(reader: &mut Reader, name: &str, place: Place, node: &Node) -> 
         Some(edge) => reader.word(edge, &format!("{section} / edge"), &[("step", Edge::Step), ("lift", Edge::Lift)]),
         None => {
             if shape.edge {
-                let at = entries
-                    .iter()
-                    .find(|entry| entry.key == "cut_at")
-                    .map_or(node.place, |entry| entry.place);
-                reader.error(
-                    at,
-                    Fault::EdgeUnsaid {
-                        shape: shape.word.to_string(),
-                    },
-                );
+                let at = entries.iter().find(|entry| entry.key == "cut_at").map_or(node.place, |entry| entry.place);
+                reader.error(at, Fault::EdgeUnsaid { shape: shape.word.to_string() });
             }
             None
         }
     };
     let between = node.get("between").and_then(|between| {
-        let words = [
-            ("hold", Between::Hold),
-            ("linear", Between::Linear),
-            ("band limited", Between::BandLimited),
-        ];
+        let words = [("hold", Between::Hold), ("linear", Between::Linear), ("band limited", Between::BandLimited)];
         reader.word(between, &format!("{section} / between"), &words)
     });
-    let samples = if shape.word == "samples" {
-        read_samples(reader, node, &section)
-    } else {
-        None
-    };
+    let samples = if shape.word == "samples" { read_samples(reader, node, &section) } else { None };
     let formula = if shape.word == "formula" {
         reader
             .need(node, "formula", &section, "exp(-t / tau)")
@@ -377,24 +233,12 @@ fn read_envelope(reader: &mut Reader, name: &str, place: Place, node: &Node) -> 
     } else {
         None
     };
-    let derivative = node
-        .get("derivative")
-        .and_then(|derivative| read_derivative(reader, derivative, &section));
-    let size_entry = reader.one_of(
-        node,
-        &["peak", "turn", "matrix_element", "field", "volts"],
-        &section,
-        Some("It says how strong the pulse is."),
-    );
+    let derivative = node.get("derivative").and_then(|derivative| read_derivative(reader, derivative, &section));
+    let size_entry =
+        reader.one_of(node, &["peak", "turn", "matrix_element", "field", "volts"], &section, Some("It says how strong the pulse is."));
     let size = size_entry.and_then(|entry| {
         if entry.key == "field" {
-            reader.error(
-                entry.place,
-                Fault::NotNow {
-                    key: "field".to_string(),
-                    section: section.clone(),
-                },
-            );
+            reader.error(entry.place, Fault::NotNow { key: "field".to_string(), section: section.clone() });
             return None;
         }
         let word = SIZES.iter().find(|(word, _)| *word == entry.key)?.1;
@@ -408,12 +252,7 @@ fn read_envelope(reader: &mut Reader, name: &str, place: Place, node: &Node) -> 
         quantity.map(|quantity| (word, quantity, entry.place))
     });
     if between == Some(Between::Hold) && node.get("derivative").is_some() {
-        reader.error(
-            node.get("derivative").map_or(place, |at| at.place),
-            Fault::DerivativeOfHeld {
-                envelope: name.to_string(),
-            },
-        );
+        reader.error(node.get("derivative").map_or(place, |at| at.place), Fault::DerivativeOfHeld { envelope: name.to_string() });
     }
     if reader.mistakes[mistakes..].iter().any(|mistake| !mistake.warning) {
         return None;
@@ -438,44 +277,28 @@ fn read_envelope(reader: &mut Reader, name: &str, place: Place, node: &Node) -> 
 fn read_derivative(reader: &mut Reader, node: &Node, section: &str) -> Option<Derivative> {
     let section = format!("{section} / derivative");
     reader.fields(node, &section, &["factor", "against"], &[])?;
-    let factor = reader
-        .need(node, "factor", &section, "0.5")
-        .and_then(|factor| reader.plain(factor, &format!("{section} / factor")));
-    let against = reader
-        .need(node, "against", &section, "anharmonicity")
-        .and_then(|against| reader.energy(against, &format!("{section} / against")));
-    Some(Derivative {
-        factor: factor?,
-        against: against?,
-    })
+    let factor = reader.need(node, "factor", &section, "0.5").and_then(|factor| reader.plain(factor, &format!("{section} / factor")));
+    let against =
+        reader.need(node, "against", &section, "anharmonicity").and_then(|against| reader.energy(against, &format!("{section} / against")));
+    Some(Derivative { factor: factor?, against: against? })
 }
 
 fn read_samples(reader: &mut Reader, node: &Node, section: &str) -> Option<Samples> {
     let source = reader.one_of(node, &["samples", "file"], section, None)?;
     if node.get("between").is_none() {
         let why = Some("hold: each until the next; linear: straight lines; band limited: what an ideal low-pass leaves.".to_string());
-        let fault = Fault::MissingKey {
-            key: "between".to_string(),
-            section: section.to_string(),
-            write: "between: linear".to_string(),
-            why,
-        };
+        let fault =
+            Fault::MissingKey { key: "between".to_string(), section: section.to_string(), write: "between: linear".to_string(), why };
         reader.error(node.place, fault);
     }
     if source.key == "samples" {
         reader.need(node, "length", section, "0.2 us");
         let items = reader.list(&source.value, "samples", "samples: [0, 0.5, 1]")?;
         let found: Vec<Option<Quantity>> = items.iter().map(|item| reader.plain(item, "a sample")).collect();
-        return found
-            .into_iter()
-            .map(|quantity| quantity.map(|quantity| quantity.register))
-            .collect::<Option<_>>()
-            .map(Samples::List);
+        return found.into_iter().map(|quantity| quantity.map(|quantity| quantity.register)).collect::<Option<_>>().map(Samples::List);
     }
     let name = reader.text(&source.value, "file", "file: pulse.csv")?.to_string();
-    let column = node
-        .get("column")
-        .and_then(|column| reader.text(column, "column", "column: envelope").map(str::to_string));
+    let column = node.get("column").and_then(|column| reader.text(column, "column", "column: envelope").map(str::to_string));
     let path = reader.beside(&name);
     let file = match read_text(&path, &mut reader.sources) {
         Ok(file) => file,
@@ -493,18 +316,10 @@ fn read_samples(reader: &mut Reader, node: &Node, section: &str) -> Option<Sampl
     };
     let text = reader.sources.files()[usize::from(file)].text.clone();
     match sample_table(&text, column.as_deref()) {
-        Ok((times, values)) => Some(Samples::File {
-            times_s: times.into(),
-            values: values.into(),
-        }),
+        Ok((times, values)) => Some(Samples::File { times_s: times.into(), values: values.into() }),
         Err((row, reason)) => {
             let length = reader.sources.line(file, row as u32).map_or(1, |line| line.chars().count().max(1));
-            let place = Place {
-                file,
-                line: row as u32,
-                column: 1,
-                length: length as u32,
-            };
+            let place = Place { file, line: row as u32, column: 1, length: length as u32 };
             reader.error(place, Fault::FileContent { path: name, row, reason });
             None
         }
@@ -513,12 +328,8 @@ fn read_samples(reader: &mut Reader, node: &Node, section: &str) -> Option<Sampl
 
 /// Times in s and values of a CSV text with the header `time_<unit>,<column>`; a fault names its line.
 fn sample_table(text: &str, column: Option<&str>) -> Result<(Vec<f64>, Vec<f64>), (usize, String)> {
-    let mut table = csv::ReaderBuilder::new()
-        .has_headers(false)
-        .flexible(true)
-        .comment(Some(b'#'))
-        .trim(csv::Trim::All)
-        .from_reader(text.as_bytes());
+    let mut table =
+        csv::ReaderBuilder::new().has_headers(false).flexible(true).comment(Some(b'#')).trim(csv::Trim::All).from_reader(text.as_bytes());
     let mut records = table.records();
     let line_of = |record: &csv::StringRecord| record.position().map_or(1, |at| at.line() as usize);
     let header = match records.next() {
@@ -527,16 +338,9 @@ fn sample_table(text: &str, column: Option<&str>) -> Result<(Vec<f64>, Vec<f64>)
         None => return Err((1, "the file is empty; a header time_us,envelope is expected".to_string())),
     };
     let head_line = line_of(&header);
-    let unit = header
-        .get(0)
-        .and_then(|name| name.strip_prefix("time_"))
-        .and_then(crate::units::unit)
-        .filter(|unit| unit.dim == Dim::TIME);
+    let unit = header.get(0).and_then(|name| name.strip_prefix("time_")).and_then(crate::units::unit).filter(|unit| unit.dim == Dim::TIME);
     let Some(unit) = unit else {
-        return Err((
-            head_line,
-            "the first heading must be time_us (or another unit of time after the underscore)".to_string(),
-        ));
+        return Err((head_line, "the first heading must be time_us (or another unit of time after the underscore)".to_string()));
     };
     let which = match column {
         None => 1,
@@ -547,17 +351,11 @@ fn sample_table(text: &str, column: Option<&str>) -> Result<(Vec<f64>, Vec<f64>)
     };
     let (mut times, mut values) = (Vec::new(), Vec::new());
     for record in records {
-        let record = record.map_err(|error| {
-            (
-                error.position().map_or(1, |at| at.line() as usize),
-                "the row is not UTF-8 text".to_string(),
-            )
-        })?;
+        let record =
+            record.map_err(|error| (error.position().map_or(1, |at| at.line() as usize), "the row is not UTF-8 text".to_string()))?;
         let line = line_of(&record);
         let number = |index: usize| -> Result<f64, (usize, String)> {
-            let cell = record
-                .get(index)
-                .ok_or_else(|| (line, format!("the row has no cell number {}", index + 1)))?;
+            let cell = record.get(index).ok_or_else(|| (line, format!("the row has no cell number {}", index + 1)))?;
             match cell.parse::<f64>() {
                 Ok(value) if value.is_finite() => Ok(value),
                 _ => Err((line, format!("\"{cell}\" is no finite number (dot as decimal sign)"))),

@@ -57,12 +57,7 @@ const MOST_OPERATIONS: usize = 1000;
 /// Parses a whole value.
 pub fn parse(text: &str) -> Result<Expression, Stumble> {
     let chars: Vec<char> = text.chars().collect();
-    let mut parser = Parser {
-        chars: &chars,
-        at: 0,
-        depth: 0,
-        operations: 0,
-    };
+    let mut parser = Parser { chars: &chars, at: 0, depth: 0, operations: 0 };
     let expression = parser.whole()?;
     parser.blanks();
     if parser.at < chars.len() {
@@ -101,29 +96,13 @@ impl Parser<'_> {
         match self.peek() {
             Some('\u{2212}' | '\u{2013}' | '\u{2014}') => (self.at, 1, Fault::TypographicMinus),
             Some(c) => {
-                let length = if starts_word(c) {
-                    self.word_from(self.at).chars().count().max(1)
-                } else {
-                    1
-                };
+                let length = if starts_word(c) { self.word_from(self.at).chars().count().max(1) } else { 1 };
                 let found: String = self.chars[self.at..self.at + length].iter().collect();
-                (
-                    self.at,
-                    length,
-                    Fault::Syntax {
-                        found: format!("\"{found}\" stands here"),
-                        expected: expected.to_string(),
-                    },
-                )
+                (self.at, length, Fault::Syntax { found: format!("\"{found}\" stands here"), expected: expected.to_string() })
             }
-            None => (
-                self.at.saturating_sub(1),
-                1,
-                Fault::Syntax {
-                    found: "the value ends here".to_string(),
-                    expected: expected.to_string(),
-                },
-            ),
+            None => {
+                (self.at.saturating_sub(1), 1, Fault::Syntax { found: "the value ends here".to_string(), expected: expected.to_string() })
+            }
         }
     }
 
@@ -143,22 +122,14 @@ impl Parser<'_> {
     }
 
     fn made(&self, start: usize, kind: Kind) -> Expression {
-        Expression {
-            start,
-            length: self.at - start,
-            kind,
-        }
+        Expression { start, length: self.at - start, kind }
     }
 
     /// Two values joined by an operation, which counts.
     fn joined(&mut self, sign: char, left: Expression, right: Expression, start: usize) -> Result<Expression, Stumble> {
         self.operations += 1;
         if self.operations > MOST_OPERATIONS {
-            return Err((
-                right.start.saturating_sub(1),
-                1,
-                Fault::TooManyOperations { limit: MOST_OPERATIONS },
-            ));
+            return Err((right.start.saturating_sub(1), 1, Fault::TooManyOperations { limit: MOST_OPERATIONS }));
         }
         Ok(self.made(start, Kind::Binary(sign, Box::new(left), Box::new(right))))
     }
@@ -238,11 +209,7 @@ impl Parser<'_> {
                     let here = self.at;
                     let (literal, decibel) = self.number(-1.0)?;
                     if decibel {
-                        return Ok(Expression {
-                            start,
-                            length: self.at - start,
-                            ..literal
-                        });
+                        return Ok(Expression { start, length: self.at - start, ..literal });
                     }
                     self.at = here;
                 }
@@ -276,11 +243,7 @@ impl Parser<'_> {
                 self.at += 1;
                 let inner = self.deeper(Self::whole)?;
                 self.closing()?;
-                Ok(Expression {
-                    start,
-                    length: self.at - start,
-                    kind: inner.kind,
-                })
+                Ok(Expression { start, length: self.at - start, kind: inner.kind })
             }
             Some(c) if starts_word(c) && c != '%' => {
                 let word = self.word_from(start);
@@ -346,10 +309,7 @@ impl Parser<'_> {
             return Err((
                 start.min(self.chars.len().saturating_sub(1)),
                 length,
-                Fault::Syntax {
-                    found,
-                    expected: "gap(a, b)".to_string(),
-                },
+                Fault::Syntax { found, expected: "gap(a, b)".to_string() },
             ));
         }
         self.at += 1;
@@ -381,15 +341,8 @@ impl Parser<'_> {
             Ok(value) if value.is_finite() => value,
             _ => return Err((start, self.at - start, Fault::TooLarge { text })),
         };
-        let mut kind = Kind::Number {
-            value,
-            dim: Dim::NONE,
-            cyclic: false,
-            plain: true,
-            bare_volts: false,
-            power_ratio: false,
-            imaginary: false,
-        };
+        let mut kind =
+            Kind::Number { value, dim: Dim::NONE, cyclic: false, plain: true, bare_volts: false, power_ratio: false, imaginary: false };
         let mut decibel = false;
         if self.peek() == Some('i') && !self.chars.get(self.at + 1).copied().is_some_and(in_word) {
             self.at += 1;
@@ -399,16 +352,7 @@ impl Parser<'_> {
         }
         let number_end = self.at;
         self.blanks();
-        if let Kind::Number {
-            value,
-            dim,
-            cyclic,
-            plain,
-            bare_volts,
-            power_ratio,
-            ..
-        } = &mut kind
-        {
+        if let Kind::Number { value, dim, cyclic, plain, bare_volts, power_ratio, .. } = &mut kind {
             match self.unit(&text)? {
                 Some(Suffix::Unit(unit)) => {
                     *value *= unit.factor;
@@ -417,13 +361,7 @@ impl Parser<'_> {
                 }
                 Some(Suffix::Wavelength(metres)) => {
                     if *value == 0.0 {
-                        return Err((
-                            start,
-                            self.at - start,
-                            Fault::ZeroDivision {
-                                text: "a wavelength of zero".to_string(),
-                            },
-                        ));
+                        return Err((start, self.at - start, Fault::ZeroDivision { text: "a wavelength of zero".to_string() }));
                     }
                     *value = units::WAVELENGTH_M_HZ / (*value * metres);
                     (*dim, *plain) = (Dim::FREQUENCY, false);
@@ -473,11 +411,7 @@ impl Parser<'_> {
             return match units::unit(&word).filter(|_| self.chars.get(start + 1 + word.chars().count()) != Some(&'(')) {
                 Some(unit) => {
                     self.at += 1 + word.chars().count();
-                    let unit = Unit {
-                        dim: Dim::NONE.over(unit.dim),
-                        factor: 1.0 / unit.factor,
-                        cyclic: false,
-                    };
+                    let unit = Unit { dim: Dim::NONE.over(unit.dim), factor: 1.0 / unit.factor, cyclic: false };
                     Ok(Some(Suffix::Unit(self.more_units(unit))))
                 }
                 None => Ok(None),
@@ -494,24 +428,12 @@ impl Parser<'_> {
         match word.as_str() {
             "dB_amplitude" => return Ok(Some(Suffix::Decibel(20.0))),
             "dB_power" => return Ok(Some(Suffix::Decibel(10.0))),
-            "dB" => {
-                return Err((
-                    start,
-                    length,
-                    Fault::PlainDecibel {
-                        text: format!("{number} dB"),
-                    },
-                ))
-            }
+            "dB" => return Err((start, length, Fault::PlainDecibel { text: format!("{number} dB") })),
             "dBm" => {
                 if self.word_ahead() == "into" {
                     self.at += 4;
                     self.blanks();
-                    let text: String = self.chars[self.at..]
-                        .iter()
-                        .copied()
-                        .take_while(|c| c.is_ascii_digit() || *c == '.')
-                        .collect();
+                    let text: String = self.chars[self.at..].iter().copied().take_while(|c| c.is_ascii_digit() || *c == '.').collect();
                     self.at += text.chars().count();
                     if let Ok(ohms) = text.parse::<f64>() {
                         if ohms > 0.0 && self.word_ahead() == "ohm" {
@@ -521,42 +443,21 @@ impl Parser<'_> {
                     }
                 }
                 let (start, length) = span(self);
-                return Err((
-                    start,
-                    length,
-                    Fault::PowerWithoutLoad {
-                        text: format!("{number} dBm"),
-                    },
-                ));
+                return Err((start, length, Fault::PowerWithoutLoad { text: format!("{number} dBm") }));
             }
             "cm" if self.chars[after..].starts_with(&['^', '-', '1']) => {
                 self.at += 3;
-                return Ok(Some(Suffix::Unit(Unit {
-                    dim: Dim::FREQUENCY,
-                    factor: units::HZ_PER_CM,
-                    cyclic: false,
-                })));
+                return Ok(Some(Suffix::Unit(Unit { dim: Dim::FREQUENCY, factor: units::HZ_PER_CM, cyclic: false })));
             }
             "e" if self.chars.get(after) == Some(&'*') => {
                 // a charge is an energy per volt: e V = 1 eV
-                let charge = Unit {
-                    dim: Dim::FREQUENCY.over(Dim::VOLTAGE),
-                    factor: constants::CHARGE / constants::PLANCK,
-                    cyclic: false,
-                };
+                let charge = Unit { dim: Dim::FREQUENCY.over(Dim::VOLTAGE), factor: constants::CHARGE / constants::PLANCK, cyclic: false };
                 return Ok(Some(Suffix::Unit(self.more_units(charge))));
             }
             _ => {}
         }
         let Some(unit) = units::unit(&word) else {
-            return Err((
-                start,
-                length,
-                Fault::UnknownUnit {
-                    near: units::unit_of_other_case(&word),
-                    symbol: word,
-                },
-            ));
+            return Err((start, length, Fault::UnknownUnit { near: units::unit_of_other_case(&word), symbol: word }));
         };
         let here = self.at;
         if unit.dim == Dim::LENGTH && self.word_ahead() == "vacuum" {
@@ -585,16 +486,8 @@ impl Parser<'_> {
                 self.at += 2;
             }
             for _ in 0..power {
-                unit.dim = if sign == '*' {
-                    unit.dim.times(next.dim)
-                } else {
-                    unit.dim.over(next.dim)
-                };
-                unit.factor = if sign == '*' {
-                    unit.factor * next.factor
-                } else {
-                    unit.factor / next.factor
-                };
+                unit.dim = if sign == '*' { unit.dim.times(next.dim) } else { unit.dim.over(next.dim) };
+                unit.factor = if sign == '*' { unit.factor * next.factor } else { unit.factor / next.factor };
             }
             unit.cyclic |= next.cyclic;
         }

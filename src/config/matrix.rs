@@ -41,25 +41,15 @@ pub fn rows(reader: &mut Reader, node: &Node, section: &str) -> Option<Rows> {
         let mut found = Vec::new();
         for row in reader.list(&entry.value, &format!("{section} / rows"), "rows: [[0, 1], [1, 0]]")? {
             let cells = reader.list(row, &format!("a row of {section}"), "[0, 1]")?;
-            found.push(Row {
-                place: row.place,
-                cells: cells.to_vec(),
-            });
+            found.push(Row { place: row.place, cells: cells.to_vec() });
         }
         return Some(Rows::Text(found));
     }
-    let name = reader
-        .text(&entry.value, &format!("{section} / rows_from"), "rows_from: matrix.csv")?
-        .to_string();
+    let name = reader.text(&entry.value, &format!("{section} / rows_from"), "rows_from: matrix.csv")?.to_string();
     let path = reader.beside(&name);
     if path.extension().is_some_and(|end| end == "npy") {
         return match npy::read(&path) {
-            Ok(npy::Array {
-                rows,
-                columns,
-                values,
-                bytes,
-            }) => {
+            Ok(npy::Array { rows, columns, values, bytes }) => {
                 reader.sources.add(&path, bytes, String::new());
                 let found = (0..rows).map(|row| values[row * columns..(row + 1) * columns].to_vec()).collect();
                 Some(Rows::Binary(found, entry.value.place))
@@ -93,31 +83,11 @@ pub fn rows(reader: &mut Reader, node: &Node, section: &str) -> Option<Rows> {
             let lead = cell.chars().take_while(|c| c.is_whitespace()).count();
             let trimmed = cell.trim();
             let length = trimmed.chars().count();
-            let place = Place {
-                file,
-                line: number as u32 + 1,
-                column: (column + lead) as u32,
-                length: length.max(1) as u32,
-            };
-            cells.push(Node {
-                place,
-                kind: Kind::Scalar {
-                    text: trimmed.to_string(),
-                    quoted: false,
-                    exact: true,
-                },
-            });
+            let place = Place { file, line: number as u32 + 1, column: (column + lead) as u32, length: length.max(1) as u32 };
+            cells.push(Node { place, kind: Kind::Scalar { text: trimmed.to_string(), quoted: false, exact: true } });
             column += cell.chars().count() + 1;
         }
-        found.push(Row {
-            place: Place {
-                file,
-                line: number as u32 + 1,
-                column: 1,
-                length: line.chars().count().max(1) as u32,
-            },
-            cells,
-        });
+        found.push(Row { place: Place { file, line: number as u32 + 1, column: 1, length: line.chars().count().max(1) as u32 }, cells });
     }
     Some(Rows::Text(found))
 }
@@ -125,9 +95,7 @@ pub fn rows(reader: &mut Reader, node: &Node, section: &str) -> Option<Rows> {
 /// `lower: mirror`.
 pub fn mirrored(reader: &mut Reader, node: &Node, section: &str) -> bool {
     match node.get("lower") {
-        Some(lower) => reader
-            .word(lower, &format!("{section} / lower"), &[("mirror", true)])
-            .unwrap_or(false),
+        Some(lower) => reader.word(lower, &format!("{section} / lower"), &[("mirror", true)]).unwrap_or(false),
         None => false,
     }
 }
@@ -135,13 +103,7 @@ pub fn mirrored(reader: &mut Reader, node: &Node, section: &str) -> bool {
 /// Checks the shape of typed rows and gives every written entry by row and column; with `mirror` a row starts at its diagonal.
 pub fn cells<'r>(reader: &mut Reader, rows: &'r [Row], size: usize, mirror: bool, place: Place) -> Option<Vec<(usize, usize, &'r Node)>> {
     if rows.len() != size {
-        reader.error(
-            place,
-            Fault::RowCount {
-                found: rows.len(),
-                wanted: size,
-            },
-        );
+        reader.error(place, Fault::RowCount { found: rows.len(), wanted: size });
         return None;
     }
     let mut found = Vec::new();
@@ -149,15 +111,7 @@ pub fn cells<'r>(reader: &mut Reader, rows: &'r [Row], size: usize, mirror: bool
     for (index, row) in rows.iter().enumerate() {
         let first = if mirror { index } else { 0 };
         if row.cells.len() != size - first {
-            reader.error(
-                row.place,
-                Fault::RowLength {
-                    row: index + 1,
-                    found: row.cells.len(),
-                    wanted: size - first,
-                    mirror,
-                },
-            );
+            reader.error(row.place, Fault::RowLength { row: index + 1, found: row.cells.len(), wanted: size - first, mirror });
             good = false;
             continue;
         }
@@ -197,15 +151,8 @@ pub fn mirror_entries(reader: &mut Reader, entries: &mut Vec<MatrixEntry>) {
     for k in 0..entries.len() {
         let entry = entries[k];
         if entry.row != entry.column {
-            let im = entry
-                .value
-                .im
-                .map(|im| reader.tape.push(TapeEntry::One(One::Negative, im), entry.value.place));
-            entries.push(MatrixEntry {
-                row: entry.column,
-                column: entry.row,
-                value: ComplexQuantity { im, ..entry.value },
-            });
+            let im = entry.value.im.map(|im| reader.tape.push(TapeEntry::One(One::Negative, im), entry.value.place));
+            entries.push(MatrixEntry { row: entry.column, column: entry.row, value: ComplexQuantity { im, ..entry.value } });
         }
     }
 }
@@ -213,25 +160,11 @@ pub fn mirror_entries(reader: &mut Reader, entries: &mut Vec<MatrixEntry>) {
 /// The entries of a binary matrix, each times `factor`.
 pub fn binary_entries(reader: &mut Reader, rows: &[Vec<(f64, f64)>], size: usize, factor: f64, place: Place) -> Option<Vec<MatrixEntry>> {
     if rows.len() != size {
-        reader.error(
-            place,
-            Fault::RowCount {
-                found: rows.len(),
-                wanted: size,
-            },
-        );
+        reader.error(place, Fault::RowCount { found: rows.len(), wanted: size });
         return None;
     }
     if let Some(bad) = rows.iter().position(|row| row.len() != size) {
-        reader.error(
-            place,
-            Fault::RowLength {
-                row: bad + 1,
-                found: rows[bad].len(),
-                wanted: size,
-                mirror: false,
-            },
-        );
+        reader.error(place, Fault::RowLength { row: bad + 1, found: rows[bad].len(), wanted: size, mirror: false });
         return None;
     }
     let mut entries = Vec::new();
@@ -240,11 +173,7 @@ pub fn binary_entries(reader: &mut Reader, rows: &[Vec<(f64, f64)>], size: usize
             if *re != 0.0 || *im != 0.0 {
                 let re = reader.constant(re * factor, place);
                 let im = (*im != 0.0).then(|| reader.constant(im * factor, place));
-                entries.push(MatrixEntry {
-                    row,
-                    column,
-                    value: ComplexQuantity { re, im, place },
-                });
+                entries.push(MatrixEntry { row, column, value: ComplexQuantity { re, im, place } });
             }
         }
     }

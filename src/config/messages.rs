@@ -25,20 +25,12 @@ pub struct Mistake {
 impl Mistake {
     /// An error at `place`.
     pub fn error(place: Place, fault: Fault) -> Mistake {
-        Mistake {
-            fault,
-            place,
-            warning: false,
-        }
+        Mistake { fault, place, warning: false }
     }
 
     /// A warning at `place`.
     pub fn warning(place: Place, fault: Fault) -> Mistake {
-        Mistake {
-            fault,
-            place,
-            warning: true,
-        }
+        Mistake { fault, place, warning: true }
     }
 }
 
@@ -47,392 +39,127 @@ impl Mistake {
 #[allow(missing_docs)] // the fields are the words of the sentence that `words` makes of them
 pub enum Fault {
     // the file
-    CannotRead {
-        path: String,
-        reason: String,
-    },
-    IsFolder {
-        path: String,
-    },
-    TooLong {
-        path: String,
-        bytes: u64,
-        limit: u64,
-    },
-    NotUtf8 {
-        byte: u8,
-    },
-    Control {
-        code: u32,
-    },
+    CannotRead { path: String, reason: String },
+    IsFolder { path: String },
+    TooLong { path: String, bytes: u64, limit: u64 },
+    NotUtf8 { byte: u8 },
+    Control { code: u32 },
     Tab,
     Empty,
-    NotYaml {
-        reason: String,
-    },
-    Anchor {
-        text: String,
-    },
-    Alias {
-        text: String,
-    },
-    Tag {
-        text: String,
-    },
+    NotYaml { reason: String },
+    Anchor { text: String },
+    Alias { text: String },
+    Tag { text: String },
     SecondDocument,
-    TooDeep {
-        limit: usize,
-    },
-    TooManyOperations {
-        limit: usize,
-    },
+    TooDeep { limit: usize },
+    TooManyOperations { limit: usize },
     KeyNotText,
-    DuplicateKey {
-        key: String,
-        first: u32,
-    },
+    DuplicateKey { key: String, first: u32 },
     NoFormat,
-    OtherFormat {
-        found: String,
-    },
+    OtherFormat { found: String },
     // keys and words
-    UnknownKey {
-        key: String,
-        section: String,
-        near: Option<String>,
-        known: Vec<String>,
-        hint: Option<String>,
-    },
-    MissingKey {
-        key: String,
-        section: String,
-        write: String,
-        why: Option<String>,
-    },
-    NotNow {
-        key: String,
-        section: String,
-    },
-    OneOf {
-        found: Vec<String>,
-        lines: Vec<u32>,
-        section: String,
-    },
-    OneOfMissing {
-        keys: Vec<String>,
-        section: String,
-        hint: Option<String>,
-    },
-    Shape {
-        what: String,
-        expected: String,
-        example: String,
-    },
-    CutAtComma {
-        text: String,
-    },
-    UnknownWord {
-        what: String,
-        found: String,
-        known: Vec<String>,
-        near: Option<String>,
-        hint: Option<String>,
-    },
-    UnknownName {
-        kind: &'static str,
-        found: String,
-        near: Option<String>,
-        known: Vec<String>,
-    },
-    NameNotFree {
-        name: String,
-        reason: String,
-    },
-    SameButForCase {
-        kind: &'static str,
-        name: String,
-        other: String,
-    },
-    Unused {
-        kind: &'static str,
-        name: String,
-    },
+    UnknownKey { key: String, section: String, near: Option<String>, known: Vec<String>, hint: Option<String> },
+    MissingKey { key: String, section: String, write: String, why: Option<String> },
+    NotNow { key: String, section: String },
+    OneOf { found: Vec<String>, lines: Vec<u32>, section: String },
+    OneOfMissing { keys: Vec<String>, section: String, hint: Option<String> },
+    Shape { what: String, expected: String, example: String },
+    CutAtComma { text: String },
+    UnknownWord { what: String, found: String, known: Vec<String>, near: Option<String>, hint: Option<String> },
+    UnknownName { kind: &'static str, found: String, near: Option<String>, known: Vec<String> },
+    NameNotFree { name: String, reason: String },
+    SameButForCase { kind: &'static str, name: String, other: String },
+    Unused { kind: &'static str, name: String },
     // arithmetic
-    Syntax {
-        found: String,
-        expected: String,
-    },
+    Syntax { found: String, expected: String },
     TypographicMinus,
-    TooLarge {
-        text: String,
-    },
-    UnknownUnit {
-        symbol: String,
-        near: Option<String>,
-    },
-    PlainDecibel {
-        text: String,
-    },
-    PowerWithoutLoad {
-        text: String,
-    },
-    NoUnit {
-        text: String,
-        what: String,
-        dim: Dim,
-        used: Option<u32>,
-    },
-    WrongDim {
-        what: String,
-        wanted: Dim,
-        found: Dim,
-        defined: Option<u32>,
-        write: Option<String>,
-    },
-    Mixed {
-        operation: String,
-        left: Dim,
-        right: Dim,
-    },
-    CyclicTimesPi {
-        hz: Option<f64>,
-        factor: Option<f64>,
-        name: String,
-        inner: Option<String>,
-    },
-    AngleWanted {
-        function: String,
-        found: Dim,
-        text: String,
-    },
-    PlainWanted {
-        function: String,
-        found: Dim,
-    },
-    PowerOfUnit {
-        found: Dim,
-    },
-    BareVolts {
-        text: String,
-        volts: f64,
-    },
-    DecibelOfPower {
-        text: String,
-    },
-    Circle {
-        chain: Vec<(String, u32)>,
-    },
-    ZeroDivision {
-        text: String,
-    },
-    NotFinite {
-        text: String,
-    },
+    TooLarge { text: String },
+    UnknownUnit { symbol: String, near: Option<String> },
+    PlainDecibel { text: String },
+    PowerWithoutLoad { text: String },
+    NoUnit { text: String, what: String, dim: Dim, used: Option<u32> },
+    WrongDim { what: String, wanted: Dim, found: Dim, defined: Option<u32>, write: Option<String> },
+    Mixed { operation: String, left: Dim, right: Dim },
+    CyclicTimesPi { hz: Option<f64>, factor: Option<f64>, name: String, inner: Option<String> },
+    AngleWanted { function: String, found: Dim, text: String },
+    PlainWanted { function: String, found: Dim },
+    PowerOfUnit { found: Dim },
+    BareVolts { text: String, volts: f64 },
+    DecibelOfPower { text: String },
+    Circle { chain: Vec<(String, u32)> },
+    ZeroDivision { text: String },
+    NotFinite { text: String },
     TimeOutside,
     ImaginaryOutside,
-    NoFunction {
-        name: String,
-        near: Option<String>,
-    },
-    Milli {
-        text: String,
-    },
-    NotWhole {
-        what: String,
-        found: f64,
-        from: f64,
-    },
-    OutOfRange {
-        what: String,
-        found: String,
-        wanted: String,
-    },
+    NoFunction { name: String, near: Option<String> },
+    Milli { text: String },
+    NotWhole { what: String, found: f64, from: f64 },
+    OutOfRange { what: String, found: String, wanted: String },
     // the system
-    RowLength {
-        row: usize,
-        found: usize,
-        wanted: usize,
-        mirror: bool,
-    },
-    RowCount {
-        found: usize,
-        wanted: usize,
-    },
-    NotHermitian {
-        row: String,
-        column: String,
-        upper: String,
-        lower: String,
-        lines: [u32; 2],
-        write: String,
-    },
-    TooManyLevels {
-        levels: f64,
-        bytes: f64,
-        limit: usize,
-    },
-    FileContent {
-        path: String,
-        row: usize,
-        reason: String,
-    },
-    EmptySystem {
-        what: String,
-    },
-    SameLevel {
-        name: String,
-    },
+    RowLength { row: usize, found: usize, wanted: usize, mirror: bool },
+    RowCount { found: usize, wanted: usize },
+    NotHermitian { row: String, column: String, upper: String, lower: String, lines: [u32; 2], write: String },
+    TooManyLevels { levels: f64, bytes: f64, limit: usize },
+    FileContent { path: String, row: usize, reason: String },
+    EmptySystem { what: String },
+    SameLevel { name: String },
     // drives
-    NeedsReference {
-        drive: String,
-        pairs: usize,
-    },
-    NoSuchCoupling {
-        drive: String,
-        from: String,
-        to: String,
-    },
-    NotHermitianDrive {
-        drive: String,
-        operator: String,
-    },
-    SamePair {
-        name: String,
-    },
-    NeedsCarrier {
-        drive: String,
-    },
-    CarrierOfDirect {
-        drive: String,
-    },
-    PhaseUnsaid {
-        drive: String,
-        times: usize,
-        why_first: bool,
-    },
-    PhaseOfDirect {
-        drive: String,
-    },
-    SizeOfDirect {
-        envelope: String,
-        drive: String,
-        key: String,
-    },
-    MatrixElementOnly {
-        envelope: String,
-        drive: String,
-    },
-    DerivativeOfDirect {
-        envelope: String,
-        drive: String,
-    },
-    DerivativeOfHeld {
-        envelope: String,
-    },
-    NoCalibration {
-        envelope: String,
-        drive: String,
-    },
-    PhaseChangeUnsaid {
-        drive: String,
-    },
+    NeedsReference { drive: String, pairs: usize },
+    NoSuchCoupling { drive: String, from: String, to: String },
+    NotHermitianDrive { drive: String, operator: String },
+    SamePair { name: String },
+    NeedsCarrier { drive: String },
+    CarrierOfDirect { drive: String },
+    PhaseUnsaid { drive: String, times: usize, why_first: bool },
+    PhaseOfDirect { drive: String },
+    SizeOfDirect { envelope: String, drive: String, key: String },
+    MatrixElementOnly { envelope: String, drive: String },
+    DerivativeOfDirect { envelope: String, drive: String },
+    DerivativeOfHeld { envelope: String },
+    NoCalibration { envelope: String, drive: String },
+    PhaseChangeUnsaid { drive: String },
     // envelopes
-    WidthWord {
-        word: String,
-        shape: String,
-    },
-    EdgeUnsaid {
-        shape: String,
-    },
-    ShapeTakesNot {
-        key: String,
-        shape: String,
-        takes: Vec<String>,
-    },
-    NotPositive {
-        what: String,
-        value: f64,
-        unit: String,
-    },
-    EdgesTooLong {
-        rise_s: f64,
-        length_s: f64,
-    },
-    NoArea {
-        envelope: String,
-    },
-    FlatLift {
-        envelope: String,
-    },
-    Samples {
-        reason: String,
-    },
-    EnvelopeStep {
-        envelope: String,
-        share: f64,
-    },
+    WidthWord { word: String, shape: String },
+    EdgeUnsaid { shape: String },
+    ShapeTakesNot { key: String, shape: String, takes: Vec<String> },
+    NotPositive { what: String, value: f64, unit: String },
+    EdgesTooLong { rise_s: f64, length_s: f64 },
+    NoArea { envelope: String },
+    FlatLift { envelope: String },
+    Samples { reason: String },
+    EnvelopeStep { envelope: String, share: f64 },
     // sequence
-    BeforeStart {
-        start_s: f64,
-        from_zero: bool,
-        write: Option<String>,
-    },
-    Overlap {
-        gap_s: f64,
-    },
+    BeforeStart { start_s: f64, from_zero: bool, write: Option<String> },
+    Overlap { gap_s: f64 },
     NoPulseBefore,
     NoPulseAfter,
     EmptySequence,
-    TooManySteps {
-        steps: f64,
-        limit: usize,
-    },
-    BlockInItself {
-        name: String,
-    },
+    TooManySteps { steps: f64, limit: usize },
+    BlockInItself { name: String },
     BothPhases,
-    AmbiguousDrive {
-        key: &'static str,
-    },
+    AmbiguousDrive { key: &'static str },
     // start, record, accuracy
-    NotNormalised {
-        sum: f64,
-        write: String,
-    },
-    AfterEnd {
-        time_s: f64,
-        end_s: f64,
-    },
-    TooManyRows {
-        rows: f64,
-        limit: f64,
-    },
-    AccuracyNotPositive {
-        found: f64,
-    },
-    AccuracyTooFine {
-        found: f64,
-        floor: f64,
-    },
-    FreeZUnsaid {
-        levels: usize,
-    },
-    NotUnitary {
-        off: f64,
-    },
-    TargetSize {
-        found: usize,
-        wanted: usize,
-    },
-    NotDiagonal {
-        operator: String,
-    },
+    NotNormalised { sum: f64, write: String },
+    AfterEnd { time_s: f64, end_s: f64 },
+    TooManyRows { rows: f64, limit: f64 },
+    AccuracyNotPositive { found: f64 },
+    AccuracyTooFine { found: f64, floor: f64 },
+    FreeZUnsaid { levels: usize },
+    NotUnitary { off: f64 },
+    TargetSize { found: usize, wanted: usize },
+    NotDiagonal { operator: String },
+    // frames
+    Beat { drive: String, levels: [String; 2], turns_hz: f64, sum: String, closes_hz: f64 },
+    DoubtfulDrop { drive: String, levels: [String; 2], size_hz: f64, turns_hz: f64 },
+    StartEliminated { level: String },
+    TooNear { levels: Vec<String>, validity: f64, limit: f64 },
+    VariantTwice { name: String },
+    VariantChangesNothing { name: String },
+    NothingToCompare,
+    PeriodTooLong { period_s: f64, end_s: f64 },
+    NotPeriodic { period_s: f64, at_s: f64 },
     // from the command line
-    NoSuchNumber {
-        name: String,
-        near: Option<String>,
-        known: Vec<String>,
-    },
+    NoSuchNumber { name: String, near: Option<String>, known: Vec<String> },
 }
 
 /// A sentence taken apart: fact, reasons, and lines to write instead.
@@ -443,11 +170,7 @@ struct Words {
 }
 
 fn say(fact: impl Into<String>) -> Words {
-    Words {
-        fact: fact.into(),
-        why: Vec::new(),
-        write: Vec::new(),
-    }
+    Words { fact: fact.into(), why: Vec::new(), write: Vec::new() }
 }
 
 impl Words {
@@ -486,11 +209,7 @@ pub fn short(value: f64) -> String {
     if !(1e-3..1e6).contains(&size) {
         let text = format!("{value:.5e}");
         let (digits, power) = text.split_once('e').unwrap_or((&text, "0"));
-        let digits = if digits.contains('.') {
-            digits.trim_end_matches('0').trim_end_matches('.')
-        } else {
-            digits
-        };
+        let digits = if digits.contains('.') { digits.trim_end_matches('0').trim_end_matches('.') } else { digits };
         return format!("{digits}e{power}");
     }
     let decimals = (5 - size.log10().floor() as i32).clamp(0, 9) as usize;
@@ -508,34 +227,13 @@ pub fn short_with_unit(value: f64, unit: &str) -> String {
         return short(value);
     }
     let size = value.abs();
-    let prefixes = [
-        (1e12, "T"),
-        (1e9, "G"),
-        (1e6, "M"),
-        (1e3, "k"),
-        (1.0, ""),
-        (1e-3, "m"),
-        (1e-6, "u"),
-        (1e-9, "n"),
-        (1e-12, "p"),
-        (1e-15, "f"),
-    ];
+    let prefixes =
+        [(1e12, "T"), (1e9, "G"), (1e6, "M"), (1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, "u"), (1e-9, "n"), (1e-12, "p"), (1e-15, "f")];
     if size == 0.0 || !["s", "Hz", "V", "T", "K", "W", "m"].contains(&unit) {
-        return if unit.starts_with('/') {
-            format!("{} {unit}", short(value))
-        } else {
-            format!("{} {unit}", short(value))
-        };
+        return if unit.starts_with('/') { format!("{} {unit}", short(value)) } else { format!("{} {unit}", short(value)) };
     }
-    let (factor, prefix) = prefixes
-        .iter()
-        .find(|(factor, _)| size >= factor * 0.999_999_9)
-        .unwrap_or(&prefixes[9]);
-    let (factor, prefix) = if unit == "s" && *factor > 1.0 {
-        (&1.0, &"")
-    } else {
-        (factor, prefix)
-    };
+    let (factor, prefix) = prefixes.iter().find(|(factor, _)| size >= factor * 0.999_999_9).unwrap_or(&prefixes[9]);
+    let (factor, prefix) = if unit == "s" && *factor > 1.0 { (&1.0, &"") } else { (factor, prefix) };
     format!("{} {prefix}{unit}", short(value / factor))
 }
 
@@ -553,12 +251,10 @@ impl Fault {
         match self {
             CannotRead { path, reason } => say(format!("{path} cannot be read: {reason}.")).write("the path of a file that exists"),
             IsFolder { path } => say(format!("{path} is a folder, not a file.")).write("the path of a config, a YAML file"),
-            TooLong { path, bytes, limit } => say(format!(
-                "{path} is too long: {} against at most {}.",
-                memory(*bytes as f64),
-                memory(*limit as f64)
-            ))
-            .why("A config is a page; long lists belong in a CSV file beside it."),
+            TooLong { path, bytes, limit } => {
+                say(format!("{path} is too long: {} against at most {}.", memory(*bytes as f64), memory(*limit as f64)))
+                    .why("A config is a page; long lists belong in a CSV file beside it.")
+            }
             NotUtf8 { byte } => say(format!("this file is not in UTF-8: byte 0x{byte:02x} stands here."))
                 .why("Editors write it so when told to save as UTF-8. For micro, u may stand: 3.1 us.")
                 .write("the file saved again as UTF-8"),
@@ -578,9 +274,9 @@ impl Fault {
             Tag { text } => say(format!("{text} is a YAML tag; tags are not accepted."))
                 .why("Values are read as they stand; nothing in a config can run a program.")
                 .write("the value without the tag"),
-            SecondDocument => say("a second YAML document begins here.")
-                .why("A config is one document.")
-                .write("two files, or the line --- taken out"),
+            SecondDocument => {
+                say("a second YAML document begins here.").why("A config is one document.").write("two files, or the line --- taken out")
+            }
             TooDeep { limit } => {
                 say(format!("brackets or blocks are nested more than {limit} deep here.")).why("No section of a config needs that depth.")
             }
@@ -596,13 +292,7 @@ impl Fault {
             }
             OtherFormat { found } => say(format!("\"{found}\" is no version of the language that this program knows.")).write("format: 1"),
 
-            UnknownKey {
-                key,
-                section,
-                near,
-                known,
-                hint,
-            } => {
+            UnknownKey { key, section, near, known, hint } => {
                 let mut words = say(format!("{section} has no key \"{key}\"."));
                 if let Some(hint) = hint {
                     words = words.why(hint.clone());
@@ -633,18 +323,10 @@ impl Fault {
                 }
             }
             Shape { what, expected, example } => say(format!("{what} must be {expected}.")).write(example.clone()),
-            CutAtComma { text } => say(format!(
-                "\"{text}\" is cut off: inside braces or brackets YAML ends a value at the comma."
-            ))
-            .write("the value in quotes, as in {carrier: \"gap(a, b)\"}")
-            .write("or the block form, each key on its own line"),
-            UnknownWord {
-                what,
-                found,
-                known,
-                near,
-                hint,
-            } => {
+            CutAtComma { text } => say(format!("\"{text}\" is cut off: inside braces or brackets YAML ends a value at the comma."))
+                .write("the value in quotes, as in {carrier: \"gap(a, b)\"}")
+                .write("or the block form, each key on its own line"),
+            UnknownWord { what, found, known, near, hint } => {
                 let mut words = say(format!("{what} cannot be \"{found}\"."));
                 if let Some(hint) = hint {
                     words = words.why(hint.clone());
@@ -654,9 +336,9 @@ impl Fault {
             UnknownName { kind, found, near, known } => {
                 let words = say(format!("no {kind} is called \"{found}\"."));
                 let words = match (near, *kind) {
-                    (Some(near), "number") => words.why(format!(
-                        "Closest defined number: {near}. Built-in names: pi, t (inside formulas of time only)."
-                    )),
+                    (Some(near), "number") => {
+                        words.why(format!("Closest defined number: {near}. Built-in names: pi, t (inside formulas of time only)."))
+                    }
                     (_, "number") if known.is_empty() => {
                         words.why("The file defines no numbers. Built-in names: pi, t (inside formulas of time only).")
                     }
@@ -677,9 +359,7 @@ impl Fault {
             }
 
             Syntax { found, expected } => say(format!("{found}; {expected} was expected.")),
-            TypographicMinus => say("this is a typographic minus sign.")
-                .why("Arithmetic wants the plain one.")
-                .write("-"),
+            TypographicMinus => say("this is a typographic minus sign.").why("Arithmetic wants the plain one.").write("-"),
             TooLarge { text } => {
                 say(format!("{text} is too large for a number of the machine.")).why("The largest finite double is about 1.8e308.")
             }
@@ -709,13 +389,7 @@ impl Fault {
                     ))
                     .write(format!("{text} {}", dim.example()))
             }
-            WrongDim {
-                what,
-                wanted,
-                found,
-                defined,
-                write,
-            } => {
+            WrongDim { what, wanted, found, defined, write } => {
                 let mut words = say(format!("{what} must be {}, but this is {}.", wanted.words(), found.words()));
                 if let Some(line) = defined {
                     words = words.why(format!("The number used here is defined on line {line}."));
@@ -729,9 +403,8 @@ impl Fault {
                         .why("A rate has no angle in it; a linewidth in Hz is one over 2 pi of it.")
                         .write("value / 1 rad      (2 pi times a linewidth, as a rate)");
                 } else if *wanted == Dim::FREQUENCY && *found == Dim::RATE {
-                    words = words
-                        .why("Hz means turns per second; a rate in /s has no turns in it.")
-                        .write("0.5 turn / time, or a value in Hz");
+                    words =
+                        words.why("Hz means turns per second; a rate in /s has no turns in it.").write("0.5 turn / time, or a value in Hz");
                 } else {
                     words = words.why(format!(
                         "Units of {}: {}.",
@@ -765,24 +438,16 @@ impl Fault {
                 let plain = inner.clone().unwrap_or_else(|| short_with_unit(*hz, "Hz"));
                 words
                     .write(format!("{name}{plain}"))
-                    .write(format!(
-                        "{name}{} rad/us      (the same value)",
-                        short(crate::units::rad_s(*hz) * 1e-6)
-                    ))
+                    .write(format!("{name}{} rad/us      (the same value)", short(crate::units::rad_s(*hz) * 1e-6)))
                     .write(format!("{name}{}      (if you do mean it)", short_with_unit(hz * factor, "Hz")))
             }
             AngleWanted { function, found, text } => say(format!("{function} takes an angle, but this is {}.", found.words()))
-                .why(format!(
-                    "{text} what? Angles are written in turn, deg or rad; a frequency times a time is one too."
-                ))
+                .why(format!("{text} what? Angles are written in turn, deg or rad; a frequency times a time is one too."))
                 .write(format!("{function}({text} rad)")),
             PlainWanted { function, found } => say(format!("{function} takes a plain number, but this is {}.", found.words()))
                 .why("Divide by a quantity of the same kind."),
-            PowerOfUnit { found } => say(format!(
-                "{} can only be raised to a constant power such as 2 or 1/2.",
-                found.words()
-            ))
-            .why("Otherwise its unit would depend on a number."),
+            PowerOfUnit { found } => say(format!("{} can only be raised to a constant power such as 2 or 1/2.", found.words()))
+                .why("Otherwise its unit would depend on a number."),
             BareVolts { text, volts } => say("volts need peak, rms or peak_to_peak.")
                 .why(format!(
                     "For a sine these differ: {} V peak = {} V rms = {} V peak_to_peak.",
@@ -795,9 +460,7 @@ impl Fault {
                 .why("dB_power is a ratio of powers; for amplitudes dB_amplitude is usual."),
             Circle { chain } => {
                 let names: Vec<String> = chain.iter().map(|(name, line)| format!("{name} (line {line})")).collect();
-                say("these numbers define each other in a circle.")
-                    .why(names.join(" -> "))
-                    .write("a plain value for one of them")
+                say("these numbers define each other in a circle.").why(names.join(" -> ")).write("a plain value for one of them")
             }
             ZeroDivision { text } => say(format!("here something is divided by zero: {text}."))
                 .why("The divisor comes out as zero with the numbers of this file."),
@@ -812,19 +475,12 @@ impl Fault {
             Milli { text } => say(format!("{text} is in millihertz."))
                 .why("In a file of kHz and more that is rarely meant.")
                 .write(text.replace("mHz", "MHz")),
-            NotWhole { what, found, from } => say(format!(
-                "{what} must be a whole number from {}, but is {}.",
-                short(*from),
-                short(*found)
-            )),
+            NotWhole { what, found, from } => {
+                say(format!("{what} must be a whole number from {}, but is {}.", short(*from), short(*found)))
+            }
             OutOfRange { what, found, wanted } => say(format!("{what} is {found}; it must be {wanted}.")),
 
-            RowLength {
-                row,
-                found,
-                wanted,
-                mirror,
-            } => {
+            RowLength { row, found, wanted, mirror } => {
                 let words = say(format!("row {row} has {found} entries; {wanted} are expected."));
                 if *mirror {
                     words.why("With lower: mirror each row starts at its diagonal entry.")
@@ -833,14 +489,7 @@ impl Fault {
                 }
             }
             RowCount { found, wanted } => say(format!("the matrix has {found} rows for {wanted} levels.")).write("one row for each level"),
-            NotHermitian {
-                row,
-                column,
-                upper,
-                lower,
-                lines,
-                write,
-            } => say("the Hamiltonian is not Hermitian.")
+            NotHermitian { row, column, upper, lower, lines, write } => say("the Hamiltonian is not Hermitian.")
                 .why(format!(
                     "Row {row}, column {column} is {upper} (line {}); row {column}, column {row} is {lower} (line {}).",
                     lines[0], lines[1]
@@ -849,17 +498,15 @@ impl Fault {
                 .write(write.clone())
                 .write("or only the upper triangle, with lower: mirror"),
             TooManyLevels { levels, bytes, limit } => say(format!("{} levels would need {} of memory.", short(*levels), memory(*bytes)))
-                .why(format!(
-                    "One matrix has levels^2 entries of 16 bytes, and several are needed. At most {limit} levels are accepted."
-                )),
+                .why(format!("One matrix has levels^2 entries of 16 bytes, and several are needed. At most {limit} levels are accepted.")),
             FileContent { path, row, reason } => say(format!("{path}, line {row}: {reason}.")),
             EmptySystem { what } => say(format!("{what} names no level.")).write("levels: {down: 0 MHz, up: 80 MHz}"),
             SameLevel { name } => say(format!("the level \"{name}\" is named twice.")),
 
-            NeedsReference { drive, pairs } => say(format!(
-                "the drive \"{drive}\" couples {pairs} pairs; it must say to which one peak and turn refer."
-            ))
-            .write("reference_pair: [lower, upper]"),
+            NeedsReference { drive, pairs } => {
+                say(format!("the drive \"{drive}\" couples {pairs} pairs; it must say to which one peak and turn refer."))
+                    .write("reference_pair: [lower, upper]")
+            }
             NoSuchCoupling { drive, from, to } => say(format!("the drive \"{drive}\" does not couple {from} and {to}."))
                 .why("Its matrix has a zero there, so it cannot be scaled by that entry."),
             NotHermitianDrive { drive, operator } => say(format!("the operator \"{operator}\" of the drive \"{drive}\" is not Hermitian."))
@@ -872,9 +519,7 @@ impl Fault {
                 say(format!("the drive \"{drive}\" is direct, so it has no carrier.")).write("form: linear, or no carrier")
             }
             PhaseUnsaid { drive, times, why_first } => {
-                let words = say(format!(
-                    "the drive \"{drive}\" must say how its carrier's phase goes from pulse to pulse."
-                ));
+                let words = say(format!("the drive \"{drive}\" must say how its carrier's phase goes from pulse to pulse."));
                 let words = if *why_first {
                     words.why("Its pulse does not start with the sequence, and laboratories differ in what the phase then counts from.")
                 } else {
@@ -886,34 +531,30 @@ impl Fault {
                     .write("carrier_phase: runs on      (counts from the start of the sequence)")
                     .write("carrier_phase: restarts     (counts from the start of each pulse)")
             }
-            PhaseOfDirect { drive } => say(format!(
-                "the drive \"{drive}\" is direct: without a carrier there is no phase and no axis."
-            ))
-            .write("the pulse without it"),
-            SizeOfDirect { envelope, drive, key } => say(format!(
-                "the envelope \"{envelope}\" has its size as {key}, but the drive \"{drive}\" is direct."
-            ))
-            .why("A direct drive has no Rabi frequency: the envelope itself multiplies the matrix.")
-            .write("matrix_element: value      (the entry at envelope 1)"),
-            MatrixElementOnly { envelope, drive } => say(format!(
-                "the envelope \"{envelope}\" has its size by the reference pair, and the drive \"{drive}\" has none."
-            ))
-            .write("reference_pair: [lower, upper]      (on the drive)")
-            .write("matrix_element: value               (multiplies the matrix as typed)"),
+            PhaseOfDirect { drive } => say(format!("the drive \"{drive}\" is direct: without a carrier there is no phase and no axis."))
+                .write("the pulse without it"),
+            SizeOfDirect { envelope, drive, key } => {
+                say(format!("the envelope \"{envelope}\" has its size as {key}, but the drive \"{drive}\" is direct."))
+                    .why("A direct drive has no Rabi frequency: the envelope itself multiplies the matrix.")
+                    .write("matrix_element: value      (the entry at envelope 1)")
+            }
+            MatrixElementOnly { envelope, drive } => {
+                say(format!("the envelope \"{envelope}\" has its size by the reference pair, and the drive \"{drive}\" has none."))
+                    .write("reference_pair: [lower, upper]      (on the drive)")
+                    .write("matrix_element: value               (multiplies the matrix as typed)")
+            }
             DerivativeOfDirect { envelope, drive } => say(format!(
                 "the envelope \"{envelope}\" has a derivative quadrature, but the drive \"{drive}\" has no carrier to turn it against."
             )),
             DerivativeOfHeld { envelope } => say(format!("the envelope \"{envelope}\" holds its samples, so it has no derivative."))
                 .write("between: linear, or between: band limited"),
-            NoCalibration { envelope, drive } => say(format!(
-                "the envelope \"{envelope}\" is sized in volts, but the drive \"{drive}\" has no calibration."
-            ))
-            .write("calibration: {rabi: 100 MHz, volts: 0.31 V peak}"),
-            PhaseChangeUnsaid { drive } => say(format!(
-                "the carrier of \"{drive}\" runs on; how does its phase go through the change?"
-            ))
-            .write("phase: continues              (no jump at the change)")
-            .write("phase: as if always on        (as if the new carrier had run from the start)"),
+            NoCalibration { envelope, drive } => {
+                say(format!("the envelope \"{envelope}\" is sized in volts, but the drive \"{drive}\" has no calibration."))
+                    .write("calibration: {rabi: 100 MHz, volts: 0.31 V peak}")
+            }
+            PhaseChangeUnsaid { drive } => say(format!("the carrier of \"{drive}\" runs on; how does its phase go through the change?"))
+                .write("phase: continues              (no jump at the change)")
+                .write("phase: as if always on        (as if the new carrier had run from the start)"),
 
             WidthWord { word, shape } => say(format!("the width of a pulse needs the word field or intensity, not \"{word}\"."))
                 .why(format!("For a {shape} pulse the readings differ by sqrt(2)."))
@@ -928,57 +569,36 @@ impl Fault {
                 say(format!("the shape {shape} takes no \"{key}\".")).why(format!("It takes {}.", list(takes)))
             }
             NotPositive { what, value, unit } => say(format!("{what} must be larger than 0, but is {}.", short_with_unit(*value, unit))),
-            EdgesTooLong { rise_s, length_s } => say(format!(
-                "two edges of {} do not fit into {}.",
-                short_with_unit(*rise_s, "s"),
-                short_with_unit(*length_s, "s")
-            ))
-            .why("length counts the whole pulse, edges included."),
+            EdgesTooLong { rise_s, length_s } => {
+                say(format!("two edges of {} do not fit into {}.", short_with_unit(*rise_s, "s"), short_with_unit(*length_s, "s")))
+                    .why("length counts the whole pulse, edges included.")
+            }
             NoArea { envelope } => {
                 say(format!("the envelope \"{envelope}\" has no area, so no size gives it that turn.")).write("peak: value")
             }
-            FlatLift { envelope } => say(format!(
-                "the envelope \"{envelope}\" is cut so early that its pedestal is all of it."
-            ))
-            .write("a larger cut_at, or edge: step"),
+            FlatLift { envelope } => say(format!("the envelope \"{envelope}\" is cut so early that its pedestal is all of it."))
+                .write("a larger cut_at, or edge: step"),
             Samples { reason } => say(format!("the samples cannot be used: {reason}.")),
-            EnvelopeStep { envelope, share } => say(format!(
-                "the envelope \"{envelope}\" jumps by {} % of its peak at its ends.",
-                short(share * 100.0)
-            ))
-            .why("A cut that early widens the spectrum.")
-            .write("edge: lift, or a larger cut_at"),
+            EnvelopeStep { envelope, share } => {
+                say(format!("the envelope \"{envelope}\" jumps by {} % of its peak at its ends.", short(share * 100.0)))
+                    .why("A cut that early widens the spectrum.")
+                    .write("edge: lift, or a larger cut_at")
+            }
 
-            BeforeStart {
-                start_s,
-                from_zero: true,
-                write,
-            } => say(format!(
-                "this pulse would start at {}, before the sequence.",
-                short_with_unit(*start_s, "s")
-            ))
-            .maybe(write, ""),
-            BeforeStart {
-                start_s,
-                from_zero: false,
-                write,
-            } => say(format!(
-                "this pulse would start {} before the start of its group.",
-                short_with_unit(-*start_s, "s")
-            ))
-            .maybe(write, ""),
-            Overlap { gap_s } => say(format!(
-                "the pulses before and after leave no room: the wait would last {}.",
-                short_with_unit(*gap_s, "s")
-            ))
-            .why("wait_between_centres counts from the middle of the pulse before to the middle of the pulse after."),
+            BeforeStart { start_s, from_zero: true, write } => {
+                say(format!("this pulse would start at {}, before the sequence.", short_with_unit(*start_s, "s"))).maybe(write, "")
+            }
+            BeforeStart { start_s, from_zero: false, write } => {
+                say(format!("this pulse would start {} before the start of its group.", short_with_unit(-*start_s, "s"))).maybe(write, "")
+            }
+            Overlap { gap_s } => {
+                say(format!("the pulses before and after leave no room: the wait would last {}.", short_with_unit(*gap_s, "s")))
+                    .why("wait_between_centres counts from the middle of the pulse before to the middle of the pulse after.")
+            }
             NoPulseBefore => say("no pulse stands directly before this wait between centres.").write("wait: time      (edge to edge)"),
             NoPulseAfter => say("no pulse stands directly after this wait between centres.").write("wait: time      (edge to edge)"),
             EmptySequence => say("the sequence has no step that takes time.").write("- wait: 1 us"),
-            TooManySteps { steps, limit } => say(format!(
-                "the sequence unrolls to {} steps; at most {limit} are accepted.",
-                short(*steps)
-            )),
+            TooManySteps { steps, limit } => say(format!("the sequence unrolls to {} steps; at most {limit} are accepted.", short(*steps))),
             BlockInItself { name } => say(format!("the block \"{name}\" uses itself.")),
             BothPhases => say("phase and turn_about both stand here.")
                 .why("turn_about says the axis directly and sets the phase.")
@@ -994,21 +614,14 @@ impl Fault {
                 short_with_unit(*end_s, "s")
             ))
             .write("an earlier time, or a wait at the end of the sequence"),
-            TooManyRows { rows, limit } => say(format!(
-                "this records {} rows; at most {} are accepted.",
-                short(*rows),
-                short(*limit)
-            ))
-            .write("a longer step under every"),
+            TooManyRows { rows, limit } => say(format!("this records {} rows; at most {} are accepted.", short(*rows), short(*limit)))
+                .write("a longer step under every"),
             AccuracyNotPositive { found } => {
                 say(format!("the accuracy must be a positive number, but is {}.", short(*found))).write("final: 1e-8")
             }
-            AccuracyTooFine { found, floor } => say(format!(
-                "an accuracy of {} is below what double precision can reach.",
-                short(*found)
-            ))
-            .why(format!("Rounding alone leaves about {} in any result.", short(*floor)))
-            .write(format!("final: {}", short(*floor))),
+            AccuracyTooFine { found, floor } => say(format!("an accuracy of {} is below what double precision can reach.", short(*found)))
+                .why(format!("Rounding alone leaves about {} in any result.", short(*floor)))
+                .write(format!("final: {}", short(*floor))),
             FreeZUnsaid { levels } => {
                 let words = say("the gate must say whether a turn about z after it is free.")
                     .why("With software phase tracking it costs nothing; else it is an error.")
@@ -1021,9 +634,47 @@ impl Fault {
             }
             NotUnitary { off } => say(format!("the target is not unitary: it is off by {}.", short(*off))),
             TargetSize { found, wanted } => say(format!("the target has {found} rows for {wanted} levels under within.")),
-            NotDiagonal { operator } => say(format!(
-                "the operator \"{operator}\" is not diagonal and real, so it is no turn about z."
+            NotDiagonal { operator } => say(format!("the operator \"{operator}\" is not diagonal and real, so it is no turn about z.")),
+            Beat { drive, levels: [lower, upper], turns_hz, sum, closes_hz } => say("no rotating frame makes this time-independent.")
+                .why(format!(
+                    "{lower} and {upper} are joined by other drives or carriers already: {sum}: {} remains.",
+                    short_with_unit(*turns_hz, "Hz")
+                ))
+                .why(format!("The term of \"{drive}\" turns at that, slower than the limit, so it may not be dropped."))
+                .write(format!("carrier: {}      (then nothing remains)", short_with_unit(*closes_hz, "Hz")))
+                .write("allow_beat: true      under frame (keeps the term; the run is time-dependent)"),
+            DoubtfulDrop { drive, levels: [a, b], size_hz, turns_hz } => say(format!(
+                "a term of {drive} on {a} and {b} is dropped although it is large: {} turning at {}.",
+                short_with_unit(*size_hz, "Hz"),
+                short_with_unit(*turns_hz, "Hz")
+            ))
+            .why("More than a tenth of its turning frequency is no longer small.")
+            .write(format!("drop_terms_faster_than: {}", short_with_unit(2.0 * turns_hz, "Hz"))),
+            PeriodTooLong { period_s, end_s } => say(format!(
+                "a period of {} is longer than the sequence, which is {}.",
+                short_with_unit(*period_s, "s"),
+                short_with_unit(*end_s, "s")
             )),
+            NotPeriodic { period_s, at_s } => {
+                say(format!("the drive does not repeat after {}.", short_with_unit(*period_s, "s"))).why(format!(
+                    "At {} the Hamiltonian is not what it was one period before, so there are no quasi-energies.",
+                    short_with_unit(*at_s, "s")
+                ))
+            }
+            VariantTwice { name } => say(format!("a variant called \"{name}\" is there already."))
+                .why("The file itself is the variant \"as written\".")
+                .write("another name"),
+            VariantChangesNothing { name } => say(format!("the variant \"{name}\" changes nothing."))
+                .why("Its numbers and sections are those of the file as written.")
+                .write("set: {name of a number: another value}"),
+            NothingToCompare => say("the file has no section \"compare\".").write("compare: [{name: laboratory, frame: {kind: lab}}]"),
+            StartEliminated { level } => say(format!("the run starts in \"{level}\", which is eliminated."))
+                .write("a start in the levels that stay, or no eliminate"),
+            TooNear { levels, validity, limit } => {
+                say(format!("{} cannot be eliminated: coupling over detuning reaches {}.", list(levels), short(*validity)))
+                    .why(format!("The expansion is of second order in that ratio; from {} on it is refused.", short(*limit)))
+                    .write("the frame without eliminate, or a larger detuning")
+            }
             NoSuchNumber { name, near, known } => say(format!("the file has no number called \"{name}\"."))
                 .why(format!("Only named numbers can be set: {}.", list(known)))
                 .maybe(near, "--set "),
@@ -1054,10 +705,7 @@ pub fn render(sources: &Sources, mistakes: &[Mistake]) -> String {
         text.push('\n');
     }
     if groups.len() > MOST_SHOWN {
-        text.push_str(&format!(
-            "and {many}{} more mistakes after these {MOST_SHOWN}.\n",
-            groups.len() - MOST_SHOWN
-        ));
+        text.push_str(&format!("and {many}{} more mistakes after these {MOST_SHOWN}.\n", groups.len() - MOST_SHOWN));
     }
     text
 }
@@ -1120,14 +768,6 @@ fn window(line: &str, column: usize) -> (String, usize) {
 /// A mistake as one line, for lists of warnings.
 pub fn one_line(sources: &Sources, mistake: &Mistake) -> String {
     let words = mistake.fault.words();
-    let write = words
-        .write
-        .first()
-        .map_or(String::new(), |write| format!(" Write: {}", shortened(write)));
-    format!(
-        "{}, line {}: {}{write}",
-        sources.name(mistake.place.file),
-        mistake.place.line,
-        shortened(&words.fact)
-    )
+    let write = words.write.first().map_or(String::new(), |write| format!(" Write: {}", shortened(write)));
+    format!("{}, line {}: {}{write}", sources.name(mistake.place.file), mistake.place.line, shortened(&words.fact))
 }

@@ -1,4 +1,5 @@
 //! Text in, a checked [`Document`](document::Document) out, with a place on every value.
+pub mod compare;
 pub mod document;
 pub mod drives;
 pub mod envelopes;

@@ -25,12 +25,7 @@ pub fn read(path: &Path) -> Result<Array, String> {
     }
     let bytes = std::fs::read(path).map_err(|error| words(&error))?;
     let (rows, columns, values) = parse(&bytes).ok_or("it is no .npy file of doubles or complex doubles with one or two axes")?;
-    Ok(Array {
-        rows,
-        columns,
-        values,
-        bytes,
-    })
+    Ok(Array { rows, columns, values, bytes })
 }
 
 fn words(error: &std::io::Error) -> String {
@@ -58,11 +53,8 @@ fn parse(bytes: &[u8]) -> Option<(usize, usize, Vec<(f64, f64)>)> {
     };
     let by_columns = after("'fortran_order'")?.starts_with("True");
     let shape = after("'shape'")?.trim_start_matches('(').split_once(')')?.0;
-    let axes: Vec<usize> = shape
-        .split(',')
-        .filter(|part| !part.trim().is_empty())
-        .map(|part| part.trim().parse().ok())
-        .collect::<Option<_>>()?;
+    let axes: Vec<usize> =
+        shape.split(',').filter(|part| !part.trim().is_empty()).map(|part| part.trim().parse().ok()).collect::<Option<_>>()?;
     let (rows, columns) = match axes[..] {
         [n] => (1, n),
         [rows, columns] => (rows, columns),
@@ -73,11 +65,7 @@ fn parse(bytes: &[u8]) -> Option<(usize, usize, Vec<(f64, f64)>)> {
     if data.len() < count.checked_mul(wide)? {
         return None;
     }
-    let double = |at: usize| {
-        data.get(at..at + 8)
-            .and_then(|eight| eight.try_into().ok())
-            .map_or(f64::NAN, f64::from_le_bytes)
-    };
+    let double = |at: usize| data.get(at..at + 8).and_then(|eight| eight.try_into().ok()).map_or(f64::NAN, f64::from_le_bytes);
     let value = |index: usize| (double(index * wide), if complex { double(index * wide + 8) } else { 0.0 });
     let order = |k: usize| if by_columns { (k % columns) * rows + k / columns } else { k };
     Some((rows, columns, (0..count).map(|k| value(order(k))).collect()))

@@ -23,11 +23,7 @@ impl Place {
 
     /// The part of this place that starts `offset` characters in and is `length` long.
     pub fn part(self, offset: usize, length: usize) -> Place {
-        Place {
-            column: self.column + offset as u32,
-            length: length.max(1) as u32,
-            ..self
-        }
+        Place { column: self.column + offset as u32, length: length.max(1) as u32, ..self }
     }
 }
 
@@ -49,11 +45,7 @@ pub struct Sources(Vec<SourceFile>);
 impl Sources {
     /// Adds a file and returns its number.
     pub fn add(&mut self, path: &Path, bytes: Vec<u8>, text: String) -> u16 {
-        self.0.push(SourceFile {
-            path: path.to_path_buf(),
-            bytes,
-            text,
-        });
+        self.0.push(SourceFile { path: path.to_path_buf(), bytes, text });
         (self.0.len() - 1) as u16
     }
 
@@ -64,9 +56,7 @@ impl Sources {
 
     /// Name of a file as messages show it.
     pub fn name(&self, file: u16) -> String {
-        self.0
-            .get(usize::from(file))
-            .map_or_else(String::new, |source| source.path.display().to_string())
+        self.0.get(usize::from(file)).map_or_else(String::new, |source| source.path.display().to_string())
     }
 
     /// One line of a file, without its end.

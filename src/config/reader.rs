@@ -202,14 +202,7 @@ impl Reader {
     pub fn fields<'n>(&mut self, node: &'n Node, section: &str, known: &[&str], hints: &[(&str, &str)]) -> Option<&'n [Entry]> {
         let Some(entries) = node.entries() else {
             let example = format!("{}: value", known.first().unwrap_or(&"key"));
-            self.error(
-                node.place,
-                Fault::Shape {
-                    what: section.to_string(),
-                    expected: "a block of keys and values".to_string(),
-                    example,
-                },
-            );
+            self.error(node.place, Fault::Shape { what: section.to_string(), expected: "a block of keys and values".to_string(), example });
             return None;
         };
         for entry in entries {
@@ -244,12 +237,8 @@ impl Reader {
                 None
             }
             None => {
-                let fault = Fault::MissingKey {
-                    key: key.to_string(),
-                    section: section.to_string(),
-                    write: format!("{key}: {example}"),
-                    why: None,
-                };
+                let fault =
+                    Fault::MissingKey { key: key.to_string(), section: section.to_string(), write: format!("{key}: {example}"), why: None };
                 self.error(node.place, fault);
                 None
             }
@@ -289,11 +278,7 @@ impl Reader {
             _ => {
                 self.error(
                     node.place,
-                    Fault::Shape {
-                        what: what.to_string(),
-                        expected: "a single value".to_string(),
-                        example: example.to_string(),
-                    },
+                    Fault::Shape { what: what.to_string(), expected: "a single value".to_string(), example: example.to_string() },
                 );
                 None
             }
@@ -304,14 +289,7 @@ impl Reader {
     pub fn list<'n>(&mut self, node: &'n Node, what: &str, example: &str) -> Option<&'n [Node]> {
         let items = node.items();
         if items.is_none() {
-            self.error(
-                node.place,
-                Fault::Shape {
-                    what: what.to_string(),
-                    expected: "a list".to_string(),
-                    example: example.to_string(),
-                },
-            );
+            self.error(node.place, Fault::Shape { what: what.to_string(), expected: "a list".to_string(), example: example.to_string() });
         }
         items
     }
@@ -351,15 +329,7 @@ impl Reader {
     /// Reports an unknown name.
     pub fn unknown(&mut self, place: Place, kind: &'static str, text: &str, known: &[String]) {
         let near = near(text, known.iter().map(String::as_str));
-        self.error(
-            place,
-            Fault::UnknownName {
-                kind,
-                found: text.to_string(),
-                near,
-                known: known.to_vec(),
-            },
-        );
+        self.error(place, Fault::UnknownName { kind, found: text.to_string(), near, known: known.to_vec() });
     }
 
     // ---------------------------------------------------------------- numbers
@@ -379,35 +349,15 @@ impl Reader {
         };
         for entry in entries {
             if let Some(reason) = not_free(&entry.key) {
-                self.error(
-                    entry.place,
-                    Fault::NameNotFree {
-                        name: entry.key.clone(),
-                        reason,
-                    },
-                );
+                self.error(entry.place, Fault::NameNotFree { name: entry.key.clone(), reason });
             }
             if let Some(first) = self.by_name.get(&entry.key) {
                 let first = self.numbers[*first].key.line;
-                self.error(
-                    entry.place,
-                    Fault::DuplicateKey {
-                        key: entry.key.clone(),
-                        first,
-                    },
-                );
+                self.error(entry.place, Fault::DuplicateKey { key: entry.key.clone(), first });
                 continue;
             }
-            if let Some(other) = self
-                .numbers
-                .iter()
-                .find(|number| number.name.to_lowercase() == entry.key.to_lowercase())
-            {
-                let fault = Fault::SameButForCase {
-                    kind: "number",
-                    name: entry.key.clone(),
-                    other: other.name.clone(),
-                };
+            if let Some(other) = self.numbers.iter().find(|number| number.name.to_lowercase() == entry.key.to_lowercase()) {
+                let fault = Fault::SameButForCase { kind: "number", name: entry.key.clone(), other: other.name.clone() };
                 self.warn(entry.place, fault);
             }
             self.by_name.insert(entry.key.clone(), self.numbers.len());
@@ -458,12 +408,9 @@ impl Reader {
         self.numbers
             .iter()
             .filter_map(|number| match number.state {
-                State::Done(Some(known)) => Some(NamedNumber {
-                    name: number.name.clone(),
-                    place: number.key,
-                    register: known.re,
-                    dim: known.dim,
-                }),
+                State::Done(Some(known)) => {
+                    Some(NamedNumber { name: number.name.clone(), place: number.key, register: known.re, dim: known.dim })
+                }
                 _ => None,
             })
             .collect()
@@ -476,10 +423,7 @@ impl Reader {
             State::Active => {
                 let from = self.stack.iter().position(|on| *on == index).unwrap_or(0);
                 let ring: Vec<usize> = self.stack[from..].iter().copied().chain([index]).collect();
-                let chain = ring
-                    .iter()
-                    .map(|on| (self.numbers[*on].name.clone(), self.numbers[*on].key.line))
-                    .collect();
+                let chain = ring.iter().map(|on| (self.numbers[*on].name.clone(), self.numbers[*on].key.line)).collect();
                 let place = self.numbers[index].value.place;
                 self.error(place, Fault::Circle { chain });
                 return None;
@@ -499,16 +443,9 @@ impl Reader {
         self.stack.pop();
         let known = known.map(|known| {
             let register = self.tape.push(TapeEntry::Number(index as u32, known.re), value.place);
-            let literal = self.numbers[index]
-                .parsed
-                .as_ref()
-                .is_some_and(|e| matches!(e.kind, expression::Kind::Number { plain: true, .. }));
-            Known {
-                re: register,
-                unitless: if literal { Some(index) } else { known.unitless },
-                constant: None,
-                ..known
-            }
+            let literal =
+                self.numbers[index].parsed.as_ref().is_some_and(|e| matches!(e.kind, expression::Kind::Number { plain: true, .. }));
+            Known { re: register, unitless: if literal { Some(index) } else { known.unitless }, constant: None, ..known }
         });
         self.numbers[index].state = State::Done(known);
         known
@@ -528,11 +465,7 @@ impl Reader {
                 } else {
                     fault
                 };
-                let place = if matches!(fault, Fault::CutAtComma { .. }) {
-                    node.place
-                } else {
-                    scope.part(start, length)
-                };
+                let place = if matches!(fault, Fault::CutAtComma { .. }) { node.place } else { scope.part(start, length) };
                 self.error(place, fault);
                 None
             }
@@ -548,10 +481,7 @@ impl Reader {
     pub fn quantity(&mut self, node: &Node, what: &str, wanted: Dim) -> Option<Quantity> {
         let known = self.known(node, what)?;
         self.fits(&known, node, what, wanted)?;
-        Some(Quantity {
-            register: known.re,
-            place: node.place,
-        })
+        Some(Quantity { register: known.re, place: node.place })
     }
 
     /// A plain number.
@@ -569,10 +499,7 @@ impl Reader {
             self.error(node.place, Fault::BareVolts { text, volts });
             return None;
         }
-        Some(Quantity {
-            register: known.re,
-            place: node.place,
-        })
+        Some(Quantity { register: known.re, place: node.place })
     }
 
     /// An energy in Hz: the Hz family, eV, J, cm^-1, or kelvin; a bare number gets `unit` where there is one.
@@ -589,15 +516,8 @@ impl Reader {
         };
         let factor = self.tape.push(TapeEntry::Constant(factor), node.place);
         let re = self.tape.push(TapeEntry::Two(Two::Multiply, known.re, factor), node.place);
-        let im = known
-            .im
-            .map(|im| self.tape.push(TapeEntry::Two(Two::Multiply, im, factor), node.place));
-        Some(Known {
-            re,
-            im,
-            dim: Dim::FREQUENCY,
-            ..known
-        })
+        let im = known.im.map(|im| self.tape.push(TapeEntry::Two(Two::Multiply, im, factor), node.place));
+        Some(Known { re, im, dim: Dim::FREQUENCY, ..known })
     }
 
     /// A level energy or gap, in Hz.
@@ -607,10 +527,7 @@ impl Reader {
             self.fits(&known, node, what, Dim::FREQUENCY)?;
         }
         let known = self.energy_known(known, node, what, None)?;
-        Some(Quantity {
-            register: known.re,
-            place: node.place,
-        })
+        Some(Quantity { register: known.re, place: node.place })
     }
 
     /// An entry of a Hamiltonian in Hz; bare numbers get the unit of the matrix.
@@ -618,11 +535,7 @@ impl Reader {
         let expression = self.parsed(node, what)?;
         let known = self.compile(&expression, &mut scope_of(node, true))?;
         let known = self.energy_known(known, node, what, unit)?;
-        Some(ComplexQuantity {
-            re: known.re,
-            im: known.im,
-            place: node.place,
-        })
+        Some(ComplexQuantity { re: known.re, im: known.im, place: node.place })
     }
 
     /// An entry of a matrix without dimension.
@@ -630,11 +543,7 @@ impl Reader {
         let expression = self.parsed(node, what)?;
         let known = self.compile(&expression, &mut scope_of(node, true))?;
         self.fits(&known, node, what, Dim::NONE)?;
-        Some(ComplexQuantity {
-            re: known.re,
-            im: known.im,
-            place: node.place,
-        })
+        Some(ComplexQuantity { re: known.re, im: known.im, place: node.place })
     }
 
     /// The factor of a unit of energy written alone, as in `unit: MHz`.
@@ -642,10 +551,7 @@ impl Reader {
         let text = self.text(node, what, "MHz")?;
         let number = format!("1 {text}");
         let dim_and_value = match expression::parse(&number) {
-            Ok(Expression {
-                kind: expression::Kind::Number { value, dim, .. },
-                ..
-            }) => Some((dim, value)),
+            Ok(Expression { kind: expression::Kind::Number { value, dim, .. }, .. }) => Some((dim, value)),
             Ok(_) => None,
             Err((_, _, fault)) => {
                 self.error(node.place, fault);
@@ -671,11 +577,7 @@ impl Reader {
             None => {
                 self.error(
                     node.place,
-                    Fault::Shape {
-                        what: what.to_string(),
-                        expected: "a unit of energy".to_string(),
-                        example: "unit: MHz".to_string(),
-                    },
+                    Fault::Shape { what: what.to_string(), expected: "a unit of energy".to_string(), example: "unit: MHz".to_string() },
                 );
                 None
             }
@@ -688,14 +590,7 @@ impl Reader {
         let value = self.value_now(quantity.register);
         self.structural.push(quantity.register);
         if !(value.is_finite() && value == value.round() && value >= from) {
-            self.error(
-                node.place,
-                Fault::NotWhole {
-                    what: what.to_string(),
-                    found: value,
-                    from,
-                },
-            );
+            self.error(node.place, Fault::NotWhole { what: what.to_string(), found: value, from });
             return None;
         }
         Some(value)
@@ -711,22 +606,15 @@ impl Reader {
     /// A formula of t of dimension `wanted`.
     pub fn formula(&mut self, node: &Node, what: &str, wanted: Dim) -> Option<Formula> {
         let expression = self.parsed(node, what)?;
-        let mut scope = Scope {
-            formula: Some(Tape::default()),
-            ..scope_of(node, false)
-        };
+        let mut scope = Scope { formula: Some(Tape::default()), ..scope_of(node, false) };
         let known = self.compile(&expression, &mut scope)?;
         self.fits(&known, node, what, wanted)?;
-        Some(Formula {
-            tape: scope.formula.unwrap_or_default(),
-            result: known.re,
-            place: node.place,
-        })
+        Some(Formula { tape: scope.formula.unwrap_or_default(), result: known.re, place: node.place })
     }
 
     /// The value of a register with the numbers as written.
     pub fn value_now(&self, register: Register) -> f64 {
-        self.tape.evaluate(&[])[register as usize]
+        self.tape.as_written()[register as usize]
     }
 
     /// A register that holds a constant.
@@ -745,40 +633,18 @@ impl Reader {
                 Some(index) => {
                     if self.reported_unitless.insert(index) {
                         let number = &self.numbers[index];
-                        let (place, text) = (
-                            number.value.place,
-                            format!("{}: {}", number.name, number.value.text().unwrap_or_default()),
-                        );
-                        self.error(
-                            place,
-                            Fault::NoUnit {
-                                text,
-                                what: what.to_string(),
-                                dim: wanted,
-                                used: Some(node.place.line),
-                            },
-                        );
+                        let (place, text) = (number.value.place, format!("{}: {}", number.name, number.value.text().unwrap_or_default()));
+                        self.error(place, Fault::NoUnit { text, what: what.to_string(), dim: wanted, used: Some(node.place.line) });
                     }
                 }
                 None => {
                     let text = node.text().unwrap_or_default().to_string();
-                    self.error(
-                        node.place,
-                        Fault::NoUnit {
-                            text,
-                            what: what.to_string(),
-                            dim: wanted,
-                            used: None,
-                        },
-                    );
+                    self.error(node.place, Fault::NoUnit { text, what: what.to_string(), dim: wanted, used: None });
                 }
             }
             return None;
         }
-        let defined = node
-            .text()
-            .and_then(|text| self.by_name.get(text))
-            .map(|index| self.numbers[*index].key.line);
+        let defined = node.text().and_then(|text| self.by_name.get(text)).map(|index| self.numbers[*index].key.line);
         // 1.2 MHz where a time is wanted: the same figure with a unit that fits is often what was meant
         let write = node.text().and_then(|text| {
             let digits: String = text.chars().take_while(|c| c.is_ascii_digit() || *c == '.').collect();
@@ -787,13 +653,7 @@ impl Reader {
         });
         self.error(
             node.place,
-            Fault::WrongDim {
-                what: what.to_string(),
-                wanted,
-                found: known.dim,
-                defined,
-                write: write.filter(|w| !w.ends_with(' ')),
-            },
+            Fault::WrongDim { what: what.to_string(), wanted, found: known.dim, defined, write: write.filter(|w| !w.ends_with(' ')) },
         );
         None
     }
@@ -802,16 +662,7 @@ impl Reader {
 
     /// Takes up the levels of the system, so that `gap(a, b)` can be read.
     pub fn define_levels(&mut self, names: Vec<String>, sources: Vec<LevelSource>, rungs: Rungs) {
-        self.levels = names
-            .into_iter()
-            .zip(sources)
-            .map(|(name, source)| Level {
-                name,
-                source,
-                energy: None,
-                active: false,
-            })
-            .collect();
+        self.levels = names.into_iter().zip(sources).map(|(name, source)| Level { name, source, energy: None, active: false }).collect();
         self.rungs = rungs;
     }
 
@@ -862,9 +713,7 @@ impl Reader {
             let name = self.levels[index].name.clone();
             self.error(
                 place,
-                Fault::Circle {
-                    chain: vec![(format!("energy of {name}"), place.line), (format!("energy of {name}"), place.line)],
-                },
+                Fault::Circle { chain: vec![(format!("energy of {name}"), place.line), (format!("energy of {name}"), place.line)] },
             );
             return None;
         }
@@ -872,12 +721,8 @@ impl Reader {
         let name = self.levels[index].name.clone();
         let energy = match self.levels[index].source.clone() {
             LevelSource::Written(node, unit) => match unit {
-                None => self
-                    .energy(&node, &format!("the energy of {name}"))
-                    .map(|quantity| quantity.register),
-                unit => self
-                    .energy_entry(&node, &format!("the energy of {name}"), unit)
-                    .map(|entry| entry.re),
+                None => self.energy(&node, &format!("the energy of {name}")).map(|quantity| quantity.register),
+                unit => self.energy_entry(&node, &format!("the energy of {name}"), unit).map(|entry| entry.re),
             },
             LevelSource::Value(hz, place) => Some(self.constant(hz, place)),
             LevelSource::Rung(n) => self.rung(n),
@@ -892,16 +737,8 @@ impl Reader {
         let [first, bend] = match self.rung_registers {
             Some(registers) => registers,
             None => {
-                let first = rungs
-                    .first
-                    .as_ref()
-                    .and_then(|node| self.energy(node, "system / ladder / first_gap"))
-                    .map(|q| q.register);
-                let bend = rungs
-                    .bend
-                    .as_ref()
-                    .and_then(|node| self.energy(node, "system / ladder / anharmonicity"))
-                    .map(|q| q.register);
+                let first = rungs.first.as_ref().and_then(|node| self.energy(node, "system / ladder / first_gap")).map(|q| q.register);
+                let bend = rungs.bend.as_ref().and_then(|node| self.energy(node, "system / ladder / anharmonicity")).map(|q| q.register);
                 self.rung_registers = Some([first, bend]);
                 [first, bend]
             }
@@ -923,15 +760,7 @@ impl Reader {
         use expression::Kind::*;
         let place = scope.part(expression.start, expression.length);
         match &expression.kind {
-            Number {
-                value,
-                dim,
-                cyclic,
-                bare_volts,
-                power_ratio,
-                imaginary,
-                ..
-            } => {
+            Number { value, dim, cyclic, bare_volts, power_ratio, imaginary, .. } => {
                 if *imaginary && !scope.complex {
                     self.error(place, Fault::ImaginaryOutside);
                     return None;
@@ -944,11 +773,8 @@ impl Reader {
                     }
                 }
                 let register = self.push(scope, TapeEntry::Constant(*value), place);
-                let (re, im) = if *imaginary {
-                    (self.push(scope, TapeEntry::Constant(0.0), place), Some(register))
-                } else {
-                    (register, None)
-                };
+                let (re, im) =
+                    if *imaginary { (self.push(scope, TapeEntry::Constant(0.0), place), Some(register)) } else { (register, None) };
                 Some(Known {
                     re,
                     im,
@@ -966,12 +792,7 @@ impl Reader {
                 let inner = self.compile(inner, scope)?;
                 let re = self.push(scope, TapeEntry::One(One::Negative, inner.re), place);
                 let im = inner.im.map(|im| self.push(scope, TapeEntry::One(One::Negative, im), place));
-                Some(Known {
-                    re,
-                    im,
-                    constant: inner.constant.map(|c| -c),
-                    ..inner
-                })
+                Some(Known { re, im, constant: inner.constant.map(|c| -c), ..inner })
             }
             Binary(sign, left, right) => {
                 let (l, r) = (self.compile(left, scope), self.compile(right, scope));
@@ -1025,13 +846,7 @@ impl Reader {
         if name == "pi" {
             let re = self.push(scope, TapeEntry::Constant(std::f64::consts::PI), place);
             let known = self.from_outside(0, Dim::NONE, place, &mut Scope { formula: None, ..*scope });
-            return Some(Known {
-                re,
-                pi: true,
-                cyclic: false,
-                constant: Some(std::f64::consts::PI),
-                ..known
-            });
+            return Some(Known { re, pi: true, cyclic: false, constant: Some(std::f64::consts::PI), ..known });
         }
         if name == "t" {
             if scope.formula.is_none() {
@@ -1039,10 +854,7 @@ impl Reader {
                 return None;
             }
             let re = self.push(scope, TapeEntry::Time, place);
-            return Some(Known {
-                re,
-                ..self.from_outside(0, Dim::TIME, place, &mut Scope { formula: None, ..*scope })
-            });
+            return Some(Known { re, ..self.from_outside(0, Dim::TIME, place, &mut Scope { formula: None, ..*scope }) });
         }
         if name == "i" {
             if !scope.complex {
@@ -1064,10 +876,7 @@ impl Reader {
         };
         let known = self.number(index)?;
         match &mut scope.formula {
-            Some(tape) => Some(Known {
-                re: tape.push(TapeEntry::Outer(known.re), place),
-                ..known
-            }),
+            Some(tape) => Some(Known { re: tape.push(TapeEntry::Outer(known.re), place), ..known }),
             None => Some(known),
         }
     }
@@ -1078,37 +887,18 @@ impl Reader {
             '+' | '-' | 'a' | 'b' => {
                 if l.dim != r.dim {
                     // a number without a unit among quantities: the number is what is wrong
-                    let bare = [l, r]
-                        .into_iter()
-                        .find(|known| known.dim == Dim::NONE)
-                        .and_then(|known| known.unitless);
+                    let bare = [l, r].into_iter().find(|known| known.dim == Dim::NONE).and_then(|known| known.unitless);
                     if let Some(index) = bare.filter(|index| !self.reported_unitless.contains(index)) {
                         self.reported_unitless.insert(index);
                         let dim = if l.dim == Dim::NONE { r.dim } else { l.dim };
                         let number = &self.numbers[index];
                         let text = format!("{}: {}", number.name, number.value.text().unwrap_or_default());
-                        let fault = Fault::NoUnit {
-                            text,
-                            what: format!("together with {}", dim.words()),
-                            dim,
-                            used: Some(place.line),
-                        };
+                        let fault = Fault::NoUnit { text, what: format!("together with {}", dim.words()), dim, used: Some(place.line) };
                         let at = number.value.place;
                         self.error(at, fault);
                     } else if bare.is_none() {
-                        let operation = if sign == '-' || sign == 'b' {
-                            "this subtracts"
-                        } else {
-                            "this adds"
-                        };
-                        self.error(
-                            place,
-                            Fault::Mixed {
-                                operation: operation.to_string(),
-                                left: l.dim,
-                                right: r.dim,
-                            },
-                        );
+                        let operation = if sign == '-' || sign == 'b' { "this subtracts" } else { "this adds" };
+                        self.error(place, Fault::Mixed { operation: operation.to_string(), left: l.dim, right: r.dim });
                     }
                     return None;
                 }
@@ -1132,11 +922,7 @@ impl Reader {
                     bare_volts: l.bare_volts || r.bare_volts,
                     power_ratio: false,
                     unitless: l.unitless.and(r.unitless),
-                    constant: if operation == Two::Add {
-                        constant(|a, b| a + b)
-                    } else {
-                        constant(|a, b| a - b)
-                    },
+                    constant: if operation == Two::Add { constant(|a, b| a + b) } else { constant(|a, b| a - b) },
                 })
             }
             '*' | '/' => {
@@ -1150,11 +936,7 @@ impl Reader {
                     self.warn(place, Fault::DecibelOfPower { text });
                 }
                 let dim = if sign == '*' { l.dim.times(r.dim) } else { l.dim.over(r.dim) };
-                let (re, im) = if sign == '*' {
-                    self.product(l, r, place, scope)
-                } else {
-                    self.quotient(l, r, place, scope)
-                };
+                let (re, im) = if sign == '*' { self.product(l, r, place, scope) } else { self.quotient(l, r, place, scope) };
                 Some(Known {
                     re,
                     im,
@@ -1164,11 +946,7 @@ impl Reader {
                     bare_volts: (l.bare_volts || r.bare_volts) && dim == Dim::VOLTAGE,
                     power_ratio: l.power_ratio && r.dim == Dim::NONE || r.power_ratio && l.dim == Dim::NONE,
                     unitless: if dim == Dim::NONE { l.unitless.or(r.unitless) } else { None },
-                    constant: if sign == '*' {
-                        constant(|a, b| a * b)
-                    } else {
-                        constant(|a, b| a / b)
-                    },
+                    constant: if sign == '*' { constant(|a, b| a * b) } else { constant(|a, b| a / b) },
                 })
             }
             _ => {
@@ -1177,33 +955,16 @@ impl Reader {
                     return None;
                 }
                 if r.dim != Dim::NONE {
-                    self.error(
-                        place,
-                        Fault::PlainWanted {
-                            function: "an exponent".to_string(),
-                            found: r.dim,
-                        },
-                    );
+                    self.error(place, Fault::PlainWanted { function: "an exponent".to_string(), found: r.dim });
                     return None;
                 }
-                let dim = if l.dim == Dim::NONE {
-                    Some(Dim::NONE)
-                } else {
-                    r.constant.and_then(|exponent| l.dim.power(exponent))
-                };
+                let dim = if l.dim == Dim::NONE { Some(Dim::NONE) } else { r.constant.and_then(|exponent| l.dim.power(exponent)) };
                 let Some(dim) = dim else {
                     self.error(place, Fault::PowerOfUnit { found: l.dim });
                     return None;
                 };
                 let re = self.push(scope, TapeEntry::Two(Two::Power, l.re, r.re), place);
-                Some(Known {
-                    re,
-                    dim,
-                    im: None,
-                    constant: constant(f64::powf),
-                    unitless: None,
-                    ..l
-                })
+                Some(Known { re, dim, im: None, constant: constant(f64::powf), unitless: None, ..l })
             }
         }
     }
@@ -1242,26 +1003,11 @@ impl Reader {
     }
 
     fn cyclic_times_pi(&mut self, sign: char, l: Known, r: Known, place: Place, right: &Expression) {
-        let values = self.tape.evaluate(&[]);
-        let value = |known: Known| {
-            known
-                .constant
-                .or_else(|| values.get(known.re as usize).copied().filter(|_| known.constant.is_some()))
-        };
-        let (hz, factor) = if r.cyclic {
-            (r, value(l))
-        } else {
-            (l, value(r).map(|f| if sign == '/' { 1.0 / f } else { f }))
-        };
-        let hz = if sign == '/' && r.cyclic {
-            None
-        } else {
-            value(hz).filter(|_| hz.dim == Dim::FREQUENCY)
-        };
-        let name = self
-            .stack
-            .last()
-            .map_or(String::new(), |index| format!("{}: ", self.numbers[*index].name));
+        let values = self.tape.as_written();
+        let value = |known: Known| known.constant.or_else(|| values.get(known.re as usize).copied().filter(|_| known.constant.is_some()));
+        let (hz, factor) = if r.cyclic { (r, value(l)) } else { (l, value(r).map(|f| if sign == '/' { 1.0 / f } else { f })) };
+        let hz = if sign == '/' && r.cyclic { None } else { value(hz).filter(|_| hz.dim == Dim::FREQUENCY) };
+        let name = self.stack.last().map_or(String::new(), |index| format!("{}: ", self.numbers[*index].name));
         let inner = if r.cyclic {
             Some(self.source_text(Place {
                 column: place.column + place.length - right.length as u32,
@@ -1281,39 +1027,16 @@ impl Reader {
             (Some(_), _) => 1,
             (_, Some(_)) => 2,
             _ => {
-                let near = near(
-                    name,
-                    ONES.iter()
-                        .map(|(word, ..)| *word)
-                        .chain(TWOS.iter().map(|(word, _)| *word))
-                        .chain(["gap"]),
-                );
-                self.error(
-                    place,
-                    Fault::NoFunction {
-                        name: name.to_string(),
-                        near,
-                    },
-                );
+                let near = near(name, ONES.iter().map(|(word, ..)| *word).chain(TWOS.iter().map(|(word, _)| *word)).chain(["gap"]));
+                self.error(place, Fault::NoFunction { name: name.to_string(), near });
                 return None;
             }
         };
         if arguments.len() < wanted || (arguments.len() > wanted && !matches!(name, "min" | "max")) {
-            let found = format!(
-                "{name} stands here with {} value{}",
-                arguments.len(),
-                if arguments.len() == 1 { "" } else { "s" }
-            );
+            let found = format!("{name} stands here with {} value{}", arguments.len(), if arguments.len() == 1 { "" } else { "s" });
             self.error(
                 place,
-                Fault::Syntax {
-                    found,
-                    expected: if wanted == 1 {
-                        "one value".to_string()
-                    } else {
-                        "two values".to_string()
-                    },
-                },
+                Fault::Syntax { found, expected: if wanted == 1 { "one value".to_string() } else { "two values".to_string() } },
             );
             return None;
         }
@@ -1324,16 +1047,8 @@ impl Reader {
             return None;
         }
         let a = known[0];
-        let plain = Known {
-            im: None,
-            cyclic: false,
-            pi: false,
-            bare_volts: false,
-            power_ratio: false,
-            unitless: None,
-            constant: None,
-            ..a
-        };
+        let plain =
+            Known { im: None, cyclic: false, pi: false, bare_volts: false, power_ratio: false, unitless: None, constant: None, ..a };
         if let Some((_, function, kind)) = one {
             let argument = scope.part(arguments[0].start, arguments[0].length);
             let dim = match kind {
@@ -1342,24 +1057,11 @@ impl Reader {
                 Takes::Angle if a.dim == Dim::ANGLE => Dim::NONE,
                 Takes::Angle => {
                     let text = self.source_text(argument);
-                    self.error(
-                        argument,
-                        Fault::AngleWanted {
-                            function: name.to_string(),
-                            found: a.dim,
-                            text,
-                        },
-                    );
+                    self.error(argument, Fault::AngleWanted { function: name.to_string(), found: a.dim, text });
                     return None;
                 }
                 Takes::Plain | Takes::GivesAngle if a.dim != Dim::NONE => {
-                    self.error(
-                        argument,
-                        Fault::PlainWanted {
-                            function: name.to_string(),
-                            found: a.dim,
-                        },
-                    );
+                    self.error(argument, Fault::PlainWanted { function: name.to_string(), found: a.dim });
                     return None;
                 }
                 Takes::Plain => Dim::NONE,
@@ -1368,47 +1070,25 @@ impl Reader {
             let re = self.push(scope, TapeEntry::One(*function, a.re), place);
             let constant = a.constant.map(|c| crate::config::tape::Real::one(c, *function));
             let keeps = matches!(kind, Takes::Same);
-            return Some(Known {
-                re,
-                dim,
-                cyclic: keeps && a.cyclic,
-                unitless: if keeps { a.unitless } else { None },
-                constant,
-                ..plain
-            });
+            return Some(Known { re, dim, cyclic: keeps && a.cyclic, unitless: if keeps { a.unitless } else { None }, constant, ..plain });
         }
         let (_, operation) = two?;
         let mut so_far = a;
         for next in &known[1..] {
             if next.dim != so_far.dim {
-                self.error(
-                    place,
-                    Fault::Mixed {
-                        operation: format!("{name} compares"),
-                        left: so_far.dim,
-                        right: next.dim,
-                    },
-                );
+                self.error(place, Fault::Mixed { operation: format!("{name} compares"), left: so_far.dim, right: next.dim });
                 return None;
             }
             so_far.re = self.push(scope, TapeEntry::Two(*operation, so_far.re, next.re), place);
         }
         let dim = if *operation == Two::Atan2 { Dim::ANGLE } else { a.dim };
-        Some(Known {
-            re: so_far.re,
-            dim,
-            cyclic: a.cyclic && dim != Dim::ANGLE,
-            ..plain
-        })
+        Some(Known { re: so_far.re, dim, cyclic: a.cyclic && dim != Dim::ANGLE, ..plain })
     }
 
     /// The characters of the config at a place.
     pub fn source_text(&self, place: Place) -> String {
         let line = self.sources.line(place.file, place.line).unwrap_or_default();
-        line.chars()
-            .skip(place.column.saturating_sub(1) as usize)
-            .take(place.length as usize)
-            .collect()
+        line.chars().skip(place.column.saturating_sub(1) as usize).take(place.length as usize).collect()
     }
 }
 
@@ -1424,18 +1104,10 @@ impl Scope {
 
 fn scope_of(node: &Node, complex: bool) -> Scope {
     match &node.kind {
-        Kind::Scalar { exact: true, quoted, .. } => Scope {
-            place: node.place.part(usize::from(*quoted), node.place.length as usize),
-            exact: true,
-            complex,
-            formula: None,
-        },
-        _ => Scope {
-            place: node.place,
-            exact: false,
-            complex,
-            formula: None,
-        },
+        Kind::Scalar { exact: true, quoted, .. } => {
+            Scope { place: node.place.part(usize::from(*quoted), node.place.length as usize), exact: true, complex, formula: None }
+        }
+        _ => Scope { place: node.place, exact: false, complex, formula: None },
     }
 }
 

@@ -80,6 +80,8 @@ pub enum Item {
     Propagator,
     /// Gate error and leakage.
     Gate(Box<Gate>),
+    /// Levels of the driven system, over this period.
+    QuasiEnergies(Quantity),
 }
 
 /// What is recorded, in the order written.
@@ -95,7 +97,7 @@ pub struct Record {
     pub place: Place,
 }
 
-const KEYS: [&str; 15] = [
+const KEYS: [&str; 16] = [
     "every",
     "at",
     "populations",
@@ -111,17 +113,9 @@ const KEYS: [&str; 15] = [
     "energy",
     "final",
     "population",
-];
-const LATER: [&str; 8] = [
-    "part",
-    "lost",
-    "steady",
     "quasi_energies",
-    "levels",
-    "transitions",
-    "shots",
-    "error_budget",
 ];
+const LATER: [&str; 7] = ["part", "lost", "steady", "levels", "transitions", "shots", "error_budget"];
 
 /// Reads `record:`, or fills in its defaults.
 pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operator], used: &mut Vec<String>) -> Option<Record> {
@@ -129,12 +123,7 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
     let Some(node) = node else {
         reader.default("record.populations", "all");
         reader.default("record.every", "about 500 rows");
-        return Some(Record {
-            rows: Rows::Unsaid,
-            items: vec![Item::Populations(all)],
-            finals: Vec::new(),
-            place: Place::default(),
-        });
+        return Some(Record { rows: Rows::Unsaid, items: vec![Item::Populations(all)], finals: Vec::new(), place: Place::default() });
     };
     let known: Vec<&str> = KEYS.iter().copied().filter(|key| *key != "population").chain(LATER).collect();
     let entries = reader.fields(node, "record", &known, &[])?;
@@ -171,13 +160,7 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
         let value = &entry.value;
         let item = match entry.key.as_str() {
             key if LATER.contains(&key) => {
-                reader.error(
-                    entry.place,
-                    Fault::NotNow {
-                        key: key.to_string(),
-                        section: "record".to_string(),
-                    },
-                );
+                reader.error(entry.place, Fault::NotNow { key: key.to_string(), section: "record".to_string() });
                 None
             }
             "populations" if value.text() == Some("all") => Some(Item::Populations(all.clone())),
@@ -191,6 +174,7 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
             "adiabatic_populations" => switched(reader, value, "adiabatic_populations", Item::AdiabaticPopulations, &mut items),
             "propagator" => switched(reader, value, "propagator", Item::Propagator, &mut items),
             "fidelity" => read_fidelity(reader, value).map(Item::Fidelity),
+            "quasi_energies" => read_period(reader, value).map(Item::QuasiEnergies),
             "gate" => read_gate(reader, value, operators, used).map(|gate| Item::Gate(Box::new(gate))),
             _ => continue,
         };
@@ -205,30 +189,19 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
         None => Some(Vec::new()),
     };
     let rows = rows?;
-    good.then_some(Record {
-        rows,
-        items,
-        finals: finals?,
-        place: node.place,
-    })
+    good.then_some(Record { rows, items, finals: finals?, place: node.place })
 }
 
 /// `true` records the item; `false` leaves it out (an empty list of populations is the mark of nothing).
 fn switched(reader: &mut Reader, node: &Node, what: &str, item: Item, _items: &mut [Item]) -> Option<Item> {
-    reader
-        .truth(node, what)
-        .map(|on| if on { item } else { Item::Populations(Vec::new()) })
+    reader.truth(node, what).map(|on| if on { item } else { Item::Populations(Vec::new()) })
 }
 
 fn levels(reader: &mut Reader, node: &Node, what: &str) -> Option<Vec<usize>> {
     if node.items().is_none() && node.text().is_some() && !node.is_empty() {
         return reader.level(node).map(|level| vec![level]);
     }
-    let found: Vec<Option<usize>> = reader
-        .list(node, what, &format!("{what}: [up]"))?
-        .iter()
-        .map(|item| reader.level(item))
-        .collect();
+    let found: Vec<Option<usize>> = reader.list(node, what, &format!("{what}: [up]"))?.iter().map(|item| reader.level(item)).collect();
     found.into_iter().collect()
 }
 
@@ -265,17 +238,19 @@ fn read_fidelity(reader: &mut Reader, node: &Node) -> Option<State> {
     read_state(reader, to, "fidelity / to")
 }
 
+fn read_period(reader: &mut Reader, node: &Node) -> Option<Quantity> {
+    reader.fields(node, "quasi_energies", &["period"], &[])?;
+    let period = reader.need(node, "period", "quasi_energies", "1 turn / carrier")?;
+    reader.quantity(period, "quasi_energies / period", Dim::TIME)
+}
+
 fn read_gate(reader: &mut Reader, node: &Node, operators: &[Operator], used: &mut Vec<String>) -> Option<Gate> {
     reader.fields(node, "gate", &["within", "target", "free_z"], &[])?;
     let within = reader
         .need(node, "within", "gate", "[0, 1]")
         .and_then(|within| levels(reader, within, "within").map(|levels| (levels, within.place)));
     let within = within.and_then(|(levels, place)| {
-        let twice = levels
-            .iter()
-            .enumerate()
-            .find(|(k, level)| levels[..*k].contains(level))
-            .map(|(_, level)| *level);
+        let twice = levels.iter().enumerate().find(|(k, level)| levels[..*k].contains(level)).map(|(_, level)| *level);
         if let Some(level) = twice {
             let name = reader.level_names()[level].clone();
             reader.error(place, Fault::SameLevel { name });
@@ -284,21 +259,15 @@ fn read_gate(reader: &mut Reader, node: &Node, operators: &[Operator], used: &mu
         Some(levels)
     });
     let size = within.as_ref().map_or(2, Vec::len);
-    let target = reader
-        .need(node, "target", "gate", "{turn: 180 deg, about: x}")
-        .and_then(|target| read_target(reader, target, size));
+    let target = reader.need(node, "target", "gate", "{turn: 180 deg, about: x}").and_then(|target| read_target(reader, target, size));
     let free_z = match node.get("free_z") {
         None => {
             reader.error(node.place, Fault::FreeZUnsaid { levels: size });
             None
         }
         Some(list) if list.items().is_some() => {
-            let found: Vec<Option<usize>> = list
-                .items()
-                .unwrap_or_default()
-                .iter()
-                .map(|item| operator(reader, item, operators, used))
-                .collect();
+            let found: Vec<Option<usize>> =
+                list.items().unwrap_or_default().iter().map(|item| operator(reader, item, operators, used)).collect();
             found.into_iter().collect::<Option<Vec<_>>>().map(FreeZ::Operators)
         }
         Some(truth) => match reader.truth(truth, "free_z") {
@@ -311,28 +280,20 @@ fn read_gate(reader: &mut Reader, node: &Node, operators: &[Operator], used: &mu
             None => None,
         },
     };
-    Some(Gate {
-        within: within?,
-        target: target?,
-        free_z: free_z?,
-        place: node.place,
-    })
+    Some(Gate { within: within?, target: target?, free_z: free_z?, place: node.place })
 }
 
 fn read_target(reader: &mut Reader, node: &Node, size: usize) -> Option<Target> {
     reader.fields(node, "target", &["turn", "about", "rows", "rows_from", "lower"], &[])?;
     if node.get("turn").is_none() && node.get("about").is_none() {
         let entries = matrix::plain_matrix(reader, node, "target", size)?;
-        let values = reader.tape.evaluate(&[]);
+        let values = reader.tape.as_written();
         let mut m = crate::problem::Matrix::zeros(size, size);
         for entry in &entries {
             let im = entry.value.im.map_or(0.0, |im| values[im as usize]);
             m[(entry.row, entry.column)] = num_complex::Complex64::new(values[entry.value.re as usize], im);
         }
-        let off = (m.adjoint() * &m - crate::problem::Matrix::identity(size, size))
-            .iter()
-            .map(|z| z.norm())
-            .fold(0.0, f64::max);
+        let off = (m.adjoint() * &m - crate::problem::Matrix::identity(size, size)).iter().map(|z| z.norm()).fold(0.0, f64::max);
         if !(off <= 1e-9) {
             reader.error(node.place, Fault::NotUnitary { off });
             return None;
@@ -343,9 +304,7 @@ fn read_target(reader: &mut Reader, node: &Node, size: usize) -> Option<Target> 
         reader.error(node.place, Fault::TargetSize { found: 2, wanted: size });
         return None;
     }
-    let turn = reader
-        .need(node, "turn", "target", "180 deg")
-        .and_then(|turn| reader.quantity(turn, "target / turn", Dim::ANGLE));
+    let turn = reader.need(node, "turn", "target", "180 deg").and_then(|turn| reader.quantity(turn, "target / turn", Dim::ANGLE));
     let about = reader.need(node, "about", "target", "x")?;
     let text = reader.text(about, "target / about", "x")?.trim().to_string();
     let axis = match text.as_str() {
@@ -358,10 +317,7 @@ fn read_target(reader: &mut Reader, node: &Node, size: usize) -> Option<Target> 
         _ => None,
     };
     let axis = match axis {
-        Some(angle) => Quantity {
-            register: reader.constant(angle, about.place),
-            place: about.place,
-        },
+        Some(angle) => Quantity { register: reader.constant(angle, about.place), place: about.place },
         None => reader.quantity(about, "target / about", Dim::ANGLE)?,
     };
     Some(Target::Equator(turn?, axis))
@@ -396,16 +352,10 @@ fn read_finals(reader: &mut Reader, node: &Node, items: &[Item]) -> Option<Vec<(
             "population" | "adiabatic_population" | "time_in" => {
                 let found = levels(reader, &entry.value, key)?;
                 let names = reader.level_names();
-                found
-                    .into_iter()
-                    .map(|level| (format!("{key}_{}", names[level]), entry.value.place))
-                    .collect()
+                found.into_iter().map(|level| (format!("{key}_{}", names[level]), entry.value.place)).collect()
             }
             "mean" => match entry.value.items() {
-                Some(items) => items
-                    .iter()
-                    .map(|item| (format!("mean_{}", item.text().unwrap_or_default()), item.place))
-                    .collect(),
+                Some(items) => items.iter().map(|item| (format!("mean_{}", item.text().unwrap_or_default()), item.place)).collect(),
                 None => vec![(format!("mean_{}", entry.value.text().unwrap_or_default()), entry.value.place)],
             },
             "coherence" | "bloch" => {

@@ -110,26 +110,11 @@ struct Steps<'a> {
     open_blocks: Vec<String>,
 }
 
-const STEP_KEYS: [&str; 9] = [
-    "pulse",
-    "wait",
-    "wait_between_centres",
-    "together",
-    "repeat",
-    "use",
-    "turn_frame",
-    "set_carrier",
-    "mark",
-];
+const STEP_KEYS: [&str; 9] = ["pulse", "wait", "wait_between_centres", "together", "repeat", "use", "turn_frame", "set_carrier", "mark"];
 
 /// Reads `sequence:` and the blocks it uses.
 pub fn read_sequence(reader: &mut Reader, node: &Node, known: &Known) -> (Option<Vec<Step>>, Used) {
-    let mut steps = Steps {
-        reader,
-        known,
-        used: Used::default(),
-        open_blocks: Vec::new(),
-    };
+    let mut steps = Steps { reader, known, used: Used::default(), open_blocks: Vec::new() };
     let sequence = steps.steps(node, "sequence");
     let mut used = std::mem::take(&mut steps.used);
     // unused blocks are read all the same, so that a slip in them is found
@@ -144,13 +129,7 @@ pub fn read_sequence(reader: &mut Reader, node: &Node, known: &Known) -> (Option
     if let Some(sequence) = &sequence {
         let count = unrolled(sequence);
         if count > MOST_STEPS as f64 {
-            reader.error(
-                node.place,
-                Fault::TooManySteps {
-                    steps: count,
-                    limit: MOST_STEPS,
-                },
-            );
+            reader.error(node.place, Fault::TooManySteps { steps: count, limit: MOST_STEPS });
             return (None, used);
         }
     }
@@ -178,9 +157,7 @@ impl Steps<'_> {
     }
 
     fn step(&mut self, node: &Node) -> Option<Step> {
-        let entries = self
-            .reader
-            .fields(node, "a step of the sequence", &STEP_KEYS, &[("delay", "A pause is called wait.")])?;
+        let entries = self.reader.fields(node, "a step of the sequence", &STEP_KEYS, &[("delay", "A pause is called wait.")])?;
         let Some(entry) = entries.iter().find(|entry| STEP_KEYS.contains(&entry.key.as_str())) else {
             return None;
         };
@@ -197,19 +174,13 @@ impl Steps<'_> {
         match entry.key.as_str() {
             "pulse" => self.pulse(value, false).map(Step::Pulse),
             "wait" => self.reader.quantity(value, "wait", Dim::TIME).map(Step::Wait),
-            "wait_between_centres" => self
-                .reader
-                .quantity(value, "wait_between_centres", Dim::TIME)
-                .map(Step::WaitBetweenCentres),
+            "wait_between_centres" => self.reader.quantity(value, "wait_between_centres", Dim::TIME).map(Step::WaitBetweenCentres),
             "together" => self.together(value),
             "repeat" => self.repeat(value),
             "use" => self.block(value),
             "turn_frame" => self.turn_frame(value),
             "set_carrier" => self.set_carrier(value),
-            _ => self
-                .reader
-                .text(value, "mark", "mark: half way")
-                .map(|text| Step::Mark(text.to_string())),
+            _ => self.reader.text(value, "mark", "mark: half way").map(|text| Step::Mark(text.to_string())),
         }
     }
 
@@ -253,22 +224,14 @@ impl Steps<'_> {
                 None
             }
             (Some(at), None) => self.reader.quantity(at, "centre_at", Dim::TIME).map(Align::CentreAt),
-            (None, Some(word)) => self.reader.word(
-                word,
-                "align",
-                &[("start", Align::Start), ("centre", Align::Centre), ("end", Align::End)],
-            ),
+            (None, Some(word)) => {
+                self.reader.word(word, "align", &[("start", Align::Start), ("centre", Align::Centre), ("end", Align::End)])
+            }
             (None, None) => Some(Align::Start),
         };
         let (drive, envelope) = (drive?, envelope?);
         self.judge(drive, envelope, node)?;
-        Some(Pulse {
-            drive,
-            envelope,
-            phase: phase?,
-            align: align?,
-            place: node.place,
-        })
+        Some(Pulse { drive, envelope, phase: phase?, align: align?, place: node.place })
     }
 
     /// A drive by name; `None` too where its own section had a mistake.
@@ -290,24 +253,12 @@ impl Steps<'_> {
             "z" | "-z" => {
                 let hint = Some("A pulse turns about an axis of the equator; for a turn about z there is turn_frame.".to_string());
                 let known = ["x", "y", "-x", "-y", "an angle"].map(str::to_string).to_vec();
-                self.reader.error(
-                    node.place,
-                    Fault::UnknownWord {
-                        what: "turn_about".to_string(),
-                        found: text,
-                        known,
-                        near: None,
-                        hint,
-                    },
-                );
+                self.reader.error(node.place, Fault::UnknownWord { what: "turn_about".to_string(), found: text, known, near: None, hint });
                 return None;
             }
             _ => return self.reader.quantity(node, "turn_about", Dim::ANGLE),
         };
-        Some(Quantity {
-            register: self.reader.constant(angle, node.place),
-            place: node.place,
-        })
+        Some(Quantity { register: self.reader.constant(angle, node.place), place: node.place })
     }
 
     /// Whether this envelope can drive this drive.
@@ -316,22 +267,12 @@ impl Steps<'_> {
         let names = (envelope.name.clone(), drive.name.clone());
         if drive.form == Form::Direct {
             if envelope.size_word != SizeWord::MatrixElement {
-                let fault = Fault::SizeOfDirect {
-                    envelope: names.0,
-                    drive: names.1,
-                    key: envelope.size_word.word().to_string(),
-                };
+                let fault = Fault::SizeOfDirect { envelope: names.0, drive: names.1, key: envelope.size_word.word().to_string() };
                 self.reader.error(envelope.size_place, fault);
                 return None;
             }
             if envelope.derivative.is_some() {
-                self.reader.error(
-                    envelope.place,
-                    Fault::DerivativeOfDirect {
-                        envelope: names.0,
-                        drive: names.1,
-                    },
-                );
+                self.reader.error(envelope.place, Fault::DerivativeOfDirect { envelope: names.0, drive: names.1 });
                 return None;
             }
             if let Some(phase) = node.get("phase").or(node.get("turn_about")) {
@@ -346,13 +287,7 @@ impl Steps<'_> {
             return None;
         }
         if envelope.size_word == SizeWord::Volts && drive.calibration.is_none() {
-            self.reader.error(
-                envelope.size_place,
-                Fault::NoCalibration {
-                    envelope: names.0,
-                    drive: names.1,
-                },
-            );
+            self.reader.error(envelope.size_place, Fault::NoCalibration { envelope: names.0, drive: names.1 });
             return None;
         }
         Some(())
@@ -384,23 +319,11 @@ impl Steps<'_> {
 
     fn repeat(&mut self, node: &Node) -> Option<Step> {
         self.reader.fields(node, "repeat", &["times", "steps"], &[])?;
-        let times = self
-            .reader
-            .need(node, "times", "repeat", "8")
-            .and_then(|times| self.reader.whole(times, "repeat / times", 0.0));
-        let steps = self
-            .reader
-            .need(node, "steps", "repeat", "[{wait: 1 us}]")
-            .and_then(|steps| self.steps(steps, "repeat / steps"));
+        let times = self.reader.need(node, "times", "repeat", "8").and_then(|times| self.reader.whole(times, "repeat / times", 0.0));
+        let steps = self.reader.need(node, "steps", "repeat", "[{wait: 1 us}]").and_then(|steps| self.steps(steps, "repeat / steps"));
         let (times, steps) = (times?, steps?);
         if times > MOST_STEPS as f64 {
-            self.reader.error(
-                node.place,
-                Fault::TooManySteps {
-                    steps: times,
-                    limit: MOST_STEPS,
-                },
-            );
+            self.reader.error(node.place, Fault::TooManySteps { steps: times, limit: MOST_STEPS });
             return None;
         }
         Some(Step::Repeat(times as usize, steps))
@@ -408,14 +331,8 @@ impl Steps<'_> {
 
     fn block(&mut self, node: &Node) -> Option<Step> {
         let name = self.reader.text(node, "use", "use: the name of a block")?.to_string();
-        let names: Vec<String> = self
-            .known
-            .blocks
-            .and_then(Node::entries)
-            .unwrap_or_default()
-            .iter()
-            .map(|entry| entry.key.clone())
-            .collect();
+        let names: Vec<String> =
+            self.known.blocks.and_then(Node::entries).unwrap_or_default().iter().map(|entry| entry.key.clone()).collect();
         let Some(block) = self.known.blocks.and_then(|blocks| blocks.get(&name)) else {
             self.reader.unknown(node.place, "block", &name, &names);
             return None;
@@ -448,10 +365,7 @@ impl Steps<'_> {
             return Some(Step::TurnFrame(drive?, angle?));
         }
         self.reader.fields(node, "turn_frame", &["drive", "angle"], &[])?;
-        let drive = self
-            .reader
-            .need(node, "drive", "turn_frame", "the name of a drive")
-            .and_then(|drive| self.drive(drive));
+        let drive = self.reader.need(node, "drive", "turn_frame", "the name of a drive").and_then(|drive| self.drive(drive));
         let angle = self
             .reader
             .need(node, "angle", "turn_frame", "90 deg")
@@ -467,10 +381,7 @@ impl Steps<'_> {
 
     fn set_carrier(&mut self, node: &Node) -> Option<Step> {
         self.reader.fields(node, "set_carrier", &["drive", "carrier", "phase"], &[])?;
-        let drive = self
-            .reader
-            .need(node, "drive", "set_carrier", "the name of a drive")
-            .and_then(|drive| self.drive(drive));
+        let drive = self.reader.need(node, "drive", "set_carrier", "the name of a drive").and_then(|drive| self.drive(drive));
         let carrier = self
             .reader
             .need(node, "carrier", "set_carrier", "80 MHz")
@@ -486,21 +397,11 @@ impl Steps<'_> {
         let (drive, carrier) = (drive?, carrier?);
         let written = &self.known.drives.1[drive];
         if written.form == Form::Direct {
-            self.reader.error(
-                node.place,
-                Fault::CarrierOfDirect {
-                    drive: written.name.clone(),
-                },
-            );
+            self.reader.error(node.place, Fault::CarrierOfDirect { drive: written.name.clone() });
             return None;
         }
         if change.is_none() && written.carrier_phase != Some(CarrierPhase::Restarts) {
-            self.reader.error(
-                node.place,
-                Fault::PhaseChangeUnsaid {
-                    drive: written.name.clone(),
-                },
-            );
+            self.reader.error(node.place, Fault::PhaseChangeUnsaid { drive: written.name.clone() });
             return None;
         }
         Some(Step::SetCarrier(drive, carrier, change))

@@ -1,8 +1,10 @@
 //! `accuracy:`, `frame:` and `output:`.
 
 use super::messages::Fault;
-use super::reader::Reader;
+use super::place::Place;
+use super::reader::{Quantity, Reader};
 use super::tree::Node;
+use crate::units::Dim;
 
 /// Below this, rounding alone exceeds what is asked.
 pub const FINEST: f64 = 1e-13;
@@ -35,11 +37,7 @@ pub struct Accuracy {
 
 /// Reads `accuracy:`.
 pub fn read_accuracy(reader: &mut Reader, node: Option<&Node>) -> Option<Accuracy> {
-    let mut accuracy = Accuracy {
-        last: USUAL_ACCURACY,
-        method: MethodWord::Automatic,
-        cross_check: false,
-    };
+    let mut accuracy = Accuracy { last: USUAL_ACCURACY, method: MethodWord::Automatic, cross_check: false };
     let words = [
         ("automatic", MethodWord::Automatic),
         ("constant steps", MethodWord::ConstantSteps),
@@ -54,13 +52,7 @@ pub fn read_accuracy(reader: &mut Reader, node: Option<&Node>) -> Option<Accurac
             &[("tolerance", "The largest allowed error is called final.")],
         )?;
         if let Some(seed) = entries.iter().find(|entry| entry.key == "seed") {
-            reader.error(
-                seed.place,
-                Fault::NotNow {
-                    key: "seed".to_string(),
-                    section: "accuracy".to_string(),
-                },
-            );
+            reader.error(seed.place, Fault::NotNow { key: "seed".to_string(), section: "accuracy".to_string() });
             return None;
         }
     }
@@ -89,42 +81,120 @@ pub fn read_accuracy(reader: &mut Reader, node: Option<&Node>) -> Option<Accurac
     Some(accuracy)
 }
 
-/// Reads `frame:`; so far the laboratory frame alone.
-pub fn read_frame(reader: &mut Reader, node: Option<&Node>) -> Option<()> {
+/// What a rotating frame follows.
+#[derive(Debug, Clone)]
+pub enum Follows {
+    /// The drives: each ties the pairs that it couples.
+    Drives,
+    /// A table: level, frequency in Hz; levels left out stand still.
+    Table(Vec<(usize, Quantity)>),
+}
+
+/// The rotating frame.
+#[derive(Debug, Clone)]
+pub struct Rotating {
+    /// What it follows.
+    pub follows: Follows,
+    /// Terms that turn faster are dropped, Hz; none keeps every term.
+    pub limit: Option<Quantity>,
+    /// Levels to eliminate.
+    pub eliminate: Vec<usize>,
+    /// A kept resonant half that still turns is allowed.
+    pub allow_beat: bool,
+    /// Where the section stands.
+    pub place: Place,
+}
+
+/// `frame:`.
+#[derive(Debug, Clone)]
+pub enum Frame {
+    /// Nothing rewritten, nothing dropped.
+    Lab,
+    /// A rotating frame.
+    Rotating(Box<Rotating>),
+}
+
+impl Frame {
+    /// Levels that are eliminated.
+    pub fn eliminated(&self) -> &[usize] {
+        match self {
+            Frame::Lab => &[],
+            Frame::Rotating(frame) => &frame.eliminate,
+        }
+    }
+}
+
+/// Reads `frame:`.
+pub fn read_frame(reader: &mut Reader, node: Option<&Node>) -> Option<Frame> {
     let Some(node) = node else {
         reader.default("frame.kind", "lab");
-        return Some(());
+        return Some(Frame::Lab);
     };
     let known = ["kind", "follows", "drop_terms_faster_than", "eliminate", "allow_beat"];
-    reader.fields(node, "frame", &known, &[])?;
+    let entries = reader.fields(node, "frame", &known, &[])?;
     let kind = reader.need(node, "kind", "frame", "lab")?;
     let rotating = reader.word(kind, "frame / kind", &[("lab", false), ("rotating", true)])?;
-    if rotating {
-        reader.error(
-            kind.place,
-            Fault::NotNow {
-                key: "rotating".to_string(),
-                section: "frame / kind".to_string(),
-            },
-        );
-        return None;
+    if !rotating {
+        if let Some(entry) = entries.iter().find(|entry| known[1..].contains(&entry.key.as_str())) {
+            let known = vec!["kind".to_string()];
+            let hint = Some("It belongs to a rotating frame; in the laboratory frame nothing is dropped.".to_string());
+            let fault = Fault::UnknownKey { key: entry.key.clone(), section: "frame (kind: lab)".to_string(), near: None, known, hint };
+            reader.error(entry.place, fault);
+            return None;
+        }
+        return Some(Frame::Lab);
     }
-    if let Some(entry) = node.entries()?.iter().find(|entry| known[1..].contains(&entry.key.as_str())) {
-        let known = vec!["kind".to_string()];
-        let hint = Some("It belongs to a rotating frame; in the laboratory frame nothing is dropped.".to_string());
-        reader.error(
-            entry.place,
-            Fault::UnknownKey {
-                key: entry.key.clone(),
-                section: "frame (kind: lab)".to_string(),
-                near: None,
-                known,
-                hint,
-            },
-        );
-        return None;
+    let follows = reader.need(node, "follows", "frame", "drives").and_then(|follows| read_follows(reader, follows));
+    let limit = match node.get("drop_terms_faster_than") {
+        None => {
+            let why = Some("Terms that turn faster are dropped and listed; nothing keeps every term.".to_string());
+            let fault = Fault::MissingKey {
+                key: "drop_terms_faster_than".to_string(),
+                section: "frame".to_string(),
+                write: "drop_terms_faster_than: 1 GHz".to_string(),
+                why,
+            };
+            reader.error(kind.place, fault);
+            None
+        }
+        Some(limit) if limit.text() == Some("nothing") => Some(None),
+        Some(limit) => reader.quantity(limit, "drop_terms_faster_than", Dim::FREQUENCY).map(Some),
+    };
+    let eliminate = match node.get("eliminate") {
+        None => Some(Vec::new()),
+        Some(list) => {
+            let found: Vec<Option<usize>> =
+                reader.list(list, "eliminate", "eliminate: [upper]")?.iter().map(|level| reader.level(level)).collect();
+            found.into_iter().collect()
+        }
+    };
+    let allow_beat = match node.get("allow_beat") {
+        None => false,
+        Some(truth) => reader.truth(truth, "allow_beat")?,
+    };
+    let frame = Rotating { follows: follows?, limit: limit?, eliminate: eliminate?, allow_beat, place: node.place };
+    Some(Frame::Rotating(Box::new(frame)))
+}
+
+fn read_follows(reader: &mut Reader, node: &Node) -> Option<Follows> {
+    let Some(entries) = node.entries() else {
+        return reader.word(node, "frame / follows", &[("drives", ())]).map(|()| Follows::Drives);
+    };
+    let names = reader.level_names();
+    let mut table = Vec::new();
+    let mut good = true;
+    for entry in entries {
+        let frequency = reader.quantity(&entry.value, "a frequency of the frame", Dim::FREQUENCY);
+        match (names.iter().position(|name| *name == entry.key), frequency) {
+            (Some(level), Some(frequency)) => table.push((level, frequency)),
+            (None, _) => {
+                reader.unknown(entry.place, "level", &entry.key, &names);
+                good = false;
+            }
+            _ => good = false,
+        }
     }
-    Some(())
+    good.then_some(Follows::Table(table))
 }
 
 /// A plot that a run can draw.
@@ -153,17 +223,8 @@ pub fn read_output(reader: &mut Reader, node: Option<&Node>) -> Option<Output> {
     let mut output = Output { folder: None, plots: all };
     if let Some(node) = node {
         let entries = reader.fields(node, "output", &["folder", "plots", "tables", "waveform_files", "report"], &[])?;
-        for later in entries
-            .iter()
-            .filter(|entry| matches!(entry.key.as_str(), "waveform_files" | "report"))
-        {
-            reader.error(
-                later.place,
-                Fault::NotNow {
-                    key: later.key.clone(),
-                    section: "output".to_string(),
-                },
-            );
+        for later in entries.iter().filter(|entry| matches!(entry.key.as_str(), "waveform_files" | "report")) {
+            reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: "output".to_string() });
         }
         if let Some(folder) = node.get("folder") {
             output.folder = Some(reader.text(folder, "output / folder", "folder: outputs/first-run")?.to_string());
@@ -178,21 +239,11 @@ pub fn read_output(reader: &mut Reader, node: Option<&Node>) -> Option<Output> {
             for plot in reader.list(plots, "output / plots", "plots: [traces, envelopes]")? {
                 let later = ["ledger", "level diagram", "map", "scan lines"];
                 if let Some(key) = plot.text().filter(|text| later.contains(text)) {
-                    reader.error(
-                        plot.place,
-                        Fault::NotNow {
-                            key: key.to_string(),
-                            section: "output / plots".to_string(),
-                        },
-                    );
+                    reader.error(plot.place, Fault::NotNow { key: key.to_string(), section: "output / plots".to_string() });
                     return None;
                 }
-                let words = [
-                    ("traces", Plot::Traces),
-                    ("envelopes", Plot::Envelopes),
-                    ("timing", Plot::Envelopes),
-                    ("spectrum", Plot::Spectrum),
-                ];
+                let words =
+                    [("traces", Plot::Traces), ("envelopes", Plot::Envelopes), ("timing", Plot::Envelopes), ("spectrum", Plot::Spectrum)];
                 let plot = reader.word(plot, "a plot", &words)?;
                 if !output.plots.contains(&plot) {
                     output.plots.push(plot);

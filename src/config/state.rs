@@ -25,35 +25,18 @@ const LATER: [&str; 5] = ["mix", "temperature", "part", "quanta", "steady"];
 /// Reads `start:`.
 pub fn read_start(reader: &mut Reader, node: &Node) -> Option<State> {
     if node.text() == Some("steady") && !reader.level_names().iter().any(|name| name == "steady") {
-        reader.error(
-            node.place,
-            Fault::NotNow {
-                key: "steady".to_string(),
-                section: "start".to_string(),
-            },
-        );
+        reader.error(node.place, Fault::NotNow { key: "steady".to_string(), section: "start".to_string() });
         return None;
     }
     let Some(entries) = node.entries() else {
         return reader.level(node).map(State::Level);
     };
     if let Some(later) = entries.iter().find(|entry| LATER.contains(&entry.key.as_str())) {
-        reader.error(
-            later.place,
-            Fault::NotNow {
-                key: later.key.clone(),
-                section: "start".to_string(),
-            },
-        );
+        reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: "start".to_string() });
         return None;
     }
     reader.fields(node, "start", &["superposition", "state_from"], &[])?;
-    let entry = reader.one_of(
-        node,
-        &["superposition", "state_from"],
-        "start",
-        Some("Or the name of a level alone: start: down."),
-    )?;
+    let entry = reader.one_of(node, &["superposition", "state_from"], "start", Some("Or the name of a level alone: start: down."))?;
     if entry.key == "superposition" {
         return read_superposition(reader, &entry.value);
     }
@@ -103,11 +86,7 @@ fn read_superposition(reader: &mut Reader, node: &Node) -> Option<State> {
                 let expected = "a list of size and phase".to_string();
                 reader.error(
                     entry.value.place,
-                    Fault::Shape {
-                        what: entry.key.clone(),
-                        expected,
-                        example: format!("{}: [sqrt(0.5), 90 deg]", entry.key),
-                    },
+                    Fault::Shape { what: entry.key.clone(), expected, example: format!("{}: [sqrt(0.5), 90 deg]", entry.key) },
                 );
                 None
             }
@@ -120,26 +99,17 @@ fn read_superposition(reader: &mut Reader, node: &Node) -> Option<State> {
     if !good {
         return None;
     }
-    let values = reader.tape.evaluate(&[]);
+    let values = reader.tape.as_written();
     let sum: f64 = parts.iter().map(|(_, size, _)| values[size.register as usize].powi(2)).sum();
     if !(sum.is_finite() && (sum - 1.0).abs() <= 1e-6) {
         let scaled: Vec<String> = entries
             .iter()
             .zip(&parts)
             .map(|(entry, (_, size, phase))| {
-                format!(
-                    "{}: [{}, {} turn]",
-                    entry.key,
-                    values[size.register as usize] / sum.sqrt(),
-                    short(values[phase.register as usize])
-                )
+                format!("{}: [{}, {} turn]", entry.key, values[size.register as usize] / sum.sqrt(), short(values[phase.register as usize]))
             })
             .collect();
-        let write = if sum > 0.0 {
-            format!("superposition: {{{}}}", scaled.join(", "))
-        } else {
-            example.to_string()
-        };
+        let write = if sum > 0.0 { format!("superposition: {{{}}}", scaled.join(", ")) } else { example.to_string() };
         reader.error(node.place, Fault::NotNormalised { sum, write });
         return None;
     }
@@ -169,28 +139,17 @@ fn read_state_file(reader: &mut Reader, node: &Node) -> Option<State> {
     if amplitudes.len() != wanted {
         reader.error(
             node.place,
-            Fault::CannotRead {
-                path: name,
-                reason: format!("it has {} amplitudes for {wanted} levels", amplitudes.len()),
-            },
+            Fault::CannotRead { path: name, reason: format!("it has {} amplitudes for {wanted} levels", amplitudes.len()) },
         );
         return None;
     }
     let sum: f64 = amplitudes.iter().map(|(re, im)| re * re + im * im).sum();
     if !(sum.is_finite() && (sum - 1.0).abs() <= 1e-6) {
-        reader.error(
-            node.place,
-            Fault::NotNormalised {
-                sum,
-                write: "a file whose squared amplitudes add up to 1".to_string(),
-            },
-        );
+        reader.error(node.place, Fault::NotNormalised { sum, write: "a file whose squared amplitudes add up to 1".to_string() });
         return None;
     }
     let norm = sum.sqrt();
-    Some(State::Amplitudes(
-        amplitudes.into_iter().map(|(re, im)| (re / norm, im / norm)).collect(),
-    ))
+    Some(State::Amplitudes(amplitudes.into_iter().map(|(re, im)| (re / norm, im / norm)).collect()))
 }
 
 /// A file's bytes and the amplitudes found in it.
@@ -198,11 +157,7 @@ type StateFile = (Vec<u8>, Vec<(f64, f64)>);
 
 /// `end_state.amplitudes` of a result.json; a folder stands for the result.json in it.
 fn end_state(path: &Path) -> Result<StateFile, String> {
-    let path = if path.is_dir() {
-        path.join("result.json")
-    } else {
-        path.to_path_buf()
-    };
+    let path = if path.is_dir() { path.join("result.json") } else { path.to_path_buf() };
     let bytes = std::fs::read(&path).map_err(|error| {
         if error.kind() == std::io::ErrorKind::NotFound {
             "no such file exists".to_string()
@@ -211,10 +166,7 @@ fn end_state(path: &Path) -> Result<StateFile, String> {
         }
     })?;
     let json: serde_json::Value = serde_json::from_slice(&bytes).map_err(|_| "it is neither a result.json nor a .npy file".to_string())?;
-    let pairs = json
-        .pointer("/end_state/amplitudes")
-        .and_then(|list| list.as_array())
-        .ok_or("it holds no end_state")?;
+    let pairs = json.pointer("/end_state/amplitudes").and_then(|list| list.as_array()).ok_or("it holds no end_state")?;
     let amplitudes = pairs
         .iter()
         .map(|pair| Some((pair.get(0)?.as_f64()?, pair.get(1)?.as_f64()?)))

@@ -43,17 +43,8 @@ pub fn read_system(reader: &mut Reader, node: &Node) -> Option<System> {
     let mut known = vec!["levels", "ladder", "hamiltonian", "name_states_by"];
     known.extend(LATER_KINDS);
     let entries = reader.fields(node, "system", &known, &[])?;
-    if let Some(later) = entries
-        .iter()
-        .find(|entry| LATER_KINDS.contains(&entry.key.as_str()) || entry.key == "name_states_by")
-    {
-        reader.error(
-            later.place,
-            Fault::NotNow {
-                key: later.key.clone(),
-                section: "system".to_string(),
-            },
-        );
+    if let Some(later) = entries.iter().find(|entry| LATER_KINDS.contains(&entry.key.as_str()) || entry.key == "name_states_by") {
+        reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: "system".to_string() });
         return None;
     }
     let entry = reader.one_of(node, &["levels", "ladder", "hamiltonian"], "system", None)?;
@@ -69,25 +60,13 @@ fn too_many(reader: &mut Reader, place: Place, levels: f64) -> bool {
         return false;
     }
     let bytes = 16.0 * levels * levels * 4.0;
-    reader.error(
-        place,
-        Fault::TooManyLevels {
-            levels,
-            bytes,
-            limit: MOST_LEVELS,
-        },
-    );
+    reader.error(place, Fault::TooManyLevels { levels, bytes, limit: MOST_LEVELS });
     true
 }
 
 fn read_levels(reader: &mut Reader, node: &Node) -> Option<System> {
     let Some(entries) = node.entries().filter(|entries| !entries.is_empty()) else {
-        reader.error(
-            node.place,
-            Fault::EmptySystem {
-                what: "levels".to_string(),
-            },
-        );
+        reader.error(node.place, Fault::EmptySystem { what: "levels".to_string() });
         return None;
     };
     if too_many(reader, node.place, entries.len() as f64) {
@@ -95,19 +74,10 @@ fn read_levels(reader: &mut Reader, node: &Node) -> Option<System> {
     }
     let names: Vec<String> = entries.iter().map(|entry| entry.key.clone()).collect();
     warn_of_case(reader, "level", &names, node.place);
-    let sources = entries
-        .iter()
-        .map(|entry| LevelSource::Written(entry.value.clone(), None))
-        .collect();
+    let sources = entries.iter().map(|entry| LevelSource::Written(entry.value.clone(), None)).collect();
     reader.define_levels(names.clone(), sources, Rungs::default());
     let entries = diagonal(reader, names.len(), |k| entries[k].value.place)?;
-    Some(System {
-        place: node.place,
-        kind: "levels",
-        names,
-        entries,
-        rungs: None,
-    })
+    Some(System { place: node.place, kind: "levels", names, entries, rungs: None })
 }
 
 /// The diagonal entries, compiled; `None` if one cannot be.
@@ -116,33 +86,14 @@ fn diagonal(reader: &mut Reader, size: usize, place: impl Fn(usize) -> Place) ->
     energies
         .into_iter()
         .enumerate()
-        .map(|(k, re)| {
-            re.map(|re| MatrixEntry {
-                row: k,
-                column: k,
-                value: ComplexQuantity {
-                    re,
-                    im: None,
-                    place: place(k),
-                },
-            })
-        })
+        .map(|(k, re)| re.map(|re| MatrixEntry { row: k, column: k, value: ComplexQuantity { re, im: None, place: place(k) } }))
         .collect()
 }
 
 fn read_ladder(reader: &mut Reader, node: &Node, place: Place) -> Option<System> {
-    reader.fields(
-        node,
-        "system / ladder",
-        &["levels", "first_gap", "anharmonicity", "couplings_grow"],
-        &[],
-    )?;
+    reader.fields(node, "system / ladder", &["levels", "first_gap", "anharmonicity", "couplings_grow"], &[])?;
     let count = reader.need(node, "levels", "system / ladder", "4");
-    let levels = count.and_then(|count| {
-        reader
-            .whole(count, "system / ladder / levels", 1.0)
-            .map(|levels| (levels, count.place))
-    });
+    let levels = count.and_then(|count| reader.whole(count, "system / ladder / levels", 1.0).map(|levels| (levels, count.place)));
     let first = reader.need(node, "first_gap", "system / ladder", "5.02 GHz").cloned();
     let (levels, count_place) = levels?;
     if too_many(reader, count_place, levels) {
@@ -173,13 +124,7 @@ fn read_ladder(reader: &mut Reader, node: &Node, place: Place) -> Option<System>
         return None;
     }
     let entries = diagonal(reader, size, |_| place)?;
-    Some(System {
-        place: node.place,
-        kind: "ladder",
-        names,
-        entries,
-        rungs: Some(rungs?),
-    })
+    Some(System { place: node.place, kind: "ladder", names, entries, rungs: Some(rungs?) })
 }
 
 /// Relative couplings of the rungs, from `couplings_grow`.
@@ -190,18 +135,11 @@ fn read_rungs(reader: &mut Reader, node: &Node, size: usize) -> Option<Vec<Regis
             let expected = format!("a list of {} relative sizes, one for each step of the ladder", size - 1);
             reader.error(
                 grow.place,
-                Fault::Shape {
-                    what: "couplings_grow".to_string(),
-                    expected,
-                    example: "couplings_grow: sqrt".to_string(),
-                },
+                Fault::Shape { what: "couplings_grow".to_string(), expected, example: "couplings_grow: sqrt".to_string() },
             );
             return None;
         }
-        return items
-            .iter()
-            .map(|item| reader.plain(item, "a relative coupling").map(|quantity| quantity.register))
-            .collect();
+        return items.iter().map(|item| reader.plain(item, "a relative coupling").map(|quantity| quantity.register)).collect();
     }
     reader.word(grow, "couplings_grow", &[("sqrt", ())])?;
     Some((1..size).map(|n| reader.constant((n as f64).sqrt(), grow.place)).collect())
@@ -211,14 +149,9 @@ fn read_hamiltonian(reader: &mut Reader, node: &Node) -> Option<System> {
     let section = "system / hamiltonian";
     reader.fields(node, section, &["names", "unit", "rows", "rows_from", "lower"], &[])?;
     let names_node = reader.need(node, "names", section, "[left, right]");
-    let unit = reader
-        .need(node, "unit", section, "MHz")
-        .and_then(|unit| reader.energy_unit(unit, "system / hamiltonian / unit"));
+    let unit = reader.need(node, "unit", section, "MHz").and_then(|unit| reader.energy_unit(unit, "system / hamiltonian / unit"));
     let mut names = Vec::new();
-    for item in names_node
-        .and_then(|names| reader.list(names, "names", "[left, right]"))
-        .unwrap_or_default()
-    {
+    for item in names_node.and_then(|names| reader.list(names, "names", "[left, right]")).unwrap_or_default() {
         let name = reader.text(item, "the name of a level", "left").unwrap_or_default().to_string();
         if names.contains(&name) {
             reader.error(item.place, Fault::SameLevel { name: name.clone() });
@@ -237,19 +170,12 @@ fn read_hamiltonian(reader: &mut Reader, node: &Node) -> Option<System> {
     let unit = unit?;
     match matrix::rows(reader, node, section)? {
         Rows::Binary(rows, place) => {
-            let sources = (0..size)
-                .map(|k| LevelSource::Value(rows.get(k).and_then(|row| row.get(k)).map_or(0.0, |v| v.0 * unit), place))
-                .collect();
+            let sources =
+                (0..size).map(|k| LevelSource::Value(rows.get(k).and_then(|row| row.get(k)).map_or(0.0, |v| v.0 * unit), place)).collect();
             reader.define_levels(names.clone(), sources, Rungs::default());
             let entries = matrix::binary_entries(reader, &rows, size, unit, place)?;
             hermitian(reader, &names, &entries, unit)?;
-            Some(System {
-                place: node.place,
-                kind: "hamiltonian",
-                names,
-                entries,
-                rungs: None,
-            })
+            Some(System { place: node.place, kind: "hamiltonian", names, entries, rungs: None })
         }
         Rows::Text(rows) => {
             let rows_place = node.get("rows").map_or(node.place, |rows| rows.place);
@@ -273,15 +199,7 @@ fn read_hamiltonian(reader: &mut Reader, node: &Node) -> Option<System> {
                 }
                 if row == column && !cell.text().is_some_and(|text| text.contains('i')) {
                     match reader.level_energy(row) {
-                        Some(re) => entries.push(MatrixEntry {
-                            row,
-                            column,
-                            value: ComplexQuantity {
-                                re,
-                                im: None,
-                                place: cell.place,
-                            },
-                        }),
+                        Some(re) => entries.push(MatrixEntry { row, column, value: ComplexQuantity { re, im: None, place: cell.place } }),
                         None => good = false,
                     }
                     continue;
@@ -298,38 +216,22 @@ fn read_hamiltonian(reader: &mut Reader, node: &Node) -> Option<System> {
                 matrix::mirror_entries(reader, &mut entries);
             }
             hermitian(reader, &names, &entries, unit)?;
-            Some(System {
-                place: node.place,
-                kind: "hamiltonian",
-                names,
-                entries,
-                rungs: None,
-            })
+            Some(System { place: node.place, kind: "hamiltonian", names, entries, rungs: None })
         }
     }
 }
 
 /// Reports the first pair of entries that are not complex conjugates, with the numbers as written.
 fn hermitian(reader: &mut Reader, names: &[String], entries: &[MatrixEntry], unit: f64) -> Option<()> {
-    let values = reader.tape.evaluate(&[]);
-    let value = |entry: &MatrixEntry| {
-        (
-            values[entry.value.re as usize],
-            entry.value.im.map_or(0.0, |im| values[im as usize]),
-        )
-    };
+    let values = reader.tape.as_written();
+    let value = |entry: &MatrixEntry| (values[entry.value.re as usize], entry.value.im.map_or(0.0, |im| values[im as usize]));
     let largest = entries.iter().map(|entry| value(entry).0.hypot(value(entry).1)).fold(0.0, f64::max);
     let by_cell: std::collections::HashMap<(usize, usize), &MatrixEntry> =
         entries.iter().map(|entry| ((entry.row, entry.column), entry)).collect();
     let words = |(re, im): (f64, f64)| match (re == 0.0, im == 0.0) {
         (_, true) => short_with_unit(re, "Hz"),
         (true, _) => format!("{} i", short_with_unit(im, "Hz")),
-        _ => format!(
-            "{} {} {} i",
-            short_with_unit(re, "Hz"),
-            if im < 0.0 { '-' } else { '+' },
-            short_with_unit(im.abs(), "Hz")
-        ),
+        _ => format!("{} {} {} i", short_with_unit(re, "Hz"), if im < 0.0 { '-' } else { '+' }, short_with_unit(im.abs(), "Hz")),
     };
     for entry in entries.iter().filter(|entry| entry.row <= entry.column) {
         let upper = value(entry);
@@ -344,12 +246,7 @@ fn hermitian(reader: &mut Reader, names: &[String], entries: &[MatrixEntry], uni
             let text = match (re == 0.0, im == 0.0) {
                 (_, true) => super::messages::short(re),
                 (true, _) => format!("{}i", super::messages::short(im)),
-                _ => format!(
-                    "{} {} {}i",
-                    super::messages::short(re),
-                    if im < 0.0 { '-' } else { '+' },
-                    super::messages::short(im.abs())
-                ),
+                _ => format!("{} {} {}i", super::messages::short(re), if im < 0.0 { '-' } else { '+' }, super::messages::short(im.abs())),
             };
             let write = if entry.row == entry.column {
                 format!("{}      (a diagonal entry is real)", super::messages::short(re))
@@ -357,23 +254,13 @@ fn hermitian(reader: &mut Reader, names: &[String], entries: &[MatrixEntry], uni
                 format!("{text} as entry {} of row {} (line {lower_line})", entry.row + 1, entry.column + 1)
             };
             let (row, column) = (names[entry.row].clone(), names[entry.column].clone());
-            let fault = Fault::NotHermitian {
-                row,
-                column,
-                upper: words(upper),
-                lower: words(lower),
-                lines: [line, lower_line],
-                write,
-            };
+            let fault = Fault::NotHermitian { row, column, upper: words(upper), lower: words(lower), lines: [line, lower_line], write };
             reader.error(if line <= lower_place.line { entry.value.place } else { lower_place }, fault);
             return None;
         }
     }
     // an entry below the diagonal without a partner above
-    for entry in entries
-        .iter()
-        .filter(|entry| entry.row > entry.column && !by_cell.contains_key(&(entry.column, entry.row)))
-    {
+    for entry in entries.iter().filter(|entry| entry.row > entry.column && !by_cell.contains_key(&(entry.column, entry.row))) {
         let lower = value(entry);
         if lower.0.hypot(lower.1) > 1e-12 * largest {
             let (row, column) = (names[entry.column].clone(), names[entry.row].clone());
@@ -397,14 +284,7 @@ fn hermitian(reader: &mut Reader, names: &[String], entries: &[MatrixEntry], uni
 pub fn warn_of_case(reader: &mut Reader, kind: &'static str, names: &[String], place: Place) {
     for (k, name) in names.iter().enumerate() {
         if let Some(other) = names[..k].iter().find(|other| other.to_lowercase() == name.to_lowercase()) {
-            reader.warn(
-                place,
-                Fault::SameButForCase {
-                    kind,
-                    name: other.clone(),
-                    other: name.clone(),
-                },
-            );
+            reader.warn(place, Fault::SameButForCase { kind, name: other.clone(), other: name.clone() });
         }
     }
 }
@@ -425,29 +305,16 @@ pub fn read_operators(reader: &mut Reader, node: &Node, size: usize) -> Vec<Oper
     let mut found = Vec::new();
     for entry in entries {
         let section = format!("operators / {}", entry.key);
-        if let Some(later) = entry
-            .value
-            .entries()
-            .and_then(|keys| keys.iter().find(|key| matches!(key.key.as_str(), "derivatives" | "in")))
+        if let Some(later) = entry.value.entries().and_then(|keys| keys.iter().find(|key| matches!(key.key.as_str(), "derivatives" | "in")))
         {
-            reader.error(
-                later.place,
-                Fault::NotNow {
-                    key: later.key.clone(),
-                    section: section.clone(),
-                },
-            );
+            reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: section.clone() });
             continue;
         }
         let matrix = match reader.fields(&entry.value, &section, &["rows", "rows_from", "lower"], &[]) {
             Some(_) => matrix::plain_matrix(reader, &entry.value, &section, size),
             None => None,
         };
-        found.push(Operator {
-            name: entry.key.clone(),
-            place: entry.place,
-            entries: matrix.unwrap_or_default(),
-        });
+        found.push(Operator { name: entry.key.clone(), place: entry.place, entries: matrix.unwrap_or_default() });
     }
     found
 }

@@ -98,33 +98,14 @@ pub fn read_text(path: &Path, sources: &mut Sources) -> Result<u16, Mistake> {
     let bytes = match std::fs::metadata(path) {
         Ok(data) if data.is_dir() => return refuse(sources, Vec::new(), String::new(), nowhere, Fault::IsFolder { path: shown }),
         Ok(data) if data.len() > LONGEST => {
-            return refuse(
-                sources,
-                Vec::new(),
-                String::new(),
-                nowhere,
-                Fault::TooLong {
-                    path: shown,
-                    bytes: data.len(),
-                    limit: LONGEST,
-                },
-            )
+            return refuse(sources, Vec::new(), String::new(), nowhere, Fault::TooLong { path: shown, bytes: data.len(), limit: LONGEST })
         }
         _ => match std::fs::read(path) {
             Ok(bytes) => bytes,
             Err(reason) => {
-                let reason = if reason.kind() == std::io::ErrorKind::NotFound {
-                    "no such file exists".to_string()
-                } else {
-                    reason.to_string()
-                };
-                return refuse(
-                    sources,
-                    Vec::new(),
-                    String::new(),
-                    nowhere,
-                    Fault::CannotRead { path: shown, reason },
-                );
+                let reason =
+                    if reason.kind() == std::io::ErrorKind::NotFound { "no such file exists".to_string() } else { reason.to_string() };
+                return refuse(sources, Vec::new(), String::new(), nowhere, Fault::CannotRead { path: shown, reason });
             }
         },
     };
@@ -143,26 +124,13 @@ fn text_of(bytes: &[u8]) -> Result<String, (Place, Fault)> {
     let at = |before: &str| {
         let line = lines(before).count().max(1);
         let column = lines(before).last().map_or(0, |last| last.chars().count()) + 1;
-        Place {
-            file: 0,
-            line: line as u32,
-            column: column as u32,
-            length: 1,
-        }
+        Place { file: 0, line: line as u32, column: column as u32, length: 1 }
     };
     let text = std::str::from_utf8(bytes).map_err(|bad| {
         let good = std::str::from_utf8(&bytes[..bad.valid_up_to()]).unwrap_or_default();
-        (
-            at(good),
-            Fault::NotUtf8 {
-                byte: bytes[bad.valid_up_to()],
-            },
-        )
+        (at(good), Fault::NotUtf8 { byte: bytes[bad.valid_up_to()] })
     })?;
-    match text
-        .char_indices()
-        .find(|(_, c)| (c.is_control() && !matches!(c, '\n' | '\r' | '\t' | '\u{85}')) || *c == '\u{feff}')
-    {
+    match text.char_indices().find(|(_, c)| (c.is_control() && !matches!(c, '\n' | '\r' | '\t' | '\u{85}')) || *c == '\u{feff}') {
         Some((index, c)) => Err((at(&text[..index]), Fault::Control { code: c as u32 })),
         None => Ok(text.to_string()),
     }
@@ -174,15 +142,7 @@ pub fn parse(sources: &Sources, file: u16, mistakes: &mut Vec<Mistake>) -> Resul
     if let Some(place) = first_tab(text, file) {
         return Err(Mistake::error(place, Fault::Tab));
     }
-    Builder {
-        sources,
-        file,
-        parser: Parser::new_from_str(text),
-        lines: lines(text).collect(),
-        reached: (0, 0, 0),
-        mistakes,
-    }
-    .document()
+    Builder { sources, file, parser: Parser::new_from_str(text), lines: lines(text).collect(), reached: (0, 0, 0), mistakes }.document()
 }
 
 /// The first tab that is neither in a comment nor in quotes.
@@ -193,14 +153,7 @@ fn first_tab(text: &str, file: u16) -> Option<Place> {
         for (column, c) in line.chars().enumerate() {
             match (quote, c) {
                 (None, '#') if before.is_whitespace() => break,
-                (None, '\t') => {
-                    return Some(Place {
-                        file,
-                        line: number as u32 + 1,
-                        column: column as u32 + 1,
-                        length: 1,
-                    })
-                }
+                (None, '\t') => return Some(Place { file, line: number as u32 + 1, column: column as u32 + 1, length: 1 }),
                 (None, '"' | '\'') if matches!(before, ' ' | '[' | '{' | ',' | '(') => quote = Some(c),
                 (Some(open), c) if c == open => quote = None,
                 _ => {}
@@ -224,10 +177,7 @@ struct Builder<'a> {
 impl<'a> Builder<'a> {
     /// The characters at a place, as they stand in the file.
     fn written(&mut self, place: Place) -> &'a str {
-        let line = (place.line as usize)
-            .checked_sub(1)
-            .and_then(|k| self.lines.get(k).copied())
-            .unwrap_or_default();
+        let line = (place.line as usize).checked_sub(1).and_then(|k| self.lines.get(k).copied()).unwrap_or_default();
         let wanted = place.column as usize - 1;
         let (chars, bytes) = match self.reached {
             (line, chars, bytes) if line == place.line && chars <= wanted => (chars, bytes),
@@ -241,17 +191,8 @@ impl<'a> Builder<'a> {
 
     fn place(&self, span: Span) -> Place {
         let one_line = span.start.line() == span.end.line();
-        let length = if one_line {
-            span.end.col().saturating_sub(span.start.col()).max(1)
-        } else {
-            1
-        };
-        Place {
-            file: self.file,
-            line: span.start.line() as u32,
-            column: span.start.col() as u32 + 1,
-            length: length as u32,
-        }
+        let length = if one_line { span.end.col().saturating_sub(span.start.col()).max(1) } else { 1 };
+        Place { file: self.file, line: span.start.line() as u32, column: span.start.col() as u32 + 1, length: length as u32 }
     }
 
     fn next(&mut self) -> Result<(Event<'static>, Span), Mistake> {
@@ -259,12 +200,7 @@ impl<'a> Builder<'a> {
             Some(Ok((event, span))) => Ok((owned(event), span)),
             Some(Err(error)) => {
                 let mark = error.marker();
-                let place = Place {
-                    file: self.file,
-                    line: mark.line() as u32,
-                    column: mark.col() as u32 + 1,
-                    length: 1,
-                };
+                let place = Place { file: self.file, line: mark.line() as u32, column: mark.col() as u32 + 1, length: 1 };
                 Err(Mistake::error(place, self.translate(error.info(), place)))
             }
             None => Ok((Event::StreamEnd, Span::default())),
@@ -276,9 +212,7 @@ impl<'a> Builder<'a> {
         let lower = info.to_lowercase();
         let line = self.sources.line(place.file, place.line).unwrap_or_default();
         if lower.contains("anchor") || lower.contains("alias") {
-            return Fault::Alias {
-                text: word_at(line, place.column),
-            };
+            return Fault::Alias { text: word_at(line, place.column) };
         }
         let reason = if lower.contains("quote") {
             "a quoted text is not closed (or its next line is indented less)".to_string()
@@ -324,23 +258,12 @@ impl<'a> Builder<'a> {
         let before: String = line.chars().take(place.column as usize - 1 + place.length as usize).collect();
         if tagged {
             let (column, text) = last_word(&before, '!').unwrap_or((place.column as usize, "!".to_string()));
-            return Err(Mistake::error(
-                Place {
-                    column: column as u32,
-                    length: text.chars().count() as u32,
-                    ..place
-                },
-                Fault::Tag { text },
-            ));
+            return Err(Mistake::error(Place { column: column as u32, length: text.chars().count() as u32, ..place }, Fault::Tag { text }));
         }
         if anchor > 0 {
             let (column, text) = last_word(&before, '&').unwrap_or((place.column as usize, "&".to_string()));
             return Err(Mistake::error(
-                Place {
-                    column: column as u32,
-                    length: text.chars().count() as u32,
-                    ..place
-                },
+                Place { column: column as u32, length: text.chars().count() as u32, ..place },
                 Fault::Anchor { text },
             ));
         }
@@ -357,28 +280,12 @@ impl<'a> Builder<'a> {
                 self.refuse_tricks(anchor, tag.is_some(), span)?;
                 let quoted = style != ScalarStyle::Plain;
                 let inside = self.written(place);
-                let exact = if quoted {
-                    inside.get(1..inside.len().saturating_sub(1)) == Some(&*text)
-                } else {
-                    *inside == *text
-                };
-                Ok(Node {
-                    place,
-                    kind: Kind::Scalar {
-                        text: text.into_owned(),
-                        quoted,
-                        exact,
-                    },
-                })
+                let exact = if quoted { inside.get(1..inside.len().saturating_sub(1)) == Some(&*text) } else { *inside == *text };
+                Ok(Node { place, kind: Kind::Scalar { text: text.into_owned(), quoted, exact } })
             }
             Event::Alias(_) => {
                 let line = self.sources.line(self.file, place.line).unwrap_or_default();
-                Err(Mistake::error(
-                    place,
-                    Fault::Alias {
-                        text: word_at(line, place.column),
-                    },
-                ))
+                Err(Mistake::error(place, Fault::Alias { text: word_at(line, place.column) }))
             }
             Event::SequenceStart(anchor, tag) => {
                 self.refuse_tricks(anchor, tag.is_some(), span)?;
@@ -386,10 +293,7 @@ impl<'a> Builder<'a> {
                 loop {
                     let (event, end) = self.next()?;
                     if event == Event::SequenceEnd {
-                        return Ok(Node {
-                            place: self.spanning(span, end),
-                            kind: Kind::List(items),
-                        });
+                        return Ok(Node { place: self.spanning(span, end), kind: Kind::List(items) });
                     }
                     items.push(self.node(event, end, depth + 1)?);
                 }
@@ -401,10 +305,7 @@ impl<'a> Builder<'a> {
                 loop {
                     let (event, at) = self.next()?;
                     if event == Event::MappingEnd {
-                        return Ok(Node {
-                            place: self.spanning(span, at),
-                            kind: Kind::Map(entries),
-                        });
+                        return Ok(Node { place: self.spanning(span, at), kind: Kind::Map(entries) });
                     }
                     let key_node = self.node(event, at, depth + 1)?;
                     let (event, at) = self.next()?;
@@ -414,9 +315,7 @@ impl<'a> Builder<'a> {
                     };
                     let place = key_node.place;
                     match first_lines.get(&key) {
-                        Some(first) => self
-                            .mistakes
-                            .push(Mistake::error(place, Fault::DuplicateKey { key, first: *first })),
+                        Some(first) => self.mistakes.push(Mistake::error(place, Fault::DuplicateKey { key, first: *first })),
                         None => {
                             first_lines.insert(key.clone(), place.line);
                             entries.push(Entry { key, place, value });
@@ -424,12 +323,7 @@ impl<'a> Builder<'a> {
                     }
                 }
             }
-            other => Err(Mistake::error(
-                place,
-                Fault::NotYaml {
-                    reason: format!("{other:?} is out of place"),
-                },
-            )),
+            other => Err(Mistake::error(place, Fault::NotYaml { reason: format!("{other:?} is out of place") })),
         }
     }
 
@@ -437,10 +331,7 @@ impl<'a> Builder<'a> {
     fn spanning(&self, start: Span, end: Span) -> Place {
         let place = self.place(start);
         if start.start.line() == end.end.line() {
-            Place {
-                length: end.end.col().saturating_sub(start.start.col()).max(1) as u32,
-                ..place
-            }
+            Place { length: end.end.col().saturating_sub(start.start.col()).max(1) as u32, ..place }
         } else {
             place
         }
@@ -450,12 +341,9 @@ impl<'a> Builder<'a> {
 fn owned(event: Event<'_>) -> Event<'static> {
     use std::borrow::Cow;
     match event {
-        Event::Scalar(text, style, anchor, tag) => Event::Scalar(
-            Cow::Owned(text.into_owned()),
-            style,
-            anchor,
-            tag.map(|tag| Cow::Owned(tag.into_owned())),
-        ),
+        Event::Scalar(text, style, anchor, tag) => {
+            Event::Scalar(Cow::Owned(text.into_owned()), style, anchor, tag.map(|tag| Cow::Owned(tag.into_owned())))
+        }
         Event::SequenceStart(anchor, tag) => Event::SequenceStart(anchor, tag.map(|tag| Cow::Owned(tag.into_owned()))),
         Event::MappingStart(anchor, tag) => Event::MappingStart(anchor, tag.map(|tag| Cow::Owned(tag.into_owned()))),
         Event::Nothing => Event::Nothing,
@@ -471,10 +359,7 @@ fn owned(event: Event<'_>) -> Event<'static> {
 
 /// The word that starts at a column (from 1).
 fn word_at(line: &str, column: u32) -> String {
-    line.chars()
-        .skip(column.max(1) as usize - 1)
-        .take_while(|c| !c.is_whitespace() && !matches!(c, ',' | ']' | '}'))
-        .collect()
+    line.chars().skip(column.max(1) as usize - 1).take_while(|c| !c.is_whitespace() && !matches!(c, ',' | ']' | '}')).collect()
 }
 
 /// The last word beginning with `sign`, and its column from 1.
@@ -486,8 +371,5 @@ fn last_word(text: &str, sign: char) -> Option<(usize, String)> {
         .map(|(at, _)| *at)
         .collect();
     let start = *starts.last()?;
-    Some((
-        start + 1,
-        words[start..].iter().map(|(_, c)| *c).take_while(|c| !c.is_whitespace()).collect(),
-    ))
+    Some((start + 1, words[start..].iter().map(|(_, c)| *c).take_while(|c| !c.is_whitespace()).collect()))
 }

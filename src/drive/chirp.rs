@@ -4,6 +4,7 @@
 //! integral is then a polynomial too (C. W. Clenshaw and A. R. Curtis, Numerische Mathematik 2, 197 (1960)).
 
 use crate::config::tape::BoundFormula;
+use crate::problem::Sweep;
 use crate::units::sin_cos_turns;
 
 /// Coefficients per piece.
@@ -30,11 +31,7 @@ struct Piece {
 impl Chirp {
     /// The chirp of `instantaneous` (Hz) about `centre_hz`, from 0 to `length_s`.
     pub fn new(instantaneous: BoundFormula, centre_hz: f64, length_s: f64) -> Chirp {
-        let mut chirp = Chirp {
-            formula: instantaneous,
-            centre_hz,
-            pieces: Vec::new(),
-        };
+        let mut chirp = Chirp { formula: instantaneous, centre_hz, pieces: Vec::new() };
         let mut waiting = vec![(0.0, length_s, 0u32)];
         let mut turns = 0.0;
         while let Some((from, to, depth)) = waiting.pop() {
@@ -47,40 +44,39 @@ impl Chirp {
                 waiting.push((from, middle, depth + 1));
                 continue;
             }
-            let piece = Piece {
-                start_s: from,
-                half_s: 0.5 * (to - from),
-                before_turns: turns,
-                integral: integrate(&coefficients),
-            };
+            let piece = Piece { start_s: from, half_s: 0.5 * (to - from), before_turns: turns, integral: integrate(&coefficients) };
             turns += piece.at(1.0);
             chirp.pieces.push(piece);
         }
         chirp
     }
 
-    /// Instantaneous frequency less the centre, Hz.
-    pub fn offset_hz(&self, t_s: f64) -> f64 {
+    fn frequency_hz(&self, t_s: f64) -> f64 {
         self.formula.at(t_s) - self.centre_hz
-    }
-
-    /// Turns since the start of the pulse beyond those of the centre.
-    pub fn turns(&self, t_s: f64) -> f64 {
-        let index = self.pieces.partition_point(|piece| piece.start_s <= t_s).saturating_sub(1);
-        self.pieces.get(index).map_or(0.0, |piece| {
-            piece.before_turns + piece.at(((t_s - piece.start_s) / piece.half_s - 1.0).clamp(-1.0, 1.0))
-        })
     }
 
     fn expand(&self, from: f64, to: f64) -> [f64; ORDER] {
         let (middle, half) = (0.5 * (from + to), 0.5 * (to - from));
         // Chebyshev points of the first kind at (k + 1/2)/(2 ORDER) of a turn
         let angle = |k: usize| (k as f64 + 0.5) / (2 * ORDER) as f64;
-        let values: [f64; ORDER] = std::array::from_fn(|k| self.offset_hz(middle + half * sin_cos_turns(angle(k)).1));
+        let values: [f64; ORDER] = std::array::from_fn(|k| self.frequency_hz(middle + half * sin_cos_turns(angle(k)).1));
         std::array::from_fn(|n| {
             let sum: f64 = (0..ORDER).map(|k| values[k] * sin_cos_turns(n as f64 * angle(k)).1).sum();
             sum * if n == 0 { 1.0 } else { 2.0 } / ORDER as f64
         })
+    }
+}
+
+impl Sweep for Chirp {
+    fn turns(&self, t_s: f64) -> f64 {
+        let index = self.pieces.partition_point(|piece| piece.start_s <= t_s).saturating_sub(1);
+        self.pieces
+            .get(index)
+            .map_or(0.0, |piece| piece.before_turns + piece.at(((t_s - piece.start_s) / piece.half_s - 1.0).clamp(-1.0, 1.0)))
+    }
+
+    fn offset_hz(&self, t_s: f64) -> f64 {
+        self.frequency_hz(t_s)
     }
 }
 
@@ -92,9 +88,7 @@ fn integrate(c: &[f64; ORDER]) -> [f64; ORDER + 1] {
         let before = if n == 1 { 2.0 * at(0) } else { at(n - 1) };
         integral[n] = (before - at(n + 1)) / (2 * n) as f64;
     }
-    integral[0] = -(1..=ORDER)
-        .map(|n| if n % 2 == 0 { integral[n] } else { -integral[n] })
-        .sum::<f64>();
+    integral[0] = -(1..=ORDER).map(|n| if n % 2 == 0 { integral[n] } else { -integral[n] }).sum::<f64>();
     integral
 }
 

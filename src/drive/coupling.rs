@@ -70,11 +70,8 @@ pub fn coupling(drive: &Drive, energies: &[f64], values: &[f64]) -> Result<Coupl
                 return matrix[(row, column)] * 0.5;
             }
             // of equal energies the pair as written counts, the first the lower one: in basis order here
-            let row_is_upper = if energies[row] == energies[column] {
-                upper_as_written(drive, row, column)
-            } else {
-                energies[row] > energies[column]
-            };
+            let row_is_upper =
+                if energies[row] == energies[column] { upper_as_written(drive, row, column) } else { energies[row] > energies[column] };
             if row_is_upper != drive.opposite {
                 matrix[(row, column)]
             } else {
@@ -82,12 +79,7 @@ pub fn coupling(drive: &Drive, energies: &[f64], values: &[f64]) -> Result<Coupl
             }
         }),
     };
-    Ok(Coupling {
-        matrix,
-        turning,
-        reference,
-        reference_turns,
-    })
+    Ok(Coupling { matrix, turning, reference, reference_turns })
 }
 
 fn upper_as_written(drive: &Drive, row: usize, column: usize) -> bool {

@@ -3,25 +3,21 @@
 use std::sync::Arc;
 
 use super::chirp::Chirp;
-use super::envelope::{Curve, Pieces};
+use super::envelope::Pieces;
 use super::signal::Signal;
 use super::timeline::{PlacedPulse, Timeline};
-use crate::problem::{Envelope, Instant, Segment, Slow, Term};
+use crate::problem::{Chirped, Envelope, Instant, Segment, Term};
 use crate::units::{cis_turns, rad_s};
 
 /// What one pulse is made of at a point.
 pub struct PulseParts {
-    /// Its curve.
-    pub curve: Arc<dyn Curve>,
     /// How it is cut.
     pub pieces: Pieces,
     /// Size of c at envelope 1: R/2 (or the entry of a direct drive), Hz.
     pub half_rabi_hz: f64,
-    /// Y = quadrature_s dX/dt, s.
-    pub quadrature_s: f64,
     /// Chirp.
     pub chirp: Option<Arc<Chirp>>,
-    /// Curve, quadrature and chirp in one, shared by the pulses that have the same; none where the envelope is held.
+    /// Curve and derivative quadrature, shared by the pulses that have the same; none where the envelope is held.
     pub signal: Option<Arc<Signal>>,
 }
 
@@ -54,11 +50,7 @@ pub fn cut(timeline: &Timeline, parts: &dyn Fn(&PlacedPulse) -> Arc<PulseParts>)
                     terms.push(term(pulse, parts, from, middle, timeline));
                 }
             }
-            segments.push(Segment {
-                start: group.start.after(from),
-                length_s: to - from,
-                terms: first..terms.len(),
-            });
+            segments.push(Segment { start: group.start.after(from), length_s: to - from, terms: first..terms.len() });
         }
     }
     (segments, terms)
@@ -84,48 +76,17 @@ fn term(pulse: &PlacedPulse, parts: &Arc<PulseParts>, from_s: f64, middle_s: f64
     let held = match &parts.pieces {
         Pieces::Constant(value) => Some(*value),
         Pieces::Held { starts_s, values } => {
-            let index = starts_s
-                .partition_point(|start| *start <= middle_s - pulse.offset_s)
-                .saturating_sub(1);
+            let index = starts_s.partition_point(|start| *start <= middle_s - pulse.offset_s).saturating_sub(1);
             Some(values[index])
         }
         Pieces::Smooth { .. } => None,
     };
-    let envelope = match (held, &parts.chirp) {
-        (Some(value), None) => Envelope::Constant(size * value),
-        (Some(value), Some(_)) => Envelope::Smooth {
-            shape: Arc::new(Signal {
-                curve: parts.curve.clone(),
-                held: Some(value),
-                quadrature_s: 0.0,
-                chirp: parts.chirp.clone(),
-            }),
-            since_s,
-            scale: size,
-        },
-        (None, _) => Envelope::Smooth {
-            shape: smooth(parts),
-            since_s,
-            scale: size,
-        },
+    let envelope = match (held, &parts.signal) {
+        (Some(value), _) => Envelope::Constant(size * value),
+        (None, Some(signal)) => Envelope::Smooth { shape: signal.clone(), since_s, scale: size },
+        (None, None) => Envelope::Constant(Default::default()),
     };
+    let chirps = parts.chirp.iter().map(|chirp| Chirped { sweep: chirp.clone(), since_s, times: 1.0 }).collect();
     let turned = pulse.turned + Instant::at(since_s).turns(turns_hz);
-    Term {
-        matrix: pulse.drive,
-        turns_hz,
-        phase_turns: turned - turned.round(),
-        envelope,
-    }
-}
-
-fn smooth(parts: &PulseParts) -> Arc<dyn Slow> {
-    match &parts.signal {
-        Some(signal) => signal.clone(),
-        None => Arc::new(Signal {
-            curve: parts.curve.clone(),
-            held: None,
-            quadrature_s: parts.quadrature_s,
-            chirp: parts.chirp.clone(),
-        }),
-    }
+    Term { matrix: pulse.drive, turns_hz, phase_turns: turned - turned.round(), envelope, chirps }
 }

@@ -50,8 +50,19 @@ pub struct PlacedCarrier<'d> {
     pub written: &'d Carrier,
 }
 
+/// A carrier set anew.
+#[derive(Debug, Clone, Copy)]
+pub struct CarrierChange {
+    /// When.
+    pub at: Instant,
+    /// Index of the drive.
+    pub drive: usize,
+    /// Which of [`Timeline::carriers`] it has from then on.
+    pub carrier: usize,
+}
+
 /// The sequence of one point.
-#[derive(Debug, Clone)]
+#[derive(Debug, Clone, Default)]
 pub struct Timeline<'d> {
     /// Pulses in the order written, repeats and blocks unrolled.
     pub pulses: Vec<PlacedPulse>,
@@ -59,6 +70,10 @@ pub struct Timeline<'d> {
     pub groups: Vec<Group>,
     /// Carriers in use.
     pub carriers: Vec<PlacedCarrier<'d>>,
+    /// Carriers that drives have at the start, by drive; none for a direct one.
+    pub first_carriers: Vec<Option<usize>>,
+    /// Carriers set anew, in order.
+    pub changes: Vec<CarrierChange>,
     /// Marks.
     pub marks: Vec<(String, Instant)>,
     /// The end.
@@ -95,13 +110,7 @@ pub fn lay_out<'d>(document: &'d Document, values: &[f64], reference_turns: &[f6
         values,
         reference_turns,
         lengths: lengths_s,
-        timeline: Timeline {
-            pulses: Vec::new(),
-            groups: Vec::new(),
-            carriers: Vec::new(),
-            marks: Vec::new(),
-            end: Instant::default(),
-        },
+        timeline: Timeline::default(),
         now: Instant::default(),
         frame_turns: vec![0.0; document.drives.len()],
         running: Vec::new(),
@@ -110,16 +119,10 @@ pub fn lay_out<'d>(document: &'d Document, values: &[f64], reference_turns: &[f6
     };
     for drive in &document.drives {
         let running = drive.carrier.as_ref().map(|written| {
-            walk.timeline.carriers.push(PlacedCarrier {
-                centre_hz: values[written.centre.register as usize],
-                written,
-            });
-            Running {
-                carrier: walk.timeline.carriers.len() - 1,
-                since: Instant::default(),
-                turns: 0.0,
-            }
+            walk.timeline.carriers.push(PlacedCarrier { centre_hz: values[written.centre.register as usize], written });
+            Running { carrier: walk.timeline.carriers.len() - 1, since: Instant::default(), turns: 0.0 }
         });
+        walk.timeline.first_carriers.push(running.map(|running| running.carrier));
         walk.running.push(running);
     }
     walk.steps(&document.sequence)?;
@@ -176,22 +179,11 @@ impl<'d> Walk<'d, '_> {
     fn wait(&mut self, wait_s: f64, place: Place) -> Result<(), Mistake> {
         if wait_s < 0.0 {
             let found = crate::config::messages::short_with_unit(wait_s, "s");
-            return Err(Mistake::error(
-                place,
-                Fault::OutOfRange {
-                    what: "a wait".to_string(),
-                    found,
-                    wanted: "0 or longer".to_string(),
-                },
-            ));
+            return Err(Mistake::error(place, Fault::OutOfRange { what: "a wait".to_string(), found, wanted: "0 or longer".to_string() }));
         }
         if wait_s > 0.0 {
             let none = self.timeline.pulses.len();
-            self.timeline.groups.push(Group {
-                start: self.now,
-                length_s: wait_s,
-                pulses: none..none,
-            });
+            self.timeline.groups.push(Group { start: self.now, length_s: wait_s, pulses: none..none });
             self.now = self.now.after(wait_s);
         }
         Ok(())
@@ -220,18 +212,8 @@ impl<'d> Walk<'d, '_> {
                     let offset = centre - 0.5 * length;
                     if offset < -1e-12 * length {
                         let from_zero = self.now.seconds() == 0.0;
-                        let write = format!(
-                            "centre_at: {} or later",
-                            crate::config::messages::short_with_unit(0.5 * length, "s")
-                        );
-                        return Err(Mistake::error(
-                            at.place,
-                            Fault::BeforeStart {
-                                start_s: offset,
-                                from_zero,
-                                write: Some(write),
-                            },
-                        ));
+                        let write = format!("centre_at: {} or later", crate::config::messages::short_with_unit(0.5 * length, "s"));
+                        return Err(Mistake::error(at.place, Fault::BeforeStart { start_s: offset, from_zero, write: Some(write) }));
                     }
                     offset.max(0.0)
                 }
@@ -242,11 +224,7 @@ impl<'d> Walk<'d, '_> {
         }
         let range = first..self.timeline.pulses.len();
         if end > 0.0 {
-            self.timeline.groups.push(Group {
-                start: self.now,
-                length_s: end,
-                pulses: range,
-            });
+            self.timeline.groups.push(Group { start: self.now, length_s: end, pulses: range });
             self.now = self.now.after(end);
         }
         self.half_before = Some(0.5 * end);
@@ -291,11 +269,7 @@ impl<'d> Walk<'d, '_> {
     fn set_carrier(&mut self, drive: usize, written: &'d Carrier, change: Option<Change>) {
         let centre_hz = self.values[written.centre.register as usize];
         // the same step of a repeat sets the same carrier again
-        let known = self
-            .timeline
-            .carriers
-            .iter()
-            .position(|carrier| std::ptr::eq(carrier.written, written));
+        let known = self.timeline.carriers.iter().position(|carrier| std::ptr::eq(carrier.written, written));
         let carrier = known.unwrap_or_else(|| {
             self.timeline.carriers.push(PlacedCarrier { centre_hz, written });
             self.timeline.carriers.len() - 1
@@ -307,6 +281,7 @@ impl<'d> Walk<'d, '_> {
             }
             _ => (Instant::default(), 0.0),
         };
+        self.timeline.changes.push(CarrierChange { at: self.now, drive, carrier });
         self.running[drive] = Some(Running { carrier, since, turns });
     }
 }

@@ -10,7 +10,9 @@ use crate::problem::{Matrix, Problem};
 pub struct AdiabaticPopulations<'a> {
     problem: &'a Problem,
     names: Vec<String>,
-    /// For each level, the place of its eigenstate in ascending energy.
+    /// Levels that were not eliminated.
+    levels: Vec<usize>,
+    /// For each of them, the place of its eigenstate in ascending energy.
     order: Vec<usize>,
 }
 
@@ -22,11 +24,16 @@ fn eigenstates(h: Matrix) -> Matrix {
     Matrix::from_columns(&order.iter().map(|k| eigen.eigenvectors.column(*k)).collect::<Vec<_>>())
 }
 
+/// The part of H between some levels.
+fn between(h: &Matrix, levels: &[usize]) -> Matrix {
+    Matrix::from_fn(levels.len(), levels.len(), |j, k| h[(levels[j], levels[k])])
+}
+
 impl<'a> AdiabaticPopulations<'a> {
-    /// Of the Hamiltonian of `problem`.
-    pub fn new(names: &[String], problem: &'a Problem) -> AdiabaticPopulations<'a> {
-        let states = eigenstates(problem.hamiltonian(&problem.segments[0], 0.0));
-        let size = names.len();
+    /// Of the Hamiltonian of `problem` between `levels`.
+    pub fn new(names: &[String], problem: &'a Problem, levels: &[usize]) -> AdiabaticPopulations<'a> {
+        let states = eigenstates(between(&problem.hamiltonian(&problem.segments[0], 0.0), levels));
+        let size = levels.len();
         let mut pairs: Vec<(usize, usize)> = (0..size).flat_map(|level| (0..size).map(move |state| (level, state))).collect();
         // largest overlaps first; of equal ones the first level and the lowest state
         pairs.sort_by(|(a, m), (b, n)| states[(*b, *n)].norm_sqr().total_cmp(&states[(*a, *m)].norm_sqr()));
@@ -38,32 +45,22 @@ impl<'a> AdiabaticPopulations<'a> {
                 taken[state] = true;
             }
         }
-        AdiabaticPopulations {
-            problem,
-            names: names.to_vec(),
-            order,
-        }
+        AdiabaticPopulations { problem, names: levels.iter().map(|level| names[*level].clone()).collect(), levels: levels.to_vec(), order }
     }
 }
 
 impl Quantity for AdiabaticPopulations<'_> {
     fn columns(&self) -> Vec<Column> {
         let column = |name: &String| {
-            Column::plain(
-                format!("adiabatic_population_{name}"),
-                &["adiabatic_populations", name],
-                "adiabatic population",
-                name.clone(),
-            )
+            Column::plain(format!("adiabatic_population_{name}"), &["adiabatic_populations", name], "adiabatic population", name.clone())
         };
         self.names.iter().map(column).collect()
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {
-        let states = eigenstates(
-            self.problem
-                .hamiltonian(&self.problem.segments[seen.moment.segment], seen.moment.offset_s),
-        );
-        row.extend(self.order.iter().map(|state| states.column(*state).dotc(seen.state).norm_sqr()));
+        let h = self.problem.hamiltonian(&self.problem.segments[seen.moment.segment], seen.moment.offset_s);
+        let states = eigenstates(between(&h, &self.levels));
+        let inside = crate::problem::Vector::from_iterator(self.levels.len(), self.levels.iter().map(|level| seen.state[*level]));
+        row.extend(self.order.iter().map(|state| states.column(*state).dotc(&inside).norm_sqr()));
     }
 }

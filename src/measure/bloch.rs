@@ -18,31 +18,17 @@ impl BlochVectors {
                 format!("_{}_{}", names[*a], names[*b])
             }
         };
-        BlochVectors {
-            pairs: pairs.iter().map(|pair| (*pair, name(pair))).collect(),
-        }
+        BlochVectors { pairs: pairs.iter().map(|pair| (*pair, name(pair))).collect() }
     }
 }
 
 impl Quantity for BlochVectors {
     fn columns(&self) -> Vec<Column> {
         let column = |name: &str, axis: &str| {
-            let path = if name.is_empty() {
-                vec!["bloch"]
-            } else {
-                vec!["bloch", &name[1..]]
-            };
-            Column::plain(
-                format!("bloch{name}_{axis}"),
-                &path,
-                "Bloch vector",
-                format!("{axis}{}", name.replace('_', " ")),
-            )
+            let path = if name.is_empty() { vec!["bloch"] } else { vec!["bloch", &name[1..]] };
+            Column::plain(format!("bloch{name}_{axis}"), &path, "Bloch vector", format!("{axis}{}", name.replace('_', " ")))
         };
-        self.pairs
-            .iter()
-            .flat_map(|(_, name)| ["x", "y", "z"].map(|axis| column(name, axis)))
-            .collect()
+        self.pairs.iter().flat_map(|(_, name)| ["x", "y", "z"].map(|axis| column(name, axis))).collect()
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {

@@ -10,12 +10,7 @@ pub struct Coherences {
 impl Coherences {
     /// Those of `pairs`.
     pub fn new(names: &[String], pairs: &[[usize; 2]]) -> Coherences {
-        Coherences {
-            pairs: pairs
-                .iter()
-                .map(|[a, b]| ([*a, *b], format!("{}_{}", names[*a], names[*b])))
-                .collect(),
-        }
+        Coherences { pairs: pairs.iter().map(|[a, b]| ([*a, *b], format!("{}_{}", names[*a], names[*b]))).collect() }
     }
 }
 
@@ -25,10 +20,7 @@ impl Quantity for Coherences {
             let label = format!("{} {part}", name.replace('_', ", "));
             Column::plain(format!("coherence_{name}_{part}"), &["coherence", name], "coherence", label)
         };
-        self.pairs
-            .iter()
-            .flat_map(|(_, name)| [part(name, "re"), part(name, "im")])
-            .collect()
+        self.pairs.iter().flat_map(|(_, name)| [part(name, "re"), part(name, "im")]).collect()
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {

@@ -19,13 +19,7 @@ impl<'a> Energy<'a> {
 impl Quantity for Energy<'_> {
     fn columns(&self) -> Vec<Column> {
         let largest = self.problem.statics.iter().map(|entry| entry.norm()).fold(0.0, f64::max) / RAD_PER_TURN;
-        let drives = self
-            .problem
-            .terms
-            .iter()
-            .map(|term| term.envelope.at(0.0).norm())
-            .fold(0.0, f64::max)
-            / RAD_PER_TURN;
+        let drives = self.problem.terms.iter().map(|term| term.envelope.at(0.0).norm()).fold(0.0, f64::max) / RAD_PER_TURN;
         vec![Column {
             name: "energy_Hz".to_string(),
             unit: "Hz",
@@ -37,9 +31,7 @@ impl Quantity for Energy<'_> {
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {
-        let h = self
-            .problem
-            .hamiltonian(&self.problem.segments[seen.moment.segment], seen.moment.offset_s);
+        let h = self.problem.hamiltonian(&self.problem.segments[seen.moment.segment], seen.moment.offset_s);
         row.push(seen.state.dotc(&(h * seen.state)).re / RAD_PER_TURN);
     }
 }

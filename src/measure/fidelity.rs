@@ -17,12 +17,7 @@ impl Fidelity {
 
 impl Quantity for Fidelity {
     fn columns(&self) -> Vec<Column> {
-        vec![Column::plain(
-            "fidelity".to_string(),
-            &["fidelity"],
-            "fidelity",
-            "fidelity".to_string(),
-        )]
+        vec![Column::plain("fidelity".to_string(), &["fidelity"], "fidelity", "fidelity".to_string())]
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {

@@ -71,12 +71,7 @@ impl GateJudge {
                 })
                 .collect(),
         };
-        GateJudge {
-            within: gate.within.clone(),
-            target,
-            first_is_lower,
-            free,
-        }
+        GateJudge { within: gate.within.clone(), target, first_is_lower, free }
     }
 
     /// Judges the propagator `u` of the whole system.
@@ -122,11 +117,8 @@ impl GateJudge {
         // least squares for z phi + common phase = -turns, then Newton on the true overlap, from there and from zero
         let rows = nalgebra::DMatrix::from_fn(a.len(), count + 1, |j, k| if k < count { self.free[k][j] } else { 1.0 });
         let wanted = nalgebra::DVector::from_iterator(a.len(), turns.iter().map(|t| -t));
-        let fitted = rows
-            .svd(true, true)
-            .solve(&wanted, 1e-12)
-            .map(|x| x.as_slice()[..count].to_vec())
-            .unwrap_or_else(|_| vec![0.0; count]);
+        let fitted =
+            rows.svd(true, true).solve(&wanted, 1e-12).map(|x| x.as_slice()[..count].to_vec()).unwrap_or_else(|_| vec![0.0; count]);
         let raised = [vec![0.0; count], fitted].map(|start| self.newton(a, start));
         let [(first, small), (second, large)] = raised;
         if large >= small {
@@ -142,15 +134,11 @@ impl GateJudge {
         let mut best = size(&phi);
         for _ in 0..100 {
             // derivatives of |S|^2 by the angles in radians: S_k = i sum z_kj s_j, S_kl = - sum z_kj z_lj s_j
-            let s: Vec<Complex64> = a
-                .iter()
-                .enumerate()
-                .map(|(j, a)| a * cis_turns((0..count).map(|k| self.free[k][j] * phi[k]).sum()))
-                .collect();
+            let s: Vec<Complex64> =
+                a.iter().enumerate().map(|(j, a)| a * cis_turns((0..count).map(|k| self.free[k][j] * phi[k]).sum())).collect();
             let whole: Complex64 = s.iter().sum();
-            let first: Vec<Complex64> = (0..count)
-                .map(|k| Complex64::i() * s.iter().zip(&self.free[k]).map(|(s, z)| s * *z).sum::<Complex64>())
-                .collect();
+            let first: Vec<Complex64> =
+                (0..count).map(|k| Complex64::i() * s.iter().zip(&self.free[k]).map(|(s, z)| s * *z).sum::<Complex64>()).collect();
             let gradient = nalgebra::DVector::from_iterator(count, first.iter().map(|d| 2.0 * (whole.conj() * d).re));
             let hessian = nalgebra::DMatrix::from_fn(count, count, |k, l| {
                 let second: Complex64 = -(0..s.len()).map(|j| s[j] * (self.free[k][j] * self.free[l][j])).sum::<Complex64>();
@@ -185,19 +173,12 @@ impl GateJudge {
     }
 
     fn overlap(&self, a: &[Complex64], phi: &[f64]) -> Complex64 {
-        a.iter()
-            .enumerate()
-            .map(|(j, a)| a * cis_turns(self.free.iter().zip(phi).map(|(z, p)| z[j] * p).sum()))
-            .sum()
+        a.iter().enumerate().map(|(j, a)| a * cis_turns(self.free.iter().zip(phi).map(|(z, p)| z[j] * p).sum())).sum()
     }
 
     /// Angle and axis of a two-level map close to the identity, by its nearest unitary (polar decomposition).
     fn residual_turn(&self, r: &Matrix) -> (f64, [f64; 3]) {
-        let r = if self.first_is_lower {
-            r.clone()
-        } else {
-            Matrix::from_fn(2, 2, |i, j| r[(1 - i, 1 - j)])
-        };
+        let r = if self.first_is_lower { r.clone() } else { Matrix::from_fn(2, 2, |i, j| r[(1 - i, 1 - j)]) };
         let svd = r.svd(true, true);
         let (Some(u), Some(vt)) = (svd.u, svd.v_t) else {
             return (0.0, [0.0, 0.0, 1.0]);
@@ -207,11 +188,7 @@ impl GateJudge {
         let w = w / if phase.norm() > 0.0 { phase } else { 1.0.into() };
         // w = cos(theta/2) - i sin(theta/2) n.s
         let cos = 0.5 * (w[(0, 0)] + w[(1, 1)]).re;
-        let n = [
-            -(w[(0, 1)] + w[(1, 0)]).im / 2.0,
-            (w[(1, 0)] - w[(0, 1)]).re / 2.0,
-            -(w[(0, 0)] - w[(1, 1)]).im / 2.0,
-        ];
+        let n = [-(w[(0, 1)] + w[(1, 0)]).im / 2.0, (w[(1, 0)] - w[(0, 1)]).re / 2.0, -(w[(0, 0)] - w[(1, 1)]).im / 2.0];
         let sin = n.iter().map(|x| x * x).sum::<f64>().sqrt();
         // the shorter way round; the global sign does not count
         let sign = if cos < 0.0 { -1.0 } else { 1.0 };

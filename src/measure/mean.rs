@@ -24,10 +24,7 @@ impl Means {
 
 impl Quantity for Means {
     fn columns(&self) -> Vec<Column> {
-        self.operators
-            .iter()
-            .map(|(name, _)| Column::plain(format!("mean_{name}"), &["mean", name], "mean", name.clone()))
-            .collect()
+        self.operators.iter().map(|(name, _)| Column::plain(format!("mean_{name}"), &["mean", name], "mean", name.clone())).collect()
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {

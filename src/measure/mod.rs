@@ -13,6 +13,7 @@ mod mean;
 mod outside;
 mod population;
 mod propagator;
+mod quasi;
 mod recorder;
 mod time_in;
 
@@ -22,6 +23,7 @@ use crate::problem::{Matrix, Moment, Problem, Vector};
 use crate::propagate::Demand;
 
 pub use gate::GateFigures;
+pub use quasi::{breaks_period, QuasiEnergy, QuasiRecorder};
 pub use recorder::TraceRecorder;
 
 /// What a quantity sees at a moment.
@@ -54,14 +56,7 @@ pub struct Column {
 impl Column {
     /// A column without dimension.
     pub fn plain(name: String, path: &[&str], panel: &'static str, label: String) -> Column {
-        Column {
-            name,
-            unit: "1",
-            scale: 1.0,
-            path: path.iter().map(|part| (*part).to_string()).collect(),
-            panel,
-            label,
-        }
+        Column { name, unit: "1", scale: 1.0, path: path.iter().map(|part| (*part).to_string()).collect(), panel, label }
     }
 }
 
@@ -98,16 +93,14 @@ pub struct Observables<'a> {
 /// The quantities that a config records, with the numbers of one point.
 pub fn observables<'a>(document: &Document, values: &[f64], energies_hz: &[f64], problem: &'a Problem) -> Observables<'a> {
     let names = &document.system.names;
-    let mut found = Observables {
-        quantities: Vec::new(),
-        last: Vec::new(),
-        gate: None,
-        propagator: false,
-        demand: Demand::default(),
-    };
+    let stays = |level: &usize| !document.frame.eliminated().contains(level);
+    let mut found = Observables { quantities: Vec::new(), last: Vec::new(), gate: None, propagator: false, demand: Demand::default() };
     for item in &document.record.items {
         let quantity: Box<dyn Quantity> = match item {
-            Item::Populations(levels) => Box::new(population::Populations::new(names, levels)),
+            Item::Populations(levels) => {
+                let levels: Vec<usize> = levels.iter().copied().filter(stays).collect();
+                Box::new(population::Populations::new(names, &levels))
+            }
             Item::OutsideOf(levels) => Box::new(outside::Outside::new(levels.clone())),
             Item::Coherence(pairs) => Box::new(coherence::Coherences::new(names, pairs)),
             Item::Bloch(pairs) => Box::new(bloch::BlochVectors::new(names, pairs)),
@@ -117,8 +110,12 @@ pub fn observables<'a>(document: &Document, values: &[f64], energies_hz: &[f64],
                 found.demand.time_in = true;
                 Box::new(time_in::TimeIn::new(names, levels, problem.length_s()))
             }
-            Item::AdiabaticPopulations => Box::new(adiabatic::AdiabaticPopulations::new(names, problem)),
+            Item::AdiabaticPopulations => {
+                Box::new(adiabatic::AdiabaticPopulations::new(names, problem, &(0..names.len()).filter(stays).collect::<Vec<_>>()))
+            }
             Item::Fidelity(state) => Box::new(fidelity::Fidelity::new(crate::model::amplitudes(names.len(), state, values))),
+            // over a period of its own, so computed apart
+            Item::QuasiEnergies(_) => continue,
             Item::Propagator => {
                 found.demand.propagator = true;
                 found.propagator = true;

@@ -10,9 +10,7 @@ pub struct Populations {
 impl Populations {
     /// Those of `levels`.
     pub fn new(names: &[String], levels: &[usize]) -> Populations {
-        Populations {
-            levels: levels.iter().map(|level| (*level, names[*level].clone())).collect(),
-        }
+        Populations { levels: levels.iter().map(|level| (*level, names[*level].clone())).collect() }
     }
 }
 

@@ -18,9 +18,7 @@ impl WholePropagator {
 impl Last for WholePropagator {
     fn names(&self) -> Vec<String> {
         let entry = |row: usize, column: usize| ["re", "im"].map(|part| format!("propagator_{row}_{column}_{part}"));
-        (0..self.size)
-            .flat_map(|row| (0..self.size).flat_map(move |column| entry(row, column)))
-            .collect()
+        (0..self.size).flat_map(|row| (0..self.size).flat_map(move |column| entry(row, column))).collect()
     }
 
     fn see(&self, propagator: &Matrix, numbers: &mut Vec<f64>) {

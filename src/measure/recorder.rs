@@ -21,45 +21,28 @@ impl<'a> TraceRecorder<'a> {
     /// A recorder of `observables`; `scales` are those of their columns.
     pub fn new(observables: &'a Observables<'a>, problem: &'a Problem, scales: &'a [f64]) -> TraceRecorder<'a> {
         let numbers = Vec::with_capacity(problem.moments.len() * scales.len());
-        TraceRecorder {
-            observables,
-            problem,
-            scales,
-            row: Vec::new(),
-            numbers,
-            end_state: None,
-            propagator: None,
-        }
+        TraceRecorder { observables, problem, scales, row: Vec::new(), numbers, end_state: None, propagator: None }
     }
 
     /// Number `column` of row `moment`, in the unit of its column.
     pub fn value(&self, moment: usize, column: usize) -> f64 {
-        self.numbers
-            .get(moment * self.scales.len() + column)
-            .map_or(f64::NAN, |number| number * self.scales[column])
+        self.numbers.get(moment * self.scales.len() + column).map_or(f64::NAN, |number| number * self.scales[column])
     }
 
     /// The numbers of the propagator, in the order of their names.
     pub fn last(&self) -> &[f64] {
-        self.numbers
-            .get(self.problem.moments.len() * self.scales.len()..)
-            .unwrap_or_default()
+        self.numbers.get(self.problem.moments.len() * self.scales.len()..).unwrap_or_default()
     }
 }
 
 impl Recorder for TraceRecorder<'_> {
     fn see(&mut self, moment: usize, state: &Vector, time_in_s: &[f64]) {
-        let seen = Seen {
-            moment: &self.problem.moments[moment],
-            state,
-            time_in_s,
-        };
+        let seen = Seen { moment: &self.problem.moments[moment], state, time_in_s };
         self.row.clear();
         for quantity in &self.observables.quantities {
             quantity.see(&seen, &mut self.row);
         }
-        self.numbers
-            .extend(self.row.iter().zip(self.scales).map(|(number, scale)| number / scale));
+        self.numbers.extend(self.row.iter().zip(self.scales).map(|(number, scale)| number / scale));
         if moment + 1 == self.problem.moments.len() {
             self.end_state = Some(state.clone());
         }

@@ -11,10 +11,7 @@ pub struct TimeIn {
 impl TimeIn {
     /// Of `levels`, in a run of `length_s`.
     pub fn new(names: &[String], levels: &[usize], length_s: f64) -> TimeIn {
-        TimeIn {
-            levels: levels.iter().map(|level| (*level, names[*level].clone())).collect(),
-            length_s,
-        }
+        TimeIn { levels: levels.iter().map(|level| (*level, names[*level].clone())).collect(), length_s }
     }
 }
 
@@ -32,10 +29,6 @@ impl Quantity for TimeIn {
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {
-        row.extend(
-            self.levels
-                .iter()
-                .map(|(level, _)| seen.time_in_s.get(*level).copied().unwrap_or(f64::NAN)),
-        );
+        row.extend(self.levels.iter().map(|(level, _)| seen.time_in_s.get(*level).copied().unwrap_or(f64::NAN)));
     }
 }

@@ -1,7 +1,8 @@
 //! Stretches in which H of the picture is constant: one exponential each, any length, exact to rounding.
 //!
-//! Every moment is reached from the start of the stretch (or of its piece) in one go, O(dim^2) each, so that rounding does not grow with their number. A
-//! second resolution cuts the stretch into pieces. Stretches with the same terms share their exponential.
+//! Every moment is reached from the start of the stretch (or of its piece) in one go, O(dim^2) each, so that rounding does not
+//! grow with their number. A second resolution cuts the stretch into pieces. Stretches with the same terms and length share their
+//! exponential.
 
 use std::collections::HashMap;
 use std::rc::Rc;
@@ -10,7 +11,6 @@ use num_complex::Complex64;
 
 use super::exponential::Flow;
 use super::run::{Eye, State, Stretch, Work};
-use crate::problem::Envelope;
 
 /// The exponentials of the run so far, found by the bits of the terms.
 pub(super) struct Flows {
@@ -40,17 +40,8 @@ impl Flows {
         self.key.clear();
         self.key.push(stretch.length_s.to_bits());
         for term in stretch.terms {
-            let value = match &term.envelope {
-                Envelope::Constant(value) => *value,
-                Envelope::Smooth { .. } => unreachable_smooth(),
-            };
-            let bits = [
-                term.matrix as u64,
-                term.turns_hz.to_bits(),
-                term.phase_turns.to_bits(),
-                value.re.to_bits(),
-                value.im.to_bits(),
-            ];
+            let value = term.slow(0.0);
+            let bits = [term.matrix as u64, term.turns_hz.to_bits(), term.phase_turns.to_bits(), value.re.to_bits(), value.im.to_bits()];
             self.key.extend_from_slice(&bits);
         }
         if let Some(flow) = self.kept.get(&self.key) {
@@ -65,11 +56,6 @@ impl Flows {
     }
 }
 
-/// A smooth envelope never makes a constant stretch; its value would not be a number here, which the caller reports as a breakdown.
-fn unreachable_smooth() -> Complex64 {
-    Complex64::new(f64::NAN, f64::NAN)
-}
-
 /// Carries the state through the stretch in `pieces` equal pieces.
 pub(super) fn pass(stretch: &Stretch, pieces: u32, flows: &mut Flows, state: &mut State, eye: &mut Eye, work: &mut Work) {
     let dim = state.dim;
@@ -81,10 +67,7 @@ pub(super) fn pass(stretch: &Stretch, pieces: u32, flows: &mut Flows, state: &mu
         let to_s = stretch.length_s * f64::from(piece) / f64::from(pieces);
         while next < stretch.moments.len() && (piece == pieces || stretch.moments[next].offset_s <= to_s) {
             let since_s = stretch.moments[next].offset_s - from_s;
-            work.step(
-                flow.act(since_s, &state.amplitudes[..dim], &mut flows.psi, &mut flows.room),
-                dim * dim,
-            );
+            work.step(flow.act(since_s, &state.amplitudes[..dim], &mut flows.psi, &mut flows.room), dim * dim);
             let mut time_in_s = state.time_in_s.clone();
             if timed {
                 flow.dwell(since_s, &state.amplitudes[..dim], &mut time_in_s);

@@ -2,11 +2,11 @@
 
 use super::run::{Eye, State, Stretch, Work};
 
-/// Steps of a stretch before any doubling: enough to see each turn of H and each turn of the state, and at least eight.
+/// Steps of a stretch before any doubling: enough to see each turn of H and each turn of the state, roughly.
 fn first_steps(stretch: &Stretch) -> f64 {
     let turning = stretch.picture.fastest_hz * stretch.length_s;
     let swing = super::load::size_hz(stretch.picture, stretch.terms, stretch.length_s) * stretch.length_s;
-    8.0 + 2.0 * turning + swing
+    4.0 / super::load::busy_part(stretch.terms, stretch.length_s) + turning + 0.5 * swing
 }
 
 /// Carries the state through the stretch; `step(tau, h, state)` does one step of h seconds from tau and gives its matrix-vector products.
@@ -22,10 +22,7 @@ pub(super) fn pass(
     let rate = first_steps(stretch) / stretch.length_s;
     let mut tau_s = 0.0;
     for k in 0..=stretch.moments.len() {
-        let stop_s = stretch
-            .moments
-            .get(k)
-            .map_or(stretch.length_s, |moment| moment.offset_s.min(stretch.length_s));
+        let stop_s = stretch.moments.get(k).map_or(stretch.length_s, |moment| moment.offset_s.min(stretch.length_s));
         let gap_s = stop_s - tau_s;
         if gap_s > 0.0 {
             let steps = (gap_s * rate).ceil().max(1.0) * 2f64.powi(doublings as i32);

@@ -28,9 +28,7 @@ pub(super) fn pass(stretch: &Stretch, doublings: u32, state: &mut State, eye: &m
     let mut magnus = Magnus::new(dim);
     even_steps::pass(stretch, doublings, state, eye, work, |tau_s, step_s, state| {
         for (node, h) in nodes.iter_mut().enumerate() {
-            stretch
-                .picture
-                .fill(stretch.terms, tau_s + step_s * (0.5 + OUTER * (node as f64 - 1.0)), h);
+            stretch.picture.fill(stretch.terms, tau_s + step_s * (0.5 + OUTER * (node as f64 - 1.0)), h);
         }
         if dim == 2 {
             two_levels(&nodes, step_s, &mut k);
@@ -81,29 +79,21 @@ struct Magnus {
 impl Magnus {
     fn new(dim: usize) -> Self {
         let zero = || vec![Complex64::default(); dim * dim];
-        Magnus {
-            dim,
-            a: [zero(), zero(), zero()],
-            c1: zero(),
-            c2: zero(),
-            left: zero(),
-            right: zero(),
-            product: zero(),
-        }
+        Magnus { dim, a: [zero(), zero(), zero()], c1: zero(), c2: zero(), left: zero(), right: zero(), product: zero() }
     }
 
     fn exponent(&mut self, nodes: &[Vec<Complex64>; 3], h: f64, k: &mut [Complex64]) {
         let n = self.dim;
         let [a1, a2, a3] = &mut self.a;
-        for i in 0..n * n {
+        for (i, curvature) in a3.iter_mut().enumerate() {
             let (h1, h2, h3) = (nodes[0][i], nodes[1][i], nodes[2][i]);
             a1[i] = h2 * h;
             a2[i] = (h3 - h1) * (SLOPE * h);
-            a3[i] = (h3 - h2 * 2.0 + h1) * (10.0 / 3.0 * h);
+            *curvature = (h3 - h2 * 2.0 + h1) * (10.0 / 3.0 * h);
         }
         bracket(n, a1, a2, &mut self.product, &mut self.c1);
-        for i in 0..n * n {
-            self.left[i] = -(a3[i] * 2.0 + self.c1[i]) / 60.0;
+        for (i, curvature) in a3.iter().enumerate() {
+            self.left[i] = -(curvature * 2.0 + self.c1[i]) / 60.0;
         }
         bracket(n, a1, &self.left, &mut self.product, &mut self.c2);
         for i in 0..n * n {

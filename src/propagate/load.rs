@@ -2,7 +2,7 @@
 
 use super::asked::Demand;
 use super::picture::{Kind, Picture, Pictures};
-use crate::problem::{Envelope, Matrix, Problem, Term};
+use crate::problem::{Matrix, Problem, Term};
 use crate::units::RAD_PER_TURN;
 
 /// Sizes of a problem; turns are dimensionless, summed over the stretches where H changes in every picture.
@@ -36,13 +36,15 @@ pub struct Load {
     pub rises: f64,
     /// Size of H in the frame of the problem, its mean taken off, times time, over everything, rad.
     pub lab_rad: f64,
+    /// The same with the diagonal as it stands, to which the rounding of its entries is relative, rad.
+    pub entries_rad: f64,
     /// Largest turning frequency times time, over everything, turns.
     pub carrier_turns: f64,
 }
 
 /// Bound of ||H - middle of the diagonal|| of a picture over the segment, in Hz; smooth envelopes by samples.
 pub(super) fn size_hz(picture: &Picture, terms: &[Term], length_s: f64) -> f64 {
-    let heights: Vec<f64> = terms.iter().map(|term| height(&term.envelope, length_s).0).collect();
+    let heights: Vec<f64> = terms.iter().map(|term| height(term, length_s).0).collect();
     let mut rows = vec![0.0; picture.dim];
     for turning in &picture.turnings {
         let most = turning.term.map_or(1.0, |k| heights[k]);
@@ -58,24 +60,35 @@ pub(super) fn size_hz(picture: &Picture, terms: &[Term], length_s: f64) -> f64 {
 const SAMPLES: u32 = 32;
 
 /// Largest sampled |c| in rad/s, and the sampled way of c over that.
-fn height(envelope: &Envelope, length_s: f64) -> (f64, f64) {
-    match envelope {
-        Envelope::Constant(value) => (value.norm(), 0.0),
-        Envelope::Smooth { .. } => {
-            let values: Vec<_> = (0..=SAMPLES)
-                .map(|i| envelope.at(length_s * f64::from(i) / f64::from(SAMPLES)))
-                .collect();
-            let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
-            let way: f64 = values.windows(2).map(|pair| (pair[1] - pair[0]).norm()).sum();
-            (most, if most > 0.0 { way / most } else { 0.0 })
-        }
+fn height(term: &Term, length_s: f64) -> (f64, f64) {
+    if term.is_constant() {
+        return (term.slow(0.0).norm(), 0.0);
     }
+    let values: Vec<_> = (0..=SAMPLES).map(|i| term.slow(length_s * f64::from(i) / f64::from(SAMPLES))).collect();
+    let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
+    let way: f64 = values.windows(2).map(|pair| (pair[1] - pair[0]).norm()).sum();
+    (most, if most > 0.0 { way / most } else { 0.0 })
 }
 
+/// Part of the segment, above 0 and up to 1, in which the smooth envelopes rise or fall; keeps a narrow pulse in a long segment
+/// from being stepped over.
+pub(super) fn busy_part(terms: &[Term], length_s: f64) -> f64 {
+    let mut part: f64 = 1.0;
+    for term in terms.iter().filter(|term| !term.is_constant()) {
+        let values: Vec<_> = (0..=CELLS).map(|i| term.slow(length_s * f64::from(i) / f64::from(CELLS))).collect();
+        let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
+        let busy = values.windows(2).filter(|pair| (pair[1] - pair[0]).norm() > 1e-3 * most).count();
+        if busy > 0 {
+            part = part.min(busy as f64 / f64::from(CELLS));
+        }
+    }
+    part
+}
+
+const CELLS: u32 = 128;
+
 fn half_range(values: impl Iterator<Item = f64>) -> f64 {
-    let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), value| {
-        (value.min(low), value.max(high))
-    });
+    let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), value| (value.min(low), value.max(high)));
     if high >= low {
         0.5 * (high - low)
     } else {
@@ -85,9 +98,7 @@ fn half_range(values: impl Iterator<Item = f64>) -> f64 {
 
 /// Largest sum of moduli in a row of B + adjoint, the diagonal counted too.
 fn row_bound(b: &Matrix) -> f64 {
-    (0..b.nrows())
-        .map(|j| (0..b.ncols()).map(|k| b[(j, k)].norm() + b[(k, j)].norm()).sum::<f64>())
-        .fold(0.0, f64::max)
+    (0..b.nrows()).map(|j| (0..b.ncols()).map(|k| b[(j, k)].norm() + b[(k, j)].norm()).sum::<f64>()).fold(0.0, f64::max)
 }
 
 impl Load {
@@ -95,10 +106,9 @@ impl Load {
         let n = problem.dim();
         let a = &problem.statics;
         let bounds: Vec<f64> = problem.matrices.iter().map(row_bound).collect();
-        let off = (0..n)
-            .map(|j| (0..n).filter(|k| *k != j).map(|k| a[(j, k)].norm()).sum::<f64>())
-            .fold(0.0, f64::max);
+        let off = (0..n).map(|j| (0..n).filter(|k| *k != j).map(|k| a[(j, k)].norm()).sum::<f64>()).fold(0.0, f64::max);
         let resting_rad_s = off + half_range((0..n).map(|j| a[(j, j)].re));
+        let entries_rad_s = off + (0..n).map(|j| a[(j, j)].re.abs()).fold(0.0, f64::max);
         let mut load = Load {
             levels: n,
             columns: if demand.propagator { n + 1 } else { 1 },
@@ -114,6 +124,7 @@ impl Load {
             still_turns: 0.0,
             rises: 0.0,
             lab_rad: 0.0,
+            entries_rad: 0.0,
             carrier_turns: 0.0,
         };
         for segment in &problem.segments {
@@ -123,13 +134,13 @@ impl Load {
             let mut carrier: f64 = 0.0;
             if tied.constant(terms) {
                 for term in terms {
-                    rad_s += bounds[term.matrix] * height(&term.envelope, length_s).0;
+                    rad_s += bounds[term.matrix] * height(term, length_s).0;
                     carrier = carrier.max(term.turns_hz.abs());
                 }
             } else {
                 let mut rises: f64 = 0.0;
                 for term in terms {
-                    let (most, way) = height(&term.envelope, length_s);
+                    let (most, way) = height(term, length_s);
                     rad_s += bounds[term.matrix] * most;
                     rises = rises.max(way);
                     carrier = carrier.max(term.turns_hz.abs());
@@ -144,6 +155,7 @@ impl Load {
                 load.rises += rises;
             }
             load.lab_rad += rad_s * length_s;
+            load.entries_rad += (rad_s - resting_rad_s + entries_rad_s) * length_s;
             load.carrier_turns += carrier * length_s;
         }
         load
@@ -152,6 +164,6 @@ impl Load {
     /// What rounding leaves uncertain in any recorded number: that of the entries of H over the whole time, and that of `sums`
     /// products one after the other, which all err in the same sense where the factors are alike.
     pub(super) fn floor(&self, sums: u64) -> f64 {
-        f64::EPSILON * (4.0 + 0.5 * self.lab_rad + 0.25 * sums as f64)
+        f64::EPSILON * (4.0 + 0.7 * self.entries_rad + 0.25 * sums as f64)
     }
 }

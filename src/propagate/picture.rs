@@ -3,8 +3,8 @@
 //! psi(tau) = exp(-2 pi i F tau) phi(tau) with a real diagonal F in Hz, exact: nothing is dropped. phi obeys the same equation
 //! with A_jj - 2 pi F_j on the diagonal, and entry (j, k) of a term turning at f turns at nu = f - (F_j - F_k) instead.
 //!
-//! * [`Kind::Tied`]: each entry that turns at f ties F_j - F_k = f where j and k are not joined yet, entries of earlier terms first and larger
-//!   ones first; entries that stand still tie F_j = F_k. One-sided drives on a tree of levels then stand still altogether.
+//! * [`Kind::Tied`]: each entry that turns at f ties F_j - F_k = f where j and k are not joined yet, entries of earlier terms
+//!   first and larger ones first; entries that stand still tie F_j = F_k. One-sided drives on a tree of levels then stand still altogether.
 //!   Where that is not the case, F = 0 is taken if less turns in it.
 //! * [`Kind::Free`]: F_j = A_jj / (2 pi), nothing is left on the diagonal (the interaction picture); best for Runge-Kutta, whose
 //!   error then grows with the couplings and not with the level distances.
@@ -64,10 +64,7 @@ pub(super) struct Picture {
 impl Picture {
     /// Whether H of this picture is constant with these terms.
     pub fn constant(&self, terms: &[Term]) -> bool {
-        self.fastest_hz == 0.0
-            && terms
-                .iter()
-                .all(|term| matches!(term.envelope, crate::problem::Envelope::Constant(_)))
+        self.fastest_hz == 0.0 && terms.iter().all(Term::is_constant)
     }
 
     /// The factor of one group at `tau_s`: rad/s for a term, no dimension for the static matrix.
@@ -75,7 +72,7 @@ impl Picture {
         let turned = turns(turning.turns_hz, tau_s);
         match turning.term {
             None => cis_turns(-turned),
-            Some(k) => terms[k].envelope.at(tau_s) * cis_turns(-(terms[k].phase_turns + turned)),
+            Some(k) => terms[k].slow(tau_s) * cis_turns(-(terms[k].phase_turns + turned)),
         }
     }
 
@@ -150,11 +147,7 @@ impl Picture {
         let alike = self.turnings.iter_mut().rev().take_while(|turning| turning.term == term);
         match alike.into_iter().find(|turning| turning.turns_hz == nu) {
             Some(turning) => turning.parts.push(part),
-            None => self.turnings.push(Turning {
-                term,
-                turns_hz: nu,
-                parts: vec![part],
-            }),
+            None => self.turnings.push(Turning { term, turns_hz: nu, parts: vec![part] }),
         }
     }
 }
@@ -182,12 +175,7 @@ const KEPT: usize = 32;
 
 impl<'a> Pictures<'a> {
     pub fn new(problem: &'a Problem) -> Self {
-        Pictures {
-            problem,
-            tied: Vec::new(),
-            free: Vec::new(),
-            replaced: 0,
-        }
+        Pictures { problem, tied: Vec::new(), free: Vec::new(), replaced: 0 }
     }
 
     /// The picture of a segment.
@@ -199,11 +187,7 @@ impl<'a> Pictures<'a> {
         };
         let same = |picture: &Rc<Picture>| {
             picture.key.len() == terms.len()
-                && picture
-                    .key
-                    .iter()
-                    .zip(terms)
-                    .all(|(key, term)| key.0 == term.matrix && key.1 == term.turns_hz.to_bits())
+                && picture.key.iter().zip(terms).all(|(key, term)| key.0 == term.matrix && key.1 == term.turns_hz.to_bits())
         };
         if let Some(found) = kept.iter().find(|picture| same(picture)) {
             return found.clone();
@@ -280,19 +264,9 @@ fn ties(problem: &Problem, terms: &[Term]) -> Vec<f64> {
                     continue;
                 }
                 if term.turns_hz == 0.0 {
-                    still.push(Tie {
-                        row,
-                        column,
-                        f: 0.0,
-                        size: 0.0,
-                    });
+                    still.push(Tie { row, column, f: 0.0, size: 0.0 });
                 } else if b[(column, row)] == Complex64::default() || (a[(row, row)].re - a[(column, column)].re) * term.turns_hz > 0.0 {
-                    wishes.push(Tie {
-                        row,
-                        column,
-                        f: term.turns_hz,
-                        size,
-                    });
+                    wishes.push(Tie { row, column, f: term.turns_hz, size });
                 }
             }
         }
@@ -301,12 +275,7 @@ fn ties(problem: &Problem, terms: &[Term]) -> Vec<f64> {
     for column in 0..n {
         for row in 0..column {
             if a[(row, column)] != Complex64::default() {
-                still.push(Tie {
-                    row,
-                    column,
-                    f: 0.0,
-                    size: a[(row, column)].norm(),
-                });
+                still.push(Tie { row, column, f: 0.0, size: a[(row, column)].norm() });
             }
         }
     }

@@ -1,20 +1,29 @@
 //! Solving at two resolutions, and tightening until the measured error is small enough.
+//!
+//! The coarser run is the result; its figure is its largest change under refinement with a fifth on top: tolerance over 30 and more
+//! steps between moments (Runge-Kutta), twice the steps (Magnus), four times the slices (midpoint), two pieces for one (constant stretches).
+//! At least it is the floor of rounding. Held against an independent collocation of order 16 in 1900 solutions of random problems
+//! of 2 to 6 levels (test `calibrate_error_figure`, seeds not used for choosing any constant): the true error exceeded the figure
+//! in 3 of them, once by less than a hundredth and twice, at 6e-14 and 5e-13 in constant stretches, up to threefold (how much
+//! of that is rounding in the collocation is not known); the figure was never more than ten times the larger of the true error and 1e-12.
 
 use super::asked::{Asked, Demand, Recorder};
-use super::choose::{choose, Method};
+use super::choose::{choose, Method, METHODS};
 use super::cross_check::cross_check;
 use super::load::Load;
 use super::picture::Pictures;
-use super::run::{run, Fineness, Work};
+use super::run::{run, Fineness, Route, Work};
 use super::solved::{Resolution, Solved};
 use crate::problem::Problem;
 
 /// Multiplications that all runs of one problem may use together: a minute or so on one core.
-const MOST_MULTIPLICATIONS: f64 = 2e10;
+const MOST_MULTIPLICATIONS: f64 = 8e9;
 /// First tolerance of the step control over the accuracy asked for: the estimates of order 5 and 3 exceed the error by some 1e4.
 const FIRST_TOLERANCE: f64 = 10.0;
-/// Most doublings of equal steps.
-const MOST_DOUBLINGS: u32 = 22;
+/// Where the estimate is beyond this, nothing is computed: an hour.
+const HOPELESS_NS: f64 = 3.6e12;
+/// Most equal steps of the coarser run.
+const MOST_EVEN_STEPS: f64 = 4_194_304.0;
 
 /// The error figure of one number: its change under refinement with a fifth on top, at least the floor of rounding.
 pub fn figure(coarse: f64, fine: f64, floor: f64) -> f64 {
@@ -44,64 +53,41 @@ struct Ran<R> {
 pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new_recorder: impl Fn() -> R) -> Solved<R> {
     let mut pictures = Pictures::new(problem);
     let load = Load::of(problem, demand, asked.accuracy, &mut pictures);
-    let (method, reason) = choose(&load, asked.method);
+    let (method, mut reason) = choose(&load, asked.method);
     // Runge-Kutta sums are compensated; all other steps are products, one after the other.
-    let floor_of = |work: &Work| {
-        load.floor(if load.changing > 0 && method != Method::Smooth {
-            work.steps
-        } else {
-            load.segments as u64
-        })
-    };
+    let floor_of = |work: &Work| load.floor(if load.changing > 0 && method != Method::Smooth { work.steps } else { load.segments as u64 });
     let mut left = MOST_MULTIPLICATIONS;
+    let hopeless =
+        METHODS.iter().filter(|row| row.method == method && load.changing > 0).map(|row| (row.cost_ns)(&load)).find(|ns| *ns > HOPELESS_NS);
+    if let (Some(ns), true) = (hopeless, method != Method::ConstantSteps) {
+        // Only walks through the moments, so that the caller has his rows, and says so with an infinite figure.
+        left = 0.0;
+        reason += &format!("; it was not run, since it would take about {:.0e} s", ns * 1e-9);
+    }
     let mut products = 0;
+    let mut route = Route { problem, demand: *demand, method, changing_s: load.changing_s, pictures };
     let mut go = |fineness: Fineness| {
         let mut recorder = new_recorder();
-        let work = run(
-            problem,
-            demand,
-            method,
-            &fineness,
-            load.changing_s,
-            &mut pictures,
-            left,
-            &mut recorder,
-        );
+        let work = run(&mut route, &fineness, left, &mut recorder);
         left = work.left;
         products += work.products;
         Ran { recorder, fineness, work }
     };
     let least = least_tolerance(&load);
-    let start = Fineness {
-        tolerance: (FIRST_TOLERANCE * asked.accuracy).max(least),
-        pieces: 1,
-        doublings: 0,
-    };
+    let start = Fineness { tolerance: (FIRST_TOLERANCE * asked.accuracy).max(least), pieces: 1, doublings: 0 };
     let mut coarse = go(start);
     let mut fine = go(finer(start, method, least));
     let (error_figure, floor) = loop {
         let floor = floor_of(&coarse.work);
         let spoilt = coarse.work.exhausted() || fine.work.exhausted();
-        let error_figure = if spoilt {
-            f64::INFINITY
-        } else {
-            largest_figure(coarse.recorder.numbers(), fine.recorder.numbers(), floor)
-        };
-        if error_figure <= asked.accuracy || spoilt || !error_figure.is_finite() || load.changing == 0 {
+        let error_figure = if spoilt { f64::INFINITY } else { largest_figure(coarse.recorder.numbers(), fine.recorder.numbers(), floor) };
+        if error_figure <= asked.accuracy.max(floor) || spoilt || !error_figure.is_finite() || load.changing == 0 {
             break (error_figure, floor);
         }
-        let Some(wanted) = tighten(&coarse, &fine, error_figure / asked.accuracy, method, least) else {
+        let Some(wanted) = tighten(&coarse, &fine, error_figure / asked.accuracy.max(floor), method, least) else {
             break (error_figure, floor);
         };
-        let ahead = expected_cost(&coarse, &fine, wanted, method);
-        if ahead > fine.work.left {
-            break (error_figure, floor);
-        }
-        let (next_coarse, reused) = if wanted == fine.fineness {
-            (None, true)
-        } else {
-            (Some(go(wanted)), false)
-        };
+        let (next_coarse, reused) = if wanted == fine.fineness { (None, true) } else { (Some(go(wanted)), false) };
         let next_fine = go(finer(wanted, method, least));
         let worse = next_fine.work.exhausted() || next_coarse.as_ref().is_some_and(|ran| ran.work.exhausted());
         if worse {
@@ -113,15 +99,11 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         };
         fine = next_fine;
     };
-    let resolution = |ran: &Ran<R>| Resolution {
-        words: words(method, &load, ran),
-        steps: ran.work.steps,
-    };
+    let resolution = |ran: &Ran<R>| Resolution { words: words(method, &load, ran), steps: ran.work.steps };
     let resolutions = [resolution(&coarse), resolution(&fine)];
     let steps = coarse.work.steps;
-    let cross_check = asked
-        .cross_check
-        .then(|| cross_check(problem, demand, &load, asked.accuracy, coarse.recorder.numbers(), &new_recorder));
+    let cross_check =
+        asked.cross_check.then(|| cross_check(problem, demand, &load, asked.accuracy, coarse.recorder.numbers(), &new_recorder));
     Solved {
         recorded: coarse.recorder,
         finer: fine.recorder,
@@ -145,11 +127,7 @@ fn least_tolerance(load: &Load) -> f64 {
 /// The next finer resolution.
 fn finer(of: Fineness, method: Method, least: f64) -> Fineness {
     let doublings = if method == Method::ConstantSteps { 2 } else { 1 };
-    Fineness {
-        tolerance: (of.tolerance / 30.0).max(least),
-        pieces: of.pieces + 1,
-        doublings: of.doublings + doublings,
-    }
+    Fineness { tolerance: (of.tolerance / 30.0).max(least), pieces: of.pieces + 1, doublings: of.doublings + doublings }
 }
 
 /// The coarse resolution to try next where the error is `excess` times too large; `None` where nothing finer is left.
@@ -159,36 +137,26 @@ fn tighten<R>(coarse: &Ran<R>, fine: &Ran<R>, excess: f64, method: Method, least
             if fine.fineness.tolerance <= least && coarse.fineness.tolerance <= least && coarse.fineness.pieces > 3 {
                 return None;
             }
+            // The next runs cost about twice as much as the last one.
+            if 4.0 * (coarse.work.left - fine.work.left) > fine.work.left {
+                return None;
+            }
             if excess < 20.0 || coarse.fineness.tolerance <= least {
                 return Some(fine.fineness);
             }
-            Some(Fineness {
-                tolerance: (coarse.fineness.tolerance / (3.0 * excess)).max(least),
-                ..fine.fineness
-            })
+            Some(Fineness { tolerance: (coarse.fineness.tolerance / (3.0 * excess)).max(least), ..fine.fineness })
         }
         Method::Geometric | Method::ConstantSteps => {
             let (order, stride) = if method == Method::Geometric { (6.0, 1) } else { (2.0, 2) };
-            let more = ((1.1 * excess).log2() / order).ceil().clamp(1.0, 8.0) as u32;
-            let doublings = coarse.fineness.doublings + more.max(stride);
-            if doublings + stride > MOST_DOUBLINGS {
-                return None;
-            }
-            Some(Fineness {
-                doublings,
-                ..fine.fineness
-            })
-        }
-    }
-}
-
-/// Multiplications of the next coarse and fine run, as far as they can be known beforehand.
-fn expected_cost<R>(coarse: &Ran<R>, fine: &Ran<R>, wanted: Fineness, method: Method) -> f64 {
-    let last = coarse.work.left - fine.work.left;
-    match method {
-        Method::Smooth => 2.0 * last,
-        _ => {
-            last * 2f64.powi(wanted.doublings as i32 - fine.fineness.doublings as i32) * if method == Method::Geometric { 3.0 } else { 5.0 }
+            let more = ((1.1 * excess).log2() / order).ceil().clamp(1.0, 40.0) as u32;
+            // As many doublings as are wanted, or as can be afforded.
+            let cost_now = (coarse.work.left - fine.work.left) / 2f64.powi(stride as i32);
+            let affordable = |more: &u32| {
+                let times = 2f64.powi(*more as i32);
+                coarse.work.steps as f64 * times <= MOST_EVEN_STEPS && cost_now * times * (1.0 + 2f64.powi(stride as i32)) <= fine.work.left
+            };
+            let more = (stride..=more.max(stride)).rev().find(affordable)?;
+            Some(Fineness { doublings: coarse.fineness.doublings + more, pieces: fine.fineness.pieces, tolerance: fine.fineness.tolerance })
         }
     }
 }

@@ -28,7 +28,7 @@ pub(super) struct Work {
     pub steps: u64,
     /// Matrix-vector products of this run.
     pub products: u64,
-    /// Multiplications left; below zero the run is cut short and worthless.
+    /// Multiplications left; at zero the run is cut short and worthless.
     pub left: f64,
 }
 
@@ -43,7 +43,7 @@ impl Work {
 
     /// Whether nothing is left.
     pub fn exhausted(&self) -> bool {
-        self.left < 0.0
+        self.left <= 0.0
     }
 }
 
@@ -81,37 +81,30 @@ impl Eye<'_> {
     }
 }
 
-/// Runs the whole problem once. `changing_s` is how long H changes altogether (the step control spreads its tolerance over it).
-pub(super) fn run<'p>(
-    problem: &'p Problem,
-    demand: &Demand,
-    method: Method,
-    fineness: &Fineness,
-    changing_s: f64,
-    pictures: &mut Pictures<'p>,
-    left: f64,
-    recorder: &mut dyn Recorder,
-) -> Work {
+/// What all runs of one problem have in common.
+pub(super) struct Route<'p> {
+    pub problem: &'p Problem,
+    pub demand: Demand,
+    pub method: Method,
+    /// How long H changes altogether, s; the step control spreads its tolerance over it.
+    pub changing_s: f64,
+    pub pictures: Pictures<'p>,
+}
+
+/// Runs the whole problem once, with `left` multiplications to spend at most.
+pub(super) fn run(route: &mut Route, fineness: &Fineness, left: f64, recorder: &mut dyn Recorder) -> Work {
+    let Route { problem, demand, method, changing_s, pictures } = route;
+    let (problem, demand, method) = (*problem, *demand, *method);
     let dim = problem.dim();
-    let mut work = Work {
-        steps: 0,
-        products: 0,
-        left,
-    };
-    let mut state = State {
-        dim,
-        amplitudes: problem.start.as_slice().to_vec(),
-        time_in_s: vec![0.0; if demand.time_in { dim } else { 0 }],
-    };
+    let mut work = Work { steps: 0, products: 0, left };
+    let mut state =
+        State { dim, amplitudes: problem.start.as_slice().to_vec(), time_in_s: vec![0.0; if demand.time_in { dim } else { 0 }] };
     if demand.propagator {
         state.amplitudes.extend_from_slice(Matrix::identity(dim, dim).as_slice());
     }
-    let mut eye = Eye {
-        recorder,
-        lab: problem.start.clone(),
-    };
+    let mut eye = Eye { recorder, lab: problem.start.clone() };
     let mut flows = Flows::new(dim);
-    let mut smooth = Smooth::new(dim, state.amplitudes.len(), demand.time_in);
+    let mut smooth = Smooth::new(dim, state.amplitudes.len(), demand.time_in, *changing_s);
     let mut next = 0;
     for (index, segment) in problem.segments.iter().enumerate() {
         let first = next;
@@ -121,23 +114,13 @@ pub(super) fn run<'p>(
         let terms = problem.terms_of(segment);
         let tied = pictures.of(segment, Kind::Tied);
         let still = tied.constant(terms);
-        let picture = if still || method != Method::Smooth {
-            tied
-        } else {
-            pictures.of(segment, Kind::Free)
-        };
-        let stretch = Stretch {
-            picture: &picture,
-            terms,
-            length_s: segment.length_s,
-            moments: &problem.moments[first..next],
-            first,
-        };
+        let picture = if still || method != Method::Smooth { tied } else { pictures.of(segment, Kind::Free) };
+        let stretch = Stretch { picture: &picture, terms, length_s: segment.length_s, moments: &problem.moments[first..next], first };
         if still {
             constant::pass(&stretch, fineness.pieces, &mut flows, &mut state, &mut eye, &mut work);
         } else {
             match method {
-                Method::Smooth => smooth.pass(&stretch, fineness, changing_s, &mut state, &mut eye, &mut work),
+                Method::Smooth => smooth.pass(&stretch, fineness, &mut state, &mut eye, &mut work),
                 Method::Geometric => geometric::pass(&stretch, fineness.doublings, &mut state, &mut eye, &mut work),
                 Method::ConstantSteps => slices::pass(&stretch, fineness.doublings, &mut state, &mut eye, &mut work),
             }
@@ -148,9 +131,7 @@ pub(super) fn run<'p>(
         eye.lab.as_mut_slice().copy_from_slice(&state.amplitudes[..dim]);
         eye.recorder.see(moment, &eye.lab, &state.time_in_s);
     }
-    let propagator = demand
-        .propagator
-        .then(|| Matrix::from_column_slice(dim, dim, &state.amplitudes[dim..]));
+    let propagator = demand.propagator.then(|| Matrix::from_column_slice(dim, dim, &state.amplitudes[dim..]));
     eye.recorder.finish(propagator.as_ref());
     work
 }

@@ -1,5 +1,6 @@
 //! What a run or an old result folder shows as plots: recorded numbers, pulses and marks put into the plain data of `plots`.
 
+use crate::compare::Comparison;
 use crate::config::document::Document;
 use crate::config::drives::Form;
 use crate::config::settings::Plot;
@@ -7,6 +8,7 @@ use crate::drive::envelope::Pieces;
 use crate::measure::Column;
 use crate::outcome::Outcome;
 use crate::plan::Point;
+use crate::problem::Sweep;
 use crate::report::fingerprint::fingerprint;
 use crate::report::plots::{
     envelopes, spectrum, traces, Drawn, EnvelopeCurve, EnvelopesFigure, Panel, PlotError, PulseBar, PulseSpectrum, Series, SpectrumFigure,
@@ -27,9 +29,7 @@ const SPECTRUM_POINTS: usize = 400;
 /// The plots of a run.
 pub fn of_run(document: &Document, point: &Point, outcome: &Outcome) -> Vec<Named> {
     let wide = outcome.columns.len();
-    let columns = (0..wide)
-        .map(|k| outcome.rows.iter().skip(k).step_by(wide.max(1)).copied().collect())
-        .collect();
+    let columns = (0..wide).map(|k| outcome.rows.iter().skip(k).step_by(wide.max(1)).copied().collect()).collect();
     of_columns(document, point, &outcome.columns, &outcome.times_s, columns)
 }
 
@@ -51,6 +51,24 @@ pub fn of_columns(document: &Document, point: &Point, columns: &[Column], times_
     drawn
 }
 
+/// The plots of a comparison: those of the file as written.
+pub fn of_comparison(document: &Document, comparison: &Comparison) -> Vec<Named> {
+    let written = comparison.computed.first();
+    let point = written.and_then(|computed| computed.plan.point().ok());
+    written.zip(point).map_or_else(Vec::new, |(computed, point)| of_run(document, &point, &computed.outcome))
+}
+
+/// Writes a plot in both forms, each to the side first and then renamed; gives the file names.
+pub fn save(folder: &std::path::Path, name: &str, drawn: &Drawn) -> std::io::Result<[String; 2]> {
+    let names = [format!("{name}.png"), format!("{name}.svg")];
+    for (name, bytes) in names.iter().zip([drawn.png.as_slice(), drawn.svg.as_bytes()]) {
+        let side = folder.join(format!(".{name}.unfinished"));
+        std::fs::write(&side, bytes)?;
+        std::fs::rename(&side, folder.join(name))?;
+    }
+    Ok(names)
+}
+
 fn marks(point: &Point) -> Vec<(String, f64)> {
     point.timeline.marks.iter().map(|(name, at)| (name.clone(), at.seconds())).collect()
 }
@@ -58,11 +76,7 @@ fn marks(point: &Point) -> Vec<(String, f64)> {
 fn traces_figure(document: &Document, point: &Point, columns: &[Column], times_s: &[f64], values: &[Vec<f64>]) -> TracesFigure {
     let mut panels: Vec<(&str, Panel)> = Vec::new();
     for (column, values) in columns.iter().zip(values) {
-        let series = Series {
-            name: column.label.clone(),
-            values: values.clone(),
-            band: None,
-        };
+        let series = Series { name: column.label.clone(), values: values.clone(), band: None };
         match panels.iter_mut().find(|(name, _)| *name == column.panel) {
             Some((_, panel)) => panel.series.push(series),
             None => {
@@ -71,20 +85,8 @@ fn traces_figure(document: &Document, point: &Point, columns: &[Column], times_s
                     "Bloch vector" => Some((-1.0, 1.0)),
                     _ => None,
                 };
-                let unit = if column.unit == "1" {
-                    String::new()
-                } else {
-                    column.unit.to_string()
-                };
-                panels.push((
-                    column.panel,
-                    Panel {
-                        y_label: column.panel.to_string(),
-                        unit,
-                        series: vec![series],
-                        range,
-                    },
-                ));
+                let unit = if column.unit == "1" { String::new() } else { column.unit.to_string() };
+                panels.push((column.panel, Panel { y_label: column.panel.to_string(), unit, series: vec![series], range }));
             }
         }
     }
@@ -137,11 +139,7 @@ fn envelopes_figure(document: &Document, point: &Point) -> EnvelopesFigure {
         EnvelopeCurve {
             drive: drive.name.clone(),
             envelope: envelope.name.clone(),
-            size_label: if drive.form == Form::Direct {
-                "matrix element".to_string()
-            } else {
-                "Rabi frequency".to_string()
-            },
+            size_label: if drive.form == Form::Direct { "matrix element".to_string() } else { "Rabi frequency".to_string() },
             start_s: pulse.start.seconds(),
             in_phase_hz: times.iter().map(|t| peak * curve.at(*t)).collect(),
             quadrature_hz: weight.map(|weight| times.iter().map(|t| weight * peak * curve.slope(*t)).collect()),
@@ -173,11 +171,7 @@ fn spectrum_figure(document: &Document, point: &Point) -> SpectrumFigure {
         }
         let (drive, envelope) = (&document.drives[pulse.drive].name, &document.envelopes[pulse.envelope].name);
         let (offset_hz, amplitude_db) = pulse_spectrum(document, point, pulse);
-        pulses.push(PulseSpectrum {
-            label: format!("{envelope} on {drive}"),
-            offset_hz,
-            amplitude_db,
-        });
+        pulses.push(PulseSpectrum { label: format!("{envelope} on {drive}"), offset_hz, amplitude_db });
     }
     // the lines of the system, as offsets from the first carrier
     let names = &document.system.names;
@@ -185,20 +179,10 @@ fn spectrum_figure(document: &Document, point: &Point) -> SpectrumFigure {
         let size = names.len().min(12);
         let pairs = (0..size).flat_map(|a| (a + 1..size).map(move |b| (a, b)));
         pairs
-            .map(|(a, b)| {
-                (
-                    format!("{} to {}", names[a], names[b]),
-                    (point.energies_hz[b] - point.energies_hz[a]).abs() - carrier,
-                )
-            })
+            .map(|(a, b)| (format!("{} to {}", names[a], names[b]), (point.energies_hz[b] - point.energies_hz[a]).abs() - carrier))
             .collect()
     });
-    SpectrumFigure {
-        title: document.title.clone(),
-        fingerprint: fingerprint(document),
-        pulses,
-        lines,
-    }
+    SpectrumFigure { title: document.title.clone(), fingerprint: fingerprint(document), pulses, lines }
 }
 
 /// Fourier transform of the complex envelope by the trapezium rule, which for a pulse that is 0 outside converges fast.
@@ -214,11 +198,9 @@ fn pulse_spectrum(document: &Document, point: &Point, pulse: &crate::drive::time
         let formula = carrier.written.instantaneous.as_ref()?.bind(&point.values);
         Some(crate::drive::chirp::Chirp::new(formula, carrier.centre_hz, pulse.length_s))
     });
-    let reach = chirp.as_ref().map_or(0.0, |chirp| {
-        (0..=64)
-            .map(|k| chirp.offset_hz(pulse.length_s * f64::from(k) / 64.0).abs())
-            .fold(0.0, f64::max)
-    });
+    let reach = chirp
+        .as_ref()
+        .map_or(0.0, |chirp| (0..=64).map(|k| chirp.offset_hz(pulse.length_s * f64::from(k) / 64.0).abs()).fold(0.0, f64::max));
     // wide enough for the main lobe of the shortest feature and the whole chirp
     let range = 1.5 * reach + 12.0 / pulse.length_s;
     let samples = 2048usize.max((8.0 * range * pulse.length_s) as usize).min(16_384);
@@ -231,9 +213,7 @@ fn pulse_spectrum(document: &Document, point: &Point, pulse: &crate::drive::time
             num_complex::Complex64::new(curve.at(t), if weight == 0.0 { 0.0 } else { -weight * curve.slope(t) }) * cis_turns(turns)
         })
         .collect();
-    let offsets: Vec<f64> = (0..=2 * SPECTRUM_POINTS)
-        .map(|k| range * (k as f64 / SPECTRUM_POINTS as f64 - 1.0))
-        .collect();
+    let offsets: Vec<f64> = (0..=2 * SPECTRUM_POINTS).map(|k| range * (k as f64 / SPECTRUM_POINTS as f64 - 1.0)).collect();
     let sizes: Vec<f64> = offsets
         .iter()
         .map(|offset| {

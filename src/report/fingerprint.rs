@@ -8,13 +8,7 @@ use crate::config::document::Document;
 /// The first twelve hexadecimal digits.
 pub fn fingerprint(document: &Document) -> String {
     let mut hash = Sha256::new();
-    for (k, file) in document
-        .sources
-        .files()
-        .iter()
-        .enumerate()
-        .filter(|(_, file)| !file.bytes.is_empty())
-    {
+    for (k, file) in document.sources.files().iter().enumerate().filter(|(_, file)| !file.bytes.is_empty()) {
         // the name of the config itself does not count, those of its inputs do
         if k > 0 {
             hash.update(file.path.file_name().unwrap_or_default().as_encoded_bytes());

@@ -57,11 +57,7 @@ pub fn default_folder(document: &Document) -> PathBuf {
     match &document.output.folder {
         Some(folder) => PathBuf::from(folder),
         None => {
-            let stem = document
-                .source()
-                .path
-                .file_stem()
-                .map_or_else(|| "run".into(), |stem| stem.to_os_string());
+            let stem = document.source().path.file_stem().map_or_else(|| "run".into(), |stem| stem.to_os_string());
             Path::new("outputs").join(stem)
         }
     }
@@ -69,10 +65,7 @@ pub fn default_folder(document: &Document) -> PathBuf {
 
 /// Judges `folder` and makes the staging place in it.
 pub fn prepare(folder: &Path, document: &Document, replace: bool) -> Result<Staging, FolderFault> {
-    let unusable = |reason: String| FolderFault::Unusable {
-        folder: folder.to_path_buf(),
-        reason,
-    };
+    let unusable = |reason: String| FolderFault::Unusable { folder: folder.to_path_buf(), reason };
     let exists = match fs::symlink_metadata(folder) {
         Ok(_) if folder.is_dir() => true,
         Ok(_) => return Err(unusable("a file of that name is in the way".to_string())),
@@ -83,10 +76,7 @@ pub fn prepare(folder: &Path, document: &Document, replace: bool) -> Result<Stag
         judge(folder, document)?;
     }
     let mut made = Vec::new();
-    let mut missing: Vec<&Path> = folder
-        .ancestors()
-        .take_while(|path| !path.as_os_str().is_empty() && !path.exists())
-        .collect();
+    let mut missing: Vec<&Path> = folder.ancestors().take_while(|path| !path.as_os_str().is_empty() && !path.exists()).collect();
     while let Some(path) = missing.pop() {
         fs::create_dir(path).map_err(|error| {
             made.iter().for_each(|made: &PathBuf| drop(fs::remove_dir(made)));
@@ -94,54 +84,30 @@ pub fn prepare(folder: &Path, document: &Document, replace: bool) -> Result<Stag
         })?;
         made.insert(0, path.to_path_buf());
     }
-    let side = tempfile::Builder::new()
-        .prefix(".unfinished-")
-        .tempdir_in(folder)
-        .map_err(|error| {
-            made.iter().for_each(|made| drop(fs::remove_dir(made)));
-            unusable(error.kind().to_string())
-        })?;
-    Ok(Staging {
-        folder: folder.to_path_buf(),
-        side,
-        made,
-        done: false,
-    })
+    let side = tempfile::Builder::new().prefix(".unfinished-").tempdir_in(folder).map_err(|error| {
+        made.iter().for_each(|made| drop(fs::remove_dir(made)));
+        unusable(error.kind().to_string())
+    })?;
+    Ok(Staging { folder: folder.to_path_buf(), side, made, done: false })
 }
 
 /// The part of a path that is a file where a folder is needed.
 fn blocked(folder: &Path) -> Option<String> {
-    folder
-        .ancestors()
-        .find(|path| path.is_file())
-        .map(|file| format!("{} is a file", file.display()))
+    folder.ancestors().find(|path| path.is_file()).map(|file| format!("{} is a file", file.display()))
 }
 
 /// A folder that exists may take a result if it is empty or holds a result of the same config.
 fn judge(folder: &Path, document: &Document) -> Result<(), FolderFault> {
-    let foreign = |holds: &str| FolderFault::Foreign {
-        folder: folder.to_path_buf(),
-        holds: holds.to_string(),
-    };
-    let entries = fs::read_dir(folder).map_err(|error| FolderFault::Unusable {
-        folder: folder.to_path_buf(),
-        reason: error.to_string(),
-    })?;
-    let mut names: Vec<String> = entries
-        .flatten()
-        .map(|entry| entry.file_name().to_string_lossy().into_owned())
-        .collect();
+    let foreign = |holds: &str| FolderFault::Foreign { folder: folder.to_path_buf(), holds: holds.to_string() };
+    let entries =
+        fs::read_dir(folder).map_err(|error| FolderFault::Unusable { folder: folder.to_path_buf(), reason: error.to_string() })?;
+    let mut names: Vec<String> = entries.flatten().map(|entry| entry.file_name().to_string_lossy().into_owned()).collect();
     names.retain(|name| !name.starts_with(".unfinished-"));
     if names.is_empty() {
         return Ok(());
     }
-    let found = fs::read(folder.join("result.json"))
-        .ok()
-        .and_then(|bytes| serde_json::from_slice::<serde_json::Value>(&bytes).ok());
-    let fingerprint = found
-        .as_ref()
-        .and_then(|json| json.pointer("/config/fingerprint"))
-        .and_then(|text| text.as_str());
+    let found = fs::read(folder.join("result.json")).ok().and_then(|bytes| serde_json::from_slice::<serde_json::Value>(&bytes).ok());
+    let fingerprint = found.as_ref().and_then(|json| json.pointer("/config/fingerprint")).and_then(|text| text.as_str());
     match fingerprint {
         Some(print) if print == super::fingerprint::fingerprint(document) => Ok(()),
         Some(_) => Err(foreign("holds the results of another config, or of this one before it was changed")),
@@ -175,7 +141,9 @@ impl Staging {
         let old: Vec<PathBuf> = fs::read_dir(&self.folder)?.flatten().map(|entry| entry.path()).collect();
         let ours = |path: &Path| {
             let name = path.file_name().unwrap_or_default().to_string_lossy();
-            ["result.json", "traces.csv", "config.yaml"].contains(&name.as_ref()) || [".png", ".svg"].iter().any(|end| name.ends_with(end))
+            ["result.json", "traces.csv", "config.yaml"].contains(&name.as_ref())
+                || (name.starts_with("traces-") && name.ends_with(".csv"))
+                || [".png", ".svg"].iter().any(|end| name.ends_with(end))
         };
         for path in old.iter().filter(|path| ours(path)) {
             fs::remove_file(path)?;

@@ -5,6 +5,7 @@ use serde_json::{json, Map, Value};
 use crate::config::document::Document;
 use crate::config::messages::one_line;
 use crate::outcome::Outcome;
+use crate::plan::Point;
 
 /// A number; what is not finite becomes null.
 pub fn number(value: f64) -> Value {
@@ -23,27 +24,20 @@ pub fn config(document: &Document) -> Value {
 }
 
 /// Warnings of the config and of the run.
-pub fn warnings(document: &Document, outcome: &Outcome) -> Vec<String> {
-    let mut texts: Vec<String> = document
-        .warnings
-        .iter()
-        .map(|warning| one_line(&document.sources, warning))
-        .collect();
+pub fn warnings(document: &Document, point: &Point, outcome: &Outcome) -> Vec<String> {
+    let mut texts: Vec<String> =
+        document.warnings.iter().chain(&point.warnings).map(|warning| one_line(&document.sources, warning)).collect();
     if !outcome.reached {
         texts.push(super::summary::not_reached(document, outcome));
     }
-    if let Some((method, reason)) = outcome
-        .cross_check
-        .as_ref()
-        .and_then(|check| Some((&check.method, check.difference.as_ref().err()?)))
-    {
+    if let Some((method, reason)) = outcome.cross_check.as_ref().and_then(|check| Some((&check.method, check.difference.as_ref().err()?))) {
         texts.push(format!("the cross-check ({method}) was not made: {reason}"));
     }
     texts
 }
 
 /// The whole object.
-pub fn result(document: &Document, outcome: &Outcome) -> Value {
+pub fn result(document: &Document, point: &Point, outcome: &Outcome) -> Value {
     let method = json!({
         "name": outcome.method.word(),
         "reason": outcome.reason,
@@ -61,11 +55,14 @@ pub fn result(document: &Document, outcome: &Outcome) -> Value {
     if let Some((_, error)) = &outcome.propagator {
         errors.insert("propagator".to_string(), number(*error));
     }
+    if let Some((period_s, _, error)) = &outcome.quasi_energies {
+        errors.insert("quasi_energies_Hz".to_string(), number(error / period_s));
+    }
     let mut result = Map::new();
     let mut put = |key: &str, value: Value| result.insert(key.to_string(), value);
     put("program", program());
     put("config", config(document));
-    put("frame", json!({"kind": "lab"}));
+    put("frame", super::frame_json::frame(document, point));
     put("method", method);
     put("error_figure", number(outcome.error_figure));
     put("accuracy", json!({"final": document.accuracy.last, "reached": outcome.reached}));
@@ -77,29 +74,37 @@ pub fn result(document: &Document, outcome: &Outcome) -> Value {
         };
         put("cross_check", found);
     }
-    put("final", finals(outcome));
+    put("final", finals(document, outcome));
     put(
         "end_state",
         json!({"levels": document.system.names, "amplitudes": outcome.end_state.iter().map(|z| json!([number(z.re), number(z.im)])).collect::<Vec<_>>()}),
     );
-    put("ledger", json!([]));
-    put("warnings", json!(warnings(document, outcome)));
+    put("ledger", super::frame_json::ledger(document, point));
+    if let Some(elimination) = super::frame_json::elimination(document, point) {
+        put("elimination", elimination);
+    }
+    put("warnings", json!(warnings(document, point, outcome)));
     put("seconds", number(outcome.seconds));
     Value::Object(result)
 }
 
 /// Everything recorded, at the last time.
-fn finals(outcome: &Outcome) -> Value {
+fn finals(document: &Document, outcome: &Outcome) -> Value {
     let mut found = Map::new();
     found.insert("time_s".to_string(), number(outcome.times_s.last().copied().unwrap_or(0.0)));
     for (column, value) in outcome.columns.iter().zip(&outcome.finals) {
         insert(&mut found, &column.path, number(value.value));
     }
+    if let Some((period_s, levels, _)) = &outcome.quasi_energies {
+        let level = |level: &crate::measure::QuasiEnergy| {
+            let weights: Map<String, Value> =
+                document.system.names.iter().cloned().zip(level.weights.iter().map(|weight| number(*weight))).collect();
+            json!({"energy_Hz": number(level.turns / period_s), "weights": weights})
+        };
+        found.insert("quasi_energies".to_string(), levels.iter().map(level).collect());
+    }
     if let Some((propagator, _)) = &outcome.propagator {
-        let rows: Vec<Value> = propagator
-            .row_iter()
-            .map(|row| row.iter().map(|z| json!([number(z.re), number(z.im)])).collect())
-            .collect();
+        let rows: Vec<Value> = propagator.row_iter().map(|row| row.iter().map(|z| json!([number(z.re), number(z.im)])).collect()).collect();
         found.insert("propagator".to_string(), Value::Array(rows));
     }
     if let Some(gate) = &outcome.gate {

@@ -3,6 +3,7 @@
 use crate::config::document::Document;
 use crate::config::messages::{short, short_with_unit};
 use crate::outcome::Outcome;
+use crate::plan::{source_name, Point};
 
 /// Final numbers shown; the rest is in the files.
 const SHOWN: usize = 16;
@@ -49,35 +50,66 @@ pub fn not_reached(document: &Document, outcome: &Outcome) -> String {
     )
 }
 
+/// The frame, and the largest approximation in it.
+fn frame_words(document: &Document, point: &Point) -> String {
+    let Some(frame) = point.in_frame() else {
+        return "laboratory frame, nothing dropped".to_string();
+    };
+    let names = &document.system.names;
+    let ledger = &frame.rotated.ledger;
+    let dropped = ledger.dropped();
+    let mut words = match dropped.first() {
+        None => "rotating frame, nothing dropped".to_string(),
+        Some(largest) => {
+            let [a, b] = largest.levels();
+            format!(
+                "rotating frame, {} of {} terms dropped; the largest, of {} on {} and {}, shifts a level by {} and ripples by {}",
+                dropped.len(),
+                ledger.lines.len(),
+                source_name(document, largest.key.source),
+                names[a],
+                names[b],
+                short_with_unit(largest.predicted_shift_hz().unwrap_or(0.0), "Hz"),
+                short(largest.predicted_ripple().unwrap_or(0.0))
+            )
+        }
+    };
+    if let Some(done) = &frame.elimination {
+        let gone: Vec<&str> = done.levels.iter().map(|level| names[*level].as_str()).collect();
+        words.push_str(&format!("; {} eliminated (coupling over detuning up to {})", gone.join(", "), short(done.validity)));
+    }
+    words
+}
+
 /// The screen.
-pub fn summary(document: &Document, outcome: &Outcome, place: Option<&str>) -> String {
+pub fn summary(document: &Document, point: &Point, outcome: &Outcome, place: Option<&str>) -> String {
     let mut text = format!("{}\n", document.title);
     let end = outcome.times_s.last().copied().unwrap_or(0.0);
-    text.push_str(&format!(
-        "at the end of the sequence, {}, laboratory frame, nothing dropped:\n",
-        short_with_unit(end, "s")
-    ));
+    text.push_str(&format!("at the end of the sequence, {}, {}:\n", short_with_unit(end, "s"), frame_words(document, point)));
     let wide = outcome.finals.iter().take(SHOWN).map(|f| f.name.chars().count()).max().unwrap_or(0);
     for f in outcome.finals.iter().take(SHOWN) {
-        let unit = if f.unit == "1" || f.name.ends_with(f.unit) {
-            String::new()
-        } else {
-            format!(" {}", f.unit)
-        };
+        let unit = if f.unit == "1" || f.name.ends_with(f.unit) { String::new() } else { format!(" {}", f.unit) };
         text.push_str(&format!("  {:<wide$}  {}{unit}\n", f.name, with_error(f.value, f.error)));
     }
     if outcome.finals.len() > SHOWN {
         text.push_str(&format!("  and {} more in result.json\n", outcome.finals.len() - SHOWN));
+    }
+    if let Some((period_s, levels, error)) = &outcome.quasi_energies {
+        text.push_str(&format!("  quasi-energies over {}:\n", short_with_unit(*period_s, "s")));
+        for level in levels.iter().take(SHOWN) {
+            text.push_str(&format!(
+                "    {} +- {}\n",
+                short_with_unit(level.turns / period_s, "Hz"),
+                short_with_unit(error / period_s, "Hz")
+            ));
+        }
     }
     if let Some(gate) = &outcome.gate {
         for turns in &gate.free_z_turns {
             text.push_str(&format!("  free turn about z after the target: {} deg\n", short(turns * 360.0)));
         }
         if let Some((turn, [x, y, z])) = gate.residual {
-            text.push_str(&format!(
-                "  residual turn: {} deg about ({x:.3}, {y:.3}, {z:.3})\n",
-                short(turn * 360.0)
-            ));
+            text.push_str(&format!("  residual turn: {} deg about ({x:.3}, {y:.3}, {z:.3})\n", short(turn * 360.0)));
         }
     }
     text.push_str(&format!("method: {}: {}\n", outcome.method.word(), outcome.reason));

@@ -30,12 +30,7 @@ pub fn write(outcome: &Outcome, to: impl Write) -> io::Result<()> {
 /// Reads a table back: headings and columns.
 pub fn read(path: &std::path::Path) -> Result<(Vec<String>, Vec<Vec<f64>>), String> {
     let mut table = csv::Reader::from_path(path).map_err(|error| error.to_string())?;
-    let headings: Vec<String> = table
-        .headers()
-        .map_err(|error| error.to_string())?
-        .iter()
-        .map(str::to_string)
-        .collect();
+    let headings: Vec<String> = table.headers().map_err(|error| error.to_string())?.iter().map(str::to_string).collect();
     let mut columns = vec![Vec::new(); headings.len()];
     for record in table.records() {
         let record = record.map_err(|error| error.to_string())?;

@@ -62,33 +62,18 @@ pub fn refusal(text: &str) -> String {
 /// A number at the end of the sequence, by the name of its column.
 pub fn last(outcome: &Outcome, name: &str) -> f64 {
     let found = outcome.finals.iter().find(|last| last.name == name);
-    found
-        .unwrap_or_else(|| {
-            panic!(
-                "no {name} among {:?}",
-                outcome.finals.iter().map(|last| &last.name).collect::<Vec<_>>()
-            )
-        })
-        .value
+    found.unwrap_or_else(|| panic!("no {name} among {:?}", outcome.finals.iter().map(|last| &last.name).collect::<Vec<_>>())).value
 }
 
 /// A number at a recorded time.
 pub fn at(outcome: &Outcome, name: &str, time_s: f64) -> f64 {
     let column = outcome.columns.iter().position(|column| column.name == name).unwrap();
-    let row = outcome
-        .times_s
-        .iter()
-        .position(|time| (time - time_s).abs() <= 1e-12 * time_s)
-        .unwrap();
+    let row = outcome.times_s.iter().position(|time| (time - time_s).abs() <= 1e-12 * time_s).unwrap();
     outcome.rows[row * outcome.columns.len() + column]
 }
 
 /// Asserts that `found` is within `tolerance` of `wanted`.
 #[track_caller]
 pub fn close(found: f64, wanted: f64, tolerance: f64) {
-    assert!(
-        (found - wanted).abs() <= tolerance,
-        "{found:.17e} is off {wanted:.17e} by {:.2e}",
-        found - wanted
-    );
+    assert!((found - wanted).abs() <= tolerance, "{found:.17e} is off {wanted:.17e} by {:.2e}", found - wanted);
 }

@@ -30,13 +30,7 @@ impl BandLimited {
     pub(super) fn new(values: Arc<[f64]>, length_s: f64) -> Self {
         let step_s = length_s / (values.len() - 1) as f64;
         let area_s = step_s * area(&values);
-        BandLimited {
-            values,
-            length_s,
-            step_s,
-            area_s,
-            largest: OnceLock::new(),
-        }
+        BandLimited { values, length_s, step_s, area_s, largest: OnceLock::new() }
     }
 
     /// Nearest sample m and x - m.
@@ -153,11 +147,7 @@ fn area(values: &[f64]) -> f64 {
         sum += integral((j - 1) as f64, j as f64, sinc);
         from_zero.push(sum);
     }
-    values
-        .iter()
-        .zip(from_zero.iter().zip(from_zero.iter().rev()))
-        .map(|(value, (left, right))| value * (left + right))
-        .sum()
+    values.iter().zip(from_zero.iter().zip(from_zero.iter().rev())).map(|(value, (left, right))| value * (left + right)).sum()
 }
 
 impl Curve for BandLimited {

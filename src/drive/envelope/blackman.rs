@@ -14,9 +14,7 @@ struct Blackman {
 
 /// Reads `length`.
 pub(super) fn build(parameters: &Parameters) -> Result<Arc<dyn Curve>, ShapeFault> {
-    Ok(Arc::new(Blackman {
-        length_s: parameters.length()?,
-    }))
+    Ok(Arc::new(Blackman { length_s: parameters.length()? }))
 }
 
 impl Curve for Blackman {

@@ -54,11 +54,7 @@ impl Curve for CosineEdges {
 
     fn pieces(&self) -> Pieces {
         let far_s = self.length_s - self.rise_s;
-        let kinks_s = if far_s > self.rise_s {
-            Arc::from([self.rise_s, far_s])
-        } else {
-            Arc::from([])
-        };
+        let kinks_s = if far_s > self.rise_s { Arc::from([self.rise_s, far_s]) } else { Arc::from([]) };
         Pieces::Smooth { kinks_s }
     }
 }

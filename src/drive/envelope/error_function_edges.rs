@@ -32,13 +32,7 @@ pub(super) fn build(parameters: &Parameters) -> Result<Arc<dyn Curve>, ShapeFaul
     let half_s = 0.5 * parameters.length()?;
     let w_s = positive("rise_10_90", parameters.rise_10_90_s)? / (2.0 * ERFINV_0_8);
     let cut_s = parameters.cut_at()?;
-    let mut curve = ErrorFunctionEdges {
-        half_s,
-        w_s,
-        cut_s,
-        pedestal: 0.0,
-        lifted: 1.0,
-    };
+    let mut curve = ErrorFunctionEdges { half_s, w_s, cut_s, pedestal: 0.0, lifted: 1.0 };
     if parameters.edge()? == Edge::Lift {
         let (peak, pedestal) = (curve.plain(0.0), curve.plain(cut_s));
         refuse_flat(peak - pedestal, peak)?;

@@ -81,11 +81,7 @@ impl Curve for ExponentialEdges {
     }
 
     fn pieces(&self) -> Pieces {
-        let kinks_s = if self.end_s > self.on_s {
-            Arc::from([self.on_s])
-        } else {
-            Arc::from([])
-        };
+        let kinks_s = if self.end_s > self.on_s { Arc::from([self.on_s]) } else { Arc::from([]) };
         Pieces::Smooth { kinks_s }
     }
 }

@@ -20,19 +20,12 @@ const DEEPEST: u32 = 40;
 impl FormulaCurve {
     /// The curve of `formula` from 0 to `length_s`.
     pub fn new(formula: BoundFormula, length_s: f64) -> FormulaCurve {
-        FormulaCurve {
-            formula,
-            length_s,
-            area_s: OnceLock::new(),
-            largest: OnceLock::new(),
-        }
+        FormulaCurve { formula, length_s, area_s: OnceLock::new(), largest: OnceLock::new() }
     }
 
     /// A time in the pulse without a finite value, if one of a fine grid has none.
     pub fn gap_s(&self) -> Option<f64> {
-        (0..=256)
-            .map(|k| self.length_s * f64::from(k) / 256.0)
-            .find(|t| !self.formula.at(*t).is_finite())
+        (0..=256).map(|k| self.length_s * f64::from(k) / 256.0).find(|t| !self.formula.at(*t).is_finite())
     }
 }
 
@@ -77,10 +70,7 @@ impl Curve for FormulaCurve {
             const GRID: u32 = 512;
             let step = self.length_s / f64::from(GRID);
             let size = |t: f64| self.formula.at(t.clamp(0.0, self.length_s)).abs();
-            let best = (0..=GRID)
-                .map(|k| f64::from(k) * step)
-                .max_by(|a, b| size(*a).total_cmp(&size(*b)))
-                .unwrap_or(0.0);
+            let best = (0..=GRID).map(|k| f64::from(k) * step).max_by(|a, b| size(*a).total_cmp(&size(*b))).unwrap_or(0.0);
             // golden section in the two steps around the best point of the grid (J. Kiefer, Proc. AMS 4, 502 (1953))
             let shrink = (5f64.sqrt() - 1.0) / 2.0;
             let (mut low, mut high) = (best - step, best + step);

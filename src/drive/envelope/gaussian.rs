@@ -49,11 +49,7 @@ fn sigma_s(parameters: &Parameters) -> Result<f64, ShapeFault> {
     match (given.next(), given.next()) {
         (Some((key, width, in_sigmas)), None) => Ok(positive(key, *width)? / in_sigmas),
         _ => {
-            let given = widths
-                .iter()
-                .filter(|(_, width, _)| width.is_some())
-                .map(|(key, ..)| *key)
-                .collect();
+            let given = widths.iter().filter(|(_, width, _)| width.is_some()).map(|(key, ..)| *key).collect();
             Err(ShapeFault::NotOneOf { keys: KEYS, given })
         }
     }

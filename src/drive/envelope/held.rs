@@ -28,12 +28,7 @@ impl Curve for Held {
 
     fn area_s(&self) -> f64 {
         let ends_s = self.starts_s[1..].iter().chain(std::iter::once(&self.length_s));
-        self.starts_s
-            .iter()
-            .zip(ends_s)
-            .zip(self.values.iter())
-            .map(|((start, end), value)| value * (end - start))
-            .sum()
+        self.starts_s.iter().zip(ends_s).zip(self.values.iter()).map(|((start, end), value)| value * (end - start)).sum()
     }
 
     fn largest(&self) -> f64 {
@@ -41,9 +36,6 @@ impl Curve for Held {
     }
 
     fn pieces(&self) -> Pieces {
-        Pieces::Held {
-            starts_s: self.starts_s.clone(),
-            values: self.values.clone(),
-        }
+        Pieces::Held { starts_s: self.starts_s.clone(), values: self.values.clone() }
     }
 }

@@ -31,10 +31,7 @@ fn integral_over((from, to): (f64, f64), f: impl Fn(f64) -> f64) -> f64 {
 fn prop_area_is_the_integral_of_the_value() {
     for case in cases() {
         let curve = case.curve.as_ref();
-        let whole: f64 = stretches(curve)
-            .into_iter()
-            .map(|stretch| integral_over(stretch, |t| curve.at(t)))
-            .sum();
+        let whole: f64 = stretches(curve).into_iter().map(|stretch| integral_over(stretch, |t| curve.at(t))).sum();
         near(&case.name, whole, curve.area_s(), 1e-14 * curve.largest() * curve.length_s());
     }
 }
@@ -50,12 +47,7 @@ fn prop_slope_integrates_to_the_value() {
         for (from, to) in stretches(curve) {
             for end in [to, from + 0.37 * (to - from)] {
                 let rise = curve.at(end) - curve.at(from);
-                near(
-                    &case.name,
-                    integral_over((from, end), |t| curve.slope(t)),
-                    rise,
-                    5e-14 * curve.largest(),
-                );
+                near(&case.name, integral_over((from, end), |t| curve.slope(t)), rise, 5e-14 * curve.largest());
             }
         }
     }
@@ -97,11 +89,7 @@ fn prop_pieces_stand_where_the_curve_breaks() {
             }
         }
     }
-    assert_eq!(
-        kinks,
-        2 + 2 + 1 + 2 + 2,
-        "cosine edges, trapezoid, exponential edges, two lists with lines"
-    );
+    assert_eq!(kinks, 2 + 2 + 1 + 2 + 2, "cosine edges, trapezoid, exponential edges, two lists with lines");
 }
 
 /// Nothing on a fine grid is above `largest`, and something comes close to it.
@@ -113,12 +101,7 @@ fn prop_largest_is_reached_and_not_passed() {
         let mut values = vec![0.0; times.len()];
         curve.fill(&times, &mut values);
         let most = values.iter().fold(0.0, |most: f64, value| most.max(value.abs()));
-        assert!(
-            most <= curve.largest() * (1.0 + 4e-16),
-            "{}: {most} passes {}",
-            case.name,
-            curve.largest()
-        );
+        assert!(most <= curve.largest() * (1.0 + 4e-16), "{}: {most} passes {}", case.name, curve.largest());
         near(&case.name, most, curve.largest(), 1e-4 * curve.largest());
     }
 }

@@ -11,9 +11,6 @@ pub(super) fn refuse_flat(lifted: f64, peak: f64) -> Result<(), ShapeFault> {
     if lifted >= LEAST_LIFTED_SHARE * peak {
         Ok(())
     } else {
-        Err(ShapeFault::FlatLift {
-            pedestal: peak - lifted,
-            peak,
-        })
+        Err(ShapeFault::FlatLift { pedestal: peak - lifted, peak })
     }
 }

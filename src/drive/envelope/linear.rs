@@ -36,9 +36,7 @@ impl Curve for Linear {
 
     fn area_s(&self) -> f64 {
         let lines = self.times_s.windows(2).zip(self.values.windows(2));
-        lines
-            .map(|(times, values)| 0.5 * (times[1] - times[0]) * (values[0] + values[1]))
-            .sum()
+        lines.map(|(times, values)| 0.5 * (times[1] - times[0]) * (values[0] + values[1])).sum()
     }
 
     fn largest(&self) -> f64 {
@@ -46,8 +44,6 @@ impl Curve for Linear {
     }
 
     fn pieces(&self) -> Pieces {
-        Pieces::Smooth {
-            kinks_s: Arc::from(&self.times_s[1..self.times_s.len() - 1]),
-        }
+        Pieces::Smooth { kinks_s: Arc::from(&self.times_s[1..self.times_s.len() - 1]) }
     }
 }

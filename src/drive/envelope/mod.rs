@@ -121,22 +121,10 @@ pub const FAMILIES: &[Family] = &[
     family("blackman", &["length"], blackman::build),
     family("cosine edges", &["length", "rise"], cosine_edges::build),
     family("trapezoid", &["length", "rise"], trapezoid::build),
-    family(
-        "gaussian",
-        &["field_sigma", "field_fwhm", "intensity_fwhm", "cut_at", "edge"],
-        gaussian::build,
-    ),
+    family("gaussian", &["field_sigma", "field_fwhm", "intensity_fwhm", "cut_at", "edge"], gaussian::build),
     family("sech", &["sech_time", "cut_at", "edge"], sech::build),
-    family(
-        "error-function edges",
-        &["length", "rise_10_90", "cut_at", "edge"],
-        error_function_edges::build,
-    ),
-    family(
-        "exponential edges",
-        &["length", "rise_10_90", "cut_at", "edge"],
-        exponential_edges::build,
-    ),
+    family("error-function edges", &["length", "rise_10_90", "cut_at", "edge"], error_function_edges::build),
+    family("exponential edges", &["length", "rise_10_90", "cut_at", "edge"], exponential_edges::build),
     family("samples", &["samples", "file", "length", "between"], samples::build),
 ];
 

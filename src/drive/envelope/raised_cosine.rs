@@ -13,9 +13,7 @@ struct RaisedCosine {
 
 /// Reads `length`.
 pub(super) fn build(parameters: &Parameters) -> Result<Arc<dyn Curve>, ShapeFault> {
-    Ok(Arc::new(RaisedCosine {
-        length_s: parameters.length()?,
-    }))
+    Ok(Arc::new(RaisedCosine { length_s: parameters.length()? }))
 }
 
 /// sin^2(pi t/L) and its slope in 1/s.

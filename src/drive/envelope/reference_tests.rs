@@ -26,9 +26,7 @@ impl Case {
 }
 
 fn list(value: &Value) -> Option<Arc<[f64]>> {
-    value
-        .as_array()
-        .map(|items| items.iter().map(|item| item.as_f64().unwrap()).collect())
+    value.as_array().map(|items| items.iter().map(|item| item.as_f64().unwrap()).collect())
 }
 
 fn parameters(keys: &Value) -> Parameters {
@@ -41,9 +39,7 @@ fn parameters(keys: &Value) -> Parameters {
         sech_time_s: keys["sech_time"].as_f64(),
         rise_10_90_s: keys["rise_10_90"].as_f64(),
         cut_at_s: keys["cut_at"].as_f64(),
-        edge: keys["edge"]
-            .as_str()
-            .map(|word| if word == "lift" { Edge::Lift } else { Edge::Step }),
+        edge: keys["edge"].as_str().map(|word| if word == "lift" { Edge::Lift } else { Edge::Step }),
         samples: list(&keys["samples"]),
         sample_times_s: list(&keys["times"]),
         between: keys["between"].as_str().map(|word| match word {
@@ -59,22 +55,14 @@ pub(super) fn cases() -> Vec<Case> {
     let case = |entry: &Value| {
         let word = entry["word"].as_str().unwrap();
         let curve = build(word, &parameters(&entry["parameters"])).unwrap();
-        Case {
-            name: format!("{word} {}", entry["parameters"]),
-            curve,
-            numbers: entry.clone(),
-        }
+        Case { name: format!("{word} {}", entry["parameters"]), curve, numbers: entry.clone() }
     };
     table.as_array().unwrap().iter().map(case).collect()
 }
 
 #[track_caller]
 pub(super) fn near(what: &str, got: f64, want: f64, tolerance: f64) {
-    assert!(
-        (got - want).abs() <= tolerance,
-        "{what}: {got:e} against {want:e}, {:.1e} apart",
-        (got - want).abs()
-    );
+    assert!((got - want).abs() <= tolerance, "{what}: {got:e} against {want:e}, {:.1e} apart", (got - want).abs());
 }
 
 /// Relative to the value itself, so also where it goes to 0 (down to 1e-60; the digits of exp go with its argument); reached
@@ -107,14 +95,7 @@ fn ref_slopes() {
 #[test]
 fn ref_lengths_areas_and_largest() {
     for case in cases() {
-        let check = |key: &str, got: f64| {
-            near(
-                &format!("{key} of {}", case.name),
-                got,
-                case.number(key),
-                2e-15 * case.number(key).abs(),
-            )
-        };
+        let check = |key: &str, got: f64| near(&format!("{key} of {}", case.name), got, case.number(key), 2e-15 * case.number(key).abs());
         check("length", case.curve.length_s());
         check("area", case.curve.area_s());
         check("uncut_area", case.curve.uncut_area_s());
@@ -131,19 +112,9 @@ pub(super) fn us(value: f64) -> Option<f64> {
 /// a peak of 1.3 MHz, step at the start, area missing by the cut.
 #[test]
 fn exact_turns_of_shapes() {
-    let flat = |length: f64| Parameters {
-        length_s: us(length),
-        ..Default::default()
-    };
-    let edges = |length: f64, rise: f64| Parameters {
-        rise_s: us(rise),
-        ..flat(length)
-    };
-    let cut = |cut_at: f64, edge: Edge| Parameters {
-        cut_at_s: us(cut_at),
-        edge: Some(edge),
-        ..Default::default()
-    };
+    let flat = |length: f64| Parameters { length_s: us(length), ..Default::default() };
+    let edges = |length: f64, rise: f64| Parameters { rise_s: us(rise), ..flat(length) };
+    let cut = |cut_at: f64, edge: Edge| Parameters { cut_at_s: us(cut_at), edge: Some(edge), ..Default::default() };
     let samples = |length: f64, values: &[f64], between: Between| Parameters {
         samples: Some(Arc::from(values)),
         between: Some(between),
@@ -160,90 +131,31 @@ fn exact_turns_of_shapes() {
         ("trapezoid", edges(0.8, 0.15), 0.845, Some(0.0), Some(0.0)),
         (
             "gaussian",
-            Parameters {
-                field_sigma_s: us(0.21),
-                ..cut(0.5, step)
-            },
+            Parameters { field_sigma_s: us(0.21), ..cut(0.5, step) },
             0.6724929005245657,
             Some(0.058749824089630545),
             Some(0.01726794399617562),
         ),
-        (
-            "gaussian",
-            Parameters {
-                field_fwhm_s: us(0.4),
-                ..cut(0.5, lift)
-            },
-            0.5417642171202375,
-            Some(0.0),
-            None,
-        ),
-        (
-            "gaussian",
-            Parameters {
-                intensity_fwhm_s: us(0.3),
-                ..cut(0.6, step)
-            },
-            0.586590168677679,
-            None,
-            None,
-        ),
+        ("gaussian", Parameters { field_fwhm_s: us(0.4), ..cut(0.5, lift) }, 0.5417642171202375, Some(0.0), None),
+        ("gaussian", Parameters { intensity_fwhm_s: us(0.3), ..cut(0.6, step) }, 0.586590168677679, None, None),
         (
             "sech",
-            Parameters {
-                sech_time_s: us(0.12),
-                ..cut(0.6, step)
-            },
+            Parameters { sech_time_s: us(0.12), ..cut(0.6, step) },
             0.4858840386585279,
             Some(0.013475282221304558),
             Some(0.008578890744124561),
         ),
-        (
-            "sech",
-            Parameters {
-                sech_time_s: us(0.12),
-                ..cut(0.4, lift)
-            },
-            0.423938432798187,
-            Some(0.0),
-            None,
-        ),
-        (
-            "error-function edges",
-            Parameters {
-                length_s: us(0.8),
-                rise_10_90_s: us(0.15),
-                ..cut(0.6, step)
-            },
-            1.03998768154617,
-            None,
-            None,
-        ),
+        ("sech", Parameters { sech_time_s: us(0.12), ..cut(0.4, lift) }, 0.423938432798187, Some(0.0), None),
+        ("error-function edges", Parameters { length_s: us(0.8), rise_10_90_s: us(0.15), ..cut(0.6, step) }, 1.03998768154617, None, None),
         (
             "exponential edges",
-            Parameters {
-                length_s: us(0.8),
-                rise_10_90_s: us(0.22),
-                ..cut(1.2, step)
-            },
+            Parameters { length_s: us(0.8), rise_10_90_s: us(0.22), ..cut(1.2, step) },
             1.0399559067987088,
             Some(0.0),
             None,
         ),
-        (
-            "samples",
-            samples(0.8, &[0.25, 1.0, -0.5, 0.5], Between::Hold),
-            0.325,
-            Some(0.25),
-            Some(0.0),
-        ),
-        (
-            "samples",
-            samples(0.9, &[0.0, 1.0, 0.4, 0.0], Between::Linear),
-            0.546,
-            Some(0.0),
-            Some(0.0),
-        ),
+        ("samples", samples(0.8, &[0.25, 1.0, -0.5, 0.5], Between::Hold), 0.325, Some(0.25), Some(0.0)),
+        ("samples", samples(0.9, &[0.0, 1.0, 0.4, 0.0], Between::Linear), 0.546, Some(0.0), Some(0.0)),
     ];
     for (word, parameters, turn, edge_step, missing) in table {
         let curve = build(word, &parameters).unwrap();

@@ -19,10 +19,7 @@ pub(super) fn build(parameters: &Parameters) -> Result<Arc<dyn Curve>, ShapeFaul
     let values = parameters.samples.clone().ok_or(ShapeFault::Missing { key: "samples" })?;
     let needed = if between == Between::Hold { 1 } else { 2 };
     if values.len() < needed {
-        return Err(ShapeFault::TooFewSamples {
-            found: values.len(),
-            needed,
-        });
+        return Err(ShapeFault::TooFewSamples { found: values.len(), needed });
     }
     if let Some((index, value)) = values.iter().enumerate().find(|(_, value)| !value.is_finite()) {
         return Err(ShapeFault::SampleNotFinite { index, value: *value });
@@ -37,11 +34,7 @@ pub(super) fn build(parameters: &Parameters) -> Result<Arc<dyn Curve>, ShapeFaul
                 Some(times_s) => held_times(times_s, length_s)?,
                 None => equal_parts(length_s, values.len()),
             };
-            Ok(Arc::new(Held {
-                starts_s,
-                values,
-                length_s,
-            }))
+            Ok(Arc::new(Held { starts_s, values, length_s }))
         }
         Between::Linear => {
             let times_s = match &parameters.sample_times_s {
@@ -74,34 +67,20 @@ fn equal_parts(length_s: f64, n: usize) -> Arc<[f64]> {
 
 /// `n` times in equal steps from 0 to `length_s`, which the last one is to the bit.
 fn equal_steps(length_s: f64, n: usize) -> Arc<[f64]> {
-    (0..n)
-        .map(|k| {
-            if k == n - 1 {
-                length_s
-            } else {
-                k as f64 * length_s / (n - 1) as f64
-            }
-        })
-        .collect()
+    (0..n).map(|k| if k == n - 1 { length_s } else { k as f64 * length_s / (n - 1) as f64 }).collect()
 }
 
 /// The times are as many as the samples and ascend from 0.
 fn refuse_disorder(times_s: &[f64], samples: usize) -> Result<(), ShapeFault> {
     if times_s.len() != samples {
-        return Err(ShapeFault::TimesNotAsMany {
-            times: times_s.len(),
-            samples,
-        });
+        return Err(ShapeFault::TimesNotAsMany { times: times_s.len(), samples });
     }
     if times_s[0] != 0.0 {
         return Err(ShapeFault::FirstTimeNotZero { time_s: times_s[0] });
     }
     for (before, pair) in times_s.windows(2).enumerate() {
         if !(pair[1].is_finite() && pair[1] > pair[0]) {
-            return Err(ShapeFault::TimesNotAscending {
-                index: before + 1,
-                time_s: pair[1],
-            });
+            return Err(ShapeFault::TimesNotAscending { index: before + 1, time_s: pair[1] });
         }
     }
     Ok(())
@@ -133,11 +112,7 @@ fn refuse_unequal(times_s: &[f64]) -> Result<(), ShapeFault> {
     for (before, pair) in times_s.windows(2).enumerate() {
         let step_s = pair[1] - pair[0];
         if (step_s - equal_s).abs() > EQUAL * equal_s {
-            return Err(ShapeFault::UnequalSteps {
-                index: before + 1,
-                step_s,
-                equal_s,
-            });
+            return Err(ShapeFault::UnequalSteps { index: before + 1, step_s, equal_s });
         }
     }
     Ok(())

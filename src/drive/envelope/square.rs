@@ -11,9 +11,7 @@ struct Square {
 
 /// Reads `length`.
 pub(super) fn build(parameters: &Parameters) -> Result<Arc<dyn Curve>, ShapeFault> {
-    Ok(Arc::new(Square {
-        length_s: parameters.length()?,
-    }))
+    Ok(Arc::new(Square { length_s: parameters.length()? }))
 }
 
 impl Curve for Square {

@@ -15,11 +15,7 @@ struct Trapezoid {
 /// Reads `length` and `rise`.
 pub(super) fn build(parameters: &Parameters) -> Result<Arc<dyn Curve>, ShapeFault> {
     let (length_s, rise_s) = parameters.length_and_rise()?;
-    Ok(Arc::new(Trapezoid {
-        length_s,
-        rise_s,
-        fall_s: length_s - rise_s,
-    }))
+    Ok(Arc::new(Trapezoid { length_s, rise_s, fall_s: length_s - rise_s }))
 }
 
 impl Curve for Trapezoid {
@@ -50,11 +46,7 @@ impl Curve for Trapezoid {
     }
 
     fn pieces(&self) -> Pieces {
-        let kinks_s = if self.fall_s > self.rise_s {
-            Arc::from([self.rise_s, self.fall_s])
-        } else {
-            Arc::from([self.rise_s])
-        };
+        let kinks_s = if self.fall_s > self.rise_s { Arc::from([self.rise_s, self.fall_s]) } else { Arc::from([self.rise_s]) };
         Pieces::Smooth { kinks_s }
     }
 }

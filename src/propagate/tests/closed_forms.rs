@@ -29,10 +29,7 @@ fn exact_rabi_square_pulse_by_one_exponential_any_carrier() {
         for (k, t) in [0.37 * length, length].into_iter().enumerate() {
             let error = (solved.recorded.amplitudes[k][1].norm_sqr() - rabi_formula(rabi, detuning, t)).abs();
             // The rounding of the carrier in rad/s times the length is all that is lost.
-            assert!(
-                error < 4e-15 + 1e-16 * RAD_PER_TURN * carrier * length,
-                "carrier {carrier}: {error:e}"
-            );
+            assert!(error < 4e-15 + 1e-16 * RAD_PER_TURN * carrier * length, "carrier {carrier}: {error:e}");
             assert!(error <= solved.error_figure, "carrier {carrier}: {error:e}");
         }
     }
@@ -41,22 +38,10 @@ fn exact_rabi_square_pulse_by_one_exponential_any_carrier() {
 #[test]
 fn exact_tiny_population_keeps_its_relative_accuracy() {
     let hop = sparse(2, &[(1, 0, 1.0)]);
-    let solved = solve(
-        &problem(
-            &diagonal(&[0.0, 3.0]),
-            vec![hop],
-            vec![(2e-9, vec![term(0, 0.0, 0.0, flat(0.5))], vec![])],
-        ),
-        1e-12,
-        None,
-    );
+    let solved = solve(&problem(&diagonal(&[0.0, 3.0]), vec![hop], vec![(2e-9, vec![term(0, 0.0, 0.0, flat(0.5))], vec![])]), 1e-12, None);
     // sin^2(2 pi sqrt(0.5^2+1.5^2) 2 ns) 0.5^2/(0.5^2+1.5^2), mpmath 30 digits (acceptance case of the tiny kick).
     let expected = 3.947841760435743e-17;
-    assert!(
-        (solved.recorded.population(1) / expected - 1.0).abs() < 2e-15,
-        "{}",
-        solved.recorded.population(1)
-    );
+    assert!((solved.recorded.population(1) / expected - 1.0).abs() < 2e-15, "{}", solved.recorded.population(1));
     assert!(solved.reached);
 }
 
@@ -90,20 +75,13 @@ fn exact_rosen_zener_by_every_method() {
     let area_half_turns = 0.25 * RAD_PER_TURN * rabi * width;
     let expected =
         crate::units::sin_cos_turns(area_half_turns).0.powi(2) / (0.25 * RAD_PER_TURN * RAD_PER_TURN * detuning * width).cosh().powi(2);
-    for (method, accuracy) in [
-        (None, 1e-11),
-        (Some(Method::Smooth), 1e-11),
-        (Some(Method::Geometric), 1e-11),
-        (Some(Method::ConstantSteps), 1e-8),
-    ] {
+    for (method, accuracy) in
+        [(None, 1e-11), (Some(Method::Smooth), 1e-11), (Some(Method::Geometric), 1e-11), (Some(Method::ConstantSteps), 1e-8)]
+    {
         let solved = solved_by(method, accuracy);
         let error = (solved.recorded.population(1) - expected).abs();
         assert!(solved.reached, "{method:?}: {:e}", solved.error_figure);
-        assert!(
-            error <= solved.error_figure + 1e-14,
-            "{method:?}: {error:e} beyond {:e}",
-            solved.error_figure
-        );
+        assert!(error <= solved.error_figure + 1e-14, "{method:?}: {error:e} beyond {:e}", solved.error_figure);
     }
 }
 
@@ -125,14 +103,8 @@ fn exact_time_spent_in_a_resonant_pulse() {
     // Integral of sin^2(pi R t): T/2 - sin(2 pi R T)/(4 pi R).
     let expected = 0.5 * length - crate::units::sin_cos_turns(rabi * length).0 / (2.0 * RAD_PER_TURN * rabi);
     for (method, within) in [(Method::ConstantSteps, 1e-14), (Method::Smooth, 1e-14)] {
-        let demand = Demand {
-            propagator: false,
-            time_in: true,
-        };
-        let kept = || Kept {
-            scale_s: length,
-            ..Kept::default()
-        };
+        let demand = Demand { propagator: false, time_in: true };
+        let kept = || Kept { scale_s: length, ..Kept::default() };
         let solved = crate::propagate::solve(&resonant, &demand, &asked(1e-10, Some(method)), kept);
         let found = solved.recorded.time_in_s[1][1];
         assert!((found - expected).abs() < within * 1e-6, "{method:?}: {found:e} {expected:e}");
@@ -141,20 +113,9 @@ fn exact_time_spent_in_a_resonant_pulse() {
     }
     // The same pulse with its height as a smooth envelope goes through the quadrature.
     let smooth = driven(3e9, 3e9, shaped(rabi / 2.0, |_| 1.0), length);
-    let kept = || Kept {
-        scale_s: length,
-        ..Kept::default()
-    };
+    let kept = || Kept { scale_s: length, ..Kept::default() };
     for wish in [None, Some(Method::Geometric)] {
-        let solved = crate::propagate::solve(
-            &smooth,
-            &Demand {
-                propagator: true,
-                time_in: true,
-            },
-            &asked(1e-10, wish),
-            kept,
-        );
+        let solved = crate::propagate::solve(&smooth, &Demand { propagator: true, time_in: true }, &asked(1e-10, wish), kept);
         assert_eq!(solved.method, Method::Smooth);
         assert!((solved.recorded.time_in_s[1][1] - expected).abs() / length <= solved.error_figure);
         assert!(solved.reached);
@@ -163,21 +124,9 @@ fn exact_time_spent_in_a_resonant_pulse() {
 
 #[test]
 fn cross_check_agrees_or_says_why_not() {
-    let ask = Asked {
-        accuracy: 1e-9,
-        method: None,
-        cross_check: true,
-    };
+    let ask = Asked { accuracy: 1e-9, method: None, cross_check: true };
     let pulse = driven(50e6, 48e6, shaped(3e6, |t| (RAD_PER_TURN * t / 2e-6).sin().powi(2)), 1e-6);
-    let solved = crate::propagate::solve(
-        &pulse,
-        &Demand {
-            propagator: true,
-            time_in: false,
-        },
-        &ask,
-        Kept::default,
-    );
+    let solved = crate::propagate::solve(&pulse, &Demand { propagator: true, time_in: false }, &ask, Kept::default);
     match solved.cross_check {
         Some(CrossCheck::Done { difference, .. }) => assert!(difference < 1e-9, "{difference:e}"),
         other => panic!("{other:?}"),

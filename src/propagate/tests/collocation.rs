@@ -30,12 +30,7 @@ fn gauss() -> ([f64; NODES], [f64; NODES]) {
 
 /// Integrals of the Lagrange polynomials from 0 to each node.
 fn table(nodes: &[f64; NODES], weights: &[f64; NODES]) -> [[f64; NODES]; NODES] {
-    let lagrange = |j: usize, x: f64| {
-        (0..NODES)
-            .filter(|m| *m != j)
-            .map(|m| (x - nodes[m]) / (nodes[j] - nodes[m]))
-            .product::<f64>()
-    };
+    let lagrange = |j: usize, x: f64| (0..NODES).filter(|m| *m != j).map(|m| (x - nodes[m]) / (nodes[j] - nodes[m])).product::<f64>();
     let mut a = [[0.0; NODES]; NODES];
     for i in 0..NODES {
         for (j, entry) in a[i].iter_mut().enumerate() {
@@ -46,21 +41,16 @@ fn table(nodes: &[f64; NODES], weights: &[f64; NODES]) -> [[f64; NODES]; NODES] 
 }
 
 /// Shows every moment to `kept`, in steps through which H and its turning go by at most `most_rad`.
-pub fn solve(problem: &Problem, most_rad: f64, kept: &mut Kept) {
+pub fn solve(problem: &Problem, most_rad: f64, timed: bool, kept: &mut Kept) {
     let (nodes, weights) = gauss();
     let a = table(&nodes, &weights);
     let n = problem.dim();
     let mut psi = problem.start.clone();
     let mut next = 0;
+    let mut spent = vec![0.0; n];
     for (index, segment) in problem.segments.iter().enumerate() {
-        let turning = problem
-            .terms_of(segment)
-            .iter()
-            .map(|term| rad_s(term.turns_hz.abs()))
-            .fold(0.0, f64::max);
-        let size = (0..=20)
-            .map(|i| problem.hamiltonian(segment, segment.length_s * i as f64 / 20.0).norm())
-            .fold(0.0, f64::max);
+        let turning = problem.terms_of(segment).iter().map(|term| rad_s(term.turns_hz.abs())).fold(0.0, f64::max);
+        let size = (0..=20).map(|i| problem.hamiltonian(segment, segment.length_s * i as f64 / 20.0).norm()).fold(0.0, f64::max);
         let mut tau = 0.0;
         loop {
             let here = next < problem.moments.len() && problem.moments[next].segment == index;
@@ -74,22 +64,31 @@ pub fn solve(problem: &Problem, most_rad: f64, kept: &mut Kept) {
                 let mut right = DMatrix::<Complex64>::zeros(n * NODES, 1);
                 for i in 0..NODES {
                     let slope = problem.hamiltonian(segment, at + nodes[i] * h) * Complex64::new(0.0, -1.0);
-                    for j in 0..NODES {
+                    for (j, weight) in a[i].iter().enumerate() {
                         let mut block = system.view_mut((i * n, j * n), (n, n));
-                        block -= &slope * re(h * a[i][j]);
+                        block -= &slope * re(h * weight);
                     }
                     right.view_mut((i * n, 0), (n, 1)).copy_from(&(&slope * &psi));
                 }
                 let k = system.lu().solve(&right).expect("close to the identity");
                 for i in 0..NODES {
-                    psi += k.view((i * n, 0), (n, 1)) * re(h * weights[i]);
+                    let mut inner = psi.clone();
+                    for (j, weight) in a[i].iter().enumerate() {
+                        inner += k.view((j * n, 0), (n, 1)) * re(h * weight);
+                    }
+                    for (time, amplitude) in spent.iter_mut().zip(inner.iter()) {
+                        *time += h * weights[i] * amplitude.norm_sqr();
+                    }
+                }
+                for (i, weight) in weights.iter().enumerate() {
+                    psi += k.view((i * n, 0), (n, 1)) * re(h * weight);
                 }
             }
             tau = stop;
             if !here {
                 break;
             }
-            kept.see(next, &psi, &[]);
+            kept.see(next, &psi, if timed { &spent } else { &[] });
             next += 1;
         }
     }

@@ -81,11 +81,7 @@ pub fn re(x: f64) -> Complex64 {
 
 /// `peak_hz` times a shape of the time in the segment.
 pub fn shaped(peak_hz: f64, shape: impl Fn(f64) -> f64 + Send + Sync + 'static) -> Envelope {
-    Envelope::Smooth {
-        shape: Arc::new(Shape(Box::new(move |t| re(shape(t))))),
-        since_s: 0.0,
-        scale: re(rad_s(peak_hz)),
-    }
+    Envelope::Smooth { shape: Arc::new(Shape(Box::new(move |t| re(shape(t))))), since_s: 0.0, scale: re(rad_s(peak_hz)) }
 }
 
 pub fn flat(hz: f64) -> Envelope {
@@ -94,12 +90,7 @@ pub fn flat(hz: f64) -> Envelope {
 
 /// A term of one segment under construction.
 pub fn term(matrix: usize, turns_hz: f64, phase_turns: f64, envelope: Envelope) -> Term {
-    Term {
-        matrix,
-        turns_hz,
-        phase_turns,
-        envelope,
-    }
+    Term { matrix, turns_hz, phase_turns, envelope, chirps: Vec::new() }
 }
 
 /// Builds a problem from matrices in Hz and (length, terms, offsets of moments) of each segment; the end is recorded too.
@@ -119,24 +110,12 @@ pub fn problem(statics_hz: &Matrix, matrices: Vec<Matrix>, segments: Vec<(f64, V
     for (index, (length_s, terms, offsets)) in segments.into_iter().enumerate() {
         let from = built.terms.len();
         built.terms.extend(terms);
-        built.segments.push(Segment {
-            start,
-            length_s,
-            terms: from..built.terms.len(),
-        });
+        built.segments.push(Segment { start, length_s, terms: from..built.terms.len() });
         for offset_s in offsets {
-            built.moments.push(Moment {
-                segment: index,
-                offset_s,
-                time_s: start.after(offset_s).seconds(),
-            });
+            built.moments.push(Moment { segment: index, offset_s, time_s: start.after(offset_s).seconds() });
         }
         if index + 1 == count {
-            built.moments.push(Moment {
-                segment: index,
-                offset_s: length_s,
-                time_s: start.after(length_s).seconds(),
-            });
+            built.moments.push(Moment { segment: index, offset_s: length_s, time_s: start.after(length_s).seconds() });
         }
         start = start.after(length_s);
     }
@@ -153,18 +132,11 @@ pub fn sparse(dim: usize, entries: &[(usize, usize, f64)]) -> Matrix {
 }
 
 pub fn diagonal(values: &[f64]) -> Matrix {
-    sparse(
-        values.len(),
-        &values.iter().enumerate().map(|(j, v)| (j, j, *v)).collect::<Vec<_>>(),
-    )
+    sparse(values.len(), &values.iter().enumerate().map(|(j, v)| (j, j, *v)).collect::<Vec<_>>())
 }
 
 pub fn asked(accuracy: f64, method: Option<Method>) -> Asked {
-    Asked {
-        accuracy,
-        method,
-        cross_check: false,
-    }
+    Asked { accuracy, method, cross_check: false }
 }
 
 /// Solves for populations and amplitudes.
@@ -175,21 +147,9 @@ pub fn solve(problem: &Problem, accuracy: f64, method: Option<Method>) -> super:
 /// The last state of a run with equal steps doubled so many times.
 pub fn at_doublings(problem: &Problem, method: Method, doublings: u32) -> Vec<Complex64> {
     let mut kept = Kept::default();
-    let mut pictures = super::picture::Pictures::new(problem);
-    let fineness = super::run::Fineness {
-        tolerance: 1e-10,
-        pieces: 1,
-        doublings,
-    };
-    super::run::run(
-        problem,
-        &Demand::default(),
-        method,
-        &fineness,
-        problem.length_s(),
-        &mut pictures,
-        1e12,
-        &mut kept,
-    );
+    let pictures = super::picture::Pictures::new(problem);
+    let mut route = super::run::Route { problem, demand: Demand::default(), method, changing_s: problem.length_s(), pictures };
+    let fineness = super::run::Fineness { tolerance: 1e-10, pieces: 1, doublings };
+    super::run::run(&mut route, &fineness, 1e12, &mut kept);
     kept.last().to_vec()
 }

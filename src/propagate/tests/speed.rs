@@ -3,7 +3,6 @@
 use std::time::Instant as Clock;
 
 use super::*;
-use crate::units::RAD_PER_TURN;
 
 /// A million slices of 1 ns with four generators.
 fn repeated_slices() -> Problem {
@@ -26,19 +25,13 @@ fn repeated_slices() -> Problem {
 fn sampled_waveform(dim: usize) -> Problem {
     let levels: Vec<f64> = (0..dim).map(|j| 1e6 * j as f64).collect();
     let hop = sparse(dim, &(1..dim).map(|j| (j, j - 1, 1.0)).collect::<Vec<_>>());
-    let segments = (0..1_000_000)
-        .map(|k| (1e-9, vec![term(0, 0.0, 0.0, flat(1e6 * (1.0 + 1e-6 * f64::from(k))))], vec![]))
-        .collect();
+    let segments = (0..1_000_000).map(|k| (1e-9, vec![term(0, 0.0, 0.0, flat(1e6 * (1.0 + 1e-6 * f64::from(k))))], vec![])).collect();
     problem(&diagonal(&levels), vec![hop], segments)
 }
 
 fn resonant_rows(rows: usize) -> Problem {
     let offsets = (0..rows).map(|k| 1e-6 * k as f64 / rows as f64).collect();
-    problem(
-        &diagonal(&[0.0, 5e9]),
-        vec![sparse(2, &[(1, 0, 1.0)])],
-        vec![(1e-6, vec![term(0, 5e9, 0.0, flat(1e6))], offsets)],
-    )
+    problem(&diagonal(&[0.0, 5e9]), vec![sparse(2, &[(1, 0, 1.0)])], vec![(1e-6, vec![term(0, 5e9, 0.0, flat(1e6))], offsets)])
 }
 
 /// Three levels, linear drive at 5 GHz for 100 ns, raised cosine, everything kept.
@@ -46,26 +39,15 @@ fn lab_pulse() -> Problem {
     let length = 100e-9;
     let hump = move |t: f64| crate::units::sin_cos_turns(0.5 * t / length).0.powi(2);
     let x = sparse(3, &[(1, 0, 1.0), (0, 1, 1.0), (2, 1, 1.41), (1, 2, 1.41)]);
-    problem(
-        &diagonal(&[0.0, 5e9, 9.7e9]),
-        vec![x],
-        vec![(length, vec![term(0, 5e9, 0.0, shaped(5e6, hump))], vec![])],
-    )
+    problem(&diagonal(&[0.0, 5e9, 9.7e9]), vec![x], vec![(length, vec![term(0, 5e9, 0.0, shaped(5e6, hump))], vec![])])
 }
 
 /// Two delayed Gaussian pulses, 900 MHz carriers, 3.3 us.
 fn delayed_pulses() -> Problem {
     let bell = |at: f64| move |t: f64| (-((t - at) / 0.5e-6).powi(2)).exp();
     let (pump, dump) = (sparse(3, &[(2, 0, 1.0)]), sparse(3, &[(2, 1, 1.0)]));
-    let terms = vec![
-        term(0, 920e6, 0.0, shaped(13e6, bell(1.95e-6))),
-        term(1, 770.02e6, 0.0, shaped(12e6, bell(1.35e-6))),
-    ];
-    problem(
-        &diagonal(&[0.0, 150e6, 900e6]),
-        vec![pump, dump],
-        vec![(3.3e-6, terms, vec![1.7e-6])],
-    )
+    let terms = vec![term(0, 920e6, 0.0, shaped(13e6, bell(1.95e-6))), term(1, 770.02e6, 0.0, shaped(12e6, bell(1.35e-6)))];
+    problem(&diagonal(&[0.0, 150e6, 900e6]), vec![pump, dump], vec![(3.3e-6, terms, vec![1.7e-6])])
 }
 
 /// A slow sweep of two strongly coupled levels: large swing, slowly changing H.
@@ -73,6 +55,15 @@ fn slow_sweep(swing_hz: f64) -> Problem {
     let statics = sparse(2, &[(0, 1, swing_hz), (1, 0, swing_hz)]);
     let sweep = term(0, 0.0, 0.0, shaped(swing_hz, |t| 2.0 * t - 1.0));
     problem(&statics, vec![diagonal(&[1.0, -1.0])], vec![(1.0, vec![sweep], vec![])])
+}
+
+/// A linear drive up a harmonic ladder, raised cosine of 2 us.
+fn ladder_pulse(dim: usize) -> Problem {
+    let length = 2e-6;
+    let levels: Vec<f64> = (0..dim).map(|j| 36e6 * j as f64).collect();
+    let up = sparse(dim, &(1..dim).map(|j| (j, j - 1, (j as f64).sqrt())).collect::<Vec<_>>());
+    let hump = shaped(0.35e6, move |t| crate::units::sin_cos_turns(0.5 * t / length).0.powi(2));
+    problem(&diagonal(&levels), vec![&up + up.transpose()], vec![(length, vec![term(0, 36e6, 0.0, hump)], vec![1e-6])])
 }
 
 #[test]
@@ -83,24 +74,16 @@ fn exact_million_slices_keep_to_their_figure() {
     let solved = solve(&case, 1e-8, None);
     // 2 x 2 closed forms, their product raised to the power 100000 at 50 digits: tests/reference/slices.py.
     let error = (solved.recorded.population(1) - super::reference::HUNDRED_THOUSAND_REPEATS).abs();
-    assert!(
-        error <= solved.error_figure && solved.error_figure < 1e-9,
-        "{error:e} {:e}",
-        solved.error_figure
-    );
+    assert!(error <= solved.error_figure && solved.error_figure < 1e-9, "{error:e} {:e}", solved.error_figure);
 }
 
 #[test]
 fn ref_steps_of_long_pulses_are_few() {
     let delayed = solve(&delayed_pulses(), 1e-10, None);
-    assert!(
-        delayed.reached && delayed.steps < 4000,
-        "{:?} {:?}",
-        delayed.method,
-        delayed.resolutions
-    );
+    assert_eq!(delayed.method, Method::Smooth, "{}", delayed.reason);
+    assert!(delayed.reached && delayed.steps < 1100, "{:?} {:?}", delayed.method, delayed.resolutions);
     let lab = solve(&lab_pulse(), 1e-8, None);
-    assert!(lab.reached && lab.steps < 6000, "{:?} {:?}", lab.method, lab.resolutions);
+    assert!(lab.reached && lab.steps < 7000, "{:?} {:?}", lab.method, lab.resolutions);
     let sweep = solve(&slow_sweep(300.0), 1e-8, None);
     assert!(sweep.reached && sweep.method == Method::Geometric, "{}", sweep.reason);
 }
@@ -111,10 +94,8 @@ fn ref_steps_of_long_pulses_are_few() {
 fn timings() {
     let say = |name: &str, case: &Problem, accuracy: f64, method: Option<Method>| {
         let clock = Clock::now();
-        let solved = super::super::solve(case, &Demand::default(), &asked(accuracy, method), || Kept {
-            populations_only: true,
-            ..Kept::default()
-        });
+        let solved =
+            super::super::solve(case, &Demand::default(), &asked(accuracy, method), || Kept { populations_only: true, ..Kept::default() });
         println!(
             "{name}: {:.3e} s, {} ({}), figure {:.1e}, floor {:.1e}, {} / {}, {} products",
             clock.elapsed().as_secs_f64(),
@@ -133,6 +114,10 @@ fn timings() {
     say("lab pulse 1e-8 geometric", &lab_pulse(), 1e-8, Some(Method::Geometric));
     say("delayed pulses 1e-10", &delayed_pulses(), 1e-10, None);
     say("delayed pulses 1e-10 geometric", &delayed_pulses(), 1e-10, Some(Method::Geometric));
+    for dim in [4, 16, 40] {
+        say(&format!("linear ladder pulse, {dim} levels"), &ladder_pulse(dim), 1e-8, None);
+        say(&format!("linear ladder pulse, {dim} levels"), &ladder_pulse(dim), 1e-8, Some(Method::Smooth));
+    }
     for swing in [3.0, 10.0, 30.0, 300.0, 3000.0] {
         for method in [Method::Smooth, Method::Geometric] {
             say(&format!("slow sweep {swing} turns"), &slow_sweep(swing), 1e-8, Some(method));
@@ -141,5 +126,4 @@ fn timings() {
     say("million slices, four kinds", &repeated_slices(), 1e-8, None);
     say("million different slices, 2 levels", &sampled_waveform(2), 1e-8, None);
     say("million different slices, 3 levels", &sampled_waveform(3), 1e-8, None);
-    let _ = RAD_PER_TURN;
 }

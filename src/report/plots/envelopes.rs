@@ -61,22 +61,14 @@ pub fn envelopes(figure: &EnvelopesFigure) -> Result<Drawn, PlotError> {
     for pulse in &figure.pulses {
         check_pulse(pulse)?;
     }
-    let mut pulses: Vec<&EnvelopeCurve> = figure
-        .pulses
-        .iter()
-        .filter(|pulse| drawable(pulse.start_s) && !pulse.time_s.is_empty())
-        .collect();
+    let mut pulses: Vec<&EnvelopeCurve> =
+        figure.pulses.iter().filter(|pulse| drawable(pulse.start_s) && !pulse.time_s.is_empty()).collect();
     pulses.sort_by(|a, b| a.start_s.total_cmp(&b.start_s));
     if pulses.is_empty() {
-        return Err(PlotError::Nothing {
-            title: figure.title.clone(),
-        });
+        return Err(PlotError::Nothing { title: figure.title.clone() });
     }
     let spans: Vec<Span> = pulses.iter().map(|pulse| span(pulse)).collect();
-    let last = spans
-        .iter()
-        .map(|span| span.end)
-        .fold(if drawable(figure.end_s) { figure.end_s } else { 0.0 }, f64::max);
+    let last = spans.iter().map(|span| span.end).fold(if drawable(figure.end_s) { figure.end_s } else { 0.0 }, f64::max);
     let low = spans[0].start.min(0.0);
 
     let drives = drives(figure);
@@ -84,10 +76,7 @@ pub fn envelopes(figure: &EnvelopesFigure) -> Result<Drawn, PlotError> {
     let right = right_edge(names_of(&pulses), NAME_LIMIT);
     let draft = view(&spans, (low, last), 130.0, right);
     let drafted = rows(&pulses, &drives, &draft);
-    let width = drafted
-        .iter()
-        .map(|row| row.vertical.clone().between(0.0, 300.0).number_width())
-        .fold(60.0, f64::max);
+    let width = drafted.iter().map(|row| row.vertical.clone().between(0.0, 300.0).number_width()).fold(60.0, f64::max);
     let view = view(&spans, (low, last), EDGE + 14.0 + width, right);
     let mut rows = rows(&pulses, &drives, &view);
 
@@ -113,10 +102,7 @@ fn check_pulse(pulse: &EnvelopeCurve) -> Result<(), PlotError> {
     let points = pulse.time_s.len();
     check_axis(&name, &pulse.time_s)?;
     check_length(&name, pulse.in_phase_hz.len(), points)?;
-    for (part, values) in [
-        ("quadrature", &pulse.quadrature_hz),
-        ("instantaneous frequency", &pulse.instantaneous_hz),
-    ] {
+    for (part, values) in [("quadrature", &pulse.quadrature_hz), ("instantaneous frequency", &pulse.instantaneous_hz)] {
         if let Some(values) = values {
             check_length(&format!("{name}, {part}"), values.len(), points)?;
         }
@@ -126,12 +112,7 @@ fn check_pulse(pulse: &EnvelopeCurve) -> Result<(), PlotError> {
 
 fn drives(figure: &EnvelopesFigure) -> Vec<&str> {
     let mut seen = std::collections::HashSet::new();
-    figure
-        .pulses
-        .iter()
-        .map(|pulse| pulse.drive.as_str())
-        .filter(|drive| seen.insert(*drive))
-        .collect()
+    figure.pulses.iter().map(|pulse| pulse.drive.as_str()).filter(|drive| seen.insert(*drive)).collect()
 }
 
 fn names_of<'a>(pulses: &[&EnvelopeCurve]) -> Vec<&'a str> {
@@ -147,18 +128,9 @@ fn span(pulse: &EnvelopeCurve) -> Span {
         let drawn = values.iter().copied().filter(|value| drawable(*value));
         [drawn.clone().sum::<f64>(), drawn.map(f64::abs).fold(0.0, f64::max)]
     };
-    let parts = [
-        Some(&pulse.in_phase_hz),
-        pulse.quadrature_hz.as_ref(),
-        pulse.instantaneous_hz.as_ref(),
-    ];
+    let parts = [Some(&pulse.in_phase_hz), pulse.quadrature_hz.as_ref(), pulse.instantaneous_hz.as_ref()];
     let shape = parts.into_iter().flatten().flat_map(|values| sums(values)).collect();
-    Span {
-        start: pulse.start_s,
-        end: pulse.end_s(),
-        names: (pulse.drive.clone(), pulse.envelope.clone()),
-        shape,
-    }
+    Span { start: pulse.start_s, end: pulse.end_s(), names: (pulse.drive.clone(), pulse.envelope.clone()), shape }
 }
 
 /// One plot area across all windows.
@@ -180,9 +152,8 @@ struct Timing {
 fn rows(pulses: &[&EnvelopeCurve], drives: &[&str], view: &View) -> Vec<Row> {
     let mut rows = Vec::new();
     let inside: Vec<(usize, &EnvelopeCurve)> = pulses.iter().filter_map(|pulse| Some((holder(view, pulse)?, *pulse))).collect();
-    let parts = inside
-        .iter()
-        .map(|(_, pulse)| 1 + usize::from(pulse.quadrature_hz.is_some()) + usize::from(pulse.instantaneous_hz.is_some()));
+    let parts =
+        inside.iter().map(|(_, pulse)| 1 + usize::from(pulse.quadrature_hz.is_some()) + usize::from(pulse.instantaneous_hz.is_some()));
     let budget = parts.sum();
     for drive in drives.iter().take(ROWS) {
         let mine: Vec<(usize, &EnvelopeCurve)> = inside.iter().filter(|(_, pulse)| pulse.drive == *drive).copied().collect();
@@ -196,9 +167,7 @@ fn rows(pulses: &[&EnvelopeCurve], drives: &[&str], view: &View) -> Vec<Row> {
 
 /// The window that shows a pulse.
 fn holder(view: &View, pulse: &EnvelopeCurve) -> Option<usize> {
-    view.windows
-        .iter()
-        .position(|window| window.holds(pulse.start_s) && window.holds(pulse.end_s()))
+    view.windows.iter().position(|window| window.holds(pulse.start_s) && window.holds(pulse.end_s()))
 }
 
 fn stretches(pulse: &EnvelopeCurve, values: &[f64], window: &Window, budget: usize, from_zero: bool) -> Vec<Run> {
@@ -229,103 +198,42 @@ fn size_row(drive: &str, mine: &[(usize, &EnvelopeCurve)], view: &View, budget: 
     let mut in_windows = Vec::new();
     for (index, window) in view.windows.iter().enumerate() {
         let here = || mine.iter().filter(move |(holder, _)| *holder == index).map(|pair| pair.1);
-        let runs: Vec<Run> = here()
-            .flat_map(|pulse| stretches(pulse, &pulse.in_phase_hz, window, budget, true))
-            .collect();
-        let bands = runs
-            .iter()
-            .map(|run| (run.clone(), run.iter().map(|point| (point.0, 0.0)).collect()))
-            .collect();
+        let runs: Vec<Run> = here().flat_map(|pulse| stretches(pulse, &pulse.in_phase_hz, window, budget, true)).collect();
+        let bands = runs.iter().map(|run| (run.clone(), run.iter().map(|point| (point.0, 0.0)).collect())).collect();
         let name = if quadrature { "in phase" } else { "" };
-        let mut here_curves = vec![Curve {
-            name: name.into(),
-            runs,
-            bands,
-            look: Look {
-                color: CURVES[0],
-                marker: None,
-                dash: None,
-            },
-        }];
+        let mut here_curves = vec![Curve { name: name.into(), runs, bands, look: Look { color: CURVES[0], marker: None, dash: None } }];
         if quadrature {
-            let part = |pulse: &EnvelopeCurve| {
-                pulse
-                    .quadrature_hz
-                    .as_ref()
-                    .map(|values| stretches(pulse, values, window, budget, true))
-            };
+            let part = |pulse: &EnvelopeCurve| pulse.quadrature_hz.as_ref().map(|values| stretches(pulse, values, window, budget, true));
             let runs = here().filter_map(part).flatten().collect();
-            let look = Look {
-                color: CURVES[1],
-                marker: None,
-                dash: Some((10.0, 6.0)),
-            };
-            here_curves.push(Curve {
-                name: "quadrature".into(),
-                runs,
-                bands: Vec::new(),
-                look,
-            });
+            let look = Look { color: CURVES[1], marker: None, dash: Some((10.0, 6.0)) };
+            here_curves.push(Curve { name: "quadrature".into(), runs, bands: Vec::new(), look });
         }
         in_windows.push(here_curves);
     }
     let whole = extent(in_windows.iter().flatten().flat_map(|curve| &curve.runs)).map(|(low, high)| (low.min(0.0), high.max(0.0)));
-    let what = mine
-        .iter()
-        .map(|(_, pulse)| pulse.size_label.as_str())
-        .find(|label| !label.is_empty())
-        .unwrap_or("size");
+    let what = mine.iter().map(|(_, pulse)| pulse.size_label.as_str()).find(|label| !label.is_empty()).unwrap_or("size");
     let (timings, lanes) = timings(mine, view);
     let label = format!("{}: {what}", font::fit(drive, LABEL, 500.0));
-    Row {
-        label,
-        vertical: Vertical::linear(None, whole, "Hz"),
-        curves: in_windows,
-        timings,
-        lanes,
-    }
+    Row { label, vertical: Vertical::linear(None, whole, "Hz"), curves: in_windows, timings, lanes }
 }
 
 fn sweep_row(drive: &str, mine: &[(usize, &EnvelopeCurve)], view: &View, budget: usize) -> Row {
     let mut in_windows = Vec::new();
     for (index, window) in view.windows.iter().enumerate() {
         let here = mine.iter().filter(|(holder, _)| *holder == index).map(|pair| pair.1);
-        let part = |pulse: &EnvelopeCurve| {
-            pulse
-                .instantaneous_hz
-                .as_ref()
-                .map(|values| stretches(pulse, values, window, budget, false))
-        };
+        let part = |pulse: &EnvelopeCurve| pulse.instantaneous_hz.as_ref().map(|values| stretches(pulse, values, window, budget, false));
         let runs = here.filter_map(part).flatten().collect();
-        let look = Look {
-            color: CURVES[3],
-            marker: None,
-            dash: None,
-        };
-        in_windows.push(vec![Curve {
-            name: String::new(),
-            runs,
-            bands: Vec::new(),
-            look,
-        }]);
+        let look = Look { color: CURVES[3], marker: None, dash: None };
+        in_windows.push(vec![Curve { name: String::new(), runs, bands: Vec::new(), look }]);
     }
     let whole = extent(in_windows.iter().flatten().flat_map(|curve| &curve.runs));
     let label = format!("{}: carrier sweep", font::fit(drive, LABEL, 500.0));
-    Row {
-        label,
-        vertical: Vertical::linear(None, whole, "Hz"),
-        curves: in_windows,
-        timings: Vec::new(),
-        lanes: 0,
-    }
+    Row { label, vertical: Vertical::linear(None, whole, "Hz"), curves: in_windows, timings: Vec::new(), lanes: 0 }
 }
 
 /// Where start, centre and end of each pulse lie, and as much text about them as there is room for.
 fn timings(mine: &[(usize, &EnvelopeCurve)], view: &View) -> (Vec<Timing>, usize) {
-    let (left, right) = (
-        view.windows[0].left,
-        view.windows[view.windows.len() - 1].right + if view.after.is_some() { GAP } else { 0.0 },
-    );
+    let (left, right) = (view.windows[0].left, view.windows[view.windows.len() - 1].right + if view.after.is_some() { GAP } else { 0.0 });
     // The longest form for which all pulses of the row have room; the shortest is written where it can be.
     for form in 0..FORMS {
         let mut lanes = Lanes::new(2, 16.0);
@@ -404,11 +312,7 @@ impl Row {
             scene.line(vec![(edge, top), (edge, bottom)], 1.0, REST);
         }
         if end - start > 12.0 {
-            let look = Look {
-                color: AXIS,
-                marker: None,
-                dash: Some((2.0, 5.0)),
-            };
+            let look = Look { color: AXIS, marker: None, dash: Some((2.0, 5.0)) };
             scene.curve(vec![(centre, top), (centre, bottom)], 1.4, look);
         }
         if let Some((lane, begin, text)) = &timing.text {

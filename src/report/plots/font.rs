@@ -64,10 +64,7 @@ pub fn clean(text: &str) -> String {
             letter
         }
     };
-    text.chars()
-        .filter(|letter| !matches!(letter, '\u{fffe}' | '\u{ffff}' | '\u{202a}'..='\u{202e}'))
-        .map(shown)
-        .collect()
+    text.chars().filter(|letter| !matches!(letter, '\u{fffe}' | '\u{ffff}' | '\u{202a}'..='\u{202e}')).map(shown).collect()
 }
 
 /// `text` cleaned and cut with "…" to be at most `limit` pixels wide.
@@ -92,11 +89,7 @@ pub fn two_lines(text: &str, size: f64, limit: f64) -> Vec<String> {
     let text = clean(text.trim());
     let mut first = String::new();
     for word in text.split_whitespace() {
-        let longer = if first.is_empty() {
-            word.to_string()
-        } else {
-            format!("{first} {word}")
-        };
+        let longer = if first.is_empty() { word.to_string() } else { format!("{first} {word}") };
         if longer.len() > 2000 || width(&longer, size) > limit {
             break;
         }

@@ -78,10 +78,7 @@ pub fn fingerprint(scene: &mut Scene, text: &str) {
 
 /// Right edge of the plot that leaves room for the widest of the names (each at most `limit` pixels) behind its key.
 pub fn right_edge<'a>(names: impl IntoIterator<Item = &'a str>, limit: f64) -> f64 {
-    let widest = names
-        .into_iter()
-        .map(|name| font::width(&font::fit(name, LABEL, limit), LABEL))
-        .fold(0.0, f64::max);
+    let widest = names.into_iter().map(|name| font::width(&font::fit(name, LABEL, limit), LABEL)).fold(0.0, f64::max);
     let key = if widest > 0.0 { KEY } else { 30.0 };
     WIDTH - EDGE - widest - key
 }

@@ -25,10 +25,7 @@ pub struct Placed {
 impl Placed {
     /// Writes the name about the height `middle`, on white: no line of a neighbour must run through its letters.
     pub fn draw(&self, scene: &mut Scene, middle: f64) {
-        let corners = (
-            (self.start - 3.0, middle - LINE / 2.0),
-            (self.start + font::width(&self.text, TICK) + 3.0, middle + LINE / 2.0),
-        );
+        let corners = ((self.start - 3.0, middle - LINE / 2.0), (self.start + font::width(&self.text, TICK) + 3.0, middle + LINE / 2.0));
         scene.rectangle(corners.0, corners.1, (255, 255, 255), 1.0);
         scene.text(&self.text, (self.start, middle), TICK, SOFT_INK, Anchor::Start);
     }
@@ -71,10 +68,7 @@ impl Marks {
         let ticks = in_lanes(marks, windows, 3);
         let named = ticks.iter().filter_map(|tick| tick.name.as_ref());
         let lanes = named.clone().map(|name| name.lane + 1).max().unwrap_or(0);
-        let inside = marks
-            .iter()
-            .filter(|mark| windows.iter().any(|window| window.holds(mark.1)))
-            .count();
+        let inside = marks.iter().filter(|mark| windows.iter().any(|window| window.holds(mark.1))).count();
         let unnamed = inside - named.count();
         Marks { ticks, lanes, unnamed }
     }
@@ -90,11 +84,7 @@ impl Marks {
     /// Faint upright lines at the marks.
     pub fn guides(&self, scene: &mut Scene, top: f64, bottom: f64) {
         for tick in &self.ticks {
-            let dotted = Look {
-                color: REST,
-                marker: None,
-                dash: Some((2.0, 5.0)),
-            };
+            let dotted = Look { color: REST, marker: None, dash: Some((2.0, 5.0)) };
             scene.curve(vec![(tick.x, top), (tick.x, bottom)], 1.4, dotted);
         }
     }

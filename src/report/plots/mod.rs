@@ -71,10 +71,7 @@ impl fmt::Display for PlotError {
                 write!(out, "\"{column}\" has {found} values, but its axis has {expected} points")
             }
             PlotError::Order { axis, index } => {
-                write!(
-                    out,
-                    "the axis of \"{axis}\" must hold finite, not decreasing values; point {index} (counted from 0) does not"
-                )
+                write!(out, "the axis of \"{axis}\" must hold finite, not decreasing values; point {index} (counted from 0) does not")
             }
             PlotError::Encoding { reason } => write!(out, "the figure could not be encoded: {reason}"),
         }

@@ -23,12 +23,7 @@ fn text_boxes(svg: &str) -> (f64, f64, Vec<TextBox>) {
     for piece in svg.split("<text").skip(1) {
         let (tag, rest) = piece.split_once('>').unwrap();
         let escaped = rest[..rest.find("</text>").unwrap()].trim_matches('\n');
-        let text = escaped
-            .replace("&lt;", "<")
-            .replace("&gt;", ">")
-            .replace("&quot;", "\"")
-            .replace("&apos;", "'")
-            .replace("&amp;", "&");
+        let text = escaped.replace("&lt;", "<").replace("&gt;", ">").replace("&quot;", "\"").replace("&apos;", "'").replace("&amp;", "&");
         let size = number(attribute(tag, "font-size")) / per_pixel;
         let (x, y) = (number(attribute(tag, "x")) / per_pixel, number(attribute(tag, "y")) / per_pixel);
         assert_eq!(attribute(tag, "dy"), "0.5ex");
@@ -47,20 +42,13 @@ fn text_boxes(svg: &str) -> (f64, f64, Vec<TextBox>) {
 /// Checks a drawing and gives its texts.
 fn checked(outcome: Result<Drawn, PlotError>) -> Vec<String> {
     let drawn = outcome.unwrap_or_else(|error| panic!("{error}"));
-    assert!(
-        drawn.png.starts_with(b"\x89PNG") && drawn.png.len() < 1_000_000,
-        "png of {}",
-        drawn.png.len()
-    );
+    assert!(drawn.png.starts_with(b"\x89PNG") && drawn.png.len() < 1_000_000, "png of {}", drawn.png.len());
     assert!(drawn.svg.len() < 1_000_000, "svg of {}", drawn.svg.len());
     assert!(!drawn.svg.contains("NaN") && !drawn.svg.contains("inf"));
     assert!(drawn.svg.chars().all(|letter| letter == '\n' || !letter.is_control()));
     let (width, height, boxes) = text_boxes(&drawn.svg);
     for (index, (text, left, right, top, bottom)) in boxes.iter().enumerate() {
-        assert!(
-            *left >= 0.0 && *right <= width && *top >= 0.0 && *bottom <= height,
-            "\"{text}\" is cut: {left} {right} {top} {bottom}"
-        );
+        assert!(*left >= 0.0 && *right <= width && *top >= 0.0 && *bottom <= height, "\"{text}\" is cut: {left} {right} {top} {bottom}");
         for (other, other_left, other_right, other_top, other_bottom) in &boxes[..index] {
             let apart = right <= other_left || other_right <= left || bottom <= other_top || other_bottom <= top;
             assert!(apart, "\"{text}\" ({left} {top}) overlaps \"{other}\" ({other_left} {other_top})");
@@ -70,29 +58,15 @@ fn checked(outcome: Result<Drawn, PlotError>) -> Vec<String> {
 }
 
 fn series(name: &str, values: Vec<f64>) -> Series {
-    Series {
-        name: name.into(),
-        values,
-        band: None,
-    }
+    Series { name: name.into(), values, band: None }
 }
 
 fn panel(series: Vec<Series>, range: Option<(f64, f64)>) -> Panel {
-    Panel {
-        y_label: "population".into(),
-        unit: String::new(),
-        series,
-        range,
-    }
+    Panel { y_label: "population".into(), unit: String::new(), series, range }
 }
 
 fn bar(drive: &str, label: &str, start_s: f64, end_s: f64) -> PulseBar {
-    PulseBar {
-        drive: drive.into(),
-        label: label.into(),
-        start_s,
-        end_s,
-    }
+    PulseBar { drive: drive.into(), label: label.into(), start_s, end_s }
 }
 
 fn times(count: usize, end: f64) -> Vec<f64> {
@@ -100,15 +74,7 @@ fn times(count: usize, end: f64) -> Vec<f64> {
 }
 
 fn figure(time_s: Vec<f64>, panels: Vec<Panel>, end_s: f64) -> TracesFigure {
-    TracesFigure {
-        title: "Title".into(),
-        fingerprint: "3f9a12c4".into(),
-        time_s,
-        panels,
-        pulses: vec![],
-        marks: vec![],
-        end_s,
-    }
+    TracesFigure { title: "Title".into(), fingerprint: "3f9a12c4".into(), time_s, panels, pulses: vec![], marks: vec![], end_s }
 }
 
 fn square(drive: &str, start_s: f64, length: f64) -> EnvelopeCurve {
@@ -129,13 +95,9 @@ const LONG: &str = "a level with a very long name that says which electron sits 
 #[test]
 fn exact_ten_levels_that_end_together_are_all_named() {
     let time = times(500, 1e-6);
-    let levels: Vec<Series> = (0..10)
-        .map(|level| series(&format!("|{level}⟩"), vec![if level == 3 { 1.0 } else { 0.0 }; 500]))
-        .collect();
+    let levels: Vec<Series> = (0..10).map(|level| series(&format!("|{level}⟩"), vec![if level == 3 { 1.0 } else { 0.0 }; 500])).collect();
     let mut figure = figure(time, vec![panel(levels.clone(), Some((0.0, 1.0))), panel(levels, None)], 1e-6);
-    figure.pulses = (0..4)
-        .map(|k| bar(&format!("drive {k}"), "square", 1e-7 * f64::from(k), 3e-7))
-        .collect();
+    figure.pulses = (0..4).map(|k| bar(&format!("drive {k}"), "square", 1e-7 * f64::from(k), 3e-7)).collect();
     let texts = checked(traces(&figure));
     for level in 0..10 {
         assert_eq!(texts.iter().filter(|text| **text == format!("|{level}⟩")).count(), 2);
@@ -145,11 +107,7 @@ fn exact_ten_levels_that_end_together_are_all_named() {
 #[test]
 fn exact_long_names_and_titles_are_cut_not_clipped() {
     let time = times(50, 1e-6);
-    let mut figure = figure(
-        time.clone(),
-        vec![panel(vec![series(LONG, time.clone()), series("<&\"'>\u{1}\n", time)], None)],
-        1e-6,
-    );
+    let mut figure = figure(time.clone(), vec![panel(vec![series(LONG, time.clone()), series("<&\"'>\u{1}\n", time)], None)], 1e-6);
     figure.title = LONG.repeat(4);
     figure.fingerprint = LONG.into();
     figure.panels[0].y_label = LONG.repeat(3);
@@ -176,31 +134,11 @@ fn exact_odd_values_are_drawn_where_they_can_be() {
         figure(vec![0.0], vec![panel(vec![series("one row", vec![0.5])], Some((0.0, 1.0)))], 0.0),
         figure(vec![], vec![panel(vec![series("no row", vec![])], None)], 1e-6),
         figure(vec![1e-6, 1e-6], vec![panel(vec![series("no length", vec![0.0, 1.0])], None)], nan),
-        figure(
-            times(4, 1.0),
-            vec![panel(vec![series("holes", vec![nan, 1.0, f64::INFINITY, 2.0])], Some((1.0, nan)))],
-            1.0,
-        ),
-        figure(
-            times(3, 1.0),
-            vec![panel(vec![series("flat", vec![5.123e9; 3])], None), panel(vec![], None)],
-            1.0,
-        ),
-        figure(
-            times(3, 1e-15),
-            vec![panel(vec![series("huge", vec![-1e199, 0.0, 1e199])], None)],
-            f64::INFINITY,
-        ),
-        figure(
-            times(3, 1e9),
-            vec![panel(vec![series("tiny", vec![0.0, 1e-300, 5e-324])], None)],
-            -1.0,
-        ),
-        figure(
-            vec![-2.0, -1.0],
-            vec![panel(vec![series("past", vec![1.0, 1.0 + 1e-15])], None)],
-            0.0,
-        ),
+        figure(times(4, 1.0), vec![panel(vec![series("holes", vec![nan, 1.0, f64::INFINITY, 2.0])], Some((1.0, nan)))], 1.0),
+        figure(times(3, 1.0), vec![panel(vec![series("flat", vec![5.123e9; 3])], None), panel(vec![], None)], 1.0),
+        figure(times(3, 1e-15), vec![panel(vec![series("huge", vec![-1e199, 0.0, 1e199])], None)], f64::INFINITY),
+        figure(times(3, 1e9), vec![panel(vec![series("tiny", vec![0.0, 1e-300, 5e-324])], None)], -1.0),
+        figure(vec![-2.0, -1.0], vec![panel(vec![series("past", vec![1.0, 1.0 + 1e-15])], None)], 0.0),
     ];
     for mut figure in figures {
         figure.pulses.push(bar("drive", "pulse", 0.0, nan));
@@ -214,37 +152,23 @@ fn exact_odd_values_are_drawn_where_they_can_be() {
 #[test]
 fn exact_errors_say_what_is_wrong() {
     let said = |figure: &TracesFigure| traces(figure).expect_err("cannot be drawn").to_string();
-    assert_eq!(
-        said(&figure(vec![], vec![], 0.0)),
-        "the figure \"Title\" has no finite number to draw"
-    );
+    assert_eq!(said(&figure(vec![], vec![], 0.0)), "the figure \"Title\" has no finite number to draw");
     let short = figure(vec![0.0, 1.0], vec![panel(vec![series("p", vec![1.0])], None)], 1.0);
     assert_eq!(said(&short), "\"p\" has 1 values, but its axis has 2 points");
     let back = figure(vec![0.0, 1.0, 0.5], vec![], 1.0);
-    assert_eq!(
-        said(&back),
-        "the axis of \"time\" must hold finite, not decreasing values; point 2 (counted from 0) does not"
-    );
+    assert_eq!(said(&back), "the axis of \"time\" must hold finite, not decreasing values; point 2 (counted from 0) does not");
     assert!(envelopes(&EnvelopesFigure::default()).is_err() && spectrum(&SpectrumFigure::default()).is_err());
 }
 
 #[test]
 fn exact_a_million_rows_stay_small() {
     let time = times(1_000_000, 1e-3);
-    let wave = |rate: f64| {
-        time.iter()
-            .map(|t| 0.5 + 0.4 * crate::units::sin_cos_turns(t * rate).0)
-            .collect::<Vec<_>>()
-    };
-    let mut curves: Vec<Series> = (0..8)
-        .map(|k| series(&format!("level {k}"), wave(1e6 * f64::from(k + 1))))
-        .collect();
+    let wave = |rate: f64| time.iter().map(|t| 0.5 + 0.4 * crate::units::sin_cos_turns(t * rate).0).collect::<Vec<_>>();
+    let mut curves: Vec<Series> = (0..8).map(|k| series(&format!("level {k}"), wave(1e6 * f64::from(k + 1)))).collect();
     curves[0].band = Some(vec![0.1; time.len()]);
     curves[1].values[777_777] = 1.0;
     let mut figure = figure(time, vec![panel(curves.clone(), Some((0.0, 1.0))), panel(curves, None)], 1e-3);
-    figure.pulses = (0..100_000)
-        .map(|k| bar("drive", "flip", 1e-8 * f64::from(k), 1e-8 * f64::from(k) + 4e-9))
-        .collect();
+    figure.pulses = (0..100_000).map(|k| bar("drive", "flip", 1e-8 * f64::from(k), 1e-8 * f64::from(k) + 4e-9)).collect();
     checked(traces(&figure));
 }
 
@@ -265,13 +189,7 @@ fn exact_short_pulses_beside_long_waits_can_be_seen() {
     pulses.extend((0..250).map(|k| square("microwave", 20e-3 * f64::from(k + 1), 10e-9)));
     pulses.push(square("optical", 6.0, 1e-6));
     let marks = vec![("echo".to_string(), 20e-3 + 5e-9), ("lost in a wait".to_string(), 1e-2)];
-    let figure = EnvelopesFigure {
-        title: LONG.into(),
-        fingerprint: "f00".into(),
-        pulses,
-        marks,
-        end_s: 7.0,
-    };
+    let figure = EnvelopesFigure { title: LONG.into(), fingerprint: "f00".into(), pulses, marks, end_s: 7.0 };
     let texts = checked(envelopes(&figure));
     for said in ["20 ms", "… 249 more", "ns after 20 ms", "square: 0 to 10 ns, centre 5 ns", "echo"] {
         assert!(texts.iter().any(|text| text == said), "{said} in {texts:?}");
@@ -289,11 +207,7 @@ fn exact_odd_pulses_are_drawn_where_they_can_be() {
     let mut empty = square("empty", 0.0, 1.0);
     (empty.time_s, empty.in_phase_hz) = (vec![], vec![]);
     for pulses in [vec![gaussian.clone()], vec![point.clone()], vec![gaussian, point, empty]] {
-        checked(envelopes(&EnvelopesFigure {
-            pulses,
-            end_s: f64::NAN,
-            ..EnvelopesFigure::default()
-        }));
+        checked(envelopes(&EnvelopesFigure { pulses, end_s: f64::NAN, ..EnvelopesFigure::default() }));
     }
 }
 
@@ -302,20 +216,11 @@ fn exact_spectrum_names_its_lines_and_draws_zeros_at_the_edge() {
     let offset_hz: Vec<f64> = (-500..=500).map(|k| 1e6 * f64::from(k)).collect();
     let mut amplitude_db: Vec<f64> = offset_hz.iter().map(|f| -(f / 3e7).powi(2)).collect();
     amplitude_db[3] = f64::NEG_INFINITY;
-    let pulse = |label: &str| PulseSpectrum {
-        label: label.into(),
-        offset_hz: offset_hz.clone(),
-        amplitude_db: amplitude_db.clone(),
-    };
+    let pulse = |label: &str| PulseSpectrum { label: label.into(), offset_hz: offset_hz.clone(), amplitude_db: amplitude_db.clone() };
     let mut lines: Vec<(String, f64)> = (0..40).map(|k| (format!("line {k}"), 1e6 * f64::from(k))).collect();
     lines.push(("far away".into(), 1e12));
     let pulses = (0..20).map(|k| pulse(&format!("pulse {k}"))).collect();
-    let texts = checked(spectrum(&SpectrumFigure {
-        title: "Spectra".into(),
-        fingerprint: "f00".into(),
-        pulses,
-        lines,
-    }));
+    let texts = checked(spectrum(&SpectrumFigure { title: "Spectra".into(), fingerprint: "f00".into(), pulses, lines }));
     assert!(texts.iter().any(|text| text == "line 0") && !texts.iter().any(|text| text == "far away"));
     assert!(texts.iter().any(|text| text.starts_with("… 4 more pulses")));
 }

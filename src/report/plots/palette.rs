@@ -73,11 +73,7 @@ pub struct Look {
 pub fn look(index: usize, count: usize) -> Look {
     // Past ten the markers shift by one a round, so that no pair of colour and marker comes back within a hundred curves.
     let marker = (count > 4).then(|| MARKERS[(index + index / CURVES.len()) % MARKERS.len()]);
-    Look {
-        color: CURVES[index % CURVES.len()],
-        marker,
-        dash: None,
-    }
+    Look { color: CURVES[index % CURVES.len()], marker, dash: None }
 }
 
 #[cfg(test)]
@@ -109,9 +105,7 @@ mod tests {
     fn prop_no_look_comes_twice() {
         let looks: Vec<_> = (0..100).map(|k| look(k, 100)).collect();
         for (k, one) in looks.iter().enumerate() {
-            assert!(looks[..k]
-                .iter()
-                .all(|other| other.color != one.color || other.marker != one.marker));
+            assert!(looks[..k].iter().all(|other| other.color != one.color || other.marker != one.marker));
         }
     }
 }

@@ -42,32 +42,15 @@ impl Vertical {
             let room = if given.is_some() { 0.03 } else { 0.06 } * (high - low);
             (low - room, high + room)
         };
-        Vertical {
-            low,
-            high,
-            log: false,
-            top: 0.0,
-            bottom: 1.0,
-            display: engineering(size, unit),
-        }
+        Vertical { low, high, log: false, top: 0.0, bottom: 1.0, display: engineering(size, unit) }
     }
 
     /// An axis of even decades from below `floor` to above `highest`, both above zero.
     pub fn decades(floor: f64, highest: f64, unit: &str) -> Self {
         let low = floor.log10().floor().max(-200.0);
         let high = (highest.log10() + 0.05).max(low + 1.0);
-        let display = Display {
-            exponent: 0,
-            unit: unit.to_string(),
-        };
-        Vertical {
-            low,
-            high,
-            log: true,
-            top: 0.0,
-            bottom: 1.0,
-            display,
-        }
+        let display = Display { exponent: 0, unit: unit.to_string() };
+        Vertical { low, high, log: true, top: 0.0, bottom: 1.0, display }
     }
 
     /// The axis between two pixels.
@@ -86,19 +69,12 @@ impl Vertical {
     fn marks(&self) -> Vec<(f64, String)> {
         let wanted = ((self.bottom - self.top) / 62.0).round().clamp(2.0, 10.0) as usize;
         if self.log {
-            let decades = ticks(self.low, self.high, wanted)
-                .into_iter()
-                .map(|tick| tick.0)
-                .filter(|decade| decade.fract().abs() < 1e-6);
-            return decades
-                .map(|decade| (10f64.powf(decade), format!("10{}", superscript(decade.round() as i32))))
-                .collect();
+            let decades = ticks(self.low, self.high, wanted).into_iter().map(|tick| tick.0).filter(|decade| decade.fract().abs() < 1e-6);
+            return decades.map(|decade| (10f64.powf(decade), format!("10{}", superscript(decade.round() as i32)))).collect();
         }
         let (low, high) = (self.display.shown(self.low), self.display.shown(self.high));
         // One tick tells no scale: finer steps until there are three.
-        let shown = (wanted..wanted + 4)
-            .map(|wanted| ticks(low, high, wanted))
-            .find(|shown| shown.len() >= 3);
+        let shown = (wanted..wanted + 4).map(|wanted| ticks(low, high, wanted)).find(|shown| shown.len() >= 3);
         let shown = shown.unwrap_or_else(|| ticks(low, high, wanted));
         shown.into_iter().map(|(value, text)| (self.display.si(value), text)).collect()
     }
@@ -212,11 +188,8 @@ fn straightened(points: Vec<(f64, f64)>) -> Vec<(f64, f64)> {
 /// from its last value to its name.
 pub fn names(scene: &mut Scene, edge: f64, vertical: &Vertical, curves: &[Curve], limit: f64) {
     let last = |curve: &Curve| curve.runs.last().and_then(|run| run.last()).map(|point| vertical.y(point.1));
-    let named: Vec<(&Curve, f64)> = curves
-        .iter()
-        .filter(|curve| !curve.name.is_empty())
-        .filter_map(|curve| Some((curve, last(curve)?)))
-        .collect();
+    let named: Vec<(&Curve, f64)> =
+        curves.iter().filter(|curve| !curve.name.is_empty()).filter_map(|curve| Some((curve, last(curve)?))).collect();
     let wished: Vec<f64> = named.iter().map(|pair| pair.1).collect();
     let room = (vertical.top + 4.0, vertical.bottom - 4.0);
     for ((curve, from), to) in named.iter().zip(apart(&wished, LINE, room.0, room.1)) {

@@ -9,11 +9,7 @@ pub fn apart(wished: &[f64], gap: f64, low: f64, high: f64) -> Vec<f64> {
     if count == 0 {
         return Vec::new();
     }
-    let gap = if count > 1 {
-        gap.min((high - low).max(0.0) / (count - 1) as f64)
-    } else {
-        gap
-    };
+    let gap = if count > 1 { gap.min((high - low).max(0.0) / (count - 1) as f64) } else { gap };
     let mut order: Vec<usize> = (0..count).collect();
     order.sort_by(|a, b| wished[*a].total_cmp(&wished[*b]));
     // Each block: sum of wishes less their offsets, and number of members.
@@ -52,10 +48,7 @@ pub struct Lanes {
 impl Lanes {
     /// `count` empty lanes.
     pub fn new(count: usize, space: f64) -> Self {
-        Lanes {
-            space,
-            taken: vec![Vec::new(); count],
-        }
+        Lanes { space, taken: vec![Vec::new(); count] }
     }
 
     /// The first lane in which `low..high` is free, now taken; none if there is no such lane.

@@ -1,18 +1,8 @@
 //! Numbers for people: unit prefixes, ticks in steps of 1, 2 or 5, and the text of a number.
 
 /// SI prefixes by power of ten, from femto to tera.
-const PREFIXES: [(i32, &str); 10] = [
-    (-15, "f"),
-    (-12, "p"),
-    (-9, "n"),
-    (-6, "µ"),
-    (-3, "m"),
-    (0, ""),
-    (3, "k"),
-    (6, "M"),
-    (9, "G"),
-    (12, "T"),
-];
+const PREFIXES: [(i32, &str); 10] =
+    [(-15, "f"), (-12, "p"), (-9, "n"), (-6, "µ"), (-3, "m"), (0, ""), (3, "k"), (6, "M"), (9, "G"), (12, "T")];
 
 /// How values are shown: divided by ten to `exponent`, with `unit`.
 #[derive(Clone, Debug, PartialEq)]
@@ -49,10 +39,7 @@ impl Display {
 pub fn engineering(largest: f64, unit: &str) -> Display {
     let size = largest.abs();
     if !size.is_finite() || size < 1e-200 {
-        return Display {
-            exponent: 0,
-            unit: unit.to_string(),
-        };
+        return Display { exponent: 0, unit: unit.to_string() };
     }
     // The small allowance keeps 1e-6 s from being shown as 1000 ns.
     let decade = (size * (1.0 + 1e-9)).log10().floor() as i32;
@@ -61,22 +48,13 @@ pub fn engineering(largest: f64, unit: &str) -> Display {
     if (unit == "s" || unit == "Hz") && (-18..top + 5).contains(&decade) {
         let fitting = PREFIXES.iter().rev().find(|(power, _)| *power <= decade && *power <= top);
         let (exponent, prefix) = *fitting.unwrap_or(&PREFIXES[0]);
-        return Display {
-            exponent,
-            unit: format!("{prefix}{unit}"),
-        };
+        return Display { exponent, unit: format!("{prefix}{unit}") };
     }
     if (-2..5).contains(&decade) {
-        return Display {
-            exponent: 0,
-            unit: unit.to_string(),
-        };
+        return Display { exponent: 0, unit: unit.to_string() };
     }
     let power = format!("10{}", superscript(decade));
-    Display {
-        exponent: decade,
-        unit: if unit.is_empty() { power } else { format!("{power} {unit}") },
-    }
+    Display { exponent: decade, unit: if unit.is_empty() { power } else { format!("{power} {unit}") } }
 }
 
 /// An integer in raised digits.
@@ -160,10 +138,7 @@ pub fn ticks(low: f64, high: f64, wanted: usize) -> Vec<(f64, String)> {
         return vec![(low, short_number(low))];
     }
     let count = (last - first) as usize;
-    (0..=count)
-        .map(|k| (first + k as f64) * step)
-        .map(|value| (value, fixed(value, decimals)))
-        .collect()
+    (0..=count).map(|k| (first + k as f64) * step).map(|value| (value, fixed(value, decimals))).collect()
 }
 
 /// The smallest of 1, 2, 5 times a power of ten that is not below `raw`.
@@ -183,15 +158,9 @@ mod tests {
 
     #[test]
     fn exact_prefix_shows_one_to_a_thousand() {
-        for (value, text) in [
-            (2e-2, "20 ms"),
-            (1e-6, "1 µs"),
-            (999e-9, "999 ns"),
-            (4e-8, "40 ns"),
-            (3600.0, "3600 s"),
-            (0.0, "0 s"),
-            (-5e-9, "−5 ns"),
-        ] {
+        for (value, text) in
+            [(2e-2, "20 ms"), (1e-6, "1 µs"), (999e-9, "999 ns"), (4e-8, "40 ns"), (3600.0, "3600 s"), (0.0, "0 s"), (-5e-9, "−5 ns")]
+        {
             assert_eq!(quantity(value, "s"), text);
         }
         assert_eq!(quantity(5.2e9, "Hz"), "5.2 GHz");
@@ -209,14 +178,7 @@ mod tests {
 
     #[test]
     fn regress_odd_ranges_give_few_ticks() {
-        for (low, high) in [
-            (f64::NAN, 1.0),
-            (0.0, f64::INFINITY),
-            (1.0, 1.0 + 1e-15),
-            (-1e300, 1e300),
-            (0.0, 1e-300),
-            (5.0, 1.0),
-        ] {
+        for (low, high) in [(f64::NAN, 1.0), (0.0, f64::INFINITY), (1.0, 1.0 + 1e-15), (-1e300, 1e300), (0.0, 1e-300), (5.0, 1.0)] {
             assert!(ticks(low, high, 6).len() < 20);
         }
     }

@@ -39,14 +39,7 @@ pub enum Shape {
     /// Filled polygon, `alpha` 1 for opaque.
     Area { points: Vec<(f64, f64)>, color: Rgb, alpha: f64 },
     /// One line of text; `y` is the middle of its small letters.
-    Text {
-        text: String,
-        x: f64,
-        y: f64,
-        size: f64,
-        color: Rgb,
-        anchor: Anchor,
-    },
+    Text { text: String, x: f64, y: f64, size: f64, color: Rgb, anchor: Anchor },
 }
 
 /// Everything on one canvas, painted in order.
@@ -65,24 +58,13 @@ const DASH_LIMIT: f64 = 8000.0;
 impl Scene {
     /// An empty canvas.
     pub fn new(width: f64, height: f64) -> Self {
-        Scene {
-            width,
-            height,
-            shapes: Vec::new(),
-        }
+        Scene { width, height, shapes: Vec::new() }
     }
 
     /// A text; empty ones are left out.
     pub fn text(&mut self, text: &str, (x, y): (f64, f64), size: f64, color: Rgb, anchor: Anchor) {
         if !text.is_empty() {
-            self.shapes.push(Shape::Text {
-                text: text.to_string(),
-                x,
-                y,
-                size,
-                color,
-                anchor,
-            });
+            self.shapes.push(Shape::Text { text: text.to_string(), x, y, size, color, anchor });
         }
     }
 
@@ -146,10 +128,7 @@ impl Scene {
         paint(self, &mut SVGBackend::with_string(&mut svg, size))?;
         let mut raster = Raster::new(self.width as usize, self.height as usize);
         paint(self, &mut raster)?;
-        Ok(Drawn {
-            png: raster.png()?,
-            svg: in_pixels(svg, size, (self.width, self.height)),
-        })
+        Ok(Drawn { png: raster.png()?, svg: in_pixels(svg, size, (self.width, self.height)) })
     }
 }
 
@@ -166,10 +145,7 @@ fn units(pixels: f64) -> i32 {
 }
 
 fn length(points: &[(f64, f64)]) -> f64 {
-    points
-        .windows(2)
-        .map(|pair| (pair[1].0 - pair[0].0).hypot(pair[1].1 - pair[0].1))
-        .sum()
+    points.windows(2).map(|pair| (pair[1].0 - pair[0].0).hypot(pair[1].1 - pair[0].1)).sum()
 }
 
 /// The drawn pieces of a dashed line, `dash` and `gap` in pixels along it.
@@ -263,17 +239,11 @@ impl BackendTextStyle for Lettering {
     ) -> Result<Result<(), E>, Infallible> {
         let em = self.size * UNITS_PER_PIXEL;
         let mut outcome = Ok(());
-        font::draw(
-            text,
-            em,
-            f64::from(x),
-            f64::from(y) + em * (0.5 + font::MIDDLE),
-            |column, row, coverage| {
-                if outcome.is_ok() {
-                    outcome = draw(column, row, self.color.mix(f64::from(coverage)));
-                }
-            },
-        );
+        font::draw(text, em, f64::from(x), f64::from(y) + em * (0.5 + font::MIDDLE), |column, row, coverage| {
+            if outcome.is_ok() {
+                outcome = draw(column, row, self.color.mix(f64::from(coverage)));
+            }
+        });
         Ok(outcome)
     }
 }
@@ -288,33 +258,12 @@ fn paint<B: DrawingBackend>(scene: &Scene, backend: &mut B) -> Result<(), PlotEr
     let whole = |points: &[(f64, f64)]| points.iter().map(|(x, y)| (units(*x), units(*y))).collect::<Vec<_>>();
     for shape in &scene.shapes {
         match shape {
-            Shape::Line { points, width, color } => backend.draw_path(
-                whole(points),
-                &Stroke {
-                    color: opaque(*color),
-                    width: units(*width).max(1) as u32,
-                },
-            ),
-            Shape::Area { points, color, alpha } => backend.fill_polygon(
-                whole(points),
-                &BackendColor {
-                    alpha: *alpha,
-                    rgb: *color,
-                },
-            ),
-            Shape::Text {
-                text,
-                x,
-                y,
-                size,
-                color,
-                anchor,
-            } => {
-                let style = Lettering {
-                    color: opaque(*color),
-                    size: *size,
-                    anchor: *anchor,
-                };
+            Shape::Line { points, width, color } => {
+                backend.draw_path(whole(points), &Stroke { color: opaque(*color), width: units(*width).max(1) as u32 })
+            }
+            Shape::Area { points, color, alpha } => backend.fill_polygon(whole(points), &BackendColor { alpha: *alpha, rgb: *color }),
+            Shape::Text { text, x, y, size, color, anchor } => {
+                let style = Lettering { color: opaque(*color), size: *size, anchor: *anchor };
                 backend.draw_text(text, &style, (units(*x), units(*y)))
             }
         }

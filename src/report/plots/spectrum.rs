@@ -45,24 +45,13 @@ pub fn spectrum(figure: &SpectrumFigure) -> Result<Drawn, PlotError> {
         check_axis(&pulse.label, &pulse.offset_hz)?;
         check_length(&pulse.label, pulse.amplitude_db.len(), pulse.offset_hz.len())?;
     }
-    let nothing = || PlotError::Nothing {
-        title: figure.title.clone(),
-    };
+    let nothing = || PlotError::Nothing { title: figure.title.clone() };
     let shown = &figure.pulses[..figure.pulses.len().min(SHOWN)];
-    let offsets = || {
-        shown
-            .iter()
-            .flat_map(|pulse| pulse.offset_hz.first().into_iter().chain(pulse.offset_hz.last()))
-            .copied()
-    };
+    let offsets = || shown.iter().flat_map(|pulse| pulse.offset_hz.first().into_iter().chain(pulse.offset_hz.last())).copied();
     let (low, high) = offsets().reduce(f64::min).zip(offsets().reduce(f64::max)).ok_or_else(nothing)?;
     let (low, high) = widened(low, high);
 
-    let drawn: Vec<Curve> = shown
-        .iter()
-        .enumerate()
-        .map(|(index, pulse)| curve(pulse, index, shown.len(), low, high))
-        .collect();
+    let drawn: Vec<Curve> = shown.iter().enumerate().map(|(index, pulse)| curve(pulse, index, shown.len(), low, high)).collect();
     let (lowest, highest) = extent(drawn.iter().flat_map(|curve| &curve.runs)).ok_or_else(nothing)?;
     let range = (lowest.clamp(FLOOR_DB, -20.0), highest.max(0.0));
 
@@ -73,11 +62,7 @@ pub fn spectrum(figure: &SpectrumFigure) -> Result<Drawn, PlotError> {
     let mut scene = Scene::new(WIDTH, HEIGHT);
     let top = frame::title(&mut scene, &figure.title);
     let named = in_lanes(&figure.lines, &[window], 4);
-    let lanes = named
-        .iter()
-        .filter_map(|line| line.name.as_ref().map(|name| name.lane + 1))
-        .max()
-        .unwrap_or(0);
+    let lanes = named.iter().filter_map(|line| line.name.as_ref().map(|name| name.lane + 1)).max().unwrap_or(0);
     let start = top + LINE + 4.0 + LINE * lanes as f64 + if lanes > 0 { 8.0 } else { 0.0 };
     let bottom = HEIGHT - FOOT;
     let vertical = vertical.between(start, bottom);
@@ -91,13 +76,7 @@ pub fn spectrum(figure: &SpectrumFigure) -> Result<Drawn, PlotError> {
     names(&mut scene, right, &vertical, &drawn, NAME_LIMIT);
     x_numbers(&mut scene, &window, &numbers, bottom);
     let middle = ((left + right) / 2.0, HEIGHT - FOOT + 60.0);
-    scene.text(
-        &with_unit("offset from the carrier", &display.unit),
-        middle,
-        LABEL,
-        INK,
-        Anchor::Middle,
-    );
+    scene.text(&with_unit("offset from the carrier", &display.unit), middle, LABEL, INK, Anchor::Middle);
     remarks(&mut scene, figure, named.iter().filter(|line| line.name.is_none()).count());
     frame::fingerprint(&mut scene, &figure.fingerprint);
     scene.finish()
@@ -106,29 +85,16 @@ pub fn spectrum(figure: &SpectrumFigure) -> Result<Drawn, PlotError> {
 fn curve(pulse: &PulseSpectrum, index: usize, count: usize, low: f64, high: f64) -> Curve {
     let bounds = columns(&pulse.offset_hz, low, high, column_count(pulse.offset_hz.len(), count, 1400.0));
     // A zero of the spectrum is minus infinity in dB: the lower edge of the plot, not a hole.
-    let amplitude: Vec<f64> = pulse
-        .amplitude_db
-        .iter()
-        .map(|value| if *value < FLOOR_DB { FLOOR_DB } else { *value })
-        .collect();
+    let amplitude: Vec<f64> = pulse.amplitude_db.iter().map(|value| if *value < FLOOR_DB { FLOOR_DB } else { *value }).collect();
     let label = font::clean(pulse.label.trim());
     let name = if label.is_empty() { format!("pulse {}", index + 1) } else { label };
-    Curve {
-        name,
-        runs: thin(&pulse.offset_hz, &amplitude, &bounds),
-        bands: Vec::new(),
-        look: look(index, count),
-    }
+    Curve { name, runs: thin(&pulse.offset_hz, &amplitude, &bounds), bands: Vec::new(), look: look(index, count) }
 }
 
 fn draw_lines(scene: &mut Scene, lines: &[Tick], top: f64, bottom: f64) {
     let lane = |line: &Tick| line.name.as_ref().map_or(0, |name| name.lane) as f64;
     for line in lines {
-        let look = Look {
-            color: SOFT_INK,
-            marker: None,
-            dash: Some((7.0, 5.0)),
-        };
+        let look = Look { color: SOFT_INK, marker: None, dash: Some((7.0, 5.0)) };
         scene.curve(vec![(line.x, top - 8.0 - LINE * lane(line)), (line.x, bottom)], 1.4, look);
     }
     for line in lines {

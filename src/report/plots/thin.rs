@@ -14,12 +14,7 @@ pub fn drawable(value: f64) -> bool {
 
 /// Checks that an axis is finite and not decreasing.
 pub fn check_axis(name: &str, axis: &[f64]) -> Result<(), PlotError> {
-    let wrong = |index| {
-        Err(PlotError::Order {
-            axis: name.to_string(),
-            index,
-        })
-    };
+    let wrong = |index| Err(PlotError::Order { axis: name.to_string(), index });
     if let Some(index) = axis.iter().position(|value| !drawable(*value)) {
         return wrong(index);
     }
@@ -34,11 +29,7 @@ pub fn check_length(column: &str, found: usize, expected: usize) -> Result<(), P
     if found == expected {
         return Ok(());
     }
-    Err(PlotError::Length {
-        column: column.to_string(),
-        found,
-        expected,
-    })
+    Err(PlotError::Length { column: column.to_string(), found, expected })
 }
 
 /// Pixel columns that keep `curves` curves of `rows` rows across `width` pixels within the budget.
@@ -107,11 +98,7 @@ fn column(axis: &[f64], values: &[f64], begin: usize, past: usize, run: &mut Run
         runs.push(std::mem::take(run));
         return;
     }
-    let mut kept = if holes {
-        vec![low_row, high_row]
-    } else {
-        vec![begin, low_row, high_row, past - 1]
-    };
+    let mut kept = if holes { vec![low_row, high_row] } else { vec![begin, low_row, high_row, past - 1] };
     kept.sort_unstable();
     kept.dedup();
     if holes {
@@ -126,13 +113,10 @@ fn column(axis: &[f64], values: &[f64], begin: usize, past: usize, run: &mut Run
 
 /// Lowest and highest value in runs; none without a point.
 pub fn extent<'a>(runs: impl IntoIterator<Item = &'a Run>) -> Option<(f64, f64)> {
-    runs.into_iter()
-        .flatten()
-        .map(|point| point.1)
-        .fold(None, |range, value| match range {
-            None => Some((value, value)),
-            Some((low, high)) => Some((low.min(value), high.max(value))),
-        })
+    runs.into_iter().flatten().map(|point| point.1).fold(None, |range, value| match range {
+        None => Some((value, value)),
+        Some((low, high)) => Some((low.min(value), high.max(value))),
+    })
 }
 
 #[cfg(test)]

@@ -79,20 +79,14 @@ const ROW: f64 = 36.0;
 /// Draws states against time. Errors: lengths that differ, times that decrease, nothing to draw.
 pub fn traces(figure: &TracesFigure) -> Result<Drawn, PlotError> {
     check(figure)?;
-    let window = time_window(figure).ok_or_else(|| PlotError::Nothing {
-        title: figure.title.clone(),
-    })?;
+    let window = time_window(figure).ok_or_else(|| PlotError::Nothing { title: figure.title.clone() })?;
     let mut panels: Vec<Prepared> = prepare(figure, &window);
     let drives = drives(figure);
 
     let all = panels.iter().flat_map(|panel| &panel.curves).map(|curve| curve.name.clone());
     let all: Vec<String> = all.chain(panels.iter().filter_map(|panel| panel.remark())).collect();
     let right = right_edge(all.iter().map(String::as_str), NAME_LIMIT);
-    let drive_width = drives
-        .iter()
-        .take(ROWS)
-        .map(|drive| font::width(&font::fit(drive, LABEL, 220.0), LABEL))
-        .fold(0.0, f64::max);
+    let drive_width = drives.iter().take(ROWS).map(|drive| font::width(&font::fit(drive, LABEL, 220.0), LABEL)).fold(0.0, f64::max);
     let number_width = panels.iter().map(|panel| panel.vertical.number_width()).fold(0.0, f64::max);
     let left = EDGE + 14.0 + drive_width.max(number_width).max(60.0);
     let window = Window { left, right, ..window };
@@ -159,12 +153,7 @@ fn time_window(figure: &TracesFigure) -> Option<Window> {
     let high = known.into_iter().reduce(f64::max)?;
     let (low, high) = (low.min(0.0), if drawable(figure.end_s) { high.max(figure.end_s) } else { high });
     let (low, high) = widened(low, high);
-    Some(Window {
-        low,
-        high,
-        left: 0.0,
-        right: 1.0,
-    })
+    Some(Window { low, high, left: 0.0, right: 1.0 })
 }
 
 /// A span of some length, also where all happens in one moment.
@@ -207,17 +196,8 @@ impl Prepared<'_> {
 /// Thins all curves and settles the axes; pixels are settled by `heights`.
 fn prepare<'a>(figure: &'a TracesFigure, window: &Window) -> Vec<Prepared<'a>> {
     let shown = &figure.panels[..figure.panels.len().min(PANELS)];
-    let count = shown
-        .iter()
-        .flat_map(|panel| &panel.series)
-        .map(|series| if series.band.is_some() { 2 } else { 1 })
-        .sum();
-    let bounds = columns(
-        &figure.time_s,
-        window.low,
-        window.high,
-        column_count(figure.time_s.len(), count, 1400.0),
-    );
+    let count = shown.iter().flat_map(|panel| &panel.series).map(|series| if series.band.is_some() { 2 } else { 1 }).sum();
+    let bounds = columns(&figure.time_s, window.low, window.high, column_count(figure.time_s.len(), count, 1400.0));
     shown.iter().map(|panel| prepare_panel(panel, &figure.time_s, &bounds)).collect()
 }
 
@@ -226,20 +206,10 @@ fn prepare_panel<'a>(panel: &'a Panel, time: &[f64], bounds: &[usize]) -> Prepar
     let total = panel.series.len();
     for (index, series) in panel.series.iter().enumerate() {
         let runs = thin(time, &series.values, bounds);
-        let bands = series
-            .band
-            .as_ref()
-            .map_or_else(Vec::new, |band| band_edges(time, &series.values, band, bounds));
-        curves.push(Curve {
-            name: shown_name(&series.name, index),
-            runs,
-            bands,
-            look: look(index, total),
-        });
+        let bands = series.band.as_ref().map_or_else(Vec::new, |band| band_edges(time, &series.values, band, bounds));
+        curves.push(Curve { name: shown_name(&series.name, index), runs, bands, look: look(index, total) });
     }
-    let edges = curves
-        .iter()
-        .flat_map(|curve| curve.bands.iter().flat_map(|band| [&band.0, &band.1]));
+    let edges = curves.iter().flat_map(|curve| curve.bands.iter().flat_map(|band| [&band.0, &band.1]));
     let whole = extent(curves.iter().flat_map(|curve| &curve.runs).chain(edges));
     let unnamed = rest_in_grey(&mut curves);
     let vertical = match log_floor(panel, &curves, whole) {
@@ -249,12 +219,7 @@ fn prepare_panel<'a>(panel: &'a Panel, time: &[f64], bounds: &[usize]) -> Prepar
     if !vertical.log {
         name_the_tiny(&mut curves, &vertical, &panel.unit);
     }
-    Prepared {
-        source: panel,
-        curves,
-        vertical,
-        unnamed,
-    }
+    Prepared { source: panel, curves, vertical, unnamed }
 }
 
 fn shown_name(name: &str, index: usize) -> String {
@@ -299,11 +264,7 @@ fn rest_in_grey(curves: &mut [Curve]) -> usize {
     order.sort_by(|a, b| size(&curves[*b]).total_cmp(&size(&curves[*a])));
     for &index in &order[NAMED..] {
         curves[index].name.clear();
-        curves[index].look = Look {
-            color: REST,
-            marker: None,
-            dash: None,
-        };
+        curves[index].look = Look { color: REST, marker: None, dash: None };
     }
     curves.len() - NAMED
 }
@@ -315,13 +276,8 @@ fn log_floor(panel: &Panel, curves: &[Curve], whole: Option<(f64, f64)>) -> Opti
     if panel.range.is_some() || !panel.unit.is_empty() || low < 0.0 || !(1e-190..=0.1).contains(&high) {
         return None;
     }
-    let mut positive: Vec<f64> = curves
-        .iter()
-        .flat_map(|curve| &curve.runs)
-        .flatten()
-        .map(|point| point.1)
-        .filter(|value| *value > 0.0)
-        .collect();
+    let mut positive: Vec<f64> =
+        curves.iter().flat_map(|curve| &curve.runs).flatten().map(|point| point.1).filter(|value| *value > 0.0).collect();
     positive.sort_by(f64::total_cmp);
     if *positive.get(positive.len() / 4)? > high / 100.0 {
         return None;
@@ -337,9 +293,7 @@ fn band_edges(time: &[f64], values: &[f64], band: &[f64], bounds: &[usize]) -> V
     for pair in bounds.windows(2) {
         let (begin, past) = (pair[0], pair[1]);
         let both = |row: usize| (values[row] + band[row].abs(), values[row] - band[row].abs());
-        let solid: Vec<usize> = (begin..past)
-            .filter(|row| drawable(both(*row).0) && drawable(both(*row).1))
-            .collect();
+        let solid: Vec<usize> = (begin..past).filter(|row| drawable(both(*row).0) && drawable(both(*row).1)).collect();
         let (Some(first), Some(last)) = (solid.first(), solid.last()) else {
             if past > begin {
                 pieces.push((std::mem::take(&mut upper), std::mem::take(&mut lower)));
@@ -386,12 +340,7 @@ fn heights(panels: &mut [Prepared], top: f64, strip: f64) -> f64 {
 
 fn drives(figure: &TracesFigure) -> Vec<&str> {
     let mut seen = std::collections::HashSet::new();
-    figure
-        .pulses
-        .iter()
-        .map(|pulse| pulse.drive.as_str())
-        .filter(|drive| seen.insert(*drive))
-        .collect()
+    figure.pulses.iter().map(|pulse| pulse.drive.as_str()).filter(|drive| seen.insert(*drive)).collect()
 }
 
 /// Draws the strip from `y` on.
@@ -406,13 +355,7 @@ fn bars(scene: &mut Scene, figure: &TracesFigure, drives: &[&str], window: &Wind
     }
     if drives.len() > ROWS {
         let text = format!("… {} more drives", drives.len() - ROWS);
-        remark(
-            scene,
-            &text,
-            (window.left, y + LINE / 2.0),
-            Anchor::Start,
-            window.right - window.left,
-        );
+        remark(scene, &text, (window.left, y + LINE / 2.0), Anchor::Start, window.right - window.left);
     }
 }
 
@@ -425,10 +368,7 @@ struct Bar<'a> {
 }
 
 fn row_of_bars(scene: &mut Scene, figure: &TracesFigure, drive: &str, color: Rgb, window: &Window, middle: f64) {
-    let mine = figure
-        .pulses
-        .iter()
-        .filter(|pulse| pulse.drive == drive && drawable(pulse.start_s) && drawable(pulse.end_s));
+    let mine = figure.pulses.iter().filter(|pulse| pulse.drive == drive && drawable(pulse.start_s) && drawable(pulse.end_s));
     let mut pulses: Vec<&PulseBar> = mine.collect();
     pulses.sort_by(|a, b| a.start_s.total_cmp(&b.start_s));
     let mut row: Vec<Bar> = Vec::new();
@@ -440,12 +380,7 @@ fn row_of_bars(scene: &mut Scene, figure: &TracesFigure, drive: &str, color: Rgb
                 last.right = last.right.max(right);
                 last.pulses += 1;
             }
-            _ => row.push(Bar {
-                left,
-                right,
-                pulses: 1,
-                label: &pulse.label,
-            }),
+            _ => row.push(Bar { left, right, pulses: 1, label: &pulse.label }),
         }
     }
     // Right end of the last text that stands beside its bar.
@@ -456,11 +391,7 @@ fn row_of_bars(scene: &mut Scene, figure: &TracesFigure, drive: &str, color: Rgb
         scene.rectangle((centre - half, middle - 13.0), (centre + half, middle + 13.0), color, 0.3);
         scene.line(vec![(centre - half, middle + 13.0), (centre - half, middle - 13.0)], 1.4, color);
         scene.line(vec![(centre + half, middle + 13.0), (centre + half, middle - 13.0)], 1.4, color);
-        let label = if bar.pulses > 1 {
-            format!("{} pulses", bar.pulses)
-        } else {
-            font::clean(bar.label.trim())
-        };
+        let label = if bar.pulses > 1 { format!("{} pulses", bar.pulses) } else { font::clean(bar.label.trim()) };
         let width = font::width(&label, TICK);
         let (before, after) = (index.checked_sub(1).map(|k| row[k].right), row.get(index + 1).map(|next| next.left));
         let overlapped = before.is_some_and(|end| end > bar.left + 1.0) || after.is_some_and(|start| start < bar.right - 1.0);

@@ -51,14 +51,7 @@ pub fn view(spans: &[Span], (low, high): (f64, f64), left: f64, right: f64) -> V
     let narrow = spans.iter().any(|span| (span.end - span.start) * scale < NARROW);
     let whole = Window { low, high, left, right };
     if !narrow || spans.is_empty() {
-        return View {
-            windows: vec![whole],
-            origins: vec![0.0],
-            gaps: Vec::new(),
-            after: None,
-            broken: false,
-            one_scale: true,
-        };
+        return View { windows: vec![whole], origins: vec![0.0], gaps: Vec::new(), after: None, broken: false, one_scale: true };
     }
     let groups = groups(spans);
     let shown = choose(&groups);
@@ -75,23 +68,11 @@ pub fn view(spans: &[Span], (low, high): (f64, f64), left: f64, right: f64) -> V
     let mut x = left;
     let mut windows = Vec::new();
     for ((low, high), width) in padded.into_iter().zip(widths) {
-        windows.push(Window {
-            low,
-            high,
-            left: x,
-            right: x + width,
-        });
+        windows.push(Window { low, high, left: x, right: x + width });
         x += width + GAP;
     }
     let origins = shown.iter().map(|index| groups[*index].low).collect();
-    View {
-        windows,
-        origins,
-        gaps,
-        after,
-        broken: true,
-        one_scale,
-    }
+    View { windows, origins, gaps, after, broken: true, one_scale }
 }
 
 /// Pulses that are shown in one window.
@@ -121,12 +102,7 @@ fn groups(spans: &[Span]) -> Vec<Group<'_>> {
                 continue;
             }
         }
-        groups.push(Group {
-            low: span.start,
-            high: span.end,
-            shortest: length,
-            members: vec![span],
-        });
+        groups.push(Group { low: span.start, high: span.end, shortest: length, members: vec![span] });
     }
     groups
 }
@@ -194,12 +170,7 @@ mod tests {
     use super::*;
 
     fn span(start: f64, length: f64, name: &str) -> Span {
-        Span {
-            start,
-            end: start + length,
-            names: ("drive".into(), name.into()),
-            shape: vec![length],
-        }
+        Span { start, end: start + length, names: ("drive".into(), name.into()), shape: vec![length] }
     }
 
     #[test]
@@ -210,11 +181,7 @@ mod tests {
 
     #[test]
     fn exact_echo_is_broken_into_three_windows_and_names_the_waits() {
-        let spans = [
-            span(0.0, 50e-9, "half"),
-            span(20.05e-6, 100e-9, "flip"),
-            span(40.15e-6, 50e-9, "half"),
-        ];
+        let spans = [span(0.0, 50e-9, "half"), span(20.05e-6, 100e-9, "flip"), span(40.15e-6, 50e-9, "half")];
         let view = view(&spans, (0.0, 40.2e-6), 0.0, 1400.0);
         assert_eq!(view.gaps, ["20 µs", "20 µs"]);
         assert!(view.windows.iter().all(|window| window.right - window.left >= 199.0));

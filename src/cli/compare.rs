@@ -1,0 +1,114 @@
+//! `nutate compare FILE`: runs the file as written and each variant, and shows how far apart they are.
+
+use std::fs::File;
+use std::io::{self, BufWriter};
+use std::path::PathBuf;
+use std::time::Instant;
+
+use clap::Args;
+
+use super::{complain, complain_of, point, print, read_config, refuse, Common, Status};
+use crate::compare::{compare, plans, CompareFault, Comparison};
+use crate::config::document::Document;
+use crate::config::messages::{Fault, Mistake};
+use crate::config::place::Place;
+use crate::plan::Plan;
+use crate::report::folder::{default_folder, prepare, Staging};
+use crate::report::{compare_json, compare_text, figures, summary, traces_csv};
+
+/// Words of the verb.
+#[derive(Args)]
+pub(super) struct Words {
+    #[command(flatten)]
+    common: Common,
+    /// Where the results go (in place of output / folder)
+    #[arg(long, value_name = "DIR")]
+    folder: Option<PathBuf>,
+    /// Results of another config in that folder may go
+    #[arg(long)]
+    replace: bool,
+    /// Print the result object in place of the table
+    #[arg(long)]
+    json: bool,
+    /// Print nothing but warnings and errors
+    #[arg(long, short)]
+    quiet: bool,
+}
+
+/// Compares.
+pub(super) fn run(words: &Words) -> Status {
+    match try_run(words) {
+        Ok(status) | Err(status) => status,
+    }
+}
+
+fn fault(fault: CompareFault) -> Status {
+    match fault {
+        CompareFault::Refused(refusal) => refuse(&refusal),
+        CompareFault::Mistaken(inside) => complain_of(&inside.0, &[inside.1]),
+    }
+    Status::Refused
+}
+
+fn try_run(words: &Words) -> Result<Status, Status> {
+    let clock = Instant::now();
+    let document = read_config(&words.common)?;
+    let Some(written) = document.compare.clone() else {
+        complain_of(&document, &[Mistake::error(Place::whole_file(0), Fault::NothingToCompare)]);
+        return Err(Status::Refused);
+    };
+    let base = Plan::new(document);
+    point(&base)?;
+    let document = base.document();
+    let all = plans(document, &written).map_err(fault)?;
+    let folder = words.folder.clone().unwrap_or_else(|| default_folder(document));
+    let staging = prepare(&folder, document, words.replace).map_err(|fault| {
+        complain(&format!("{fault}\n"));
+        Status::Refused
+    })?;
+    complain_of(document, &document.warnings);
+    let comparison = compare(&written, all).map_err(fault)?;
+    let seconds = clock.elapsed().as_secs_f64();
+    let files = write(staging, document, &comparison, seconds).map_err(|error| {
+        complain(&format!("error: the results could not be written to {}: {error}.\n", folder.display()));
+        Status::Machine
+    })?;
+    if words.json {
+        let result = compare_json::comparison(document, &comparison, seconds);
+        print(&format!("{}\n", serde_json::to_string_pretty(&result).unwrap_or_default()));
+    } else if !words.quiet {
+        print(&compare_text::table(document, &comparison, Some(&files)));
+    }
+    let mut status = Status::Good;
+    for computed in comparison.computed.iter().filter(|computed| !computed.outcome.reached) {
+        complain(&format!("warning: {}: {}.\n", computed.name, summary::not_reached(computed.plan.document(), &computed.outcome)));
+        status = Status::NotAccurate;
+    }
+    Ok(status)
+}
+
+fn write(staging: Staging, document: &Document, comparison: &Comparison, seconds: f64) -> io::Result<String> {
+    let side = staging.side().to_path_buf();
+    staging.archive(document)?;
+    let mut names = vec!["result.json".to_string()];
+    for computed in &comparison.computed {
+        let name = format!("traces-{}.csv", file_word(&computed.name));
+        traces_csv::write(&computed.outcome, BufWriter::new(File::create(side.join(&name))?))?;
+        names.push(name);
+    }
+    for (name, figure) in figures::of_comparison(document, comparison) {
+        match figure {
+            Ok(drawn) => names.extend(figures::save(&side, name, &drawn)?.into_iter().take(1)),
+            Err(reason) => complain(&format!("warning: the plot {name} was not drawn: {reason}.\n")),
+        }
+    }
+    let json = serde_json::to_string_pretty(&compare_json::comparison(document, comparison, seconds))?;
+    std::fs::write(side.join("result.json"), json + "\n")?;
+    let folder = staging.finish()?;
+    Ok(format!("{} in {}", names.join(", "), folder.display()))
+}
+
+/// A name as part of a file name.
+fn file_word(name: &str) -> String {
+    name.chars().map(|c| if c.is_alphanumeric() { c } else { '-' }).collect()
+}
