@@ -493,7 +493,7 @@ fn mutated_small_configs_are_computed() {
             continue;
         };
         let point = plan.point().unwrap();
-        if point.problem.dim() > 8 || point.problem.segments.len() > 1000 || point.problem.moments.len() > 2000 {
+        if point.problem().dim() > 8 || point.problem().segments.len() > 1000 || point.problem().moments.len() > 2000 {
             continue;
         }
         let clock = Instant::now();
