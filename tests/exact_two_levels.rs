@@ -186,8 +186,8 @@ accuracy: {{final: {accuracy:e}, method: automatic}}
     for (name, outcome, times_s) in checks {
         for (k, time_s) in times_s.into_iter().enumerate() {
             let digits = &case(name)["expected"]["populations"][k];
-            close(at(outcome, "population_zero", time_s), number(&digits[0]), 2e-12);
-            close(at(outcome, "population_one", time_s), number(&digits[1]), 2e-12);
+            close(at(outcome, "population_zero", time_s), number(&digits[0]), 1e-11);
+            close(at(outcome, "population_one", time_s), number(&digits[1]), 1e-11);
         }
     }
     // exp(-pi^2 D^2 / v), in Hz, is reached as the window grows: what is missing swings within about D / (v t)
