@@ -7,7 +7,7 @@ use std::time::Instant;
 use crate::config::document;
 use crate::outcome::{compute, Outcome};
 use crate::plan::Plan;
-use crate::units::sin_cos_turns;
+use crate::units::{sin_cos_turns, RAD_PER_TURN};
 
 /// A final number and its closed form.
 pub struct Answer {
@@ -122,7 +122,7 @@ pub const KNOWN: &[Known] = &[
         source: "R. J. Glauber, Physical Review 131, 2766 (1963): Poisson weights of a coherent state, mean (pi R t)^2",
         config: "format: 1\nsystem:\n  ladder: {levels: 24, first_gap: 36 MHz, anharmonicity: 0 Hz, couplings_grow: sqrt}\ndrives:\n  push: {acts_on: ladder, reference_pair: [0, 1], form: one_sided, carrier: 36 MHz}\nenvelopes:\n  flat: {shape: square, length: 1 us, peak: 300 kHz}\nsequence:\n  - pulse: {drive: push, envelope: flat}\nstart: 0\nrecord: {at: [1 us], populations: [0, 1, 2]}\n",
         answers: || {
-            let mean = (std::f64::consts::PI * 0.3f64).powi(2);
+            let mean = (0.5 * RAD_PER_TURN * 0.3).powi(2);
             let names = ["population_0", "population_1", "population_2"];
             let weights = [1.0, mean, mean * mean / 2.0].map(|w| w * (-mean).exp());
             names.iter().zip(weights).map(|(name, value)| Answer { name, value }).collect()
@@ -146,7 +146,7 @@ mod tests {
     fn exact_known_problems_by_every_method() {
         for known in KNOWN {
             for (method, accuracy) in [("automatic", 1e-10), ("smooth", 1e-10), ("geometric", 1e-10), ("constant steps", 1e-7)] {
-                let verdict = known.run(method, accuracy).unwrap();
+                let verdict = known.run(method, accuracy).expect("a known problem is a lawful config");
                 assert!(
                     verdict.good(),
                     "{} by {method}: off by {:.2e}, error figure {:.2e}",

@@ -453,12 +453,13 @@ impl Point<'_> {
     /// The size of an envelope on a drive at envelope 1: the Rabi frequency R of the reference pair, or the entry itself of a
     /// direct drive, Hz.
     pub fn peak_hz(&self, document: &Document, drive: usize, envelope: usize) -> Result<f64, Mistake> {
+        let typed = if document.drives[drive].reference_implied { self.couplings[drive].scale } else { 1.0 };
         let (drive, written) = (&document.drives[drive], &document.envelopes[envelope]);
         let size = self.values[written.size.register as usize];
         match written.size_word {
             SizeWord::Peak => Ok(size),
-            SizeWord::MatrixElement if drive.form == Form::OneSided => Ok(2.0 * size),
-            SizeWord::MatrixElement => Ok(size),
+            SizeWord::MatrixElement if drive.form == Form::OneSided => Ok(2.0 * size * typed),
+            SizeWord::MatrixElement => Ok(size * typed),
             SizeWord::Turn => {
                 let area = self.curves[envelope].area_s();
                 let whole = self.curves[envelope].length_s() * self.curves[envelope].largest();

@@ -2,6 +2,8 @@
 
 mod check;
 mod compare;
+mod explain;
+mod new;
 mod plot;
 mod run;
 mod selftest;
@@ -39,8 +41,12 @@ struct Words {
 
 #[derive(Subcommand)]
 enum Verb {
+    /// Write a worked config to begin with; without a kind, list the kinds
+    New(new::Words),
     /// Read and judge a config without running it
     Check(check::Words),
+    /// Say in words and numbers what a config means, without running it
+    Explain(explain::Words),
     /// Evolve, record, and write numbers and plots
     Run(run::Words),
     /// Run the file and its variants, and show how far apart they are
@@ -72,7 +78,9 @@ pub fn main() -> ExitCode {
         }
     };
     let status = match words.verb {
+        Verb::New(words) => new::new(&words),
         Verb::Check(words) => check::check(&words),
+        Verb::Explain(words) => explain::explain(&words),
         Verb::Run(words) => run::run(&words),
         Verb::Compare(words) => compare::run(&words),
         Verb::Plot(words) => plot::plot(&words),

@@ -157,15 +157,14 @@ fn read_sources(
     reader.mistakes = mistakes;
     reader.archive = archive;
     let document = sections(&mut reader, &root, file, set, &[]);
-    let document = document.map(|document| {
+    if let Some(document) = &document {
         // the variants are read too, so that a slip in one is found before anything runs
         for variant in document.compare.iter().flat_map(|compare| &compare.variants) {
-            if let Err(refusal) = read_variant(&document, variant) {
+            if let Err(refusal) = read_variant(document, variant) {
                 reader.mistakes.extend(refusal.mistakes.into_iter().filter(|mistake| !mistake.warning));
             }
         }
-        document
-    });
+    }
     let refused = reader.mistakes.iter().any(|mistake| !mistake.warning);
     match document {
         Some(document) if !refused => Ok(document),
@@ -388,13 +387,13 @@ fn numbers(reader: &mut Reader, root: &Node, set: &[(String, String)]) {
     }
 }
 
-/// A drive whose phase could be meant in two ways must say which.
+/// A drive used more than once must say what its phase counts from; whether a single pulse starts with the sequence is judged
+/// with its time.
 fn phases_said(reader: &mut Reader, steps: &[Step], drives: &[Drive]) {
-    for (drive, (times, first)) in drives.iter().zip(sequence::uses(steps, drives.len())) {
-        if drive.form == Form::Direct || drive.carrier_phase.is_some() || times == 0 || (times == 1 && first) {
-            continue;
+    for (drive, times) in drives.iter().zip(sequence::uses(steps, drives.len())) {
+        if drive.form != Form::Direct && drive.carrier_phase.is_none() && times > 1 {
+            reader.error(drive.place, Fault::PhaseUnsaid { drive: drive.name.clone(), times, why_first: false });
         }
-        reader.error(drive.place, Fault::PhaseUnsaid { drive: drive.name.clone(), times, why_first: times == 1 });
     }
 }
 

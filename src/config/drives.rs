@@ -69,6 +69,8 @@ pub struct Drive {
     pub reference: Option<[usize; 2]>,
     /// Where the reference pair stands.
     pub reference_place: Place,
+    /// The pair is the operator's only one, and was not written: `matrix_element` then multiplies the operator as typed.
+    pub reference_implied: bool,
     /// How the envelope enters.
     pub form: Form,
     /// The sense that cannot be resonant.
@@ -167,6 +169,7 @@ fn read_drive(reader: &mut Reader, name: &str, place: Place, node: &Node, system
         entries,
         reference,
         reference_place,
+        reference_implied: node.get("operator").is_some() && node.get("reference_pair").is_none(),
         form: form?,
         opposite,
         carrier: carrier.map_or(Some(None), |carrier| carrier.map(Some))?,

@@ -230,7 +230,7 @@ pub fn short_with_unit(value: f64, unit: &str) -> String {
     let prefixes =
         [(1e12, "T"), (1e9, "G"), (1e6, "M"), (1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, "u"), (1e-9, "n"), (1e-12, "p"), (1e-15, "f")];
     if size == 0.0 || !["s", "Hz", "V", "T", "K", "W", "m"].contains(&unit) {
-        return if unit.starts_with('/') { format!("{} {unit}", short(value)) } else { format!("{} {unit}", short(value)) };
+        return format!("{} {unit}", short(value));
     }
     let (factor, prefix) = prefixes.iter().find(|(factor, _)| size >= factor * 0.999_999_9).unwrap_or(&prefixes[9]);
     let (factor, prefix) = if unit == "s" && *factor > 1.0 { (&1.0, &"") } else { (factor, prefix) };

@@ -12,6 +12,7 @@ pub mod reader;
 pub mod record;
 pub mod sequence;
 pub mod settings;
+pub mod starters;
 pub mod state;
 pub mod system;
 pub mod tape;

@@ -36,7 +36,10 @@ fn words(error: &std::io::Error) -> String {
     }
 }
 
-fn parse(bytes: &[u8]) -> Option<(usize, usize, Vec<(f64, f64)>)> {
+/// Rows, columns and the entries (re, im), row after row.
+type Parsed = (usize, usize, Vec<(f64, f64)>);
+
+fn parse(bytes: &[u8]) -> Option<Parsed> {
     let rest = bytes.strip_prefix(b"\x93NUMPY")?;
     let (length, start): (usize, usize) = match rest.first()? {
         1 => (usize::from(u16::from_le_bytes(rest.get(2..4)?.try_into().ok()?)), 4),

@@ -810,14 +810,14 @@ impl Reader {
                 let (a, b) = (energy(self, a), energy(self, b));
                 let (a, b) = (a?, b?);
                 let gap = self.tape.push(TapeEntry::Two(Two::Subtract, b, a), place);
-                Some(self.from_outside(gap, Dim::FREQUENCY, place, scope))
+                Some(self.seen_from_outside(gap, Dim::FREQUENCY, place, scope))
             }
             Call(name, arguments) => self.compile_call(name, arguments, place, scope),
         }
     }
 
     /// A register of the main tape, seen from where the scope compiles.
-    fn from_outside(&mut self, register: Register, dim: Dim, place: Place, scope: &mut Scope) -> Known {
+    fn seen_from_outside(&mut self, register: Register, dim: Dim, place: Place, scope: &mut Scope) -> Known {
         let re = match &mut scope.formula {
             Some(tape) => tape.push(TapeEntry::Outer(register), place),
             None => register,
@@ -845,7 +845,7 @@ impl Reader {
     fn compile_name(&mut self, name: &str, place: Place, scope: &mut Scope) -> Option<Known> {
         if name == "pi" {
             let re = self.push(scope, TapeEntry::Constant(std::f64::consts::PI), place);
-            let known = self.from_outside(0, Dim::NONE, place, &mut Scope { formula: None, ..*scope });
+            let known = self.seen_from_outside(0, Dim::NONE, place, &mut Scope { formula: None, ..*scope });
             return Some(Known { re, pi: true, cyclic: false, constant: Some(std::f64::consts::PI), ..known });
         }
         if name == "t" {
@@ -854,7 +854,7 @@ impl Reader {
                 return None;
             }
             let re = self.push(scope, TapeEntry::Time, place);
-            return Some(Known { re, ..self.from_outside(0, Dim::TIME, place, &mut Scope { formula: None, ..*scope }) });
+            return Some(Known { re, ..self.seen_from_outside(0, Dim::TIME, place, &mut Scope { formula: None, ..*scope }) });
         }
         if name == "i" {
             if !scope.complex {
@@ -866,7 +866,7 @@ impl Reader {
             return Some(Known {
                 re: zero,
                 im: Some(one),
-                ..self.from_outside(0, Dim::NONE, place, &mut Scope { formula: None, ..*scope })
+                ..self.seen_from_outside(0, Dim::NONE, place, &mut Scope { formula: None, ..*scope })
             });
         }
         let Some(index) = self.by_name.get(name).copied() else {

@@ -158,9 +158,7 @@ impl Steps<'_> {
 
     fn step(&mut self, node: &Node) -> Option<Step> {
         let entries = self.reader.fields(node, "a step of the sequence", &STEP_KEYS, &[("delay", "A pause is called wait.")])?;
-        let Some(entry) = entries.iter().find(|entry| STEP_KEYS.contains(&entry.key.as_str())) else {
-            return None;
-        };
+        let entry = entries.iter().find(|entry| STEP_KEYS.contains(&entry.key.as_str()))?;
         if let Some(second) = entries.iter().filter(|entry| STEP_KEYS.contains(&entry.key.as_str())).nth(1) {
             let fault = Fault::OneOf {
                 found: vec![entry.key.clone(), second.key.clone()],
@@ -408,37 +406,28 @@ impl Steps<'_> {
     }
 }
 
-/// How often each drive is used, and whether its first pulse surely starts with the sequence.
-pub fn uses(steps: &[Step], drives: usize) -> Vec<(usize, bool)> {
-    let mut found = vec![(0usize, false); drives];
-    let mut started = false;
-    walk(steps, 1, &mut found, &mut started);
+/// How often each drive is used.
+pub fn uses(steps: &[Step], drives: usize) -> Vec<usize> {
+    let mut found = vec![0; drives];
+    count(steps, 1, &mut found);
     found
 }
 
-fn walk(steps: &[Step], times: usize, found: &mut [(usize, bool)], started: &mut bool) {
-    let note = |pulse: &Pulse, started: bool, found: &mut [(usize, bool)]| {
-        let entry = &mut found[pulse.drive];
-        if entry.0 == 0 {
-            entry.1 = !started && matches!(pulse.align, Align::Start);
-        }
-        entry.0 = entry.0.saturating_add(times);
-    };
+fn count(steps: &[Step], times: usize, found: &mut [usize]) {
     for step in steps {
-        match step {
-            Step::Pulse(pulse) => {
-                note(pulse, *started, found);
-                *started = true;
+        let pulses = match step {
+            Step::Pulse(pulse) => std::slice::from_ref(pulse),
+            Step::Together(pulses) => pulses,
+            Step::Repeat(repeats, inner) => {
+                count(inner, times.saturating_mul(*repeats), found);
+                continue;
             }
-            Step::Together(pulses) => {
-                pulses.iter().for_each(|pulse| note(pulse, *started, found));
-                *started = true;
+            Step::Block(inner) => {
+                count(inner, times, found);
+                continue;
             }
-            Step::Wait(_) | Step::WaitBetweenCentres(_) => *started = true,
-            Step::Repeat(0, _) => {}
-            Step::Repeat(count, inner) => walk(inner, times.saturating_mul(*count), found, started),
-            Step::Block(inner) => walk(inner, times, found, started),
-            Step::TurnFrame(..) | Step::SetCarrier(..) | Step::Mark(_) => {}
-        }
+            _ => continue,
+        };
+        pulses.iter().for_each(|pulse| found[pulse.drive] = found[pulse.drive].saturating_add(times));
     }
 }

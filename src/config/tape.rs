@@ -383,15 +383,7 @@ impl Formula {
 }
 
 impl BoundFormula {
-    fn run<T: Real>(&self, t: T) -> T {
-        let mut stack = [T::constant(0.0); ON_STACK];
-        let mut heap = Vec::new();
-        let values: &mut [T] = if self.entries.len() <= ON_STACK {
-            &mut stack
-        } else {
-            heap.resize(self.entries.len(), T::constant(0.0));
-            &mut heap
-        };
+    fn fill<T: Real>(&self, t: T, values: &mut [T]) {
         for (register, entry) in self.entries.iter().enumerate() {
             values[register] = match *entry {
                 Entry::Constant(value) => T::constant(value),
@@ -402,12 +394,84 @@ impl BoundFormula {
                 Entry::Time => t,
             };
         }
+    }
+
+    fn run<T: Real>(&self, t: T) -> T {
+        let mut stack = [T::constant(0.0); ON_STACK];
+        let mut heap = Vec::new();
+        let values: &mut [T] = if self.entries.len() <= ON_STACK {
+            &mut stack
+        } else {
+            heap.resize(self.entries.len(), T::constant(0.0));
+            &mut heap
+        };
+        self.fill(t, values);
         values[self.result]
     }
 
     /// Value at t, in SI.
     pub fn at(&self, t_s: f64) -> f64 {
         self.run(t_s)
+    }
+
+    /// Times strictly between 0 and `length_s` at which the formula has a kink or a jump, ascending: where an argument of abs or
+    /// sqrt passes through zero, the two of min or max cross, floor or round steps. Found on a fine grid and then halved down to
+    /// rounding; two that lie within the same cell of the grid may be missed.
+    pub fn kinks_s(&self, length_s: f64) -> Vec<f64> {
+        const GRID: usize = 2048;
+        let mut watched = Vec::new();
+        for (register, entry) in self.entries.iter().enumerate() {
+            match entry {
+                Entry::One(One::Abs | One::Sqrt | One::Floor | One::Round, _) | Entry::Two(Two::Min | Two::Max, ..) => {
+                    watched.push(register)
+                }
+                _ => {}
+            }
+        }
+        if watched.is_empty() {
+            return Vec::new();
+        }
+        let mut registers = vec![0.0; self.entries.len()];
+        let mut sides = |t: f64| -> Vec<f64> {
+            self.fill(t, &mut registers);
+            let value = |register: Register| registers[register as usize];
+            watched
+                .iter()
+                .map(|register| match self.entries[*register] {
+                    Entry::One(One::Floor, a) => value(a).floor(),
+                    Entry::One(One::Round, a) => value(a).round(),
+                    Entry::One(_, a) => f64::from(u8::from(value(a) > 0.0)),
+                    Entry::Two(_, a, b) => f64::from(u8::from(value(a) > value(b))),
+                    _ => 0.0,
+                })
+                .collect()
+        };
+        let mut kinks = Vec::new();
+        let mut from = (0.0, sides(0.0));
+        for k in 1..=GRID {
+            let t = length_s * k as f64 / GRID as f64;
+            let to = (t, sides(t));
+            for w in 0..watched.len() {
+                if from.1[w] == to.1[w] {
+                    continue;
+                }
+                let (mut low, mut high) = (from.0, to.0);
+                for _ in 0..60 {
+                    let middle = 0.5 * (low + high);
+                    if sides(middle)[w] == from.1[w] {
+                        low = middle;
+                    } else {
+                        high = middle;
+                    }
+                }
+                kinks.push(high);
+            }
+            from = to;
+        }
+        kinks.retain(|t| *t > 0.0 && *t < length_s);
+        kinks.sort_by(f64::total_cmp);
+        kinks.dedup_by(|later, earlier| *later - *earlier <= 1e-14 * length_s);
+        kinks
     }
 
     /// d/dt of the value at t.

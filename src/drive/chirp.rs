@@ -17,6 +17,7 @@ const MOST: usize = 4096;
 pub struct Chirp {
     formula: BoundFormula,
     centre_hz: f64,
+    kinks_s: Vec<f64>,
     pieces: Vec<Piece>,
 }
 
@@ -29,10 +30,17 @@ struct Piece {
 }
 
 impl Chirp {
+    /// Times at which the sweep has a kink, s.
+    pub fn kinks_s(&self) -> &[f64] {
+        &self.kinks_s
+    }
+
     /// The chirp of `instantaneous` (Hz) about `centre_hz`, from 0 to `length_s`.
     pub fn new(instantaneous: BoundFormula, centre_hz: f64, length_s: f64) -> Chirp {
-        let mut chirp = Chirp { formula: instantaneous, centre_hz, pieces: Vec::new() };
-        let mut waiting = vec![(0.0, length_s, 0u32)];
+        let kinks_s = instantaneous.kinks_s(length_s);
+        let bounds: Vec<f64> = std::iter::once(0.0).chain(kinks_s.iter().copied()).chain([length_s]).collect();
+        let mut chirp = Chirp { formula: instantaneous, centre_hz, kinks_s, pieces: Vec::new() };
+        let mut waiting: Vec<(f64, f64, u32)> = bounds.windows(2).rev().map(|pair| (pair[0], pair[1], 0)).collect();
         let mut turns = 0.0;
         while let Some((from, to, depth)) = waiting.pop() {
             let coefficients = chirp.expand(from, to);
@@ -84,9 +92,9 @@ impl Sweep for Chirp {
 fn integrate(c: &[f64; ORDER]) -> [f64; ORDER + 1] {
     let at = |n: usize| c.get(n).copied().unwrap_or(0.0);
     let mut integral = [0.0; ORDER + 1];
-    for n in 1..=ORDER {
+    for (n, coefficient) in integral.iter_mut().enumerate().skip(1) {
         let before = if n == 1 { 2.0 * at(0) } else { at(n - 1) };
-        integral[n] = (before - at(n + 1)) / (2 * n) as f64;
+        *coefficient = (before - at(n + 1)) / (2 * n) as f64;
     }
     integral[0] = -(1..=ORDER).map(|n| if n % 2 == 0 { integral[n] } else { -integral[n] }).sum::<f64>();
     integral

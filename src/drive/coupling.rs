@@ -22,6 +22,8 @@ pub struct Coupling {
     pub reference: Option<[usize; 2]>,
     /// Phase of <upper|M|lower> on the reference pair, turns.
     pub reference_turns: f64,
+    /// Modulus of the reference entry as typed, by which the matrix was divided.
+    pub scale: f64,
 }
 
 /// Why a drive has no matrix at a point.
@@ -43,7 +45,7 @@ pub fn coupling(drive: &Drive, energies: &[f64], values: &[f64]) -> Result<Coupl
     }
     let ordered = |[a, b]: [usize; 2]| if energies[a] <= energies[b] { [a, b] } else { [b, a] };
     let reference = drive.reference.map(ordered);
-    let mut reference_turns = 0.0;
+    let (mut reference_turns, mut scale) = (0.0, 1.0);
     if let Some([lower, upper]) = reference {
         let entry = matrix[(upper, lower)];
         // a one-sided drive may couple upwards or downwards alone
@@ -51,7 +53,8 @@ pub fn coupling(drive: &Drive, energies: &[f64], values: &[f64]) -> Result<Coupl
         if entry.norm() == 0.0 {
             return Err(CouplingFault::ReferenceZero([lower, upper]));
         }
-        matrix /= Complex64::from(entry.norm());
+        scale = entry.norm();
+        matrix /= Complex64::from(scale);
         reference_turns = entry.arg() / RAD_PER_TURN;
     }
     let turning = match drive.form {
@@ -79,7 +82,7 @@ pub fn coupling(drive: &Drive, energies: &[f64], values: &[f64]) -> Result<Coupl
             }
         }),
     };
-    Ok(Coupling { matrix, turning, reference, reference_turns })
+    Ok(Coupling { matrix, turning, reference, reference_turns, scale })
 }
 
 fn upper_as_written(drive: &Drive, row: usize, column: usize) -> bool {

@@ -33,6 +33,9 @@ pub fn cut(timeline: &Timeline, parts: &dyn Fn(&PlacedPulse) -> Arc<PulseParts>)
         bounds.clear();
         bounds.extend([0.0, group.length_s]);
         for (pulse, parts) in &made {
+            if let Some(chirp) = &parts.chirp {
+                bounds.extend(chirp.kinks_s().iter().map(|kink| pulse.offset_s + kink));
+            }
             bounds.extend([pulse.offset_s, pulse.offset_s + pulse.length_s]);
             match &parts.pieces {
                 Pieces::Constant(_) => {}

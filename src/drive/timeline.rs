@@ -220,6 +220,11 @@ impl<'d> Walk<'d, '_> {
             };
             end = end.max(offset + length);
             let placed = self.place(pulse, offset, length);
+            let written = &self.document.drives[pulse.drive];
+            // what runs on and what restarts is the same only at time zero
+            if written.form != Form::Direct && written.carrier_phase.is_none() && placed.start.seconds() > 0.0 {
+                return Err(Mistake::error(written.place, Fault::PhaseUnsaid { drive: written.name.clone(), times: 1, why_first: true }));
+            }
             self.timeline.pulses.push(placed);
         }
         let range = first..self.timeline.pulses.len();

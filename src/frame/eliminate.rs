@@ -38,6 +38,9 @@ struct Factor {
     conjugate: bool,
 }
 
+/// Two factors and the index of the matrix that their product multiplies.
+type Pairing = (Factor, Factor, usize);
+
 /// Times within a segment at which the couplings are looked at.
 const LOOKS: u32 = 64;
 
@@ -63,7 +66,7 @@ pub fn eliminate(problem: &Problem, levels: &[usize]) -> (Problem, Elimination) 
     let mut segments = Vec::with_capacity(problem.segments.len());
     let mut terms = Vec::new();
     // the matrices that segments with the same terms share
-    let mut known: BTreeMap<Vec<(usize, u64)>, Vec<(Factor, Factor, usize)>> = BTreeMap::new();
+    let mut known: BTreeMap<Vec<(usize, u64)>, Vec<Pairing>> = BTreeMap::new();
     for segment in &problem.segments {
         let first = terms.len();
         terms.extend(problem.terms_of(segment).iter().cloned());
@@ -153,13 +156,7 @@ fn pieces(problem: &Problem, segment: &Segment, j: usize, k: usize) -> Vec<(Fact
 }
 
 /// One matrix for each pair of factors; upper triangle, the diagonal halved (the adjoint adds the rest).
-fn products(
-    problem: &Problem,
-    segment: &Segment,
-    levels: &[usize],
-    energies: &[f64],
-    matrices: &mut Vec<Matrix>,
-) -> Vec<(Factor, Factor, usize)> {
+fn products(problem: &Problem, segment: &Segment, levels: &[usize], energies: &[f64], matrices: &mut Vec<Matrix>) -> Vec<Pairing> {
     let size = problem.dim();
     let mut made: BTreeMap<(Factor, Factor), Matrix> = BTreeMap::new();
     for (a, b, e) in triples(size, levels) {

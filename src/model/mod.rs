@@ -1,5 +1,8 @@
 //! Matrices in a basis: the checked config's entries become dense Hermitian matrices. Knows nothing of time.
 
+pub mod commutators;
+pub mod gaps;
+
 use num_complex::Complex64;
 
 use crate::config::matrix::MatrixEntry;

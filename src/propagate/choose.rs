@@ -126,6 +126,15 @@ pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
         }
         return (method, asked);
     }
+    if load.changing == 0 && load.commuting > 0 {
+        let others = if load.commuting < load.segments {
+            format!(" in {} of {} stretches (constant in the others)", load.commuting, load.segments)
+        } else {
+            String::new()
+        };
+        let why = format!("H changes, but commutes with itself at all times{others}, so the exponential of its integral is exact");
+        return (Method::ConstantSteps, why);
+    }
     if load.changing == 0 {
         let where_ = if load.segments == 1 {
             "through the whole sequence".to_string()
@@ -139,7 +148,7 @@ pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
     if geometric < smooth && !load.time_in {
         let why =
             format!(
-            "H swings the state through {} turns but turns through only {} itself and its envelopes rise or fall {} times, with {} levels",
+            "H swings the state through {} turns but itself turns only {} times and its envelopes rise or fall {} times, with {} levels",
             round(load.swing_turns), round(load.still_turns), round(load.rises), load.levels
         );
         return (Method::Geometric, why);

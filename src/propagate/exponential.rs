@@ -89,13 +89,8 @@ impl Flow {
         for j in 0..dim {
             centred[(j, j)] = Complex64::new(centred[(j, j)].re - mean, 0.0);
         }
-        match SymmetricEigen::try_new(centred, f64::EPSILON, 200 * dim) {
-            Some(eigen) => Flow::Modes {
-                turns_hz: eigen.eigenvalues.iter().map(|value| (value + mean) / RAD_PER_TURN).collect(),
-                vectors: eigen.eigenvectors,
-            },
-            None => Flow::Broken,
-        }
+        let (values, vectors) = eigenvectors(centred);
+        Flow::Modes { turns_hz: values.iter().map(|value| (value + mean) / RAD_PER_TURN).collect(), vectors }
     }
 
     /// `to` = exp(-i H tau) `from`, one column; `room` is scratch of any length. Gives the matrix-vector products used.
@@ -169,6 +164,19 @@ impl Flow {
             }
         }
     }
+}
+
+/// Eigenvalues and eigenvectors of a finite Hermitian matrix: by the library, and where its iteration breaks down (it can on
+/// nearly diagonal matrices of ten and more levels) by Jacobi's rotations.
+fn eigenvectors(h: Matrix) -> (Vec<f64>, Matrix) {
+    if let Some(eigen) = SymmetricEigen::try_new(h.clone(), f64::EPSILON, 200 * h.ncols()) {
+        if eigen.eigenvectors.iter().all(|z| z.re.is_finite() && z.im.is_finite())
+            && eigen.eigenvalues.iter().all(|value| value.is_finite())
+        {
+            return (eigen.eigenvalues.iter().copied().collect(), eigen.eigenvectors);
+        }
+    }
+    super::jacobi::eigenvectors(h)
 }
 
 fn series(

@@ -1,6 +1,7 @@
 //! How large, fast and long a problem is: the numbers that the choice of a method compares, and that bound the rounding error.
 
 use super::asked::Demand;
+use super::commuting::commutes;
 use super::picture::{Kind, Picture, Pictures};
 use crate::problem::{Matrix, Problem, Term};
 use crate::units::RAD_PER_TURN;
@@ -22,7 +23,9 @@ pub struct Load {
     pub accuracy: f64,
     /// Segments in which H changes.
     pub changing: usize,
-    /// How long H changes, s.
+    /// Segments in which H changes but commutes with itself, so that its integral is exponentiated (automatic choice alone).
+    pub commuting: usize,
+    /// How long H changes, s; commuting segments do not count.
     pub changing_s: f64,
     /// Turns through which the couplings alone swing the state.
     pub coupling_turns: f64,
@@ -102,7 +105,8 @@ fn row_bound(b: &Matrix) -> f64 {
 }
 
 impl Load {
-    pub(super) fn of(problem: &Problem, demand: &Demand, accuracy: f64, pictures: &mut Pictures) -> Self {
+    /// The load, and for each segment whether it is done by its integral (never without `integrals`).
+    pub(super) fn of(problem: &Problem, demand: &Demand, accuracy: f64, integrals: bool, pictures: &mut Pictures) -> (Self, Vec<bool>) {
         let n = problem.dim();
         let a = &problem.statics;
         let bounds: Vec<f64> = problem.matrices.iter().map(row_bound).collect();
@@ -117,6 +121,7 @@ impl Load {
             moments: problem.moments.len(),
             accuracy,
             changing: 0,
+            commuting: 0,
             changing_s: 0.0,
             coupling_turns: 0.0,
             entry_turns: 0.0,
@@ -127,7 +132,8 @@ impl Load {
             entries_rad: 0.0,
             carrier_turns: 0.0,
         };
-        for segment in &problem.segments {
+        let mut by_integral = vec![false; problem.segments.len()];
+        for (index, segment) in problem.segments.iter().enumerate() {
             let (terms, length_s) = (problem.terms_of(segment), segment.length_s);
             let tied = pictures.of(segment, Kind::Tied);
             let mut rad_s = resting_rad_s;
@@ -145,6 +151,14 @@ impl Load {
                     rises = rises.max(way);
                     carrier = carrier.max(term.turns_hz.abs());
                 }
+                if integrals && commutes(&tied, terms, length_s) {
+                    load.commuting += 1;
+                    by_integral[index] = true;
+                    load.lab_rad += rad_s * length_s;
+                    load.entries_rad += (rad_s - resting_rad_s + entries_rad_s) * length_s;
+                    load.carrier_turns += carrier * length_s;
+                    continue;
+                }
                 let free = pictures.of(segment, Kind::Free);
                 load.changing += 1;
                 load.changing_s += length_s;
@@ -158,12 +172,12 @@ impl Load {
             load.entries_rad += (rad_s - resting_rad_s + entries_rad_s) * length_s;
             load.carrier_turns += carrier * length_s;
         }
-        load
+        (load, by_integral)
     }
 
     /// What rounding leaves uncertain in any recorded number: that of the entries of H over the whole time, and that of `sums`
     /// products one after the other, which all err in the same sense where the factors are alike.
     pub(super) fn floor(&self, sums: u64) -> f64 {
-        f64::EPSILON * (4.0 + 0.7 * self.entries_rad + 0.25 * sums as f64)
+        f64::EPSILON * (4.0 + 1.05 * self.entries_rad + 0.25 * sums as f64)
     }
 }

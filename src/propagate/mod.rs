@@ -11,7 +11,9 @@
 //! | `picture.rs` | the turning diagonal picture of a segment |
 //! | `load.rs` | how large, fast and long a problem is |
 //! | `exponential.rs` | exp(-i H tau) of a constant Hermitian H |
+//! | `jacobi.rs` | eigenvectors that cannot fail |
 //! | `constant.rs` | stretches of constant H |
+//! | `commuting.rs` | stretches whose H commutes with itself |
 //! | `even_steps.rs` | equal steps between moments, shared by the next two |
 //! | `slices.rs` | midpoint slices, order 2 |
 //! | `geometric.rs` | Magnus expansion, order 6 |
@@ -20,12 +22,14 @@
 
 mod asked;
 mod choose;
+mod commuting;
 mod constant;
 mod cross_check;
 mod dormand_prince;
 mod even_steps;
 mod exponential;
 mod geometric;
+mod jacobi;
 mod load;
 mod picture;
 mod refine;

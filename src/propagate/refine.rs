@@ -20,6 +20,8 @@ use crate::problem::Problem;
 const MOST_MULTIPLICATIONS: f64 = 8e9;
 /// First tolerance of the step control over the accuracy asked for: the estimates of order 5 and 3 exceed the error by some 1e4.
 const FIRST_TOLERANCE: f64 = 10.0;
+/// The finer Runge-Kutta run takes so many times the steps of the coarser: at order 8 that is a tenth of its error.
+const LEAST_STEP_RATIO: f64 = 1.35;
 /// Where the estimate is beyond this, nothing is computed: an hour.
 const HOPELESS_NS: f64 = 3.6e12;
 /// Most equal steps of the coarser run.
@@ -52,7 +54,9 @@ struct Ran<R> {
 /// Solves `problem` and measures the error of every recorded number; `new_recorder` is called once for each run.
 pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new_recorder: impl Fn() -> R) -> Solved<R> {
     let mut pictures = Pictures::new(problem);
-    let load = Load::of(problem, demand, asked.accuracy, &mut pictures);
+    // by its integral only where the choice is ours, and never where times are spent in levels
+    let integrals = asked.method.is_none() && !demand.time_in;
+    let (load, by_integral) = Load::of(problem, demand, asked.accuracy, integrals, &mut pictures);
     let (method, mut reason) = choose(&load, asked.method);
     // Runge-Kutta sums are compensated; all other steps are products, one after the other.
     let floor_of = |work: &Work| load.floor(if load.changing > 0 && method != Method::Smooth { work.steps } else { load.segments as u64 });
@@ -65,7 +69,7 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         reason += &format!("; it was not run, since it would take about {:.0e} s", ns * 1e-9);
     }
     let mut products = 0;
-    let mut route = Route { problem, demand: *demand, method, changing_s: load.changing_s, pictures };
+    let mut route = Route { problem, demand: *demand, method, by_integral, changing_s: load.changing_s, pictures };
     let mut go = |fineness: Fineness| {
         let mut recorder = new_recorder();
         let work = run(&mut route, &fineness, left, &mut recorder);
@@ -76,21 +80,23 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
     let least = least_tolerance(&load);
     let start = Fineness { tolerance: (FIRST_TOLERANCE * asked.accuracy).max(least), pieces: 1, doublings: 0 };
     let mut coarse = go(start);
-    let mut fine = go(finer(start, method, least));
+    let mut fine = go_finer(&mut go, &coarse, method, least);
     let (error_figure, floor) = loop {
         let floor = floor_of(&coarse.work);
         let spoilt = coarse.work.exhausted() || fine.work.exhausted();
         let error_figure = if spoilt { f64::INFINITY } else { largest_figure(coarse.recorder.numbers(), fine.recorder.numbers(), floor) };
-        if error_figure <= asked.accuracy.max(floor) || spoilt || !error_figure.is_finite() || load.changing == 0 {
+        if error_figure <= asked.accuracy.max(floor) || spoilt || !error_figure.is_finite() || load.changing + load.commuting == 0 {
             break (error_figure, floor);
         }
         let Some(wanted) = tighten(&coarse, &fine, error_figure / asked.accuracy.max(floor), method, least) else {
             break (error_figure, floor);
         };
         let (next_coarse, reused) = if wanted == fine.fineness { (None, true) } else { (Some(go(wanted)), false) };
-        let next_fine = go(finer(wanted, method, least));
-        let worse = next_fine.work.exhausted() || next_coarse.as_ref().is_some_and(|ran| ran.work.exhausted());
-        if worse {
+        if next_coarse.as_ref().is_some_and(|ran| ran.work.exhausted()) {
+            break (error_figure, floor);
+        }
+        let next_fine = go_finer(&mut go, next_coarse.as_ref().unwrap_or(&fine), method, least);
+        if next_fine.work.exhausted() {
             break (error_figure, floor);
         }
         coarse = match next_coarse {
@@ -119,6 +125,21 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
     }
 }
 
+/// A run so much finer than `coarse` that the difference means something. Where caps and not the tolerance set the steps of
+/// Runge-Kutta, a smaller tolerance alone may leave them as they were.
+fn go_finer<R>(go: &mut impl FnMut(Fineness) -> Ran<R>, coarse: &Ran<R>, method: Method, least: f64) -> Ran<R> {
+    let mut fine = go(finer(coarse.fineness, method, least));
+    if method == Method::Smooth {
+        for _ in 0..3 {
+            if fine.work.exhausted() || fine.work.steps as f64 >= LEAST_STEP_RATIO * coarse.work.steps as f64 {
+                break;
+            }
+            fine = go(finer(fine.fineness, method, least));
+        }
+    }
+    fine
+}
+
 /// Below this the error estimate of a step is rounding alone.
 fn least_tolerance(load: &Load) -> f64 {
     4.0 * f64::EPSILON * (1.0 + load.coupling_turns * crate::units::RAD_PER_TURN)
@@ -127,7 +148,11 @@ fn least_tolerance(load: &Load) -> f64 {
 /// The next finer resolution.
 fn finer(of: Fineness, method: Method, least: f64) -> Fineness {
     let doublings = if method == Method::ConstantSteps { 2 } else { 1 };
-    Fineness { tolerance: (of.tolerance / 30.0).max(least), pieces: of.pieces + 1, doublings: of.doublings + doublings }
+    Fineness {
+        tolerance: (of.tolerance / 30.0).max(least),
+        pieces: of.pieces + if method == Method::Smooth { 2 } else { 1 },
+        doublings: of.doublings + doublings,
+    }
 }
 
 /// The coarse resolution to try next where the error is `excess` times too large; `None` where nothing finer is left.

@@ -7,7 +7,7 @@ use super::choose::Method;
 use super::constant::Flows;
 use super::picture::{Kind, Picture, Pictures};
 use super::smooth::Smooth;
-use super::{constant, geometric, slices};
+use super::{commuting, constant, geometric, slices};
 use crate::problem::{Matrix, Moment, Problem, Term, Vector};
 
 /// How finely a run is done; each method reads its own field.
@@ -86,6 +86,8 @@ pub(super) struct Route<'p> {
     pub problem: &'p Problem,
     pub demand: Demand,
     pub method: Method,
+    /// Segments whose H commutes with itself and that are done by its integral.
+    pub by_integral: Vec<bool>,
     /// How long H changes altogether, s; the step control spreads its tolerance over it.
     pub changing_s: f64,
     pub pictures: Pictures<'p>,
@@ -93,7 +95,7 @@ pub(super) struct Route<'p> {
 
 /// Runs the whole problem once, with `left` multiplications to spend at most.
 pub(super) fn run(route: &mut Route, fineness: &Fineness, left: f64, recorder: &mut dyn Recorder) -> Work {
-    let Route { problem, demand, method, changing_s, pictures } = route;
+    let Route { problem, demand, method, by_integral, changing_s, pictures } = route;
     let (problem, demand, method) = (*problem, *demand, *method);
     let dim = problem.dim();
     let mut work = Work { steps: 0, products: 0, left };
@@ -114,10 +116,13 @@ pub(super) fn run(route: &mut Route, fineness: &Fineness, left: f64, recorder: &
         let terms = problem.terms_of(segment);
         let tied = pictures.of(segment, Kind::Tied);
         let still = tied.constant(terms);
-        let picture = if still || method != Method::Smooth { tied } else { pictures.of(segment, Kind::Free) };
+        let commuting = by_integral[index];
+        let picture = if still || commuting || method != Method::Smooth { tied } else { pictures.of(segment, Kind::Free) };
         let stretch = Stretch { picture: &picture, terms, length_s: segment.length_s, moments: &problem.moments[first..next], first };
         if still {
             constant::pass(&stretch, fineness.pieces, &mut flows, &mut state, &mut eye, &mut work);
+        } else if commuting {
+            commuting::pass(&stretch, f64::from(fineness.pieces) * 2f64.powi(fineness.doublings as i32), &mut state, &mut eye, &mut work);
         } else {
             match method {
                 Method::Smooth => smooth.pass(&stretch, fineness, &mut state, &mut eye, &mut work),

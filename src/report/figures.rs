@@ -10,6 +10,7 @@ use crate::outcome::Outcome;
 use crate::plan::Point;
 use crate::problem::Sweep;
 use crate::report::fingerprint::fingerprint;
+use crate::report::heading::heading;
 use crate::report::plots::{
     envelopes, spectrum, traces, Drawn, EnvelopeCurve, EnvelopesFigure, Panel, PlotError, PulseBar, PulseSpectrum, Series, SpectrumFigure,
     TracesFigure,
@@ -25,6 +26,8 @@ const MOST_PULSES: usize = 20_000;
 const CURVE_POINTS: usize = 257;
 /// Points on the spectrum of one pulse, on each side.
 const SPECTRUM_POINTS: usize = 400;
+/// The same for a pulse that is much longer than another in its plot.
+const MOST_SPECTRUM_POINTS: usize = 1600;
 
 /// The plots of a run.
 pub fn of_run(document: &Document, point: &Point, outcome: &Outcome) -> Vec<Named> {
@@ -97,7 +100,7 @@ fn traces_figure(document: &Document, point: &Point, columns: &[Column], times_s
         end_s: pulse.start.after(pulse.length_s).seconds(),
     };
     TracesFigure {
-        title: document.title.clone(),
+        title: heading(document),
         fingerprint: fingerprint(document),
         time_s: times_s.to_vec(),
         panels: panels.into_iter().map(|(_, panel)| panel).collect(),
@@ -148,7 +151,7 @@ fn envelopes_figure(document: &Document, point: &Point) -> EnvelopesFigure {
         }
     };
     EnvelopesFigure {
-        title: document.title.clone(),
+        title: heading(document),
         fingerprint: fingerprint(document),
         pulses: point.timeline.pulses.iter().take(MOST_PULSES / 10).map(curve).collect(),
         marks: marks(point),
@@ -159,7 +162,7 @@ fn envelopes_figure(document: &Document, point: &Point) -> EnvelopesFigure {
 /// Spectrum of each different pulse, in dB below its largest, against the offset from the carrier (from zero for a direct drive).
 fn spectrum_figure(document: &Document, point: &Point) -> SpectrumFigure {
     let mut seen: Vec<(usize, usize)> = Vec::new();
-    let mut pulses = Vec::new();
+    let mut shown = Vec::new();
     let mut carrier_hz = None;
     for pulse in &point.timeline.pulses {
         if seen.contains(&(pulse.drive, pulse.envelope)) || seen.len() >= 6 {
@@ -169,10 +172,18 @@ fn spectrum_figure(document: &Document, point: &Point) -> SpectrumFigure {
         if let Some(carrier) = pulse.carrier {
             carrier_hz.get_or_insert(point.timeline.carriers[carrier].centre_hz);
         }
-        let (drive, envelope) = (&document.drives[pulse.drive].name, &document.envelopes[pulse.envelope].name);
-        let (offset_hz, amplitude_db) = pulse_spectrum(document, point, pulse);
-        pulses.push(PulseSpectrum { label: format!("{envelope} on {drive}"), offset_hz, amplitude_db });
+        shown.push(pulse);
     }
+    // one range for all, so that no curve ends inside the plot
+    let widths: Vec<f64> = shown.iter().map(|pulse| spectrum_width_hz(point, pulse)).collect();
+    let range = widths.iter().copied().fold(0.0, f64::max);
+    let one = |(pulse, width): (&&crate::drive::timeline::PlacedPulse, &f64)| {
+        let (drive, envelope) = (&document.drives[pulse.drive].name, &document.envelopes[pulse.envelope].name);
+        let points = ((SPECTRUM_POINTS as f64 * range / width) as usize).min(MOST_SPECTRUM_POINTS);
+        let (offset_hz, amplitude_db) = pulse_spectrum(document, point, pulse, range, points);
+        PulseSpectrum { label: format!("{envelope} on {drive}"), offset_hz, amplitude_db }
+    };
+    let pulses = shown.iter().zip(&widths).map(one).collect();
     // the lines of the system, as offsets from the first carrier
     let names = &document.system.names;
     let lines = carrier_hz.map_or(Vec::new(), |carrier| {
@@ -182,27 +193,41 @@ fn spectrum_figure(document: &Document, point: &Point) -> SpectrumFigure {
             .map(|(a, b)| (format!("{} to {}", names[a], names[b]), (point.energies_hz[b] - point.energies_hz[a]).abs() - carrier))
             .collect()
     });
-    SpectrumFigure { title: document.title.clone(), fingerprint: fingerprint(document), pulses, lines }
+    SpectrumFigure { title: heading(document), fingerprint: fingerprint(document), from_zero: carrier_hz.is_none(), pulses, lines }
+}
+
+/// The sweep of a pulse, if its carrier has one.
+fn chirp_of(point: &Point, pulse: &crate::drive::timeline::PlacedPulse) -> Option<crate::drive::chirp::Chirp> {
+    let carrier = &point.timeline.carriers[pulse.carrier?];
+    let formula = carrier.written.instantaneous.as_ref()?.bind(&point.values);
+    Some(crate::drive::chirp::Chirp::new(formula, carrier.centre_hz, pulse.length_s))
+}
+
+/// Half the range in Hz in which the spectrum of a pulse is worth seeing: its first lobes and the whole chirp.
+///
+/// It is no whole number over the length, so that the grid does not fall on the zeros of a square pulse, which dip without end.
+fn spectrum_width_hz(point: &Point, pulse: &crate::drive::timeline::PlacedPulse) -> f64 {
+    let offsets = |chirp: crate::drive::chirp::Chirp| {
+        (0..=64).map(|k| chirp.offset_hz(pulse.length_s * f64::from(k) / 64.0).abs()).fold(0.0, f64::max)
+    };
+    1.5 * chirp_of(point, pulse).map_or(0.0, offsets) + 12.47 / pulse.length_s
 }
 
 /// Fourier transform of the complex envelope by the trapezium rule, which for a pulse that is 0 outside converges fast.
-fn pulse_spectrum(document: &Document, point: &Point, pulse: &crate::drive::timeline::PlacedPulse) -> (Vec<f64>, Vec<f64>) {
+fn pulse_spectrum(
+    document: &Document,
+    point: &Point,
+    pulse: &crate::drive::timeline::PlacedPulse,
+    range: f64,
+    points: usize,
+) -> (Vec<f64>, Vec<f64>) {
     let envelope = &document.envelopes[pulse.envelope];
     let curve = &point.curves[pulse.envelope];
     let weight = envelope.derivative.map_or(0.0, |derivative| {
         let value = |quantity: crate::config::reader::Quantity| point.values[quantity.register as usize];
         -value(derivative.factor) / (crate::units::RAD_PER_TURN * value(derivative.against))
     });
-    let chirp = pulse.carrier.and_then(|index| {
-        let carrier = &point.timeline.carriers[index];
-        let formula = carrier.written.instantaneous.as_ref()?.bind(&point.values);
-        Some(crate::drive::chirp::Chirp::new(formula, carrier.centre_hz, pulse.length_s))
-    });
-    let reach = chirp
-        .as_ref()
-        .map_or(0.0, |chirp| (0..=64).map(|k| chirp.offset_hz(pulse.length_s * f64::from(k) / 64.0).abs()).fold(0.0, f64::max));
-    // wide enough for the main lobe of the shortest feature and the whole chirp
-    let range = 1.5 * reach + 12.0 / pulse.length_s;
+    let chirp = chirp_of(point, pulse);
     let samples = 2048usize.max((8.0 * range * pulse.length_s) as usize).min(16_384);
     let step = pulse.length_s / samples as f64;
     // X - i Y turns with exp(+2 pi i f t)
@@ -213,7 +238,7 @@ fn pulse_spectrum(document: &Document, point: &Point, pulse: &crate::drive::time
             num_complex::Complex64::new(curve.at(t), if weight == 0.0 { 0.0 } else { -weight * curve.slope(t) }) * cis_turns(turns)
         })
         .collect();
-    let offsets: Vec<f64> = (0..=2 * SPECTRUM_POINTS).map(|k| range * (k as f64 / SPECTRUM_POINTS as f64 - 1.0)).collect();
+    let offsets: Vec<f64> = (0..=2 * points).map(|k| range * (k as f64 / points as f64 - 1.0)).collect();
     let sizes: Vec<f64> = offsets
         .iter()
         .map(|offset| {

@@ -4,6 +4,7 @@ use crate::config::document::Document;
 use crate::config::messages::{short, short_with_unit};
 use crate::outcome::Outcome;
 use crate::plan::{source_name, Point};
+use crate::report::heading::heading;
 
 /// Final numbers shown; the rest is in the files.
 const SHOWN: usize = 16;
@@ -29,9 +30,12 @@ pub fn with_error(value: f64, error: f64) -> String {
 /// Why the accuracy was not reached and what to do.
 pub fn not_reached(document: &Document, outcome: &Outcome) -> String {
     let asked = document.accuracy.last;
+    if !outcome.error_figure.is_finite() {
+        return format!("the accuracy of {} that was asked for is not reached, and no error could be measured: the work was cut short or broke down; ask for less, or shorten the sequence", short(asked));
+    }
     let advice = if outcome.floor > asked {
         format!(
-            "rounding alone leaves about {} here (the phases turn very far); ask for accuracy: {{final: {}}} or shorten the sequence",
+            "rounding alone leaves about {} here; ask for accuracy: {{final: {}}} or shorten the sequence",
             short(outcome.floor),
             short(10f64.powf(outcome.floor.log10().ceil()))
         )
@@ -81,9 +85,14 @@ fn frame_words(document: &Document, point: &Point) -> String {
     words
 }
 
+/// A component of a unit vector, with three decimals and no minus before zero.
+fn component(value: f64) -> String {
+    format!("{:.3}", (value * 1e3).round() / 1e3 + 0.0)
+}
+
 /// The screen.
 pub fn summary(document: &Document, point: &Point, outcome: &Outcome, place: Option<&str>) -> String {
-    let mut text = format!("{}\n", document.title);
+    let mut text = format!("{}\n", heading(document));
     let end = outcome.times_s.last().copied().unwrap_or(0.0);
     text.push_str(&format!("at the end of the sequence, {}, {}:\n", short_with_unit(end, "s"), frame_words(document, point)));
     let wide = outcome.finals.iter().take(SHOWN).map(|f| f.name.chars().count()).max().unwrap_or(0);
@@ -109,12 +118,13 @@ pub fn summary(document: &Document, point: &Point, outcome: &Outcome, place: Opt
             text.push_str(&format!("  free turn about z after the target: {} deg\n", short(turns * 360.0)));
         }
         if let Some((turn, [x, y, z])) = gate.residual {
-            text.push_str(&format!("  residual turn: {} deg about ({x:.3}, {y:.3}, {z:.3})\n", short(turn * 360.0)));
+            let [x, y, z] = [x, y, z].map(component);
+            text.push_str(&format!("  residual turn: {} deg about ({x}, {y}, {z})\n", short(turn * 360.0)));
         }
     }
-    text.push_str(&format!("method: {}: {}\n", outcome.method.word(), outcome.reason));
+    text.push_str(&format!("method {}: {}\n", outcome.method.word(), outcome.reason));
     text.push_str(&format!(
-        "error figure {:.1e} ({} asked), measured as the change from {} to {}\n",
+        "error figure {:.1e} ({} asked), measured by two runs: {}; {}\n",
         outcome.error_figure,
         short(document.accuracy.last),
         outcome.resolutions[0],

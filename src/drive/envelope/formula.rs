@@ -1,6 +1,6 @@
 //! An envelope typed as a formula of t. Its area and largest value are found numerically, its slope by dual numbers.
 
-use std::sync::OnceLock;
+use std::sync::{Arc, OnceLock};
 
 use super::{quadrature, Curve, Pieces};
 use crate::config::tape::BoundFormula;
@@ -10,6 +10,7 @@ use crate::config::tape::BoundFormula;
 pub struct FormulaCurve {
     formula: BoundFormula,
     length_s: f64,
+    kinks_s: Arc<[f64]>,
     area_s: OnceLock<f64>,
     largest: OnceLock<f64>,
 }
@@ -20,7 +21,8 @@ const DEEPEST: u32 = 40;
 impl FormulaCurve {
     /// The curve of `formula` from 0 to `length_s`.
     pub fn new(formula: BoundFormula, length_s: f64) -> FormulaCurve {
-        FormulaCurve { formula, length_s, area_s: OnceLock::new(), largest: OnceLock::new() }
+        let kinks_s = formula.kinks_s(length_s).into();
+        FormulaCurve { formula, length_s, kinks_s, area_s: OnceLock::new(), largest: OnceLock::new() }
     }
 
     /// A time in the pulse without a finite value, if one of a fine grid has none.
@@ -62,7 +64,10 @@ impl Curve for FormulaCurve {
     }
 
     fn area_s(&self) -> f64 {
-        *self.area_s.get_or_init(|| adaptive(0.0, self.length_s, &|t| self.formula.at(t)))
+        *self.area_s.get_or_init(|| {
+            let bounds: Vec<f64> = std::iter::once(0.0).chain(self.kinks_s.iter().copied()).chain([self.length_s]).collect();
+            bounds.windows(2).map(|pair| adaptive(pair[0], pair[1], &|t| self.formula.at(t))).sum()
+        })
     }
 
     fn largest(&self) -> f64 {
@@ -87,6 +92,6 @@ impl Curve for FormulaCurve {
     }
 
     fn pieces(&self) -> Pieces {
-        Pieces::Smooth { kinks_s: [].into() }
+        Pieces::Smooth { kinks_s: self.kinks_s.clone() }
     }
 }

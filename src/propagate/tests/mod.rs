@@ -148,7 +148,14 @@ pub fn solve(problem: &Problem, accuracy: f64, method: Option<Method>) -> super:
 pub fn at_doublings(problem: &Problem, method: Method, doublings: u32) -> Vec<Complex64> {
     let mut kept = Kept::default();
     let pictures = super::picture::Pictures::new(problem);
-    let mut route = super::run::Route { problem, demand: Demand::default(), method, changing_s: problem.length_s(), pictures };
+    let mut route = super::run::Route {
+        problem,
+        demand: Demand::default(),
+        method,
+        by_integral: vec![false; problem.segments.len()],
+        changing_s: problem.length_s(),
+        pictures,
+    };
     let fineness = super::run::Fineness { tolerance: 1e-10, pieces: 1, doublings };
     super::run::run(&mut route, &fineness, 1e12, &mut kept);
     kept.last().to_vec()

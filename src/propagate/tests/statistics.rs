@@ -255,7 +255,7 @@ fn print_loads_and_seconds() {
         let accuracy = random.size(1e-11, 1e-6);
         let demand = Demand { propagator: random.chance(0.3), time_in: false };
         let mut pictures = crate::propagate::picture::Pictures::new(&case);
-        let load = crate::propagate::Load::of(&case, &demand, accuracy, &mut pictures);
+        let (load, _) = crate::propagate::Load::of(&case, &demand, accuracy, false, &mut pictures);
         if load.changing == 0 {
             continue;
         }

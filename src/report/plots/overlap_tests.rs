@@ -220,7 +220,7 @@ fn exact_spectrum_names_its_lines_and_draws_zeros_at_the_edge() {
     let mut lines: Vec<(String, f64)> = (0..40).map(|k| (format!("line {k}"), 1e6 * f64::from(k))).collect();
     lines.push(("far away".into(), 1e12));
     let pulses = (0..20).map(|k| pulse(&format!("pulse {k}"))).collect();
-    let texts = checked(spectrum(&SpectrumFigure { title: "Spectra".into(), fingerprint: "f00".into(), pulses, lines }));
+    let texts = checked(spectrum(&SpectrumFigure { title: "Spectra".into(), fingerprint: "f00".into(), from_zero: false, pulses, lines }));
     assert!(texts.iter().any(|text| text == "line 0") && !texts.iter().any(|text| text == "far away"));
     assert!(texts.iter().any(|text| text.starts_with("… 4 more pulses")));
 }

@@ -16,6 +16,8 @@ pub struct SpectrumFigure {
     pub title: String,
     /// Fingerprint of the config, in small print.
     pub fingerprint: String,
+    /// Whether the offsets count from zero, because no pulse has a carrier.
+    pub from_zero: bool,
     /// One spectrum a pulse.
     pub pulses: Vec<PulseSpectrum>,
     /// Transitions of the system (name, offset in Hz from the carrier).
@@ -76,7 +78,8 @@ pub fn spectrum(figure: &SpectrumFigure) -> Result<Drawn, PlotError> {
     names(&mut scene, right, &vertical, &drawn, NAME_LIMIT);
     x_numbers(&mut scene, &window, &numbers, bottom);
     let middle = ((left + right) / 2.0, HEIGHT - FOOT + 60.0);
-    scene.text(&with_unit("offset from the carrier", &display.unit), middle, LABEL, INK, Anchor::Middle);
+    let counted = if figure.from_zero { "frequency" } else { "offset from the carrier" };
+    scene.text(&with_unit(counted, &display.unit), middle, LABEL, INK, Anchor::Middle);
     remarks(&mut scene, figure, named.iter().filter(|line| line.name.is_none()).count());
     frame::fingerprint(&mut scene, &figure.fingerprint);
     scene.finish()

@@ -1,0 +1,66 @@
+//! Worked configs by kind of question, as files to begin with: the files of `configs/`, word for word.
+
+/// A worked config.
+#[derive(Debug, Clone, Copy)]
+pub struct Starter {
+    /// Its kind, as a user types it; the file is called by it.
+    pub kind: &'static str,
+    /// What it shows, in one line.
+    pub about: &'static str,
+    /// The config.
+    pub text: &'static str,
+    /// Files it names: name and content.
+    pub beside: &'static [(&'static str, &'static str)],
+}
+
+/// All kinds, in the order to learn from.
+pub const STARTERS: &[Starter] = &[
+    Starter {
+        kind: "flip",
+        about: "two levels, a square pulse a little off the line: Rabi oscillation and what the detuning costs",
+        text: include_str!("../../configs/flip.yaml"),
+        beside: &[],
+    },
+    Starter {
+        kind: "leakage",
+        about: "a ladder of levels, a short shaped pulse with derivative quadrature: leakage and gate error",
+        text: include_str!("../../configs/leakage.yaml"),
+        beside: &[],
+    },
+    Starter {
+        kind: "low-frequency",
+        about: "a real cosine drive as strong as its frequency nearly is: Bloch vector, checked by a second method",
+        text: include_str!("../../configs/low-frequency.yaml"),
+        beside: &[],
+    },
+    Starter {
+        kind: "crossing",
+        about: "a typed matrix, its gap swept through zero by a formula: branches followed and jumped",
+        text: include_str!("../../configs/crossing.yaml"),
+        beside: &[],
+    },
+    Starter {
+        kind: "waveform",
+        about: "a measured pulse from a CSV file, sized in volts: inversion, and time spent in the upper level",
+        text: include_str!("../../configs/waveform.yaml"),
+        beside: &[("waveform.csv", include_str!("../../configs/waveform.csv"))],
+    },
+    Starter {
+        kind: "echo",
+        about: "blocks, repeats, waits and marks: refocusing pulses that are too strong, on a spin off its line",
+        text: include_str!("../../configs/echo.yaml"),
+        beside: &[],
+    },
+    Starter {
+        kind: "transfer",
+        about: "two overlapping pulses on three levels: passage over an upper level that stays empty",
+        text: include_str!("../../configs/transfer.yaml"),
+        beside: &[],
+    },
+];
+
+/// The starter of a kind; blanks and underscores count as dashes, large letters as small ones.
+pub fn starter(kind: &str) -> Option<&'static Starter> {
+    let kind = kind.trim().to_lowercase().replace([' ', '_'], "-");
+    STARTERS.iter().find(|starter| starter.kind == kind)
+}

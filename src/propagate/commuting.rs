@@ -1,0 +1,111 @@
+//! Stretches in which H changes but commutes with itself at all times: psi(tau) = exp(-i integral of H) psi(0), exact whatever the
+//! pulse looks like (the first term of W. Magnus, Communications on Pure and Applied Mathematics 7, 649 (1954), when all others
+//! vanish). A pulse on resonance seen in its own frame is of this kind, and a tuned gap.
+//!
+//! H of the picture is a sum of constant Hermitian matrices with real functions of time; it commutes with itself if every two of
+//! the matrices do. The integrals are taken by Gauss's rule with 20 points on `cells` equal parts of each gap between moments;
+//! the second resolution has more cells.
+
+use num_complex::Complex64;
+
+use super::exponential::Flow;
+use super::picture::Picture;
+use super::run::{Eye, State, Stretch, Work};
+use crate::drive::envelope::quadrature;
+use crate::problem::{Matrix, Term};
+
+/// Moments at which a coefficient is looked at to see whether its phase stands still.
+const LOOKS: u32 = 48;
+/// Commutators below this share of twice the product of the norms are rounding.
+const CLOSE: f64 = 1e-14;
+
+/// Whether H of a picture commutes with itself all through a segment of `length_s`.
+pub(super) fn commutes(picture: &Picture, terms: &[Term], length_s: f64) -> bool {
+    let n = picture.dim;
+    let mut parts: Vec<Matrix> = Vec::new();
+    let mut constant = Matrix::from_fn(n, n, |j, k| if j == k { Complex64::from(picture.diagonal[j]) } else { Complex64::default() });
+    for turning in &picture.turnings {
+        let mut x = Matrix::zeros(n, n);
+        for part in &turning.parts {
+            x[(part.row, part.column)] += part.value;
+        }
+        let factors: Vec<Complex64> =
+            (0..=LOOKS).map(|k| Picture::factor(turning, terms, length_s * (f64::from(k) + 0.37) / (f64::from(LOOKS) + 1.0))).collect();
+        let largest = factors.iter().copied().fold(Complex64::default(), |a, b| if b.norm() > a.norm() { b } else { a });
+        if largest.norm() == 0.0 {
+            continue;
+        }
+        let phase = largest / largest.norm();
+        let turned = |m: &Matrix, z: Complex64| m * z + (m * z).adjoint();
+        let one = turned(&x, phase);
+        if factors.iter().all(|f| (f - largest).norm() <= 1e-15 * largest.norm()) {
+            constant += one * Complex64::from(largest.norm());
+            continue;
+        }
+        parts.push(one);
+        // a coefficient whose phase moves drives two matrices
+        if factors.iter().any(|f| (f * phase.conj()).im.abs() > 1e-14 * largest.norm()) {
+            parts.push(turned(&x, phase * Complex64::i()));
+        }
+    }
+    let mean = constant.trace() / Complex64::from(n as f64);
+    for j in 0..n {
+        constant[(j, j)] -= mean;
+    }
+    parts.push(constant);
+    let close = |a: &Matrix, b: &Matrix| (a * b - b * a).norm() <= CLOSE * 2.0 * a.norm() * b.norm();
+    parts.iter().enumerate().all(|(k, a)| parts[..k].iter().all(|b| close(a, b)))
+}
+
+/// Carries the state through the stretch.
+pub(super) fn pass(stretch: &Stretch, cells: f64, state: &mut State, eye: &mut Eye, work: &mut Work) {
+    let dim = state.dim;
+    let picture = stretch.picture;
+    let zero = Complex64::default();
+    let (mut k, mut psi, mut room) = (vec![zero; dim * dim], vec![zero; dim], Vec::new());
+    // cells short enough for every turn of H and every rise of an envelope
+    let busy = super::load::busy_part(stretch.terms, stretch.length_s);
+    let rate = (4.0 / busy / stretch.length_s + picture.fastest_hz) * cells;
+    let mut tau_s = 0.0;
+    for m in 0..=stretch.moments.len() {
+        let stop_s = stretch.moments.get(m).map_or(stretch.length_s, |moment| moment.offset_s.min(stretch.length_s));
+        let gap_s = stop_s - tau_s;
+        if gap_s > 0.0 && !work.exhausted() {
+            let parts = (gap_s * rate).ceil().max(1.0);
+            k.fill(zero);
+            for (j, value) in picture.diagonal.iter().enumerate() {
+                k[j * (dim + 1)] = Complex64::from(value * gap_s);
+            }
+            for turning in &picture.turnings {
+                let mut factor = zero;
+                let mut done = 0.0;
+                while done < parts {
+                    let from_s = tau_s + gap_s * (done / parts);
+                    done += 1.0;
+                    let to_s = tau_s + gap_s * (done / parts);
+                    let part = |part: fn(&Complex64) -> f64| {
+                        quadrature::integral(from_s, to_s, |t| part(&Picture::factor(turning, stretch.terms, t)))
+                    };
+                    factor += Complex64::new(part(|z| z.re), part(|z| z.im));
+                    work.step(2, dim);
+                }
+                for part in &turning.parts {
+                    let entry = factor * part.value;
+                    k[part.row + dim * part.column] += entry;
+                    k[part.column + dim * part.row] += entry.conj();
+                }
+            }
+            let flow = Flow::new(&k, dim, 1.0, false);
+            let mut products = 0;
+            for column in state.amplitudes.chunks_exact_mut(dim) {
+                products += flow.act(1.0, column, &mut psi, &mut room);
+                column.copy_from_slice(&psi);
+            }
+            work.step(products, dim * dim);
+            tau_s = stop_s;
+        }
+        if m < stretch.moments.len() {
+            eye.see(stretch, m, &state.amplitudes[..dim], &state.time_in_s);
+        }
+    }
+}

@@ -1,0 +1,149 @@
+//! `nutate new` as a person meets it, and every worked config run as written.
+
+use std::fs;
+use std::path::Path;
+use std::process::{Command, Output};
+
+use nutate::config::starters::STARTERS;
+
+fn nutate(folder: &Path, words: &[&str]) -> Output {
+    Command::new(env!("CARGO_BIN_EXE_nutate"))
+        .args(words)
+        .current_dir(folder)
+        .output()
+        .expect("the program of this package is built for its tests")
+}
+
+fn text(bytes: &[u8]) -> String {
+    String::from_utf8_lossy(bytes).into_owned()
+}
+
+fn empty() -> tempfile::TempDir {
+    tempfile::tempdir().expect("the system has a folder for temporary files")
+}
+
+/// Runs the config of a kind in an empty folder and returns its result.
+fn run_of(kind: &str) -> serde_json::Value {
+    let folder = empty();
+    let wrote = nutate(folder.path(), &["new", kind]);
+    assert_eq!(wrote.status.code(), Some(0), "{}", text(&wrote.stderr));
+    let config = format!("{kind}.yaml");
+    assert!(text(&wrote.stdout).ends_with(&format!("then type: nutate run {config}\n")));
+    let ran = nutate(folder.path(), &["run", &config]);
+    assert_eq!(ran.status.code(), Some(0), "{kind}: {}{}", text(&ran.stdout), text(&ran.stderr));
+    assert_eq!(text(&ran.stderr), "", "{kind} runs without a warning");
+    let results = folder.path().join("outputs").join(kind);
+    for file in ["traces.csv", "traces.png", "traces.svg", "envelopes.png", "spectrum.png", "config.yaml"] {
+        assert!(results.join(file).is_file(), "{kind} leaves {file}");
+    }
+    let bytes = fs::read(results.join("result.json")).expect("a run leaves result.json");
+    serde_json::from_slice(&bytes).expect("result.json is JSON")
+}
+
+fn number(result: &serde_json::Value, path: &str) -> f64 {
+    result.pointer(path).and_then(serde_json::Value::as_f64).unwrap_or_else(|| panic!("{path} is a number of the result"))
+}
+
+/// What `accuracy: final` says in a config, 1e-8 where it says nothing.
+fn accuracy(text: &str) -> f64 {
+    let written = text.lines().find_map(|line| line.trim().strip_prefix("final:")).and_then(|rest| rest.split_whitespace().next());
+    written.map_or(1e-8, |word| word.parse().expect("the accuracy of a starter is a plain number"))
+}
+
+#[test]
+fn cli_every_starter_runs_to_its_accuracy() {
+    for starter in STARTERS {
+        let result = run_of(starter.kind);
+        let figure = number(&result, "/error_figure");
+        assert!(figure > 0.0 && figure <= accuracy(starter.text), "{}: {figure}", starter.kind);
+    }
+}
+
+// I. I. Rabi, Physical Review 51, 652 (1937): R^2/(R^2 + d^2) sin^2(pi sqrt(R^2 + d^2) T) with R = 2 MHz, d = 0.6 MHz, T = 1.25 us;
+// the number from mpmath with 30 digits: `mp.dps=30; (4/mpf('4.36'))*sin(pi*sqrt(mpf('4.36'))*mpf('1.25'))**2`.
+#[test]
+fn exact_flip_meets_the_formula_of_rabi() {
+    let up = number(&run_of("flip"), "/final/populations/up");
+    assert!((up - 0.8120212189775531).abs() < 1e-12, "{up}");
+}
+
+#[test]
+fn cli_low_frequency_is_cross_checked() {
+    let difference = number(&run_of("low-frequency"), "/cross_check/difference");
+    assert!(difference < 1e-10, "{difference}");
+}
+
+// L. D. Landau (1932) and C. Zener (1932): exp(-4 pi^2 0.8^2 / 18) = 0.2457 jumps the gap of an endless sweep. The ends of
+// this one, at 18 MHz from a crossing of 0.8 MHz, change the amplitude by about coupling / (span/2) = 0.044.
+#[test]
+fn exact_crossing_is_near_landau_and_zener() {
+    let jumped = number(&run_of("crossing"), "/final/adiabatic_populations/right");
+    assert!((jumped - 0.2457).abs() < 0.044, "{jumped}");
+    assert!((jumped - 0.2457).abs() > 1e-4, "the ends are not in the formula: {jumped}");
+}
+
+#[test]
+fn cli_without_a_kind_the_kinds_are_listed() {
+    let folder = empty();
+    let listed = nutate(folder.path(), &["new"]);
+    assert_eq!(listed.status.code(), Some(0));
+    let lines = text(&listed.stdout);
+    for starter in STARTERS {
+        assert!(lines.contains(&format!("  {} ", starter.kind)), "{lines}");
+    }
+    assert_eq!(lines.lines().count(), STARTERS.len() + 2);
+}
+
+#[test]
+fn cli_an_unknown_kind_is_refused_with_the_near_one() {
+    let folder = empty();
+    let refused = nutate(folder.path(), &["new", "leakege"]);
+    assert_eq!(refused.status.code(), Some(2));
+    let said = text(&refused.stderr);
+    assert!(said.starts_with("error: there is no starter \"leakege\"."), "{said}");
+    assert!(said.ends_with("  Write: nutate new leakage\n"), "{said}");
+    assert_eq!(fs::read_dir(folder.path()).map(Iterator::count).ok(), Some(0));
+}
+
+#[test]
+fn cli_new_overwrites_nothing() {
+    let folder = empty();
+    fs::write(folder.path().join("flip.yaml"), "mine").expect("a temporary folder can be written");
+    let refused = nutate(folder.path(), &["new", "flip"]);
+    assert_eq!(refused.status.code(), Some(2));
+    assert!(
+        text(&refused.stderr).starts_with("error: flip.yaml is there already.\n  Nothing was overwritten."),
+        "{}",
+        text(&refused.stderr)
+    );
+    assert_eq!(fs::read_to_string(folder.path().join("flip.yaml")).ok().as_deref(), Some("mine"));
+}
+
+#[test]
+fn cli_new_leaves_no_half_of_a_starter() {
+    let folder = empty();
+    fs::write(folder.path().join("waveform.yaml"), "mine").expect("a temporary folder can be written");
+    assert_eq!(nutate(folder.path(), &["new", "waveform"]).status.code(), Some(2));
+    assert!(!folder.path().join("waveform.csv").exists());
+    assert_eq!(fs::read_to_string(folder.path().join("waveform.yaml")).ok().as_deref(), Some("mine"));
+}
+
+#[test]
+fn cli_new_puts_what_a_config_names_beside_it() {
+    let folder = empty();
+    fs::create_dir(folder.path().join("my bench")).expect("a temporary folder can be written");
+    let wrote = nutate(folder.path(), &["new", "Waveform", "my bench/first.yaml"]);
+    assert_eq!(wrote.status.code(), Some(0), "{}", text(&wrote.stderr));
+    assert!(folder.path().join("my bench/waveform.csv").is_file());
+    assert!(text(&wrote.stdout).ends_with("then type: nutate run 'my bench/first.yaml'\n"));
+    let checked = nutate(folder.path(), &["check", "my bench/first.yaml"]);
+    assert_eq!(checked.status.code(), Some(0), "{}", text(&checked.stderr));
+}
+
+#[test]
+fn cli_new_names_a_folder_that_is_not_there() {
+    let folder = empty();
+    let refused = nutate(folder.path(), &["new", "flip", "nowhere/flip.yaml"]);
+    assert_eq!(refused.status.code(), Some(2));
+    assert!(text(&refused.stderr).contains("the folder of nowhere/flip.yaml does not exist"));
+}
