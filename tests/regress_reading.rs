@@ -46,3 +46,17 @@ fn regress_a_hundred_thousand_mistakes_took_a_minute() {
     // 0.1 s; it was 78 s
     assert!(clock.elapsed().as_secs_f64() < 5.0, "{:?}", clock.elapsed());
 }
+
+/// Found by mutation: a key with a closing bracket was taken for the tail of a cut value, and nothing was said of it.
+#[test]
+fn regress_a_key_with_a_bracket_was_refused_without_a_word() {
+    let message = rig::refusal(&rig::ONE_PULSE.replace("- pulse:", "- pul)se:"));
+    assert!(message.contains("error: config.yaml, line 12, column 5: "), "{message}");
+    assert!(message.contains("no key \"pul)se\""), "{message}");
+    // and behind a text, which may hold a bracket itself, the tail was lost
+    let message = rig::refusal(&format!("{}output: {{folder: runs (1, 2)}}\n", rig::ONE_PULSE));
+    assert!(message.contains("\"runs (1\" is cut off"), "{message}");
+    // one cut is one mistake
+    let message = rig::refusal(&rig::ONE_PULSE.replace("up: 40 MHz", "up: max(40 MHz, 3 MHz)"));
+    assert_eq!(message.matches("is cut off").count(), 1, "{message}");
+}
