@@ -26,5 +26,6 @@ pub mod outcome;
 pub mod plan;
 pub mod problem;
 pub mod propagate;
+pub mod quadrature;
 pub mod report;
 pub mod units;

@@ -106,12 +106,15 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
     });
 
     let (recorded, finer) = (&solved.recorded, &solved.finer);
+    // numbers of a run that was not made or broke down mean nothing
+    let sound = solved.error_figure.is_finite();
     let end = problem.moments.len() - 1;
     let mut finals: Vec<Final> = columns
         .iter()
         .enumerate()
         .map(|(k, column)| {
             let (value, finer) = (recorded.value(end, k), finer.value(end, k));
+            let (value, finer) = if sound { (value, finer) } else { (f64::NAN, f64::NAN) };
             let error = figure(value / column.scale, finer / column.scale, solved.floor) * column.scale;
             Final { name: column.name.clone(), unit: column.unit, value, finer, error }
         })
@@ -120,17 +123,22 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
     let names: Vec<String> = observables.last.iter().flat_map(|quantity| quantity.names()).collect();
     let mut whole_error = 0.0f64;
     for ((name, value), finer) in names.into_iter().zip(last).zip(finer_last) {
-        let error = figure(*value, *finer, solved.floor);
+        let (value, finer) = if sound { (*value, *finer) } else { (f64::NAN, f64::NAN) };
+        let error = figure(value, finer, solved.floor);
         if name.starts_with("propagator_") {
             whole_error = whole_error.max(error);
         } else {
-            finals.push(Final { name, unit: "1", value: *value, finer: *finer, error });
+            finals.push(Final { name, unit: "1", value, finer, error });
         }
     }
-    let gate = observables.gate.as_ref().zip(recorded.propagator.as_ref()).map(|(judge, propagator)| judge.judge(propagator));
-    let propagator = recorded.propagator.clone().filter(|_| observables.propagator).map(|propagator| (propagator, whole_error));
-    let rows =
-        recorded.numbers()[..(end + 1) * columns.len()].iter().enumerate().map(|(k, number)| number * scales[k % scales.len()]).collect();
+    let gate =
+        observables.gate.as_ref().filter(|_| sound).zip(recorded.propagator.as_ref()).map(|(judge, propagator)| judge.judge(propagator));
+    let propagator = recorded.propagator.clone().filter(|_| observables.propagator && sound).map(|propagator| (propagator, whole_error));
+    let rows = recorded.numbers()[..(end + 1) * columns.len()]
+        .iter()
+        .enumerate()
+        .map(|(k, number)| if sound { number * scales[k % scales.len()] } else { f64::NAN })
+        .collect();
     let cross_check = solved.cross_check.as_ref().map(|check| match check {
         CrossCheck::Done { method, difference, .. } => Crossing { method: method.clone(), difference: Ok(*difference) },
         CrossCheck::Skipped { method, reason } => Crossing { method: method.clone(), difference: Err(reason.clone()) },

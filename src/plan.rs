@@ -330,6 +330,12 @@ impl Point<'_> {
         self.lab.segments = segments;
         self.lab.terms = terms;
         self.warnings.clear();
+        for (drive, first) in document.drives.iter().zip(&self.timeline.first_carriers) {
+            if let Some(carrier) = first.map(|carrier| &self.timeline.carriers[carrier]).filter(|carrier| carrier.centre_hz < 0.0) {
+                let fault = Fault::NegativeCarrier { drive: drive.name.clone(), hz: carrier.centre_hz };
+                self.warnings.push(Mistake::warning(carrier.written.centre.place, fault));
+            }
+        }
         self.frame = match &document.frame {
             Frame::Lab => None,
             Frame::Rotating(frame) => Some(self.rotate(document, frame, &parts, put_back)?),

@@ -11,7 +11,7 @@ use nutate::config::starters::STARTERS;
 /// `problem` and `units` are the common ground. `config` makes no matrices, `propagate` knows no names of a config, and `report`
 /// and `cli` come after the join of all, `plan` and `outcome`.
 const ROOMS: &[&[&str]] = &[
-    &["units"],
+    &["units", "quadrature"],
     &["problem"],
     &["config"],
     &["model"],

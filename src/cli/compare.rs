@@ -58,7 +58,12 @@ fn try_run(words: &Words) -> Result<Status, Status> {
     point(&base)?;
     let document = base.document();
     let all = plans(document, &written).map_err(fault)?;
-    let folder = words.folder.clone().unwrap_or_else(|| default_folder(document));
+    let folder = words.folder.clone().unwrap_or_else(|| {
+        // a run of the same file keeps its own folder
+        let mut name = default_folder(document).into_os_string();
+        name.push("-compare");
+        PathBuf::from(name)
+    });
     let staging = prepare(&folder, document, words.replace).map_err(|fault| {
         complain(&format!("{fault}\n"));
         Status::Refused

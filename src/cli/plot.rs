@@ -35,6 +35,9 @@ fn try_plot(words: &Words) -> Result<Status, Status> {
     };
     let bytes = std::fs::read(words.folder.join("result.json")).map_err(|_| no_result("it has no result.json".to_string()))?;
     let json: serde_json::Value = serde_json::from_slice(&bytes).map_err(|_| no_result("its result.json cannot be read".to_string()))?;
+    if json.get("variants").is_some() {
+        return Err(no_result("it holds a comparison; nutate compare draws its plots".to_string()));
+    }
     let set: Vec<(String, String)> = json
         .pointer("/config/set")
         .and_then(|set| set.as_object())

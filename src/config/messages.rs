@@ -148,6 +148,7 @@ pub enum Fault {
     NotUnitary { off: f64 },
     TargetSize { found: usize, wanted: usize },
     NotDiagonal { operator: String },
+    NegativeCarrier { drive: String, hz: f64 },
     // frames
     Beat { drive: String, levels: [String; 2], turns_hz: f64, sum: String, closes_hz: f64 },
     DoubtfulDrop { drive: String, levels: [String; 2], size_hz: f64, turns_hz: f64 },
@@ -187,6 +188,16 @@ impl Words {
             self.write.push(format!("{prefix}{near}"));
         }
         self
+    }
+}
+
+/// The unit that a number without one most likely wants: a large count of hertz is in Hz already, a small one of seconds in s.
+fn fitting_unit(text: &str, dim: Dim) -> &'static str {
+    let digits = text.rsplit([':', '=']).next().unwrap_or(text).trim();
+    match (digits.parse::<f64>().map(f64::abs), dim) {
+        (Ok(value), Dim::FREQUENCY) if value >= 1e5 => "Hz",
+        (Ok(value), Dim::TIME) if value > 0.0 && value < 1e-3 => "s",
+        _ => dim.example(),
     }
 }
 
@@ -387,7 +398,7 @@ impl Fault {
                         dim.words().trim_start_matches("a ").trim_start_matches("an "),
                         dim.proposals()
                     ))
-                    .write(format!("{text} {}", dim.example()))
+                    .write(format!("{text} {}", fitting_unit(text, *dim)))
             }
             WrongDim { what, wanted, found, defined, write } => {
                 let mut words = say(format!("{what} must be {}, but this is {}.", wanted.words(), found.words()));
@@ -621,7 +632,7 @@ impl Fault {
             }
             AccuracyTooFine { found, floor } => say(format!("an accuracy of {} is below what double precision can reach.", short(*found)))
                 .why(format!("Rounding alone leaves about {} in any result.", short(*floor)))
-                .write(format!("final: {}", short(*floor))),
+                .write(format!("final: {}      (or more; lower only for short sequences)", short(10.0 * floor))),
             FreeZUnsaid { levels } => {
                 let words = say("the gate must say whether a turn about z after it is free.")
                     .why("With software phase tracking it costs nothing; else it is an error.")
@@ -635,6 +646,9 @@ impl Fault {
             NotUnitary { off } => say(format!("the target is not unitary: it is off by {}.", short(*off))),
             TargetSize { found, wanted } => say(format!("the target has {found} rows for {wanted} levels under within.")),
             NotDiagonal { operator } => say(format!("the operator \"{operator}\" is not diagonal and real, so it is no turn about z.")),
+            NegativeCarrier { drive, hz } => say(format!("the carrier of \"{drive}\" is {}, below zero.", short_with_unit(*hz, "Hz")))
+                .why("gap(a, b) is the energy of b minus that of a; \"x below y\" is y minus x.")
+                .write("gap(lower, upper), and the gap behind above or below"),
             Beat { drive, levels: [lower, upper], turns_hz, sum, closes_hz } => say("no rotating frame makes this time-independent.")
                 .why(format!(
                     "{lower} and {upper} are joined by other drives or carriers already: {sum}: {} remains.",
@@ -677,7 +691,7 @@ impl Fault {
             }
             NoSuchNumber { name, near, known } => say(format!("the file has no number called \"{name}\"."))
                 .why(format!("Only named numbers can be set: {}.", list(known)))
-                .maybe(near, "--set "),
+                .maybe(&near.as_ref().map(|near| format!("{near}=value")), "--set "),
         }
     }
 }

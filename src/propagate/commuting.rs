@@ -11,8 +11,8 @@ use num_complex::Complex64;
 use super::exponential::Flow;
 use super::picture::Picture;
 use super::run::{Eye, State, Stretch, Work};
-use crate::drive::envelope::quadrature;
 use crate::problem::{Matrix, Term};
+use crate::quadrature;
 
 /// Moments at which a coefficient is looked at to see whether its phase stands still.
 const LOOKS: u32 = 48;

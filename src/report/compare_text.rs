@@ -33,7 +33,7 @@ pub fn table(document: &Document, comparison: &Comparison, place: Option<&str>) 
             "  {:<wide$}  {:<30}  {}\n",
             "quantity",
             "value",
-            if held.is_some() { format!("minus {}", comparison.against) } else { String::new() }
+            if held.is_some() { format!("minus {} (in its frame)", comparison.against) } else { String::new() }
         ));
         for last in computed.outcome.finals.iter().take(SHOWN) {
             let difference = held.and_then(|held| held.differences.iter().find(|difference| difference.quantity == last.name));

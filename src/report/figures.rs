@@ -84,7 +84,14 @@ fn compare_figure(document: &Document, comparison: &Comparison) -> CompareFigure
     figure.time_s = reference.outcome.times_s.clone();
     let compared: Vec<&str> =
         comparison.held.iter().flat_map(|held| &held.differences).map(|difference| difference.quantity.as_str()).collect();
-    for column in reference.outcome.columns.iter().filter(|column| compared.contains(&column.name.as_str())) {
+    // what depends on the frame is compared at the end alone, in one frame; over time each has its own
+    let kinds: Vec<Vec<f64>> = comparison.computed.iter().filter_map(|computed| Some(computed.plan.point().ok()?.end_turns())).collect();
+    let one_frame = kinds.windows(2).all(|pair| pair[0] == pair[1]);
+    let shown = |column: &&Column| {
+        let framed = ["coherence", "Bloch vector", "fidelity", "mean"].contains(&column.panel);
+        compared.contains(&column.name.as_str()) && (one_frame || !framed)
+    };
+    for column in reference.outcome.columns.iter().filter(shown) {
         let of = |computed: &crate::compare::Computed| -> Option<Vec<f64>> {
             let k = computed.outcome.columns.iter().position(|other| other.name == column.name)?;
             Some(computed.outcome.rows.iter().skip(k).step_by(computed.outcome.columns.len()).copied().collect())

@@ -31,7 +31,7 @@ pub fn with_error(value: f64, error: f64) -> String {
 pub fn not_reached(document: &Document, outcome: &Outcome) -> String {
     let asked = document.accuracy.last;
     if !outcome.error_figure.is_finite() {
-        return format!("the accuracy of {} that was asked for is not reached, and no error could be measured: the work was cut short or broke down; ask for less, or shorten the sequence", short(asked));
+        return format!("the accuracy of {} that was asked for is not reached, and no number could be given: {}; ask for less, shorten the sequence, or turn the frame with the drives", short(asked), outcome.reason);
     }
     let advice = if outcome.floor > asked {
         format!(
@@ -67,13 +67,14 @@ fn frame_words(document: &Document, point: &Point) -> String {
         Some(largest) => {
             let [a, b] = largest.levels();
             format!(
-                "rotating frame, {} of {} terms dropped; the largest, of {} on {} and {}, shifts a level by {} and ripples by {}",
+                "rotating frame, {} of {} terms dropped; the largest, of {} on {} and {}, shifts each of them by {} (the line by {}) and ripples by {}",
                 dropped.len(),
                 ledger.lines.len(),
                 source_name(document, largest.key.source),
                 names[a],
                 names[b],
                 short_with_unit(largest.predicted_shift_hz().unwrap_or(0.0), "Hz"),
+                short_with_unit(2.0 * largest.predicted_shift_hz().unwrap_or(0.0), "Hz"),
                 short(largest.predicted_ripple().unwrap_or(0.0))
             )
         }

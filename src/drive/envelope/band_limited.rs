@@ -6,8 +6,8 @@
 
 use std::sync::{Arc, OnceLock};
 
-use super::quadrature::integral;
 use super::{Curve, Pieces};
+use crate::quadrature::integral;
 use crate::units::{sin_cos_turns, RAD_PER_TURN};
 
 const PI: f64 = 0.5 * RAD_PER_TURN;

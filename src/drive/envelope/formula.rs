@@ -2,8 +2,9 @@
 
 use std::sync::{Arc, OnceLock};
 
-use super::{quadrature, Curve, Pieces};
+use super::{Curve, Pieces};
 use crate::config::tape::BoundFormula;
+use crate::quadrature;
 
 /// A formula with its numbers filled in, over a length.
 #[derive(Debug)]

@@ -2,9 +2,9 @@
 
 use std::sync::Arc;
 
-use super::quadrature::integral;
 use super::reference_tests::{cases, near};
 use super::{Curve, Pieces};
+use crate::quadrature::integral;
 
 /// The stretches between the kinks (or the starts of held values), s.
 fn stretches(curve: &dyn Curve) -> Vec<(f64, f64)> {

@@ -17,8 +17,7 @@
 //! | `formula` | ordinary arithmetic in t |
 //! | `samples` | reads a list, then one of `held`, `linear`, `band_limited` |
 //!
-//! `parameters` holds what a builder reads and refuses, `lift` the rule of a lifted edge, `quadrature` a Gauss rule for areas
-//! whose closed form would cancel.
+//! `parameters` holds what a builder reads and refuses, `lift` the rule of a lifted edge.
 
 mod band_limited;
 mod blackman;
@@ -33,7 +32,6 @@ mod law_tests;
 mod lift;
 mod linear;
 mod parameters;
-pub(crate) mod quadrature;
 mod raised_cosine;
 #[cfg(test)]
 mod reference_tests;

@@ -9,8 +9,8 @@ use std::sync::Arc;
 
 use super::lift::refuse_flat;
 use super::parameters::positive;
-use super::quadrature::integral;
 use super::{Curve, Edge, Parameters, Pieces, ShapeFault};
+use crate::quadrature::integral;
 use crate::units::RAD_PER_TURN;
 
 #[derive(Debug)]

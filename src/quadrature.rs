@@ -18,7 +18,7 @@ const HALF: [(f64, f64); 10] = [
 ];
 
 /// Integral of `f` from `from` to `to`.
-pub(crate) fn integral(from: f64, to: f64, f: impl Fn(f64) -> f64) -> f64 {
+pub fn integral(from: f64, to: f64, f: impl Fn(f64) -> f64) -> f64 {
     let (middle, half) = (0.5 * (from + to), 0.5 * (to - from));
     half * HALF.iter().map(|(node, weight)| weight * (f(middle - half * node) + f(middle + half * node))).sum::<f64>()
 }
