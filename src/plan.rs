@@ -59,6 +59,8 @@ pub struct Point<'p> {
     pub timeline: Timeline<'p>,
     /// The laboratory frame.
     lab: Problem,
+    /// The times of `record:` for which the moments were found.
+    rows: Vec<f64>,
     /// The frame of the run, where it is another.
     frame: Option<InFrame>,
     /// Warnings that depend on the numbers.
@@ -158,7 +160,8 @@ impl Plan {
             .max()
             .unwrap_or(0);
         let set = vec![None; size as usize];
-        let mut point = Point { values, set, energies_hz, couplings, curves, timeline, lab, frame: None, warnings: Vec::new() };
+        let mut point =
+            Point { values, set, energies_hz, couplings, curves, timeline, lab, rows: Vec::new(), frame: None, warnings: Vec::new() };
         point.segment(document, put_back)?;
         let touched = Touched::by(document, &numbers);
         Ok(Mover { document, numbers, touched, put_back: put_back.to_vec(), point })
@@ -317,7 +320,13 @@ impl Point<'_> {
     fn segment(&mut self, document: &Document, put_back: &[TermKey]) -> Result<(), Mistake> {
         let parts = self.parts(document)?;
         let (segments, terms) = cut(&self.timeline, &|pulse| parts[&part_key(pulse)].clone());
-        self.lab.moments = moments(document, &self.values, &segments, self.timeline.end.seconds())?;
+        let same_times = segments.len() == self.lab.segments.len()
+            && segments.iter().zip(&self.lab.segments).all(|(a, b)| a.start == b.start && a.length_s == b.length_s);
+        let asked = rows_of(document, &self.values);
+        if !same_times || self.lab.moments.is_empty() || asked != self.rows {
+            self.lab.moments = moments(document, &self.values, &segments, self.timeline.end.seconds())?;
+            self.rows = asked;
+        }
         self.lab.segments = segments;
         self.lab.terms = terms;
         self.warnings.clear();
@@ -432,22 +441,30 @@ impl Point<'_> {
         let form = document.drives[pulse.drive].form;
         // R/2 turns with the carrier; a direct drive's entry is halved in its matrix instead
         let half_rabi_hz = if form == Form::Direct { peak_hz } else { 0.5 * peak_hz };
-        let quadrature_s = envelope.derivative.map_or(0.0, |derivative| {
-            let (factor, against) = (self.values[derivative.factor.register as usize], self.values[derivative.against.register as usize]);
-            -factor / (RAD_PER_TURN * against)
-        });
+        let quadrature_s = self.quadrature_s(document, pulse.envelope);
         if !quadrature_s.is_finite() {
             let place = envelope.derivative.map_or(envelope.place, |derivative| derivative.against.place);
             return Err(Mistake::error(place, Fault::ZeroDivision { text: "against is 0".to_string() }));
         }
-        let chirp = pulse.carrier.and_then(|index| {
-            let carrier = &self.timeline.carriers[index];
-            let formula = carrier.written.instantaneous.as_ref()?;
-            Some(Arc::new(Chirp::new(formula.bind(&self.values), carrier.centre_hz, pulse.length_s)))
-        });
+        let chirp = self.sweep(pulse).map(Arc::new);
         let pieces = curve.pieces();
         let signal = matches!(pieces, Pieces::Smooth { .. }).then(|| Arc::new(Signal { curve, quadrature_s }));
         Ok(PulseParts { pieces, half_rabi_hz, chirp, signal })
+    }
+
+    /// Weight of the derivative quadrature, Y = quadrature_s dX/dt, s; 0 for none.
+    pub fn quadrature_s(&self, document: &Document, envelope: usize) -> f64 {
+        document.envelopes[envelope].derivative.map_or(0.0, |derivative| {
+            let (factor, against) = (self.values[derivative.factor.register as usize], self.values[derivative.against.register as usize]);
+            -factor / (RAD_PER_TURN * against)
+        })
+    }
+
+    /// The sweep of a pulse, if its carrier has one.
+    pub fn sweep(&self, pulse: &PlacedPulse) -> Option<Chirp> {
+        let carrier = &self.timeline.carriers[pulse.carrier?];
+        let formula = carrier.written.instantaneous.as_ref()?.bind(&self.values);
+        Some(Chirp::new(formula, carrier.centre_hz, pulse.length_s))
     }
 
     /// The size of an envelope on a drive at envelope 1: the Rabi frequency R of the reference pair, or the entry itself of a
@@ -618,6 +635,15 @@ fn timeline<'p>(
 
 fn start_state(document: &Document, values: &[f64]) -> Vector {
     model::amplitudes(document.system.names.len(), &document.start, values)
+}
+
+/// The numbers that `record: every` or `at` come to.
+fn rows_of(document: &Document, values: &[f64]) -> Vec<f64> {
+    match &document.record.rows {
+        Rows::Unsaid => Vec::new(),
+        Rows::Every(every) => vec![values[every.register as usize]],
+        Rows::At(list) => list.iter().map(|at| values[at.register as usize]).collect(),
+    }
 }
 
 /// The moments to record: those asked for, and the end of the sequence.

@@ -1,20 +1,17 @@
 //! `nutate compare FILE`: runs the file as written and each variant, and shows how far apart they are.
 
-use std::fs::File;
-use std::io::{self, BufWriter};
 use std::path::PathBuf;
 use std::time::Instant;
 
 use clap::Args;
 
-use super::{complain, complain_of, point, print, read_config, refuse, Common, Status};
-use crate::compare::{compare, plans, CompareFault, Comparison};
-use crate::config::document::Document;
+use super::{complain, complain_of, not_drawn, point, print, read_config, refuse, Common, Status};
+use crate::compare::{compare, plans, CompareFault};
 use crate::config::messages::{Fault, Mistake};
 use crate::config::place::Place;
 use crate::plan::Plan;
-use crate::report::folder::{default_folder, prepare, Staging};
-use crate::report::{compare_json, compare_text, figures, summary, traces_csv};
+use crate::report::folder::{default_folder, prepare};
+use crate::report::{compare_json, compare_text, summary, write};
 
 /// Words of the verb.
 #[derive(Args)]
@@ -69,15 +66,16 @@ fn try_run(words: &Words) -> Result<Status, Status> {
     complain_of(document, &document.warnings);
     let comparison = compare(&written, all).map_err(fault)?;
     let seconds = clock.elapsed().as_secs_f64();
-    let files = write(staging, document, &comparison, seconds).map_err(|error| {
+    let files = write::comparison(staging, document, &comparison, seconds).map_err(|error| {
         complain(&format!("error: the results could not be written to {}: {error}.\n", folder.display()));
         Status::Machine
     })?;
+    not_drawn(&files);
     if words.json {
         let result = compare_json::comparison(document, &comparison, seconds);
         print(&format!("{}\n", serde_json::to_string_pretty(&result).unwrap_or_default()));
     } else if !words.quiet {
-        print(&compare_text::table(document, &comparison, Some(&files)));
+        print(&compare_text::table(document, &comparison, Some(&files.place)));
     }
     let mut status = Status::Good;
     for computed in comparison.computed.iter().filter(|computed| !computed.outcome.reached) {
@@ -85,30 +83,4 @@ fn try_run(words: &Words) -> Result<Status, Status> {
         status = Status::NotAccurate;
     }
     Ok(status)
-}
-
-fn write(staging: Staging, document: &Document, comparison: &Comparison, seconds: f64) -> io::Result<String> {
-    let side = staging.side().to_path_buf();
-    staging.archive(document)?;
-    let mut names = vec!["result.json".to_string()];
-    for computed in &comparison.computed {
-        let name = format!("traces-{}.csv", file_word(&computed.name));
-        traces_csv::write(&computed.outcome, BufWriter::new(File::create(side.join(&name))?))?;
-        names.push(name);
-    }
-    for (name, figure) in figures::of_comparison(document, comparison) {
-        match figure {
-            Ok(drawn) => names.extend(figures::save(&side, name, &drawn)?.into_iter().take(1)),
-            Err(reason) => complain(&format!("warning: the plot {name} was not drawn: {reason}.\n")),
-        }
-    }
-    let json = serde_json::to_string_pretty(&compare_json::comparison(document, comparison, seconds))?;
-    std::fs::write(side.join("result.json"), json + "\n")?;
-    let folder = staging.finish()?;
-    Ok(format!("{} in {}", names.join(", "), folder.display()))
-}
-
-/// A name as part of a file name.
-fn file_word(name: &str) -> String {
-    name.chars().map(|c| if c.is_alphanumeric() { c } else { '-' }).collect()
 }

@@ -17,6 +17,7 @@ use clap::{Args, Parser, Subcommand};
 use crate::config::document::{read, Document, Refusal};
 use crate::config::messages::{render, Mistake};
 use crate::plan::{Plan, Point};
+use crate::report::write::Written;
 
 /// What a verb ends in; the number is the exit status.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -135,6 +136,13 @@ fn point(plan: &Plan) -> Result<Point<'_>, Status> {
         complain_of(plan.document(), &[mistake]);
         Status::Refused
     })
+}
+
+/// Complains of plots that could not be drawn.
+fn not_drawn(written: &Written) {
+    for (name, reason) in &written.not_drawn {
+        complain(&format!("warning: the plot {name} was not drawn: {reason}.\n"));
+    }
 }
 
 fn complain_of(document: &Document, mistakes: &[Mistake]) {

@@ -1,16 +1,14 @@
 //! `nutate run FILE`: evolves, records, and writes numbers and plots.
 
-use std::fs::File;
-use std::io::{self, BufWriter};
 use std::path::PathBuf;
 
 use clap::Args;
 
-use super::{complain, complain_of, point, print, read_config, Common, Status};
-use crate::outcome::{compute, Outcome};
-use crate::plan::{Plan, Point};
-use crate::report::folder::{default_folder, prepare, Staging};
-use crate::report::{figures, result_json, summary, traces_csv};
+use super::{complain, complain_of, not_drawn, point, print, read_config, Common, Status};
+use crate::outcome::compute;
+use crate::plan::Plan;
+use crate::report::folder::{default_folder, prepare};
+use crate::report::{result_json, summary, write};
 
 /// Words of the verb.
 #[derive(Args)]
@@ -50,40 +48,20 @@ fn try_run(words: &Words) -> Result<Status, Status> {
     complain_of(document, &document.warnings);
     complain_of(document, &point.warnings);
     let outcome = compute(document, &point);
-    let written = write(staging, &plan, &point, &outcome).map_err(|error| {
+    let written = write::run(staging, document, &point, &outcome).map_err(|error| {
         complain(&format!("error: the results could not be written to {}: {error}.\n", folder.display()));
         Status::Machine
     })?;
+    not_drawn(&written);
     if words.json {
         let result = result_json::result(document, &point, &outcome);
         print(&format!("{}\n", serde_json::to_string_pretty(&result).unwrap_or_default()));
     } else if !words.quiet {
-        print(&summary::summary(document, &point, &outcome, Some(&written)));
+        print(&summary::summary(document, &point, &outcome, Some(&written.place)));
     }
     if !outcome.reached {
         complain(&format!("warning: {}.\n", summary::not_reached(document, &outcome)));
         return Ok(Status::NotAccurate);
     }
     Ok(Status::Good)
-}
-
-/// Writes every file to the side and moves them into place; says where they are.
-fn write(staging: Staging, plan: &Plan, point: &Point, outcome: &Outcome) -> io::Result<String> {
-    let document = plan.document();
-    let side = staging.side().to_path_buf();
-    staging.archive(document)?;
-    traces_csv::write(outcome, BufWriter::new(File::create(side.join("traces.csv"))?))?;
-    let mut names = vec!["traces.csv".to_string(), "result.json".to_string()];
-    for (name, figure) in figures::of_run(document, point, outcome) {
-        match figure {
-            Ok(drawn) => {
-                names.extend(figures::save(&side, name, &drawn)?.into_iter().take(1));
-            }
-            Err(reason) => complain(&format!("warning: the plot {name} was not drawn: {reason}.\n")),
-        }
-    }
-    let json = serde_json::to_string_pretty(&result_json::result(document, point, outcome))?;
-    std::fs::write(side.join("result.json"), json + "\n")?;
-    let folder = staging.finish()?;
-    Ok(format!("{} in {}", names.join(", "), folder.display()))
 }

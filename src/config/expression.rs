@@ -51,11 +51,13 @@ pub type Stumble = (usize, usize, Fault);
 
 /// Deepest nesting of brackets in one value.
 const DEEPEST: usize = 64;
+/// Most operations in one value: a sum is a tree as deep as it has terms, and every later stage walks down that tree.
+const MOST_OPERATIONS: usize = 1000;
 
 /// Parses a whole value.
 pub fn parse(text: &str) -> Result<Expression, Stumble> {
     let chars: Vec<char> = text.chars().collect();
-    let mut parser = Parser { chars: &chars, at: 0, depth: 0 };
+    let mut parser = Parser { chars: &chars, at: 0, depth: 0, operations: 0 };
     let expression = parser.whole()?;
     parser.blanks();
     if parser.at < chars.len() {
@@ -68,6 +70,7 @@ struct Parser<'a> {
     chars: &'a [char],
     at: usize,
     depth: usize,
+    operations: usize,
 }
 
 fn starts_word(c: char) -> bool {
@@ -122,6 +125,15 @@ impl Parser<'_> {
         Expression { start, length: self.at - start, kind }
     }
 
+    /// Two values joined by an operation, which counts.
+    fn joined(&mut self, sign: char, left: Expression, right: Expression, start: usize) -> Result<Expression, Stumble> {
+        self.operations += 1;
+        if self.operations > MOST_OPERATIONS {
+            return Err((right.start.saturating_sub(1), 1, Fault::TooManyOperations { limit: MOST_OPERATIONS }));
+        }
+        Ok(self.made(start, Kind::Binary(sign, Box::new(left), Box::new(right))))
+    }
+
     fn deeper<T>(&mut self, inner: impl FnOnce(&mut Self) -> Result<T, Stumble>) -> Result<T, Stumble> {
         self.depth += 1;
         if self.depth > DEEPEST {
@@ -142,7 +154,7 @@ impl Parser<'_> {
             self.at += 5;
             let right = self.sum()?;
             let sign = if word == "above" { 'a' } else { 'b' };
-            return Ok(self.made(start, Kind::Binary(sign, Box::new(left), Box::new(right))));
+            return self.joined(sign, left, right, start);
         }
         Ok(left)
     }
@@ -157,7 +169,7 @@ impl Parser<'_> {
                 Some(sign @ ('+' | '-')) => {
                     self.at += 1;
                     let right = self.product()?;
-                    left = self.made(start, Kind::Binary(sign, Box::new(left), Box::new(right)));
+                    left = self.joined(sign, left, right, start)?;
                 }
                 _ => return Ok(left),
             }
@@ -174,7 +186,7 @@ impl Parser<'_> {
                 Some(sign @ ('*' | '/')) => {
                     self.at += 1;
                     let right = self.signed()?;
-                    left = self.made(start, Kind::Binary(sign, Box::new(left), Box::new(right)));
+                    left = self.joined(sign, left, right, start)?;
                 }
                 _ => return Ok(left),
             }
@@ -215,7 +227,7 @@ impl Parser<'_> {
         if self.peek() == Some('^') {
             self.at += 1;
             let exponent = self.deeper(Self::signed)?;
-            return Ok(self.made(start, Kind::Binary('^', Box::new(base), Box::new(exponent))));
+            return self.joined('^', base, exponent, start);
         }
         Ok(base)
     }

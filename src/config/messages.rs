@@ -8,6 +8,8 @@ use crate::units::Dim;
 
 /// How many mistakes are printed at once.
 pub const MOST_SHOWN: usize = 20;
+/// Most mistakes kept of one file. A hundred thousand, each with the list of all known names, would fill the memory.
+pub const MOST_KEPT: usize = 2000;
 
 /// A fault and where it stands.
 #[derive(Debug, Clone, PartialEq)]
@@ -50,6 +52,7 @@ pub enum Fault {
     Tag { text: String },
     SecondDocument,
     TooDeep { limit: usize },
+    TooManyOperations { limit: usize },
     KeyNotText,
     DuplicateKey { key: String, first: u32 },
     NoFormat,
@@ -277,6 +280,9 @@ impl Fault {
             TooDeep { limit } => {
                 say(format!("brackets or blocks are nested more than {limit} deep here.")).why("No section of a config needs that depth.")
             }
+            TooManyOperations { limit } => say(format!("more than {limit} operations stand in this one value."))
+                .why("So long a formula cannot be checked by eye. Parts of it can be named under numbers:, a curve can come from a file.")
+                .write("shape: samples, with file:   (for a curve)"),
             KeyNotText => say("a list or a block stands here where a name is expected.").write("name: value"),
             DuplicateKey { key, first } => say(format!("the key \"{key}\" appears twice in this block (first on line {first})."))
                 .why("YAML readers often keep only the last one.")
@@ -680,6 +686,8 @@ impl Fault {
 pub fn render(sources: &Sources, mistakes: &[Mistake]) -> String {
     let mut sorted: Vec<&Mistake> = mistakes.iter().collect();
     sorted.sort_by_key(|mistake| (mistake.warning, mistake.place));
+    let many = if sorted.len() >= MOST_KEPT { "at least " } else { "" };
+    sorted.truncate(MOST_KEPT);
     let mut groups: Vec<(&Mistake, Vec<u32>)> = Vec::new();
     for mistake in sorted {
         match groups
@@ -697,7 +705,7 @@ pub fn render(sources: &Sources, mistakes: &[Mistake]) -> String {
         text.push('\n');
     }
     if groups.len() > MOST_SHOWN {
-        text.push_str(&format!("and {} more mistakes after these {MOST_SHOWN}.\n", groups.len() - MOST_SHOWN));
+        text.push_str(&format!("and {many}{} more mistakes after these {MOST_SHOWN}.\n", groups.len() - MOST_SHOWN));
     }
     text
 }
@@ -710,7 +718,7 @@ fn one(sources: &Sources, mistake: &Mistake, lines: &[u32]) -> String {
     if place.line > 0 {
         text.push_str(&format!(", line {}, column {}", place.line, place.column));
     }
-    text.push_str(&format!(": {}\n", words.fact));
+    text.push_str(&format!(": {}\n", shortened(&words.fact)));
     if let Some(line) = sources.line(place.file, place.line) {
         let (shown, column) = window(line, place.column as usize);
         let room = shown.chars().count().saturating_sub(column - 1).max(1);
@@ -723,12 +731,25 @@ fn one(sources: &Sources, mistake: &Mistake, lines: &[u32]) -> String {
         text.push_str(&format!("  The same on {}.\n", others.join(", ")));
     }
     for line in &words.why {
-        text.push_str(&format!("  {line}\n"));
+        text.push_str(&format!("  {}\n", shortened(line)));
     }
     for line in &words.write {
-        text.push_str(&format!("  Write: {line}\n"));
+        text.push_str(&format!("  Write: {}\n", shortened(line)));
     }
     text
+}
+
+/// A sentence that quotes something very long, with its middle left out.
+fn shortened(sentence: &str) -> String {
+    const LONG: usize = 400;
+    const KEPT: usize = 180;
+    let count = sentence.chars().count();
+    if count <= LONG {
+        return sentence.to_string();
+    }
+    let head: String = sentence.chars().take(KEPT).collect();
+    let tail: String = sentence.chars().skip(count - KEPT).collect();
+    format!("{head} .. {tail}")
 }
 
 /// A part of a long line around the marked column, and the column within it.
@@ -747,6 +768,6 @@ fn window(line: &str, column: usize) -> (String, usize) {
 /// A mistake as one line, for lists of warnings.
 pub fn one_line(sources: &Sources, mistake: &Mistake) -> String {
     let words = mistake.fault.words();
-    let write = words.write.first().map_or(String::new(), |write| format!(" Write: {write}"));
-    format!("{}, line {}: {}{write}", sources.name(mistake.place.file), mistake.place.line, words.fact)
+    let write = words.write.first().map_or(String::new(), |write| format!(" Write: {}", shortened(write)));
+    format!("{}, line {}: {}{write}", sources.name(mistake.place.file), mistake.place.line, shortened(&words.fact))
 }

@@ -5,7 +5,7 @@ use std::collections::{HashMap, HashSet};
 use std::path::PathBuf;
 
 use super::expression::{self, Expression};
-use super::messages::{Fault, Mistake};
+use super::messages::{Fault, Mistake, MOST_KEPT};
 use super::place::{Place, Sources};
 use super::tape::{Entry as TapeEntry, Formula, One, Register, Tape, Two};
 use super::tree::{Entry, Kind, Node};
@@ -178,12 +178,17 @@ impl Reader {
 
     /// Notes an error.
     pub fn error(&mut self, place: Place, fault: Fault) {
-        self.mistakes.push(Mistake::error(place, fault));
+        if self.mistakes.len() < MOST_KEPT {
+            self.mistakes.push(Mistake::error(place, fault));
+        }
     }
 
     /// Notes a warning.
     pub fn warn(&mut self, place: Place, fault: Fault) {
-        self.mistakes.push(Mistake::warning(place, fault));
+        // half of the room is left for errors, so that none goes unseen for warnings
+        if self.mistakes.len() < MOST_KEPT / 2 {
+            self.mistakes.push(Mistake::warning(place, fault));
+        }
     }
 
     /// Notes a default that was used.
@@ -200,9 +205,13 @@ impl Reader {
             self.error(node.place, Fault::Shape { what: section.to_string(), expected: "a block of keys and values".to_string(), example });
             return None;
         };
-        for entry in entries {
-            // the tail of a value cut at its comma: reported where the value is
-            if known.contains(&entry.key.as_str()) || (entry.key.contains(')') && !entry.key.contains('(')) {
+        for (k, entry) in entries.iter().enumerate() {
+            if known.contains(&entry.key.as_str()) {
+                continue;
+            }
+            if let Some(cut) = cut_before(&entries[..k], &entry.key) {
+                let text = cut.text().unwrap_or_default().to_string();
+                self.error(cut.place, Fault::CutAtComma { text });
                 continue;
             }
             let hint = hints.iter().find(|(key, _)| *key == entry.key).map(|(_, hint)| (*hint).to_string());
@@ -1095,6 +1104,13 @@ impl Scope {
             self.place
         }
     }
+}
+
+/// The value of which `key` is the tail, cut off at a comma: `gap(a, b)` within braces leaves the value `gap(a` and the key `b)`.
+fn cut_before<'n>(before: &'n [Entry], key: &str) -> Option<&'n Node> {
+    let opens = |text: &str| text.matches('(').count() > text.matches(')').count();
+    let value = &before.last()?.value;
+    (key.contains(')') && !key.contains('(') && opens(value.text()?)).then_some(value)
 }
 
 fn scope_of(node: &Node, complex: bool) -> Scope {

@@ -206,6 +206,8 @@ pub enum Plot {
     Envelopes,
     /// Spectrum of each pulse.
     Spectrum,
+    /// Turning terms of a rotating frame.
+    Ledger,
 }
 
 /// `output:`.
@@ -219,7 +221,7 @@ pub struct Output {
 
 /// Reads `output:`.
 pub fn read_output(reader: &mut Reader, node: Option<&Node>) -> Option<Output> {
-    let all = vec![Plot::Traces, Plot::Envelopes, Plot::Spectrum];
+    let all = vec![Plot::Traces, Plot::Envelopes, Plot::Spectrum, Plot::Ledger];
     let mut output = Output { folder: None, plots: all };
     if let Some(node) = node {
         let entries = reader.fields(node, "output", &["folder", "plots", "tables", "waveform_files", "report"], &[])?;
@@ -237,13 +239,18 @@ pub fn read_output(reader: &mut Reader, node: Option<&Node>) -> Option<Output> {
         if let Some(plots) = node.get("plots") {
             output.plots.clear();
             for plot in reader.list(plots, "output / plots", "plots: [traces, envelopes]")? {
-                let later = ["ledger", "level diagram", "map", "scan lines"];
+                let later = ["level diagram", "map", "scan lines"];
                 if let Some(key) = plot.text().filter(|text| later.contains(text)) {
                     reader.error(plot.place, Fault::NotNow { key: key.to_string(), section: "output / plots".to_string() });
                     return None;
                 }
-                let words =
-                    [("traces", Plot::Traces), ("envelopes", Plot::Envelopes), ("timing", Plot::Envelopes), ("spectrum", Plot::Spectrum)];
+                let words = [
+                    ("traces", Plot::Traces),
+                    ("envelopes", Plot::Envelopes),
+                    ("timing", Plot::Envelopes),
+                    ("spectrum", Plot::Spectrum),
+                    ("ledger", Plot::Ledger),
+                ];
                 let plot = reader.word(plot, "a plot", &words)?;
                 if !output.plots.contains(&plot) {
                     output.plots.push(plot);

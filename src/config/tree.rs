@@ -142,7 +142,7 @@ pub fn parse(sources: &Sources, file: u16, mistakes: &mut Vec<Mistake>) -> Resul
     if let Some(place) = first_tab(text, file) {
         return Err(Mistake::error(place, Fault::Tab));
     }
-    Builder { sources, file, parser: Parser::new_from_str(text), mistakes }.document()
+    Builder { sources, file, parser: Parser::new_from_str(text), lines: lines(text).collect(), reached: (0, 0, 0), mistakes }.document()
 }
 
 /// The first tab that is neither in a comment nor in quotes.
@@ -168,10 +168,27 @@ struct Builder<'a> {
     sources: &'a Sources,
     file: u16,
     parser: Parser<'a, saphyr_parser::StrInput<'a>>,
+    lines: Vec<&'a str>,
+    /// Line, characters and bytes up to the last value: a line of many values is walked once.
+    reached: (u32, usize, usize),
     mistakes: &'a mut Vec<Mistake>,
 }
 
-impl Builder<'_> {
+impl<'a> Builder<'a> {
+    /// The characters at a place, as they stand in the file.
+    fn written(&mut self, place: Place) -> &'a str {
+        let line = (place.line as usize).checked_sub(1).and_then(|k| self.lines.get(k).copied()).unwrap_or_default();
+        let wanted = place.column as usize - 1;
+        let (chars, bytes) = match self.reached {
+            (line, chars, bytes) if line == place.line && chars <= wanted => (chars, bytes),
+            _ => (0, 0),
+        };
+        let after = |text: &str, count: usize| text.char_indices().nth(count).map_or(text.len(), |(at, _)| at);
+        let start = bytes + after(&line[bytes..], wanted - chars);
+        self.reached = (place.line, wanted, start);
+        &line[start..start + after(&line[start..], place.length as usize)]
+    }
+
     fn place(&self, span: Span) -> Place {
         let one_line = span.start.line() == span.end.line();
         let length = if one_line { span.end.col().saturating_sub(span.start.col()).max(1) } else { 1 };
@@ -232,6 +249,9 @@ impl Builder<'_> {
     }
 
     fn refuse_tricks(&self, anchor: usize, tagged: bool, span: Span) -> Result<(), Mistake> {
+        if anchor == 0 && !tagged {
+            return Ok(());
+        }
         let place = self.place(span);
         // the event's place is that of the value; the anchor or tag stands before it on the line
         let line = self.sources.line(self.file, place.line).unwrap_or_default();
@@ -259,9 +279,8 @@ impl Builder<'_> {
             Event::Scalar(text, style, anchor, tag) => {
                 self.refuse_tricks(anchor, tag.is_some(), span)?;
                 let quoted = style != ScalarStyle::Plain;
-                let raw = self.sources.line(self.file, place.line).unwrap_or_default();
-                let inside: String = raw.chars().skip(place.column as usize - 1).take(place.length as usize).collect();
-                let exact = if quoted { inside.get(1..inside.len().saturating_sub(1)) == Some(&*text) } else { inside == *text };
+                let inside = self.written(place);
+                let exact = if quoted { inside.get(1..inside.len().saturating_sub(1)) == Some(&*text) } else { *inside == *text };
                 Ok(Node { place, kind: Kind::Scalar { text: text.into_owned(), quoted, exact } })
             }
             Event::Alias(_) => {

@@ -10,5 +10,6 @@ pub mod detuning;
 pub mod envelope;
 pub mod segments;
 pub mod signal;
+pub mod spectrum;
 pub mod strength;
 pub mod timeline;

@@ -5,6 +5,8 @@ use crate::config::document::Document;
 use crate::config::drives::Form;
 use crate::config::settings::Plot;
 use crate::drive::envelope::Pieces;
+use crate::drive::spectrum::spectrum as pulse_spectrum;
+use crate::drive::timeline::PlacedPulse;
 use crate::measure::Column;
 use crate::outcome::Outcome;
 use crate::plan::Point;
@@ -12,10 +14,9 @@ use crate::problem::Sweep;
 use crate::report::fingerprint::fingerprint;
 use crate::report::heading::heading;
 use crate::report::plots::{
-    envelopes, spectrum, traces, Drawn, EnvelopeCurve, EnvelopesFigure, Panel, PlotError, PulseBar, PulseSpectrum, Series, SpectrumFigure,
-    TracesFigure,
+    compare, envelopes, ledger, spectrum, traces, CompareFigure, ComparePanel, CompareSeries, Drawn, EnvelopeCurve, EnvelopesFigure,
+    LedgerFigure, LedgerTerm, Panel, PlotError, PulseBar, PulseSpectrum, Series, SpectrumFigure, TracesFigure,
 };
-use crate::units::cis_turns;
 
 /// A plot by its file name, or why it could not be drawn.
 pub type Named = (&'static str, Result<Drawn, PlotError>);
@@ -48,17 +49,96 @@ pub fn of_columns(document: &Document, point: &Point, columns: &[Column], times_
                 drawn.push(("envelopes", envelopes(&envelopes_figure(document, point))))
             }
             Plot::Spectrum if !point.timeline.pulses.is_empty() => drawn.push(("spectrum", spectrum(&spectrum_figure(document, point)))),
+            Plot::Ledger if point.in_frame().is_some_and(|frame| !frame.rotated.ledger.lines.is_empty()) => {
+                drawn.push(("ledger", ledger(&ledger_figure(document, point))));
+            }
             _ => {}
         }
     }
     drawn
 }
 
-/// The plots of a comparison: those of the file as written.
+/// The plots of a comparison: variants over each other with their differences, and those of the file as written.
 pub fn of_comparison(document: &Document, comparison: &Comparison) -> Vec<Named> {
-    let written = comparison.computed.first();
-    let point = written.and_then(|computed| computed.plan.point().ok());
-    written.zip(point).map_or_else(Vec::new, |(computed, point)| of_run(document, &point, &computed.outcome))
+    let mut drawn = vec![("compare", compare(&compare_figure(document, comparison)))];
+    if let Some(written) = comparison.computed.first() {
+        if let Ok(point) = written.plan.point() {
+            drawn.extend(of_run(document, &point, &written.outcome));
+        }
+    }
+    drawn
+}
+
+/// The quantities that a comparison shows: those under `record: final`, or all of the reference.
+fn compare_figure(document: &Document, comparison: &Comparison) -> CompareFigure {
+    let reference = comparison.computed.iter().find(|computed| computed.name == comparison.against);
+    let mut figure = CompareFigure {
+        title: heading(document),
+        fingerprint: fingerprint(document),
+        reference: comparison.against.clone(),
+        tolerance: comparison.tolerance,
+        end_s: comparison.computed.iter().filter_map(|computed| computed.outcome.times_s.last().copied()).fold(0.0, f64::max),
+        ..CompareFigure::default()
+    };
+    let Some(reference) = reference else { return figure };
+    figure.time_s = reference.outcome.times_s.clone();
+    let compared: Vec<&str> =
+        comparison.held.iter().flat_map(|held| &held.differences).map(|difference| difference.quantity.as_str()).collect();
+    for column in reference.outcome.columns.iter().filter(|column| compared.contains(&column.name.as_str())) {
+        let of = |computed: &crate::compare::Computed| -> Option<Vec<f64>> {
+            let k = computed.outcome.columns.iter().position(|other| other.name == column.name)?;
+            Some(computed.outcome.rows.iter().skip(k).step_by(computed.outcome.columns.len()).copied().collect())
+        };
+        let Some(base) = of(reference) else { continue };
+        let mut variants = vec![CompareSeries { name: reference.name.clone(), time_s: None, values: base.clone() }];
+        let mut differences = Vec::new();
+        for computed in comparison.computed.iter().filter(|computed| computed.name != reference.name) {
+            let Some(values) = of(computed) else { continue };
+            let same = computed.outcome.times_s == reference.outcome.times_s;
+            if same {
+                let values = values.iter().zip(&base).map(|(a, b)| a - b).collect();
+                differences.push(CompareSeries { name: computed.name.clone(), time_s: None, values });
+            }
+            let time_s = (!same).then(|| computed.outcome.times_s.clone());
+            variants.push(CompareSeries { name: computed.name.clone(), time_s, values });
+        }
+        let unit = if column.unit == "1" { String::new() } else { column.unit.to_string() };
+        let range = (column.panel == "population").then_some((0.0, 1.0));
+        figure.panels.push(ComparePanel {
+            y_label: column.panel.to_string(),
+            unit,
+            quantity: column.name.clone(),
+            variants,
+            differences,
+            range,
+        });
+    }
+    figure
+}
+
+fn ledger_figure(document: &Document, point: &Point) -> LedgerFigure {
+    let names = &document.system.names;
+    let mut figure = LedgerFigure { title: heading(document), fingerprint: fingerprint(document), ..LedgerFigure::default() };
+    if let Some(frame) = point.in_frame() {
+        let ledger = &frame.rotated.ledger;
+        figure.limit_hz = ledger.limit_hz.is_finite().then_some(ledger.limit_hz);
+        figure.terms = ledger
+            .lines
+            .iter()
+            .map(|line| {
+                let [a, b] = line.levels();
+                LedgerTerm {
+                    label: format!("{}: {} to {}", crate::plan::source_name(document, line.key.source), names[a], names[b]),
+                    size_hz: line.size_hz,
+                    turns_at_hz: line.turns_at_hz,
+                    kept: line.kept,
+                    shift_hz: line.predicted_shift_hz(),
+                    ripple: line.predicted_ripple(),
+                }
+            })
+            .collect();
+    }
+    figure
 }
 
 /// Writes a plot in both forms, each to the side first and then renamed; gives the file names.
@@ -93,7 +173,7 @@ fn traces_figure(document: &Document, point: &Point, columns: &[Column], times_s
             }
         }
     }
-    let bar = |pulse: &crate::drive::timeline::PlacedPulse| PulseBar {
+    let bar = |pulse: &PlacedPulse| PulseBar {
         drive: document.drives[pulse.drive].name.clone(),
         label: document.envelopes[pulse.envelope].name.clone(),
         start_s: pulse.start.seconds(),
@@ -125,20 +205,13 @@ fn curve_times(pieces: &Pieces, length_s: f64) -> Vec<f64> {
 }
 
 fn envelopes_figure(document: &Document, point: &Point) -> EnvelopesFigure {
-    let curve = |pulse: &crate::drive::timeline::PlacedPulse| {
+    let curve = |pulse: &PlacedPulse| {
         let (drive, envelope) = (&document.drives[pulse.drive], &document.envelopes[pulse.envelope]);
         let curve = &point.curves[pulse.envelope];
         let peak = point.peak_hz(document, pulse.drive, pulse.envelope).unwrap_or(f64::NAN);
         let times = curve_times(&curve.pieces(), pulse.length_s);
-        let weight = envelope.derivative.map(|derivative| {
-            let value = |quantity: crate::config::reader::Quantity| point.values[quantity.register as usize];
-            -value(derivative.factor) / (crate::units::RAD_PER_TURN * value(derivative.against))
-        });
-        let chirp = pulse.carrier.and_then(|index| {
-            let carrier = &point.timeline.carriers[index];
-            let formula = carrier.written.instantaneous.as_ref()?.bind(&point.values);
-            Some(times.iter().map(|t| formula.at(*t) - carrier.centre_hz).collect())
-        });
+        let weight = envelope.derivative.map(|_| point.quadrature_s(document, pulse.envelope));
+        let chirp = point.sweep(pulse).map(|sweep| times.iter().map(|t| sweep.offset_hz(*t)).collect());
         EnvelopeCurve {
             drive: drive.name.clone(),
             envelope: envelope.name.clone(),
@@ -163,97 +236,67 @@ fn envelopes_figure(document: &Document, point: &Point) -> EnvelopesFigure {
 fn spectrum_figure(document: &Document, point: &Point) -> SpectrumFigure {
     let mut seen: Vec<(usize, usize)> = Vec::new();
     let mut shown = Vec::new();
-    let mut carrier_hz = None;
     for pulse in &point.timeline.pulses {
         if seen.contains(&(pulse.drive, pulse.envelope)) || seen.len() >= 6 {
             continue;
         }
         seen.push((pulse.drive, pulse.envelope));
-        if let Some(carrier) = pulse.carrier {
-            carrier_hz.get_or_insert(point.timeline.carriers[carrier].centre_hz);
-        }
         shown.push(pulse);
     }
     // one range for all, so that no curve ends inside the plot
     let widths: Vec<f64> = shown.iter().map(|pulse| spectrum_width_hz(point, pulse)).collect();
     let range = widths.iter().copied().fold(0.0, f64::max);
-    let one = |(pulse, width): (&&crate::drive::timeline::PlacedPulse, &f64)| {
+    let one = |(pulse, width): (&&PlacedPulse, &f64)| {
         let (drive, envelope) = (&document.drives[pulse.drive].name, &document.envelopes[pulse.envelope].name);
         let points = ((SPECTRUM_POINTS as f64 * range / width) as usize).min(MOST_SPECTRUM_POINTS);
-        let (offset_hz, amplitude_db) = pulse_spectrum(document, point, pulse, range, points);
+        let sweep = point.sweep(pulse);
+        let sweep = sweep.as_ref().map(|sweep| sweep as &dyn Sweep);
+        let (offset_hz, amplitude_db) =
+            pulse_spectrum(&*point.curves[pulse.envelope], point.quadrature_s(document, pulse.envelope), sweep, range, points);
         PulseSpectrum { label: format!("{envelope} on {drive}"), offset_hz, amplitude_db }
     };
     let pulses = shown.iter().zip(&widths).map(one).collect();
-    // the lines of the system, as offsets from the first carrier
-    let names = &document.system.names;
-    let lines = carrier_hz.map_or(Vec::new(), |carrier| {
-        let size = names.len().min(12);
-        let pairs = (0..size).flat_map(|a| (a + 1..size).map(move |b| (a, b)));
-        pairs
-            .map(|(a, b)| (format!("{} to {}", names[a], names[b]), (point.energies_hz[b] - point.energies_hz[a]).abs() - carrier))
-            .collect()
-    });
-    SpectrumFigure { title: heading(document), fingerprint: fingerprint(document), from_zero: carrier_hz.is_none(), pulses, lines }
+    let from_zero = shown.iter().all(|pulse| pulse.carrier.is_none());
+    SpectrumFigure {
+        title: heading(document),
+        fingerprint: fingerprint(document),
+        from_zero,
+        pulses,
+        lines: lines(document, point, &shown),
+    }
 }
 
-/// The sweep of a pulse, if its carrier has one.
-fn chirp_of(point: &Point, pulse: &crate::drive::timeline::PlacedPulse) -> Option<crate::drive::chirp::Chirp> {
-    let carrier = &point.timeline.carriers[pulse.carrier?];
-    let formula = carrier.written.instantaneous.as_ref()?.bind(&point.values);
-    Some(crate::drive::chirp::Chirp::new(formula, carrier.centre_hz, pulse.length_s))
+/// The lines of the system as offsets from the carrier: all of them where there is one carrier, else those that each drive couples.
+fn lines(document: &Document, point: &Point, shown: &[&PlacedPulse]) -> Vec<(String, f64)> {
+    let names = &document.system.names;
+    let size = names.len().min(12);
+    let mut carriers: Vec<(usize, f64)> = Vec::new();
+    for pulse in shown {
+        if let Some(carrier) = pulse.carrier.map(|carrier| point.timeline.carriers[carrier].centre_hz) {
+            if !carriers.contains(&(pulse.drive, carrier)) {
+                carriers.push((pulse.drive, carrier));
+            }
+        }
+    }
+    let one = carriers.windows(2).all(|pair| pair[0].1 == pair[1].1);
+    let mut lines = Vec::new();
+    for (drive, carrier) in carriers.iter().take(if one { 1 } else { carriers.len() }) {
+        for (a, b) in (0..size).flat_map(|a| (a + 1..size).map(move |b| (a, b))) {
+            if one || point.couplings[*drive].matrix[(a, b)].norm() > 0.0 {
+                let owner = if one { String::new() } else { format!(" ({})", document.drives[*drive].name) };
+                lines.push((format!("{} to {}{owner}", names[a], names[b]), (point.energies_hz[b] - point.energies_hz[a]).abs() - carrier));
+            }
+        }
+    }
+    lines
 }
 
 /// Half the range in Hz in which the spectrum of a pulse is worth seeing: its first lobes and the whole chirp.
 ///
 /// It is no whole number over the length, so that the grid does not fall on the zeros of a square pulse, which dip without end.
-fn spectrum_width_hz(point: &Point, pulse: &crate::drive::timeline::PlacedPulse) -> f64 {
+fn spectrum_width_hz(point: &Point, pulse: &PlacedPulse) -> f64 {
     let offsets = |chirp: crate::drive::chirp::Chirp| {
         (0..=64).map(|k| chirp.offset_hz(pulse.length_s * f64::from(k) / 64.0).abs()).fold(0.0, f64::max)
     };
-    1.5 * chirp_of(point, pulse).map_or(0.0, offsets) + 12.47 / pulse.length_s
-}
-
-/// Fourier transform of the complex envelope by the trapezium rule, which for a pulse that is 0 outside converges fast.
-fn pulse_spectrum(
-    document: &Document,
-    point: &Point,
-    pulse: &crate::drive::timeline::PlacedPulse,
-    range: f64,
-    points: usize,
-) -> (Vec<f64>, Vec<f64>) {
-    let envelope = &document.envelopes[pulse.envelope];
-    let curve = &point.curves[pulse.envelope];
-    let weight = envelope.derivative.map_or(0.0, |derivative| {
-        let value = |quantity: crate::config::reader::Quantity| point.values[quantity.register as usize];
-        -value(derivative.factor) / (crate::units::RAD_PER_TURN * value(derivative.against))
-    });
-    let chirp = chirp_of(point, pulse);
-    let samples = 2048usize.max((8.0 * range * pulse.length_s) as usize).min(16_384);
-    let step = pulse.length_s / samples as f64;
-    // X - i Y turns with exp(+2 pi i f t)
-    let values: Vec<num_complex::Complex64> = (0..samples)
-        .map(|k| {
-            let t = (k as f64 + 0.5) * step;
-            let turns = chirp.as_ref().map_or(0.0, |chirp| chirp.turns(t));
-            num_complex::Complex64::new(curve.at(t), if weight == 0.0 { 0.0 } else { -weight * curve.slope(t) }) * cis_turns(turns)
-        })
-        .collect();
-    let offsets: Vec<f64> = (0..=2 * points).map(|k| range * (k as f64 / points as f64 - 1.0)).collect();
-    let sizes: Vec<f64> = offsets
-        .iter()
-        .map(|offset| {
-            // one rotation per sample in place of one sine per sample
-            let turn = cis_turns(-offset * step);
-            let mut phase = cis_turns(-offset * step / 2.0);
-            let mut sum = num_complex::Complex64::from(0.0);
-            for value in &values {
-                sum += value * phase;
-                phase *= turn;
-            }
-            sum.norm()
-        })
-        .collect();
-    let largest = sizes.iter().copied().fold(f64::MIN_POSITIVE, f64::max);
-    let decibels = sizes.iter().map(|size| (20.0 * (size / largest).log10()).max(-120.0)).collect();
-    (offsets, decibels)
+    1.5 * point.sweep(pulse).map_or(0.0, offsets) + 12.47 / pulse.length_s
 }

@@ -11,3 +11,4 @@ pub mod plots;
 pub mod result_json;
 pub mod summary;
 pub mod traces_csv;
+pub mod write;

@@ -2,7 +2,7 @@
 use super::frame::{self, right_edge, with_unit, x_grid, x_numbers, Window, EDGE, FOOT, HEIGHT, LABEL, LINE, SMALL, TICK, WIDTH};
 use super::marks::Marks;
 use super::palette::{Look, AXIS, CURVES, INK, REST, SOFT_INK};
-use super::panel::{curves, names, remark, Curve, Vertical};
+use super::panel::{curves, names, remark, Curve, Vertical, STROKE};
 use super::place::Lanes;
 use super::scale::{engineering, number, with_digits};
 use super::scene::{Anchor, Drawn, Scene};
@@ -201,12 +201,13 @@ fn size_row(drive: &str, mine: &[(usize, &EnvelopeCurve)], view: &View, budget: 
         let runs: Vec<Run> = here().flat_map(|pulse| stretches(pulse, &pulse.in_phase_hz, window, budget, true)).collect();
         let bands = runs.iter().map(|run| (run.clone(), run.iter().map(|point| (point.0, 0.0)).collect())).collect();
         let name = if quadrature { "in phase" } else { "" };
-        let mut here_curves = vec![Curve { name: name.into(), runs, bands, look: Look { color: CURVES[0], marker: None, dash: None } }];
+        let mut here_curves =
+            vec![Curve { name: name.into(), runs, bands, look: Look { color: CURVES[0], marker: None, dash: None }, width: STROKE }];
         if quadrature {
             let part = |pulse: &EnvelopeCurve| pulse.quadrature_hz.as_ref().map(|values| stretches(pulse, values, window, budget, true));
             let runs = here().filter_map(part).flatten().collect();
             let look = Look { color: CURVES[1], marker: None, dash: Some((10.0, 6.0)) };
-            here_curves.push(Curve { name: "quadrature".into(), runs, bands: Vec::new(), look });
+            here_curves.push(Curve { name: "quadrature".into(), runs, bands: Vec::new(), look, width: STROKE });
         }
         in_windows.push(here_curves);
     }
@@ -224,7 +225,7 @@ fn sweep_row(drive: &str, mine: &[(usize, &EnvelopeCurve)], view: &View, budget:
         let part = |pulse: &EnvelopeCurve| pulse.instantaneous_hz.as_ref().map(|values| stretches(pulse, values, window, budget, false));
         let runs = here.filter_map(part).flatten().collect();
         let look = Look { color: CURVES[3], marker: None, dash: None };
-        in_windows.push(vec![Curve { name: String::new(), runs, bands: Vec::new(), look }]);
+        in_windows.push(vec![Curve { name: String::new(), runs, bands: Vec::new(), look, width: STROKE }]);
     }
     let whole = extent(in_windows.iter().flatten().flat_map(|curve| &curve.runs));
     let label = format!("{}: carrier sweep", font::fit(drive, LABEL, 500.0));
@@ -350,6 +351,7 @@ fn time_axis(scene: &mut Scene, view: &View, y: f64) {
             with_unit("time", &display.unit)
         };
         let room = window.right - window.left + if view.broken { GAP - 16.0 } else { 0.0 };
+        let room = room.min(2.0 * (WIDTH - 4.0 - middle.0));
         scene.text(&font::fit(&label, LABEL, room), middle, LABEL, INK, Anchor::Middle);
     }
 }

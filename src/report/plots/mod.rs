@@ -3,14 +3,19 @@
 //! A figure is first laid out as a `Scene` (shapes in pixels), which one function then paints on any plotters backend.
 //! Nothing is computed here but what drawing needs: a unit prefix, ticks, and thinning to the pixel grid.
 //!
-//! Figures: `traces` (states against time), `envelopes` (pulses against time), `spectrum` (pulses against frequency).
-//! Parts: `scene` and `raster` (painting), `font`, `palette`, `scale` (prefixes, ticks), `thin` (pixel grid), `place` (labels
-//! kept apart), `panel` (one plot area with its axis and curves), `frame` (title, fingerprint, time axis),
-//! `marks` (named moments), `windows` (broken time axis).
+//! Figures: `traces` (states against time), `envelopes` (pulses against time), `spectrum` (pulses against frequency),
+//! `ledger` (turning terms of a frame), `compare` (variants against time, and their differences).
+//! Parts: `scene` and `raster` (painting), `font`, `palette`, `scale` (prefixes, ticks), `decades` (logarithmic axes), `thin`
+//! (pixel grid), `place` (labels kept apart), `near` (labels beside points), `panel` (one plot area with its axis and curves),
+//! `frame` (title, fingerprint, time axis), `marks` (named moments), `windows` (broken time axis).
+mod compare;
+mod decades;
 mod envelopes;
 mod font;
 mod frame;
+mod ledger;
 mod marks;
+mod near;
 #[cfg(test)]
 mod overlap_tests;
 mod palette;
@@ -24,7 +29,9 @@ mod thin;
 mod traces;
 mod windows;
 
+pub use compare::{compare, CompareFigure, ComparePanel, CompareSeries};
 pub use envelopes::{envelopes, EnvelopeCurve, EnvelopesFigure};
+pub use ledger::{ledger, LedgerFigure, LedgerTerm};
 pub use scale::quantity;
 pub use scene::Drawn;
 pub use spectrum::{spectrum, PulseSpectrum, SpectrumFigure};

@@ -279,3 +279,168 @@ proptest! {
         }
     }
 }
+
+fn term(label: &str, size_hz: f64, turns_at_hz: f64, limit_hz: f64) -> LedgerTerm {
+    let kept = turns_at_hz <= limit_hz;
+    let (shift_hz, ripple) = ((!kept).then(|| size_hz * size_hz / turns_at_hz), (!kept).then(|| size_hz / turns_at_hz));
+    LedgerTerm { label: label.into(), size_hz, turns_at_hz, kept, shift_hz, ripple }
+}
+
+fn ledger_figure(limit_hz: Option<f64>, terms: Vec<LedgerTerm>) -> LedgerFigure {
+    LedgerFigure { title: "Ledger".into(), fingerprint: "3f9a12c4".into(), limit_hz, terms }
+}
+
+#[test]
+fn exact_each_dropped_term_has_its_cost_beside_it() {
+    let mut terms = Vec::new();
+    for level in 0..6 {
+        let (name, size) = (format!("xy: {level} to {}", level + 1), 25e6 * f64::from(level + 1).sqrt());
+        terms.push(term(&name, size, 0.3e9 * f64::from(level), 1e9));
+        terms.push(term(&name, size, 10.2e9 - 0.3e9 * f64::from(level), 1e9));
+    }
+    let texts = checked(ledger(&ledger_figure(Some(1e9), terms)));
+    let said = [
+        "xy: 0 to 1, shift 61.3 kHz, ripple 0.25 %",
+        "dropped beyond 1 GHz",
+        "a tenth of the turning frequency",
+        "still",
+        "turning frequency (GHz)",
+        "size (MHz)",
+        "kept",
+        "dropped",
+        "doubtful",
+    ];
+    for said in said {
+        assert!(texts.iter().any(|text| text == said), "{said} in {texts:?}");
+    }
+    assert_eq!(texts.iter().filter(|text| text.contains("ripple")).count(), 8);
+    assert_eq!(texts.iter().filter(|text| **text == "xy: 0 to 1").count(), 1);
+}
+
+#[test]
+fn exact_a_crowd_of_terms_is_counted() {
+    let terms = (0..3000).map(|k| term(LONG, 1e6 + f64::from(k), 5e9 + 10.0 * f64::from(k), 1e9)).collect();
+    let mut figure = ledger_figure(Some(1e9), terms);
+    figure.terms.push(term("zero", 0.0, 5e9, 1e9));
+    figure.terms.push(term("none", f64::NAN, 5e9, 1e9));
+    let texts = checked(ledger(&figure));
+    let note = texts.iter().find(|text| text.starts_with('…')).unwrap();
+    assert!(note.contains("without a label") && note.contains("2002 terms not drawn"), "{note}");
+    assert!(texts.iter().filter(|text| text.contains("ripple")).count() <= 14);
+}
+
+#[test]
+fn exact_odd_ledgers_are_drawn_or_refused() {
+    let still = term("still", 1e6, 0.0, 1e9);
+    checked(ledger(&ledger_figure(None, vec![still.clone()])));
+    checked(ledger(&ledger_figure(Some(1e9), vec![still])));
+    checked(ledger(&ledger_figure(Some(f64::INFINITY), vec![term("a", 1e-150, 1e150, 1e9), term("b", 1e150, 1e-150, 1e9)])));
+    checked(ledger(&ledger_figure(Some(1e-190), vec![term("", -1e6, -1e7, 1e9), term("b", 1e150, f64::MIN_POSITIVE, 1e9)])));
+    let error = ledger(&ledger_figure(Some(1e9), vec![term("a", 0.0, 1e9, 1e9)])).expect_err("cannot be drawn").to_string();
+    assert_eq!(error, "the figure \"Ledger\" has no finite number to draw");
+}
+
+fn variant(name: &str, time_s: Option<Vec<f64>>, values: Vec<f64>) -> CompareSeries {
+    CompareSeries { name: name.into(), time_s, values }
+}
+
+fn compare_figure(time_s: Vec<f64>, panels: Vec<ComparePanel>, tolerance: Option<f64>) -> CompareFigure {
+    let (title, fingerprint) = ("Title".into(), "3f9a12c4".into());
+    CompareFigure { title, fingerprint, reference: "lab".into(), time_s, panels, tolerance, end_s: 1e-6 }
+}
+
+fn quantity_of(variants: Vec<CompareSeries>, differences: Vec<CompareSeries>) -> ComparePanel {
+    let range = Some((0.0, 1.0));
+    ComparePanel { y_label: "population".into(), unit: String::new(), quantity: "level 1".into(), variants, differences, range }
+}
+
+#[test]
+fn exact_differences_name_reference_size_and_tolerance() {
+    let lab = variant("lab", None, vec![0.5; 5]);
+    let rotating = variant("rotating", Some(vec![0.0, 1e-6]), vec![0.51, 0.49]);
+    let panel =
+        |size: f64| quantity_of(vec![lab.clone(), rotating.clone()], vec![variant("rotating", None, vec![0.0, size, 0.0, -size, 0.0])]);
+    let said = |size: f64| checked(compare(&compare_figure(times(5, 1e-6), vec![panel(size)], Some(0.01))));
+    let has = |texts: &[String], said: &str| assert!(texts.iter().any(|text| text == said), "{said} in {texts:?}");
+    let texts = said(0.0123);
+    for expected in ["level 1: population", "minus lab", "lab", "rotating", "rotating ≤ 0.013", "tolerance ±0.01"] {
+        has(&texts, expected);
+    }
+    has(&said(1e-5), "all within the tolerance of 0.01");
+    has(&said(0.0), "all within the tolerance of 0.01");
+    has(&said(0.9), "tolerance 0.01: too small to show here");
+}
+
+#[test]
+fn exact_many_variants_and_quantities_are_counted() {
+    let names: Vec<String> = (0..12).map(|k| format!("{k}: {LONG}")).collect();
+    let curves: Vec<CompareSeries> = names.iter().map(|name| variant(name, None, times(2000, 1.0))).collect();
+    let mut panel = quantity_of(curves.clone(), curves[1..].to_vec());
+    panel.quantity = LONG.repeat(3);
+    let mut figure = compare_figure(times(2000, 1e-6), vec![panel; 6], Some(0.5));
+    figure.reference = LONG.repeat(3);
+    figure.title = LONG.repeat(3);
+    let texts = checked(compare(&figure));
+    assert!(texts.iter().any(|text| text == "… 2 more quantities; … 5 more variants"), "{texts:?}");
+}
+
+#[test]
+fn exact_comparisons_that_cannot_be_drawn_say_why() {
+    let said = |figure: &CompareFigure| compare(figure).expect_err("cannot be drawn").to_string();
+    assert_eq!(said(&compare_figure(vec![], vec![], None)), "the figure \"Title\" has no finite number to draw");
+    let holes = quantity_of(vec![variant("a", None, vec![f64::NAN; 3])], vec![]);
+    assert_eq!(said(&compare_figure(times(3, 1.0), vec![holes], None)), "the figure \"Title\" has no finite number to draw");
+    let short = quantity_of(vec![variant("a", Some(vec![0.0, 1.0]), vec![0.0; 3])], vec![]);
+    assert_eq!(said(&compare_figure(times(3, 1.0), vec![short], None)), "\"a\" has 3 values, but its axis has 2 points");
+    let back = quantity_of(vec![variant("a", Some(vec![0.0, 1.0, 0.5]), vec![0.0; 3])], vec![]);
+    assert!(said(&compare_figure(times(3, 1.0), vec![back], None)).contains("point 2"));
+}
+
+proptest! {
+    #![proptest_config(ProptestConfig::with_cases(48))]
+
+    #[test]
+    fn prop_no_ledgers_overlap_or_panic(
+        terms in proptest::collection::vec((".{0,30}", -3.0..9.0f64, 3.0..11.0f64, 0..6usize, odd_number()), 0..30),
+        limit in prop_oneof![Just(None), (3.0..11.0f64).prop_map(|power| Some(10f64.powf(power))), odd_number().prop_map(Some)],
+        title in ".{0,200}",
+    ) {
+        let term = |(label, size, turns, kind, odd): &(String, f64, f64, usize, f64)| LedgerTerm {
+            label: label.clone(),
+            size_hz: if *kind == 5 { *odd } else { 10f64.powf(*size) },
+            turns_at_hz: match kind { 0 => 0.0, 5 => *odd, _ => 10f64.powf(*turns) },
+            kept: kind % 2 == 0,
+            shift_hz: (kind % 3 == 1).then_some(*odd),
+            ripple: (kind % 3 != 0).then_some(*odd),
+        };
+        let terms = terms.iter().map(term).collect();
+        let outcome = ledger(&LedgerFigure { title, fingerprint: "f00".into(), limit_hz: limit, terms });
+        if outcome.is_ok() {
+            checked(outcome);
+        }
+    }
+
+    #[test]
+    fn prop_no_comparisons_overlap_or_panic(
+        names in proptest::collection::vec(".{0,30}", 0..12),
+        rows in proptest::collection::vec(odd_number(), 0..9),
+        tolerance in prop_oneof![Just(None), odd_number().prop_map(Some)],
+        panels in 0..6usize,
+        end_s in odd_number(),
+    ) {
+        let own: Vec<f64> = (0..rows.len()).map(|k| k as f64 * 0.5).collect();
+        let curves: Vec<CompareSeries> = names.iter().enumerate().map(|(k, name)| {
+            let mut values = rows.clone();
+            values.rotate_left(k % rows.len().max(1));
+            variant(name, (k % 2 == 0).then(|| own.clone()), values)
+        }).collect();
+        let panel = quantity_of(curves.clone(), curves.iter().skip(1).cloned().collect());
+        let time = (0..rows.len()).map(|k| k as f64 * 0.25).collect();
+        let mut figure = compare_figure(time, vec![panel; panels], tolerance);
+        (figure.end_s, figure.reference) = (end_s, names.first().cloned().unwrap_or_default());
+        let outcome = compare(&figure);
+        if outcome.is_ok() {
+            checked(outcome);
+        }
+    }
+}

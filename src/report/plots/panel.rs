@@ -7,7 +7,7 @@ use super::scale::{engineering, superscript, ticks, Display};
 use super::scene::{Anchor, Scene};
 use super::thin::Run;
 
-/// Width of curves in pixels.
+/// Usual width of curves in pixels.
 pub const STROKE: f64 = 2.2;
 /// Pixels between markers on a curve.
 const MARKER_SPACING: f64 = 230.0;
@@ -120,6 +120,8 @@ pub struct Curve {
     pub bands: Vec<(Run, Run)>,
     /// How it looks.
     pub look: Look,
+    /// Width of its line in pixels.
+    pub width: f64,
 }
 
 /// Draws curves in one window: bands first, then curves (the first on top).
@@ -139,9 +141,9 @@ pub fn curves(scene: &mut Scene, window: &Window, vertical: &Vertical, curves: &
             let spots = marker_spots(&points, &mut next);
             if let [only] = points[..] {
                 // A lone point would be invisible as a line.
-                scene.line(vec![only, only], 3.0 * STROKE, curve.look.color);
+                scene.line(vec![only, only], 3.0 * curve.width, curve.look.color);
             } else {
-                scene.curve(straightened(points), STROKE, curve.look);
+                scene.curve(straightened(points), curve.width, curve.look);
             }
             if let Some(marker) = curve.look.marker {
                 for spot in spots {
@@ -167,7 +169,8 @@ fn marker_spots(points: &[(f64, f64)], next: &mut f64) -> Vec<(f64, f64)> {
     spots
 }
 
-/// Leaves out points that move the line by less than a tenth of a pixel: equal ones, and those inside flat stretches.
+/// Leaves out points that move the line by less than a fraction of a pixel: equal ones, those inside flat stretches, and those
+/// of a rise or fall that lie within a pixel of their predecessor.
 fn straightened(points: Vec<(f64, f64)>) -> Vec<(f64, f64)> {
     let near = |a: f64, b: f64| (a - b).abs() < 0.05;
     let mut kept: Vec<(f64, f64)> = Vec::with_capacity(points.len());
@@ -175,7 +178,9 @@ fn straightened(points: Vec<(f64, f64)>) -> Vec<(f64, f64)> {
         if let [.., before, last] = kept[..] {
             let level = near(before.1, last.1) && near(last.1, point.1);
             let upright = near(before.0, last.0) && near(last.0, point.0) && (last.1 - before.1) * (point.1 - last.1) >= 0.0;
-            if level || upright {
+            let (rise, next) = (last.1 - before.1, point.1 - last.1);
+            let close = rise * next > 0.0 && (last.0 - before.0).hypot(rise) + (point.0 - last.0).hypot(next) < 1.0;
+            if level || upright || close {
                 kept.pop();
             }
         }
@@ -194,7 +199,10 @@ pub fn names(scene: &mut Scene, edge: f64, vertical: &Vertical, curves: &[Curve]
     let room = (vertical.top + 4.0, vertical.bottom - 4.0);
     for ((curve, from), to) in named.iter().zip(apart(&wished, LINE, room.0, room.1)) {
         let end = edge + KEY - 10.0;
-        scene.curve(vec![(edge + 3.0, *from), (edge + 16.0, to), (end, to)], STROKE, curve.look);
+        scene.curve(vec![(edge + 3.0, *from), (edge + 16.0, to), (end, to)], curve.width.min(STROKE), curve.look);
+        if curve.width > STROKE {
+            scene.curve(vec![(edge + 18.0, to), (end, to)], curve.width, curve.look);
+        }
         if let Some(marker) = curve.look.marker {
             scene.marker((end - 11.0, to), marker, curve.look.color);
         }

@@ -2,7 +2,7 @@
 use super::frame::{self, right_edge, with_unit, x_grid, x_numbers, Window, EDGE, FOOT, HEIGHT, LABEL, LINE, WIDTH};
 use super::marks::{in_lanes, Tick};
 use super::palette::{look, Look, INK, SOFT_INK};
-use super::panel::{curves, names, remark, Curve, Vertical};
+use super::panel::{curves, names, remark, Curve, Vertical, STROKE};
 use super::scale::engineering;
 use super::scene::{Anchor, Drawn, Scene};
 use super::thin::{check_axis, check_length, column_count, columns, extent, thin};
@@ -91,7 +91,7 @@ fn curve(pulse: &PulseSpectrum, index: usize, count: usize, low: f64, high: f64)
     let amplitude: Vec<f64> = pulse.amplitude_db.iter().map(|value| if *value < FLOOR_DB { FLOOR_DB } else { *value }).collect();
     let label = font::clean(pulse.label.trim());
     let name = if label.is_empty() { format!("pulse {}", index + 1) } else { label };
-    Curve { name, runs: thin(&pulse.offset_hz, &amplitude, &bounds), bands: Vec::new(), look: look(index, count) }
+    Curve { name, runs: thin(&pulse.offset_hz, &amplitude, &bounds), bands: Vec::new(), look: look(index, count), width: STROKE }
 }
 
 fn draw_lines(scene: &mut Scene, lines: &[Tick], top: f64, bottom: f64) {

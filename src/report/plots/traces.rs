@@ -2,7 +2,7 @@
 use super::frame::{self, right_edge, with_unit, x_grid, x_numbers, Window, EDGE, FOOT, HEIGHT, KEY, LABEL, LINE, TICK, WIDTH};
 use super::marks::Marks;
 use super::palette::{look, Look, Rgb, CURVES, GRID, INK, REST};
-use super::panel::{curves, names, remark, Curve, Vertical};
+use super::panel::{curves, names, remark, Curve, Vertical, STROKE};
 use super::scale::{engineering, quantity, Display};
 use super::scene::{Anchor, Drawn, Scene};
 use super::thin::{check_axis, check_length, column_count, columns, drawable, extent, thin, Run};
@@ -125,7 +125,7 @@ pub fn traces(figure: &TracesFigure) -> Result<Drawn, PlotError> {
 }
 
 /// The label of the time axis and the fingerprint.
-fn foot(scene: &mut Scene, window: &Window, display: &Display, fingerprint: &str) {
+pub fn foot(scene: &mut Scene, window: &Window, display: &Display, fingerprint: &str) {
     let middle = ((window.left + window.right) / 2.0, scene.height - FOOT + 60.0);
     scene.text(&with_unit("time", &display.unit), middle, LABEL, INK, Anchor::Middle);
     frame::fingerprint(scene, fingerprint);
@@ -207,7 +207,7 @@ fn prepare_panel<'a>(panel: &'a Panel, time: &[f64], bounds: &[usize]) -> Prepar
     for (index, series) in panel.series.iter().enumerate() {
         let runs = thin(time, &series.values, bounds);
         let bands = series.band.as_ref().map_or_else(Vec::new, |band| band_edges(time, &series.values, band, bounds));
-        curves.push(Curve { name: shown_name(&series.name, index), runs, bands, look: look(index, total) });
+        curves.push(Curve { name: shown_name(&series.name, index), runs, bands, look: look(index, total), width: STROKE });
     }
     let edges = curves.iter().flat_map(|curve| curve.bands.iter().flat_map(|band| [&band.0, &band.1]));
     let whole = extent(curves.iter().flat_map(|curve| &curve.runs).chain(edges));
@@ -222,7 +222,8 @@ fn prepare_panel<'a>(panel: &'a Panel, time: &[f64], bounds: &[usize]) -> Prepar
     Prepared { source: panel, curves, vertical, unnamed }
 }
 
-fn shown_name(name: &str, index: usize) -> String {
+/// `name` on one line, or a number for it.
+pub fn shown_name(name: &str, index: usize) -> String {
     let name = font::clean(name.trim());
     if name.is_empty() {
         format!("curve {}", index + 1)
@@ -244,7 +245,7 @@ fn name_the_tiny(curves: &mut [Curve], vertical: &Vertical, unit: &str) {
 }
 
 /// The next number of two digits that is not below `value` (positive).
-fn round_up(value: f64) -> f64 {
+pub fn round_up(value: f64) -> f64 {
     let unit = 10f64.powf(value.log10().floor() - 1.0);
     let steps = (value / unit - 1e-9).ceil();
     if unit > 0.0 && steps.is_finite() {
