@@ -119,7 +119,7 @@ fn exact_commutator_of_a_ladder() {
     let energies = [0.0, 5.0, 9.75];
     let mean = energies.iter().sum::<f64>() / 3.0;
     let static_norm = energies.iter().map(|e| (e - mean).powi(2)).sum::<f64>().sqrt();
-    let commutator = (2.0 * (25.0 + 2.0 * 4.75 * 4.75) as f64).sqrt();
+    let commutator = (2.0 * (25.0 + 2.0 * 4.75 * 4.75f64)).sqrt();
     assert_eq!(found["commutators"][0]["name"], "static and xy");
     close(&found["commutators"][0]["size"], commutator / (2.0 * static_norm * 6f64.sqrt()), 1e-14);
 }
