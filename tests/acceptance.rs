@@ -276,6 +276,11 @@ fn cases_of_explain() {
     }
 }
 
+#[test]
+fn cases_of_compare() {
+    judge_cases("compare", 7);
+}
+
 /// Files below a folder.
 fn files(folder: &Path) -> Vec<PathBuf> {
     let mut found = Vec::new();
