@@ -229,3 +229,32 @@ fn exact_elimination_tends_to_the_full_system() {
     let ratio = found[0] / found[1];
     assert!(ratio > 3.6 && ratio < 4.6, "{found:?}");
 }
+
+/// An idle level that meets the eliminated one in the frame gave a shift that was no number.
+#[test]
+fn regress_an_uncoupled_level_may_meet_the_eliminated_one() {
+    let text = "format: 1
+system:
+  levels: {near: 0 MHz, far: 64 MHz, upper: 3000 MHz, idle: -400 MHz}
+drives:
+  pump: {pair: [near, upper], form: one_sided, carrier: 3400 MHz}
+  dump: {pair: [far, upper], form: one_sided, carrier: 3336 MHz}
+envelopes:
+  on: {shape: square, length: 1.4 us, peak: 40 MHz}
+sequence:
+  - together:
+      - pulse: {drive: pump, envelope: on}
+      - pulse: {drive: dump, envelope: on}
+start: near
+frame: {kind: rotating, follows: drives, drop_terms_faster_than: 1 GHz, eliminate: [upper]}
+record: {populations: [near, far, idle]}
+";
+    let plan = Plan::new(document(text, &[]));
+    let point = plan.point().unwrap();
+    let elimination = point.in_frame().unwrap().elimination.clone().unwrap();
+    // 20^2/400 MHz on both legs, nothing on the idle level
+    for (level, wanted) in [(0, 1e6), (1, 1e6), (3, 0.0)] {
+        let shift = elimination.shifts_hz.iter().find(|(at, _)| *at == level).unwrap().1;
+        close(shift, wanted, 1e-6);
+    }
+}
