@@ -259,9 +259,11 @@ pub fn sentences(document: &Document, comparison: &Comparison) -> Vec<String> {
         }
         if let Some(first) = held.explanation.first() {
             let left = first.remains.iter().map(|(_, value)| value.abs()).fold(0.0, f64::max);
-            let names = &document.system.names;
-            let [a, b] = first.line.levels().map(|level| names.get(level).map_or("?", String::as_str));
-            let drive = crate::plan::source_name(document, first.line.key.source);
+            // levels and drives as the run that dropped the term calls them
+            let dropper = if first.in_reference { &comparison.against } else { &held.name };
+            let its = comparison.computed.iter().find(|computed| computed.name == *dropper).map_or(document, |c| c.plan.document());
+            let [a, b] = first.line.levels().map(|level| its.system.names[level].as_str());
+            let drive = crate::plan::source_name(its, first.line.key.source);
             let turns = crate::config::messages::short_with_unit(first.line.turns_at_hz, "Hz");
             let share = if left < 0.5 * largest.value.abs() { "explains most of it" } else { "explains most among the dropped terms" };
             text.push_str(&format!(

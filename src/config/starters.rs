@@ -57,6 +57,18 @@ pub const STARTERS: &[Starter] = &[
         text: include_str!("../../configs/transfer.yaml"),
         beside: &[],
     },
+    Starter {
+        kind: "qubit-frame",
+        about: "a gate in the frame of its drive, compared with the laboratory frame and with one level more",
+        text: include_str!("../../configs/qubit-frame.yaml"),
+        beside: &[],
+    },
+    Starter {
+        kind: "strong-spin",
+        about: "a slow spin driven hard: dropped terms that matter, named one by one",
+        text: include_str!("../../configs/strong-spin.yaml"),
+        beside: &[],
+    },
 ];
 
 /// The starter of a kind; blanks and underscores count as dashes, large letters as small ones.

@@ -286,7 +286,9 @@ fn judge(problem: &Problem, segment: &Segment, levels: &[usize], out: &mut Elimi
         if strength > *strongest {
             *strongest = strength;
             let added = |a: usize, b: usize| -> Complex64 {
-                levels.iter().map(|e| h[(a, *e)] * h[(*e, b)] * weight(energies[a], energies[b], energies[*e])).sum()
+                // a level that is not coupled may lie wherever it likes, at no distance too
+                let coupled = levels.iter().filter(|e| h[(a, **e)].norm() > 0.0 && h[(**e, b)].norm() > 0.0);
+                coupled.map(|e| h[(a, *e)] * h[(*e, b)] * weight(energies[a], energies[b], energies[*e])).sum()
             };
             let stays: Vec<usize> = (0..size).filter(|j| !levels.contains(j)).collect();
             out.shifts_hz = stays.iter().map(|a| (*a, added(*a, *a).re / RAD_PER_TURN)).collect();
