@@ -5,7 +5,7 @@
 //!
 //! * [`Kind::Tied`]: each entry that turns at f ties F_j - F_k = f where j and k are not joined yet, entries of earlier terms
 //!   first and larger ones first; entries that stand still tie F_j = F_k. One-sided drives on a tree of levels then stand still altogether.
-//!   Where that is not the case, F = 0 is taken if less turns in it.
+//!   Where that is not the case, F = 0 is taken if less turns in it, unless the couplings are weak.
 //! * [`Kind::Free`]: F_j = A_jj / (2 pi), nothing is left on the diagonal (the interaction picture); best for Runge-Kutta, whose
 //!   error then grows with the couplings and not with the level distances.
 
@@ -172,6 +172,8 @@ pub(super) struct Pictures<'a> {
 }
 
 const KEPT: usize = 32;
+/// H of the tied picture over the fastest turning at rest, below which the tied one is taken although more turns in it.
+const WEAK: f64 = 0.1;
 
 impl<'a> Pictures<'a> {
     pub fn new(problem: &'a Problem) -> Self {
@@ -201,7 +203,10 @@ impl<'a> Pictures<'a> {
                     tied
                 } else {
                     let resting = Picture::new(self.problem, terms, vec![0.0; self.problem.dim()], key);
-                    if resting.fastest_hz < tied.fastest_hz {
+                    // weak couplings swing the state little in the tied picture, and what turns there averages out; at rest the
+                    // distances of the levels would swing it as often as the carrier turns
+                    let weak = super::load::size_hz(&tied, terms, segment.length_s) < WEAK * resting.fastest_hz;
+                    if !weak && resting.fastest_hz < tied.fastest_hz {
                         resting
                     } else {
                         tied
