@@ -4,7 +4,7 @@
 
 use crate::problem::{Matrix, Problem, Vector};
 use crate::propagate::Recorder;
-use crate::units::RAD_PER_TURN;
+use crate::units::{cis_turns, RAD_PER_TURN};
 
 /// One level of the driven system.
 #[derive(Debug, Clone, PartialEq)]
@@ -24,7 +24,8 @@ pub fn quasi_energies(u: &Matrix) -> Option<Vec<QuasiEnergy>> {
     let mut found: Vec<QuasiEnergy> = (0..u.ncols())
         .map(|k| {
             let turns = -triangle[(k, k)].arg() / RAD_PER_TURN;
-            let turns = if turns <= -0.5 { turns + 1.0 } else { turns };
+            // rounding must not put 1/2 at the lower end, nor leave a zero its sign
+            let turns = if turns <= -0.5 + 1e-15 { turns + 1.0 } else { turns + 0.0 };
             QuasiEnergy { turns, weights: vectors.column(k).iter().map(|z| z.norm_sqr()).collect() }
         })
         .collect();
@@ -46,8 +47,10 @@ impl Recorder for QuasiRecorder {
     fn finish(&mut self, propagator: Option<&Matrix>) {
         self.found = propagator.and_then(quasi_energies);
         // turns near the ends of their range are one number apart by rounding: compared as points on a circle
+        let point = |turns: f64| cis_turns(turns) / RAD_PER_TURN;
+        let all = self.found.iter().flatten();
         self.numbers =
-            self.found.iter().flatten().flat_map(|level| std::iter::once(level.turns).chain(level.weights.iter().copied())).collect();
+            all.flat_map(|level| [point(level.turns).re, point(level.turns).im].into_iter().chain(level.weights.iter().copied())).collect();
         if self.found.is_none() {
             self.numbers = vec![f64::NAN];
         }

@@ -60,7 +60,11 @@ pub fn of_columns(document: &Document, point: &Point, columns: &[Column], times_
 
 /// The plots of a comparison: variants over each other with their differences, and those of the file as written.
 pub fn of_comparison(document: &Document, comparison: &Comparison) -> Vec<Named> {
-    let mut drawn = vec![("compare", compare(&compare_figure(document, comparison)))];
+    let figure = compare_figure(document, comparison);
+    let mut drawn = Vec::new();
+    if !figure.panels.is_empty() {
+        drawn.push(("compare", compare(&figure)));
+    }
     if let Some(written) = comparison.computed.first() {
         if let Ok(point) = written.plan.point() {
             drawn.extend(of_run(document, &point, &written.outcome));

@@ -216,7 +216,19 @@ fn prepare_panel<'a>(panel: &'a Panel, time: &[f64], bounds: &[usize]) -> Prepar
         Some((floor, highest)) => Vertical::decades(floor, highest, &panel.unit),
         None => Vertical::linear(panel.range, whole, &panel.unit),
     };
-    if !vertical.log {
+    if vertical.log {
+        // what lies below the axis is left out: drawn along its edge it would look like data
+        let floor = 10f64.powf(vertical.low);
+        for curve in &mut curves {
+            curve.runs = curve
+                .runs
+                .iter()
+                .flat_map(|run| run.split(|point| point.1 < floor))
+                .filter(|run| !run.is_empty())
+                .map(<[_]>::to_vec)
+                .collect();
+        }
+    } else {
         name_the_tiny(&mut curves, &vertical, &panel.unit);
     }
     Prepared { source: panel, curves, vertical, unnamed }
