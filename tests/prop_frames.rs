@@ -66,8 +66,8 @@ fn experiment(draw: &mut Draw, zoo: Zoo) -> (String, usize) {
         energies.push(energies[k - 1] + draw.between(40.0, 95.0));
     }
     let mut rows = String::new();
-    for j in 0..size {
-        let mut entries = vec![format!("{:.3}", energies[j])];
+    for (j, energy) in energies.iter().enumerate() {
+        let mut entries = vec![format!("{energy:.3}")];
         for _ in j + 1..size {
             let coupled = all && draw.chance(0.3);
             entries.push(if coupled { format!("{:.3} + {:.3}i", draw.between(-3.0, 3.0), draw.between(-3.0, 3.0)) } else { "0".into() });
