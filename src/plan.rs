@@ -10,15 +10,17 @@ use std::sync::Arc;
 
 use crate::config::document::{not_finite, Document};
 use crate::config::drives::Form;
-use crate::config::envelopes::{Envelope, Samples, SizeWord};
+use crate::config::envelopes::{Samples, SizeWord};
 use crate::config::messages::{short_with_unit, Fault, Mistake};
-use crate::config::record::{Item, Rows};
+use crate::config::record::Item;
 use crate::config::settings::{Follows, Frame, Rotating};
 use crate::config::state::State;
 use crate::config::tape::{Entry, Formula, Register, Wide};
 use crate::drive::chirp::Chirp;
 use crate::drive::coupling::{coupling, Coupling, CouplingFault};
-use crate::drive::envelope::{self, Curve, FormulaCurve, Parameters, Pieces, ShapeFault};
+use crate::drive::curve::curve;
+use crate::drive::envelope::{Curve, Pieces};
+use crate::drive::moments::{moments, rows_of};
 use crate::drive::segments::{cut, PulseParts};
 use crate::drive::signal::Signal;
 use crate::drive::timeline::{lay_out, PlacedPulse, Timeline};
@@ -28,13 +30,8 @@ use crate::frame::ledger::{Source, TermKey};
 use crate::frame::rotating::{rotate, Beat, Rotated, Setting};
 use crate::measure::breaks_period;
 use crate::model;
-use crate::problem::{Matrix, Moment, Problem, Segment, Vector};
+use crate::problem::{Matrix, Problem, Vector};
 use crate::units::{rad_s, RAD_PER_TURN};
-
-/// Rows of the traces where the config does not say.
-const USUAL_ROWS: usize = 500;
-/// Most rows of the traces.
-const MOST_ROWS: f64 = 1e7;
 
 /// A config laid out once, ready for any number of points.
 #[derive(Debug)]
@@ -534,100 +531,6 @@ fn couplings(document: &Document, energies: &[f64], values: &[f64]) -> Result<Ve
     document.drives.iter().map(one).collect()
 }
 
-/// The curve of an envelope.
-fn curve(envelope: &Envelope, values: &[f64]) -> Result<Arc<dyn Curve>, Mistake> {
-    let time = |key: &str| envelope.time(key).map(|quantity| values[quantity.register as usize]);
-    if let Some(formula) = &envelope.formula {
-        let length = time("length").unwrap_or(0.0);
-        if !(length > 0.0) {
-            return Err(shape_mistake(envelope, ShapeFault::NotPositive { key: "length", value: length }));
-        }
-        let curve = FormulaCurve::new(formula.bind(values), length);
-        if let Some(t) = curve.gap_s() {
-            let text = format!("the formula at t = {}", short_with_unit(t, "s"));
-            return Err(Mistake::error(formula.place, Fault::NotFinite { text }));
-        }
-        return Ok(Arc::new(curve));
-    }
-    let (samples, sample_times_s) = match &envelope.samples {
-        Some(Samples::List(list)) => (Some(list.iter().map(|register| values[*register as usize]).collect()), None),
-        Some(Samples::File { times_s, values }) => (Some(values.clone()), Some(times_s.clone())),
-        None => (None, None),
-    };
-    let parameters = Parameters {
-        length_s: time("length"),
-        rise_s: time("rise"),
-        field_sigma_s: time("field_sigma"),
-        field_fwhm_s: time("field_fwhm"),
-        intensity_fwhm_s: time("intensity_fwhm"),
-        sech_time_s: time("sech_time"),
-        rise_10_90_s: time("rise_10_90"),
-        cut_at_s: time("cut_at"),
-        edge: envelope.edge,
-        samples,
-        sample_times_s,
-        between: envelope.between,
-    };
-    envelope::build(envelope.shape, &parameters).map_err(|fault| shape_mistake(envelope, fault))
-}
-
-/// A shape's refusal at the line of the key it concerns.
-fn shape_mistake(envelope: &Envelope, fault: ShapeFault) -> Mistake {
-    let name = envelope.name.clone();
-    let at = |key: &str| envelope.time(key).map_or(envelope.place, |quantity| quantity.place);
-    let samples = |reason: String| Mistake::error(envelope.place, Fault::Samples { reason });
-    match fault {
-        ShapeFault::NotPositive { key, value } => {
-            Mistake::error(at(key), Fault::NotPositive { what: format!("envelopes / {name} / {key}"), value, unit: "s".to_string() })
-        }
-        ShapeFault::EdgesTooLong { rise_s, length_s } => Mistake::error(at("rise"), Fault::EdgesTooLong { rise_s, length_s }),
-        ShapeFault::FlatLift { .. } => Mistake::error(at("cut_at"), Fault::FlatLift { envelope: name }),
-        ShapeFault::NothingToLift => {
-            let known = vec!["step".to_string()];
-            let hint = Some("This curve starts at 0, so there is no pedestal to take off.".to_string());
-            Mistake::error(
-                envelope.place,
-                Fault::UnknownWord { what: "edge".to_string(), found: "lift".to_string(), known, near: None, hint },
-            )
-        }
-        ShapeFault::UnknownShape { word } => Mistake::error(
-            envelope.place,
-            Fault::UnknownWord { what: "shape".to_string(), found: word, known: Vec::new(), near: None, hint: None },
-        ),
-        ShapeFault::Missing { key } => {
-            let fault = Fault::MissingKey {
-                key: key.to_string(),
-                section: format!("envelopes / {name}"),
-                write: format!("{key}: value"),
-                why: None,
-            };
-            Mistake::error(envelope.place, fault)
-        }
-        ShapeFault::NotOneOf { keys, .. } => {
-            let keys = keys.iter().map(|key| (*key).to_string()).collect();
-            Mistake::error(envelope.place, Fault::OneOfMissing { keys, section: format!("envelopes / {name}"), hint: None })
-        }
-        ShapeFault::TooFewSamples { found, needed } => samples(format!("there are {found}, and at least {needed} are needed")),
-        ShapeFault::SampleNotFinite { index, .. } => samples(format!("sample number {} is not finite", index + 1)),
-        ShapeFault::TimesNotAsMany { times, samples: count } => samples(format!("there are {times} times for {count} samples")),
-        ShapeFault::FirstTimeNotZero { .. } => samples("the first time must be 0".to_string()),
-        ShapeFault::TimesNotAscending { index, .. } => {
-            samples(format!("the time of sample number {} is not later than the one before", index + 1))
-        }
-        ShapeFault::UnequalSteps { index, .. } => {
-            samples(format!("band limited needs equal steps, and the step before sample number {} differs", index + 1))
-        }
-        ShapeFault::EndsBeforeLastSample { length_s, last_s } => {
-            let length = short_with_unit(length_s, "s");
-            samples(format!("length is {length}, but the last sample starts at {}", short_with_unit(last_s, "s")))
-        }
-        ShapeFault::LengthDisagrees { length_s, last_s } => {
-            let length = short_with_unit(length_s, "s");
-            samples(format!("length is {length}, but the last sample stands at {}", short_with_unit(last_s, "s")))
-        }
-    }
-}
-
 fn timeline<'p>(
     document: &'p Document,
     values: &[f64],
@@ -641,83 +544,4 @@ fn timeline<'p>(
 
 fn start_state(document: &Document, values: &[f64]) -> Vector {
     model::amplitudes(document.system.names.len(), &document.start, values)
-}
-
-/// The numbers that `record: every` or `at` come to.
-fn rows_of(document: &Document, values: &[f64]) -> Vec<f64> {
-    match &document.record.rows {
-        Rows::Unsaid => Vec::new(),
-        Rows::Every(every) => vec![values[every.register as usize]],
-        Rows::At(list) => list.iter().map(|at| values[at.register as usize]).collect(),
-    }
-}
-
-/// The moments to record: those asked for, and the end of the sequence.
-fn moments(document: &Document, values: &[f64], segments: &[Segment], end_s: f64) -> Result<Vec<Moment>, Mistake> {
-    let close = 1e-12 * end_s;
-    let steps = |step: f64, count: usize| {
-        let mut times: Vec<f64> = (0..=count).map(|k| k as f64 * step).collect();
-        match times.last_mut() {
-            Some(last) if *last >= end_s - close => *last = end_s,
-            _ => times.push(end_s),
-        }
-        times
-    };
-    let mut times = match &document.record.rows {
-        Rows::Unsaid => steps(end_s / USUAL_ROWS as f64, USUAL_ROWS),
-        Rows::Every(every) => {
-            let step = values[every.register as usize];
-            if !(step > 0.0) {
-                return Err(Mistake::error(
-                    every.place,
-                    Fault::NotPositive { what: "record / every".to_string(), value: step, unit: "s".to_string() },
-                ));
-            }
-            let rows = (end_s + close) / step;
-            if rows > MOST_ROWS {
-                return Err(Mistake::error(every.place, Fault::TooManyRows { rows, limit: MOST_ROWS }));
-            }
-            steps(step, rows.floor() as usize)
-        }
-        Rows::At(list) => {
-            let mut times = Vec::new();
-            for at in list {
-                let time_s = values[at.register as usize];
-                if time_s < 0.0 {
-                    let found = short_with_unit(time_s, "s");
-                    return Err(Mistake::error(
-                        at.place,
-                        Fault::OutOfRange { what: "a recorded time".to_string(), found, wanted: "0 or later".to_string() },
-                    ));
-                }
-                if time_s > end_s + close {
-                    return Err(Mistake::error(at.place, Fault::AfterEnd { time_s, end_s }));
-                }
-                times.push(time_s);
-            }
-            times.sort_by(f64::total_cmp);
-            times.dedup();
-            times
-        }
-    };
-    match times.last() {
-        Some(last) if *last >= end_s - close => {}
-        _ => times.push(end_s),
-    }
-    let mut segment = 0;
-    let last = segments.len() - 1;
-    Ok(times
-        .into_iter()
-        .map(|time_s| {
-            let at = crate::problem::Instant::at(time_s);
-            while segment < last && at.since(segments[segment].start) > segments[segment].length_s - close {
-                segment += 1;
-            }
-            // at the very end the exact length counts, not the rounded time
-            let here = &segments[segment];
-            let offset = at.since(here.start).clamp(0.0, here.length_s);
-            let offset_s = if segment == last && here.length_s - offset <= close { here.length_s } else { offset };
-            Moment { segment, offset_s, time_s }
-        })
-        .collect())
 }

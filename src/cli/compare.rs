@@ -5,7 +5,7 @@ use std::time::Instant;
 
 use clap::Args;
 
-use super::{complain, complain_of, not_drawn, point, print, read_config, refuse, Common, Status};
+use super::{complain, complain_of, not_drawn, point, print, read_config, refuse, Common, Results, Status};
 use crate::compare::{compare, plans, CompareFault};
 use crate::config::messages::{Fault, Mistake};
 use crate::config::place::Place;
@@ -18,18 +18,8 @@ use crate::report::{compare_json, compare_text, summary, write};
 pub(super) struct Words {
     #[command(flatten)]
     common: Common,
-    /// Where the results go (in place of output / folder)
-    #[arg(long, value_name = "DIR")]
-    folder: Option<PathBuf>,
-    /// Results of another config in that folder may go
-    #[arg(long)]
-    replace: bool,
-    /// Print the result object in place of the table
-    #[arg(long)]
-    json: bool,
-    /// Print nothing but warnings and errors
-    #[arg(long, short)]
-    quiet: bool,
+    #[command(flatten)]
+    results: Results,
 }
 
 /// Compares.
@@ -58,13 +48,13 @@ fn try_run(words: &Words) -> Result<Status, Status> {
     point(&base)?;
     let document = base.document();
     let all = plans(document, &written).map_err(fault)?;
-    let folder = words.folder.clone().unwrap_or_else(|| {
+    let folder = words.results.folder.clone().unwrap_or_else(|| {
         // a run of the same file keeps its own folder
         let mut name = default_folder(document).into_os_string();
         name.push("-compare");
         PathBuf::from(name)
     });
-    let staging = prepare(&folder, document, words.replace).map_err(|fault| {
+    let staging = prepare(&folder, document, words.results.replace).map_err(|fault| {
         complain(&format!("{fault}\n"));
         Status::Refused
     })?;
@@ -76,10 +66,10 @@ fn try_run(words: &Words) -> Result<Status, Status> {
         Status::Machine
     })?;
     not_drawn(&files);
-    if words.json {
+    if words.results.json {
         let result = compare_json::comparison(document, &comparison, seconds);
         print(&format!("{}\n", serde_json::to_string_pretty(&result).unwrap_or_default()));
-    } else if !words.quiet {
+    } else if !words.results.quiet {
         print(&compare_text::table(document, &comparison, Some(&files.place)));
     }
     let mut status = Status::Good;

@@ -68,6 +68,23 @@ struct Common {
     set: Vec<String>,
 }
 
+/// What verbs take that leave results.
+#[derive(Args)]
+struct Results {
+    /// Where the results go (in place of output / folder)
+    #[arg(long, value_name = "DIR")]
+    folder: Option<PathBuf>,
+    /// Results of another config in that folder may go
+    #[arg(long)]
+    replace: bool,
+    /// Print the result object in place of the screen text
+    #[arg(long)]
+    json: bool,
+    /// Print nothing but warnings and errors
+    #[arg(long, short)]
+    quiet: bool,
+}
+
 /// Runs the program.
 pub fn main() -> ExitCode {
     let words = match Words::try_parse() {

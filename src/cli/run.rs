@@ -1,10 +1,8 @@
 //! `nutate run FILE`: evolves, records, and writes numbers and plots.
 
-use std::path::PathBuf;
-
 use clap::Args;
 
-use super::{complain, complain_of, not_drawn, point, print, read_config, Common, Status};
+use super::{complain, complain_of, not_drawn, point, print, read_config, Common, Results, Status};
 use crate::outcome::compute;
 use crate::plan::Plan;
 use crate::report::folder::{default_folder, prepare};
@@ -15,18 +13,8 @@ use crate::report::{result_json, summary, write};
 pub(super) struct Words {
     #[command(flatten)]
     common: Common,
-    /// Where the results go (in place of output / folder)
-    #[arg(long, value_name = "DIR")]
-    folder: Option<PathBuf>,
-    /// Results of another config in that folder may go
-    #[arg(long)]
-    replace: bool,
-    /// Print the result object in place of the screen text
-    #[arg(long)]
-    json: bool,
-    /// Print nothing but warnings and errors
-    #[arg(long, short)]
-    quiet: bool,
+    #[command(flatten)]
+    results: Results,
 }
 
 /// Runs the file.
@@ -40,8 +28,8 @@ fn try_run(words: &Words) -> Result<Status, Status> {
     let plan = Plan::new(read_config(&words.common)?);
     let document = plan.document();
     let point = point(&plan)?;
-    let folder = words.folder.clone().unwrap_or_else(|| default_folder(document));
-    let staging = prepare(&folder, document, words.replace).map_err(|fault| {
+    let folder = words.results.folder.clone().unwrap_or_else(|| default_folder(document));
+    let staging = prepare(&folder, document, words.results.replace).map_err(|fault| {
         complain(&format!("{fault}\n"));
         Status::Refused
     })?;
@@ -53,10 +41,10 @@ fn try_run(words: &Words) -> Result<Status, Status> {
         Status::Machine
     })?;
     not_drawn(&written);
-    if words.json {
+    if words.results.json {
         let result = result_json::result(document, &point, &outcome);
         print(&format!("{}\n", serde_json::to_string_pretty(&result).unwrap_or_default()));
-    } else if !words.quiet {
+    } else if !words.results.quiet {
         print(&summary::summary(document, &point, &outcome, Some(&written.place)));
     }
     if !outcome.reached {

@@ -6,8 +6,10 @@
 
 pub mod chirp;
 pub mod coupling;
+pub mod curve;
 pub mod detuning;
 pub mod envelope;
+pub mod moments;
 pub mod segments;
 pub mod signal;
 pub mod spectrum;

@@ -3,7 +3,8 @@
 use serde_json::{json, Map, Value};
 
 use super::frame_json;
-use super::result_json::{config, number, program, result};
+use super::number::number;
+use super::result_json::{config, program, result};
 use crate::compare::{sentences, Comparison};
 use crate::config::document::Document;
 

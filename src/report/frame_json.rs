@@ -2,7 +2,7 @@
 
 use serde_json::{json, Map, Value};
 
-use super::result_json::number;
+use super::number::number;
 use crate::config::document::Document;
 use crate::config::settings::{Follows, Frame};
 use crate::frame::ledger::LedgerLine;

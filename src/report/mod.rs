@@ -7,6 +7,7 @@ pub mod fingerprint;
 pub mod folder;
 pub mod frame_json;
 pub mod heading;
+pub mod number;
 pub mod plots;
 pub mod result_json;
 pub mod summary;

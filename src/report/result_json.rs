@@ -2,15 +2,11 @@
 
 use serde_json::{json, Map, Value};
 
+use super::number::number;
 use crate::config::document::Document;
 use crate::config::messages::one_line;
 use crate::outcome::Outcome;
 use crate::plan::Point;
-
-/// A number; what is not finite becomes null.
-pub fn number(value: f64) -> Value {
-    serde_json::Number::from_f64(value).map_or(Value::Null, Value::Number)
-}
 
 /// Name and version of the program.
 pub fn program() -> Value {

@@ -8,7 +8,7 @@ use serde_json::{json, Map, Value};
 use super::facts::{Facts, PulseFact};
 use crate::drive::detuning::detuning;
 use crate::drive::strength::flip_s;
-use crate::report::result_json::number;
+use crate::report::number::number;
 
 /// Writes the object.
 pub fn write(facts: &Facts, out: &mut dyn Write) -> io::Result<()> {
