@@ -50,6 +50,19 @@ pub fn ledger(document: &Document, point: &Point) -> Value {
     point.in_frame().map_or_else(|| json!([]), |frame| frame.rotated.ledger.lines.iter().map(|entry| line(document, entry)).collect())
 }
 
+/// `ledger_by_pair`: what the dropped terms of each pair do together.
+pub fn by_pair(document: &Document, point: &Point) -> Value {
+    let names = &document.system.names;
+    let sum = |sum: &crate::frame::ledger::PairSum| {
+        json!({
+            "levels": sum.levels.map(|level| names[level].clone()),
+            "predicted_shift_Hz": number(sum.shift_hz),
+            "predicted_ripple": number(sum.ripple),
+        })
+    };
+    point.in_frame().map_or_else(|| json!([]), |frame| frame.rotated.ledger.by_pair().iter().map(sum).collect())
+}
+
 /// `elimination`: added shifts and couplings, and the validity figure.
 pub fn elimination(document: &Document, point: &Point) -> Option<Value> {
     let done = point.in_frame()?.elimination.as_ref()?;

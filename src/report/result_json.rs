@@ -76,6 +76,7 @@ pub fn result(document: &Document, point: &Point, outcome: &Outcome) -> Value {
         json!({"levels": document.system.names, "amplitudes": outcome.end_state.iter().map(|z| json!([number(z.re), number(z.im)])).collect::<Vec<_>>()}),
     );
     put("ledger", super::frame_json::ledger(document, point));
+    put("ledger_by_pair", super::frame_json::by_pair(document, point));
     if let Some(elimination) = super::frame_json::elimination(document, point) {
         put("elimination", elimination);
     }
