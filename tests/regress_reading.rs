@@ -60,3 +60,17 @@ fn regress_a_key_with_a_bracket_was_refused_without_a_word() {
     let message = rig::refusal(&rig::ONE_PULSE.replace("up: 40 MHz", "up: max(40 MHz, 3 MHz)"));
     assert_eq!(message.matches("is cut off").count(), 1, "{message}");
 }
+
+/// `final:` named a quantity that no other word recorded, and the file was refused; it switches things on, never off.
+#[test]
+fn regress_final_records_what_it_names() {
+    let text = "format: 1\nsystem: {levels: {down: 0 MHz, up: 20 MHz}}\nsequence: [{wait: 1 us}]\nstart: down\n\
+                record: {populations: [down], final: {population: up, adiabatic_population: up, energy: true}}\n";
+    let document = nutate::config::document::read_str("final.yaml", text, std::path::Path::new(""), &[]).unwrap();
+    let names: Vec<&str> = document.record.finals.iter().map(|(name, _)| name.as_str()).collect();
+    assert_eq!(names, ["population_up", "adiabatic_population_up", "energy_Hz"]);
+    let plan = nutate::plan::Plan::new(document);
+    let outcome = nutate::outcome::compute(plan.document(), &plan.point().unwrap());
+    let recorded: Vec<&str> = outcome.columns.iter().map(|column| column.name.as_str()).collect();
+    assert_eq!(recorded, ["population_down", "population_up", "adiabatic_population_down", "adiabatic_population_up", "energy_Hz"]);
+}

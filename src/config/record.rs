@@ -185,7 +185,7 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
         }
     }
     let finals = match node.get("final") {
-        Some(finals) => read_finals(reader, finals, &items),
+        Some(finals) => read_finals(reader, finals, &mut items, operators, used),
         None => Some(Vec::new()),
     };
     let rows = rows?;
@@ -323,8 +323,14 @@ fn read_target(reader: &mut Reader, node: &Node, size: usize) -> Option<Target> 
     Some(Target::Equator(turn?, axis))
 }
 
-/// The names of the columns that `final:` asks for; each must be recorded.
-fn read_finals(reader: &mut Reader, node: &Node, items: &[Item]) -> Option<Vec<(String, Place)>> {
+/// The names of the columns that `final:` asks for. What it names and no other word records is recorded for its sake.
+fn read_finals(
+    reader: &mut Reader,
+    node: &Node,
+    items: &mut Vec<Item>,
+    operators: &[Operator],
+    used: &mut Vec<String>,
+) -> Option<Vec<(String, Place)>> {
     let known = [
         "population",
         "outside",
@@ -338,76 +344,103 @@ fn read_finals(reader: &mut Reader, node: &Node, items: &[Item]) -> Option<Vec<(
         "gate_error",
         "gate_leakage",
     ];
-    let entries = reader.fields(
-        node,
-        "record / final",
-        &known,
-        &[("populations", "Here one names them: population: up, or population: [up, down].")],
-    )?;
+    let hints = [("populations", "Here one names them: population: up, or population: [up, down].")];
+    let entries = reader.fields(node, "record / final", &known, &hints)?;
+    let level_names = reader.level_names();
     let mut finals = Vec::new();
     let mut good = true;
     for entry in entries.iter().filter(|entry| known.contains(&entry.key.as_str())) {
-        let key = entry.key.as_str();
-        let names: Vec<(String, Place)> = match key {
-            "population" | "adiabatic_population" | "time_in" => {
-                let found = levels(reader, &entry.value, key)?;
-                let names = reader.level_names();
-                found.into_iter().map(|level| (format!("{key}_{}", names[level]), entry.value.place)).collect()
+        let (key, value) = (entry.key.as_str(), &entry.value);
+        let wanted = match key {
+            "population" => levels(reader, value, key).map(Item::Populations),
+            "time_in" => levels(reader, value, key).map(Item::TimeIn),
+            "coherence" => pairs(reader, value, key).map(Item::Coherence),
+            "bloch" => pairs(reader, value, key).map(Item::Bloch),
+            "mean" => means(reader, value, operators, used).map(Item::MeanOf),
+            // of one level, though all are recorded together
+            "adiabatic_population" => {
+                let named = levels(reader, value, key);
+                finals.extend(named.iter().flatten().map(|level| (format!("{key}_{}", level_names[*level]), value.place)));
+                named.map(|_| Item::AdiabaticPopulations)
             }
-            "mean" => match entry.value.items() {
-                Some(items) => items.iter().map(|item| (format!("mean_{}", item.text().unwrap_or_default()), item.place)).collect(),
-                None => vec![(format!("mean_{}", entry.value.text().unwrap_or_default()), entry.value.place)],
-            },
-            "coherence" | "bloch" => {
-                let names = reader.level_names();
-                pairs(reader, &entry.value, key)?
-                    .into_iter()
-                    .map(|[a, b]| (format!("{key}_{}_{}", names[a], names[b]), entry.value.place))
-                    .collect()
-            }
-            _ => match reader.truth(&entry.value, key) {
-                Some(true) => vec![(key.to_string(), entry.place)],
-                _ => Vec::new(),
+            _ => match reader.truth(value, key) {
+                Some(true) => match key {
+                    "outside" => Some(Item::OutsideOf((0..level_names.len()).collect())),
+                    "energy" => Some(Item::Energy),
+                    // a fidelity or a gate must say with what
+                    _ if items.iter().any(|item| {
+                        matches!((key, item), ("fidelity", Item::Fidelity(_)) | ("gate_error" | "gate_leakage", Item::Gate(_)))
+                    }) =>
+                    {
+                        finals.push((key.to_string(), value.place));
+                        continue;
+                    }
+                    _ => {
+                        let section = if key == "fidelity" { "fidelity" } else { "gate" };
+                        let why = Some(format!("final takes {key}, which is not recorded."));
+                        let write = format!("{section}: {{..}} under record, or no {key} under final");
+                        reader
+                            .error(value.place, Fault::MissingKey { key: section.to_string(), section: "record".to_string(), write, why });
+                        None
+                    }
+                },
+                Some(false) => continue,
+                None => None,
             },
         };
-        for (name, place) in names {
-            if !is_recorded(reader, &name, key, items) {
-                let fault = Fault::MissingKey {
-                    key: match key {
-                        "population" => "populations",
-                        "outside" => "outside_of",
-                        "mean" => "mean_of",
-                        "adiabatic_population" => "adiabatic_populations",
-                        "gate_error" | "gate_leakage" => "gate",
-                        other => other,
-                    }
-                    .to_string(),
-                    section: "record".to_string(),
-                    write: "the quantity under record, or no word of it under final".to_string(),
-                    why: Some(format!("final takes {name}, which is not recorded.")),
-                };
-                reader.error(place, fault);
-                good = false;
+        match wanted {
+            Some(wanted) => {
+                finals.extend(columns_of(&wanted, &level_names, operators).into_iter().map(|name| (name, value.place)));
+                add(items, wanted);
             }
-            finals.push((name, place));
+            None => good = false,
         }
+    }
+    // one pair alone has Bloch columns without names
+    let one_pair = items.iter().filter_map(|item| if let Item::Bloch(pairs) = item { Some(pairs.len()) } else { None }).sum::<usize>() == 1;
+    if one_pair {
+        finals.iter_mut().filter(|(name, _)| name.starts_with("bloch_")).for_each(|(name, _)| *name = "bloch".to_string());
     }
     good.then_some(finals)
 }
 
-fn is_recorded(reader: &Reader, name: &str, key: &str, items: &[Item]) -> bool {
-    let names = reader.level_names();
-    let has_level = |levels: &[usize]| levels.iter().any(|level| name == format!("{key}_{}", names[*level]));
-    let has_pair = |pairs: &[[usize; 2]]| pairs.iter().any(|[a, b]| name == format!("{key}_{}_{}", names[*a], names[*b]));
-    items.iter().any(|item| match (key, item) {
-        ("population", Item::Populations(levels)) | ("time_in", Item::TimeIn(levels)) => has_level(levels),
-        ("coherence", Item::Coherence(pairs)) | ("bloch", Item::Bloch(pairs)) => has_pair(pairs),
-        ("outside", Item::OutsideOf(_))
-        | ("mean", Item::MeanOf(_))
-        | ("energy", Item::Energy)
-        | ("adiabatic_population", Item::AdiabaticPopulations)
-        | ("fidelity", Item::Fidelity(_))
-        | ("gate_error" | "gate_leakage", Item::Gate(_)) => true,
-        _ => false,
-    })
+/// Names of what an item records, without the parts of complex numbers and vectors.
+fn columns_of(item: &Item, levels: &[String], operators: &[Operator]) -> Vec<String> {
+    let pair = |key: &str, pairs: &[[usize; 2]]| pairs.iter().map(|[a, b]| format!("{key}_{}_{}", levels[*a], levels[*b])).collect();
+    match item {
+        Item::Populations(list) => list.iter().map(|level| format!("population_{}", levels[*level])).collect(),
+        Item::TimeIn(list) => list.iter().map(|level| format!("time_in_{}", levels[*level])).collect(),
+        Item::Coherence(pairs) => pair("coherence", pairs),
+        Item::Bloch(pairs) => pair("bloch", pairs),
+        Item::MeanOf(list) => list.iter().map(|operator| format!("mean_{}", operators[*operator].name)).collect(),
+        Item::OutsideOf(_) => vec!["outside".to_string()],
+        Item::Energy => vec!["energy_Hz".to_string()],
+        _ => Vec::new(),
+    }
+}
+
+/// Adds what an item asks for to the items of its kind, or as a new one.
+fn add(items: &mut Vec<Item>, wanted: Item) {
+    fn join<T: PartialEq>(list: &mut Vec<T>, more: Vec<T>) {
+        for one in more {
+            if !list.contains(&one) {
+                list.push(one);
+            }
+        }
+    }
+    for item in items.iter_mut() {
+        match (item, &wanted) {
+            (Item::Populations(list), Item::Populations(more))
+            | (Item::TimeIn(list), Item::TimeIn(more))
+            | (Item::MeanOf(list), Item::MeanOf(more)) => {
+                return join(list, more.clone());
+            }
+            (Item::Coherence(list), Item::Coherence(more)) | (Item::Bloch(list), Item::Bloch(more)) => return join(list, more.clone()),
+            (Item::OutsideOf(_), Item::OutsideOf(_))
+            | (Item::Energy, Item::Energy)
+            | (Item::AdiabaticPopulations, Item::AdiabaticPopulations) => return,
+            _ => {}
+        }
+    }
+    items.push(wanted);
 }
