@@ -78,7 +78,8 @@ fn compare_of(kind: &str) -> (String, serde_json::Value) {
     assert_eq!(nutate(folder.path(), &["new", kind]).status.code(), Some(0));
     let compared = nutate(folder.path(), &["compare", &format!("{kind}.yaml")]);
     assert_eq!(compared.status.code(), Some(0), "{kind}: {}", text(&compared.stderr));
-    let bytes = fs::read(folder.path().join("outputs").join(kind).join("result.json")).expect("a comparison leaves result.json");
+    let bytes = fs::read(folder.path().join("outputs").join(format!("{kind}-compare")).join("result.json"))
+        .expect("a comparison leaves result.json");
     (text(&compared.stdout), serde_json::from_slice(&bytes).expect("result.json is JSON"))
 }
 
