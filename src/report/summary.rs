@@ -12,7 +12,7 @@ const SHOWN: usize = 16;
 /// A value with its error: digits down to the error's second digit, and the error with two.
 pub fn with_error(value: f64, error: f64) -> String {
     if !value.is_finite() {
-        return value.to_string();
+        return "no number".to_string();
     }
     if !(error.is_finite() && error > 0.0) {
         return format!("{value}");
