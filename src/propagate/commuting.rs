@@ -19,8 +19,14 @@ const LOOKS: u32 = 48;
 /// Commutators below this share of twice the product of the norms are rounding.
 const CLOSE: f64 = 1e-14;
 
+/// Turns of H in a segment beyond which its integral is left to the other methods, whose steps grow with the couplings alone.
+const MOST_TURNS: f64 = 1e4;
+
 /// Whether H of a picture commutes with itself all through a segment of `length_s`.
 pub(super) fn commutes(picture: &Picture, terms: &[Term], length_s: f64) -> bool {
+    if picture.fastest_hz * length_s > MOST_TURNS {
+        return false;
+    }
     let n = picture.dim;
     let mut parts: Vec<Matrix> = Vec::new();
     let mut constant = Matrix::from_fn(n, n, |j, k| if j == k { Complex64::from(picture.diagonal[j]) } else { Complex64::default() });
@@ -79,7 +85,7 @@ pub(super) fn pass(stretch: &Stretch, cells: f64, state: &mut State, eye: &mut E
             for turning in &picture.turnings {
                 let mut factor = zero;
                 let mut done = 0.0;
-                while done < parts {
+                while done < parts && !work.exhausted() {
                     let from_s = tau_s + gap_s * (done / parts);
                     done += 1.0;
                     let to_s = tau_s + gap_s * (done / parts);
@@ -87,7 +93,7 @@ pub(super) fn pass(stretch: &Stretch, cells: f64, state: &mut State, eye: &mut E
                         quadrature::integral(from_s, to_s, |t| part(&Picture::factor(turning, stretch.terms, t)))
                     };
                     factor += Complex64::new(part(|z| z.re), part(|z| z.im));
-                    work.step(2, dim);
+                    work.step(40, dim);
                 }
                 for part in &turning.parts {
                     let entry = factor * part.value;
