@@ -13,7 +13,6 @@ use crate::frame::ledger::{LedgerLine, TermKey};
 use crate::measure::{observables, Seen};
 use crate::outcome::{compute, Outcome};
 use crate::plan::{Plan, Point};
-use crate::problem::Vector;
 use crate::units::cis_turns;
 
 /// Most dropped terms that are put back one by one.
@@ -163,7 +162,7 @@ fn in_frame(document: &Document, point: &Point, outcome: &Outcome, reference_tur
     }
     let problem = point.problem();
     let observables = observables(document, &point.values, &point.energies_hz, problem);
-    let state = Vector::from_iterator(factors.len(), outcome.end_state.iter().zip(&factors).map(|(amplitude, factor)| amplitude * factor));
+    let state = outcome.end_state.turned(&factors);
     let Some(moment) = problem.moments.last() else { return finals };
     let mut row = Vec::new();
     for quantity in &observables.quantities {
@@ -172,7 +171,7 @@ fn in_frame(document: &Document, point: &Point, outcome: &Outcome, reference_tur
         // energies, times and adiabatic populations belong to their own frame
         let turned = columns.iter().all(|column| ["coherence", "Bloch vector", "fidelity", "mean"].contains(&column.panel));
         if turned {
-            quantity.see(&Seen { moment, state: &state, time_in_s: &[] }, &mut row);
+            quantity.see(&Seen { moment, state: state.state(), time_in_s: &[] }, &mut row);
             for (column, value) in columns.iter().zip(&row[before..]) {
                 if let Some(last) = finals.iter_mut().find(|(name, ..)| *name == column.name) {
                     last.1 = *value;

@@ -8,7 +8,7 @@ use crate::config::record::Item;
 use crate::config::settings::MethodWord;
 use crate::measure::{observables, Column, GateFigures, QuasiEnergy, QuasiRecorder, TraceRecorder};
 use crate::plan::Point;
-use crate::problem::{Matrix, Vector};
+use crate::problem::{Matrix, Start};
 use crate::propagate::{figure, solve, Asked, CrossCheck, Demand, Method, Recorder};
 
 /// A final number with its error.
@@ -54,8 +54,8 @@ pub struct Outcome {
     pub propagator: Option<(Matrix, f64)>,
     /// Levels of the driven system: period in s, what was found, and the error of q in turns.
     pub quasi_energies: Option<(f64, Vec<QuasiEnergy>, f64)>,
-    /// Amplitudes at the end.
-    pub end_state: Vector,
+    /// The state at the end.
+    pub end_state: Start,
     /// The method where H changes.
     pub method: Method,
     /// Why.

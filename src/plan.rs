@@ -30,7 +30,7 @@ use crate::frame::ledger::{Source, TermKey};
 use crate::frame::rotating::{rotate, Beat, Rotated, Setting};
 use crate::measure::breaks_period;
 use crate::model;
-use crate::problem::{Matrix, Problem, Vector};
+use crate::problem::{Matrix, Problem, Start};
 use crate::units::{rad_s, RAD_PER_TURN};
 
 /// A config laid out once, ready for any number of points.
@@ -146,6 +146,7 @@ impl Plan {
             segments: Vec::new(),
             terms: Vec::new(),
             start: start_state(document, &values),
+            jumps: Arc::default(),
             moments: Vec::new(),
         };
         let timeline = timeline(document, &values, &couplings, &curves)?;
@@ -412,7 +413,7 @@ impl Point<'_> {
         }
         let mut elimination = None;
         if !frame.eliminate.is_empty() {
-            if let Some(level) = frame.eliminate.iter().find(|level| self.lab.start[**level].norm() > 1e-12) {
+            if let Some(level) = frame.eliminate.iter().find(|level| self.lab.start.state().population(**level) > 1e-24) {
                 return Err(Mistake::error(frame.place, Fault::StartEliminated { level: name(*level) }));
             }
             let (problem, done) = eliminate(&rotated.problem, &frame.eliminate);
@@ -542,6 +543,6 @@ fn timeline<'p>(
     lay_out(document, values, &reference, &lengths)
 }
 
-fn start_state(document: &Document, values: &[f64]) -> Vector {
-    model::amplitudes(document.system.names.len(), &document.start, values)
+fn start_state(document: &Document, values: &[f64]) -> Start {
+    Start::Pure(model::amplitudes(document.system.names.len(), &document.start, values))
 }

@@ -12,6 +12,10 @@
 //!
 //! The turning is kept apart from the envelope because frames rewrite it. A method never asks where a coefficient came from.
 
+mod channel;
+mod jump;
+mod state;
+
 use std::fmt::Debug;
 use std::ops::Range;
 use std::sync::Arc;
@@ -20,6 +24,10 @@ use nalgebra::{DMatrix, DVector};
 use num_complex::Complex64;
 
 use crate::units::cis_turns;
+
+pub use channel::Channel;
+pub use jump::{Jump, TurningPart};
+pub use state::{Start, State};
 
 /// A dense complex matrix, row and column in the order of the basis.
 pub type Matrix = DMatrix<Complex64>;
@@ -178,7 +186,7 @@ pub struct Moment {
     pub time_s: f64,
 }
 
-/// A closed system: Hamiltonian on a timeline, start and moments to record, in the frame that the run states.
+/// A system: Hamiltonian on a timeline, jumps, start and moments to record, in the frame that the run states.
 #[derive(Debug, Clone)]
 pub struct Problem {
     /// A, in rad/s, Hermitian, `dim` x `dim`.
@@ -189,8 +197,10 @@ pub struct Problem {
     pub segments: Vec<Segment>,
     /// Terms of all segments, those of one segment together.
     pub terms: Vec<Term>,
-    /// Amplitudes at time 0, norm 1.
-    pub start: Vector,
+    /// The state at time 0.
+    pub start: Start,
+    /// What the surroundings do; empty for a closed system.
+    pub jumps: Arc<Vec<Jump>>,
     /// In order of time; the last one is the end of the sequence.
     pub moments: Vec<Moment>,
 }
@@ -199,6 +209,11 @@ impl Problem {
     /// Number of basis states.
     pub fn dim(&self) -> usize {
         self.statics.nrows()
+    }
+
+    /// Whether states are carried as density matrices: something jumps, or the start is mixed.
+    pub fn is_open(&self) -> bool {
+        self.jumps.iter().any(|jump| jump.rate_per_s > 0.0) || matches!(self.start, Start::Mixed(_))
     }
 
     /// The terms of one segment.

@@ -150,7 +150,14 @@ fn seen_from_the_laboratory(text: &str) -> (Outcome, Vec<Complex64>) {
     let point = plan.point().unwrap_or_else(|mistake| panic!("{mistake:?}\n{text}"));
     let outcome = compute(plan.document(), &point);
     assert!(outcome.reached, "the figure is {:e}\n{text}", outcome.error_figure);
-    let state: Vec<Complex64> = outcome.end_state.iter().zip(point.end_turns()).map(|(c, turns)| c * cis_turns(-turns)).collect();
+    let state: Vec<Complex64> = outcome
+        .end_state
+        .amplitudes()
+        .expect("a closed system ends pure")
+        .iter()
+        .zip(point.end_turns())
+        .map(|(c, turns)| c * cis_turns(-turns))
+        .collect();
     let entries = state.iter().flat_map(|a| state.iter().map(move |b| a * b.conj())).collect();
     (outcome, entries)
 }

@@ -94,6 +94,7 @@ pub fn eliminate(problem: &Problem, levels: &[usize]) -> (Problem, Elimination) 
         segments,
         terms,
         start: problem.start.clone(),
+        jumps: problem.jumps.clone(),
         moments: problem.moments.clone(),
     };
     (problem, out)

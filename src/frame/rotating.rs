@@ -479,6 +479,7 @@ impl<'a> Work<'a> {
             segments: self.segments,
             terms: self.terms,
             start: self.lab.start.clone(),
+            jumps: self.lab.jumps.clone(),
             moments: self.lab.moments.clone(),
         };
         Rotated { problem, ledger: self.ledger, beats: self.beats, level_hz, end_turns }

@@ -4,7 +4,7 @@
 //! order of energies, as adiabatic passage does (M. Born and V. Fock, Zeitschrift fuer Physik 51, 165 (1928)).
 
 use super::{Column, Quantity, Seen};
-use crate::problem::{Matrix, Problem};
+use crate::problem::{Matrix, Problem, Vector};
 
 /// Populations of all instantaneous eigenstates.
 pub struct AdiabaticPopulations<'a> {
@@ -60,7 +60,10 @@ impl Quantity for AdiabaticPopulations<'_> {
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {
         let h = self.problem.hamiltonian(&self.problem.segments[seen.moment.segment], seen.moment.offset_s);
         let states = eigenstates(between(&h, &self.levels));
-        let inside = crate::problem::Vector::from_iterator(self.levels.len(), self.levels.iter().map(|level| seen.state[*level]));
-        row.extend(self.order.iter().map(|state| states.column(*state).dotc(&inside).norm_sqr()));
+        row.extend(self.order.iter().map(|state| {
+            let mut whole = Vector::zeros(seen.state.dim());
+            self.levels.iter().zip(states.column(*state).iter()).for_each(|(level, part)| whole[*level] = *part);
+            seen.state.weight(&whole)
+        }));
     }
 }

@@ -1,4 +1,4 @@
-//! Bloch vectors of pairs [a, b]: x + i y = 2 c_a* c_b, z = population of a minus population of b, in the frame of the run
+//! Bloch vectors of pairs [a, b]: x + i y = 2 rho_ba, z = population of a minus population of b, in the frame of the run
 //! (F. Bloch, Physical Review 70, 460 (1946); R. P. Feynman, F. L. Vernon, R. W. Hellwarth, J. Appl. Phys. 28, 49 (1957)).
 
 use super::{Column, Quantity, Seen};
@@ -33,9 +33,8 @@ impl Quantity for BlochVectors {
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {
         for ([a, b], _) in &self.pairs {
-            let (a, b) = (seen.state[*a], seen.state[*b]);
-            let across = 2.0 * a.conj() * b;
-            row.extend([across.re, across.im, a.norm_sqr() - b.norm_sqr()]);
+            let across = 2.0 * seen.state.coherence(*b, *a);
+            row.extend([across.re, across.im, seen.state.population(*a) - seen.state.population(*b)]);
         }
     }
 }

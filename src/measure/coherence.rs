@@ -25,7 +25,7 @@ impl Quantity for Coherences {
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {
         for ([a, b], _) in &self.pairs {
-            let element = seen.state[*a] * seen.state[*b].conj();
+            let element = seen.state.coherence(*a, *b);
             row.extend([element.re, element.im]);
         }
     }

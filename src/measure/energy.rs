@@ -1,4 +1,4 @@
-//! The mean energy <psi|H(t)|psi>/h in Hz, with the H of the run's frame at that moment.
+//! The mean energy Tr(H(t) rho)/h in Hz, with the H of the run's frame at that moment.
 
 use super::{binary_scale, Column, Quantity, Seen};
 use crate::problem::Problem;
@@ -32,6 +32,6 @@ impl Quantity for Energy<'_> {
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {
         let h = self.problem.hamiltonian(&self.problem.segments[seen.moment.segment], seen.moment.offset_s);
-        row.push(seen.state.dotc(&(h * seen.state)).re / RAD_PER_TURN);
+        row.push(seen.state.mean(&h) / RAD_PER_TURN);
     }
 }

@@ -1,4 +1,4 @@
-//! State fidelity: squared modulus of the overlap with a given state, in the frame of the run.
+//! State fidelity with a given pure state, <to|rho|to>, in the frame of the run.
 
 use super::{Column, Quantity, Seen};
 use crate::problem::Vector;
@@ -21,6 +21,6 @@ impl Quantity for Fidelity {
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {
-        row.push(self.to.dotc(seen.state).norm_sqr());
+        row.push(seen.state.weight(&self.to));
     }
 }

@@ -1,4 +1,4 @@
-//! Means of operators, <psi|A|psi>; of an operator that is not Hermitian the real part.
+//! Means of operators, Tr(A rho); of an operator that is not Hermitian the real part.
 
 use super::{Column, Quantity, Seen};
 use crate::config::document::Document;
@@ -28,6 +28,6 @@ impl Quantity for Means {
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {
-        row.extend(self.operators.iter().map(|(_, matrix)| seen.state.dotc(&(matrix * seen.state)).re));
+        row.extend(self.operators.iter().map(|(_, matrix)| seen.state.mean(matrix)));
     }
 }

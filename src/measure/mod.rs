@@ -19,7 +19,7 @@ mod time_in;
 
 use crate::config::document::Document;
 use crate::config::record::Item;
-use crate::problem::{Matrix, Moment, Problem, Vector};
+use crate::problem::{Matrix, Moment, Problem, State};
 use crate::propagate::Demand;
 
 pub use gate::GateFigures;
@@ -30,8 +30,8 @@ pub use recorder::TraceRecorder;
 pub struct Seen<'a> {
     /// The moment.
     pub moment: &'a Moment,
-    /// Amplitudes in the frame of the run.
-    pub state: &'a Vector,
+    /// The state in the frame of the run.
+    pub state: State<'a>,
     /// Seconds spent in each level so far; empty unless asked for.
     pub time_in_s: &'a [f64],
 }

@@ -20,7 +20,7 @@ impl Quantity for Outside {
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {
-        let outside = seen.state.iter().enumerate().filter(|(level, _)| !self.inside.contains(level));
-        row.push(outside.map(|(_, amplitude)| amplitude.norm_sqr()).sum());
+        let outside = (0..seen.state.dim()).filter(|level| !self.inside.contains(level));
+        row.push(outside.map(|level| seen.state.population(level)).sum());
     }
 }

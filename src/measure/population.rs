@@ -1,4 +1,4 @@
-//! Populations of basis states: squared modulus of the amplitude.
+//! Populations of basis states: squared modulus of the amplitude, or diagonal of the density matrix.
 
 use super::{Column, Quantity, Seen};
 
@@ -22,6 +22,6 @@ impl Quantity for Populations {
     }
 
     fn see(&self, seen: &Seen, row: &mut Vec<f64>) {
-        row.extend(self.levels.iter().map(|(level, _)| seen.state[*level].norm_sqr()));
+        row.extend(self.levels.iter().map(|(level, _)| seen.state.population(*level)));
     }
 }

@@ -2,7 +2,7 @@
 //! (-1/2, 1/2], the quasi-energies q/T; the weights are the squared moduli of the components of the eigenvector at time zero
 //! (J. H. Shirley, Physical Review 138, B979 (1965)).
 
-use crate::problem::{Matrix, Problem, Vector};
+use crate::problem::{Matrix, Problem, State};
 use crate::propagate::Recorder;
 use crate::units::{cis_turns, RAD_PER_TURN};
 
@@ -42,7 +42,7 @@ pub struct QuasiRecorder {
 }
 
 impl Recorder for QuasiRecorder {
-    fn see(&mut self, _: usize, _: &Vector, _: &[f64]) {}
+    fn see(&mut self, _: usize, _: State, _: &[f64]) {}
 
     fn finish(&mut self, propagator: Option<&Matrix>) {
         self.found = propagator.and_then(quasi_energies);

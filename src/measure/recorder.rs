@@ -1,7 +1,7 @@
 //! Collects the recorded numbers of one run, row after row.
 
 use super::{Column, Observables, Seen};
-use crate::problem::{Matrix, Problem, Vector};
+use crate::problem::{Matrix, Problem, Start, State};
 use crate::propagate::Recorder;
 
 /// The recorded numbers of one run, each over its scale, and the state and propagator at the end.
@@ -11,8 +11,8 @@ pub struct TraceRecorder<'a> {
     scales: &'a [f64],
     row: Vec<f64>,
     numbers: Vec<f64>,
-    /// Amplitudes at the last moment.
-    pub end_state: Option<Vector>,
+    /// The state at the last moment.
+    pub end_state: Option<Start>,
     /// Propagator of the whole sequence, if asked for.
     pub propagator: Option<Matrix>,
 }
@@ -36,7 +36,7 @@ impl<'a> TraceRecorder<'a> {
 }
 
 impl Recorder for TraceRecorder<'_> {
-    fn see(&mut self, moment: usize, state: &Vector, time_in_s: &[f64]) {
+    fn see(&mut self, moment: usize, state: State, time_in_s: &[f64]) {
         let seen = Seen { moment: &self.problem.moments[moment], state, time_in_s };
         self.row.clear();
         for quantity in &self.observables.quantities {
@@ -44,7 +44,7 @@ impl Recorder for TraceRecorder<'_> {
         }
         self.numbers.extend(self.row.iter().zip(self.scales).map(|(number, scale)| number / scale));
         if moment + 1 == self.problem.moments.len() {
-            self.end_state = Some(state.clone());
+            self.end_state = Some(state.keep());
         }
     }
 

@@ -1,7 +1,7 @@
 //! What a caller hands to [`solve`](super::solve) beside the problem.
 
 use super::choose::Method;
-use crate::problem::{Matrix, Vector};
+use crate::problem::{Matrix, State};
 
 /// What is wanted beside the state at each moment.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
@@ -25,9 +25,9 @@ pub struct Asked {
 
 /// Turns states into the numbers that are kept; made by the caller, one for each run.
 pub trait Recorder {
-    /// Called at every entry of `Problem::moments` in order: amplitudes in the frame of the problem, and the seconds spent in each
+    /// Called at every entry of `Problem::moments` in order: the state in the frame of the problem, and the seconds spent in each
     /// basis state since time 0 (empty unless asked for).
-    fn see(&mut self, moment: usize, state: &Vector, time_in_s: &[f64]);
+    fn see(&mut self, moment: usize, state: State, time_in_s: &[f64]);
 
     /// Called once after the last moment, with the propagator of the whole sequence in the frame of the problem if asked for.
     fn finish(&mut self, propagator: Option<&Matrix>);

@@ -11,7 +11,7 @@ use ode_solvers::{DVector as RealVector, Dop853, OutputType, System};
 use super::asked::{Demand, Recorder};
 use super::load::Load;
 use super::solved::CrossCheck;
-use crate::problem::{Matrix, Problem, Segment, Vector};
+use crate::problem::{Matrix, Problem, Segment, State, Vector};
 use crate::units::{cis_turns, RAD_PER_TURN};
 
 /// Most evaluations of H.
@@ -103,7 +103,7 @@ fn walk(problem: &Problem, demand: &Demand, tolerance: f64, steps: f64, recorder
     let diagonal: Vec<f64> = (0..n).map(|j| problem.statics[(j, j)].re).collect();
     let (low, high) = diagonal.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), v| (v.min(low), v.max(high)));
     let middle_rad_s = if high >= low { low + 0.5 * (high - low) } else { 0.0 };
-    let mut amplitudes: Vec<Complex64> = problem.start.as_slice().to_vec();
+    let mut amplitudes: Vec<Complex64> = problem.start.amplitudes().expect("a closed problem starts pure").as_slice().to_vec();
     if demand.propagator {
         amplitudes.extend_from_slice(Matrix::identity(n, n).as_slice());
     }
@@ -131,7 +131,7 @@ fn walk(problem: &Problem, demand: &Demand, tolerance: f64, steps: f64, recorder
             }
             let since_s = segment.start.after(stop_s).seconds();
             let state = Vector::from_iterator(n, amplitudes[..n].iter().map(|a| a * back(middle_rad_s, since_s)));
-            recorder.see(next, &state, &time_in_s);
+            recorder.see(next, State::Pure(&state), &time_in_s);
             next += 1;
         }
     }

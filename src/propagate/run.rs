@@ -8,7 +8,7 @@ use super::constant::Flows;
 use super::picture::{Kind, Picture, Pictures};
 use super::smooth::Smooth;
 use super::{commuting, constant, geometric, slices};
-use crate::problem::{Matrix, Moment, Problem, Term, Vector};
+use crate::problem::{self, Matrix, Moment, Problem, Term, Vector};
 
 /// How finely a run is done; each method reads its own field.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -77,7 +77,7 @@ impl Eye<'_> {
     pub fn see(&mut self, stretch: &Stretch, k: usize, psi: &[Complex64], time_in_s: &[f64]) {
         self.lab.as_mut_slice().copy_from_slice(psi);
         stretch.picture.to_problem(stretch.moments[k].offset_s, self.lab.as_mut_slice());
-        self.recorder.see(stretch.first + k, &self.lab, time_in_s);
+        self.recorder.see(stretch.first + k, problem::State::Pure(&self.lab), time_in_s);
     }
 }
 
@@ -98,13 +98,13 @@ pub(super) fn run(route: &mut Route, fineness: &Fineness, left: f64, recorder: &
     let Route { problem, demand, method, by_integral, changing_s, pictures } = route;
     let (problem, demand, method) = (*problem, *demand, *method);
     let dim = problem.dim();
+    let start = problem.start.amplitudes().expect("a closed problem starts pure");
     let mut work = Work { steps: 0, products: 0, left };
-    let mut state =
-        State { dim, amplitudes: problem.start.as_slice().to_vec(), time_in_s: vec![0.0; if demand.time_in { dim } else { 0 }] };
+    let mut state = State { dim, amplitudes: start.as_slice().to_vec(), time_in_s: vec![0.0; if demand.time_in { dim } else { 0 }] };
     if demand.propagator {
         state.amplitudes.extend_from_slice(Matrix::identity(dim, dim).as_slice());
     }
-    let mut eye = Eye { recorder, lab: problem.start.clone() };
+    let mut eye = Eye { recorder, lab: start.clone() };
     let mut flows = Flows::new(dim);
     let mut smooth = Smooth::new(dim, state.amplitudes.len(), demand.time_in, *changing_s);
     let mut next = 0;
@@ -134,7 +134,7 @@ pub(super) fn run(route: &mut Route, fineness: &Fineness, left: f64, recorder: &
     }
     for moment in next..problem.moments.len() {
         eye.lab.as_mut_slice().copy_from_slice(&state.amplitudes[..dim]);
-        eye.recorder.see(moment, &eye.lab, &state.time_in_s);
+        eye.recorder.see(moment, problem::State::Pure(&eye.lab), &state.time_in_s);
     }
     let propagator = demand.propagator.then(|| Matrix::from_column_slice(dim, dim, &state.amplitudes[dim..]));
     eye.recorder.finish(propagator.as_ref());

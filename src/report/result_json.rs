@@ -1,5 +1,6 @@
 //! result.json: the numbers of a run with method, error and warnings, for programs to read.
 
+use num_complex::Complex64;
 use serde_json::{json, Map, Value};
 
 use super::number::number;
@@ -7,6 +8,7 @@ use crate::config::document::Document;
 use crate::config::messages::one_line;
 use crate::outcome::Outcome;
 use crate::plan::Point;
+use crate::problem::Start;
 
 /// Name and version of the program.
 pub fn program() -> Value {
@@ -71,10 +73,7 @@ pub fn result(document: &Document, point: &Point, outcome: &Outcome) -> Value {
         put("cross_check", found);
     }
     put("final", finals(document, outcome));
-    put(
-        "end_state",
-        json!({"levels": document.system.names, "amplitudes": outcome.end_state.iter().map(|z| json!([number(z.re), number(z.im)])).collect::<Vec<_>>()}),
-    );
+    put("end_state", end_state(document, &outcome.end_state));
     put("ledger", super::frame_json::ledger(document, point));
     put("ledger_by_pair", super::frame_json::by_pair(document, point));
     if let Some(elimination) = super::frame_json::elimination(document, point) {
@@ -83,6 +82,18 @@ pub fn result(document: &Document, point: &Point, outcome: &Outcome) -> Value {
     put("warnings", json!(warnings(document, point, outcome)));
     put("seconds", number(outcome.seconds));
     Value::Object(result)
+}
+
+/// The state at the end: amplitudes, or the rows of the density matrix; numbers as [re, im].
+fn end_state(document: &Document, state: &Start) -> Value {
+    let pair = |z: &Complex64| json!([number(z.re), number(z.im)]);
+    match state {
+        Start::Pure(amplitudes) => json!({"levels": document.system.names, "amplitudes": amplitudes.iter().map(pair).collect::<Vec<_>>()}),
+        Start::Mixed(density) => {
+            let rows: Vec<Vec<Value>> = density.row_iter().map(|row| row.iter().map(pair).collect()).collect();
+            json!({"levels": document.system.names, "density": rows})
+        }
+    }
 }
 
 /// Everything recorded, at the last time.

@@ -54,8 +54,7 @@ fn exact_crossing_in_the_long_limit_by_every_method() {
     let mut crossing = problem(&statics, vec![diagonal(&[1.0, -1.0])], vec![(2.0 * half, vec![sweep], vec![])]);
     // Started and read in the states of fixed energy at the ends; the formula is then off by about coupling / half^3 only.
     let lean = 0.5 * (2.0 * coupling / (slope * half)).atan();
-    crossing.start[0] = re(lean.cos());
-    crossing.start[1] = re(-lean.sin());
+    crossing.start = start(&[lean.cos(), -lean.sin()]);
     let expected = (-RAD_PER_TURN * RAD_PER_TURN * coupling * coupling / slope).exp();
     for method in [Method::Smooth, Method::Geometric] {
         let solved = solve(&crossing, 1e-9, Some(method));
@@ -88,8 +87,7 @@ fn exact_rosen_zener_by_every_method() {
 #[test]
 fn exact_far_detuned_wait_of_seconds_keeps_its_phase() {
     let mut wait = problem(&diagonal(&[0.0, 2f64.powi(22) + 0.25]), vec![], vec![(3.0, vec![], vec![])]);
-    wait.start[0] = re(0.5f64.sqrt());
-    wait.start[1] = re(0.5f64.sqrt());
+    wait.start = start(&[0.5f64.sqrt(), 0.5f64.sqrt()]);
     let solved = solve(&wait, 1e-8, None);
     let expected = cis_turns(-0.75) * 0.5f64.sqrt();
     let error = (solved.recorded.last()[1] - expected).norm();

@@ -45,7 +45,7 @@ pub fn solve(problem: &Problem, most_rad: f64, timed: bool, kept: &mut Kept) {
     let (nodes, weights) = gauss();
     let a = table(&nodes, &weights);
     let n = problem.dim();
-    let mut psi = problem.start.clone();
+    let mut psi = problem.start.amplitudes().expect("closed").clone();
     let mut next = 0;
     let mut spent = vec![0.0; n];
     for (index, segment) in problem.segments.iter().enumerate() {
@@ -88,7 +88,7 @@ pub fn solve(problem: &Problem, most_rad: f64, timed: bool, kept: &mut Kept) {
             if !here {
                 break;
             }
-            kept.see(next, &psi, if timed { &spent } else { &[] });
+            kept.see(next, State::Pure(&psi), if timed { &spent } else { &[] });
             next += 1;
         }
     }

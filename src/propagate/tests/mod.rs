@@ -12,7 +12,7 @@ use std::sync::Arc;
 use num_complex::Complex64;
 
 use super::{Asked, Demand, Method, Recorder};
-use crate::problem::{Envelope, Instant, Matrix, Moment, Problem, Segment, Slow, Term, Vector};
+use crate::problem::{Envelope, Instant, Matrix, Moment, Problem, Segment, Slow, Start, State, Term, Vector};
 use crate::units::rad_s;
 
 /// Records populations, amplitudes, times spent (over the last time) and the propagator, as asked.
@@ -27,8 +27,9 @@ pub struct Kept {
 }
 
 impl Recorder for Kept {
-    fn see(&mut self, moment: usize, state: &Vector, time_in_s: &[f64]) {
+    fn see(&mut self, moment: usize, state: State, time_in_s: &[f64]) {
         assert_eq!(moment, self.amplitudes.len(), "moments come in order");
+        let State::Pure(state) = state else { panic!("closed problems show amplitudes") };
         self.numbers.extend(state.iter().map(|a| a.norm_sqr()));
         if !self.populations_only {
             self.numbers.extend(state.iter().flat_map(|a| [a.re, a.im]));
@@ -101,10 +102,10 @@ pub fn problem(statics_hz: &Matrix, matrices: Vec<Matrix>, segments: Vec<(f64, V
         matrices: Arc::new(matrices),
         segments: Vec::new(),
         terms: Vec::new(),
-        start: Vector::zeros(dim),
+        start: Start::Pure(Vector::from_fn(dim, |j, _| re(if j == 0 { 1.0 } else { 0.0 }))),
+        jumps: Arc::default(),
         moments: Vec::new(),
     };
-    built.start[0] = re(1.0);
     let mut start = Instant::at(0.0);
     let count = segments.len();
     for (index, (length_s, terms, offsets)) in segments.into_iter().enumerate() {
@@ -120,6 +121,11 @@ pub fn problem(statics_hz: &Matrix, matrices: Vec<Matrix>, segments: Vec<(f64, V
         start = start.after(length_s);
     }
     built
+}
+
+/// A pure start.
+pub fn start(amplitudes: &[f64]) -> Start {
+    Start::Pure(Vector::from_iterator(amplitudes.len(), amplitudes.iter().map(|a| re(*a))))
 }
 
 /// A matrix with the given entries, 0 elsewhere.

@@ -66,8 +66,7 @@ fn ref_huge_norm_and_near_degeneracy() {
     let huge =
         Matrix::from_row_slice(3, 3, &[re(0.0), re(310e9), i(95e9), re(310e9), re(870e9), re(-220e9), i(-95e9), re(-220e9), re(-1430e9)]);
     let mut case = problem(&huge, vec![], vec![(40e-9, vec![], vec![])]);
-    case.start.fill(re(0.0));
-    case.start[2] = re(1.0);
+    case.start = start(&[0.0, 0.0, 1.0]);
     let solved = solve(&case, 1e-9, None);
     assert!(solved.reached);
     for (j, expected) in [0.021621462152995558, 0.00162686750142434, 0.9767516703455801].into_iter().enumerate() {
@@ -92,8 +91,7 @@ fn ref_two_thousand_periods_to_ten_digits() {
     let mut once = Matrix::zeros(2, 2);
     for j in 0..2 {
         let mut one = lasting(1.0 / carrier);
-        one.start.fill(re(0.0));
-        one.start[j] = re(1.0);
+        one.start = start(&if j == 0 { [1.0, 0.0] } else { [0.0, 1.0] });
         let mut kept = Kept::default();
         collocation::solve(&one, 0.5, false, &mut kept);
         once.set_column(j, &Vector::from_column_slice(kept.last()));
