@@ -101,7 +101,7 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
     });
     let quasi = quasi.map(|period_s| {
         let one = problem.first(period_s);
-        let demand = Demand { propagator: true, time_in: false };
+        let demand = Demand { propagator: true, ..Demand::default() };
         (period_s, solve(&one, &demand, &Asked { cross_check: false, ..asked }, QuasiRecorder::default))
     });
 

@@ -124,6 +124,7 @@ pub fn observables<'a>(document: &Document, values: &[f64], energies_hz: &[f64],
             }
             Item::Gate(gate) => {
                 found.demand.propagator = true;
+                found.demand.within = gate.within.clone();
                 let judge = gate::GateJudge::new(document, gate, values, energies_hz);
                 found.last.push(Box::new(judge.clone()));
                 found.gate = Some(judge);

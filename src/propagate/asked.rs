@@ -1,13 +1,15 @@
 //! What a caller hands to [`solve`](super::solve) beside the problem.
 
 use super::choose::Method;
-use crate::problem::{Matrix, State};
+use crate::problem::{Channel, Matrix, State};
 
 /// What is wanted beside the state at each moment.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
+#[derive(Debug, Clone, PartialEq, Eq, Default)]
 pub struct Demand {
-    /// The propagator of the whole sequence.
+    /// The propagator of the whole sequence; of an open problem the channel.
     pub propagator: bool,
+    /// Levels on which the channel is wanted; all where none is named.
+    pub within: Vec<usize>,
     /// The integral of each population over time.
     pub time_in: bool,
 }
@@ -31,6 +33,9 @@ pub trait Recorder {
 
     /// Called once after the last moment, with the propagator of the whole sequence in the frame of the problem if asked for.
     fn finish(&mut self, propagator: Option<&Matrix>);
+
+    /// Called in its stead, after `finish(None)`, with the channel of the whole sequence if the problem is open.
+    fn finish_channel(&mut self, _channel: &Channel) {}
 
     /// All numbers recorded so far, scaled so that an absolute comparison is right.
     fn numbers(&self) -> &[f64];

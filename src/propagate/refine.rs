@@ -69,7 +69,7 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         reason += &format!("; it was not run, since it would take about {:.0e} s", ns * 1e-9);
     }
     let mut products = 0;
-    let mut route = Route { problem, demand: *demand, method, by_integral, changing_s: load.changing_s, pictures };
+    let mut route = Route { problem, demand: demand.clone(), method, by_integral, changing_s: load.changing_s, pictures };
     let mut go = |fineness: Fineness| {
         let mut recorder = new_recorder();
         let work = run(&mut route, &fineness, left, &mut recorder);

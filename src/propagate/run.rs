@@ -96,7 +96,7 @@ pub(super) struct Route<'p> {
 /// Runs the whole problem once, with `left` multiplications to spend at most.
 pub(super) fn run(route: &mut Route, fineness: &Fineness, left: f64, recorder: &mut dyn Recorder) -> Work {
     let Route { problem, demand, method, by_integral, changing_s, pictures } = route;
-    let (problem, demand, method) = (*problem, *demand, *method);
+    let (problem, method) = (*problem, *method);
     let dim = problem.dim();
     let start = problem.start.amplitudes().expect("a closed problem starts pure");
     let mut work = Work { steps: 0, products: 0, left };

@@ -101,7 +101,7 @@ fn exact_time_spent_in_a_resonant_pulse() {
     // Integral of sin^2(pi R t): T/2 - sin(2 pi R T)/(4 pi R).
     let expected = 0.5 * length - crate::units::sin_cos_turns(rabi * length).0 / (2.0 * RAD_PER_TURN * rabi);
     for (method, within) in [(Method::ConstantSteps, 1e-14), (Method::Smooth, 1e-14)] {
-        let demand = Demand { propagator: false, time_in: true };
+        let demand = Demand { propagator: false, time_in: true, ..Demand::default() };
         let kept = || Kept { scale_s: length, ..Kept::default() };
         let solved = crate::propagate::solve(&resonant, &demand, &asked(1e-10, Some(method)), kept);
         let found = solved.recorded.time_in_s[1][1];
@@ -113,7 +113,8 @@ fn exact_time_spent_in_a_resonant_pulse() {
     let smooth = driven(3e9, 3e9, shaped(rabi / 2.0, |_| 1.0), length);
     let kept = || Kept { scale_s: length, ..Kept::default() };
     for wish in [None, Some(Method::Geometric)] {
-        let solved = crate::propagate::solve(&smooth, &Demand { propagator: true, time_in: true }, &asked(1e-10, wish), kept);
+        let solved =
+            crate::propagate::solve(&smooth, &Demand { propagator: true, time_in: true, ..Demand::default() }, &asked(1e-10, wish), kept);
         assert_eq!(solved.method, Method::Smooth);
         assert!((solved.recorded.time_in_s[1][1] - expected).abs() / length <= solved.error_figure);
         assert!(solved.reached);
@@ -124,7 +125,7 @@ fn exact_time_spent_in_a_resonant_pulse() {
 fn cross_check_agrees_or_says_why_not() {
     let ask = Asked { accuracy: 1e-9, method: None, cross_check: true };
     let pulse = driven(50e6, 48e6, shaped(3e6, |t| (RAD_PER_TURN * t / 2e-6).sin().powi(2)), 1e-6);
-    let solved = crate::propagate::solve(&pulse, &Demand { propagator: true, time_in: false }, &ask, Kept::default);
+    let solved = crate::propagate::solve(&pulse, &Demand { propagator: true, time_in: false, ..Demand::default() }, &ask, Kept::default);
     match solved.cross_check {
         Some(CrossCheck::Done { difference, .. }) => assert!(difference < 1e-9, "{difference:e}"),
         other => panic!("{other:?}"),

@@ -63,7 +63,12 @@ pub fn table() -> Vec<(&'static str, Problem)> {
 fn prop_every_method_agrees_on_the_table_and_is_unitary() {
     for (name, case) in table() {
         let full = |accuracy, method| {
-            crate::propagate::solve(&case, &Demand { propagator: true, time_in: false }, &asked(accuracy, method), Kept::default)
+            crate::propagate::solve(
+                &case,
+                &Demand { propagator: true, time_in: false, ..Demand::default() },
+                &asked(accuracy, method),
+                Kept::default,
+            )
         };
         let best = full(1e-11, None);
         assert!(best.reached, "{name}: {:e}, {:?}", best.error_figure, best.resolutions);
@@ -197,7 +202,7 @@ fn prop_second_route_agrees_on_the_table() {
         }
         let ask = Asked { accuracy: 1e-9, method: None, cross_check: true };
         let kept = || Kept { scale_s: case.length_s(), ..Kept::default() };
-        let solved = crate::propagate::solve(&case, &Demand { propagator: true, time_in: true }, &ask, kept);
+        let solved = crate::propagate::solve(&case, &Demand { propagator: true, time_in: true, ..Demand::default() }, &ask, kept);
         match solved.cross_check {
             Some(crate::propagate::CrossCheck::Done { difference, .. }) => assert!(difference < 1e-9, "{name}: {difference:e}"),
             other => panic!("{name}: {other:?}"),

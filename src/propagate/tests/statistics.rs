@@ -154,7 +154,7 @@ fn tally(seed: u64, problems: u32, longest: f64, wish: impl Fn(&mut Random) -> O
         let case = lengthened(random_problem(&mut random), longer);
         let method = wish(&mut random);
         let accuracy = if method == Some(Method::ConstantSteps) { random.size(1e-7, 1e-4) } else { random.size(1e-11, 1e-4) };
-        let demand = Demand { propagator: false, time_in: method != Some(Method::Geometric) && random.chance(0.3) };
+        let demand = Demand { propagator: false, time_in: method != Some(Method::Geometric) && random.chance(0.3), ..Demand::default() };
         let kept = || Kept { scale_s: case.length_s(), ..Kept::default() };
         let mut exact = kept();
         collocation::solve(&case, 0.8, demand.time_in, &mut exact);
@@ -253,7 +253,7 @@ fn print_loads_and_seconds() {
         let longer = random.size(0.3, 60.0);
         let case = lengthened(random_problem(&mut random), longer);
         let accuracy = random.size(1e-11, 1e-6);
-        let demand = Demand { propagator: random.chance(0.3), time_in: false };
+        let demand = Demand { propagator: random.chance(0.3), ..Demand::default() };
         let mut pictures = crate::propagate::picture::Pictures::new(&case);
         let (load, _) = crate::propagate::Load::of(&case, &demand, accuracy, false, &mut pictures);
         if load.changing == 0 {
