@@ -10,6 +10,8 @@ use super::messages::{Fault, Mistake};
 use super::place::{Place, Sources};
 use super::reader::{near, NamedNumber, Reader};
 use super::record::{Item, Record};
+use super::run::Run;
+use super::scan::Scan;
 use super::sequence::{self, Known, Step};
 use super::settings::{Accuracy, Frame, Output};
 use super::state::State;
@@ -45,7 +47,7 @@ const SECTIONS: [&str; 25] = [
     "hardware",
     "output",
 ];
-const LATER: [&str; 9] = ["basis", "decay", "dephasing", "noise", "scan", "tune", "fit", "run", "hardware"];
+const LATER: [&str; 7] = ["basis", "decay", "dephasing", "noise", "tune", "fit", "hardware"];
 
 /// A config that holds no mistake.
 #[derive(Debug, Clone)]
@@ -90,6 +92,10 @@ pub struct Document {
     pub archive: Option<PathBuf>,
     /// Variants to compare, if any.
     pub compare: Option<Compare>,
+    /// Points to scan, if any.
+    pub scan: Option<Scan>,
+    /// How a scan is run.
+    pub run: Run,
     /// The tree that it was read from.
     pub root: Arc<Node>,
     /// The values given in place of written ones.
@@ -307,6 +313,8 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         unused(reader, root, &used, &operators, &mut used_operators);
     }
     let compare = root.get("compare").map(|node| compare::read_compare(reader, node));
+    let scan = root.get("scan").map(|node| super::scan::read_scan(reader, node));
+    let run = super::run::read_run(reader, root.get("run"), scan.is_some());
     let numbers = reader.finish_numbers();
     finite(reader, &numbers)?;
     if let Some(record) = &record {
@@ -316,6 +324,11 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         Some(compare) => Some(compare?),
         None => None,
     };
+    let scan = match scan {
+        Some(scan) => Some(scan?),
+        None => None,
+    };
+    let run = run?;
     let (system, steps, start, record, accuracy, output, frame) = (system?, steps?, start?, record?, accuracy?, output?, frame?);
     Some(Document {
         sources: reader.sources.clone(),
@@ -337,6 +350,8 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         defaults: std::mem::take(&mut reader.defaults),
         warnings: reader.mistakes.iter().filter(|mistake| mistake.warning).cloned().collect(),
         compare,
+        scan,
+        run,
         root: Arc::new(root.clone()),
         archive: reader.archive.clone(),
         set: set.to_vec(),

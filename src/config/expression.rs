@@ -34,7 +34,7 @@ pub enum Kind {
         /// A multiple of the imaginary unit.
         imaginary: bool,
     },
-    /// A named number, `pi`, `t` or `i`.
+    /// A named number, `pi`, `t` or `i`; or any name in quotes.
     Name(String),
     /// A function of the language.
     Call(String, Vec<Expression>),
@@ -266,6 +266,14 @@ impl Parser<'_> {
                     return Ok(self.made(start, Kind::Call(word, arguments)));
                 }
                 Ok(self.made(start, Kind::Name(word)))
+            }
+            Some(quote @ ('"' | '\'')) => {
+                let rest = &self.chars[start + 1..];
+                let Some(length) = rest.iter().position(|c| *c == quote).filter(|length| *length > 0) else {
+                    return Err(self.unexpected("a number, a name or a bracket"));
+                };
+                self.at += length + 2;
+                Ok(self.made(start, Kind::Name(rest[..length].iter().collect())))
             }
             _ => Err(self.unexpected("a number, a name or a bracket")),
         }

@@ -11,6 +11,17 @@ pub const MOST_SHOWN: usize = 20;
 /// Most mistakes kept of one file. A hundred thousand, each with the list of all known names, would fill the memory.
 pub const MOST_KEPT: usize = 2000;
 
+/// A step, or an end, that would make a range meet its end, and the points it makes.
+#[derive(Debug, Clone, PartialEq)]
+pub struct StepWord {
+    /// `step`, `to` or `points`.
+    pub key: &'static str,
+    /// The value, as one would write it.
+    pub value: String,
+    /// Points of the axis then.
+    pub points: u64,
+}
+
 /// A fault and where it stands.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Mistake {
@@ -159,6 +170,16 @@ pub enum Fault {
     NothingToCompare,
     PeriodTooLong { period_s: f64, end_s: f64 },
     NotPeriodic { period_s: f64, at_s: f64 },
+    // scans
+    AxisUnknown { name: String, near: Option<String>, known: Vec<String> },
+    AxisTwice { name: String, first: u32 },
+    StepMisfit { step: String, range: String, steps: f64, fits: Vec<StepWord> },
+    StepOfRatio,
+    OnePoint { number: String },
+    RatioThroughZero { number: String },
+    NotInStep { names: [String; 2], counts: [u64; 2] },
+    TooManyPoints { points: f64, limit: f64 },
+    NothingToScan,
     // from the command line
     NoSuchNumber { name: String, near: Option<String>, known: Vec<String> },
 }
@@ -688,6 +709,48 @@ impl Fault {
                 say(format!("{} cannot be eliminated: coupling over detuning reaches {}.", list(levels), short(*validity)))
                     .why(format!("The expansion is of second order in that ratio; from {} on it is refused.", short(*limit)))
                     .write("the frame without eliminate, or a larger detuning")
+            }
+            AxisUnknown { name, near, known } => say(format!("the scan moves \"{name}\", which does not exist."))
+                .why(format!("A scan axis must be one of the numbers of this file: {}.", list(known)))
+                .maybe(near, "number: "),
+            AxisTwice { name, first } => say(format!("two axes move \"{name}\" (first on line {first})."))
+                .why("A number has one value at a point.")
+                .write("one axis, with the values of both"),
+            StepMisfit { step, range, steps, fits } => {
+                let mut words = if steps.is_finite() {
+                    say(format!("a step of {step} does not divide the range: {range} are {} steps, not a whole number.", short(*steps)))
+                } else {
+                    say(format!("a step of {step} never meets the end."))
+                }
+                .why("Both ends are points of the axis, so a step must meet the end.");
+                for fit in fits {
+                    words = words.write(match fit.key {
+                        "points" => format!("points: {}      (in place of step)", fit.value),
+                        key => format!("{key}: {}      ({} points)", fit.value, fit.points),
+                    });
+                }
+                if fits.is_empty() {
+                    words = words.write("points: 21      (or a step that leads from `from` to `to`)");
+                }
+                words
+            }
+            StepOfRatio => say("a logarithmic axis has no step.")
+                .why("Its points stand in equal ratios, both ends included.")
+                .write("points: 21      (in place of step)"),
+            OnePoint { number } => say(format!("one point cannot be both ends of the axis of \"{number}\"."))
+                .write("points: 2      (or more), or values: [..] with one value"),
+            RatioThroughZero { number } => say(format!("a logarithmic axis of \"{number}\" can neither reach zero nor pass it."))
+                .write("both ends above zero, or spacing: linear"),
+            NotInStep { names: [name, leader], counts: [own, other] } => {
+                say(format!("\"{name}\" has {own} points and \"{leader}\" has {other}, so they cannot move in step."))
+                    .write(format!("as many points for \"{name}\" as for \"{leader}\""))
+            }
+            TooManyPoints { points, limit } => {
+                say(format!("these axes make {} points; at most {} are accepted.", short(*points), short(*limit)))
+                    .write("fewer points on an axis, or axes that move in step with together_with")
+            }
+            NothingToScan => {
+                say("the file has no section \"scan\".").write("scan: {axes: [{number: peak, from: 1 MHz, to: 5 MHz, points: 41}]}")
             }
             NoSuchNumber { name, near, known } => say(format!("the file has no number called \"{name}\"."))
                 .why(format!("Only named numbers can be set: {}.", list(known)))

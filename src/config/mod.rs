@@ -10,6 +10,8 @@ pub mod npy;
 pub mod place;
 pub mod reader;
 pub mod record;
+pub mod run;
+pub mod scan;
 pub mod sequence;
 pub mod settings;
 pub mod starters;

@@ -31,6 +31,30 @@ pub struct ComplexQuantity {
     pub place: Place,
 }
 
+/// A formula of the final quantities of a run and of named numbers.
+#[derive(Debug, Clone)]
+pub struct Derived {
+    /// The formula; outer registers from [`FIRST_FINAL`] down are the `finals`.
+    pub formula: Formula,
+    /// The final quantities it reads, by name, and where.
+    pub finals: Vec<(String, Place)>,
+    /// Its dimension.
+    pub dim: Dim,
+}
+
+/// The outer register that stands for the first final quantity of a [`Derived`] formula; the others follow downwards.
+pub const FIRST_FINAL: Register = Register::MAX;
+
+impl Derived {
+    /// Its value in SI; `values` are the registers of the tape, `finals` the quantities it reads, in their order.
+    pub fn value(&self, values: &[f64], finals: &[f64]) -> f64 {
+        self.formula.value(|outer| {
+            let k = (FIRST_FINAL - outer) as usize;
+            finals.get(k).copied().unwrap_or_else(|| values[outer as usize])
+        })
+    }
+}
+
 /// A named number.
 #[derive(Debug, Clone)]
 pub struct NamedNumber {
@@ -135,6 +159,8 @@ pub struct Reader {
     reported_unitless: HashSet<usize>,
     millihertz: Vec<(Place, String)>,
     kilohertz: bool,
+    /// While a derived formula is compiled: names in it that are no numbers, and so final quantities.
+    finals: Option<Vec<(String, Place)>>,
 }
 
 /// What is being read: where its text stands and what it may contain.
@@ -165,6 +191,7 @@ impl Reader {
             reported_unitless: HashSet::new(),
             millihertz: Vec::new(),
             kilohertz: false,
+            finals: None,
         }
     }
 
@@ -393,6 +420,15 @@ impl Reader {
         self.numbers.iter().map(|number| number.name.clone()).collect()
     }
 
+    /// The dimension of a number; asking for it does not count as a use.
+    pub fn number_dim(&mut self, name: &str) -> Option<Dim> {
+        let index = *self.by_name.get(name)?;
+        let used = self.numbers[index].used;
+        let known = self.number(index);
+        self.numbers[index].used = used;
+        known.map(|known| known.dim)
+    }
+
     /// Compiles what no section asked for, warns of unused numbers, and hands all numbers over.
     pub fn finish_numbers(&mut self) -> Vec<NamedNumber> {
         for index in 0..self.numbers.len() {
@@ -614,6 +650,18 @@ impl Reader {
         let known = self.compile(&expression, &mut scope)?;
         self.fits(&known, node, what, wanted)?;
         Some(Formula { tape: scope.formula.unwrap_or_default(), result: known.re, place: node.place })
+    }
+
+    /// A formula of final quantities and named numbers, of any dimension; names that are no numbers are taken for final quantities.
+    pub fn derived(&mut self, node: &Node, what: &str) -> Option<Derived> {
+        let expression = self.parsed(node, what)?;
+        let mut scope = Scope { formula: Some(Tape::default()), ..scope_of(node, false) };
+        self.finals = Some(Vec::new());
+        let known = self.compile(&expression, &mut scope);
+        let finals = self.finals.take().unwrap_or_default();
+        let known = known?;
+        let formula = Formula { tape: scope.formula.unwrap_or_default(), result: known.re, place: node.place };
+        Some(Derived { formula, finals, dim: known.dim })
     }
 
     /// The value of a register with the numbers as written.
@@ -853,7 +901,7 @@ impl Reader {
             return Some(Known { re, pi: true, cyclic: false, constant: Some(std::f64::consts::PI), ..known });
         }
         if name == "t" {
-            if scope.formula.is_none() {
+            if scope.formula.is_none() || self.finals.is_some() {
                 self.error(place, Fault::TimeOutside);
                 return None;
             }
@@ -874,6 +922,15 @@ impl Reader {
             });
         }
         let Some(index) = self.by_name.get(name).copied() else {
+            if let (Some(finals), Some(tape)) = (&mut self.finals, &mut scope.formula) {
+                let k = finals.iter().position(|(known, _)| known == name).unwrap_or(finals.len());
+                if k == finals.len() {
+                    finals.push((name.to_string(), place));
+                }
+                let re = tape.push(TapeEntry::Outer(FIRST_FINAL - k as Register), place);
+                let dim = super::scan::dim_of_final(name);
+                return Some(Known { re, ..self.seen_from_outside(0, dim, place, &mut Scope { formula: None, ..*scope }) });
+            }
             let names = self.number_names();
             self.unknown(place, "number", name, &names);
             return None;

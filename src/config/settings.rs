@@ -208,6 +208,10 @@ pub enum Plot {
     Spectrum,
     /// Turning terms of a rotating frame.
     Ledger,
+    /// A final quantity of a scan over two axes.
+    Map,
+    /// Final quantities of a scan along one axis.
+    ScanLines,
 }
 
 /// `output:`.
@@ -221,7 +225,7 @@ pub struct Output {
 
 /// Reads `output:`.
 pub fn read_output(reader: &mut Reader, node: Option<&Node>) -> Option<Output> {
-    let all = vec![Plot::Traces, Plot::Envelopes, Plot::Spectrum, Plot::Ledger];
+    let all = vec![Plot::Traces, Plot::Envelopes, Plot::Spectrum, Plot::Ledger, Plot::Map, Plot::ScanLines];
     let mut output = Output { folder: None, plots: all };
     if let Some(node) = node {
         let entries = reader.fields(node, "output", &["folder", "plots", "tables", "waveform_files", "report"], &[])?;
@@ -239,7 +243,7 @@ pub fn read_output(reader: &mut Reader, node: Option<&Node>) -> Option<Output> {
         if let Some(plots) = node.get("plots") {
             output.plots.clear();
             for plot in reader.list(plots, "output / plots", "plots: [traces, envelopes]")? {
-                let later = ["level diagram", "map", "scan lines"];
+                let later = ["level diagram"];
                 if let Some(key) = plot.text().filter(|text| later.contains(text)) {
                     reader.error(plot.place, Fault::NotNow { key: key.to_string(), section: "output / plots".to_string() });
                     return None;
@@ -250,6 +254,8 @@ pub fn read_output(reader: &mut Reader, node: Option<&Node>) -> Option<Output> {
                     ("timing", Plot::Envelopes),
                     ("spectrum", Plot::Spectrum),
                     ("ledger", Plot::Ledger),
+                    ("map", Plot::Map),
+                    ("scan lines", Plot::ScanLines),
                 ];
                 let plot = reader.word(plot, "a plot", &words)?;
                 if !output.plots.contains(&plot) {

@@ -363,6 +363,23 @@ pub struct BoundFormula {
 const ON_STACK: usize = 48;
 
 impl Formula {
+    /// The value of a formula without t, with the registers outside as `outer` gives them.
+    pub fn value(&self, outer: impl Fn(Register) -> f64) -> f64 {
+        let mut values: Vec<f64> = Vec::with_capacity(self.tape.entries.len());
+        for entry in &self.tape.entries {
+            let value = match *entry {
+                Entry::Constant(value) => value,
+                Entry::Number(_, from) => values[from as usize],
+                Entry::One(function, a) => values[a as usize].one(function),
+                Entry::Two(operation, a, b) => values[a as usize].two(operation, values[b as usize]),
+                Entry::Outer(from) => outer(from),
+                Entry::Time => 0.0,
+            };
+            values.push(value);
+        }
+        values[self.result as usize]
+    }
+
     /// Fills in the values of the tape outside.
     pub fn bind(&self, values: &[f64]) -> BoundFormula {
         let mut outer = Vec::new();
