@@ -161,7 +161,7 @@ fn in_frame(document: &Document, point: &Point, outcome: &Outcome, reference_tur
         return finals;
     }
     let problem = point.problem();
-    let observables = observables(document, &point.values, &point.energies_hz, problem);
+    let observables = observables(document, &point.built, &point.values, &point.energies_hz, problem);
     let state = outcome.end_state.turned(&factors);
     let Some(moment) = problem.moments.last() else { return finals };
     let mut row = Vec::new();

@@ -80,7 +80,7 @@ pub struct Outcome {
 pub fn compute(document: &Document, point: &Point) -> Outcome {
     let clock = Clock::now();
     let problem = point.problem();
-    let observables = observables(document, &point.values, &point.energies_hz, problem);
+    let observables = observables(document, &point.built, &point.values, &point.energies_hz, problem);
     let columns = observables.columns();
     let scales: Vec<f64> = columns.iter().map(|column| column.scale).collect();
     let asked = Asked {

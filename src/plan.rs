@@ -9,7 +9,7 @@ use std::collections::HashMap;
 use std::sync::Arc;
 
 use crate::config::document::{not_finite, Document};
-use crate::config::drives::Form;
+use crate::config::drives::{Drive, DriveMatrix, Form};
 use crate::config::envelopes::{Samples, SizeWord};
 use crate::config::messages::{short_with_unit, Fault, Mistake};
 use crate::config::record::Item;
@@ -30,6 +30,7 @@ use crate::frame::ledger::{Source, TermKey};
 use crate::frame::rotating::{rotate, Beat, Rotated, Setting};
 use crate::measure::breaks_period;
 use crate::model;
+use crate::model::built::Built;
 use crate::problem::{Matrix, Problem, Start};
 use crate::units::{rad_s, RAD_PER_TURN};
 
@@ -46,6 +47,8 @@ pub struct Point<'p> {
     pub values: Vec<f64>,
     /// Moved numbers, by index.
     set: Vec<Option<f64>>,
+    /// The system: its static matrix and its operators.
+    pub built: Arc<Built>,
     /// Diagonal of the static Hamiltonian, Hz.
     pub energies_hz: Vec<f64>,
     /// Matrices of the drives.
@@ -78,6 +81,8 @@ pub struct InFrame {
 struct Touched {
     registers: Vec<Register>,
     statics: bool,
+    /// Registers that follow the levels of a built system.
+    following: Vec<Register>,
     couplings: bool,
     curves: Vec<bool>,
     start: bool,
@@ -133,12 +138,15 @@ impl Plan {
                 }
             }
         }
-        let values = document.tape.as_written();
+        let mut values = document.tape.as_written();
+        let built = Arc::new(model::build(document, &values)?);
+        let following = document.tape.level_dependents();
+        document.tape.replay(&following, &[], &built.energies, &mut values);
         if let Some(mistake) = not_finite(&document.tape, &values, &document.sources) {
             return Err(mistake);
         }
-        let (statics, energies_hz) = statics(document, &values);
-        let couplings = couplings(document, &energies_hz, &values)?;
+        let (statics, energies_hz) = statics(&built);
+        let couplings = couplings(document, &built, &energies_hz, &values)?;
         let curves: Vec<Arc<dyn Curve>> = document.envelopes.iter().map(|envelope| curve(envelope, &values)).collect::<Result<_, _>>()?;
         let lab = Problem {
             statics: Arc::new(statics),
@@ -158,10 +166,21 @@ impl Plan {
             .max()
             .unwrap_or(0);
         let set = vec![None; size as usize];
-        let mut point =
-            Point { values, set, energies_hz, couplings, curves, timeline, lab, rows: Vec::new(), frame: None, warnings: Vec::new() };
+        let mut point = Point {
+            values,
+            set,
+            built,
+            energies_hz,
+            couplings,
+            curves,
+            timeline,
+            lab,
+            rows: Vec::new(),
+            frame: None,
+            warnings: Vec::new(),
+        };
         point.segment(document, put_back)?;
-        let touched = Touched::by(document, &numbers);
+        let touched = Touched::by(document, &numbers, following);
         Ok(Mover { document, numbers, touched, put_back: put_back.to_vec(), point })
     }
 
@@ -198,19 +217,23 @@ impl<'p> Mover<'p> {
             self.point.set[*number as usize] = Some(*value);
         }
         let (document, point, touched) = (self.document, &mut self.point, &self.touched);
-        document.tape.replay(&touched.registers, &point.set, &mut point.values);
-        if touched.registers.iter().any(|register| !point.values[*register as usize].is_finite()) {
+        document.tape.replay(&touched.registers, &point.set, &point.built.energies, &mut point.values);
+        if touched.statics {
+            point.built = Arc::new(model::build(document, &point.values)?);
+            document.tape.replay(&touched.following, &point.set, &point.built.energies, &mut point.values);
+        }
+        if touched.registers.iter().chain(&touched.following).any(|register| !point.values[*register as usize].is_finite()) {
             if let Some(mistake) = not_finite(&document.tape, &point.values, &document.sources) {
                 return Err(mistake);
             }
         }
         if touched.statics {
-            let (statics, energies) = statics(document, &point.values);
+            let (statics, energies) = statics(&point.built);
             point.lab.statics = Arc::new(statics);
             point.energies_hz = energies;
         }
         if touched.statics || touched.couplings {
-            point.couplings = couplings(document, &point.energies_hz, &point.values)?;
+            point.couplings = couplings(document, &point.built, &point.energies_hz, &point.values)?;
             point.lab.matrices = Arc::new(point.couplings.iter().map(|coupling| coupling.turning.clone()).collect());
         }
         for (k, envelope) in document.envelopes.iter().enumerate().filter(|(k, _)| touched.curves[*k]) {
@@ -226,14 +249,19 @@ impl<'p> Mover<'p> {
 }
 
 impl Touched {
-    fn by(document: &Document, numbers: &[u32]) -> Touched {
+    fn by(document: &Document, numbers: &[u32], following: Vec<Register>) -> Touched {
         let registers = document.tape.dependents(numbers);
         let mut moved = vec![false; document.tape.entries().len()];
         for register in &registers {
             moved[*register as usize] = true;
         }
+        let statics = document.system.registers().into_iter().any(|register| moved[register as usize]);
+        // with the levels of a built system everything moves that follows them
+        let following = if statics { following } else { Vec::new() };
+        for register in &following {
+            moved[*register as usize] = true;
+        }
         let is = |register: Register| moved[register as usize];
-        let entries = |entries: &[crate::config::matrix::MatrixEntry]| entries.iter().any(|e| is(e.value.re) || e.value.im.is_some_and(is));
         let formula = |formula: &Formula| formula.tape.entries().iter().any(|entry| matches!(entry, Entry::Outer(from) if is(*from)));
         let curves = document
             .envelopes
@@ -249,8 +277,9 @@ impl Touched {
             State::Level(_) | State::Amplitudes(_) => false,
         };
         Touched {
-            statics: entries(&document.system.entries),
-            couplings: document.drives.iter().any(|drive| entries(&drive.entries)),
+            statics,
+            following,
+            couplings: document.drives.iter().any(|drive| drive_registers(document, drive).into_iter().any(is)),
             curves,
             start,
             registers,
@@ -370,10 +399,13 @@ impl Point<'_> {
         put_back: &[TermKey],
     ) -> Result<InFrame, Mistake> {
         let set: Vec<Option<Wide>> = self.set.iter().map(|value| value.map(|value| Wide { high: value, low: 0.0 })).collect();
-        let wide = document.tape.evaluate::<Wide>(&set);
-        let mut energies = vec![Wide::default(); self.energies_hz.len()];
-        for entry in document.system.entries.iter().filter(|entry| entry.row == entry.column) {
-            energies[entry.row] = energies[entry.row].plus(wide[entry.value.re as usize]);
+        let wide = document.tape.evaluate::<Wide>(&set, &self.built.energies);
+        let mut energies = self.built.energies.clone();
+        if document.system.is_typed() && self.built.basis.is_none() {
+            energies.fill(Wide::default());
+            for entry in document.system.entries.iter().filter(|entry| entry.row == entry.column) {
+                energies[entry.row] = energies[entry.row].plus(wide[entry.value.re as usize]);
+            }
         }
         let carriers: Vec<Wide> = self.timeline.carriers.iter().map(|carrier| wide[carrier.written.centre.register as usize]).collect();
         let mut sizes: HashMap<(usize, Option<usize>), f64> = HashMap::new();
@@ -474,13 +506,16 @@ impl Point<'_> {
     /// The size of an envelope on a drive at envelope 1: the Rabi frequency R of the reference pair, or the entry itself of a
     /// direct drive, Hz.
     pub fn peak_hz(&self, document: &Document, drive: usize, envelope: usize) -> Result<f64, Mistake> {
-        let typed = if document.drives[drive].reference_implied { self.couplings[drive].scale } else { 1.0 };
+        let scale = self.couplings[drive].scale;
+        let typed = if document.drives[drive].reference_implied { scale } else { 1.0 };
         let (drive, written) = (&document.drives[drive], &document.envelopes[envelope]);
         let size = self.values[written.size.register as usize];
         match written.size_word {
             SizeWord::Peak => Ok(size),
             SizeWord::MatrixElement if drive.form == Form::OneSided => Ok(2.0 * size * typed),
             SizeWord::MatrixElement => Ok(size * typed),
+            // the matrix was Hz/T before it was scaled by its reference entry
+            SizeWord::Field => Ok(size * scale),
             SizeWord::Turn => {
                 let area = self.curves[envelope].area_s();
                 let whole = self.curves[envelope].length_s() * self.curves[envelope].largest();
@@ -509,16 +544,25 @@ impl Point<'_> {
     }
 }
 
-/// The static Hamiltonian in rad/s, and its diagonal in Hz.
-fn statics(document: &Document, values: &[f64]) -> (Matrix, Vec<f64>) {
-    let hz = model::dense(document.system.names.len(), &document.system.entries, values);
-    let energies = hz.diagonal().iter().map(|entry| entry.re).collect();
-    (hz.map(|entry| entry * rad_s(1.0)), energies)
+/// The registers that the matrix of a drive is made of, beside those of the system.
+fn drive_registers(document: &Document, drive: &Drive) -> Vec<Register> {
+    match &drive.matrix {
+        DriveMatrix::Typed(entries) => entries.iter().flat_map(|entry| [Some(entry.value.re), entry.value.im]).flatten().collect(),
+        DriveMatrix::Operator(index) => document.operators[*index].registers(),
+        DriveMatrix::Quanta(_) => Vec::new(),
+        DriveMatrix::Moment(_, direction) => direction.iter().map(|component| component.register).collect(),
+    }
 }
 
-fn couplings(document: &Document, energies: &[f64], values: &[f64]) -> Result<Vec<Coupling>, Mistake> {
-    let one = |drive: &crate::config::drives::Drive| {
-        coupling(drive, energies, values).map_err(|fault| match fault {
+/// The static Hamiltonian in rad/s, and its diagonal in Hz.
+fn statics(built: &Built) -> (Matrix, Vec<f64>) {
+    let energies = built.statics_hz.diagonal().iter().map(|entry| entry.re).collect();
+    (built.statics_hz.map(|entry| entry * rad_s(1.0)), energies)
+}
+
+fn couplings(document: &Document, built: &Built, energies: &[f64], values: &[f64]) -> Result<Vec<Coupling>, Mistake> {
+    let one = |drive: &Drive| {
+        coupling(drive, model::drive_matrix(document, built, drive, values), energies).map_err(|fault| match fault {
             CouplingFault::ReferenceZero([from, to]) => {
                 let names = &document.system.names;
                 let fault = Fault::NoSuchCoupling { drive: drive.name.clone(), from: names[from].clone(), to: names[to].clone() };

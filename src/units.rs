@@ -47,9 +47,15 @@ pub mod constants {
     pub const ELECTRON_MASS: f64 = 9.109_383_713_9e-31;
     /// Unified atomic mass unit, kg.
     pub const DALTON: f64 = 1.660_539_068_92e-27;
+    /// Bohr magneton, J/T.
+    pub const BOHR_MAGNETON: f64 = 9.274_010_065_7e-24;
+    /// Nuclear magneton, J/T.
+    pub const NUCLEAR_MAGNETON: f64 = 5.050_783_739_3e-27;
+    /// Magnetic constant, N/A^2.
+    pub const MAGNETIC: f64 = 1.256_637_061_27e-6;
 }
 
-use constants::{BOLTZMANN, CHARGE, DALTON, ELECTRON_MASS, LIGHT, PLANCK};
+use constants::{BOHR_MAGNETON, BOLTZMANN, CHARGE, DALTON, ELECTRON_MASS, LIGHT, NUCLEAR_MAGNETON, PLANCK};
 
 /// Hz per kelvin: k/h, for energies given as temperatures.
 pub const HZ_PER_KELVIN: f64 = BOLTZMANN / PLANCK;
@@ -57,6 +63,10 @@ pub const HZ_PER_KELVIN: f64 = BOLTZMANN / PLANCK;
 pub const HZ_PER_EV: f64 = CHARGE / PLANCK;
 /// Hz per reciprocal centimetre: 100 c.
 pub const HZ_PER_CM: f64 = LIGHT * 100.0;
+/// Hz per tesla of a Bohr magneton: mu_B/h.
+pub const BOHR_HZ_PER_TESLA: f64 = BOHR_MAGNETON / PLANCK;
+/// Hz per tesla of a nuclear magneton: mu_N/h.
+pub const NUCLEAR_HZ_PER_TESLA: f64 = NUCLEAR_MAGNETON / PLANCK;
 /// Vacuum wavelength in m of a gap in Hz, and back: c over it.
 pub const WAVELENGTH_M_HZ: f64 = LIGHT;
 /// Radians per turn in the ratio of a linewidth (full width in Hz) and a rate: rate = 2 pi linewidth.

@@ -50,7 +50,7 @@ fn try_plot(words: &Words) -> Result<Status, Status> {
     let plan = Plan::new(document);
     let point = point(&plan)?;
     let document = plan.document();
-    let columns = observables(document, &point.values, &point.energies_hz, point.problem()).columns();
+    let columns = observables(document, &point.built, &point.values, &point.energies_hz, point.problem()).columns();
     let (headings, mut values) = traces_csv::read(&words.folder.join("traces.csv"))
         .map_err(|reason| no_result(format!("its traces.csv cannot be read ({reason})")))?;
     let wanted: Vec<&str> = std::iter::once("time_s").chain(columns.iter().map(|column| column.name.as_str())).collect();

@@ -15,7 +15,7 @@ use super::scan::Scan;
 use super::sequence::{self, Known, Step};
 use super::settings::{Accuracy, Frame, Output};
 use super::state::State;
-use super::system::{Operator, System};
+use super::system::{Operator, OperatorSource, Physics, System};
 use super::tape::{Register, Tape};
 use super::tree::{self, Kind, Node};
 
@@ -192,9 +192,10 @@ pub fn read_variant(document: &Document, variant: &Variant) -> Result<Document, 
         .iter()
         .all(|section| document.root.get(&section.key).is_some_and(|written| compare::same(written, &section.value)));
     if let Some(read) = &read {
-        let values = |document: &Document| -> Vec<(String, f64)> {
+        // by their bits, as a number that follows the levels of a built system is none yet
+        let values = |document: &Document| -> Vec<(String, u64)> {
             let registers = document.tape.as_written();
-            document.numbers.iter().map(|number| (number.name.clone(), registers[number.register as usize])).collect()
+            document.numbers.iter().map(|number| (number.name.clone(), registers[number.register as usize].to_bits())).collect()
         };
         if same_sections && values(read) == values(document) {
             reader.error(variant.place, Fault::VariantChangesNothing { name: variant.name.clone() });
@@ -256,15 +257,18 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
             None
         }
     };
-    let size = reader.level_names().len();
     // with the names of the levels known, the other sections can be judged even where an energy is wrong
-    let stand_in = System { place: root.place, kind: "levels", names: reader.level_names(), entries: Vec::new(), rungs: None };
-    let readable = system.is_some() || size > 0;
+    let stand_in = System { place: root.place, kind: "levels", names: reader.level_names(), entries: Vec::new(), physics: Physics::Typed };
+    let readable = system.is_some() || !stand_in.names.is_empty();
     let known_system = system.clone().unwrap_or(stand_in);
-    let operators = match root.get("operators") {
-        Some(node) if readable => super::system::read_operators(reader, node, size),
+    let mut operators = match root.get("operators") {
+        Some(node) if readable => super::system::read_operators(reader, node, &known_system),
         _ => Vec::new(),
     };
+    operators.extend(super::system::natural_operators(&known_system));
+    if let Some(system) = &system {
+        levels_from_themselves(reader, system);
+    }
     let (drives, drive_names) = match root.get("drives") {
         Some(node) if readable => super::drives::read_drives(reader, node, &known_system, &operators),
         _ => (Vec::new(), Vec::new()),
@@ -427,7 +431,8 @@ fn unused(reader: &mut Reader, root: &Node, used: &sequence::Used, operators: &[
             }
         }
     }
-    for operator in operators.iter().filter(|operator| !used_operators.contains(&operator.name)) {
+    let typed = operators.iter().filter(|operator| !matches!(operator.source, OperatorSource::Natural));
+    for operator in typed.filter(|operator| !used_operators.contains(&operator.name)) {
         reader.warn(operator.place, Fault::Unused { kind: "operator", name: operator.name.clone() });
     }
 }
@@ -435,19 +440,40 @@ fn unused(reader: &mut Reader, root: &Node, used: &sequence::Used, operators: &[
 /// Every register has a finite value with the numbers as written; the first that has not is reported.
 fn finite(reader: &mut Reader, _numbers: &[NamedNumber]) -> Option<()> {
     let values = reader.tape.as_written();
-    match not_finite(&reader.tape, &values, &reader.sources) {
+    // what follows the levels of a built system is judged when it is built
+    let later = reader.tape.level_dependents();
+    let bad = (0..values.len()).find(|register| !values[*register].is_finite() && later.binary_search(&(*register as Register)).is_err());
+    match bad {
         None => Some(()),
-        Some(mistake) => {
+        Some(bad) => {
+            let mistake = no_number(&reader.tape, &values, &reader.sources, bad);
             reader.mistakes.push(mistake);
             None
         }
     }
 }
 
+/// A built system cannot be made of the gaps between its own levels.
+fn levels_from_themselves(reader: &mut Reader, system: &System) {
+    let following = reader.tape.level_dependents();
+    if let Some(register) = system.registers().into_iter().find(|register| following.contains(register)) {
+        let place = reader.tape.place(register);
+        let chain = vec![
+            (system.kind.to_string(), system.place.line),
+            ("gap".to_string(), place.line),
+            (system.kind.to_string(), system.place.line),
+        ];
+        reader.error(place, Fault::Circle { chain });
+    }
+}
+
 /// The first register without a finite value, as a mistake.
 pub fn not_finite(tape: &Tape, values: &[f64], sources: &Sources) -> Option<Mistake> {
+    values.iter().position(|value| !value.is_finite()).map(|bad| no_number(tape, values, sources, bad))
+}
+
+fn no_number(tape: &Tape, values: &[f64], sources: &Sources, bad: usize) -> Mistake {
     use super::tape::{Entry, Two};
-    let bad = values.iter().position(|value| !value.is_finite())?;
     let place = tape.place(bad as Register);
     let line = sources.line(place.file, place.line).unwrap_or_default();
     let text: String = line.chars().skip(place.column.saturating_sub(1) as usize).take(place.length as usize).collect();
@@ -455,7 +481,7 @@ pub fn not_finite(tape: &Tape, values: &[f64], sources: &Sources) -> Option<Mist
         Entry::Two(Two::Divide, _, divisor) if values[divisor as usize] == 0.0 => Fault::ZeroDivision { text },
         _ => Fault::NotFinite { text },
     };
-    Some(Mistake::error(place, fault))
+    Mistake::error(place, fault)
 }
 
 /// Operators under `free_z` must be diagonal and real.
@@ -467,7 +493,7 @@ fn free_turns(reader: &mut Reader, record: &Record, operators: &[Operator]) {
         };
         for index in free {
             let values = reader.tape.as_written();
-            let off = operators[*index].entries.iter().any(|entry| {
+            let off = operators[*index].entries().unwrap_or_default().iter().any(|entry| {
                 let im = entry.value.im.map_or(0.0, |im| values[im as usize]);
                 im != 0.0 || (entry.row != entry.column && values[entry.value.re as usize] != 0.0)
             });

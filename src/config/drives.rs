@@ -4,9 +4,10 @@ use super::matrix::MatrixEntry;
 use super::messages::Fault;
 use super::place::Place;
 use super::reader::{ComplexQuantity, Quantity, Reader};
-use super::system::{Operator, System};
+use super::system::{Acting, Operator, OperatorSource, Physics, System};
 use super::tape::{Formula, Register};
 use super::tree::Node;
+use super::vector::read_vector;
 use crate::units::Dim;
 
 /// How the envelope enters the Hamiltonian.
@@ -56,6 +57,19 @@ pub struct Calibration {
     pub volts: Quantity,
 }
 
+/// The matrix that a drive multiplies, before it is scaled by its reference entry.
+#[derive(Debug, Clone)]
+pub enum DriveMatrix {
+    /// Typed entries.
+    Typed(Vec<MatrixEntry>),
+    /// The operator of this index.
+    Operator(usize),
+    /// lower + raise of what `acts_on` names.
+    Quanta(String),
+    /// Energy of the magnetic moment of what `acts_on` names, per tesla along this direction.
+    Moment(String, [Quantity; 3]),
+}
+
 /// A drive.
 #[derive(Debug, Clone)]
 pub struct Drive {
@@ -63,8 +77,8 @@ pub struct Drive {
     pub name: String,
     /// Where the name stands.
     pub place: Place,
-    /// The matrix as typed, not yet scaled by its reference entry.
-    pub entries: Vec<MatrixEntry>,
+    /// The matrix as typed or built, not yet scaled by its reference entry.
+    pub matrix: DriveMatrix,
     /// The pair to which `peak` and `turn` refer.
     pub reference: Option<[usize; 2]>,
     /// Where the reference pair stands.
@@ -81,6 +95,21 @@ pub struct Drive {
     pub carrier_phase: Option<CarrierPhase>,
     /// Volts to Rabi frequency.
     pub calibration: Option<Calibration>,
+}
+
+impl Drive {
+    /// Typed entries of its matrix.
+    pub fn entries(&self) -> &[MatrixEntry] {
+        match &self.matrix {
+            DriveMatrix::Typed(entries) => entries,
+            _ => &[],
+        }
+    }
+
+    /// Whether its matrix is that of a magnetic moment, so that a field may be its size.
+    pub fn takes_field(&self) -> bool {
+        matches!(self.matrix, DriveMatrix::Moment(..))
+    }
 }
 
 const KEYS: [&str; 12] = [
@@ -129,7 +158,7 @@ pub fn read_drives(reader: &mut Reader, node: &Node, system: &System, operators:
 fn read_drive(reader: &mut Reader, name: &str, place: Place, node: &Node, system: &System, operators: &[Operator]) -> Option<Drive> {
     let section = format!("drives / {name}");
     let keys = reader.fields(node, &section, &KEYS, &HINTS)?;
-    for later in keys.iter().filter(|key| matches!(key.key.as_str(), "field_direction" | "polarisation")) {
+    for later in keys.iter().filter(|key| key.key == "polarisation") {
         reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: section.clone() });
     }
     let form = match node.get("form") {
@@ -162,11 +191,11 @@ fn read_drive(reader: &mut Reader, name: &str, place: Place, node: &Node, system
         }
         _ => {}
     }
-    let (entries, reference, reference_place) = coupling?;
+    let (matrix, reference, reference_place) = coupling?;
     Some(Drive {
         name: name.to_string(),
         place,
-        entries,
+        matrix,
         reference,
         reference_place,
         reference_implied: node.get("operator").is_some() && node.get("reference_pair").is_none(),
@@ -191,7 +220,7 @@ fn read_coupling(
     system: &System,
     operators: &[Operator],
     form: Option<Form>,
-) -> Option<(Vec<MatrixEntry>, Option<[usize; 2]>, Place)> {
+) -> Option<(DriveMatrix, Option<[usize; 2]>, Place)> {
     let hint = Some("pair: [a, b] couples two levels; operator: name a named matrix; acts_on: ladder the natural coupling.");
     let source = reader.one_of(node, &["pair", "operator", "acts_on", "strengths"], section, hint)?;
     let reference = node.get("reference_pair").map(|pair| (reader.pair(pair, "reference_pair"), pair.place));
@@ -204,7 +233,11 @@ fn read_coupling(
         }
         "operator" => {
             let names: Vec<String> = operators.iter().map(|operator| operator.name.clone()).collect();
-            operators[reader.name_among(&source.value, "operator", &names)?].entries.clone()
+            let index = reader.name_among(&source.value, "operator", &names)?;
+            match &operators[index].source {
+                OperatorSource::Typed(entries) => entries.clone(),
+                OperatorSource::Natural => return built(reader, DriveMatrix::Operator(index), reference, place, system),
+            }
         }
         "strengths" => {
             let mut entries = Vec::new();
@@ -219,19 +252,19 @@ fn read_coupling(
             entries
         }
         _ => {
-            let what = reader.text(&source.value, &format!("{section} / acts_on"), "ladder")?;
-            let Some(rungs) = system.rungs.as_ref().filter(|_| what == "ladder") else {
-                let known = if system.rungs.is_some() { vec!["ladder".to_string()] } else { Vec::new() };
-                let hint = Some(format!("This system is given by its {}; a natural coupling belongs to a ladder.", system.kind));
-                let fault = Fault::UnknownWord { what: "acts_on".to_string(), found: what.to_string(), known, near: None, hint };
-                reader.error(place, fault);
-                return None;
-            };
-            rungs
-                .iter()
-                .enumerate()
-                .flat_map(|(n, rung)| [constant_entry(*rung, n, n + 1, place), constant_entry(*rung, n + 1, n, place)])
-                .collect()
+            let (name, acting) = read_acts_on(reader, &source.value, section, system)?;
+            match (&system.physics, acting) {
+                (Physics::Ladder(rungs), Acting::Quanta) => rungs
+                    .iter()
+                    .enumerate()
+                    .flat_map(|(n, rung)| [constant_entry(*rung, n, n + 1, place), constant_entry(*rung, n + 1, n, place)])
+                    .collect(),
+                (_, Acting::Quanta) => return built(reader, DriveMatrix::Quanta(name), reference, place, system),
+                (_, Acting::Moment) => {
+                    let direction = read_direction(reader, node, section)?;
+                    return built(reader, DriveMatrix::Moment(name, direction), reference, place, system);
+                }
+            }
         }
     };
     let mut pairs: Vec<[usize; 2]> = entries.iter().map(|e| [e.row.min(e.column), e.row.max(e.column)]).collect();
@@ -256,7 +289,51 @@ fn read_coupling(
     if source.key == "operator" && form != Some(Form::OneSided) {
         hermitian(reader, name, &source.value, &entries)?;
     }
-    Some((entries, reference.map(|(pair, _)| pair), reference.map_or(place, |(_, at)| at)))
+    Some((DriveMatrix::Typed(entries), reference.map(|(pair, _)| pair), reference.map_or(place, |(_, at)| at)))
+}
+
+/// A matrix that is known once the system is built; of two levels the only pair is the reference.
+fn built(
+    _reader: &mut Reader,
+    matrix: DriveMatrix,
+    reference: Option<(Option<[usize; 2]>, Place)>,
+    place: Place,
+    system: &System,
+) -> Option<(DriveMatrix, Option<[usize; 2]>, Place)> {
+    match reference {
+        Some((pair, at)) => Some((matrix, Some(pair?), at)),
+        None if system.names.len() == 2 => Some((matrix, Some([0, 1]), place)),
+        None => Some((matrix, None, place)),
+    }
+}
+
+/// The name under `acts_on`, and how a drive acts there.
+fn read_acts_on(reader: &mut Reader, node: &Node, section: &str, system: &System) -> Option<(String, Acting)> {
+    let known = system.acting();
+    let what = reader.text(node, &format!("{section} / acts_on"), "ladder")?;
+    if let Some(found) = known.iter().find(|(name, _)| name == what) {
+        return Some(found.clone());
+    }
+    let known: Vec<String> = known.into_iter().map(|(name, _)| name).collect();
+    let hint = known.is_empty().then(|| format!("This system is given by its {}, which has no coupling of its own.", system.kind));
+    let near = super::reader::near(what, known.iter().map(String::as_str));
+    let fault = Fault::UnknownWord { what: "acts_on".to_string(), found: what.to_string(), known, near, hint };
+    reader.error(node.place, fault);
+    None
+}
+
+/// `field_direction: x`, `y`, `z`, or three plain numbers; of no particular length.
+fn read_direction(reader: &mut Reader, node: &Node, section: &str) -> Option<[Quantity; 3]> {
+    let direction = reader.need(node, "field_direction", section, "x")?;
+    let what = format!("{section} / field_direction");
+    if direction.items().is_some() {
+        return read_vector(reader, direction, &what, Dim::NONE);
+    }
+    let axis = reader.word(direction, &what, &[("x", 0), ("y", 1), ("z", 2)])?;
+    Some([0, 1, 2].map(|k| {
+        let register = reader.constant(f64::from(u8::from(k == axis)), direction.place);
+        Quantity { register, place: direction.place }
+    }))
 }
 
 fn hermitian(reader: &mut Reader, drive: &str, operator: &Node, entries: &[MatrixEntry]) -> Option<()> {

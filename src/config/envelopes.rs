@@ -20,6 +20,8 @@ pub enum SizeWord {
     MatrixElement,
     /// Peak volts of a sine, by the drive's calibration.
     Volts,
+    /// Peak of the linear magnetic field, T, for a drive that acts on a moment.
+    Field,
 }
 
 impl SizeWord {
@@ -29,8 +31,13 @@ impl SizeWord {
     }
 }
 
-const SIZES: [(&str, SizeWord); 4] =
-    [("peak", SizeWord::Peak), ("turn", SizeWord::Turn), ("matrix_element", SizeWord::MatrixElement), ("volts", SizeWord::Volts)];
+const SIZES: [(&str, SizeWord); 5] = [
+    ("peak", SizeWord::Peak),
+    ("turn", SizeWord::Turn),
+    ("matrix_element", SizeWord::MatrixElement),
+    ("volts", SizeWord::Volts),
+    ("field", SizeWord::Field),
+];
 
 /// Values between samples.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -96,7 +103,7 @@ pub struct Envelope {
     pub formula: Option<Formula>,
     /// Which word gives the size.
     pub size_word: SizeWord,
-    /// The size: Hz, turns, Hz or V.
+    /// The size: Hz, turns, Hz, V or T.
     pub size: Quantity,
     /// Where the key of the size stands.
     pub size_place: Place,
@@ -237,10 +244,6 @@ fn read_envelope(reader: &mut Reader, name: &str, place: Place, node: &Node) -> 
     let size_entry =
         reader.one_of(node, &["peak", "turn", "matrix_element", "field", "volts"], &section, Some("It says how strong the pulse is."));
     let size = size_entry.and_then(|entry| {
-        if entry.key == "field" {
-            reader.error(entry.place, Fault::NotNow { key: "field".to_string(), section: section.clone() });
-            return None;
-        }
         let word = SIZES.iter().find(|(word, _)| *word == entry.key)?.1;
         let what = format!("{section} / {}", entry.key);
         let quantity = match word {
@@ -248,6 +251,7 @@ fn read_envelope(reader: &mut Reader, name: &str, place: Place, node: &Node) -> 
             SizeWord::Turn => reader.quantity(&entry.value, &what, Dim::ANGLE),
             SizeWord::MatrixElement => reader.energy(&entry.value, &what),
             SizeWord::Volts => reader.sine_volts(&entry.value, &what),
+            SizeWord::Field => reader.quantity(&entry.value, &what, Dim::MAGNETIC_FIELD),
         };
         quantity.map(|quantity| (word, quantity, entry.place))
     });

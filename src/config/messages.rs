@@ -115,7 +115,8 @@ pub enum Fault {
     EmptySystem { what: String },
     SameLevel { name: String },
     // drives
-    NeedsReference { drive: String, pairs: usize },
+    NeedsReference { drive: String, pairs: Option<usize> },
+    FieldWithoutMoment { envelope: String, drive: String },
     NoSuchCoupling { drive: String, from: String, to: String },
     NotHermitianDrive { drive: String, operator: String },
     SamePair { name: String },
@@ -536,9 +537,15 @@ impl Fault {
             SameLevel { name } => say(format!("the level \"{name}\" is named twice.")),
 
             NeedsReference { drive, pairs } => {
-                say(format!("the drive \"{drive}\" couples {pairs} pairs; it must say to which one peak and turn refer."))
+                let pairs = pairs.map_or("more than one pair".to_string(), |pairs| format!("{pairs} pairs"));
+                say(format!("the drive \"{drive}\" couples {pairs}; it must say to which one the size of its envelope refers."))
                     .write("reference_pair: [lower, upper]")
             }
+            FieldWithoutMoment { envelope, drive } => say(format!(
+                "the envelope \"{envelope}\" has its size as field, but the drive \"{drive}\" does not act on a magnetic moment."
+            ))
+            .why("Only acts_on a spin or an atom, with field_direction, turns a field into a coupling.")
+            .write("peak: value      (the Rabi frequency of the reference pair at envelope 1)"),
             NoSuchCoupling { drive, from, to } => say(format!("the drive \"{drive}\" does not couple {from} and {to}."))
                 .why("Its matrix has a zero there, so it cannot be scaled by that entry."),
             NotHermitianDrive { drive, operator } => say(format!("the operator \"{operator}\" of the drive \"{drive}\" is not Hermitian."))

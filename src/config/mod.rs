@@ -19,3 +19,4 @@ pub mod state;
 pub mod system;
 pub mod tape;
 pub mod tree;
+pub mod vector;

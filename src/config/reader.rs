@@ -113,6 +113,8 @@ pub enum LevelSource {
     Rung(usize),
     /// A plain value in Hz, from a binary file.
     Value(f64, Place),
+    /// Level n of a system that `model` builds.
+    Built(usize),
 }
 
 /// The unit that bare entries of a matrix get: a factor to Hz.
@@ -716,6 +718,13 @@ impl Reader {
     pub fn define_levels(&mut self, names: Vec<String>, sources: Vec<LevelSource>, rungs: Rungs) {
         self.levels = names.into_iter().zip(sources).map(|(name, source)| Level { name, source, energy: None, active: false }).collect();
         self.rungs = rungs;
+        self.rung_registers = None;
+    }
+
+    /// Takes up the names of levels whose energies are known once the system is built.
+    pub fn define_built_levels(&mut self, names: Vec<String>) {
+        let sources = (0..names.len()).map(LevelSource::Built).collect();
+        self.define_levels(names, sources, Rungs::default());
     }
 
     /// Names of the levels, in basis order.
@@ -760,7 +769,7 @@ impl Reader {
             let place = match &self.levels[index].source {
                 LevelSource::Written(node, _) => node.place,
                 LevelSource::Value(_, place) => *place,
-                LevelSource::Rung(_) => Place::default(),
+                LevelSource::Rung(_) | LevelSource::Built(_) => Place::default(),
             };
             let name = self.levels[index].name.clone();
             self.error(
@@ -778,6 +787,7 @@ impl Reader {
             },
             LevelSource::Value(hz, place) => Some(self.constant(hz, place)),
             LevelSource::Rung(n) => self.rung(n),
+            LevelSource::Built(n) => Some(self.tape.push(TapeEntry::Level(n as u32), Place::default())),
         };
         self.levels[index].active = false;
         self.levels[index].energy = Some(energy);

@@ -263,8 +263,16 @@ impl Steps<'_> {
     fn judge(&mut self, drive: usize, envelope: usize, node: &Node) -> Option<()> {
         let (drive, envelope) = (&self.known.drives.1[drive], &self.known.envelopes.1[envelope]);
         let names = (envelope.name.clone(), drive.name.clone());
+        if envelope.size_word == SizeWord::Field && !drive.takes_field() {
+            self.reader.error(envelope.size_place, Fault::FieldWithoutMoment { envelope: names.0, drive: names.1 });
+            return None;
+        }
+        if envelope.size_word == SizeWord::MatrixElement && drive.takes_field() && drive.reference.is_none() {
+            self.reader.error(drive.place, Fault::NeedsReference { drive: names.1, pairs: None });
+            return None;
+        }
         if drive.form == Form::Direct {
-            if envelope.size_word != SizeWord::MatrixElement {
+            if !matches!(envelope.size_word, SizeWord::MatrixElement | SizeWord::Field) {
                 let fault = Fault::SizeOfDirect { envelope: names.0, drive: names.1, key: envelope.size_word.word().to_string() };
                 self.reader.error(envelope.size_place, fault);
                 return None;
@@ -279,8 +287,9 @@ impl Steps<'_> {
             }
             return Some(());
         }
-        if drive.reference.is_none() && envelope.size_word != SizeWord::MatrixElement {
-            let pairs = drive.entries.iter().filter(|entry| entry.row < entry.column).count();
+        if drive.reference.is_none() && !matches!(envelope.size_word, SizeWord::MatrixElement | SizeWord::Field) {
+            let typed = drive.entries();
+            let pairs = (!typed.is_empty()).then(|| typed.iter().filter(|entry| entry.row < entry.column).count());
             self.reader.error(drive.place, Fault::NeedsReference { drive: names.1, pairs });
             return None;
         }

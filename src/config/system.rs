@@ -7,54 +7,173 @@ use super::reader::{ComplexQuantity, LevelSource, Reader, Rungs};
 use super::tape::Register;
 use super::tree::Node;
 
+pub mod mode;
+pub mod spin;
+
+use mode::Mode;
+use spin::Spin;
+
 /// Most levels accepted: a dense matrix of that size is 16 MB.
 pub const MOST_LEVELS: usize = 1024;
 
-/// The static system: names, and the entries of its matrix in Hz.
+/// The static system: names of its states, and what its matrix is made of.
 #[derive(Debug, Clone)]
 pub struct System {
     /// Where the section stands.
     pub place: Place,
-    /// Which key described it: `levels`, `hamiltonian` or `ladder`.
+    /// Which key described it: one of [`KINDS`].
     pub kind: &'static str,
-    /// Names of the basis states, in order.
+    /// Names of the states as built, in order; those of the working basis once the document is read.
     pub names: Vec<String>,
-    /// Written entries, both triangles, in Hz.
+    /// Of a typed system: the written entries, both triangles, in Hz.
     pub entries: Vec<MatrixEntry>,
-    /// Of a ladder: the relative coupling of rungs n and n + 1.
-    pub rungs: Option<Vec<Register>>,
+    /// What it is made of.
+    pub physics: Physics,
 }
 
-/// A named matrix without dimension.
+/// What the static matrix and the operators of a system are made of; `model` builds them.
+#[derive(Debug, Clone)]
+pub enum Physics {
+    /// The entries alone: `levels` and `hamiltonian`.
+    Typed,
+    /// The entries, and the relative coupling of rungs n and n + 1.
+    Ladder(Vec<Register>),
+    /// A spin.
+    Spin(Spin),
+    /// A mode.
+    Mode(Mode),
+}
+
+/// What `acts_on` may name, and how a drive acts on it.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Acting {
+    /// lower + raise of a mode or ladder.
+    Quanta,
+    /// A magnetic moment along a direction.
+    Moment,
+}
+
+/// Names of the operators of a mode or ladder.
+pub const MODE_OPERATORS: [&str; 5] = ["lower", "raise", "quanta", "position", "momentum"];
+/// Names of the operators of a spin.
+pub const SPIN_OPERATORS: [&str; 5] = ["spin_x", "spin_y", "spin_z", "spin_up", "spin_down"];
+
+impl System {
+    /// A system of typed entries.
+    fn typed(place: Place, kind: &'static str, names: Vec<String>, entries: Vec<MatrixEntry>) -> System {
+        System { place, kind, names, entries, physics: Physics::Typed }
+    }
+
+    /// Whether its level energies are on the tape as written; else they are known once it is built.
+    pub fn is_typed(&self) -> bool {
+        matches!(self.physics, Physics::Typed | Physics::Ladder(_))
+    }
+
+    /// Names of the operators that come with it.
+    pub fn operators(&self) -> Vec<String> {
+        let own = |names: &[&str]| names.iter().map(|name| (*name).to_string()).collect();
+        match &self.physics {
+            Physics::Typed => Vec::new(),
+            Physics::Ladder(_) | Physics::Mode(_) => own(&MODE_OPERATORS),
+            Physics::Spin(_) => own(&SPIN_OPERATORS),
+        }
+    }
+
+    /// What `acts_on` may name here.
+    pub fn acting(&self) -> Vec<(String, Acting)> {
+        let how = match &self.physics {
+            Physics::Typed => return Vec::new(),
+            Physics::Ladder(_) | Physics::Mode(_) => Acting::Quanta,
+            Physics::Spin(_) => Acting::Moment,
+        };
+        vec![(self.kind.to_string(), how)]
+    }
+
+    /// The registers that its matrices are made of.
+    pub fn registers(&self) -> Vec<Register> {
+        let mut found: Vec<Register> = self.entries.iter().flat_map(|entry| [Some(entry.value.re), entry.value.im]).flatten().collect();
+        match &self.physics {
+            Physics::Typed => {}
+            Physics::Ladder(rungs) => found.extend(rungs),
+            Physics::Spin(spin) => spin.registers(&mut found),
+            Physics::Mode(mode) => mode.registers(&mut found),
+        }
+        found
+    }
+}
+
+/// A named matrix.
 #[derive(Debug, Clone)]
 pub struct Operator {
     /// Its name.
     pub name: String,
-    /// Where the name stands.
+    /// Where the name stands; of one that comes with the system, where that stands.
     pub place: Place,
-    /// Written entries.
-    pub entries: Vec<MatrixEntry>,
+    /// What it is made of.
+    pub source: OperatorSource,
 }
 
-const LATER_KINDS: [&str; 6] = ["spin", "mode", "well", "functions", "atom", "parts"];
+/// What a named matrix is made of.
+#[derive(Debug, Clone)]
+pub enum OperatorSource {
+    /// Typed entries without dimension, in the working basis.
+    Typed(Vec<MatrixEntry>),
+    /// It comes with the system, under the same name.
+    Natural,
+}
+
+impl Operator {
+    /// The written entries of a typed one.
+    pub fn entries(&self) -> Option<&[MatrixEntry]> {
+        match &self.source {
+            OperatorSource::Typed(entries) => Some(entries),
+            OperatorSource::Natural => None,
+        }
+    }
+
+    /// The registers it is made of.
+    pub fn registers(&self) -> Vec<Register> {
+        let entries = self.entries().unwrap_or_default();
+        entries.iter().flat_map(|entry| [Some(entry.value.re), entry.value.im]).flatten().collect()
+    }
+}
+
+/// Reads one kind: the node under its key, the place of the key, and the path of keys.
+type Read = fn(&mut Reader, &Node, Place, &str) -> Option<System>;
+
+/// Every kind of system and how it is read.
+const KINDS: [(&str, Read); 5] = [
+    ("levels", read_levels),
+    ("ladder", read_ladder),
+    ("hamiltonian", read_hamiltonian),
+    ("spin", spin::read_spin),
+    ("mode", mode::read_mode),
+];
+
+const LATER_KINDS: [&str; 4] = ["well", "functions", "atom", "parts"];
 
 /// Reads `system:`.
 pub fn read_system(reader: &mut Reader, node: &Node) -> Option<System> {
-    let mut known = vec!["levels", "ladder", "hamiltonian", "name_states_by"];
+    let mut known: Vec<&str> = KINDS.iter().map(|(word, _)| *word).collect();
+    known.push("name_states_by");
     known.extend(LATER_KINDS);
     let entries = reader.fields(node, "system", &known, &[])?;
     if let Some(later) = entries.iter().find(|entry| LATER_KINDS.contains(&entry.key.as_str()) || entry.key == "name_states_by") {
         reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: "system".to_string() });
         return None;
     }
-    let entry = reader.one_of(node, &["levels", "ladder", "hamiltonian"], "system", None)?;
-    match entry.key.as_str() {
-        "levels" => read_levels(reader, &entry.value),
-        "ladder" => read_ladder(reader, &entry.value, entry.place),
-        _ => read_hamiltonian(reader, &entry.value),
-    }
+    read_kind(reader, node, "system")
 }
 
+/// Reads the one kind that stands under `node`: the system itself, or a part of it.
+pub fn read_kind(reader: &mut Reader, node: &Node, section: &str) -> Option<System> {
+    let words: Vec<&str> = KINDS.iter().map(|(word, _)| *word).collect();
+    let entry = reader.one_of(node, &words, section, None)?;
+    let (word, read) = KINDS.iter().find(|(word, _)| *word == entry.key)?;
+    read(reader, &entry.value, entry.place, &format!("{section} / {word}"))
+}
+
+/// Refuses more levels than are accepted.
 fn too_many(reader: &mut Reader, place: Place, levels: f64) -> bool {
     if levels <= MOST_LEVELS as f64 {
         return false;
@@ -64,7 +183,7 @@ fn too_many(reader: &mut Reader, place: Place, levels: f64) -> bool {
     true
 }
 
-fn read_levels(reader: &mut Reader, node: &Node) -> Option<System> {
+fn read_levels(reader: &mut Reader, node: &Node, _place: Place, _section: &str) -> Option<System> {
     let Some(entries) = node.entries().filter(|entries| !entries.is_empty()) else {
         reader.error(node.place, Fault::EmptySystem { what: "levels".to_string() });
         return None;
@@ -77,7 +196,7 @@ fn read_levels(reader: &mut Reader, node: &Node) -> Option<System> {
     let sources = entries.iter().map(|entry| LevelSource::Written(entry.value.clone(), None)).collect();
     reader.define_levels(names.clone(), sources, Rungs::default());
     let entries = diagonal(reader, names.len(), |k| entries[k].value.place)?;
-    Some(System { place: node.place, kind: "levels", names, entries, rungs: None })
+    Some(System::typed(node.place, "levels", names, entries))
 }
 
 /// The diagonal entries, compiled; `None` if one cannot be.
@@ -90,11 +209,11 @@ fn diagonal(reader: &mut Reader, size: usize, place: impl Fn(usize) -> Place) ->
         .collect()
 }
 
-fn read_ladder(reader: &mut Reader, node: &Node, place: Place) -> Option<System> {
-    reader.fields(node, "system / ladder", &["levels", "first_gap", "anharmonicity", "couplings_grow"], &[])?;
-    let count = reader.need(node, "levels", "system / ladder", "4");
-    let levels = count.and_then(|count| reader.whole(count, "system / ladder / levels", 1.0).map(|levels| (levels, count.place)));
-    let first = reader.need(node, "first_gap", "system / ladder", "5.02 GHz").cloned();
+fn read_ladder(reader: &mut Reader, node: &Node, place: Place, section: &str) -> Option<System> {
+    reader.fields(node, section, &["levels", "first_gap", "anharmonicity", "couplings_grow"], &[])?;
+    let count = reader.need(node, "levels", section, "4");
+    let levels = count.and_then(|count| reader.whole(count, &format!("{section} / levels"), 1.0).map(|levels| (levels, count.place)));
+    let first = reader.need(node, "first_gap", section, "5.02 GHz").cloned();
     let (levels, count_place) = levels?;
     if too_many(reader, count_place, levels) {
         return None;
@@ -105,7 +224,7 @@ fn read_ladder(reader: &mut Reader, node: &Node, place: Place) -> Option<System>
         let why = Some("Beyond two levels it decides every higher gap; 0 Hz makes the ladder harmonic.".to_string());
         let fault = Fault::MissingKey {
             key: "anharmonicity".to_string(),
-            section: "system / ladder".to_string(),
+            section: section.to_string(),
             write: "anharmonicity: -240 MHz".to_string(),
             why,
         };
@@ -116,20 +235,20 @@ fn read_ladder(reader: &mut Reader, node: &Node, place: Place) -> Option<System>
     let harmless = bend.is_none() && size <= 2;
     // with two levels the bend is read all the same, so that a slip in it is found
     if let (Some(bend), true) = (&bend, size <= 2) {
-        reader.energy(bend, "system / ladder / anharmonicity");
+        reader.energy(bend, &format!("{section} / anharmonicity"));
     }
     reader.define_levels(names.clone(), sources, Rungs { first, bend: bend.clone() });
-    let rungs = read_rungs(reader, node, size);
+    let rungs = read_rungs(reader, node, size, section);
     if bend.is_none() && !harmless {
         return None;
     }
     let entries = diagonal(reader, size, |_| place)?;
-    Some(System { place: node.place, kind: "ladder", names, entries, rungs: Some(rungs?) })
+    Some(System { place: node.place, kind: "ladder", names, entries, physics: Physics::Ladder(rungs?) })
 }
 
 /// Relative couplings of the rungs, from `couplings_grow`.
-fn read_rungs(reader: &mut Reader, node: &Node, size: usize) -> Option<Vec<Register>> {
-    let grow = reader.need(node, "couplings_grow", "system / ladder", "sqrt")?;
+fn read_rungs(reader: &mut Reader, node: &Node, size: usize, section: &str) -> Option<Vec<Register>> {
+    let grow = reader.need(node, "couplings_grow", section, "sqrt")?;
     if let Some(items) = grow.items() {
         if items.len() != size - 1 {
             let expected = format!("a list of {} relative sizes, one for each step of the ladder", size - 1);
@@ -145,11 +264,10 @@ fn read_rungs(reader: &mut Reader, node: &Node, size: usize) -> Option<Vec<Regis
     Some((1..size).map(|n| reader.constant((n as f64).sqrt(), grow.place)).collect())
 }
 
-fn read_hamiltonian(reader: &mut Reader, node: &Node) -> Option<System> {
-    let section = "system / hamiltonian";
+fn read_hamiltonian(reader: &mut Reader, node: &Node, _place: Place, section: &str) -> Option<System> {
     reader.fields(node, section, &["names", "unit", "rows", "rows_from", "lower"], &[])?;
     let names_node = reader.need(node, "names", section, "[left, right]");
-    let unit = reader.need(node, "unit", section, "MHz").and_then(|unit| reader.energy_unit(unit, "system / hamiltonian / unit"));
+    let unit = reader.need(node, "unit", section, "MHz").and_then(|unit| reader.energy_unit(unit, &format!("{section} / unit")));
     let mut names = Vec::new();
     for item in names_node.and_then(|names| reader.list(names, "names", "[left, right]")).unwrap_or_default() {
         let name = reader.text(item, "the name of a level", "left").unwrap_or_default().to_string();
@@ -175,7 +293,7 @@ fn read_hamiltonian(reader: &mut Reader, node: &Node) -> Option<System> {
             reader.define_levels(names.clone(), sources, Rungs::default());
             let entries = matrix::binary_entries(reader, &rows, size, unit, place)?;
             hermitian(reader, &names, &entries, unit)?;
-            Some(System { place: node.place, kind: "hamiltonian", names, entries, rungs: None })
+            Some(System::typed(node.place, "hamiltonian", names, entries))
         }
         Rows::Text(rows) => {
             let rows_place = node.get("rows").map_or(node.place, |rows| rows.place);
@@ -216,7 +334,7 @@ fn read_hamiltonian(reader: &mut Reader, node: &Node) -> Option<System> {
                 matrix::mirror_entries(reader, &mut entries);
             }
             hermitian(reader, &names, &entries, unit)?;
-            Some(System { place: node.place, kind: "hamiltonian", names, entries, rungs: None })
+            Some(System::typed(node.place, "hamiltonian", names, entries))
         }
     }
 }
@@ -280,6 +398,11 @@ fn hermitian(reader: &mut Reader, names: &[String], entries: &[MatrixEntry], uni
     Some(())
 }
 
+/// The operators that come with a system.
+pub fn natural_operators(system: &System) -> impl Iterator<Item = Operator> + '_ {
+    system.operators().into_iter().map(|name| Operator { name, place: system.place, source: OperatorSource::Natural })
+}
+
 /// Warns of two names that differ only by case.
 pub fn warn_of_case(reader: &mut Reader, kind: &'static str, names: &[String], place: Place) {
     for (k, name) in names.iter().enumerate() {
@@ -290,7 +413,8 @@ pub fn warn_of_case(reader: &mut Reader, kind: &'static str, names: &[String], p
 }
 
 /// Reads `operators:`; an operator that cannot be read leaves its name with no entries.
-pub fn read_operators(reader: &mut Reader, node: &Node, size: usize) -> Vec<Operator> {
+pub fn read_operators(reader: &mut Reader, node: &Node, system: &System) -> Vec<Operator> {
+    let size = system.names.len();
     let Some(entries) = node.entries() else {
         let fault = Fault::Shape {
             what: "operators".to_string(),
@@ -303,8 +427,14 @@ pub fn read_operators(reader: &mut Reader, node: &Node, size: usize) -> Vec<Oper
     let names: Vec<String> = entries.iter().map(|entry| entry.key.clone()).collect();
     warn_of_case(reader, "operator", &names, node.place);
     let mut found = Vec::new();
+    let taken = system.operators();
     for entry in entries {
         let section = format!("operators / {}", entry.key);
+        if taken.contains(&entry.key) {
+            let reason = format!("it is an operator of the {}", system.kind);
+            reader.error(entry.place, Fault::NameNotFree { name: entry.key.clone(), reason });
+            continue;
+        }
         if let Some(later) = entry.value.entries().and_then(|keys| keys.iter().find(|key| matches!(key.key.as_str(), "derivatives" | "in")))
         {
             reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: section.clone() });
@@ -314,7 +444,7 @@ pub fn read_operators(reader: &mut Reader, node: &Node, size: usize) -> Vec<Oper
             Some(_) => matrix::plain_matrix(reader, &entry.value, &section, size),
             None => None,
         };
-        found.push(Operator { name: entry.key.clone(), place: entry.place, entries: matrix.unwrap_or_default() });
+        found.push(Operator { name: entry.key.clone(), place: entry.place, source: OperatorSource::Typed(matrix.unwrap_or_default()) });
     }
     found
 }

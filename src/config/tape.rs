@@ -55,6 +55,8 @@ pub enum Entry {
     One(One, Register),
     /// An operation on two registers.
     Two(Two, Register, Register),
+    /// Energy of a level of a system built from its physics, Hz: known once the matrices are made.
+    Level(u32),
     /// In a formula of time: a register of the tape outside.
     Outer(Register),
     /// In a formula of time: t, in s.
@@ -65,6 +67,10 @@ pub enum Entry {
 pub trait Real: Copy {
     /// A constant.
     fn constant(value: f64) -> Self;
+    /// A constant of more digits than a double.
+    fn wide(value: Wide) -> Self {
+        Self::constant(value.value())
+    }
     /// Applies a function.
     fn one(self, function: One) -> Self;
     /// Applies an operation.
@@ -232,6 +238,10 @@ impl Real for Wide {
         Wide { high: value, low: 0.0 }
     }
 
+    fn wide(value: Wide) -> Wide {
+        value
+    }
+
     fn one(self, function: One) -> Wide {
         match function {
             One::Negative => Wide { high: -self.high, low: -self.low },
@@ -291,12 +301,23 @@ impl Tape {
         self.places[register as usize]
     }
 
-    /// Registers that change when the given numbers move, in order.
+    /// Registers that change when the given numbers move, in order; those that follow the levels of a built system alone are not
+    /// among them.
     pub fn dependents(&self, numbers: &[u32]) -> Vec<Register> {
+        self.moved(numbers, false)
+    }
+
+    /// Registers that need the levels of a built system, in order.
+    pub fn level_dependents(&self) -> Vec<Register> {
+        self.moved(&[], true)
+    }
+
+    fn moved(&self, numbers: &[u32], levels: bool) -> Vec<Register> {
         let mut moved = vec![false; self.entries.len()];
         for (register, entry) in self.entries.iter().enumerate() {
             moved[register] = match entry {
                 Entry::Constant(_) | Entry::Outer(_) | Entry::Time => false,
+                Entry::Level(_) => levels,
                 Entry::Number(index, from) => numbers.contains(index) || moved[*from as usize],
                 Entry::One(_, a) => moved[*a as usize],
                 Entry::Two(_, a, b) => moved[*a as usize] || moved[*b as usize],
@@ -306,36 +327,38 @@ impl Tape {
     }
 
     /// Runs one entry on the registers before it.
-    fn run<T: Real>(&self, register: Register, values: &[T], set: &[Option<T>], outer: &[f64], t: T) -> T {
+    fn run<T: Real>(&self, register: Register, values: &[T], set: &[Option<T>], levels: &[Wide]) -> T {
         match self.entries[register as usize] {
             Entry::Constant(value) => T::constant(value),
             Entry::Number(index, from) => set.get(index as usize).copied().flatten().unwrap_or(values[from as usize]),
             Entry::One(function, a) => values[a as usize].one(function),
             Entry::Two(operation, a, b) => values[a as usize].two(operation, values[b as usize]),
-            Entry::Outer(from) => T::constant(outer[from as usize]),
-            Entry::Time => t,
+            Entry::Level(level) => levels.get(level as usize).map_or(T::constant(f64::NAN), |level| T::wide(*level)),
+            // only formulas of time have these, and they run once bound
+            Entry::Outer(_) | Entry::Time => T::constant(f64::NAN),
         }
     }
 
-    /// All registers, `set[k]` standing in for named number k where it is given.
-    pub fn evaluate<T: Real>(&self, set: &[Option<T>]) -> Vec<T> {
+    /// All registers, `set[k]` standing in for named number k where it is given; `levels` are the energies of a built system in
+    /// Hz, without which what follows them is no number.
+    pub fn evaluate<T: Real>(&self, set: &[Option<T>], levels: &[Wide]) -> Vec<T> {
         let mut values = Vec::with_capacity(self.entries.len());
         for register in 0..self.entries.len() as Register {
-            let value = self.run(register, &values, set, &[], T::constant(0.0));
+            let value = self.run(register, &values, set, levels);
             values.push(value);
         }
         values
     }
 
-    /// All registers with the numbers as written.
+    /// All registers with the numbers as written; what follows the levels of a built system is no number yet.
     pub fn as_written(&self) -> Vec<f64> {
-        self.evaluate::<f64>(&[])
+        self.evaluate::<f64>(&[], &[])
     }
 
     /// Replays some registers in place.
-    pub fn replay(&self, which: &[Register], set: &[Option<f64>], values: &mut [f64]) {
+    pub fn replay(&self, which: &[Register], set: &[Option<f64>], levels: &[Wide], values: &mut [f64]) {
         for register in which {
-            values[*register as usize] = self.run(*register, values, set, &[], 0.0);
+            values[*register as usize] = self.run(*register, values, set, levels);
         }
     }
 }
@@ -408,6 +431,8 @@ impl BoundFormula {
                 Entry::One(function, a) => values[a as usize].one(function),
                 Entry::Two(operation, a, b) => values[a as usize].two(operation, values[b as usize]),
                 Entry::Outer(from) => T::constant(self.outer[from as usize]),
+                // a formula reads levels through the tape outside
+                Entry::Level(_) => T::constant(f64::NAN),
                 Entry::Time => t,
             };
         }

@@ -35,10 +35,9 @@ pub enum CouplingFault {
     NotHermitian,
 }
 
-/// The matrices of `drive`; `energies` is the diagonal of the static Hamiltonian.
-pub fn coupling(drive: &Drive, energies: &[f64], values: &[f64]) -> Result<Coupling, CouplingFault> {
+/// The matrices of `drive`; `matrix` is its matrix before scaling, `energies` the diagonal of the static Hamiltonian.
+pub fn coupling(drive: &Drive, mut matrix: Matrix, energies: &[f64]) -> Result<Coupling, CouplingFault> {
     let size = energies.len();
-    let mut matrix = model::dense(size, &drive.entries, values);
     let hermitian = model::is_hermitian(&matrix, 1e-12);
     if !hermitian && drive.form != Form::OneSided {
         return Err(CouplingFault::NotHermitian);

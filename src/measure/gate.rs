@@ -12,6 +12,7 @@ use super::Last;
 use crate::config::document::Document;
 use crate::config::record::{FreeZ, Gate, Target};
 use crate::model;
+use crate::model::built::Built;
 use crate::problem::Matrix;
 use crate::units::{cis_turns, sin_cos_turns, RAD_PER_TURN};
 
@@ -41,7 +42,7 @@ pub struct GateFigures {
 
 impl GateJudge {
     /// For `gate` with the numbers of one point; `energies_hz` orders two levels.
-    pub fn new(document: &Document, gate: &Gate, values: &[f64], energies_hz: &[f64]) -> GateJudge {
+    pub fn new(document: &Document, built: &Built, gate: &Gate, values: &[f64], energies_hz: &[f64]) -> GateJudge {
         let size = gate.within.len();
         let first_is_lower = size != 2 || energies_hz[gate.within[0]] <= energies_hz[gate.within[1]];
         let value = |quantity: crate::config::reader::Quantity| values[quantity.register as usize];
@@ -66,7 +67,7 @@ impl GateJudge {
             FreeZ::Operators(operators) => operators
                 .iter()
                 .map(|index| {
-                    let matrix = model::dense(document.system.names.len(), &document.operators[*index].entries, values);
+                    let matrix = model::operator(document, built, *index, values);
                     gate.within.iter().map(|level| matrix[(*level, *level)].re).collect()
                 })
                 .collect(),

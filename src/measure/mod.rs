@@ -19,6 +19,7 @@ mod time_in;
 
 use crate::config::document::Document;
 use crate::config::record::Item;
+use crate::model::built::Built;
 use crate::problem::{Matrix, Moment, Problem, State};
 use crate::propagate::Demand;
 
@@ -91,7 +92,7 @@ pub struct Observables<'a> {
 }
 
 /// The quantities that a config records, with the numbers of one point.
-pub fn observables<'a>(document: &Document, values: &[f64], energies_hz: &[f64], problem: &'a Problem) -> Observables<'a> {
+pub fn observables<'a>(document: &Document, built: &Built, values: &[f64], energies_hz: &[f64], problem: &'a Problem) -> Observables<'a> {
     let names = &document.system.names;
     let stays = |level: &usize| !document.frame.eliminated().contains(level);
     let mut found = Observables { quantities: Vec::new(), last: Vec::new(), gate: None, propagator: false, demand: Demand::default() };
@@ -104,7 +105,7 @@ pub fn observables<'a>(document: &Document, values: &[f64], energies_hz: &[f64],
             Item::OutsideOf(levels) => Box::new(outside::Outside::new(levels.clone())),
             Item::Coherence(pairs) => Box::new(coherence::Coherences::new(names, pairs)),
             Item::Bloch(pairs) => Box::new(bloch::BlochVectors::new(names, pairs)),
-            Item::MeanOf(operators) => Box::new(mean::Means::new(document, values, operators)),
+            Item::MeanOf(operators) => Box::new(mean::Means::new(document, built, values, operators)),
             Item::Energy => Box::new(energy::Energy::new(problem)),
             Item::TimeIn(levels) => {
                 found.demand.time_in = true;
@@ -125,7 +126,7 @@ pub fn observables<'a>(document: &Document, values: &[f64], energies_hz: &[f64],
             Item::Gate(gate) => {
                 found.demand.propagator = true;
                 found.demand.within = gate.within.clone();
-                let judge = gate::GateJudge::new(document, gate, values, energies_hz);
+                let judge = gate::GateJudge::new(document, built, gate, values, energies_hz);
                 found.last.push(Box::new(judge.clone()));
                 found.gate = Some(judge);
                 continue;

@@ -1,14 +1,59 @@
 //! Matrices in a basis: the checked config's entries become dense Hermitian matrices. Knows nothing of time.
 
+pub mod built;
 pub mod commutators;
 pub mod gaps;
+mod mode;
+pub mod spin;
 
 use num_complex::Complex64;
 
+use crate::config::document::Document;
+use crate::config::drives::{Drive, DriveMatrix};
 use crate::config::matrix::MatrixEntry;
+use crate::config::messages::Mistake;
 use crate::config::state::State;
+use crate::config::system::{OperatorSource, Physics, System};
 use crate::problem::{Matrix, Vector};
 use crate::units::cis_turns;
+
+use built::Built;
+
+/// The system of a document at one point, in its working basis; `values` are the registers of the tape, of which those that
+/// follow its own levels need not be known.
+pub fn build(document: &Document, values: &[f64]) -> Result<Built, Mistake> {
+    build_system(&document.system, values)
+}
+
+/// A system as built, without a change of basis. Every kind has its line here.
+fn build_system(system: &System, values: &[f64]) -> Result<Built, Mistake> {
+    let size = system.names.len();
+    Ok(match &system.physics {
+        Physics::Typed => Built::new(dense(size, &system.entries, values)),
+        Physics::Ladder(rungs) => mode::ladder(system.kind, dense(size, &system.entries, values), rungs, values),
+        Physics::Spin(spin) => spin::build(spin, values),
+        Physics::Mode(mode) => mode::build(mode, values),
+    })
+}
+
+/// The named operator of this index in the working basis, in SI units.
+pub fn operator(document: &Document, built: &Built, index: usize, values: &[f64]) -> Matrix {
+    let operator = &document.operators[index];
+    match &operator.source {
+        OperatorSource::Typed(entries) => dense(built.size(), entries, values),
+        OperatorSource::Natural => built.operator(&operator.name),
+    }
+}
+
+/// The matrix of a drive in the working basis, not yet scaled: plain, or in Hz/T where it is that of a magnetic moment.
+pub fn drive_matrix(document: &Document, built: &Built, drive: &Drive, values: &[f64]) -> Matrix {
+    match &drive.matrix {
+        DriveMatrix::Typed(entries) => dense(built.size(), entries, values),
+        DriveMatrix::Operator(index) => operator(document, built, *index, values),
+        DriveMatrix::Quanta(part) => built.quanta(part),
+        DriveMatrix::Moment(part, direction) => built.moment(part, direction.map(|component| values[component.register as usize])),
+    }
+}
 
 /// The matrix of written entries, `size` x `size`, in the unit of the entries; `values` are the registers of the tape.
 pub fn dense(size: usize, entries: &[MatrixEntry], values: &[f64]) -> Matrix {

@@ -1,0 +1,154 @@
+//! A built system: the static matrix and the operators of its kind, in the working basis.
+
+use std::sync::Arc;
+
+use num_complex::Complex64;
+
+use crate::config::tape::Wide;
+use crate::problem::Matrix;
+
+/// A matrix that acts on one part of a joint system: 1 of size `before`, times the block, times 1 of size `after`.
+#[derive(Debug, Clone)]
+pub struct Block {
+    /// Its name, such as `spin_x` or `electron.spin_x`.
+    pub name: String,
+    /// SI unit of its entries, `1` for none.
+    pub unit: &'static str,
+    /// The block.
+    pub matrix: Arc<Matrix>,
+    /// Number of states of all parts to its left.
+    pub before: usize,
+    /// Number of states of all parts to its right.
+    pub after: usize,
+    /// Largest error of an entry (grid, quadrature), in the unit of the entries; 0 where there is none but rounding.
+    pub error: f64,
+}
+
+impl Block {
+    /// A matrix of a system that is no part.
+    pub fn new(name: &str, unit: &'static str, matrix: Matrix) -> Block {
+        Block { name: name.to_string(), unit, matrix: Arc::new(matrix), before: 1, after: 1, error: 0.0 }
+    }
+
+    /// The same as a part of a joint system.
+    pub fn within(&self, part: &str, before: usize, after: usize) -> Block {
+        let name = if self.name.is_empty() { part.to_string() } else { format!("{part}.{}", self.name) };
+        Block { name, before: before * self.before, after: self.after * after, ..self.clone() }
+    }
+
+    /// The whole matrix, in the basis as built.
+    pub fn dense(&self) -> Matrix {
+        let inner = self.matrix.nrows();
+        let size = self.before * inner * self.after;
+        let mut whole = Matrix::zeros(size, size);
+        self.add_to(&mut whole, Complex64::from(1.0));
+        whole
+    }
+
+    /// Adds `factor` times the whole matrix to `sum`.
+    pub fn add_to(&self, sum: &mut Matrix, factor: Complex64) {
+        let inner = self.matrix.nrows();
+        for column in 0..inner {
+            for row in 0..inner {
+                let entry = self.matrix[(row, column)] * factor;
+                if entry == Complex64::from(0.0) {
+                    continue;
+                }
+                for outer in 0..self.before {
+                    for last in 0..self.after {
+                        let at = |k: usize| (outer * inner + k) * self.after + last;
+                        sum[(at(row), at(column))] += entry;
+                    }
+                }
+            }
+        }
+    }
+}
+
+/// What a drive that acts on a part multiplies.
+#[derive(Debug, Clone)]
+pub struct Acting {
+    /// The kind, or the part of a joint system.
+    pub name: String,
+    /// lower + raise of a mode or ladder, no dimension.
+    pub quanta: Option<Block>,
+    /// Energy of the magnetic moment per tesla along x, y and z, Hz/T.
+    pub moment: Option<[Block; 3]>,
+}
+
+/// A system at one point.
+#[derive(Debug, Clone)]
+pub struct Built {
+    /// Static matrix over h in the working basis, Hz, Hermitian.
+    pub statics_hz: Matrix,
+    /// Its diagonal, Hz, with more digits than a double where the kind has them.
+    pub energies: Vec<Wide>,
+    /// Operators of the kind, in the basis as built.
+    pub operators: Vec<Block>,
+    /// What `acts_on` may name, in the basis as built.
+    pub acting: Vec<Acting>,
+    /// Largest error of a level (grid, quadrature, truncation), Hz; 0 where there is none but rounding.
+    pub error_hz: f64,
+    /// Columns: the states of the working basis in those as built; none where they are the same.
+    pub basis: Option<Arc<Matrix>>,
+}
+
+impl Built {
+    /// A system with nothing but its static matrix, Hz.
+    pub fn new(statics_hz: Matrix) -> Built {
+        let energies = statics_hz.diagonal().iter().map(|entry| Wide { high: entry.re, low: 0.0 }).collect();
+        Built { statics_hz, energies, operators: Vec::new(), acting: Vec::new(), error_hz: 0.0, basis: None }
+    }
+
+    /// Number of states of the working basis.
+    pub fn size(&self) -> usize {
+        self.statics_hz.nrows()
+    }
+
+    /// A matrix of the basis as built, in the working basis.
+    pub fn to_working(&self, as_built: Matrix) -> Matrix {
+        match &self.basis {
+            None => as_built,
+            Some(basis) => basis.adjoint() * as_built * basis.as_ref(),
+        }
+    }
+
+    /// The operator of this name in the working basis; zero where there is none, which reading has excluded.
+    pub fn operator(&self, name: &str) -> Matrix {
+        self.whole(self.operators.iter().find(|block| block.name == name))
+    }
+
+    /// SI unit of the operator of this name; `1` for typed ones.
+    pub fn unit(&self, name: &str) -> &'static str {
+        self.operators.iter().find(|block| block.name == name).map_or("1", |block| block.unit)
+    }
+
+    /// lower + raise of a part, in the working basis.
+    pub fn quanta(&self, part: &str) -> Matrix {
+        self.whole(self.acts(part).and_then(|acting| acting.quanta.as_ref()))
+    }
+
+    /// Energy of the magnetic moment of a part per tesla along a direction of any length, Hz/T, in the working basis.
+    pub fn moment(&self, part: &str, direction: [f64; 3]) -> Matrix {
+        let length = direction.iter().map(|component| component * component).sum::<f64>().sqrt();
+        let Some(moment) = self.acts(part).and_then(|acting| acting.moment.as_ref()) else {
+            return self.whole(None);
+        };
+        let mut whole = moment[0].dense() * Complex64::from(direction[0] / length);
+        for (block, component) in moment.iter().zip(direction).skip(1) {
+            block.add_to(&mut whole, Complex64::from(component / length));
+        }
+        self.to_working(whole)
+    }
+
+    fn acts(&self, part: &str) -> Option<&Acting> {
+        self.acting.iter().find(|acting| acting.name == part)
+    }
+
+    fn whole(&self, block: Option<&Block>) -> Matrix {
+        match block {
+            Some(block) => self.to_working(block.dense()),
+            None => Matrix::zeros(self.size(), self.size()),
+        }
+    }
+}
