@@ -396,7 +396,7 @@ impl Formula {
                 Entry::One(function, a) => values[a as usize].one(function),
                 Entry::Two(operation, a, b) => values[a as usize].two(operation, values[b as usize]),
                 Entry::Outer(from) => outer(from),
-                Entry::Time => 0.0,
+                Entry::Level(_) | Entry::Time => 0.0,
             };
             values.push(value);
         }
