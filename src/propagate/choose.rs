@@ -96,6 +96,9 @@ fn slices_ns(load: &Load) -> f64 {
 // accuracies 1e-6 to 1e-11 (the ignored test `print_loads_and_seconds`), and meet them within a factor of 1.6 and 1.4 on average.
 
 fn smooth_ns(load: &Load) -> f64 {
+    if load.coordinates > 0 {
+        return smooth_open_ns(load);
+    }
     let levels = load.levels as f64;
     let more_columns = (load.columns - 1) as f64;
     let steps = (89.0 * load.coupling_turns + 43.0 * load.entry_turns + 45.0 * load.changing as f64) * accuracy_factor(load, 10.0);
@@ -105,6 +108,9 @@ fn smooth_ns(load: &Load) -> f64 {
 }
 
 fn geometric_ns(load: &Load) -> f64 {
+    if load.coordinates > 0 {
+        return geometric_open_ns(load);
+    }
     let levels = load.levels as f64;
     let more_columns = (load.columns - 1) as f64;
     let steps = (44.0 * load.swing_turns + 51.0 * load.still_turns + 18.5 * load.rises) * accuracy_factor(load, 6.0);
@@ -113,9 +119,23 @@ fn geometric_ns(load: &Load) -> f64 {
     (steps + load.moments as f64) * step_ns
 }
 
+fn smooth_open_ns(load: &Load) -> f64 {
+    let (entries, size, columns) = (load.nonzero as f64, load.coordinates as f64, load.columns as f64);
+    let steps = (89.0 * load.coupling_turns + 43.0 * load.entry_turns + 8.0 * load.decays + 45.0 * load.changing as f64)
+        * accuracy_factor(load, 10.0);
+    (steps + load.moments as f64) * (600.0 + 12.0 * (1.5 * entries * columns + 5.0 * size * columns))
+}
+
+fn geometric_open_ns(load: &Load) -> f64 {
+    let (size, columns) = (load.coordinates as f64, load.columns as f64);
+    let steps = (44.0 * load.swing_turns + 51.0 * load.still_turns + 4.0 * load.decays + 18.5 * load.rises) * accuracy_factor(load, 6.0);
+    (steps + load.moments as f64) * (800.0 + 6.0 * size.powi(3) * 0.4 + 12.0 * size * size * columns)
+}
+
 /// The method for a problem, and why.
 pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
-    let spent = |method: Method| METHODS.iter().any(|row| row.method == method && row.time_in);
+    // of a density matrix every method gives the times spent
+    let spent = |method: Method| load.coordinates > 0 || METHODS.iter().any(|row| row.method == method && row.time_in);
     if let Some(method) = wished {
         if load.time_in && load.changing > 0 && !spent(method) {
             return (Method::Smooth, format!("{} was asked for, but it gives no time spent in a level; smooth does", method.word()));
@@ -145,7 +165,7 @@ pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
         return (Method::ConstantSteps, format!("H is constant {where_}{how}, so exponentials are exact however long they last"));
     }
     let (smooth, geometric) = (smooth_ns(load), geometric_ns(load));
-    if geometric < smooth && !load.time_in {
+    if geometric < smooth && (!load.time_in || load.coordinates > 0) {
         let why =
             format!(
             "H swings the state through {} turns but itself turns only {} times and its envelopes rise or fall {} times, with {} levels",

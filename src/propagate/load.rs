@@ -43,6 +43,14 @@ pub struct Load {
     pub entries_rad: f64,
     /// Largest turning frequency times time, over everything, turns.
     pub carrier_turns: f64,
+    /// Of an open problem: real coordinates of a density matrix; else 0.
+    pub coordinates: usize,
+    /// Entries of its generator where it changes.
+    pub nonzero: usize,
+    /// Lifetimes of the fastest decay that pass where it changes.
+    pub decays: f64,
+    /// The same over everything.
+    pub all_decays: f64,
 }
 
 /// Bound of ||H - middle of the diagonal|| of a picture over the segment, in Hz; smooth envelopes by samples.
@@ -63,7 +71,7 @@ pub(super) fn size_hz(picture: &Picture, terms: &[Term], length_s: f64) -> f64 {
 const SAMPLES: u32 = 32;
 
 /// Largest sampled |c| in rad/s, and the sampled way of c over that.
-fn height(term: &Term, length_s: f64) -> (f64, f64) {
+pub(super) fn height(term: &Term, length_s: f64) -> (f64, f64) {
     if term.is_constant() {
         return (term.slow(0.0).norm(), 0.0);
     }
@@ -100,22 +108,24 @@ fn half_range(values: impl Iterator<Item = f64>) -> f64 {
 }
 
 /// Largest sum of moduli in a row of B + adjoint, the diagonal counted too.
-fn row_bound(b: &Matrix) -> f64 {
+pub(super) fn row_bound(b: &Matrix) -> f64 {
     (0..b.nrows()).map(|j| (0..b.ncols()).map(|k| b[(j, k)].norm() + b[(k, j)].norm()).sum::<f64>()).fold(0.0, f64::max)
 }
 
+/// Bounds of the size of the static part: its mean taken off, and with the diagonal as it stands, rad/s.
+pub(super) fn resting(problem: &Problem) -> (f64, f64) {
+    let n = problem.dim();
+    let a = &problem.statics;
+    let off = (0..n).map(|j| (0..n).filter(|k| *k != j).map(|k| a[(j, k)].norm()).sum::<f64>()).fold(0.0, f64::max);
+    (off + half_range((0..n).map(|j| a[(j, j)].re)), off + (0..n).map(|j| a[(j, j)].re.abs()).fold(0.0, f64::max))
+}
+
 impl Load {
-    /// The load, and for each segment whether it is done by its integral (never without `integrals`).
-    pub(super) fn of(problem: &Problem, demand: &Demand, accuracy: f64, integrals: bool, pictures: &mut Pictures) -> (Self, Vec<bool>) {
-        let n = problem.dim();
-        let a = &problem.statics;
-        let bounds: Vec<f64> = problem.matrices.iter().map(row_bound).collect();
-        let off = (0..n).map(|j| (0..n).filter(|k| *k != j).map(|k| a[(j, k)].norm()).sum::<f64>()).fold(0.0, f64::max);
-        let resting_rad_s = off + half_range((0..n).map(|j| a[(j, j)].re));
-        let entries_rad_s = off + (0..n).map(|j| a[(j, j)].re.abs()).fold(0.0, f64::max);
-        let mut load = Load {
-            levels: n,
-            columns: if demand.propagator { n + 1 } else { 1 },
+    /// Sizes that need no look at the segments; one column.
+    pub(super) fn empty(problem: &Problem, demand: &Demand, accuracy: f64) -> Self {
+        Load {
+            levels: problem.dim(),
+            columns: 1,
             time_in: demand.time_in,
             segments: problem.segments.len(),
             moments: problem.moments.len(),
@@ -131,7 +141,19 @@ impl Load {
             lab_rad: 0.0,
             entries_rad: 0.0,
             carrier_turns: 0.0,
-        };
+            coordinates: 0,
+            nonzero: 0,
+            decays: 0.0,
+            all_decays: 0.0,
+        }
+    }
+
+    /// The load, and for each segment whether it is done by its integral (never without `integrals`).
+    pub(super) fn of(problem: &Problem, demand: &Demand, accuracy: f64, integrals: bool, pictures: &mut Pictures) -> (Self, Vec<bool>) {
+        let n = problem.dim();
+        let bounds: Vec<f64> = problem.matrices.iter().map(row_bound).collect();
+        let (resting_rad_s, entries_rad_s) = resting(problem);
+        let mut load = Load { columns: if demand.propagator { n + 1 } else { 1 }, ..Load::empty(problem, demand, accuracy) };
         let mut by_integral = vec![false; problem.segments.len()];
         for (index, segment) in problem.segments.iter().enumerate() {
             let (terms, length_s) = (problem.terms_of(segment), segment.length_s);

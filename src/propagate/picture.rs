@@ -24,6 +24,8 @@ pub(super) enum Kind {
     Tied,
     /// Nothing on the diagonal.
     Free,
+    /// F = 0: the frame of the problem itself.
+    Rest,
 }
 
 /// An entry (row, column) of a matrix; its adjoint is implied.
@@ -168,6 +170,7 @@ pub(super) struct Pictures<'a> {
     problem: &'a Problem,
     tied: Vec<Rc<Picture>>,
     free: Vec<Rc<Picture>>,
+    rest: Vec<Rc<Picture>>,
     replaced: usize,
 }
 
@@ -177,7 +180,7 @@ const WEAK: f64 = 0.1;
 
 impl<'a> Pictures<'a> {
     pub fn new(problem: &'a Problem) -> Self {
-        Pictures { problem, tied: Vec::new(), free: Vec::new(), replaced: 0 }
+        Pictures { problem, tied: Vec::new(), free: Vec::new(), rest: Vec::new(), replaced: 0 }
     }
 
     /// The picture of a segment.
@@ -186,6 +189,7 @@ impl<'a> Pictures<'a> {
         let kept = match kind {
             Kind::Tied => &mut self.tied,
             Kind::Free => &mut self.free,
+            Kind::Rest => &mut self.rest,
         };
         let same = |picture: &Rc<Picture>| {
             picture.key.len() == terms.len()
@@ -197,6 +201,7 @@ impl<'a> Pictures<'a> {
         let key: Vec<_> = terms.iter().map(|term| (term.matrix, term.turns_hz.to_bits())).collect();
         let made = Rc::new(match kind {
             Kind::Free => Picture::new(self.problem, terms, interaction(&self.problem.statics), key),
+            Kind::Rest => Picture::new(self.problem, terms, vec![0.0; self.problem.dim()], key),
             Kind::Tied => {
                 let tied = Picture::new(self.problem, terms, ties(self.problem, terms), key.clone());
                 if tied.fastest_hz == 0.0 {

@@ -11,6 +11,7 @@ use super::asked::{Asked, Demand, Recorder};
 use super::choose::{choose, Method, METHODS};
 use super::cross_check::cross_check;
 use super::load::Load;
+use super::open;
 use super::picture::Pictures;
 use super::run::{run, Fineness, Route, Work};
 use super::solved::{Resolution, Solved};
@@ -44,6 +45,39 @@ fn largest_figure(coarse: &[f64], fine: &[f64], floor: f64) -> f64 {
     coarse.iter().zip(fine).map(|(c, f)| figure(*c, *f, floor)).fold(floor, f64::max)
 }
 
+/// The runs of a problem: amplitudes where it is closed, a density matrix where it is open.
+enum Way<'p> {
+    Closed(Route<'p>),
+    Open(Box<open::Route<'p>>),
+}
+
+impl<'p> Way<'p> {
+    /// The way, the load, the method and why.
+    fn new(problem: &'p Problem, demand: &Demand, asked: &Asked) -> (Way<'p>, Load, Method, String) {
+        if problem.is_open() {
+            let mut route = open::Route::new(problem, demand);
+            let load = Load::of_open(problem, demand, asked.accuracy, &mut route);
+            let (method, reason) = choose(&load, asked.method);
+            route.carry(method, load.changing_s);
+            return (Way::Open(Box::new(route)), load, method, reason);
+        }
+        let mut pictures = Pictures::new(problem);
+        // by its integral only where the choice is ours, and never where times are spent in levels
+        let integrals = asked.method.is_none() && !demand.time_in;
+        let (load, by_integral) = Load::of(problem, demand, asked.accuracy, integrals, &mut pictures);
+        let (method, reason) = choose(&load, asked.method);
+        let route = Route { problem, demand: demand.clone(), method, by_integral, changing_s: load.changing_s, pictures };
+        (Way::Closed(route), load, method, reason)
+    }
+
+    fn run(&mut self, fineness: &Fineness, left: f64, recorder: &mut dyn Recorder) -> Work {
+        match self {
+            Way::Closed(route) => run(route, fineness, left, recorder),
+            Way::Open(route) => route.run(fineness, left, recorder),
+        }
+    }
+}
+
 /// One finished run.
 struct Ran<R> {
     recorder: R,
@@ -53,11 +87,7 @@ struct Ran<R> {
 
 /// Solves `problem` and measures the error of every recorded number; `new_recorder` is called once for each run.
 pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new_recorder: impl Fn() -> R) -> Solved<R> {
-    let mut pictures = Pictures::new(problem);
-    // by its integral only where the choice is ours, and never where times are spent in levels
-    let integrals = asked.method.is_none() && !demand.time_in;
-    let (load, by_integral) = Load::of(problem, demand, asked.accuracy, integrals, &mut pictures);
-    let (method, mut reason) = choose(&load, asked.method);
+    let (mut way, load, method, mut reason) = Way::new(problem, demand, asked);
     // Runge-Kutta sums are compensated; all other steps are products, one after the other.
     let floor_of = |work: &Work| load.floor(if load.changing > 0 && method != Method::Smooth { work.steps } else { load.segments as u64 });
     let mut left = MOST_MULTIPLICATIONS;
@@ -69,10 +99,9 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         reason += &format!("; it was not run, since it would take about {:.0e} s", ns * 1e-9);
     }
     let mut products = 0;
-    let mut route = Route { problem, demand: demand.clone(), method, by_integral, changing_s: load.changing_s, pictures };
     let mut go = |fineness: Fineness| {
         let mut recorder = new_recorder();
-        let work = run(&mut route, &fineness, left, &mut recorder);
+        let work = way.run(&fineness, left, &mut recorder);
         left = work.left;
         products += work.products;
         Ran { recorder, fineness, work }
@@ -108,8 +137,14 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
     let resolution = |ran: &Ran<R>| Resolution { words: words(method, &load, ran), steps: ran.work.steps };
     let resolutions = [resolution(&coarse), resolution(&fine)];
     let steps = coarse.work.steps;
-    let cross_check =
-        asked.cross_check.then(|| cross_check(problem, demand, &load, asked.accuracy, coarse.recorder.numbers(), &new_recorder));
+    let cross_check = asked.cross_check.then(|| {
+        let numbers = coarse.recorder.numbers();
+        if problem.is_open() {
+            open::cross_check(problem, demand, &load, asked.accuracy, numbers, &new_recorder)
+        } else {
+            cross_check(problem, demand, &load, asked.accuracy, numbers, &new_recorder)
+        }
+    });
     Solved {
         recorded: coarse.recorder,
         finer: fine.recorder,

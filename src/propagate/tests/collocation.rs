@@ -40,12 +40,38 @@ fn table(nodes: &[f64; NODES], weights: &[f64; NODES]) -> [[f64; NODES]; NODES] 
     a
 }
 
-/// Shows every moment to `kept`, in steps through which H and its turning go by at most `most_rad`.
-pub fn solve(problem: &Problem, most_rad: f64, timed: bool, kept: &mut Kept) {
+/// One step of `h` seconds from `at` of d(y)/dt = M(t) y; `look` sees weight times h and y at each node.
+pub fn step(m: &impl Fn(f64) -> Matrix, at: f64, h: f64, y: &mut Matrix, mut look: impl FnMut(f64, &Matrix)) {
     let (nodes, weights) = gauss();
     let a = table(&nodes, &weights);
+    let n = y.nrows();
+    let mut system = DMatrix::<Complex64>::identity(n * NODES, n * NODES);
+    let mut right = DMatrix::<Complex64>::zeros(n * NODES, 1);
+    for i in 0..NODES {
+        let slope = m(at + nodes[i] * h);
+        for (j, weight) in a[i].iter().enumerate() {
+            let mut block = system.view_mut((i * n, j * n), (n, n));
+            block -= &slope * re(h * weight);
+        }
+        right.view_mut((i * n, 0), (n, 1)).copy_from(&(&slope * &*y));
+    }
+    let k = system.lu().solve(&right).expect("close to the identity");
+    for i in 0..NODES {
+        let mut inner = y.clone();
+        for (j, weight) in a[i].iter().enumerate() {
+            inner += k.view((j * n, 0), (n, 1)) * re(h * weight);
+        }
+        look(h * weights[i], &inner);
+    }
+    for (i, weight) in weights.iter().enumerate() {
+        *y += k.view((i * n, 0), (n, 1)) * re(h * weight);
+    }
+}
+
+/// Shows every moment to `kept`, in steps through which H and its turning go by at most `most_rad`.
+pub fn solve(problem: &Problem, most_rad: f64, timed: bool, kept: &mut Kept) {
     let n = problem.dim();
-    let mut psi = problem.start.amplitudes().expect("closed").clone();
+    let mut psi = Matrix::from_column_slice(n, 1, problem.start.amplitudes().expect("closed").as_slice());
     let mut next = 0;
     let mut spent = vec![0.0; n];
     for (index, segment) in problem.segments.iter().enumerate() {
@@ -57,38 +83,21 @@ pub fn solve(problem: &Problem, most_rad: f64, timed: bool, kept: &mut Kept) {
             let stop = if here { problem.moments[next].offset_s } else { segment.length_s };
             let steps = ((turning + size + 20.0 / segment.length_s) * (stop - tau) / most_rad).ceil() as usize;
             let from = tau;
-            for step in 0..steps {
-                let at = from + (stop - from) * step as f64 / steps as f64;
-                let h = from + (stop - from) * (step + 1) as f64 / steps as f64 - at;
-                let mut system = DMatrix::<Complex64>::identity(n * NODES, n * NODES);
-                let mut right = DMatrix::<Complex64>::zeros(n * NODES, 1);
-                for i in 0..NODES {
-                    let slope = problem.hamiltonian(segment, at + nodes[i] * h) * Complex64::new(0.0, -1.0);
-                    for (j, weight) in a[i].iter().enumerate() {
-                        let mut block = system.view_mut((i * n, j * n), (n, n));
-                        block -= &slope * re(h * weight);
-                    }
-                    right.view_mut((i * n, 0), (n, 1)).copy_from(&(&slope * &psi));
-                }
-                let k = system.lu().solve(&right).expect("close to the identity");
-                for i in 0..NODES {
-                    let mut inner = psi.clone();
-                    for (j, weight) in a[i].iter().enumerate() {
-                        inner += k.view((j * n, 0), (n, 1)) * re(h * weight);
-                    }
+            for number in 0..steps {
+                let at = from + (stop - from) * number as f64 / steps as f64;
+                let h = from + (stop - from) * (number + 1) as f64 / steps as f64 - at;
+                let slope = |t: f64| problem.hamiltonian(segment, t) * Complex64::new(0.0, -1.0);
+                step(&slope, at, h, &mut psi, |weight, inner| {
                     for (time, amplitude) in spent.iter_mut().zip(inner.iter()) {
-                        *time += h * weights[i] * amplitude.norm_sqr();
+                        *time += weight * amplitude.norm_sqr();
                     }
-                }
-                for (i, weight) in weights.iter().enumerate() {
-                    psi += k.view((i * n, 0), (n, 1)) * re(h * weight);
-                }
+                });
             }
             tau = stop;
             if !here {
                 break;
             }
-            kept.see(next, State::Pure(&psi), if timed { &spent } else { &[] });
+            kept.see(next, State::Pure(&Vector::from_column_slice(psi.as_slice())), if timed { &spent } else { &[] });
             next += 1;
         }
     }

@@ -3,6 +3,7 @@
 mod closed_forms;
 mod collocation;
 mod laws;
+mod open;
 mod reference;
 mod speed;
 mod statistics;

@@ -36,7 +36,7 @@ impl Random {
         (self.next() >> 33) as usize % count
     }
 
-    fn complex(&mut self) -> Complex64 {
+    pub fn complex(&mut self) -> Complex64 {
         Complex64::new(self.between(-1.0, 1.0), self.between(-1.0, 1.0))
     }
 }

@@ -1,0 +1,26 @@
+//! Open systems: the density matrix as real coordinates x, d(x)/dt = G(t) x.
+//!
+//! | file | what it does |
+//! |---|---|
+//! | `coordinates.rs` | Hermitian matrix to real numbers and back; operators of a channel |
+//! | `generator.rs` | G in the picture of a segment, sparse |
+//! | `exponential.rs` | exp(G tau), dense and acting |
+//! | `constant.rs` | stretches of constant G |
+//! | `even_steps.rs` | slices and Magnus steps |
+//! | `smooth.rs` | Runge-Kutta 8(5,3) |
+//! | `run.rs` | one run over all segments |
+//! | `load.rs` | how large, fast and long a problem is |
+//! | `cross_check.rs` | the independent second route |
+
+mod constant;
+mod coordinates;
+mod cross_check;
+mod even_steps;
+mod exponential;
+mod generator;
+mod load;
+mod run;
+mod smooth;
+
+pub(super) use cross_check::cross_check;
+pub(super) use run::Route;
