@@ -55,7 +55,7 @@ pub mod constants {
     pub const MAGNETIC: f64 = 1.256_637_061_27e-6;
 }
 
-use constants::{BOHR_MAGNETON, BOLTZMANN, CHARGE, DALTON, ELECTRON_MASS, LIGHT, NUCLEAR_MAGNETON, PLANCK};
+use constants::{BOHR_MAGNETON, BOLTZMANN, CHARGE, DALTON, ELECTRON_MASS, LIGHT, MAGNETIC, NUCLEAR_MAGNETON, PLANCK};
 
 /// Hz per kelvin: k/h, for energies given as temperatures.
 pub const HZ_PER_KELVIN: f64 = BOLTZMANN / PLANCK;
@@ -67,6 +67,8 @@ pub const HZ_PER_CM: f64 = LIGHT * 100.0;
 pub const BOHR_HZ_PER_TESLA: f64 = BOHR_MAGNETON / PLANCK;
 /// Hz per tesla of a nuclear magneton: mu_N/h.
 pub const NUCLEAR_HZ_PER_TESLA: f64 = NUCLEAR_MAGNETON / PLANCK;
+/// Energy over h of two moments, mu0 h/(4 pi): times Hz/T, Hz/T and /m^3.
+pub const DIPOLAR_HZ: f64 = MAGNETIC * PLANCK / (2.0 * RAD_PER_TURN);
 /// Vacuum wavelength in m of a gap in Hz, and back: c over it.
 pub const WAVELENGTH_M_HZ: f64 = LIGHT;
 /// Radians per turn in the ratio of a linewidth (full width in Hz) and a rate: rate = 2 pi linewidth.

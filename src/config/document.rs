@@ -268,6 +268,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     operators.extend(super::system::natural_operators(&known_system));
     if let Some(system) = &system {
         levels_from_themselves(reader, system);
+        reader.parts = system.parts();
     }
     let (drives, drive_names) = match root.get("drives") {
         Some(node) if readable => super::drives::read_drives(reader, node, &known_system, &operators),

@@ -150,6 +150,8 @@ pub struct Reader {
     pub archive: Option<PathBuf>,
     /// Defaults used: path of keys, value.
     pub defaults: Vec<(String, String)>,
+    /// Parts of the system with the names of their levels; none where it has no parts.
+    pub parts: Vec<(String, Vec<String>)>,
     /// Registers whose value shaped the reading itself: counts of levels and repeats.
     pub structural: Vec<Register>,
     numbers: Vec<Number>,
@@ -183,6 +185,7 @@ impl Reader {
             folder,
             archive: None,
             defaults: Vec::new(),
+            parts: Vec::new(),
             structural: Vec::new(),
             numbers: Vec::new(),
             by_name: HashMap::new(),

@@ -6,6 +6,7 @@ use super::messages::{short, Fault};
 use super::npy;
 use super::place::Place;
 use super::reader::{Quantity, Reader};
+use super::system::parts::read_joint_level;
 use super::tree::Node;
 use crate::units::Dim;
 
@@ -31,6 +32,11 @@ pub fn read_start(reader: &mut Reader, node: &Node) -> Option<State> {
     let Some(entries) = node.entries() else {
         return reader.level(node).map(State::Level);
     };
+    let of_all = ["superposition", "state_from"].into_iter().chain(LATER);
+    if !reader.parts.is_empty() && !of_all.into_iter().any(|word| entries.iter().any(|entry| entry.key == word)) {
+        let parts = reader.parts.clone();
+        return read_joint_level(reader, node, &parts).map(State::Level);
+    }
     if let Some(later) = entries.iter().find(|entry| LATER.contains(&entry.key.as_str())) {
         reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: "start".to_string() });
         return None;

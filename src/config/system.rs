@@ -8,9 +8,11 @@ use super::tape::Register;
 use super::tree::Node;
 
 pub mod mode;
+pub mod parts;
 pub mod spin;
 
 use mode::Mode;
+use parts::Parts;
 use spin::Spin;
 
 /// Most levels accepted: a dense matrix of that size is 16 MB.
@@ -42,6 +44,8 @@ pub enum Physics {
     Spin(Spin),
     /// A mode.
     Mode(Mode),
+    /// Several systems beside each other.
+    Parts(Box<Parts>),
 }
 
 /// What `acts_on` may name, and how a drive acts on it.
@@ -76,6 +80,26 @@ impl System {
             Physics::Typed => Vec::new(),
             Physics::Ladder(_) | Physics::Mode(_) => own(&MODE_OPERATORS),
             Physics::Spin(_) => own(&SPIN_OPERATORS),
+            Physics::Parts(parts) => {
+                let of = |part: &parts::Part| part.system.operators().into_iter().map(|name| format!("{}.{name}", part.name)).collect();
+                parts.parts.iter().flat_map(|part| -> Vec<String> { of(part) }).collect()
+            }
+        }
+    }
+
+    /// Name and levels of each part; none where there are no parts.
+    pub fn parts(&self) -> Vec<(String, Vec<String>)> {
+        match &self.physics {
+            Physics::Parts(parts) => parts.parts.iter().map(|part| (part.name.clone(), part.system.names.clone())).collect(),
+            _ => Vec::new(),
+        }
+    }
+
+    /// Where a field of its own stands.
+    fn own_field(&self) -> Option<Place> {
+        match &self.physics {
+            Physics::Spin(spin) => spin.field.as_ref().map(|_| spin.place),
+            _ => None,
         }
     }
 
@@ -85,6 +109,10 @@ impl System {
             Physics::Typed => return Vec::new(),
             Physics::Ladder(_) | Physics::Mode(_) => Acting::Quanta,
             Physics::Spin(_) => Acting::Moment,
+            Physics::Parts(parts) => {
+                let of = |part: &parts::Part| part.system.acting().into_iter().map(|(_, how)| (part.name.clone(), how)).collect();
+                return parts.parts.iter().flat_map(|part| -> Vec<(String, Acting)> { of(part) }).collect();
+            }
         };
         vec![(self.kind.to_string(), how)]
     }
@@ -97,6 +125,7 @@ impl System {
             Physics::Ladder(rungs) => found.extend(rungs),
             Physics::Spin(spin) => spin.registers(&mut found),
             Physics::Mode(mode) => mode.registers(&mut found),
+            Physics::Parts(parts) => parts.registers(&mut found),
         }
         found
     }
@@ -150,24 +179,49 @@ const KINDS: [(&str, Read); 5] = [
     ("mode", mode::read_mode),
 ];
 
-const LATER_KINDS: [&str; 4] = ["well", "functions", "atom", "parts"];
+const LATER_KINDS: [&str; 3] = ["well", "functions", "atom"];
+
+/// Keys that stand beside `parts` alone.
+const BESIDE_PARTS: [&str; 2] = ["magnetic_field", "interactions"];
 
 /// Reads `system:`.
 pub fn read_system(reader: &mut Reader, node: &Node) -> Option<System> {
-    let mut known: Vec<&str> = KINDS.iter().map(|(word, _)| *word).collect();
-    known.push("name_states_by");
-    known.extend(LATER_KINDS);
-    let entries = reader.fields(node, "system", &known, &[])?;
-    if let Some(later) = entries.iter().find(|entry| LATER_KINDS.contains(&entry.key.as_str()) || entry.key == "name_states_by") {
-        reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: "system".to_string() });
+    let Some(parts) = node.get("parts") else {
+        if let Some(lone) = node.entries().and_then(|keys| keys.iter().find(|key| BESIDE_PARTS.contains(&key.key.as_str()))) {
+            let fault = Fault::MissingKey {
+                key: "parts".to_string(),
+                section: "system".to_string(),
+                write: "parts: {electron: {spin: {size: 1/2, g: 2.0023}}}".to_string(),
+                why: Some(format!("{} belongs to parts; the field of a spin or an atom alone is its own key: field.", lone.key)),
+            };
+            reader.error(lone.place, fault);
+            return None;
+        }
+        return read_kind(reader, node, "system", &["parts", "name_states_by"]);
+    };
+    let known: Vec<&str> =
+        KINDS.iter().map(|(word, _)| *word).chain(LATER_KINDS).chain(BESIDE_PARTS).chain(["parts", "name_states_by"]).collect();
+    reader.fields(node, "system", &known, &[])?;
+    if let Some(other) = node.entries()?.iter().find(|entry| KINDS.iter().any(|(word, _)| *word == entry.key)) {
+        let mut two = [("parts".to_string(), parts.place), (other.key.clone(), other.place)];
+        two.sort_by_key(|(_, place)| place.line);
+        let [(first, at), (second, later)] = two;
+        let fault = Fault::OneOf { found: vec![first, second], lines: vec![at.line, later.line], section: "system".to_string() };
+        reader.error(later, fault);
         return None;
     }
-    read_kind(reader, node, "system")
+    parts::read_parts(reader, node)
 }
 
-/// Reads the one kind that stands under `node`: the system itself, or a part of it.
-pub fn read_kind(reader: &mut Reader, node: &Node, section: &str) -> Option<System> {
+/// Reads the one kind that stands under `node`: the system itself, or a part of it; `beside` are other keys that may stand there.
+pub fn read_kind(reader: &mut Reader, node: &Node, section: &str, beside: &[&str]) -> Option<System> {
     let words: Vec<&str> = KINDS.iter().map(|(word, _)| *word).collect();
+    let known: Vec<&str> = words.iter().chain(&LATER_KINDS).chain(beside).copied().collect();
+    let entries = reader.fields(node, section, &known, &[])?;
+    if let Some(later) = entries.iter().find(|entry| LATER_KINDS.contains(&entry.key.as_str())) {
+        reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: section.to_string() });
+        return None;
+    }
     let entry = reader.one_of(node, &words, section, None)?;
     let (word, read) = KINDS.iter().find(|(word, _)| *word == entry.key)?;
     read(reader, &entry.value, entry.place, &format!("{section} / {word}"))

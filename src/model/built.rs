@@ -89,6 +89,14 @@ pub struct Built {
     pub acting: Vec<Acting>,
     /// Largest error of a level (grid, quadrature, truncation), Hz; 0 where there is none but rounding.
     pub error_hz: f64,
+    /// What a reader should know of how it was built.
+    pub notes: Vec<String>,
+    /// Share of each working state in the one as built whose name it bears; empty where the basis is the one as built.
+    pub weights: Vec<f64>,
+    /// Overlap of the functions of an expansion as written, in SI.
+    pub overlap: Option<Matrix>,
+    /// Sum over the kept levels of (2 mass/hbar^2)(E_m - E_n) |x_mn|^2, level by level; empty where there is no such sum.
+    pub sum_rule: Vec<f64>,
     /// Columns: the states of the working basis in those as built; none where they are the same.
     pub basis: Option<Arc<Matrix>>,
 }
@@ -97,7 +105,18 @@ impl Built {
     /// A system with nothing but its static matrix, Hz.
     pub fn new(statics_hz: Matrix) -> Built {
         let energies = statics_hz.diagonal().iter().map(|entry| Wide { high: entry.re, low: 0.0 }).collect();
-        Built { statics_hz, energies, operators: Vec::new(), acting: Vec::new(), error_hz: 0.0, basis: None }
+        Built {
+            statics_hz,
+            energies,
+            operators: Vec::new(),
+            acting: Vec::new(),
+            error_hz: 0.0,
+            notes: Vec::new(),
+            weights: Vec::new(),
+            overlap: None,
+            sum_rule: Vec::new(),
+            basis: None,
+        }
     }
 
     /// Number of states of the working basis.

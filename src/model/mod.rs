@@ -1,9 +1,11 @@
 //! Matrices in a basis: the checked config's entries become dense Hermitian matrices. Knows nothing of time.
 
+pub mod angular_momentum;
 pub mod built;
 pub mod commutators;
 pub mod gaps;
 mod mode;
+mod parts;
 pub mod spin;
 
 use num_complex::Complex64;
@@ -33,6 +35,7 @@ fn build_system(system: &System, values: &[f64]) -> Result<Built, Mistake> {
         Physics::Ladder(rungs) => mode::ladder(system.kind, dense(size, &system.entries, values), rungs, values),
         Physics::Spin(spin) => spin::build(spin, values),
         Physics::Mode(mode) => mode::build(mode, values),
+        Physics::Parts(parts) => parts::build(parts, values)?,
     })
 }
 
