@@ -1,15 +1,18 @@
 //! One point computed: a plan's [`Point`] handed to the methods, its numbers measured at two resolutions, and all that is known
 //! of their error, as plain data for the report.
+//!
+//! [`measure`] makes the runs, [`conclude`] the figures; an average over noise lies between the two.
 
 use std::time::Instant as Clock;
 
 use crate::config::document::Document;
+use crate::config::messages::Mistake;
 use crate::config::record::Item;
 use crate::config::settings::MethodWord;
-use crate::measure::{observables, Column, GateFigures, QuasiEnergy, QuasiRecorder, TraceRecorder};
+use crate::measure::{observables, Column, GateFigures, QuasiEnergy, QuasiRecorder, Recorded, TraceRecorder};
 use crate::plan::Point;
-use crate::problem::{Matrix, Start};
-use crate::propagate::{figure, solve, Asked, CrossCheck, Demand, Method, Recorder};
+use crate::problem::{Matrix, Problem, Start};
+use crate::propagate::{figure, solve, Asked, CrossCheck, Demand, Method, Solved};
 
 /// A final number with its error.
 #[derive(Debug, Clone, PartialEq)]
@@ -24,6 +27,37 @@ pub struct Final {
     pub finer: f64,
     /// Its error figure, in its unit.
     pub error: f64,
+    /// One standard error of the mean over random draws, in its unit; none where nothing was drawn.
+    pub sampling_error: Option<f64>,
+}
+
+/// What the runs of a point recorded, before figures are made of it.
+pub struct Measured {
+    /// The runs at both resolutions, or their averages.
+    pub solved: Solved<Recorded>,
+    /// The average that the numbers are, if they are one.
+    pub average: Option<Average>,
+}
+
+/// How an average over noise was taken.
+#[derive(Debug, Clone, Default)]
+pub struct Average {
+    /// In words.
+    pub words: String,
+    /// Runs made for the result.
+    pub runs: u64,
+    /// Random draws, 0 where a rule of nodes served alone.
+    pub draws: u64,
+    /// Error of each recorded number, over its scale, beside its change under refinement; empty where there is none.
+    pub besides: Vec<f64>,
+    /// One standard error of each recorded number, over its scale; empty where nothing was drawn.
+    pub sampling: Vec<f64>,
+    /// The largest of them.
+    pub sampling_error: Option<f64>,
+    /// Whether the draws were to go on until the sampling error meets the accuracy.
+    pub until_accurate: bool,
+    /// Warnings.
+    pub warnings: Vec<Mistake>,
 }
 
 /// The second, independent route.
@@ -72,18 +106,29 @@ pub struct Outcome {
     pub reached: bool,
     /// The second route, where asked for.
     pub cross_check: Option<Crossing>,
+    /// How the numbers were averaged over noise, if they were.
+    pub average: Option<Average>,
+    /// Standard errors of the rows, like `rows`; empty where nothing was drawn.
+    pub row_errors: Vec<f64>,
     /// Time taken, s.
     pub seconds: f64,
 }
 
-/// Computes a point.
-pub fn compute(document: &Document, point: &Point) -> Outcome {
-    let clock = Clock::now();
-    let problem = point.problem();
-    let observables = observables(document, &point.built, &point.values, &point.energies_hz, problem);
-    let columns = observables.columns();
-    let scales: Vec<f64> = columns.iter().map(|column| column.scale).collect();
-    let asked = Asked {
+impl Outcome {
+    /// Warnings that came up with the runs.
+    pub fn warnings(&self) -> &[Mistake] {
+        self.average.as_ref().map_or(&[], |average| &average.warnings)
+    }
+
+    /// The largest standard error of a recorded number, over its scale; none where nothing was drawn.
+    pub fn sampling_error(&self) -> Option<f64> {
+        self.average.as_ref()?.sampling_error
+    }
+}
+
+/// What a config asks of the methods.
+fn asked(document: &Document) -> Asked {
+    Asked {
         accuracy: document.accuracy.last,
         method: match document.accuracy.method {
             MethodWord::Automatic => None,
@@ -92,8 +137,34 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
             MethodWord::Geometric => Some(Method::Geometric),
         },
         cross_check: document.accuracy.cross_check,
-    };
-    let solved = solve(problem, &observables.demand, &asked, || TraceRecorder::new(&observables, problem, &scales));
+    }
+}
+
+/// Runs a point at both resolutions. `problem` is that of the point, or one that noise has moved within the shot; `check` is
+/// whether the second route is wanted too, where the config asks for it.
+pub fn measure(document: &Document, point: &Point, problem: &Problem, check: bool) -> Solved<Recorded> {
+    let observables = observables(document, &point.built, &point.values, &point.energies_hz, problem);
+    let scales: Vec<f64> = observables.columns().iter().map(|column| column.scale).collect();
+    let mut asked = asked(document);
+    asked.cross_check &= check;
+    solve(problem, &observables.demand, &asked, || TraceRecorder::new(&observables, problem, &scales)).map(TraceRecorder::done)
+}
+
+/// Computes a point without noise.
+pub fn compute(document: &Document, point: &Point) -> Outcome {
+    let clock = Clock::now();
+    let solved = measure(document, point, point.problem(), true);
+    conclude(document, point, Measured { solved, average: None }, clock)
+}
+
+/// Makes figures of what was recorded at a point; `clock` was started with its first run.
+pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: Clock) -> Outcome {
+    let Measured { solved, average } = measured;
+    let problem = point.problem();
+    let observables = observables(document, &point.built, &point.values, &point.energies_hz, problem);
+    let columns = observables.columns();
+    let scales: Vec<f64> = columns.iter().map(|column| column.scale).collect();
+    let asked = asked(document);
 
     let quasi = document.record.items.iter().find_map(|item| match item {
         Item::QuasiEnergies(period) => Some(point.values[period.register as usize]),
@@ -109,36 +180,43 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
     // numbers of a run that was not made or broke down mean nothing
     let sound = solved.error_figure.is_finite();
     let end = problem.moments.len() - 1;
+    let besides = |k: usize| average.as_ref().and_then(|average| average.besides.get(k)).copied().unwrap_or(0.0);
+    let sampling = |k: usize| average.as_ref().and_then(|average| average.sampling.get(k)).copied();
     let mut finals: Vec<Final> = columns
         .iter()
         .enumerate()
         .map(|(k, column)| {
-            let (value, finer) = (recorded.value(end, k), finer.value(end, k));
-            let (value, finer) = if sound { (value, finer) } else { (f64::NAN, f64::NAN) };
-            let error = figure(value / column.scale, finer / column.scale, solved.floor) * column.scale;
-            Final { name: column.name.clone(), unit: column.unit, value, finer, error }
+            let at = end * columns.len() + k;
+            let number = |of: &Recorded| of.numbers.get(at).copied().filter(|_| sound).unwrap_or(f64::NAN);
+            let (value, finer) = (number(recorded), number(finer));
+            let error = (figure(value, finer, solved.floor) + besides(at)) * column.scale;
+            let sampling_error = sampling(at).map(|error| error * column.scale);
+            let (value, finer) = (value * column.scale, finer * column.scale);
+            Final { name: column.name.clone(), unit: column.unit, value, finer, error, sampling_error }
         })
         .collect();
     let (last, finer_last) = (recorded.last(), finer.last());
     let names: Vec<String> = observables.last.iter().flat_map(|quantity| quantity.names()).collect();
     let mut whole_error = 0.0f64;
-    for ((name, value), finer) in names.into_iter().zip(last).zip(finer_last) {
+    for (k, ((name, value), finer)) in names.into_iter().zip(last).zip(finer_last).enumerate() {
         let (value, finer) = if sound { (*value, *finer) } else { (f64::NAN, f64::NAN) };
-        let error = figure(value, finer, solved.floor);
+        let error = figure(value, finer, solved.floor) + besides(recorded.in_rows + k);
         if name.starts_with("propagator_") {
             whole_error = whole_error.max(error);
         } else {
-            finals.push(Final { name, unit: "1", value, finer, error });
+            let sampling_error = sampling(recorded.in_rows + k);
+            finals.push(Final { name, unit: "1", value, finer, error, sampling_error });
         }
     }
     let gate =
         observables.gate.as_ref().filter(|_| sound).zip(recorded.propagator.as_ref()).map(|(judge, propagator)| judge.judge(propagator));
     let propagator = recorded.propagator.clone().filter(|_| observables.propagator && sound).map(|propagator| (propagator, whole_error));
-    let rows = recorded.numbers()[..(end + 1) * columns.len()]
-        .iter()
-        .enumerate()
-        .map(|(k, number)| if sound { number * scales[k % scales.len()] } else { f64::NAN })
-        .collect();
+    let in_rows = (end + 1) * columns.len();
+    let scaled = |numbers: &[f64]| -> Vec<f64> {
+        numbers.iter().take(in_rows).enumerate().map(|(k, x)| if sound { x * scales[k % scales.len()] } else { f64::NAN }).collect()
+    };
+    let rows = scaled(&recorded.numbers);
+    let row_errors = average.as_ref().map_or_else(Vec::new, |average| scaled(&average.sampling));
     let cross_check = solved.cross_check.as_ref().map(|check| match check {
         CrossCheck::Done { method, difference, .. } => Crossing { method: method.clone(), difference: Ok(*difference) },
         CrossCheck::Skipped { method, reason } => Crossing { method: method.clone(), difference: Err(reason.clone()) },
@@ -160,6 +238,8 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
         reached: solved.reached && quasi.as_ref().is_none_or(|(_, quasi)| quasi.reached),
         quasi_energies: quasi.map(|(period_s, quasi)| (period_s, quasi.recorded.found.unwrap_or_default(), quasi.error_figure)),
         cross_check,
+        average,
+        row_errors,
         seconds: clock.elapsed().as_secs_f64(),
         columns,
     }

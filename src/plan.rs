@@ -8,6 +8,9 @@ use std::collections::hash_map::Entry as MapEntry;
 use std::collections::HashMap;
 use std::sync::Arc;
 
+pub mod shaken;
+pub mod wander;
+
 use crate::config::document::{not_finite, Document};
 use crate::config::drives::{Drive, DriveMatrix, Form};
 use crate::config::envelopes::{Samples, SizeWord};
@@ -49,6 +52,14 @@ pub struct Point<'p> {
     set: Vec<Option<f64>>,
     /// The system: its static matrix and its operators.
     pub built: Arc<Built>,
+    /// The system as the instruments see it: without noise.
+    set_by: Arc<Built>,
+    /// What noise adds to each number, by index; empty without noise.
+    shift: Vec<f64>,
+    /// Terms kept that the frame would drop.
+    put_back: Vec<TermKey>,
+    /// Whether only the end of the sequence is recorded.
+    end_only: bool,
     /// Diagonal of the static Hamiltonian, Hz.
     pub energies_hz: Vec<f64>,
     /// Matrices of the drives.
@@ -94,7 +105,6 @@ pub struct Mover<'p> {
     document: &'p Document,
     numbers: Vec<u32>,
     touched: Touched,
-    put_back: Vec<TermKey>,
     point: Point<'p>,
 }
 
@@ -169,7 +179,11 @@ impl Plan {
         let mut point = Point {
             values,
             set,
+            set_by: built.clone(),
             built,
+            shift: Vec::new(),
+            put_back: put_back.to_vec(),
+            end_only: false,
             energies_hz,
             couplings,
             curves,
@@ -179,9 +193,9 @@ impl Plan {
             frame: None,
             warnings: Vec::new(),
         };
-        point.segment(document, put_back)?;
-        let touched = Touched::by(document, &numbers, following);
-        Ok(Mover { document, numbers, touched, put_back: put_back.to_vec(), point })
+        point.segment(document)?;
+        let touched = Touched::by(document, document.tape.dependents(&numbers), following);
+        Ok(Mover { document, numbers, touched, point })
     }
 
     /// Whether moving these numbers changes the structure (a count of levels or of repeats), so that the file must be read anew.
@@ -218,39 +232,13 @@ impl<'p> Mover<'p> {
         }
         let (document, point, touched) = (self.document, &mut self.point, &self.touched);
         document.tape.replay(&touched.registers, &point.set, &point.built.energies, &mut point.values);
-        if touched.statics {
-            point.built = Arc::new(model::build(document, &point.values)?);
-            document.tape.replay(&touched.following, &point.set, &point.built.energies, &mut point.values);
-        }
-        if touched.registers.iter().chain(&touched.following).any(|register| !point.values[*register as usize].is_finite()) {
-            if let Some(mistake) = not_finite(&document.tape, &point.values, &document.sources) {
-                return Err(mistake);
-            }
-        }
-        if touched.statics {
-            let (statics, energies) = statics(&point.built);
-            point.lab.statics = Arc::new(statics);
-            point.energies_hz = energies;
-        }
-        if touched.statics || touched.couplings {
-            point.couplings = couplings(document, &point.built, &point.energies_hz, &point.values)?;
-            point.lab.matrices = Arc::new(point.couplings.iter().map(|coupling| coupling.turning.clone()).collect());
-        }
-        for (k, envelope) in document.envelopes.iter().enumerate().filter(|(k, _)| touched.curves[*k]) {
-            point.curves[k] = curve(envelope, &point.values)?;
-        }
-        if touched.start {
-            point.lab.start = start_state(document, &point.values);
-        }
-        point.timeline = timeline(document, &point.values, &point.couplings, &point.curves)?;
-        point.segment(document, &self.put_back)?;
+        point.refresh(document, touched)?;
         Ok(point)
     }
 }
 
 impl Touched {
-    fn by(document: &Document, numbers: &[u32], following: Vec<Register>) -> Touched {
-        let registers = document.tape.dependents(numbers);
+    fn by(document: &Document, registers: Vec<Register>, following: Vec<Register>) -> Touched {
         let mut moved = vec![false; document.tape.entries().len()];
         for register in &registers {
             moved[*register as usize] = true;
@@ -322,7 +310,46 @@ fn part_key(pulse: &PlacedPulse) -> PartKey {
     (pulse.drive, pulse.envelope, pulse.carrier)
 }
 
-impl Point<'_> {
+impl<'p> Point<'p> {
+    /// Forms anew what the replayed registers feed. Noise leaves the order of the levels, by which drives and frames tell up from
+    /// down, as it is without it: that belongs to the instruments.
+    fn refresh(&mut self, document: &'p Document, touched: &Touched) -> Result<(), Mistake> {
+        let noise = !self.shift.is_empty();
+        if touched.statics {
+            self.built = Arc::new(model::build(document, &self.values)?);
+            if !noise {
+                self.set_by = self.built.clone();
+                document.tape.replay(&touched.following, &self.set, &self.built.energies, &mut self.values);
+            }
+        }
+        if touched.registers.iter().chain(&touched.following).any(|register| !self.values[*register as usize].is_finite()) {
+            if let Some(mistake) = not_finite(&document.tape, &self.values, &document.sources) {
+                return Err(mistake);
+            }
+        }
+        if touched.statics {
+            let (statics, energies) = statics(&self.built);
+            self.lab.statics = Arc::new(statics);
+            if !noise {
+                self.energies_hz = energies;
+            }
+        }
+        // typed matrices do not depend on the levels, but their order tells which half of a drive is which
+        let typed = document.system.is_typed() && self.built.basis.is_none();
+        if touched.couplings || (touched.statics && !(noise && typed)) {
+            self.couplings = couplings(document, &self.built, &self.energies_hz, &self.values)?;
+            self.lab.matrices = Arc::new(self.couplings.iter().map(|coupling| coupling.turning.clone()).collect());
+        }
+        for (k, envelope) in document.envelopes.iter().enumerate().filter(|(k, _)| touched.curves[*k]) {
+            self.curves[k] = curve(envelope, &self.values)?;
+        }
+        if touched.start {
+            self.lab.start = start_state(document, &self.values);
+        }
+        self.timeline = timeline(document, &self.values, &self.couplings, &self.curves)?;
+        self.segment(document)
+    }
+
     /// What the methods see.
     pub fn problem(&self) -> &Problem {
         self.frame.as_ref().map_or(&self.lab, |frame| &frame.rotated.problem)
@@ -344,7 +371,7 @@ impl Point<'_> {
     }
 
     /// Cuts the timeline into segments, finds the moments to record, and goes to the frame of the run.
-    fn segment(&mut self, document: &Document, put_back: &[TermKey]) -> Result<(), Mistake> {
+    fn segment(&mut self, document: &Document) -> Result<(), Mistake> {
         let parts = self.parts(document)?;
         let (segments, terms) = cut(&self.timeline, &|pulse| parts[&part_key(pulse)].clone());
         let same_times = segments.len() == self.lab.segments.len()
@@ -352,6 +379,9 @@ impl Point<'_> {
         let asked = rows_of(document, &self.values);
         if !same_times || self.lab.moments.is_empty() || asked != self.rows {
             self.lab.moments = moments(document, &self.values, &segments, self.timeline.end.seconds())?;
+            if self.end_only {
+                self.lab.moments.drain(..self.lab.moments.len() - 1);
+            }
             self.rows = asked;
         }
         self.lab.segments = segments;
@@ -365,7 +395,7 @@ impl Point<'_> {
         }
         self.frame = match &document.frame {
             Frame::Lab => None,
-            Frame::Rotating(frame) => Some(self.rotate(document, frame, &parts, put_back)?),
+            Frame::Rotating(frame) => Some(self.rotate(document, frame, &parts)?),
         };
         self.judge_periods(document)
     }
@@ -391,15 +421,9 @@ impl Point<'_> {
     }
 
     /// The point in its rotating frame.
-    fn rotate(
-        &mut self,
-        document: &Document,
-        frame: &Rotating,
-        parts: &HashMap<PartKey, Arc<PulseParts>>,
-        put_back: &[TermKey],
-    ) -> Result<InFrame, Mistake> {
+    fn rotate(&mut self, document: &Document, frame: &Rotating, parts: &HashMap<PartKey, Arc<PulseParts>>) -> Result<InFrame, Mistake> {
         let set: Vec<Option<Wide>> = self.set.iter().map(|value| value.map(|value| Wide { high: value, low: 0.0 })).collect();
-        let wide = document.tape.evaluate::<Wide>(&set, &self.built.energies);
+        let wide = document.tape.evaluate_shaken::<Wide>(&set, &self.set_by.energies, &self.shift);
         let mut energies = self.built.energies.clone();
         if document.system.is_typed() && self.built.basis.is_none() {
             energies.fill(Wide::default());
@@ -426,7 +450,7 @@ impl Point<'_> {
             sizes_hz: &sizes,
             turning: &turning,
             limit_hz,
-            put_back,
+            put_back: &self.put_back,
         };
         let mut rotated = rotate(&self.lab, &setting);
         if let (Follows::Drives, false, Some(_), Some(beat)) = (&frame.follows, frame.allow_beat, frame.limit, rotated.beats.first()) {
@@ -473,10 +497,7 @@ impl Point<'_> {
     fn part(&self, document: &Document, pulse: &PlacedPulse) -> Result<PulseParts, Mistake> {
         let envelope = &document.envelopes[pulse.envelope];
         let curve = self.curves[pulse.envelope].clone();
-        let peak_hz = self.peak_hz(document, pulse.drive, pulse.envelope)?;
-        let form = document.drives[pulse.drive].form;
-        // R/2 turns with the carrier; a direct drive's entry is halved in its matrix instead
-        let half_rabi_hz = if form == Form::Direct { peak_hz } else { 0.5 * peak_hz };
+        let half_rabi_hz = self.half_rabi_hz(document, pulse.drive, pulse.envelope)?;
         let quadrature_s = self.quadrature_s(document, pulse.envelope);
         if !quadrature_s.is_finite() {
             let place = envelope.derivative.map_or(envelope.place, |derivative| derivative.against.place);
@@ -486,6 +507,12 @@ impl Point<'_> {
         let pieces = curve.pieces();
         let signal = matches!(pieces, Pieces::Smooth { .. }).then(|| Arc::new(Signal { curve, quadrature_s }));
         Ok(PulseParts { pieces, half_rabi_hz, chirp, signal })
+    }
+
+    /// Size of c at envelope 1, Hz: R/2 turns with the carrier; a direct drive's entry is halved in its matrix instead.
+    fn half_rabi_hz(&self, document: &Document, drive: usize, envelope: usize) -> Result<f64, Mistake> {
+        let peak_hz = self.peak_hz(document, drive, envelope)?;
+        Ok(if document.drives[drive].form == Form::Direct { peak_hz } else { 0.5 * peak_hz })
     }
 
     /// Weight of the derivative quadrature, Y = quadrature_s dX/dt, s; 0 for none.

@@ -12,6 +12,7 @@ use nutate::config::starters::STARTERS;
 /// and `cli` come after the join of all, `plan` and `outcome`.
 const ROOMS: &[&[&str]] = &[
     &["units", "quadrature"],
+    &["random"],
     &["problem"],
     &["config"],
     &["model"],
@@ -22,7 +23,8 @@ const ROOMS: &[&[&str]] = &[
     &["plan"],
     &["outcome"],
     &["known"],
-    &["compare", "noise", "scan", "design"],
+    &["noise"],
+    &["compare", "scan", "design"],
     &["report"],
     &["cli"],
 ];

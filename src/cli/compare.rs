@@ -60,6 +60,9 @@ fn try_run(words: &Words) -> Result<Status, Status> {
     })?;
     complain_of(document, &document.warnings);
     let comparison = compare(&written, all).map_err(fault)?;
+    for computed in &comparison.computed {
+        complain_of(computed.plan.document(), computed.outcome.warnings());
+    }
     let seconds = clock.elapsed().as_secs_f64();
     let files = write::comparison(staging, document, &comparison, seconds).map_err(|error| {
         complain(&format!("error: the results could not be written to {}: {error}.\n", folder.display()));

@@ -54,12 +54,15 @@ fn try_plot(words: &Words) -> Result<Status, Status> {
     let (headings, mut values) = traces_csv::read(&words.folder.join("traces.csv"))
         .map_err(|reason| no_result(format!("its traces.csv cannot be read ({reason})")))?;
     let wanted: Vec<&str> = std::iter::once("time_s").chain(columns.iter().map(|column| column.name.as_str())).collect();
-    if headings != wanted {
+    let drawn: Vec<String> = wanted[1..].iter().map(|name| format!("{name}{}", traces_csv::SAMPLING_ERROR)).collect();
+    let (plain, errors) = headings.split_at(wanted.len().min(headings.len()));
+    if plain != wanted || !(errors.is_empty() || errors == drawn) {
         return Err(no_result("traces.csv has other columns than its config records".to_string()));
     }
+    let bands = values.split_off(wanted.len());
     let times = values.remove(0);
     let mut names = Vec::new();
-    for (name, figure) in figures::of_columns(document, &point, &columns, &times, values) {
+    for (name, figure) in figures::of_columns(document, &point, &columns, &times, values, bands) {
         match figure {
             Ok(drawn) => {
                 let written = figures::save(&words.folder, name, &drawn).map_err(|error| {

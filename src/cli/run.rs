@@ -3,7 +3,7 @@
 use clap::Args;
 
 use super::{complain, complain_of, not_drawn, point, print, read_config, Common, Results, Status};
-use crate::outcome::compute;
+use crate::noise::{compute, Draws};
 use crate::plan::Plan;
 use crate::report::folder::{default_folder, prepare};
 use crate::report::{result_json, summary, write};
@@ -35,7 +35,11 @@ fn try_run(words: &Words) -> Result<Status, Status> {
     })?;
     complain_of(document, &document.warnings);
     complain_of(document, &point.warnings);
-    let outcome = compute(document, &point);
+    let outcome = compute(document, &point, &Draws::default()).map_err(|mistake| {
+        complain_of(document, &[mistake]);
+        Status::Refused
+    })?;
+    complain_of(document, outcome.warnings());
     let written = write::run(staging, document, &point, &outcome).map_err(|error| {
         complain(&format!("error: the results could not be written to {}: {error}.\n", folder.display()));
         Status::Machine

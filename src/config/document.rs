@@ -7,6 +7,7 @@ use super::compare::{self, Compare, Variant};
 use super::drives::{CarrierPhase, Drive, Form};
 use super::envelopes::Envelope;
 use super::messages::{Fault, Mistake};
+use super::noise::NoiseEntry;
 use super::place::{Place, Sources};
 use super::reader::{near, NamedNumber, Reader};
 use super::record::{Item, Record};
@@ -47,7 +48,7 @@ const SECTIONS: [&str; 25] = [
     "hardware",
     "output",
 ];
-const LATER: [&str; 7] = ["basis", "decay", "dephasing", "noise", "tune", "fit", "hardware"];
+const LATER: [&str; 6] = ["basis", "decay", "dephasing", "tune", "fit", "hardware"];
 
 /// A config that holds no mistake.
 #[derive(Debug, Clone)]
@@ -74,6 +75,8 @@ pub struct Document {
     pub sequence: Vec<Step>,
     /// Where the sequence stands.
     pub sequence_place: Place,
+    /// Numbers that are not the same in every shot.
+    pub noise: Vec<NoiseEntry>,
     /// The state at time zero.
     pub start: State,
     /// What to keep.
@@ -317,6 +320,10 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         phases_said(reader, steps, &drives);
         unused(reader, root, &used, &operators, &mut used_operators);
     }
+    let noise = match root.get("noise") {
+        Some(node) => super::noise::read_noise(reader, node),
+        None => Some(Vec::new()),
+    };
     let compare = root.get("compare").map(|node| compare::read_compare(reader, node));
     let scan = root.get("scan").map(|node| super::scan::read_scan(reader, node));
     let run = super::run::read_run(reader, root.get("run"), scan.is_some());
@@ -335,7 +342,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     };
     let run = run?;
     let (system, steps, start, record, accuracy, output, frame) = (system?, steps?, start?, record?, accuracy?, output?, frame?);
-    Some(Document {
+    let mut document = Document {
         sources: reader.sources.clone(),
         title,
         tape: reader.tape.clone(),
@@ -347,20 +354,24 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         envelopes,
         sequence: steps,
         sequence_place: sequence_node.map_or(root.place, |node| node.place),
+        noise: noise?,
         start,
         record,
         frame,
         accuracy,
         output,
         defaults: std::mem::take(&mut reader.defaults),
-        warnings: reader.mistakes.iter().filter(|mistake| mistake.warning).cloned().collect(),
+        warnings: Vec::new(),
         compare,
         scan,
         run,
         root: Arc::new(root.clone()),
         archive: reader.archive.clone(),
         set: set.to_vec(),
-    })
+    };
+    reader.mistakes.extend(super::instruments::judge(&document));
+    document.warnings = reader.mistakes.iter().filter(|mistake| mistake.warning).cloned().collect();
+    Some(document)
 }
 
 /// `numbers:`, `numbers_from:` and the values set from outside.

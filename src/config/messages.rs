@@ -181,6 +181,25 @@ pub enum Fault {
     NotInStep { names: [String; 2], counts: [u64; 2] },
     TooManyPoints { points: f64, limit: f64 },
     NothingToScan,
+    // noise
+    MovedTwice { name: String, first: u32 },
+    TogetherDiffers { label: String, first: u32, what: &'static str },
+    CorrelatedForm { name: String },
+    GaussCorrelated { name: String },
+    CorrelatedMoves { name: String, what: String },
+    LorentzianSize { key: String },
+    T2StarOf { unit: String },
+    HistogramLength { edges: usize, counts: usize },
+    WeightsCount { values: usize, weights: usize },
+    WeightsSum { sum: f64, negative: bool, write: String },
+    NoiseOnInstrument { name: String, user: String },
+    NoiseMovesStructure { name: String },
+    NoiseWithout { what: &'static str, instead: &'static str },
+    NoiseMovesEnd { names: String },
+    TooManyRuns { runs: f64, limit: f64, draws: bool },
+    RoughAverage { draws: usize, sampling_error: f64, accuracy: f64, needed: f64 },
+    Revival { points: String, from_s: f64, accuracy: f64, write: String },
+    SpectrumTooWide { turns: f64, nodes: f64, limit: f64 },
     // from the command line
     NoSuchNumber { name: String, near: Option<String>, known: Vec<String> },
 }
@@ -759,6 +778,94 @@ impl Fault {
             NothingToScan => {
                 say("the file has no section \"scan\".").write("scan: {axes: [{number: peak, from: 1 MHz, to: 5 MHz, points: 41}]}")
             }
+            MovedTwice { name, first } => say(format!("the number \"{name}\" is moved by two entries of noise (first on line {first})."))
+                .why("Which of the two explain and result should list would not be clear.")
+                .write(format!("a second number, added where {name} is used, for the second cause")),
+            TogetherDiffers { label, first, what } => {
+                say(format!("the entries of the label \"{label}\" differ in their {what} (the other stands on line {first})."))
+                    .why("Entries of one label share a draw, each times its own size: all else must be the same.")
+                    .write(format!("the same {what} in both, or the label taken out"))
+            }
+            CorrelatedForm { name } => say(format!("the noise on \"{name}\" has a memory in time but is not Gaussian."))
+                .why("A process with exponential memory is defined here for a normal distribution alone.")
+                .write("spread: {sigma: 40 kHz}"),
+            GaussCorrelated { name } => {
+                say(format!("the noise on \"{name}\" changes within a shot, so no rule of a few nodes covers it (correlated with gauss)."))
+                    .why("A path in time has as many values as it has moments; it can only be drawn.")
+                    .write("sampling: {rule: random, draws: 1000, seed: 20417}")
+                    .write("sampling: {rule: until accurate, seed: 20417}")
+            }
+            CorrelatedMoves { name, what } => say(format!("the noise on \"{name}\" changes within a shot, but the number sets {what}."))
+                .why("Within a shot energies, matrix elements and sizes of envelopes can move; what is set once per shot cannot.")
+                .write("the noise without correlated (fixed in each shot), or on a number that stands in an energy or a size alone"),
+            LorentzianSize { key } => say(format!("a Lorentzian is not given by {key}."))
+                .why("It has no standard deviation; its size is its full width at half maximum.")
+                .write("fwhm: 200 kHz"),
+            T2StarOf { unit } => say(format!("t2_star is the decay time of a coherence, but the number is in {unit}."))
+                .why("It stands for sigma = sqrt(2)/(2 pi T2*) of a number in Hz that moves a gap one to one.")
+                .write("sigma: and the standard deviation in the unit of the number"),
+            HistogramLength { edges, counts } => {
+                say(format!("a histogram of {edges} edges has {} bins, but {counts} counts stand here.", edges.saturating_sub(1)))
+                    .why("There is one more edge than bins.")
+                    .write(format!("{} counts", edges.saturating_sub(1)))
+            }
+            WeightsCount { values, weights } => {
+                say(format!("{values} values have {weights} weights.")).write(format!("{values} weights that add up to 1"))
+            }
+            WeightsSum { sum, negative, write } => {
+                let words =
+                    if *negative { say("a weight is negative.") } else { say(format!("the weights add up to {}, not 1.", short(*sum))) };
+                words.why("They are probabilities.").write(write.clone())
+            }
+            NoiseOnInstrument { name, user } => {
+                say(format!("noise moves \"{name}\", and {user} uses it: the instrument then follows the noise."))
+                    .why("What was set once does not know today's drift. gap(a, b) follows a scan but not the noise.")
+                    .write("the setting by gap(a, b) or by a number that noise does not move, unless this is meant")
+            }
+            NoiseMovesStructure { name } => say(format!("noise moves \"{name}\", but it counts levels, repeats or draws."))
+                .why("Those are settled when the file is read.")
+                .write("moves: another number"),
+            NoiseWithout { what, instead } => say(format!("with noise there is no {what}: probabilities are averaged, never amplitudes."))
+                .why("Each shot has its own, and their mean describes none of them.")
+                .write(*instead),
+            NoiseMovesEnd { names } => say(format!("noise moves the length of the sequence ({names}), so its shots have no common times."))
+                .why("Only the end of the sequence is recorded, whenever it comes."),
+            TooManyRuns { runs, limit, draws } => {
+                say(format!("the average would take {} runs, more than {}.", short(*runs), short(*limit)))
+                    .why(if *draws {
+                        "The sampling error falls with the root of the number of draws."
+                    } else {
+                        "The nodes of several numbers make a grid: their counts multiply."
+                    })
+                    .write(if *draws {
+                        "a larger accuracy: {final: ..}, or rule: gauss for slow noise"
+                    } else {
+                        "fewer points, or rule: random for some of the numbers"
+                    })
+            }
+            RoughAverage { draws, sampling_error, accuracy, needed } => say(format!(
+                "the sampling error of {draws} draws is {}, larger than the accuracy of {} that was asked for.",
+                short(*sampling_error),
+                short(*accuracy)
+            ))
+            .why(format!("It falls with the root of the number of draws: about {} would be needed.", short(*needed)))
+            .write(format!(
+                "accuracy: {{final: {}}}, more draws, or rule: until accurate",
+                short(10f64.powf(sampling_error.log10().ceil()))
+            )),
+            Revival { points, from_s, accuracy, write } => {
+                say(format!("the average over {points} is good to {} only until {}.", short(*accuracy), short_with_unit(*from_s, "s")))
+                    .why("A rule of a few nodes has phases that come together again: later than that the average revives artificially.")
+                    .write(write.clone())
+            }
+            SpectrumTooWide { turns, nodes, limit } => say(format!(
+                "the spectrum reaches {} turns within the sequence and would take {} values, more than {}.",
+                short(*turns),
+                short(*nodes),
+                short(*limit)
+            ))
+            .why("Each frequency of the noise is followed over the whole sequence.")
+            .write("a lower upper limit of the spectrum, a shorter sequence, or fewer recorded times"),
             NoSuchNumber { name, near, known } => say(format!("the file has no number called \"{name}\"."))
                 .why(format!("Only named numbers can be set: {}.", list(known)))
                 .maybe(&near.as_ref().map(|near| format!("{near}=value")), "--set "),

@@ -420,6 +420,20 @@ impl Reader {
         }
     }
 
+    /// The number that a noise entry moves, and its dimension. To be moved is no use: a number that nothing else names stays unused.
+    pub fn moved(&mut self, node: &Node) -> Option<(super::noise::Moved, Dim)> {
+        let name = self.text(node, "moves", "moves: drift")?.to_string();
+        let Some(index) = self.by_name.get(&name).copied() else {
+            let names = self.number_names();
+            self.unknown(node.place, "number", &name, &names);
+            return None;
+        };
+        let used = self.numbers[index].used;
+        let known = self.number(index);
+        self.numbers[index].used = used;
+        known.map(|known| (super::noise::Moved { index: index as u32, name }, known.dim))
+    }
+
     /// Names of all numbers, as written.
     pub fn number_names(&self) -> Vec<String> {
         self.numbers.iter().map(|number| number.name.clone()).collect()
@@ -874,7 +888,7 @@ impl Reader {
                 };
                 let (a, b) = (energy(self, a), energy(self, b));
                 let (a, b) = (a?, b?);
-                let gap = self.tape.push(TapeEntry::Two(Two::Subtract, b, a), place);
+                let gap = self.tape.push(TapeEntry::Gap(b, a), place);
                 Some(self.seen_from_outside(gap, Dim::FREQUENCY, place, scope))
             }
             Call(name, arguments) => self.compile_call(name, arguments, place, scope),

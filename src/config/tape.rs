@@ -57,6 +57,8 @@ pub enum Entry {
     Two(Two, Register, Register),
     /// Energy of a level of a system built from its physics, Hz: known once the matrices are made.
     Level(u32),
+    /// The first register minus the second, both as they are without noise: what an instrument was set by.
+    Gap(Register, Register),
     /// In a formula of time: a register of the tape outside.
     Outer(Register),
     /// In a formula of time: t, in s.
@@ -320,6 +322,20 @@ impl Tape {
                 Entry::Level(_) => levels,
                 Entry::Number(index, from) => numbers.contains(index) || moved[*from as usize],
                 Entry::One(_, a) => moved[*a as usize],
+                Entry::Two(_, a, b) | Entry::Gap(a, b) => moved[*a as usize] || moved[*b as usize],
+            };
+        }
+        (0..self.entries.len() as Register).filter(|register| moved[*register as usize]).collect()
+    }
+
+    /// Registers that change when noise moves the given numbers, in order: gaps do not follow it.
+    pub fn shaken(&self, numbers: &[u32]) -> Vec<Register> {
+        let mut moved = vec![false; self.entries.len()];
+        for (register, entry) in self.entries.iter().enumerate() {
+            moved[register] = match entry {
+                Entry::Constant(_) | Entry::Outer(_) | Entry::Time | Entry::Gap(..) | Entry::Level(_) => false,
+                Entry::Number(index, from) => numbers.contains(index) || moved[*from as usize],
+                Entry::One(_, a) => moved[*a as usize],
                 Entry::Two(_, a, b) => moved[*a as usize] || moved[*b as usize],
             };
         }
@@ -334,6 +350,7 @@ impl Tape {
             Entry::One(function, a) => values[a as usize].one(function),
             Entry::Two(operation, a, b) => values[a as usize].two(operation, values[b as usize]),
             Entry::Level(level) => levels.get(level as usize).map_or(T::constant(f64::NAN), |level| T::wide(*level)),
+            Entry::Gap(a, b) => values[a as usize].two(Two::Subtract, values[b as usize]),
             // only formulas of time have these, and they run once bound
             Entry::Outer(_) | Entry::Time => T::constant(f64::NAN),
         }
@@ -348,6 +365,42 @@ impl Tape {
             values.push(value);
         }
         values
+    }
+
+    /// The same with noise on top: `shift[k]` is added to named number k, gaps stay as they are without it; `levels` too are those
+    /// without noise.
+    pub fn evaluate_shaken<T: Real>(&self, set: &[Option<T>], levels: &[Wide], shift: &[f64]) -> Vec<T> {
+        let calm = self.evaluate(set, levels);
+        if shift.is_empty() {
+            return calm;
+        }
+        let mut values = Vec::with_capacity(calm.len());
+        for register in 0..self.entries.len() as Register {
+            let value = self.run_shaken(register, &values, set, shift, &calm);
+            values.push(value);
+        }
+        values
+    }
+
+    fn run_shaken<T: Real>(&self, register: Register, values: &[T], set: &[Option<T>], shift: &[f64], before: &[T]) -> T {
+        match self.entries[register as usize] {
+            Entry::Gap(..) | Entry::Level(_) => before[register as usize],
+            Entry::Number(index, _) => {
+                let value = self.run(register, values, set, &[]);
+                match shift.get(index as usize) {
+                    Some(shift) if *shift != 0.0 => value.two(Two::Add, T::constant(*shift)),
+                    _ => value,
+                }
+            }
+            _ => self.run(register, values, set, &[]),
+        }
+    }
+
+    /// Replays some registers in place with noise on top; those of [`Tape::shaken`], which hold no gap.
+    pub fn replay_shaken(&self, which: &[Register], set: &[Option<f64>], shift: &[f64], values: &mut [f64]) {
+        for register in which {
+            values[*register as usize] = self.run_shaken(*register, values, set, shift, &[]);
+        }
     }
 
     /// All registers with the numbers as written; what follows the levels of a built system is no number yet.
@@ -395,6 +448,7 @@ impl Formula {
                 Entry::Number(_, from) => values[from as usize],
                 Entry::One(function, a) => values[a as usize].one(function),
                 Entry::Two(operation, a, b) => values[a as usize].two(operation, values[b as usize]),
+                Entry::Gap(a, b) => values[a as usize] - values[b as usize],
                 Entry::Outer(from) => outer(from),
                 Entry::Level(_) | Entry::Time => 0.0,
             };
@@ -430,6 +484,7 @@ impl BoundFormula {
                 Entry::Number(_, from) => values[from as usize],
                 Entry::One(function, a) => values[a as usize].one(function),
                 Entry::Two(operation, a, b) => values[a as usize].two(operation, values[b as usize]),
+                Entry::Gap(a, b) => values[a as usize].two(Two::Subtract, values[b as usize]),
                 Entry::Outer(from) => T::constant(self.outer[from as usize]),
                 // a formula reads levels through the tape outside
                 Entry::Level(_) => T::constant(f64::NAN),

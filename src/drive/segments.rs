@@ -59,6 +59,24 @@ pub fn cut(timeline: &Timeline, parts: &dyn Fn(&PlacedPulse) -> Arc<PulseParts>)
     (segments, terms)
 }
 
+/// Which pulse of a timeline each term belongs to, in the order of [`cut`], whose segments these are.
+pub fn owners(timeline: &Timeline, segments: &[Segment]) -> Vec<usize> {
+    let mut owners = Vec::new();
+    let mut groups = timeline.groups.iter().peekable();
+    for segment in segments {
+        while groups.peek().is_some_and(|group| segment.start.since(group.start) >= group.length_s) {
+            groups.next();
+        }
+        let Some(group) = groups.peek() else { break };
+        let middle = segment.start.since(group.start) + 0.5 * segment.length_s;
+        owners.extend(group.pulses.clone().filter(|pulse| {
+            let pulse = &timeline.pulses[*pulse];
+            middle > pulse.offset_s && middle < pulse.offset_s + pulse.length_s
+        }));
+    }
+    owners
+}
+
 /// Sorts boundaries and joins those that differ by rounding alone; 0 and the whole length stay exact.
 fn merge(bounds: &mut Vec<f64>, length_s: f64) {
     bounds.sort_by(f64::total_cmp);

@@ -25,7 +25,7 @@ use crate::propagate::Demand;
 
 pub use gate::GateFigures;
 pub use quasi::{breaks_period, QuasiEnergy, QuasiRecorder};
-pub use recorder::TraceRecorder;
+pub use recorder::{Recorded, TraceRecorder};
 
 /// What a quantity sees at a moment.
 pub struct Seen<'a> {

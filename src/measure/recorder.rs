@@ -4,34 +4,46 @@ use super::{Column, Observables, Seen};
 use crate::problem::{Matrix, Problem, Start, State};
 use crate::propagate::Recorder;
 
-/// The recorded numbers of one run, each over its scale, and the state and propagator at the end.
-pub struct TraceRecorder<'a> {
-    observables: &'a Observables<'a>,
-    problem: &'a Problem,
-    scales: &'a [f64],
-    row: Vec<f64>,
-    numbers: Vec<f64>,
+/// What one run recorded: every number over its scale, and the state and propagator at the end.
+#[derive(Debug, Clone, Default)]
+pub struct Recorded {
+    /// Row after row, then the numbers of the whole sequence.
+    pub numbers: Vec<f64>,
+    /// How many of them belong to rows.
+    pub in_rows: usize,
     /// The state at the last moment.
     pub end_state: Option<Start>,
     /// Propagator of the whole sequence, if asked for.
     pub propagator: Option<Matrix>,
 }
 
+impl Recorded {
+    /// The numbers of the whole sequence, in the order of their names.
+    pub fn last(&self) -> &[f64] {
+        self.numbers.get(self.in_rows..).unwrap_or_default()
+    }
+}
+
+/// Records one run.
+pub struct TraceRecorder<'a> {
+    observables: &'a Observables<'a>,
+    problem: &'a Problem,
+    scales: &'a [f64],
+    row: Vec<f64>,
+    recorded: Recorded,
+}
+
 impl<'a> TraceRecorder<'a> {
     /// A recorder of `observables`; `scales` are those of their columns.
     pub fn new(observables: &'a Observables<'a>, problem: &'a Problem, scales: &'a [f64]) -> TraceRecorder<'a> {
-        let numbers = Vec::with_capacity(problem.moments.len() * scales.len());
-        TraceRecorder { observables, problem, scales, row: Vec::new(), numbers, end_state: None, propagator: None }
+        let in_rows = problem.moments.len() * scales.len();
+        let recorded = Recorded { numbers: Vec::with_capacity(in_rows), in_rows, ..Recorded::default() };
+        TraceRecorder { observables, problem, scales, row: Vec::new(), recorded }
     }
 
-    /// Number `column` of row `moment`, in the unit of its column.
-    pub fn value(&self, moment: usize, column: usize) -> f64 {
-        self.numbers.get(moment * self.scales.len() + column).map_or(f64::NAN, |number| number * self.scales[column])
-    }
-
-    /// The numbers of the propagator, in the order of their names.
-    pub fn last(&self) -> &[f64] {
-        self.numbers.get(self.problem.moments.len() * self.scales.len()..).unwrap_or_default()
+    /// What was recorded.
+    pub fn done(self) -> Recorded {
+        self.recorded
     }
 }
 
@@ -42,23 +54,23 @@ impl Recorder for TraceRecorder<'_> {
         for quantity in &self.observables.quantities {
             quantity.see(&seen, &mut self.row);
         }
-        self.numbers.extend(self.row.iter().zip(self.scales).map(|(number, scale)| number / scale));
+        self.recorded.numbers.extend(self.row.iter().zip(self.scales).map(|(number, scale)| number / scale));
         if moment + 1 == self.problem.moments.len() {
-            self.end_state = Some(state.keep());
+            self.recorded.end_state = Some(state.keep());
         }
     }
 
     fn finish(&mut self, propagator: Option<&Matrix>) {
         if let Some(propagator) = propagator {
             for quantity in &self.observables.last {
-                quantity.see(propagator, &mut self.numbers);
+                quantity.see(propagator, &mut self.recorded.numbers);
             }
-            self.propagator = Some(propagator.clone());
+            self.recorded.propagator = Some(propagator.clone());
         }
     }
 
     fn numbers(&self) -> &[f64] {
-        &self.numbers
+        &self.recorded.numbers
     }
 }
 

@@ -38,6 +38,29 @@ pub struct Solved<R> {
     pub products: u64,
 }
 
+impl<R> Solved<R> {
+    /// The same with what was recorded made into something else.
+    pub fn map<S>(self, make: impl Fn(R) -> S) -> Solved<S> {
+        let cross_check = self.cross_check.map(|check| match check {
+            CrossCheck::Done { method, recorded, difference } => CrossCheck::Done { method, recorded: make(recorded), difference },
+            CrossCheck::Skipped { method, reason } => CrossCheck::Skipped { method, reason },
+        });
+        Solved {
+            recorded: make(self.recorded),
+            finer: make(self.finer),
+            method: self.method,
+            reason: self.reason,
+            resolutions: self.resolutions,
+            error_figure: self.error_figure,
+            floor: self.floor,
+            reached: self.reached,
+            cross_check,
+            steps: self.steps,
+            products: self.products,
+        }
+    }
+}
+
 /// The outcome of the independent second route.
 #[derive(Debug)]
 pub enum CrossCheck<R> {

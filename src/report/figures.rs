@@ -34,16 +34,25 @@ const MOST_SPECTRUM_POINTS: usize = 1600;
 pub fn of_run(document: &Document, point: &Point, outcome: &Outcome) -> Vec<Named> {
     let wide = outcome.columns.len();
     let columns = (0..wide).map(|k| outcome.rows.iter().skip(k).step_by(wide.max(1)).copied().collect()).collect();
-    of_columns(document, point, &outcome.columns, &outcome.times_s, columns)
+    let drawn = if outcome.row_errors.is_empty() { 0 } else { wide };
+    let bands = (0..drawn).map(|k| outcome.row_errors.iter().skip(k).step_by(wide.max(1)).copied().collect()).collect();
+    of_columns(document, point, &outcome.columns, &outcome.times_s, columns, bands)
 }
 
-/// The plots of columns recorded earlier.
-pub fn of_columns(document: &Document, point: &Point, columns: &[Column], times_s: &[f64], values: Vec<Vec<f64>>) -> Vec<Named> {
+/// The plots of columns recorded earlier; `bands` are their standard errors, none where nothing was drawn.
+pub fn of_columns(
+    document: &Document,
+    point: &Point,
+    columns: &[Column],
+    times_s: &[f64],
+    values: Vec<Vec<f64>>,
+    bands: Vec<Vec<f64>>,
+) -> Vec<Named> {
     let mut drawn = Vec::new();
     for plot in &document.output.plots {
         match plot {
             Plot::Traces if !columns.is_empty() => {
-                drawn.push(("traces", traces(&traces_figure(document, point, columns, times_s, &values))))
+                drawn.push(("traces", traces(&traces_figure(document, point, columns, times_s, (&values, &bands)))))
             }
             Plot::Envelopes if !point.timeline.pulses.is_empty() => {
                 drawn.push(("envelopes", envelopes(&envelopes_figure(document, point))))
@@ -167,10 +176,16 @@ fn marks(point: &Point) -> Vec<(String, f64)> {
     point.timeline.marks.iter().map(|(name, at)| (name.clone(), at.seconds())).collect()
 }
 
-fn traces_figure(document: &Document, point: &Point, columns: &[Column], times_s: &[f64], values: &[Vec<f64>]) -> TracesFigure {
+fn traces_figure(
+    document: &Document,
+    point: &Point,
+    columns: &[Column],
+    times_s: &[f64],
+    (values, bands): (&[Vec<f64>], &[Vec<f64>]),
+) -> TracesFigure {
     let mut panels: Vec<(&str, Panel)> = Vec::new();
-    for (column, values) in columns.iter().zip(values) {
-        let series = Series { name: column.label.clone(), values: values.clone(), band: None };
+    for (k, (column, values)) in columns.iter().zip(values).enumerate() {
+        let series = Series { name: column.label.clone(), values: values.clone(), band: bands.get(k).cloned() };
         match panels.iter_mut().find(|(name, _)| *name == column.panel) {
             Some((_, panel)) => panel.series.push(series),
             None => {

@@ -23,8 +23,13 @@ pub fn config(document: &Document) -> Value {
 
 /// Warnings of the config and of the run.
 pub fn warnings(document: &Document, point: &Point, outcome: &Outcome) -> Vec<String> {
-    let mut texts: Vec<String> =
-        document.warnings.iter().chain(&point.warnings).map(|warning| one_line(&document.sources, warning)).collect();
+    let mut texts: Vec<String> = document
+        .warnings
+        .iter()
+        .chain(&point.warnings)
+        .chain(outcome.warnings())
+        .map(|warning| one_line(&document.sources, warning))
+        .collect();
     if !outcome.reached {
         texts.push(super::summary::not_reached(document, outcome));
     }
@@ -63,8 +68,18 @@ pub fn result(document: &Document, point: &Point, outcome: &Outcome) -> Value {
     put("frame", super::frame_json::frame(document, point));
     put("method", method);
     put("error_figure", number(outcome.error_figure));
+    if let Some(error) = outcome.sampling_error() {
+        put("sampling_error", number(error));
+    }
     put("accuracy", json!({"final": document.accuracy.last, "reached": outcome.reached}));
     put("errors", Value::Object(errors));
+    if let Some(average) = &outcome.average {
+        if average.sampling_error.is_some() {
+            let of = |f: &crate::outcome::Final| (f.name.clone(), f.sampling_error.map_or(Value::Null, number));
+            put("sampling_errors", Value::Object(outcome.finals.iter().map(of).collect()));
+        }
+        put("average", json!({"over": average.words, "runs": average.runs, "draws": average.draws}));
+    }
     if let Some(check) = &outcome.cross_check {
         let found = match &check.difference {
             Ok(difference) => json!({"method": check.method, "difference": number(*difference)}),

@@ -11,6 +11,11 @@ const SHOWN: usize = 16;
 
 /// A value with its error: digits down to the error's second digit, and the error with two.
 pub fn with_error(value: f64, error: f64) -> String {
+    with_errors(value, error, error)
+}
+
+/// The same with the digits of another, larger uncertainty.
+fn with_errors(value: f64, error: f64, shown: f64) -> String {
     if !value.is_finite() {
         return "no number".to_string();
     }
@@ -22,9 +27,9 @@ pub fn with_error(value: f64, error: f64) -> String {
     if value != 0.0 && value.abs() < 1e-4 {
         // small numbers keep their power of ten; as many digits as the error leaves meaning
         let digits = (value.abs().log10().floor() as i32 - first + 1).clamp(1, 15) as usize;
-        return format!("{value:.digits$e} +- {error:.1e}");
+        return format!("{value:.digits$e} +- {shown:.1e}");
     }
-    format!("{value:.decimals$} +- {error:.1e}")
+    format!("{value:.decimals$} +- {shown:.1e}")
 }
 
 /// Why the accuracy was not reached and what to do.
@@ -99,7 +104,9 @@ pub fn summary(document: &Document, point: &Point, outcome: &Outcome, place: Opt
     let wide = outcome.finals.iter().take(SHOWN).map(|f| f.name.chars().count()).max().unwrap_or(0);
     for f in outcome.finals.iter().take(SHOWN) {
         let unit = if f.unit == "1" || f.name.ends_with(f.unit) { String::new() } else { format!(" {}", f.unit) };
-        text.push_str(&format!("  {:<wide$}  {}{unit}\n", f.name, with_error(f.value, f.error)));
+        let sampling = f.sampling_error.map_or(String::new(), |error| format!(", sampling error {error:.1e}"));
+        let digits = f.sampling_error.map_or(f.error, |sampling| sampling.max(f.error));
+        text.push_str(&format!("  {:<wide$}  {}{unit}{sampling}\n", f.name, with_errors(f.value, digits, f.error)));
     }
     if outcome.finals.len() > SHOWN {
         text.push_str(&format!("  and {} more in result.json\n", outcome.finals.len() - SHOWN));
@@ -131,6 +138,13 @@ pub fn summary(document: &Document, point: &Point, outcome: &Outcome, place: Opt
         outcome.resolutions[0],
         outcome.resolutions[1]
     ));
+    if let Some(average) = &outcome.average {
+        let sampling = match average.sampling_error {
+            Some(error) => format!("; largest sampling error {error:.1e} (one standard error)"),
+            None => String::new(),
+        };
+        text.push_str(&format!("average over {}: {} runs{sampling}\n", average.words, average.runs));
+    }
     if let Some(check) = &outcome.cross_check {
         text.push_str(&match &check.difference {
             Ok(difference) => format!("cross-check by {}: differs by {difference:.1e}\n", check.method),

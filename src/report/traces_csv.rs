@@ -1,8 +1,12 @@
-//! traces.csv: `time_s` first, then one column per recorded quantity; each double survives the round trip.
+//! traces.csv: `time_s` first, then one column per recorded quantity, then their standard errors where draws were averaged; each double
+//! survives the round trip.
 
 use std::io::{self, Write};
 
 use crate::outcome::Outcome;
+
+/// What is added to the heading of a column for its standard error, where the numbers are means over random draws.
+pub const SAMPLING_ERROR: &str = "_sampling_error";
 
 /// Writes the table.
 pub fn write(outcome: &Outcome, to: impl Write) -> io::Result<()> {
@@ -11,12 +15,17 @@ pub fn write(outcome: &Outcome, to: impl Write) -> io::Result<()> {
     for column in &outcome.columns {
         table.write_field(&column.name)?;
     }
+    let drawn = !outcome.row_errors.is_empty();
+    for column in outcome.columns.iter().filter(|_| drawn) {
+        table.write_field(format!("{}{SAMPLING_ERROR}", column.name))?;
+    }
     table.write_record(None::<&[u8]>)?;
     let wide = outcome.columns.len();
     let mut text = String::new();
     for (k, time) in outcome.times_s.iter().enumerate() {
         let row = &outcome.rows[k * wide..(k + 1) * wide];
-        for value in std::iter::once(time).chain(row) {
+        let errors = outcome.row_errors.iter().skip(k * wide).take(wide);
+        for value in std::iter::once(time).chain(row).chain(errors) {
             text.clear();
             // the shortest text that reads back as the same double
             let _ = std::fmt::Write::write_fmt(&mut text, format_args!("{value:?}"));

@@ -44,6 +44,7 @@ pub fn write(facts: &Facts, out: &mut dyn Write) -> io::Result<()> {
     object.list("two_photon", two)?;
     let commutators = facts.commutators.iter();
     object.list("commutators", commutators.map(|(a, b, size)| json!({"name": format!("{a} and {b}"), "size": number(*size)})))?;
+    object.value("noise", &super::noise::json(facts))?;
     object.value("frame", &crate::report::frame_json::frame(document, point))?;
     object.value("ledger", &crate::report::frame_json::ledger(document, point))?;
     let defaults = document.defaults.iter();

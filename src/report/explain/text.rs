@@ -3,6 +3,7 @@
 use super::drives;
 use super::facts::Facts;
 use super::frame;
+use super::noise;
 use super::page::{count, digits, prefix, quantity, Page};
 use super::timetable::timetable;
 use super::words;
@@ -22,6 +23,7 @@ pub fn text(facts: &Facts) -> String {
     drives::drives(&mut page, facts);
     drives::pulses(&mut page, facts);
     timetable(&mut page, facts);
+    noise::noise(&mut page, facts);
     frame::frame(&mut page, facts);
     kept(&mut page, facts);
     terms(&mut page, facts);
