@@ -11,6 +11,8 @@ use std::sync::Arc;
 pub mod shaken;
 pub mod wander;
 
+use crate::config::decay::{Decay, Leaves};
+use crate::config::dephasing::{Dephasing, Weights};
 use crate::config::document::{not_finite, Document};
 use crate::config::drives::{Drive, DriveMatrix, Form};
 use crate::config::envelopes::{Samples, SizeWord};
@@ -34,6 +36,7 @@ use crate::frame::rotating::{rotate, Beat, Rotated, Setting};
 use crate::measure::breaks_period;
 use crate::model;
 use crate::model::built::Built;
+use crate::model::surroundings::Surroundings;
 use crate::problem::{Matrix, Problem, Start};
 use crate::units::{rad_s, RAD_PER_TURN};
 
@@ -66,6 +69,8 @@ pub struct Point<'p> {
     pub couplings: Vec<Coupling>,
     /// Curves of the envelopes.
     pub curves: Vec<Arc<dyn Curve>>,
+    /// What surrounds the system.
+    pub surroundings: Surroundings,
     /// The sequence in time.
     pub timeline: Timeline<'p>,
     /// The laboratory frame.
@@ -97,6 +102,7 @@ struct Touched {
     couplings: bool,
     curves: Vec<bool>,
     start: bool,
+    surroundings: bool,
 }
 
 /// A point whose numbers can be moved again and again.
@@ -158,13 +164,14 @@ impl Plan {
         let (statics, energies_hz) = statics(&built);
         let couplings = couplings(document, &built, &energies_hz, &values)?;
         let curves: Vec<Arc<dyn Curve>> = document.envelopes.iter().map(|envelope| curve(envelope, &values)).collect::<Result<_, _>>()?;
+        let surroundings = Surroundings::new(document, &built, &values, &energies_hz)?;
         let lab = Problem {
+            start: start_state(document, &values, &statics, &surroundings)?,
             statics: Arc::new(statics),
             matrices: Arc::new(couplings.iter().map(|coupling| coupling.turning.clone()).collect()),
             segments: Vec::new(),
             terms: Vec::new(),
-            start: start_state(document, &values),
-            jumps: Arc::default(),
+            jumps: Arc::new(surroundings.jumps.clone()),
             moments: Vec::new(),
         };
         let timeline = timeline(document, &values, &couplings, &curves)?;
@@ -187,6 +194,7 @@ impl Plan {
             energies_hz,
             couplings,
             curves,
+            surroundings,
             timeline,
             lab,
             rows: Vec::new(),
@@ -260,9 +268,33 @@ impl Touched {
                     || matches!(&envelope.samples, Some(Samples::List(list)) if list.iter().any(|register| is(*register)))
             })
             .collect();
+        // what comes with the system moves with it
+        let operator = |index: usize| {
+            let entries = document.operators[index].entries();
+            entries.map_or(statics, |list| list.iter().any(|e| is(e.value.re) || e.value.im.is_some_and(is)))
+        };
+        let decay = |decay: &Decay| {
+            let leaves = match &decay.leaves {
+                Leaves::Level { to, .. } => to.any(&is),
+                Leaves::Operator(index) => operator(*index),
+            };
+            // a bath looks at the gaps
+            leaves || is(decay.speed.size.register) || decay.temperature.is_some_and(|bath| statics || is(bath.register))
+        };
+        let dephasing = |dephasing: &Dephasing| {
+            let weights = match &dephasing.weights {
+                Weights::Levels(list) => list.iter().any(|(_, weight)| is(weight.register)),
+                Weights::Operator(index) => operator(*index),
+            };
+            weights || is(dephasing.size().register)
+        };
+        let surroundings = document.decays.iter().any(decay) || document.dephasings.iter().any(dephasing);
         let start = match &document.start {
             State::Superposition(parts, _) => parts.iter().any(|(_, size, phase)| is(size.register) || is(phase.register)),
-            State::Level(_) | State::Amplitudes(_) => false,
+            State::Mix(shares) => shares.any(&is),
+            State::Thermal(temperature) => statics || is(temperature.register),
+            State::Steady(_) => statics || surroundings,
+            State::Level(_) | State::Amplitudes(_) | State::Density(_) => false,
         };
         Touched {
             statics,
@@ -270,6 +302,7 @@ impl Touched {
             couplings: document.drives.iter().any(|drive| drive_registers(document, drive).into_iter().any(is)),
             curves,
             start,
+            surroundings,
             registers,
         }
     }
@@ -343,8 +376,12 @@ impl<'p> Point<'p> {
         for (k, envelope) in document.envelopes.iter().enumerate().filter(|(k, _)| touched.curves[*k]) {
             self.curves[k] = curve(envelope, &self.values)?;
         }
+        if touched.surroundings {
+            self.surroundings = Surroundings::new(document, &self.built, &self.values, &self.energies_hz)?;
+            self.lab.jumps = Arc::new(self.surroundings.jumps.clone());
+        }
         if touched.start {
-            self.lab.start = start_state(document, &self.values);
+            self.lab.start = start_state(document, &self.values, &self.lab.statics, &self.surroundings)?;
         }
         self.timeline = timeline(document, &self.values, &self.couplings, &self.curves)?;
         self.segment(document)
@@ -614,6 +651,16 @@ fn timeline<'p>(
     lay_out(document, values, &reference, &lengths)
 }
 
-fn start_state(document: &Document, values: &[f64]) -> Start {
-    Start::Pure(model::amplitudes(document.system.names.len(), &document.start, values))
+/// The state at time zero; `statics` in rad/s.
+fn start_state(document: &Document, values: &[f64], statics: &Matrix, surroundings: &Surroundings) -> Result<Start, Mistake> {
+    let hz = statics.map(|entry| entry / rad_s(1.0));
+    match model::start(&document.start, values, &hz)? {
+        Some(start) => Ok(start),
+        None => steady_start(document, statics, surroundings),
+    }
+}
+
+fn steady_start(document: &Document, _statics: &Matrix, _surroundings: &Surroundings) -> Result<Start, Mistake> {
+    let State::Steady(place) = document.start else { unreachable!() };
+    Err(Mistake::error(place, Fault::NotNow { key: "steady".to_string(), section: "start".to_string() }))
 }

@@ -4,6 +4,8 @@ use std::path::{Path, PathBuf};
 use std::sync::Arc;
 
 use super::compare::{self, Compare, Variant};
+use super::decay::{read_decays, Decay};
+use super::dephasing::{read_dephasings, Dephasing};
 use super::drives::{CarrierPhase, Drive, Form};
 use super::envelopes::Envelope;
 use super::messages::{Fault, Mistake};
@@ -48,7 +50,7 @@ const SECTIONS: [&str; 25] = [
     "hardware",
     "output",
 ];
-const LATER: [&str; 6] = ["basis", "decay", "dephasing", "tune", "fit", "hardware"];
+const LATER: [&str; 4] = ["basis", "tune", "fit", "hardware"];
 
 /// A config that holds no mistake.
 #[derive(Debug, Clone)]
@@ -77,6 +79,10 @@ pub struct Document {
     pub sequence_place: Place,
     /// Numbers that are not the same in every shot.
     pub noise: Vec<NoiseEntry>,
+    /// What leaves levels, and where it goes.
+    pub decays: Vec<Decay>,
+    /// What fades coherences alone.
+    pub dephasings: Vec<Dephasing>,
     /// The state at time zero.
     pub start: State,
     /// What to keep.
@@ -312,6 +318,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     };
     let frame = super::settings::read_frame(reader, root.get("frame"));
     let mut used_operators = Vec::new();
+    let surroundings = if readable { surroundings(reader, root, &operators, &mut used_operators) } else { None };
     let record = if readable { super::record::read_record(reader, root.get("record"), &operators, &mut used_operators) } else { None };
     let accuracy = super::settings::read_accuracy(reader, root.get("accuracy"));
     let output = super::settings::read_output(reader, root.get("output"));
@@ -341,7 +348,9 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         None => None,
     };
     let run = run?;
-    let (system, steps, start, record, accuracy, output, frame) = (system?, steps?, start?, record?, accuracy?, output?, frame?);
+    let (system, steps, start, mut record, accuracy, output, frame) = (system?, steps?, start?, record?, accuracy?, output?, frame?);
+    let (decays, dephasings) = surroundings?;
+    super::record::beside_surroundings(reader, &mut record, root.get("record"), &decays, &dephasings);
     let mut document = Document {
         sources: reader.sources.clone(),
         title,
@@ -355,6 +364,8 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         sequence: steps,
         sequence_place: sequence_node.map_or(root.place, |node| node.place),
         noise: noise?,
+        decays,
+        dephasings,
         start,
         record,
         frame,
@@ -372,6 +383,25 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     reader.mistakes.extend(super::instruments::judge(&document));
     document.warnings = reader.mistakes.iter().filter(|mistake| mistake.warning).cloned().collect();
     Some(document)
+}
+
+/// `decay:` and `dephasing:`.
+fn surroundings(
+    reader: &mut Reader,
+    root: &Node,
+    operators: &[Operator],
+    used: &mut Vec<String>,
+) -> Option<(Vec<Decay>, Vec<Dephasing>)> {
+    let decays = match root.get("decay") {
+        Some(node) => read_decays(reader, node, operators, used),
+        None => Some(Vec::new()),
+    };
+    let known = decays.as_deref().unwrap_or_default();
+    let dephasings = match root.get("dephasing") {
+        Some(node) => read_dephasings(reader, node, operators, known, used),
+        None => Some(Vec::new()),
+    };
+    Some((decays?, dephasings?))
 }
 
 /// `numbers:`, `numbers_from:` and the values set from outside.

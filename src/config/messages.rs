@@ -3,6 +3,10 @@
 //! A [`Fault`] says what was found and what was expected; [`Mistake`] adds where. The sentence is made here alone: kind, file,
 //! line and column; one plain fact; the line with the spot marked; why; what to write.
 
+mod open;
+
+pub use open::OpenFault;
+
 use super::place::{Place, Sources};
 use crate::units::Dim;
 
@@ -200,6 +204,8 @@ pub enum Fault {
     RoughAverage { draws: usize, sampling_error: f64, accuracy: f64, needed: f64 },
     Revival { points: String, from_s: f64, accuracy: f64, write: String },
     SpectrumTooWide { turns: f64, nodes: f64, limit: f64 },
+    // decay, dephasing, mixtures and read-out
+    Open(OpenFault),
     // from the command line
     NoSuchNumber { name: String, near: Option<String>, known: Vec<String> },
 }
@@ -454,6 +460,9 @@ impl Fault {
                     words = words
                         .why("A rate has no angle in it; a linewidth in Hz is one over 2 pi of it.")
                         .write("value / 1 rad      (2 pi times a linewidth, as a rate)");
+                    if what.starts_with("decay") {
+                        words = words.write("linewidth: value      (the full width of the line, in Hz)");
+                    }
                 } else if *wanted == Dim::FREQUENCY && *found == Dim::RATE {
                     words =
                         words.why("Hz means turns per second; a rate in /s has no turns in it.").write("0.5 turn / time, or a value in Hz");
@@ -866,6 +875,7 @@ impl Fault {
             ))
             .why("Each frequency of the noise is followed over the whole sequence.")
             .write("a lower upper limit of the spectrum, a shorter sequence, or fewer recorded times"),
+            Open(fault) => fault.words(),
             NoSuchNumber { name, near, known } => say(format!("the file has no number called \"{name}\"."))
                 .why(format!("Only named numbers can be set: {}.", list(known)))
                 .maybe(&near.as_ref().map(|near| format!("{near}=value")), "--set "),

@@ -1,5 +1,7 @@
 //! Text in, a checked [`Document`](document::Document) out, with a place on every value.
 pub mod compare;
+pub mod decay;
+pub mod dephasing;
 pub mod document;
 pub mod drives;
 pub mod envelopes;
@@ -16,8 +18,10 @@ pub mod run;
 pub mod scan;
 pub mod sequence;
 pub mod settings;
+pub mod shots;
 pub mod starters;
 pub mod state;
+mod state_file;
 pub mod system;
 pub mod tape;
 pub mod tree;

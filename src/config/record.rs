@@ -1,9 +1,12 @@
 //! `record:`.
 
+use super::decay::Decay;
+use super::dephasing::Dephasing;
 use super::matrix::{self, MatrixEntry};
-use super::messages::Fault;
+use super::messages::{Fault, OpenFault};
 use super::place::Place;
 use super::reader::{Quantity, Reader};
+use super::shots::{read_shots, Shots};
 use super::state::{read_state, State};
 use super::system::Operator;
 use super::tree::Node;
@@ -82,6 +85,39 @@ pub enum Item {
     Gate(Box<Gate>),
     /// Levels of the driven system, over this period.
     QuasiEnergies(Quantity),
+    /// What left the system.
+    Lost,
+    /// The steady state of the last stretch.
+    Steady,
+    /// Counts behind a read-out.
+    Shots(Box<Shots>),
+    /// What each cause has in the gate error.
+    ErrorBudget(Vec<Cause>),
+}
+
+/// A cause of gate errors.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Cause {
+    /// `decay:`.
+    Decay,
+    /// `dephasing:`.
+    Dephasing,
+    /// `noise:`.
+    Noise,
+    /// Population outside the levels of the gate.
+    Leakage,
+}
+
+impl Cause {
+    /// As it is written.
+    pub fn word(self) -> &'static str {
+        match self {
+            Cause::Decay => "decay",
+            Cause::Dephasing => "dephasing",
+            Cause::Noise => "noise",
+            Cause::Leakage => "leakage",
+        }
+    }
 }
 
 /// What is recorded, in the order written.
@@ -97,7 +133,7 @@ pub struct Record {
     pub place: Place,
 }
 
-const KEYS: [&str; 16] = [
+const KEYS: [&str; 20] = [
     "every",
     "at",
     "populations",
@@ -114,8 +150,12 @@ const KEYS: [&str; 16] = [
     "final",
     "population",
     "quasi_energies",
+    "lost",
+    "steady",
+    "shots",
+    "error_budget",
 ];
-const LATER: [&str; 7] = ["part", "lost", "steady", "levels", "transitions", "shots", "error_budget"];
+const LATER: [&str; 3] = ["part", "levels", "transitions"];
 
 /// Reads `record:`, or fills in its defaults.
 pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operator], used: &mut Vec<String>) -> Option<Record> {
@@ -173,6 +213,10 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
             "energy" => switched(reader, value, "energy", Item::Energy, &mut items),
             "adiabatic_populations" => switched(reader, value, "adiabatic_populations", Item::AdiabaticPopulations, &mut items),
             "propagator" => switched(reader, value, "propagator", Item::Propagator, &mut items),
+            "lost" => switched(reader, value, "lost", Item::Lost, &mut items),
+            "steady" => switched(reader, value, "steady", Item::Steady, &mut items),
+            "shots" => read_shots(reader, value).map(|shots| Item::Shots(Box::new(shots))),
+            "error_budget" => read_budget(reader, value).map(Item::ErrorBudget),
             "fidelity" => read_fidelity(reader, value).map(Item::Fidelity),
             "quasi_energies" => read_period(reader, value).map(Item::QuasiEnergies),
             "gate" => read_gate(reader, value, operators, used).map(|gate| Item::Gate(Box::new(gate))),
@@ -236,6 +280,46 @@ fn read_fidelity(reader: &mut Reader, node: &Node) -> Option<State> {
     reader.fields(node, "fidelity", &["to"], &[])?;
     let to = reader.need(node, "to", "fidelity", "up")?;
     read_state(reader, to, "fidelity / to")
+}
+
+/// The causes of `error_budget:`.
+fn read_budget(reader: &mut Reader, node: &Node) -> Option<Vec<Cause>> {
+    let causes = [Cause::Decay, Cause::Dephasing, Cause::Noise, Cause::Leakage];
+    let words = causes.map(|cause| (cause.word(), cause));
+    let mut found = Vec::new();
+    for item in reader.list(node, "error_budget", "error_budget: [decay, dephasing, noise, leakage]")? {
+        let cause = reader.word(item, "a cause of gate errors", &words)?;
+        if !found.contains(&cause) {
+            found.push(cause);
+        }
+    }
+    Some(found)
+}
+
+/// What a record means beside decay and dephasing: what leaves the system is recorded, what belongs to a closed one refused.
+pub fn beside_surroundings(reader: &mut Reader, record: &mut Record, node: Option<&Node>, decays: &[Decay], dephasings: &[Dephasing]) {
+    let has = |record: &Record, item: fn(&Item) -> bool| record.items.iter().any(item);
+    let first = decays.iter().map(|decay| decay.place.line).chain(dephasings.iter().map(|dephasing| dephasing.place.line)).min();
+    let of = |key: &str| node.and_then(|node| node.get(key)).map_or(record.place, |value| value.place);
+    if let Some(line) = first {
+        let write = "gate: {within: [..], target: .., free_z: ..}      (figures of the channel)";
+        if has(record, |item| matches!(item, Item::Propagator)) {
+            let fault = OpenFault::NotOfOpen { key: "propagator", section: "It", line, write };
+            reader.error(of("propagator"), Fault::Open(fault));
+        }
+        if has(record, |item| matches!(item, Item::QuasiEnergies(_))) {
+            let write = "record: {steady: true}, or the file without decay and dephasing";
+            let fault = OpenFault::NotOfOpen { key: "quasi_energies", section: "A quasi-energy", line, write };
+            reader.error(of("quasi_energies"), Fault::Open(fault));
+        }
+    }
+    if has(record, |item| matches!(item, Item::ErrorBudget(_))) && !has(record, |item| matches!(item, Item::Gate(_))) {
+        reader.error(of("error_budget"), Fault::Open(OpenFault::BudgetWithoutGate));
+    }
+    if decays.iter().any(Decay::goes_outside) && !has(record, |item| matches!(item, Item::OutsideOf(_))) {
+        reader.default("record.outside_of", "all levels, as a decay goes outside");
+        record.items.push(Item::OutsideOf((0..reader.level_names().len()).collect()));
+    }
 }
 
 fn read_period(reader: &mut Reader, node: &Node) -> Option<Quantity> {
@@ -343,6 +427,7 @@ fn read_finals(
         "fidelity",
         "gate_error",
         "gate_leakage",
+        "lost",
     ];
     let hints = [("populations", "Here one names them: population: up, or population: [up, down].")];
     let entries = reader.fields(node, "record / final", &known, &hints)?;
@@ -367,6 +452,7 @@ fn read_finals(
                 Some(true) => match key {
                     "outside" => Some(Item::OutsideOf((0..level_names.len()).collect())),
                     "energy" => Some(Item::Energy),
+                    "lost" => Some(Item::Lost),
                     // a fidelity or a gate must say with what
                     _ if items.iter().any(|item| {
                         matches!((key, item), ("fidelity", Item::Fidelity(_)) | ("gate_error" | "gate_leakage", Item::Gate(_)))
@@ -415,6 +501,7 @@ fn columns_of(item: &Item, levels: &[String], operators: &[Operator]) -> Vec<Str
         Item::MeanOf(list) => list.iter().map(|operator| format!("mean_{}", operators[*operator].name)).collect(),
         Item::OutsideOf(_) => vec!["outside".to_string()],
         Item::Energy => vec!["energy_Hz".to_string()],
+        Item::Lost => vec!["lost".to_string()],
         _ => Vec::new(),
     }
 }
@@ -438,6 +525,7 @@ fn add(items: &mut Vec<Item>, wanted: Item) {
             (Item::Coherence(list), Item::Coherence(more)) | (Item::Bloch(list), Item::Bloch(more)) => return join(list, more.clone()),
             (Item::OutsideOf(_), Item::OutsideOf(_))
             | (Item::Energy, Item::Energy)
+            | (Item::Lost, Item::Lost)
             | (Item::AdiabaticPopulations, Item::AdiabaticPopulations) => return,
             _ => {}
         }

@@ -33,11 +33,13 @@ pub struct Accuracy {
     pub method: MethodWord,
     /// Whether a second, independent route is taken too.
     pub cross_check: bool,
+    /// Seed of quantum trajectories.
+    pub seed: u64,
 }
 
 /// Reads `accuracy:`.
 pub fn read_accuracy(reader: &mut Reader, node: Option<&Node>) -> Option<Accuracy> {
-    let mut accuracy = Accuracy { last: USUAL_ACCURACY, method: MethodWord::Automatic, cross_check: false };
+    let mut accuracy = Accuracy { last: USUAL_ACCURACY, method: MethodWord::Automatic, cross_check: false, seed: 0 };
     let words = [
         ("automatic", MethodWord::Automatic),
         ("constant steps", MethodWord::ConstantSteps),
@@ -45,15 +47,14 @@ pub fn read_accuracy(reader: &mut Reader, node: Option<&Node>) -> Option<Accurac
         ("geometric", MethodWord::Geometric),
     ];
     if let Some(node) = node {
-        let entries = reader.fields(
+        reader.fields(
             node,
             "accuracy",
             &["final", "method", "cross_check", "seed"],
             &[("tolerance", "The largest allowed error is called final.")],
         )?;
-        if let Some(seed) = entries.iter().find(|entry| entry.key == "seed") {
-            reader.error(seed.place, Fault::NotNow { key: "seed".to_string(), section: "accuracy".to_string() });
-            return None;
+        if let Some(seed) = node.get("seed") {
+            accuracy.seed = read_seed(reader, seed, "accuracy / seed")?;
         }
     }
     match node.and_then(|node| node.get("final")) {
@@ -79,6 +80,17 @@ pub fn read_accuracy(reader: &mut Reader, node: Option<&Node>) -> Option<Accurac
         accuracy.cross_check = reader.truth(check, "accuracy / cross_check")?;
     }
     Some(accuracy)
+}
+
+/// A seed: a whole number from 0 to 2^53, which doubles hold exactly.
+pub fn read_seed(reader: &mut Reader, node: &Node, what: &str) -> Option<u64> {
+    let value = reader.whole(node, what, 0.0)?;
+    if value > 9_007_199_254_740_992.0 {
+        let fault = Fault::OutOfRange { what: what.to_string(), found: super::messages::short(value), wanted: "at most 2^53".to_string() };
+        reader.error(node.place, fault);
+        return None;
+    }
+    Some(value as u64)
 }
 
 /// What a rotating frame follows.

@@ -1,16 +1,15 @@
 //! `start:`, and states wherever one is named.
 
-use std::path::Path;
-
+use super::decay::{read_shares, read_temperature, Shares};
 use super::messages::{short, Fault};
-use super::npy;
 use super::place::Place;
 use super::reader::{Quantity, Reader};
+use super::state_file::read_state_file;
 use super::system::parts::read_joint_level;
 use super::tree::Node;
 use crate::units::Dim;
 
-/// A pure state.
+/// A state: pure, or one of the mixtures that only `start:` takes.
 #[derive(Debug, Clone)]
 pub enum State {
     /// A basis state.
@@ -19,20 +18,28 @@ pub enum State {
     Superposition(Vec<(usize, Quantity, Quantity)>, Place),
     /// Amplitudes read from a file, (re, im) in basis order, normalised.
     Amplitudes(Vec<(f64, f64)>),
+    /// Density matrix read from a file, column by column, trace 1.
+    Density(Vec<(f64, f64)>),
+    /// Levels with shares that add up to 1.
+    Mix(Shares),
+    /// Thermal equilibrium of the static system, K.
+    Thermal(Quantity),
+    /// Steady state of the static system with its decays.
+    Steady(Place),
 }
 
-const LATER: [&str; 5] = ["mix", "temperature", "part", "quanta", "steady"];
+const LATER: [&str; 2] = ["part", "quanta"];
+const KINDS: [&str; 4] = ["superposition", "mix", "temperature", "state_from"];
 
 /// Reads `start:`.
 pub fn read_start(reader: &mut Reader, node: &Node) -> Option<State> {
     if node.text() == Some("steady") && !reader.level_names().iter().any(|name| name == "steady") {
-        reader.error(node.place, Fault::NotNow { key: "steady".to_string(), section: "start".to_string() });
-        return None;
+        return Some(State::Steady(node.place));
     }
     let Some(entries) = node.entries() else {
         return reader.level(node).map(State::Level);
     };
-    let of_all = ["superposition", "state_from"].into_iter().chain(LATER);
+    let of_all = KINDS.into_iter().chain(LATER);
     if !reader.parts.is_empty() && !of_all.into_iter().any(|word| entries.iter().any(|entry| entry.key == word)) {
         let parts = reader.parts.clone();
         return read_joint_level(reader, node, &parts).map(State::Level);
@@ -41,12 +48,32 @@ pub fn read_start(reader: &mut Reader, node: &Node) -> Option<State> {
         reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: "start".to_string() });
         return None;
     }
-    reader.fields(node, "start", &["superposition", "state_from"], &[])?;
-    let entry = reader.one_of(node, &["superposition", "state_from"], "start", Some("Or the name of a level alone: start: down."))?;
-    if entry.key == "superposition" {
-        return read_superposition(reader, &entry.value);
+    let hints = [("thermal", "Thermal equilibrium is written start: {temperature: 130 mK}."), ("steady", "Written alone: start: steady.")];
+    reader.fields(node, "start", &KINDS, &hints)?;
+    let entry = reader.one_of(node, &KINDS, "start", Some("Or the name of a level alone: start: down."))?;
+    match entry.key.as_str() {
+        "superposition" => read_superposition(reader, &entry.value),
+        "mix" => read_mix(reader, &entry.value),
+        "temperature" => read_temperature(reader, &entry.value, "start / temperature").map(State::Thermal),
+        _ => read_state_file(reader, &entry.value),
     }
-    read_state_file(reader, &entry.value)
+}
+
+/// `mix:` shares of levels.
+fn read_mix(reader: &mut Reader, node: &Node) -> Option<State> {
+    let names = reader.level_names();
+    let shares = read_shares(reader, node, "mix", |reader, place, text| {
+        let level = names.iter().position(|name| name == text);
+        if level.is_none() {
+            reader.unknown(place, "level", text, &names);
+        }
+        level.map(Some)
+    })?;
+    if let Err(fault) = shares.numbers(None, "mix", &reader.tape.as_written()) {
+        reader.error(node.place, fault);
+        return None;
+    }
+    Some(State::Mix(shares))
 }
 
 /// A level, or `{superposition: ..}` / `{level: [size, phase]}`, as `fidelity: {to: ..}` takes.
@@ -120,63 +147,4 @@ fn read_superposition(reader: &mut Reader, node: &Node) -> Option<State> {
         return None;
     }
     Some(State::Superposition(parts, node.place))
-}
-
-fn read_state_file(reader: &mut Reader, node: &Node) -> Option<State> {
-    let name = reader.text(node, "state_from", "state_from: ../other-run/result.json")?.to_string();
-    let path = reader.beside(&name);
-    let found = if path.extension().is_some_and(|end| end == "npy") {
-        npy::read(&path).and_then(|array| match (array.rows, array.columns) {
-            (1, _) | (_, 1) => Ok((array.bytes, array.values)),
-            (rows, columns) => Err(format!("it has {rows} rows and {columns} columns, not one state")),
-        })
-    } else {
-        end_state(&path)
-    };
-    let (bytes, amplitudes) = match found {
-        Ok(found) => found,
-        Err(reason) => {
-            reader.error(node.place, Fault::CannotRead { path: name, reason });
-            return None;
-        }
-    };
-    reader.sources.add(&path, bytes, String::new());
-    let wanted = reader.level_names().len();
-    if amplitudes.len() != wanted {
-        reader.error(
-            node.place,
-            Fault::CannotRead { path: name, reason: format!("it has {} amplitudes for {wanted} levels", amplitudes.len()) },
-        );
-        return None;
-    }
-    let sum: f64 = amplitudes.iter().map(|(re, im)| re * re + im * im).sum();
-    if !(sum.is_finite() && (sum - 1.0).abs() <= 1e-6) {
-        reader.error(node.place, Fault::NotNormalised { sum, write: "a file whose squared amplitudes add up to 1".to_string() });
-        return None;
-    }
-    let norm = sum.sqrt();
-    Some(State::Amplitudes(amplitudes.into_iter().map(|(re, im)| (re / norm, im / norm)).collect()))
-}
-
-/// A file's bytes and the amplitudes found in it.
-type StateFile = (Vec<u8>, Vec<(f64, f64)>);
-
-/// `end_state.amplitudes` of a result.json; a folder stands for the result.json in it.
-fn end_state(path: &Path) -> Result<StateFile, String> {
-    let path = if path.is_dir() { path.join("result.json") } else { path.to_path_buf() };
-    let bytes = std::fs::read(&path).map_err(|error| {
-        if error.kind() == std::io::ErrorKind::NotFound {
-            "no such file exists".to_string()
-        } else {
-            error.to_string()
-        }
-    })?;
-    let json: serde_json::Value = serde_json::from_slice(&bytes).map_err(|_| "it is neither a result.json nor a .npy file".to_string())?;
-    let pairs = json.pointer("/end_state/amplitudes").and_then(|list| list.as_array()).ok_or("it holds no end_state")?;
-    let amplitudes = pairs
-        .iter()
-        .map(|pair| Some((pair.get(0)?.as_f64()?, pair.get(1)?.as_f64()?)))
-        .collect::<Option<Vec<_>>>()
-        .ok_or("its end_state is no list of [re, im]")?;
-    Ok((bytes, amplitudes))
 }

@@ -9,6 +9,7 @@ mod coherence;
 mod energy;
 mod fidelity;
 mod gate;
+mod lost;
 mod mean;
 mod outside;
 mod population;
@@ -102,7 +103,8 @@ pub fn observables<'a>(document: &Document, built: &Built, values: &[f64], energ
                 let levels: Vec<usize> = levels.iter().copied().filter(stays).collect();
                 Box::new(population::Populations::new(names, &levels))
             }
-            Item::OutsideOf(levels) => Box::new(outside::Outside::new(levels.clone())),
+            Item::OutsideOf(levels) => Box::new(outside::Outside::new(levels.clone(), loses(problem))),
+            Item::Lost => Box::new(lost::Lost),
             Item::Coherence(pairs) => Box::new(coherence::Coherences::new(names, pairs)),
             Item::Bloch(pairs) => Box::new(bloch::BlochVectors::new(names, pairs)),
             Item::MeanOf(operators) => Box::new(mean::Means::new(document, built, values, operators)),
@@ -114,9 +116,12 @@ pub fn observables<'a>(document: &Document, built: &Built, values: &[f64], energ
             Item::AdiabaticPopulations => {
                 Box::new(adiabatic::AdiabaticPopulations::new(names, problem, &(0..names.len()).filter(stays).collect::<Vec<_>>()))
             }
-            Item::Fidelity(state) => Box::new(fidelity::Fidelity::new(crate::model::amplitudes(names.len(), state, values))),
-            // over a period of its own, so computed apart
-            Item::QuasiEnergies(_) => continue,
+            Item::Fidelity(state) => match crate::model::amplitudes(names.len(), state, values) {
+                Some(to) => Box::new(fidelity::Fidelity::new(to)),
+                None => continue,
+            },
+            // from runs of their own, or from the populations at the end
+            Item::QuasiEnergies(_) | Item::Steady | Item::Shots(_) | Item::ErrorBudget(_) => continue,
             Item::Propagator => {
                 found.demand.propagator = true;
                 found.propagator = true;
@@ -135,6 +140,11 @@ pub fn observables<'a>(document: &Document, built: &Built, values: &[f64], energ
         found.quantities.push(quantity);
     }
     found
+}
+
+/// Whether anything can be missing from the populations: something is lost, or was lost before the start.
+fn loses(problem: &Problem) -> bool {
+    problem.jumps.iter().any(|jump| !jump.keeps) || problem.start.state().trace() < 1.0 - 1e-12
 }
 
 /// The power of two at or above a size, so that scaling by it is exact; 1 for 0.

@@ -7,16 +7,17 @@ pub mod gaps;
 mod mode;
 mod parts;
 pub mod spin;
+pub mod surroundings;
 
 use num_complex::Complex64;
 
 use crate::config::document::Document;
 use crate::config::drives::{Drive, DriveMatrix};
 use crate::config::matrix::MatrixEntry;
-use crate::config::messages::Mistake;
+use crate::config::messages::{Fault, Mistake, OpenFault};
 use crate::config::state::State;
 use crate::config::system::{OperatorSource, Physics, System};
-use crate::problem::{Matrix, Vector};
+use crate::problem::{Matrix, Start, Vector};
 use crate::units::cis_turns;
 
 use built::Built;
@@ -74,8 +75,8 @@ pub fn is_hermitian(matrix: &Matrix, share: f64) -> bool {
     (0..matrix.ncols()).all(|j| (0..=j).all(|i| (matrix[(i, j)] - matrix[(j, i)].conj()).norm() <= share * largest))
 }
 
-/// Amplitudes of a state, norm 1.
-pub fn amplitudes(size: usize, state: &State, values: &[f64]) -> Vector {
+/// Amplitudes of a pure state, norm 1; none of a mixture.
+pub fn amplitudes(size: usize, state: &State, values: &[f64]) -> Option<Vector> {
     let mut vector = Vector::zeros(size);
     match state {
         State::Level(level) => vector[*level] = 1.0.into(),
@@ -90,6 +91,35 @@ pub fn amplitudes(size: usize, state: &State, values: &[f64]) -> Vector {
                 vector[k] = Complex64::new(*re, *im);
             }
         }
+        State::Density(_) | State::Mix(_) | State::Thermal(_) | State::Steady(_) => return None,
     }
-    vector
+    Some(vector)
+}
+
+/// The state at time zero; `statics_hz` is the static Hamiltonian. None for a steady state, which is solved for.
+pub fn start(state: &State, values: &[f64], statics_hz: &Matrix) -> Result<Option<Start>, Mistake> {
+    let size = statics_hz.nrows();
+    let diagonal = |shares: &[(usize, f64)]| {
+        let mut density = Matrix::zeros(size, size);
+        shares.iter().for_each(|(level, share)| density[(*level, *level)] += Complex64::from(*share));
+        density
+    };
+    Ok(match state {
+        State::Density(list) => Some(Start::Mixed(Matrix::from_iterator(size, size, list.iter().map(|(re, im)| Complex64::new(*re, *im))))),
+        State::Mix(shares) => {
+            let numbers = shares.numbers(None, "mix", values).map_err(|fault| Mistake::error(shares.place, fault))?;
+            let shares: Vec<(usize, f64)> = shares.parts.iter().filter_map(|(level, ..)| *level).zip(numbers).collect();
+            Some(Start::Mixed(diagonal(&shares)))
+        }
+        State::Thermal(temperature) => {
+            let kelvin = values[temperature.register as usize];
+            if !(kelvin >= 0.0) {
+                let fault = Fault::Open(OpenFault::BelowZeroKelvin { found: kelvin });
+                return Err(Mistake::error(temperature.place, fault));
+            }
+            Some(Start::Mixed(surroundings::thermal(statics_hz, kelvin)))
+        }
+        State::Steady(_) => None,
+        State::Level(_) | State::Superposition(..) | State::Amplitudes(_) => amplitudes(size, state, values).map(Start::Pure),
+    })
 }

@@ -42,6 +42,9 @@ pub fn write(facts: &Facts, out: &mut dyn Write) -> io::Result<()> {
         json!({"name": name, "detuning_Hz": number(*hz)})
     });
     object.list("two_photon", two)?;
+    for (key, list) in super::surroundings::json(facts) {
+        object.list(key, list.into_iter())?;
+    }
     let commutators = facts.commutators.iter();
     object.list("commutators", commutators.map(|(a, b, size)| json!({"name": format!("{a} and {b}"), "size": number(*size)})))?;
     object.value("noise", &super::noise::json(facts))?;

@@ -5,6 +5,7 @@ use super::facts::Facts;
 use super::frame;
 use super::noise;
 use super::page::{count, digits, prefix, quantity, Page};
+use super::surroundings::surroundings;
 use super::timetable::timetable;
 use super::words;
 
@@ -23,6 +24,7 @@ pub fn text(facts: &Facts) -> String {
     drives::drives(&mut page, facts);
     drives::pulses(&mut page, facts);
     timetable(&mut page, facts);
+    surroundings(&mut page, facts);
     noise::noise(&mut page, facts);
     frame::frame(&mut page, facts);
     kept(&mut page, facts);

@@ -58,6 +58,19 @@ pub fn state(facts: &Facts, state: &State) -> String {
             format!("superposition: {}", words.join(", "))
         }
         State::Amplitudes(list) => format!("{} amplitudes from a file", list.len()),
+        State::Density(_) => "density matrix from a file".to_string(),
+        State::Mix(shares) => {
+            let numbers = shares.numbers(None, "mix", &facts.point.values).unwrap_or_default();
+            let part = |((_, name, _), share): (&(Option<usize>, String, _), f64)| format!("{} of {name}", digits(share, 6));
+            let words: Vec<String> = shares.parts.iter().zip(numbers).take(PARTS).map(part).collect();
+            let more = shares.parts.len().saturating_sub(PARTS);
+            format!("mixture: {}{}", words.join(", "), if more > 0 { format!(", and {more} more") } else { String::new() })
+        }
+        State::Thermal(temperature) => {
+            let kelvin = facts.point.values[temperature.register as usize];
+            format!("thermal equilibrium of the static system at {}", short(kelvin, "K"))
+        }
+        State::Steady(_) => "steady state of the static system with its decays".to_string(),
     }
 }
 
@@ -104,6 +117,17 @@ pub fn records(facts: &Facts) -> Vec<String> {
         Item::AdiabaticPopulations => "populations of the instantaneous eigenstates".to_string(),
         Item::Fidelity(to) => format!("fidelity, the squared overlap with {}", state(facts, to)),
         Item::QuasiEnergies(period) => format!("quasi-energies over {}", short(facts.point.values[period.register as usize], "s")),
+        Item::Lost => "population that left the system".to_string(),
+        Item::Steady => "steady state of the last stretch".to_string(),
+        Item::Shots(shots) => {
+            let number = facts.point.values[shots.number.register as usize];
+            let reads: Vec<&str> = shots.reads.iter().map(|(name, _)| name.as_str()).collect();
+            format!("expected counts of {} shots, read as {}", digits(number, 9), reads.join(", "))
+        }
+        Item::ErrorBudget(causes) => {
+            let words: Vec<&str> = causes.iter().map(|cause| cause.word()).collect();
+            format!("error budget of the gate: {}, pulse, interplay", words.join(", "))
+        }
         Item::Propagator => "propagator of the whole sequence".to_string(),
         Item::Gate(gate) => gate_words(facts, gate, &levels(&gate.within)),
     };
