@@ -10,10 +10,11 @@ use crate::config::compare::{Compare, AS_WRITTEN};
 use crate::config::document::{read_variant, Document, Refusal};
 use crate::config::messages::Mistake;
 use crate::frame::ledger::{LedgerLine, TermKey};
-use crate::measure::{observables, Seen};
+use crate::measure::{observables, Last, Seen};
 use crate::noise::{compute, Draws};
 use crate::outcome::Outcome;
 use crate::plan::{Plan, Point};
+use crate::problem::Matrix;
 use crate::units::cis_turns;
 
 /// Most dropped terms that are put back one by one.
@@ -180,17 +181,14 @@ fn in_frame(document: &Document, point: &Point, outcome: &Outcome, reference_tur
             }
         }
     }
-    if let (Some(judge), Some(propagator)) = (&observables.gate, &outcome.whole) {
-        let mut turned = propagator.clone();
-        for (j, mut row) in turned.row_iter_mut().enumerate() {
-            row *= factors[j];
+    if let (Some(judge), Some(channel)) = (&observables.gate, &outcome.channel) {
+        let mut turned = channel.clone();
+        for image in &mut turned.images {
+            *image = Matrix::from_fn(image.nrows(), image.ncols(), |a, b| factors[a] * image[(a, b)] * factors[b].conj());
         }
-        let figures = judge.judge(&turned);
-        for (name, value, _) in &mut finals {
-            match name.as_str() {
-                "gate_error" => *value = figures.error,
-                "gate_leakage" => *value = figures.leakage,
-                _ => {}
+        for (name, figure) in judge.names().iter().zip(judge.judge(&turned).numbers()) {
+            if let Some((_, value, _)) = finals.iter_mut().find(|(other, ..)| other == name) {
+                *value = figure;
             }
         }
     }

@@ -11,7 +11,7 @@ use crate::config::record::Item;
 use crate::config::settings::MethodWord;
 use crate::measure::{observables, Column, GateFigures, QuasiEnergy, QuasiRecorder, Recorded, TraceRecorder};
 use crate::plan::Point;
-use crate::problem::{Matrix, Problem, Start};
+use crate::problem::{Channel, Matrix, Problem, Start};
 use crate::propagate::{figure, solve, Asked, CrossCheck, Demand, Method, Solved};
 
 /// A final number with its error.
@@ -82,8 +82,8 @@ pub struct Outcome {
     pub finals: Vec<Final>,
     /// Figures of the gate.
     pub gate: Option<GateFigures>,
-    /// The propagator of the whole sequence, wherever one was computed.
-    pub whole: Option<Matrix>,
+    /// What the whole sequence does to the levels of the gate, wherever one is judged.
+    pub channel: Option<Channel>,
     /// The propagator, where it is recorded, and its error figure.
     pub propagator: Option<(Matrix, f64)>,
     /// Levels of the driven system: period in s, what was found, and the error of q in turns.
@@ -209,7 +209,7 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
         }
     }
     let gate =
-        observables.gate.as_ref().filter(|_| sound).zip(recorded.propagator.as_ref()).map(|(judge, propagator)| judge.judge(propagator));
+        observables.gate.as_ref().filter(|_| sound).zip(recorded.channel.as_ref()).map(|(judge, channel)| judge.judge(channel));
     let propagator = recorded.propagator.clone().filter(|_| observables.propagator && sound).map(|propagator| (propagator, whole_error));
     let in_rows = (end + 1) * columns.len();
     let scaled = |numbers: &[f64]| -> Vec<f64> {
@@ -225,7 +225,7 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
         times_s: problem.moments.iter().map(|moment| moment.time_s).collect(),
         rows,
         finals,
-        whole: recorded.propagator.clone(),
+        channel: recorded.channel.clone(),
         gate,
         propagator,
         end_state: recorded.end_state.clone().unwrap_or_else(|| problem.start.clone()),

@@ -12,16 +12,18 @@ mod gate;
 mod lost;
 mod mean;
 mod outside;
+mod overlap;
 mod population;
 mod propagator;
 mod quasi;
 mod recorder;
 mod time_in;
+mod turn_behind;
 
 use crate::config::document::Document;
 use crate::config::record::Item;
 use crate::model::built::Built;
-use crate::problem::{Matrix, Moment, Problem, State};
+use crate::problem::{Channel, Matrix, Moment, Problem, State};
 use crate::propagate::Demand;
 
 pub use gate::GateFigures;
@@ -70,12 +72,21 @@ pub trait Quantity {
     fn see(&self, seen: &Seen, row: &mut Vec<f64>);
 }
 
-/// A quantity of the whole sequence, made from its propagator.
+/// What the whole sequence does.
+#[derive(Debug, Clone, Copy)]
+pub enum Whole<'a> {
+    /// Of a closed system.
+    Propagator(&'a Matrix),
+    /// Of one that decays, dephases, or is averaged over noise.
+    Channel(&'a Channel),
+}
+
+/// A quantity of the whole sequence, made from its propagator or channel.
 pub trait Last {
-    /// Names and scales of its numbers.
+    /// Names of its numbers, which have no dimension.
     fn names(&self) -> Vec<String>;
     /// Appends one number per name.
-    fn see(&self, propagator: &Matrix, numbers: &mut Vec<f64>);
+    fn see(&self, whole: Whole, numbers: &mut Vec<f64>);
 }
 
 /// Everything that one run records.

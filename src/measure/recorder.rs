@@ -1,7 +1,7 @@
 //! Collects the recorded numbers of one run, row after row.
 
-use super::{Column, Observables, Seen};
-use crate::problem::{Matrix, Problem, Start, State};
+use super::{Column, Observables, Seen, Whole};
+use crate::problem::{Channel, Matrix, Problem, Start, State};
 use crate::propagate::Recorder;
 
 /// What one run recorded: every number over its scale, and the state and propagator at the end.
@@ -13,8 +13,10 @@ pub struct Recorded {
     pub in_rows: usize,
     /// The state at the last moment.
     pub end_state: Option<Start>,
-    /// Propagator of the whole sequence, if asked for.
+    /// Propagator of the whole sequence, if asked for and there is one.
     pub propagator: Option<Matrix>,
+    /// Channel of the levels of the gate, if one is judged.
+    pub channel: Option<Channel>,
 }
 
 impl Recorded {
@@ -63,10 +65,18 @@ impl Recorder for TraceRecorder<'_> {
     fn finish(&mut self, propagator: Option<&Matrix>) {
         if let Some(propagator) = propagator {
             for quantity in &self.observables.last {
-                quantity.see(propagator, &mut self.recorded.numbers);
+                quantity.see(Whole::Propagator(propagator), &mut self.recorded.numbers);
             }
+            self.recorded.channel = self.observables.gate.as_ref().map(|gate| Channel::of_propagator(propagator, gate.within()));
             self.recorded.propagator = Some(propagator.clone());
         }
+    }
+
+    fn finish_channel(&mut self, channel: &Channel) {
+        for quantity in &self.observables.last {
+            quantity.see(Whole::Channel(channel), &mut self.recorded.numbers);
+        }
+        self.recorded.channel = Some(channel.clone());
     }
 
     fn numbers(&self) -> &[f64] {
