@@ -86,6 +86,11 @@ impl GateJudge {
         GateJudge { within: gate.within.clone(), target, first_is_lower, free }
     }
 
+    /// For a target matrix on levels of the basis, of two levels in the order lower, upper; `free` are diagonals of free generators.
+    pub fn of(within: &[usize], target: Matrix, free: Vec<Vec<f64>>) -> GateJudge {
+        GateJudge { within: within.to_vec(), target, first_is_lower: true, free }
+    }
+
     /// Judges the channel of the whole sequence, in the frame of the run.
     pub fn judge(&self, channel: &Channel) -> GateFigures {
         let d = self.within.len();

@@ -9,6 +9,9 @@ mod coherence;
 mod energy;
 mod fidelity;
 mod gate;
+mod gate_recorder;
+#[cfg(test)]
+mod gate_tests;
 mod lost;
 mod mean;
 mod outside;
@@ -17,6 +20,7 @@ mod population;
 mod propagator;
 mod quasi;
 mod recorder;
+mod shots;
 mod time_in;
 mod turn_behind;
 
@@ -26,9 +30,11 @@ use crate::model::built::Built;
 use crate::problem::{Channel, Matrix, Moment, Problem, State};
 use crate::propagate::Demand;
 
-pub use gate::GateFigures;
+pub use gate::{GateFigures, GateJudge};
+pub use gate_recorder::GateRecorder;
 pub use quasi::{breaks_period, QuasiEnergy, QuasiRecorder};
 pub use recorder::{Recorded, TraceRecorder};
+pub use shots::{counts, Count};
 
 /// What a quantity sees at a moment.
 pub struct Seen<'a> {
