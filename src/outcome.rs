@@ -3,13 +3,15 @@
 //!
 //! [`measure`] makes the runs, [`conclude`] the figures; an average over noise lies between the two.
 
+pub mod budget;
+
 use std::time::Instant as Clock;
 
 use crate::config::document::Document;
 use crate::config::messages::Mistake;
 use crate::config::record::Item;
 use crate::config::settings::MethodWord;
-use crate::measure::{observables, Column, GateFigures, QuasiEnergy, QuasiRecorder, Recorded, TraceRecorder};
+use crate::measure::{observables, Column, GateFigures, GateJudge, Last, QuasiEnergy, QuasiRecorder, Recorded, TraceRecorder};
 use crate::plan::Point;
 use crate::problem::{Channel, Matrix, Problem, Start};
 use crate::propagate::{figure, solve, Asked, CrossCheck, Demand, Method, Solved};
@@ -157,6 +159,18 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
     conclude(document, point, Measured { solved, average: None }, clock)
 }
 
+/// Figures that are not linear in the channel (the best free turn, coherent and incoherent shares) are those of the averaged channel,
+/// not the averages of those of each draw; their change under refinement is the averaged one.
+fn of_the_averaged_channel(finals: &mut [Final], judge: Option<&GateJudge>, figures: Option<&GateFigures>) {
+    let Some((judge, figures)) = judge.zip(figures) else { return };
+    for (name, number) in judge.names().iter().zip(figures.numbers()) {
+        if let Some(last) = finals.iter_mut().find(|last| last.name == *name) {
+            last.finer += number - last.value;
+            last.value = number;
+        }
+    }
+}
+
 /// Makes figures of what was recorded at a point; `clock` was started with its first run.
 pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: Clock) -> Outcome {
     let Measured { solved, average } = measured;
@@ -208,8 +222,10 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
             finals.push(Final { name, unit: "1", value, finer, error, sampling_error });
         }
     }
-    let gate =
-        observables.gate.as_ref().filter(|_| sound).zip(recorded.channel.as_ref()).map(|(judge, channel)| judge.judge(channel));
+    let gate = observables.gate.as_ref().filter(|_| sound).zip(recorded.channel.as_ref()).map(|(judge, channel)| judge.judge(channel));
+    if average.is_some() {
+        of_the_averaged_channel(&mut finals, observables.gate.as_ref(), gate.as_ref());
+    }
     let propagator = recorded.propagator.clone().filter(|_| observables.propagator && sound).map(|propagator| (propagator, whole_error));
     let in_rows = (end + 1) * columns.len();
     let scaled = |numbers: &[f64]| -> Vec<f64> {

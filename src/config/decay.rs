@@ -79,7 +79,9 @@ impl Shares {
                 Share::Rest => None,
             })
             .collect();
-        if let Some(((_, of, _), found)) = self.parts.iter().zip(&stated).find(|(_, share)| share.is_some_and(|s| !(-1e-12..=1.0 + 1e-12).contains(&s))) {
+        if let Some(((_, of, _), found)) =
+            self.parts.iter().zip(&stated).find(|(_, share)| share.is_some_and(|s| !(-1e-12..=1.0 + 1e-12).contains(&s)))
+        {
             return Err(Fault::Open(OpenFault::ShareRange { of: of.clone(), found: found.unwrap_or(f64::NAN) }));
         }
         let sum: f64 = stated.iter().flatten().sum();

@@ -95,13 +95,7 @@ pub fn read_dephasings(
     found.into_iter().collect()
 }
 
-fn read_dephasing(
-    reader: &mut Reader,
-    node: &Node,
-    operators: &[Operator],
-    decays: &[Decay],
-    used: &mut Vec<String>,
-) -> Option<Dephasing> {
+fn read_dephasing(reader: &mut Reader, node: &Node, operators: &[Operator], decays: &[Decay], used: &mut Vec<String>) -> Option<Dephasing> {
     let unsaid = node.entries().into_iter().flatten().find(|entry| UNSAID.contains(&entry.key.as_str()));
     let known: Vec<&str> = KEYS.iter().copied().chain(unsaid.map(|entry| entry.key.as_str())).collect();
     reader.fields(node, "dephasing", &known, &HINTS)?;
@@ -123,8 +117,7 @@ fn read_dephasing(
             if let Some(of) = node.get("of") {
                 let known = KEYS[..4].iter().map(|key| (*key).to_string()).collect();
                 let hint = Some(format!("It belongs to total_time; a {other} holds for a weight difference of 1."));
-                let fault =
-                    Fault::UnknownKey { key: "of".to_string(), section: format!("dephasing ({other})"), near: None, known, hint };
+                let fault = Fault::UnknownKey { key: "of".to_string(), section: format!("dephasing ({other})"), near: None, known, hint };
                 reader.error(of.place, fault);
             }
             size.map(|size| if other == "linewidth" { Fading::Linewidth(size) } else { Fading::Pure(size) })

@@ -386,12 +386,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
 }
 
 /// `decay:` and `dephasing:`.
-fn surroundings(
-    reader: &mut Reader,
-    root: &Node,
-    operators: &[Operator],
-    used: &mut Vec<String>,
-) -> Option<(Vec<Decay>, Vec<Dephasing>)> {
+fn surroundings(reader: &mut Reader, root: &Node, operators: &[Operator], used: &mut Vec<String>) -> Option<(Vec<Decay>, Vec<Dephasing>)> {
     let decays = match root.get("decay") {
         Some(node) => read_decays(reader, node, operators, used),
         None => Some(Vec::new()),

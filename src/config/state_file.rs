@@ -53,7 +53,10 @@ fn state_of(found: &Found, wanted: usize) -> Result<State, Fault> {
         return density(found, wanted);
     }
     if found.rows != 1 && found.columns != 1 {
-        return Err(no(format!("it has {} rows and {} columns, which is neither one state nor a density matrix", found.rows, found.columns)));
+        return Err(no(format!(
+            "it has {} rows and {} columns, which is neither one state nor a density matrix",
+            found.rows, found.columns
+        )));
     }
     let amplitudes = &found.values;
     if amplitudes.len() != wanted {
@@ -80,7 +83,9 @@ fn density(found: &Found, wanted: usize) -> Result<State, Fault> {
         for column in 0..=row {
             let (a, b) = (at(row, column), at(column, row));
             if !((a.0 - b.0).hypot(a.1 + b.1) <= ROOM) {
-                return no(format!("its entries {row}, {column} and {column}, {row} are not complex conjugates, so it is no density matrix"));
+                return no(format!(
+                    "its entries {row}, {column} and {column}, {row} are not complex conjugates, so it is no density matrix"
+                ));
             }
             if !(a.0 * a.0 + a.1 * a.1 <= at(row, row).0 * at(column, column).0 + ROOM) {
                 return no(format!("its entry {row}, {column} is larger than the populations allow, so it is no density matrix"));

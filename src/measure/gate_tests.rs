@@ -56,10 +56,18 @@ fn prop_a_propagator_is_judged_as_by_its_own_formula() {
 /// Geometriae Dedicata 6, 363 (1977)), for a channel that leaks, damps and turns at once.
 #[test]
 fn prop_two_levels_agree_with_six_states() {
-    let kraus: Vec<Matrix> = [(0.6, 0.4), (0.3, 5.2), (0.1, 9.9)].iter().map(|(w, s): &(f64, f64)| mixed_up(3, *s) * z(w.sqrt(), 0.0)).collect();
+    let kraus: Vec<Matrix> =
+        [(0.6, 0.4), (0.3, 5.2), (0.1, 9.9)].iter().map(|(w, s): &(f64, f64)| mixed_up(3, *s) * z(w.sqrt(), 0.0)).collect();
     let target = turn(0.21, 0.07);
     let r = 0.5f64.sqrt();
-    let poles = [[z(1.0, 0.0), z(0.0, 0.0)], [z(0.0, 0.0), z(1.0, 0.0)], [z(r, 0.0), z(r, 0.0)], [z(r, 0.0), z(-r, 0.0)], [z(r, 0.0), z(0.0, r)], [z(r, 0.0), z(0.0, -r)]];
+    let poles = [
+        [z(1.0, 0.0), z(0.0, 0.0)],
+        [z(0.0, 0.0), z(1.0, 0.0)],
+        [z(r, 0.0), z(r, 0.0)],
+        [z(r, 0.0), z(-r, 0.0)],
+        [z(r, 0.0), z(0.0, r)],
+        [z(r, 0.0), z(0.0, -r)],
+    ];
     let mean: f64 = poles
         .iter()
         .map(|pole| {
@@ -77,7 +85,12 @@ fn prop_two_levels_agree_with_six_states() {
 #[test]
 fn exact_depolarising() {
     let p: f64 = 0.013;
-    let paulis = [two([1.0, 0.0, 0.0, 1.0]), two([0.0, 1.0, 1.0, 0.0]), Matrix::from_row_slice(2, 2, &[z(0.0, 0.0), z(0.0, -1.0), z(0.0, 1.0), z(0.0, 0.0)]), two([1.0, 0.0, 0.0, -1.0])];
+    let paulis = [
+        two([1.0, 0.0, 0.0, 1.0]),
+        two([0.0, 1.0, 1.0, 0.0]),
+        Matrix::from_row_slice(2, 2, &[z(0.0, 0.0), z(0.0, -1.0), z(0.0, 1.0), z(0.0, 0.0)]),
+        two([1.0, 0.0, 0.0, -1.0]),
+    ];
     let weights = [1.0 - 0.75 * p, p / 4.0, p / 4.0, p / 4.0];
     let kraus: Vec<Matrix> = paulis.iter().zip(weights).map(|(s, w)| s * z(w.sqrt(), 0.0)).collect();
     let figures = GateJudge::of(&[0, 1], Matrix::identity(2, 2), Vec::new()).judge(&channel(&kraus, 2));
@@ -103,7 +116,10 @@ fn exact_amplitude_damping_splits_from_a_turn() {
     assert!((figures.incoherent.unwrap_or(0.0) - damped).abs() < 1e-15, "{figures:?}");
     let (turns, axis) = figures.residual.unwrap_or_default();
     let (nz, ny) = sin_cos_turns(0.1);
-    assert!((turns - 0.03).abs() < 1e-14 && axis[0].abs() < 1e-13 && (axis[1] - ny).abs() < 1e-13 && (axis[2] - nz).abs() < 1e-13, "{axis:?}");
+    assert!(
+        (turns - 0.03).abs() < 1e-14 && axis[0].abs() < 1e-13 && (axis[1] - ny).abs() < 1e-13 && (axis[2] - nz).abs() < 1e-13,
+        "{axis:?}"
+    );
 }
 
 /// A free turn about z on a channel: the best angle of two levels undoes a turn about z exactly, though the coherence has faded.

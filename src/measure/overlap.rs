@@ -74,7 +74,8 @@ impl Overlaps {
             let gradient = nalgebra::DVector::from_fn(count, |k, _| -2.0 * (0..d).map(|a| free[k][a] * r[a].im).sum::<f64>());
             let hessian = nalgebra::DMatrix::from_fn(count, count, |k, l| {
                 let own: f64 = (0..d).map(|a| free[k][a] * free[l][a] * r[a].re).sum();
-                let cross: f64 = (0..d).flat_map(|a| (0..d).map(move |b| (a, b))).map(|(a, b)| free[k][a] * h[(a, b)].re * free[l][b]).sum();
+                let cross: f64 =
+                    (0..d).flat_map(|a| (0..d).map(move |b| (a, b))).map(|(a, b)| free[k][a] * h[(a, b)].re * free[l][b]).sum();
                 2.0 * (cross - own)
             });
             // uphill even where the surface is not concave: the curvature's modulus, and a floor for flat directions

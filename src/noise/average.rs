@@ -21,7 +21,7 @@ use crate::measure::Recorded;
 use crate::outcome::{self, Average, Measured, Outcome};
 use crate::plan::shaken::Shaken;
 use crate::plan::Point;
-use crate::problem::{Matrix, Start};
+use crate::problem::{Channel, Matrix, Start};
 use crate::propagate::{figure, CrossCheck, Resolution, Solved};
 use crate::random::Stream;
 
@@ -467,7 +467,7 @@ fn largest(errors: &[f64]) -> f64 {
     errors.iter().copied().fold(0.0, f64::max)
 }
 
-/// Numbers of one run, then the density matrix at its end.
+/// Numbers of one run, then the density matrix at its end, then the images of the channel.
 struct Ran {
     coarse: Vec<f64>,
     fine: Vec<f64>,
@@ -479,15 +479,23 @@ fn flat(recorded: &Recorded) -> Vec<f64> {
     if let Some(end) = &recorded.end_state {
         vector.extend(end.density().iter().flat_map(|entry| [entry.re, entry.im]));
     }
+    if let Some(channel) = &recorded.channel {
+        vector.extend(channel.images.iter().flat_map(|image| image.iter().flat_map(|entry| [entry.re, entry.im])));
+    }
     vector
 }
 
 fn restored(vector: &[f64], notes: &Notes) -> Recorded {
-    let (numbers, density) = vector.split_at(notes.numbers.min(vector.len()));
-    let dim = ((density.len() / 2) as f64).sqrt().round() as usize;
-    let entries = density.chunks_exact(2).map(|pair| num_complex::Complex64::new(pair[0], pair[1]));
-    let end_state = (dim > 0).then(|| Start::Mixed(Matrix::from_iterator(dim, dim, entries)));
-    Recorded { numbers: numbers.to_vec(), in_rows: notes.in_rows, end_state, propagator: None }
+    let (numbers, matrices) = vector.split_at(notes.numbers.min(vector.len()));
+    let images = notes.within.len().pow(2);
+    let dim = ((matrices.len() / 2 / (1 + images)) as f64).sqrt().round() as usize;
+    let mut found = matrices.chunks_exact((2 * dim * dim).max(1)).map(|matrix| {
+        let entries = matrix.chunks_exact(2).map(|pair| num_complex::Complex64::new(pair[0], pair[1]));
+        Matrix::from_iterator(dim, dim, entries)
+    });
+    let end_state = found.next().map(Start::Mixed);
+    let channel = (images > 0).then(|| Channel { within: notes.within.clone(), images: found.collect() });
+    Recorded { numbers: numbers.to_vec(), in_rows: notes.in_rows, end_state, propagator: None, channel }
 }
 
 /// What is known of the runs beside their numbers.
@@ -503,6 +511,8 @@ struct Notes {
     sound: bool,
     numbers: usize,
     in_rows: usize,
+    /// Levels of the channel that is averaged; empty where no gate is judged.
+    within: Vec<usize>,
     /// Second route: its method, and why it was not made.
     check: Option<(String, Option<String>)>,
 }
@@ -523,6 +533,7 @@ impl Notes {
             sound: solved.error_figure.is_finite(),
             numbers: solved.recorded.numbers.len(),
             in_rows: solved.recorded.in_rows,
+            within: solved.recorded.channel.as_ref().map_or_else(Vec::new, |channel| channel.within.clone()),
             check,
         });
     }

@@ -126,18 +126,19 @@ impl OpenFault {
                 .write(format!("dephasing: [{{energy_of: {{{level}: 1}}, pure_time: value}}]")),
             CoherenceUnsaid { key, text, of, lifetimes, pure_s } => coherence_unsaid(key, text, of, lifetimes, *pure_s),
             TooLong { total_s, pair: [a, b], lives, limit_s } => too_long(*total_s, [a, b], lives, *limit_s),
-            AlreadyFaster { total_s, pair: [a, b], others_s } => say(format!(
-                "a total coherence time of {} is impossible here.",
-                short_with_unit(*total_s, "s")
-            ))
-            .why(format!(
-                "Lifetimes and the other entries under dephasing alone leave {a} and {b} a coherence time of {}.",
-                short_with_unit(*others_s, "s")
-            ))
-            .write(format!("a total_time below {}", short_with_unit(*others_s, "s"))),
-            EqualWeights { pair: [a, b] } => say(format!("{a} and {b} have the same weight, so this dephasing does not act on their coherence."))
-                .why("The coherence between m and n decays at (w_m - w_n)^2 / pure_time.")
-                .write("of: [a, b]      (a pair of different weights)"),
+            AlreadyFaster { total_s, pair: [a, b], others_s } => {
+                say(format!("a total coherence time of {} is impossible here.", short_with_unit(*total_s, "s")))
+                    .why(format!(
+                        "Lifetimes and the other entries under dephasing alone leave {a} and {b} a coherence time of {}.",
+                        short_with_unit(*others_s, "s")
+                    ))
+                    .write(format!("a total_time below {}", short_with_unit(*others_s, "s")))
+            }
+            EqualWeights { pair: [a, b] } => {
+                say(format!("{a} and {b} have the same weight, so this dephasing does not act on their coherence."))
+                    .why("The coherence between m and n decays at (w_m - w_n)^2 / pure_time.")
+                    .write("of: [a, b]      (a pair of different weights)")
+            }
             TwoTotals { pair: [a, b], other } => {
                 say(format!("two total times speak of one pair: this one and line {other} both dephase {a} and {b}."))
                     .why("A total time holds all that ends a coherence, so their shares cannot be told apart.")
@@ -145,9 +146,11 @@ impl OpenFault {
             }
             NoDephasing => say("all weights are equal, so this dephasing does nothing.")
                 .why("The coherence between m and n decays at (w_m - w_n)^2 / pure_time."),
-            BathBetweenEqual { from, to } => say(format!("{from} and {to} have the same energy, so no bath temperature says how they exchange."))
-                .why("The number of thermal quanta of a gap of zero is infinite.")
-                .write("two entries, one each way, with their rates and no temperature"),
+            BathBetweenEqual { from, to } => {
+                say(format!("{from} and {to} have the same energy, so no bath temperature says how they exchange."))
+                    .why("The number of thermal quanta of a gap of zero is infinite.")
+                    .write("two entries, one each way, with their rates and no temperature")
+            }
             BathUpwards { from, to } => say(format!("{to} lies above {from}: a bath at zero temperature never lifts it there."))
                 .why("The stated rate is the one at zero temperature; what the bath excites follows from it by detailed balance.")
                 .write(format!("{{from: {to}, to: {from}, ..}}")),
@@ -168,9 +171,11 @@ impl OpenFault {
             ))
             .why("Nothing is left to happen for most of it; the steady state can be had at once.")
             .write("record: {steady: true}, or start: steady"),
-            NotOfOpen { key, section, line, write } => say(format!("\"{key}\" has no meaning once the system decays or dephases (line {line})."))
-                .why(format!("{section} belongs to one unitary propagator; a decaying system has a channel instead."))
-                .write(*write),
+            NotOfOpen { key, section, line, write } => {
+                say(format!("\"{key}\" has no meaning once the system decays or dephases (line {line})."))
+                    .why(format!("{section} belongs to one unitary propagator; a decaying system has a channel instead."))
+                    .write(*write)
+            }
             BudgetWithoutGate => say("error_budget splits the gate error, and no gate is recorded.")
                 .write("gate: {within: [down, up], target: {turn: 180 deg, about: x}, free_z: false}"),
             ReadsColumn { level, sum, row, missing } => {
@@ -181,8 +186,10 @@ impl OpenFault {
                     None => words,
                 }
             }
-            ReadLength { read, found, wanted } => say(format!("the row of the read \"{read}\" has {found} entries; {wanted} are expected."))
-                .why("A row has the probability of that read for each level, in basis order."),
+            ReadLength { read, found, wanted } => {
+                say(format!("the row of the read \"{read}\" has {found} entries; {wanted} are expected."))
+                    .why("A row has the probability of that read for each level, in basis order.")
+            }
             ReadCount { found, wanted } => say(format!("{found} reads are listed for {wanted} levels."))
                 .why("Rows without names are named like the levels, so there is one for each.")
                 .write("reads: {dark: [0.98, 0.04], bright: [0.02, 0.96]}      (other reads by name)"),
@@ -255,11 +262,15 @@ fn too_long(total_s: f64, [a, b]: [&String; 2], lives: &[(String, f64, u32)], li
         [(level, life_s, line)] => {
             let other = if level == a { b } else { a };
             let life = short_with_unit(*life_s, "s");
-            words.why(format!("Level {level} lives {life} (line {line}), so its coherence with {other} can last at most 2 x {life} = {limit}."))
+            words.why(format!(
+                "Level {level} lives {life} (line {line}), so its coherence with {other} can last at most 2 x {life} = {limit}."
+            ))
         }
         _ => {
-            let each: Vec<String> =
-                lives.iter().map(|(level, life_s, line)| format!("{level} lives {} (line {line})", short_with_unit(*life_s, "s"))).collect();
+            let each: Vec<String> = lives
+                .iter()
+                .map(|(level, life_s, line)| format!("{level} lives {} (line {line})", short_with_unit(*life_s, "s")))
+                .collect();
             words.why(format!("{}, so their coherence can last at most 2 over the sum of both rates = {limit}.", each.join(", ")))
         }
     };
