@@ -45,5 +45,6 @@ mod tests;
 pub use asked::{Asked, Demand, Recorder};
 pub use choose::{Method, Row, METHODS};
 pub use load::Load;
+pub use open::{steady, NotSteady, Steady};
 pub use refine::{figure, solve};
 pub use solved::{CrossCheck, Resolution, Solved};

@@ -376,6 +376,43 @@ impl Generator {
         }
     }
 
+    /// Coordinates that hang together, block by block.
+    pub fn blocks(&self) -> Vec<Vec<usize>> {
+        let mut block: Vec<usize> = (0..self.size).collect();
+        fn root(block: &mut [usize], mut at: usize) -> usize {
+            while block[at] != at {
+                block[at] = block[block[at]];
+                at = block[at];
+            }
+            at
+        }
+        for (row, range) in self.rows.windows(2).enumerate() {
+            for column in &self.columns[range[0]..range[1]] {
+                let (a, b) = (root(&mut block, row), root(&mut block, *column));
+                block[a.max(b)] = a.min(b);
+            }
+        }
+        let mut found: BTreeMap<usize, Vec<usize>> = BTreeMap::new();
+        for at in 0..self.size {
+            let first = root(&mut block, at);
+            found.entry(first).or_default().push(at);
+        }
+        found.into_values().collect()
+    }
+
+    /// The rows and columns of one block, dense.
+    pub fn block(&self, values: &[f64], block: &[usize]) -> nalgebra::DMatrix<f64> {
+        let mut dense = nalgebra::DMatrix::zeros(block.len(), block.len());
+        for (to, row) in block.iter().enumerate() {
+            for at in self.rows[*row]..self.rows[row + 1] {
+                if let Ok(from) = block.binary_search(&self.columns[at]) {
+                    dense[(to, from)] += values[at];
+                }
+            }
+        }
+        dense
+    }
+
     /// Largest sum of moduli in a column, a bound of the growth of x in the sum norm, 1/s.
     pub fn bound(&self, values: &[f64], room: &mut Vec<f64>) -> f64 {
         room.clear();

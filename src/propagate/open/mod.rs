@@ -10,6 +10,7 @@
 //! | `smooth.rs` | Runge-Kutta 8(5,3) |
 //! | `run.rs` | one run over all segments |
 //! | `load.rs` | how large, fast and long a problem is |
+//! | `steady.rs` | steady states |
 //! | `cross_check.rs` | the independent second route |
 
 mod constant;
@@ -21,6 +22,8 @@ mod generator;
 mod load;
 mod run;
 mod smooth;
+mod steady;
 
 pub(super) use cross_check::cross_check;
 pub(super) use run::Route;
+pub use steady::{steady, NotSteady, Steady};

@@ -7,6 +7,7 @@ mod open;
 mod reference;
 mod speed;
 mod statistics;
+mod steady;
 
 use std::sync::Arc;
 
