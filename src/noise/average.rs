@@ -145,9 +145,9 @@ impl<'p> Job<'p> {
         self.settle_cells(&grid, count, until)?;
         let mut total = self.pass(&grid, 0..count)?;
         let first = total.first.clone();
-        while until {
+        loop {
             let error = largest(&total.sample.standard_errors());
-            if error <= self.document.accuracy.last || !total.notes.sound {
+            if !until || error <= self.document.accuracy.last || !total.notes.sound {
                 break;
             }
             let needed = 1.03 * count as f64 * (error / self.document.accuracy.last).powi(2);

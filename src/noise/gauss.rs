@@ -27,9 +27,11 @@ pub fn even(points: usize) -> Rule {
 /// For the Lorentzian 1/(1 + x^2) from -`cut` to `cut`, scaled to area 1; x in units of half the full width.
 pub fn lorentzian(points: usize, cut: f64) -> Rule {
     // x = sinh(u): the weight becomes 1/cosh(u), smooth where the Lorentzian is narrow, and the cut comes near
-    let fine = even(24 * points + 160);
-    let end = cut.asinh();
-    let nodes: Vec<(f64, f64)> = fine.iter().map(|(u, w)| ((end * u).sinh(), w / (end * u).cosh())).collect();
+    let (panels, panel) = (points + 8, even(32));
+    let width = 2.0 * cut.asinh() / panels as f64;
+    let at = |p: usize, x: f64| width * (p as f64 - 0.5 * panels as f64 + 0.5 * (x + 1.0));
+    let nodes: Vec<(f64, f64)> =
+        (0..panels).flat_map(|p| panel.iter().map(move |(x, w)| (at(p, *x), *w))).map(|(u, w)| (u.sinh(), w / u.cosh())).collect();
     let total: f64 = nodes.iter().map(|(_, w)| w).sum();
     // Stieltjes: the norms of the monic polynomials give beta_k^2 = |p_k|^2/|p_(k-1)|^2; each is kept at norm 1
     let mut before: Vec<f64> = vec![0.0; nodes.len()];

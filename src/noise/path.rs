@@ -93,7 +93,7 @@ impl<'p> Worker<'p> {
             return Ok([self.shaken.point().problem().clone(), self.shaken.point().problem().clone()]);
         };
         let along = |wanderer: &mut Wanderer<'p>, path: &[Vec<f64>]| {
-            wanderer.along(&|cell, list| {
+            wanderer.along(|cell, list| {
                 for (k, means) in wandering.iter().zip(path) {
                     list.extend(sources[*k].amounts(Draw { index: 0, x: means[cell] }));
                 }

@@ -4,6 +4,7 @@
 //! moves, with a constant coefficient in each cell; the terms of a drive are scaled cell by cell. Everything else, frames included,
 //! is that of the point.
 
+use std::collections::hash_map::Entry::Vacant;
 use std::collections::HashMap;
 use std::sync::Arc;
 
@@ -152,7 +153,7 @@ impl<'p> Wanderer<'p> {
     }
 
     /// The problem with the amounts that `amounts` appends for each cell added to the numbers: (number, SI).
-    pub fn along(&mut self, amounts: &dyn Fn(usize, &mut Vec<(u32, f64)>)) -> Result<Problem, Mistake> {
+    pub fn along(&mut self, amounts: impl Fn(usize, &mut Vec<(u32, f64)>)) -> Result<Problem, Mistake> {
         let mut list = Vec::new();
         let mut moved = Vec::with_capacity(self.cells.cells.len());
         for cell in 0..self.cells.cells.len() {
@@ -200,8 +201,8 @@ impl<'p> Wanderer<'p> {
     fn sizes(&self) -> Result<HashMap<PartKey, f64>, Mistake> {
         let mut sizes = HashMap::new();
         for pulse in &self.point.timeline.pulses {
-            if !sizes.contains_key(&part_key(pulse)) {
-                sizes.insert(part_key(pulse), self.point.half_rabi_hz(self.document, pulse.drive, pulse.envelope)?);
+            if let Vacant(vacant) = sizes.entry(part_key(pulse)) {
+                vacant.insert(self.point.half_rabi_hz(self.document, pulse.drive, pulse.envelope)?);
             }
         }
         Ok(sizes)
