@@ -134,14 +134,8 @@ pub fn compare(compare: &Compare, plans: Vec<(String, Plan)>) -> Result<Comparis
 
 /// The final quantities that are compared: those under `record: final`, or all.
 fn asked(document: &Document) -> Box<dyn Fn(&str) -> bool> {
-    let names: Vec<String> = document.record.finals.iter().map(|(name, _)| name.clone()).collect();
-    Box::new(move |quantity: &str| {
-        names.is_empty()
-            || names.iter().any(|name| {
-                quantity == name
-                    || quantity.strip_prefix(name.as_str()).is_some_and(|rest| ["_re", "_im", "_x", "_y", "_z"].contains(&rest))
-            })
-    })
+    let record = document.record.clone();
+    Box::new(move |quantity: &str| record.takes(quantity))
 }
 
 fn differences(variant: &[(String, f64, f64)], reference: &[(String, f64, f64)], asked: &dyn Fn(&str) -> bool) -> Vec<Difference> {

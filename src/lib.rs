@@ -30,4 +30,5 @@ pub mod propagate;
 pub mod quadrature;
 pub mod random;
 pub mod report;
+pub mod scan;
 pub mod units;

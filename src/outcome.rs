@@ -116,6 +116,26 @@ pub struct Outcome {
     pub seconds: f64,
 }
 
+/// A final quantity before it is computed.
+#[derive(Debug, Clone, PartialEq)]
+pub struct FinalColumn {
+    /// Named like its column.
+    pub name: String,
+    /// `1`, `Hz` or `s`.
+    pub unit: &'static str,
+    /// What its error is judged against.
+    pub scale: f64,
+}
+
+/// The final quantities that [`compute`] gives of a point, in its order.
+pub fn final_columns(document: &Document, point: &Point) -> Vec<FinalColumn> {
+    let observables = observables(document, &point.built, &point.values, &point.energies_hz, point.problem());
+    let columns = observables.columns();
+    let seen = columns.into_iter().map(|column| FinalColumn { name: column.name, unit: column.unit, scale: column.scale });
+    let names = observables.last.iter().flat_map(|quantity| quantity.names()).filter(|name| !name.starts_with("propagator_"));
+    seen.chain(names.map(|name| FinalColumn { name, unit: "1", scale: 1.0 })).collect()
+}
+
 impl Outcome {
     /// Warnings that came up with the runs.
     pub fn warnings(&self) -> &[Mistake] {

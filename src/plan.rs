@@ -141,6 +141,10 @@ impl Plan {
     }
 
     fn mover_with(&self, names: &[&str], put_back: &[TermKey]) -> Result<Mover<'_>, Mistake> {
+        self.laid_out(names, None, put_back)
+    }
+
+    fn laid_out(&self, names: &[&str], start: Option<&[f64]>, put_back: &[TermKey]) -> Result<Mover<'_>, Mistake> {
         let document = &self.document;
         let mut numbers = Vec::new();
         for name in names {
@@ -154,10 +158,21 @@ impl Plan {
                 }
             }
         }
-        let mut values = document.tape.as_written();
+        let size = document
+            .tape
+            .entries()
+            .iter()
+            .filter_map(|entry| if let Entry::Number(index, _) = entry { Some(index + 1) } else { None })
+            .max()
+            .unwrap_or(0);
+        let mut set = vec![None; size as usize];
+        for (number, value) in numbers.iter().zip(start.unwrap_or_default()) {
+            set[*number as usize] = Some(*value);
+        }
+        let mut values = document.tape.evaluate::<f64>(&set, &[]);
         let built = Arc::new(model::build(document, &values)?);
         let following = document.tape.level_dependents();
-        document.tape.replay(&following, &[], &built.energies, &mut values);
+        document.tape.replay(&following, &set, &built.energies, &mut values);
         if let Some(mistake) = not_finite(&document.tape, &values, &document.sources) {
             return Err(mistake);
         }
@@ -175,14 +190,6 @@ impl Plan {
             moments: Vec::new(),
         };
         let timeline = timeline(document, &values, &couplings, &curves)?;
-        let size = document
-            .tape
-            .entries()
-            .iter()
-            .filter_map(|entry| if let Entry::Number(index, _) = entry { Some(index + 1) } else { None })
-            .max()
-            .unwrap_or(0);
-        let set = vec![None; size as usize];
         let mut point = Point {
             values,
             set,
@@ -204,6 +211,12 @@ impl Plan {
         point.segment(document)?;
         let touched = Touched::by(document, document.tape.dependents(&numbers), following);
         Ok(Mover { document, numbers, touched, point })
+    }
+
+    /// The same laid out with the numbers at `values` (SI, in the order of the names) from the start: for configs whose numbers as
+    /// written make no run.
+    pub fn mover_from(&self, names: &[&str], values: &[f64]) -> Result<Mover<'_>, Mistake> {
+        self.laid_out(names, Some(values), &[])
     }
 
     /// Whether moving these numbers changes the structure (a count of levels or of repeats), so that the file must be read anew.

@@ -121,8 +121,18 @@ fn cell(folder: &Path, check: &Value) -> Result<Value, String> {
     let file = check["file"].as_str().unwrap();
     let (head, rows) = table(&folder.join(file))?;
     let column = check["column"].as_str().unwrap();
-    let at_s = check["at_s"].as_f64().unwrap();
     let place = |name: &str| head.iter().position(|heading| heading == name).ok_or(format!("{file} has no column {name}"));
+    if let Some(axes) = check.get("where").and_then(Value::as_object) {
+        // the one row of a scan with these values on its axes
+        let column = place(column)?;
+        let axes: Vec<(usize, f64)> =
+            axes.iter().map(|(name, value)| Ok((place(name)?, value.as_f64().unwrap()))).collect::<Result<_, String>>()?;
+        let near = |found: f64, wanted: f64| (found - wanted).abs() <= 1e-12 + 1e-9 * wanted.abs();
+        let mut hits = rows.iter().filter(|row| axes.iter().all(|(k, wanted)| near(row[*k].parse().unwrap(), *wanted)));
+        let (Some(row), None) = (hits.next(), hits.next()) else { return Err(format!("{file} has not one row at {axes:?}")) };
+        return serde_json::from_str(&row[column]).map_err(|_| format!("{file} has no number at {axes:?}"));
+    }
+    let at_s = check["at_s"].as_f64().unwrap();
     let (time, column) = (place("time_s")?, place(column)?);
     let row = rows
         .iter()
@@ -286,6 +296,11 @@ fn cases_of_explain() {
 #[test]
 fn cases_of_compare() {
     judge_cases("compare", 7);
+}
+
+#[test]
+fn cases_of_scan() {
+    judge_cases("scan", 5);
 }
 
 /// Files below a folder.

@@ -6,6 +6,7 @@ mod explain;
 mod new;
 mod plot;
 mod run;
+mod scan;
 mod selftest;
 
 use std::io::Write;
@@ -30,6 +31,10 @@ pub enum Status {
     Refused = 2,
     /// Ran, but did not reach its accuracy.
     NotAccurate = 3,
+    /// Ran, but some points could not be computed.
+    FailedPoints = 4,
+    /// Stopped; the same command goes on from there.
+    Stopped = 5,
 }
 
 /// Settle the pulses that drive a few-level quantum system: populations, leakage and gate errors, each with its measured error.
@@ -52,6 +57,8 @@ enum Verb {
     Run(run::Words),
     /// Run the file and its variants, and show how far apart they are
     Compare(compare::Words),
+    /// Compute every point of a grid, store them, and write table and plots
+    Scan(scan::Words),
     /// Draw the plots of a result folder again
     Plot(plot::Words),
     /// Check the program on this machine against closed forms
@@ -101,6 +108,7 @@ pub fn main() -> ExitCode {
         Verb::Explain(words) => explain::explain(&words),
         Verb::Run(words) => run::run(&words),
         Verb::Compare(words) => compare::run(&words),
+        Verb::Scan(words) => scan::scan(&words),
         Verb::Plot(words) => plot::plot(&words),
         Verb::Selftest(words) => selftest::selftest(&words),
     };

@@ -219,6 +219,34 @@ pub fn read_variant(document: &Document, variant: &Variant) -> Result<Document, 
     }
 }
 
+/// Reads a document again with named numbers at other values, in SI: for numbers that shape the reading itself.
+pub fn read_moved(document: &Document, moved: &[(&str, f64)]) -> Result<Document, Refusal> {
+    let folder = document.source().path.parent().unwrap_or(Path::new("")).to_path_buf();
+    let mut reader = Reader::new(document.sources.clone(), folder);
+    reader.archive = document.archive.clone();
+    let set: Vec<(String, String)> =
+        document.set.iter().filter(|(name, _)| moved.iter().all(|(other, _)| other != name)).cloned().collect();
+    let entry = |(name, value): &(&str, f64)| {
+        let number = document.numbers.iter().find(|number| number.name == *name)?;
+        let unit = match number.dim.unit() {
+            unit if unit == "1" => String::new(),
+            unit if unit == "V" => "V peak".to_string(),
+            unit => unit,
+        };
+        let kind = Kind::Scalar { text: format!("{value:?} {unit}").trim().to_string(), quoted: false, exact: false };
+        Some(tree::Entry { key: (*name).to_string(), place: number.place, value: Node { place: number.place, kind } })
+    };
+    let entries: Vec<tree::Entry> = moved.iter().filter_map(entry).collect();
+    let read = sections(&mut reader, &document.root, 0, &set, &entries);
+    match read {
+        Some(mut read) if !reader.mistakes.iter().any(|mistake| !mistake.warning) => {
+            read.set = document.set.clone();
+            Ok(read)
+        }
+        _ => Err(Refusal { sources: reader.sources, mistakes: reader.mistakes }),
+    }
+}
+
 fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)], moved: &[super::tree::Entry]) -> Option<Document> {
     if root.entries().is_none() {
         reader.error(

@@ -206,6 +206,7 @@ pub enum Fault {
     SpectrumTooWide { turns: f64, nodes: f64, limit: f64 },
     // decay, dephasing, mixtures and read-out
     Open(OpenFault),
+    NothingInTable,
     // from the command line
     NoSuchNumber { name: String, near: Option<String>, known: Vec<String> },
 }
@@ -876,6 +877,9 @@ impl Fault {
             .why("Each frequency of the noise is followed over the whole sequence.")
             .write("a lower upper limit of the spectrum, a shorter sequence, or fewer recorded times"),
             Open(fault) => fault.words(),
+            NothingInTable => say("this scan would write a table without a column.")
+                .why("Propagators and quasi-energies have no place in a table of numbers.")
+                .write("record: {populations: all}"),
             NoSuchNumber { name, near, known } => say(format!("the file has no number called \"{name}\"."))
                 .why(format!("Only named numbers can be set: {}.", list(known)))
                 .maybe(&near.as_ref().map(|near| format!("{near}=value")), "--set "),

@@ -133,6 +133,17 @@ pub struct Record {
     pub place: Place,
 }
 
+impl Record {
+    /// Whether scan, tune and compare take the quantity of this name: one of those under `final`, or any where none is named.
+    pub fn takes(&self, quantity: &str) -> bool {
+        self.finals.is_empty()
+            || self.finals.iter().any(|(name, _)| {
+                quantity == name
+                    || quantity.strip_prefix(name.as_str()).is_some_and(|rest| ["_re", "_im", "_x", "_y", "_z"].contains(&rest))
+            })
+    }
+}
+
 const KEYS: [&str; 20] = [
     "every",
     "at",

@@ -24,3 +24,15 @@ pub fn fingerprint(document: &Document) -> String {
     }
     hash.finalize().iter().take(6).map(|byte| format!("{byte:02x}")).collect()
 }
+
+/// SHA-256 of all that a reader gives, in hexadecimal digits.
+pub fn sum_of(mut from: impl std::io::Read) -> std::io::Result<String> {
+    let mut hash = Sha256::new();
+    let mut buffer = vec![0; 1 << 16];
+    loop {
+        match from.read(&mut buffer)? {
+            0 => return Ok(hash.finalize().iter().map(|byte| format!("{byte:02x}")).collect()),
+            count => hash.update(&buffer[..count]),
+        }
+    }
+}

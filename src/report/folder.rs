@@ -65,15 +65,20 @@ pub fn default_folder(document: &Document) -> PathBuf {
 
 /// Judges `folder` and makes the staging place in it.
 pub fn prepare(folder: &Path, document: &Document, replace: bool) -> Result<Staging, FolderFault> {
-    let unusable = |reason: String| FolderFault::Unusable { folder: folder.to_path_buf(), reason };
-    let exists = match fs::symlink_metadata(folder) {
-        Ok(_) if folder.is_dir() => true,
-        Ok(_) => return Err(unusable("a file of that name is in the way".to_string())),
-        Err(error) if error.kind() == io::ErrorKind::NotFound => false,
-        Err(error) => return Err(unusable(blocked(folder).unwrap_or_else(|| error.to_string()))),
-    };
-    if exists && !replace {
+    if folder.is_dir() && !replace {
         judge(folder, document)?;
+    }
+    prepare_any(folder)
+}
+
+/// Makes the staging place in a folder, whatever it holds.
+pub fn prepare_any(folder: &Path) -> Result<Staging, FolderFault> {
+    let unusable = |reason: String| FolderFault::Unusable { folder: folder.to_path_buf(), reason };
+    match fs::symlink_metadata(folder) {
+        Ok(_) if folder.is_dir() => {}
+        Ok(_) => return Err(unusable("a file of that name is in the way".to_string())),
+        Err(error) if error.kind() == io::ErrorKind::NotFound => {}
+        Err(error) => return Err(unusable(blocked(folder).unwrap_or_else(|| error.to_string()))),
     }
     let mut made = Vec::new();
     let mut missing: Vec<&Path> = folder.ancestors().take_while(|path| !path.as_os_str().is_empty() && !path.exists()).collect();
@@ -106,7 +111,7 @@ fn judge(folder: &Path, document: &Document) -> Result<(), FolderFault> {
     if names.is_empty() {
         return Ok(());
     }
-    let found = fs::read(folder.join("result.json")).ok().and_then(|bytes| serde_json::from_slice::<serde_json::Value>(&bytes).ok());
+    let found = read_result(folder);
     let fingerprint = found.as_ref().and_then(|json| json.pointer("/config/fingerprint")).and_then(|text| text.as_str());
     match fingerprint {
         Some(print) if print == super::fingerprint::fingerprint(document) => Ok(()),
@@ -115,7 +120,38 @@ fn judge(folder: &Path, document: &Document) -> Result<(), FolderFault> {
     }
 }
 
+/// The result.json of a folder, if it has one that can be read.
+pub fn read_result(folder: &Path) -> Option<serde_json::Value> {
+    serde_json::from_slice(&fs::read(folder.join("result.json")).ok()?).ok()
+}
+
+/// Puts the config byte for byte, and every file it names, into a folder; what stands there already is replaced whole.
+pub fn archive_into(folder: &Path, document: &Document) -> io::Result<()> {
+    let put = |path: &Path, bytes: &[u8]| -> io::Result<()> {
+        let parent = path.parent().unwrap_or(folder);
+        fs::create_dir_all(parent)?;
+        let name = path.file_name().unwrap_or_default().to_string_lossy();
+        let aside = parent.join(format!(".unfinished-{}-{name}", std::process::id()));
+        fs::write(&aside, bytes)?;
+        fs::rename(&aside, path)
+    };
+    put(&folder.join("config.yaml"), &document.source().bytes)?;
+    let parent = document.source().path.parent().unwrap_or(Path::new(""));
+    let beside = document.archive.as_deref().unwrap_or(parent);
+    for file in document.sources.files().iter().skip(1).filter(|file| !file.bytes.is_empty()) {
+        let named = file.path.strip_prefix(beside).unwrap_or(&file.path);
+        put(&folder.join("inputs").join(archived(named)), &file.bytes)?;
+    }
+    Ok(())
+}
+
 impl Staging {
+    /// Leaves the folder, without a place to the side; gives the folders that were made for it, innermost first.
+    pub fn keep_folder(mut self) -> Vec<PathBuf> {
+        self.done = true;
+        std::mem::take(&mut self.made)
+    }
+
     /// Where files are made.
     pub fn side(&self) -> &Path {
         self.side.path()
@@ -123,17 +159,7 @@ impl Staging {
 
     /// Archives the config byte for byte, and every file it names.
     pub fn archive(&self, document: &Document) -> io::Result<()> {
-        fs::write(self.side().join("config.yaml"), &document.source().bytes)?;
-        let beside = document.source().path.parent().unwrap_or(Path::new(""));
-        for file in document.sources.files().iter().skip(1).filter(|file| !file.bytes.is_empty()) {
-            let named = file.path.strip_prefix(beside).unwrap_or(&file.path);
-            let path = self.side().join("inputs").join(archived(named));
-            if let Some(parent) = path.parent() {
-                fs::create_dir_all(parent)?;
-            }
-            fs::write(path, &file.bytes)?;
-        }
-        Ok(())
+        archive_into(self.side(), document)
     }
 
     /// Moves everything into the folder, result.json last; older results of this program there go first.
@@ -141,9 +167,9 @@ impl Staging {
         let old: Vec<PathBuf> = fs::read_dir(&self.folder)?.flatten().map(|entry| entry.path()).collect();
         let ours = |path: &Path| {
             let name = path.file_name().unwrap_or_default().to_string_lossy();
-            ["result.json", "traces.csv", "config.yaml"].contains(&name.as_ref())
+            ["result.json", "traces.csv", "scan.csv", "config.yaml"].contains(&name.as_ref())
                 || (name.starts_with("traces-") && name.ends_with(".csv"))
-                || [".png", ".svg"].iter().any(|end| name.ends_with(end))
+                || [".png", ".svg", ".npy"].iter().any(|end| name.ends_with(end))
         };
         for path in old.iter().filter(|path| ours(path)) {
             fs::remove_file(path)?;

@@ -1,0 +1,327 @@
+//! `nutate scan FILE`: computes every point of a grid, keeps them in a store, and writes table, plots and result.
+
+mod dry_run;
+mod one_point;
+pub(super) mod progress;
+
+use std::path::Path;
+use std::sync::atomic::AtomicBool;
+use std::sync::Arc;
+use std::time::{Duration, Instant};
+
+use clap::Args;
+
+use self::progress::Teller;
+use super::{complain, complain_of, not_drawn, print, read_config, Common, Results, Status};
+use crate::config::document::Document;
+use crate::config::run::{Run, Threads};
+use crate::report::fingerprint::fingerprint;
+use crate::report::folder::{default_folder, prepare_any};
+use crate::report::scan_figures::Points;
+use crate::report::scan_folder::{spaced, tidy, Opened, Opening, ScanFault, ScanFolder};
+use crate::report::{scan_files, scan_json, scan_text};
+use crate::scan::begin::{head, order};
+use crate::scan::engine::{run as run_engine, Ended, Progress, Running};
+use crate::scan::limit;
+use crate::scan::setup::Setup;
+use crate::scan::shelf::Shelf;
+use crate::scan::store::{Content, Part};
+use crate::scan::summary::{cuts, region, Summary};
+
+/// Words of the verb.
+#[derive(Args)]
+pub(super) struct Words {
+    #[command(flatten)]
+    common: Common,
+    #[command(flatten)]
+    results: Results,
+    /// Say how many points, how long, how much memory and disk, and compute nothing else
+    #[arg(long)]
+    dry_run: bool,
+    /// Compute one point alone, such as reach=20MHz,peak=1.5MHz, and print its config
+    #[arg(long, value_name = "NAME=VALUE,..")]
+    point: Option<String>,
+    /// Compute one part of so many, such as 3/24; nutate merge joins them
+    #[arg(long, value_name = "K/N")]
+    part: Option<String>,
+    /// Threads, in place of run / threads
+    #[arg(long, value_name = "COUNT")]
+    threads: Option<usize>,
+    /// Mend a damaged store: the points that cannot be read are computed again
+    #[arg(long)]
+    repair: bool,
+}
+
+/// Scans.
+pub(super) fn scan(words: &Words) -> Status {
+    match try_scan(words) {
+        Ok(status) | Err(status) => status,
+    }
+}
+
+fn try_scan(words: &Words) -> Result<Status, Status> {
+    if let Some(point) = &words.point {
+        return one_point::one_point(&words.common, point, words.results.json);
+    }
+    let part = words.part.as_deref().map_or(Ok(Part::WHOLE), read_part)?;
+    let document = read_config(&words.common)?;
+    let setup = set_up(document)?;
+    let run = run_of(&setup, words.threads);
+    if words.dry_run {
+        return Ok(dry_run::dry_run(&setup, &run, words.results.json));
+    }
+    let folder = words.results.folder.clone().unwrap_or_else(|| default_folder(setup.document()));
+    let head = head(&setup, &fingerprint(setup.document()), part);
+    let opening =
+        Opening { folder: &folder, document: setup.document(), head: &head, replace: words.results.replace, repair: words.repair };
+    let opened = match opening.open().map_err(|fault| refuse_folder(&fault))? {
+        Opened::Complete(result) => return Ok(complete_already(words, &folder, &result)),
+        Opened::Ready(opened) => *opened,
+    };
+    complain_of(setup.document(), &setup.document().warnings);
+    Computing { setup: &setup, run, part, quiet: words.results.quiet || words.results.json }.compute(opened, words)
+}
+
+/// A scan laid out, or a complaint.
+pub(super) fn set_up(document: Document) -> Result<Setup, Status> {
+    let sources = document.sources.clone();
+    Setup::new(document).map_err(|mistake| {
+        complain(&crate::config::messages::render(&sources, &[mistake]));
+        Status::Refused
+    })
+}
+
+fn run_of(setup: &Setup, threads: Option<usize>) -> Run {
+    let mut run = setup.document().run.clone();
+    if let Some(count) = threads {
+        run.threads = Threads::Count(count.max(1));
+    }
+    run
+}
+
+fn read_part(text: &str) -> Result<Part, Status> {
+    let part = text.split_once('/').and_then(|(number, of)| Some(Part { number: number.parse().ok()?, of: of.parse().ok()? }));
+    part.filter(|part| part.number >= 1 && part.number <= part.of).ok_or_else(|| {
+        complain(&format!("error: --part {text} is not one of so many parts.\n  Write: --part 3/24      (the third of 24)\n"));
+        Status::Refused
+    })
+}
+
+/// Complains of a folder.
+pub(super) fn refuse_folder(fault: &ScanFault) -> Status {
+    complain(&format!("{fault}\n"));
+    if fault.is_full() {
+        Status::Stopped
+    } else if fault.is_machine() {
+        Status::Machine
+    } else {
+        Status::Refused
+    }
+}
+
+/// A scan that is whole already is left as it is.
+fn complete_already(words: &Words, folder: &Path, result: &serde_json::Value) -> Status {
+    let count = |key: &str| result[key].as_u64().unwrap_or(0);
+    tidy(folder);
+    if words.results.json {
+        let mut shown = result.clone();
+        shown["computed"] = 0.into();
+        shown["reused"] = count("points").into();
+        print(&format!("{}\n", serde_json::to_string_pretty(&shown).unwrap_or_default()));
+    } else if !words.results.quiet {
+        print(&format!(
+            "{} holds all {} points of this scan already; nothing was computed.\nWrite: --replace      (computes them anew)\n",
+            folder.display(),
+            spaced(count("points"))
+        ));
+    }
+    if count("failed") > 0 {
+        Status::FailedPoints
+    } else if result["accuracy"]["reached"] == false {
+        Status::NotAccurate
+    } else {
+        Status::Good
+    }
+}
+
+/// A flag that SIGINT, SIGTERM and SIGHUP set; a second one ends the process at once.
+fn stop_flag() -> Arc<AtomicBool> {
+    let flag = Arc::new(AtomicBool::new(false));
+    for signal in [signal_hook::consts::SIGINT, signal_hook::consts::SIGTERM, signal_hook::consts::SIGHUP] {
+        // without a handler the signal ends the process, and the store is as good as after a kill
+        let _ = signal_hook::flag::register_conditional_shutdown(signal, Status::Stopped as i32, flag.clone());
+        let _ = signal_hook::flag::register(signal, flag.clone());
+    }
+    flag
+}
+
+/// One start of a scan.
+struct Computing<'a> {
+    setup: &'a Setup,
+    run: Run,
+    part: Part,
+    quiet: bool,
+}
+
+impl Computing<'_> {
+    fn compute(&self, mut opened: ScanFolder, words: &Words) -> Result<Status, Status> {
+        let began = Instant::now();
+        let order = order(self.setup, self.part);
+        let stop = stop_flag();
+        if opened.torn > 0 && !self.quiet {
+            complain(&format!("{} bytes that a broken-off start had left at the end of the store were cut off.\n", opened.torn));
+        }
+        let shelf = Shelf::new(&opened.contents, self.setup.grid.points());
+        let mine = order.all().filter(|point| shelf.done.has(*point)).count() as u64;
+        let variable = |name: &str| std::env::var(name).ok();
+        let running = Running {
+            threads: limit::threads(&self.run, variable),
+            save_every: Duration::from_secs_f64(self.run.save_every_s),
+            until: limit::time_to_stop(&self.run, variable).map(|time| began + time),
+            stop: &stop,
+            on_failed_point: self.run.on_failed_point,
+        };
+        let failed = opened.contents.iter().map(|content| content.failed).sum();
+        let mut progress = Progress { points: order.count(), reused: mine, failed, ..Progress::default() };
+        let mut teller = Teller::new(self.quiet);
+        let ended = run_engine(self.setup, &order, (&mut opened.store, &shelf.done), &running, &mut progress, |now| teller.tell(now));
+        teller.done();
+        match ended {
+            Ended::Complete => {}
+            other => return Ok(self.stopped(&other, &progress, &opened)),
+        }
+        if self.part != Part::WHOLE {
+            return Ok(self.part_done(&progress, &opened.folder));
+        }
+        let contents = reread(&opened)?;
+        let shelf = Shelf::new(&contents, self.setup.grid.points());
+        let finishing = Finishing {
+            setup: self.setup,
+            folder: &opened.folder,
+            computed: progress.computed,
+            reused: progress.reused,
+            threads: running.threads,
+            began,
+            json: words.results.json,
+            quiet: words.results.quiet,
+        };
+        finishing.finish(&shelf)
+    }
+
+    /// Says why it stopped, and that it goes on from there.
+    fn stopped(&self, ended: &Ended, progress: &Progress, opened: &ScanFolder) -> Status {
+        let stored = format!(
+            "{} of {} points are stored in {}; the same command goes on from there",
+            spaced(progress.reused + progress.computed),
+            spaced(progress.points),
+            opened.folder.display()
+        );
+        let (kind, why, status) = match ended {
+            Ended::Asked => ("stopped", "as asked".to_string(), Status::Stopped),
+            Ended::Limit => ("stopped", "before the time was up".to_string(), Status::Stopped),
+            Ended::FailedPoint(point) => (
+                "stopped",
+                format!("at a failed point ({}); run / on_failed_point is stop", scan_text::at(self.setup, *point)),
+                Status::Stopped,
+            ),
+            Ended::Full => ("error", "the disk is full".to_string(), Status::Stopped),
+            Ended::Broken(error) => ("error", format!("{} cannot be written: {error}", opened.store.path().display()), Status::Machine),
+            Ended::Complete => return Status::Good,
+        };
+        complain(&format!("{kind}: {why}. {stored}.\n"));
+        status
+    }
+
+    fn part_done(&self, progress: &Progress, folder: &Path) -> Status {
+        if !self.quiet {
+            print(&format!(
+                "part {} of {} is complete: {} points ({} computed now, {} stored before), {} failed.\nWhen all parts are there: nutate merge {}\n",
+                self.part.number,
+                self.part.of,
+                spaced(progress.points),
+                spaced(progress.computed),
+                spaced(progress.reused),
+                progress.failed,
+                folder.display()
+            ));
+        }
+        if progress.failed > 0 {
+            Status::FailedPoints
+        } else {
+            Status::Good
+        }
+    }
+}
+
+fn reread(opened: &ScanFolder) -> Result<Vec<Content>, Status> {
+    crate::scan::shelf::read_all(&opened.folder).map_err(|fault| refuse_folder(&fault.into()))
+}
+
+/// From a full shelf to the files of the result.
+pub(super) struct Finishing<'a> {
+    pub setup: &'a Setup,
+    pub folder: &'a Path,
+    pub computed: u64,
+    pub reused: u64,
+    pub threads: usize,
+    pub began: Instant,
+    pub json: bool,
+    pub quiet: bool,
+}
+
+impl Finishing<'_> {
+    /// Writes everything and says what it was.
+    pub fn finish(&self, shelf: &Shelf) -> Result<Status, Status> {
+        let failed = |error: std::io::Error| {
+            let resumable = "the points are all stored; the same command goes on from there";
+            complain(&format!("error: the results could not be written to {}: {error}; {resumable}.\n", self.folder.display()));
+            if crate::scan::engine::is_full(&error) {
+                Status::Stopped
+            } else {
+                Status::Machine
+            }
+        };
+        let setup = self.setup;
+        let summary = Summary::of(setup, shelf).map_err(failed)?;
+        let through = summary.best.as_ref().map(|best| cuts(setup, shelf, best.point)).transpose().map_err(failed)?;
+        let tolerance = setup.scan.best.as_ref().and_then(|best| best.tolerance);
+        let within = match (&summary.best, &through, tolerance) {
+            (Some(best), Some(cuts), Some(tolerance)) => Some(region(setup, shelf, best, cuts, tolerance).map_err(failed)?),
+            _ => None,
+        };
+        let mut finished = scan_json::Finished {
+            setup,
+            summary: &summary,
+            region: within.as_ref(),
+            computed: self.computed,
+            reused: self.reused,
+            threads: self.threads,
+            method: serde_json::json!({"name": "each point by its own choice", "reason": "each point was refined until it met the accuracy"}),
+            warnings: scan_json::warnings(setup),
+            seconds: self.began.elapsed().as_secs_f64(),
+        };
+        let short_of = scan_text::not_reached(&finished);
+        finished.warnings.extend(short_of.clone());
+        let staging = prepare_any(self.folder).map_err(|fault| {
+            complain(&format!("{fault}\n"));
+            Status::Machine
+        })?;
+        let (written, json) = scan_files::write(staging, shelf, &finished, &Points::default()).map_err(failed)?;
+        not_drawn(&written);
+        if self.json {
+            print(&format!("{}\n", serde_json::to_string_pretty(&json).unwrap_or_default()));
+        } else if !self.quiet {
+            print(&scan_text::summary(&finished, &written.place));
+        }
+        if let Some(words) = &short_of {
+            complain(&format!("warning: {words}.\n"));
+        }
+        Ok(if summary.failed > 0 {
+            Status::FailedPoints
+        } else if short_of.is_some() {
+            Status::NotAccurate
+        } else {
+            Status::Good
+        })
+    }
+}

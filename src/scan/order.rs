@@ -1,0 +1,64 @@
+//! In which order the points of a part are computed.
+
+use super::bits::Bits;
+use super::store::Part;
+
+/// Points of a part, in tiles of consecutive points; tile k belongs to part k modulo the number of parts.
+#[derive(Debug, Clone, Copy)]
+pub struct Order {
+    /// Points of the whole scan.
+    pub points: u64,
+    /// Points of a tile.
+    pub tile: u64,
+    /// The part.
+    pub part: Part,
+}
+
+impl Order {
+    /// The part that a point belongs to, from 1.
+    pub fn part_of(&self, point: u64) -> u64 {
+        point / self.tile % self.part.of + 1
+    }
+
+    /// All points of the part, ascending.
+    pub fn all(self) -> impl Iterator<Item = u64> + Send {
+        let tiles = self.points.div_ceil(self.tile);
+        let mine = (self.part.number - 1..tiles).step_by(self.part.of.max(1) as usize);
+        mine.flat_map(move |tile| tile * self.tile..((tile + 1) * self.tile).min(self.points))
+    }
+
+    /// How many there are.
+    pub fn count(&self) -> u64 {
+        let tiles = self.points.div_ceil(self.tile);
+        if self.part.number > tiles {
+            return 0;
+        }
+        let mine = (tiles - self.part.number) / self.part.of + 1;
+        // the last tile may be shorter
+        let last_is_mine = (tiles - 1) % self.part.of + 1 == self.part.number;
+        mine * self.tile - if last_is_mine { tiles * self.tile - self.points } else { 0 }
+    }
+
+    /// Those that are not done.
+    pub fn pending<'d>(&self, done: &'d Bits) -> impl Iterator<Item = u64> + Send + 'd {
+        self.all().filter(|point| !done.has(*point))
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn exact_parts_share_all_points_without_overlap() {
+        for (points, tile, of) in [(1000, 48, 7), (48, 48, 3), (49, 48, 2), (5, 1, 9), (96, 48, 2)] {
+            let mut seen = Bits::new(points);
+            for number in 1..=of {
+                let order = Order { points, tile, part: Part { number, of } };
+                assert_eq!(order.all().count() as u64, order.count(), "{points} {tile} {number}/{of}");
+                assert!(order.all().all(|point| seen.insert(point) && order.part_of(point) == number));
+            }
+            assert_eq!(seen.count(), points);
+        }
+    }
+}
