@@ -4,7 +4,7 @@
 //! Mathematical Functions (1964), 25.4.29).
 
 /// Node on (0, 1) and weight; each stands for its mirror image too.
-const HALF: [(f64, f64); 10] = [
+pub const NODES: [(f64, f64); 10] = [
     (0.076_526_521_133_497_34, 0.152_753_387_130_725_84),
     (0.227_785_851_141_645_07, 0.149_172_986_472_603_74),
     (0.373_706_088_715_419_55, 0.142_096_109_318_382_04),
@@ -20,7 +20,7 @@ const HALF: [(f64, f64); 10] = [
 /// Integral of `f` from `from` to `to`.
 pub fn integral(from: f64, to: f64, f: impl Fn(f64) -> f64) -> f64 {
     let (middle, half) = (0.5 * (from + to), 0.5 * (to - from));
-    half * HALF.iter().map(|(node, weight)| weight * (f(middle - half * node) + f(middle + half * node))).sum::<f64>()
+    half * NODES.iter().map(|(node, weight)| weight * (f(middle - half * node) + f(middle + half * node))).sum::<f64>()
 }
 
 #[cfg(test)]

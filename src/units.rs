@@ -13,6 +13,14 @@ pub fn rad_s(hz: f64) -> f64 {
     hz * RAD_PER_TURN
 }
 
+/// Reduced Planck constant, J s.
+pub const HBAR_J_S: f64 = constants::PLANCK / RAD_PER_TURN;
+
+/// hbar^2/(2 m h) in Hz m^2: the kinetic energy over h is minus this times the second derivative, `mass_kg` in kg.
+pub fn kinetic_hz_m2(mass_kg: f64) -> f64 {
+    constants::PLANCK / (2.0 * mass_kg * RAD_PER_TURN * RAD_PER_TURN)
+}
+
 /// exp(2 pi i `turns`); the whole turns are taken off before 2 pi is applied, so no digits are lost at large arguments.
 pub fn cis_turns(turns: f64) -> Complex64 {
     let (sin, cos) = sin_cos_turns(turns);

@@ -24,5 +24,6 @@ pub mod state;
 mod state_file;
 pub mod system;
 pub mod tape;
+pub mod taylor;
 pub mod tree;
 pub mod vector;

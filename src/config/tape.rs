@@ -511,10 +511,20 @@ impl BoundFormula {
         self.run(t_s)
     }
 
+    /// Value and derivatives at `x`, where the formula is one of x; SI, angles in turns.
+    pub fn jet<const N: usize>(&self, x: f64) -> super::taylor::Taylor<N> {
+        self.run(super::taylor::Taylor::variable(x))
+    }
+
     /// Times strictly between 0 and `length_s` at which the formula has a kink or a jump, ascending: where an argument of abs or
     /// sqrt passes through zero, the two of min or max cross, floor or round steps. Found on a fine grid and then halved down to
     /// rounding; two that lie within the same cell of the grid may be missed.
     pub fn kinks_s(&self, length_s: f64) -> Vec<f64> {
+        self.kinks_between(0.0, length_s)
+    }
+
+    /// The same strictly between `from` and `to`, in the unit of the variable.
+    pub fn kinks_between(&self, from: f64, to: f64) -> Vec<f64> {
         const GRID: usize = 2048;
         let mut watched = Vec::new();
         for (register, entry) in self.entries.iter().enumerate() {
@@ -544,18 +554,18 @@ impl BoundFormula {
                 .collect()
         };
         let mut kinks = Vec::new();
-        let mut from = (0.0, sides(0.0));
+        let mut left = (from, sides(from));
         for k in 1..=GRID {
-            let t = length_s * k as f64 / GRID as f64;
-            let to = (t, sides(t));
+            let t = from + (to - from) * (k as f64 / GRID as f64);
+            let right = (t, sides(t));
             for w in 0..watched.len() {
-                if from.1[w] == to.1[w] {
+                if left.1[w] == right.1[w] {
                     continue;
                 }
-                let (mut low, mut high) = (from.0, to.0);
+                let (mut low, mut high) = (left.0, right.0);
                 for _ in 0..60 {
                     let middle = 0.5 * (low + high);
-                    if sides(middle)[w] == from.1[w] {
+                    if sides(middle)[w] == left.1[w] {
                         low = middle;
                     } else {
                         high = middle;
@@ -563,11 +573,11 @@ impl BoundFormula {
                 }
                 kinks.push(high);
             }
-            from = to;
+            left = right;
         }
-        kinks.retain(|t| *t > 0.0 && *t < length_s);
+        kinks.retain(|t| *t > from && *t < to);
         kinks.sort_by(f64::total_cmp);
-        kinks.dedup_by(|later, earlier| *later - *earlier <= 1e-14 * length_s);
+        kinks.dedup_by(|later, earlier| *later - *earlier <= 1e-14 * (to - from));
         kinks
     }
 

@@ -3,7 +3,10 @@
 pub mod angular_momentum;
 pub mod built;
 pub mod commutators;
+pub mod differential;
+pub mod expansion;
 pub mod gaps;
+pub mod grid;
 mod mode;
 mod parts;
 pub mod spin;
