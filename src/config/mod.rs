@@ -2,6 +2,7 @@
 pub mod compare;
 pub mod decay;
 pub mod dephasing;
+pub mod differential;
 pub mod document;
 pub mod drives;
 pub mod envelopes;
@@ -23,6 +24,7 @@ pub mod starters;
 pub mod state;
 mod state_file;
 pub mod system;
+pub mod table;
 pub mod tape;
 pub mod taylor;
 pub mod tree;

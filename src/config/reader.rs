@@ -173,6 +173,8 @@ struct Scope {
     exact: bool,
     complex: bool,
     formula: Option<Tape>,
+    /// What the formula is one of, where that is not the time.
+    variable: Option<(String, Dim)>,
 }
 
 impl Reader {
@@ -543,6 +545,12 @@ impl Reader {
         Some(Quantity { register: known.re, place: node.place })
     }
 
+    /// A value of whatever dimension, with it.
+    pub fn quantity_of_any_dimension(&mut self, node: &Node, what: &str) -> Option<(Quantity, Dim)> {
+        let known = self.known(node, what)?;
+        Some((Quantity { register: known.re, place: node.place }, known.dim))
+    }
+
     /// A plain number.
     pub fn plain(&mut self, node: &Node, what: &str) -> Option<Quantity> {
         self.quantity(node, what, Dim::NONE)
@@ -669,6 +677,39 @@ impl Reader {
         let known = self.compile(&expression, &mut scope)?;
         self.fits(&known, node, what, wanted)?;
         Some(Formula { tape: scope.formula.unwrap_or_default(), result: known.re, place: node.place })
+    }
+
+    /// A formula of another variable than the time, of any dimension, with its dimension.
+    pub fn formula_in(&mut self, node: &Node, what: &str, variable: &str, dim: Dim) -> Option<(Formula, Dim)> {
+        let (re, im, dim) = self.complex_formula_in(node, what, variable, dim, false)?;
+        debug_assert!(im.is_none());
+        Some((re, dim))
+    }
+
+    /// The same of dimension `wanted`.
+    pub fn formula_in_as(&mut self, node: &Node, what: &str, variable: (&str, Dim), wanted: Dim) -> Option<Formula> {
+        let expression = self.parsed(node, what)?;
+        let mut scope = formula_scope(node, variable, false);
+        let known = self.compile(&expression, &mut scope)?;
+        self.fits(&known, node, what, wanted)?;
+        Some(Formula { tape: scope.formula.unwrap_or_default(), result: known.re, place: node.place })
+    }
+
+    /// Real and imaginary part of a formula of another variable, with its dimension.
+    pub fn complex_formula_in(
+        &mut self,
+        node: &Node,
+        what: &str,
+        variable: &str,
+        dim: Dim,
+        complex: bool,
+    ) -> Option<(Formula, Option<Formula>, Dim)> {
+        let expression = self.parsed(node, what)?;
+        let mut scope = formula_scope(node, (variable, dim), complex);
+        let known = self.compile(&expression, &mut scope)?;
+        let tape = scope.formula.unwrap_or_default();
+        let im = known.im.map(|im| Formula { tape: tape.clone(), result: im, place: node.place });
+        Some((Formula { tape, result: known.re, place: node.place }, im, known.dim))
     }
 
     /// A formula of final quantities and named numbers, of any dimension; names that are no numbers are taken for final quantities.
@@ -924,16 +965,20 @@ impl Reader {
     fn compile_name(&mut self, name: &str, place: Place, scope: &mut Scope) -> Option<Known> {
         if name == "pi" {
             let re = self.push(scope, TapeEntry::Constant(std::f64::consts::PI), place);
-            let known = self.seen_from_outside(0, Dim::NONE, place, &mut Scope { formula: None, ..*scope });
+            let known = self.seen_from_outside(0, Dim::NONE, place, &mut outside(scope));
             return Some(Known { re, pi: true, cyclic: false, constant: Some(std::f64::consts::PI), ..known });
         }
+        if let Some((_, dim)) = scope.variable.clone().filter(|(variable, _)| variable == name) {
+            let re = self.push(scope, TapeEntry::Time, place);
+            return Some(Known { re, ..self.seen_from_outside(0, dim, place, &mut outside(scope)) });
+        }
         if name == "t" {
-            if scope.formula.is_none() || self.finals.is_some() {
+            if scope.formula.is_none() || scope.variable.is_some() || self.finals.is_some() {
                 self.error(place, Fault::TimeOutside);
                 return None;
             }
             let re = self.push(scope, TapeEntry::Time, place);
-            return Some(Known { re, ..self.seen_from_outside(0, Dim::TIME, place, &mut Scope { formula: None, ..*scope }) });
+            return Some(Known { re, ..self.seen_from_outside(0, Dim::TIME, place, &mut outside(scope)) });
         }
         if name == "i" {
             if !scope.complex {
@@ -945,7 +990,7 @@ impl Reader {
             return Some(Known {
                 re: zero,
                 im: Some(one),
-                ..self.seen_from_outside(0, Dim::NONE, place, &mut Scope { formula: None, ..*scope })
+                ..self.seen_from_outside(0, Dim::NONE, place, &mut outside(scope))
             });
         }
         let Some(index) = self.by_name.get(name).copied() else {
@@ -956,7 +1001,7 @@ impl Reader {
                 }
                 let re = tape.push(TapeEntry::Outer(FIRST_FINAL - k as Register), place);
                 let dim = super::scan::dim_of_final(name);
-                return Some(Known { re, ..self.seen_from_outside(0, dim, place, &mut Scope { formula: None, ..*scope }) });
+                return Some(Known { re, ..self.seen_from_outside(0, dim, place, &mut outside(scope)) });
             }
             let names = self.number_names();
             self.unknown(place, "number", name, &names);
@@ -1197,12 +1242,22 @@ fn cut_before<'n>(before: &'n [Entry], key: &str) -> Option<&'n Node> {
     (key.contains(')') && !key.contains('(') && opens(value.text()?)).then_some(value)
 }
 
+/// The scope of a formula of another variable than the time.
+fn formula_scope(node: &Node, variable: (&str, Dim), complex: bool) -> Scope {
+    Scope { formula: Some(Tape::default()), variable: Some((variable.0.to_string(), variable.1)), ..scope_of(node, complex) }
+}
+
+/// The scope of the main tape around a formula.
+fn outside(scope: &Scope) -> Scope {
+    Scope { place: scope.place, exact: scope.exact, complex: scope.complex, formula: None, variable: None }
+}
+
 fn scope_of(node: &Node, complex: bool) -> Scope {
     match &node.kind {
         Kind::Scalar { exact: true, quoted, .. } => {
-            Scope { place: node.place.part(usize::from(*quoted), node.place.length as usize), exact: true, complex, formula: None }
+            Scope { place: node.place.part(usize::from(*quoted), node.place.length as usize), exact: true, complex, formula: None, variable: None }
         }
-        _ => Scope { place: node.place, exact: false, complex, formula: None },
+        _ => Scope { place: node.place, exact: false, complex, formula: None, variable: None },
     }
 }
 

@@ -457,6 +457,16 @@ impl Formula {
         values[self.result as usize]
     }
 
+    /// Whether its variable stands in it.
+    pub fn is_constant(&self) -> bool {
+        !self.tape.entries.iter().any(|entry| matches!(entry, Entry::Time))
+    }
+
+    /// Registers of the tape outside that it reads.
+    pub fn registers(&self) -> impl Iterator<Item = Register> + '_ {
+        self.tape.entries.iter().filter_map(|entry| if let Entry::Outer(from) = entry { Some(*from) } else { None })
+    }
+
     /// Fills in the values of the tape outside.
     pub fn bind(&self, values: &[f64]) -> BoundFormula {
         let mut outer = Vec::new();

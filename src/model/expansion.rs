@@ -8,17 +8,9 @@
 use nalgebra::{DMatrix, SymmetricEigen};
 
 use super::differential::{Family, ORDERS};
+use crate::config::system::functions::Orthogonalise;
 use crate::config::tape::BoundFormula;
 use crate::config::taylor::Taylor;
-
-/// How functions are made orthogonal.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum Orthogonalise {
-    /// S^(-1/2).
-    Symmetric,
-    /// Gram and Schmidt, in the order of the list.
-    InOrder,
-}
 
 /// Fewest stretches into which the range is cut, so that no function hides between the nodes of a first look.
 const FEWEST: usize = 24;
