@@ -248,6 +248,18 @@ impl Dim {
     }
 }
 
+/// The same text for as long as the program runs; each name of a unit is kept once.
+pub fn lasting(unit: String) -> &'static str {
+    static NAMES: std::sync::Mutex<Vec<&'static str>> = std::sync::Mutex::new(Vec::new());
+    let mut names = NAMES.lock().unwrap_or_else(std::sync::PoisonError::into_inner);
+    if let Some(known) = names.iter().find(|known| **known == unit) {
+        return known;
+    }
+    let kept: &'static str = Box::leak(unit.into_boxed_str());
+    names.push(kept);
+    kept
+}
+
 /// A unit that a value may bear: dimension, factor to SI (turns for angles, Hz for energies), and whether it belongs to the Hz family.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Unit {

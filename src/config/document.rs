@@ -3,6 +3,7 @@
 use std::path::{Path, PathBuf};
 use std::sync::Arc;
 
+use super::basis::{self, Basis};
 use super::compare::{self, Compare, Variant};
 use super::decay::{read_decays, Decay};
 use super::dephasing::{read_dephasings, Dephasing};
@@ -50,7 +51,7 @@ const SECTIONS: [&str; 25] = [
     "hardware",
     "output",
 ];
-const LATER: [&str; 4] = ["basis", "tune", "fit", "hardware"];
+const LATER: [&str; 3] = ["tune", "fit", "hardware"];
 
 /// A config that holds no mistake.
 #[derive(Debug, Clone)]
@@ -67,6 +68,10 @@ pub struct Document {
     pub structural: Vec<Register>,
     /// The static system.
     pub system: System,
+    /// The working basis.
+    pub basis: Basis,
+    /// Names of the states as built.
+    pub built_names: Vec<String>,
     /// Named matrices.
     pub operators: Vec<Operator>,
     /// Drives.
@@ -297,9 +302,19 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     // with the names of the levels known, the other sections can be judged even where an energy is wrong
     let stand_in = System { place: root.place, kind: "levels", names: reader.level_names(), entries: Vec::new(), physics: Physics::Typed };
     let readable = system.is_some() || !stand_in.names.is_empty();
-    let known_system = system.clone().unwrap_or(stand_in);
+    let mut known_system = system.clone().unwrap_or(stand_in);
+    let built_names = known_system.names.clone();
+    let basis = match root.get("system") {
+        Some(node) if readable => basis::read_basis(reader, root.get("basis"), node, &known_system),
+        _ => None,
+    };
+    if let Some((_, names)) = &basis {
+        known_system.names = names.clone();
+    }
+    let system = system.map(|_| known_system.clone());
+    let sizes = [built_names.len(), known_system.names.len()];
     let mut operators = match root.get("operators") {
-        Some(node) if readable => super::system::read_operators(reader, node, &known_system),
+        Some(node) if readable => super::system::read_operators(reader, node, &known_system, sizes),
         _ => Vec::new(),
     };
     operators.extend(super::system::natural_operators(&known_system));
@@ -379,6 +394,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     let (system, steps, start, mut record, accuracy, output, frame) = (system?, steps?, start?, record?, accuracy?, output?, frame?);
     let (decays, dephasings) = surroundings?;
     super::record::beside_surroundings(reader, &mut record, root.get("record"), &decays, &dephasings);
+    let (basis, _) = basis?;
     let mut document = Document {
         sources: reader.sources.clone(),
         title,
@@ -386,6 +402,8 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         numbers,
         structural: reader.structural.clone(),
         system,
+        basis,
+        built_names,
         operators,
         drives,
         envelopes,

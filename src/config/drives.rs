@@ -236,7 +236,8 @@ fn read_coupling(
             let index = reader.name_among(&source.value, "operator", &names)?;
             match &operators[index].source {
                 OperatorSource::Typed(entries) => entries.clone(),
-                OperatorSource::Natural => return built(reader, DriveMatrix::Operator(index), reference, place, system),
+                // a direct drive multiplies the operator as it is, so no pair is implied
+                _ => return built(DriveMatrix::Operator(index), reference, place, system, form != Some(Form::Direct)),
             }
         }
         "strengths" => {
@@ -254,15 +255,15 @@ fn read_coupling(
         _ => {
             let (name, acting) = read_acts_on(reader, &source.value, section, system)?;
             match (&system.physics, acting) {
-                (Physics::Ladder(rungs), Acting::Quanta) => rungs
+                (Physics::Ladder(rungs), Acting::Quanta) if reader.as_built => rungs
                     .iter()
                     .enumerate()
                     .flat_map(|(n, rung)| [constant_entry(*rung, n, n + 1, place), constant_entry(*rung, n + 1, n, place)])
                     .collect(),
-                (_, Acting::Quanta) => return built(reader, DriveMatrix::Quanta(name), reference, place, system),
+                (_, Acting::Quanta) => return built(DriveMatrix::Quanta(name), reference, place, system, true),
                 (_, Acting::Moment) => {
                     let direction = read_direction(reader, node, section)?;
-                    return built(reader, DriveMatrix::Moment(name, direction), reference, place, system);
+                    return built(DriveMatrix::Moment(name, direction), reference, place, system, true);
                 }
             }
         }
@@ -294,15 +295,15 @@ fn read_coupling(
 
 /// A matrix that is known once the system is built; of two levels the only pair is the reference.
 fn built(
-    _reader: &mut Reader,
     matrix: DriveMatrix,
     reference: Option<(Option<[usize; 2]>, Place)>,
     place: Place,
     system: &System,
+    implied: bool,
 ) -> Option<(DriveMatrix, Option<[usize; 2]>, Place)> {
     match reference {
         Some((pair, at)) => Some((matrix, Some(pair?), at)),
-        None if system.names.len() == 2 => Some((matrix, Some([0, 1]), place)),
+        None if implied && system.names.len() == 2 => Some((matrix, Some([0, 1]), place)),
         None => Some((matrix, None, place)),
     }
 }

@@ -49,6 +49,15 @@ impl Mistake {
     }
 }
 
+/// A share as one would say it: in percent, or as a power of ten.
+fn share_words(share: f64) -> String {
+    if share >= 1e-3 {
+        format!("{} %", short(share * 100.0))
+    } else {
+        format!("{share:.1e}")
+    }
+}
+
 /// What can be wrong with a config, as data.
 #[derive(Debug, Clone, PartialEq)]
 #[allow(missing_docs)] // the fields are the words of the sentence that `words` makes of them
@@ -118,6 +127,18 @@ pub enum Fault {
     FileContent { path: String, row: usize, reason: String },
     EmptySystem { what: String },
     SameLevel { name: String },
+    NoVariable { kind: &'static str },
+    FieldOnRing,
+    NoValueAt { what: String, x_m: f64 },
+    NoMeaning { order: usize, reason: String, write: String },
+    NotHermitianDifferential { what: String, order: usize, residue: f64 },
+    NotOrthogonal { first: String, second: String, overlap: f64 },
+    Dependent { least: f64, names: Vec<String> },
+    // the basis
+    NamingWithoutBasis,
+    MoreStatesThanBuilt { found: usize, built: usize },
+    NotOrthonormal { first: String, second: String, overlap: f64, write: Option<String> },
+    NoLargestOverlap { energy_hz: f64, candidates: [(String, f64); 2] },
     // drives
     NeedsReference { drive: String, pairs: Option<usize> },
     FieldWithoutMoment { envelope: String, drive: String },
@@ -623,6 +644,62 @@ impl Fault {
             PhaseChangeUnsaid { drive } => say(format!("the carrier of \"{drive}\" runs on; how does its phase go through the change?"))
                 .write("phase: continues              (no jump at the change)")
                 .write("phase: as if always on        (as if the new carrier had run from the start)"),
+
+            NoVariable { kind } => say(format!("derivatives need a system with a variable, and a {kind} has none."))
+                .why("A well has x; functions have the variable that they name.")
+                .write("rows: [[0, 1], [1, 0]]      (the matrix itself)"),
+            FieldOnRing => say("a field cannot stand along a ring: its potential would not close.")
+                .write("ends: closed, or a potential that closes, such as 5 meV * cos(1 turn * x / girth)"),
+            NoValueAt { what, x_m } => {
+                say(format!("{what} has no finite value at {}.", short_with_unit(*x_m, "m"))).write("a range that leaves this place out")
+            }
+            NoMeaning { order, reason, write } => {
+                say(format!("the derivative of order {order} has no meaning here: {reason}.")).write(write.clone())
+            }
+            NotHermitianDifferential { what, order, residue } => {
+                say(format!("{what} is not Hermitian: {} of its largest entry differs from the adjoint.", share_words(*residue)))
+                    .why(format!("Most of it comes from the derivative of order {order}; the coefficient stands left of the derivative."))
+                    .why("Hermitian are c(x); 2 c d^2/dx^2 with c constant; c d^2/dx^2 + c' d/dx; i (2 c d/dx + c'), c real.")
+            }
+            NotOrthogonal { first, second, overlap } => {
+                say(format!("the functions are not orthogonal: {first} and {second} overlap by {} of their norms.", short(*overlap)))
+                    .why("The choice of the orthogonal states changes every matrix, so it has no default.")
+                    .write("orthogonalise: symmetric      (each stays as near to its function as can be)")
+                    .write("orthogonalise: in order       (the first stays; each further one loses what lies along those before)")
+            }
+            Dependent { least, names } => {
+                say(format!("the states {} are not independent: some sum of them has only {} of its norm.", list(names), short(*least)))
+                    .why("What is made orthogonal of them would be rounding.")
+                    .write("states that differ more, or fewer of them")
+            }
+            NamingWithoutBasis => {
+                say("name_states_by says how eigenstates are named, but the states are those as built.").write("basis: eigenstates")
+            }
+            MoreStatesThanBuilt { found, built } => {
+                say(format!("the basis has {found} states, but the system has only {built}.")).write(format!("at most {built} new states"))
+            }
+            NotOrthonormal { first, second, overlap, write } => {
+                let words = if first == second {
+                    say(format!("the state \"{first}\" is not of norm 1: its squares add up to {}.", short(*overlap)))
+                } else {
+                    say(format!("the states \"{first}\" and \"{second}\" are not orthogonal: they overlap by {}.", short(*overlap)))
+                };
+                let words = words.why("New states must be orthonormal within 1e-12, or the file must say how they are made so.");
+                let words = match write {
+                    Some(write) => words.write(write.clone()),
+                    None => words,
+                };
+                words.write("basis: {names: {..}, orthogonalise: symmetric}      (or: in order)")
+            }
+            NoLargestOverlap { energy_hz, candidates: [(first, a), (second, b)] } => say(format!(
+                "the eigenstate at {} bears no name: {} of it is {first}, {} is {second}.",
+                short_with_unit(*energy_hz, "Hz"),
+                share_words(*a),
+                share_words(*b)
+            ))
+            .why("A name needs more than half of the state.")
+            .write("name_states_by: energy      (under system: in ascending order)")
+            .write("basis: {new: {old: amplitude}}      (states of your own)"),
 
             WidthWord { word, shape } => say(format!("the width of a pulse needs the word field or intensity, not \"{word}\"."))
                 .why(format!("For a {shape} pulse the readings differ by sqrt(2)."))

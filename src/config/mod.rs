@@ -1,4 +1,5 @@
 //! Text in, a checked [`Document`](document::Document) out, with a place on every value.
+pub mod basis;
 pub mod compare;
 pub mod decay;
 pub mod dephasing;

@@ -152,6 +152,8 @@ pub struct Reader {
     pub defaults: Vec<(String, String)>,
     /// Parts of the system with the names of their levels; none where it has no parts.
     pub parts: Vec<(String, Vec<String>)>,
+    /// Whether the working basis is the one as built.
+    pub as_built: bool,
     /// Registers whose value shaped the reading itself: counts of levels and repeats.
     pub structural: Vec<Register>,
     numbers: Vec<Number>,
@@ -188,6 +190,7 @@ impl Reader {
             archive: None,
             defaults: Vec::new(),
             parts: Vec::new(),
+            as_built: true,
             structural: Vec::new(),
             numbers: Vec::new(),
             by_name: HashMap::new(),
@@ -987,11 +990,7 @@ impl Reader {
             }
             let zero = self.push(scope, TapeEntry::Constant(0.0), place);
             let one = self.push(scope, TapeEntry::Constant(1.0), place);
-            return Some(Known {
-                re: zero,
-                im: Some(one),
-                ..self.seen_from_outside(0, Dim::NONE, place, &mut outside(scope))
-            });
+            return Some(Known { re: zero, im: Some(one), ..self.seen_from_outside(0, Dim::NONE, place, &mut outside(scope)) });
         }
         let Some(index) = self.by_name.get(name).copied() else {
             if let (Some(finals), Some(tape)) = (&mut self.finals, &mut scope.formula) {
@@ -1254,9 +1253,13 @@ fn outside(scope: &Scope) -> Scope {
 
 fn scope_of(node: &Node, complex: bool) -> Scope {
     match &node.kind {
-        Kind::Scalar { exact: true, quoted, .. } => {
-            Scope { place: node.place.part(usize::from(*quoted), node.place.length as usize), exact: true, complex, formula: None, variable: None }
-        }
+        Kind::Scalar { exact: true, quoted, .. } => Scope {
+            place: node.place.part(usize::from(*quoted), node.place.length as usize),
+            exact: true,
+            complex,
+            formula: None,
+            variable: None,
+        },
         _ => Scope { place: node.place, exact: false, complex, formula: None, variable: None },
     }
 }

@@ -6,14 +6,20 @@ use super::place::Place;
 use super::reader::{ComplexQuantity, LevelSource, Reader, Rungs};
 use super::tape::Register;
 use super::tree::Node;
+use crate::units::Dim;
 
+pub mod functions;
 pub mod mode;
 pub mod parts;
 pub mod spin;
+pub mod well;
 
+use super::differential::{read_differential, Differential};
+use functions::Functions;
 use mode::Mode;
 use parts::Parts;
 use spin::Spin;
+use well::Well;
 
 /// Most levels accepted: a dense matrix of that size is 16 MB.
 pub const MOST_LEVELS: usize = 1024;
@@ -46,6 +52,10 @@ pub enum Physics {
     Mode(Mode),
     /// Several systems beside each other.
     Parts(Box<Parts>),
+    /// One particle in one dimension.
+    Well(Box<Well>),
+    /// Functions of the user's own.
+    Functions(Box<Functions>),
 }
 
 /// What `acts_on` may name, and how a drive acts on it.
@@ -84,6 +94,8 @@ impl System {
                 let of = |part: &parts::Part| part.system.operators().into_iter().map(|name| format!("{}.{name}", part.name)).collect();
                 parts.parts.iter().flat_map(|part| -> Vec<String> { of(part) }).collect()
             }
+            Physics::Well(well) => own(well::operators(well.ring)),
+            Physics::Functions(_) => Vec::new(),
         }
     }
 
@@ -103,10 +115,19 @@ impl System {
         }
     }
 
+    /// The variable of its differential operators and its dimension, if it has one.
+    pub fn variable(&self) -> Option<(&str, Dim)> {
+        match &self.physics {
+            Physics::Well(_) => Some(("x", Dim::LENGTH)),
+            Physics::Functions(functions) => Some((&functions.variable, functions.dim)),
+            _ => None,
+        }
+    }
+
     /// What `acts_on` may name here.
     pub fn acting(&self) -> Vec<(String, Acting)> {
         let how = match &self.physics {
-            Physics::Typed => return Vec::new(),
+            Physics::Typed | Physics::Well(_) | Physics::Functions(_) => return Vec::new(),
             Physics::Ladder(_) | Physics::Mode(_) => Acting::Quanta,
             Physics::Spin(_) => Acting::Moment,
             Physics::Parts(parts) => {
@@ -126,6 +147,8 @@ impl System {
             Physics::Spin(spin) => spin.registers(&mut found),
             Physics::Mode(mode) => mode.registers(&mut found),
             Physics::Parts(parts) => parts.registers(&mut found),
+            Physics::Well(well) => well.registers(&mut found),
+            Physics::Functions(functions) => functions.registers(&mut found),
         }
         found
     }
@@ -147,6 +170,10 @@ pub struct Operator {
 pub enum OperatorSource {
     /// Typed entries without dimension, in the working basis.
     Typed(Vec<MatrixEntry>),
+    /// The same in the basis as built, `in: as built`.
+    AsBuilt(Vec<MatrixEntry>),
+    /// A differential operator of the system's variable.
+    Differential(Differential),
     /// It comes with the system, under the same name.
     Natural,
 }
@@ -155,13 +182,16 @@ impl Operator {
     /// The written entries of a typed one.
     pub fn entries(&self) -> Option<&[MatrixEntry]> {
         match &self.source {
-            OperatorSource::Typed(entries) => Some(entries),
-            OperatorSource::Natural => None,
+            OperatorSource::Typed(entries) | OperatorSource::AsBuilt(entries) => Some(entries),
+            OperatorSource::Natural | OperatorSource::Differential(_) => None,
         }
     }
 
     /// The registers it is made of.
     pub fn registers(&self) -> Vec<Register> {
+        if let OperatorSource::Differential(differential) = &self.source {
+            return differential.registers();
+        }
         let entries = self.entries().unwrap_or_default();
         entries.iter().flat_map(|entry| [Some(entry.value.re), entry.value.im]).flatten().collect()
     }
@@ -171,15 +201,17 @@ impl Operator {
 type Read = fn(&mut Reader, &Node, Place, &str) -> Option<System>;
 
 /// Every kind of system and how it is read.
-const KINDS: [(&str, Read); 5] = [
+const KINDS: [(&str, Read); 7] = [
     ("levels", read_levels),
     ("ladder", read_ladder),
     ("hamiltonian", read_hamiltonian),
     ("spin", spin::read_spin),
     ("mode", mode::read_mode),
+    ("well", well::read_well),
+    ("functions", functions::read_functions),
 ];
 
-const LATER_KINDS: [&str; 3] = ["well", "functions", "atom"];
+const LATER_KINDS: [&str; 1] = ["atom"];
 
 /// Keys that stand beside `parts` alone.
 const BESIDE_PARTS: [&str; 2] = ["magnetic_field", "interactions"];
@@ -466,9 +498,38 @@ pub fn warn_of_case(reader: &mut Reader, kind: &'static str, names: &[String], p
     }
 }
 
-/// Reads `operators:`; an operator that cannot be read leaves its name with no entries.
-pub fn read_operators(reader: &mut Reader, node: &Node, system: &System) -> Vec<Operator> {
-    let size = system.names.len();
+/// One operator: typed rows, or a differential operator; what cannot be read has no entries.
+fn read_operator(reader: &mut Reader, node: &Node, section: &str, system: &System, [built, working]: [usize; 2]) -> OperatorSource {
+    let nothing = OperatorSource::Typed(Vec::new());
+    if reader.fields(node, section, &["rows", "rows_from", "lower", "in", "derivatives"], &[]).is_none() {
+        return nothing;
+    }
+    if let Some(derivatives) = node.get("derivatives") {
+        if reader.one_of(node, &["rows", "rows_from", "derivatives"], section, None).is_none() {
+            return nothing;
+        }
+        let Some(variable) = system.variable() else {
+            reader.error(derivatives.place, Fault::NoVariable { kind: system.kind });
+            return nothing;
+        };
+        let differential = read_differential(reader, derivatives, &format!("{section} / derivatives"), variable, None);
+        return differential.map_or(nothing, OperatorSource::Differential);
+    }
+    let as_built = match node.get("in") {
+        Some(word) => reader.word(word, &format!("{section} / in"), &[("as built", true)]).unwrap_or(false),
+        None => false,
+    };
+    let entries = matrix::plain_matrix(reader, node, section, if as_built { built } else { working }).unwrap_or_default();
+    if as_built {
+        OperatorSource::AsBuilt(entries)
+    } else {
+        OperatorSource::Typed(entries)
+    }
+}
+
+/// Reads `operators:`; an operator that cannot be read leaves its name with no entries. `sizes` are the numbers of states as built and
+/// of the working basis.
+pub fn read_operators(reader: &mut Reader, node: &Node, system: &System, sizes: [usize; 2]) -> Vec<Operator> {
     let Some(entries) = node.entries() else {
         let fault = Fault::Shape {
             what: "operators".to_string(),
@@ -489,16 +550,8 @@ pub fn read_operators(reader: &mut Reader, node: &Node, system: &System) -> Vec<
             reader.error(entry.place, Fault::NameNotFree { name: entry.key.clone(), reason });
             continue;
         }
-        if let Some(later) = entry.value.entries().and_then(|keys| keys.iter().find(|key| matches!(key.key.as_str(), "derivatives" | "in")))
-        {
-            reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: section.clone() });
-            continue;
-        }
-        let matrix = match reader.fields(&entry.value, &section, &["rows", "rows_from", "lower"], &[]) {
-            Some(_) => matrix::plain_matrix(reader, &entry.value, &section, size),
-            None => None,
-        };
-        found.push(Operator { name: entry.key.clone(), place: entry.place, source: OperatorSource::Typed(matrix.unwrap_or_default()) });
+        let source = read_operator(reader, &entry.value, &section, system, sizes);
+        found.push(Operator { name: entry.key.clone(), place: entry.place, source });
     }
     found
 }

@@ -99,6 +99,8 @@ pub struct Built {
     pub sum_rule: Vec<f64>,
     /// Columns: the states of the working basis in those as built; none where they are the same.
     pub basis: Option<Arc<Matrix>>,
+    /// What the static matrix couples to states that the working basis leaves out, Hz.
+    pub lost_hz: f64,
 }
 
 impl Built {
@@ -116,6 +118,7 @@ impl Built {
             overlap: None,
             sum_rule: Vec::new(),
             basis: None,
+            lost_hz: 0.0,
         }
     }
 

@@ -89,6 +89,19 @@ pub fn matrix(family: &dyn Family, terms: &[Term]) -> Result<Integrals, Differen
     Ok(sum)
 }
 
+/// Adds the integral from `from` to `to` of w(x) a(x) b(x)^T, 20 points; `at` gives a, b and w.
+pub fn add_products(sum: &mut DMatrix<f64>, from: f64, to: f64, at: &dyn Fn(f64) -> (Vec<f64>, Vec<f64>, f64)) {
+    let (middle, half) = (0.5 * (from + to), 0.5 * (to - from));
+    for (node, weight) in NODES.iter().flat_map(|(node, weight)| [(-node, weight), (*node, weight)]) {
+        let (left, right, factor) = at(middle + half * node);
+        for (column, b) in right.iter().enumerate() {
+            for (row, a) in left.iter().enumerate() {
+                sum[(row, column)] += weight * half * factor * a * b;
+            }
+        }
+    }
+}
+
 /// How one term is integrated.
 struct Plan<'t> {
     family: &'t dyn Family,

@@ -38,6 +38,15 @@ impl Expansion {
         ends.dedup_by(|later, earlier| *later - *earlier <= 1e-13 * (to - from));
         Expansion { functions, panels: ends.windows(2).map(|two| [two[0], two[1]]).collect(), continuous }
     }
+
+    /// The first function that has no finite value somewhere on a comb, and where.
+    pub fn without_value(&self) -> Option<(usize, f64)> {
+        let middles = self.panels.iter().flat_map(|[from, to]| (0..16).map(move |k| from + (to - from) * (f64::from(k) + 0.5) / 16.0));
+        middles
+            .flat_map(|x| self.functions.iter().enumerate().map(move |(k, f)| (k, x, f.at(x))))
+            .find(|(.., y)| !y.is_finite())
+            .map(|(k, x, _)| (k, x))
+    }
 }
 
 impl Family for Expansion {

@@ -1,16 +1,20 @@
 //! Matrices in a basis: the checked config's entries become dense Hermitian matrices. Knows nothing of time.
 
 pub mod angular_momentum;
+mod basis;
 pub mod built;
 pub mod commutators;
 pub mod differential;
 pub mod expansion;
+mod functions;
 pub mod gaps;
 pub mod grid;
 mod mode;
 mod parts;
 pub mod spin;
 pub mod surroundings;
+mod typed_differential;
+mod well;
 
 use num_complex::Complex64;
 
@@ -19,7 +23,7 @@ use crate::config::drives::{Drive, DriveMatrix};
 use crate::config::matrix::MatrixEntry;
 use crate::config::messages::{Fault, Mistake, OpenFault};
 use crate::config::state::State;
-use crate::config::system::{OperatorSource, Physics, System};
+use crate::config::system::{Operator, OperatorSource, Physics, System};
 use crate::problem::{Matrix, Start, Vector};
 use crate::units::cis_turns;
 
@@ -28,18 +32,21 @@ use built::Built;
 /// The system of a document at one point, in its working basis; `values` are the registers of the tape, of which those that
 /// follow its own levels need not be known.
 pub fn build(document: &Document, values: &[f64]) -> Result<Built, Mistake> {
-    build_system(&document.system, values)
+    let built = build_system(&document.system, &document.built_names, &document.operators, values)?;
+    basis::change(built, &document.basis, &document.built_names, values)
 }
 
 /// A system as built, without a change of basis. Every kind has its line here.
-fn build_system(system: &System, values: &[f64]) -> Result<Built, Mistake> {
-    let size = system.names.len();
+fn build_system(system: &System, names: &[String], operators: &[Operator], values: &[f64]) -> Result<Built, Mistake> {
+    let size = names.len();
     Ok(match &system.physics {
         Physics::Typed => Built::new(dense(size, &system.entries, values)),
         Physics::Ladder(rungs) => mode::ladder(system.kind, dense(size, &system.entries, values), rungs, values),
         Physics::Spin(spin) => spin::build(spin, values),
         Physics::Mode(mode) => mode::build(mode, values),
         Physics::Parts(parts) => parts::build(parts, values)?,
+        Physics::Well(well) => well::build(well, operators, values)?,
+        Physics::Functions(functions) => functions::build(functions, names, operators, values)?,
     })
 }
 
@@ -48,7 +55,8 @@ pub fn operator(document: &Document, built: &Built, index: usize, values: &[f64]
     let operator = &document.operators[index];
     match &operator.source {
         OperatorSource::Typed(entries) => dense(built.size(), entries, values),
-        OperatorSource::Natural => built.operator(&operator.name),
+        OperatorSource::AsBuilt(entries) => built.to_working(dense(document.built_names.len(), entries, values)),
+        OperatorSource::Natural | OperatorSource::Differential(_) => built.operator(&operator.name),
     }
 }
 

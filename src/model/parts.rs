@@ -43,7 +43,7 @@ pub fn build(parts: &Parts, values: &[f64]) -> Result<Built, Mistake> {
 fn build_part(part: &Part, values: &[f64], field: [f64; 3]) -> Result<Built, Mistake> {
     match &part.system.physics {
         Physics::Spin(spin) => Ok(super::spin::build_in(spin, values, field)),
-        _ => super::build_system(&part.system, values),
+        _ => super::build_system(&part.system, &part.system.names, &[], values),
     }
 }
 

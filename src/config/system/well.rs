@@ -130,8 +130,7 @@ pub fn read_well(reader: &mut Reader, node: &Node, place: Place, section: &str) 
         Some(ends) => reader.word(ends, &format!("{section} / ends"), &[("closed", false), ("ring", true)]),
         None => {
             let why = Some("closed: walls stand at both ends; ring: the right end is the left one again.".to_string());
-            let fault =
-                Fault::MissingKey { key: "ends".to_string(), section: section.to_string(), write: "ends: closed".to_string(), why };
+            let fault = Fault::MissingKey { key: "ends".to_string(), section: section.to_string(), write: "ends: closed".to_string(), why };
             reader.error(node.place, fault);
             None
         }
@@ -197,7 +196,12 @@ fn read_layers(reader: &mut Reader, node: &Node, section: &str) -> Option<Potent
         .iter()
         .map(|item| {
             let section = format!("{section} / layers");
-            reader.fields(item, &section, &["length", "potential", "mass"], &[("width", "Written length."), ("thickness", "Written length.")])?;
+            reader.fields(
+                item,
+                &section,
+                &["length", "potential", "mass"],
+                &[("width", "Written length."), ("thickness", "Written length.")],
+            )?;
             let length = reader.need(item, "length", &section, "8 nm");
             let length = length.and_then(|value| reader.quantity(value, &format!("{section} / length"), Dim::LENGTH));
             let potential = reader.need(item, "potential", &section, "240 meV");

@@ -22,6 +22,11 @@ impl<'s> Eigenfunctions<'s> {
     pub fn new(states: &'s States, pieces: &'s [Piece]) -> Eigenfunctions<'s> {
         Eigenfunctions { states, pieces, continuous: continuous(pieces, states.mesh.ring) }
     }
+
+    /// The piece in which a stretch lies.
+    pub fn piece(&self, panel: usize) -> usize {
+        self.states.mesh.piece[panel]
+    }
 }
 
 /// The highest derivative of an eigenfunction that is continuous: none at a step of the mass, the first at one of the potential, the
@@ -69,9 +74,8 @@ impl Family for Eigenfunctions<'_> {
         let cardinals = rule.cardinals((2.0 * x - from - to) / (to - from));
         let nodes = rule.nodes.len();
         // the slope of the polynomial at x: its slopes on the nodes, interpolated
-        let slopes: Vec<f64> = (0..nodes)
-            .map(|b| (0..nodes).map(|q| cardinals[q] * rule.slopes[q][b]).sum::<f64>() * 2.0 / (to - from))
-            .collect();
+        let slopes: Vec<f64> =
+            (0..nodes).map(|b| (0..nodes).map(|q| cardinals[q] * rule.slopes[q][b]).sum::<f64>() * 2.0 / (to - from)).collect();
         let higher = orders > 2;
         let energy = if higher { piece.energy_jet::<ORDERS>(x) } else { Taylor([0.0; ORDERS]) };
         let mass = if higher { piece.mass_kg.jet::<ORDERS>(x) } else { Taylor([0.0; ORDERS]) };
