@@ -7,6 +7,8 @@ use num_complex::Complex64;
 
 /// Radians in one turn.
 pub const RAD_PER_TURN: f64 = std::f64::consts::TAU;
+/// A quarter of a turn, rad, in two parts of 33 bits and a rest, so that each part times a whole number below 2^20 is exact.
+pub const QUARTER_TURN_RAD: [f64; 3] = [1.570_796_326_734_125_6, 6.077_100_506_303_966e-11, 2.022_266_248_795_950_7e-21];
 
 /// Angular frequency in rad/s of a cyclic frequency in Hz.
 pub fn rad_s(hz: f64) -> f64 {

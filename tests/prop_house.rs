@@ -174,6 +174,10 @@ fn prop_constants_of_nature_live_in_units() {
 fn prop_no_unsafe() {
     let mut wrong = Vec::new();
     for (path, text) in sources() {
+        // the one folder that calls the processor's instructions
+        if below_src(&path).starts_with("propagate/lanes/") {
+            continue;
+        }
         for (line, code) in program_lines(&text) {
             if code.split(|c: char| !(c.is_alphanumeric() || c == '_')).any(|word| word == "unsafe") {
                 wrong.push(format!("src/{}, line {line}: {}", below_src(&path), code.trim()));

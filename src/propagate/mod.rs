@@ -19,6 +19,7 @@
 //! | `geometric.rs` | Magnus expansion, order 6 |
 //! | `smooth.rs`, `dormand_prince.rs` | Runge-Kutta 8(5,3) and its coefficients |
 //! | `cross_check.rs` | the independent second route |
+//! | `lanes/` | many points side by side |
 //! | `open/` | the same for density matrices |
 
 mod asked;
@@ -31,6 +32,7 @@ mod even_steps;
 mod exponential;
 mod geometric;
 mod jacobi;
+pub mod lanes;
 mod load;
 mod open;
 mod picture;

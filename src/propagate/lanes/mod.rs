@@ -1,0 +1,40 @@
+//! Many points side by side: the same arithmetic on eight points at a time, with the widest instructions that the processor has.
+//!
+//! Comes in: the matrices of eight points ([`Group`]) and the stretches of time that they share ([`Stretch`], its [`Steps`] made from a
+//! [`Profile`] at any fineness), rad/s and s. Leaves: their columns at the end.
+//!
+//! | file | what it does |
+//! |---|---|
+//! | `lane.rs` | what a kernel may ask of eight doubles |
+//! | `portable.rs`, `avx2.rs`, `avx512.rs` | three answers |
+//! | `width.rs` | which of them runs |
+//! | `elementary.rs` | sine and cosine |
+//! | `moments.rs` | from profiles in time to steps |
+//! | `steps.rs` | where a kernel finds its steps |
+//! | `two_levels.rs`, `three_levels.rs` | kernels |
+//! | `carry.rs` | [`Group`]: points through stretches |
+//!
+//! This is the only folder with `unsafe`: calls of the processor's instructions, each behind a witness that it has them. All
+//! arithmetic of a kernel stands in functions that are always inlined: what the compiler leaves as a call loses the instructions.
+#![allow(unsafe_code)]
+
+#[cfg(target_arch = "x86_64")]
+mod avx2;
+#[cfg(target_arch = "x86_64")]
+mod avx512;
+mod carry;
+mod elementary;
+mod lane;
+mod moments;
+mod portable;
+mod steps;
+#[cfg(test)]
+mod tests;
+mod three_levels;
+mod two_levels;
+mod width;
+
+pub use carry::{has_kernel, place_of, Group, Packed, Stretch};
+pub use lane::Eight;
+pub use moments::{Profile, Steps};
+pub use width::{Width, LANES_VARIABLE, WIDTHS};
