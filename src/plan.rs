@@ -16,7 +16,7 @@ use crate::config::dephasing::{Dephasing, Weights};
 use crate::config::document::{not_finite, Document};
 use crate::config::drives::{Drive, DriveMatrix, Form};
 use crate::config::envelopes::{Samples, SizeWord};
-use crate::config::messages::{short_with_unit, Fault, Mistake};
+use crate::config::messages::{short_with_unit, Fault, Mistake, OpenFault};
 use crate::config::record::Item;
 use crate::config::settings::{Follows, Frame, Rotating};
 use crate::config::state::State;
@@ -31,6 +31,7 @@ use crate::drive::signal::Signal;
 use crate::drive::timeline::{lay_out, PlacedPulse, Timeline};
 use crate::frame::eliminate::{eliminate, Elimination, LARGEST_VALIDITY};
 use crate::frame::follow::level_turning;
+use crate::frame::jumps::JumpBeat;
 use crate::frame::ledger::{Source, TermKey};
 use crate::frame::rotating::{rotate, Beat, Rotated, Setting};
 use crate::measure::breaks_period;
@@ -517,8 +518,25 @@ impl<'p> Point<'p> {
             };
             self.warnings.push(Mistake::warning(frame.place, fault));
         }
+        let beats = |fault: &dyn Fn(f64) -> OpenFault, of: &dyn Fn(&JumpBeat) -> bool| {
+            let slowest = rotated.jump_beats.iter().filter(|beat| of(beat)).map(|beat| beat.turns_hz).min_by(f64::total_cmp);
+            slowest.map(|turns_hz| Fault::Open(fault(turns_hz)))
+        };
+        if let Some(fault) = beats(&|_| OpenFault::JumpBeatMoves, &|beat| !beat.even) {
+            return Err(Mistake::error(frame.place, fault));
+        }
+        if let Some(fault) = beats(&|turns_hz| OpenFault::JumpBeats { turns_hz }, &|beat| !beat.kept) {
+            self.warnings.push(Mistake::warning(frame.place, fault));
+        }
         let mut elimination = None;
         if !frame.eliminate.is_empty() {
+            let entries =
+                |j: usize, k: usize| rotated.problem.jumps.iter().map(move |jump| jump.rate_per_s * jump.matrix[(j, k)].norm_sqr());
+            let stays: Vec<usize> = (0..self.energies_hz.len()).filter(|j| !frame.eliminate.contains(j)).collect();
+            let arrives = |e: usize| stays.iter().flat_map(|k| entries(e, *k)).any(|rate| rate > 0.0);
+            if let Some(level) = frame.eliminate.iter().find(|level| arrives(**level)) {
+                return Err(Mistake::error(frame.place, Fault::Open(OpenFault::IntoEliminated { level: name(*level) })));
+            }
             if let Some(level) = frame.eliminate.iter().find(|level| self.lab.start.state().population(**level) > 1e-24) {
                 return Err(Mistake::error(frame.place, Fault::StartEliminated { level: name(*level) }));
             }
@@ -526,6 +544,13 @@ impl<'p> Point<'p> {
             if !(done.validity < LARGEST_VALIDITY) {
                 let levels = frame.eliminate.iter().map(|level| name(*level)).collect();
                 return Err(Mistake::error(frame.place, Fault::TooNear { levels, validity: done.validity, limit: LARGEST_VALIDITY }));
+            }
+            for level in &frame.eliminate {
+                let rate_per_s = self.surroundings.rate_out(*level);
+                if rate_per_s > 0.0 {
+                    let fault = OpenFault::EliminatedDecays { level: name(*level), rate_per_s, validity: done.validity };
+                    self.warnings.push(Mistake::warning(frame.place, Fault::Open(fault)));
+                }
             }
             rotated.problem = problem;
             elimination = Some(done);

@@ -12,7 +12,7 @@ use std::sync::Arc;
 
 use num_complex::Complex64;
 
-use crate::problem::{Chirped, Envelope, Matrix, Problem, Segment, Slow, Term};
+use crate::problem::{Chirped, Envelope, Jump, Matrix, Problem, Segment, Slow, Term, TurningPart};
 use crate::units::{cis_turns, RAD_PER_TURN};
 
 /// From here on the expansion is refused.
@@ -94,10 +94,19 @@ pub fn eliminate(problem: &Problem, levels: &[usize]) -> (Problem, Elimination) 
         segments,
         terms,
         start: problem.start.clone(),
-        jumps: problem.jumps.clone(),
+        jumps: Arc::new(problem.jumps.iter().map(|jump| within(jump, &gone)).collect()),
         moments: problem.moments.clone(),
     };
     (problem, out)
+}
+
+/// A jump without what leaves eliminated levels; what arrives there is refused before.
+fn within(jump: &Jump, gone: &impl Fn(usize) -> bool) -> Jump {
+    let cut = |matrix: &Matrix| {
+        Matrix::from_fn(matrix.nrows(), matrix.ncols(), |j, k| if gone(k) { Complex64::default() } else { matrix[(j, k)] })
+    };
+    let turning = jump.turning.iter().map(|part| TurningPart { matrix: cut(&part.matrix), ..part.clone() }).collect();
+    Jump { matrix: cut(&jump.matrix), turning, ..jump.clone() }
 }
 
 /// The diagonal of a segment: what is fixed, and what moves in time.

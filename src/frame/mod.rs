@@ -6,5 +6,6 @@
 
 pub mod eliminate;
 pub mod follow;
+pub mod jumps;
 pub mod ledger;
 pub mod rotating;

@@ -13,6 +13,7 @@ use std::sync::Arc;
 use num_complex::Complex64;
 
 use super::follow::LevelTurning;
+use super::jumps::{Carriers, JumpBeat};
 use super::ledger::{Ledger, LedgerLine, Source, TermKey};
 use crate::config::tape::Wide;
 use crate::drive::coupling::Coupling;
@@ -64,6 +65,8 @@ pub struct Rotated {
     pub ledger: Ledger,
     /// Kept resonant halves that still turn.
     pub beats: Vec<Beat>,
+    /// Entries of jump operators that turn differently.
+    pub jump_beats: Vec<JumpBeat>,
     /// Frequencies of the levels at time zero, Hz.
     pub level_hz: Vec<f64>,
     /// Turns that each level's frame has made at the end, less the whole turns.
@@ -473,16 +476,22 @@ impl<'a> Work<'a> {
                 turns - turns.round()
             })
             .collect();
+        let first_hz: Vec<Wide> = self.first_carriers.iter().map(|carrier| self.carrier_hz(*carrier)).collect();
+        let swept = |d: usize| self.lab.terms.iter().any(|term| term.matrix == d && !term.chirps.is_empty());
+        let moved: Vec<bool> =
+            (0..first_hz.len()).map(|d| swept(d) || self.setting.timeline.changes.iter().any(|change| change.drive == d)).collect();
+        let carriers = Carriers { turning: self.setting.turning, first_hz: &first_hz, moved: &moved, limit_hz: self.setting.limit_hz };
+        let (jumps, jump_beats) = carriers.rotate(&self.lab.jumps);
         let problem = Problem {
             statics: Arc::new(self.statics),
             matrices: Arc::new(self.matrices),
             segments: self.segments,
             terms: self.terms,
             start: self.lab.start.clone(),
-            jumps: self.lab.jumps.clone(),
+            jumps: Arc::new(jumps),
             moments: self.lab.moments.clone(),
         };
-        Rotated { problem, ledger: self.ledger, beats: self.beats, level_hz, end_turns }
+        Rotated { problem, ledger: self.ledger, beats: self.beats, jump_beats, level_hz, end_turns }
     }
 }
 

@@ -104,6 +104,11 @@ pub enum OpenFault {
     IntoEliminated {
         level: String,
     },
+    /// Entries of one jump operator turn apart in the frame, faster than its limit.
+    JumpBeats {
+        turns_hz: f64,
+    },
+    JumpBeatMoves,
     NotSteady {
         reason: String,
     },
@@ -206,6 +211,15 @@ impl OpenFault {
             IntoEliminated { level } => say(format!("a level decays into \"{level}\", which is eliminated."))
                 .why("Population that arrives there would be in no record.")
                 .write("to: outside, or the frame without eliminate"),
+            JumpBeats { turns_hz } => say(format!(
+                "entries of a jump operator turn apart by {} or more in this frame; what they do together is dropped.",
+                short_with_unit(*turns_hz, "Hz")
+            ))
+            .why("They beat faster than drop_terms_faster_than, so each decays by itself.")
+            .write("drop_terms_faster_than: nothing, to keep their beat"),
+            JumpBeatMoves => say("entries of a jump operator turn apart in this frame, by a carrier that is set anew or swept.")
+                .why("Their beat has no frequency of its own then.")
+                .write("frame: {kind: lab}, or a table of frequencies"),
             NotSteady { reason } => say(format!("there is no steady state: {reason}.")),
         }
     }

@@ -4,6 +4,8 @@ mod closed_forms;
 mod collocation;
 mod laws;
 mod open;
+mod open_forms;
+mod open_laws;
 mod reference;
 mod speed;
 mod statistics;

@@ -2,7 +2,7 @@
 
 use super::statistics::{random_problem, Random};
 use super::*;
-use crate::problem::{Channel, Jump};
+use crate::problem::{Channel, Jump, TurningPart};
 
 /// Records density matrices, times spent (over the last time) and the channel.
 #[derive(Debug, Clone, Default)]
@@ -11,7 +11,7 @@ pub struct Densities {
     pub time_in_s: Vec<Vec<f64>>,
     pub channel: Option<Channel>,
     pub scale_s: f64,
-    numbers: Vec<f64>,
+    pub numbers: Vec<f64>,
 }
 
 impl Recorder for Densities {
@@ -84,7 +84,11 @@ fn random_open(random: &mut Random) -> Problem {
     loop {
         let mut case = random_problem(random);
         if case.dim() <= 4 {
-            let jumps = random_jumps(random, case.dim());
+            let mut jumps = random_jumps(random, case.dim());
+            if random.chance(0.2) {
+                let matrix = Matrix::from_fn(case.dim(), case.dim(), |_, _| random.complex() * 0.3);
+                jumps[0].turning.push(TurningPart { matrix, turns_hz: random.between(-6.0, 6.0), phase_turns: random.unit() });
+            }
             if random.chance(0.4) {
                 case.start = random_mixture(random, case.dim());
             }
@@ -117,7 +121,8 @@ fn exact(problem: &Problem, most_rad: f64, timed: bool, kept: &mut Densities) {
     let mut spent = vec![0.0; if timed { n } else { 0 }];
     let mut next = 0;
     for (index, segment) in problem.segments.iter().enumerate() {
-        let turning = problem.terms_of(segment).iter().map(|term| rad_s(term.turns_hz.abs())).fold(0.0, f64::max);
+        let beat = problem.jumps.iter().flat_map(|jump| &jump.turning).map(|part| rad_s(part.turns_hz.abs())).fold(0.0, f64::max);
+        let turning = problem.terms_of(segment).iter().map(|term| rad_s(term.turns_hz.abs())).fold(beat, f64::max);
         let size = (0..=20).map(|i| liouvillian(problem, segment, segment.length_s * i as f64 / 20.0).norm()).fold(0.0, f64::max);
         let mut tau = 0.0;
         loop {
