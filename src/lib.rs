@@ -20,6 +20,7 @@ pub mod config;
 pub mod drive;
 pub mod frame;
 pub mod known;
+pub mod matrices;
 pub mod measure;
 pub mod model;
 pub mod noise;

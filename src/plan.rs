@@ -84,6 +84,19 @@ pub struct Point<'p> {
     pub warnings: Vec<Mistake>,
 }
 
+/// What is known of a point before anything is laid out in time.
+#[derive(Debug, Clone)]
+pub struct Still {
+    /// Registers of the tape.
+    pub values: Vec<f64>,
+    /// The system: its static matrix and its operators.
+    pub built: Arc<Built>,
+    /// Diagonal of the static Hamiltonian, Hz.
+    pub energies_hz: Vec<f64>,
+    /// Matrices of the drives.
+    pub couplings: Vec<Coupling>,
+}
+
 /// A point in a rotating frame.
 #[derive(Debug, Clone)]
 pub struct InFrame {
@@ -124,6 +137,28 @@ impl Plan {
     /// The document it was made from.
     pub fn document(&self) -> &Document {
         &self.document
+    }
+
+    /// The system and the matrices of the drives with the numbers as written, before anything is laid out in time.
+    pub fn still(&self) -> Result<Still, Mistake> {
+        self.still_at(&[])
+    }
+
+    fn still_at(&self, set: &[Option<f64>]) -> Result<Still, Mistake> {
+        let document = &self.document;
+        let mut values = document.tape.evaluate::<f64>(set, &[]);
+        let ready = document.system.registers().iter().all(|register| values[*register as usize].is_finite());
+        if let (false, Some(mistake)) = (ready, not_finite(&document.tape, &values, &document.sources)) {
+            return Err(mistake);
+        }
+        let built = Arc::new(model::build(document, &values)?);
+        document.tape.replay(&document.tape.level_dependents(), set, &built.energies, &mut values);
+        if let Some(mistake) = not_finite(&document.tape, &values, &document.sources) {
+            return Err(mistake);
+        }
+        let (_, energies_hz) = statics(&built);
+        let couplings = couplings(document, &built, &energies_hz, &values)?;
+        Ok(Still { values, built, energies_hz, couplings })
     }
 
     /// The point with the numbers as written.
@@ -170,15 +205,9 @@ impl Plan {
         for (number, value) in numbers.iter().zip(start.unwrap_or_default()) {
             set[*number as usize] = Some(*value);
         }
-        let mut values = document.tape.evaluate::<f64>(&set, &[]);
-        let built = Arc::new(model::build(document, &values)?);
+        let Still { values, built, energies_hz, couplings } = self.still_at(&set)?;
         let following = document.tape.level_dependents();
-        document.tape.replay(&following, &set, &built.energies, &mut values);
-        if let Some(mistake) = not_finite(&document.tape, &values, &document.sources) {
-            return Err(mistake);
-        }
-        let (statics, energies_hz) = statics(&built);
-        let couplings = couplings(document, &built, &energies_hz, &values)?;
+        let (statics, _) = statics(&built);
         let curves: Vec<Arc<dyn Curve>> = document.envelopes.iter().map(|envelope| curve(envelope, &values)).collect::<Result<_, _>>()?;
         let surroundings = Surroundings::new(document, &built, &values, &energies_hz)?;
         let lab = Problem {

@@ -24,7 +24,7 @@ const ROOMS: &[&[&str]] = &[
     &["outcome"],
     &["known"],
     &["noise"],
-    &["compare", "scan", "design"],
+    &["compare", "matrices", "scan", "design"],
     &["report"],
     &["cli"],
 ];

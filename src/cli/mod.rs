@@ -3,6 +3,7 @@
 mod check;
 mod compare;
 mod explain;
+mod matrices;
 mod new;
 mod plot;
 mod run;
@@ -59,6 +60,8 @@ enum Verb {
     Compare(compare::Words),
     /// Compute every point of a grid, store them, and write table and plots
     Scan(scan::Words),
+    /// Write every operator of a system as a matrix, with its levels, lines and strengths
+    Matrices(matrices::Words),
     /// Draw the plots of a result folder again
     Plot(plot::Words),
     /// Check the program on this machine against closed forms
@@ -109,6 +112,7 @@ pub fn main() -> ExitCode {
         Verb::Run(words) => run::run(&words),
         Verb::Compare(words) => compare::run(&words),
         Verb::Scan(words) => scan::scan(&words),
+        Verb::Matrices(words) => matrices::run(&words),
         Verb::Plot(words) => plot::plot(&words),
         Verb::Selftest(words) => selftest::selftest(&words),
     };

@@ -134,12 +134,23 @@ impl Refusal {
 
 /// Reads and judges the config at `path`; `set` puts other values in place of named numbers, as `name`, `value`.
 pub fn read(path: &Path, set: &[(String, String)]) -> Result<Document, Refusal> {
+    read_path(path, set, false)
+}
+
+/// The same for its system and matrices alone: a sequence and a start may be left out.
+pub fn read_system_alone(path: &Path, set: &[(String, String)]) -> Result<Document, Refusal> {
+    read_path(path, set, true)
+}
+
+fn read_path(path: &Path, set: &[(String, String)], system_alone: bool) -> Result<Document, Refusal> {
     let mut sources = Sources::default();
     let file = match tree::read_text(path, &mut sources) {
         Ok(file) => file,
         Err(mistake) => return Err(Refusal { sources, mistakes: vec![mistake] }),
     };
-    read_sources(sources, file, path.parent().unwrap_or(Path::new("")), None, set)
+    let mut reader = Reader::new(sources, path.parent().unwrap_or(Path::new("")).to_path_buf());
+    reader.system_alone = system_alone;
+    read_with(reader, file, set)
 }
 
 /// Reads the config that a result folder keeps; the files it names lie in `inputs/`.
@@ -165,17 +176,21 @@ fn read_sources(
     archive: Option<PathBuf>,
     set: &[(String, String)],
 ) -> Result<Document, Refusal> {
+    let mut reader = Reader::new(sources, folder.to_path_buf());
+    reader.archive = archive;
+    read_with(reader, file, set)
+}
+
+fn read_with(mut reader: Reader, file: u16, set: &[(String, String)]) -> Result<Document, Refusal> {
     let mut mistakes = Vec::new();
-    let root = match tree::parse(&sources, file, &mut mistakes) {
+    let root = match tree::parse(&reader.sources, file, &mut mistakes) {
         Ok(root) => root,
         Err(mistake) => {
             mistakes.push(mistake);
-            return Err(Refusal { sources, mistakes });
+            return Err(Refusal { sources: reader.sources, mistakes });
         }
     };
-    let mut reader = Reader::new(sources, folder.to_path_buf());
     reader.mistakes = mistakes;
-    reader.archive = archive;
     let document = sections(&mut reader, &root, file, set, &[]);
     if let Some(document) = &document {
         // the variants are read too, so that a slip in one is found before anything runs
@@ -333,6 +348,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     let known = Known { drives: (&drive_names, &drives), envelopes: (&envelope_names, &envelopes), blocks: root.get("blocks") };
     let sequence_node = match root.get("sequence") {
         Some(node) => Some(node),
+        None if reader.system_alone => None,
         None => {
             let fault = Fault::MissingKey {
                 key: "sequence".to_string(),
@@ -346,11 +362,13 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     };
     let (steps, used) = match sequence_node {
         Some(node) if readable => sequence::read_sequence(reader, node, &known),
+        None if reader.system_alone => (Some(Vec::new()), sequence::Used::default()),
         _ => (None, sequence::Used::default()),
     };
     let start = match root.get("start") {
         Some(node) if readable => super::state::read_start(reader, node),
         Some(_) => None,
+        None if reader.system_alone => Some(State::Level(0)),
         None => {
             let why = Some("It names the level, or the superposition, at time zero.".to_string());
             let fault =
@@ -366,7 +384,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     let accuracy = super::settings::read_accuracy(reader, root.get("accuracy"));
     let output = super::settings::read_output(reader, root.get("output"));
 
-    if let Some(steps) = &steps {
+    if let (Some(steps), Some(_)) = (&steps, sequence_node) {
         phases_said(reader, steps, &drives);
         unused(reader, root, &used, &operators, &mut used_operators);
     }

@@ -150,6 +150,8 @@ pub struct Reader {
     pub archive: Option<PathBuf>,
     /// Defaults used: path of keys, value.
     pub defaults: Vec<(String, String)>,
+    /// Whether only the system is wanted: a sequence and a start may then be left out.
+    pub system_alone: bool,
     /// Parts of the system with the names of their levels; none where it has no parts.
     pub parts: Vec<(String, Vec<String>)>,
     /// Whether the working basis is the one as built.
@@ -189,6 +191,7 @@ impl Reader {
             folder,
             archive: None,
             defaults: Vec::new(),
+            system_alone: false,
             parts: Vec::new(),
             as_built: true,
             structural: Vec::new(),

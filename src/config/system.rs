@@ -107,6 +107,14 @@ impl System {
         }
     }
 
+    /// The kind of a part; of no part the kind of the whole.
+    pub fn kind_of(&self, part: &str) -> &'static str {
+        match &self.physics {
+            Physics::Parts(parts) => parts.parts.iter().find(|one| one.name == part).map_or(self.kind, |one| one.system.kind),
+            _ => self.kind,
+        }
+    }
+
     /// Where a field of its own stands.
     fn own_field(&self) -> Option<Place> {
         match &self.physics {

@@ -145,6 +145,11 @@ impl Built {
         self.operators.iter().find(|block| block.name == name).map_or("1", |block| block.unit)
     }
 
+    /// Largest error of an entry of the operator of this name, in its unit.
+    pub fn operator_error(&self, name: &str) -> f64 {
+        self.operators.iter().find(|block| block.name == name).map_or(0.0, |block| block.error)
+    }
+
     /// lower + raise of a part, in the working basis.
     pub fn quanta(&self, part: &str) -> Matrix {
         self.whole(self.acts(part).and_then(|acting| acting.quanta.as_ref()))

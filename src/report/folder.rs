@@ -167,7 +167,8 @@ impl Staging {
         let old: Vec<PathBuf> = fs::read_dir(&self.folder)?.flatten().map(|entry| entry.path()).collect();
         let ours = |path: &Path| {
             let name = path.file_name().unwrap_or_default().to_string_lossy();
-            ["result.json", "traces.csv", "scan.csv", "config.yaml"].contains(&name.as_ref())
+            ["result.json", "traces.csv", "scan.csv", "config.yaml", "levels.csv", "transitions.csv"].contains(&name.as_ref())
+                || name.starts_with("matrix-")
                 || (name.starts_with("traces-") && name.ends_with(".csv"))
                 || [".png", ".svg", ".npy"].iter().any(|end| name.ends_with(end))
         };

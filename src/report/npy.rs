@@ -4,8 +4,17 @@ use std::io::{self, Write};
 
 /// Writes the head of an array of doubles, little end first, last index fastest; the numbers follow.
 pub fn head(to: &mut impl Write, shape: &[u64]) -> io::Result<()> {
+    head_of("<f8", to, shape)
+}
+
+/// The same of an array of complex doubles: each is its real part, then its imaginary one.
+pub fn head_complex(to: &mut impl Write, shape: &[u64]) -> io::Result<()> {
+    head_of("<c16", to, shape)
+}
+
+fn head_of(kind: &str, to: &mut impl Write, shape: &[u64]) -> io::Result<()> {
     let sizes: String = shape.iter().map(|size| format!("{size}, ")).collect();
-    let mut text = format!("{{'descr': '<f8', 'fortran_order': False, 'shape': ({}), }}", sizes.trim_end());
+    let mut text = format!("{{'descr': '{kind}', 'fortran_order': False, 'shape': ({}), }}", sizes.trim_end());
     // magic, version, length and text fill a multiple of 64 bytes
     let short = 64 - (10 + text.len() + 1) % 64;
     text.extend(std::iter::repeat_n(' ', short % 64));

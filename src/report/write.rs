@@ -8,9 +8,10 @@ use serde_json::Value;
 
 use super::figures::{self, Named};
 use super::folder::Staging;
-use super::{compare_json, result_json, traces_csv};
+use super::{compare_json, matrices_csv, matrices_json, result_json, traces_csv};
 use crate::compare::Comparison;
 use crate::config::document::Document;
+use crate::matrices::Matrices;
 use crate::outcome::Outcome;
 use crate::plan::Point;
 
@@ -34,6 +35,17 @@ pub fn comparison(staging: Staging, document: &Document, comparison: &Comparison
         comparison.computed.iter().map(|computed| (format!("traces-{}.csv", file_word(&computed.name)), &computed.outcome)).collect();
     let json = compare_json::comparison(document, comparison, seconds);
     whole(staging, document, &tables, figures::of_comparison(document, comparison), &json)
+}
+
+/// Writes the files of `nutate matrices`.
+pub fn matrices(staging: Staging, document: &Document, found: &Matrices) -> io::Result<Written> {
+    let side = staging.side().to_path_buf();
+    staging.archive(document)?;
+    let mut names = matrices_csv::write(&side, document, found)?;
+    names.push("result.json".to_string());
+    write_json(&side, &matrices_json::result(document, found))?;
+    let folder = staging.finish()?;
+    Ok(Written { place: format!("{} in {}", names.join(", "), folder.display()), not_drawn: Vec::new() })
 }
 
 /// A name as part of a file name.
