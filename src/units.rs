@@ -79,8 +79,6 @@ pub const BOHR_HZ_PER_TESLA: f64 = BOHR_MAGNETON / PLANCK;
 pub const NUCLEAR_HZ_PER_TESLA: f64 = NUCLEAR_MAGNETON / PLANCK;
 /// Energy over h of two moments, mu0 h/(4 pi): times Hz/T, Hz/T and /m^3.
 pub const DIPOLAR_HZ: f64 = MAGNETIC * PLANCK / (2.0 * RAD_PER_TURN);
-/// Reduced Planck constant, J s.
-pub const HBAR_J_S: f64 = PLANCK / RAD_PER_TURN;
 /// Vacuum wavelength in m of a gap in Hz, and back: c over it.
 pub const WAVELENGTH_M_HZ: f64 = LIGHT;
 /// Radians per turn in the ratio of a linewidth (full width in Hz) and a rate: rate = 2 pi linewidth.

@@ -62,7 +62,7 @@ struct Eigen {
 }
 
 /// Groups of states that the matrix ties together, each ascending.
-fn blocks(matrix: &Matrix) -> Vec<Vec<usize>> {
+pub fn blocks(matrix: &Matrix) -> Vec<Vec<usize>> {
     let size = matrix.nrows();
     let mut group: Vec<usize> = (0..size).collect();
     fn root(group: &mut [usize], mut k: usize) -> usize {

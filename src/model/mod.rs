@@ -1,7 +1,7 @@
 //! Matrices in a basis: the checked config's entries become dense Hermitian matrices. Knows nothing of time.
 
 pub mod angular_momentum;
-mod basis;
+pub mod basis;
 pub mod built;
 pub mod commutators;
 pub mod differential;
