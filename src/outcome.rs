@@ -11,10 +11,12 @@ use crate::config::document::Document;
 use crate::config::messages::Mistake;
 use crate::config::record::Item;
 use crate::config::settings::MethodWord;
-use crate::measure::{observables, Column, GateFigures, GateJudge, Last, QuasiEnergy, QuasiRecorder, Recorded, TraceRecorder};
+use crate::measure::{
+    counts, observables, Column, Count, GateFigures, GateJudge, Last, QuasiEnergy, QuasiRecorder, Recorded, TraceRecorder,
+};
 use crate::plan::Point;
 use crate::problem::{Channel, Matrix, Problem, Start};
-use crate::propagate::{figure, solve, Asked, CrossCheck, Demand, Method, Solved};
+use crate::propagate::{figure, solve, Asked, CrossCheck, Demand, Method, Solved, Steady};
 
 /// A final number with its error.
 #[derive(Debug, Clone, PartialEq)]
@@ -84,6 +86,12 @@ pub struct Outcome {
     pub finals: Vec<Final>,
     /// Figures of the gate.
     pub gate: Option<GateFigures>,
+    /// The gate error split by cause; empty where that is not asked for.
+    pub budget: Vec<budget::Share>,
+    /// The steady state of the last stretch, if it is recorded.
+    pub steady: Option<Steady>,
+    /// Counts behind a read-out.
+    pub counts: Vec<Count>,
     /// What the whole sequence does to the levels of the gate, wherever one is judged.
     pub channel: Option<Channel>,
     /// The propagator, where it is recorded, and its error figure.
@@ -142,6 +150,15 @@ impl Outcome {
         self.average.as_ref().map_or(&[], |average| &average.warnings)
     }
 
+    /// The same with its error budget, whose errors count like those of any recorded number.
+    pub fn with_budget(mut self, document: &Document, shares: Vec<budget::Share>) -> Outcome {
+        let largest = shares.iter().map(|share| share.error).fold(0.0, f64::max);
+        self.error_figure = self.error_figure.max(largest);
+        self.reached &= largest <= document.accuracy.last;
+        self.budget = shares;
+        self
+    }
+
     /// The largest standard error of a recorded number, over its scale; none where nothing was drawn.
     pub fn sampling_error(&self) -> Option<f64> {
         self.average.as_ref()?.sampling_error
@@ -177,6 +194,15 @@ pub fn compute(document: &Document, point: &Point) -> Outcome {
     let clock = Clock::now();
     let solved = measure(document, point, point.problem(), true);
     conclude(document, point, Measured { solved, average: None }, clock)
+}
+
+/// The counts behind the read-out, if they are recorded.
+fn counts_of(document: &Document, point: &Point, end: &Start) -> Vec<Count> {
+    let shots = document.record.items.iter().find_map(|item| if let Item::Shots(shots) = item { Some(shots) } else { None });
+    let Some(shots) = shots else { return Vec::new() };
+    let reads = shots.probabilities(&document.system.names, &point.values).unwrap_or_default();
+    let named: Vec<(String, Vec<f64>)> = shots.reads.iter().map(|(name, _)| name.clone()).zip(reads).collect();
+    counts(point.values[shots.number.register as usize], &named, end.state())
 }
 
 /// Figures that are not linear in the channel (the best free turn, coherent and incoherent shares) are those of the averaged channel,
@@ -257,22 +283,42 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
         CrossCheck::Done { method, difference, .. } => Crossing { method: method.clone(), difference: Ok(*difference) },
         CrossCheck::Skipped { method, reason } => Crossing { method: method.clone(), difference: Err(reason.clone()) },
     });
+    let end_state = recorded.end_state.clone().unwrap_or_else(|| problem.start.clone());
+    let steady = document
+        .record
+        .items
+        .iter()
+        .any(|item| matches!(item, Item::Steady(_)))
+        .then(|| crate::propagate::steady(problem, Some(&end_state.density())).ok())
+        .flatten();
+    let mut error_figure = quasi.as_ref().map_or(solved.error_figure, |(_, quasi)| quasi.error_figure.max(solved.error_figure));
+    for (level, name) in document.system.names.iter().enumerate().filter(|_| steady.is_some()) {
+        let (value, error) = steady.as_ref().map_or((f64::NAN, f64::NAN), |found| (found.state[(level, level)].re, found.error));
+        let name = format!("steady_population_{name}");
+        finals.push(Final { name, unit: "1", value, finer: value, error, sampling_error: None });
+        error_figure = error_figure.max(error);
+    }
     Outcome {
+        counts: counts_of(document, point, &end_state),
+        budget: Vec::new(),
         times_s: problem.moments.iter().map(|moment| moment.time_s).collect(),
         rows,
         finals,
         channel: recorded.channel.clone(),
         gate,
         propagator,
-        end_state: recorded.end_state.clone().unwrap_or_else(|| problem.start.clone()),
+        end_state,
         method: solved.method,
         reason: solved.reason.clone(),
         steps: solved.steps,
         resolutions: solved.resolutions.clone().map(|resolution| resolution.words),
-        error_figure: quasi.as_ref().map_or(solved.error_figure, |(_, quasi)| quasi.error_figure.max(solved.error_figure)),
+        error_figure,
         floor: solved.floor,
-        reached: solved.reached && quasi.as_ref().is_none_or(|(_, quasi)| quasi.reached),
+        reached: solved.reached
+            && steady.as_ref().is_none_or(|found| found.error <= document.accuracy.last)
+            && quasi.as_ref().is_none_or(|(_, quasi)| quasi.reached),
         quasi_energies: quasi.map(|(period_s, quasi)| (period_s, quasi.recorded.found.unwrap_or_default(), quasi.error_figure)),
+        steady,
         cross_check,
         average,
         row_errors,

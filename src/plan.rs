@@ -8,6 +8,7 @@ use std::collections::hash_map::Entry as MapEntry;
 use std::collections::HashMap;
 use std::sync::Arc;
 
+mod open;
 pub mod shaken;
 pub mod wander;
 
@@ -17,7 +18,7 @@ use crate::config::document::{not_finite, Document};
 use crate::config::drives::{Drive, DriveMatrix, Form};
 use crate::config::envelopes::{Samples, SizeWord};
 use crate::config::messages::{short_with_unit, Fault, Mistake, OpenFault};
-use crate::config::record::Item;
+use crate::config::record::{Cause, Item};
 use crate::config::settings::{Follows, Frame, Rotating};
 use crate::config::state::State;
 use crate::config::tape::{Entry, Formula, Register, Wide};
@@ -38,7 +39,7 @@ use crate::measure::breaks_period;
 use crate::model;
 use crate::model::built::Built;
 use crate::model::surroundings::Surroundings;
-use crate::problem::{Matrix, Problem, Start};
+use crate::problem::{Matrix, Problem};
 use crate::units::{rad_s, RAD_PER_TURN};
 
 /// A config laid out once, ready for any number of points.
@@ -64,6 +65,8 @@ pub struct Point<'p> {
     put_back: Vec<TermKey>,
     /// Whether only the end of the sequence is recorded.
     end_only: bool,
+    /// Causes that are switched off.
+    off: Vec<Cause>,
     /// Diagonal of the static Hamiltonian, Hz.
     pub energies_hz: Vec<f64>,
     /// Matrices of the drives.
@@ -211,7 +214,7 @@ impl Plan {
         let curves: Vec<Arc<dyn Curve>> = document.envelopes.iter().map(|envelope| curve(envelope, &values)).collect::<Result<_, _>>()?;
         let surroundings = Surroundings::new(document, &built, &values, &energies_hz)?;
         let lab = Problem {
-            start: start_state(document, &values, &statics, &surroundings)?,
+            start: open::start_state(document, &values, &statics, &surroundings)?,
             statics: Arc::new(statics),
             matrices: Arc::new(couplings.iter().map(|coupling| coupling.turning.clone()).collect()),
             segments: Vec::new(),
@@ -228,6 +231,7 @@ impl Plan {
             shift: Vec::new(),
             put_back: put_back.to_vec(),
             end_only: false,
+            off: Vec::new(),
             energies_hz,
             couplings,
             curves,
@@ -421,10 +425,10 @@ impl<'p> Point<'p> {
         }
         if touched.surroundings {
             self.surroundings = Surroundings::new(document, &self.built, &self.values, &self.energies_hz)?;
-            self.lab.jumps = Arc::new(self.surroundings.jumps.clone());
+            self.lab.jumps = open::jumps(&self.surroundings, &self.off);
         }
         if touched.start {
-            self.lab.start = start_state(document, &self.values, &self.lab.statics, &self.surroundings)?;
+            self.lab.start = open::start_state(document, &self.values, &self.lab.statics, &self.surroundings)?;
         }
         self.timeline = timeline(document, &self.values, &self.couplings, &self.curves)?;
         self.segment(document)
@@ -477,7 +481,8 @@ impl<'p> Point<'p> {
             Frame::Lab => None,
             Frame::Rotating(frame) => Some(self.rotate(document, frame, &parts)?),
         };
-        self.judge_periods(document)
+        self.judge_periods(document)?;
+        self.judge_surroundings(document)
     }
 
     /// Quasi-energies need a drive that repeats, in the frame of the run.
@@ -716,18 +721,4 @@ fn timeline<'p>(
     let reference: Vec<f64> = couplings.iter().map(|coupling| coupling.reference_turns).collect();
     let lengths: Vec<f64> = curves.iter().map(|curve| curve.length_s()).collect();
     lay_out(document, values, &reference, &lengths)
-}
-
-/// The state at time zero; `statics` in rad/s.
-fn start_state(document: &Document, values: &[f64], statics: &Matrix, surroundings: &Surroundings) -> Result<Start, Mistake> {
-    let hz = statics.map(|entry| entry / rad_s(1.0));
-    match model::start(&document.start, values, &hz)? {
-        Some(start) => Ok(start),
-        None => steady_start(document, statics, surroundings),
-    }
-}
-
-fn steady_start(document: &Document, _statics: &Matrix, _surroundings: &Surroundings) -> Result<Start, Mistake> {
-    let State::Steady(place) = document.start else { unreachable!() };
-    Err(Mistake::error(place, Fault::NotNow { key: "steady".to_string(), section: "start".to_string() }))
 }

@@ -22,6 +22,7 @@ pub fn judge(document: &Document) -> Vec<Mistake> {
         let without = match item {
             Item::Propagator => Some(("propagator", "gate: {within: [..], target: {..}, free_z: false}")),
             Item::QuasiEnergies(_) => Some(("quasi-energy", "record: without quasi_energies, or the file without noise")),
+            Item::Steady(_) => Some(("one steady state", "record: without steady, or the file without noise")),
             _ => None,
         };
         if let Some((what, instead)) = without {

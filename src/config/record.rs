@@ -87,8 +87,8 @@ pub enum Item {
     QuasiEnergies(Quantity),
     /// What left the system.
     Lost,
-    /// The steady state of the last stretch.
-    Steady,
+    /// The steady state of the last stretch; where it was asked for.
+    Steady(Place),
     /// Counts behind a read-out.
     Shots(Box<Shots>),
     /// What each cause has in the gate error.
@@ -225,7 +225,7 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
             "adiabatic_populations" => switched(reader, value, "adiabatic_populations", Item::AdiabaticPopulations, &mut items),
             "propagator" => switched(reader, value, "propagator", Item::Propagator, &mut items),
             "lost" => switched(reader, value, "lost", Item::Lost, &mut items),
-            "steady" => switched(reader, value, "steady", Item::Steady, &mut items),
+            "steady" => switched(reader, value, "steady", Item::Steady(entry.place), &mut items),
             "shots" => read_shots(reader, value).map(|shots| Item::Shots(Box::new(shots))),
             "error_budget" => read_budget(reader, value).map(Item::ErrorBudget),
             "fidelity" => read_fidelity(reader, value).map(Item::Fidelity),

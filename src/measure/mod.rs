@@ -138,7 +138,7 @@ pub fn observables<'a>(document: &Document, built: &Built, values: &[f64], energ
                 None => continue,
             },
             // from runs of their own, or from the populations at the end
-            Item::QuasiEnergies(_) | Item::Steady | Item::Shots(_) | Item::ErrorBudget(_) => continue,
+            Item::QuasiEnergies(_) | Item::Steady(_) | Item::Shots(_) | Item::ErrorBudget(_) => continue,
             Item::Propagator => {
                 found.demand.propagator = true;
                 found.propagator = true;

@@ -56,7 +56,14 @@ impl Default for Draws {
 
 /// Computes a point, averaged over the noise of its document if it has any.
 pub fn compute<'p>(document: &'p Document, point: &Point<'p>, draws: &Draws) -> Result<Outcome, Mistake> {
-    if document.noise.is_empty() {
+    let outcome = plain(document, point, draws, true)?;
+    let shares = super::budget::shares(document, point, draws, &outcome)?;
+    Ok(outcome.with_budget(document, shares))
+}
+
+/// The same without an error budget; `noise` is whether noise acts.
+pub(super) fn plain<'p>(document: &'p Document, point: &Point<'p>, draws: &Draws, noise: bool) -> Result<Outcome, Mistake> {
+    if document.noise.is_empty() || !noise {
         return Ok(outcome::compute(document, point));
     }
     let clock = Clock::now();

@@ -5,10 +5,12 @@
 //! amplitudes.
 //!
 //! `source`: what shares a draw, and how far it moves each number; `gauss`: rules of nodes, `grid`: several at once; `process`: numbers that
-//! wander within a shot, `path`: their shots; `average`: the runs and their sums;
+//! wander within a shot, `path`: their shots; `average`: the runs and their sums; `budget`: the
+//! runs of an error budget;
 //! `statistics`: sums in an order that does not depend on the number of threads.
 
 mod average;
+mod budget;
 mod gauss;
 mod grid;
 mod path;

@@ -36,13 +36,29 @@ impl Acting {
     }
 }
 
-/// Gate error and leakage of one run, at the coarser and the finer resolution.
+/// Gate error and leakage of one run.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Judged {
     /// 1 - F.
-    pub error: [f64; 2],
+    pub error: Figure,
     /// 1 - Tr(P E(P))/d.
-    pub leakage: [f64; 2],
+    pub leakage: Figure,
+}
+
+/// A number and its error figure.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Figure {
+    /// The number.
+    pub value: f64,
+    /// Its error figure.
+    pub error: f64,
+}
+
+impl Figure {
+    /// Their difference; errors add.
+    fn minus(self, other: Figure) -> Figure {
+        Figure { value: self.value - other.value, error: self.error + other.error }
+    }
 }
 
 /// One share of the gate error.
@@ -50,31 +66,30 @@ pub struct Judged {
 pub struct Share {
     /// `decay`, `dephasing`, `noise`, `leakage`, `pulse` or `interplay`.
     pub name: &'static str,
-    /// The share, of the coarser resolution.
+    /// The share.
     pub value: f64,
-    /// The same of the finer one.
-    pub finer: f64,
+    /// Its error figure: those of the runs that it is made of, added up.
+    pub error: f64,
 }
 
 /// The shares of the causes asked for, the pulse and their interplay, in that order; `run` judges the gate with some causes acting,
 /// `whole` is the gate error with all of them.
-pub fn budget(asked: &[Cause], whole: [f64; 2], mut run: impl FnMut(Acting) -> Judged) -> Vec<Share> {
-    let bare = run(Acting::NONE);
-    let difference = |a: [f64; 2], b: [f64; 2]| [a[0] - b[0], a[1] - b[1]];
+pub fn budget<E>(asked: &[Cause], whole: Figure, mut run: impl FnMut(Acting) -> Result<Judged, E>) -> Result<Vec<Share>, E> {
+    let bare = run(Acting::NONE)?;
     let mut shares = Vec::new();
-    let mut push = |name, [value, finer]: [f64; 2]| shares.push(Share { name, value, finer });
     for cause in asked {
-        let share = match cause {
+        let figure = match cause {
             Cause::Leakage => bare.leakage,
-            cause => difference(run(Acting::alone(*cause)).error, bare.error),
+            cause => run(Acting::alone(*cause))?.error.minus(bare.error),
         };
-        push(cause.word(), share);
+        shares.push(Share { name: cause.word(), value: figure.value, error: figure.error });
     }
-    push("pulse", difference(bare.error, bare.leakage));
-    let sum = shares.iter().fold([0.0, 0.0], |sum, share| [sum[0] + share.value, sum[1] + share.finer]);
-    let [value, finer] = difference(whole, sum);
-    shares.push(Share { name: "interplay", value, finer });
-    shares
+    let pulse = bare.error.minus(bare.leakage);
+    shares.push(Share { name: "pulse", value: pulse.value, error: pulse.error });
+    let sum: f64 = shares.iter().map(|share| share.value).sum();
+    let error: f64 = shares.iter().map(|share| share.error).sum();
+    shares.push(Share { name: "interplay", value: whole.value - sum, error: whole.error + error });
+    Ok(shares)
 }
 
 #[cfg(test)]
@@ -84,17 +99,19 @@ mod tests {
     /// Shares of errors that simply add up leave nothing for interplay; whatever they are, all add up to the whole.
     #[test]
     fn prop_shares_add_up_to_the_whole() {
-        let run = |acting: Acting| {
+        let figure = |value: f64| Figure { value, error: 1e-12 };
+        let run = |acting: Acting| -> Result<Judged, ()> {
             let error = 0.01 + if acting.decay { 0.003 } else { 0.0 } + if acting.noise { 0.0005 } else { 0.0 };
-            Judged { error: [error, error + 1e-9], leakage: [0.004, 0.004 + 2e-9] }
+            Ok(Judged { error: figure(error), leakage: figure(0.004) })
         };
-        let shares = budget(&[Cause::Decay, Cause::Noise, Cause::Leakage], [0.0136, 0.0136], run);
+        let shares = budget(&[Cause::Decay, Cause::Noise, Cause::Leakage], figure(0.0136), run).unwrap_or_default();
         let named: Vec<&str> = shares.iter().map(|share| share.name).collect();
         assert_eq!(named, ["decay", "noise", "leakage", "pulse", "interplay"]);
         let value = |name: &str| shares.iter().find(|share| share.name == name).map_or(f64::NAN, |share| share.value);
         assert!((value("decay") - 0.003).abs() < 1e-15 && (value("pulse") - 0.006).abs() < 1e-15);
         assert!((value("interplay") - 1e-4).abs() < 1e-15);
-        let sum: f64 = shares.iter().map(|share| share.finer).sum();
+        let sum: f64 = shares.iter().map(|share| share.value).sum();
         assert!((sum - 0.0136).abs() < 1e-15, "{sum}");
+        assert!((shares[0].error - 2e-12).abs() < 1e-24);
     }
 }

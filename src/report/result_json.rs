@@ -61,6 +61,9 @@ pub fn result(document: &Document, point: &Point, outcome: &Outcome) -> Value {
     if let Some((period_s, _, error)) = &outcome.quasi_energies {
         errors.insert("quasi_energies_Hz".to_string(), number(error / period_s));
     }
+    for share in &outcome.budget {
+        errors.insert(format!("error_budget_{}", share.name), number(share.error));
+    }
     let mut result = Map::new();
     let mut put = |key: &str, value: Value| result.insert(key.to_string(), value);
     put("program", program());
@@ -88,6 +91,9 @@ pub fn result(document: &Document, point: &Point, outcome: &Outcome) -> Value {
         put("cross_check", found);
     }
     put("final", finals(document, outcome));
+    if !outcome.budget.is_empty() {
+        put("error_budget", outcome.budget.iter().map(|share| (share.name.to_string(), number(share.value))).collect::<Map<_, _>>().into());
+    }
     put("end_state", end_state(document, &outcome.end_state));
     put("ledger", super::frame_json::ledger(document, point));
     put("ledger_by_pair", super::frame_json::by_pair(document, point));
@@ -130,6 +136,17 @@ fn finals(document: &Document, outcome: &Outcome) -> Value {
         let rows: Vec<Value> = propagator.row_iter().map(|row| row.iter().map(|z| json!([number(z.re), number(z.im)])).collect()).collect();
         found.insert("propagator".to_string(), Value::Array(rows));
     }
+    if let Some(steady) = &outcome.steady {
+        let levels = document.system.names.iter().enumerate();
+        let populations: Map<String, Value> = levels.map(|(k, name)| (name.clone(), number(steady.state[(k, k)].re))).collect();
+        found.insert("steady".to_string(), json!({"populations": populations, "unique": steady.unique}));
+    }
+    if !outcome.counts.is_empty() {
+        let count = |count: &crate::measure::Count| {
+            (count.read.clone(), json!({"expected": number(count.expected), "spread": number(count.spread)}))
+        };
+        found.insert("shots".to_string(), Value::Object(outcome.counts.iter().map(count).collect()));
+    }
     if let Some(gate) = &outcome.gate {
         found.insert("gate_error".to_string(), number(gate.error));
         found.insert("gate_leakage".to_string(), number(gate.leakage));
@@ -141,6 +158,10 @@ fn finals(document: &Document, outcome: &Outcome) -> Value {
             several => {
                 found.insert("gate_free_z".to_string(), several.iter().map(|turns| number(*turns)).collect());
             }
+        }
+        if let Some(incoherent) = gate.incoherent {
+            found.insert("gate_coherent".to_string(), number(gate.error - incoherent));
+            found.insert("gate_incoherent".to_string(), number(incoherent));
         }
         if let Some((turn, axis)) = gate.residual {
             found.insert("gate_residual".to_string(), json!({"turn": number(turn), "axis": axis.map(number)}));

@@ -96,6 +96,27 @@ fn component(value: f64) -> String {
     format!("{:.3}", (value * 1e3).round() / 1e3 + 0.0)
 }
 
+/// The error budget of a gate, the steady state, and the counts behind a read-out.
+fn surroundings(outcome: &Outcome) -> String {
+    let mut text = String::new();
+    if !outcome.budget.is_empty() {
+        text.push_str("  error budget of the gate (they add up to it):\n");
+        for share in &outcome.budget {
+            text.push_str(&format!("    {:<9}  {}\n", share.name, with_error(share.value, share.error)));
+        }
+    }
+    if let Some(steady) = &outcome.steady {
+        let kind = if steady.unique { "the only one there is" } else { "one of several: the one that the end of the sequence runs into" };
+        text.push_str(&format!("  steady state of the last stretch: {kind}\n"));
+    }
+    if !outcome.counts.is_empty() {
+        let counts: Vec<String> =
+            outcome.counts.iter().take(SHOWN).map(|count| format!("{} {:.1} +- {:.1}", count.read, count.expected, count.spread)).collect();
+        text.push_str(&format!("  counts expected, with the spread of chance: {}\n", counts.join(", ")));
+    }
+    text
+}
+
 /// The screen.
 pub fn summary(document: &Document, point: &Point, outcome: &Outcome, place: Option<&str>) -> String {
     let mut text = format!("{}\n", heading(document));
@@ -130,6 +151,7 @@ pub fn summary(document: &Document, point: &Point, outcome: &Outcome, place: Opt
             text.push_str(&format!("  residual turn: {} deg about ({x}, {y}, {z})\n", short(turn * 360.0)));
         }
     }
+    text.push_str(&surroundings(outcome));
     text.push_str(&format!("method {}: {}\n", outcome.method.word(), outcome.reason));
     text.push_str(&format!(
         "error figure {:.1e} ({} asked), measured by two runs: {}; {}\n",

@@ -111,6 +111,7 @@ pub enum OpenFault {
     JumpBeatMoves,
     NotSteady {
         reason: String,
+        write: String,
     },
 }
 
@@ -220,7 +221,7 @@ impl OpenFault {
             JumpBeatMoves => say("entries of a jump operator turn apart in this frame, by a carrier that is set anew or swept.")
                 .why("Their beat has no frequency of its own then.")
                 .write("frame: {kind: lab}, or a table of frequencies"),
-            NotSteady { reason } => say(format!("there is no steady state: {reason}.")),
+            NotSteady { reason, write } => say(format!("there is no steady state to give: {reason}.")).write(write.clone()),
         }
     }
 }

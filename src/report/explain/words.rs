@@ -118,7 +118,7 @@ pub fn records(facts: &Facts) -> Vec<String> {
         Item::Fidelity(to) => format!("fidelity, the squared overlap with {}", state(facts, to)),
         Item::QuasiEnergies(period) => format!("quasi-energies over {}", short(facts.point.values[period.register as usize], "s")),
         Item::Lost => "population that left the system".to_string(),
-        Item::Steady => "steady state of the last stretch".to_string(),
+        Item::Steady(_) => "steady state of the last stretch".to_string(),
         Item::Shots(shots) => {
             let number = facts.point.values[shots.number.register as usize];
             let reads: Vec<&str> = shots.reads.iter().map(|(name, _)| name.as_str()).collect();
