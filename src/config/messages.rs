@@ -888,9 +888,13 @@ impl Fault {
             LorentzianSize { key } => say(format!("a Lorentzian is not given by {key}."))
                 .why("It has no standard deviation; its size is its full width at half maximum.")
                 .write("fwhm: 200 kHz"),
-            T2StarOf { unit } => say(format!("t2_star is the decay time of a coherence, but the number is in {unit}."))
-                .why("It stands for sigma = sqrt(2)/(2 pi T2*) of a number in Hz that moves a gap one to one.")
-                .write("sigma: and the standard deviation in the unit of the number"),
+            T2StarOf { unit } => say(if unit == "1" {
+                "t2_star is the decay time of a coherence, but the number has no unit.".to_string()
+            } else {
+                format!("t2_star is the decay time of a coherence, but the number is in {unit}.")
+            })
+            .why("It stands for sigma = sqrt(2)/(2 pi T2*) of a number in Hz that moves a gap one to one.")
+            .write("sigma: and the standard deviation in the unit of the number"),
             HistogramLength { edges, counts } => {
                 say(format!("a histogram of {edges} edges has {} bins, but {counts} counts stand here.", edges.saturating_sub(1)))
                     .why("There is one more edge than bins.")

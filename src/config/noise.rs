@@ -237,7 +237,8 @@ fn read_entry(reader: &mut Reader, node: &Node) -> Option<NoiseEntry> {
         reader.error(rule_place, Fault::GaussCorrelated { name: moves[0].name.clone() });
         return None;
     }
-    Some(NoiseEntry { moves, dim, spread, memory, rule, together, place: node.place, rule_place })
+    let place = node.get("moves").map_or(node.place, |moves| moves.place);
+    Some(NoiseEntry { moves, dim, spread, memory, rule, together, place, rule_place })
 }
 
 /// `moves:`, the name of a number or a list of names of one dimension.

@@ -34,6 +34,12 @@ pub const STARTERS: &[Starter] = &[
         beside: &[],
     },
     Starter {
+        kind: "drift",
+        about: "a line that drifts from shot to shot and wanders within each: what an echo remembers, averaged over random draws",
+        text: include_str!("../../configs/drift.yaml"),
+        beside: &[],
+    },
+    Starter {
         kind: "crossing",
         about: "a typed matrix, its gap swept through zero by a formula: branches followed and jumped",
         text: include_str!("../../configs/crossing.yaml"),

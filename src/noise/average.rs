@@ -13,11 +13,11 @@ use std::time::Instant as Clock;
 use super::grid::Grid;
 use super::path::{Paths, Worker};
 use super::source::{sources, Source, Time};
-use super::statistics::{add, Sample};
+use super::statistics::{add, Groups, Sample};
 use crate::config::document::Document;
 use crate::config::messages::{Fault, Mistake};
 use crate::config::noise::Rule;
-use crate::measure::Recorded;
+use crate::measure::{observables, Observables, Recorded, Whole};
 use crate::outcome::{self, Average, Measured, Outcome};
 use crate::plan::shaken::Shaken;
 use crate::plan::Point;
@@ -217,8 +217,8 @@ impl<'p> Job<'p> {
         Mistake::error(place, Fault::TooManyRuns { runs, limit: if draws { MOST_DRAWS } else { MOST_RUNS }, draws })
     }
 
-    /// What half as many nodes more make of the numbers: the error of the rule, and how many nodes were taken; none without a rule.
-    fn refined(&self, grid: &Grid, count: u64, rough: &[f64]) -> Result<Option<(Vec<f64>, Grid)>, Mistake> {
+    /// What half as many nodes more make of the averages; none without a rule.
+    fn refined(&self, grid: &Grid, count: u64, rough: &[f64]) -> Result<Option<Refined>, Mistake> {
         if !self.gridded.iter().any(|k| matches!(self.sources[*k].rule, Rule::Gauss { .. })) {
             return Ok(None);
         }
@@ -228,17 +228,8 @@ impl<'p> Job<'p> {
             return Err(self.too_many(runs + grid.len() as f64, false));
         }
         let total = self.pass(&finer, 0..count.min(BLOCK))?;
-        let fine = if count > 0 { &total.first } else { &total.sum };
-        let error = |(a, b): (&f64, &f64)| {
-            let error = figure(*a, *b, 0.0);
-            // what is rounding of the sums is no error of the rule
-            if error > 2.0 * total.notes.floor {
-                error
-            } else {
-                0.0
-            }
-        };
-        Ok(Some((rough.iter().zip(fine).map(error).collect(), finer)))
+        let fine = if count > 0 { total.first } else { total.sum };
+        Ok(Some(Refined { rough: rough.to_vec(), fine, grid: finer }))
     }
 
     /// Runs the draws of a range (none: the grid alone) and sums them.
@@ -304,6 +295,7 @@ impl<'p> Job<'p> {
                 add(&mut check, &ran.check, weight);
             }
             total.sample.take(&coarse);
+            total.groups.take(&coarse[total.notes.before_channel(&coarse)..]);
             total.fine.take(&fine);
             total.check.take(&check);
             if self.paths.is_some() {
@@ -351,7 +343,7 @@ impl<'p> Job<'p> {
             Some(CrossCheck::Done { recorded, .. }) => recorded.numbers.clone(),
             _ => Vec::new(),
         };
-        Ok(Ran { coarse: flat(&solved.recorded), fine: solved.finer.numbers, check })
+        Ok(Ran { coarse: flat(&solved.recorded), fine: flat(&solved.finer), check })
     }
 
     /// The paths of a draw: for each wandering cause its mean in every cell, of halves and of wholes.
@@ -367,37 +359,46 @@ impl<'p> Job<'p> {
         found
     }
 
-    fn conclude(&mut self, grid: &Grid, count: u64, until: bool, total: Total, refined: Option<(Vec<f64>, Grid)>) -> Measured {
+    fn conclude(&self, grid: &Grid, count: u64, until: bool, total: Total, refined: Option<Refined>) -> Measured {
         let notes = total.notes;
         let drawn = count > 0;
         let (coarse, fine, check) =
             if drawn { (&total.sample.mean, &total.fine.mean, &total.check.mean) } else { (&total.sum, &total.sum_fine, &total.sum_check) };
-        let recorded = restored(coarse, &notes);
-        let finer = Recorded { numbers: fine.clone(), in_rows: notes.in_rows, ..Recorded::default() };
+        let judge = Judge::new(self.document, self.calm.point());
+        let (recorded, finer) = (judge.judged(coarse, &notes), judge.judged(fine, &notes));
         let numbers = recorded.numbers.len();
-        let mut besides: Vec<f64> = refined.as_ref().map_or_else(Vec::new, |(errors, _)| errors[..numbers].to_vec());
-        let of_rule = besides.clone();
+        let of_rule = refined.as_ref().map_or_else(Vec::new, |refined| {
+            let (rough, finer) = (judge.judged(&refined.rough, &notes), judge.judged(&refined.fine, &notes));
+            // what is rounding of the sums is no error of the rule
+            let error = |(a, b): (&f64, &f64)| Some(figure(*a, *b, 0.0)).filter(|error| *error > 2.0 * notes.floor).unwrap_or(0.0);
+            rough.numbers.iter().zip(&finer.numbers).map(error).collect()
+        });
+        let mut besides: Vec<f64> = of_rule.clone();
         if let Some(paths) = &self.paths {
             besides.resize(numbers, 0.0);
             for (k, besides) in besides.iter_mut().enumerate() {
                 *besides += (CELL_FACTOR - 1.2) * (recorded.numbers[k] - finer.numbers[k]).abs() + paths.bias();
             }
         }
-        let sampling: Vec<f64> = if drawn { total.sample.standard_errors()[..numbers].to_vec() } else { Vec::new() };
+        let mut sampling: Vec<f64> = if drawn { total.sample.standard_errors()[..numbers].to_vec() } else { Vec::new() };
+        // figures of a gate are those of the averaged channel: nothing linear, so their errors are those of leaving draws out
+        let last = |channel: &[f64]| judge.last(&channel_of(channel, &notes));
+        for (error, spread) in sampling.iter_mut().skip(notes.in_rows).zip(total.groups.standard_errors(last)) {
+            *error = spread;
+        }
         let error = |k: usize| figure(recorded.numbers[k], finer.numbers[k], notes.floor) + besides.get(k).copied().unwrap_or(0.0);
         let error_figure = if notes.sound { (0..numbers).map(error).fold(notes.floor, f64::max) } else { f64::INFINITY };
         let sampling_error = drawn.then(|| largest(&sampling));
         let accuracy = self.document.accuracy.last;
-        if let Some((_, finer)) = &refined {
-            self.warn_of_revival(grid, finer, &of_rule, &notes);
-        }
+        let mut warnings = self.warnings.clone();
+        warnings.extend(refined.as_ref().and_then(|refined| self.revival(grid, &refined.grid, &of_rule, &notes)));
         if let Some(error) = sampling_error.filter(|error| !until && *error > accuracy) {
             let needed = count as f64 * (error / accuracy).powi(2);
             let fault = Fault::RoughAverage { draws: count as usize, sampling_error: error, accuracy, needed };
             let place = self.random().next().map_or_else(Default::default, |source| source.rule_place);
-            self.warnings.push(Mistake::warning(place, fault));
+            warnings.push(Mistake::warning(place, fault));
         }
-        let words = [self.words(grid, count), self.words(refined.as_ref().map_or(grid, |(_, finer)| finer), count)];
+        let words = [self.words(grid, count), self.words(refined.as_ref().map_or(grid, |refined| &refined.grid), count)];
         let cross_check = notes.check.map(|(method, reason)| match reason {
             None => {
                 let difference = recorded.numbers.iter().zip(check).map(|(a, b)| (a - b).abs()).fold(0.0, f64::max);
@@ -431,17 +432,17 @@ impl<'p> Job<'p> {
             sampling,
             sampling_error,
             until_accurate: until,
-            warnings: std::mem::take(&mut self.warnings),
+            warnings,
         };
         Measured { solved, average: Some(average) }
     }
 
     /// Where a rule of nodes leaves more than the accuracy within the trace, from when on.
-    fn warn_of_revival(&mut self, grid: &Grid, finer: &Grid, besides: &[f64], notes: &Notes) {
+    fn revival(&self, grid: &Grid, finer: &Grid, besides: &[f64], notes: &Notes) -> Option<Mistake> {
         let accuracy = self.document.accuracy.last;
         let moments = &self.calm.point().problem().moments;
         let wide = notes.in_rows / moments.len().max(1);
-        let Some(bad) = besides.iter().position(|error| *error > accuracy) else { return };
+        let bad = besides.iter().position(|error| *error > accuracy)?;
         let row = if bad < notes.in_rows { bad / wide.max(1) } else { moments.len() - 1 };
         let from_s = moments.get(row.saturating_sub(1)).map_or(0.0, |moment| if row == 0 { 0.0 } else { moment.time_s });
         let more: Vec<String> = finer
@@ -452,7 +453,7 @@ impl<'p> Job<'p> {
             .collect();
         let fault = Fault::Revival { points: self.words(grid, 0), from_s, accuracy, write: more.join(", ") };
         let place = self.gridded.first().map_or_else(Default::default, |k| self.sources[*k].rule_place);
-        self.warnings.push(Mistake::warning(place, fault));
+        Some(Mistake::warning(place, fault))
     }
 
     /// What is averaged over, in words.
@@ -467,6 +468,43 @@ impl<'p> Job<'p> {
             parts.push(format!("{draws} draws of {}", names.join(", ")));
         }
         parts.join(" and ")
+    }
+}
+
+/// The averages over a rule and over one of half as many nodes more.
+struct Refined {
+    rough: Vec<f64>,
+    fine: Vec<f64>,
+    grid: Grid,
+}
+
+/// Makes the figures of a gate from an averaged channel.
+struct Judge<'a> {
+    observables: Observables<'a>,
+}
+
+impl<'a> Judge<'a> {
+    fn new(document: &Document, point: &'a Point) -> Judge<'a> {
+        Judge { observables: observables(document, &point.built, &point.values, &point.energies_hz, point.problem()) }
+    }
+
+    /// The numbers of the whole sequence.
+    fn last(&self, channel: &Channel) -> Vec<f64> {
+        let mut numbers = Vec::new();
+        for quantity in &self.observables.last {
+            quantity.see(Whole::Channel(channel), &mut numbers);
+        }
+        numbers
+    }
+
+    /// What an averaged vector stands for, its figures made anew.
+    fn judged(&self, vector: &[f64], notes: &Notes) -> Recorded {
+        let mut recorded = restored(vector, notes);
+        if let Some(channel) = &recorded.channel {
+            recorded.numbers.truncate(recorded.in_rows);
+            recorded.numbers.extend(self.last(channel));
+        }
+        recorded
     }
 }
 
@@ -493,16 +531,25 @@ fn flat(recorded: &Recorded) -> Vec<f64> {
 }
 
 fn restored(vector: &[f64], notes: &Notes) -> Recorded {
-    let (numbers, matrices) = vector.split_at(notes.numbers.min(vector.len()));
-    let images = notes.within.len().pow(2);
-    let dim = ((matrices.len() / 2 / (1 + images)) as f64).sqrt().round() as usize;
-    let mut found = matrices.chunks_exact((2 * dim * dim).max(1)).map(|matrix| {
-        let entries = matrix.chunks_exact(2).map(|pair| num_complex::Complex64::new(pair[0], pair[1]));
-        Matrix::from_iterator(dim, dim, entries)
-    });
-    let end_state = found.next().map(Start::Mixed);
-    let channel = (images > 0).then(|| Channel { within: notes.within.clone(), images: found.collect() });
+    let (before, channel) = vector.split_at(notes.before_channel(vector));
+    let (numbers, density) = before.split_at(notes.numbers.min(before.len()));
+    let end_state = matrices(density, 1).pop().map(Start::Mixed);
+    let channel = (!channel.is_empty()).then(|| channel_of(channel, notes));
     Recorded { numbers: numbers.to_vec(), in_rows: notes.in_rows, end_state, propagator: None, channel }
+}
+
+fn channel_of(vector: &[f64], notes: &Notes) -> Channel {
+    Channel { within: notes.within.clone(), images: matrices(vector, notes.within.len().pow(2)) }
+}
+
+/// So many square matrices, real and imaginary parts side by side.
+fn matrices(vector: &[f64], count: usize) -> Vec<Matrix> {
+    let dim = ((vector.len() / 2 / count.max(1)) as f64).sqrt().round() as usize;
+    let matrix = |entries: &[f64]| {
+        let pairs = entries.chunks_exact(2).map(|pair| num_complex::Complex64::new(pair[0], pair[1]));
+        Matrix::from_iterator(dim, dim, pairs)
+    };
+    vector.chunks_exact((2 * dim * dim).max(1)).map(matrix).collect()
 }
 
 /// What is known of the runs beside their numbers.
@@ -525,6 +572,13 @@ struct Notes {
 }
 
 impl Notes {
+    /// Where in a flat vector the channel begins: behind the numbers and the density matrix at the end.
+    fn before_channel(&self, vector: &[f64]) -> usize {
+        let images = self.within.len().pow(2);
+        let matrices = vector.len().saturating_sub(self.numbers);
+        vector.len() - matrices / (1 + images) * images
+    }
+
     fn take(&mut self, solved: &Solved<Recorded>) {
         let check = solved.cross_check.as_ref().map(|check| match check {
             CrossCheck::Done { method, .. } => (method.clone(), None),
@@ -568,6 +622,8 @@ struct Total {
     check: Sample,
     /// Coarse minus fine, where something wanders.
     apart: Sample,
+    /// Channels of the draws, where a gate is judged.
+    groups: Groups,
     sum: Vec<f64>,
     sum_fine: Vec<f64>,
     sum_check: Vec<f64>,
@@ -586,6 +642,7 @@ impl Total {
         self.fine.join(&other.fine);
         self.check.join(&other.check);
         self.apart.join(&other.apart);
+        self.groups.join(other.groups);
         add(&mut self.sum, &other.sum, 1.0);
         add(&mut self.sum_fine, &other.sum_fine, 1.0);
         add(&mut self.sum_check, &other.sum_check, 1.0);

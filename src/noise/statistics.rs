@@ -56,6 +56,59 @@ impl Sample {
     }
 }
 
+/// Means of groups of draws, for the standard error of what is not linear in the mean: each group is left out in turn (the
+/// jackknife of M. H. Quenouille, Biometrika 43, 353 (1956), and J. W. Tukey, Annals of Mathematical Statistics 29, 614 (1958)).
+#[derive(Debug, Clone, Default)]
+pub struct Groups(Vec<(u64, Vec<f64>)>);
+
+/// Groups kept at most, before neighbours are joined.
+const MOST_GROUPS: usize = 512;
+
+impl Groups {
+    /// Takes in one draw; an empty vector is nothing to keep.
+    pub fn take(&mut self, vector: &[f64]) {
+        if !vector.is_empty() {
+            self.0.push((1, vector.to_vec()));
+        }
+    }
+
+    /// Takes in what came after.
+    pub fn join(&mut self, other: Groups) {
+        self.0.extend(other.0);
+        while self.0.len() > MOST_GROUPS {
+            let pair = |pair: &[(u64, Vec<f64>)]| match pair {
+                [(n, a), (m, b)] => {
+                    let share = *m as f64 / (n + m) as f64;
+                    (n + m, a.iter().zip(b).map(|(a, b)| a + share * (b - a)).collect())
+                }
+                rest => rest[0].clone(),
+            };
+            self.0 = self.0.chunks(2).map(pair).collect();
+        }
+    }
+
+    /// One standard error of each number that `find` makes of the mean; nothing where there are fewer than two groups.
+    pub fn standard_errors(&self, find: impl Fn(&[f64]) -> Vec<f64>) -> Vec<f64> {
+        let count: u64 = self.0.iter().map(|(n, _)| n).sum();
+        let Some((_, first)) = self.0.first().filter(|_| self.0.len() > 1) else { return Vec::new() };
+        let mut mean = vec![0.0; first.len()];
+        for (n, group) in &self.0 {
+            add(&mut mean, group, *n as f64 / count as f64);
+        }
+        let whole = find(&mean);
+        let mut squares = vec![0.0; whole.len()];
+        for (n, group) in &self.0 {
+            let rest = (count - n) as f64;
+            let without: Vec<f64> = mean.iter().zip(group).map(|(mean, x)| mean + (mean - x) * *n as f64 / rest).collect();
+            // groups of unequal size by their weight: (N - n)/N for (G - 1)/G
+            for (square, (a, b)) in squares.iter_mut().zip(find(&without).iter().zip(&whole)) {
+                *square += rest / count as f64 * (a - b).powi(2);
+            }
+        }
+        squares.into_iter().map(f64::sqrt).collect()
+    }
+}
+
 /// Adds `weight` times a vector to a sum.
 pub fn add(sum: &mut Vec<f64>, vector: &[f64], weight: f64) {
     if sum.is_empty() {
@@ -69,6 +122,29 @@ pub fn add(sum: &mut Vec<f64>, vector: &[f64], weight: f64) {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    /// Of the mean itself the jackknife gives the standard error; of its square 2 |mean| times that (error propagation), also where
+    /// neighbours have been joined.
+    #[test]
+    fn exact_errors_by_leaving_out() {
+        for draws in [50u32, 4000] {
+            let (mut groups, mut sample) = (Groups::default(), Sample::default());
+            let mut stream = crate::random::Stream::new(3, 0, 0, 0);
+            for _ in 0..draws {
+                let x = 5.0 + stream.normal();
+                let mut one = Groups::default();
+                one.take(&[x]);
+                groups.join(one);
+                sample.take(&[x]);
+            }
+            let [found, squared] = groups.standard_errors(|mean| vec![mean[0], mean[0] * mean[0]])[..] else { panic!("two numbers") };
+            let error = sample.standard_errors()[0];
+            // joined groups are fewer: their own spread is 1/sqrt(2 G)
+            let tolerance = if draws == 50 { 1e-12 } else { 4.0 / (2.0 * 256.0f64).sqrt() };
+            assert!((found / error - 1.0).abs() < tolerance, "{found} against {error}");
+            assert!((squared / (2.0 * sample.mean[0] * error) - 1.0).abs() < tolerance + 0.02, "{squared}");
+        }
+    }
 
     /// Joined samples are the sample of all, to rounding; standard error of 1 .. 9 is sqrt(7.5/9).
     #[test]

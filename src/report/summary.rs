@@ -38,7 +38,17 @@ pub fn not_reached(document: &Document, outcome: &Outcome) -> String {
     if !outcome.error_figure.is_finite() {
         return format!("the accuracy of {} that was asked for is not reached, and no number could be given: {}; ask for less, shorten the sequence, or turn the frame with the drives", short(asked), outcome.reason);
     }
-    let advice = if outcome.floor > asked {
+    let of_rule = outcome.average.as_ref().map_or(0.0, |average| average.besides.iter().copied().fold(0.0, f64::max));
+    let sampling = outcome.average.as_ref().filter(|average| average.until_accurate).and_then(|average| average.sampling_error);
+    if let Some(error) = sampling.filter(|error| *error > asked && outcome.error_figure <= asked) {
+        return format!("the accuracy of {} that was asked for is not reached: the sampling error is {}", short(asked), short(error));
+    }
+    let advice = if of_rule > 0.5 * outcome.error_figure {
+        format!(
+            "most of it is the average itself; take more points, draw at random, or ask for accuracy: {{final: {}}}",
+            short(10f64.powf(outcome.error_figure.log10().ceil()))
+        )
+    } else if outcome.floor > asked {
         format!(
             "rounding alone leaves about {} here; ask for accuracy: {{final: {}}} or shorten the sequence",
             short(outcome.floor),
