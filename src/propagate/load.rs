@@ -1,6 +1,7 @@
 //! How large, fast and long a problem is: the numbers that the choice of a method compares, and that bound the rounding error.
 
 use super::asked::Demand;
+use super::coherent::Groups;
 use super::commuting::commutes;
 use super::picture::{Kind, Picture, Pictures};
 use crate::problem::{Matrix, Problem, Term};
@@ -39,7 +40,7 @@ pub struct Load {
     pub rises: f64,
     /// Size of H in the frame of the problem, its mean taken off, times time, over everything, rad.
     pub lab_rad: f64,
-    /// The same with the diagonal as it stands, to which the rounding of its entries is relative, rad.
+    /// The same with those entries of the diagonal, as they stand, whose phases can be seen: what rounding is relative to, rad.
     pub entries_rad: f64,
     /// Largest turning frequency times time, over everything, turns.
     pub carrier_turns: f64,
@@ -112,12 +113,12 @@ pub(super) fn row_bound(b: &Matrix) -> f64 {
     (0..b.nrows()).map(|j| (0..b.ncols()).map(|k| b[(j, k)].norm() + b[(k, j)].norm()).sum::<f64>()).fold(0.0, f64::max)
 }
 
-/// Bounds of the size of the static part: its mean taken off, and with the diagonal as it stands, rad/s.
+/// Bounds of the size of the static part, rad/s: its mean taken off, and that of its off-diagonal entries alone.
 pub(super) fn resting(problem: &Problem) -> (f64, f64) {
     let n = problem.dim();
     let a = &problem.statics;
     let off = (0..n).map(|j| (0..n).filter(|k| *k != j).map(|k| a[(j, k)].norm()).sum::<f64>()).fold(0.0, f64::max);
-    (off + half_range((0..n).map(|j| a[(j, j)].re)), off + (0..n).map(|j| a[(j, j)].re.abs()).fold(0.0, f64::max))
+    (off + half_range((0..n).map(|j| a[(j, j)].re)), off)
 }
 
 impl Load {
@@ -152,11 +153,14 @@ impl Load {
     pub(super) fn of(problem: &Problem, demand: &Demand, accuracy: f64, integrals: bool, pictures: &mut Pictures) -> (Self, Vec<bool>) {
         let n = problem.dim();
         let bounds: Vec<f64> = problem.matrices.iter().map(row_bound).collect();
-        let (resting_rad_s, entries_rad_s) = resting(problem);
+        let (resting_rad_s, off_rad_s) = resting(problem);
+        let mut groups = Groups::at_start(problem, demand.propagator);
         let mut load = Load { columns: if demand.propagator { n + 1 } else { 1 }, ..Load::empty(problem, demand, accuracy) };
         let mut by_integral = vec![false; problem.segments.len()];
         for (index, segment) in problem.segments.iter().enumerate() {
             let (terms, length_s) = (problem.terms_of(segment), segment.length_s);
+            groups.meet(terms);
+            let entries_rad_s = off_rad_s + groups.largest_diagonal(&problem.statics);
             let tied = pictures.of(segment, Kind::Tied);
             let mut rad_s = resting_rad_s;
             let mut carrier: f64 = 0.0;

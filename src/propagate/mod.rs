@@ -9,6 +9,7 @@
 //! | `refine.rs` | [`solve`]: two resolutions, error figure, tightening |
 //! | `run.rs` | one run over all segments at one resolution |
 //! | `picture.rs` | the turning diagonal picture of a segment |
+//! | `coherent.rs` | which levels can be coherent, and so whose rounding matters |
 //! | `load.rs` | how large, fast and long a problem is |
 //! | `exponential.rs` | exp(-i H tau) of a constant Hermitian H |
 //! | `jacobi.rs` | eigenvectors that cannot fail |
@@ -24,6 +25,7 @@
 
 mod asked;
 mod choose;
+mod coherent;
 mod commuting;
 mod constant;
 mod cross_check;

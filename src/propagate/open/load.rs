@@ -2,6 +2,7 @@
 
 use super::super::asked::Demand;
 use super::super::choose::Method;
+use super::super::coherent::Groups;
 use super::super::load::{busy_part, height, resting, row_bound, size_hz, Load};
 use super::run::{Route, Stretch};
 use crate::problem::{Problem, Segment};
@@ -38,7 +39,8 @@ impl Load {
     /// The load of an open problem.
     pub(in super::super) fn of_open(problem: &Problem, demand: &Demand, accuracy: f64, route: &mut Route) -> Load {
         let n = problem.dim();
-        let (resting_rad_s, entries_rad_s) = resting(problem);
+        let (resting_rad_s, off_rad_s) = resting(problem);
+        let mut groups = Groups::at_start(problem, demand.propagator);
         let bounds: Vec<f64> = problem.matrices.iter().map(row_bound).collect();
         let decay = decay_per_s(problem);
         let within = if demand.within.is_empty() { n } else { demand.within.len() };
@@ -47,6 +49,8 @@ impl Load {
         load.coordinates = n * n;
         for segment in &problem.segments {
             let (terms, length_s) = (problem.terms_of(segment), segment.length_s);
+            groups.meet(terms);
+            let entries_rad_s = off_rad_s + groups.largest_diagonal(&problem.statics);
             let mut rad_s = resting_rad_s;
             let mut carrier: f64 = 0.0;
             let mut rises: f64 = 0.0;
