@@ -685,7 +685,7 @@ fn drive_registers(document: &Document, drive: &Drive) -> Vec<Register> {
     match &drive.matrix {
         DriveMatrix::Typed(entries) => entries.iter().flat_map(|entry| [Some(entry.value.re), entry.value.im]).flatten().collect(),
         DriveMatrix::Operator(index) => document.operators[*index].registers(),
-        DriveMatrix::Quanta(_) => Vec::new(),
+        DriveMatrix::Quanta(_) | DriveMatrix::Light(..) => Vec::new(),
         DriveMatrix::Moment(_, direction) => direction.iter().map(|component| component.register).collect(),
     }
 }

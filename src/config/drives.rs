@@ -68,7 +68,22 @@ pub enum DriveMatrix {
     Quanta(String),
     /// Energy of the magnetic moment of what `acts_on` names, per tesla along this direction.
     Moment(String, [Quantity; 3]),
+    /// Dipole between the manifolds of the atom that `acts_on` names, in light of this polarisation.
+    Light(String, Light),
 }
+
+/// Polarisation of light, by what it does to m on the way up.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Light {
+    /// Raises m by one.
+    Plus,
+    /// Lowers m by one.
+    Minus,
+    /// Keeps m.
+    Along,
+}
+
+const LIGHTS: [(&str, Light); 3] = [("plus", Light::Plus), ("minus", Light::Minus), ("along", Light::Along)];
 
 /// A drive.
 #[derive(Debug, Clone)]
@@ -158,8 +173,9 @@ pub fn read_drives(reader: &mut Reader, node: &Node, system: &System, operators:
 fn read_drive(reader: &mut Reader, name: &str, place: Place, node: &Node, system: &System, operators: &[Operator]) -> Option<Drive> {
     let section = format!("drives / {name}");
     let keys = reader.fields(node, &section, &KEYS, &HINTS)?;
-    for later in keys.iter().filter(|key| key.key == "polarisation") {
-        reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: section.clone() });
+    for lone in keys.iter().filter(|key| matches!(key.key.as_str(), "polarisation" | "field_direction") && node.get("acts_on").is_none()) {
+        let expected = "beside acts_on, which names the moment or the atom that it is meant for".to_string();
+        reader.error(lone.place, Fault::Shape { what: lone.key.clone(), expected, example: "acts_on: spin".to_string() });
     }
     let form = match node.get("form") {
         Some(form) => reader.word(form, &format!("{section} / form"), &FORMS),
@@ -261,9 +277,9 @@ fn read_coupling(
                     .flat_map(|(n, rung)| [constant_entry(*rung, n, n + 1, place), constant_entry(*rung, n + 1, n, place)])
                     .collect(),
                 (_, Acting::Quanta) => return built(DriveMatrix::Quanta(name), reference, place, system, true),
-                (_, Acting::Moment) => {
-                    let direction = read_direction(reader, node, section)?;
-                    return built(DriveMatrix::Moment(name, direction), reference, place, system, true);
+                (_, Acting::Moment | Acting::MomentOrLight) => {
+                    let matrix = read_moment_or_light(reader, node, section, name, acting)?;
+                    return built(matrix, reference, place, system, true);
                 }
             }
         }
@@ -321,6 +337,22 @@ fn read_acts_on(reader: &mut Reader, node: &Node, section: &str, system: &System
     let fault = Fault::UnknownWord { what: "acts_on".to_string(), found: what.to_string(), known, near, hint };
     reader.error(node.place, fault);
     None
+}
+
+/// What acts on a moment: a field along `field_direction`, or light of a `polarisation` where there are two manifolds.
+fn read_moment_or_light(reader: &mut Reader, node: &Node, section: &str, name: String, acting: Acting) -> Option<DriveMatrix> {
+    if acting == Acting::MomentOrLight {
+        let hint = Some("field_direction drives within the manifolds, polarisation between them.");
+        let entry = reader.one_of(node, &["field_direction", "polarisation"], section, hint)?;
+        if entry.key == "polarisation" {
+            return reader.word(&entry.value, &format!("{section} / polarisation"), &LIGHTS).map(|light| DriveMatrix::Light(name, light));
+        }
+    } else if let Some(light) = node.get("polarisation") {
+        let expected = "for the lines between two manifolds; a field within one has a field_direction".to_string();
+        reader.error(light.place, Fault::Shape { what: "polarisation".to_string(), expected, example: "field_direction: x".to_string() });
+        return None;
+    }
+    read_direction(reader, node, section).map(|direction| DriveMatrix::Moment(name, direction))
 }
 
 /// `field_direction: x`, `y`, `z`, or three plain numbers; of no particular length.

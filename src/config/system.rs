@@ -8,6 +8,7 @@ use super::tape::Register;
 use super::tree::Node;
 use crate::units::Dim;
 
+pub mod atom;
 pub mod functions;
 pub mod mode;
 pub mod parts;
@@ -15,6 +16,7 @@ pub mod spin;
 pub mod well;
 
 use super::differential::{read_differential, Differential};
+use atom::Atom;
 use functions::Functions;
 use mode::Mode;
 use parts::Parts;
@@ -52,6 +54,8 @@ pub enum Physics {
     Mode(Mode),
     /// Several systems beside each other.
     Parts(Box<Parts>),
+    /// One or two manifolds of hyperfine levels.
+    Atom(Box<Atom>),
     /// One particle in one dimension.
     Well(Box<Well>),
     /// Functions of the user's own.
@@ -65,10 +69,21 @@ pub enum Acting {
     Quanta,
     /// A magnetic moment along a direction.
     Moment,
+    /// A magnetic moment along a direction, or light of a polarisation on the lines between two manifolds.
+    MomentOrLight,
+}
+
+impl Acting {
+    /// Whether there is a magnetic moment.
+    pub fn has_moment(self) -> bool {
+        self != Acting::Quanta
+    }
 }
 
 /// Names of the operators of a mode or ladder.
 pub const MODE_OPERATORS: [&str; 5] = ["lower", "raise", "quanta", "position", "momentum"];
+/// Names of the operators of an atom.
+pub const ATOM_OPERATORS: [&str; 6] = ["electron_x", "electron_y", "electron_z", "nucleus_x", "nucleus_y", "nucleus_z"];
 /// Names of the operators of a spin.
 pub const SPIN_OPERATORS: [&str; 5] = ["spin_x", "spin_y", "spin_z", "spin_up", "spin_down"];
 
@@ -90,6 +105,7 @@ impl System {
             Physics::Typed => Vec::new(),
             Physics::Ladder(_) | Physics::Mode(_) => own(&MODE_OPERATORS),
             Physics::Spin(_) => own(&SPIN_OPERATORS),
+            Physics::Atom(_) => own(&ATOM_OPERATORS),
             Physics::Parts(parts) => {
                 let of = |part: &parts::Part| part.system.operators().into_iter().map(|name| format!("{}.{name}", part.name)).collect();
                 parts.parts.iter().flat_map(|part| -> Vec<String> { of(part) }).collect()
@@ -119,6 +135,7 @@ impl System {
     fn own_field(&self) -> Option<Place> {
         match &self.physics {
             Physics::Spin(spin) => spin.field.as_ref().map(|_| spin.place),
+            Physics::Atom(atom) => atom.field.as_ref().map(|_| atom.place),
             _ => None,
         }
     }
@@ -138,6 +155,8 @@ impl System {
             Physics::Typed | Physics::Well(_) | Physics::Functions(_) => return Vec::new(),
             Physics::Ladder(_) | Physics::Mode(_) => Acting::Quanta,
             Physics::Spin(_) => Acting::Moment,
+            Physics::Atom(atom) if atom.upper.is_some() => Acting::MomentOrLight,
+            Physics::Atom(_) => Acting::Moment,
             Physics::Parts(parts) => {
                 let of = |part: &parts::Part| part.system.acting().into_iter().map(|(_, how)| (part.name.clone(), how)).collect();
                 return parts.parts.iter().flat_map(|part| -> Vec<(String, Acting)> { of(part) }).collect();
@@ -154,6 +173,7 @@ impl System {
             Physics::Ladder(rungs) => found.extend(rungs),
             Physics::Spin(spin) => spin.registers(&mut found),
             Physics::Mode(mode) => mode.registers(&mut found),
+            Physics::Atom(atom) => atom.registers(&mut found),
             Physics::Parts(parts) => parts.registers(&mut found),
             Physics::Well(well) => well.registers(&mut found),
             Physics::Functions(functions) => functions.registers(&mut found),
@@ -209,17 +229,16 @@ impl Operator {
 type Read = fn(&mut Reader, &Node, Place, &str) -> Option<System>;
 
 /// Every kind of system and how it is read.
-const KINDS: [(&str, Read); 7] = [
+const KINDS: [(&str, Read); 8] = [
     ("levels", read_levels),
     ("ladder", read_ladder),
     ("hamiltonian", read_hamiltonian),
     ("spin", spin::read_spin),
     ("mode", mode::read_mode),
+    ("atom", atom::read_atom),
     ("well", well::read_well),
     ("functions", functions::read_functions),
 ];
-
-const LATER_KINDS: [&str; 1] = ["atom"];
 
 /// Keys that stand beside `parts` alone.
 const BESIDE_PARTS: [&str; 2] = ["magnetic_field", "interactions"];
@@ -239,8 +258,7 @@ pub fn read_system(reader: &mut Reader, node: &Node) -> Option<System> {
         }
         return read_kind(reader, node, "system", &["parts", "name_states_by"]);
     };
-    let known: Vec<&str> =
-        KINDS.iter().map(|(word, _)| *word).chain(LATER_KINDS).chain(BESIDE_PARTS).chain(["parts", "name_states_by"]).collect();
+    let known: Vec<&str> = KINDS.iter().map(|(word, _)| *word).chain(BESIDE_PARTS).chain(["parts", "name_states_by"]).collect();
     reader.fields(node, "system", &known, &[])?;
     if let Some(other) = node.entries()?.iter().find(|entry| KINDS.iter().any(|(word, _)| *word == entry.key)) {
         let mut two = [("parts".to_string(), parts.place), (other.key.clone(), other.place)];
@@ -256,12 +274,8 @@ pub fn read_system(reader: &mut Reader, node: &Node) -> Option<System> {
 /// Reads the one kind that stands under `node`: the system itself, or a part of it; `beside` are other keys that may stand there.
 pub fn read_kind(reader: &mut Reader, node: &Node, section: &str, beside: &[&str]) -> Option<System> {
     let words: Vec<&str> = KINDS.iter().map(|(word, _)| *word).collect();
-    let known: Vec<&str> = words.iter().chain(&LATER_KINDS).chain(beside).copied().collect();
-    let entries = reader.fields(node, section, &known, &[])?;
-    if let Some(later) = entries.iter().find(|entry| LATER_KINDS.contains(&entry.key.as_str())) {
-        reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: section.to_string() });
-        return None;
-    }
+    let known: Vec<&str> = words.iter().chain(beside).copied().collect();
+    reader.fields(node, section, &known, &[])?;
     let entry = reader.one_of(node, &words, section, None)?;
     let (word, read) = KINDS.iter().find(|(word, _)| *word == entry.key)?;
     read(reader, &entry.value, entry.place, &format!("{section} / {word}"))

@@ -30,7 +30,14 @@ pub fn change(mut built: Built, basis: &Basis, names: &[String], values: &[f64])
         Basis::AsBuilt => {}
         Basis::Eigenstates { by_energy, place } => {
             let eigen = eigenstates(&built.statics_hz, &built.energies);
-            let order = if *by_energy { ascending(&eigen) } else { by_overlap(&eigen, names, *place)? };
+            let order = if *by_energy {
+                ascending(&eigen)
+            } else {
+                match by_growth(&eigen, &built.grown) {
+                    Some(order) => order,
+                    None => by_overlap(&eigen, names, *place)?,
+                }
+            };
             let size = names.len();
             let vectors = Matrix::from_fn(size, size, |row, column| eigen.vectors[(row, order[column])]);
             built.weights = (0..size).map(|k| vectors[(k, k)].norm_sqr()).collect();
@@ -179,6 +186,38 @@ fn ascending(eigen: &Eigen) -> Vec<usize> {
     let difference = |a: usize, b: usize| eigen.energies[a].plus(eigen.energies[b].times(-1.0)).value();
     order.sort_by(|a, b| difference(*a, *b).total_cmp(&0.0));
     order
+}
+
+/// For each state as built the eigenstate that grows from it as a field is switched on: levels of one label do not cross (J. von
+/// Neumann, E. P. Wigner, Physikalische Zeitschrift 30, 467 (1929)), so their order is kept. None where the matrix mixes labels, or
+/// where two of one label coincide without a field.
+fn by_growth(eigen: &Eigen, grown: &[(i32, f64)]) -> Option<Vec<usize>> {
+    let size = grown.len();
+    if size == 0 {
+        return None;
+    }
+    let mut labels = Vec::with_capacity(size);
+    for k in 0..size {
+        let largest = (0..size).max_by(|a, b| eigen.vectors[(*a, k)].norm_sqr().total_cmp(&eigen.vectors[(*b, k)].norm_sqr()))?;
+        let label = grown[largest].0;
+        let mixed = (0..size).any(|row| grown[row].0 != label && eigen.vectors[(row, k)].norm_sqr() > 1e-24);
+        if mixed {
+            return None;
+        }
+        labels.push(label);
+    }
+    let in_order = ascending(eigen);
+    let mut order = vec![usize::MAX; size];
+    for (k, (label, _)) in grown.iter().enumerate() {
+        let mut alike: Vec<usize> = (0..size).filter(|other| grown[*other].0 == *label).collect();
+        alike.sort_by(|a, b| grown[*a].1.total_cmp(&grown[*b].1));
+        if alike.windows(2).any(|two| grown[two[0]].1 == grown[two[1]].1) {
+            return None;
+        }
+        let place = alike.iter().position(|other| *other == k)?;
+        order[k] = *in_order.iter().filter(|eigenstate| labels[**eigenstate] == *label).nth(place)?;
+    }
+    Some(order)
 }
 
 /// For each state as built the eigenstate that bears its name.

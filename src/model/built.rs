@@ -4,6 +4,7 @@ use std::sync::Arc;
 
 use num_complex::Complex64;
 
+use crate::config::drives::Light;
 use crate::config::tape::Wide;
 use crate::problem::Matrix;
 
@@ -74,6 +75,8 @@ pub struct Acting {
     pub quanta: Option<Block>,
     /// Energy of the magnetic moment per tesla along x, y and z, Hz/T.
     pub moment: Option<[Block; 3]>,
+    /// Dipole between two manifolds for light that raises m, lowers it, and keeps it; no dimension.
+    pub light: Option<[Block; 3]>,
 }
 
 /// A system at one point.
@@ -97,6 +100,9 @@ pub struct Built {
     pub overlap: Option<Matrix>,
     /// Sum over the kept levels of (2 mass/hbar^2)(E_m - E_n) |x_mn|^2, level by level; empty where there is no such sum.
     pub sum_rule: Vec<f64>,
+    /// Of each state as built a label that the static matrix does not mix, and its energy without a field: eigenstates of one label
+    /// are named in this order. Empty where names go by overlap alone.
+    pub grown: Vec<(i32, f64)>,
     /// Columns: the states of the working basis in those as built; none where they are the same.
     pub basis: Option<Arc<Matrix>>,
     /// What the static matrix couples to states that the working basis leaves out, Hz.
@@ -117,6 +123,7 @@ impl Built {
             weights: Vec::new(),
             overlap: None,
             sum_rule: Vec::new(),
+            grown: Vec::new(),
             basis: None,
             lost_hz: 0.0,
         }
@@ -166,6 +173,16 @@ impl Built {
             block.add_to(&mut whole, Complex64::from(component / length));
         }
         self.to_working(whole)
+    }
+
+    /// Dipole of an atom in light of a polarisation, in the working basis.
+    pub fn light(&self, part: &str, light: Light) -> Matrix {
+        let which = match light {
+            Light::Plus => 0,
+            Light::Minus => 1,
+            Light::Along => 2,
+        };
+        self.whole(self.acts(part).and_then(|acting| acting.light.as_ref()).map(|blocks| &blocks[which]))
     }
 
     fn acts(&self, part: &str) -> Option<&Acting> {

@@ -1,6 +1,7 @@
 //! Matrices in a basis: the checked config's entries become dense Hermitian matrices. Knows nothing of time.
 
 pub mod angular_momentum;
+mod atom;
 pub mod basis;
 pub mod built;
 pub mod commutators;
@@ -44,6 +45,7 @@ fn build_system(system: &System, names: &[String], operators: &[Operator], value
         Physics::Ladder(rungs) => mode::ladder(system.kind, dense(size, &system.entries, values), rungs, values),
         Physics::Spin(spin) => spin::build(spin, values),
         Physics::Mode(mode) => mode::build(mode, values),
+        Physics::Atom(one) => atom::build_in(one, values, [0.0; 3]),
         Physics::Parts(parts) => parts::build(parts, values)?,
         Physics::Well(well) => well::build(well, operators, values)?,
         Physics::Functions(functions) => functions::build(functions, names, operators, values)?,
@@ -66,6 +68,7 @@ pub fn drive_matrix(document: &Document, built: &Built, drive: &Drive, values: &
         DriveMatrix::Typed(entries) => dense(built.size(), entries, values),
         DriveMatrix::Operator(index) => operator(document, built, *index, values),
         DriveMatrix::Quanta(part) => built.quanta(part),
+        DriveMatrix::Light(part, light) => built.light(part, *light),
         DriveMatrix::Moment(part, direction) => built.moment(part, direction.map(|component| values[component.register as usize])),
     }
 }

@@ -48,6 +48,6 @@ fn with_operators(kind: &str, statics: Matrix, rungs: &[f64]) -> Built {
     let mut built = Built::new(statics);
     let named = [("lower", lower), ("raise", raise), ("quanta", quanta), ("position", position), ("momentum", momentum)];
     built.operators = named.into_iter().map(|(name, matrix)| Block::new(name, "1", matrix)).collect();
-    built.acting = vec![Acting { name: kind.to_string(), quanta: Some(Block::new("", "1", both)), moment: None }];
+    built.acting = vec![Acting { name: kind.to_string(), quanta: Some(Block::new("", "1", both)), moment: None, light: None }];
     built
 }

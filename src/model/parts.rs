@@ -30,6 +30,7 @@ pub fn build(parts: &Parts, values: &[f64]) -> Result<Built, Mistake> {
             name: part.name.clone(),
             quanta: acting.quanta.map(|block| block.within("", before, after)),
             moment: acting.moment.map(|blocks| blocks.map(|block| block.within("", before, after))),
+            light: acting.light.map(|blocks| blocks.map(|block| block.within("", before, after))),
         }));
         joint.error_hz += built.error_hz;
         joint.notes.extend(built.notes);
@@ -43,6 +44,7 @@ pub fn build(parts: &Parts, values: &[f64]) -> Result<Built, Mistake> {
 fn build_part(part: &Part, values: &[f64], field: [f64; 3]) -> Result<Built, Mistake> {
     match &part.system.physics {
         Physics::Spin(spin) => Ok(super::spin::build_in(spin, values, field)),
+        Physics::Atom(atom) => Ok(super::atom::build_in(atom, values, field)),
         _ => super::build_system(&part.system, &part.system.names, &[], values),
     }
 }

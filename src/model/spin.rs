@@ -88,7 +88,7 @@ pub fn build_in(spin: &Spin, values: &[f64], field: [f64; 3]) -> Built {
     let named = [("spin_x", x), ("spin_y", y), ("spin_z", z), ("spin_up", up), ("spin_down", down)];
     built.operators = named.into_iter().map(|(name, matrix)| Block::new(name, "1", matrix)).collect();
     let moment = moment.map(|matrix| Block::new("", "Hz/T", matrix));
-    built.acting = vec![Acting { name: "spin".to_string(), quanta: None, moment: Some(moment) }];
+    built.acting = vec![Acting { name: "spin".to_string(), quanta: None, moment: Some(moment), light: None }];
     built
 }
 

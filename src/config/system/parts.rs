@@ -1,6 +1,6 @@
 //! `parts:`, `interactions:` and `magnetic_field:` several systems beside each other.
 
-use super::{read_kind, too_many, Acting, Physics, System, MOST_LEVELS};
+use super::{read_kind, too_many, Physics, System, MOST_LEVELS};
 use crate::config::matrix;
 use crate::config::matrix::MatrixEntry;
 use crate::config::messages::Fault;
@@ -136,7 +136,7 @@ pub fn read_parts(reader: &mut Reader, section: &Node) -> Option<System> {
 
 /// A moment in two fields would be guessed at; a field with nothing to act on is a slip.
 fn own_fields(reader: &mut Reader, parts: &[Part], place: Place) {
-    let moments = parts.iter().any(|part| part.system.acting().iter().any(|(_, acting)| *acting != Acting::Quanta));
+    let moments = parts.iter().any(|part| part.system.acting().iter().any(|(_, acting)| acting.has_moment()));
     if !moments {
         let expected = "beside a part with a magnetic moment, a spin or an atom".to_string();
         let example = "parts: {electron: {spin: {size: 1/2, g: 2.0023}}}".to_string();
@@ -221,7 +221,7 @@ fn takes_part(system: &System, word: &str) -> bool {
         "isotropic" | "axial" | "tensor" => has("spin_x"),
         "longitudinal" => has("spin_z") || has("quanta"),
         "exchange" => has("spin_up") || has("raise"),
-        "dipolar" => system.acting().iter().any(|(_, acting)| *acting != Acting::Quanta),
+        "dipolar" => system.acting().iter().any(|(_, acting)| acting.has_moment()),
         _ => !system.operators().is_empty(),
     }
 }
