@@ -71,7 +71,7 @@ impl Column {
 }
 
 /// A recorded quantity: its columns, and their numbers at a moment.
-pub trait Quantity {
+pub trait Quantity: Sync {
     /// Its columns, in order.
     fn columns(&self) -> Vec<Column>;
     /// Appends one number per column.
@@ -88,7 +88,7 @@ pub enum Whole<'a> {
 }
 
 /// A quantity of the whole sequence, made from its propagator or channel.
-pub trait Last {
+pub trait Last: Sync {
     /// Names of its numbers, which have no dimension.
     fn names(&self) -> Vec<String>;
     /// Appends one number per name.

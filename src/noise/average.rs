@@ -63,6 +63,9 @@ pub fn compute<'p>(document: &'p Document, point: &Point<'p>, draws: &Draws) -> 
 
 /// The same without an error budget; `noise` is whether noise acts.
 pub(super) fn plain<'p>(document: &'p Document, point: &Point<'p>, draws: &Draws, noise: bool) -> Result<Outcome, Mistake> {
+    if super::trajectories::wanted(point.problem()) {
+        return super::trajectories::compute(document, point, draws, noise);
+    }
     if document.noise.is_empty() || !noise {
         return Ok(outcome::compute(document, point));
     }

@@ -6,7 +6,7 @@
 //!
 //! `source`: what shares a draw, and how far it moves each number; `gauss`: rules of nodes, `grid`: several at once; `process`: numbers that
 //! wander within a shot, `path`: their shots; `average`: the runs and their sums; `budget`: the
-//! runs of an error budget;
+//! runs of an error budget; `trajectories`: large systems that decay, by pure states that jump at random;
 //! `statistics`: sums in an order that does not depend on the number of threads.
 
 mod average;
@@ -17,6 +17,7 @@ mod path;
 mod process;
 mod source;
 mod statistics;
+mod trajectories;
 
 pub use average::{compute, Draws};
 pub use source::figures;

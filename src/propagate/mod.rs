@@ -22,6 +22,7 @@
 //! | `cross_check.rs` | the independent second route |
 //! | `lanes/` | many points side by side |
 //! | `open/` | the same for density matrices |
+//! | `trajectories/` | pure states that jump at random, where density matrices are too large |
 
 mod asked;
 mod choose;
@@ -45,6 +46,7 @@ mod smooth;
 mod solved;
 #[cfg(test)]
 mod tests;
+mod trajectories;
 
 pub use asked::{Asked, Demand, Recorder};
 pub use choose::{Method, Row, METHODS};
@@ -52,3 +54,4 @@ pub use load::Load;
 pub use open::{steady, NotSteady, Steady};
 pub use refine::{figure, solve};
 pub use solved::{CrossCheck, Resolution, Solved};
+pub use trajectories::{Fine, Trajectories, LARGEST_DENSITY};

@@ -109,6 +109,17 @@ pub enum OpenFault {
         turns_hz: f64,
     },
     JumpBeatMoves,
+    NotByTrajectories {
+        what: &'static str,
+        levels: usize,
+    },
+    /// `reach` is what so many as the limit give.
+    TooManyTrajectories {
+        needed: f64,
+        limit: f64,
+        accuracy: f64,
+        reach: f64,
+    },
     NotSteady {
         reason: String,
         write: String,
@@ -218,6 +229,19 @@ impl OpenFault {
             ))
             .why("They beat faster than drop_terms_faster_than, so each decays by itself.")
             .write("drop_terms_faster_than: nothing, to keep their beat"),
+            NotByTrajectories { what, levels } => {
+                say(format!("{what}: {levels} levels that decay are computed by quantum trajectories, which do not give it."))
+                    .why("Up to 24 levels are computed as a density matrix.")
+                    .write("a system of 24 levels or fewer")
+            }
+            TooManyTrajectories { needed, limit, accuracy, reach } => say(format!(
+                "{} quantum trajectories would be needed for accuracy: {{final: {}}}, more than {}.",
+                short(*needed),
+                short(*accuracy),
+                short(*limit)
+            ))
+            .why("More than 24 levels that decay are computed by trajectories; the sampling error falls with the root of their number.")
+            .write(format!("accuracy: {{final: {}}}", rounded_up(*reach))),
             JumpBeatMoves => say("entries of a jump operator turn apart in this frame, by a carrier that is set anew or swept.")
                 .why("Their beat has no frequency of its own then.")
                 .write("frame: {kind: lab}, or a table of frequencies"),
@@ -290,4 +314,10 @@ fn too_long(total_s: f64, [a, b]: [&String; 2], lives: &[(String, f64, u32)], li
         }
     };
     words.write(format!("a total_time below {limit}, or a longer lifetime on {}", lines.join(" or ")))
+}
+
+/// Two digits, not less than the number.
+fn rounded_up(number: f64) -> String {
+    let scale = 10f64.powf(number.log10().floor() - 1.0);
+    format!("{:.1e}", (number / scale).ceil() * scale)
 }

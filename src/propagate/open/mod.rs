@@ -3,6 +3,7 @@
 //! | file | what it does |
 //! |---|---|
 //! | `coordinates.rs` | Hermitian matrix to real numbers and back; operators of a channel |
+//! | `entries.rs` | entries of jump operators in the picture of a segment |
 //! | `generator.rs` | G in the picture of a segment, sparse |
 //! | `exponential.rs` | exp(G tau), dense and acting |
 //! | `constant.rs` | stretches of constant G |
@@ -16,6 +17,7 @@
 mod constant;
 mod coordinates;
 mod cross_check;
+pub(super) mod entries;
 mod even_steps;
 mod exponential;
 mod generator;
