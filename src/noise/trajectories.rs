@@ -101,8 +101,14 @@ impl Total {
         (self.numbers, self.in_rows) = (other.numbers, other.in_rows);
     }
 
+    /// One standard error of each number. What never showed in N trajectories may still happen once in N.
+    fn errors(&self) -> Vec<f64> {
+        let least = 1.0 / self.sample.count.max(1) as f64;
+        self.sample.standard_errors().into_iter().take(self.numbers).map(|error| error.max(least)).collect()
+    }
+
     fn largest_error(&self) -> f64 {
-        self.sample.standard_errors().iter().take(self.numbers).copied().fold(0.0, f64::max)
+        self.errors().into_iter().fold(0.0, f64::max)
     }
 }
 
@@ -194,7 +200,7 @@ impl Job<'_> {
         let floor = 64.0 * f64::EPSILON;
         let error_figure = numbers.iter().zip(&finer).map(|(a, b)| figure(*a, *b, floor)).fold(floor, f64::max);
         let sampling_error = total.largest_error();
-        let sampling = total.sample.standard_errors()[..total.numbers].to_vec();
+        let sampling = total.errors();
         let count = total.sample.count;
         let resolution =
             |fine: &Fine, count: u64| Resolution { words: format!("{count} trajectories, {}", fine.words()), steps: total.steps };

@@ -21,6 +21,7 @@
 //! | `smooth.rs`, `dormand_prince.rs` | Runge-Kutta 8(5,3) and its coefficients |
 //! | `cross_check.rs` | the independent second route |
 //! | `lanes/` | many points side by side |
+//! | `mixture.rs` | mixed starts of closed systems |
 //! | `open/` | the same for density matrices |
 //! | `trajectories/` | pure states that jump at random, where density matrices are too large |
 
@@ -37,6 +38,7 @@ mod geometric;
 mod jacobi;
 pub mod lanes;
 mod load;
+mod mixture;
 mod open;
 mod picture;
 mod refine;

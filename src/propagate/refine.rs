@@ -11,6 +11,7 @@ use super::asked::{Asked, Demand, Recorder};
 use super::choose::{choose, Method, METHODS};
 use super::cross_check::cross_check;
 use super::load::Load;
+use super::mixture::{self, Mixture};
 use super::open;
 use super::picture::Pictures;
 use super::run::{run, Fineness, Route, Work};
@@ -49,31 +50,46 @@ fn largest_figure(coarse: &[f64], fine: &[f64], floor: f64) -> f64 {
 enum Way<'p> {
     Closed(Route<'p>),
     Open(Box<open::Route<'p>>),
+    Mixture(Mixture<'p>),
 }
 
 impl<'p> Way<'p> {
     /// The way, the load, the method and why.
-    fn new(problem: &'p Problem, demand: &Demand, asked: &Asked) -> (Way<'p>, Load, Method, String) {
-        if problem.is_open() {
+    fn new(problem: &'p Problem, parts: &'p [(f64, Problem)], demand: &Demand, asked: &Asked) -> (Way<'p>, Load, Method, String) {
+        if problem.is_open() && parts.is_empty() {
             let mut route = open::Route::new(problem, demand);
             let load = Load::of_open(problem, demand, asked.accuracy, &mut route);
             let (method, reason) = choose(&load, asked.method);
             route.carry(method, load.changing_s);
             return (Way::Open(Box::new(route)), load, method, reason);
         }
-        let mut pictures = Pictures::new(problem);
+        let first = parts.first().map_or(problem, |(_, part)| part);
+        let mut pictures = Pictures::new(first);
         // by its integral only where the choice is ours, and never where times are spent in levels
         let integrals = asked.method.is_none() && !demand.time_in;
-        let (load, by_integral) = Load::of(problem, demand, asked.accuracy, integrals, &mut pictures);
+        let (load, by_integral) = Load::of(first, demand, asked.accuracy, integrals, &mut pictures);
         let (method, reason) = choose(&load, asked.method);
-        let route = Route { problem, demand: demand.clone(), method, by_integral, changing_s: load.changing_s, pictures };
-        (Way::Closed(route), load, method, reason)
+        let route = |problem, pictures| Route {
+            problem,
+            demand: demand.clone(),
+            method,
+            by_integral: by_integral.clone(),
+            changing_s: load.changing_s,
+            pictures,
+        };
+        let way = if parts.is_empty() {
+            Way::Closed(route(problem, pictures))
+        } else {
+            Way::Mixture(Mixture::new(parts, demand, |part| route(part, Pictures::new(part))))
+        };
+        (way, load, method, reason)
     }
 
     fn run(&mut self, fineness: &Fineness, left: f64, recorder: &mut dyn Recorder) -> Work {
         match self {
             Way::Closed(route) => run(route, fineness, left, recorder),
             Way::Open(route) => route.run(fineness, left, recorder),
+            Way::Mixture(mixture) => mixture.run(fineness, left, recorder),
         }
     }
 }
@@ -87,7 +103,8 @@ struct Ran<R> {
 
 /// Solves `problem` and measures the error of every recorded number; `new_recorder` is called once for each run.
 pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new_recorder: impl Fn() -> R) -> Solved<R> {
-    let (mut way, load, method, mut reason) = Way::new(problem, demand, asked);
+    let parts = mixture::parts(problem);
+    let (mut way, load, method, mut reason) = Way::new(problem, &parts, demand, asked);
     // Runge-Kutta sums are compensated; all other steps are products, one after the other.
     let floor_of = |work: &Work| load.floor(if load.changing > 0 && method != Method::Smooth { work.steps } else { load.segments as u64 });
     let mut left = MOST_MULTIPLICATIONS;

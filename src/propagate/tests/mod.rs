@@ -10,6 +10,7 @@ mod reference;
 mod speed;
 mod statistics;
 mod steady;
+mod trajectories;
 
 use std::sync::Arc;
 
