@@ -110,7 +110,7 @@ pub fn compare(compare: &Compare, plans: Vec<(String, Plan)>) -> Result<Comparis
     let mut computed = Vec::new();
     for (name, plan) in plans {
         let point = plan.point().map_err(|mistake| fault(&plan, mistake))?;
-        let outcome = compute(plan.document(), &point, &Draws::default()).map_err(|mistake| fault(&plan, mistake))?;
+        let outcome = compute(plan.document(), &point, &Draws::of(plan.document())).map_err(|mistake| fault(&plan, mistake))?;
         let finals = in_frame(plan.document(), &point, &outcome, &reference_turns);
         drop(point);
         computed.push(Computed { name, plan, outcome, finals });
@@ -216,7 +216,7 @@ fn explain(
         done.push((line.key, in_reference));
         let plan = if in_reference { &reference.plan } else { &variant.plan };
         let point = plan.point_with(&[line.key])?;
-        let outcome = compute(plan.document(), &point, &Draws::default())?;
+        let outcome = compute(plan.document(), &point, &Draws::of(plan.document()))?;
         let finals = in_frame(plan.document(), &point, &outcome, reference_turns);
         let left = if in_reference { differences(&variant.finals, &finals, asked) } else { differences(&finals, &reference.finals, asked) };
         found.push(PutBack {

@@ -35,7 +35,7 @@ fn try_run(words: &Words) -> Result<Status, Status> {
     })?;
     complain_of(document, &document.warnings);
     complain_of(document, &point.warnings);
-    let outcome = compute(document, &point, &Draws::default()).map_err(|mistake| {
+    let outcome = compute(document, &point, &Draws::of(document)).map_err(|mistake| {
         complain_of(document, &[mistake]);
         Status::Refused
     })?;

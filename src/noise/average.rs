@@ -17,6 +17,7 @@ use super::statistics::{add, Groups, Sample};
 use crate::config::document::Document;
 use crate::config::messages::{Fault, Mistake};
 use crate::config::noise::Rule;
+use crate::config::run::Threads;
 use crate::measure::{observables, Observables, Recorded, Whole};
 use crate::outcome::{self, Average, Measured, Outcome};
 use crate::plan::shaken::Shaken;
@@ -45,6 +46,16 @@ pub struct Draws {
     pub threads: usize,
     /// Which family of draws: points of a scan that have the same see the same draws.
     pub family: u64,
+}
+
+impl Draws {
+    /// With as many threads as a config asks for, the first family.
+    pub fn of(document: &Document) -> Draws {
+        match document.run.threads {
+            Threads::Count(threads) => Draws { threads, family: 0 },
+            Threads::All | Threads::FromScheduler => Draws::default(),
+        }
+    }
 }
 
 impl Default for Draws {

@@ -18,6 +18,7 @@ use crate::config::messages::{Fault, Mistake};
 use crate::config::settings::Frame;
 use crate::drive::segments::{cut, owners, PulseParts};
 use crate::model;
+use crate::model::surroundings::Surroundings;
 use crate::problem::{Chirped, Envelope, Instant, Matrix, Moment, Problem, Segment, Term};
 use crate::units::rad_s;
 
@@ -114,6 +115,9 @@ impl<'p> Wanderer<'p> {
 
     /// What moves off the diagonal would have to turn with a rotating frame, and a basis of eigenstates would turn with the noise.
     fn judge(&mut self, numbers: &[(u32, f64)]) -> Result<(), Mistake> {
+        if self.touched.surroundings && self.moved(numbers, Self::rates)? != self.rates()? {
+            return Err(self.refused(numbers, "the rate of a decay or of a dephasing"));
+        }
         if !self.touched.statics {
             return Ok(());
         }
@@ -127,9 +131,20 @@ impl<'p> Wanderer<'p> {
             (Frame::Rotating(_), _) if off => "an entry off the diagonal, in a rotating frame",
             _ => return Ok(()),
         };
+        Err(self.refused(numbers, what))
+    }
+
+    /// Rates of the jumps, 1/s; a bath looks at the gaps as they are without noise.
+    fn rates(&self) -> Result<Vec<f64>, Mistake> {
+        let point = &self.point;
+        let surroundings = Surroundings::new(self.document, &point.built, &point.values, &point.energies_hz)?;
+        Ok(surroundings.jumps.iter().map(|jump| jump.rate_per_s).collect())
+    }
+
+    fn refused(&self, numbers: &[(u32, f64)], what: &str) -> Mistake {
         let entry = self.document.noise.iter().find(|entry| entry.moves.iter().any(|moved| numbers.iter().any(|(n, _)| *n == moved.index)));
         let (place, name) = entry.map_or_else(Default::default, |entry| (entry.place, entry.moves[0].name.clone()));
-        Err(Mistake::error(place, Fault::CorrelatedMoves { name, what: what.to_string() }))
+        Mistake::error(place, Fault::CorrelatedMoves { name, what: what.to_string() })
     }
 
     /// By how much the couplings change with the numbers about as far out as they go, rad/s.
