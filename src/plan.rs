@@ -471,6 +471,13 @@ impl<'p> Point<'p> {
         self.lab.segments = segments;
         self.lab.terms = terms;
         self.warnings.clear();
+        for (level, mistake) in &self.built.doubtful {
+            // a state that the file speaks of must be one that can be told
+            if document.named_levels.contains(level) {
+                return Err(mistake.clone());
+            }
+            self.warnings.push(Mistake { warning: true, ..mistake.clone() });
+        }
         for (drive, first) in document.drives.iter().zip(&self.timeline.first_carriers) {
             if let Some(carrier) = first.map(|carrier| &self.timeline.carriers[carrier]).filter(|carrier| carrier.centre_hz < 0.0) {
                 let fault = Fault::NegativeCarrier { drive: drive.name.clone(), hz: carrier.centre_hz };

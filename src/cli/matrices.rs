@@ -4,6 +4,7 @@ use clap::Args;
 
 use super::{complain, complain_of, not_drawn, print, settings, Common, Results, Status};
 use crate::config::document::read_system_alone;
+use crate::config::messages::Mistake;
 use crate::matrices::matrices;
 use crate::plan::Plan;
 use crate::report::folder::{default_folder, prepare};
@@ -43,6 +44,9 @@ fn try_run(words: &Words) -> Result<Status, Status> {
         Status::Refused
     })?;
     complain_of(document, &document.warnings);
+    let doubtful: Vec<Mistake> =
+        found.still.built.doubtful.iter().map(|(_, mistake)| Mistake { warning: true, ..mistake.clone() }).collect();
+    complain_of(document, &doubtful);
     let written = write::matrices(staging, document, &found).map_err(|error| {
         complain(&format!("error: the results could not be written to {}: {error}.\n", folder.display()));
         Status::Machine

@@ -72,6 +72,8 @@ pub struct Document {
     pub basis: Basis,
     /// Names of the states as built.
     pub built_names: Vec<String>,
+    /// Levels that the file names somewhere.
+    pub named_levels: Vec<usize>,
     /// Named matrices.
     pub operators: Vec<Operator>,
     /// Drives.
@@ -335,7 +337,8 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     operators.extend(super::system::natural_operators(&known_system));
     if let Some(system) = &system {
         levels_from_themselves(reader, system);
-        reader.parts = system.parts();
+        // an expansion in new states has no parts
+        reader.parts = if system.names == built_names { system.parts() } else { Vec::new() };
     }
     let (drives, drive_names) = match root.get("drives") {
         Some(node) if readable => super::drives::read_drives(reader, node, &known_system, &operators),
@@ -422,6 +425,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         system,
         basis,
         built_names,
+        named_levels: std::mem::take(&mut reader.named_levels),
         operators,
         drives,
         envelopes,

@@ -152,6 +152,8 @@ pub struct Reader {
     pub defaults: Vec<(String, String)>,
     /// Whether only the system is wanted: a sequence and a start may then be left out.
     pub system_alone: bool,
+    /// Levels that the file names somewhere, in the order met.
+    pub named_levels: Vec<usize>,
     /// Parts of the system with the names of their levels; none where it has no parts.
     pub parts: Vec<(String, Vec<String>)>,
     /// Whether the working basis is the one as built.
@@ -192,6 +194,7 @@ impl Reader {
             archive: None,
             defaults: Vec::new(),
             system_alone: false,
+            named_levels: Vec::new(),
             parts: Vec::new(),
             as_built: true,
             structural: Vec::new(),
@@ -799,7 +802,9 @@ impl Reader {
     /// The index of a level by its name.
     pub fn level(&mut self, node: &Node) -> Option<usize> {
         let names = self.level_names();
-        self.name_among(node, "level", &names)
+        let found = self.name_among(node, "level", &names);
+        self.named_levels.extend(found);
+        found
     }
 
     /// Two different levels, as `[a, b]`.
@@ -927,7 +932,10 @@ impl Reader {
             Gap(a, b) => {
                 let names = self.level_names();
                 let energy = |reader: &mut Self, name: &String| match names.iter().position(|known| known == name) {
-                    Some(index) => reader.level_energy(index),
+                    Some(index) => {
+                        reader.named_levels.push(index);
+                        reader.level_energy(index)
+                    }
                     None => {
                         reader.unknown(place, "level", name, &names);
                         None

@@ -85,6 +85,8 @@ pub enum Item {
     Gate(Box<Gate>),
     /// Levels of the driven system, over this period.
     QuasiEnergies(Quantity),
+    /// Populations, Bloch vector and purity of the part of this index.
+    Part(usize),
     /// What left the system.
     Lost,
     /// The steady state of the last stretch; where it was asked for.
@@ -144,7 +146,7 @@ impl Record {
     }
 }
 
-const KEYS: [&str; 20] = [
+const KEYS: [&str; 21] = [
     "every",
     "at",
     "populations",
@@ -165,8 +167,9 @@ const KEYS: [&str; 20] = [
     "steady",
     "shots",
     "error_budget",
+    "part",
 ];
-const LATER: [&str; 3] = ["part", "levels", "transitions"];
+const LATER: [&str; 2] = ["levels", "transitions"];
 
 /// Reads `record:`, or fills in its defaults.
 pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operator], used: &mut Vec<String>) -> Option<Record> {
@@ -228,6 +231,12 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
             "steady" => switched(reader, value, "steady", Item::Steady(entry.place), &mut items),
             "shots" => read_shots(reader, value).map(|shots| Item::Shots(Box::new(shots))),
             "error_budget" => read_budget(reader, value).map(Item::ErrorBudget),
+            "part" => {
+                let found = read_parts(reader, value);
+                good &= found.is_some();
+                items.extend(found.unwrap_or_default().into_iter().map(Item::Part));
+                continue;
+            }
             "fidelity" => read_fidelity(reader, value).map(Item::Fidelity),
             "quasi_energies" => read_period(reader, value).map(Item::QuasiEnergies),
             "gate" => read_gate(reader, value, operators, used).map(|gate| Item::Gate(Box::new(gate))),
@@ -250,6 +259,22 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
 /// `true` records the item; `false` leaves it out (an empty list of populations is the mark of nothing).
 fn switched(reader: &mut Reader, node: &Node, what: &str, item: Item, _items: &mut [Item]) -> Option<Item> {
     reader.truth(node, what).map(|on| if on { item } else { Item::Populations(Vec::new()) })
+}
+
+/// `part:` the name of a part, or a list of names.
+fn read_parts(reader: &mut Reader, node: &Node) -> Option<Vec<usize>> {
+    let names: Vec<String> = reader.parts.iter().map(|(name, _)| name.clone()).collect();
+    if names.is_empty() {
+        let expected = "for a system of parts, in its basis as built or its eigenstates".to_string();
+        let example = "system: {parts: {electron: ..}}".to_string();
+        reader.error(node.place, Fault::Shape { what: "part".to_string(), expected, example });
+        return None;
+    }
+    let found: Vec<Option<usize>> = match node.items() {
+        Some(items) => items.iter().map(|item| reader.name_among(item, "part", &names)).collect(),
+        None => vec![reader.name_among(node, "part", &names)],
+    };
+    found.into_iter().collect()
 }
 
 fn levels(reader: &mut Reader, node: &Node, what: &str) -> Option<Vec<usize>> {

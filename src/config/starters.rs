@@ -70,6 +70,24 @@ pub const STARTERS: &[Starter] = &[
         beside: &[],
     },
     Starter {
+        kind: "spin-pair",
+        about: "an electron and a nucleus with hyperfine coupling: a microwave flips one where the other points up",
+        text: include_str!("../../configs/spin-pair.yaml"),
+        beside: &[],
+    },
+    Starter {
+        kind: "clock",
+        about: "an atom from its constants in a field: a microwave pulse on its clock line, and what leaks to the neighbours",
+        text: include_str!("../../configs/clock.yaml"),
+        beside: &[],
+    },
+    Starter {
+        kind: "cavity",
+        about: "a mode coupled to a ladder of levels: one quantum passes from one to the other and back",
+        text: include_str!("../../configs/cavity.yaml"),
+        beside: &[],
+    },
+    Starter {
         kind: "strong-spin",
         about: "a slow spin driven hard: dropped terms that matter, named one by one",
         text: include_str!("../../configs/strong-spin.yaml"),

@@ -16,6 +16,7 @@ mod lost;
 mod mean;
 mod outside;
 mod overlap;
+mod part;
 mod population;
 mod propagator;
 mod quasi;
@@ -122,6 +123,8 @@ pub fn observables<'a>(document: &Document, built: &Built, values: &[f64], energ
             }
             Item::OutsideOf(levels) => Box::new(outside::Outside::new(levels.clone(), loses(problem))),
             Item::Lost => Box::new(lost::Lost),
+            // what is averaged over noise is linear in the state; a purity is not
+            Item::Part(which) => Box::new(part::PartAlone::new(&document.system.parts(), *which, document.noise.is_empty())),
             Item::Coherence(pairs) => Box::new(coherence::Coherences::new(names, pairs)),
             Item::Bloch(pairs) => Box::new(bloch::BlochVectors::new(names, pairs)),
             Item::MeanOf(operators) => Box::new(mean::Means::new(document, built, values, operators)),

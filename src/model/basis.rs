@@ -14,7 +14,6 @@ use num_complex::Complex64;
 use super::built::Built;
 use crate::config::basis::{judge, Basis, NewState};
 use crate::config::messages::{Fault, Mistake};
-use crate::config::place::Place;
 use crate::config::system::functions::Orthogonalise;
 use crate::config::tape::Wide;
 use crate::problem::Matrix;
@@ -35,7 +34,11 @@ pub fn change(mut built: Built, basis: &Basis, names: &[String], values: &[f64])
             } else {
                 match by_growth(&eigen, &built.grown) {
                     Some(order) => order,
-                    None => by_overlap(&eigen, names, *place)?,
+                    None => {
+                        let (order, doubtful) = by_overlap(&eigen, names);
+                        built.doubtful = doubtful.into_iter().map(|(level, fault)| (level, Mistake::error(*place, fault))).collect();
+                        order
+                    }
                 }
             };
             let size = names.len();
@@ -220,22 +223,45 @@ fn by_growth(eigen: &Eigen, grown: &[(i32, f64)]) -> Option<Vec<usize>> {
     Some(order)
 }
 
-/// For each state as built the eigenstate that bears its name.
-fn by_overlap(eigen: &Eigen, names: &[String], place: Place) -> Result<Vec<usize>, Mistake> {
+/// For each state as built the eigenstate that bears its name, and the names that none overlaps by more than half: those go, the
+/// largest overlap first, to what is left.
+fn by_overlap(eigen: &Eigen, names: &[String]) -> (Vec<usize>, Vec<(usize, Fault)>) {
     let size = names.len();
     let mut order = vec![usize::MAX; size];
+    let mut left = Vec::new();
     for k in ascending(eigen) {
         let weight = |row: usize| eigen.vectors[(row, k)].norm_sqr();
-        let mut rows: Vec<usize> = (0..size).collect();
-        rows.sort_by(|a, b| weight(*b).total_cmp(&weight(*a)));
-        let (first, second) = (rows[0], rows.get(1).copied().unwrap_or(rows[0]));
-        if !(weight(first) > 0.5 + 1e-12) {
-            let candidates = [(names[first].clone(), weight(first)), (names[second].clone(), weight(second))];
-            return Err(Mistake::error(place, Fault::NoLargestOverlap { energy_hz: eigen.energies[k].value(), candidates }));
+        let first = (0..size).max_by(|a, b| weight(*a).total_cmp(&weight(*b)).then(b.cmp(a))).unwrap_or(k);
+        if weight(first) > 0.5 + 1e-12 {
+            order[first] = k;
+        } else {
+            left.push(k);
         }
-        order[first] = k;
     }
-    Ok(order)
+    let mut doubtful = Vec::new();
+    let mut free: Vec<usize> = (0..size).filter(|row| order[*row] == usize::MAX).collect();
+    while !left.is_empty() {
+        let pairs = left.iter().flat_map(|k| free.iter().map(move |row| (*k, *row)));
+        let weight = |(k, row): (usize, usize)| eigen.vectors[(row, k)].norm_sqr();
+        // of equal overlaps the state written first and the lower eigenstate
+        let best = pairs.reduce(|best, next| if weight(next) > weight(best) + 1e-12 { next } else { best });
+        let Some((k, row)) = best else { break };
+        order[row] = k;
+        left.retain(|other| *other != k);
+        free.retain(|other| *other != row);
+        doubtful.push((row, unclear(eigen, k, names)));
+    }
+    (order, doubtful)
+}
+
+/// The two states that an eigenstate could be named by.
+fn unclear(eigen: &Eigen, k: usize, names: &[String]) -> Fault {
+    let weight = |row: usize| eigen.vectors[(row, k)].norm_sqr();
+    let mut rows: Vec<usize> = (0..names.len()).collect();
+    rows.sort_by(|a, b| weight(*b).total_cmp(&weight(*a)));
+    let candidate = |row: usize| (names[row].clone(), weight(row));
+    let candidates = [candidate(rows[0]), candidate(rows.get(1).copied().unwrap_or(rows[0]))];
+    Fault::NoLargestOverlap { energy_hz: eigen.energies[k].value(), candidates }
 }
 
 /// The columns of expansions, made orthonormal where that is asked for.

@@ -5,6 +5,7 @@ use std::sync::Arc;
 use num_complex::Complex64;
 
 use crate::config::drives::Light;
+use crate::config::messages::Mistake;
 use crate::config::tape::Wide;
 use crate::problem::Matrix;
 
@@ -100,6 +101,8 @@ pub struct Built {
     pub overlap: Option<Matrix>,
     /// Sum over the kept levels of (2 mass/hbar^2)(E_m - E_n) |x_mn|^2, level by level; empty where there is no such sum.
     pub sum_rule: Vec<f64>,
+    /// Working states whose name no state as built overlaps by more than half, and what is to be said of it.
+    pub doubtful: Vec<(usize, Mistake)>,
     /// Of each state as built a label that the static matrix does not mix, and its energy without a field: eigenstates of one label
     /// are named in this order. Empty where names go by overlap alone.
     pub grown: Vec<(i32, f64)>,
@@ -124,6 +127,7 @@ impl Built {
             overlap: None,
             sum_rule: Vec::new(),
             grown: Vec::new(),
+            doubtful: Vec::new(),
             basis: None,
             lost_hz: 0.0,
         }

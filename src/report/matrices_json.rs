@@ -88,6 +88,7 @@ pub fn result(document: &Document, found: &Matrices) -> Value {
         );
     }
     put("notes", json!(built.notes));
-    put("warnings", document.warnings.iter().map(|warning| one_line(&document.sources, warning)).collect());
+    let warnings = document.warnings.iter().chain(built.doubtful.iter().map(|(_, mistake)| mistake));
+    put("warnings", warnings.map(|warning| one_line(&document.sources, warning)).collect());
     Value::Object(result)
 }

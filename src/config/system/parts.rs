@@ -302,5 +302,7 @@ pub fn read_joint_level(reader: &mut Reader, node: &Node, parts: &[(String, Vec<
         let level = reader.need(node, name, "start", &levels[0]).and_then(|level| reader.name_among(level, "level", levels));
         joint = joint.zip(level).map(|(joint, level)| joint * levels.len() + level);
     }
-    joint.filter(|level| good && *level < MOST_LEVELS)
+    let joint = joint.filter(|level| good && *level < MOST_LEVELS);
+    reader.named_levels.extend(joint);
+    joint
 }

@@ -117,6 +117,11 @@ pub fn records(facts: &Facts) -> Vec<String> {
         Item::AdiabaticPopulations => "populations of the instantaneous eigenstates".to_string(),
         Item::Fidelity(to) => format!("fidelity, the squared overlap with {}", state(facts, to)),
         Item::QuasiEnergies(period) => format!("quasi-energies over {}", short(facts.point.values[period.register as usize], "s")),
+        Item::Part(part) => {
+            let parts = document.system.parts();
+            let name = parts.get(*part).map_or("", |(name, _)| name.as_str());
+            format!("{name} alone: populations, Bloch vector, purity")
+        }
         Item::Lost => "population that left the system".to_string(),
         Item::Steady(_) => "steady state of the last stretch".to_string(),
         Item::Shots(shots) => {
