@@ -4,11 +4,13 @@ mod check;
 mod compare;
 mod explain;
 mod matrices;
+mod merge;
 mod new;
 mod plot;
 mod run;
 mod scan;
 mod selftest;
+mod status;
 
 use std::io::Write;
 use std::path::PathBuf;
@@ -62,6 +64,10 @@ enum Verb {
     Scan(scan::Words),
     /// Write every operator of a system as a matrix, with its levels, lines and strengths
     Matrices(matrices::Words),
+    /// Tell how far the scan in a folder is
+    Status(status::Words),
+    /// Join the parts of a scan into one result, or tell what is missing
+    Merge(merge::Words),
     /// Draw the plots of a result folder again
     Plot(plot::Words),
     /// Check the program on this machine against closed forms
@@ -113,6 +119,8 @@ pub fn main() -> ExitCode {
         Verb::Compare(words) => compare::run(&words),
         Verb::Scan(words) => scan::scan(&words),
         Verb::Matrices(words) => matrices::run(&words),
+        Verb::Status(words) => status::status(&words),
+        Verb::Merge(words) => merge::merge(&words),
         Verb::Plot(words) => plot::plot(&words),
         Verb::Selftest(words) => selftest::selftest(&words),
     };

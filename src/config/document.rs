@@ -164,6 +164,13 @@ pub fn read_archived(folder: &Path, set: &[(String, String)]) -> Result<Document
     }
 }
 
+/// Reads a config from the text that a store has kept; the files it names lie in `inputs/` of the folder.
+pub fn read_kept(folder: &Path, text: &str, set: &[(String, String)]) -> Result<Document, Refusal> {
+    let mut sources = Sources::default();
+    let file = sources.add(&folder.join("config.yaml"), text.as_bytes().to_vec(), text.to_string());
+    read_sources(sources, file, folder, Some(folder.join("inputs")), set)
+}
+
 /// The same from a text; files that it names lie in `folder`.
 pub fn read_str(name: &str, text: &str, folder: &Path, set: &[(String, String)]) -> Result<Document, Refusal> {
     let mut sources = Sources::default();

@@ -155,6 +155,8 @@ pub struct Opening<'a> {
     pub replace: bool,
     /// Damaged stores are to be mended.
     pub repair: bool,
+    /// How often the queue has started this part again.
+    pub writer: u32,
 }
 
 impl Opening<'_> {
@@ -177,7 +179,7 @@ impl Opening<'_> {
     fn with_store(&self) -> Result<Opened, ScanFault> {
         let folder = self.folder;
         let guard = hold(folder, self.head.part == Part::WHOLE)?;
-        let path = folder.join(self.head.part.file_name());
+        let mut path = folder.join(self.head.part.file_name(0));
         let mut damaged = Vec::new();
         for content in read_all(folder)? {
             self.same(&content)?;
@@ -192,7 +194,14 @@ impl Opening<'_> {
         if !damaged.is_empty() {
             return Err(ScanFault::Damaged(damaged));
         }
-        let (mut store, content) = Store::open(&path, self.head)?;
+        let (mut store, content) = match Store::open(&path, self.head) {
+            // the node of the first writer may be cut off: what it still writes is the same, in a file of its own
+            Err(StoreFault::Locked(_)) if self.writer > 0 => {
+                path = folder.join(self.head.part.file_name(self.writer));
+                Store::open(&path, self.head)?
+            }
+            opened => opened?,
+        };
         let failed = |error: io::Error| ScanFault::Io(path.clone(), error);
         store.cut_torn().map_err(failed)?;
         archive_into(folder, self.document).map_err(failed)?;

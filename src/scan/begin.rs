@@ -30,6 +30,7 @@ pub fn head(setup: &Setup, fingerprint: &str, part: Part) -> Head {
         lanes: ONE_BY_ONE.to_string(),
         points: setup.grid.points(),
         part,
+        tile: order(setup, part).tile,
         columns: setup.columns.iter().map(|column| column.name.clone()).collect(),
         traced: setup.traced.clone(),
         config: (source.path.file_name().unwrap_or_default().to_string_lossy().into_owned(), source.text.clone()),

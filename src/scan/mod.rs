@@ -18,11 +18,13 @@
 //! | `begin.rs` | the head of a store, and the order of the points |
 //! | `engine.rs` | threads, writing, stopping |
 //! | `summary.rs` | counts, errors, extremes, the best point |
+//! | `cluster.rs` | scripts for a queue |
 //! | `limit.rs` | threads and time that a queue grants |
 
 pub mod begin;
 pub mod bits;
 pub mod changed;
+pub mod cluster;
 pub mod engine;
 pub mod evaluate;
 pub mod grid;

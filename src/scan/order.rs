@@ -1,7 +1,7 @@
 //! In which order the points of a part are computed.
 
 use super::bits::Bits;
-use super::store::Part;
+use super::store::{Head, Part};
 
 /// Points of a part, in tiles of consecutive points; tile k belongs to part k modulo the number of parts.
 #[derive(Debug, Clone, Copy)]
@@ -15,6 +15,11 @@ pub struct Order {
 }
 
 impl Order {
+    /// The order of the points of a part, as a store says it.
+    pub fn of(head: &Head, part: Part) -> Order {
+        Order { points: head.points, tile: head.tile, part }
+    }
+
     /// The part that a point belongs to, from 1.
     pub fn part_of(&self, point: u64) -> u64 {
         point / self.tile % self.part.of + 1

@@ -31,14 +31,20 @@ impl Part {
     /// The whole scan.
     pub const WHOLE: Part = Part { number: 1, of: 1 };
 
-    /// Name of its file.
-    pub fn file_name(self) -> String {
-        format!("part-{}-of-{}.store", self.number, self.of)
+    /// Name of its file. A further writer of the part, whose first one cannot be asked whether it still lives, takes a file of
+    /// its own.
+    pub fn file_name(self, writer: u32) -> String {
+        match writer {
+            0 => format!("part-{}-of-{}.store", self.number, self.of),
+            further => format!("part-{}-of-{}.{further}.store", self.number, self.of),
+        }
     }
 
     /// The part that a file of this name holds.
     pub fn of_file_name(name: &str) -> Option<Part> {
-        let (number, of) = name.strip_prefix("part-")?.strip_suffix(".store")?.split_once("-of-")?;
+        let (number, rest) = name.strip_prefix("part-")?.strip_suffix(".store")?.split_once("-of-")?;
+        let (of, writer) = rest.split_once('.').unwrap_or((rest, "0"));
+        writer.parse::<u32>().ok()?;
         let part = Part { number: number.parse().ok()?, of: of.parse().ok()? };
         (part.number >= 1 && part.number <= part.of).then_some(part)
     }
@@ -57,6 +63,8 @@ pub struct Head {
     pub points: u64,
     /// Its share of them.
     pub part: Part,
+    /// Points that stay together in one part.
+    pub tile: u64,
     /// Names of the columns.
     pub columns: Vec<String>,
     /// Names of the columns of the traces.
@@ -78,7 +86,7 @@ impl Head {
     fn to_json(&self) -> Value {
         json!({
             "program": self.program, "fingerprint": self.fingerprint, "lanes": self.lanes, "points": self.points,
-            "part": self.part.number, "parts": self.part.of, "columns": self.columns, "traced": self.traced,
+            "part": self.part.number, "parts": self.part.of, "tile": self.tile, "columns": self.columns, "traced": self.traced,
             "config": [self.config.0, self.config.1], "inputs": self.inputs, "set": self.set,
         })
     }
@@ -94,6 +102,7 @@ impl Head {
             lanes: text(&json["lanes"])?,
             points: json["points"].as_u64()?,
             part: Part { number: json["part"].as_u64()?, of: json["parts"].as_u64()? },
+            tile: json["tile"].as_u64().filter(|tile| *tile > 0)?,
             columns: texts(&json["columns"])?,
             traced: texts(&json["traced"])?,
             config: pair(&json["config"])?,

@@ -3,6 +3,7 @@
 mod dry_run;
 mod one_point;
 pub(super) mod progress;
+mod queue;
 
 use std::path::Path;
 use std::sync::atomic::AtomicBool;
@@ -44,6 +45,12 @@ pub(super) struct Words {
     /// Compute one part of so many, such as 3/24; nutate merge joins them
     #[arg(long, value_name = "K/N")]
     part: Option<String>,
+    /// Write and submit a job array of all parts, and a job that merges them; known: slurm. With --dry-run only write it out
+    #[arg(long, value_name = "NAME")]
+    scheduler: Option<String>,
+    /// Further words for the scheduler, such as "--partition=long --time=8:00:00"
+    #[arg(long, value_name = "WORDS", requires = "scheduler")]
+    scheduler_options: Option<String>,
     /// Threads, in place of run / threads
     #[arg(long, value_name = "COUNT")]
     threads: Option<usize>,
@@ -67,13 +74,22 @@ fn try_scan(words: &Words) -> Result<Status, Status> {
     let document = read_config(&words.common)?;
     let setup = set_up(document)?;
     let run = run_of(&setup, words.threads);
+    if let Some(scheduler) = &words.scheduler {
+        return queue::submit(&setup, words, scheduler);
+    }
     if words.dry_run {
         return Ok(dry_run::dry_run(&setup, &run, words.results.json));
     }
     let folder = words.results.folder.clone().unwrap_or_else(|| default_folder(setup.document()));
     let head = head(&setup, &fingerprint(setup.document()), part);
-    let opening =
-        Opening { folder: &folder, document: setup.document(), head: &head, replace: words.results.replace, repair: words.repair };
+    let opening = Opening {
+        folder: &folder,
+        document: setup.document(),
+        head: &head,
+        replace: words.results.replace,
+        repair: words.repair,
+        writer: std::env::var("SLURM_RESTART_COUNT").ok().and_then(|count| count.parse().ok()).unwrap_or(0),
+    };
     let opened = match opening.open().map_err(|fault| refuse_folder(&fault))? {
         Opened::Complete(result) => return Ok(complete_already(words, &folder, &result)),
         Opened::Ready(opened) => *opened,

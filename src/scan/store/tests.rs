@@ -8,6 +8,7 @@ fn head() -> Head {
         lanes: "one".to_string(),
         points: 100,
         part: Part::WHOLE,
+        tile: 1,
         columns: vec!["a".to_string(), "b".to_string()],
         traced: Vec::new(),
         config: ("c.yaml".to_string(), "format: 1\n".to_string()),
@@ -100,4 +101,15 @@ fn exact_one_process_at_a_time() {
     assert!(matches!(Store::open(&path, &head()), Err(StoreFault::Locked(_))));
     drop(first);
     assert!(Store::open(&path, &head()).is_ok());
+}
+
+#[test]
+fn exact_file_names_say_their_part() {
+    let part = Part { number: 3, of: 24 };
+    assert_eq!(part.file_name(0), "part-3-of-24.store");
+    assert_eq!(Part::of_file_name(&part.file_name(0)), Some(part));
+    assert_eq!(Part::of_file_name(&part.file_name(2)), Some(part));
+    for other in ["part-0-of-2.store", "part-3-of-2.store", "part-1-of-2.repaired", "part-1-of-2.x.store", "scan.csv"] {
+        assert_eq!(Part::of_file_name(other), None, "{other}");
+    }
 }
