@@ -100,6 +100,8 @@ pub struct Scan {
     pub derived: Vec<(String, Derived)>,
     /// What is best.
     pub best: Option<Best>,
+    /// Levels at which a map of a quantity without dimension has a line.
+    pub contours: Vec<f64>,
     /// Where the section stands.
     pub place: Place,
 }
@@ -160,7 +162,7 @@ fn digits_15(value: f64) -> f64 {
 
 /// Reads `scan:`.
 pub fn read_scan(reader: &mut Reader, node: &Node) -> Option<Scan> {
-    let known = ["axes", "keep", "same_noise_at_every_point", "derived", "best"];
+    let known = ["axes", "keep", "same_noise_at_every_point", "derived", "best", "contours"];
     reader.fields(node, "scan", &known, &[("axis", "All axes stand in one list: axes.")])?;
     let axes = read_axes(reader, node);
     let keep = match node.get("keep") {
@@ -179,7 +181,12 @@ pub fn read_scan(reader: &mut Reader, node: &Node) -> Option<Scan> {
         Some(best) => read_best(reader, best, derived.as_deref().unwrap_or_default()).map(Some),
         None => Some(None),
     };
-    Some(Scan { axes: axes?, keep: keep?, same_noise: same_noise?, derived: derived?, best: best?, place: node.place })
+    let contours = match node.get("contours") {
+        Some(levels) => read_contours(reader, levels),
+        None => Some(Vec::new()),
+    };
+    let contours = contours?;
+    Some(Scan { contours, axes: axes?, keep: keep?, same_noise: same_noise?, derived: derived?, best: best?, place: node.place })
 }
 
 fn read_axes(reader: &mut Reader, node: &Node) -> Option<Vec<Axis>> {
@@ -530,6 +537,14 @@ fn read_best(reader: &mut Reader, node: &Node, derived: &[(String, Derived)]) ->
         }
     };
     Some(Best { of, place: of_node.place, make, tolerance })
+}
+
+fn read_contours(reader: &mut Reader, node: &Node) -> Option<Vec<f64>> {
+    let items = reader.list(node, "contours", "contours: [0.5, 0.9]")?;
+    let found: Vec<Option<Quantity>> = items.iter().map(|item| reader.plain(item, "a level of contours")).collect();
+    let found: Vec<Quantity> = found.into_iter().collect::<Option<_>>()?;
+    let values = reader.tape.as_written();
+    Some(found.iter().map(|quantity| values[quantity.register as usize]).collect())
 }
 
 /// The dimension of a final quantity, by its name.

@@ -34,7 +34,7 @@ pub fn write(staging: Staging, shelf: &Shelf, finished: &Finished, points: &Poin
     }
     names.push("result.json".to_string());
     let mut not_drawn = Vec::new();
-    for (name, figure) in of_scan(finished, points) {
+    for (name, figure) in of_scan(points) {
         match figure {
             Ok(drawn) => names.extend(figures::save(&side, &name, &drawn)?.into_iter().take(1)),
             Err(reason) => not_drawn.push((name, reason.to_string())),

@@ -3,16 +3,16 @@
 use super::scan_folder::spaced;
 use super::scan_json::{reached, Finished};
 use super::summary::with_error;
-use crate::config::messages::short;
+use crate::config::messages::{short, short_with_unit};
 use crate::report::heading::heading;
 use crate::scan::setup::Setup;
 
 /// A time for people: `47 s`, `12 min`, `3 h 20 min`.
 pub fn duration(seconds: f64) -> String {
-    if seconds < 1e-4 {
-        crate::config::messages::short_with_unit(seconds, "s")
+    if seconds < 9.95e-4 {
+        format!("{:.1} us", seconds * 1e6)
     } else if seconds < 0.0995 {
-        format!("{:.2} ms", seconds * 1e3)
+        format!("{:.1} ms", seconds * 1e3)
     } else if seconds < 9.95 {
         format!("{seconds:.1} s")
     } else if seconds < 99.5 {
@@ -42,7 +42,10 @@ pub fn at(setup: &Setup, point: u64) -> String {
 /// A value of a column with its unit.
 fn value(setup: &Setup, column: usize, value: f64, error: f64) -> String {
     let column = &setup.columns[column];
-    let unit = if column.unit == "1" || column.name.ends_with(&column.unit) { String::new() } else { format!(" {}", column.unit) };
+    if ["s", "Hz"].contains(&column.unit.as_str()) {
+        return format!("{} +- {}", short_with_unit(value, &column.unit), short_with_unit(error, &column.unit));
+    }
+    let unit = if column.unit == "1" { String::new() } else { format!(" {}", column.unit) };
     format!("{}{unit}", with_error(value, error))
 }
 
@@ -158,6 +161,6 @@ mod tests {
     #[test]
     fn exact_times_for_people() {
         let said: Vec<String> = [0.02, 3.0, 47.2, 720.0, 12_000.0, 400_000.0].map(duration).to_vec();
-        assert_eq!(said, ["20.00 ms", "3.0 s", "47 s", "12 min", "3 h 20 min", "4.6 days"]);
+        assert_eq!(said, ["20.0 ms", "3.0 s", "47 s", "12 min", "3 h 20 min", "4.6 days"]);
     }
 }

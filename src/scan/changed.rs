@@ -99,7 +99,7 @@ pub fn change(document: &Document, old: &Head, new: &Head) -> Option<Change> {
 /// Whether a path of keys may differ.
 fn is_free(path: &[String]) -> bool {
     match path.iter().map(String::as_str).collect::<Vec<_>>().as_slice() {
-        ["title" | "output" | "tune" | "fit" | "compare", ..] | ["scan", "best", ..] => true,
+        ["title" | "output" | "tune" | "fit" | "compare", ..] | ["scan", "best" | "contours", ..] => true,
         ["run", inner, ..] => *inner != "check_fraction",
         _ => false,
     }

@@ -118,7 +118,15 @@ mod tests {
     #[test]
     fn exact_last_axis_is_fastest_and_axes_in_step_share_their_place() {
         let axes = vec![axis("a", 3, None), axis("b", 3, Some(0)), axis("c", 2, None)];
-        let scan = Scan { axes, keep: Keep::Final, same_noise: true, derived: Vec::new(), best: None, place: Place::default() };
+        let scan = Scan {
+            axes,
+            keep: Keep::Final,
+            same_noise: true,
+            derived: Vec::new(),
+            best: None,
+            contours: Vec::new(),
+            place: Place::default(),
+        };
         let grid = Grid::new(&scan);
         assert_eq!(grid.points(), 6);
         let rows: Vec<Vec<f64>> = (0..6).map(|point| grid.values(point)).collect();

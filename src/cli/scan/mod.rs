@@ -318,11 +318,12 @@ impl Finishing<'_> {
         };
         let short_of = scan_text::not_reached(&finished);
         finished.warnings.extend(short_of.clone());
+        let points = Points::of(setup, shelf, summary.best.clone(), through.unwrap_or_default()).map_err(failed)?;
         let staging = prepare_any(self.folder).map_err(|fault| {
             complain(&format!("{fault}\n"));
             Status::Machine
         })?;
-        let (written, json) = scan_files::write(staging, shelf, &finished, &Points::default()).map_err(failed)?;
+        let (written, json) = scan_files::write(staging, shelf, &finished, &points).map_err(failed)?;
         not_drawn(&written);
         if self.json {
             print(&format!("{}\n", serde_json::to_string_pretty(&json).unwrap_or_default()));

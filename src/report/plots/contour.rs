@@ -61,7 +61,7 @@ fn joined(pieces: Vec<[(f64, f64); 2]>) -> Vec<Vec<(f64, f64)>> {
         }
     }
     let mut used = vec![false; pieces.len()];
-    let mut follow = |line: &mut Vec<(f64, f64)>, used: &mut Vec<bool>| {
+    let follow = |line: &mut Vec<(f64, f64)>, used: &mut Vec<bool>| {
         while let Some(end) = line.last().copied() {
             let next = at.get(&key(end)).and_then(|here| here.iter().copied().find(|k| !used[*k]));
             let Some(k) = next else { return };
@@ -92,8 +92,7 @@ mod tests {
     #[test]
     fn exact_contour_of_a_cone_is_one_closed_circle() {
         let size = 41;
-        let values: Vec<f64> =
-            (0..size * size).map(|k| ((k % size) as f64 - 20.0).hypot((k / size) as f64 - 20.0)).collect();
+        let values: Vec<f64> = (0..size * size).map(|k| ((k % size) as f64 - 20.0).hypot((k / size) as f64 - 20.0)).collect();
         let lines = contour(&values, size, 12.3);
         assert_eq!(lines.len(), 1);
         let line = &lines[0];

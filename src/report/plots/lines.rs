@@ -121,7 +121,11 @@ impl Area {
         self.curves(scene, panel, &laid);
         if let Some(at) = panel.at {
             let x = laid.pixel(at);
-            scene.curve(vec![(x, self.top), (x, self.bottom)], 1.6, super::palette::Look { color: SOFT_INK, marker: None, dash: Some((7.0, 5.0)) });
+            scene.curve(
+                vec![(x, self.top), (x, self.bottom)],
+                1.6,
+                super::palette::Look { color: SOFT_INK, marker: None, dash: Some((7.0, 5.0)) },
+            );
         }
     }
 

@@ -56,7 +56,11 @@ pub fn map(figure: &MapFigure) -> Result<Drawn, PlotError> {
         _ => return Err(PlotError::Nothing { title: figure.title.clone() }),
     };
     // one value alone is a colour in the middle
-    let (low, top) = if top - low > 1e-12 * low.abs().max(top.abs()) { (low, top) } else { (low - 0.5 * low.abs().max(1.0), low + 0.5 * low.abs().max(1.0)) };
+    let (low, top) = if top - low > 1e-12 * low.abs().max(top.abs()) {
+        (low, top)
+    } else {
+        (low - 0.5 * low.abs().max(1.0), low + 0.5 * low.abs().max(1.0))
+    };
     let display = engineering(low.abs().max(top.abs()), &figure.unit);
     let marks = ticks(display.shown(low), display.shown(top), 7);
     let mut scene = Scene::new(WIDTH, HEIGHT);

@@ -4,16 +4,19 @@
 //! Nothing is computed here but what drawing needs: a unit prefix, ticks, and thinning to the pixel grid.
 //!
 //! Figures: `traces` (states against time), `envelopes` (pulses against time), `spectrum` (pulses against frequency),
-//! `ledger` (turning terms of a frame), `compare` (variants against time, and their differences).
+//! `ledger` (turning terms of a frame), `compare` (variants against time, and their differences), `map` and `lines` (scans).
 //! Parts: `scene` and `raster` (painting), `font`, `palette`, `scale` (prefixes, ticks), `decades` (logarithmic axes), `thin`
 //! (pixel grid), `place` (labels kept apart), `near` (labels beside points), `panel` (one plot area with its axis and curves),
-//! `frame` (title, fingerprint, time axis), `marks` (named moments), `windows` (broken time axis).
+//! `ruler` (axes of scans), `contour` and `shades` (maps), `frame` (title, fingerprint, time axis), `marks` (named moments), `windows` (broken time axis).
 mod compare;
+mod contour;
 mod decades;
 mod envelopes;
 mod font;
 mod frame;
 mod ledger;
+mod lines;
+mod map;
 mod marks;
 mod near;
 #[cfg(test)]
@@ -22,8 +25,10 @@ mod palette;
 mod panel;
 mod place;
 mod raster;
+mod ruler;
 mod scale;
 mod scene;
+mod shades;
 mod spectrum;
 mod thin;
 mod traces;
@@ -32,6 +37,9 @@ mod windows;
 pub use compare::{compare, CompareFigure, ComparePanel, CompareSeries};
 pub use envelopes::{envelopes, EnvelopeCurve, EnvelopesFigure};
 pub use ledger::{ledger, LedgerFigure, LedgerTerm};
+pub use lines::{lines, LinesFigure, LinesPanel};
+pub use map::{map, MapFigure};
+pub use ruler::Ruler;
 pub use scale::quantity;
 pub use scene::Drawn;
 pub use spectrum::{spectrum, PulseSpectrum, SpectrumFigure};

@@ -2,7 +2,7 @@
 //!
 //! plotters' own bitmap works on whole pixels, on which a slow curve turns into a staircase, and fills thick zigzag lines with
 //! holes. Here a line covers each pixel by its distance to the centre line, taken once for the whole path.
-use super::scene::UNITS_PER_PIXEL;
+use super::scene::{Underlay, UNITS_PER_PIXEL};
 use super::{font, PlotError};
 use plotters_backend::text_anchor::HPos;
 use plotters_backend::{BackendColor, BackendCoord, BackendStyle, BackendTextStyle, DrawingBackend, DrawingErrorKind};
@@ -20,31 +20,39 @@ pub struct Raster {
     mask: Vec<f32>,
     /// Rows and columns (first, one past the last) that the shape touched.
     touched: [usize; 4],
+    /// Laid over the background before anything is painted.
+    pub under: Option<Underlay>,
+}
+
+/// Red, green and blue of each pixel as PNG.
+pub fn encoded(pixels: &[u8], width: usize, height: usize, compression: png::Compression) -> Result<Vec<u8>, PlotError> {
+    let failed = |error: png::EncodingError| PlotError::Encoding { reason: error.to_string() };
+    let mut bytes = Vec::new();
+    let mut encoder = png::Encoder::new(&mut bytes, width as u32, height as u32);
+    encoder.set_color(png::ColorType::Rgb);
+    encoder.set_depth(png::BitDepth::Eight);
+    encoder.set_compression(compression);
+    encoder.set_filter(png::FilterType::Paeth);
+    let mut writer = encoder.write_header().map_err(failed)?;
+    writer.write_image_data(pixels).map_err(failed)?;
+    writer.finish().map_err(failed)?;
+    Ok(bytes)
 }
 
 impl Raster {
     /// A white canvas of `width` by `height` pixels.
     pub fn new(width: usize, height: usize) -> Self {
-        let mut raster = Raster { width, height, pixels: vec![255; 3 * width * height], mask: vec![0.0; width * height], touched: [0; 4] };
+        let mut raster =
+            Raster { width, height, pixels: vec![255; 3 * width * height], mask: vec![0.0; width * height], touched: [0; 4], under: None };
         raster.reset();
         raster
     }
 
     /// The image as PNG.
     pub fn png(&self) -> Result<Vec<u8>, PlotError> {
-        let failed = |error: png::EncodingError| PlotError::Encoding { reason: error.to_string() };
-        let mut bytes = Vec::new();
-        let mut encoder = png::Encoder::new(&mut bytes, self.width as u32, self.height as u32);
-        encoder.set_color(png::ColorType::Rgb);
-        encoder.set_depth(png::BitDepth::Eight);
         // Measured on ten curves: fast with Paeth 280 kB in 8 ms, default 172 kB in 45 ms. Only a tall canvas is worth the wait.
         let compression = if self.height > 1800 { png::Compression::Default } else { png::Compression::Fast };
-        encoder.set_compression(compression);
-        encoder.set_filter(png::FilterType::Paeth);
-        let mut writer = encoder.write_header().map_err(failed)?;
-        writer.write_image_data(&self.pixels).map_err(failed)?;
-        writer.finish().map_err(failed)?;
-        Ok(bytes)
+        encoded(&self.pixels, self.width, self.height, compression)
     }
 
     fn reset(&mut self) {
@@ -200,6 +208,15 @@ impl DrawingBackend for Raster {
             // The background.
             let (red, green, blue) = style.color().rgb;
             self.pixels.chunks_exact_mut(3).for_each(|pixel| pixel.copy_from_slice(&[red, green, blue]));
+            if let Some(under) = self.under.take() {
+                let (left, top) = under.corner;
+                for (row, line) in under.pixels.chunks_exact(3 * under.width).enumerate() {
+                    let from = 3 * ((top + row) * self.width + left);
+                    if let Some(place) = self.pixels.get_mut(from..from + line.len()) {
+                        place.copy_from_slice(line);
+                    }
+                }
+            }
             return Ok(());
         }
         if fill {

@@ -42,9 +42,21 @@ pub enum Shape {
     Text { text: String, x: f64, y: f64, size: f64, color: Rgb, anchor: Anchor },
 }
 
+/// Pixels that lie under everything else.
+#[derive(Clone, Debug)]
+pub struct Underlay {
+    /// Pixel of the canvas at which the left upper corner lies.
+    pub corner: (usize, usize),
+    /// Width in pixels.
+    pub width: usize,
+    /// Red, green and blue, row after row.
+    pub pixels: Vec<u8>,
+}
+
 /// Everything on one canvas, painted in order.
 #[derive(Clone, Debug)]
 pub struct Scene {
+    underlay: Option<Underlay>,
     /// Width in pixels.
     pub width: f64,
     /// Height in pixels.
@@ -58,7 +70,12 @@ const DASH_LIMIT: f64 = 8000.0;
 impl Scene {
     /// An empty canvas.
     pub fn new(width: f64, height: f64) -> Self {
-        Scene { width, height, shapes: Vec::new() }
+        Scene { underlay: None, width, height, shapes: Vec::new() }
+    }
+
+    /// Puts pixels under everything else.
+    pub fn underlay(&mut self, underlay: Underlay) {
+        self.underlay = Some(underlay);
     }
 
     /// A text; empty ones are left out.
@@ -127,8 +144,13 @@ impl Scene {
         let mut svg = String::new();
         paint(self, &mut SVGBackend::with_string(&mut svg, size))?;
         let mut raster = Raster::new(self.width as usize, self.height as usize);
+        raster.under = self.underlay.clone();
         paint(self, &mut raster)?;
-        Ok(Drawn { png: raster.png()?, svg: in_pixels(svg, size, (self.width, self.height)) })
+        let mut svg = in_pixels(svg, size, (self.width, self.height));
+        if let Some(underlay) = &self.underlay {
+            svg = with_image(svg, underlay)?;
+        }
+        Ok(Drawn { png: raster.png()?, svg })
     }
 }
 
@@ -137,6 +159,34 @@ fn in_pixels(svg: String, (wide, high): (u32, u32), (width, height): (f64, f64))
     let old = format!("<svg width=\"{wide}\" height=\"{high}\"");
     let new = format!("<svg width=\"{width}\" height=\"{height}\" stroke-linejoin=\"round\" stroke-linecap=\"round\"");
     svg.replacen(&old, &new, 1)
+}
+
+/// Puts pixels behind the background of an SVG, as a PNG within it.
+fn with_image(svg: String, underlay: &Underlay) -> Result<String, PlotError> {
+    let (wide, high) = (underlay.width, underlay.pixels.len() / (3 * underlay.width.max(1)));
+    let png = super::raster::encoded(&underlay.pixels, wide, high, png::Compression::Default)?;
+    let [x, y, w, h] = [underlay.corner.0, underlay.corner.1, wide, high].map(|pixels| pixels as f64 * UNITS_PER_PIXEL);
+    let image = format!(
+        "<image x=\"{x}\" y=\"{y}\" width=\"{w}\" height=\"{h}\" style=\"image-rendering:pixelated\" href=\"data:image/png;base64,{}\"/>\n",
+        base64(&png)
+    );
+    // the background is the first rectangle
+    let at = svg.find("<rect").and_then(|from| Some(from + svg[from..].find("/>")? + 2)).unwrap_or(svg.len());
+    Ok(format!("{}\n{image}{}", &svg[..at], &svg[at..]))
+}
+
+/// Base 64 (RFC 4648, 2006).
+fn base64(bytes: &[u8]) -> String {
+    const LETTERS: &[u8; 64] = b"ABCDEFGHIJKLMNOPQRSTUVWXYZabcdefghijklmnopqrstuvwxyz0123456789+/";
+    let mut text = String::with_capacity(bytes.len().div_ceil(3) * 4);
+    for three in bytes.chunks(3) {
+        let word = three.iter().fold(0u32, |word, byte| word << 8 | u32::from(*byte)) << (8 * (3 - three.len()));
+        for k in 0..4 {
+            let letter = LETTERS[(word >> (18 - 6 * k) & 63) as usize];
+            text.push(if k <= three.len() { char::from(letter) } else { '=' });
+        }
+    }
+    text
 }
 
 /// Pixels in whole backend units, kept in a range where no backend overflows.
@@ -275,6 +325,12 @@ fn paint<B: DrawingBackend>(scene: &Scene, backend: &mut B) -> Result<(), PlotEr
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn exact_base64_of_the_standard() {
+        let found: Vec<String> = ["", "f", "fo", "foo", "foob", "fooba", "foobar"].iter().map(|text| base64(text.as_bytes())).collect();
+        assert_eq!(found, ["", "Zg==", "Zm8=", "Zm9v", "Zm9vYg==", "Zm9vYmE=", "Zm9vYmFy"]);
+    }
 
     #[test]
     fn exact_dashes_cover_their_share() {
