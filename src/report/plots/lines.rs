@@ -105,7 +105,7 @@ impl Area {
             }
         }
         let laid = panel.across.between(self.left, self.right, false);
-        let wanted = ((self.right - self.left) / 130.0).round().max(2.0) as usize;
+        let wanted = ((self.right - self.left) / 105.0).round().max(2.0) as usize;
         let mut free = f64::NEG_INFINITY;
         for (x, text) in laid.ticks(wanted) {
             scene.line(vec![(x.floor() + 0.5, self.top), (x.floor() + 0.5, self.bottom)], 1.0, GRID);
@@ -155,9 +155,13 @@ impl Area {
                     line.iter().for_each(|point| scene.marker(*point, marker, look.color));
                 }
             }
-            // a failed point stands as a cross at the foot
-            for (x, _) in points.iter().filter(|point| point.1.is_none()).take(400) {
-                scene.marker((*x, self.bottom - 10.0), Marker::Cross, SOFT_INK);
+            // a failed point stands as a cross at the foot, or where there are many as a stroke
+            for (x, _) in points.iter().filter(|point| point.1.is_none()) {
+                if points.len() <= DISCS {
+                    scene.marker((*x, self.bottom - 10.0), Marker::Cross, SOFT_INK);
+                } else {
+                    scene.line(vec![(*x, self.bottom - 16.0), (*x, self.bottom - 4.0)], 1.2, SOFT_INK);
+                }
             }
             ends.push(points.iter().rev().find_map(|point| point.1).unwrap_or(self.bottom));
         }

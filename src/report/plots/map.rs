@@ -39,6 +39,8 @@ pub struct MapFigure {
 const BAR: f64 = 34.0;
 /// Space between the map and its bar.
 const GAP: f64 = 46.0;
+/// Contours shorter than this, in pixels, are specks.
+const SHORTEST: f64 = 24.0;
 /// Cells with a failed point.
 const FAILED: [Rgb; 2] = [(150, 150, 150), (244, 244, 244)];
 
@@ -196,6 +198,10 @@ fn lines(scene: &mut Scene, figure: &MapFigure, across: &Laid, up: &Laid, displa
         for line in contour(&figure.values, wide, level) {
             let points: Vec<(f64, f64)> =
                 line.iter().map(|(x, y)| (between(&figure.across.places, *x, across), between(&figure.up.places, *y, up))).collect();
+            let length: f64 = points.windows(2).map(|pair| (pair[1].0 - pair[0].0).hypot(pair[1].1 - pair[0].1)).sum();
+            if length < SHORTEST {
+                continue;
+            }
             // dark on a light rim is seen on every shade
             scene.line(points.clone(), 4.4, (255, 255, 255));
             scene.curve(points.clone(), 2.0, Look { color: INK, marker: None, dash });
@@ -204,9 +210,12 @@ fn lines(scene: &mut Scene, figure: &MapFigure, across: &Laid, up: &Laid, displa
             }
         }
         if let Some(points) = longest.filter(|points| points.len() > 8) {
-            let (x, y) = points[points.len() / 2];
             let text = short_number(display.shown(level));
             let half = font::width(&text, TICK) / 2.0 + 5.0;
+            let (low, high) = (across.pixel_of_bent(f64::NEG_INFINITY), across.pixel_of_bent(f64::INFINITY));
+            let (top, foot) = (up.pixel_of_bent(f64::INFINITY), up.pixel_of_bent(f64::NEG_INFINITY));
+            let (x, y) = points[points.len() / 2];
+            let (x, y) = (x.clamp(low + half, high - half), y.clamp(top + 14.0, foot - 14.0));
             scene.rectangle((x - half, y - 13.0), (x + half, y + 13.0), (255, 255, 255), 0.85);
             scene.text(&text, (x, y), TICK, INK, Anchor::Middle);
         }
