@@ -16,7 +16,7 @@ use crate::measure::{
 };
 use crate::plan::Point;
 use crate::problem::{Channel, Matrix, Problem, Start};
-use crate::propagate::{figure, solve, Asked, CrossCheck, Demand, Method, Solved, Steady};
+use crate::propagate::{figure, solve, solve_from, solve_once, Asked, CrossCheck, Demand, Method, Recipe, Resolved, Solved, Steady};
 
 /// A final number with its error.
 #[derive(Debug, Clone, PartialEq)]
@@ -100,6 +100,8 @@ pub struct Outcome {
     pub quasi_energies: Option<(f64, Vec<QuasiEnergy>, f64)>,
     /// The state at the end.
     pub end_state: Start,
+    /// At which resolution it was computed; none where it is an average.
+    pub resolved: Option<Resolved>,
     /// The method where H changes.
     pub method: Method,
     /// Why.
@@ -179,14 +181,51 @@ fn asked(document: &Document) -> Asked {
     }
 }
 
+/// The numbers of a point at one resolution, without their errors.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Once {
+    /// The final quantities, in the order of [`final_columns`].
+    pub finals: Vec<f64>,
+    /// Moments, s.
+    pub times_s: Vec<f64>,
+    /// Rows of the traces, one after another.
+    pub rows: Vec<f64>,
+}
+
+/// Computes a point without noise once, at the resolution of a recipe; none where the recipe does not cover it. The numbers are those
+/// that [`compute_from`] gives where that resolution is fine enough, to the bit.
+pub fn compute_once(document: &Document, point: &Point, recipe: &Recipe) -> Option<Once> {
+    let problem = point.problem();
+    let observables = observables(document, &point.built, &point.values, &point.energies_hz, problem);
+    let scales: Vec<f64> = observables.columns().iter().map(|column| column.scale).collect();
+    let recorder = TraceRecorder::new(&observables, problem, &scales);
+    let recorded = solve_once(problem, &observables.demand, &asked(document), recipe, recorder)?.done();
+    let rows: Vec<f64> = recorded.numbers[..recorded.in_rows].iter().enumerate().map(|(k, x)| x * scales[k % scales.len()]).collect();
+    let names = observables.last.iter().flat_map(|quantity| quantity.names());
+    let last = names.zip(recorded.last()).filter(|(name, _)| !name.starts_with("propagator_")).map(|(_, value)| *value);
+    let finals = rows[rows.len() - scales.len()..].iter().copied().chain(last).collect();
+    Some(Once { finals, times_s: problem.moments.iter().map(|moment| moment.time_s).collect(), rows })
+}
+
+/// Computes a point without noise, beginning at the resolution of a recipe.
+pub fn compute_from(document: &Document, point: &Point, recipe: &Recipe) -> Outcome {
+    let clock = Clock::now();
+    let solved = measure_from(document, point, point.problem(), true, recipe);
+    conclude(document, point, Measured { solved, average: None }, clock)
+}
+
 /// Runs a point at both resolutions. `problem` is that of the point, or one that noise has moved within the shot; `check` is
 /// whether the second route is wanted too, where the config asks for it.
 pub fn measure(document: &Document, point: &Point, problem: &Problem, check: bool) -> Solved<Recorded> {
+    measure_from(document, point, problem, check, &Recipe::default())
+}
+
+fn measure_from(document: &Document, point: &Point, problem: &Problem, check: bool, recipe: &Recipe) -> Solved<Recorded> {
     let observables = observables(document, &point.built, &point.values, &point.energies_hz, problem);
     let scales: Vec<f64> = observables.columns().iter().map(|column| column.scale).collect();
     let mut asked = asked(document);
     asked.cross_check &= check;
-    solve(problem, &observables.demand, &asked, || TraceRecorder::new(&observables, problem, &scales)).map(TraceRecorder::done)
+    solve_from(problem, &observables.demand, &asked, recipe, || TraceRecorder::new(&observables, problem, &scales)).map(TraceRecorder::done)
 }
 
 /// Computes a point without noise.
@@ -308,6 +347,7 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
         gate,
         propagator,
         end_state,
+        resolved: solved.resolved,
         method: solved.method,
         reason: solved.reason.clone(),
         steps: solved.steps,

@@ -14,7 +14,7 @@ use crate::scan::bits::Bits;
 use crate::scan::changed::change;
 use crate::scan::order::Order;
 use crate::scan::shelf::{read_all, Shelf};
-use crate::scan::store::{Content, Part};
+use crate::scan::store::{Content, Part, Store};
 
 /// Words of the verb.
 #[derive(Args)]
@@ -104,7 +104,13 @@ fn try_merge(words: &Words) -> Result<Status, Status> {
         json: words.json,
         quiet: words.quiet,
     };
-    finishing.finish(&shelf)
+    // what is computed again at its end goes into a store of the whole
+    let mut whole = first.head.clone();
+    whole.part = Part::WHOLE;
+    let path = folder.join(Part::WHOLE.file_name(0));
+    std::fs::create_dir_all(folder).map_err(|error| refuse_folder(&ScanFault::Io(folder.clone(), error)))?;
+    let (mut store, _) = Store::open(&path, &whole).map_err(|fault| refuse_folder(&fault.into()))?;
+    finishing.finish(contents, &mut store)
 }
 
 /// The config that the parts were computed from: the one kept in the folder, or the one in the head of a store.

@@ -959,7 +959,7 @@ impl Fault {
             .write("a lower upper limit of the spectrum, a shorter sequence, or fewer recorded times"),
             Open(fault) => fault.words(),
             NothingInTable => say("this scan would write a table without a column.")
-                .why("Propagators and quasi-energies have no place in a table of numbers.")
+                .why("Propagators, quasi-energies, steady states, shots and budgets have no place in a table of numbers.")
                 .write("record: {populations: all}"),
             NoSuchNumber { name, near, known } => say(format!("the file has no number called \"{name}\"."))
                 .why(format!("Only named numbers can be set: {}.", list(known)))

@@ -426,6 +426,7 @@ impl<'p> Job<'p> {
         let resolutions =
             [0, 1].map(|k| Resolution { words: format!("{}{}, each with {}", words[k], cells[k], notes.words[k]), steps: notes.steps });
         let solved = Solved {
+            resolved: None,
             reason: notes.reason,
             reached: error_figure <= accuracy && (!until || sampling_error.is_none_or(|error| error <= accuracy)),
             recorded,

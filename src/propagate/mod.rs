@@ -7,6 +7,7 @@
 //! | `asked.rs`, `solved.rs` | what a caller hands over, what he gets back |
 //! | `choose.rs` | the table [`METHODS`] and the automatic choice |
 //! | `refine.rs` | [`solve`]: two resolutions, error figure, tightening |
+//! | `recipe.rs` | one resolution for many like problems: [`solve_once`], [`solve_from`] |
 //! | `run.rs` | one run over all segments at one resolution |
 //! | `picture.rs` | the turning diagonal picture of a segment |
 //! | `coherent.rs` | which levels can be coherent, and so whose rounding matters |
@@ -41,6 +42,7 @@ mod load;
 mod mixture;
 mod open;
 mod picture;
+mod recipe;
 mod refine;
 mod run;
 mod slices;
@@ -54,6 +56,7 @@ pub use asked::{Asked, Demand, Recorder};
 pub use choose::{Method, Row, METHODS};
 pub use load::Load;
 pub use open::{steady, NotSteady, Steady};
-pub use refine::{figure, solve};
+pub use recipe::{solve_once, Recipe, Resolved};
+pub use refine::{figure, solve, solve_from};
 pub use solved::{CrossCheck, Resolution, Solved};
 pub use trajectories::{Fine, Trajectories, LARGEST_DENSITY};

@@ -14,12 +14,13 @@ use super::load::Load;
 use super::mixture::{self, Mixture};
 use super::open;
 use super::picture::Pictures;
+use super::recipe::{Recipe, Resolved};
 use super::run::{run, Fineness, Route, Work};
 use super::solved::{Resolution, Solved};
 use crate::problem::Problem;
 
 /// Multiplications that all runs of one problem may use together: a minute or so on one core.
-const MOST_MULTIPLICATIONS: f64 = 8e9;
+pub(super) const MOST_MULTIPLICATIONS: f64 = 8e9;
 /// First tolerance of the step control over the accuracy asked for: the estimates of order 5 and 3 exceed the error by some 1e4.
 const FIRST_TOLERANCE: f64 = 10.0;
 /// The finer Runge-Kutta run takes so many times the steps of the coarser: at order 8 that is a tenth of its error.
@@ -47,7 +48,7 @@ fn largest_figure(coarse: &[f64], fine: &[f64], floor: f64) -> f64 {
 }
 
 /// The runs of a problem: amplitudes where it is closed, a density matrix where it is open.
-enum Way<'p> {
+pub(super) enum Way<'p> {
     Closed(Route<'p>),
     Open(Box<open::Route<'p>>),
     Mixture(Mixture<'p>),
@@ -55,7 +56,7 @@ enum Way<'p> {
 
 impl<'p> Way<'p> {
     /// The way, the load, the method and why.
-    fn new(problem: &'p Problem, parts: &'p [(f64, Problem)], demand: &Demand, asked: &Asked) -> (Way<'p>, Load, Method, String) {
+    pub fn new(problem: &'p Problem, parts: &'p [(f64, Problem)], demand: &Demand, asked: &Asked) -> (Way<'p>, Load, Method, String) {
         if problem.is_open() && parts.is_empty() {
             let mut route = open::Route::new(problem, demand);
             let load = Load::of_open(problem, demand, asked.accuracy, &mut route);
@@ -85,7 +86,7 @@ impl<'p> Way<'p> {
         (way, load, method, reason)
     }
 
-    fn run(&mut self, fineness: &Fineness, left: f64, recorder: &mut dyn Recorder) -> Work {
+    pub fn run(&mut self, fineness: &Fineness, left: f64, recorder: &mut dyn Recorder) -> Work {
         match self {
             Way::Closed(route) => run(route, fineness, left, recorder),
             Way::Open(route) => route.run(fineness, left, recorder),
@@ -103,14 +104,29 @@ struct Ran<R> {
 
 /// Solves `problem` and measures the error of every recorded number; `new_recorder` is called once for each run.
 pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new_recorder: impl Fn() -> R) -> Solved<R> {
+    solve_from(problem, demand, asked, &Recipe::default(), new_recorder)
+}
+
+/// The estimated time of a solution, ns, where it is beyond all patience.
+pub(super) fn is_hopeless(load: &Load, method: Method) -> Option<f64> {
+    let row = METHODS.iter().find(|row| row.method == method && load.changing > 0)?;
+    Some((row.cost_ns)(load)).filter(|ns| *ns > HOPELESS_NS && method != Method::ConstantSteps)
+}
+
+/// The same, beginning at the resolution of a recipe where it has one for the method of this problem.
+pub fn solve_from<R: Recorder>(
+    problem: &Problem,
+    demand: &Demand,
+    asked: &Asked,
+    recipe: &Recipe,
+    new_recorder: impl Fn() -> R,
+) -> Solved<R> {
     let parts = mixture::parts(problem);
     let (mut way, load, method, mut reason) = Way::new(problem, &parts, demand, asked);
     // Runge-Kutta sums are compensated; all other steps are products, one after the other.
     let floor_of = |work: &Work| load.floor(if load.changing > 0 && method != Method::Smooth { work.steps } else { load.segments as u64 });
     let mut left = MOST_MULTIPLICATIONS;
-    let hopeless =
-        METHODS.iter().filter(|row| row.method == method && load.changing > 0).map(|row| (row.cost_ns)(&load)).find(|ns| *ns > HOPELESS_NS);
-    if let (Some(ns), true) = (hopeless, method != Method::ConstantSteps) {
+    if let Some(ns) = is_hopeless(&load, method) {
         // Only walks through the moments, so that the caller has his rows, and says so with an infinite figure.
         left = 0.0;
         reason += &format!("; it was not run, since it would take about {:.0e} s", ns * 1e-9);
@@ -124,7 +140,8 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         Ran { recorder, fineness, work }
     };
     let least = least_tolerance(&load);
-    let start = Fineness { tolerance: (FIRST_TOLERANCE * asked.accuracy).max(least), pieces: 1, doublings: 0 };
+    let first = Fineness { tolerance: FIRST_TOLERANCE * asked.accuracy, pieces: 1, doublings: 0 };
+    let start = recipe.of(method).unwrap_or(first).no_finer_than(least);
     let mut coarse = go(start);
     let mut fine = go_finer(&mut go, &coarse, method, least);
     let (error_figure, floor) = loop {
@@ -163,6 +180,7 @@ pub fn solve<R: Recorder>(problem: &Problem, demand: &Demand, asked: &Asked, new
         }
     });
     Solved {
+        resolved: Some(Resolved::new(method, coarse.fineness, error_figure / asked.accuracy)),
         recorded: coarse.recorder,
         finer: fine.recorder,
         method,
@@ -193,7 +211,7 @@ fn go_finer<R>(go: &mut impl FnMut(Fineness) -> Ran<R>, coarse: &Ran<R>, method:
 }
 
 /// Below this the error estimate of a step is rounding alone.
-fn least_tolerance(load: &Load) -> f64 {
+pub(super) fn least_tolerance(load: &Load) -> f64 {
     4.0 * f64::EPSILON * (1.0 + load.coupling_turns * crate::units::RAD_PER_TURN)
 }
 

@@ -21,6 +21,13 @@ pub(super) struct Fineness {
     pub doublings: u32,
 }
 
+impl Fineness {
+    /// The same with a tolerance of at least `least`.
+    pub fn no_finer_than(self, least: f64) -> Fineness {
+        Fineness { tolerance: self.tolerance.max(least), ..self }
+    }
+}
+
 /// What a run has cost, and what it may still cost.
 #[derive(Debug, Clone, Copy)]
 pub(super) struct Work {

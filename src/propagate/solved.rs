@@ -1,6 +1,7 @@
 //! What [`solve`](super::solve) gives back.
 
 use super::choose::Method;
+use super::recipe::Resolved;
 
 /// One resolution at which the problem was solved.
 #[derive(Debug, Clone, PartialEq)]
@@ -18,6 +19,8 @@ pub struct Solved<R> {
     pub recorded: R,
     /// The finer run, against which the result was held.
     pub finer: R,
+    /// At which resolution the result was computed; none where it is an average.
+    pub resolved: Option<Resolved>,
     /// The method that was used where H changes.
     pub method: Method,
     /// Why that method, with the numbers compared.
@@ -48,6 +51,7 @@ impl<R> Solved<R> {
         Solved {
             recorded: make(self.recorded),
             finer: make(self.finer),
+            resolved: self.resolved,
             method: self.method,
             reason: self.reason,
             resolutions: self.resolutions,

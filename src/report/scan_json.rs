@@ -23,8 +23,8 @@ pub struct Finished<'a> {
     pub reused: u64,
     /// Threads.
     pub threads: usize,
-    /// How it was computed, in words.
-    pub method: Value,
+    /// The resolution of all points, method by method; empty where each was solved by itself.
+    pub resolution: Vec<String>,
     /// Warnings.
     pub warnings: Vec<String>,
     /// Seconds, of this start alone.
@@ -43,7 +43,16 @@ pub fn result(finished: &Finished) -> Map<String, Value> {
     put("failed", json!(summary.failed));
     put("computed", json!(finished.computed));
     put("reused", json!(finished.reused));
-    put("method", finished.method.clone());
+    let (name, reason) = if finished.resolution.is_empty() {
+        ("each point by itself", "each point was refined until its own error figure met the accuracy")
+    } else {
+        (
+            "one resolution for all points",
+            "the finest that any probe needs; one point of each tile and the extremes were computed at the next finer one too, \
+             and tiles that need more were refined point by point",
+        )
+    };
+    put("method", json!({"name": name, "reason": reason, "resolution": finished.resolution, "refined_by_itself": summary.alone}));
     put("error_figure", number(summary.error_figure));
     put("checked", json!(summary.checked));
     if let Some(worst) = summary.worst {

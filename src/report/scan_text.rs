@@ -114,6 +114,9 @@ pub fn summary(finished: &Finished, place: &str) -> String {
         spaced(summary.checked),
         summary.worst.map_or(String::new(), |worst| format!("; largest at {}", at(setup, worst)))
     ));
+    if !finished.resolution.is_empty() {
+        text.push_str(&format!("method: {}; {} points refined by themselves\n", finished.resolution.join("; "), spaced(summary.alone)));
+    }
     text.push_str(&failures(finished));
     text.push_str(&format!("files: {place}\n"));
     text

@@ -2,7 +2,7 @@
 
 use sha2::{Digest, Sha256};
 
-use super::order::Order;
+use super::order::{scattered, Order};
 use super::setup::Setup;
 use super::store::{Head, Part};
 
@@ -31,12 +31,33 @@ pub fn head(setup: &Setup, fingerprint: &str, part: Part) -> Head {
         points: setup.grid.points(),
         part,
         tile: order(setup, part).tile,
+        probes: probes(setup),
         columns: setup.columns.iter().map(|column| column.name.clone()).collect(),
         traced: setup.traced.clone(),
         config: (source.path.file_name().unwrap_or_default().to_string_lossy().into_owned(), source.text.clone()),
         inputs: inputs.collect(),
         set: document.set.clone(),
     }
+}
+
+/// Probes beside the corners and the middle.
+const SCATTERED: u64 = 8;
+
+/// Points that are solved by themselves first: corners of the grid, its middle, and some at random. None where all points are
+/// computed at two resolutions in any case, or are averages over noise.
+pub fn probes(setup: &Setup) -> Vec<u64> {
+    if order(setup, Part::WHOLE).tile == 1 || !setup.document().noise.is_empty() {
+        return Vec::new();
+    }
+    let points = setup.grid.points();
+    let mut found = setup.grid.corners();
+    // of many axes some corners serve
+    let stride = found.len().div_ceil(9);
+    found = found.into_iter().step_by(stride).collect();
+    found.extend((0..SCATTERED).map(|k| scattered(k) % points));
+    found.sort_unstable();
+    found.dedup();
+    found
 }
 
 /// The order of the points of a part. A tile holds the one point that is computed twice, so its size is the inverse of their share.

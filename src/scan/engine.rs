@@ -1,7 +1,10 @@
 //! All points of a part, computed by threads and appended to its store as they come.
 //!
-//! Points are handed out in the order of their numbers, some milliseconds of work at a time; how many depends on the clock, what
-//! each becomes does not. The calling thread alone writes, and watches for the end of the time and for being asked to stop.
+//! First the probes are solved by themselves: the finest resolution that any of them needs is that of all points. Then one point
+//! of each tile is computed at that resolution and at the next finer one. Where the change is larger than the accuracy that was
+//! asked for, all points of that tile are solved by themselves; else they are computed once. So what each point becomes depends on
+//! its tile and on the probes, not on threads, parts or starts; how many are handed out at once depends on the clock.
+//! The calling thread alone writes, and watches for the end of the time and for being asked to stop.
 
 use std::io;
 use std::sync::atomic::{AtomicBool, Ordering};
@@ -12,10 +15,12 @@ use std::time::{Duration, Instant};
 use super::bits::Bits;
 use super::evaluate::Evaluator;
 use super::order::Order;
-use super::row::{Found, Row};
+use super::row::{Checked, Found, Rank, Row};
 use super::setup::Setup;
+use super::shelf::Shelf;
 use super::store::Store;
 use crate::config::run::OnFailedPoint;
+use crate::propagate::{Recipe, Resolved};
 
 /// Work handed out at once, s.
 const CHUNK_S: f64 = 0.03;
@@ -78,42 +83,218 @@ pub enum Ended {
     Broken(io::Error),
 }
 
-/// Computes what is missing of a part; rows go to `store`, and `tell` hears how it goes about ten times a second.
-pub fn run(
-    setup: &Setup,
-    order: &Order,
-    (store, done): (&mut Store, &Bits),
-    running: &Running,
-    progress: &mut Progress,
-    mut tell: impl FnMut(&Progress),
-) -> Ended {
-    let clock = Instant::now();
-    let feed = Mutex::new(order.pending(done));
-    let halt = AtomicBool::new(false);
-    std::thread::scope(|scope| {
-        let (send, receive) = sync_channel::<Vec<Row>>(2 * running.threads);
-        for _ in 0..running.threads {
-            let (send, feed, halt) = (send.clone(), &feed, &halt);
-            scope.spawn(move || work(setup, feed, halt, running.threads, &send));
+/// One part being computed.
+pub struct Engine<'a> {
+    /// The scan.
+    pub setup: &'a Setup,
+    /// The points of the part.
+    pub order: Order,
+    /// Probes, in the order of the points.
+    pub probes: &'a [u64],
+    /// How each probe was solved that is stored already.
+    pub probed: Vec<(u64, Resolved)>,
+    /// What was stored when it began, here and elsewhere.
+    pub shelf: &'a Shelf,
+    /// Where rows go.
+    pub store: &'a mut Store,
+    /// How it is run.
+    pub running: Running<'a>,
+}
+
+/// What becomes of rows while they come.
+struct Watch<'w> {
+    done: Bits,
+    alone: Bits,
+    probed: Vec<(u64, Resolved)>,
+    progress: Progress,
+    clock: Instant,
+    saved: Instant,
+    told: Option<Instant>,
+    tell: &'w mut dyn FnMut(&Progress),
+}
+
+impl Engine<'_> {
+    /// Computes what is missing; `tell` hears how it goes about ten times a second.
+    pub fn run(&mut self, tell: &mut dyn FnMut(&Progress)) -> (Ended, Progress) {
+        let reused = self.order.all().filter(|point| self.shelf.done.has(*point)).count() as u64;
+        let failed = self.shelf.failed;
+        let progress = Progress { points: self.order.count(), reused, failed, ..Progress::default() };
+        let now = Instant::now();
+        let mut watch = Watch {
+            done: self.shelf.done.clone(),
+            alone: self.shelf.alone.clone(),
+            probed: self.probed.clone(),
+            progress,
+            clock: now,
+            saved: now,
+            told: None,
+            tell,
+        };
+        let ended = self.stages(&mut watch);
+        let ended = match self.store.sync() {
+            Err(error) if matches!(ended, Ended::Complete) => broken(error),
+            _ => ended,
+        };
+        (watch.tell)(&watch.progress);
+        (ended, watch.progress)
+    }
+
+    fn stages(&mut self, watch: &mut Watch) -> Ended {
+        let (order, probes) = (self.order, self.probes);
+        if order.tile == 1 || probes.is_empty() {
+            let done = watch.done.clone();
+            let mut left = order.pending(&done);
+            return self.stage(watch, &mut left, &|evaluator, point| evaluator.alone(point));
         }
-        drop(send);
-        let ended = gather(&receive, store, running, &halt, progress, clock, &mut tell);
-        // whoever still computes finds the channel closed or the flag set
-        halt.store(true, Ordering::Relaxed);
-        drop(receive);
-        ended
-    })
+        let wanted: Vec<u64> = probes.iter().copied().filter(|point| watch.probed.iter().all(|(known, _)| known != point)).collect();
+        // a probe that failed is stored as such and says nothing
+        let mut wanted = wanted.into_iter().filter(|point| !self.shelf.alone.has(*point));
+        let ended = self.stage(watch, &mut wanted, &|evaluator, point| evaluator.alone(point));
+        if !matches!(ended, Ended::Complete) {
+            return ended;
+        }
+        let recipe = recipe_of(&watch.probed);
+        let shelf = self.shelf;
+        let mut checks = order.check_points(probes).filter(|point| !shelf.is_settled(*point));
+        let ended = self.stage(watch, &mut checks, &|evaluator, point| evaluator.checked(point, &recipe));
+        if !matches!(ended, Ended::Complete) {
+            return ended;
+        }
+        let (done, alone) = (watch.done.clone(), watch.alone.clone());
+        let rough = |point: u64| alone.has(order.check_point(point / order.tile, probes));
+        let mut left = order.pending(&done);
+        self.stage(watch, &mut left, &|evaluator, point| {
+            if rough(point) {
+                evaluator.checked(point, &recipe)
+            } else {
+                evaluator.plain(point, &recipe)
+            }
+        })
+    }
+
+    /// Computes some points, all in one way.
+    fn stage(
+        &mut self,
+        watch: &mut Watch,
+        points: &mut (dyn Iterator<Item = u64> + Send),
+        how: &(dyn Fn(&mut Evaluator, u64) -> Row + Sync),
+    ) -> Ended {
+        let feed = Mutex::new(points);
+        let halt = AtomicBool::new(false);
+        let (setup, threads) = (self.setup, self.running.threads.max(1));
+        std::thread::scope(|scope| {
+            let (send, receive) = sync_channel::<Vec<Row>>(2 * threads);
+            for _ in 0..threads {
+                let (send, feed, halt) = (send.clone(), &feed, &halt);
+                scope.spawn(move || work(setup, feed, (how, halt), threads, &send));
+            }
+            drop(send);
+            let ended = self.gather(&receive, watch, &halt);
+            // whoever still computes finds the channel closed or the flag set
+            halt.store(true, Ordering::Relaxed);
+            drop(receive);
+            ended
+        })
+    }
+
+    /// The calling thread: appends what comes, until nothing comes any more.
+    fn gather(&mut self, receive: &Receiver<Vec<Row>>, watch: &mut Watch, halt: &AtomicBool) -> Ended {
+        let mut ended = Ended::Complete;
+        loop {
+            let rows = match receive.recv_timeout(TICK) {
+                Ok(rows) => rows,
+                Err(RecvTimeoutError::Timeout) => Vec::new(),
+                Err(RecvTimeoutError::Disconnected) => return ended,
+            };
+            if let Err(error) = self.take(rows, watch, &mut ended) {
+                return broken(error);
+            }
+            if matches!(ended, Ended::Complete) && self.running.stop.load(Ordering::Relaxed) {
+                ended = Ended::Asked;
+            }
+            if matches!(ended, Ended::Complete) && self.running.until.is_some_and(|until| Instant::now() >= until) {
+                ended = Ended::Limit;
+            }
+            if !matches!(ended, Ended::Complete) {
+                halt.store(true, Ordering::Relaxed);
+            }
+            if watch.told.is_none_or(|told| told.elapsed() >= TICK) {
+                watch.progress.elapsed = watch.clock.elapsed();
+                (watch.tell)(&watch.progress);
+                watch.told = Some(Instant::now());
+            }
+        }
+    }
+
+    /// Stores rows and notes what they say.
+    fn take(&mut self, mut rows: Vec<Row>, watch: &mut Watch, ended: &mut Ended) -> io::Result<()> {
+        for row in &rows {
+            if let Found::Numbers { checked: Some(Checked { alone: Some(resolved), .. }), .. } = &row.found {
+                if self.probes.contains(&row.point) {
+                    watch.probed.push((row.point, *resolved));
+                }
+            }
+        }
+        // probes of other parts are computed, but stored there
+        rows.retain(|row| self.order.part_of(row.point) == self.order.part.number);
+        self.store.append(&rows)?;
+        for row in &rows {
+            watch.progress.computed += u64::from(watch.done.insert(row.point));
+            if row.rank() == Rank::Alone {
+                watch.alone.insert(row.point);
+            }
+            if matches!(row.found, Found::Failed(_)) {
+                watch.progress.failed += 1;
+                if self.running.on_failed_point == OnFailedPoint::Stop && matches!(ended, Ended::Complete) {
+                    *ended = Ended::FailedPoint(row.point);
+                }
+            }
+        }
+        if watch.saved.elapsed() >= self.running.save_every {
+            self.store.sync()?;
+            watch.saved = Instant::now();
+        }
+        Ok(())
+    }
+}
+
+/// Computes some points again at two resolutions, such as the extremes that a finished scan has.
+pub fn check_again(setup: &Setup, probed: &[(u64, Resolved)], points: &[u64], store: &mut Store) -> io::Result<()> {
+    let recipe = recipe_of(probed);
+    let mut evaluator = Evaluator::new(setup, 1);
+    let rows: Vec<Row> = points.iter().map(|point| evaluator.checked(*point, &recipe)).collect();
+    store.append(&rows)?;
+    store.sync()
+}
+
+/// The resolution of all points, from how the probes were solved.
+pub fn recipe_of(probed: &[(u64, Resolved)]) -> Recipe {
+    let mut sorted = probed.to_vec();
+    sorted.sort_by_key(|(point, _)| *point);
+    sorted.dedup_by_key(|(point, _)| *point);
+    let mut recipe = Recipe::default();
+    sorted.iter().for_each(|(_, resolved)| recipe.add(resolved));
+    recipe
 }
 
 /// One thread: takes points, computes them, hands the rows over.
-fn work<'s>(setup: &'s Setup, feed: &Mutex<impl Iterator<Item = u64>>, halt: &AtomicBool, threads: usize, send: &SyncSender<Vec<Row>>) {
+fn work(
+    setup: &Setup,
+    feed: &Mutex<&mut (dyn Iterator<Item = u64> + Send)>,
+    (how, halt): (&(dyn Fn(&mut Evaluator, u64) -> Row + Sync), &AtomicBool),
+    threads: usize,
+    send: &SyncSender<Vec<Row>>,
+) {
     // where there are fewer points than threads, those left over share the runs of noise
     let each = (threads as u64 / setup.grid.points().max(1)).max(1) as usize;
     let mut evaluator = Evaluator::new(setup, each);
     let mut chunk = 1usize;
-    let most = (MOST_CHUNK / threads.max(1)).clamp(64, MOST_CHUNK).min(setup.rows_at_once());
+    let most = (MOST_CHUNK / threads).clamp(64, MOST_CHUNK).min(setup.rows_at_once());
     loop {
-        let points: Vec<u64> = feed.lock().unwrap_or_else(PoisonError::into_inner).by_ref().take(chunk).collect();
+        let points: Vec<u64> = {
+            let mut feed = feed.lock().unwrap_or_else(PoisonError::into_inner);
+            std::iter::from_fn(|| feed.next()).take(chunk).collect()
+        };
         if points.is_empty() || halt.load(Ordering::Relaxed) {
             return;
         }
@@ -123,7 +304,7 @@ fn work<'s>(setup: &'s Setup, feed: &Mutex<impl Iterator<Item = u64>>, halt: &At
             if halt.load(Ordering::Relaxed) {
                 break;
             }
-            rows.push(evaluator.checked(point));
+            rows.push(how(&mut evaluator, point));
         }
         let each_s = clock.elapsed().as_secs_f64() / rows.len().max(1) as f64;
         chunk = ((CHUNK_S / each_s.max(1e-9)) as usize).clamp(1, most).min(4 * chunk);
@@ -131,66 +312,6 @@ fn work<'s>(setup: &'s Setup, feed: &Mutex<impl Iterator<Item = u64>>, halt: &At
             return;
         }
     }
-}
-
-/// The calling thread: appends what comes, until nothing comes any more.
-fn gather(
-    receive: &Receiver<Vec<Row>>,
-    store: &mut Store,
-    running: &Running,
-    halt: &AtomicBool,
-    progress: &mut Progress,
-    clock: Instant,
-    tell: &mut impl FnMut(&Progress),
-) -> Ended {
-    let mut ended = Ended::Complete;
-    let (mut saved, mut told) = (Instant::now(), None::<Instant>);
-    loop {
-        let rows = match receive.recv_timeout(TICK) {
-            Ok(rows) => rows,
-            Err(RecvTimeoutError::Timeout) => Vec::new(),
-            Err(RecvTimeoutError::Disconnected) => break,
-        };
-        if let Err(error) = store.append(&rows) {
-            return broken(error);
-        }
-        progress.computed += rows.len() as u64;
-        progress.elapsed = clock.elapsed();
-        for row in rows.iter().filter(|row| matches!(row.found, Found::Failed(_))) {
-            progress.failed += 1;
-            if running.on_failed_point == OnFailedPoint::Stop && matches!(ended, Ended::Complete) {
-                ended = Ended::FailedPoint(row.point);
-            }
-        }
-        if matches!(ended, Ended::Complete) && running.stop.load(Ordering::Relaxed) {
-            ended = Ended::Asked;
-        }
-        if matches!(ended, Ended::Complete) && running.until.is_some_and(|until| Instant::now() >= until) {
-            ended = Ended::Limit;
-        }
-        if !matches!(ended, Ended::Complete) {
-            halt.store(true, Ordering::Relaxed);
-        }
-        if saved.elapsed() >= running.save_every {
-            if let Err(error) = store.sync() {
-                return broken(error);
-            }
-            saved = Instant::now();
-        }
-        if told.is_none_or(|told| told.elapsed() >= TICK) {
-            tell(progress);
-            told = Some(Instant::now());
-        }
-    }
-    if let Err(error) = store.sync() {
-        return broken(error);
-    }
-    tell(progress);
-    if progress.reused + progress.computed >= progress.points {
-        // whatever asked to stop came too late
-        return if let Ended::FailedPoint(point) = ended { Ended::FailedPoint(point) } else { Ended::Complete };
-    }
-    ended
 }
 
 fn broken(error: io::Error) -> Ended {

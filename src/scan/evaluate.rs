@@ -1,12 +1,16 @@
 //! One point after the other computed by one thread: numbers moved, the problem solved, the columns of the table picked.
+//!
+//! A point is solved by itself (its resolution tightened until it is accurate enough), or at two resolutions of which the coarser
+//! is that of all points, or once at that one. What it becomes depends on the config, on the recipe, and on which of the three is
+//! done; never on the points before it.
 
-use super::row::{Found, Row, Trace};
+use super::row::{Checked, Found, Row, Trace};
 use super::setup::Setup;
 use crate::config::messages::{one_line, Mistake};
 use crate::noise::{compute, Draws};
-use crate::outcome::Outcome;
-use crate::plan::{Mover, Point};
-use crate::propagate::figure;
+use crate::outcome::{compute_from, compute_once, final_columns, Final, Once, Outcome};
+use crate::plan::{Mover, Plan, Point};
+use crate::propagate::{figure, Recipe};
 
 /// What one thread needs to compute points.
 pub struct Evaluator<'s> {
@@ -14,98 +18,160 @@ pub struct Evaluator<'s> {
     names: Vec<&'s str>,
     /// Threads that share the runs of one point, where noise makes many.
     threads: usize,
-    /// Movers of the structures met last, the latest first.
-    movers: Vec<(usize, Mover<'s>)>,
+    /// Those of the structures met last, the latest first.
+    structures: Vec<Structure<'s>>,
 }
 
-/// Structures whose movers are kept.
-const MOST_MOVERS: usize = 8;
+/// A structure that the points run through.
+struct Structure<'s> {
+    group: usize,
+    plan: &'s Plan,
+    mover: Mover<'s>,
+    /// Where each final quantity of the table, and each that a derived one reads, stands among those of this structure.
+    finals: Vec<Option<usize>>,
+    read: Vec<Vec<Option<usize>>>,
+}
+
+/// Structures that are kept.
+const MOST_STRUCTURES: usize = 8;
 
 impl<'s> Evaluator<'s> {
     /// For the points of a scan; `threads` share the runs of one point.
     pub fn new(setup: &'s Setup, threads: usize) -> Evaluator<'s> {
-        Evaluator { setup, names: setup.names(), threads, movers: Vec::new() }
+        Evaluator { setup, names: setup.names(), threads, structures: Vec::new() }
     }
 
-    /// Computes a point at two resolutions.
-    pub fn checked(&mut self, point: u64) -> Row {
+    /// Solves a point by itself.
+    pub fn alone(&mut self, point: u64) -> Row {
+        self.checked(point, &Recipe::default())
+    }
+
+    /// Computes a point at two resolutions, the coarser that of the recipe; where that is not accurate enough, by itself.
+    pub fn checked(&mut self, point: u64, recipe: &Recipe) -> Row {
+        let (setup, threads) = (self.setup, self.threads);
+        self.with(point, |structure| {
+            let (document, at) = (structure.plan.document(), structure.mover.point());
+            let outcome = if document.noise.is_empty() {
+                compute_from(document, at, recipe)
+            } else {
+                let family = if setup.scan.same_noise { 0 } else { point };
+                match compute(document, at, &Draws { threads, family }) {
+                    Ok(outcome) => outcome,
+                    Err(mistake) => return Found::Failed(one_line(&document.sources, &mistake)),
+                }
+            };
+            structure.of_outcome(setup, outcome, recipe)
+        })
+    }
+
+    /// Computes a point once, at the resolution of the recipe; where that does not cover it, at two.
+    pub fn plain(&mut self, point: u64, recipe: &Recipe) -> Row {
         let setup = self.setup;
+        if recipe.is_empty() {
+            return self.checked(point, recipe);
+        }
+        let mut covered = true;
+        let row = self.with(point, |structure| match compute_once(structure.plan.document(), structure.mover.point(), recipe) {
+            Some(once) => structure.of_once(setup, once),
+            None => {
+                covered = false;
+                Found::Failed(String::new())
+            }
+        });
+        if covered {
+            row
+        } else {
+            self.checked(point, recipe)
+        }
+    }
+
+    fn with(&mut self, point: u64, compute: impl FnOnce(&Structure<'s>) -> Found) -> Row {
         let found = match self.moved(point) {
             Err(reason) => Found::Failed(reason),
-            Ok((group, mover)) => {
-                let (_, plan) = setup.plan_of(point);
-                let found = match plan {
-                    Ok(plan) => {
-                        let family = if setup.scan.same_noise { 0 } else { point };
-                        let document = plan.document();
-                        match compute(document, mover.point(), &Draws { threads: self.threads, family }) {
-                            Ok(outcome) => pick(setup, mover.point(), outcome),
-                            Err(mistake) => Found::Failed(one_line(&document.sources, &mistake)),
-                        }
-                    }
-                    Err(reason) => Found::Failed(reason.to_string()),
-                };
-                self.movers.insert(0, (group, mover));
-                self.movers.truncate(MOST_MOVERS);
+            Ok(structure) => {
+                let found = compute(&structure);
+                self.structures.insert(0, structure);
+                self.structures.truncate(MOST_STRUCTURES);
                 found
             }
         };
         Row { point, found }
     }
 
-    /// A mover at the point, taken from those kept. One that has met a mistake is not used again.
-    fn moved(&mut self, point: u64) -> Result<(usize, Mover<'s>), String> {
+    /// The structure of a point, moved there. One that has met a mistake is not used again.
+    fn moved(&mut self, point: u64) -> Result<Structure<'s>, String> {
         let (group, plan) = self.setup.plan_of(point);
         let plan = plan.map_err(str::to_string)?;
         let values = self.setup.grid.values(point);
         let words = |mistake: Mistake| one_line(&plan.document().sources, &mistake);
-        let kept = self.movers.iter().position(|(of, _)| *of == group);
-        let mut mover = match kept {
-            Some(at) => self.movers.remove(at).1,
-            None => match plan.mover(&self.names) {
-                Ok(mover) => mover,
-                // the numbers as written make no run; those of the point may
-                Err(_) => return Ok((group, plan.mover_from(&self.names, &values).map_err(words)?)),
-            },
-        };
-        mover.at(&values).map_err(words)?;
-        Ok((group, mover))
+        if let Some(at) = self.structures.iter().position(|structure| structure.group == group) {
+            let mut structure = self.structures.remove(at);
+            structure.mover.at(&values).map_err(words)?;
+            return Ok(structure);
+        }
+        // laid out at the point itself, as the numbers as written need make no run
+        let mover = plan.mover_from(&self.names, &values).map_err(words)?;
+        Ok(Structure::new(self.setup, group, plan, mover))
     }
 }
 
-/// The columns of the table out of everything that was computed.
-fn pick(setup: &Setup, point: &Point, outcome: Outcome) -> Found {
-    if !outcome.error_figure.is_finite() {
-        return Found::Failed(outcome.reason);
+impl<'s> Structure<'s> {
+    fn new(setup: &Setup, group: usize, plan: &'s Plan, mover: Mover<'s>) -> Structure<'s> {
+        let names: Vec<String> = final_columns(plan.document(), mover.point()).into_iter().map(|last| last.name).collect();
+        let place = |name: &str| names.iter().position(|other| other == name);
+        let finals = setup.columns.iter().filter(|column| !column.derived).map(|column| place(&column.name)).collect();
+        let read = setup.scan.derived.iter().map(|(_, formula)| formula.finals.iter().map(|(name, _)| place(name)).collect()).collect();
+        Structure { group, plan, mover, finals, read }
     }
-    let of = |name: &str| outcome.finals.iter().find(|last| last.name == name);
-    let (mut numbers, mut errors) = (Vec::with_capacity(setup.columns.len()), Vec::with_capacity(setup.columns.len()));
-    let mut largest = 0.0f64;
-    let mut derived = setup.scan.derived.iter();
-    for column in &setup.columns {
-        let (value, error) = if column.derived {
-            let Some((_, formula)) = derived.next() else { continue };
-            let all = |pick: fn(&crate::outcome::Final) -> f64| -> Vec<f64> {
-                formula.finals.iter().map(|(name, _)| of(name).map_or(f64::NAN, pick)).collect()
-            };
-            let value = formula.value(&point.values, &all(|last| last.value));
-            (value, figure(value, formula.value(&point.values, &all(|last| last.finer)), 0.0))
+
+    fn point(&self) -> &Point<'s> {
+        self.mover.point()
+    }
+
+    /// The columns of the table; NaN for those that this structure lacks.
+    fn columns(&self, setup: &Setup, number: &dyn Fn(usize) -> f64) -> Vec<f64> {
+        let of = |place: &Option<usize>| place.map_or(f64::NAN, number);
+        let derived = setup.scan.derived.iter().zip(&self.read).map(|((_, formula), read)| {
+            let finals: Vec<f64> = read.iter().map(of).collect();
+            formula.value(&self.point().values, &finals)
+        });
+        self.finals.iter().map(of).chain(derived).collect()
+    }
+
+    fn trace(&self, setup: &Setup, times_s: Vec<f64>, rows: Vec<f64>) -> Result<Option<Trace>, String> {
+        let wide = setup.traced.len();
+        if wide == 0 {
+            Ok(None)
+        } else if rows.len() == wide * times_s.len() {
+            Ok(Some(Trace { times_s, rows }))
         } else {
-            match of(&column.name) {
-                Some(last) => {
-                    largest = largest.max(last.error / column.scale);
-                    (last.value, last.error)
-                }
-                // a structure that lacks this quantity
-                None => (f64::NAN, f64::NAN),
-            }
-        };
-        numbers.push(value);
-        errors.push(error);
+            Err("its traces have other columns than those of the first point".to_string())
+        }
     }
-    if !setup.traced.is_empty() && setup.traced.len() != outcome.columns.len() {
-        return Found::Failed("its traces have other columns than those of the first point".to_string());
+
+    fn of_once(&self, setup: &Setup, once: Once) -> Found {
+        let numbers = self.columns(setup, &|k| once.finals.get(k).copied().unwrap_or(f64::NAN));
+        match self.trace(setup, once.times_s, once.rows) {
+            Ok(trace) => Found::Numbers { numbers, checked: None, trace },
+            Err(reason) => Found::Failed(reason),
+        }
     }
-    let trace = (!setup.traced.is_empty()).then(|| Trace { times_s: outcome.times_s, rows: outcome.rows });
-    Found::Numbers { numbers, checked: Some((largest, errors)), trace }
+
+    fn of_outcome(&self, setup: &Setup, outcome: Outcome, recipe: &Recipe) -> Found {
+        if !outcome.error_figure.is_finite() {
+            return Found::Failed(outcome.reason);
+        }
+        let of = |k: usize, pick: fn(&Final) -> f64| outcome.finals.get(k).map_or(f64::NAN, pick);
+        let numbers = self.columns(setup, &|k| of(k, |last| last.value));
+        let finer = self.columns(setup, &|k| of(k, |last| last.finer));
+        let mut errors: Vec<f64> = self.finals.iter().map(|place| place.map_or(f64::NAN, |k| of(k, |last| last.error))).collect();
+        let scales = setup.columns.iter().map(|column| column.scale);
+        let largest = errors.iter().zip(scales).map(|(error, scale)| error / scale).fold(0.0, f64::max);
+        errors.extend((errors.len()..numbers.len()).map(|k| figure(numbers[k], finer[k], 0.0)));
+        let alone = outcome.resolved.filter(|resolved| !recipe.suffices(resolved));
+        match self.trace(setup, outcome.times_s, outcome.rows) {
+            Ok(trace) => Found::Numbers { numbers, checked: Some(Checked { figure: largest, errors, alone }), trace },
+            Err(reason) => Found::Failed(reason),
+        }
+    }
 }

@@ -1,11 +1,14 @@
 //! One point computed, and its form in the store.
 //!
 //! Numbers are little end first. A row is: point u64, kind u8, then
-//! for kind 0 its numbers, one f64 for each column; for kind 1 the same, then the error figure and one error for each column;
-//! for kind 2 the length of the reason u32 and its text. Kinds 0 and 1 of a scan that keeps traces go on with the number of
+//! for kind 0 its numbers, one f64 for each column; for kind 1 the same, then the error figure and one error for each column; for kind
+//! 3 that of kind 1, then at which resolution it was solved: method u8, tolerance f64, pieces u32, doublings u32, share f64; for
+//! kind 2 the length of the reason u32 and its text. All but kind 2 go on, in a scan that keeps traces, with the number of
 //! moments u32, their times, and the rows of the traces, all f64. NaN stands for a number that this point does not have.
 
 use std::io::{self, Read};
+
+use crate::propagate::{Resolved, METHODS};
 
 /// What a point came to.
 #[derive(Debug, Clone, PartialEq)]
@@ -14,13 +17,35 @@ pub enum Found {
     Numbers {
         /// One for each column of the table.
         numbers: Vec<f64>,
-        /// Its error figure and the errors of its numbers, where it was computed at two resolutions.
-        checked: Option<(f64, Vec<f64>)>,
+        /// What is known of their error, where it was computed at two resolutions.
+        checked: Option<Checked>,
         /// Its traces, where they are kept.
         trace: Option<Trace>,
     },
     /// Why it has none.
     Failed(String),
+}
+
+/// What two resolutions say.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Checked {
+    /// Largest error of any number, over its scale.
+    pub figure: f64,
+    /// Errors of the numbers.
+    pub errors: Vec<f64>,
+    /// Where it was solved by itself, or the resolution of the others was not fine enough for it: the one that was.
+    pub alone: Option<Resolved>,
+}
+
+/// How much a row counts: of several rows of a point the one of the highest rank is used.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
+pub enum Rank {
+    /// Computed once, at the resolution of all.
+    Plain,
+    /// Computed at two, of which the coarser is that of all.
+    Checked,
+    /// Solved by itself, or not to be computed.
+    Alone,
 }
 
 /// Whole traces of a point.
@@ -51,9 +76,13 @@ pub struct Width {
 }
 
 impl Row {
-    /// Whether it was computed at two resolutions, or could not be computed at all: such a row counts more than a plain one.
-    pub fn is_settled(&self) -> bool {
-        !matches!(self.found, Found::Numbers { checked: None, .. })
+    /// How much it counts.
+    pub fn rank(&self) -> Rank {
+        match &self.found {
+            Found::Numbers { checked: None, .. } => Rank::Plain,
+            Found::Numbers { checked: Some(Checked { alone: None, .. }), .. } => Rank::Checked,
+            _ => Rank::Alone,
+        }
     }
 
     /// Appends its bytes.
@@ -62,11 +91,22 @@ impl Row {
         bytes.extend_from_slice(&self.point.to_le_bytes());
         match &self.found {
             Found::Numbers { numbers, checked, trace } => {
-                bytes.push(u8::from(checked.is_some()));
+                bytes.push(match checked {
+                    None => 0,
+                    Some(Checked { alone: None, .. }) => 1,
+                    Some(_) => 3,
+                });
                 put(numbers, bytes);
-                if let Some((figure, errors)) = checked {
+                if let Some(Checked { figure, errors, alone }) = checked {
                     put(&[*figure], bytes);
                     put(errors, bytes);
+                    if let Some(alone) = alone {
+                        bytes.push(METHODS.iter().position(|row| row.method == alone.method).unwrap_or(0) as u8);
+                        put(&[alone.tolerance], bytes);
+                        bytes.extend_from_slice(&alone.pieces.to_le_bytes());
+                        bytes.extend_from_slice(&alone.doublings.to_le_bytes());
+                        put(&[alone.share], bytes);
+                    }
                 }
                 if width.traced > 0 {
                     let trace = trace.clone().unwrap_or_default();
@@ -88,11 +128,15 @@ impl Row {
         let point = u64::from_le_bytes(take(from)?);
         let [kind] = take(from)?;
         let found = match kind {
-            0 | 1 => {
+            0 | 1 | 3 => {
                 let numbers = read_numbers(from, width.columns)?;
                 let checked = match kind {
-                    1 => Some((read_numbers(from, 1)?[0], read_numbers(from, width.columns)?)),
-                    _ => None,
+                    0 => None,
+                    _ => {
+                        let (figure, errors) = (read_numbers(from, 1)?[0], read_numbers(from, width.columns)?);
+                        let alone = if kind == 3 { Some(read_resolved(from)?) } else { None };
+                        Some(Checked { figure, errors, alone })
+                    }
                 };
                 let trace = if width.traced > 0 {
                     let moments = read_count(from)?;
@@ -117,6 +161,14 @@ impl Row {
         };
         Ok(Row { point, found })
     }
+}
+
+fn read_resolved(from: &mut impl Read) -> io::Result<Resolved> {
+    let [method] = take(from)?;
+    let method = METHODS.get(usize::from(method)).ok_or_else(no_row)?.method;
+    let tolerance = read_numbers(from, 1)?[0];
+    let (pieces, doublings) = (u32::from_le_bytes(take(from)?), u32::from_le_bytes(take(from)?));
+    Ok(Resolved { method, tolerance, pieces, doublings, share: read_numbers(from, 1)?[0] })
 }
 
 fn no_row() -> io::Error {
@@ -151,9 +203,12 @@ mod tests {
         let width = Width { columns: 2, traced: 1 };
         let trace = Some(Trace { times_s: vec![0.0, 1e-9], rows: vec![0.5, f64::MIN_POSITIVE] });
         let numbers = vec![0.1, -0.0];
+        let alone = Resolved { method: METHODS[2].method, tolerance: 3e-9, pieces: 3, doublings: 2, share: 0.7 };
+        let checked = |alone| Some(Checked { figure: 1e-9, errors: vec![1e-9, 2e-10], alone });
         let rows = [
             Row { point: 7, found: Found::Numbers { numbers: numbers.clone(), checked: None, trace: trace.clone() } },
-            Row { point: u64::MAX, found: Found::Numbers { numbers, checked: Some((1e-9, vec![1e-9, 2e-10])), trace } },
+            Row { point: u64::MAX, found: Found::Numbers { numbers: numbers.clone(), checked: checked(None), trace: trace.clone() } },
+            Row { point: 8, found: Found::Numbers { numbers, checked: checked(Some(alone)), trace } },
             Row { point: 0, found: Found::Failed("a pulse of length zero".to_string()) },
         ];
         let mut bytes = Vec::new();

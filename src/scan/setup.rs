@@ -87,7 +87,7 @@ impl Setup {
             // as many moments as the plan has as written; a guess where they move
             wide => self.plan.point().map_or(500, |point| point.problem().moments.len()) * (wide + 1),
         };
-        ((4 << 20) / (8 * (self.columns.len() * 2 + 4 + traced))).max(1)
+        ((4 << 20) / (8 * (self.columns.len() * 2 + 8 + traced))).max(1)
     }
 
     /// Names of the numbers that move, in the order of the axes.
@@ -180,7 +180,9 @@ fn trimmed(mut document: Document, keep: Keep) -> Document {
     if keep == Keep::Final {
         document.record.rows = Rows::At(Vec::new());
     }
-    document.record.items.retain(|item| !matches!(item, Item::Propagator | Item::QuasiEnergies(_)));
+    document.record.items.retain(|item| {
+        !matches!(item, Item::Propagator | Item::QuasiEnergies(_) | Item::Steady(_) | Item::Shots(_) | Item::ErrorBudget(_))
+    });
     document
 }
 

@@ -5,7 +5,7 @@ use std::io::{self, BufReader, Seek, SeekFrom};
 use std::path::{Path, PathBuf};
 
 use super::bits::Bits;
-use super::row::{Row, Width};
+use super::row::{Rank, Row, Width};
 use super::store::{inspect, Content, Part, Run, StoreFault};
 
 /// The files of stores in a folder, by part.
@@ -41,33 +41,43 @@ pub struct Shelf {
     stretches: Vec<Stretch>,
     /// Points that have a row.
     pub done: Bits,
-    /// Points whose row is settled, see [`Row::is_settled`].
-    pub settled: Bits,
+    /// Points whose row was computed at two resolutions.
+    pub checked: Bits,
+    /// Points that were solved by themselves, or failed.
+    pub alone: Bits,
+    /// Rows that tell of a failed point.
+    pub failed: u64,
     /// Points that lie in more than one file, or twice in one.
     pub double: u64,
 }
 
 impl Shelf {
-    /// Arranges the contents of files for a scan of `points`. Of several rows of a point a settled one counts, else the first.
+    /// Arranges the contents of files for a scan of `points`. Of several rows of a point the one of the highest rank
+    /// counts, of equals the first.
     pub fn new(contents: &[Content], points: u64) -> Shelf {
         let mut runs: Vec<(usize, Run)> =
             contents.iter().enumerate().flat_map(|(file, content)| content.runs.iter().map(move |run| (file, *run))).collect();
-        runs.sort_by_key(|(file, run)| (!run.settled, *file, run.offset));
+        runs.sort_by_key(|(file, run)| (std::cmp::Reverse(run.rank), *file, run.offset));
         let mut shelf = Shelf {
             files: contents.iter().map(|content| (content.path.clone(), content.head.width())).collect(),
             stretches: Vec::new(),
             done: Bits::new(points),
-            settled: Bits::new(points),
+            checked: Bits::new(points),
+            alone: Bits::new(points),
+            failed: contents.iter().map(|content| content.failed).sum(),
             double: 0,
         };
-        let mut plain_twice = Bits::new(points);
+        let mut plain = Bits::new(points);
         for (file, run) in runs {
             let mut open: Option<Stretch> = None;
             for k in 0..run.count {
                 let point = run.first + k;
-                if run.settled && !shelf.settled.insert(point) || !run.settled && !plain_twice.insert(point) {
-                    shelf.double += 1;
-                }
+                let new = match run.rank {
+                    Rank::Plain => plain.insert(point),
+                    Rank::Checked => shelf.checked.insert(point),
+                    Rank::Alone => shelf.alone.insert(point),
+                };
+                shelf.double += u64::from(!new);
                 if shelf.done.insert(point) {
                     match &mut open {
                         Some(stretch) => stretch.count += 1,
@@ -83,13 +93,18 @@ impl Shelf {
         shelf
     }
 
+    /// Whether a point was computed at two resolutions, or cannot be.
+    pub fn is_settled(&self, point: u64) -> bool {
+        self.checked.has(point) || self.alone.has(point)
+    }
+
     /// Calls `take` with every row in the order of the points, until it fails.
     pub fn rows<E: From<io::Error>>(&self, mut take: impl FnMut(Row) -> Result<(), E>) -> Result<(), E> {
-        // plain rows and settled ones lie apart, so each kind is read with a buffer of its own
+        // plain rows and the others lie apart, so each kind is read with a buffer of its own
         let mut readers: Vec<[Option<BufReader<File>>; 2]> = self.files.iter().map(|_| [None, None]).collect();
         for stretch in &self.stretches {
             let (path, width) = &self.files[stretch.file];
-            let slot = &mut readers[stretch.file][usize::from(stretch.run.settled)];
+            let slot = &mut readers[stretch.file][usize::from(stretch.run.rank != Rank::Plain)];
             if slot.is_none() {
                 *slot = Some(BufReader::with_capacity(1 << 16, File::open(path)?));
             }

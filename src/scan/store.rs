@@ -11,7 +11,8 @@ use std::path::{Path, PathBuf};
 
 use serde_json::{json, Value};
 
-use super::row::{Row, Width};
+use super::row::{Checked, Found, Rank, Row, Width};
+use crate::propagate::Resolved;
 
 const MARKER: [u8; 8] = *b"\x93nutrec\n";
 const FRAME: u64 = 16;
@@ -65,6 +66,8 @@ pub struct Head {
     pub part: Part,
     /// Points that stay together in one part.
     pub tile: u64,
+    /// Points that are solved by themselves first, to find the resolution for all.
+    pub probes: Vec<u64>,
     /// Names of the columns.
     pub columns: Vec<String>,
     /// Names of the columns of the traces.
@@ -86,7 +89,7 @@ impl Head {
     fn to_json(&self) -> Value {
         json!({
             "program": self.program, "fingerprint": self.fingerprint, "lanes": self.lanes, "points": self.points,
-            "part": self.part.number, "parts": self.part.of, "tile": self.tile, "columns": self.columns, "traced": self.traced,
+            "part": self.part.number, "parts": self.part.of, "tile": self.tile, "probes": self.probes, "columns": self.columns, "traced": self.traced,
             "config": [self.config.0, self.config.1], "inputs": self.inputs, "set": self.set,
         })
     }
@@ -103,6 +106,7 @@ impl Head {
             points: json["points"].as_u64()?,
             part: Part { number: json["part"].as_u64()?, of: json["parts"].as_u64()? },
             tile: json["tile"].as_u64().filter(|tile| *tile > 0)?,
+            probes: json["probes"].as_array()?.iter().map(Value::as_u64).collect::<Option<_>>()?,
             columns: texts(&json["columns"])?,
             traced: texts(&json["traced"])?,
             config: pair(&json["config"])?,
@@ -121,8 +125,8 @@ pub struct Run {
     pub count: u64,
     /// Byte at which the first row starts.
     pub offset: u64,
-    /// See [`Row::is_settled`].
-    pub settled: bool,
+    /// How much its rows count.
+    pub rank: Rank,
 }
 
 /// Bytes that cannot be read.
@@ -147,6 +151,8 @@ pub struct Content {
     pub runs: Vec<Run>,
     /// Rows that tell of a failed point.
     pub failed: u64,
+    /// Probes, and how each was solved.
+    pub probed: Vec<(u64, Resolved)>,
     /// What cannot be read, other than a torn end.
     pub damaged: Vec<Damage>,
     /// Where its sound frames end; what follows is torn.
@@ -287,7 +293,16 @@ fn inspect_with(walker: &mut Walker, path: &Path) -> io::Result<Option<Result<Co
         }
     }
     let Some(head) = head else { return Ok(Some(Err(StoreFault::NoHead(path.to_path_buf())))) };
-    let mut content = Content { path: path.to_path_buf(), head, runs: Vec::new(), failed: 0, damaged: Vec::new(), end: place, torn: 0 };
+    let mut content = Content {
+        path: path.to_path_buf(),
+        head,
+        runs: Vec::new(),
+        failed: 0,
+        probed: Vec::new(),
+        damaged: Vec::new(),
+        end: place,
+        torn: 0,
+    };
     while place < walker.length {
         let kind = walker.at(place)?;
         if let At::Frame(bytes) = &kind {
@@ -324,11 +339,17 @@ fn index(bytes: &[u8], place: u64, content: &mut Content) -> Option<()> {
     for _ in 0..count {
         let offset = place + FRAME + (bytes.len() - left.len()) as u64;
         let row = Row::read(width, &mut left).ok()?;
-        let settled = row.is_settled();
-        content.failed += u64::from(matches!(row.found, super::row::Found::Failed(_)));
+        let rank = row.rank();
+        match &row.found {
+            Found::Failed(_) => content.failed += 1,
+            Found::Numbers { checked: Some(Checked { alone: Some(alone), .. }), .. } if content.head.probes.contains(&row.point) => {
+                content.probed.push((row.point, *alone));
+            }
+            Found::Numbers { .. } => {}
+        }
         match runs.last_mut() {
-            Some(run) if run.first + run.count == row.point && run.settled == settled => run.count += 1,
-            _ => runs.push(Run { first: row.point, count: 1, offset, settled }),
+            Some(run) if run.first + run.count == row.point && run.rank == rank => run.count += 1,
+            _ => runs.push(Run { first: row.point, count: 1, offset, rank }),
         }
     }
     content.runs.extend(runs);
@@ -361,7 +382,16 @@ impl Store {
                 both.extend(frame(&text));
                 (&file).write_all(&both).and_then(|()| file.sync_all()).map_err(io)?;
                 let end = both.len() as u64;
-                Content { path: path.to_path_buf(), head: head.clone(), runs: Vec::new(), failed: 0, damaged: Vec::new(), end, torn: 0 }
+                Content {
+                    path: path.to_path_buf(),
+                    head: head.clone(),
+                    runs: Vec::new(),
+                    failed: 0,
+                    probed: Vec::new(),
+                    damaged: Vec::new(),
+                    end,
+                    torn: 0,
+                }
             }
         };
         let width = content.head.width();

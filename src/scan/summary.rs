@@ -4,7 +4,7 @@
 use std::collections::BTreeMap;
 use std::io;
 
-use super::row::{Found, Row};
+use super::row::{Checked, Found, Row};
 use super::setup::Setup;
 use super::shelf::Shelf;
 use crate::config::scan::Make;
@@ -70,6 +70,8 @@ pub struct Summary {
     pub reasons: BTreeMap<String, u64>,
     /// Points computed at two resolutions.
     pub checked: u64,
+    /// Points that were solved by themselves.
+    pub alone: u64,
     /// Largest error of any of them, over its scale.
     pub error_figure: f64,
     /// Largest error of each column.
@@ -129,8 +131,9 @@ impl Summary {
                         Some([low, high]) => [if here.0 < low.0 { here } else { low }, if here.0 > high.0 { here } else { high }],
                     });
                 }
-                if let Some((figure, errors)) = checked {
+                if let Some(Checked { figure, errors, alone }) = checked {
                     self.checked += 1;
+                    self.alone += u64::from(alone.is_some());
                     self.inaccurate += u64::from(*figure > asked);
                     if *figure > self.error_figure || self.worst.is_none() {
                         (self.error_figure, self.worst) = (*figure, Some(row.point));

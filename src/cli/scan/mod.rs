@@ -22,11 +22,11 @@ use crate::report::scan_figures::Points;
 use crate::report::scan_folder::{spaced, tidy, Opened, Opening, ScanFault, ScanFolder};
 use crate::report::{scan_files, scan_json, scan_text};
 use crate::scan::begin::{head, order};
-use crate::scan::engine::{run as run_engine, Ended, Progress, Running};
+use crate::scan::engine::{check_again, recipe_of, Ended, Engine, Progress, Running};
 use crate::scan::limit;
 use crate::scan::setup::Setup;
 use crate::scan::shelf::Shelf;
-use crate::scan::store::{Content, Part};
+use crate::scan::store::{Content, Part, Store};
 use crate::scan::summary::{cuts, region, Summary};
 
 /// Words of the verb.
@@ -188,7 +188,6 @@ impl Computing<'_> {
             complain(&format!("{} bytes that a broken-off start had left at the end of the store were cut off.\n", opened.torn));
         }
         let shelf = Shelf::new(&opened.contents, self.setup.grid.points());
-        let mine = order.all().filter(|point| shelf.done.has(*point)).count() as u64;
         let variable = |name: &str| std::env::var(name).ok();
         let running = Running {
             threads: limit::threads(&self.run, variable),
@@ -197,10 +196,12 @@ impl Computing<'_> {
             stop: &stop,
             on_failed_point: self.run.on_failed_point,
         };
-        let failed = opened.contents.iter().map(|content| content.failed).sum();
-        let mut progress = Progress { points: order.count(), reused: mine, failed, ..Progress::default() };
+        let threads = running.threads;
+        let probes = opened.contents[0].head.probes.clone();
+        let probed = opened.contents.iter().flat_map(|content| content.probed.clone()).collect();
+        let mut engine = Engine { setup: self.setup, order, probes: &probes, probed, shelf: &shelf, store: &mut opened.store, running };
         let mut teller = Teller::new(self.quiet);
-        let ended = run_engine(self.setup, &order, (&mut opened.store, &shelf.done), &running, &mut progress, |now| teller.tell(now));
+        let (ended, progress) = engine.run(&mut |now| teller.tell(now));
         teller.done();
         match ended {
             Ended::Complete => {}
@@ -209,19 +210,18 @@ impl Computing<'_> {
         if self.part != Part::WHOLE {
             return Ok(self.part_done(&progress, &opened.folder));
         }
-        let contents = reread(&opened)?;
-        let shelf = Shelf::new(&contents, self.setup.grid.points());
         let finishing = Finishing {
             setup: self.setup,
             folder: &opened.folder,
             computed: progress.computed,
             reused: progress.reused,
-            threads: running.threads,
+            threads,
             began,
             json: words.results.json,
             quiet: words.results.quiet,
         };
-        finishing.finish(&shelf)
+        let contents = reread(&opened.folder)?;
+        finishing.finish(contents, &mut opened.store)
     }
 
     /// Says why it stopped, and that it goes on from there.
@@ -269,8 +269,8 @@ impl Computing<'_> {
     }
 }
 
-fn reread(opened: &ScanFolder) -> Result<Vec<Content>, Status> {
-    crate::scan::shelf::read_all(&opened.folder).map_err(|fault| refuse_folder(&fault.into()))
+fn reread(folder: &Path) -> Result<Vec<Content>, Status> {
+    crate::scan::shelf::read_all(folder).map_err(|fault| refuse_folder(&fault.into()))
 }
 
 /// From a full shelf to the files of the result.
@@ -286,8 +286,9 @@ pub(super) struct Finishing<'a> {
 }
 
 impl Finishing<'_> {
-    /// Writes everything and says what it was.
-    pub fn finish(&self, shelf: &Shelf) -> Result<Status, Status> {
+    /// Computes the extremes again at two resolutions where they were computed once, into `store`, then writes everything and says
+    /// what it was.
+    pub fn finish(&self, contents: Vec<Content>, store: &mut Store) -> Result<Status, Status> {
         let failed = |error: std::io::Error| {
             let resumable = "the points are all stored; the same command goes on from there";
             complain(&format!("error: the results could not be written to {}: {error}; {resumable}.\n", self.folder.display()));
@@ -298,7 +299,20 @@ impl Finishing<'_> {
             }
         };
         let setup = self.setup;
-        let summary = Summary::of(setup, shelf).map_err(failed)?;
+        let mut shelf = Shelf::new(&contents, setup.grid.points());
+        let mut summary = Summary::of(setup, &shelf).map_err(failed)?;
+        let rough: Vec<u64> = summary.extreme_points().into_iter().filter(|point| !shelf.is_settled(*point)).collect();
+        let probed: Vec<_> = contents.iter().flat_map(|content| content.probed.clone()).collect();
+        if !rough.is_empty() {
+            check_again(setup, &probed, &rough, store).map_err(failed)?;
+            let again = crate::scan::store::inspect(store.path()).map_err(|fault| refuse_folder(&fault.into()))?;
+            let mut now = contents;
+            now.retain(|content| content.path != store.path());
+            now.extend(again);
+            shelf = Shelf::new(&now, setup.grid.points());
+            summary = Summary::of(setup, &shelf).map_err(failed)?;
+        }
+        let shelf = &shelf;
         let through = summary.best.as_ref().map(|best| cuts(setup, shelf, best.point)).transpose().map_err(failed)?;
         let tolerance = setup.scan.best.as_ref().and_then(|best| best.tolerance);
         let within = match (&summary.best, &through, tolerance) {
@@ -312,7 +326,7 @@ impl Finishing<'_> {
             computed: self.computed,
             reused: self.reused,
             threads: self.threads,
-            method: serde_json::json!({"name": "each point by its own choice", "reason": "each point was refined until it met the accuracy"}),
+            resolution: recipe_of(&probed).words(),
             warnings: scan_json::warnings(setup),
             seconds: self.began.elapsed().as_secs_f64(),
         };

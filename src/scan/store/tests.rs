@@ -9,6 +9,7 @@ fn head() -> Head {
         points: 100,
         part: Part::WHOLE,
         tile: 1,
+        probes: Vec::new(),
         columns: vec!["a".to_string(), "b".to_string()],
         traced: Vec::new(),
         config: ("c.yaml".to_string(), "format: 1\n".to_string()),
