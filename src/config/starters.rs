@@ -93,6 +93,12 @@ pub const STARTERS: &[Starter] = &[
         text: include_str!("../../configs/strong-spin.yaml"),
         beside: &[],
     },
+    Starter {
+        kind: "chirped-map",
+        about: "a swept pulse, ten thousand settings of it: which inverts, and how tightly each number must be held",
+        text: include_str!("../../configs/chirped-map.yaml"),
+        beside: &[],
+    },
 ];
 
 /// The starter of a kind; blanks and underscores count as dashes, large letters as small ones.
