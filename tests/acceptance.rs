@@ -300,7 +300,7 @@ fn cases_of_compare() {
 
 #[test]
 fn cases_of_scan() {
-    judge_cases("scan", 5);
+    judge_cases("scan", 9);
 }
 
 /// Files below a folder.

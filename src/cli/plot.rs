@@ -4,11 +4,15 @@ use std::path::PathBuf;
 
 use clap::Args;
 
+use super::scan::set_up;
 use super::{complain, point, print, refuse, Status};
-use crate::config::document::read_archived;
+use crate::config::document::{read_archived, Document};
 use crate::measure::observables;
 use crate::plan::Plan;
+use crate::report::scan_csv::Table;
+use crate::report::scan_figures::{of_scan, Points};
 use crate::report::{figures, traces_csv};
+use crate::scan::summary::{cuts, Summary};
 
 /// Words of the verb.
 #[derive(Args)]
@@ -47,6 +51,9 @@ fn try_plot(words: &Words) -> Result<Status, Status> {
         refuse(&refusal);
         Status::Refused
     })?;
+    if json.get("points").is_some() {
+        return plot_scan(words, document);
+    }
     let plan = Plan::new(document);
     let point = point(&plan)?;
     let document = plan.document();
@@ -71,6 +78,35 @@ fn try_plot(words: &Words) -> Result<Status, Status> {
                 })?;
                 names.extend(written);
             }
+            Err(reason) => complain(&format!("warning: the plot {name} was not drawn: {reason}.\n")),
+        }
+    }
+    if !words.quiet {
+        print(&format!("{} in {shown}\n", names.join(", ")));
+    }
+    Ok(Status::Good)
+}
+
+/// Draws the plots of a scan again, from its table.
+fn plot_scan(words: &Words, document: Document) -> Result<Status, Status> {
+    let shown = words.folder.display();
+    let setup = set_up(document)?;
+    let failed = |error: std::io::Error| {
+        complain(&format!("error: the plots of {shown} cannot be drawn again: {error}.\n"));
+        if error.kind() == std::io::ErrorKind::InvalidData {
+            Status::Refused
+        } else {
+            Status::Machine
+        }
+    };
+    let table = Table { setup: &setup, path: words.folder.join("scan.csv") };
+    let best = Summary::of(&setup, &table).map_err(failed)?.best;
+    let through = best.as_ref().map(|best| cuts(&setup, &table, best.point)).transpose().map_err(failed)?;
+    let points = Points::of(&setup, &table, best, through.unwrap_or_default()).map_err(failed)?;
+    let mut names = Vec::new();
+    for (name, figure) in of_scan(&points) {
+        match figure {
+            Ok(drawn) => names.extend(figures::save(&words.folder, &name, &drawn).map_err(failed)?),
             Err(reason) => complain(&format!("warning: the plot {name} was not drawn: {reason}.\n")),
         }
     }

@@ -11,7 +11,7 @@ use crate::report::fingerprint::fingerprint;
 use crate::report::heading::heading;
 use crate::scan::row::Found;
 use crate::scan::setup::Setup;
-use crate::scan::shelf::Shelf;
+use crate::scan::shelf::Rows;
 use crate::scan::summary::{BestPoint, Cut};
 
 /// A plot by its file name, or why it could not be drawn.
@@ -104,16 +104,16 @@ impl<'a> Points<'a> {
         points
     }
 
-    /// Collects all rows of a shelf.
-    pub fn of(setup: &'a Setup, shelf: &Shelf, best: Option<BestPoint>, cuts: Vec<Cut>) -> io::Result<Points<'a>> {
+    /// Collects all rows.
+    pub fn of(setup: &'a Setup, rows: &dyn Rows, best: Option<BestPoint>, cuts: Vec<Cut>) -> io::Result<Points<'a>> {
         let mut points = Points::new(setup, best, cuts);
         if points.across.is_some() {
-            shelf.rows(|row| {
+            rows.each(&mut |row| {
                 match &row.found {
                     Found::Numbers { numbers, .. } => points.add(row.point, Some(numbers)),
                     Found::Failed(_) => points.add(row.point, None),
                 }
-                Ok::<(), io::Error>(())
+                Ok(())
             })?;
         }
         Ok(points)

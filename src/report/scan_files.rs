@@ -13,7 +13,7 @@ use super::scan_json::{result, Finished};
 use super::write::Written;
 use super::{figures, npy, scan_csv};
 use crate::scan::row::Found;
-use crate::scan::shelf::Shelf;
+use crate::scan::shelf::{Rows, Shelf};
 
 /// Writes table, traces, plots and result.json; gives the object too.
 pub fn write(staging: Staging, shelf: &Shelf, finished: &Finished, points: &Points) -> io::Result<(Written, Value)> {
@@ -61,7 +61,7 @@ fn traces(side: &Path, shelf: &Shelf, finished: &Finished) -> io::Result<Value> 
     let mut to = BufWriter::with_capacity(1 << 16, File::create(side.join("traces.npy"))?);
     npy::head(&mut to, &[finished.summary.points, moments as u64, wide as u64 + 1])?;
     let mut block = Vec::new();
-    shelf.rows(|row| {
+    shelf.each(&mut |row| {
         block.clear();
         if let Found::Numbers { trace: Some(trace), .. } = &row.found {
             for (time, numbers) in trace.times_s.iter().zip(trace.rows.chunks(wide)) {

@@ -97,9 +97,16 @@ impl Shelf {
     pub fn is_settled(&self, point: u64) -> bool {
         self.checked.has(point) || self.alone.has(point)
     }
+}
 
-    /// Calls `take` with every row in the order of the points, until it fails.
-    pub fn rows<E: From<io::Error>>(&self, mut take: impl FnMut(Row) -> Result<(), E>) -> Result<(), E> {
+/// Rows of a scan in the order of its points, wherever they lie.
+pub trait Rows {
+    /// Calls `take` with every row, until it fails.
+    fn each(&self, take: &mut dyn FnMut(Row) -> io::Result<()>) -> io::Result<()>;
+}
+
+impl Rows for Shelf {
+    fn each(&self, take: &mut dyn FnMut(Row) -> io::Result<()>) -> io::Result<()> {
         // plain rows and the others lie apart, so each kind is read with a buffer of its own
         let mut readers: Vec<[Option<BufReader<File>>; 2]> = self.files.iter().map(|_| [None, None]).collect();
         for stretch in &self.stretches {

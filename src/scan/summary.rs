@@ -6,7 +6,7 @@ use std::io;
 
 use super::row::{Checked, Found, Row};
 use super::setup::Setup;
-use super::shelf::Shelf;
+use super::shelf::Rows;
 use crate::config::scan::Make;
 
 /// Failed points that are kept by name.
@@ -90,13 +90,13 @@ pub struct Summary {
 
 impl Summary {
     /// Passes over all rows.
-    pub fn of(setup: &Setup, shelf: &Shelf) -> io::Result<Summary> {
+    pub fn of(setup: &Setup, rows: &dyn Rows) -> io::Result<Summary> {
         let wide = setup.columns.len();
         let mut summary = Summary { errors: vec![0.0; wide], extremes: vec![None; wide], ..Summary::default() };
         let asked = setup.document().accuracy.last;
-        shelf.rows(|row| {
+        rows.each(&mut |row| {
             summary.add(&row, asked);
-            Ok::<(), io::Error>(())
+            Ok(())
         })?;
         if let Some(best) = &setup.scan.best {
             let column = setup.columns.iter().position(|column| column.name == best.of);
@@ -156,14 +156,14 @@ impl Summary {
 }
 
 /// The cuts through a point along each group of axes that has more than one place.
-pub fn cuts(setup: &Setup, shelf: &Shelf, through: u64) -> io::Result<Vec<Cut>> {
+pub fn cuts(setup: &Setup, rows: &dyn Rows, through: u64) -> io::Result<Vec<Cut>> {
     let grid = &setup.grid;
     let here = grid.coordinates(through);
     let mut cuts: Vec<Cut> = (0..here.len())
         .filter(|group| grid.counts()[*group] > 1)
         .map(|group| Cut { group, numbers: vec![None; grid.counts()[group] as usize] })
         .collect();
-    shelf.rows(|row| {
+    rows.each(&mut |row| {
         let along = grid.coordinates(row.point);
         let mut off = (0..along.len()).filter(|group| along[*group] != here[*group]);
         let numbers = match row.found {
@@ -179,21 +179,21 @@ pub fn cuts(setup: &Setup, shelf: &Shelf, through: u64) -> io::Result<Vec<Cut>> 
             }
             _ => {}
         }
-        Ok::<(), io::Error>(())
+        Ok(())
     })?;
     Ok(cuts)
 }
 
 /// The region in which the tolerance is met: its points, and how far it reaches along each cut.
-pub fn region(setup: &Setup, shelf: &Shelf, best: &BestPoint, cuts: &[Cut], tolerance: f64) -> io::Result<Region> {
+pub fn region(setup: &Setup, rows: &dyn Rows, best: &BestPoint, cuts: &[Cut], tolerance: f64) -> io::Result<Region> {
     let small = setup.scan.best.as_ref().is_some_and(|best| best.make == Make::Small);
     let serves = |value: f64| if small { value <= best.value + tolerance } else { value >= best.value - tolerance };
     let mut points = 0;
-    shelf.rows(|row| {
+    rows.each(&mut |row| {
         if let Found::Numbers { numbers, .. } = &row.found {
             points += u64::from(serves(numbers[best.column]));
         }
-        Ok::<(), io::Error>(())
+        Ok(())
     })?;
     let here = setup.grid.coordinates(best.point);
     let reaches = cuts
