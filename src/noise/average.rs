@@ -72,6 +72,11 @@ pub fn compute<'p>(document: &'p Document, point: &Point<'p>, draws: &Draws) -> 
     Ok(outcome.with_budget(document, shares))
 }
 
+/// Whether the numbers of a point are means over runs: of noise, or of quantum trajectories.
+pub fn is_average(document: &Document, point: &Point) -> bool {
+    !document.noise.is_empty() || super::trajectories::wanted(point.problem())
+}
+
 /// The same without an error budget; `noise` is whether noise acts.
 pub(super) fn plain<'p>(document: &'p Document, point: &Point<'p>, draws: &Draws, noise: bool) -> Result<Outcome, Mistake> {
     if super::trajectories::wanted(point.problem()) {

@@ -19,5 +19,5 @@ mod source;
 mod statistics;
 mod trajectories;
 
-pub use average::{compute, Draws};
+pub use average::{compute, is_average, Draws};
 pub use source::figures;

@@ -205,6 +205,7 @@ impl Job<'_> {
         let resolution =
             |fine: &Fine, count: u64| Resolution { words: format!("{count} trajectories, {}", fine.words()), steps: total.steps };
         let solved = Solved {
+            resolved: None,
             finer: Recorded { numbers: finer, in_rows: total.in_rows, ..Recorded::default() },
             recorded,
             method: Trajectories::new(self.problem, &self.observables.demand).method(),

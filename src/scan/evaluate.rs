@@ -7,7 +7,7 @@
 use super::row::{Checked, Found, Row, Trace};
 use super::setup::Setup;
 use crate::config::messages::{one_line, Mistake};
-use crate::noise::{compute, Draws};
+use crate::noise::{compute, is_average, Draws};
 use crate::outcome::{compute_from, compute_once, final_columns, Final, Once, Outcome};
 use crate::plan::{Mover, Plan, Point};
 use crate::propagate::{figure, Recipe};
@@ -51,7 +51,7 @@ impl<'s> Evaluator<'s> {
         let (setup, threads) = (self.setup, self.threads);
         self.with(point, |structure| {
             let (document, at) = (structure.plan.document(), structure.mover.point());
-            let outcome = if document.noise.is_empty() {
+            let outcome = if !is_average(document, at) {
                 compute_from(document, at, recipe)
             } else {
                 let family = if setup.scan.same_noise { 0 } else { point };
@@ -71,7 +71,14 @@ impl<'s> Evaluator<'s> {
             return self.checked(point, recipe);
         }
         let mut covered = true;
-        let row = self.with(point, |structure| match compute_once(structure.plan.document(), structure.mover.point(), recipe) {
+        let once = |structure: &Structure<'s>| {
+            let (document, at) = (structure.plan.document(), structure.mover.point());
+            if is_average(document, at) {
+                return None;
+            }
+            compute_once(document, at, recipe)
+        };
+        let row = self.with(point, |structure| match once(structure) {
             Some(once) => structure.of_once(setup, once),
             None => {
                 covered = false;
