@@ -233,3 +233,53 @@ impl Job<'_> {
         Measured { solved, average: Some(average) }
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use std::path::Path;
+
+    use super::*;
+    use crate::config::document;
+    use crate::plan::Plan;
+
+    /// A chain of 26 levels that decay one into the next at 2 /us.
+    fn outcome(accuracy: f64, seed: u64, threads: usize) -> Result<Outcome, Mistake> {
+        let levels: Vec<String> = (0..26).map(|k| format!("{k}: {k} MHz")).collect();
+        let decays: String = (1..26).map(|k| format!("  - {{from: {k}, to: {}, rate: 2 /us}}\n", k - 1)).collect();
+        let text = format!(
+            "format: 1\nsystem:\n  levels: {{{}}}\nsequence:\n  - wait: 1 us\ndecay:\n{decays}start: 25\n\
+             record: {{at: [1 us], populations: all, time_in: [25]}}\naccuracy: {{final: {accuracy:e}, seed: {seed}}}\n",
+            levels.join(", ")
+        );
+        let document = document::read_str("chain", &text, Path::new(""), &[]).unwrap_or_else(|refusal| panic!("{}", refusal.text()));
+        let plan = Plan::new(document);
+        let point = plan.point()?;
+        super::super::compute(plan.document(), &point, &Draws { threads, ..Draws::default() })
+    }
+
+    /// The same numbers for any number of threads, others for another seed; right within five standard errors: the jumps so far
+    /// follow Poisson's law (S. D. Poisson, Recherches sur la probabilite des jugements (1837)).
+    #[test]
+    fn exact_chain_by_any_number_of_threads() {
+        let one = outcome(0.02, 4, 1).expect("runs");
+        let three = outcome(0.02, 4, 3).expect("runs");
+        assert_eq!(one.rows, three.rows);
+        assert_ne!(one.rows, outcome(0.02, 5, 3).expect("runs").rows);
+        assert!(one.reached && one.sampling_error().is_some_and(|error| error <= 0.02));
+        let mut expected = (-2.0f64).exp();
+        for jumps in 0..8 {
+            let found = one.finals[25 - jumps].value;
+            assert!((found - expected).abs() < 0.1, "{jumps} jumps: {found} against {expected}");
+            expected *= 2.0 / (jumps as f64 + 1.0);
+        }
+    }
+
+    /// More than a million trajectories are refused, with their number.
+    #[test]
+    fn prop_too_many_are_refused() {
+        match outcome(1e-4, 0, 1).map_err(|mistake| mistake.fault) {
+            Err(Fault::Open(OpenFault::TooManyTrajectories { needed, .. })) => assert!(needed > 1e7 && needed < 1e8, "{needed:e}"),
+            other => panic!("{:?}", other.map(|outcome| outcome.error_figure)),
+        }
+    }
+}

@@ -1,5 +1,10 @@
 //! Open systems: the density matrix as real coordinates x, d(x)/dt = G(t) x.
 //!
+//! Error figures are made as in `../refine.rs`. Held against an independent collocation of order 16 of the whole Liouvillian in 800
+//! problems of 2 to 4 levels with up to three jumps (test `calibrate_error_figure_of_densities`, 200 each by automatic choice,
+//! Runge-Kutta, Magnus and slices): the true error never exceeded the figure, and the figure was never more than ten times the
+//! larger of the true error and 1e-12.
+//!
 //! | file | what it does |
 //! |---|---|
 //! | `coordinates.rs` | Hermitian matrix to real numbers and back; operators of a channel |
