@@ -246,3 +246,33 @@ proptest! {
         prop_assert!(weak.abs() < strong.abs() / 3.9, "{strong} at {rabi}, {weak} at half of it");
     }
 }
+
+/// A lowering operator on a ladder whose gaps differ beats in a table frame: nothing of it may show in the populations (C.
+/// Cohen-Tannoudji, J. Dupont-Roc, G. Grynberg, Atom-Photon Interactions, Wiley (1992), chapter IV, for what dropping it would do).
+#[test]
+fn prop_beats_of_a_jump_operator_do_not_depend_on_the_frame() {
+    let text = |frame: &str| {
+        format!(
+            "format: 1\nsystem:\n  levels: {{a: 0 MHz, b: 7 MHz, c: 13 MHz}}\noperators:\n  lower:\n    rows: [[0, 1, 0], [0, 0, sqrt(2)], [0, 0, 0]]\n\
+             drives:\n  rf: {{pair: [b, c], form: one_sided, carrier: 6 MHz}}\nenvelopes:\n  hump: {{shape: sine squared, length: 1 us, peak: 1.3 MHz}}\n\
+             sequence:\n  - pulse: {{drive: rf, envelope: hump}}\ndecay:\n  - {{operator: lower, lifetime: 0.7 us}}\n\
+             start: {{superposition: {{a: [0.6, 0 deg], b: [0.48, 0 deg], c: [0.64, 40 deg]}}}}\nframe: {frame}\n\
+             record: {{at: [0.3 us, 1 us], populations: all}}\naccuracy: {{final: 1e-9}}\n"
+        )
+    };
+    let run = |frame: &str| {
+        let plan = Plan::new(document(&text(frame), &[]));
+        let point = plan.point().unwrap_or_else(|mistake| panic!("{mistake:?}"));
+        (compute(plan.document(), &point), point.warnings.len())
+    };
+    let (lab, _) = run("{kind: lab}");
+    let table = "follows: {a: 0 MHz, b: 6.5 MHz, c: 13.2 MHz}";
+    let (kept, _) = run(&format!("{{kind: rotating, {table}, drop_terms_faster_than: nothing}}"));
+    for (a, b) in lab.rows.iter().zip(&kept.rows) {
+        assert!((a - b).abs() <= lab.error_figure + kept.error_figure, "{a} against {b}");
+    }
+    // 0.2 MHz is what b and c turn apart beyond a and b: faster than the limit, so the beat is dropped, and said to be
+    let (dropped, warnings) = run(&format!("{{kind: rotating, {table}, drop_terms_faster_than: 0.1 MHz}}"));
+    let apart = lab.rows.iter().zip(&dropped.rows).map(|(a, b)| (a - b).abs()).fold(0.0, f64::max);
+    assert!(warnings > 0 && apart > 1e-3, "{warnings} warnings, {apart:e} apart");
+}
