@@ -31,7 +31,7 @@ pub const MOST_LEVELS: usize = 1024;
 pub struct System {
     /// Where the section stands.
     pub place: Place,
-    /// Which key described it: one of [`KINDS`].
+    /// Which key described it: one of `KINDS`.
     pub kind: &'static str,
     /// Names of the states as built, in order; those of the working basis once the document is read.
     pub names: Vec<String>,

@@ -189,7 +189,7 @@ impl Plan<'_> {
                 coarse += whole;
             }
         }
-        let sign = if self.shared % 2 == 0 { 1.0 } else { -1.0 };
+        let sign = if self.shared.is_multiple_of(2) { 1.0 } else { -1.0 };
         (fine * sign, coarse * sign)
     }
 

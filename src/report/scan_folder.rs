@@ -113,7 +113,7 @@ pub fn spaced(count: u64) -> String {
     let digits = count.to_string();
     let mut text = String::new();
     for (k, digit) in digits.chars().enumerate() {
-        if k > 0 && (digits.len() - k) % 3 == 0 && digits.len() > 4 {
+        if k > 0 && (digits.len() - k).is_multiple_of(3) && digits.len() > 4 {
             text.push(' ');
         }
         text.push(digit);

@@ -173,12 +173,7 @@ impl Engine<'_> {
     }
 
     /// Computes some points, all in one way.
-    fn stage(
-        &mut self,
-        watch: &mut Watch,
-        points: &mut (dyn Iterator<Item = u64> + Send),
-        how: &(dyn Fn(&mut Evaluator, u64) -> Row + Sync),
-    ) -> Ended {
+    fn stage(&mut self, watch: &mut Watch, points: &mut (dyn Iterator<Item = u64> + Send), how: &How<'_>) -> Ended {
         let feed = Mutex::new(points);
         let halt = AtomicBool::new(false);
         let (setup, threads) = (self.setup, self.running.threads.max(1));
@@ -277,11 +272,14 @@ pub fn recipe_of(probed: &[(u64, Resolved)]) -> Recipe {
     recipe
 }
 
+/// How the row of a point is made.
+type How<'a> = dyn Fn(&mut Evaluator, u64) -> Row + Sync + 'a;
+
 /// One thread: takes points, computes them, hands the rows over.
 fn work(
     setup: &Setup,
     feed: &Mutex<&mut (dyn Iterator<Item = u64> + Send)>,
-    (how, halt): (&(dyn Fn(&mut Evaluator, u64) -> Row + Sync), &AtomicBool),
+    (how, halt): (&How<'_>, &AtomicBool),
     threads: usize,
     send: &SyncSender<Vec<Row>>,
 ) {

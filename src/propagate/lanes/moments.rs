@@ -9,6 +9,9 @@
 use std::fmt;
 use std::sync::Arc;
 
+/// All channels at a moment, s from the start of the stretch, into a slice as long.
+pub type Channels = Arc<dyn Fn(f64, &mut [f64]) + Send + Sync>;
+
 /// u_k(t) of all channels of a stretch.
 #[derive(Clone)]
 pub enum Profile {
@@ -24,7 +27,7 @@ pub enum Profile {
         /// Length, s.
         length_s: f64,
         /// All channels at a moment, s from the start of the stretch, into a slice as long.
-        at: Arc<dyn Fn(f64, &mut [f64]) + Send + Sync>,
+        at: Channels,
     },
 }
 

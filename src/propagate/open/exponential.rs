@@ -64,7 +64,7 @@ pub(super) fn dense(n: usize, a: &[f64], norm: f64, kept: Option<usize>) -> Vec<
     let c: Vec<f64> = (0..=16).map(inverse_factorial).collect();
     // four terms of the polynomial from x^(4 block) on
     let part = |block: usize, at: usize| {
-        let unit = if at % (n + 1) == 0 { c[4 * block] } else { 0.0 };
+        let unit = if at.is_multiple_of(n + 1) { c[4 * block] } else { 0.0 };
         unit + c[4 * block + 1] * x[at] + c[4 * block + 2] * x2[at] + c[4 * block + 3] * x3[at]
     };
     let mut sum: Vec<f64> = (0..n * n).map(|at| part(3, at) + c[16] * x4[at]).collect();
