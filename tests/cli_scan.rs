@@ -1,5 +1,7 @@
 //! `nutate scan`, `status` and `merge` as a person meets them: killed at any instant, stopped, damaged, doubled, out of room.
 
+#![allow(clippy::unwrap_used)] // a test may end at the first surprise
+
 use std::fs;
 use std::path::{Path, PathBuf};
 use std::process::{Child, Command, Output, Stdio};
@@ -75,17 +77,17 @@ struct Desk {
 
 impl Desk {
     fn new(config: &str, rows: usize, columns: usize) -> Desk {
-        let desk = Desk { place: tempfile::tempdir().expect("the test folder is there and holds what the run left") };
+        let desk = Desk { place: tempfile::tempdir().unwrap() };
         desk.write(&config.replace("ROWS", &rows.to_string()).replace("COLUMNS", &columns.to_string()));
         desk
     }
 
     fn write(&self, text: &str) {
-        fs::write(self.config(), text).expect("the test folder is there and holds what the run left");
+        fs::write(self.config(), text).unwrap();
     }
 
     fn text(&self) -> String {
-        fs::read_to_string(self.config()).expect("the test folder is there and holds what the run left")
+        fs::read_to_string(self.config()).unwrap()
     }
 
     fn config(&self) -> PathBuf {
@@ -103,28 +105,20 @@ impl Desk {
     }
 
     fn run(&self, folder: &str, words: &[&str]) -> Output {
-        self.scan(folder, words).output().expect("the test folder is there and holds what the run left")
+        self.scan(folder, words).output().unwrap()
     }
 
     fn table(&self, folder: &str) -> Vec<u8> {
-        fs::read(self.folder(folder).join("scan.csv")).expect("the test folder is there and holds what the run left")
+        fs::read(self.folder(folder).join("scan.csv")).unwrap()
     }
 
     fn result(&self, folder: &str) -> Value {
-        serde_json::from_slice(
-            &fs::read(self.folder(folder).join("result.json")).expect("the test folder is there and holds what the run left"),
-        )
-        .expect("the test folder is there and holds what the run left")
+        serde_json::from_slice(&fs::read(self.folder(folder).join("result.json")).unwrap()).unwrap()
     }
 
     /// Points in the stores of a folder; none where there is no store.
     fn stored(&self, folder: &str) -> Option<u64> {
-        let done = nutate()
-            .arg("status")
-            .arg(self.folder(folder))
-            .arg("--json")
-            .output()
-            .expect("the test folder is there and holds what the run left");
+        let done = nutate().arg("status").arg(self.folder(folder)).arg("--json").output().unwrap();
         let told: Value = serde_json::from_slice(&done.stdout).ok()?;
         told["stored"].as_u64()
     }
@@ -141,7 +135,7 @@ fn said(output: &Output) -> String {
 fn wait(child: &mut Child, longest: Duration) -> i32 {
     let clock = Instant::now();
     loop {
-        if let Some(status) = child.try_wait().expect("the test folder is there and holds what the run left") {
+        if let Some(status) = child.try_wait().unwrap() {
             return status.code().unwrap_or(-1);
         }
         assert!(clock.elapsed() < longest, "it did not end within {longest:?}");
@@ -150,12 +144,7 @@ fn wait(child: &mut Child, longest: Duration) -> i32 {
 }
 
 fn send(signal: &str, child: &Child) {
-    assert!(Command::new("kill")
-        .arg(format!("-{signal}"))
-        .arg(child.id().to_string())
-        .status()
-        .expect("the test folder is there and holds what the run left")
-        .success());
+    assert!(Command::new("kill").arg(format!("-{signal}")).arg(child.id().to_string()).status().unwrap().success());
 }
 
 /// Waits until a child has stored something.
@@ -166,10 +155,7 @@ fn await_stored(desk: &Desk, folder: &str, child: &mut Child) -> u64 {
             Some(stored) if stored > 0 => return stored,
             _ => {}
         }
-        assert!(
-            child.try_wait().expect("the test folder is there and holds what the run left").is_none(),
-            "it ended before it had stored anything"
-        );
+        assert!(child.try_wait().unwrap().is_none(), "it ended before it had stored anything");
         assert!(clock.elapsed() < Duration::from_secs(60));
         std::thread::sleep(Duration::from_millis(5));
     }
@@ -207,14 +193,11 @@ fn kill_and_go_on(config: &str, rows: usize, columns: usize, kills: usize, seed:
         let mut before = 0;
         let ended = loop {
             let threads = 1 + (chance.next() * 4.0) as usize;
-            let mut child = desk
-                .scan(&folder, &["--threads", &threads.to_string(), "--quiet"])
-                .spawn()
-                .expect("the test folder is there and holds what the run left");
+            let mut child = desk.scan(&folder, &["--threads", &threads.to_string(), "--quiet"]).spawn().unwrap();
             // at least as long as a start takes, so that some of them get somewhere
             std::thread::sleep(undisturbed.mul_f64(0.01 + 0.12 * chance.next()) + Duration::from_millis(4));
-            child.kill().expect("the test folder is there and holds what the run left");
-            let status = child.wait().expect("the test folder is there and holds what the run left");
+            child.kill().unwrap();
+            let status = child.wait().unwrap();
             if let Some(code) = status.code() {
                 break code;
             }
@@ -232,14 +215,12 @@ fn kill_and_go_on(config: &str, rows: usize, columns: usize, kills: usize, seed:
         assert_eq!(ended, 0);
         assert_eq!(desk.table(&folder), wanted, "round {round}: the table differs from that of an undisturbed run");
         let result = desk.result(&folder);
-        let count = |key: &str| result[key].as_u64().expect("the test folder is there and holds what the run left");
+        let count = |key: &str| result[key].as_u64().unwrap();
         assert_eq!(count("computed") + count("reused"), points);
         assert!(count("reused") >= before, "{before} were stored, {} reused", count("reused"));
         assert_eq!(result["error_figure"], desk.result("whole")["error_figure"]);
-        let left: Vec<String> = fs::read_dir(desk.folder(&folder))
-            .expect("the test folder is there and holds what the run left")
-            .map(|entry| entry.expect("the test folder is there and holds what the run left").file_name().to_string_lossy().into_owned())
-            .collect();
+        let left: Vec<String> =
+            fs::read_dir(desk.folder(&folder)).unwrap().map(|entry| entry.unwrap().file_name().to_string_lossy().into_owned()).collect();
         assert!(!left.iter().any(|name| name.ends_with(".store") || name.ends_with(".lock") || name.starts_with('.')), "{left:?}");
     }
 }
@@ -264,12 +245,7 @@ fn cli_scan_is_the_same_with_any_number_of_threads_and_parts() {
         assert_eq!(status_of(&desk.run("parts", &["--part", part])), 0);
     }
     let merge = |folders: &[&str], words: &[&str]| {
-        nutate()
-            .arg("merge")
-            .args(folders.iter().map(|folder| desk.folder(folder)))
-            .args(words)
-            .output()
-            .expect("the test folder is there and holds what the run left")
+        nutate().arg("merge").args(folders.iter().map(|folder| desk.folder(folder))).args(words).output().unwrap()
     };
     let early = merge(&["parts"], &[]);
     assert_eq!(status_of(&early), 5);
@@ -277,33 +253,28 @@ fn cli_scan_is_the_same_with_any_number_of_threads_and_parts() {
     // the last part elsewhere, as on another machine
     assert_eq!(status_of(&desk.run("elsewhere", &["--part", "2/3"])), 0);
     let joined = desk.folder("joined");
-    let late =
-        merge(&["parts", "elsewhere"], &["--folder", joined.to_str().expect("the test folder is there and holds what the run left")]);
+    let late = merge(&["parts", "elsewhere"], &["--folder", joined.to_str().unwrap()]);
     assert_eq!(status_of(&late), 0, "{}", said(&late));
     assert_eq!(desk.table("joined"), desk.table("one"));
     assert_eq!(desk.result("joined")["error_figure"], desk.result("one")["error_figure"]);
     // the parts alone go on as a whole, and reuse what is there
     assert_eq!(status_of(&desk.run("parts", &[])), 0);
     assert_eq!(desk.table("parts"), desk.table("one"));
-    assert!(desk.result("parts")["reused"].as_u64().expect("the test folder is there and holds what the run left") > 300);
+    assert!(desk.result("parts")["reused"].as_u64().unwrap() > 300);
 }
 
 #[test]
 fn cli_scan_ends_with_five_when_asked_to_stop_and_goes_on() {
     let desk = Desk::new(SHAPED, 120, 120);
     for signal in ["TERM", "INT"] {
-        let mut child = desk
-            .scan("stopped", &["--threads", "2"])
-            .stderr(Stdio::piped())
-            .spawn()
-            .expect("the test folder is there and holds what the run left");
+        let mut child = desk.scan("stopped", &["--threads", "2"]).stderr(Stdio::piped()).spawn().unwrap();
         await_stored(&desk, "stopped", &mut child);
         send(signal, &child);
         assert_eq!(wait(&mut child, Duration::from_secs(20)), 5);
-        let words = said(&child.wait_with_output().expect("the test folder is there and holds what the run left"));
+        let words = said(&child.wait_with_output().unwrap());
         assert!(words.contains("goes on from there"), "{words}");
     }
-    let stored = desk.stored("stopped").expect("the test folder is there and holds what the run left");
+    let stored = desk.stored("stopped").unwrap();
     // the time limit of the config, with a margin
     let text = desk.text();
     desk.write(&format!("{text}run: {{time_limit: 5 s, stop_before_limit: 4.8 s}}\n"));
@@ -311,7 +282,7 @@ fn cli_scan_ends_with_five_when_asked_to_stop_and_goes_on() {
     assert!(status_of(&limited) == 5 && said(&limited).contains("before the time was up"), "{}", said(&limited));
     desk.write(&text);
     assert_eq!(status_of(&desk.run("stopped", &[])), 0);
-    assert!(desk.result("stopped")["reused"].as_u64().expect("the test folder is there and holds what the run left") >= stored);
+    assert!(desk.result("stopped")["reused"].as_u64().unwrap() >= stored);
     assert_eq!(status_of(&desk.run("whole", &[])), 0);
     assert_eq!(desk.table("stopped"), desk.table("whole"));
 }
@@ -319,11 +290,7 @@ fn cli_scan_ends_with_five_when_asked_to_stop_and_goes_on() {
 /// A scan of the shaped pulse, stopped in the middle.
 fn half_done() -> Desk {
     let desk = Desk::new(SHAPED, 60, 100);
-    let mut child = desk
-        .scan("half", &["--threads", "1", "--quiet"])
-        .stderr(Stdio::null())
-        .spawn()
-        .expect("the test folder is there and holds what the run left");
+    let mut child = desk.scan("half", &["--threads", "1", "--quiet"]).stderr(Stdio::null()).spawn().unwrap();
     while await_stored(&desk, "half", &mut child) < 500 {}
     send("TERM", &child);
     assert_eq!(wait(&mut child, Duration::from_secs(20)), 5);
@@ -334,20 +301,20 @@ fn half_done() -> Desk {
 fn cli_scan_names_a_damaged_byte_and_mends_it() {
     let desk = half_done();
     let store = desk.folder("half").join("part-1-of-1.store");
-    let sound = fs::read(&store).expect("the test folder is there and holds what the run left");
-    let stored = desk.stored("half").expect("the test folder is there and holds what the run left");
+    let sound = fs::read(&store).unwrap();
+    let stored = desk.stored("half").unwrap();
     let mut hurt = sound.clone();
     let middle = hurt.len() / 2;
     hurt[middle] ^= 1;
-    fs::write(&store, &hurt).expect("the test folder is there and holds what the run left");
+    fs::write(&store, &hurt).unwrap();
     let refused = desk.run("half", &[]);
     assert_eq!(status_of(&refused), 2);
     let words = said(&refused);
     assert!(words.contains("part-1-of-1.store") && words.contains("bytes") && words.contains("--repair"), "{words}");
-    assert_eq!(fs::read(&store).expect("the test folder is there and holds what the run left"), hurt, "nothing was changed");
+    assert_eq!(fs::read(&store).unwrap(), hurt, "nothing was changed");
     let mended = desk.run("half", &["--repair"]);
     assert_eq!(status_of(&mended), 0, "{}", said(&mended));
-    let reused = desk.result("half")["reused"].as_u64().expect("the test folder is there and holds what the run left");
+    let reused = desk.result("half")["reused"].as_u64().unwrap();
     assert!(reused < stored && reused > stored / 2, "{reused} of {stored}");
     assert_eq!(status_of(&desk.run("whole", &[])), 0);
     assert_eq!(desk.table("half"), desk.table("whole"));
@@ -360,7 +327,7 @@ fn cli_scan_refuses_a_changed_config_and_names_the_line() {
     // what changes no number may change
     desk.write(&format!("# a remark\n{}run: {{threads: 1}}\n", text.replace("title: Length", "title: length")));
     let stopped = desk.scan("half", &["--threads", "1"]).stderr(Stdio::null()).spawn();
-    let mut child = stopped.expect("the test folder is there and holds what the run left");
+    let mut child = stopped.unwrap();
     std::thread::sleep(Duration::from_millis(60));
     send("TERM", &child);
     let code = wait(&mut child, Duration::from_secs(20));
@@ -383,30 +350,21 @@ fn cli_scan_refuses_a_changed_config_and_names_the_line() {
 #[test]
 fn cli_scan_keeps_a_second_process_out() {
     let desk = Desk::new(SHAPED, 150, 150);
-    let mut first = desk
-        .scan("shared", &["--threads", "1", "--quiet"])
-        .stderr(Stdio::null())
-        .spawn()
-        .expect("the test folder is there and holds what the run left");
+    let mut first = desk.scan("shared", &["--threads", "1", "--quiet"]).stderr(Stdio::null()).spawn().unwrap();
     await_stored(&desk, "shared", &mut first);
     for words in [vec![], vec!["--part", "1/2"], vec!["--replace"]] {
         let second = desk.run("shared", &words);
         assert_eq!(status_of(&second), 2, "{words:?}");
         assert!(said(&second).contains("another process"), "{}", said(&second));
     }
-    let merge = nutate().arg("merge").arg(desk.folder("shared")).output().expect("the test folder is there and holds what the run left");
+    let merge = nutate().arg("merge").arg(desk.folder("shared")).output().unwrap();
     assert_eq!(status_of(&merge), 2);
-    let told = nutate().arg("status").arg(desk.folder("shared")).output().expect("the test folder is there and holds what the run left");
+    let told = nutate().arg("status").arg(desk.folder("shared")).output().unwrap();
     assert!(String::from_utf8_lossy(&told.stdout).contains("a process is at work"));
     send("TERM", &first);
     assert_eq!(wait(&mut first, Duration::from_secs(20)), 5);
     // parts do share a folder
-    let part = |number: &str| {
-        desk.scan("parts", &["--part", number, "--quiet", "--threads", "1"])
-            .stderr(Stdio::null())
-            .spawn()
-            .expect("the test folder is there and holds what the run left")
-    };
+    let part = |number: &str| desk.scan("parts", &["--part", number, "--quiet", "--threads", "1"]).stderr(Stdio::null()).spawn().unwrap();
     let (mut one, mut two) = (part("1/2"), part("2/2"));
     await_stored(&desk, "parts", &mut one);
     assert_eq!(status_of(&desk.run("parts", &["--part", "1/2"])), 2);
@@ -423,7 +381,7 @@ fn cli_scan_keeps_failed_points_with_their_reason() {
     desk.write(&desk.text().replace("from: 0.1 us, to: 1.2 us", "from: 0 us, to: 1 us"));
     let done = desk.run("failed", &[]);
     assert_eq!(status_of(&done), 4);
-    let table = String::from_utf8(desk.table("failed")).expect("the test folder is there and holds what the run left");
+    let table = String::from_utf8(desk.table("failed")).unwrap();
     assert!(table.lines().any(|line| line == "-2.0,0.0,"), "{table}");
     let result = desk.result("failed");
     assert_eq!((result["points"].as_u64(), result["failed"].as_u64()), (Some(9), Some(3)));
@@ -444,10 +402,9 @@ fn cli_scan_tells_before_it_starts() {
     let text = String::from_utf8_lossy(&told.stdout).into_owned();
     assert!(text.contains("10 201 points") && text.contains("memory") && text.contains("disk"), "{text}");
     assert!(!desk.folder("none").exists());
-    let json: Value = serde_json::from_slice(&desk.run("none", &["--dry-run", "--json"]).stdout)
-        .expect("the test folder is there and holds what the run left");
+    let json: Value = serde_json::from_slice(&desk.run("none", &["--dry-run", "--json"]).stdout).unwrap();
     assert_eq!(json["points"], 10_201);
-    assert!(json["seconds"].as_f64().expect("the test folder is there and holds what the run left") > 0.0);
+    assert!(json["seconds"].as_f64().unwrap() > 0.0);
 
     let point = desk.run("none", &["--point", "offset=0.5MHz, length=0.3us"]);
     let text = String::from_utf8_lossy(&point.stdout).into_owned();
@@ -467,9 +424,9 @@ fn cli_scan_names_the_best_point_and_how_far_it_holds() {
     assert_eq!(best["at"]["offset_MHz"], 0.0);
     let along = &best["region"]["along"];
     // 1 - (D/R)^2 stays within 0.01 up to D = 0.2 MHz (I. I. Rabi, Physical Review 51, 652 (1937)), and the length moves with it
-    let width = along["offset_MHz"]["to"].as_f64().expect("the test folder is there and holds what the run left");
+    let width = along["offset_MHz"]["to"].as_f64().unwrap();
     assert!((0.1..=0.25).contains(&width), "{best}");
-    assert!(best["region"]["points"].as_u64().expect("the test folder is there and holds what the run left") > 3);
+    assert!(best["region"]["points"].as_u64().unwrap() > 3);
 }
 
 #[test]
@@ -482,11 +439,9 @@ fn cli_scan_keeps_whole_traces_as_an_array() {
     // up to 1.2 us in steps of 0.1 us; the shorter pulse has two moments
     assert_eq!(traces["shape"], serde_json::json!([6, 13, 3]));
     assert_eq!(traces["columns"][1], "population_down");
-    let bytes = fs::read(desk.folder("traces").join("traces.npy")).expect("the test folder is there and holds what the run left");
-    let numbers: Vec<f64> = bytes[bytes.len() - 6 * 13 * 3 * 8..]
-        .chunks_exact(8)
-        .map(|eight| f64::from_le_bytes(eight.try_into().expect("the test folder is there and holds what the run left")))
-        .collect();
+    let bytes = fs::read(desk.folder("traces").join("traces.npy")).unwrap();
+    let numbers: Vec<f64> =
+        bytes[bytes.len() - 6 * 13 * 3 * 8..].chunks_exact(8).map(|eight| f64::from_le_bytes(eight.try_into().unwrap())).collect();
     assert_eq!(&numbers[..3], &[0.0, 1.0, 0.0]);
     assert!(numbers[2 * 3].is_nan(), "what a shorter trace lacks is no number");
     let last = 13 * 3 * 2 - 3;
@@ -509,7 +464,7 @@ fn cli_scan_on_a_full_disk_goes_on_when_there_is_room() {
     }
     let desk = Desk::new(SHAPED, 100, 120);
     let disk = desk.folder("disk");
-    fs::create_dir(&disk).expect("the test folder is there and holds what the run left");
+    fs::create_dir(&disk).unwrap();
     let mount = |size: &str| {
         Command::new("mount")
             .args(["-t", "tmpfs", "-o", size, "tmpfs"])
@@ -545,7 +500,7 @@ fn cli_scan_on_a_full_disk_goes_on_when_there_is_room() {
     assert!(mount("size=32m,remount"));
     let done = desk.run("disk/map", &["--quiet"]);
     assert_eq!(status_of(&done), 0, "{}", said(&done));
-    assert!(desk.result("disk/map")["reused"].as_u64().expect("the test folder is there and holds what the run left") >= stored);
+    assert!(desk.result("disk/map")["reused"].as_u64().unwrap() >= stored);
     assert_eq!(status_of(&desk.run("whole", &["--quiet"])), 0);
     assert_eq!(desk.table("disk/map"), desk.table("whole"));
     drop(mounted);
@@ -554,7 +509,7 @@ fn cli_scan_on_a_full_disk_goes_on_when_there_is_room() {
 #[test]
 fn cli_scan_of_a_million_points_stays_small() {
     let desk = Desk::new(CHEVRON, 1000, 1000);
-    let mut child = desk.scan("million", &["--quiet"]).spawn().expect("the test folder is there and holds what the run left");
+    let mut child = desk.scan("million", &["--quiet"]).spawn().unwrap();
     let status = PathBuf::from(format!("/proc/{}/status", child.id()));
     let mut largest = 0u64;
     let clock = Instant::now();
@@ -562,7 +517,7 @@ fn cli_scan_of_a_million_points_stays_small() {
         let text = fs::read_to_string(&status).unwrap_or_default();
         let held = text.lines().find_map(|line| line.strip_prefix("VmHWM:")?.trim().trim_end_matches("kB").trim().parse().ok());
         largest = largest.max(held.unwrap_or(0));
-        if let Some(done) = child.try_wait().expect("the test folder is there and holds what the run left") {
+        if let Some(done) = child.try_wait().unwrap() {
             break done.code();
         }
         assert!(clock.elapsed() < Duration::from_secs(300));
