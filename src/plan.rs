@@ -339,6 +339,7 @@ impl Touched {
         let start = match &document.start {
             State::Superposition(parts, _) => parts.iter().any(|(_, size, phase)| is(size.register) || is(phase.register)),
             State::Mix(shares) => shares.any(&is),
+            State::Quanta { modes, .. } => modes.iter().any(|warm| is(warm.mean.register)),
             State::Thermal(temperature) => statics || is(temperature.register),
             State::Steady(_) => statics || surroundings,
             State::Level(_) | State::Amplitudes(_) | State::Density(_) => false,

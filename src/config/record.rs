@@ -364,11 +364,32 @@ fn read_period(reader: &mut Reader, node: &Node) -> Option<Quantity> {
     reader.quantity(period, "quasi_energies / period", Dim::TIME)
 }
 
+/// The levels of a gate: a list, or for each part its levels, `{qubit: [0, 1], cavity: 0}`, which makes their product.
+fn read_within(reader: &mut Reader, node: &Node) -> Option<Vec<usize>> {
+    if node.entries().is_none() || reader.parts.is_empty() {
+        return levels(reader, node, "within");
+    }
+    let parts = reader.parts.clone();
+    let keys: Vec<&str> = parts.iter().map(|(name, _)| name.as_str()).collect();
+    reader.fields(node, "gate / within", &keys, &[])?;
+    let mut joint = vec![0];
+    for (name, levels) in &parts {
+        let value = reader.need(node, name, "gate / within", &levels[0])?;
+        let own: Vec<Option<usize>> = match value.items() {
+            Some(items) => items.iter().map(|item| reader.name_among(item, "level", levels)).collect(),
+            None => vec![reader.name_among(value, "level", levels)],
+        };
+        let own: Vec<usize> = own.into_iter().collect::<Option<_>>()?;
+        joint = joint.iter().flat_map(|before| own.iter().map(move |level| before * levels.len() + level)).collect();
+    }
+    reader.named_levels.extend(&joint);
+    Some(joint)
+}
+
 fn read_gate(reader: &mut Reader, node: &Node, operators: &[Operator], used: &mut Vec<String>) -> Option<Gate> {
     reader.fields(node, "gate", &["within", "target", "free_z"], &[])?;
-    let within = reader
-        .need(node, "within", "gate", "[0, 1]")
-        .and_then(|within| levels(reader, within, "within").map(|levels| (levels, within.place)));
+    let within =
+        reader.need(node, "within", "gate", "[0, 1]").and_then(|within| read_within(reader, within).map(|levels| (levels, within.place)));
     let within = within.and_then(|(levels, place)| {
         let twice = levels.iter().enumerate().find(|(k, level)| levels[..*k].contains(level)).map(|(_, level)| *level);
         if let Some(level) = twice {

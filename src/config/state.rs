@@ -6,7 +6,7 @@ use super::place::Place;
 use super::reader::{Quantity, Reader};
 use super::state_file::read_state_file;
 use super::system::parts::read_joint_level;
-use super::tree::Node;
+use super::tree::{Kind, Node};
 use crate::units::Dim;
 
 /// A state: pure, or one of the mixtures that only `start:` takes.
@@ -26,9 +26,26 @@ pub enum State {
     Thermal(Quantity),
     /// Steady state of the static system with its decays.
     Steady(Place),
+    /// Modes with a thermal number of quanta, all else in one level.
+    Quanta {
+        /// The joint level with no quanta in any of the modes.
+        base: usize,
+        /// The modes.
+        modes: Vec<Warm>,
+    },
 }
 
-const LATER: [&str; 2] = ["part", "quanta"];
+/// A mode with a thermal number of quanta.
+#[derive(Debug, Clone, Copy)]
+pub struct Warm {
+    /// Their mean in the mode without a cut.
+    pub mean: Quantity,
+    /// How far its next level is in the joint order.
+    pub stride: usize,
+    /// Number of its levels.
+    pub levels: usize,
+}
+
 const KINDS: [&str; 4] = ["superposition", "mix", "temperature", "state_from"];
 
 /// Reads `start:`.
@@ -39,14 +56,14 @@ pub fn read_start(reader: &mut Reader, node: &Node) -> Option<State> {
     let Some(entries) = node.entries() else {
         return reader.level(node).map(State::Level);
     };
-    let of_all = KINDS.into_iter().chain(LATER);
-    if !reader.parts.is_empty() && !of_all.into_iter().any(|word| entries.iter().any(|entry| entry.key == word)) {
-        let parts = reader.parts.clone();
-        return read_joint_level(reader, node, &parts).map(State::Level);
+    if !reader.parts.is_empty() && !KINDS.into_iter().any(|word| entries.iter().any(|entry| entry.key == word)) {
+        return read_parts(reader, node);
     }
-    if let Some(later) = entries.iter().find(|entry| LATER.contains(&entry.key.as_str())) {
-        reader.error(later.place, Fault::NotNow { key: later.key.clone(), section: "start".to_string() });
-        return None;
+    if let Some(quanta) = node.get("quanta") {
+        reader.fields(node, "start", &["quanta"], &[])?;
+        let levels = reader.level_names();
+        let mean = read_thermal(reader, quanta, &levels)?;
+        return Some(State::Quanta { base: 0, modes: vec![Warm { mean, stride: 1, levels: levels.len() }] });
     }
     let hints = [("thermal", "Thermal equilibrium is written start: {temperature: 130 mK}."), ("steady", "Written alone: start: steady.")];
     reader.fields(node, "start", &KINDS, &hints)?;
@@ -74,6 +91,63 @@ fn read_mix(reader: &mut Reader, node: &Node) -> Option<State> {
         return None;
     }
     Some(State::Mix(shares))
+}
+
+/// One level of every part, or `{quanta: thermal 0.4}` for a mode among them.
+fn read_parts(reader: &mut Reader, node: &Node) -> Option<State> {
+    let parts = reader.parts.clone();
+    let thermal: Vec<Option<Node>> = parts.iter().map(|(name, _)| node.get(name).and_then(|part| part.get("quanta")).cloned()).collect();
+    if thermal.iter().all(Option::is_none) {
+        return read_joint_level(reader, node, &parts).map(State::Level);
+    }
+    let (mut base, mut modes, mut good) = (0, Vec::new(), true);
+    for (k, ((name, levels), quanta)) in parts.iter().zip(&thermal).enumerate() {
+        base *= levels.len();
+        match quanta {
+            Some(quanta) => match read_thermal(reader, quanta, levels) {
+                Some(mean) => {
+                    let stride = parts[k + 1..].iter().map(|(_, levels)| levels.len()).product();
+                    modes.push(Warm { mean, stride, levels: levels.len() });
+                }
+                None => good = false,
+            },
+            None => match reader.need(node, name, "start", &levels[0]).and_then(|level| reader.name_among(level, "level", levels)) {
+                Some(level) => base += level,
+                None => good = false,
+            },
+        }
+    }
+    let names: Vec<String> = parts.iter().map(|(name, _)| name.clone()).collect();
+    for entry in node.entries().unwrap_or_default().iter().filter(|entry| !names.contains(&entry.key)) {
+        reader.unknown(entry.place, "part", &entry.key, &names);
+        good = false;
+    }
+    good.then_some(State::Quanta { base, modes })
+}
+
+/// `thermal 0.4`, the mean number of quanta of a mode without a cut.
+fn read_thermal(reader: &mut Reader, node: &Node, levels: &[String]) -> Option<Quantity> {
+    let is_mode = levels.iter().enumerate().all(|(n, level)| *level == n.to_string());
+    let text = node.text().unwrap_or_default();
+    let Some(mean) = text.strip_prefix("thermal ").filter(|_| is_mode) else {
+        let expected = if is_mode { "the word thermal and the mean number of quanta" } else { "for a mode or a ladder" };
+        let fault =
+            Fault::Shape { what: "start / quanta".to_string(), expected: expected.to_string(), example: "quanta: thermal 0.4".to_string() };
+        reader.error(node.place, fault);
+        return None;
+    };
+    let lead = "thermal ".len() + (mean.len() - mean.trim_start().len());
+    let place = node.place.part(lead, mean.trim().chars().count());
+    let inner = Node { place, kind: Kind::Scalar { text: mean.trim().to_string(), quoted: false, exact: true } };
+    let quantity = reader.plain(&inner, "start / quanta")?;
+    let value = reader.value_now(quantity.register);
+    if value < 0.0 {
+        let fault =
+            Fault::OutOfRange { what: "the mean number of quanta".to_string(), found: short(value), wanted: "0 or more".to_string() };
+        reader.error(place, fault);
+        return None;
+    }
+    Some(quantity)
 }
 
 /// A level, or `{superposition: ..}` / `{level: [size, phase]}`, as `fidelity: {to: ..}` takes.

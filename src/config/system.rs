@@ -202,6 +202,13 @@ pub enum OperatorSource {
     AsBuilt(Vec<MatrixEntry>),
     /// A differential operator of the system's variable.
     Differential(Differential),
+    /// Displacement of a mode, the kind or the part of this name, by an amplitude.
+    Displacement {
+        /// `mode`, or the part that is one.
+        of: String,
+        /// By how much, no dimension.
+        by: ComplexQuantity,
+    },
     /// It comes with the system, under the same name.
     Natural,
 }
@@ -211,7 +218,7 @@ impl Operator {
     pub fn entries(&self) -> Option<&[MatrixEntry]> {
         match &self.source {
             OperatorSource::Typed(entries) | OperatorSource::AsBuilt(entries) => Some(entries),
-            OperatorSource::Natural | OperatorSource::Differential(_) => None,
+            OperatorSource::Natural | OperatorSource::Differential(_) | OperatorSource::Displacement { .. } => None,
         }
     }
 
@@ -219,6 +226,9 @@ impl Operator {
     pub fn registers(&self) -> Vec<Register> {
         if let OperatorSource::Differential(differential) = &self.source {
             return differential.registers();
+        }
+        if let OperatorSource::Displacement { by, .. } = &self.source {
+            return [Some(by.re), by.im].into_iter().flatten().collect();
         }
         let entries = self.entries().unwrap_or_default();
         entries.iter().flat_map(|entry| [Some(entry.value.re), entry.value.im]).flatten().collect()
@@ -523,8 +533,14 @@ pub fn warn_of_case(reader: &mut Reader, kind: &'static str, names: &[String], p
 /// One operator: typed rows, or a differential operator; what cannot be read has no entries.
 fn read_operator(reader: &mut Reader, node: &Node, section: &str, system: &System, [built, working]: [usize; 2]) -> OperatorSource {
     let nothing = OperatorSource::Typed(Vec::new());
-    if reader.fields(node, section, &["rows", "rows_from", "lower", "in", "derivatives"], &[]).is_none() {
+    if reader.fields(node, section, &["rows", "rows_from", "lower", "in", "derivatives", "displacement"], &[]).is_none() {
         return nothing;
+    }
+    if let Some(displacement) = node.get("displacement") {
+        if reader.one_of(node, &["rows", "rows_from", "derivatives", "displacement"], section, None).is_none() {
+            return nothing;
+        }
+        return read_displacement(reader, displacement, &format!("{section} / displacement"), system).unwrap_or(nothing);
     }
     if let Some(derivatives) = node.get("derivatives") {
         if reader.one_of(node, &["rows", "rows_from", "derivatives"], section, None).is_none() {
@@ -547,6 +563,15 @@ fn read_operator(reader: &mut Reader, node: &Node, section: &str, system: &Syste
     } else {
         OperatorSource::Typed(entries)
     }
+}
+
+/// `displacement: {of: mode, by: 0.4}`.
+fn read_displacement(reader: &mut Reader, node: &Node, section: &str, system: &System) -> Option<OperatorSource> {
+    reader.fields(node, section, &["of", "by"], &[])?;
+    let modes: Vec<String> = system.acting().into_iter().map(|(name, _)| name).filter(|name| system.kind_of(name) == "mode").collect();
+    let of = reader.need(node, "of", section, "mode").and_then(|of| reader.name_among(of, "mode", &modes));
+    let by = reader.need(node, "by", section, "0.4").and_then(|by| reader.plain_entry(by, &format!("{section} / by")));
+    Some(OperatorSource::Displacement { of: modes[of?].clone(), by: by? })
 }
 
 /// Reads `operators:`; an operator that cannot be read leaves its name with no entries. `sizes` are the numbers of states as built and

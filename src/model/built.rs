@@ -4,6 +4,7 @@ use std::sync::Arc;
 
 use num_complex::Complex64;
 
+use super::mode::displacement;
 use crate::config::drives::Light;
 use crate::config::messages::Mistake;
 use crate::config::tape::Wide;
@@ -164,6 +165,13 @@ impl Built {
     /// lower + raise of a part, in the working basis.
     pub fn quanta(&self, part: &str) -> Matrix {
         self.whole(self.acts(part).and_then(|acting| acting.quanta.as_ref()))
+    }
+
+    /// Displacement of a mode by an amplitude, in the working basis.
+    pub fn displacement(&self, of: &str, by: Complex64) -> Matrix {
+        let block = self.acts(of).and_then(|acting| acting.quanta.as_ref());
+        let moved = block.map(|block| Block { matrix: Arc::new(displacement(block.matrix.nrows(), by)), ..block.clone() });
+        self.whole(moved.as_ref())
     }
 
     /// Energy of the magnetic moment of a part per tesla along a direction of any length, Hz/T, in the working basis.

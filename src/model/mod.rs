@@ -58,6 +58,10 @@ pub fn operator(document: &Document, built: &Built, index: usize, values: &[f64]
     match &operator.source {
         OperatorSource::Typed(entries) => dense(built.size(), entries, values),
         OperatorSource::AsBuilt(entries) => built.to_working(dense(document.built_names.len(), entries, values)),
+        OperatorSource::Displacement { of, by } => {
+            let by = Complex64::new(values[by.re as usize], by.im.map_or(0.0, |im| values[im as usize]));
+            built.displacement(of, by)
+        }
         OperatorSource::Natural | OperatorSource::Differential(_) => built.operator(&operator.name),
     }
 }
@@ -105,7 +109,7 @@ pub fn amplitudes(size: usize, state: &State, values: &[f64]) -> Option<Vector> 
                 vector[k] = Complex64::new(*re, *im);
             }
         }
-        State::Density(_) | State::Mix(_) | State::Thermal(_) | State::Steady(_) => return None,
+        State::Density(_) | State::Mix(_) | State::Thermal(_) | State::Steady(_) | State::Quanta { .. } => return None,
     }
     Some(vector)
 }
@@ -134,6 +138,18 @@ pub fn start(state: &State, values: &[f64], statics_hz: &Matrix) -> Result<Optio
             Some(Start::Mixed(surroundings::thermal(statics_hz, kelvin)))
         }
         State::Steady(_) => None,
+        State::Quanta { base, modes } => {
+            let mut shares = vec![(*base, 1.0)];
+            for warm in modes {
+                let mean = values[warm.mean.register as usize];
+                let each = mode::thermal(mean, warm.levels);
+                let spread = |(level, share): &(usize, f64)| -> Vec<(usize, f64)> {
+                    each.iter().enumerate().map(|(n, of)| (level + n * warm.stride, share * of)).collect()
+                };
+                shares = shares.iter().flat_map(spread).collect();
+            }
+            Some(Start::Mixed(diagonal(&shares)))
+        }
         State::Level(_) | State::Superposition(..) | State::Amplitudes(_) => amplitudes(size, state, values).map(Start::Pure),
     })
 }

@@ -66,6 +66,10 @@ pub fn state(facts: &Facts, state: &State) -> String {
             let more = shares.parts.len().saturating_sub(PARTS);
             format!("mixture: {}{}", words.join(", "), if more > 0 { format!(", and {more} more") } else { String::new() })
         }
+        State::Quanta { modes, .. } => {
+            let means: Vec<String> = modes.iter().map(|warm| digits(facts.point.values[warm.mean.register as usize], 9)).collect();
+            format!("a thermal number of quanta, {} in the mean, as far as the levels go", means.join(" and "))
+        }
         State::Thermal(temperature) => {
             let kelvin = facts.point.values[temperature.register as usize];
             format!("thermal equilibrium of the static system at {}", short(kelvin, "K"))
