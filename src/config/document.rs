@@ -421,7 +421,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     let run = run?;
     let (system, steps, start, mut record, accuracy, output, frame) = (system?, steps?, start?, record?, accuracy?, output?, frame?);
     let (decays, dephasings) = surroundings?;
-    super::record::beside_surroundings(reader, &mut record, root.get("record"), &decays, &dephasings);
+    super::record::beside_surroundings(reader, &mut record, root.get("record"), (&decays, &dephasings, &start));
     let (basis, _) = basis?;
     let mut document = Document {
         sources: reader.sources.clone(),

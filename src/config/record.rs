@@ -333,7 +333,12 @@ fn read_budget(reader: &mut Reader, node: &Node) -> Option<Vec<Cause>> {
 }
 
 /// What a record means beside decay and dephasing: what leaves the system is recorded, what belongs to a closed one refused.
-pub fn beside_surroundings(reader: &mut Reader, record: &mut Record, node: Option<&Node>, decays: &[Decay], dephasings: &[Dephasing]) {
+pub fn beside_surroundings(
+    reader: &mut Reader,
+    record: &mut Record,
+    node: Option<&Node>,
+    (decays, dephasings, start): (&[Decay], &[Dephasing], &State),
+) {
     let has = |record: &Record, item: fn(&Item) -> bool| record.items.iter().any(item);
     let first = decays.iter().map(|decay| decay.place.line).chain(dephasings.iter().map(|dephasing| dephasing.place.line)).min();
     let of = |key: &str| node.and_then(|node| node.get(key)).map_or(record.place, |value| value.place);
@@ -348,6 +353,11 @@ pub fn beside_surroundings(reader: &mut Reader, record: &mut Record, node: Optio
             let fault = OpenFault::NotOfOpen { key: "quasi_energies", section: "A quasi-energy", line, write };
             reader.error(of("quasi_energies"), Fault::Open(fault));
         }
+    }
+    let mixed = matches!(start, State::Density(_) | State::Mix(_) | State::Thermal(_) | State::Steady(_));
+    if first.is_none() && mixed && has(record, |item| matches!(item, Item::Propagator | Item::QuasiEnergies(_))) {
+        let key = if has(record, |item| matches!(item, Item::Propagator)) { "propagator" } else { "quasi_energies" };
+        reader.error(of(key), Fault::Open(OpenFault::OfAnyStart { key, level: reader.level_names()[0].clone() }));
     }
     if has(record, |item| matches!(item, Item::ErrorBudget(_))) && !has(record, |item| matches!(item, Item::Gate(_))) {
         reader.error(of("error_budget"), Fault::Open(OpenFault::BudgetWithoutGate));

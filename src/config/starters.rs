@@ -99,6 +99,24 @@ pub const STARTERS: &[Starter] = &[
         text: include_str!("../../configs/chirped-map.yaml"),
         beside: &[],
     },
+    Starter {
+        kind: "fringe",
+        about: "two quarter turns with a wait between, lifetime and dephasing, a warm start: fringe, and counts of shots",
+        text: include_str!("../../configs/fringe.yaml"),
+        beside: &[],
+    },
+    Starter {
+        kind: "pumping",
+        about: "light over a leaky upper level into a dark one: branching, photons scattered, what is lost",
+        text: include_str!("../../configs/pumping.yaml"),
+        beside: &[],
+    },
+    Starter {
+        kind: "budget",
+        about: "the error of a short gate split by cause: decay, dephasing, noise, leakage, the pulse itself",
+        text: include_str!("../../configs/budget.yaml"),
+        beside: &[],
+    },
 ];
 
 /// The starter of a kind; blanks and underscores count as dashes, large letters as small ones.

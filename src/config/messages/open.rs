@@ -80,6 +80,10 @@ pub enum OpenFault {
         line: u32,
         write: &'static str,
     },
+    OfAnyStart {
+        key: &'static str,
+        level: String,
+    },
     BudgetWithoutGate,
     ReadsColumn {
         level: String,
@@ -193,6 +197,9 @@ impl OpenFault {
                     .why(format!("{section} belongs to one unitary propagator; a decaying system has a channel instead."))
                     .write(*write)
             }
+            OfAnyStart { key, level } => say(format!("\"{key}\" is made of amplitudes, and the start is a mixture."))
+                .why("It does not depend on the start: any pure one will do.")
+                .write(format!("start: {level}")),
             BudgetWithoutGate => say("error_budget splits the gate error, and no gate is recorded.")
                 .write("gate: {within: [down, up], target: {turn: 180 deg, about: x}, free_z: false}"),
             ReadsColumn { level, sum, row, missing } => {

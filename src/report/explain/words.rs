@@ -216,6 +216,13 @@ pub fn conventions(facts: &Facts) -> Vec<String> {
     if facts.mixed {
         said.push("The static matrix has off-diagonal entries: levels and gaps are its diagonal, not its eigenvalues.".to_string());
     }
+    if !facts.point.surroundings.jumps.is_empty() {
+        said.push(
+            "Lifetime: 1/e time of a population; rate its inverse; linewidth the full width rate/(2 pi). T2: 1/e time of a coherence, \
+             1/T2 = half the sum of both rates + (w_a - w_b)^2 / pure time."
+                .to_string(),
+        );
+    }
     let frame = match &document.frame {
         Frame::Lab => "laboratory, nothing dropped",
         Frame::Rotating(_) => "rotating, psi_lab = exp(-2 pi i F t) psi, H = exp(2 pi i F t) H_lab exp(-2 pi i F t) - F",
