@@ -354,7 +354,7 @@ pub fn beside_surroundings(
             reader.error(of("quasi_energies"), Fault::Open(fault));
         }
     }
-    let mixed = matches!(start, State::Density(_) | State::Mix(_) | State::Thermal(_) | State::Steady(_));
+    let mixed = matches!(start, State::Density(_) | State::Mix(_) | State::Thermal(_) | State::Steady(_) | State::Quanta { .. });
     if first.is_none() && mixed && has(record, |item| matches!(item, Item::Propagator | Item::QuasiEnergies(_))) {
         let key = if has(record, |item| matches!(item, Item::Propagator)) { "propagator" } else { "quasi_energies" };
         reader.error(of(key), Fault::Open(OpenFault::OfAnyStart { key, level: reader.level_names()[0].clone() }));
