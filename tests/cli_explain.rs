@@ -199,3 +199,17 @@ fn cli_a_bad_file_is_refused_with_its_line() {
     assert!(output.stdout.is_empty());
     assert!(String::from_utf8_lossy(&output.stderr).contains("line 5"));
 }
+
+/// Lifetimes in the three words of the trade, and each coherence time beside its limit: with n = 1/(exp(4.3 GHz h/(k 70 mK)) - 1) = 0.0553409
+/// the cold lifetime of 38 us is 38/(n + 1) = 36.0073 us down and 38/n = 686.653 us up; the limit is 2 over the sum of both rates.
+#[test]
+fn cli_page_says_lifetimes_and_coherence_times() {
+    let text = page("fringe", include_str!("../configs/fringe.yaml"));
+    holds(&text, "excited to ground  36.0073 us  27.7721 /ms  4.42007 kHz");
+    holds(&text, "ground to excited  686.653 us  1.45634 /ms  231.784 Hz");
+    holds(&text, "bath at 70 mK; the stated lifetime is the one at zero temperature");
+    holds(&text, "pure time 50.3309 us, linewidth 6.32435 kHz; what a total time of 29 us on ground and excited");
+    holds(&text, "ground and excited  T2 29 us  limit 68.4264 us");
+    holds(&text, "expected counts of 2000 shots, read as dark, bright");
+    holds(&text, "start: thermal equilibrium of the static system at 70 mK");
+}

@@ -181,7 +181,7 @@ fn refuse_baths_without_an_answer() {
 fn refuse_steady_states_that_are_none() {
     decay_says(
         "  - {from: b, to: a, lifetime: life}\nstart: steady",
-        "error: config.yaml, line 8, column 8: there is no steady state to give: several states stay as they are (4 free numbers), and nothing says which one is meant.
+        "error: config.yaml, line 8, column 8: there is no steady state to give: several states stay as they are (2 free numbers), and nothing says which one is meant.
     8 | start: steady
   Write: start: {mix: {..}}, or a decay that joins the levels",
     );
