@@ -153,3 +153,6 @@ pub fn start(state: &State, values: &[f64], statics_hz: &Matrix) -> Result<Optio
         State::Level(_) | State::Superposition(..) | State::Amplitudes(_) => amplitudes(size, state, values).map(Start::Pure),
     })
 }
+
+#[cfg(test)]
+mod tests;

@@ -4,7 +4,8 @@
 //! Nothing is computed here but what drawing needs: a unit prefix, ticks, and thinning to the pixel grid.
 //!
 //! Figures: `traces` (states against time), `envelopes` (pulses against time), `spectrum` (pulses against frequency),
-//! `ledger` (turning terms of a frame), `compare` (variants against time, and their differences), `map` and `lines` (scans).
+//! `ledger` (turning terms of a frame), `compare` (variants against time, and their differences), `map` and `lines` (scans),
+//! `levels` (level diagrams).
 //! Parts: `scene` and `raster` (painting), `font`, `palette`, `scale` (prefixes, ticks), `decades` (logarithmic axes), `thin`
 //! (pixel grid), `place` (labels kept apart), `near` (labels beside points), `panel` (one plot area with its axis and curves),
 //! `ruler` (axes of scans), `contour` and `shades` (maps), `frame` (title, fingerprint, time axis), `marks` (named moments), `windows` (broken time axis).
@@ -17,6 +18,7 @@ mod frame;
 mod ledger;
 mod lines;
 mod map;
+mod levels;
 mod marks;
 mod near;
 #[cfg(test)]
@@ -40,6 +42,7 @@ pub use ledger::{ledger, LedgerFigure, LedgerTerm};
 pub use lines::{lines, LinesFigure, LinesPanel};
 pub use map::{map, MapFigure};
 pub use ruler::Ruler;
+pub use levels::{levels, LevelsFigure, TransitionLine};
 pub use scale::quantity;
 pub use scene::Drawn;
 pub use spectrum::{spectrum, PulseSpectrum, SpectrumFigure};
