@@ -158,6 +158,8 @@ pub struct Reader {
     pub parts: Vec<(String, Vec<String>)>,
     /// Whether the working basis is the one as built.
     pub as_built: bool,
+    /// Whether the system could be read, so that its operators are known.
+    pub system_read: bool,
     /// Registers whose value shaped the reading itself: counts of levels and repeats.
     pub structural: Vec<Register>,
     numbers: Vec<Number>,
@@ -197,6 +199,7 @@ impl Reader {
             named_levels: Vec::new(),
             parts: Vec::new(),
             as_built: true,
+            system_read: true,
             structural: Vec::new(),
             numbers: Vec::new(),
             by_name: HashMap::new(),
@@ -375,6 +378,10 @@ impl Reader {
 
     /// Reports an unknown name.
     pub fn unknown(&mut self, place: Place, kind: &'static str, text: &str, known: &[String]) {
+        // an operator of a system that could not be read is no second mistake
+        if kind == "operator" && !self.system_read {
+            return;
+        }
         let near = near(text, known.iter().map(String::as_str));
         self.error(place, Fault::UnknownName { kind, found: text.to_string(), near, known: known.to_vec() });
     }

@@ -7,6 +7,7 @@ use crate::config::settings::Plot;
 use crate::drive::envelope::Pieces;
 use crate::drive::spectrum::spectrum as pulse_spectrum;
 use crate::drive::timeline::PlacedPulse;
+use crate::matrices::{strength, Line, Matrices};
 use crate::measure::Column;
 use crate::outcome::Outcome;
 use crate::plan::Point;
@@ -14,8 +15,9 @@ use crate::problem::Sweep;
 use crate::report::fingerprint::fingerprint;
 use crate::report::heading::heading;
 use crate::report::plots::{
-    compare, envelopes, ledger, spectrum, traces, CompareFigure, ComparePanel, CompareSeries, Drawn, EnvelopeCurve, EnvelopesFigure,
-    LedgerFigure, LedgerTerm, Panel, PlotError, PulseBar, PulseSpectrum, Series, SpectrumFigure, TracesFigure,
+    compare, envelopes, ledger, levels, spectrum, traces, CompareFigure, ComparePanel, CompareSeries, Drawn, EnvelopeCurve,
+    EnvelopesFigure, LedgerFigure, LedgerTerm, LevelsFigure, Panel, PlotError, PulseBar, PulseSpectrum, Series, SpectrumFigure,
+    TracesFigure, TransitionLine,
 };
 
 /// A plot by its file name, or why it could not be drawn.
@@ -37,6 +39,25 @@ pub fn of_run(document: &Document, point: &Point, outcome: &Outcome) -> Vec<Name
     let drawn = if outcome.row_errors.is_empty() { 0 } else { wide };
     let bands = (0..drawn).map(|k| outcome.row_errors.iter().skip(k).step_by(wide.max(1)).copied().collect()).collect();
     of_columns(document, point, &outcome.columns, &outcome.times_s, columns, bands)
+}
+
+/// The level diagram of a system, its lines as strong as the first drive, or else the first operator that joins levels, makes them.
+pub fn of_matrices(document: &Document, found: &Matrices) -> Vec<Named> {
+    if document.output.plots.is_empty() {
+        return Vec::new();
+    }
+    let strongest = |named: &crate::matrices::Named| found.lines.iter().map(|line| strength(&named.matrix, *line)).fold(0.0, f64::max);
+    let seen = found.drives.iter().chain(&found.operators).find(|named| strongest(named) > 0.0);
+    let line =
+        |line: &Line| TransitionLine { levels: [line.from, line.to], strength: seen.map_or(0.0, |named| strength(&named.matrix, *line)) };
+    let figure = LevelsFigure {
+        title: heading(document),
+        fingerprint: fingerprint(document),
+        levels: document.system.names.iter().cloned().zip(found.still.energies_hz.iter().copied()).collect(),
+        lines: found.lines.iter().map(line).collect(),
+        strengths_of: seen.map_or(String::new(), |named| named.name.clone()),
+    };
+    vec![("levels", levels(&figure))]
 }
 
 /// The plots of columns recorded earlier; `bands` are their standard errors, none where nothing was drawn.

@@ -44,8 +44,15 @@ pub fn matrices(staging: Staging, document: &Document, found: &Matrices) -> io::
     let mut names = matrices_csv::write(&side, document, found)?;
     names.push("result.json".to_string());
     write_json(&side, &matrices_json::result(document, found))?;
+    let mut not_drawn = Vec::new();
+    for (name, figure) in figures::of_matrices(document, found) {
+        match figure {
+            Ok(drawn) => names.extend(figures::save(&side, name, &drawn)?.into_iter().take(1)),
+            Err(reason) => not_drawn.push((name.to_string(), reason.to_string())),
+        }
+    }
     let folder = staging.finish()?;
-    Ok(Written { place: format!("{} in {}", names.join(", "), folder.display()), not_drawn: Vec::new() })
+    Ok(Written { place: format!("{} in {}", names.join(", "), folder.display()), not_drawn })
 }
 
 /// A name as part of a file name.
