@@ -53,6 +53,9 @@ const SECTIONS: [&str; 25] = [
 ];
 const LATER: [&str; 3] = ["tune", "fit", "hardware"];
 
+/// How long a run lasts of which the static levels alone are asked, s.
+const MOMENT_S: f64 = 1e-18;
+
 /// A config that holds no mistake.
 #[derive(Debug, Clone)]
 pub struct Document {
@@ -357,9 +360,10 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         None => (Vec::new(), Vec::new()),
     };
     let known = Known { drives: (&drive_names, &drives), envelopes: (&envelope_names, &envelopes), blocks: root.get("blocks") };
+    reader.levels_alone = root.get("sequence").is_none() && super::record::is_of_levels_alone(root.get("record"));
     let sequence_node = match root.get("sequence") {
         Some(node) => Some(node),
-        None if reader.system_alone => None,
+        None if reader.system_alone || reader.levels_alone => None,
         None => {
             let fault = Fault::MissingKey {
                 key: "sequence".to_string(),
@@ -374,12 +378,18 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     let (steps, used) = match sequence_node {
         Some(node) if readable => sequence::read_sequence(reader, node, &known),
         None if reader.system_alone => (Some(Vec::new()), sequence::Used::default()),
+        None if reader.levels_alone => {
+            // the system for a moment, as levels do not ask what happens to it
+            let place = root.get("record").map_or(root.place, |node| node.place);
+            let register = reader.constant(MOMENT_S, place);
+            (Some(vec![Step::Wait(super::reader::Quantity { register, place })]), sequence::Used::default())
+        }
         _ => (None, sequence::Used::default()),
     };
     let start = match root.get("start") {
         Some(node) if readable => super::state::read_start(reader, node),
         Some(_) => None,
-        None if reader.system_alone => Some(State::Level(0)),
+        None if reader.system_alone || reader.levels_alone => Some(State::Level(0)),
         None => {
             let why = Some("It names the level, or the superposition, at time zero.".to_string());
             let fault =

@@ -71,6 +71,10 @@ pub enum Item {
     Bloch(Vec<[usize; 2]>),
     /// Means of operators (indices).
     MeanOf(Vec<usize>),
+    /// Levels of the static system, in Hz.
+    Levels(Vec<usize>),
+    /// Gaps of the static system, in Hz.
+    Transitions(Vec<[usize; 2]>),
     /// The mean energy, in Hz.
     Energy,
     /// Time spent in levels, s.
@@ -146,7 +150,9 @@ impl Record {
     }
 }
 
-const KEYS: [&str; 21] = [
+const KEYS: [&str; 23] = [
+    "levels",
+    "transitions",
     "every",
     "at",
     "populations",
@@ -169,7 +175,12 @@ const KEYS: [&str; 21] = [
     "error_budget",
     "part",
 ];
-const LATER: [&str; 2] = ["levels", "transitions"];
+
+/// Whether a record asks for nothing but levels and gaps of the static system, so that no sequence is needed.
+pub fn is_of_levels_alone(node: Option<&Node>) -> bool {
+    let entries = node.and_then(Node::entries).unwrap_or_default();
+    !entries.is_empty() && entries.iter().all(|entry| matches!(entry.key.as_str(), "levels" | "transitions"))
+}
 
 /// Reads `record:`, or fills in its defaults.
 pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operator], used: &mut Vec<String>) -> Option<Record> {
@@ -179,7 +190,7 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
         reader.default("record.every", "about 500 rows");
         return Some(Record { rows: Rows::Unsaid, items: vec![Item::Populations(all)], finals: Vec::new(), place: Place::default() });
     };
-    let known: Vec<&str> = KEYS.iter().copied().filter(|key| *key != "population").chain(LATER).collect();
+    let known: Vec<&str> = KEYS.iter().copied().filter(|key| *key != "population").collect();
     let entries = reader.fields(node, "record", &known, &[])?;
     let rows = match (node.get("every"), node.get("at")) {
         (Some(first), Some(second)) => {
@@ -206,19 +217,22 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
     };
     let mut items = Vec::new();
     let mut good = true;
-    if node.get("populations").is_none() {
+    if node.get("populations").is_none() && !reader.levels_alone {
         reader.default("record.populations", "all");
         items.push(Item::Populations(all.clone()));
     }
     for entry in entries {
         let value = &entry.value;
         let item = match entry.key.as_str() {
-            key if LATER.contains(&key) => {
-                reader.error(entry.place, Fault::NotNow { key: key.to_string(), section: "record".to_string() });
-                None
-            }
             "populations" if value.text() == Some("all") => Some(Item::Populations(all.clone())),
             "populations" => levels(reader, value, "populations").map(Item::Populations),
+            "levels" if value.text() == Some("all") => {
+                // each column bears a name, so each state must have one
+                reader.named_levels.extend(&all);
+                Some(Item::Levels(all.clone()))
+            }
+            "levels" => levels(reader, value, "levels").map(Item::Levels),
+            "transitions" => pairs(reader, value, "transitions").map(Item::Transitions),
             "outside_of" => levels(reader, value, "outside_of").map(Item::OutsideOf),
             "time_in" => levels(reader, value, "time_in").map(Item::TimeIn),
             "coherence" => pairs(reader, value, "coherence").map(Item::Coherence),

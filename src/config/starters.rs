@@ -117,6 +117,12 @@ pub const STARTERS: &[Starter] = &[
         text: include_str!("../../configs/budget.yaml"),
         beside: &[],
     },
+    Starter {
+        kind: "double-well",
+        about: "an electron in a double well, its potential as a formula: moved across by a ramp of the field",
+        text: include_str!("../../configs/double-well.yaml"),
+        beside: &[],
+    },
 ];
 
 /// The starter of a kind; blanks and underscores count as dashes, large letters as small ones.

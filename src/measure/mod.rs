@@ -22,6 +22,7 @@ mod propagator;
 mod quasi;
 mod recorder;
 mod shots;
+mod static_levels;
 mod time_in;
 mod turn_behind;
 
@@ -128,6 +129,8 @@ pub fn observables<'a>(document: &Document, built: &Built, values: &[f64], energ
             Item::Coherence(pairs) => Box::new(coherence::Coherences::new(names, pairs)),
             Item::Bloch(pairs) => Box::new(bloch::BlochVectors::new(names, pairs)),
             Item::MeanOf(operators) => Box::new(mean::Means::new(document, built, values, operators)),
+            Item::Levels(levels) => Box::new(static_levels::StaticLevels::levels(names, built, levels)),
+            Item::Transitions(pairs) => Box::new(static_levels::StaticLevels::gaps(names, built, pairs)),
             Item::Energy => Box::new(energy::Energy::new(problem)),
             Item::TimeIn(levels) => {
                 found.demand.time_in = true;

@@ -116,6 +116,8 @@ pub fn records(facts: &Facts) -> Vec<String> {
             let words: Vec<&str> = list.iter().map(|k| document.operators[*k].name.as_str()).collect();
             format!("mean of {}", words.join(", "))
         }
+        Item::Levels(list) => format!("levels of the static system of {}", levels(list)),
+        Item::Transitions(list) => format!("gaps of the static system of {}", pairs(list)),
         Item::Energy => "mean energy over h".to_string(),
         Item::TimeIn(list) => format!("time spent in {}", levels(list)),
         Item::AdiabaticPopulations => "populations of the instantaneous eigenstates".to_string(),
