@@ -46,6 +46,11 @@ pub fn term(family: &dyn Family, term: &WrittenTerm, values: &[f64]) -> Result<[
     Ok([join(re.fine, im.as_ref().map(|im| &im.fine)), join(re.coarse, im.as_ref().map(|im| &im.coarse))])
 }
 
+/// The largest modulus of an entry.
+pub fn largest(matrix: &Matrix) -> f64 {
+    matrix.iter().map(|z| z.norm()).fold(0.0, f64::max)
+}
+
 /// The sum of all terms.
 pub fn whole(family: &dyn Family, differential: &Differential, values: &[f64]) -> Result<[Matrix; 2], Mistake> {
     let size = family.count();
@@ -62,7 +67,7 @@ pub fn whole(family: &dyn Family, differential: &Differential, values: &[f64]) -
 const HERMITIAN: f64 = 1e-11;
 
 /// Half of a matrix and its adjoint where they differ by rounding alone; else the matrix.
-pub fn tidied(matrix: Matrix) -> Matrix {
+fn tidied(matrix: Matrix) -> Matrix {
     if super::is_hermitian(&matrix, HERMITIAN) {
         (&matrix + matrix.adjoint()) * Complex64::from(0.5)
     } else {

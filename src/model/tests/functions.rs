@@ -85,7 +85,8 @@ fn prop_what_is_not_hermitian_or_not_independent_is_refused() {
     let text = with("{a: \"max(0, 1 - abs(x) / 5 nm)\"}", "", "{4: 1 meV * (1 nm)^4}").expect_err("four derivatives of a kink");
     assert!(text.contains("order 4"), "{text}");
     // i c d/dx + i c'/2 is Hermitian
-    let good = with(two, "orthogonalise: in order\n    ", "{1: 2i * 1 meV * x, 0: 1i * 1 meV}").expect("a Hermitian first order");
+    let uneven = two.replace("x - 4 nm) / 4 nm", "x - 4 nm) / 6 nm");
+    let good = with(&uneven, "orthogonalise: in order\n    ", "{1: 2i * 1 meV * x, 0: 1i * 1 meV}").expect("a Hermitian first order");
     let off = &good.statics_hz - good.statics_hz.adjoint();
     assert_eq!(largest(&off), 0.0);
     assert!(good.statics_hz[(0, 1)].im.abs() > 0.0 && good.statics_hz[(0, 0)] == Complex64::from(0.0));
