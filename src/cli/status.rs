@@ -93,7 +93,11 @@ fn text(folder: &Path, states: &[State], shelf: &Shelf, points: u64) -> String {
             (true, _) => "a process is at work".to_string(),
             (false, _) => "no process is at work".to_string(),
         };
-        let since = state.since_s.map_or(String::new(), |since| format!(", last written {} ago", duration(since.round())));
+        let since = match state.since_s {
+            Some(since) if since < 1.0 => ", written just now".to_string(),
+            Some(since) => format!(", last written {} ago", duration(since.round())),
+            None => String::new(),
+        };
         text.push_str(&format!(
             "  part {} of {}: {} of {} points, {doing}{since}\n",
             part.number,

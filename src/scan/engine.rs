@@ -131,6 +131,12 @@ impl Engine<'_> {
             tell,
         };
         let ended = self.stages(&mut watch);
+        let all = watch.progress.reused + watch.progress.computed >= watch.progress.points;
+        let ended = match ended {
+            // whatever asked to stop came too late
+            Ended::Asked | Ended::Limit if all => Ended::Complete,
+            other => other,
+        };
         let ended = match self.store.sync() {
             Err(error) if matches!(ended, Ended::Complete) => broken(error),
             _ => ended,

@@ -46,8 +46,8 @@ record:
   final: {population: [1, 2]}
 scan:
   axes:
-    - {number: length, from: 8 ns, to: 200 ns, points: 240}
-    - {number: factor, from: 0, to: 1, points: 200}
+    - {number: length, from: 8 ns, to: 200 ns, points: 120}
+    - {number: factor, from: 0, to: 1, points: 160}
 run: {split_into: 6, threads: 1}
 accuracy: {final: 1e-9}
 Y

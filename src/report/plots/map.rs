@@ -222,8 +222,7 @@ fn lines(scene: &mut Scene, figure: &MapFigure, across: &Laid, up: &Laid, displa
     }
     if let Some(((x, y), _)) = figure.best {
         let at = (across.pixel(x), up.pixel(y));
-        scene.marker(at, Marker::Diamond(true), (255, 255, 255));
-        scene.marker(at, Marker::Plus, INK);
+        scene.marker(at, Marker::Diamond(false), INK);
     }
 }
 
