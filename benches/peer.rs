@@ -96,7 +96,10 @@ fn damped_ladder(w: &Workload, asked: f64, keys: &str, slices: Option<usize>) ->
     let u = move |t: f64| (t - length / 2.0) / sigma;
     let (bell, slope) = match slices {
         Some(n) => (
-            format!("shape: samples, samples: [{}], between: hold, length: {length} ns", middles(n, length, |t| (-0.5 * u(t) * u(t)).exp())),
+            format!(
+                "shape: samples, samples: [{}], between: hold, length: {length} ns",
+                middles(n, length, |t| (-0.5 * u(t) * u(t)).exp())
+            ),
             format!(
                 "shape: samples, samples: [{}], between: hold, length: {length} ns",
                 middles(n, length, |t| -u(t) * (-0.5 * u(t) * u(t)).exp())

@@ -17,6 +17,7 @@ use crate::measure::{
 use crate::plan::Point;
 use crate::problem::{Channel, Matrix, Problem, Start};
 use crate::propagate::{figure, solve, solve_from, solve_once, Asked, CrossCheck, Demand, Method, Recipe, Resolved, Solved, Steady};
+use crate::units::rad_s;
 
 /// A final number with its error.
 #[derive(Debug, Clone, PartialEq)]
@@ -287,7 +288,9 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
     // numbers of a run that was not made or broke down mean nothing
     let sound = solved.error_figure.is_finite();
     let end = problem.moments.len() - 1;
-    let besides = |k: usize| average.as_ref().and_then(|average| average.besides.get(k)).copied().unwrap_or(0.0);
+    // levels of a grid or an expansion are known to `error_hz`, and phases between them drift apart by as much
+    let of_levels = rad_s(point.built.error_hz) * problem.length_s();
+    let besides = |k: usize| of_levels + average.as_ref().and_then(|average| average.besides.get(k)).copied().unwrap_or(0.0);
     let sampling = |k: usize| average.as_ref().and_then(|average| average.sampling.get(k)).copied();
     let mut finals: Vec<Final> = columns
         .iter()
@@ -333,7 +336,7 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
     let end_state = recorded.end_state.clone().unwrap_or_else(|| problem.start.clone());
     let asked_steady = document.record.items.iter().any(|item| matches!(item, Item::Steady(_)));
     let steady = asked_steady.then(|| steady_of(problem, &end_state)).flatten();
-    let mut error_figure = quasi.as_ref().map_or(solved.error_figure, |(_, quasi)| quasi.error_figure.max(solved.error_figure));
+    let mut error_figure = quasi.as_ref().map_or(solved.error_figure, |(_, quasi)| quasi.error_figure.max(solved.error_figure)) + of_levels;
     for (level, name) in document.system.names.iter().enumerate().filter(|_| steady.is_some()) {
         let (value, error) = steady.as_ref().map_or((f64::NAN, f64::NAN), |found| (found.state[(level, level)].re, found.error));
         let name = format!("steady_population_{name}");
@@ -358,6 +361,7 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
         error_figure,
         floor: solved.floor,
         reached: solved.reached
+            && (of_levels == 0.0 || error_figure <= document.accuracy.last)
             && steady.as_ref().is_none_or(|found| found.error <= document.accuracy.last)
             && quasi.as_ref().is_none_or(|(_, quasi)| quasi.reached),
         quasi_energies: quasi.map(|(period_s, quasi)| (period_s, quasi.recorded.found.unwrap_or_default(), quasi.error_figure)),
