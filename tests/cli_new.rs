@@ -51,7 +51,7 @@ fn number(result: &serde_json::Value, path: &str) -> f64 {
 /// What `accuracy: final` says in a config, 1e-8 where it says nothing.
 fn accuracy(text: &str) -> f64 {
     let section = text.split("\naccuracy:").nth(1).unwrap_or_default();
-    let written = section.lines().find_map(|line| line.trim().strip_prefix("final:")).and_then(|rest| rest.split_whitespace().next());
+    let written = section.split("final:").nth(1).and_then(|rest| rest.split([',', '}', '\n', '#']).next()).map(str::trim);
     written.map_or(1e-8, |word| word.parse().expect("the accuracy of a starter is a plain number"))
 }
 

@@ -337,6 +337,7 @@ fn cli_scan_refuses_a_changed_config_and_names_the_line() {
     // other points are another scan
     desk.write(&text.replace("points: 60", "points: 61"));
     assert!(said(&desk.run("half", &[])).contains("60 -> 61"));
+    desk.write(&text);
     assert!(said(&desk.run("half", &["--set", "bend=-221MHz"])).contains("set from outside"));
     assert_eq!(status_of(&desk.run("half", &["--replace"])), 0);
 }

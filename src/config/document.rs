@@ -329,7 +329,9 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     // with the names of the levels known, the other sections can be judged even where an energy is wrong
     let stand_in = System { place: root.place, kind: "levels", names: reader.level_names(), entries: Vec::new(), physics: Physics::Typed };
     reader.system_read = system.is_some();
-    let readable = system.is_some() || !stand_in.names.is_empty();
+    // those of a system from its physics are not, once a part of it is wrong
+    let typed = |node: &Node| ["levels", "hamiltonian", "ladder"].iter().any(|key| node.get(key).is_some());
+    let readable = system.is_some() || (!stand_in.names.is_empty() && root.get("system").is_some_and(typed));
     let mut known_system = system.clone().unwrap_or(stand_in);
     let built_names = known_system.names.clone();
     let basis = match root.get("system") {

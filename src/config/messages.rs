@@ -270,13 +270,11 @@ fn fitting_unit(text: &str, dim: Dim) -> &'static str {
     }
 }
 
-/// A list for a sentence, cut after ten.
+/// A list for a sentence; of more than ten the first nine and the last.
 fn list(names: &[String]) -> String {
-    let shown = names.iter().take(10).cloned().collect::<Vec<_>>().join(", ");
-    if names.len() > 10 {
-        format!("{shown} and {} more", names.len() - 10)
-    } else {
-        shown
+    match names {
+        [first @ .., last] if names.len() > 10 => format!("{} and {} more, the last {last}", first[..9].join(", "), names.len() - 9),
+        _ => names.join(", "),
     }
 }
 

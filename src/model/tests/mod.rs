@@ -30,7 +30,13 @@ fn built(sections: &str) -> Built {
 fn tried(sections: &str) -> Result<Built, String> {
     let document = document(sections);
     let values = document.tape.as_written();
+    // what a file that names a doubtful eigenstate is told
+    let told = |built: Built| match built.doubtful.first() {
+        Some((_, mistake)) => Err(mistake.clone()),
+        None => Ok(built),
+    };
     crate::model::build(&document, &values)
+        .and_then(told)
         .map_err(|mistake| crate::config::messages::render(&document.sources, std::slice::from_ref(&mistake)))
 }
 
