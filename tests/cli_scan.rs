@@ -362,6 +362,12 @@ fn cli_scan_keeps_a_second_process_out() {
     let part = |number: &str| desk.scan("parts", &["--part", number, "--quiet", "--threads", "1"]).stderr(Stdio::null()).spawn().unwrap();
     let (mut one, mut two) = (part("1/2"), part("2/2"));
     await_stored(&desk, "parts", &mut one);
+    // signals are heard before a store is made
+    let clock = Instant::now();
+    while !desk.folder("parts").join("part-2-of-2.store").exists() {
+        assert!(clock.elapsed() < Duration::from_secs(60));
+        std::thread::sleep(Duration::from_millis(5));
+    }
     assert_eq!(status_of(&desk.run("parts", &["--part", "1/2"])), 2);
     for child in [&mut one, &mut two] {
         send("TERM", child);

@@ -90,12 +90,14 @@ fn try_scan(words: &Words) -> Result<Status, Status> {
         repair: words.repair,
         writer: std::env::var("SLURM_RESTART_COUNT").ok().and_then(|count| count.parse().ok()).unwrap_or(0),
     };
+    // from here on a signal ends it between two points
+    let stop = stop_flag();
     let opened = match opening.open().map_err(|fault| refuse_folder(&fault))? {
         Opened::Complete(result) => return Ok(complete_already(words, &folder, &result)),
         Opened::Ready(opened) => *opened,
     };
     complain_of(setup.document(), &setup.document().warnings);
-    Computing { setup: &setup, run, part, quiet: words.results.quiet || words.results.json }.compute(opened, words)
+    Computing { setup: &setup, run, part, stop: &stop, quiet: words.results.quiet || words.results.json }.compute(opened, words)
 }
 
 /// A scan laid out, or a complaint.
@@ -176,6 +178,7 @@ struct Computing<'a> {
     setup: &'a Setup,
     run: Run,
     part: Part,
+    stop: &'a AtomicBool,
     quiet: bool,
 }
 
@@ -183,7 +186,6 @@ impl Computing<'_> {
     fn compute(&self, mut opened: ScanFolder, words: &Words) -> Result<Status, Status> {
         let began = Instant::now();
         let order = order(self.setup, self.part);
-        let stop = stop_flag();
         if opened.torn > 0 && !self.quiet {
             complain(&format!("{} bytes that a broken-off start had left at the end of the store were cut off.\n", opened.torn));
         }
@@ -193,7 +195,7 @@ impl Computing<'_> {
             threads: limit::threads(&self.run, variable),
             save_every: Duration::from_secs_f64(self.run.save_every_s),
             until: limit::time_to_stop(&self.run, variable).map(|time| began + time),
-            stop: &stop,
+            stop: self.stop,
             on_failed_point: self.run.on_failed_point,
         };
         let threads = running.threads;
