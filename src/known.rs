@@ -135,6 +135,37 @@ pub const KNOWN: &[Known] = &[
             ,
         answers: || vec![Answer { name: "population_far", value: 1.0 }, Answer { name: "population_upper", value: 0.0 }],
     },
+    Known {
+        name: "driven on resonance while it decays and dephases",
+        source: "H. C. Torrey, Physical Review 76, 1059 (1949): a damped oscillation about the steady state",
+        config: "format: 1\nsystem:\n  levels: {down: 0 MHz, up: 50 MHz}\ndrives:\n  rf: {pair: [down, up], form: one_sided, carrier: \"gap(down, up)\"}\nenvelopes:\n  on: {shape: square, length: 1.7 us, peak: 0.9 MHz}\nsequence:\n  - pulse: {drive: rf, envelope: on}\ndecay: [{from: up, to: down, lifetime: 1.3 us}]\ndephasing: [{energy_of: {up: 1}, pure_time: 2.1 us}]\nstart: down\nrecord: {at: [1.7 us], populations: all}\n",
+        answers: || {
+            let (down, across, turning, t) = (1.0 / 1.3e-6, 0.5 / 1.3e-6 + 1.0 / 2.1e-6, RAD_PER_TURN * 0.9e6, 1.7e-6);
+            let still: f64 = down * across / (down * across + turning * turning);
+            let (damped, swung): (f64, f64) = (0.5 * (down + across), turning.powi(2) - (0.5 * (down - across)).powi(2));
+            let (off, rate) = (1.0 - still, swung.sqrt());
+            // in the lower level the inversion stands still at first: its slope about the steady state is zero
+            let inversion = still + (-damped * t).exp() * off * ((rate * t).cos() + damped / rate * (rate * t).sin());
+            vec![Answer { name: "population_up", value: 0.5 * (1.0 - inversion) }]
+        },
+    },
+    Known {
+        name: "cascade down three levels",
+        source: "H. Bateman, Proceedings of the Cambridge Philosophical Society 15, 423 (1910)",
+        config: "format: 1\nsystem:\n  levels: {ground: 0 MHz, middle: 40 MHz, top: 90 MHz}\nsequence:\n  - wait: 0.8 us\ndecay: [{from: top, to: middle, lifetime: 0.4 us}, {from: middle, to: ground, lifetime: 0.9 us}]\nstart: top\nrecord: {at: [0.8 us], populations: all}\n",
+        answers: || {
+            let (fast, slow, t) = (1.0 / 0.4e-6, 1.0 / 0.9e-6, 0.8e-6f64);
+            let (top, middle) = ((-fast * t).exp(), fast / (fast - slow) * ((-slow * t).exp() - (-fast * t).exp()));
+            let names = ["population_top", "population_middle", "population_ground"];
+            names.iter().zip([top, middle, 1.0 - top - middle]).map(|(name, value)| Answer { name, value }).collect()
+        },
+    },
+    Known {
+        name: "smooth pulse on resonance while both levels are lost alike",
+        source: "area theorem (S. L. McCall, E. L. Hahn, Physical Review 183, 457 (1969)) times the exponential of the common loss",
+        config: "format: 1\nsystem:\n  levels: {down: 0 MHz, up: 50 MHz}\ndrives:\n  rf:\n    pair: [down, up]\n    form: one_sided\n    carrier: gap(down, up)\nenvelopes:\n  hump: {shape: gaussian, field_sigma: 0.2 us, cut_at: 0.7 us, edge: lift, turn: 0.37 turn}\nsequence:\n  - pulse: {drive: rf, envelope: hump}\ndecay: [{from: down, to: outside, lifetime: 2 us}, {from: up, to: outside, lifetime: 2 us}]\nstart: down\nrecord: {at: [1.4 us], populations: all}\n",
+        answers: || vec![Answer { name: "population_up", value: sin2(0.37 / 2.0) * (-1.4f64 / 2.0).exp() }],
+    },
 ];
 
 #[cfg(test)]

@@ -111,6 +111,19 @@ fn cli_strong_spin_is_explained_by_one_term() {
     assert!(said.contains("explains most of it"), "{said}");
 }
 
+// Decay out of a level that one variant eliminates is left out there, and the comparison says so once, under its name.
+#[test]
+fn cli_compare_warns_of_decay_that_a_variant_leaves_out() {
+    let folder = empty();
+    let config = "format: 1\nsystem:\n  levels: {near: 0 MHz, far: 90 MHz, upper: 7 GHz}\ndrives:\n  pump: {pair: [near, upper], form: one_sided, carrier: \"300 MHz below gap(near, upper)\"}\n  dump: {pair: [far, upper], form: one_sided, carrier: \"300 MHz below gap(far, upper)\"}\nenvelopes:\n  on: {shape: square, length: 6 us, peak: 10 MHz}\nsequence:\n  - together:\n      - pulse: {drive: pump, envelope: on}\n      - pulse: {drive: dump, envelope: on}\nstart: near\ndecay:\n  - {from: upper, to: outside, lifetime: 30 ns}\nframe: {kind: rotating, follows: drives, drop_terms_faster_than: nothing}\nrecord: {populations: all}\ncompare:\n  - {name: short, frame: {kind: rotating, follows: drives, drop_terms_faster_than: nothing, eliminate: [upper]}}\n";
+    fs::write(folder.path().join("raman.yaml"), config).expect("a folder of ours can be written to");
+    let compared = nutate(folder.path(), &["compare", "raman.yaml"]);
+    let said = text(&compared.stderr);
+    assert_eq!(compared.status.code(), Some(0), "{said}");
+    assert!(said.starts_with("short:\nwarning: raman.yaml, line 19"), "{said}");
+    assert_eq!(said.matches("its decay (3.33333e7 /s) is left out with it").count(), 1, "{said}");
+}
+
 #[test]
 fn cli_low_frequency_is_cross_checked() {
     let difference = number(&run_of("low-frequency"), "/cross_check/difference");

@@ -7,7 +7,8 @@ use clap::Args;
 
 use super::{complain, complain_of, not_drawn, point, print, read_config, refuse, Common, Results, Status};
 use crate::compare::{compare, plans, CompareFault};
-use crate::config::messages::{Fault, Mistake};
+use crate::config::document::Document;
+use crate::config::messages::{render, Fault, Mistake};
 use crate::config::place::Place;
 use crate::plan::Plan;
 use crate::report::folder::{default_folder, prepare};
@@ -37,6 +38,19 @@ fn fault(fault: CompareFault) -> Status {
     Status::Refused
 }
 
+/// Warnings of one side of a comparison, under its name; what another side has said already is not said again.
+fn complain_once(said: &mut Vec<String>, name: &str, document: &Document, warnings: &[Mistake]) {
+    let fresh: Vec<String> = warnings
+        .iter()
+        .map(|warning| render(&document.sources, std::slice::from_ref(warning)))
+        .filter(|text| !said.contains(text))
+        .collect();
+    if !fresh.is_empty() {
+        complain(&format!("{name}:\n{}", fresh.concat()));
+        said.extend(fresh);
+    }
+}
+
 fn try_run(words: &Words) -> Result<Status, Status> {
     let clock = Instant::now();
     let document = read_config(&words.common)?;
@@ -59,9 +73,14 @@ fn try_run(words: &Words) -> Result<Status, Status> {
         Status::Refused
     })?;
     complain_of(document, &document.warnings);
+    let mut said = Vec::new();
+    for (name, plan) in &all {
+        let warnings = plan.point().map_or_else(|_| Vec::new(), |point| point.warnings.clone());
+        complain_once(&mut said, name, plan.document(), &warnings);
+    }
     let comparison = compare(&written, all).map_err(fault)?;
     for computed in &comparison.computed {
-        complain_of(computed.plan.document(), computed.outcome.warnings());
+        complain_once(&mut said, &computed.name, computed.plan.document(), computed.outcome.warnings());
     }
     let seconds = clock.elapsed().as_secs_f64();
     let files = write::comparison(staging, document, &comparison, seconds).map_err(|error| {

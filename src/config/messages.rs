@@ -960,7 +960,10 @@ impl Fault {
                 .why("Propagators, quasi-energies, steady states, shots and budgets have no place in a table of numbers.")
                 .write("record: {populations: all}"),
             NoSuchNumber { name, near, known } => say(format!("the file has no number called \"{name}\"."))
-                .why(format!("Only named numbers can be set: {}.", list(known)))
+                .why(match known.is_empty() {
+                    true => "Only named numbers can be set, and the file names none.".to_string(),
+                    false => format!("Only named numbers can be set: {}.", list(known)),
+                })
                 .maybe(&near.as_ref().map(|near| format!("{near}=value")), "--set "),
         }
     }
