@@ -87,11 +87,11 @@ pub fn levels(figure: &LevelsFigure) -> Result<Drawn, PlotError> {
         axis(&mut scene, group, left, right);
     }
     breaks(&mut scene, figure, &groups, left);
-    let lines = strongest(figure);
-    transitions(&mut scene, figure, &groups, &lines, left + 40.0, right - 20.0);
     for (group, names) in groups.iter().zip(&names) {
         bars(&mut scene, figure, group, names, left + 14.0, right);
     }
+    let lines = strongest(figure);
+    transitions(&mut scene, figure, &groups, &lines, left + 40.0, right - 20.0);
     remarks(&mut scene, figure, &lines);
     frame::fingerprint(&mut scene, &figure.fingerprint);
     scene.finish()
@@ -184,7 +184,7 @@ fn axis(scene: &mut Scene, group: &Group, left: f64, right: f64) {
     } else {
         format!("energy / h less {} ({})", with_digits(group.offset, "Hz", 7), group.display.unit)
     };
-    scene.text(&label, (left, group.top - 16.0), LABEL, INK, Anchor::Start);
+    scene.text(&label, (left + 16.0, group.top - 18.0), LABEL, INK, Anchor::Start);
 }
 
 /// A zigzag across the axis between two panels, with the gap that is left out.
@@ -198,8 +198,8 @@ fn breaks(scene: &mut Scene, figure: &LevelsFigure, groups: &[Group], left: f64)
         }
         let last = figure.levels[below.members[below.members.len() - 1]].1;
         let first = figure.levels[above.members[0]].1;
-        let text = format!("{} left out", with_digits(first - last, "Hz", 4));
-        scene.text(&text, (WIDTH / 2.0 + 120.0, below.top - 16.0), SMALL, SOFT_INK, Anchor::Start);
+        let text = format!("axis broken: {} between", with_digits(first - last, "Hz", 4));
+        scene.text(&text, (WIDTH - EDGE, below.top - 18.0), SMALL, SOFT_INK, Anchor::End);
     }
 }
 
@@ -291,37 +291,62 @@ fn transitions(scene: &mut Scene, figure: &LevelsFigure, groups: &[Group], lines
     });
     let y = |k: usize| groups.iter().find(|group| group.members.contains(&k)).map_or(0.0, |group| group.y(energy(k)));
     let step = (right - left) / placed.len() as f64;
-    for (index, line) in placed.iter().enumerate() {
-        let [lower, upper] = ends(line);
-        let (x, from, to) = (left + step * (index as f64 + 0.3), y(lower), y(upper));
-        let (wide, color) = (width(line.strength, most), colour(index));
-        arrow(scene, x, from, to, wide, color);
-        let text = with_digits(energy(upper) - energy(lower), "Hz", 4);
-        let start = x + wide / 2.0 + 6.0;
-        let length = font::width(&text, TICK);
-        // beside its middle, shifted where a level would cross the letters
-        let middle = clear(groups, figure, 0.5 * (from + to), from, to);
-        scene.rectangle((start - 2.0, middle - 11.0), (start + length + 2.0, middle + 11.0), (255, 255, 255), 0.85);
-        scene.text(&text, (start, middle), TICK, INK, Anchor::Start);
+    let arrows: Vec<Arrow> = placed
+        .iter()
+        .enumerate()
+        .map(|(index, line)| {
+            let [lower, upper] = ends(line);
+            let (x, wide) = (left + step * (index as f64 + 0.3), width(line.strength, most));
+            let text = with_digits(energy(upper) - energy(lower), "Hz", 4);
+            Arrow { x, from: y(lower), to: y(upper), wide, color: colour(index), text }
+        })
+        .collect();
+    for arrow in &arrows {
+        arrow.draw(scene);
+    }
+    let bars: Vec<f64> = groups.iter().flat_map(|group| group.members.iter().map(|k| group.y(energy(*k)))).collect();
+    for arrow in &arrows {
+        arrow.write(scene, &bars, &arrows);
     }
 }
 
-/// A height near `wished` between both ends at which no level runs.
-fn clear(groups: &[Group], figure: &LevelsFigure, wished: f64, from: f64, to: f64) -> f64 {
-    let bars: Vec<f64> = groups.iter().flat_map(|group| group.members.iter().map(|k| group.y(figure.levels[*k].1))).collect();
-    let free = |y: f64| bars.iter().all(|bar| (bar - y).abs() > 15.0);
-    let shifts = (0..40).flat_map(|k| [f64::from(k) * 4.0, f64::from(k) * -4.0]);
-    shifts.map(|shift| wished + shift).find(|y| free(*y) && *y < from - 10.0 && *y > to + 10.0).unwrap_or(wished)
+/// A transition as drawn, from the lower to the upper level in pixels.
+struct Arrow {
+    x: f64,
+    from: f64,
+    to: f64,
+    wide: f64,
+    color: Rgb,
+    text: String,
 }
 
-/// A line with a head at each end; of levels too close for heads the line alone.
-fn arrow(scene: &mut Scene, x: f64, from: f64, to: f64, wide: f64, color: Rgb) {
-    let head = (6.0 + 1.3 * wide).min(0.45 * (from - to).abs());
-    let half = 0.62 * head.max(3.0);
-    let direction = if to < from { 1.0 } else { -1.0 };
-    scene.line(vec![(x, from - 0.9 * head * direction), (x, to + 0.9 * head * direction)], wide, color);
-    for (tip, sign) in [(from - 1.6 * direction, -direction), (to + 1.6 * direction, direction)] {
-        scene.area(vec![(x, tip), (x - half, tip + sign * head), (x + half, tip + sign * head)], color, 1.0);
+impl Arrow {
+    /// A line with a head at each end; of levels too close for heads the line alone.
+    fn draw(&self, scene: &mut Scene) {
+        let head = (6.0 + 1.3 * self.wide).min(0.45 * (self.from - self.to).abs());
+        let half = 0.62 * head.max(3.0);
+        scene.line(vec![(self.x, self.from - 0.9 * head), (self.x, self.to + 0.9 * head)], self.wide.min(2.0 * half), self.color);
+        for (tip, sign) in [(self.from - 1.6, -1.0), (self.to + 1.6, 1.0)] {
+            scene.area(vec![(self.x, tip), (self.x - half, tip + sign * head), (self.x + half, tip + sign * head)], self.color, 1.0);
+        }
+    }
+
+    /// Its gap beside it, where neither a level nor another arrow runs through the letters; else on white.
+    fn write(&self, scene: &mut Scene, bars: &[f64], arrows: &[Arrow]) {
+        let start = self.x + self.wide / 2.0 + 6.0;
+        let end = start + font::width(&self.text, TICK);
+        let crossed =
+            |y: f64| arrows.iter().any(|other| other.x > self.x && other.x - 9.0 < end && y < other.from + 12.0 && y > other.to - 12.0);
+        let clear = |y: f64| bars.iter().all(|bar| (bar - y).abs() > 14.0);
+        let inside = |y: f64| y < self.from - 10.0 && y > self.to + 10.0;
+        let middle = 0.5 * (self.from + self.to);
+        let near = || (0..120).flat_map(|k| [f64::from(k) * 4.0, f64::from(k) * -4.0]).map(move |shift| middle + shift);
+        let free = near().find(|y| inside(*y) && clear(*y) && !crossed(*y));
+        let free = free.or_else(|| near().find(|y| inside(*y) && clear(*y)));
+        // between levels that lie close the gap stands above or below them
+        let free = free.or_else(|| near().take(80).find(|y| clear(*y) && !crossed(*y))).unwrap_or(middle);
+        scene.rectangle((start - 2.0, free - 11.0), (end + 2.0, free + 11.0), (255, 255, 255), 0.92);
+        scene.text(&self.text, (start, free), TICK, INK, Anchor::Start);
     }
 }
 
@@ -333,7 +358,8 @@ fn remarks(scene: &mut Scene, figure: &LevelsFigure, lines: &[&TransitionLine]) 
     }
     let strong = figure.lines.iter().filter(|line| line.strength > 0.0).count();
     if strong > lines.len() {
-        said.push(format!("{} weaker lines not drawn", strong - lines.len()));
+        let hidden = strong - lines.len();
+        said.push(format!("{hidden} weaker line{} not drawn", if hidden == 1 { "" } else { "s" }));
     }
     let text = font::fit(&said.join("; "), SMALL, WIDTH - 400.0);
     scene.text(&text, (EDGE, HEIGHT - 20.0), SMALL, SOFT_INK, Anchor::Start);
