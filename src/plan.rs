@@ -473,8 +473,9 @@ impl<'p> Point<'p> {
         self.lab.terms = terms;
         self.warnings.clear();
         for (level, mistake) in &self.built.doubtful {
-            // a state that the file speaks of must be one that can be told
-            if document.named_levels.contains(level) {
+            // a state that the file speaks of must be one that can be told; along a scan levels pass through each other
+            let recorded = document.scan.is_none() && document.recorded_levels.contains(level);
+            if recorded || document.named_levels.contains(level) {
                 return Err(mistake.clone());
             }
             self.warnings.push(Mistake { warning: true, ..mistake.clone() });

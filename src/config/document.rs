@@ -77,6 +77,8 @@ pub struct Document {
     pub built_names: Vec<String>,
     /// Levels that the file names somewhere.
     pub named_levels: Vec<usize>,
+    /// Levels of which the energies are recorded: without a scan they must be such as can be told.
+    pub recorded_levels: Vec<usize>,
     /// Named matrices.
     pub operators: Vec<Operator>,
     /// Drives.
@@ -436,6 +438,11 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
     let (decays, dephasings) = surroundings?;
     super::record::beside_surroundings(reader, &mut record, root.get("record"), (&decays, &dephasings, &start));
     let (basis, _) = basis?;
+    if reader.levels_alone && scan.is_some() {
+        // what a drive or a start names is not used
+        let named = std::mem::take(&mut reader.named_levels);
+        reader.recorded_levels.extend(named);
+    }
     let mut document = Document {
         sources: reader.sources.clone(),
         title,
@@ -446,6 +453,7 @@ fn sections(reader: &mut Reader, root: &Node, file: u16, set: &[(String, String)
         basis,
         built_names,
         named_levels: std::mem::take(&mut reader.named_levels),
+        recorded_levels: std::mem::take(&mut reader.recorded_levels),
         operators,
         drives,
         envelopes,

@@ -154,6 +154,8 @@ pub struct Reader {
     pub system_alone: bool,
     /// Levels that the file names somewhere, in the order met.
     pub named_levels: Vec<usize>,
+    /// Levels of which the energies are recorded.
+    pub recorded_levels: Vec<usize>,
     /// Whether nothing but levels of the static system is recorded, and nothing happens to it.
     pub levels_alone: bool,
     /// Parts of the system with the names of their levels; none where it has no parts.
@@ -199,6 +201,7 @@ impl Reader {
             defaults: Vec::new(),
             system_alone: false,
             named_levels: Vec::new(),
+            recorded_levels: Vec::new(),
             levels_alone: false,
             parts: Vec::new(),
             as_built: true,

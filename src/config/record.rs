@@ -228,11 +228,11 @@ pub fn read_record(reader: &mut Reader, node: Option<&Node>, operators: &[Operat
             "populations" => levels(reader, value, "populations").map(Item::Populations),
             "levels" if value.text() == Some("all") => {
                 // each column bears a name, so each state must have one
-                reader.named_levels.extend(&all);
+                reader.recorded_levels.extend(&all);
                 Some(Item::Levels(all.clone()))
             }
-            "levels" => levels(reader, value, "levels").map(Item::Levels),
-            "transitions" => pairs(reader, value, "transitions").map(Item::Transitions),
+            "levels" => recorded(reader, |reader| levels(reader, value, "levels")).map(Item::Levels),
+            "transitions" => recorded(reader, |reader| pairs(reader, value, "transitions")).map(Item::Transitions),
             "outside_of" => levels(reader, value, "outside_of").map(Item::OutsideOf),
             "time_in" => levels(reader, value, "time_in").map(Item::TimeIn),
             "coherence" => pairs(reader, value, "coherence").map(Item::Coherence),
@@ -408,6 +408,15 @@ fn read_within(reader: &mut Reader, node: &Node) -> Option<Vec<usize>> {
     }
     reader.named_levels.extend(&joint);
     Some(joint)
+}
+
+/// Levels that are named for their energies alone: along a scan they may pass through each other.
+fn recorded<T>(reader: &mut Reader, read: impl FnOnce(&mut Reader) -> T) -> T {
+    let before = reader.named_levels.len();
+    let found = read(reader);
+    let named = reader.named_levels.split_off(before);
+    reader.recorded_levels.extend(named);
+    found
 }
 
 fn read_gate(reader: &mut Reader, node: &Node, operators: &[Operator], used: &mut Vec<String>) -> Option<Gate> {

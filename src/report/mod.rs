@@ -5,6 +5,7 @@ pub mod explain;
 pub mod figures;
 pub mod fingerprint;
 pub mod folder;
+pub mod followed_figures;
 pub mod frame_json;
 pub mod heading;
 pub mod matrices_csv;

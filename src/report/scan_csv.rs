@@ -49,7 +49,7 @@ fn cell(line: &mut String, k: usize, value: Option<f64>) {
 }
 
 /// A heading as CSV has it.
-fn quoted(heading: &str) -> String {
+pub fn quoted(heading: &str) -> String {
     if heading.contains([',', '"', '\n']) {
         format!("\"{}\"", heading.replace('"', "\"\""))
     } else {

@@ -4,11 +4,13 @@
 
 use std::io;
 
+use super::followed_figures;
 use super::plots::{lines, map, Drawn, LinesFigure, LinesPanel, MapFigure, PlotError, Ruler};
 use crate::config::scan::Make;
 use crate::config::settings::Plot;
 use crate::report::fingerprint::fingerprint;
 use crate::report::heading::heading;
+use crate::scan::follow::{follow, Followed};
 use crate::scan::row::Found;
 use crate::scan::setup::Setup;
 use crate::scan::shelf::Rows;
@@ -52,6 +54,8 @@ pub struct Points<'a> {
     as_lines: bool,
     best: Option<BestPoint>,
     cuts: Vec<Cut>,
+    /// Levels followed along the one axis, where they are recorded.
+    pub followed: Option<Followed>,
 }
 
 impl<'a> Points<'a> {
@@ -81,6 +85,7 @@ impl<'a> Points<'a> {
             as_lines: false,
             best,
             cuts,
+            followed: None,
         };
         let few = groups.len() == 2 && groups.iter().any(|group| grid.counts()[*group] <= FEW);
         points.as_map = groups.len() == 2 && wanted.contains(&Plot::Map) && (chosen || !few);
@@ -107,6 +112,7 @@ impl<'a> Points<'a> {
     /// Collects all rows.
     pub fn of(setup: &'a Setup, rows: &dyn Rows, best: Option<BestPoint>, cuts: Vec<Cut>) -> io::Result<Points<'a>> {
         let mut points = Points::new(setup, best, cuts);
+        points.followed = follow(setup);
         if points.across.is_some() {
             rows.each(&mut |row| {
                 match &row.found {
@@ -184,7 +190,7 @@ fn unit(setup: &Setup, column: usize) -> String {
 }
 
 /// A name as part of a file name.
-fn file_word(name: &str) -> String {
+pub fn file_word(name: &str) -> String {
     name.chars().map(|c| if c.is_alphanumeric() || c == '_' { c } else { '-' }).collect()
 }
 
@@ -203,7 +209,12 @@ pub fn of_scan(points: &Points) -> Vec<NamedScan> {
                 }
             }
         }
-        (Some(across), None) => drawn.extend(one_axis(points, across)),
+        (Some(across), None) => {
+            drawn.extend(one_axis(points, across));
+            if let Some(found) = &points.followed {
+                drawn.extend(followed_figures::of(points.setup, found, &points.ruler(across)));
+            }
+        }
         _ => {}
     }
     if let Some(best) = points.best.as_ref().filter(|_| points.cuts.len() > 1) {
@@ -264,8 +275,10 @@ fn curves_figure(points: &Points, column: usize, across: Side, up: Side) -> Line
 /// All columns over the one axis, those of one unit together.
 fn one_axis(points: &Points, across: Side) -> Vec<NamedScan> {
     let setup = points.setup;
+    // levels that are followed have figures of their own
+    let other = |column: &usize| points.followed.is_none() || !followed_figures::is_level(setup, *column);
     let mut units: Vec<String> = Vec::new();
-    for column in 0..points.sums.len() {
+    for column in (0..points.sums.len()).filter(other) {
         let of = unit(setup, column);
         if !units.contains(&of) {
             units.push(of);
@@ -276,7 +289,7 @@ fn one_axis(points: &Points, across: Side) -> Vec<NamedScan> {
         .iter()
         .enumerate()
         .map(|(k, of)| {
-            let columns: Vec<usize> = (0..points.sums.len()).filter(|column| unit(setup, *column) == *of).collect();
+            let columns: Vec<usize> = (0..points.sums.len()).filter(other).filter(|column| unit(setup, *column) == *of).collect();
             let curves = columns.iter().map(|column| (setup.columns[*column].name.clone(), points.values(*column))).collect();
             let axis = &setup.grid.axes()[setup.grid.leaders()[across.group]];
             let at = best(&columns).map(|_| axis.shown(points.fixed[across.group]));

@@ -11,7 +11,7 @@ use super::folder::Staging;
 use super::scan_figures::{of_scan, Points};
 use super::scan_json::{result, Finished};
 use super::write::Written;
-use super::{figures, npy, scan_csv};
+use super::{figures, followed_figures, npy, scan_csv};
 use crate::scan::row::Found;
 use crate::scan::shelf::{Rows, Shelf};
 
@@ -31,6 +31,10 @@ pub fn write(staging: Staging, shelf: &Shelf, finished: &Finished, points: &Poin
     if !setup.traced.is_empty() {
         json.insert("traces".to_string(), traces(&side, shelf, finished)?);
         names.push("traces.npy".to_string());
+    }
+    if let Some(found) = &points.followed {
+        names.extend(followed_figures::tables(setup, found, &side)?);
+        json.insert("followed".to_string(), followed_figures::json(setup, found));
     }
     names.push("result.json".to_string());
     let mut not_drawn = Vec::new();

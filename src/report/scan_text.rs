@@ -5,6 +5,7 @@ use super::scan_json::{reached, Finished};
 use super::summary::with_error;
 use crate::config::messages::{short, short_with_unit};
 use crate::report::heading::heading;
+use crate::scan::follow::Followed;
 use crate::scan::setup::Setup;
 
 /// A time for people: `47 s`, `12 min`, `3 h 20 min`.
@@ -39,6 +40,11 @@ pub fn at(setup: &Setup, point: u64) -> String {
     setup.grid.axes().iter().zip(shown).map(one).collect::<Vec<_>>().join(", ")
 }
 
+/// A value of an axis with its unit.
+pub fn place_words(axis: &crate::config::scan::Axis, value: f64) -> String {
+    format!("{} {}", short(value), axis.unit).trim_end().to_string()
+}
+
 /// A value of a column with its unit.
 fn value(setup: &Setup, column: usize, value: f64, error: f64) -> String {
     let column = &setup.columns[column];
@@ -67,7 +73,7 @@ pub fn axes(setup: &Setup) -> String {
 }
 
 /// The screen at the end.
-pub fn summary(finished: &Finished, place: &str) -> String {
+pub fn summary(finished: &Finished, followed: Option<&Followed>, place: &str) -> String {
     let (setup, summary) = (finished.setup, finished.summary);
     let mut text = format!("{}\n", heading(setup.document()));
     text.push_str(&format!("{} points", spaced(summary.points)));
@@ -116,6 +122,9 @@ pub fn summary(finished: &Finished, place: &str) -> String {
     ));
     if !finished.resolution.is_empty() {
         text.push_str(&format!("method: {}; {} points refined by themselves\n", finished.resolution.join("; "), spaced(summary.alone)));
+    }
+    if let Some(found) = followed {
+        text.push_str(&super::followed_figures::text(setup, found));
     }
     text.push_str(&failures(finished));
     text.push_str(&format!("files: {place}\n"));

@@ -72,6 +72,12 @@ impl Grid {
         self.counts.iter().zip(along).fold(0, |point, (count, at)| point * count + at)
     }
 
+    /// The point at a place along one group, with all others at their middle.
+    pub fn point_along(&self, group: usize, place: u64) -> u64 {
+        let along: Vec<u64> = self.counts.iter().enumerate().map(|(k, count)| if k == group { place } else { count / 2 }).collect();
+        self.point_at(&along)
+    }
+
     /// Values of all axes at a point, SI, in the order of the axes.
     pub fn values(&self, point: u64) -> Vec<f64> {
         let along = self.coordinates(point);

@@ -17,6 +17,7 @@
 //! | `order.rs` | which points a part has, and in which order |
 //! | `begin.rs` | the head of a store, and the order of the points |
 //! | `engine.rs` | threads, writing, stopping |
+//! | `follow.rs` | levels followed along an axis, through crossings |
 //! | `summary.rs` | counts, errors, extremes, the best point |
 //! | `cluster.rs` | scripts for a queue |
 //! | `limit.rs` | threads and time that a queue grants |
@@ -27,6 +28,7 @@ pub mod changed;
 pub mod cluster;
 pub mod engine;
 pub mod evaluate;
+pub mod follow;
 pub mod grid;
 pub mod limit;
 pub mod order;

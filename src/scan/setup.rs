@@ -95,6 +95,11 @@ impl Setup {
         self.scan.axes.iter().map(|axis| axis.number.as_str()).collect()
     }
 
+    /// Whether some axis changes the structure, such as a number of levels.
+    pub fn is_structural(&self) -> bool {
+        !self.structural.is_empty()
+    }
+
     /// Groups of axes that change the structure.
     fn structural_groups(&self) -> Vec<usize> {
         let mut groups: Vec<usize> = self.structural.iter().map(|axis| self.grid.group_of(*axis)).collect();

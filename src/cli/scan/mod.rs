@@ -344,7 +344,7 @@ impl Finishing<'_> {
         if self.json {
             print(&format!("{}\n", serde_json::to_string_pretty(&json).unwrap_or_default()));
         } else if !self.quiet {
-            print(&scan_text::summary(&finished, &written.place));
+            print(&scan_text::summary(&finished, points.followed.as_ref(), &written.place));
         }
         if let Some(words) = &short_of {
             complain(&format!("warning: {words}.\n"));

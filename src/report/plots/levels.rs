@@ -86,12 +86,19 @@ pub fn levels(figure: &LevelsFigure) -> Result<Drawn, PlotError> {
     for group in &groups {
         axis(&mut scene, group, left, right);
     }
-    breaks(&mut scene, figure, &groups, left);
     for (group, names) in groups.iter().zip(&names) {
         bars(&mut scene, figure, group, names, left + 14.0, right);
     }
-    let lines = strongest(figure);
-    transitions(&mut scene, figure, &groups, &lines, left + 40.0, right - 20.0);
+    let mut lines = strongest(figure);
+    let digits = digits_apart(figure, &lines);
+    // so many that no gap comes near the next arrow
+    let each = lines.iter().map(|line| font::width(&gap_text(figure, line, digits), TICK)).fold(0.0, f64::max) + 36.0;
+    lines.truncate(((right - left - 60.0) / each) as usize);
+    transitions(&mut scene, figure, &groups, &lines, digits, (left + 40.0, right - 20.0));
+    for group in &groups {
+        axis_label(&mut scene, group, left);
+    }
+    breaks(&mut scene, figure, &groups, left);
     remarks(&mut scene, figure, &lines);
     frame::fingerprint(&mut scene, &figure.fingerprint);
     scene.finish()
@@ -179,11 +186,17 @@ fn axis(scene: &mut Scene, group: &Group, left: f64, right: f64) {
         scene.text(&text, (left - 12.0, y), TICK, INK, Anchor::End);
     }
     scene.line(vec![(left, group.top), (left, group.bottom)], 1.4, AXIS);
+}
+
+/// What the axis of a panel shows, above it and in front of the arrows that go on to the next panel.
+fn axis_label(scene: &mut Scene, group: &Group, left: f64) {
     let label = if group.offset == 0.0 {
         format!("energy / h ({})", group.display.unit)
     } else {
         format!("energy / h less {} ({})", with_digits(group.offset, "Hz", 7), group.display.unit)
     };
+    let wide = font::width(&label, LABEL);
+    scene.rectangle((left + 12.0, group.top - 30.0), (left + 20.0 + wide, group.top - 6.0), (255, 255, 255), 0.92);
     scene.text(&label, (left + 16.0, group.top - 18.0), LABEL, INK, Anchor::Start);
 }
 
@@ -199,6 +212,8 @@ fn breaks(scene: &mut Scene, figure: &LevelsFigure, groups: &[Group], left: f64)
         let last = figure.levels[below.members[below.members.len() - 1]].1;
         let first = figure.levels[above.members[0]].1;
         let text = format!("axis broken: {} between", with_digits(first - last, "Hz", 4));
+        let wide = font::width(&text, SMALL);
+        scene.rectangle((WIDTH - EDGE - wide - 4.0, below.top - 27.0), (WIDTH - EDGE, below.top - 9.0), (255, 255, 255), 0.92);
         scene.text(&text, (WIDTH - EDGE, below.top - 18.0), SMALL, SOFT_INK, Anchor::End);
     }
 }
@@ -272,8 +287,33 @@ fn colour(index: usize) -> Rgb {
     CURVES[1 + index % (CURVES.len() - 1)]
 }
 
+/// The gap of a line with so many digits.
+fn gap_text(figure: &LevelsFigure, line: &TransitionLine, digits: i32) -> String {
+    let [a, b] = line.levels;
+    with_digits((figure.levels[a].1 - figure.levels[b].1).abs(), "Hz", digits)
+}
+
+/// Digits by which the gaps that are drawn can be told apart: 4, or up to 6 where some would look alike.
+fn digits_apart(figure: &LevelsFigure, lines: &[&TransitionLine]) -> i32 {
+    let texts = |digits: i32| {
+        let mut texts: Vec<String> = lines.iter().map(|line| gap_text(figure, line, digits)).collect();
+        texts.sort_unstable();
+        texts.dedup();
+        texts.len()
+    };
+    let most = texts(6);
+    (4..6).find(|digits| texts(*digits) == most).unwrap_or(6)
+}
+
 /// Double arrows between levels, from left to right by lower level and gap, each with its gap.
-fn transitions(scene: &mut Scene, figure: &LevelsFigure, groups: &[Group], lines: &[&TransitionLine], left: f64, right: f64) {
+fn transitions(
+    scene: &mut Scene,
+    figure: &LevelsFigure,
+    groups: &[Group],
+    lines: &[&TransitionLine],
+    digits: i32,
+    (left, right): (f64, f64),
+) {
     let Some(most) = lines.first().map(|line| line.strength) else { return };
     let energy = |k: usize| figure.levels[k].1;
     let ends = |line: &TransitionLine| {
@@ -297,7 +337,7 @@ fn transitions(scene: &mut Scene, figure: &LevelsFigure, groups: &[Group], lines
         .map(|(index, line)| {
             let [lower, upper] = ends(line);
             let (x, wide) = (left + step * (index as f64 + 0.3), width(line.strength, most));
-            let text = with_digits(energy(upper) - energy(lower), "Hz", 4);
+            let text = gap_text(figure, line, digits);
             Arrow { x, from: y(lower), to: y(upper), wide, color: colour(index), text }
         })
         .collect();

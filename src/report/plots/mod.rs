@@ -5,7 +5,7 @@
 //!
 //! Figures: `traces` (states against time), `envelopes` (pulses against time), `spectrum` (pulses against frequency),
 //! `ledger` (turning terms of a frame), `compare` (variants against time, and their differences), `map` and `lines` (scans),
-//! `levels` (level diagrams).
+//! `levels` (level diagrams), `followed` (levels and gaps along a scan).
 //! Parts: `scene` and `raster` (painting), `font`, `palette`, `scale` (prefixes, ticks), `decades` (logarithmic axes), `thin`
 //! (pixel grid), `place` (labels kept apart), `near` (labels beside points), `panel` (one plot area with its axis and curves),
 //! `ruler` (axes of scans), `contour` and `shades` (maps), `frame` (title, fingerprint, time axis), `marks` (named moments), `windows` (broken time axis).
@@ -13,6 +13,7 @@ mod compare;
 mod contour;
 mod decades;
 mod envelopes;
+mod followed;
 mod font;
 mod frame;
 mod ledger;
@@ -38,6 +39,7 @@ mod windows;
 
 pub use compare::{compare, CompareFigure, ComparePanel, CompareSeries};
 pub use envelopes::{envelopes, EnvelopeCurve, EnvelopesFigure};
+pub use followed::{followed, FollowedFigure, FollowedLine};
 pub use ledger::{ledger, LedgerFigure, LedgerTerm};
 pub use levels::{levels, LevelsFigure, TransitionLine};
 pub use lines::{lines, LinesFigure, LinesPanel};
