@@ -176,7 +176,14 @@ mod tests {
     #[test]
     fn exact_known_problems_by_every_method() {
         for known in KNOWN {
-            for (method, accuracy) in [("automatic", 1e-10), ("smooth", 1e-10), ("geometric", 1e-10), ("constant steps", 1e-7)] {
+            for (method, accuracy) in [
+                ("automatic", 1e-10),
+                ("smooth", 1e-10),
+                ("geometric", 1e-10),
+                ("collocation", 1e-10),
+                ("fast carrier", 1e-10),
+                ("constant steps", 1e-7),
+            ] {
                 let verdict = known.run(method, accuracy).expect("a known problem is a lawful config");
                 assert!(
                     verdict.good(),

@@ -177,6 +177,8 @@ fn asked(document: &Document) -> Asked {
             MethodWord::ConstantSteps => Some(Method::ConstantSteps),
             MethodWord::Smooth => Some(Method::Smooth),
             MethodWord::Geometric => Some(Method::Geometric),
+            MethodWord::Collocation => Some(Method::Collocation),
+            MethodWord::Carrier => Some(Method::Carrier),
         },
         cross_check: document.accuracy.cross_check,
     }

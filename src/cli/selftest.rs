@@ -14,7 +14,14 @@ pub(super) struct Words {
 }
 
 /// Methods and the accuracy asked of each; equal slices converge slowly, so less is asked of them where H changes.
-const ROUTES: [(&str, f64); 4] = [("automatic", 1e-10), ("smooth", 1e-10), ("geometric", 1e-10), ("constant steps", 1e-7)];
+const ROUTES: [(&str, f64); 6] = [
+    ("automatic", 1e-10),
+    ("smooth", 1e-10),
+    ("geometric", 1e-10),
+    ("collocation", 1e-10),
+    ("fast carrier", 1e-10),
+    ("constant steps", 1e-7),
+];
 
 /// Runs the table.
 pub(super) fn selftest(words: &Words) -> Status {

@@ -22,6 +22,10 @@ pub enum MethodWord {
     Smooth,
     /// Magnus type.
     Geometric,
+    /// Collocation on adaptive elements.
+    Collocation,
+    /// Harmonics of the carriers.
+    Carrier,
 }
 
 /// `accuracy:`.
@@ -45,6 +49,8 @@ pub fn read_accuracy(reader: &mut Reader, node: Option<&Node>) -> Option<Accurac
         ("constant steps", MethodWord::ConstantSteps),
         ("smooth", MethodWord::Smooth),
         ("geometric", MethodWord::Geometric),
+        ("collocation", MethodWord::Collocation),
+        ("fast carrier", MethodWord::Carrier),
     ];
     if let Some(node) = node {
         reader.fields(

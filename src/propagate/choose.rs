@@ -11,6 +11,10 @@ pub enum Method {
     Smooth,
     /// Magnus expansion of order 6.
     Geometric,
+    /// Collocation on adaptive elements.
+    Collocation,
+    /// Collocation with harmonics of the carriers.
+    Carrier,
 }
 
 impl Method {
@@ -20,7 +24,14 @@ impl Method {
             Method::ConstantSteps => "constant steps",
             Method::Smooth => "smooth",
             Method::Geometric => "geometric",
+            Method::Collocation => "collocation",
+            Method::Carrier => "fast carrier",
         }
+    }
+
+    /// Whether it chooses its own steps by a tolerance.
+    pub fn is_adaptive(self) -> bool {
+        matches!(self, Method::Smooth | Method::Collocation | Method::Carrier)
     }
 
     /// The method of a word, if there is one.
@@ -77,6 +88,24 @@ pub const METHODS: &[Row] = &[
         order: 6,
         cost_ns: geometric_ns,
     },
+    Row {
+        method: Method::Collocation,
+        word: "collocation",
+        about: "collocation on adaptive elements, order 16, rows at no cost",
+        time_in: false,
+        exact_when_constant: true,
+        order: 16,
+        cost_ns: collocation_ns,
+    },
+    Row {
+        method: Method::Carrier,
+        word: "fast carrier",
+        about: "harmonics of the carriers with slow amplitudes, by collocation; nothing dropped",
+        time_in: false,
+        exact_when_constant: true,
+        order: 16,
+        cost_ns: carrier_ns,
+    },
 ];
 
 /// How many times more steps an accuracy takes than 1e-8 does, at an order.
@@ -132,6 +161,56 @@ fn geometric_open_ns(load: &Load) -> f64 {
     (steps + load.moments as f64) * (800.0 + 6.0 * size.powi(3) * 0.4 + 12.0 * size * size * columns)
 }
 
+// The next two are rough counts of elements (22 random problems, 4 to 3089 elements) times what an element costs.
+
+fn elements_ns(load: &Load, turns: f64) -> f64 {
+    let columns = load.columns as f64;
+    let elements = (1.5 * turns + 2.0 * load.rises + 3.0 * load.changing as f64) * accuracy_factor(load, 16.0);
+    elements * (1500.0 + 1200.0 * load.levels as f64 * columns) + 100.0 * (load.levels * load.moments) as f64
+}
+
+fn collocation_ns(load: &Load) -> f64 {
+    // of density matrices it is Runge-Kutta that runs
+    if load.coordinates > 0 {
+        return smooth_open_ns(load);
+    }
+    elements_ns(load, load.swing_turns + 0.6 * load.still_turns)
+}
+
+fn carrier_ns(load: &Load) -> f64 {
+    if load.coordinates > 0 || load.followed_turns == 0.0 {
+        return collocation_ns(load);
+    }
+    3.0 * elements_ns(load, load.coupling_turns)
+}
+
+/// Collocation where it serves a closed problem best, with harmonics where carriers are fast enough, and why.
+fn by_elements(load: &Load) -> Option<(Method, String)> {
+    if load.coordinates > 0 || load.time_in {
+        return None;
+    }
+    if load.followed_turns > 0.0 {
+        let why = format!(
+            "carriers turn {} times while the couplings swing the state through {} turns, so their harmonics follow slow amplitudes, \
+             with {} levels; nothing is dropped",
+            round(load.followed_turns),
+            round(load.coupling_turns),
+            load.levels
+        );
+        return Some((Method::Carrier, why));
+    }
+    (collocation_ns(load) < geometric_ns(load).min(smooth_ns(load))).then(|| {
+        let why = format!(
+            "H swings the state through {} turns, itself turns {} times and its envelopes rise or fall {} times, with {} levels",
+            round(load.swing_turns),
+            round(load.still_turns),
+            round(load.rises),
+            load.levels
+        );
+        (Method::Collocation, why)
+    })
+}
+
 /// The method for a problem, and why.
 pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
     // of a density matrix every method gives the times spent
@@ -139,6 +218,9 @@ pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
     if let Some(method) = wished {
         if load.time_in && load.changing > 0 && !spent(method) {
             return (Method::Smooth, format!("{} was asked for, but it gives no time spent in a level; smooth does", method.word()));
+        }
+        if load.coordinates > 0 && matches!(method, Method::Collocation | Method::Carrier) {
+            return (Method::Smooth, format!("{} was asked for, but it carries no density matrices; smooth does", method.word()));
         }
         let asked = "asked for by name".to_string();
         if load.changing == 0 && method != Method::ConstantSteps {
@@ -163,6 +245,9 @@ pub(super) fn choose(load: &Load, wished: Option<Method>) -> (Method, String) {
         };
         let how = if load.carrier_turns > 0.0 { ", seen in a picture that turns with the carrier" } else { "" };
         return (Method::ConstantSteps, format!("H is constant {where_}{how}, so exponentials are exact however long they last"));
+    }
+    if let Some(found) = by_elements(load) {
+        return found;
     }
     let (smooth, geometric) = (smooth_ns(load), geometric_ns(load));
     if geometric < smooth && (!load.time_in || load.coordinates > 0) {

@@ -9,7 +9,7 @@
 use num_complex::Complex64;
 
 use super::exponential::Flow;
-use super::picture::Picture;
+use super::picture::{Picture, Turning};
 use super::run::{Eye, State, Stretch, Work};
 use crate::problem::{Matrix, Term};
 use crate::quadrature;
@@ -25,6 +25,9 @@ const MOST_TURNS: f64 = 1e4;
 /// Whether H of a picture commutes with itself all through a segment of `length_s`.
 pub(super) fn commutes(picture: &Picture, terms: &[Term], length_s: f64) -> bool {
     if picture.fastest_hz * length_s > MOST_TURNS {
+        return false;
+    }
+    if picture.turnings.iter().any(|turning| turns_one_way(picture.dim, turning, terms, length_s)) {
         return false;
     }
     let n = picture.dim;
@@ -63,6 +66,23 @@ pub(super) fn commutes(picture: &Picture, terms: &[Term], length_s: f64) -> bool
     parts.iter().enumerate().all(|(k, a)| parts[..k].iter().all(|b| close(a, b)))
 }
 
+/// Whether a group alone shows that H does not commute: a coefficient whose phase moves drives X + adjoint and i X + adjoint, which
+/// commute only if X is normal, and no matrix is whose rows and columns differ in norm.
+fn turns_one_way(dim: usize, turning: &Turning, terms: &[Term], length_s: f64) -> bool {
+    if turning.turns_hz == 0.0 {
+        return false;
+    }
+    let mut lean = vec![0.0; dim];
+    for part in &turning.parts {
+        lean[part.row] += part.value.norm_sqr();
+        lean[part.column] -= part.value.norm_sqr();
+    }
+    let most = turning.parts.iter().map(|part| part.value.norm_sqr()).fold(0.0, f64::max);
+    let [a, b, c] = [0.31, 0.5, 0.64].map(|part| Picture::factor(turning, terms, part * length_s));
+    let moves = |a: Complex64, b: Complex64| (a * b.conj()).im.abs() > 1e-3 * a.norm() * b.norm();
+    lean.iter().any(|lean| lean.abs() > 1e-6 * most) && (moves(a, b) || moves(b, c))
+}
+
 /// Carries the state through the stretch.
 pub(super) fn pass(stretch: &Stretch, cells: f64, state: &mut State, eye: &mut Eye, work: &mut Work) {
     let dim = state.dim;
@@ -70,8 +90,7 @@ pub(super) fn pass(stretch: &Stretch, cells: f64, state: &mut State, eye: &mut E
     let zero = Complex64::default();
     let (mut k, mut psi, mut room) = (vec![zero; dim * dim], vec![zero; dim], Vec::new());
     // cells short enough for every turn of H and every rise of an envelope
-    let busy = super::load::busy_part(stretch.terms, stretch.length_s);
-    let rate = (4.0 / busy / stretch.length_s + picture.fastest_hz) * cells;
+    let rate = (4.0 / stretch.sampled.busy / stretch.length_s + picture.fastest_hz) * cells;
     let mut tau_s = 0.0;
     for m in 0..=stretch.moments.len() {
         let stop_s = stretch.moments.get(m).map_or(stretch.length_s, |moment| moment.offset_s.min(stretch.length_s));

@@ -5,8 +5,8 @@ use super::run::{Eye, State, Stretch, Work};
 /// Steps of a stretch before any doubling: enough to see each turn of H and each turn of the state, roughly.
 fn first_steps(stretch: &Stretch) -> f64 {
     let turning = stretch.picture.fastest_hz * stretch.length_s;
-    let swing = super::load::size_hz(stretch.picture, stretch.terms, stretch.length_s) * stretch.length_s;
-    4.0 / super::load::busy_part(stretch.terms, stretch.length_s) + turning + 0.5 * swing
+    let swing = super::load::size_hz(stretch.picture, &stretch.sampled.heights) * stretch.length_s;
+    4.0 / stretch.sampled.busy + turning + 0.5 * swing
 }
 
 /// Carries the state through the stretch; `step(tau, h, state)` does one step of h seconds from tau and gives its matrix-vector products.

@@ -4,7 +4,7 @@ use super::asked::Demand;
 use super::coherent::Groups;
 use super::commuting::commutes;
 use super::picture::{Kind, Picture, Pictures};
-use crate::problem::{Matrix, Problem, Term};
+use crate::problem::{Matrix, Problem};
 use crate::units::RAD_PER_TURN;
 
 /// Sizes of a problem; turns are dimensionless, summed over the stretches where H changes in every picture.
@@ -36,6 +36,8 @@ pub struct Load {
     pub swing_turns: f64,
     /// Turns of H itself in the stillest picture.
     pub still_turns: f64,
+    /// Turns of what turns fast enough to be carried by harmonics, in the segments where something does.
+    pub followed_turns: f64,
     /// How often the envelopes rise or fall by all of their height.
     pub rises: f64,
     /// Size of H in the frame of the problem, its mean taken off, times time, over everything, rad.
@@ -54,50 +56,23 @@ pub struct Load {
     pub all_decays: f64,
 }
 
-/// Bound of ||H - middle of the diagonal|| of a picture over the segment, in Hz; smooth envelopes by samples.
-pub(super) fn size_hz(picture: &Picture, terms: &[Term], length_s: f64) -> f64 {
-    let heights: Vec<f64> = terms.iter().map(|term| height(term, length_s).0).collect();
+/// Bound of ||H - middle of the diagonal|| of a picture, in Hz, with these largest sizes of the terms in rad/s.
+pub(super) fn size_hz(picture: &Picture, heights: &[f64]) -> f64 {
     let mut rows = vec![0.0; picture.dim];
     for turning in &picture.turnings {
         let most = turning.term.map_or(1.0, |k| heights[k]);
         for part in &turning.parts {
-            rows[part.row] += most * part.value.norm();
-            rows[part.column] += most * part.value.norm();
+            let size = most * part.value.norm();
+            rows[part.row] += size;
+            rows[part.column] += size;
         }
     }
     let coupling = rows.into_iter().fold(0.0, f64::max);
     (coupling + half_range(picture.diagonal.iter().copied())) / RAD_PER_TURN
 }
 
-const SAMPLES: u32 = 32;
-
-/// Largest sampled |c| in rad/s, and the sampled way of c over that.
-pub(super) fn height(term: &Term, length_s: f64) -> (f64, f64) {
-    if term.is_constant() {
-        return (term.slow(0.0).norm(), 0.0);
-    }
-    let values: Vec<_> = (0..=SAMPLES).map(|i| term.slow(length_s * f64::from(i) / f64::from(SAMPLES))).collect();
-    let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
-    let way: f64 = values.windows(2).map(|pair| (pair[1] - pair[0]).norm()).sum();
-    (most, if most > 0.0 { way / most } else { 0.0 })
-}
-
-/// Part of the segment, above 0 and up to 1, in which the smooth envelopes rise or fall; keeps a narrow pulse in a long segment
-/// from being stepped over.
-pub(super) fn busy_part(terms: &[Term], length_s: f64) -> f64 {
-    let mut part: f64 = 1.0;
-    for term in terms.iter().filter(|term| !term.is_constant()) {
-        let values: Vec<_> = (0..=CELLS).map(|i| term.slow(length_s * f64::from(i) / f64::from(CELLS))).collect();
-        let most = values.iter().map(|c| c.norm()).fold(0.0, f64::max);
-        let busy = values.windows(2).filter(|pair| (pair[1] - pair[0]).norm() > 1e-3 * most).count();
-        if busy > 0 {
-            part = part.min(busy as f64 / f64::from(CELLS));
-        }
-    }
-    part
-}
-
-const CELLS: u32 = 128;
+/// Periods below which no segment is worth an expansion in harmonics.
+const LEAST_PERIODS: f64 = 10.0;
 
 fn half_range(values: impl Iterator<Item = f64>) -> f64 {
     let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), value| (value.min(low), value.max(high)));
@@ -139,6 +114,7 @@ impl Load {
             swing_turns: 0.0,
             still_turns: 0.0,
             rises: 0.0,
+            followed_turns: 0.0,
             lab_rad: 0.0,
             entries_rad: 0.0,
             carrier_turns: 0.0,
@@ -163,20 +139,12 @@ impl Load {
             let entries_rad_s = off_rad_s + groups.largest_diagonal(&problem.statics);
             let tied = pictures.of(segment, Kind::Tied);
             let mut rad_s = resting_rad_s;
-            let mut carrier: f64 = 0.0;
+            let carrier = terms.iter().fold(0.0, |most: f64, term| term.turns_hz.abs().max(most));
             if tied.constant(terms) {
-                for term in terms {
-                    rad_s += bounds[term.matrix] * height(term, length_s).0;
-                    carrier = carrier.max(term.turns_hz.abs());
-                }
+                rad_s += terms.iter().map(|term| bounds[term.matrix] * term.slow(0.0).norm()).sum::<f64>();
             } else {
-                let mut rises: f64 = 0.0;
-                for term in terms {
-                    let (most, way) = height(term, length_s);
-                    rad_s += bounds[term.matrix] * most;
-                    rises = rises.max(way);
-                    carrier = carrier.max(term.turns_hz.abs());
-                }
+                let sampled = pictures.sampled(segment);
+                rad_s += terms.iter().zip(&sampled.heights).map(|(term, most)| bounds[term.matrix] * most).sum::<f64>();
                 if integrals && commutes(&tied, terms, length_s) {
                     load.commuting += 1;
                     by_integral[index] = true;
@@ -188,11 +156,14 @@ impl Load {
                 let free = pictures.of(segment, Kind::Free);
                 load.changing += 1;
                 load.changing_s += length_s;
-                load.coupling_turns += size_hz(&free, terms, length_s) * length_s;
+                load.coupling_turns += size_hz(&free, &sampled.heights) * length_s;
                 load.entry_turns += free.fastest_hz * length_s;
-                load.swing_turns += size_hz(&tied, terms, length_s) * length_s;
+                load.swing_turns += size_hz(&tied, &sampled.heights) * length_s;
                 load.still_turns += tied.fastest_hz * length_s;
-                load.rises += rises;
+                load.rises += sampled.way;
+                if !demand.time_in && free.fastest_hz * length_s > LEAST_PERIODS {
+                    load.followed_turns += super::collocation::followed_turns(&pictures.of(segment, Kind::Folded), &sampled, length_s);
+                }
             }
             load.lab_rad += rad_s * length_s;
             load.entries_rad += (rad_s - resting_rad_s + entries_rad_s) * length_s;

@@ -15,10 +15,14 @@
 //! | `exponential.rs` | exp(-i H tau) of a constant Hermitian H |
 //! | `jacobi.rs` | eigenvectors that cannot fail |
 //! | `constant.rs` | stretches of constant H |
+//! | `sampled.rs` | how high and how often the envelopes of a segment rise |
 //! | `commuting.rs` | stretches whose H commutes with itself |
 //! | `even_steps.rs` | equal steps between moments, shared by the next two |
 //! | `slices.rs` | midpoint slices, order 2 |
 //! | `geometric.rs` | Magnus expansion, order 6 |
+//! | `collocation.rs` | adaptive elements of order 16, dense output |
+//! | `gauss.rs`, `turning.rs`, `element.rs` | its rule, its exact diagonal, its iteration |
+//! | `waves.rs` | harmonics of fast carriers for it |
 //! | `smooth.rs`, `dormand_prince.rs` | Runge-Kutta 8(5,3) and its coefficients |
 //! | `cross_check.rs` | the independent second route |
 //! | `lanes/` | many points side by side |
@@ -29,12 +33,15 @@
 mod asked;
 mod choose;
 mod coherent;
+mod collocation;
 mod commuting;
 mod constant;
 mod cross_check;
 mod dormand_prince;
+mod element;
 mod even_steps;
 mod exponential;
+mod gauss;
 mod geometric;
 mod jacobi;
 pub mod lanes;
@@ -45,12 +52,15 @@ mod picture;
 mod recipe;
 mod refine;
 mod run;
+mod sampled;
 mod slices;
 mod smooth;
 mod solved;
 #[cfg(test)]
 mod tests;
 mod trajectories;
+mod turning;
+mod waves;
 
 pub use asked::{Asked, Demand, Recorder};
 pub use choose::{Method, Row, METHODS};

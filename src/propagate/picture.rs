@@ -9,11 +9,13 @@
 //! * [`Kind::Free`]: F_j = A_jj / (2 pi), nothing is left on the diagonal (the interaction picture); best for Runge-Kutta, whose
 //!   error then grows with the couplings and not with the level distances.
 
+use std::collections::HashMap;
 use std::rc::Rc;
 
 use nalgebra::Complex;
 use num_complex::Complex64;
 
+use super::sampled::Sampled;
 use crate::problem::{Instant, Matrix, Problem, Segment, Term};
 use crate::units::{cis_turns, rad_s, RAD_PER_TURN};
 
@@ -26,6 +28,8 @@ pub(super) enum Kind {
     Free,
     /// F = 0: the frame of the problem itself.
     Rest,
+    /// Tied, but no level further than half a turning from its own frequency.
+    Folded,
 }
 
 /// An entry (row, column) of a matrix; its adjoint is implied.
@@ -171,25 +175,51 @@ pub(super) struct Pictures<'a> {
     tied: Vec<Rc<Picture>>,
     free: Vec<Rc<Picture>>,
     rest: Vec<Rc<Picture>>,
+    folded: Vec<Rc<Picture>>,
+    samples: HashMap<(usize, u64), Rc<Sampled>>,
     replaced: usize,
 }
 
 const KEPT: usize = 32;
+const MOST_SAMPLED: usize = 65_536;
 /// H of the tied picture over the fastest turning at rest, below which the tied one is taken although more turns in it.
 const WEAK: f64 = 0.1;
 
 impl<'a> Pictures<'a> {
     pub fn new(problem: &'a Problem) -> Self {
-        Pictures { problem, tied: Vec::new(), free: Vec::new(), rest: Vec::new(), replaced: 0 }
+        Pictures {
+            problem,
+            tied: Vec::new(),
+            free: Vec::new(),
+            rest: Vec::new(),
+            folded: Vec::new(),
+            samples: HashMap::new(),
+            replaced: 0,
+        }
+    }
+
+    /// What samples of the envelopes of a segment say.
+    pub fn sampled(&mut self, segment: &Segment) -> Rc<Sampled> {
+        let key = (segment.terms.start, segment.length_s.to_bits());
+        if let Some(found) = self.samples.get(&key) {
+            return found.clone();
+        }
+        let made = Rc::new(Sampled::of(self.problem.terms_of(segment), segment.length_s));
+        if self.samples.len() < MOST_SAMPLED {
+            self.samples.insert(key, made.clone());
+        }
+        made
     }
 
     /// The picture of a segment.
     pub fn of(&mut self, segment: &Segment, kind: Kind) -> Rc<Picture> {
-        let terms = self.problem.terms_of(segment);
+        let problem = self.problem;
+        let terms = problem.terms_of(segment);
         let kept = match kind {
-            Kind::Tied => &mut self.tied,
-            Kind::Free => &mut self.free,
-            Kind::Rest => &mut self.rest,
+            Kind::Tied => &self.tied,
+            Kind::Free => &self.free,
+            Kind::Rest => &self.rest,
+            Kind::Folded => &self.folded,
         };
         let same = |picture: &Rc<Picture>| {
             picture.key.len() == terms.len()
@@ -200,25 +230,17 @@ impl<'a> Pictures<'a> {
         }
         let key: Vec<_> = terms.iter().map(|term| (term.matrix, term.turns_hz.to_bits())).collect();
         let made = Rc::new(match kind {
-            Kind::Free => Picture::new(self.problem, terms, interaction(&self.problem.statics), key),
-            Kind::Rest => Picture::new(self.problem, terms, vec![0.0; self.problem.dim()], key),
-            Kind::Tied => {
-                let tied = Picture::new(self.problem, terms, ties(self.problem, terms), key.clone());
-                if tied.fastest_hz == 0.0 {
-                    tied
-                } else {
-                    let resting = Picture::new(self.problem, terms, vec![0.0; self.problem.dim()], key);
-                    // weak couplings swing the state little in the tied picture, and what turns there averages out; at rest the
-                    // distances of the levels would swing it as often as the carrier turns
-                    let weak = super::load::size_hz(&tied, terms, segment.length_s) < WEAK * resting.fastest_hz;
-                    if !weak && resting.fastest_hz < tied.fastest_hz {
-                        resting
-                    } else {
-                        tied
-                    }
-                }
-            }
+            Kind::Free => Picture::new(problem, terms, interaction(&problem.statics), key),
+            Kind::Rest => Picture::new(problem, terms, vec![0.0; problem.dim()], key),
+            Kind::Folded => Picture::new(problem, terms, folded(problem, terms), key),
+            Kind::Tied => self.stillest(segment, key),
         });
+        let kept = match kind {
+            Kind::Tied => &mut self.tied,
+            Kind::Free => &mut self.free,
+            Kind::Rest => &mut self.rest,
+            Kind::Folded => &mut self.folded,
+        };
         if kept.len() < KEPT {
             kept.push(made.clone());
         } else {
@@ -229,8 +251,45 @@ impl<'a> Pictures<'a> {
     }
 }
 
+impl Pictures<'_> {
+    /// The tied picture, or that at rest.
+    fn stillest(&mut self, segment: &Segment, key: Vec<(usize, u64)>) -> Picture {
+        let terms = self.problem.terms_of(segment);
+        let tied = Picture::new(self.problem, terms, ties(self.problem, terms), key.clone());
+        if tied.fastest_hz == 0.0 {
+            return tied;
+        }
+        let resting = Picture::new(self.problem, terms, vec![0.0; self.problem.dim()], key);
+        // weak couplings swing the state little in the tied picture, and what turns there averages out; at rest the
+        // distances of the levels would swing it as often as the carrier turns
+        let weak = super::load::size_hz(&tied, &self.sampled(segment).heights) < WEAK * resting.fastest_hz;
+        if !weak && resting.fastest_hz < tied.fastest_hz {
+            resting
+        } else {
+            tied
+        }
+    }
+}
+
 fn interaction(a: &Matrix) -> Vec<f64> {
     a.diagonal().iter().map(|value: &Complex<f64>| value.re / RAD_PER_TURN).collect()
+}
+
+/// F of the tied picture, moved by whole turnings of the slowest carrier that touches a level to within half of one of the
+/// frequency of the level itself: then no wave of one carrier comes nearer to standing still than that.
+fn folded(problem: &Problem, terms: &[Term]) -> Vec<f64> {
+    let mut f_hz = ties(problem, terms);
+    for (j, f) in f_hz.iter_mut().enumerate() {
+        let touches = |term: &&Term| {
+            let b = &problem.matrices[term.matrix];
+            term.turns_hz != 0.0 && (0..b.ncols()).any(|k| b[(j, k)] != Complex64::default() || b[(k, j)] != Complex64::default())
+        };
+        let carrier = terms.iter().filter(touches).map(|term| term.turns_hz.abs()).fold(f64::INFINITY, f64::min);
+        if carrier.is_finite() {
+            *f += carrier * ((problem.statics[(j, j)].re / RAD_PER_TURN - *f) / carrier).round();
+        }
+    }
+    f_hz
 }
 
 /// A wish F_row - F_column = f.

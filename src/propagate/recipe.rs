@@ -30,12 +30,12 @@ const ROOM: f64 = 0.2;
 
 impl Resolved {
     pub(super) fn new(method: Method, fineness: Fineness, share: f64) -> Resolved {
-        let Fineness { tolerance, pieces, doublings } = fineness;
+        let Fineness { tolerance, pieces, doublings, halved: _ } = fineness;
         Resolved { method, tolerance, pieces, doublings, share }
     }
 
     fn fineness(&self) -> Fineness {
-        Fineness { tolerance: self.tolerance, pieces: self.pieces, doublings: self.doublings }
+        Fineness { tolerance: self.tolerance, pieces: self.pieces, doublings: self.doublings, halved: false }
     }
 }
 
@@ -51,7 +51,7 @@ impl Recipe {
         let mut fineness = found.fineness();
         if found.share > ROOM {
             match found.method {
-                Method::Smooth => fineness.tolerance *= ROOM / found.share,
+                Method::Smooth | Method::Collocation | Method::Carrier => fineness.tolerance *= ROOM / found.share,
                 // order 6 and order 2: a factor of 64, and of 16 for two doublings
                 Method::Geometric => fineness.doublings += 1,
                 Method::ConstantSteps if fineness.doublings > 0 || fineness.pieces > 1 => fineness.doublings += 2,
@@ -90,7 +90,7 @@ impl Recipe {
         let one = |(method, fineness): &(Method, Fineness)| {
             let word = METHODS.iter().find(|row| row.method == *method).map_or("", |row| row.word);
             match method {
-                Method::Smooth => format!("{word}, tolerance {:.0e}", fineness.tolerance),
+                Method::Smooth | Method::Collocation | Method::Carrier => format!("{word}, tolerance {:.0e}", fineness.tolerance),
                 Method::Geometric => format!("{word}, first steps doubled {} times", fineness.doublings),
                 Method::ConstantSteps if fineness.doublings == 0 => format!("{word}, one exponential for each constant stretch"),
                 Method::ConstantSteps => format!("{word}, first slices doubled {} times", fineness.doublings),

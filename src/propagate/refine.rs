@@ -7,6 +7,8 @@
 //! in 3 of them, once by less than a hundredth and twice, at 6e-14 and 5e-13 in constant stretches, up to threefold (how much
 //! of that is rounding in the collocation is not known); the figure was never more than ten times the larger of the true error and 1e-12.
 
+use std::collections::HashMap;
+
 use super::asked::{Asked, Demand, Recorder};
 use super::choose::{choose, Method, METHODS};
 use super::cross_check::cross_check;
@@ -25,6 +27,8 @@ pub(super) const MOST_MULTIPLICATIONS: f64 = 8e9;
 const FIRST_TOLERANCE: f64 = 10.0;
 /// The finer Runge-Kutta run takes so many times the steps of the coarser: at order 8 that is a tenth of its error.
 const LEAST_STEP_RATIO: f64 = 1.35;
+/// The same at order 16.
+const LEAST_ELEMENT_RATIO: f64 = 1.15;
 /// Where the estimate is beyond this, nothing is computed: an hour.
 const HOPELESS_NS: f64 = 3.6e12;
 /// Most equal steps of the coarser run.
@@ -77,6 +81,7 @@ impl<'p> Way<'p> {
             by_integral: by_integral.clone(),
             changing_s: load.changing_s,
             pictures,
+            paths: HashMap::new(),
         };
         let way = if parts.is_empty() {
             Way::Closed(route(problem, pictures))
@@ -140,7 +145,7 @@ pub fn solve_from<R: Recorder>(
         Ran { recorder, fineness, work }
     };
     let least = least_tolerance(&load);
-    let first = Fineness { tolerance: FIRST_TOLERANCE * asked.accuracy, pieces: 1, doublings: 0 };
+    let first = Fineness { tolerance: FIRST_TOLERANCE * asked.accuracy, pieces: 1, doublings: 0, halved: false };
     let start = recipe.of(method).unwrap_or(first).no_finer_than(least);
     let mut coarse = go(start);
     let mut fine = go_finer(&mut go, &coarse, method, least);
@@ -199,9 +204,10 @@ pub fn solve_from<R: Recorder>(
 /// Runge-Kutta, a smaller tolerance alone may leave them as they were.
 fn go_finer<R>(go: &mut impl FnMut(Fineness) -> Ran<R>, coarse: &Ran<R>, method: Method, least: f64) -> Ran<R> {
     let mut fine = go(finer(coarse.fineness, method, least));
-    if method == Method::Smooth {
+    if method.is_adaptive() {
+        let least_ratio = if method == Method::Smooth { LEAST_STEP_RATIO } else { LEAST_ELEMENT_RATIO };
         for _ in 0..3 {
-            if fine.work.exhausted() || fine.work.steps as f64 >= LEAST_STEP_RATIO * coarse.work.steps as f64 {
+            if fine.work.exhausted() || fine.work.steps as f64 >= least_ratio * coarse.work.steps as f64 {
                 break;
             }
             fine = go(finer(fine.fineness, method, least));
@@ -220,14 +226,21 @@ fn finer(of: Fineness, method: Method, least: f64) -> Fineness {
     let doublings = if method == Method::ConstantSteps { 2 } else { 1 };
     Fineness {
         tolerance: (of.tolerance / 30.0).max(least),
-        pieces: of.pieces + if method == Method::Smooth { 2 } else { 1 },
+        pieces: of.pieces + if method.is_adaptive() { 2 } else { 1 },
         doublings: of.doublings + doublings,
+        halved: true,
     }
 }
 
 /// The coarse resolution to try next where the error is `excess` times too large; `None` where nothing finer is left.
 fn tighten<R>(coarse: &Ran<R>, fine: &Ran<R>, excess: f64, method: Method, least: f64) -> Option<Fineness> {
     match method {
+        Method::Collocation | Method::Carrier => {
+            // halves of halves would be far finer than asked, and too short for what follows the carrier
+            let tolerance = (coarse.fineness.tolerance / (3.0 * excess)).max(least);
+            let fits = tolerance < coarse.fineness.tolerance && 6.0 * (coarse.work.left - fine.work.left) <= fine.work.left;
+            fits.then_some(Fineness { tolerance, ..coarse.fineness })
+        }
         Method::Smooth => {
             if fine.fineness.tolerance <= least && coarse.fineness.tolerance <= least && coarse.fineness.pieces > 3 {
                 return None;
@@ -239,7 +252,7 @@ fn tighten<R>(coarse: &Ran<R>, fine: &Ran<R>, excess: f64, method: Method, least
             if excess < 20.0 || coarse.fineness.tolerance <= least {
                 return Some(fine.fineness);
             }
-            Some(Fineness { tolerance: (coarse.fineness.tolerance / (3.0 * excess)).max(least), ..fine.fineness })
+            Some(Fineness { tolerance: (coarse.fineness.tolerance / (3.0 * excess)).max(least), halved: false, ..fine.fineness })
         }
         Method::Geometric | Method::ConstantSteps => {
             let (order, stride) = if method == Method::Geometric { (6.0, 1) } else { (2.0, 2) };
@@ -251,7 +264,12 @@ fn tighten<R>(coarse: &Ran<R>, fine: &Ran<R>, excess: f64, method: Method, least
                 coarse.work.steps as f64 * times <= MOST_EVEN_STEPS && cost_now * times * (1.0 + 2f64.powi(stride as i32)) <= fine.work.left
             };
             let more = (stride..=more.max(stride)).rev().find(affordable)?;
-            Some(Fineness { doublings: coarse.fineness.doublings + more, pieces: fine.fineness.pieces, tolerance: fine.fineness.tolerance })
+            Some(Fineness {
+                doublings: coarse.fineness.doublings + more,
+                pieces: fine.fineness.pieces,
+                tolerance: fine.fineness.tolerance,
+                halved: false,
+            })
         }
     }
 }
@@ -265,7 +283,7 @@ fn words<R>(method: Method, load: &Load, ran: &Ran<R>) -> String {
         };
     }
     match method {
-        Method::Smooth => format!("tolerance {:.0e}, {steps} steps", ran.fineness.tolerance),
+        Method::Smooth | Method::Collocation | Method::Carrier => format!("tolerance {:.0e}, {steps} steps", ran.fineness.tolerance),
         Method::Geometric => format!("{steps} steps of order 6"),
         Method::ConstantSteps => format!("{steps} constant steps"),
     }

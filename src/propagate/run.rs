@@ -1,13 +1,17 @@
 //! One run over all segments at one resolution: constant stretches by exponentials, the others by the method chosen.
 
+use std::collections::HashMap;
+use std::rc::Rc;
+
 use num_complex::Complex64;
 
 use super::asked::{Demand, Recorder};
 use super::choose::Method;
 use super::constant::Flows;
 use super::picture::{Kind, Picture, Pictures};
+use super::sampled::Sampled;
 use super::smooth::Smooth;
-use super::{commuting, constant, geometric, slices};
+use super::{collocation, commuting, constant, geometric, slices};
 use crate::problem::{self, Matrix, Moment, Problem, Term, Vector};
 
 /// How finely a run is done; each method reads its own field.
@@ -19,6 +23,8 @@ pub(super) struct Fineness {
     pub pieces: u32,
     /// Equal steps: how often the first number of steps is doubled.
     pub doublings: u32,
+    /// Collocation: whether to halve the elements of the run before.
+    pub halved: bool,
 }
 
 impl Fineness {
@@ -67,6 +73,8 @@ pub(super) struct State {
 pub(super) struct Stretch<'a> {
     pub picture: &'a Picture,
     pub terms: &'a [Term],
+    /// Samples of the terms; empty where H is constant.
+    pub sampled: &'a Sampled,
     pub length_s: f64,
     pub moments: &'a [Moment],
     /// Number of the first of them among all moments.
@@ -98,11 +106,13 @@ pub(super) struct Route<'p> {
     /// How long H changes altogether, s; the step control spreads its tolerance over it.
     pub changing_s: f64,
     pub pictures: Pictures<'p>,
+    /// Elements of the last run, by segment (collocation alone).
+    pub paths: HashMap<usize, collocation::Path>,
 }
 
 /// Runs the whole problem once, with `left` multiplications to spend at most.
 pub(super) fn run(route: &mut Route, fineness: &Fineness, left: f64, recorder: &mut dyn Recorder) -> Work {
-    let Route { problem, demand, method, by_integral, changing_s, pictures } = route;
+    let Route { problem, demand, method, by_integral, changing_s, pictures, paths } = route;
     let (problem, method) = (*problem, *method);
     let dim = problem.dim();
     let start = problem.start.amplitudes().expect("a closed problem starts pure");
@@ -113,7 +123,7 @@ pub(super) fn run(route: &mut Route, fineness: &Fineness, left: f64, recorder: &
     }
     let mut eye = Eye { recorder, lab: start.clone() };
     let mut flows = Flows::new(dim);
-    let mut smooth = Smooth::new(dim, state.amplitudes.len(), demand.time_in, *changing_s);
+    let mut smooth = None;
     let mut next = 0;
     for (index, segment) in problem.segments.iter().enumerate() {
         let first = next;
@@ -124,15 +134,34 @@ pub(super) fn run(route: &mut Route, fineness: &Fineness, left: f64, recorder: &
         let tied = pictures.of(segment, Kind::Tied);
         let still = tied.constant(terms);
         let commuting = by_integral[index];
-        let picture = if still || commuting || method != Method::Smooth { tied } else { pictures.of(segment, Kind::Free) };
-        let stretch = Stretch { picture: &picture, terms, length_s: segment.length_s, moments: &problem.moments[first..next], first };
+        let picture = match method {
+            _ if still || commuting => tied,
+            Method::Smooth => pictures.of(segment, Kind::Free),
+            Method::Carrier => pictures.of(segment, Kind::Folded),
+            _ => tied,
+        };
+        let sampled = if still { Rc::default() } else { pictures.sampled(segment) };
+        let stretch = Stretch {
+            picture: &picture,
+            terms,
+            sampled: &sampled,
+            length_s: segment.length_s,
+            moments: &problem.moments[first..next],
+            first,
+        };
         if still {
             constant::pass(&stretch, fineness.pieces, &mut flows, &mut state, &mut eye, &mut work);
         } else if commuting {
             commuting::pass(&stretch, f64::from(fineness.pieces) * 2f64.powi(fineness.doublings as i32), &mut state, &mut eye, &mut work);
         } else {
+            let limits = collocation::Limits { fineness, changing_s: *changing_s };
+            let path = paths.entry(index).or_default();
             match method {
-                Method::Smooth => smooth.pass(&stretch, fineness, &mut state, &mut eye, &mut work),
+                Method::Collocation => collocation::pass(&stretch, false, &limits, path, &mut state, &mut eye, &mut work),
+                Method::Carrier => collocation::pass(&stretch, true, &limits, path, &mut state, &mut eye, &mut work),
+                Method::Smooth => smooth
+                    .get_or_insert_with(|| Smooth::new(dim, state.amplitudes.len(), demand.time_in, *changing_s))
+                    .pass(&stretch, fineness, &mut state, &mut eye, &mut work),
                 Method::Geometric => geometric::pass(&stretch, fineness.doublings, &mut state, &mut eye, &mut work),
                 Method::ConstantSteps => slices::pass(&stretch, fineness.doublings, &mut state, &mut eye, &mut work),
             }

@@ -66,9 +66,9 @@ impl Smooth {
         let multiplications = 2 * picture.turnings.iter().map(|turning| turning.parts.len()).sum::<usize>() + 10 * picture.turnings.len();
         let columns = (state.amplitudes.len() / dim) as u64;
         // No step may pass over a whole turn of H or much of an envelope, whatever the error estimate says there.
-        let busy = super::load::busy_part(stretch.terms, length_s);
+        let busy = stretch.sampled.busy;
         let cap_s = (length_s * busy / (6.0 + 4.0 * f64::from(fineness.pieces))).min(1.0 / picture.fastest_hz);
-        let rate = super::load::size_hz(picture, stretch.terms, length_s) + picture.fastest_hz;
+        let rate = super::load::size_hz(picture, &stretch.sampled.heights) + picture.fastest_hz;
         let mut wish_s = if rate > 0.0 { cap_s.min(0.05 / rate) } else { cap_s };
         let mut tau_s = 0.0;
         self.lost.fill(Complex64::default());

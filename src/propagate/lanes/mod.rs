@@ -35,6 +35,8 @@ mod two_levels;
 mod width;
 
 pub use carry::{has_kernel, place_of, Group, Packed, Stretch};
+pub(crate) use elementary::sin_cos;
 pub use lane::Eight;
+pub(crate) use lane::{Kernel, Lane, Simd};
 pub use moments::{Profile, Steps};
 pub use width::{Width, LANES_VARIABLE, WIDTHS};

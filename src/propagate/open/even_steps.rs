@@ -7,7 +7,7 @@
 //!   2 G2 + G1), C1 = [a1, a2], C2 = -[a1, 2 a3 + C1]/60, the exponent is a1 + a3/12 + [-20 a1 - a3 + C1, a2 + C2]/240. Every
 //!   step is an exponential of what conserves the trace exactly.
 
-use super::super::load::busy_part;
+use super::super::sampled::Sampled;
 use super::super::run::Work;
 use super::exponential::{act, apply, dense, product, products, squarings, Room};
 use super::load::rate_hz;
@@ -28,7 +28,7 @@ fn walk(
     mut step: impl FnMut(f64, f64, &mut [f64], &mut Work),
 ) {
     // enough to see each turn of G and each turn of the state, roughly
-    let least = 4.0 / busy_part(stretch.terms, stretch.length_s) + stretch.generator.fastest_hz * stretch.length_s;
+    let least = 4.0 / Sampled::of(stretch.terms, stretch.length_s).busy + stretch.generator.fastest_hz * stretch.length_s;
     let rate = (least + 0.5 * rate_hz(stretch) * stretch.length_s) / stretch.length_s;
     let mut tau_s = 0.0;
     for k in 0..=stretch.moments.len() {

@@ -3,7 +3,8 @@
 use super::super::asked::Demand;
 use super::super::choose::Method;
 use super::super::coherent::Groups;
-use super::super::load::{busy_part, height, resting, row_bound, size_hz, Load};
+use super::super::load::{resting, row_bound, size_hz, Load};
+use super::super::sampled::Sampled;
 use super::run::{Route, Stretch};
 use crate::problem::{Problem, Segment};
 use crate::units::RAD_PER_TURN;
@@ -53,19 +54,17 @@ impl Load {
             let entries_rad_s = off_rad_s + groups.largest_diagonal(&problem.statics);
             let mut rad_s = resting_rad_s;
             let mut carrier: f64 = 0.0;
-            let mut rises: f64 = 0.0;
-            for term in terms {
-                let (most, way) = height(term, length_s);
+            let sampled = Sampled::of(terms, length_s);
+            for (term, most) in terms.iter().zip(&sampled.heights) {
                 rad_s += bounds[term.matrix] * most;
-                rises = rises.max(way);
                 carrier = carrier.max(term.turns_hz.abs());
             }
             if route.still(segment).is_none() {
                 load.changing += 1;
                 load.changing_s += length_s;
-                load.rises += rises / busy_part(terms, length_s).max(0.25);
+                load.rises += sampled.way / sampled.busy.max(0.25);
                 load.decays += decay * length_s;
-                moving(&mut load, segment, problem, route);
+                moving(&mut load, segment, &sampled, route);
             }
             load.all_decays += decay * length_s;
             load.lab_rad += rad_s * length_s;
@@ -77,13 +76,13 @@ impl Load {
 }
 
 /// What a changing segment adds.
-fn moving(load: &mut Load, segment: &Segment, problem: &Problem, route: &mut Route) {
-    let (terms, length_s) = (problem.terms_of(segment), segment.length_s);
+fn moving(load: &mut Load, segment: &Segment, sampled: &Sampled, route: &mut Route) {
+    let length_s = segment.length_s;
     let (free, generator) = route.moving(segment, Method::Smooth);
-    load.coupling_turns += size_hz(&free, terms, length_s) * length_s;
+    load.coupling_turns += size_hz(&free, &sampled.heights) * length_s;
     load.entry_turns += generator.fastest_hz * length_s;
     load.nonzero = load.nonzero.max(generator.entries());
     let (tied, generator) = route.moving(segment, Method::Geometric);
-    load.swing_turns += size_hz(&tied, terms, length_s) * length_s;
+    load.swing_turns += size_hz(&tied, &sampled.heights) * length_s;
     load.still_turns += generator.fastest_hz * length_s;
 }

@@ -195,7 +195,9 @@ impl<'p> Route<'p> {
                 constant::pass(&stretch, fineness.pieces, &mut steps, &mut columns, &mut eye, &mut work);
             } else {
                 match method {
-                    Method::Smooth => smooth.pass(&stretch, fineness, &mut columns, &mut eye, &mut work),
+                    Method::Smooth | Method::Collocation | Method::Carrier => {
+                        smooth.pass(&stretch, fineness, &mut columns, &mut eye, &mut work)
+                    }
                     Method::Geometric => even_steps::geometric(&stretch, fineness.doublings, &mut columns, &mut eye, &mut work),
                     Method::ConstantSteps => even_steps::slices(&stretch, fineness.doublings, &mut columns, &mut eye, &mut work),
                 }

@@ -7,7 +7,7 @@
 //! than about six lifetimes of the fastest decay.
 
 use super::super::dormand_prince::{ERROR_3, ERROR_5, NODES, STAGES, WEIGHTS};
-use super::super::load::busy_part;
+use super::super::sampled::Sampled;
 use super::super::run::{Fineness, Work};
 use super::load::rate_hz;
 use super::run::{Columns, Eye, Stretch};
@@ -44,7 +44,7 @@ impl Smooth {
         let count = (columns.x.len() / columns.size) as u64;
         let fastest_hz = stretch.generator.fastest_hz;
         // No step may pass over a whole turn of G or much of an envelope, whatever the error estimate says there.
-        let busy = busy_part(stretch.terms, length_s);
+        let busy = Sampled::of(stretch.terms, length_s).busy;
         let cap_s = (length_s * busy / (6.0 + 4.0 * f64::from(fineness.pieces))).min(1.0 / fastest_hz);
         let rate = rate_hz(stretch) + fastest_hz;
         let mut wish_s = if rate > 0.0 { cap_s.min(0.05 / rate) } else { cap_s };

@@ -166,8 +166,9 @@ pub fn at_doublings(problem: &Problem, method: Method, doublings: u32) -> Vec<Co
         by_integral: vec![false; problem.segments.len()],
         changing_s: problem.length_s(),
         pictures,
+        paths: Default::default(),
     };
-    let fineness = super::run::Fineness { tolerance: 1e-10, pieces: 1, doublings };
+    let fineness = super::run::Fineness { tolerance: 1e-10, pieces: 1, doublings, halved: false };
     super::run::run(&mut route, &fineness, 1e12, &mut kept);
     kept.last().to_vec()
 }

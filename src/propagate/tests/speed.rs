@@ -77,15 +77,18 @@ fn exact_million_slices_keep_to_their_figure() {
     assert!(error <= solved.error_figure && solved.error_figure < 1e-9, "{error:e} {:e}", solved.error_figure);
 }
 
+/// Counts are frozen a tenth above what was measured (2026-12-01): 984, 10, 1364 elements; 33057, 632, 79168 waves worked out.
 #[test]
 fn ref_steps_of_long_pulses_are_few() {
-    let delayed = solve(&delayed_pulses(), 1e-10, None);
-    assert_eq!(delayed.method, Method::Smooth, "{}", delayed.reason);
-    assert!(delayed.reached && delayed.steps < 1100, "{:?} {:?}", delayed.method, delayed.resolutions);
-    let lab = solve(&lab_pulse(), 1e-8, None);
-    assert!(lab.reached && lab.steps < 7000, "{:?} {:?}", lab.method, lab.resolutions);
-    let sweep = solve(&slow_sweep(300.0), 1e-8, None);
-    assert!(sweep.reached && sweep.method == Method::Geometric, "{}", sweep.reason);
+    for (case, accuracy, method, steps, products) in [
+        (delayed_pulses(), 1e-10, Method::Collocation, 1080, 36_400),
+        (lab_pulse(), 1e-8, Method::Carrier, 11, 700),
+        (slow_sweep(300.0), 1e-8, Method::Collocation, 1500, 87_000),
+    ] {
+        let solved = solve(&case, accuracy, None);
+        assert!(solved.reached && solved.method == method, "{:?}: {}", solved.method, solved.reason);
+        assert!(solved.steps <= steps && solved.products <= products, "{method:?}: {} steps, {} products", solved.steps, solved.products);
+    }
 }
 
 /// `cargo test --release timings -- --ignored --nocapture`.

@@ -5,7 +5,8 @@
 use num_complex::Complex64;
 
 use super::super::dormand_prince::{ERROR_3, ERROR_5, NODES, STAGES, WEIGHTS};
-use super::super::load::{busy_part, size_hz};
+use super::super::load::size_hz;
+use super::super::sampled::Sampled;
 use super::super::picture::Picture;
 use super::leaving::Leaving;
 use super::still::{crossing, norm};
@@ -39,8 +40,9 @@ impl<'a> Course<'a> {
         pieces: u32,
     ) -> Course<'a> {
         let fastest = leaving.beating.iter().fold(picture.fastest_hz, |most, entry| most.max(entry.turns_hz.abs()));
-        let cap_s = (length_s * busy_part(terms, length_s) / (6.0 + 4.0 * f64::from(pieces))).min(1.0 / fastest);
-        let rate = size_hz(picture, terms, length_s) + fastest + leaving.diagonal.iter().fold(0.0, |most: f64, out| most.max(*out));
+        let sampled = Sampled::of(terms, length_s);
+        let cap_s = (length_s * sampled.busy / (6.0 + 4.0 * f64::from(pieces))).min(1.0 / fastest);
+        let rate = size_hz(picture, &sampled.heights) + fastest + leaving.diagonal.iter().fold(0.0, |most: f64, out| most.max(*out));
         let first_s = if rate > 0.0 { cap_s.min(0.05 / rate) } else { cap_s };
         Course { picture, leaving, terms, start, cap_s, first_s, error_per_s, tolerance }
     }

@@ -173,6 +173,8 @@ pub fn accuracy(document: &Document) -> String {
         MethodWord::ConstantSteps => "constant steps",
         MethodWord::Smooth => "smooth",
         MethodWord::Geometric => "geometric",
+        MethodWord::Collocation => "collocation",
+        MethodWord::Carrier => "fast carrier",
     };
     let check = if document.accuracy.cross_check { ", checked by a second method" } else { "" };
     format!("at most {} on every recorded number; method {method}{check}", digits(document.accuracy.last, 6))
