@@ -14,8 +14,8 @@ use num_complex::Complex64;
 
 use super::element::{Element, Seed};
 use super::picture::Picture;
-use super::sampled::Sampled;
 use super::run::{Eye, Fineness, State, Stretch, Work};
+use super::sampled::Sampled;
 use super::turning::Block;
 use super::waves::{Wanted, Waves};
 use crate::units::RAD_PER_TURN;

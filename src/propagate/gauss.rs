@@ -39,8 +39,6 @@ pub(super) struct Rule {
     pub halves: [Table; 2],
     /// Value of the polynomial at 0.
     pub at_start: Values,
-    /// Value of the polynomial in the middle.
-    pub at_middle: Values,
     /// Value of the polynomial at 1.
     pub at_end: Values,
 }
@@ -109,7 +107,6 @@ impl Rule {
             integral: through(&columns, of_each).map(Eight),
             derivatives: powers(&through(&columns, slope)).map(|power| power.map(Eight)),
             at_start: at(0.0),
-            at_middle: at(0.5),
             at_end: at(1.0),
         }
     }

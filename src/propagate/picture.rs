@@ -187,15 +187,7 @@ const WEAK: f64 = 0.1;
 
 impl<'a> Pictures<'a> {
     pub fn new(problem: &'a Problem) -> Self {
-        Pictures {
-            problem,
-            tied: Vec::new(),
-            free: Vec::new(),
-            rest: Vec::new(),
-            folded: Vec::new(),
-            samples: HashMap::new(),
-            replaced: 0,
-        }
+        Pictures { problem, tied: Vec::new(), free: Vec::new(), rest: Vec::new(), folded: Vec::new(), samples: HashMap::new(), replaced: 0 }
     }
 
     /// What samples of the envelopes of a segment say.

@@ -7,8 +7,8 @@
 //!   2 G2 + G1), C1 = [a1, a2], C2 = -[a1, 2 a3 + C1]/60, the exponent is a1 + a3/12 + [-20 a1 - a3 + C1, a2 + C2]/240. Every
 //!   step is an exponential of what conserves the trace exactly.
 
-use super::super::sampled::Sampled;
 use super::super::run::Work;
+use super::super::sampled::Sampled;
 use super::exponential::{act, apply, dense, product, products, squarings, Room};
 use super::load::rate_hz;
 use super::run::{Columns, Eye, Stretch};

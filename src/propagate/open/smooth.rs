@@ -7,8 +7,8 @@
 //! than about six lifetimes of the fastest decay.
 
 use super::super::dormand_prince::{ERROR_3, ERROR_5, NODES, STAGES, WEIGHTS};
-use super::super::sampled::Sampled;
 use super::super::run::{Fineness, Work};
+use super::super::sampled::Sampled;
 use super::load::rate_hz;
 use super::run::{Columns, Eye, Stretch};
 

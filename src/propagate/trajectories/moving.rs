@@ -6,8 +6,8 @@ use num_complex::Complex64;
 
 use super::super::dormand_prince::{ERROR_3, ERROR_5, NODES, STAGES, WEIGHTS};
 use super::super::load::size_hz;
-use super::super::sampled::Sampled;
 use super::super::picture::Picture;
+use super::super::sampled::Sampled;
 use super::leaving::Leaving;
 use super::still::{crossing, norm};
 use crate::problem::{Instant, Term};
