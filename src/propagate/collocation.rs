@@ -81,7 +81,18 @@ pub(super) fn pass(stretch: &Stretch, follow: bool, limits: &Limits, path: &mut 
     let before = if fineness.halved && !path.forgotten { std::mem::take(path) } else { Path::default() };
     *path = Path::default();
     let coupling_rad_s = coupling_rad_s(picture, &sampled.heights);
-    let mut passage = Passage { stretch, limits, cap_s, coupling_rad_s, tau_s: 0.0, next: 0, before, path, fresh: Vec::new() };
+    let mut passage = Passage {
+        stretch,
+        limits,
+        cap_s,
+        coupling_rad_s,
+        tau_s: 0.0,
+        next: 0,
+        before,
+        path,
+        fresh: Vec::new(),
+        ends: state.amplitudes.clone(),
+    };
     if let Some(waves) = if follow { expand(&wanted, passage.longest_s()) } else { None } {
         if passage.go(&waves, state, eye, work) {
             return;
@@ -113,6 +124,8 @@ struct Passage<'a> {
     path: &'a mut Path,
     /// What the element at hand leaves for a finer run.
     fresh: Vec<Block>,
+    /// Amplitudes at its end.
+    ends: Vec<Complex64>,
 }
 
 /// Equal elements to the end of the stretch.
@@ -159,8 +172,7 @@ impl Passage<'_> {
     fn go(&mut self, waves: &Waves, state: &mut State, eye: &mut Eye, work: &mut Work) -> bool {
         let mut element = Element::new(waves, self.stretch.picture);
         self.path.lists.push(waves.list.iter().map(|wave| (wave.level, wave.turns_hz)).collect());
-        let mut ends = state.amplitudes.clone();
-        if !self.halves(waves, &mut element, &mut ends, state, eye, work) {
+        if !self.halves(waves, &mut element, state, eye, work) {
             return false;
         }
         let length_s = self.stretch.length_s;
@@ -174,7 +186,7 @@ impl Passage<'_> {
                 return false;
             }
             let (to_s, allowed) = (row.next_s(length_s), self.allowed(h));
-            let solved = self.solve(&mut element, h, to_s, state, &mut ends, work, |_| None);
+            let solved = self.solve(&mut element, h, to_s, state, work, |_| None);
             if solved.error.is_nan() {
                 work.left = -1.0;
                 return true;
@@ -184,11 +196,11 @@ impl Passage<'_> {
                 row = Row::new(self.tau_s, length_s, h * factor.min(0.8));
                 continue;
             }
-            self.accept(&mut element, h, to_s, state, &ends, eye);
+            self.accept(&mut element, h, to_s, state, eye);
             row.done += 1.0;
             let factor = match solved.sweeps {
-                0..=MANY_SWEEPS => factor,
-                ..=TOO_MANY_SWEEPS => factor.min(1.0),
+                few if few <= MANY_SWEEPS => factor,
+                many if many <= TOO_MANY_SWEEPS => factor.min(1.0),
                 _ => factor.min(0.7),
             };
             let wish_s = (h * factor).min(self.longest_s()).max(1.02 * shortest_s).min(rest_s);
@@ -204,15 +216,7 @@ impl Passage<'_> {
     }
 
     /// Halves of the elements of the run before, as far as they go; false where they are too short for the waves to follow.
-    fn halves(
-        &mut self,
-        waves: &Waves,
-        element: &mut Element,
-        ends: &mut [Complex64],
-        state: &mut State,
-        eye: &mut Eye,
-        work: &mut Work,
-    ) -> bool {
+    fn halves(&mut self, waves: &Waves, element: &mut Element, state: &mut State, eye: &mut Eye, work: &mut Work) -> bool {
         let shortest_s = FOLLOWS_FROM_RAD / waves.slowest_rad_s;
         let columns = state.amplitudes.len() / state.dim;
         let before = std::mem::take(&mut self.before);
@@ -235,14 +239,14 @@ impl Passage<'_> {
                 let seed = |column: usize| {
                     Some(Seed { places: &places[laid.list], sown: &sown[(columns - 1 - column) * each..(columns - column) * each], second })
                 };
-                let solved = self.solve(element, h, to_s, state, ends, work, seed);
+                let solved = self.solve(element, h, to_s, state, work, seed);
                 if solved.error.is_nan() {
                     work.left = -1.0;
                 }
                 if !solved.converged {
                     return true;
                 }
-                self.accept(element, h, to_s, state, ends, eye);
+                self.accept(element, h, to_s, state, eye);
             }
         }
         true
@@ -259,7 +263,6 @@ impl Passage<'_> {
         h: f64,
         to_s: f64,
         state: &State,
-        ends: &mut [Complex64],
         work: &mut Work,
         seed: impl Fn(usize) -> Option<Seed<'s>>,
     ) -> Solved {
@@ -270,7 +273,7 @@ impl Passage<'_> {
         let mut solved = Solved { sweeps: 0, converged: true, error: 0.0, order: 17.0 };
         let mut updates = 0;
         self.fresh.clear();
-        for (k, (from, end)) in state.amplitudes.chunks_exact(dim).zip(ends.chunks_exact_mut(dim)).enumerate().rev() {
+        for (k, (from, end)) in state.amplitudes.chunks_exact(dim).zip(self.ends.chunks_exact_mut(dim)).enumerate().rev() {
             let found = element.solve(from, end, 0.2 * allowed, seed(k));
             updates += found.updates;
             solved.sweeps = solved.sweeps.max(found.sweeps);
@@ -293,7 +296,7 @@ impl Passage<'_> {
     }
 
     /// Shows the moments within, and goes on to the end of the element.
-    fn accept(&mut self, element: &mut Element, h: f64, to_s: f64, state: &mut State, ends: &[Complex64], eye: &mut Eye) {
+    fn accept(&mut self, element: &mut Element, h: f64, to_s: f64, state: &mut State, eye: &mut Eye) {
         let mut within = Vec::new();
         while let Some(moment) = self.stretch.moments.get(self.next).filter(|moment| moment.offset_s < to_s) {
             within.resize(state.dim, Complex64::default());
@@ -309,7 +312,7 @@ impl Passage<'_> {
                 *self.path = Path { forgotten: true, ..Path::default() };
             }
         }
-        state.amplitudes.copy_from_slice(ends);
+        state.amplitudes.copy_from_slice(&self.ends);
         self.tau_s = to_s;
     }
 

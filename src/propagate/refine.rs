@@ -53,7 +53,7 @@ fn largest_figure(coarse: &[f64], fine: &[f64], floor: f64) -> f64 {
 
 /// The runs of a problem: amplitudes where it is closed, a density matrix where it is open.
 pub(super) enum Way<'p> {
-    Closed(Route<'p>),
+    Closed(Box<Route<'p>>),
     Open(Box<open::Route<'p>>),
     Mixture(Mixture<'p>),
 }
@@ -84,7 +84,7 @@ impl<'p> Way<'p> {
             paths: HashMap::new(),
         };
         let way = if parts.is_empty() {
-            Way::Closed(route(problem, pictures))
+            Way::Closed(Box::new(route(problem, pictures)))
         } else {
             Way::Mixture(Mixture::new(parts, demand, |part| route(part, Pictures::new(part))))
         };

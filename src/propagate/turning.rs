@@ -311,7 +311,7 @@ mod tests {
             values.set(i, Complex64::new(1.0, 0.5) * f(rule.nodes.0[i]));
         }
         for width in WIDTHS {
-            for z in [0.0, 1e-9, -1e-3, 0.4, 1.7, -3.0, 4.4, 5.4, 5.6, -6.28, 9.0, 25.0, 130.0, -2000.0] {
+            for z in [0.0, 1e-9, -1e-3, 0.4, 1.7, -3.0, 4.4, 5.4, 5.6, -6.3, 9.0, 25.0, 130.0, -2000.0] {
                 let (turning, _) = width.run(Fill(z));
                 let found = apply(&turning.response, &values);
                 let exact = |x: f64| -> Complex64 {
