@@ -25,6 +25,7 @@
 //! | `waves.rs` | harmonics of fast carriers for it |
 //! | `smooth.rs`, `dormand_prince.rs` | Runge-Kutta 8(5,3) and its coefficients |
 //! | `cross_check.rs` | the independent second route |
+//! | `gradient/` | derivatives by all samples of the controls, in reverse |
 //! | `lanes/` | many points side by side |
 //! | `mixture.rs` | mixed starts of closed systems |
 //! | `open/` | the same for density matrices |
@@ -43,6 +44,7 @@ mod even_steps;
 mod exponential;
 mod gauss;
 mod geometric;
+pub mod gradient;
 mod jacobi;
 pub mod lanes;
 mod load;

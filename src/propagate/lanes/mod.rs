@@ -12,6 +12,7 @@
 //! | `moments.rs` | from profiles in time to steps |
 //! | `steps.rs` | where a kernel finds its steps |
 //! | `two_levels.rs`, `three_levels.rs` | kernels |
+//! | `conjugation.rs`, `controlled.rs` | slices forwards and their gradient backwards, and for which numbers of levels |
 //! | `carry.rs` | [`Group`]: points through stretches |
 //!
 //! This is the only folder with `unsafe`: calls of the processor's instructions, each behind a witness that it has them. All
@@ -23,6 +24,8 @@ mod avx2;
 #[cfg(target_arch = "x86_64")]
 mod avx512;
 mod carry;
+mod conjugation;
+mod controlled;
 mod elementary;
 mod lane;
 mod moments;
@@ -35,6 +38,7 @@ mod two_levels;
 mod width;
 
 pub use carry::{has_kernel, place_of, Group, Packed, Stretch};
+pub use controlled::Conjugation;
 pub(crate) use elementary::sin_cos;
 pub use lane::Eight;
 pub(crate) use lane::{Kernel, Lane, Simd};
