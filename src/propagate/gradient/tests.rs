@@ -59,13 +59,13 @@ impl Goal for RealAmplitude {
         self.to.len()
     }
     fn start(&self) -> Matrix {
-        Matrix::from_columns(&[self.start.clone()])
+        Matrix::from_columns(std::slice::from_ref(&self.start))
     }
     fn value(&self, end: &Matrix) -> f64 {
         self.to.dotc(&end.column(0)).re
     }
     fn seed(&self, _: &Matrix) -> Matrix {
-        Matrix::from_columns(&[self.to.clone()])
+        Matrix::from_columns(std::slice::from_ref(&self.to))
     }
 }
 
