@@ -144,7 +144,19 @@ pub fn final_columns(document: &Document, point: &Point) -> Vec<FinalColumn> {
     let columns = observables.columns();
     let seen = columns.into_iter().map(|column| FinalColumn { name: column.name, unit: column.unit, scale: column.scale });
     let names = observables.last.iter().flat_map(|quantity| quantity.names()).filter(|name| !name.starts_with("propagator_"));
-    seen.chain(names.map(|name| FinalColumn { name, unit: "1", scale: 1.0 })).collect()
+    let steady = if wants_steady(document) { document.system.names.as_slice() } else { &[] };
+    let steady = steady.iter().map(|level| steady_name(level));
+    seen.chain(names.chain(steady).map(|name| FinalColumn { name, unit: "1", scale: 1.0 })).collect()
+}
+
+/// Whether the steady state of the last stretch is recorded.
+fn wants_steady(document: &Document) -> bool {
+    document.record.items.iter().any(|item| matches!(item, Item::Steady(_)))
+}
+
+/// The final quantity that says how much of the steady state is in a level.
+fn steady_name(level: &str) -> String {
+    format!("steady_population_{level}")
 }
 
 impl Outcome {
@@ -206,7 +218,12 @@ pub fn compute_once(document: &Document, point: &Point, recipe: &Recipe) -> Opti
     let rows: Vec<f64> = recorded.numbers[..recorded.in_rows].iter().enumerate().map(|(k, x)| x * scales[k % scales.len()]).collect();
     let names = observables.last.iter().flat_map(|quantity| quantity.names());
     let last = names.zip(recorded.last()).filter(|(name, _)| !name.starts_with("propagator_")).map(|(_, value)| *value);
-    let finals = rows[rows.len() - scales.len()..].iter().copied().chain(last).collect();
+    let mut finals: Vec<f64> = rows[rows.len() - scales.len()..].iter().copied().chain(last).collect();
+    if wants_steady(document) {
+        let found = steady_of(problem, recorded.end_state.as_ref().unwrap_or(&problem.start));
+        let dim = document.system.names.len();
+        finals.extend((0..dim).map(|level| found.as_ref().map_or(f64::NAN, |found| found.state[(level, level)].re)));
+    }
     Some(Once { finals, times_s: problem.moments.iter().map(|moment| moment.time_s).collect(), rows })
 }
 
@@ -336,12 +353,11 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
         CrossCheck::Skipped { method, reason } => Crossing { method: method.clone(), difference: Err(reason.clone()) },
     });
     let end_state = recorded.end_state.clone().unwrap_or_else(|| problem.start.clone());
-    let asked_steady = document.record.items.iter().any(|item| matches!(item, Item::Steady(_)));
-    let steady = asked_steady.then(|| steady_of(problem, &end_state)).flatten();
+    let steady = wants_steady(document).then(|| steady_of(problem, &end_state)).flatten();
     let mut error_figure = quasi.as_ref().map_or(solved.error_figure, |(_, quasi)| quasi.error_figure.max(solved.error_figure)) + of_levels;
     for (level, name) in document.system.names.iter().enumerate().filter(|_| steady.is_some()) {
         let (value, error) = steady.as_ref().map_or((f64::NAN, f64::NAN), |found| (found.state[(level, level)].re, found.error));
-        let name = format!("steady_population_{name}");
+        let name = steady_name(name);
         finals.push(Final { name, unit: "1", value, finer: value, error, sampling_error: None });
         error_figure = error_figure.max(error);
     }

@@ -75,7 +75,8 @@ fn refuse_coherence_times_that_cannot_be() {
     );
     says(
         "dephasing: [{energy_of: j, pure_time: 60 us}]",
-        "error: config.yaml, line 7, column 13: the operator \"j\" is not diagonal and real, so it is no turn about z.",
+        "error: config.yaml, line 7, column 13: the operator \"j\" is not diagonal and real, so it is no turn about z.
+  Write: an operator with real entries on its diagonal alone",
     );
 }
 
@@ -97,7 +98,8 @@ fn refuse_shares_that_do_not_add_up() {
     );
     decay_says(
         "  - {from: b, lifetime: life, to: {a: 1.5, c: 1}}",
-        "error: config.yaml, line 7, column 35: the share of a is 1.5; a share lies between 0 and 1.",
+        "error: config.yaml, line 7, column 35: the share of a is 1.5; a share lies between 0 and 1.
+  Write: a share from 0 to 1, or rest",
     );
     decay_says(
         "  - {from: b, lifetime: life, to: {a: rest, c: rest}}",
@@ -142,7 +144,8 @@ fn refuse_decays_that_have_no_meaning() {
     );
     decay_says(
         "  - {from: b, to: a, lifetime: -1 * life}",
-        "error: config.yaml, line 7, column 32: decay / lifetime must be larger than 0, but is -52 us.",
+        "error: config.yaml, line 7, column 32: decay / lifetime must be larger than 0, but is -52 us.
+  Write: a value above 0",
     );
 }
 
@@ -173,7 +176,8 @@ fn refuse_baths_without_an_answer() {
     );
     decay_says(
         "  - {from: b, to: a, lifetime: life, temperature: -20 mK}",
-        "error: config.yaml, line 7, column 51: a temperature of -20 mK is below absolute zero.",
+        "error: config.yaml, line 7, column 51: a temperature of -20 mK is below absolute zero.
+  Write: a temperature of 0 K or more",
     );
 }
 

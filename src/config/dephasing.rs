@@ -216,7 +216,8 @@ fn impossible(names: &[String], decays: &[Decay], pair: [usize; 2], total_s: f64
 
 /// The fault of a total time above 2 over the sum of both rates; `line` says where a level's decay stands.
 pub fn too_long(names: &[String], pair: [usize; 2], rates_per_s: [f64; 2], total_s: f64, line: impl Fn(usize) -> u32) -> Option<Fault> {
-    let limit_s = 2.0 / (rates_per_s[0] + rates_per_s[1]);
+    // a sum of no rates is a negative zero
+    let limit_s = 2.0 / (rates_per_s[0] + rates_per_s[1]).abs();
     if total_s <= limit_s * (1.0 + 1e-12) {
         return None;
     }

@@ -207,6 +207,8 @@ pub enum Fault {
     TooManyPoints { points: f64, limit: f64 },
     NothingToScan,
     // noise
+    DerivedTwice { name: String },
+    NoiseReaches { moved: Vec<String>, fault: Box<Fault> },
     MovedTwice { name: String, first: u32 },
     TogetherDiffers { label: String, first: u32, what: &'static str },
     CorrelatedForm { name: String },
@@ -343,9 +345,11 @@ impl Fault {
             Empty => say("the file is empty.")
                 .why("A config begins with format: 1 and needs a system.")
                 .write("format: 1      (and see: nutate new)"),
-            NotYaml { reason } => say(format!("this is not YAML: {reason}.")),
+            NotYaml { reason } => say(format!("this is not YAML: {reason}."))
+                .write("key: value, each deeper block further in by spaces, and every bracket and quote closed"),
             Anchor { text } => say(format!("{text} would be a YAML anchor; anchors and aliases are not accepted."))
-                .why("A number to be used twice belongs under numbers:. A text that begins with & must stand in quotes."),
+                .why("A number to be used twice belongs under numbers:. A text that begins with & must stand in quotes.")
+                .write("the value itself, or the name of a number under numbers:"),
             Alias { text } => say(format!("{text} would be a YAML alias; anchors and aliases are not accepted."))
                 .why("A text that begins with * must stand in quotes; a named number is written without *.")
                 .write(format!("\"{text}\"   or   {}", text.trim_start_matches('*'))),
@@ -355,9 +359,9 @@ impl Fault {
             SecondDocument => {
                 say("a second YAML document begins here.").why("A config is one document.").write("two files, or the line --- taken out")
             }
-            TooDeep { limit } => {
-                say(format!("brackets or blocks are nested more than {limit} deep here.")).why("No section of a config needs that depth.")
-            }
+            TooDeep { limit } => say(format!("brackets or blocks are nested more than {limit} deep here."))
+                .why("No section of a config needs that depth.")
+                .write("the section with fewer brackets"),
             TooManyOperations { limit } => say(format!("more than {limit} operations stand in this one value."))
                 .why("So long a formula cannot be checked by eye. Parts of it can be named under numbers:, a curve can come from a file.")
                 .write("shape: samples, with file:   (for a curve)"),
@@ -394,7 +398,8 @@ impl Fault {
                     .write("one of them alone")
             }
             OneOfMissing { keys, section, hint } => {
-                let words = say(format!("{section} needs one of: {}.", list(keys)));
+                let words = say(format!("{section} needs one of: {}.", list(keys)))
+                    .write(format!("{}: ..", keys.first().map_or("", String::as_str)));
                 match hint {
                     Some(hint) => words.why(hint.clone()),
                     None => words,
@@ -409,7 +414,9 @@ impl Fault {
                 if let Some(hint) = hint {
                     words = words.why(hint.clone());
                 }
-                words.why(format!("Known: {}.", list(known))).maybe(near, "")
+                // a word that is near none of the known ones says nothing of which was meant
+                let one = near.clone().unwrap_or_else(|| known.iter().map(String::as_str).collect::<Vec<_>>().join(", or "));
+                words.why(format!("Known: {}.", list(known))).write(one)
             }
             UnknownName { kind, found, near, known } => {
                 let words = say(format!("no {kind} is called \"{found}\"."));
@@ -424,23 +431,24 @@ impl Fault {
                     _ if known.is_empty() => words.why(format!("The file defines no {kind} at all.")),
                     _ => words.why(format!("Defined: {}.", list(known))),
                 };
-                words.maybe(near, "")
+                let one = near.clone().or_else(|| known.first().map(|first| format!("the name of a {kind} that exists, such as {first}")));
+                words.write(one.unwrap_or_else(|| format!("the file without it, or define the {kind} first")))
             }
             NameNotFree { name, reason } => {
                 say(format!("\"{name}\" cannot be the name of a number: {reason}.")).write(format!("another name, such as {name}_1"))
             }
-            SameButForCase { kind, name, other } => {
-                say(format!("the {kind}s \"{name}\" and \"{other}\" differ only by case.")).why("That is easily misread.")
-            }
+            SameButForCase { kind, name, other } => say(format!("the {kind}s \"{name}\" and \"{other}\" differ only by case."))
+                .why("That is easily misread.")
+                .write("names that differ by more"),
             Unused { kind, name } => {
                 say(format!("the {kind} \"{name}\" is used nowhere.")).why("Often a typing slip elsewhere; else it may go.")
             }
 
-            Syntax { found, expected } => say(format!("{found}; {expected} was expected.")),
+            Syntax { found, expected } => say(format!("{found}; {expected} was expected.")).write(expected.clone()),
             TypographicMinus => say("this is a typographic minus sign.").why("Arithmetic wants the plain one.").write("-"),
-            TooLarge { text } => {
-                say(format!("{text} is too large for a number of the machine.")).why("The largest finite double is about 1.8e308.")
-            }
+            TooLarge { text } => say(format!("{text} is too large for a number of the machine."))
+                .why("The largest finite double is about 1.8e308.")
+                .write("a smaller number, or a larger unit"),
             UnknownUnit { symbol, near } => {
                 let words = say(format!("\"{symbol}\" is no unit."));
                 match near {
@@ -486,6 +494,8 @@ impl Fault {
                 } else if *wanted == Dim::FREQUENCY && *found == Dim::RATE {
                     words =
                         words.why("Hz means turns per second; a rate in /s has no turns in it.").write("0.5 turn / time, or a value in Hz");
+                } else if *wanted == Dim::NONE {
+                    words = words.why("A plain number has no unit.").write("the value divided by one of its kind, or without its unit");
                 } else {
                     words = words.why(format!(
                         "Units of {}: {}.",
@@ -495,9 +505,9 @@ impl Fault {
                 }
                 words.maybe(write, "")
             }
-            Mixed { operation, left, right } => {
-                say(format!("{operation} {} and {}, which do not add up.", left.words(), right.words())).why("Both must be of one kind.")
-            }
+            Mixed { operation, left, right } => say(format!("{operation} {} and {}, which do not add up.", left.words(), right.words()))
+                .why("Both must be of one kind.")
+                .write("two quantities of one kind"),
             CyclicTimesPi { hz, factor, name, inner } => {
                 let mut words = say("a cyclic unit is multiplied by a factor containing pi.");
                 let (Some(hz), Some(factor)) = (hz, factor) else {
@@ -526,9 +536,11 @@ impl Fault {
                 .why(format!("{text} what? Angles are written in turn, deg or rad; a frequency times a time is one too."))
                 .write(format!("{function}({text} rad)")),
             PlainWanted { function, found } => say(format!("{function} takes a plain number, but this is {}.", found.words()))
-                .why("Divide by a quantity of the same kind."),
+                .why("Divide by a quantity of the same kind.")
+                .write(format!("{function}(value / unit)")),
             PowerOfUnit { found } => say(format!("{} can only be raised to a constant power such as 2 or 1/2.", found.words()))
-                .why("Otherwise its unit would depend on a number."),
+                .why("Otherwise its unit would depend on a number.")
+                .write("a number in place of the power, such as ^2"),
             BareVolts { text, volts } => say("volts need peak, rms or peak_to_peak.")
                 .why(format!(
                     "For a sine these differ: {} V peak = {} V rms = {} V peak_to_peak.",
@@ -538,18 +550,21 @@ impl Fault {
                 ))
                 .write(format!("{text} peak")),
             DecibelOfPower { text } => say(format!("{text} multiplies a voltage or a field."))
-                .why("dB_power is a ratio of powers; for amplitudes dB_amplitude is usual."),
+                .why("dB_power is a ratio of powers; for amplitudes dB_amplitude is usual.")
+                .write("dB_amplitude in place of dB_power"),
             Circle { chain } => {
                 let names: Vec<String> = chain.iter().map(|(name, line)| format!("{name} (line {line})")).collect();
                 say("these numbers define each other in a circle.").why(names.join(" -> ")).write("a plain value for one of them")
             }
             ZeroDivision { text } => say(format!("here something is divided by zero: {text}."))
-                .why("The divisor comes out as zero with the numbers of this file."),
-            NotFinite { text } => say(format!("{text} has no finite value with the numbers of this file.")),
-            TimeOutside => {
-                say("t exists only in formulas of time.").why("It runs from 0 at the start of the pulse, in formula: and instantaneous:.")
-            }
-            ImaginaryOutside => say("an imaginary number can stand only in the entries of a matrix."),
+                .why("The divisor comes out as zero with the numbers of this file.")
+                .write("a divisor that is not zero"),
+            NotFinite { text } => say(format!("{text} has no finite value with the numbers of this file."))
+                .write("an expression that has one, or other numbers"),
+            TimeOutside => say("t exists only in formulas of time.")
+                .why("It runs from 0 at the start of the pulse, in formula: and instantaneous:.")
+                .write("the expression without t"),
+            ImaginaryOutside => say("an imaginary number can stand only in the entries of a matrix.").write("a real number"),
             NoFunction { name, near } => say(format!("no function is called \"{name}\"."))
                 .why("Known: sqrt exp log log10 sin cos tan asin acos atan atan2 sinh cosh tanh abs min max floor round gap.")
                 .maybe(near, ""),
@@ -558,15 +573,20 @@ impl Fault {
                 .write(text.replace("mHz", "MHz")),
             NotWhole { what, found, from } => {
                 say(format!("{what} must be a whole number from {}, but is {}.", short(*from), short(*found)))
+                    .write(short(found.round().max(*from)))
             }
-            OutOfRange { what, found, wanted } => say(format!("{what} is {found}; it must be {wanted}.")),
+            OutOfRange { what, found, wanted } => {
+                say(format!("{what} is {found}; it must be {wanted}.")).write(format!("a value that is {wanted}"))
+            }
 
             RowLength { row, found, wanted, mirror } => {
                 let words = say(format!("row {row} has {found} entries; {wanted} are expected."));
                 if *mirror {
-                    words.why("With lower: mirror each row starts at its diagonal entry.")
+                    words.why("With lower: mirror each row starts at its diagonal entry.").write(format!("{wanted} entries"))
                 } else {
-                    words.why("Every row has one entry for each name; or give the upper triangle alone with lower: mirror.")
+                    words
+                        .why("Every row has one entry for each name; or give the upper triangle alone with lower: mirror.")
+                        .write(format!("{wanted} entries"))
                 }
             }
             RowCount { found, wanted } => say(format!("the matrix has {found} rows for {wanted} levels.")).write("one row for each level"),
@@ -579,10 +599,11 @@ impl Fault {
                 .write(write.clone())
                 .write("or only the upper triangle, with lower: mirror"),
             TooManyLevels { levels, bytes, limit } => say(format!("{} levels would need {} of memory.", short(*levels), memory(*bytes)))
-                .why(format!("One matrix has levels^2 entries of 16 bytes, and several are needed. At most {limit} levels are accepted.")),
-            FileContent { path, row, reason } => say(format!("{path}, line {row}: {reason}.")),
+                .why(format!("One matrix has levels^2 entries of 16 bytes, and several are needed. At most {limit} levels are accepted."))
+                .write("fewer levels"),
+            FileContent { path, row, reason } => say(format!("{path}, line {row}: {reason}.")).write(format!("line {row} of {path} anew")),
             EmptySystem { what } => say(format!("{what} names no level.")).write("levels: {down: 0 MHz, up: 80 MHz}"),
-            SameLevel { name } => say(format!("the level \"{name}\" is named twice.")),
+            SameLevel { name } => say(format!("the level \"{name}\" is named twice.")).write("another name for one of them"),
 
             NeedsReference { drive, pairs } => {
                 let pairs = pairs.map_or("more than one pair".to_string(), |pairs| format!("{pairs} pairs"));
@@ -595,9 +616,11 @@ impl Fault {
             .why("Only acts_on a spin or an atom, with field_direction, turns a field into a coupling.")
             .write("peak: value      (the Rabi frequency of the reference pair at envelope 1)"),
             NoSuchCoupling { drive, from, to } => say(format!("the drive \"{drive}\" does not couple {from} and {to}."))
-                .why("Its matrix has a zero there, so it cannot be scaled by that entry."),
+                .why("Its matrix has a zero there, so it cannot be scaled by that entry.")
+                .write("reference_pair: two levels that its matrix couples"),
             NotHermitianDrive { drive, operator } => say(format!("the operator \"{operator}\" of the drive \"{drive}\" is not Hermitian."))
-                .why("Only form: one_sided may have one (its adjoint then turns the other way)."),
+                .why("Only form: one_sided may have one (its adjoint then turns the other way).")
+                .write("form: one_sided, or a matrix that is its own adjoint"),
             SamePair { name } => say(format!("both levels of this pair are \"{name}\".")).write("two different levels"),
             NeedsCarrier { drive } => say(format!("the drive \"{drive}\" needs a carrier."))
                 .write("carrier: gap(lower, upper)")
@@ -632,7 +655,8 @@ impl Fault {
             }
             DerivativeOfDirect { envelope, drive } => say(format!(
                 "the envelope \"{envelope}\" has a derivative quadrature, but the drive \"{drive}\" has no carrier to turn it against."
-            )),
+            ))
+            .write("the envelope without derivative, or a drive with a carrier"),
             DerivativeOfHeld { envelope } => say(format!("the envelope \"{envelope}\" holds its samples, so it has no derivative."))
                 .write("between: linear, or between: band limited"),
             NoCalibration { envelope, drive } => {
@@ -658,6 +682,7 @@ impl Fault {
                 say(format!("{what} is not Hermitian: {} of its largest entry differs from the adjoint.", share_words(*residue)))
                     .why(format!("Most of it comes from the derivative of order {order}; the coefficient stands left of the derivative."))
                     .why("Hermitian are c(x); 2 c d^2/dx^2 with c constant; c d^2/dx^2 + c' d/dx; i (2 c d/dx + c'), c real.")
+                    .write("derivatives: {2: 1}      (with a constant coefficient, say)")
             }
             NotOrthogonal { first, second, overlap } => {
                 say(format!("the functions are not orthogonal: {first} and {second} overlap by {} of their norms.", short(*overlap)))
@@ -708,20 +733,23 @@ impl Fault {
                 .why("cut_at leaves a step where the curve has not died away.")
                 .write("edge: step      (leaves the step)")
                 .write("edge: lift      (takes the pedestal off and rescales to the peak)"),
-            ShapeTakesNot { key, shape, takes } => {
-                say(format!("the shape {shape} takes no \"{key}\".")).why(format!("It takes {}.", list(takes)))
+            ShapeTakesNot { key, shape, takes } => say(format!("the shape {shape} takes no \"{key}\"."))
+                .why(format!("It takes {}.", list(takes)))
+                .write(format!("the envelope without {key}, or another shape")),
+            NotPositive { what, value, unit } => {
+                say(format!("{what} must be larger than 0, but is {}.", short_with_unit(*value, unit))).write("a value above 0")
             }
-            NotPositive { what, value, unit } => say(format!("{what} must be larger than 0, but is {}.", short_with_unit(*value, unit))),
             EdgesTooLong { rise_s, length_s } => {
                 say(format!("two edges of {} do not fit into {}.", short_with_unit(*rise_s, "s"), short_with_unit(*length_s, "s")))
                     .why("length counts the whole pulse, edges included.")
+                    .write(format!("a length of {} or more, or a shorter rise", short_with_unit(2.0 * rise_s, "s")))
             }
             NoArea { envelope } => {
                 say(format!("the envelope \"{envelope}\" has no area, so no size gives it that turn.")).write("peak: value")
             }
             FlatLift { envelope } => say(format!("the envelope \"{envelope}\" is cut so early that its pedestal is all of it."))
                 .write("a larger cut_at, or edge: step"),
-            Samples { reason } => say(format!("the samples cannot be used: {reason}.")),
+            Samples { reason } => say(format!("the samples cannot be used: {reason}.")).write("samples: [0, 0.5, 1, 0.5, 0]"),
             EnvelopeStep { envelope, share } => {
                 say(format!("the envelope \"{envelope}\" jumps by {} % of its peak at its ends.", short(share * 100.0)))
                     .why("A cut that early widens the spectrum.")
@@ -737,12 +765,14 @@ impl Fault {
             Overlap { gap_s } => {
                 say(format!("the pulses before and after leave no room: the wait would last {}.", short_with_unit(*gap_s, "s")))
                     .why("wait_between_centres counts from the middle of the pulse before to the middle of the pulse after.")
+                    .write(format!("a wait longer by {} or more", short_with_unit(-gap_s, "s")))
             }
             NoPulseBefore => say("no pulse stands directly before this wait between centres.").write("wait: time      (edge to edge)"),
             NoPulseAfter => say("no pulse stands directly after this wait between centres.").write("wait: time      (edge to edge)"),
             EmptySequence => say("the sequence has no step that takes time.").write("- wait: 1 us"),
-            TooManySteps { steps, limit } => say(format!("the sequence unrolls to {} steps; at most {limit} are accepted.", short(*steps))),
-            BlockInItself { name } => say(format!("the block \"{name}\" uses itself.")),
+            TooManySteps { steps, limit } => say(format!("the sequence unrolls to {} steps; at most {limit} are accepted.", short(*steps)))
+                .write(format!("repeats that make {limit} steps or fewer")),
+            BlockInItself { name } => say(format!("the block \"{name}\" uses itself.")).write("another block in its place"),
             BothPhases => say("phase and turn_about both stand here.")
                 .why("turn_about says the axis directly and sets the phase.")
                 .write("one of the two"),
@@ -775,9 +805,12 @@ impl Fault {
                     words.write("free_z: [za, zb]      (diagonal operators whose turn is free)")
                 }
             }
-            NotUnitary { off } => say(format!("the target is not unitary: it is off by {}.", short(*off))),
-            TargetSize { found, wanted } => say(format!("the target has {found} rows for {wanted} levels under within.")),
-            NotDiagonal { operator } => say(format!("the operator \"{operator}\" is not diagonal and real, so it is no turn about z.")),
+            NotUnitary { off } => say(format!("the target is not unitary: it is off by {}.", short(*off)))
+                .write("rows that are orthogonal and of length 1, such as [[0, 1], [1, 0]]"),
+            TargetSize { found, wanted } => say(format!("the target has {found} rows for {wanted} levels under within."))
+                .write(format!("{wanted} rows of {wanted} entries, or as many levels under within")),
+            NotDiagonal { operator } => say(format!("the operator \"{operator}\" is not diagonal and real, so it is no turn about z."))
+                .write("an operator with real entries on its diagonal alone"),
             NegativeCarrier { drive, hz } => say(format!("the carrier of \"{drive}\" is {}, below zero.", short_with_unit(*hz, "Hz")))
                 .why("gap(a, b) is the energy of b minus that of a; \"x below y\" is y minus x.")
                 .write("gap(lower, upper), and the gap behind above or below"),
@@ -800,13 +833,14 @@ impl Fault {
                 "a period of {} is longer than the sequence, which is {}.",
                 short_with_unit(*period_s, "s"),
                 short_with_unit(*end_s, "s")
-            )),
-            NotPeriodic { period_s, at_s } => {
-                say(format!("the drive does not repeat after {}.", short_with_unit(*period_s, "s"))).why(format!(
+            ))
+            .write(format!("a period of {} or less", short_with_unit(*end_s, "s"))),
+            NotPeriodic { period_s, at_s } => say(format!("the drive does not repeat after {}.", short_with_unit(*period_s, "s")))
+                .why(format!(
                     "At {} the Hamiltonian is not what it was one period before, so there are no quasi-energies.",
                     short_with_unit(*at_s, "s")
                 ))
-            }
+                .write("the period of the drive, or a sequence that repeats"),
             VariantTwice { name } => say(format!("a variant called \"{name}\" is there already."))
                 .why("The file itself is the variant \"as written\".")
                 .write("another name"),
@@ -894,12 +928,15 @@ impl Fault {
             .why("It stands for sigma = sqrt(2)/(2 pi T2*) of a number in Hz that moves a gap one to one.")
             .write("sigma: and the standard deviation in the unit of the number"),
             HistogramLength { edges, counts } => {
-                say(format!("a histogram of {edges} edges has {} bins, but {counts} counts stand here.", edges.saturating_sub(1)))
+                let bins = edges.saturating_sub(1);
+                let (bin, count) = (if bins == 1 { "bin" } else { "bins" }, if *counts == 1 { "count stands" } else { "counts stand" });
+                say(format!("a histogram of {edges} edges has {bins} {bin}, but {counts} {count} here."))
                     .why("There is one more edge than bins.")
-                    .write(format!("{} counts", edges.saturating_sub(1)))
+                    .write(format!("{} edges, or {} counts", counts + 1, bins.max(1)))
             }
             WeightsCount { values, weights } => {
-                say(format!("{values} values have {weights} weights.")).write(format!("{values} weights that add up to 1"))
+                let write = if *values == 0 { "values: [-1 MHz, 1 MHz]".to_string() } else { format!("{values} weights that add up to 1") };
+                say(format!("{values} values have {weights} weights.")).write(write)
             }
             WeightsSum { sum, negative, write } => {
                 let words =
@@ -957,8 +994,20 @@ impl Fault {
             .write("a lower upper limit of the spectrum, a shorter sequence, or fewer recorded times"),
             Open(fault) => fault.words(),
             NothingInTable => say("this scan would write a table without a column.")
-                .why("Propagators, quasi-energies, steady states, shots and budgets have no place in a table of numbers.")
+                .why("Propagators, quasi-energies, shots and budgets have no place in a table of numbers.")
                 .write("record: {populations: all}"),
+            DerivedTwice { name } => say(format!("two columns of the scan would be called \"{name}\"."))
+                .why("A derived column needs a name that no final quantity has.")
+                .write(format!("another name under derived, such as {name}_2")),
+            NoiseReaches { moved, fault } => {
+                let inner = fault.words();
+                let words = say(format!("with {} by noise, {}", moved.join(", "), inner.fact));
+                inner
+                    .why
+                    .into_iter()
+                    .fold(words, Words::why)
+                    .write("a narrower spread, or one that ends: histogram, or values with weights")
+            }
             NoSuchNumber { name, near, known } => say(format!("the file has no number called \"{name}\"."))
                 .why(match known.is_empty() {
                     true => "Only named numbers can be set, and the file names none.".to_string(),

@@ -218,6 +218,8 @@ fn read_entry(reader: &mut Reader, node: &Node) -> Option<NoiseEntry> {
             None
         }
         None if by_spectrum => Some(Spread::BySpectrum),
+        // a spectrum that could not be read says how far all the same
+        None if node.get("correlated").is_some_and(|c| c.get("spectrum").is_some() || c.get("one_over").is_some()) => None,
         _ => reader.need(node, "spread", &section, "{sigma: 40 kHz}").and_then(|spread| read_spread(reader, spread, &section, dim)),
     };
     if let (Some(Memory::Exponential(_)), Some(spread)) = (&memory, &spread) {
@@ -282,6 +284,10 @@ fn read_spread(reader: &mut Reader, node: &Node, section: &str, dim: Dim) -> Opt
     let positive = |reader: &mut Reader, node: &Node, key: &str, dim: Dim, zero: bool| {
         let quantity = reader.quantity(node, &format!("{section} / {key}"), dim)?;
         let value = reader.value_now(quantity.register);
+        if value.is_nan() {
+            // reported where it is computed
+            return None;
+        }
         if !(value > 0.0 || zero && value == 0.0) {
             let fault = Fault::NotPositive { what: format!("{section} / {key}"), value, unit: dim.unit() };
             reader.error(node.place, fault);

@@ -5,7 +5,7 @@
 
 use super::{Point, Touched};
 use crate::config::document::Document;
-use crate::config::messages::Mistake;
+use crate::config::messages::{short_with_unit, Fault, Mistake};
 
 /// A point, and what noise touches in it.
 #[derive(Debug, Clone)]
@@ -42,7 +42,16 @@ impl<'p> Shaken<'p> {
         }
         let point = &mut self.point;
         self.document.tape.replay_shaken(&self.touched.registers, &point.set, &point.shift, &mut point.values);
-        point.refresh(self.document, &self.touched)?;
+        point.refresh(self.document, &self.touched).map_err(|mistake| reached(self.document, amounts, mistake))?;
         Ok(point)
     }
+}
+
+/// A mistake that is none of the file as written: noise has moved numbers to where they make no run.
+fn reached(document: &Document, amounts: &[(u32, f64)], mistake: Mistake) -> Mistake {
+    let moved = amounts.iter().filter_map(|(number, amount)| {
+        let number = document.numbers.get(*number as usize)?;
+        Some(format!("{} moved by {}", number.name, short_with_unit(*amount, &number.dim.unit())))
+    });
+    Mistake { fault: Fault::NoiseReaches { moved: moved.collect(), fault: Box::new(mistake.fault) }, ..mistake }
 }

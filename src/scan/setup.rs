@@ -159,6 +159,9 @@ impl Setup {
                 let known: Vec<String> = all.iter().cloned().chain(self.document().numbers.iter().map(|n| n.name.clone())).collect();
                 return Err(Mistake::error(*place, unknown(found, known)));
             }
+            if all.contains(name) || self.scan.derived.iter().filter(|(other, _)| other == name).count() > 1 {
+                return Err(Mistake::error(self.scan.place, Fault::DerivedTwice { name: name.clone() }));
+            }
             columns.push(TableColumn { name: name.clone(), unit: formula.dim.unit(), scale: 1.0, derived: true });
         }
         if columns.is_empty() {
@@ -185,9 +188,7 @@ fn trimmed(mut document: Document, keep: Keep) -> Document {
     if keep == Keep::Final {
         document.record.rows = Rows::At(Vec::new());
     }
-    document.record.items.retain(|item| {
-        !matches!(item, Item::Propagator | Item::QuasiEnergies(_) | Item::Steady(_) | Item::Shots(_) | Item::ErrorBudget(_))
-    });
+    document.record.items.retain(|item| !matches!(item, Item::Propagator | Item::QuasiEnergies(_) | Item::Shots(_) | Item::ErrorBudget(_)));
     document
 }
 

@@ -140,8 +140,12 @@ impl OpenFault {
         use OpenFault::*;
         match self {
             Shares { subject, key, sum, parts } => shares(subject, key, *sum, parts),
-            ShareRange { of, found } => say(format!("the share of {of} is {}; a share lies between 0 and 1.", short(*found))),
-            TwoRests { key } => say(format!("\"rest\" stands twice under {key}.")).why("What is left over can go to one place only."),
+            ShareRange { of, found } => {
+                say(format!("the share of {of} is {}; a share lies between 0 and 1.", short(*found))).write("a share from 0 to 1, or rest")
+            }
+            TwoRests { key } => say(format!("\"rest\" stands twice under {key}."))
+                .why("What is left over can go to one place only.")
+                .write("a number in place of one of them"),
             IntoItself { level } => say(format!("\"{level}\" would decay into itself."))
                 .why("A jump that leaves the level unchanged is dephasing.")
                 .write(format!("dephasing: [{{energy_of: {{{level}: 1}}, pure_time: value}}]")),
@@ -166,7 +170,8 @@ impl OpenFault {
                     .write("pure_time in one of them")
             }
             NoDephasing => say("all weights are equal, so this dephasing does nothing.")
-                .why("The coherence between m and n decays at (w_m - w_n)^2 / pure_time."),
+                .why("The coherence between m and n decays at (w_m - w_n)^2 / pure_time.")
+                .write("weights that differ, or the file without this entry"),
             BathBetweenEqual { from, to } => {
                 say(format!("{from} and {to} have the same energy, so no bath temperature says how they exchange."))
                     .why("The number of thermal quanta of a gap of zero is infinite.")
@@ -184,7 +189,8 @@ impl OpenFault {
             ))
             .why("Each gap has its own number of thermal quanta, so one jump operator cannot stand for all of them.")
             .write("one operator for each gap, lowering the energy"),
-            BelowZeroKelvin { found } => say(format!("a temperature of {} is below absolute zero.", short_with_unit(*found, "K"))),
+            BelowZeroKelvin { found } => say(format!("a temperature of {} is below absolute zero.", short_with_unit(*found, "K")))
+                .write("a temperature of 0 K or more"),
             LongWait { wait_s, lifetime_s } => say(format!(
                 "this wait of {} is more than a hundred times the longest lifetime, {}.",
                 short_with_unit(*wait_s, "s"),
@@ -213,6 +219,7 @@ impl OpenFault {
             ReadLength { read, found, wanted } => {
                 say(format!("the row of the read \"{read}\" has {found} entries; {wanted} are expected."))
                     .why("A row has the probability of that read for each level, in basis order.")
+                    .write(format!("{wanted} probabilities"))
             }
             ReadCount { found, wanted } => say(format!("{found} reads are listed for {wanted} levels."))
                 .why("Rows without names are named like the levels, so there is one for each.")
