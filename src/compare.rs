@@ -41,6 +41,8 @@ pub struct Difference {
     pub value: f64,
     /// Sum of the errors of both.
     pub error: f64,
+    /// One standard error of it where random draws were averaged, as if those of both were independent; draws of one seed do better.
+    pub sampling_error: Option<f64>,
 }
 
 /// What is left of the differences with one dropped term put back.
@@ -119,7 +121,15 @@ pub fn compare(compare: &Compare, plans: Vec<(String, Plan)>) -> Result<Comparis
     let asked = asked(reference.plan.document());
     let mut held = Vec::new();
     for variant in computed.iter().filter(|variant| variant.name != compare.against) {
-        let differences: Vec<Difference> = differences(&variant.finals, &reference.finals, &asked);
+        let mut differences: Vec<Difference> = differences(&variant.finals, &reference.finals, &asked);
+        for difference in &mut differences {
+            let of = |computed: &Computed| {
+                let last = computed.outcome.finals.iter().find(|last| last.name == difference.quantity);
+                last.and_then(|last| last.sampling_error)
+            };
+            let both = [of(variant), of(reference)];
+            difference.sampling_error = both.iter().flatten().copied().reduce(f64::hypot);
+        }
         let largest = differences.iter().map(|difference| difference.value.abs()).fold(0.0, f64::max);
         let explanation = explain(variant, reference, &reference_turns, &asked).map_err(|mistake| fault(&variant.plan, mistake))?;
         held.push(Held {
@@ -141,7 +151,7 @@ fn asked(document: &Document) -> Box<dyn Fn(&str) -> bool> {
 fn differences(variant: &[(String, f64, f64)], reference: &[(String, f64, f64)], asked: &dyn Fn(&str) -> bool) -> Vec<Difference> {
     let of = |(name, value, error): &(String, f64, f64)| {
         let (_, other, other_error) = reference.iter().find(|(other, ..)| other == name)?;
-        asked(name).then(|| Difference { quantity: name.clone(), value: value - other, error: error + other_error })
+        asked(name).then(|| Difference { quantity: name.clone(), value: value - other, error: error + other_error, sampling_error: None })
     };
     variant.iter().filter_map(of).collect()
 }

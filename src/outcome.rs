@@ -55,6 +55,8 @@ pub struct Average {
     pub draws: u64,
     /// Error of each recorded number, over its scale, beside its change under refinement; empty where there is none.
     pub besides: Vec<f64>,
+    /// What another number of nodes changes in each recorded number, over its scale; empty where there is no rule.
+    pub of_finer_rule: Vec<f64>,
     /// One standard error of each recorded number, over its scale; empty where nothing was drawn.
     pub sampling: Vec<f64>,
     /// The largest of them.
@@ -310,6 +312,7 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
     // levels of a grid or an expansion are known to `error_hz`, and phases between them drift apart by as much
     let of_levels = rad_s(point.built.error_hz) * problem.length_s();
     let besides = |k: usize| of_levels + average.as_ref().and_then(|average| average.besides.get(k)).copied().unwrap_or(0.0);
+    let of_finer_rule = |k: usize| average.as_ref().and_then(|average| average.of_finer_rule.get(k)).copied().unwrap_or(0.0);
     let sampling = |k: usize| average.as_ref().and_then(|average| average.sampling.get(k)).copied();
     let mut finals: Vec<Final> = columns
         .iter()
@@ -320,7 +323,7 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
             let (value, finer) = (number(recorded), number(finer));
             let error = (figure(value, finer, solved.floor) + besides(at)) * column.scale;
             let sampling_error = sampling(at).map(|error| error * column.scale);
-            let (value, finer) = (value * column.scale, finer * column.scale);
+            let (value, finer) = (value * column.scale, (finer + of_finer_rule(at)) * column.scale);
             Final { name: column.name.clone(), unit: column.unit, value, finer, error, sampling_error }
         })
         .collect();
@@ -333,6 +336,7 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
         if name.starts_with("propagator_") {
             whole_error = whole_error.max(error);
         } else {
+            let finer = finer + of_finer_rule(recorded.in_rows + k);
             let sampling_error = sampling(recorded.in_rows + k);
             finals.push(Final { name, unit: "1", value, finer, error, sampling_error });
         }

@@ -425,7 +425,10 @@ impl<'p> Point<'p> {
             self.curves[k] = curve(envelope, &self.values)?;
         }
         if touched.surroundings {
-            self.surroundings = Surroundings::new(document, &self.built, &self.values, &self.energies_hz)?;
+            // a bath looks at the gaps of this very shot
+            let moved = (noise && touched.statics).then(|| statics(&self.built).1);
+            let energies_hz = moved.as_ref().unwrap_or(&self.energies_hz);
+            self.surroundings = Surroundings::new(document, &self.built, &self.values, energies_hz)?;
             self.lab.jumps = open::jumps(&self.surroundings, &self.off);
         }
         if touched.start {

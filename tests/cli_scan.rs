@@ -532,3 +532,37 @@ fn cli_scan_of_a_million_points_stays_small() {
     // a table of doubles would be 24 MB more for each copy; found: see the note in benches/RESULTS.md
     assert!(largest < 100_000, "{largest} kB");
 }
+
+/// Saturation and power broadening of a driven line: s/2/(1 + s + (2 d/linewidth)^2) with s = 2 (R/linewidth)^2 (e.g. R. Loudon, The
+/// Quantum Theory of Light (Oxford, 1983), chapter 2; from memory), at every point of a scan.
+#[test]
+fn exact_steady_states_along_a_scan() {
+    let folder = tempfile::tempdir().unwrap();
+    let config = "format: 1
+numbers: {det: 0 MHz}
+system: {levels: {g: 0 MHz, e: 300 MHz}}
+drives: {l: {pair: [g, e], form: one_sided, carrier: \"det above gap(g, e)\"}}
+envelopes: {on: {shape: square, length: 1 us, peak: 2 MHz}}
+sequence: [{pulse: {drive: l, envelope: on}}]
+frame: {kind: rotating, follows: drives, drop_terms_faster_than: nothing}
+decay: [{from: e, to: g, linewidth: 1 MHz}]
+start: g
+record: {at: [1 us], populations: all, steady: true}
+scan: {axes: [{number: det, from: -3 MHz, to: 3 MHz, points: 121}]}
+accuracy: {final: 1e-10}
+";
+    fs::write(folder.path().join("line.yaml"), config).unwrap();
+    let scanned = Command::new(env!("CARGO_BIN_EXE_nutate")).args(["scan", "line.yaml"]).current_dir(folder.path()).output().unwrap();
+    assert!(scanned.status.success(), "{}", String::from_utf8_lossy(&scanned.stderr));
+    let table = fs::read_to_string(folder.path().join("outputs/line/scan.csv")).unwrap();
+    let mut rows = table.lines();
+    let at = rows.next().unwrap().split(',').position(|name| name == "steady_population_e").unwrap();
+    let mut count = 0;
+    for row in rows {
+        let cells: Vec<f64> = row.split(',').map(|cell| cell.parse().unwrap()).collect();
+        let wanted = 4.0 / (9.0 + 4.0 * cells[0] * cells[0]);
+        assert!((cells[at] - wanted).abs() < 1e-14, "{row}");
+        count += 1;
+    }
+    assert_eq!(count, 121);
+}

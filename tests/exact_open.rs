@@ -396,3 +396,18 @@ accuracy: {final: 1e-11, method: automatic}
     }
     close(last(&outcome, "mean_quanta"), 0.1 * (-0.4f64).exp(), 1e-13);
 }
+
+/// Two levels without any decay: the total time is that of the dephasing alone.
+#[test]
+fn regress_total_time_where_nothing_decays() {
+    let outcome = run("format: 1
+system: {levels: {a: 0 MHz, b: 1 MHz, c: 3 MHz}}
+sequence: [{wait: 1 us}]
+dephasing: [{energy_of: {c: 1}, total_time: 5 us, of: [a, c]}]
+start: {superposition: {a: [sqrt(1/2), 0 deg], c: [sqrt(1/2), 0 deg]}}
+record: {at: [1 us], coherence: [a, c]}
+accuracy: {final: 1e-12}
+");
+    let [re, im] = coherence(&outcome, "a_c", 1e-6);
+    close(re.hypot(im), 0.5 * (-0.2f64).exp(), 1e-14);
+}

@@ -331,3 +331,48 @@ accuracy: {final: 5e-3, method: automatic}
     close(last(&outcome, "coherence_down_up_re"), re, 4.0 * sampling(&outcome, "coherence_down_up_re"));
     close(last(&outcome, "coherence_down_up_im"), im, 4.0 * sampling(&outcome, "coherence_down_up_im"));
 }
+
+/// A. Einstein, Physikalische Zeitschrift 18, 121 (1917): down goes n + 1, up n times the rate; each shot has the n of its own gap.
+#[test]
+fn exact_bath_looks_at_the_gap_of_the_shot() {
+    let outcome = averaged(
+        "format: 1
+numbers: {off: 0 MHz}
+system: {levels: {g: 0 MHz, e: 300 MHz + off}}
+sequence: [{wait: 1 us}]
+decay: [{from: e, to: g, lifetime: 0.5 us, temperature: 20 mK}]
+start: g
+noise: [{moves: off, spread: {values: [-200 MHz, 200 MHz], weights: [0.5, 0.5]}}]
+record: {at: [1 us], populations: all}
+accuracy: {final: 1e-11}
+",
+    );
+    // k/h, Hz per kelvin (CODATA 2022, exact by h and k)
+    let thermal_hz = 0.02 * 1.380_649e-23 / 6.626_070_15e-34;
+    let of_gap = |gap_hz: f64| {
+        let n = 1.0 / ((gap_hz / thermal_hz).exp() - 1.0);
+        n / (2.0 * n + 1.0) * (1.0 - (-2.0 * (2.0 * n + 1.0)).exp())
+    };
+    close(last(&outcome, "population_e"), 0.5 * (of_gap(100e6) + of_gap(500e6)), 1e-14);
+}
+
+/// Where nodes further out make no run, fewer nodes measure the rule; where its own nodes do not, the message says whose doing it is.
+#[test]
+fn regress_nodes_that_make_no_run() {
+    let config = |points: usize| {
+        ramsey("pause", "pause", "    spread: {values: [0 kHz], weights: [1]}", "1e-6")
+            .replace("{drift: 0 kHz}", "{drift: 0 kHz, pause: 1 us}")
+            .replace(
+                "  - moves: drift",
+                &format!("  - {{moves: pause, spread: {{sigma: 0.2 us}}, sampling: {{rule: gauss, points: {points}}}}}\n  - moves: drift"),
+            )
+    };
+    let outcome = averaged(&config(7));
+    close(last(&outcome, "population_up"), 0.5, 1e-14);
+    let plan = Plan::new(document(&config(21), &[]));
+    let point = plan.point().unwrap();
+    let refused = compute(plan.document(), &point, &Draws::default()).expect_err("a wait below zero");
+    let text = nutate::config::messages::render(&plan.document().sources, &[refused]);
+    assert!(text.contains("with pause moved by -"), "{text}");
+    assert!(text.contains("Write: a narrower spread"), "{text}");
+}

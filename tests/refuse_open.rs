@@ -104,7 +104,7 @@ fn refuse_shares_that_do_not_add_up() {
     decay_says(
         "  - {from: b, lifetime: life, to: {a: rest, c: rest}}",
         "error: config.yaml, line 7, column 48: \"rest\" stands twice under to.
-  What is left over can go to one place only.",
+  What is left over can go to one place only.\n  Write: a number in place of one of them",
     );
     says(
         "start: {mix: {a: 0.6, b: 0.1}}",

@@ -40,6 +40,11 @@ pub fn judge(document: &Document) -> Vec<Mistake> {
                 found.push(Mistake::error(entry.place, Fault::NoiseMovesStructure { name: moved.name.clone() }));
                 continue;
             }
+            if let Some(other) = document.noise.iter().find(|other| other.spread.registers().into_iter().any(is)) {
+                let fault = Fault::NoiseOnNoise { name: moved.name.clone(), other: other.moves[0].name.clone() };
+                found.push(Mistake::error(entry.place, fault));
+                continue;
+            }
             let users = users(document, &is);
             if matches!(entry.memory, Memory::Slow) {
                 found.extend(warning(entry, &moved.name, &users));
@@ -54,6 +59,9 @@ pub fn judge(document: &Document) -> Vec<Mistake> {
     found
 }
 
+/// The one thing that noise does not reach though its number stands there.
+const TARGET: &str = "the target of the gate";
+
 /// Something that a moved number sets.
 struct User {
     what: String,
@@ -65,7 +73,9 @@ struct User {
 
 fn warning(entry: &NoiseEntry, name: &str, users: &[User]) -> Option<Mistake> {
     let user = users.iter().find(|user| user.instrument)?;
-    Some(Mistake::warning(entry.place, Fault::NoiseOnInstrument { name: name.to_string(), user: user.what.clone() }))
+    let name = name.to_string();
+    let fault = if user.what == TARGET { Fault::TargetStays { name } } else { Fault::NoiseOnInstrument { name, user: user.what.clone() } };
+    Some(Mistake::warning(entry.place, fault))
 }
 
 fn formula(formula: &Formula, is: &dyn Fn(Register) -> bool) -> bool {
@@ -103,7 +113,7 @@ fn users(document: &Document, is: &dyn Fn(Register) -> bool) -> Vec<User> {
                 Target::Rows(entries) => entries.iter().any(|entry| is(entry.value.re) || entry.value.im.is_some_and(is)),
             };
             if moved {
-                users.push(set("the target of the gate".to_string(), true));
+                users.push(User { what: TARGET.to_string(), instrument: true, within_a_shot: true });
             }
         }
     }

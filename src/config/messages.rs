@@ -225,7 +225,9 @@ pub enum Fault {
     NoiseMovesEnd { names: String },
     TooManyRuns { runs: f64, limit: f64, draws: bool },
     RoughAverage { draws: usize, sampling_error: f64, accuracy: f64, needed: f64 },
-    Revival { points: String, from_s: f64, accuracy: f64, write: String },
+    Revival { points: String, from_s: Option<f64>, accuracy: f64, write: String },
+    TargetStays { name: String },
+    NoiseOnNoise { name: String, other: String },
     SpectrumTooWide { turns: f64, nodes: f64, limit: f64 },
     // decay, dephasing, mixtures and read-out
     Open(OpenFault),
@@ -954,8 +956,17 @@ impl Fault {
             NoiseWithout { what, instead } => say(format!("with noise there is no {what}: probabilities are averaged, never amplitudes."))
                 .why("Each shot has its own, and their mean describes none of them.")
                 .write(*instead),
-            NoiseMovesEnd { names } => say(format!("noise moves the length of the sequence ({names}), so its shots have no common times."))
-                .why("Only the end of the sequence is recorded, whenever it comes."),
+            TargetStays { name } => {
+                say(format!("noise moves \"{name}\", and the target of the gate uses it: the target stays as written."))
+                    .why("A gate is judged against what was wanted, which no drift changes.")
+            }
+            NoiseOnNoise { name, other } => say(format!("noise moves \"{name}\", but that is the spread of the noise on \"{other}\"."))
+                .why("A spread that itself spreads is one spread of another form.")
+                .write("one entry whose histogram or values are those of both together"),
+            NoiseMovesEnd { names } => {
+                say(format!("noise moves the times of the sequence or its rows ({names}), so its shots have none in common."))
+                    .why("Only the end of the sequence is recorded, whenever it comes.")
+            }
             TooManyRuns { runs, limit, draws } => {
                 say(format!("the average would take {} runs, more than {}.", short(*runs), short(*limit)))
                     .why(if *draws {
@@ -979,11 +990,15 @@ impl Fault {
                 "accuracy: {{final: {}}}, more draws, or rule: until accurate",
                 short(10f64.powf(sampling_error.log10().ceil()))
             )),
-            Revival { points, from_s, accuracy, write } => {
-                say(format!("the average over {points} is good to {} only until {}.", short(*accuracy), short_with_unit(*from_s, "s")))
-                    .why("A rule of a few nodes has phases that come together again: later than that the average revives artificially.")
-                    .write(write.clone())
+            Revival { points, from_s, accuracy, write } => match from_s {
+                Some(from_s) => {
+                    say(format!("the average over {points} is good to {} only until {}.", short(*accuracy), short_with_unit(*from_s, "s")))
+                        .why("A rule of a few nodes has phases that come together again: later than that the average revives artificially.")
+                }
+                None => say(format!("the average over {points} is not good to {}.", short(*accuracy)))
+                    .why("The rule has too few nodes for the phases that its number collects."),
             }
+            .write(write.clone()),
             SpectrumTooWide { turns, nodes, limit } => say(format!(
                 "the spectrum reaches {} turns within the sequence and would take {} values, more than {}.",
                 short(*turns),

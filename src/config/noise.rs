@@ -8,6 +8,7 @@ use std::path::Path;
 use super::messages::{short, Fault};
 use super::place::Place;
 use super::reader::{Quantity, Reader};
+use super::tape::Register;
 use super::tree::{read_text, Node};
 use crate::units::Dim;
 
@@ -50,6 +51,20 @@ pub enum Spread {
     },
     /// As far as its spectrum says.
     BySpectrum,
+}
+
+impl Spread {
+    /// Registers of the numbers that set it.
+    pub fn registers(&self) -> Vec<Register> {
+        let of = |list: &[Quantity]| list.iter().map(|quantity| quantity.register).collect::<Vec<_>>();
+        match self {
+            Spread::Gaussian(Width::Sigma(size) | Width::Fwhm(size) | Width::T2Star(size)) => vec![size.register],
+            Spread::Lorentzian { fwhm, cut_at } => vec![fwhm.register, cut_at.register],
+            Spread::Histogram { edges, counts } => [of(edges), of(counts)].concat(),
+            Spread::Values { values, weights } => [of(values), of(weights)].concat(),
+            Spread::BySpectrum => Vec::new(),
+        }
+    }
 }
 
 /// How the number moves in time.

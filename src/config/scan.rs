@@ -199,10 +199,14 @@ fn read_axes(reader: &mut Reader, node: &Node) -> Option<Vec<Axis>> {
     }
     let mut axes: Vec<Axis> = Vec::new();
     let mut good = true;
+    let mut broken: Vec<&str> = Vec::new();
     for item in list {
-        match read_axis(reader, item, &axes) {
+        match read_axis(reader, item, &axes, &broken) {
             Some(axis) => axes.push(axis),
-            None => good = false,
+            None => {
+                good = false;
+                broken.extend(item.get("number").and_then(Node::text));
+            }
         }
     }
     if !good {
@@ -216,7 +220,8 @@ fn read_axes(reader: &mut Reader, node: &Node) -> Option<Vec<Axis>> {
     Some(axes)
 }
 
-fn read_axis(reader: &mut Reader, node: &Node, before: &[Axis]) -> Option<Axis> {
+/// `broken` are earlier axes with mistakes of their own.
+fn read_axis(reader: &mut Reader, node: &Node, before: &[Axis], broken: &[&str]) -> Option<Axis> {
     let known = ["number", "from", "to", "points", "step", "values", "file", "spacing", "together_with"];
     reader.fields(node, "an axis of scan", &known, &[("name", "The number that moves is called number.")])?;
     let name = reader.need(node, "number", "an axis of scan", "peak")?;
@@ -234,6 +239,7 @@ fn read_axis(reader: &mut Reader, node: &Node, before: &[Axis]) -> Option<Axis> 
     let dim = reader.number_dim(&number)?;
     let together_with = match node.get("together_with") {
         None => None,
+        Some(other) if other.text().is_some_and(|name| broken.contains(&name)) => return None,
         Some(other) => {
             let names: Vec<String> = before.iter().map(|axis| axis.number.clone()).collect();
             let index = reader.name_among(other, "earlier axis", &names)?;

@@ -241,12 +241,22 @@ impl<'p> Job<'p> {
         if !self.gridded.iter().any(|k| matches!(self.sources[*k].rule, Rule::Gauss { .. })) {
             return Ok(None);
         }
-        let finer = Grid::new(&self.sources, &self.gridded, |points| (3 * points).div_ceil(2) + 1);
+        let mut finer = Grid::new(&self.sources, &self.gridded, |points| (3 * points).div_ceil(2) + 1);
         let runs = finer.len() as f64 * count.clamp(1, BLOCK) as f64;
         if runs > MOST_RUNS {
             return Err(self.too_many(runs + grid.len() as f64, false));
         }
-        let total = self.pass(&finer, 0..count.min(BLOCK))?;
+        let total = match self.pass(&finer, 0..count.min(BLOCK)) {
+            Ok(total) => total,
+            Err(mistake) => {
+                // nodes further out may make no run; then the change from fewer nodes says more than enough
+                finer = Grid::new(&self.sources, &self.gridded, |points| (2 * points).div_ceil(3).min(points.saturating_sub(1).max(1)));
+                if finer.len() == grid.len() {
+                    return Err(mistake);
+                }
+                self.pass(&finer, 0..count.min(BLOCK))?
+            }
+        };
         let fine = if count > 0 { total.first } else { total.sum };
         Ok(Some(Refined { rough: rough.to_vec(), fine, grid: finer }))
     }
@@ -386,8 +396,10 @@ impl<'p> Job<'p> {
         let judge = Judge::new(self.document, self.calm.point());
         let (recorded, finer) = (judge.judged(coarse, &notes), judge.judged(fine, &notes));
         let numbers = recorded.numbers.len();
+        let mut of_finer_rule = Vec::new();
         let of_rule = refined.as_ref().map_or_else(Vec::new, |refined| {
             let (rough, finer) = (judge.judged(&refined.rough, &notes), judge.judged(&refined.fine, &notes));
+            of_finer_rule = rough.numbers.iter().zip(&finer.numbers).map(|(rough, finer)| finer - rough).collect();
             // what is rounding of the sums is no error of the rule
             let error = |(a, b): (&f64, &f64)| Some(figure(*a, *b, 0.0)).filter(|error| *error > 2.0 * notes.floor).unwrap_or(0.0);
             rough.numbers.iter().zip(&finer.numbers).map(error).collect()
@@ -449,6 +461,7 @@ impl<'p> Job<'p> {
             runs: grid.len() * count.max(1),
             draws: count,
             besides,
+            of_finer_rule,
             sampling,
             sampling_error,
             until_accurate: until,
@@ -464,7 +477,7 @@ impl<'p> Job<'p> {
         let wide = notes.in_rows / moments.len().max(1);
         let bad = besides.iter().position(|error| *error > accuracy)?;
         let row = if bad < notes.in_rows { bad / wide.max(1) } else { moments.len() - 1 };
-        let from_s = moments.get(row.saturating_sub(1)).map_or(0.0, |moment| if row == 0 { 0.0 } else { moment.time_s });
+        let from_s = if row == 0 { None } else { moments.get(row - 1).map(|moment| moment.time_s) };
         let more: Vec<String> = finer
             .counts()
             .iter()

@@ -49,7 +49,7 @@ impl<'p> Shaken<'p> {
 
 /// A mistake that is none of the file as written: noise has moved numbers to where they make no run.
 fn reached(document: &Document, amounts: &[(u32, f64)], mistake: Mistake) -> Mistake {
-    let moved = amounts.iter().filter_map(|(number, amount)| {
+    let moved = amounts.iter().filter(|(_, amount)| *amount != 0.0).filter_map(|(number, amount)| {
         let number = document.numbers.get(*number as usize)?;
         Some(format!("{} moved by {}", number.name, short_with_unit(*amount, &number.dim.unit())))
     });

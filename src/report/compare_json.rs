@@ -22,6 +22,9 @@ pub fn comparison(document: &Document, comparison: &Comparison, seconds: f64) ->
         for difference in &held.differences {
             own.insert(difference.quantity.clone(), number(difference.value));
             own.insert(format!("{}_error", difference.quantity), number(difference.error));
+            if let Some(sampling) = difference.sampling_error {
+                own.insert(format!("{}_sampling_error", difference.quantity), number(sampling));
+            }
         }
         differences.insert(held.name.clone(), Value::Object(own));
         if let Some(is) = held.exceeds {

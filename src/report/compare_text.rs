@@ -37,7 +37,10 @@ pub fn table(document: &Document, comparison: &Comparison, place: Option<&str>) 
         ));
         for last in computed.outcome.finals.iter().take(SHOWN) {
             let difference = held.and_then(|held| held.differences.iter().find(|difference| difference.quantity == last.name));
-            let difference = difference.map_or(String::new(), |difference| with_error(difference.value, difference.error));
+            let difference = difference.map_or(String::new(), |difference| {
+                let sampling = difference.sampling_error.map_or(String::new(), |error| format!(", sampling error {error:.1e}"));
+                with_error(difference.value, difference.error) + &sampling
+            });
             text.push_str(format!("  {:<wide$}  {:<30}  {difference}", last.name, with_error(last.value, last.error)).trim_end());
             text.push('\n');
         }

@@ -78,6 +78,21 @@ impl Grid {
         self.point_at(&along)
     }
 
+    /// The point at which the axes have these values (SI, in the order of the axes), if it is one of the grid.
+    pub fn point_of(&self, values: &[f64]) -> Option<u64> {
+        let is = |(axis, value): (&Axis, &f64), place: u64| {
+            let written = axis.value(place);
+            (written - value).abs() <= 1e-12 * written.abs().max(value.abs())
+        };
+        let along: Option<Vec<u64>> = (0..self.counts.len())
+            .map(|group| {
+                let own = |k: &usize| self.group[*k] == group;
+                (0..self.counts[group]).find(|place| (0..self.axes.len()).filter(own).all(|k| is((&self.axes[k], &values[k]), *place)))
+            })
+            .collect();
+        along.map(|along| self.point_at(&along))
+    }
+
     /// Values of all axes at a point, SI, in the order of the axes.
     pub fn values(&self, point: u64) -> Vec<f64> {
         let along = self.coordinates(point);

@@ -4,8 +4,9 @@ use super::super::{complain, complain_of, point, print, read_config, settings, C
 use crate::config::document::Document;
 use crate::config::place::lines;
 use crate::noise::{compute, Draws};
-use crate::plan::Plan;
+use crate::plan::{Plan, Point};
 use crate::report::{result_json, summary};
+use crate::scan::grid::Grid;
 
 /// Computes the point at which the numbers of `wanted` have the values written there.
 pub(super) fn one_point(common: &Common, wanted: &str, as_json: bool) -> Result<Status, Status> {
@@ -23,7 +24,8 @@ pub(super) fn one_point(common: &Common, wanted: &str, as_json: bool) -> Result<
     let point = point(&plan)?;
     let document = plan.document();
     complain_of(document, &point.warnings);
-    let outcome = compute(document, &point, &Draws::default()).map_err(|mistake| {
+    let draws = Draws { family: family(document, &point), ..Draws::default() };
+    let outcome = compute(document, &point, &draws).map_err(|mistake| {
         complain_of(document, &[mistake]);
         Status::Refused
     })?;
@@ -41,6 +43,14 @@ pub(super) fn one_point(common: &Common, wanted: &str, as_json: bool) -> Result<
         return Ok(Status::NotAccurate);
     }
     Ok(Status::Good)
+}
+
+/// The draws of noise that the scan makes at this point.
+fn family(document: &Document, at: &Point) -> u64 {
+    let Some(scan) = document.scan.as_ref().filter(|scan| !scan.same_noise) else { return 0 };
+    let value = |name: &str| document.numbers.iter().find(|number| number.name == name).map(|number| at.values[number.register as usize]);
+    let values: Option<Vec<f64>> = scan.axes.iter().map(|axis| value(&axis.number)).collect();
+    values.and_then(|values| Grid::new(scan).point_of(&values)).unwrap_or(0)
 }
 
 /// The text of the config with other values in place of those of some numbers.
