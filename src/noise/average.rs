@@ -168,8 +168,17 @@ impl<'p> Job<'p> {
         if runs > MOST_RUNS {
             return Err(self.too_many(runs, count > 0));
         }
-        self.settle_cells(&grid, count, until)?;
+        let mut parts = self.settle_cells(&grid, count, until)?;
         let mut total = self.pass(&grid, 0..count)?;
+        // what the first draws promised need not hold for all
+        while self.wants_finer_cells(&total) {
+            match self.new_paths(2 * parts) {
+                Ok(paths) if paths.count() <= MOST_CELLS => self.paths = Some(paths),
+                _ => break,
+            }
+            parts *= 2;
+            total = self.pass(&grid, 0..count)?;
+        }
         let first = total.first.clone();
         loop {
             let error = largest(&total.sample.standard_errors());
@@ -191,9 +200,9 @@ impl<'p> Job<'p> {
 
     /// Chooses how finely the wandering is followed: so that what half the cells would change is below the accuracy, judged by the
     /// first draws.
-    fn settle_cells(&mut self, grid: &Grid, count: u64, until: bool) -> Result<(), Mistake> {
+    fn settle_cells(&mut self, grid: &Grid, count: u64, until: bool) -> Result<u32, Mistake> {
         if self.wandering.is_empty() {
-            return Ok(());
+            return Ok(1);
         }
         let accuracy = self.document.accuracy.last;
         let draws = if until { (0.25 / (accuracy * accuracy)).min(MOST_DRAWS) } else { count as f64 };
@@ -223,7 +232,15 @@ impl<'p> Job<'p> {
                 _ => break,
             }
         }
-        Ok(())
+        Ok(parts)
+    }
+
+    /// Whether the cells of a whole sample leave more than the accuracy.
+    fn wants_finer_cells(&self, total: &Total) -> bool {
+        let Some(paths) = &self.paths else { return false };
+        let largest =
+            total.apart.mean[..total.notes.numbers.min(total.apart.mean.len())].iter().map(|apart| apart.abs()).fold(0.0, f64::max);
+        CELL_FACTOR * largest > self.document.accuracy.last.max(2.0 * total.notes.floor) && paths.count() < MOST_CELLS && total.notes.sound
     }
 
     fn new_paths(&self, parts: u32) -> Result<Paths, Mistake> {

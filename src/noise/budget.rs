@@ -36,5 +36,9 @@ pub fn shares<'p>(document: &'p Document, point: &Point<'p>, draws: &Draws, outc
 /// A final number with its error.
 fn figure(outcome: &Outcome, name: &str) -> Figure {
     let found = outcome.finals.iter().find(|last| last.name == name);
-    found.map_or(Figure { value: f64::NAN, error: f64::NAN }, |last| Figure { value: last.value, error: last.error })
+    found.map_or(Figure { value: f64::NAN, error: f64::NAN, sampling: 0.0 }, |last| Figure {
+        value: last.value,
+        error: last.error,
+        sampling: last.sampling_error.unwrap_or(0.0),
+    })
 }

@@ -52,12 +52,18 @@ pub struct Figure {
     pub value: f64,
     /// Its error figure.
     pub error: f64,
+    /// One standard error where random draws were averaged, else 0.
+    pub sampling: f64,
 }
 
 impl Figure {
-    /// Their difference; errors add.
+    /// Their difference; errors add, standard errors in squares (draws that both share do better).
     fn minus(self, other: Figure) -> Figure {
-        Figure { value: self.value - other.value, error: self.error + other.error }
+        Figure { value: self.value - other.value, error: self.error + other.error, sampling: self.sampling.hypot(other.sampling) }
+    }
+
+    fn share(self, name: &'static str) -> Share {
+        Share { name, value: self.value, error: self.error, sampling_error: (self.sampling > 0.0).then_some(self.sampling) }
     }
 }
 
@@ -70,6 +76,8 @@ pub struct Share {
     pub value: f64,
     /// Its error figure: those of the runs that it is made of, added up.
     pub error: f64,
+    /// One standard error where random draws were averaged.
+    pub sampling_error: Option<f64>,
 }
 
 /// The shares of the causes asked for, the pulse and their interplay, in that order; `run` judges the gate with some causes acting,
@@ -82,13 +90,16 @@ pub fn budget<E>(asked: &[Cause], whole: Figure, mut run: impl FnMut(Acting) -> 
             Cause::Leakage => bare.leakage,
             cause => run(Acting::alone(*cause))?.error.minus(bare.error),
         };
-        shares.push(Share { name: cause.word(), value: figure.value, error: figure.error });
+        shares.push(figure.share(cause.word()));
     }
     let pulse = bare.error.minus(bare.leakage);
-    shares.push(Share { name: "pulse", value: pulse.value, error: pulse.error });
-    let sum: f64 = shares.iter().map(|share| share.value).sum();
-    let error: f64 = shares.iter().map(|share| share.error).sum();
-    shares.push(Share { name: "interplay", value: whole.value - sum, error: whole.error + error });
+    shares.push(pulse.share("pulse"));
+    let sum = Figure {
+        value: shares.iter().map(|share| share.value).sum(),
+        error: shares.iter().map(|share| share.error).sum(),
+        sampling: shares.iter().filter_map(|share| share.sampling_error).fold(0.0, f64::hypot),
+    };
+    shares.push(whole.minus(sum).share("interplay"));
     Ok(shares)
 }
 
@@ -99,7 +110,7 @@ mod tests {
     /// Shares of errors that simply add up leave nothing for interplay; whatever they are, all add up to the whole.
     #[test]
     fn prop_shares_add_up_to_the_whole() {
-        let figure = |value: f64| Figure { value, error: 1e-12 };
+        let figure = |value: f64| Figure { value, error: 1e-12, sampling: 0.0 };
         let run = |acting: Acting| -> Result<Judged, ()> {
             let error = 0.01 + if acting.decay { 0.003 } else { 0.0 } + if acting.noise { 0.0005 } else { 0.0 };
             Ok(Judged { error: figure(error), leakage: figure(0.004) })

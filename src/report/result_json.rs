@@ -79,7 +79,10 @@ pub fn result(document: &Document, point: &Point, outcome: &Outcome) -> Value {
     if let Some(average) = &outcome.average {
         if average.sampling_error.is_some() {
             let of = |f: &crate::outcome::Final| (f.name.clone(), f.sampling_error.map_or(Value::Null, number));
-            put("sampling_errors", Value::Object(outcome.finals.iter().map(of).collect()));
+            let mut errors: Map<String, Value> = outcome.finals.iter().map(of).collect();
+            let shares = outcome.budget.iter().filter_map(|share| share.sampling_error.map(|error| (share.name, error)));
+            errors.extend(shares.map(|(name, error)| (format!("error_budget_{name}"), number(error))));
+            put("sampling_errors", Value::Object(errors));
         }
         put("average", json!({"over": average.words, "runs": average.runs, "draws": average.draws}));
     }

@@ -112,7 +112,9 @@ fn surroundings(outcome: &Outcome) -> String {
     if !outcome.budget.is_empty() {
         text.push_str("  error budget of the gate (they add up to it):\n");
         for share in &outcome.budget {
-            text.push_str(&format!("    {:<9}  {}\n", share.name, with_error(share.value, share.error)));
+            let sampling = share.sampling_error.map_or(String::new(), |error| format!(", sampling error {error:.1e}"));
+            let digits = share.sampling_error.map_or(share.error, |sampling| sampling.max(share.error));
+            text.push_str(&format!("    {:<9}  {}{sampling}\n", share.name, with_errors(share.value, digits, share.error)));
         }
     }
     if let Some(steady) = &outcome.steady {

@@ -349,6 +349,9 @@ impl Finishing<'_> {
         if let Some(words) = &short_of {
             complain(&format!("warning: {words}.\n"));
         }
+        if self.quiet && summary.failed > 0 {
+            complain(&format!("warning: {} of {} points failed; result.json has their reasons.\n", summary.failed, setup.grid.points()));
+        }
         Ok(if summary.failed > 0 {
             Status::FailedPoints
         } else if short_of.is_some() {

@@ -132,7 +132,13 @@ pub enum OpenFault {
 
 /// A share without the dust of its arithmetic: twelve digits.
 fn tidy(share: f64) -> String {
-    short((share * 1e12).round() / 1e12)
+    let rounded = (share * 1e12).round() / 1e12;
+    // six digits would hide by how little it misses
+    if short(rounded) == "1" {
+        rounded.to_string()
+    } else {
+        short(rounded)
+    }
 }
 
 impl OpenFault {
