@@ -544,6 +544,9 @@ fn spectrum_table(text: &str) -> Result<Vec<(f64, f64)>, (usize, String)> {
         }
         rows.push(row);
     }
+    if rows.len() >= 2 && rows.iter().all(|row| row.1 == 0.0) {
+        return Err((line, "every density is 0, so nothing would move; one row at least needs a larger one".to_string()));
+    }
     if rows.len() < 2 {
         return Err((line, "a spectrum needs two rows at least below the headings frequency_kHz,density".to_string()));
     }

@@ -98,7 +98,22 @@ impl<'p> Point<'p> {
             }
         }
         self.warn_of_long_waits(document);
+        self.warn_of_cut_quanta(document);
         Ok(())
+    }
+
+    fn warn_of_cut_quanta(&mut self, document: &Document) {
+        let State::Quanta { modes, .. } = &document.start else { return };
+        for warm in modes {
+            let mean = self.values[warm.mean.register as usize];
+            let next = mean / (mean + 1.0);
+            let left_out = next.powf(warm.levels as f64);
+            if left_out > LEFT_OUT {
+                let enough = (LEFT_OUT.ln() / next.ln()).ceil();
+                let fault = OpenFault::QuantaCut { mean, levels: warm.levels, left_out, enough };
+                self.warnings.push(Mistake::warning(warm.mean.place, Fault::Open(fault)));
+            }
+        }
     }
 
     fn warn_of_long_waits(&mut self, document: &Document) {
@@ -113,6 +128,9 @@ impl<'p> Point<'p> {
         }
     }
 }
+
+/// The share of a thermal distribution beyond the last level that draws a warning.
+const LEFT_OUT: f64 = 1e-3;
 
 /// Every wait, each once however often it is repeated.
 fn collect_waits(steps: &[Step], waits: &mut Vec<(u32, Place)>) {

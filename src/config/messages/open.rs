@@ -124,6 +124,13 @@ pub enum OpenFault {
         accuracy: f64,
         reach: f64,
     },
+    /// A cut mode that leaves out part of its thermal distribution.
+    QuantaCut {
+        mean: f64,
+        levels: usize,
+        left_out: f64,
+        enough: f64,
+    },
     NotSteady {
         reason: String,
         write: String,
@@ -265,6 +272,13 @@ impl OpenFault {
             JumpBeatMoves => say("entries of a jump operator turn apart in this frame, by a carrier that is set anew or swept.")
                 .why("Their beat has no frequency of its own then.")
                 .write("frame: {kind: lab}, or a table of frequencies"),
+            QuantaCut { mean, levels, left_out, enough } => {
+                say(format!("a mode of {levels} levels leaves out {} of a thermal state of {} quanta.", short(*left_out), short(*mean)))
+                    .why(
+                        "The weights of the levels that are there are scaled up to 1, so that fewer quanta are in it than the number says.",
+                    )
+                    .write(format!("levels: {}      (leaves out a thousandth)", short(*enough)))
+            }
             NotSteady { reason, write } => say(format!("there is no steady state to give: {reason}.")).write(write.clone()),
         }
     }
