@@ -14,6 +14,7 @@
 //! hbar = 1, matrices in rad/s, times in s; energies are held over h, in Hz.
 #![deny(unsafe_code)]
 
+pub mod bundle;
 pub mod cli;
 pub mod compare;
 pub mod config;

@@ -25,7 +25,7 @@ use crate::config::tape::{Entry, Formula, Register, Wide};
 use crate::drive::chirp::Chirp;
 use crate::drive::coupling::{coupling, Coupling, CouplingFault};
 use crate::drive::curve::curve;
-use crate::drive::envelope::{Curve, Pieces};
+use crate::drive::envelope::{Curve, Flat, Pieces};
 use crate::drive::moments::{moments, rows_of};
 use crate::drive::segments::{cut, PulseParts};
 use crate::drive::signal::Signal;
@@ -253,6 +253,19 @@ impl Plan {
         self.laid_out(names, Some(values), &[])
     }
 
+    /// Whether moving these numbers moves any of these registers.
+    pub fn moves(&self, names: &[&str], registers: &[Register]) -> bool {
+        let numbers: Vec<u32> = self
+            .document
+            .numbers
+            .iter()
+            .filter(|n| names.contains(&n.name.as_str()))
+            .map(|n| number_of(&self.document, n.register))
+            .collect();
+        let moved = self.document.tape.dependents(&numbers);
+        registers.iter().any(|register| moved.contains(register))
+    }
+
     /// Whether moving these numbers changes the structure (a count of levels or of repeats), so that the file must be read anew.
     pub fn is_structural(&self, names: &[&str]) -> bool {
         let numbers: Vec<u32> = self
@@ -289,6 +302,40 @@ impl<'p> Mover<'p> {
         document.tape.replay(&touched.registers, &point.set, &point.built.energies, &mut point.values);
         point.refresh(document, touched)?;
         Ok(point)
+    }
+
+    /// Moves the numbers as [`at`](Mover::at) does, but replays the registers alone: where no formula follows the levels of a built
+    /// system. Nothing where one of them is not finite; the point then is refused by `at`.
+    pub fn registers_at(&mut self, values: &[f64]) -> Option<&[f64]> {
+        for (number, value) in self.numbers.iter().zip(values) {
+            self.point.set[*number as usize] = Some(*value);
+        }
+        let (document, point, touched) = (self.document, &mut self.point, &self.touched);
+        document.tape.replay(&touched.registers, &point.set, &point.built.energies, &mut point.values);
+        touched.registers.iter().all(|register| point.values[*register as usize].is_finite()).then_some(point.values.as_slice())
+    }
+
+    /// Whether a moved number touches the start or the surroundings.
+    pub fn moves_more_than_pulses(&self) -> bool {
+        self.touched.surroundings || self.touched.start
+    }
+
+    /// Whether [`registers_at`](Mover::registers_at) tells all registers.
+    pub fn has_no_followers(&self) -> bool {
+        self.touched.following.is_empty()
+    }
+
+    /// The same with every envelope held at 1 all through its pulse, so that the terms of its problem hold the sizes of the drives alone;
+    /// nothing where a moved number touches the shape of an envelope, the surroundings or the start.
+    pub fn flattened(mut self) -> Result<Option<Mover<'p>>, Mistake> {
+        if self.touched.curves.contains(&true) || self.touched.surroundings || self.touched.start {
+            return Ok(None);
+        }
+        for curve in &mut self.point.curves {
+            *curve = Arc::new(Flat(curve.clone()));
+        }
+        self.point.refresh(self.document, &self.touched)?;
+        Ok(Some(self))
     }
 }
 

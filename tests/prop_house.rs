@@ -22,6 +22,7 @@ const ROOMS: &[&[&str]] = &[
     &["measure"],
     &["plan"],
     &["outcome"],
+    &["bundle"],
     &["known"],
     &["noise"],
     &["compare", "matrices", "scan", "design"],

@@ -12,6 +12,7 @@ use crate::report::folder::prepare;
 use crate::report::scan_folder::{hold, spaced, ScanFault};
 use crate::scan::bits::Bits;
 use crate::scan::changed::change;
+use crate::scan::lanes::Lanes;
 use crate::scan::order::Order;
 use crate::scan::shelf::{read_all, Shelf};
 use crate::scan::store::{Content, Part, Store};
@@ -78,6 +79,9 @@ fn try_merge(words: &Words) -> Result<Status, Status> {
         }
     }
     let setup = set_up(document)?;
+    // what is computed again at its end is computed as the first part was, if this machine can
+    let lanes = Lanes::from_words(&first.head.lanes).filter(|lanes| lanes.is_here());
+    let setup = setup.with_lanes(lanes.unwrap_or_else(Lanes::chosen));
     let shelf = Shelf::new(&contents, first.head.points);
     if shelf.double > 0 && !words.quiet {
         complain(&format!("{} points are there more than once; one row of each counts.\n", spaced(shelf.double)));

@@ -4,6 +4,7 @@ use clap::Args;
 
 use super::{print, Status};
 use crate::known::KNOWN;
+use crate::propagate::lanes::{trials, Width, LANES_VARIABLE, WIDTHS};
 
 /// Words of the verb.
 #[derive(Args)]
@@ -56,10 +57,39 @@ pub(super) fn selftest(words: &Words) -> Status {
             print(&line);
         }
     }
+    failed += speeds(words.quiet);
     print(&format!("{} of {run} runs good.\n", run - failed));
     if failed > 0 {
         Status::Machine
     } else {
         Status::Good
     }
+}
+
+/// The kernels that carry many points side by side: their speed beside the plain exponential. Gives how many sets of instructions disagree.
+fn speeds(quiet: bool) -> usize {
+    let mut wrong = 0;
+    if !quiet {
+        print(&format!("many points side by side, ns for each slice and point, with {}\n", Width::chosen().word()));
+    }
+    for width in WIDTHS.into_iter().filter(|width| !width.is_here() && !quiet) {
+        print(&format!("  skipped {}: this processor does not have it\n", width.word()));
+    }
+    if let Ok(word) = std::env::var(LANES_VARIABLE) {
+        if Width::from_word(word.trim()) != Some(Width::chosen()) {
+            print(&format!("  {LANES_VARIABLE}={word} is not here, so {} serves\n", Width::chosen().word()));
+        }
+    }
+    for trial in trials() {
+        // all sets of instructions do the same arithmetic but for rounding
+        let good = trial.apart < 1e-12;
+        wrong += usize::from(!good);
+        let speeds: Vec<String> = trial.lanes_ns.iter().map(|(width, ns)| format!("{} {ns:.1}", width.word())).collect();
+        let plain = trial.plain_ns.map_or(String::new(), |ns| format!(", plain {ns:.0}"));
+        if !quiet || !good {
+            let word = if good { "good" } else { "FAILED" };
+            print(&format!("  {word:<6} {:<44} {}{plain}; apart {:.1e}\n", trial.name, speeds.join(", "), trial.apart));
+        }
+    }
+    wrong
 }

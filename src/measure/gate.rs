@@ -122,6 +122,25 @@ impl GateJudge {
         }
     }
 
+    /// The numbers of a propagator on two levels with nothing free. With M cut down to them and M V+ = c_0 - i c.s, the overlap with the target
+    /// turned by a unit quaternion q is 4 |sum q_k c_k|^2; its largest value over q is the larger root of a Gram matrix of two rows.
+    fn pair(&self, u: &Matrix) -> [f64; 4] {
+        let m = |row: usize, column: usize| u[(self.within[row], self.within[column])];
+        let v = |row: usize, column: usize| self.target[(row, column)].conj();
+        let a = |row: usize, column: usize| m(row, 0) * v(column, 0) + m(row, 1) * v(column, 1);
+        let (a00, a01, a10, a11) = (a(0, 0), a(0, 1), a(1, 0), a(1, 1));
+        let i = Complex64::i();
+        let twice = [a00 + a11, i * (a01 + a10), a10 - a01, i * (a00 - a11)];
+        let dot = |f: fn(&Complex64) -> f64, g: fn(&Complex64) -> f64| twice.iter().map(|c| f(c) * g(c)).sum::<f64>();
+        let (rr, ri, ii) = (dot(|c| c.re, |c| c.re), dot(|c| c.re, |c| c.im), dot(|c| c.im, |c| c.im));
+        let best = 0.5 * (rr + ii) + (0.5 * (rr - ii)).hypot(ri);
+        let kept: f64 = [m(0, 0), m(0, 1), m(1, 0), m(1, 1)].iter().map(Complex64::norm_sqr).sum();
+        let error = |overlap: f64| 1.0 - (kept + overlap) / 6.0;
+        let whole = error(twice[0].norm_sqr());
+        let incoherent = error(best).min(whole);
+        [whole, 1.0 - 0.5 * kept, whole - incoherent, incoherent]
+    }
+
     /// Levels of the subspace.
     pub fn within(&self) -> &[usize] {
         &self.within
@@ -142,6 +161,10 @@ impl Last for GateJudge {
 
     fn see(&self, whole: Whole, numbers: &mut Vec<f64>) {
         let figures = match whole {
+            Whole::Propagator(u) if self.within.len() == 2 && self.free.is_empty() => {
+                numbers.extend(self.pair(u));
+                return;
+            }
             Whole::Propagator(u) => self.judge(&Channel::of_propagator(u, &self.within)),
             Whole::Channel(channel) => self.judge(channel),
         };
@@ -154,5 +177,32 @@ impl GateFigures {
     pub fn numbers(&self) -> Vec<f64> {
         let split = self.incoherent.map(|incoherent| [self.error - incoherent, incoherent]);
         [self.error, self.leakage].into_iter().chain(split.into_iter().flatten()).collect()
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// The short way for a propagator of two levels gives what the way of all channels gives.
+    #[test]
+    fn exact_propagators_of_two_levels_go_both_ways() {
+        let mut seed = 0.3f64;
+        let mut next = || {
+            seed = (seed * 997.13 + 0.7).fract();
+            seed - 0.5
+        };
+        for _ in 0..200 {
+            let u = Matrix::from_fn(3, 3, |_, _| Complex64::new(next(), next()));
+            let target = Matrix::from_fn(2, 2, |row, column| if row == column { 0.6.into() } else { Complex64::new(0.0, -0.8) });
+            let judge = GateJudge::of(&[2, 0], target, Vec::new());
+            let mut short = Vec::new();
+            judge.see(Whole::Propagator(&u), &mut short);
+            let long = judge.judge(&Channel::of_propagator(&u, &[2, 0])).numbers();
+            assert_eq!(short.len(), long.len());
+            for (s, l) in short.iter().zip(&long) {
+                assert!((s - l).abs() < 4e-15, "{short:?} {long:?}");
+            }
+        }
     }
 }

@@ -45,6 +45,12 @@ pub fn result(finished: &Finished) -> Map<String, Value> {
     put("reused", json!(finished.reused));
     let (name, reason) = if finished.resolution.is_empty() {
         ("each point by itself", "each point was refined until its own error figure met the accuracy")
+    } else if setup.bundled().is_ok() {
+        (
+            "eight points side by side",
+            "as many steps as corners and points inside need; one group of eight of each block and the extremes were computed with half \
+             as many again too, and blocks that need more were refined point by point",
+        )
     } else {
         (
             "one resolution for all points",

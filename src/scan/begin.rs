@@ -11,9 +11,6 @@ pub const SMALL: u64 = 64;
 /// Points side by side in the arithmetic; tiles are whole multiples of it.
 pub const LANES: u64 = 8;
 
-/// How points are laid side by side, as the head of a store says it.
-pub const ONE_BY_ONE: &str = "points one by one";
-
 /// The head of a store of this part.
 pub fn head(setup: &Setup, fingerprint: &str, part: Part) -> Head {
     let document = setup.document();
@@ -27,7 +24,7 @@ pub fn head(setup: &Setup, fingerprint: &str, part: Part) -> Head {
     Head {
         program: env!("CARGO_PKG_VERSION").to_string(),
         fingerprint: fingerprint.to_string(),
-        lanes: ONE_BY_ONE.to_string(),
+        lanes: setup.lanes().words(),
         points: setup.grid.points(),
         part,
         tile: order(setup, part).tile,
@@ -44,9 +41,9 @@ pub fn head(setup: &Setup, fingerprint: &str, part: Part) -> Head {
 const SCATTERED: u64 = 8;
 
 /// Points that are solved by themselves first: corners of the grid, its middle, and some at random. None where all points are
-/// computed at two resolutions in any case, or are averages over noise.
+/// computed at two resolutions in any case, lie side by side with steps of their own, or are averages over noise.
 pub fn probes(setup: &Setup) -> Vec<u64> {
-    if order(setup, Part::WHOLE).tile == 1 || !setup.document().noise.is_empty() {
+    if order(setup, Part::WHOLE).tile == 1 || setup.bundled().is_ok() || !setup.document().noise.is_empty() {
         return Vec::new();
     }
     let points = setup.grid.points();

@@ -68,7 +68,8 @@ pub fn change(document: &Document, old: &Head, new: &Head) -> Option<Change> {
     if old.program != new.program {
         return Some(Change::Program { old: old.program.clone(), new: new.program.clone() });
     }
-    if old.lanes != new.lanes {
+    // parts may be computed on unlike machines; what one part stores is of one kind
+    if old.lanes != new.lanes && old.part == new.part {
         return Some(Change::Lanes { old: old.lanes.clone(), new: new.lanes.clone() });
     }
     if old.config.1 != new.config.1 {

@@ -4,6 +4,7 @@
 //! of each tile is computed at that resolution and at the next finer one. Where the change is larger than the accuracy that was
 //! asked for, all points of that tile are solved by themselves; else they are computed once. So what each point becomes depends on
 //! its tile and on the probes, not on threads, parts or starts; how many are handed out at once depends on the clock.
+//! Points that lie side by side (`bundled.rs`) have steps of their own in place of probes, and blocks in place of tiles.
 //! The calling thread alone writes, and watches for the end of the time and for being asked to stop.
 
 use std::io;
@@ -13,12 +14,14 @@ use std::sync::{Mutex, PoisonError};
 use std::time::{Duration, Instant};
 
 use super::bits::Bits;
+use super::bundled::Bundled;
 use super::evaluate::Evaluator;
 use super::order::Order;
 use super::row::{Checked, Found, Rank, Row};
 use super::setup::Setup;
 use super::shelf::Shelf;
-use super::store::Store;
+pub use super::store::Keep;
+use super::store::{Part, Store};
 use crate::config::run::OnFailedPoint;
 use crate::propagate::{Recipe, Resolved};
 
@@ -96,7 +99,7 @@ pub struct Engine<'a> {
     /// What was stored when it began, here and elsewhere.
     pub shelf: &'a Shelf,
     /// Where rows go.
-    pub store: &'a mut Store,
+    pub store: &'a mut dyn Keep,
     /// How it is run.
     pub running: Running<'a>,
 }
@@ -146,35 +149,55 @@ impl Engine<'_> {
     }
 
     fn stages(&mut self, watch: &mut Watch) -> Ended {
+        let setup = self.setup;
+        if let Ok(bundled) = setup.bundled() {
+            return self.side_by_side(watch, bundled);
+        }
         let (order, probes) = (self.order, self.probes);
         if order.tile == 1 || probes.is_empty() {
             let done = watch.done.clone();
             let mut left = order.pending(&done);
-            return self.stage(watch, &mut left, &|evaluator, point| evaluator.alone(point));
+            return self.stage(watch, &mut left, &each(|evaluator, point| evaluator.alone(point)));
         }
         let wanted: Vec<u64> = probes.iter().copied().filter(|point| watch.probed.iter().all(|(known, _)| known != point)).collect();
         // a probe that failed is stored as such and says nothing
         let mut wanted = wanted.into_iter().filter(|point| !self.shelf.alone.has(*point));
-        let ended = self.stage(watch, &mut wanted, &|evaluator, point| evaluator.alone(point));
+        let ended = self.stage(watch, &mut wanted, &each(|evaluator, point| evaluator.alone(point)));
         if !matches!(ended, Ended::Complete) {
             return ended;
         }
         let recipe = recipe_of(&watch.probed);
         let shelf = self.shelf;
         let mut checks = order.check_points(probes).filter(|point| !shelf.is_settled(*point));
-        let ended = self.stage(watch, &mut checks, &|evaluator, point| evaluator.checked(point, &recipe));
+        let ended = self.stage(watch, &mut checks, &each(|evaluator, point| evaluator.checked(point, &recipe)));
         if !matches!(ended, Ended::Complete) {
             return ended;
         }
         let (done, alone) = (watch.done.clone(), watch.alone.clone());
         let rough = |point: u64| alone.has(order.check_point(point / order.tile, probes));
         let mut left = order.pending(&done);
-        self.stage(watch, &mut left, &|evaluator, point| {
-            if rough(point) {
-                evaluator.checked(point, &recipe)
-            } else {
-                evaluator.plain(point, &recipe)
-            }
+        let how = each(|evaluator, point| if rough(point) { evaluator.checked(point, &recipe) } else { evaluator.plain(point, &recipe) });
+        self.stage(watch, &mut left, &how)
+    }
+
+    /// The stages of points side by side: one group of each block at two resolutions, then the others once. A block whose group was
+    /// not accurate enough is computed twice throughout. The group may belong to another part; then it is computed here too, and stored there.
+    fn side_by_side(&mut self, watch: &mut Watch, bundled: &Bundled) -> Ended {
+        let (order, shelf) = (self.order, self.shelf);
+        let mut blocks: Vec<u64> = order.pending(&shelf.done).map(|point| bundled.block_of(point)).collect();
+        blocks.dedup();
+        let mut checks = blocks.iter().flat_map(|block| bundled.check_points(*block)).filter(|point| !shelf.is_settled(*point));
+        let ended = self.stage(watch, &mut checks, &|evaluator, points| evaluator.together(points, true));
+        if !matches!(ended, Ended::Complete) {
+            return ended;
+        }
+        let (done, alone) = (watch.done.clone(), watch.alone.clone());
+        let rough = |point: u64| bundled.check_points(bundled.block_of(point)).any(|check| alone.has(check));
+        let mut left = order.pending(&done);
+        self.stage(watch, &mut left, &|evaluator, points| {
+            let blocks = points.chunk_by(|a, b| bundled.block_of(*a) == bundled.block_of(*b));
+            let rows = blocks.map(|some| evaluator.together(some, rough(some[0])));
+            rows.collect::<Vec<Vec<Row>>>().concat()
         })
     }
 
@@ -236,14 +259,14 @@ impl Engine<'_> {
                 }
             }
         }
+        for row in rows.iter().filter(|row| row.rank() == Rank::Alone) {
+            watch.alone.insert(row.point);
+        }
         // probes of other parts are computed, but stored there
         rows.retain(|row| self.order.part_of(row.point) == self.order.part.number);
         self.store.append(&rows)?;
         for row in &rows {
             watch.progress.computed += u64::from(watch.done.insert(row.point));
-            if row.rank() == Rank::Alone {
-                watch.alone.insert(row.point);
-            }
             if matches!(row.found, Found::Failed(_)) {
                 watch.progress.failed += 1;
                 if self.running.on_failed_point == OnFailedPoint::Stop && matches!(ended, Ended::Complete) {
@@ -263,7 +286,10 @@ impl Engine<'_> {
 pub fn check_again(setup: &Setup, probed: &[(u64, Resolved)], points: &[u64], store: &mut Store) -> io::Result<()> {
     let recipe = recipe_of(probed);
     let mut evaluator = Evaluator::new(setup, 1);
-    let rows: Vec<Row> = points.iter().map(|point| evaluator.checked(*point, &recipe)).collect();
+    let rows = match setup.bundled() {
+        Ok(_) => evaluator.together(points, true),
+        Err(_) => points.iter().map(|point| evaluator.checked(*point, &recipe)).collect(),
+    };
     store.append(&rows)?;
     store.sync()
 }
@@ -278,8 +304,45 @@ pub fn recipe_of(probed: &[(u64, Resolved)]) -> Recipe {
     recipe
 }
 
-/// How the row of a point is made.
-type How<'a> = dyn Fn(&mut Evaluator, u64) -> Row + Sync + 'a;
+/// How the rows of some points are made.
+type How<'a> = dyn Fn(&mut Evaluator, &[u64]) -> Vec<Row> + Sync + 'a;
+
+/// Points one after the other.
+fn each<'a>(one: impl Fn(&mut Evaluator, u64) -> Row + Sync + 'a) -> impl Fn(&mut Evaluator, &[u64]) -> Vec<Row> + Sync + 'a {
+    move |evaluator, points| points.iter().map(|point| one(evaluator, *point)).collect()
+}
+
+/// Rows in memory.
+struct Memory(Vec<Row>);
+
+impl Keep for Memory {
+    fn append(&mut self, rows: &[Row]) -> io::Result<()> {
+        self.0.extend_from_slice(rows);
+        Ok(())
+    }
+
+    fn sync(&mut self) -> io::Result<()> {
+        Ok(())
+    }
+}
+
+/// All rows of a scan in the order of its points, in memory: for who needs no store. Of a point computed twice both are there.
+pub fn rows(setup: &Setup, threads: usize) -> io::Result<Vec<Row>> {
+    let shelf = Shelf::new(&[], setup.grid.points());
+    let probes = super::begin::probes(setup);
+    let mut memory = Memory(Vec::new());
+    let running = Running {
+        threads,
+        save_every: Duration::from_secs(3600),
+        until: None,
+        stop: &AtomicBool::new(false),
+        on_failed_point: OnFailedPoint::Continue,
+    };
+    let order = super::begin::order(setup, Part::WHOLE);
+    Engine { setup, order, probes: &probes, probed: Vec::new(), shelf: &shelf, store: &mut memory, running }.run(&mut |_| {});
+    memory.0.sort_by_key(|row| row.point);
+    Ok(memory.0)
+}
 
 /// One thread: takes points, computes them, hands the rows over.
 fn work(
@@ -292,7 +355,9 @@ fn work(
     // where there are fewer points than threads, those left over share the runs of noise
     let each = (threads as u64 / setup.grid.points().max(1)).max(1) as usize;
     let mut evaluator = Evaluator::new(setup, each);
-    let mut chunk = 1usize;
+    // points side by side go by groups
+    let least = if setup.bundled().is_ok() { 64 } else { 1 };
+    let mut chunk = least;
     let most = (MOST_CHUNK / threads).clamp(64, MOST_CHUNK).min(setup.rows_at_once());
     loop {
         let points: Vec<u64> = {
@@ -304,14 +369,14 @@ fn work(
         }
         let clock = Instant::now();
         let mut rows = Vec::with_capacity(points.len());
-        for point in points {
+        for some in points.chunks(least) {
             if halt.load(Ordering::Relaxed) {
                 break;
             }
-            rows.push(how(&mut evaluator, point));
+            rows.extend(how(&mut evaluator, some));
         }
         let each_s = clock.elapsed().as_secs_f64() / rows.len().max(1) as f64;
-        chunk = ((CHUNK_S / each_s.max(1e-9)) as usize).clamp(1, most).min(4 * chunk);
+        chunk = ((CHUNK_S / each_s.max(1e-9)) as usize).clamp(least, most.max(least)).min(4 * chunk) / least * least;
         if send.send(rows).is_err() {
             return;
         }

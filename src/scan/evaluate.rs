@@ -4,8 +4,10 @@
 //! is that of all points, or once at that one. What it becomes depends on the config, on the recipe, and on which of the three is
 //! done; never on the points before it.
 
+use super::bundled::{Bundled, GROUP};
 use super::row::{Checked, Found, Row, Trace};
 use super::setup::Setup;
+use crate::bundle::Worker;
 use crate::config::messages::{one_line, Mistake};
 use crate::noise::{compute, is_average, Draws};
 use crate::outcome::{compute_from, compute_once, final_columns, Final, Once, Outcome};
@@ -20,6 +22,8 @@ pub struct Evaluator<'s> {
     threads: usize,
     /// Those of the structures met last, the latest first.
     structures: Vec<Structure<'s>>,
+    /// For points side by side.
+    together: Option<(&'s Bundled, Worker<'s>)>,
 }
 
 /// A structure that the points run through.
@@ -38,7 +42,21 @@ const MOST_STRUCTURES: usize = 8;
 impl<'s> Evaluator<'s> {
     /// For the points of a scan; `threads` share the runs of one point.
     pub fn new(setup: &'s Setup, threads: usize) -> Evaluator<'s> {
-        Evaluator { setup, names: setup.names(), threads, structures: Vec::new() }
+        let together = setup.bundled().ok().and_then(|bundled| Some((bundled, bundled.worker(setup).ok()?)));
+        Evaluator { setup, names: setup.names(), threads, structures: Vec::new(), together }
+    }
+
+    /// Computes points side by side, at two resolutions or one; those that must be, by themselves.
+    pub fn together(&mut self, points: &[u64], finer: bool) -> Vec<Row> {
+        let mut rows = Vec::with_capacity(points.len());
+        for some in points.chunk_by(|a, b| a / GROUP == b / GROUP) {
+            let found = match &mut self.together {
+                Some((bundled, worker)) => bundled.rows(self.setup, worker, some, finer),
+                None => vec![None; some.len()],
+            };
+            rows.extend(some.iter().zip(found).map(|(point, row)| row.unwrap_or_else(|| self.alone(*point))));
+        }
+        rows
     }
 
     /// Solves a point by itself.

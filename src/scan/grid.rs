@@ -105,6 +105,15 @@ impl Grid {
         self.axes.iter().zip(&self.group).map(|(axis, group)| axis.shown(along[*group])).collect()
     }
 
+    /// Smallest and largest value of every axis, SI.
+    pub fn bounds(&self) -> Vec<(f64, f64)> {
+        let ends = |(axis, group): (&Axis, &usize)| {
+            let values = (0..self.counts[*group]).map(|k| axis.value(k));
+            values.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), value| (low.min(value), high.max(value)))
+        };
+        self.axes.iter().zip(&self.group).map(ends).collect()
+    }
+
     /// The corners and the middle: where the numbers are most extreme, and where they are not. At most 65.
     pub fn corners(&self) -> Vec<u64> {
         let bent: Vec<usize> = (0..self.counts.len()).filter(|k| self.counts[*k] > 1).take(6).collect();

@@ -8,6 +8,8 @@
 //! |---|---|
 //! | `grid.rs` | which values the axes have at a point |
 //! | `setup.rs` | columns of the table; a plan for every structure |
+//! | `bundled.rs` | eight points at a time, where they fit |
+//! | `lanes.rs` | with which instructions, as asked for or as begun |
 //! | `evaluate.rs` | one point computed |
 //! | `row.rs` | a computed point and its bytes |
 //! | `store.rs` | the file of one part: frames, damage, locks |
@@ -24,12 +26,14 @@
 
 pub mod begin;
 pub mod bits;
+pub mod bundled;
 pub mod changed;
 pub mod cluster;
 pub mod engine;
 pub mod evaluate;
 pub mod follow;
 pub mod grid;
+pub mod lanes;
 pub mod limit;
 pub mod order;
 pub mod row;

@@ -5,7 +5,9 @@
 
 use std::sync::OnceLock;
 
+use super::bundled::Bundled;
 use super::grid::Grid;
+use super::lanes::Lanes;
 use super::row::Width;
 use crate::config::document::{read_moved, Document};
 use crate::config::messages::{one_line, Fault, Mistake};
@@ -44,6 +46,12 @@ pub struct Setup {
     structural: Vec<usize>,
     /// One plan for each structure, made when it is first wanted.
     groups: Vec<OnceLock<Result<Plan, String>>>,
+    /// The final quantities of a point, in the order in which they are computed.
+    finals: Vec<FinalColumn>,
+    /// How points are laid side by side, where they can be.
+    lanes: Lanes,
+    /// Points side by side, or why not; laid out when first wanted.
+    bundled: OnceLock<Result<Bundled, String>>,
 }
 
 /// Most structures that one scan may run through.
@@ -58,7 +66,18 @@ impl Setup {
         let grid = Grid::new(&scan);
         let plan = Plan::new(trimmed(document, scan.keep));
         let structural: Vec<usize> = (0..scan.axes.len()).filter(|k| plan.is_structural(&[scan.axes[*k].number.as_str()])).collect();
-        let mut setup = Setup { plan, scan, grid, columns: Vec::new(), traced: Vec::new(), structural, groups: Vec::new() };
+        let mut setup = Setup {
+            plan,
+            scan,
+            grid,
+            columns: Vec::new(),
+            traced: Vec::new(),
+            structural,
+            groups: Vec::new(),
+            finals: Vec::new(),
+            lanes: Lanes::chosen(),
+            bundled: OnceLock::new(),
+        };
         let groups = setup.structural_groups().iter().map(|group| setup.grid.counts()[*group] as f64).product::<f64>();
         if groups > MOST_GROUPS as f64 {
             return Err(Mistake::error(setup.scan.place, Fault::TooManyPoints { points: groups, limit: MOST_GROUPS as f64 }));
@@ -66,6 +85,7 @@ impl Setup {
         setup.groups = (0..groups as u64).map(|_| OnceLock::new()).collect();
         let (finals, traced) = setup.judge_columns()?;
         setup.traced = traced;
+        setup.finals.clone_from(&finals);
         setup.columns = setup.table(finals)?;
         Ok(setup)
     }
@@ -73,6 +93,38 @@ impl Setup {
     /// The document, with what is recorded cut down to what the scan keeps.
     pub fn document(&self) -> &Document {
         self.plan.document()
+    }
+
+    /// The plan of the numbers as written.
+    pub fn plan(&self) -> &Plan {
+        &self.plan
+    }
+
+    /// The points side by side; the reason, where they are computed one by one.
+    pub fn bundled(&self) -> Result<&Bundled, &str> {
+        let made = self.bundled.get_or_init(|| {
+            let Lanes::Together(width) = self.lanes else { return Err("one by one was asked for".to_string()) };
+            if self.structural.is_empty() {
+                Bundled::new(self, &self.finals, width)
+            } else {
+                Err("an axis changes the structure".to_string())
+            }
+        });
+        made.as_ref().map_err(String::as_str)
+    }
+
+    /// The same, its points laid side by side in this way where they can be.
+    pub fn with_lanes(self, lanes: Lanes) -> Setup {
+        Setup { lanes, bundled: OnceLock::new(), ..self }
+    }
+
+    /// How points are laid side by side.
+    pub fn lanes(&self) -> Lanes {
+        if self.bundled().is_ok() {
+            self.lanes
+        } else {
+            Lanes::OneByOne
+        }
     }
 
     /// How many numbers a row of the store has.

@@ -263,6 +263,16 @@ pub fn inspect(path: &Path) -> Result<Option<Content>, StoreFault> {
     inspect_with(&mut walker, path).map_err(io)?.transpose()
 }
 
+/// The head of a file alone, where there is one that can be read.
+pub fn head_of(path: &Path) -> Option<Head> {
+    let file = File::open(path).ok()?;
+    let length = file.metadata().ok()?.len();
+    let mut walker = Walker { file: BufReader::with_capacity(1 << 16, file), length };
+    let place = walker.next_frame(0).ok()??;
+    let At::Frame(content) = walker.at(place).ok()? else { return None };
+    Head::from_json(&serde_json::from_slice(&content).ok()?)
+}
+
 fn inspect_with(walker: &mut Walker, path: &Path) -> io::Result<Option<Result<Content, StoreFault>>> {
     let mut damaged = Vec::new();
     let mut hurt = |from: u64, to: u64| damaged.push(Damage { path: path.to_path_buf(), from, to });
@@ -408,9 +418,19 @@ impl Store {
     pub fn path(&self) -> &Path {
         &self.path
     }
+}
 
+/// Where computed rows go.
+pub trait Keep {
     /// Appends rows as one frame. Where that fails, nothing of it stays.
-    pub fn append(&mut self, rows: &[Row]) -> io::Result<()> {
+    fn append(&mut self, rows: &[Row]) -> io::Result<()>;
+
+    /// Waits until everything appended is on the disk.
+    fn sync(&mut self) -> io::Result<()>;
+}
+
+impl Keep for Store {
+    fn append(&mut self, rows: &[Row]) -> io::Result<()> {
         if rows.is_empty() {
             return Ok(());
         }
@@ -430,8 +450,7 @@ impl Store {
         Ok(())
     }
 
-    /// Waits until everything appended is on the disk.
-    pub fn sync(&mut self) -> io::Result<()> {
+    fn sync(&mut self) -> io::Result<()> {
         if self.synced < self.length {
             self.file.sync_data()?;
             self.synced = self.length;

@@ -8,6 +8,7 @@ use super::super::{print, Status};
 use crate::config::run::Run;
 use crate::report::scan_folder::spaced;
 use crate::report::scan_text::{self, duration};
+use crate::scan::bundled::GROUP;
 use crate::scan::evaluate::Evaluator;
 use crate::scan::limit;
 use crate::scan::row::Found;
@@ -23,23 +24,38 @@ pub(super) fn dry_run(setup: &Setup, run: &Run, as_json: bool) -> Status {
     let mut evaluator = Evaluator::new(setup, 1);
     let (mut sampled, mut failed, mut bytes) = (0u64, 0u64, 0usize);
     let mut first_failure = None;
-    let clock = Instant::now();
     // spread over the whole grid: steps by the golden section meet no axis in its own rhythm
     let count = points.min(MOST);
+    if setup.bundled().is_ok() {
+        // laid out before the clock is asked
+        evaluator.together(&[0], false);
+    }
+    let clock = Instant::now();
     let stride = ((points as f64 * 0.618_033_988_75) as u64).max(1);
     for k in 0..count {
         if sampled >= 3 && clock.elapsed() > LONGEST {
             break;
         }
         let point = if points <= MOST { k } else { ((u128::from(k) * u128::from(stride)) % u128::from(points)) as u64 };
-        let row = evaluator.alone(point);
-        let mut form = Vec::new();
-        row.write(setup.width(), &mut form);
-        bytes += form.len();
-        sampled += 1;
-        if let Found::Failed(reason) = row.found {
-            failed += 1;
-            first_failure.get_or_insert((point, reason));
+        // points that lie side by side cost what they cost together
+        let rows = if setup.bundled().is_ok() {
+            let first = point / GROUP * GROUP;
+            if points <= MOST && point != first {
+                continue;
+            }
+            evaluator.together(&(first..(first + GROUP).min(points)).collect::<Vec<u64>>(), false)
+        } else {
+            vec![evaluator.alone(point)]
+        };
+        for row in rows {
+            let mut form = Vec::new();
+            row.write(setup.width(), &mut form);
+            bytes += form.len();
+            sampled += 1;
+            if let Found::Failed(reason) = row.found {
+                failed += 1;
+                first_failure.get_or_insert((row.point, reason));
+            }
         }
     }
     let each_s = clock.elapsed().as_secs_f64() / sampled.max(1) as f64;

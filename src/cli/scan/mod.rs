@@ -23,10 +23,11 @@ use crate::report::scan_folder::{spaced, tidy, Opened, Opening, ScanFault, ScanF
 use crate::report::{scan_files, scan_json, scan_text};
 use crate::scan::begin::{head, order};
 use crate::scan::engine::{check_again, recipe_of, Ended, Engine, Progress, Running};
+use crate::scan::lanes::Lanes;
 use crate::scan::limit;
 use crate::scan::setup::Setup;
 use crate::scan::shelf::Shelf;
-use crate::scan::store::{Content, Part, Store};
+use crate::scan::store::{head_of, Content, Part, Store};
 use crate::scan::summary::{cuts, region, Summary};
 
 /// Words of the verb.
@@ -54,6 +55,9 @@ pub(super) struct Words {
     /// Threads, in place of run / threads
     #[arg(long, value_name = "COUNT")]
     threads: Option<usize>,
+    /// Doubles side by side in the arithmetic, in place of the most there are: 1, 4, 8, a name (portable, avx2, avx512), or none
+    #[arg(long, value_name = "WIDTH")]
+    lanes: Option<String>,
     /// Mend a damaged store: the points that cannot be read are computed again
     #[arg(long)]
     repair: bool,
@@ -72,7 +76,10 @@ fn try_scan(words: &Words) -> Result<Status, Status> {
     }
     let part = words.part.as_deref().map_or(Ok(Part::WHOLE), read_part)?;
     let document = read_config(&words.common)?;
-    let setup = set_up(document)?;
+    let mut setup = set_up(document)?;
+    if let Some(word) = &words.lanes {
+        setup = setup.with_lanes(read_lanes(word)?);
+    }
     let run = run_of(&setup, words.threads);
     if let Some(scheduler) = &words.scheduler {
         return queue::submit(&setup, words, scheduler);
@@ -81,6 +88,9 @@ fn try_scan(words: &Words) -> Result<Status, Status> {
         return Ok(dry_run::dry_run(&setup, &run, words.results.json));
     }
     let folder = words.results.folder.clone().unwrap_or_else(|| default_folder(setup.document()));
+    if words.lanes.is_none() && !words.results.replace {
+        setup = as_begun(setup, &folder, part)?;
+    }
     let head = head(&setup, &fingerprint(setup.document()), part);
     let opening = Opening {
         folder: &folder,
@@ -123,6 +133,42 @@ fn read_part(text: &str) -> Result<Part, Status> {
         complain(&format!("error: --part {text} is not one of so many parts.\n  Write: --part 3/24      (the third of 24)\n"));
         Status::Refused
     })
+}
+
+fn read_lanes(word: &str) -> Result<Lanes, Status> {
+    let lanes = Lanes::from_word(word).ok_or_else(|| {
+        complain(&format!(
+            "error: --lanes {word} is no width; known: 1 or portable, 4 or avx2, 8 or avx512, none (points one by one).\n  Write: --lanes {}\n",
+            Lanes::widest_word()
+        ));
+        Status::Refused
+    })?;
+    if lanes.is_here() {
+        return Ok(lanes);
+    }
+    complain(&format!(
+        "error: --lanes {word} asks for instructions that this processor does not have; it has {}.\n  Write: --lanes {}\n",
+        Lanes::here().join(", "),
+        Lanes::widest_word()
+    ));
+    Err(Status::Refused)
+}
+
+/// A part goes on with the width that its store was begun with.
+fn as_begun(setup: Setup, folder: &Path, part: Part) -> Result<Setup, Status> {
+    let Some(begun) = head_of(&folder.join(part.file_name(0))).and_then(|head| Lanes::from_words(&head.lanes)) else {
+        return Ok(setup);
+    };
+    if begun.is_here() {
+        return Ok(setup.with_lanes(begun));
+    }
+    complain(&format!(
+        "error: {} was begun with {}; this processor does not have these instructions, and others round otherwise.\n  \
+         Write: --folder OTHER      (begins anew there)\n  Write: --replace           (if the stored points may go)\n",
+        folder.display(),
+        begun.words()
+    ));
+    Err(Status::Refused)
 }
 
 /// Complains of a folder.
@@ -328,7 +374,7 @@ impl Finishing<'_> {
             computed: self.computed,
             reused: self.reused,
             threads: self.threads,
-            resolution: recipe_of(&probed).words(),
+            resolution: setup.bundled().map_or_else(|_| recipe_of(&probed).words(), |bundled| vec![bundled.words()]),
             warnings: scan_json::warnings(setup),
             seconds: self.began.elapsed().as_secs_f64(),
         };

@@ -17,13 +17,14 @@
 //! | `formula` | ordinary arithmetic in t |
 //! | `samples` | reads a list, then one of `held`, `linear`, `band_limited` |
 //!
-//! `parameters` holds what a builder reads and refuses, `lift` the rule of a lifted edge.
+//! `parameters` holds what a builder reads and refuses, `lift` the rule of a lifted edge, `flat` a curve with its shape put aside.
 
 mod band_limited;
 mod blackman;
 mod cosine_edges;
 mod error_function_edges;
 mod exponential_edges;
+mod flat;
 mod formula;
 mod gaussian;
 mod held;
@@ -45,6 +46,7 @@ mod trapezoid;
 use std::fmt::Debug;
 use std::sync::Arc;
 
+pub use flat::Flat;
 pub use formula::FormulaCurve;
 pub use parameters::{Between, Edge, Parameters, ShapeFault};
 

@@ -4,9 +4,12 @@
 //! Leaves: the columns at the end, phases included. A lane does not depend on its neighbours but for the length of the series,
 //! which goes by the largest of the eight; fixed groups of points therefore give the same bits however they are handed out.
 
+use std::sync::Arc;
+
+use super::generator::Recipe;
 use super::lane::Eight;
-use super::moments::Steps;
-use super::steps::Shared;
+use super::linear::{Linear, Room, PACK};
+use super::stretch::{Stretch, Summed, Timed};
 use super::three_levels::{Column, Nine, ThreeLevels};
 use super::two_levels::TwoLevels;
 use super::width::Width;
@@ -17,15 +20,6 @@ const ROOM: f64 = 1.2;
 /// The Hermitian matrix of each of eight points: its diagonal, then real and imaginary part of (j, k), j < k, row after row.
 pub type Packed = Vec<Eight>;
 
-/// A stretch of the timeline: which channels act, and its steps.
-#[derive(Debug, Clone)]
-pub struct Stretch {
-    /// Which of the C_k, in the order of the weights.
-    pub channels: Vec<usize>,
-    /// Steps.
-    pub steps: Steps,
-}
-
 /// A and the C_k of eight points.
 #[derive(Debug, Clone)]
 pub struct Group {
@@ -35,11 +29,18 @@ pub struct Group {
     pub statics: Packed,
     /// The C_k, rad/s.
     pub channels: Vec<Packed>,
+    /// How numbers are carried where there are more than three levels, or where they are density matrices.
+    pub recipe: Option<Arc<Recipe>>,
 }
 
-/// Whether there is a kernel for so many levels.
-pub fn has_kernel(dim: usize) -> bool {
-    dim == 2 || dim == 3
+/// Most levels of states that are carried side by side.
+const MOST_LEVELS: usize = 24;
+/// Most levels of density matrices.
+const MOST_LEVELS_OPEN: usize = 5;
+
+/// Whether there is a kernel for so many levels, of states or of density matrices.
+pub fn has_kernel(dim: usize, density: bool) -> bool {
+    dim >= 2 && dim <= if density { MOST_LEVELS_OPEN } else { MOST_LEVELS }
 }
 
 /// Where entry (j, k), j < k, starts in a packed matrix.
@@ -48,18 +49,30 @@ pub fn place_of(dim: usize, j: usize, k: usize) -> usize {
 }
 
 impl Group {
-    /// Carries columns (real and imaginary part of each amplitude) through the stretches.
+    /// Carries columns (real and imaginary part of each amplitude, or packed density matrices) through the stretches.
     pub fn carry(&self, width: Width, stretches: &[Stretch], columns: &mut [Vec<Eight>]) {
-        match self.dim {
-            2 => self.two(width, stretches, columns),
-            3 => self.three(width, stretches, columns),
-            _ => {}
+        self.through(width, stretches, columns);
+    }
+
+    /// The same through stretches of which every point has its own.
+    pub fn carry_apart(&self, width: Width, stretches: &[Summed], columns: &mut [Vec<Eight>]) {
+        self.through(width, stretches, columns);
+    }
+
+    fn through(&self, width: Width, stretches: &[impl Timed], columns: &mut [Vec<Eight>]) {
+        match (&self.recipe, self.dim) {
+            (Some(recipe), _) => self.many(recipe, width, stretches, columns),
+            (None, 2) => self.two(width, stretches, columns),
+            (None, 3) => self.three(width, stretches, columns),
+            (None, _) => self.many(&Recipe::of_states(self.dim), width, stretches, columns),
         }
-        self.turn(stretches, columns);
+        if !self.recipe.as_ref().is_some_and(|recipe| recipe.is_density()) {
+            self.turn(stretches, columns);
+        }
     }
 
     /// Largest Frobenius norm among the eight points of a packed matrix without its trace.
-    fn size(&self, packed: &Packed) -> f64 {
+    pub(super) fn size(&self, packed: &Packed) -> f64 {
         let mut largest = 0.0f64;
         for lane in 0..8 {
             let mean = packed[..self.dim].iter().map(|d| d.0[lane]).sum::<f64>() / self.dim as f64;
@@ -71,12 +84,12 @@ impl Group {
     }
 
     /// A bound of the Frobenius norm of the exponent in any step of a stretch.
-    fn largest(&self, stretch: &Stretch, static_size: f64, sizes: &[f64]) -> f64 {
-        let driven: f64 = stretch.channels.iter().zip(&stretch.steps.largest_s).map(|(channel, weight)| weight * sizes[*channel]).sum();
-        (static_size * stretch.steps.longest_s + driven) * if stretch.steps.bare { 1.0 } else { ROOM }
+    fn largest(&self, stretch: &impl Timed, static_size: f64, sizes: &[f64]) -> f64 {
+        let driven: f64 = stretch.channels().iter().zip(stretch.largest_s()).map(|(channel, weight)| weight * sizes[*channel]).sum();
+        (static_size * stretch.longest_s() + driven) * if stretch.is_bare() { 1.0 } else { ROOM }
     }
 
-    fn two(&self, width: Width, stretches: &[Stretch], columns: &mut [Vec<Eight>]) {
+    fn two(&self, width: Width, stretches: &[impl Timed], columns: &mut [Vec<Eight>]) {
         // H less half its trace is w.sigma/2
         let vector = |p: &Packed| {
             let z = Eight(std::array::from_fn(|l| p[0].0[l] - p[1].0[l]));
@@ -93,16 +106,16 @@ impl Group {
         let mut acting = Vec::new();
         for stretch in stretches {
             acting.clear();
-            acting.extend(stretch.channels.iter().map(|k| channels[*k]));
+            acting.extend(stretch.channels().iter().map(|k| channels[*k]));
             // |W/2|^2 is half the square of the Frobenius norm
             let largest = 0.5 * self.largest(stretch, static_size, &sizes).powi(2);
             let flat = still(&statics) && acting.iter().all(still);
-            let steps = shared(stretch);
+            let steps = stretch.weights();
             turned = width.run(TwoLevels {
                 statics: &statics,
                 channels: &acting,
                 steps,
-                bare: stretch.steps.bare,
+                bare: stretch.is_bare(),
                 flat,
                 largest,
                 start: &turned,
@@ -122,7 +135,7 @@ impl Group {
         }
     }
 
-    fn three(&self, width: Width, stretches: &[Stretch], columns: &mut [Vec<Eight>]) {
+    fn three(&self, width: Width, stretches: &[impl Timed], columns: &mut [Vec<Eight>]) {
         // packed are (0, 1), (0, 2), (1, 2); the kernel wants (0, 1), (1, 2), (0, 2), and no trace
         let without_trace = |p: &Packed| -> Nine {
             let mean = Eight(std::array::from_fn(|l| (p[0].0[l] + p[1].0[l] + p[2].0[l]) / 3.0));
@@ -139,11 +152,11 @@ impl Group {
         let mut acting = Vec::new();
         for stretch in stretches {
             acting.clear();
-            acting.extend(stretch.channels.iter().map(|k| channels[*k]));
+            acting.extend(stretch.channels().iter().map(|k| channels[*k]));
             let largest = self.largest(stretch, static_size, &sizes);
             let ladder = none(&statics[3..]) && acting.iter().all(|c| none(&c[..3]) && none(&c[7..]));
-            let steps = shared(stretch);
-            let bare = stretch.steps.bare;
+            let steps = stretch.weights();
+            let bare = stretch.is_bare();
             width.run(ThreeLevels { statics: &statics, channels: &acting, steps, bare, ladder, largest, columns: &mut carried });
         }
         for (column, carried) in columns.iter_mut().zip(&carried) {
@@ -151,15 +164,53 @@ impl Group {
         }
     }
 
+    fn many(&self, recipe: &Recipe, width: Width, stretches: &[impl Timed], columns: &mut [Vec<Eight>]) {
+        let without_trace = |p: &Packed| -> Packed {
+            let mut p = p.clone();
+            for lane in 0..8 {
+                let mean = p[..self.dim].iter().map(|d| d.0[lane]).sum::<f64>() / self.dim as f64;
+                p[..self.dim].iter_mut().for_each(|d| d.0[lane] -= mean);
+            }
+            p
+        };
+        let channels: Vec<Packed> = self.channels.iter().map(without_trace).collect();
+        let generator = recipe.generator(&without_trace(&self.statics), &channels);
+        let (static_size, sizes) = generator.sizes();
+        let mut room = Room::default();
+        // a pack that is not full is filled up with zeros, unless there is one column alone
+        for some in columns.chunks_mut(PACK) {
+            let count = if some.len() == 1 { 1 } else { PACK };
+            let mut carried = vec![Eight::all(0.0); generator.size * count];
+            for (c, column) in some.iter().enumerate() {
+                column.iter().enumerate().for_each(|(k, number)| carried[k * count + c] = *number);
+            }
+            for stretch in stretches {
+                width.run(Linear {
+                    generator: &generator,
+                    acting: stretch.channels(),
+                    steps: stretch.weights(),
+                    bare: stretch.is_bare(),
+                    largest: self.largest(stretch, static_size, &sizes),
+                    columns: &mut carried,
+                    count,
+                    room: &mut room,
+                });
+            }
+            for (c, column) in some.iter_mut().enumerate() {
+                column.iter_mut().enumerate().for_each(|(k, number)| *number = carried[k * count + c]);
+            }
+        }
+    }
+
     /// Turns every column by the phase of the trace, which the kernels leave out.
-    fn turn(&self, stretches: &[Stretch], columns: &mut [Vec<Eight>]) {
+    fn turn(&self, stretches: &[impl Timed], columns: &mut [Vec<Eight>]) {
         let trace = |p: &Packed, lane: usize| p[..self.dim].iter().map(|d| d.0[lane]).sum::<f64>() / self.dim as f64;
         for lane in 0..8 {
             let mut angle = 0.0;
             for stretch in stretches {
-                angle += trace(&self.statics, lane) * stretch.steps.length_s;
-                for (channel, area_s) in stretch.channels.iter().zip(&stretch.steps.areas_s) {
-                    angle += trace(&self.channels[*channel], lane) * area_s;
+                angle += trace(&self.statics, lane) * stretch.length_s(lane);
+                for (k, channel) in stretch.channels().iter().enumerate() {
+                    angle += trace(&self.channels[*channel], lane) * stretch.area_s(k, lane);
                 }
             }
             if angle == 0.0 {
@@ -175,8 +226,4 @@ impl Group {
             }
         }
     }
-}
-
-fn shared(stretch: &Stretch) -> Shared<'_> {
-    Shared { lengths_s: &stretch.steps.lengths_s, weights_s: &stretch.steps.weights_s, channels: stretch.channels.len() }
 }

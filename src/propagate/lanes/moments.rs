@@ -61,7 +61,7 @@ pub struct Steps {
 
 /// Nodes and weights of Gauss's rule with four points on (-1/2, 1/2): 1/2 sqrt(3/7 -+ 2/7 sqrt(6/5)) and (18 +- sqrt 30)/72
 /// (M. Abramowitz and I. A. Stegun, Handbook of Mathematical Functions (1964), 25.4.29).
-const GAUSS: [(f64, f64); 4] = [
+pub const GAUSS: [(f64, f64); 4] = [
     (-0.430_568_155_797_026_3, 0.173_927_422_568_726_92),
     (-0.169_990_521_792_428_13, 0.326_072_577_431_273_05),
     (0.169_990_521_792_428_13, 0.326_072_577_431_273_05),
@@ -165,6 +165,7 @@ fn held_together(bounds_s: &[f64], values: &[f64], channels: usize, together: us
     }
 }
 
-fn parabola(m: [f64; 3], h: f64) -> [f64; 3] {
+/// The weights of a step of length `h` with the moments `m` of its channel.
+pub fn parabola(m: [f64; 3], h: f64) -> [f64; 3] {
     [h * (2.25 * m[0] - 15.0 * m[2]), h * 12.0 * m[1], h * (180.0 * m[2] - 15.0 * m[0])]
 }

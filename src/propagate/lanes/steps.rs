@@ -5,7 +5,7 @@
 //! h (g0, g1, g2): a1 = h A + sum of the first times C, a2 and a3 the sums of the second and third (S. Blanes, F. Casas,
 //! J. A. Oteo, J. Ros, Physics Reports 470, 151 (2009), section 5.4). Times in s, A and C in rad/s.
 
-use super::lane::Simd;
+use super::lane::{Eight, Simd};
 
 /// Where a kernel finds lengths and weights of step after step for one group of eight points.
 pub(crate) trait Weights: Copy {
@@ -42,5 +42,33 @@ impl Weights for Shared<'_> {
     #[inline(always)]
     fn weight<S: Simd>(&self, simd: S, step: usize, channel: usize, order: usize) -> S::V {
         simd.splat(self.weights_s[step * self.channels + channel][order])
+    }
+}
+
+/// Steps of which every point has its own.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct Apart<'a> {
+    /// Lengths, s.
+    pub lengths_s: &'a [Eight],
+    /// Weights, s: those of one step together, channel after channel.
+    pub weights_s: &'a [[Eight; 3]],
+    /// Number of channels.
+    pub channels: usize,
+}
+
+impl Weights for Apart<'_> {
+    #[inline(always)]
+    fn count(&self) -> usize {
+        self.lengths_s.len()
+    }
+
+    #[inline(always)]
+    fn length<S: Simd>(&self, simd: S, step: usize) -> S::V {
+        simd.load(&self.lengths_s[step])
+    }
+
+    #[inline(always)]
+    fn weight<S: Simd>(&self, simd: S, step: usize, channel: usize, order: usize) -> S::V {
+        simd.load(&self.weights_s[step * self.channels + channel][order])
     }
 }

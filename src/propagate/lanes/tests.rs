@@ -123,7 +123,7 @@ fn group(random: &mut Random, dim: usize, channels: usize, kind: Kind, size: f64
         all
     };
     let statics = packed(random, true);
-    Group { dim, statics, channels: (0..channels).map(|_| packed(random, false)).collect() }
+    Group { dim, statics, channels: (0..channels).map(|_| packed(random, false)).collect(), recipe: None }
 }
 
 fn columns(dim: usize) -> Vec<Vec<Eight>> {
@@ -284,5 +284,99 @@ fn exact_slices_taken_together() {
             errors.push(deviation(&carried, &plain(&group, &bounds_s, &values, 2), 2));
         }
         assert!(errors[0] < 1e-6 && errors[1] < errors[0] / 3.0 && errors[2] < 1e-13, "{dim} levels: {errors:?}");
+    }
+}
+
+/// The conditions of order 6 of the product without commutators, in matrices that do not commute: it must differ from the exponential of the
+/// Magnus expansion by the seventh power of the step (S. Blanes, F. Casas, J. A. Oteo, J. Ros, Physics Reports 470, 151 (2009), for
+/// the expansion); seen by carrying four levels, whose kernel it is, against small slices.
+#[test]
+fn exact_many_levels_have_order_six() {
+    let mut random = Random(23);
+    let four = group(&mut random, 4, 2, Kind::Full, 0.6);
+    let profile = Profile::Smooth {
+        length_s: 4.0,
+        at: Arc::new(|t, u| {
+            u[0] = (1.3 * t).sin();
+            u[1] = (-0.5 * (t - 2.0) * (t - 2.0)).exp();
+        }),
+    };
+    let run = |width: Width, count: f64| {
+        let mut carried = columns(4);
+        four.carry(width, &[Stretch { channels: vec![0, 1], steps: profile.steps(2, count) }], &mut carried);
+        carried
+    };
+    let distance = |a: &[Vec<Eight>], b: &[Vec<Eight>]| -> f64 {
+        let pairs = a.iter().flatten().zip(b.iter().flatten());
+        pairs.flat_map(|(a, b)| (0..8).map(move |l| (a.0[l] - b.0[l]).abs())).fold(0.0, f64::max)
+    };
+    let [rough, middle, fine] = [8.0, 16.0, 64.0].map(|count| run(Width::Portable, count));
+    let (first, second) = (distance(&rough, &fine), distance(&middle, &fine));
+    let order = (first / second).log2();
+    assert!((5.3..7.5).contains(&order) && second < 1e-4, "order {order}, errors {first:e} {second:e}");
+    for width in widths() {
+        let off = distance(&run(width, 16.0), &middle);
+        assert!(off < 3e-14, "{}: {off:e}", width.word());
+    }
+}
+
+/// Four and five levels in slices, state by state and column by column: against the plain exponential, to rounding.
+#[test]
+fn exact_slices_of_many_levels() {
+    let mut random = Random(29);
+    for width in widths() {
+        for (dim, size) in [(4, 1e-3), (4, 0.7), (5, 3.0), (6, 30.0)] {
+            let group = group(&mut random, dim, 2, Kind::Full, size);
+            let bounds_s: Vec<f64> = (0..4).map(f64::from).collect();
+            let values: Vec<f64> = (0..6).map(|_| random.next()).collect();
+            let steps = Profile::Held { bounds_s: bounds_s.clone(), values: values.clone() }.steps(2, 3.0);
+            let mut carried = columns(dim);
+            group.carry(width, &[Stretch { channels: vec![0, 1], steps }], &mut carried);
+            for lane in [0, 5] {
+                let off = deviation(&carried, &plain(&group, &bounds_s, &values, lane), lane);
+                let limit = 4e-15 * (1.0 + 20.0 * size);
+                assert!(off < limit, "{} {dim} levels size {size}: {off:e} over {limit:e}", width.word());
+            }
+        }
+    }
+}
+
+/// A density matrix without jumps is the projector of its state; with decay alone its populations follow exp(-rate t) (V. Weisskopf,
+/// E. Wigner, Zeitschrift fuer Physik 63, 54 (1930)) and its coherence half as fast.
+#[test]
+fn exact_densities() {
+    let mut random = Random(31);
+    for width in widths() {
+        let mut three = group(&mut random, 3, 1, Kind::Full, 0.4);
+        let steps = Profile::Held { bounds_s: vec![0.0, 1.0, 2.5], values: vec![0.4, -0.9] }.steps(1, 2.0);
+        let stretch = [Stretch { channels: vec![0], steps }];
+        let mut state = vec![columns(3)[1].clone()];
+        three.carry(width, &stretch, &mut state);
+        three.recipe = Some(Arc::new(Recipe::of_densities(3, &[])));
+        let mut density = vec![(0..9).map(|k| Eight::all(if k == 1 { 1.0 } else { 0.0 })).collect::<Vec<Eight>>()];
+        three.carry(width, &stretch, &mut density);
+        for lane in 0..8 {
+            let amplitude = |j: usize| Complex64::new(state[0][2 * j].0[lane], state[0][2 * j + 1].0[lane]);
+            for j in 0..3 {
+                assert!((density[0][j].0[lane] - amplitude(j).norm_sqr()).abs() < 1e-14);
+                for k in j + 1..3 {
+                    let entry = amplitude(j) * amplitude(k).conj();
+                    let at = place_of(3, j, k);
+                    let off = (Complex64::new(density[0][at].0[lane], density[0][at + 1].0[lane]) - entry).norm();
+                    assert!(off < 1e-14, "{}: {off:e}", width.word());
+                }
+            }
+        }
+        let mut lower = crate::problem::Matrix::zeros(2, 2);
+        lower[(0, 1)] = 0.5f64.sqrt().into();
+        let mut two = group(&mut random, 2, 0, Kind::Nothing, 0.0);
+        two.recipe = Some(Arc::new(Recipe::of_densities(2, &[(lower, true)])));
+        let steps = Profile::Held { bounds_s: vec![0.0, 3.0], values: Vec::new() }.steps(0, 1.0);
+        let mut density = vec![vec![Eight::all(0.36), Eight::all(0.64), Eight::all(0.48), Eight::all(0.0)]];
+        two.carry(width, &[Stretch { channels: Vec::new(), steps }], &mut density);
+        let wanted = [1.0 - 0.64 * (-1.5f64).exp(), 0.64 * (-1.5f64).exp(), 0.48 * (-0.75f64).exp(), 0.0];
+        for (found, wanted) in density[0].iter().zip(wanted) {
+            assert!((found.0[6] - wanted).abs() < 1e-15, "{}: {found:?} and {wanted}", width.word());
+        }
     }
 }

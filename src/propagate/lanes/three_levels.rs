@@ -121,7 +121,8 @@ impl<W: Weights> ThreeLevels<'_, W> {
                 a[0].o[j] = [h * simd.load(&self.statics[3 + 2 * j]), h * simd.load(&self.statics[4 + 2 * j])];
             }
         }
-        for (channel, c) in self.channels.iter().enumerate() {
+        for channel in 0..self.channels.len() {
+            let c = &self.channels[channel];
             for order in 0..if BARE { 1 } else { 3 } {
                 let weight = self.steps.weight(simd, step, channel, order);
                 for j in 0..if LADDER { 2 } else { 3 } {
