@@ -12,7 +12,7 @@ use nutate::scan::evaluate::Evaluator;
 use nutate::scan::row::{Found, Row};
 use nutate::scan::setup::Setup;
 use nutate::scan::shelf::Shelf;
-use nutate::scan::store::{Keep, inspect, Part, Store};
+use nutate::scan::store::{inspect, Keep, Part, Store};
 use nutate::scan::summary::Summary;
 
 const CONFIG: &str = "\

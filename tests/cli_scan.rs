@@ -64,6 +64,32 @@ scan:
 accuracy: {final: 1e-8}
 ";
 
+/// A pulse of samples on two levels: points that lie side by side.
+const HELD: &str = "\
+format: 1
+title: Detuning and size of a sampled pulse
+numbers:
+  offset: 0 MHz
+  peak: 20 MHz
+system:
+  levels: {down: 0 MHz, up: -offset}
+drives:
+  rf: {pair: [down, up], form: direct}
+envelopes:
+  bump: {shape: samples, samples: [0.1, 0.4, 0.9, 1, 0.8, 0.2], between: hold, length: 40 ns, matrix_element: peak / 2}
+sequence:
+  - pulse: {drive: rf, envelope: bump}
+start: down
+record:
+  final: {population: up}
+scan:
+  axes:
+    - {number: offset, from: -20 MHz, to: 20 MHz, points: ROWS}
+    - {number: peak, from: 1 MHz, to: 40 MHz, points: COLUMNS}
+  derived: {area: peak * 40 ns * population_up}
+accuracy: {final: 1e-9}
+";
+
 fn nutate() -> Command {
     let mut command = Command::new(env!("CARGO_BIN_EXE_nutate"));
     command.env_remove("SLURM_JOB_ID").env_remove("SLURM_RESTART_COUNT").stdin(Stdio::null());
@@ -236,6 +262,11 @@ fn cli_scan_of_shaped_pulses_survives_being_killed_at_any_instant() {
 }
 
 #[test]
+fn cli_scan_of_points_side_by_side_survives_being_killed_at_any_instant() {
+    kill_and_go_on(HELD, 300, 400, 10, 11);
+}
+
+#[test]
 fn cli_scan_is_the_same_with_any_number_of_threads_and_parts() {
     let desk = Desk::new(SHAPED, 17, 31);
     assert_eq!(status_of(&desk.run("one", &["--threads", "1"])), 0);
@@ -342,6 +373,43 @@ fn cli_scan_refuses_a_changed_config_and_names_the_line() {
     desk.write(&text);
     assert!(said(&desk.run("half", &["--set", "bend=-221MHz"])).contains("set from outside"));
     assert_eq!(status_of(&desk.run("half", &["--replace"])), 0);
+}
+
+/// The widths of the arithmetic that this processor lacks are refused, the others agree, and a scan goes on with the one it was begun with.
+#[test]
+fn cli_scan_keeps_the_width_it_was_begun_with() {
+    let desk = Desk::new(HELD, 30, 40);
+    let mut tables = Vec::new();
+    for word in ["none", "1", "4", "8"] {
+        let done = desk.run(word, &["--lanes", word]);
+        if status_of(&done) == 2 {
+            assert!(said(&done).contains("this processor does not have"), "{}", said(&done));
+            println!("skipped --lanes {word}: this processor does not have it");
+            continue;
+        }
+        assert_eq!(status_of(&done), 0, "{}", said(&done));
+        let method = desk.result(word)["method"]["name"].to_string();
+        assert!(method.contains("side by side") == (word != "none"), "{method}");
+        tables.push(String::from_utf8(desk.table(word)).unwrap());
+    }
+    let numbers =
+        |table: &str| -> Vec<f64> { table.lines().skip(1).flat_map(|line| line.split(',')).map(|n| n.parse().unwrap()).collect() };
+    let tables: Vec<Vec<f64>> = tables.iter().map(|table| numbers(table)).collect();
+    for other in &tables[1..] {
+        assert_eq!(other.len(), tables[0].len());
+        // slices are exact, so only rounding is left
+        assert!(other.iter().zip(&tables[0]).all(|(a, b)| (a - b).abs() <= 1e-13 * b.abs().max(1.0)));
+    }
+    let refused = desk.run("other", &["--lanes", "3"]);
+    assert!(status_of(&refused) == 2 && said(&refused).contains("Write: --lanes"), "{}", said(&refused));
+    // begun with the portable one, it goes on with that and refuses another
+    desk.write(&format!("{}run: {{threads: 1, time_limit: 1 ms}}\n", desk.text()));
+    assert_eq!(status_of(&desk.run("kept", &["--lanes", "1"])), 5);
+    let refused = desk.run("kept", &["--lanes", "none"]);
+    assert!(status_of(&refused) == 2 && said(&refused).contains("portable"), "{}", said(&refused));
+    desk.write(&desk.text().replace("run: {threads: 1, time_limit: 1 ms}\n", ""));
+    assert_eq!(status_of(&desk.run("kept", &[])), 0);
+    assert_eq!(desk.table("kept"), desk.table("1"));
 }
 
 #[test]

@@ -33,7 +33,7 @@ const TWO: &str = "system:\n  levels: {down: 0 MHz, up: miss}\ndrives:\n  rf: {p
 const TURNING: &str =
     "system:\n  levels: {down: 0 MHz, up: 300 MHz}\ndrives:\n  rf: {pair: [down, up], form: linear, carrier: 300 MHz + miss, carrier_phase: runs on}\n";
 const LABORATORY: &str =
-    "system:\n  levels: {down: 0 MHz, up: 300 MHz - miss}\ndrives:\n  rf: {pair: [down, up], form: linear, carrier: 300 MHz, carrier_phase: restarts}\n";
+    "system:\n  levels: {down: 0 MHz, up: 40 MHz - miss}\ndrives:\n  rf: {pair: [down, up], form: linear, carrier: 40 MHz, carrier_phase: restarts}\n";
 const LADDER: &str = "system:\n  ladder: {levels: 3, first_gap: 5 GHz, anharmonicity: -250 MHz, couplings_grow: sqrt}\ndrives:\n  rf: {acts_on: ladder, reference_pair: [0, 1], form: one_sided, carrier: 5 GHz + miss, carrier_phase: runs on}\n";
 const FRAME: &str = "frame: {kind: rotating, follows: drives, drop_terms_faster_than: 200 MHz}\n";
 const HELD: &str = "{shape: samples, samples: [0.1, 0.5, 1, 0.8, -0.3, 0.2], between: hold, length: LENGTH, SIZE}";
@@ -89,7 +89,8 @@ fn prop_points_side_by_side_are_as_right_as_alone() {
             let exact = table(&setup(&text.replace("final: 1e-8", "final: 1e-11"), Lanes::OneByOne), 2);
             for width in WIDTHS.into_iter().filter(|width| width.is_here()) {
                 let together = setup(&text, Lanes::Together(width));
-                assert_eq!(together.bundled().err(), None, "{text}");
+                let apart = k > 2 && KINDS[kind].4.is_empty();
+                assert_eq!(together.bundled().is_err(), apart, "{:?} {text}", together.bundled().err());
                 let found = table(&together, 2);
                 assert_eq!(found.len(), exact.len());
                 for (row, exact) in found.iter().zip(&exact) {

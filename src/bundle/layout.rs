@@ -13,6 +13,7 @@ use super::profiles::{profiles, Profiles};
 use super::sizes::{frame, packed, sizes, Frame};
 use super::wanted::{wanted, Wanted};
 use super::worker::Worker;
+use crate::config::document::Document;
 use crate::config::settings::MethodWord;
 use crate::model::built::Built;
 use crate::outcome::compute;
@@ -24,13 +25,13 @@ use crate::propagate::{figure, Method};
 /// The finer run takes so many times the steps.
 const FINER: f64 = 1.5;
 /// The share of the accuracy that the samples must keep within.
-const SHARE: f64 = 0.4;
+pub(super) const SHARE: f64 = 0.4;
 /// Order of the error in the number of steps, at least.
 const ORDER: f64 = 6.0;
 /// What a step over several slices costs, in slices taken by themselves: of two levels, of three, of more. (Our own measurements.)
 const TOGETHER_COST: [f64; 3] = [4.0, 2.5, 4.0];
 /// Rounds of raising the number of steps.
-const ROUNDS: usize = 14;
+pub(super) const ROUNDS: usize = 14;
 
 /// What is known of the point at which points were laid out; what is recorded of all of them is read off with it.
 #[derive(Debug, Clone)]
@@ -56,7 +57,7 @@ pub struct Layout {
     pub(super) samples: Vec<Vec<f64>>,
     pub(super) recipe: Option<Arc<Recipe>>,
     /// Steps of the coarser and of the finer run; of points with their own timelines the most that any sample takes.
-    steps: [usize; 2],
+    pub(super) steps: [usize; 2],
 }
 
 /// How points lie in time.
@@ -88,7 +89,7 @@ impl Layout {
         let wanted = wanted(plan, names)?;
         let (place, mut real, mut flat) = start(plan, names, samples)?;
         let point = real.at(&place).map_err(|_| refused())?;
-        without_harmonics(plan, point)?;
+        without_harmonics(plan.document(), point)?;
         let problem = point.problem();
         let flat_problem = flat.at(&place).map_err(|_| refused())?.problem();
         let frame = frame(flat_problem).ok_or_else(|| "a term is not held".to_string())?;
@@ -96,12 +97,13 @@ impl Layout {
         let place = Place::of(point);
         let function = if flat.has_no_followers() { function(&mut flat, &frame, &profiles, bounds, samples) } else { None };
         let shared = SharedTime { frame, profiles, function, stretches: [Vec::new(), Vec::new()], exact: false };
-        let mut layout = Layout::at(plan, place, wanted, Timeline::Shared(Box::new(shared)), samples, width)?;
+        let mut layout = Layout::at(plan.document(), place, wanted, Timeline::Shared(Box::new(shared)), samples, width)?;
         layout.settle(plan, names, samples, plan.document().accuracy.last)?;
         Ok(layout)
     }
 
-    /// The same for points of which each has its own timeline. Samples that are refused are left out.
+    /// The same for points of which each has its own timeline: density matrices alone, as states go as fast by collocation. Samples that
+    /// are refused are left out.
     pub fn own(plan: &Plan, names: &[&str], samples: &[Vec<f64>], width: Width) -> Result<Layout, String> {
         fits(plan)?;
         let wanted = wanted(plan, names)?;
@@ -109,20 +111,30 @@ impl Layout {
         let mut place = None;
         for sample in samples {
             if let Ok(mover) = plan.mover_from(names, sample) {
-                without_harmonics(plan, mover.point())?;
+                without_harmonics(plan.document(), mover.point())?;
                 place.get_or_insert_with(|| Place::of(mover.point()));
                 good.push(sample.clone());
             }
         }
         let place = place.filter(|_| 2 * good.len() >= samples.len()).ok_or_else(refused)?;
-        let mut layout = Layout::at(plan, place, wanted, Timeline::Own { rate: 1.0 }, &good, width)?;
+        if !place.problem.is_open() {
+            return Err("the shape or the length of a pulse moves".to_string());
+        }
+        let mut layout = Layout::at(plan.document(), place, wanted, Timeline::Own { rate: 1.0 }, &good, width)?;
         layout.settle_own(plan, names, plan.document().accuracy.last)?;
         Ok(layout)
     }
 
-    fn at(plan: &Plan, place: Place, wanted: Wanted, timeline: Timeline, samples: &[Vec<f64>], width: Width) -> Result<Layout, String> {
+    pub(super) fn at(
+        document: &Document,
+        place: Place,
+        wanted: Wanted,
+        timeline: Timeline,
+        samples: &[Vec<f64>],
+        width: Width,
+    ) -> Result<Layout, String> {
         let dim = place.problem.dim();
-        if dim != plan.document().system.names.len() || !has_kernel(dim, place.problem.is_open()) {
+        if dim != document.system.names.len() || !has_kernel(dim, place.problem.is_open()) {
             return Err(format!("there is no kernel for {dim} levels"));
         }
         let recipe = recipe(&place.problem, &wanted)?;
@@ -195,7 +207,10 @@ impl Layout {
                 worst = worst.max(self.figure_of(&mut worker, some)?);
             }
             if worst <= (SHARE * accuracy).max(self.floor) {
-                return Ok(());
+                // (our own measurements: twice as slow as collocation)
+                let slow = self.recipe.as_ref().is_some_and(|recipe| !recipe.is_density());
+                let exact = matches!(&self.timeline, Timeline::Shared(shared) if shared.exact);
+                return if slow && !exact { Err("collocation serves more than three levels better".to_string()) } else { Ok(()) };
             }
             if matches!(&self.timeline, Timeline::Shared(shared) if shared.exact) {
                 return Err("its slices are not exact to the accuracy asked for".to_string());
@@ -247,7 +262,7 @@ impl Layout {
 }
 
 impl Place {
-    fn of(point: &Point) -> Place {
+    pub(super) fn of(point: &Point) -> Place {
         Place {
             built: point.built.clone(),
             values: point.values.clone(),
@@ -258,12 +273,12 @@ impl Place {
 }
 
 /// What rounding leaves after so many steps through this angle.
-fn floor(angle: f64, steps: usize) -> f64 {
+pub(super) fn floor(angle: f64, steps: usize) -> f64 {
     f64::EPSILON * (4.0 + 1.05 * angle + 0.25 * steps as f64)
 }
 
 /// By how much more steps must be taken.
-fn raised(worst: f64, accuracy: f64) -> f64 {
+pub(super) fn raised(worst: f64, accuracy: f64) -> f64 {
     (worst / (0.5 * SHARE * accuracy)).powf(1.0 / ORDER).clamp(1.15, 3.0)
 }
 
@@ -271,11 +286,11 @@ fn raised(worst: f64, accuracy: f64) -> f64 {
 const MANY_TURNS: f64 = 20.0;
 
 /// Refused where the harmonics of fast carriers serve better: these steps would follow every turn.
-fn without_harmonics(plan: &Plan, point: &Point) -> Result<(), String> {
+pub(super) fn without_harmonics(document: &Document, point: &Point) -> Result<(), String> {
     let problem = point.problem();
     let fastest = |segment| problem.terms_of(segment).iter().map(|term| term.turns_hz.abs()).fold(0.0, f64::max);
     let turns: f64 = problem.segments.iter().map(|segment| fastest(segment) * segment.length_s).sum();
-    if turns > MANY_TURNS && compute(plan.document(), point).method == Method::Carrier {
+    if turns > MANY_TURNS && compute(document, point).method == Method::Carrier {
         return Err("its carriers are carried by their harmonics".to_string());
     }
     Ok(())

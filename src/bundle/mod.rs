@@ -13,12 +13,14 @@
 //! | `profiles.rs` | the shapes in time: stretches and channels |
 //! | `wanted.rs` | what is recorded, and the columns it takes |
 //! | `layout.rs` | all of it, and the number of steps |
+//! | `runs.rs` | runs of one point that noise has moved |
 //! | `worker.rs` | groups of points to numbers |
 
 mod entries;
 mod layout;
 mod own;
 mod profiles;
+mod runs;
 mod sizes;
 #[cfg(test)]
 mod tests;
@@ -26,4 +28,5 @@ mod wanted;
 mod worker;
 
 pub use layout::Layout;
+pub use runs::Runs;
 pub use worker::Worker;

@@ -61,13 +61,20 @@ impl<'p> Own<'p> {
             mover.at(point).map_err(|_| "a point was refused".to_string())?;
         }
         let problems: Vec<&Problem> = self.movers.iter().map(|mover| mover.point().problem()).collect();
+        Filled::new(&problems, rate, recipe)
+    }
+}
+
+impl Filled {
+    /// Eight problems and their steps at a rate.
+    pub fn new(problems: &[&Problem], rate: f64, recipe: Option<Arc<Recipe>>) -> Result<Filled, String> {
         let first = problems[0];
         let (dim, count) = (first.dim(), first.matrices.len());
         if problems.iter().any(|other| other.segments.len() != first.segments.len() || other.matrices.len() != count || other.dim() != dim)
         {
             return Err("its pulses have another layout".to_string());
         }
-        let group = group(&problems, recipe);
+        let group = group(problems, recipe);
         let mut steps = Steps { matrices: count, ..Steps::default() };
         for k in 0..first.segments.len() {
             let lanes: Vec<Lane> = problems.iter().map(|problem| Lane::new(problem, &problem.segments[k])).collect();

@@ -17,20 +17,29 @@ pub(super) struct Wanted {
 /// The columns for what `plan` records; the reason, where a quantity needs more than the end, or moves by itself with `names`.
 pub(super) fn wanted(plan: &Plan, names: &[&str]) -> Result<Wanted, String> {
     let document = plan.document();
+    for item in &document.record.items {
+        if let Item::Gate(gate) = item {
+            let quantities = match &gate.target {
+                Target::Equator(turn, axis) => vec![turn.register, axis.register],
+                Target::AboutZ(turn, _) => vec![turn.register],
+                Target::Rows(entries) => entries.iter().flat_map(|e| std::iter::once(e.value.re).chain(e.value.im)).collect(),
+            };
+            if plan.moves(names, &quantities) {
+                return Err("the target of the gate moves".to_string());
+            }
+        }
+    }
+    wanted_of(document)
+}
+
+/// The same where no number is moved but by noise, which leaves targets alone.
+pub(super) fn wanted_of(document: &Document) -> Result<Wanted, String> {
     let mut wanted = Wanted { state: false, columns: Vec::new() };
     for item in &document.record.items {
         match item {
             Item::Populations(_) | Item::OutsideOf(_) | Item::Coherence(_) | Item::Bloch(_) | Item::Lost => wanted.state = true,
             Item::Fidelity(State::Level(_)) => wanted.state = true,
             Item::Gate(gate) => {
-                let quantities = match &gate.target {
-                    Target::Equator(turn, axis) => vec![turn.register, axis.register],
-                    Target::AboutZ(turn, _) => vec![turn.register],
-                    Target::Rows(entries) => entries.iter().flat_map(|e| std::iter::once(e.value.re).chain(e.value.im)).collect(),
-                };
-                if plan.moves(names, &quantities) {
-                    return Err("the target of the gate moves".to_string());
-                }
                 if matches!(gate.free_z, FreeZ::Operators(_)) {
                     return Err("the free turns of the gate are operators of their own".to_string());
                 }

@@ -5,17 +5,19 @@ use num_complex::Complex64;
 use super::layout::{Layout, SharedTime, Timeline};
 use super::own::{Filled, Own};
 use super::sizes::{frame, packed};
-use crate::measure::{observables, Observables, Seen, Whole};
+use crate::measure::{observables, Observables, Recorded, Seen, TraceRecorder, Whole};
 use crate::plan::{Mover, Plan};
 use crate::problem::{Matrix, Problem, State, Vector};
 use crate::propagate::lanes::{place_of, Eight, Group, Width};
+use crate::propagate::Recorder;
 
 /// What one thread needs to compute groups.
 #[derive(Debug)]
 pub struct Worker<'p> {
     plan: &'p Plan,
     source: Source<'p>,
-    /// Registers of the points of the last group, one after another, and how many one has.
+    /// Registers of the points of the last group, one after another, and how many one has; kept where they are wanted.
+    keeps_registers: bool,
     registers: Vec<f64>,
     each: usize,
     width: Width,
@@ -44,7 +46,16 @@ impl<'p> Worker<'p> {
                 Source::Flat(Box::new(flat.ok_or_else(|| "the shape of a pulse, the start or the surroundings move".to_string())?))
             }
         };
-        Ok(Worker { plan, source, registers: Vec::new(), each: 0, width: layout.width, numbers: Vec::new(), group: None })
+        Ok(Worker {
+            plan,
+            source,
+            keeps_registers: false,
+            registers: Vec::new(),
+            each: 0,
+            width: layout.width,
+            numbers: Vec::new(),
+            group: None,
+        })
     }
 
     /// With instructions of this width.
@@ -52,11 +63,16 @@ impl<'p> Worker<'p> {
         Worker { width, ..self }
     }
 
-    /// Registers of a point of the last group.
+    /// The same, with [`values`](Worker::values).
+    pub fn with_registers(self) -> Worker<'p> {
+        Worker { keeps_registers: true, ..self }
+    }
+
+    /// Registers of a point of the last group; none unless they were asked for.
     pub fn values(&self, lane: usize) -> &[f64] {
         match &self.source {
             Source::Own(own) => own.registers(lane),
-            Source::Flat(_) => &self.registers[lane * self.each..(lane + 1) * self.each],
+            Source::Flat(_) => self.registers.get(lane * self.each..(lane + 1) * self.each).unwrap_or_default(),
         }
     }
 
@@ -124,13 +140,17 @@ impl<'p> Worker<'p> {
             let Some(point) = points.get(lane).or(points.last()) else { return Ok(()) };
             if let Some(function) = &shared.function {
                 let registers = flat.registers_at(point).ok_or_else(|| "a point was refused".to_string())?;
-                self.registers.extend_from_slice(registers);
-                self.each = registers.len();
+                if self.keeps_registers {
+                    self.registers.extend_from_slice(registers);
+                    self.each = registers.len();
+                }
                 function.fill(point, &mut self.numbers[lane..], 8);
             } else {
                 let at = flat.at(point).map_err(|_| "a point was refused".to_string())?;
-                self.registers.extend_from_slice(&at.values);
-                self.each = at.values.len();
+                if self.keeps_registers {
+                    self.registers.extend_from_slice(&at.values);
+                    self.each = at.values.len();
+                }
                 let problem = at.problem();
                 if frame(problem).as_ref() != Some(&shared.frame) {
                     return Err("its pulses or its frame have another layout".to_string());
@@ -158,7 +178,7 @@ impl<'p> Worker<'p> {
     }
 }
 
-fn start_columns(layout: &Layout, problem: &Problem) -> Vec<Vec<Eight>> {
+pub(super) fn start_columns(layout: &Layout, problem: &Problem) -> Vec<Vec<Eight>> {
     if layout.is_density() {
         let rho = problem.start.density();
         let mut packed = vec![0.0; layout.dim * layout.dim];
@@ -172,7 +192,7 @@ fn start_columns(layout: &Layout, problem: &Problem) -> Vec<Vec<Eight>> {
 }
 
 /// From columns to numbers.
-struct Judge<'a> {
+pub(super) struct Judge<'a> {
     layout: &'a Layout,
     seen: &'a Observables<'a>,
     problem: &'a Problem,
@@ -197,26 +217,47 @@ fn unpack(packed: &[Eight], lane: usize, density: &mut Matrix) {
 }
 
 impl<'a> Judge<'a> {
-    fn new(layout: &'a Layout, seen: &'a Observables<'a>, problem: &'a Problem) -> Judge<'a> {
+    pub(super) fn new(layout: &'a Layout, seen: &'a Observables<'a>, problem: &'a Problem) -> Judge<'a> {
         let scales = seen.columns().iter().map(|column| column.scale).collect();
         let dim = layout.dim;
         let (state, density, propagator) = (Vector::zeros(dim), Matrix::zeros(dim, dim), Matrix::zeros(dim, dim));
         Judge { layout, seen, problem, scales, state, density, propagator }
     }
 
-    fn see(&mut self, columns: &[Vec<Eight>], lane: usize, numbers: &mut Vec<f64>) {
+    /// State and propagator at the end of one lane, as a recorder takes them.
+    pub(super) fn record(&mut self, columns: &[Vec<Eight>], lane: usize) -> Recorded {
+        self.take(columns, lane);
+        let mut recorder = TraceRecorder::new(self.seen, self.problem, &self.scales);
+        if self.layout.wanted.state {
+            recorder.see(0, if self.layout.is_density() { State::Mixed(&self.density) } else { State::Pure(&self.state) }, &[]);
+        }
+        recorder.finish((!self.layout.wanted.columns.is_empty()).then_some(&self.propagator));
+        recorder.done()
+    }
+
+    /// Takes state and propagator of one lane out of the columns.
+    fn take(&mut self, columns: &[Vec<Eight>], lane: usize) {
         let amplitude = |column: &[Eight], level: usize| Complex64::new(column[2 * level].0[lane], column[2 * level + 1].0[lane]);
+        let wanted = &self.layout.wanted;
+        if wanted.state && self.layout.is_density() {
+            unpack(&columns[0], lane, &mut self.density);
+        } else if wanted.state {
+            for level in 0..self.layout.dim {
+                self.state[level] = amplitude(&columns[0], level);
+            }
+        }
+        for (column, to) in columns[usize::from(wanted.state)..].iter().zip(&wanted.columns) {
+            for level in 0..self.layout.dim {
+                self.propagator[(level, *to)] = amplitude(column, level);
+            }
+        }
+    }
+
+    fn see(&mut self, columns: &[Vec<Eight>], lane: usize, numbers: &mut Vec<f64>) {
+        self.take(columns, lane);
         let first = numbers.len();
         if self.layout.wanted.state {
-            let density = self.layout.is_density();
-            if density {
-                unpack(&columns[0], lane, &mut self.density);
-            } else {
-                for level in 0..self.layout.dim {
-                    self.state[level] = amplitude(&columns[0], level);
-                }
-            }
-            let state = if density { State::Mixed(&self.density) } else { State::Pure(&self.state) };
+            let state = if self.layout.is_density() { State::Mixed(&self.density) } else { State::Pure(&self.state) };
             if let Some(moment) = self.problem.moments.last() {
                 let seen = Seen { moment, state, time_in_s: &[] };
                 for quantity in &self.seen.quantities {
@@ -228,11 +269,6 @@ impl<'a> Judge<'a> {
             *number /= scale;
         }
         if !self.layout.wanted.columns.is_empty() {
-            for (column, to) in columns[usize::from(self.layout.wanted.state)..].iter().zip(&self.layout.wanted.columns) {
-                for level in 0..self.layout.dim {
-                    self.propagator[(level, *to)] = amplitude(column, level);
-                }
-            }
             for quantity in &self.seen.last {
                 quantity.see(Whole::Propagator(&self.propagator), numbers);
             }

@@ -52,7 +52,7 @@ impl Bundled {
             if points < FEWEST_APART {
                 return Err(reason);
             }
-            Layout::own(setup.plan(), &names, &samples, width)
+            Layout::own(setup.plan(), &names, &samples, width).map_err(|_| reason)
         })?;
         let place = |name: &str| finals.iter().position(|last| last.name == name);
         let lost = || "a column is not among the final numbers".to_string();
@@ -74,7 +74,8 @@ impl Bundled {
 
     /// What a thread needs.
     pub fn worker<'s>(&self, setup: &'s Setup) -> Result<Worker<'s>, String> {
-        Worker::new(setup.plan(), &setup.names(), &self.layout)
+        let worker = Worker::new(setup.plan(), &setup.names(), &self.layout)?;
+        Ok(if self.read.is_empty() { worker } else { worker.with_registers() })
     }
 
     /// The block of a point.

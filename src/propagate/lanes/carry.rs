@@ -175,7 +175,6 @@ impl Group {
         };
         let channels: Vec<Packed> = self.channels.iter().map(without_trace).collect();
         let generator = recipe.generator(&without_trace(&self.statics), &channels);
-        let (static_size, sizes) = generator.sizes();
         let mut room = Room::default();
         // a pack that is not full is filled up with zeros, unless there is one column alone
         for some in columns.chunks_mut(PACK) {
@@ -190,7 +189,6 @@ impl Group {
                     acting: stretch.channels(),
                     steps: stretch.weights(),
                     bare: stretch.is_bare(),
-                    largest: self.largest(stretch, static_size, &sizes),
                     columns: &mut carried,
                     count,
                     room: &mut room,

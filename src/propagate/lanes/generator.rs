@@ -154,22 +154,6 @@ impl Recipe {
     }
 }
 
-impl Generator {
-    /// Largest sum of moduli of a row, of the statics and of each channel: bounds of what they do in a second.
-    pub fn sizes(&self) -> (f64, Vec<f64>) {
-        let largest = |part: &dyn Fn(usize, usize) -> f64| {
-            let row = |r: usize, lane: usize| (self.rows[r]..self.rows[r + 1]).map(|e| part(e, lane).abs()).sum::<f64>();
-            (0..self.size).flat_map(|r| (0..8).map(move |lane| (r, lane))).map(|(r, lane)| row(r, lane)).fold(0.0, f64::max)
-        };
-        let of_channel = |parts: &Vec<(usize, Eight)>| {
-            let mut full = vec![Eight::all(0.0); self.columns.len()];
-            parts.iter().for_each(|(entry, part)| full[*entry] = *part);
-            largest(&|e, lane| full[e].0[lane])
-        };
-        (largest(&|e, lane| self.statics[e].0[lane]), self.channels.iter().map(of_channel).collect())
-    }
-}
-
 /// The Hermitian matrix whose packed form is 1 at one place.
 fn unpacked(dim: usize, place: usize) -> Matrix {
     let mut matrix = Matrix::zeros(dim, dim);

@@ -5,7 +5,8 @@
 //! Physics 230, 5930 (2011)): the table [`FACTORS`], of order 6, whose conditions a test holds against the Magnus expansion.
 //!
 //! An exponential is the Taylor series applied to the column by Horner's rule, v <- y + G v/n for n = N .. 1, with the first term left out below
-//! 1e-17 of the column; where G is large it is halved as often as needed and applied so many times.
+//! 1e-17 of the column by the largest sum of moduli in a row of any of the eight; where that is large, G is divided by a whole number and applied
+//! so many times.
 
 use super::generator::Generator;
 use super::lane::{Eight, Kernel, Lane, Simd};
@@ -38,8 +39,6 @@ pub(crate) struct Linear<'a, W> {
     pub steps: W,
     /// Whether G is constant in every step.
     pub bare: bool,
-    /// A bound of the sums of moduli of any row of a1 in any step.
-    pub largest: f64,
     /// What is carried: number k of column c is at `k * count + c`.
     pub columns: &'a mut [Eight],
     /// How many columns there are: 1 or [`TOGETHER`].
@@ -99,9 +98,12 @@ impl<W: Weights> Linear<'_, W> {
         let factors: &[[f64; 3]] = if self.bare { whole } else { &FACTORS };
         for step in 0..self.steps.count() {
             for factor in factors {
-                let largest = self.largest * factor[0].abs().max(0.05);
+                self.fill(simd, step, factor, 1.0);
+                let largest = largest_row(self.generator, &self.room.values);
                 let times = (largest / SERIES_END).ceil().max(1.0);
-                self.fill(simd, step, factor, 1.0 / times);
+                if times > 1.0 {
+                    self.fill(simd, step, factor, 1.0 / times);
+                }
                 for _ in 0..times as usize {
                     exponential::<S, C>(simd, self.generator, terms(largest / times), self.room, self.columns);
                 }
@@ -131,6 +133,28 @@ impl<W: Weights> Linear<'_, W> {
             }
         }
     }
+}
+
+/// Largest sum of moduli in a row of any of the eight.
+#[inline(always)]
+fn largest_row(generator: &Generator, values: &[Eight]) -> f64 {
+    let mut largest = [0.0f64; 8];
+    for row in 0..generator.size {
+        let mut sums = [0.0f64; 8];
+        for entry in generator.rows[row]..generator.rows[row + 1] {
+            for lane in 0..8 {
+                sums[lane] += values[entry].0[lane].abs();
+            }
+        }
+        for lane in 0..8 {
+            largest[lane] = if sums[lane] > largest[lane] { sums[lane] } else { largest[lane] };
+        }
+    }
+    let mut whole = 0.0;
+    for lane in 0..8 {
+        whole = if largest[lane] > whole { largest[lane] } else { whole };
+    }
+    whole
 }
 
 /// columns <- exp(G) columns.
