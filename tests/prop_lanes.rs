@@ -106,7 +106,7 @@ fn prop_points_side_by_side_are_as_right_as_alone() {
                         assert!(error <= 1e-8, "{} with {} of {row:?}: {error:e}\n{text}", column.name, width.word());
                         if let Some(figures) = &figures {
                             checked += 1;
-                            beyond += usize::from(error > figures[k] / column.scale + 1e-12);
+                            beyond += usize::from(error > figures[k] / column.scale + 1e-11);
                         }
                     }
                 }
@@ -127,16 +127,17 @@ fn numbers(row: &Row) -> (&[f64], Option<&[f64]>) {
 /// Threads, parts and what was there before change no bit.
 #[test]
 fn prop_rows_do_not_depend_on_how_points_are_handed_out() {
-    for length in LENGTHS {
+    for (kind, length) in [(2, LENGTHS[0]), (5, LENGTHS[1])] {
         let mut stream = Stream::new(42, 0, 0, 0);
-        check_order(&config(2, BELL, length, &mut || stream.uniform()).replace("points: 11", "points: 29"));
+        check_order(&config(kind, BELL, length, &mut || stream.uniform()).replace("points: 11", "points: 29"));
     }
 }
 
 fn check_order(text: &str) {
     let whole = setup(text, Lanes::chosen());
     let once = table(&whole, 1);
-    assert_eq!(once, table(&whole, 3));
+    assert!(once == table(&whole, 3), "threads make other rows");
+    assert!(whole.bundled().is_ok());
     let mut parts = Vec::new();
     for number in 1..=3 {
         let mut memory = Memory(Vec::new());
@@ -169,7 +170,7 @@ fn check_order(text: &str) {
     }
     parts.sort_by_key(|row| (row.point, std::cmp::Reverse(row.rank())));
     parts.dedup_by_key(|row| row.point);
-    assert_eq!(parts, once);
+    assert!(parts == once, "parts make other rows");
 }
 
 struct Memory(Vec<Row>);
