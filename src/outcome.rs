@@ -4,6 +4,7 @@
 //! [`measure`] makes the runs, [`conclude`] the figures; an average over noise lies between the two.
 
 pub mod budget;
+pub mod sensitivity;
 
 use std::time::Instant as Clock;
 
@@ -91,6 +92,8 @@ pub struct Outcome {
     pub gate: Option<GateFigures>,
     /// The gate error split by cause; empty where that is not asked for.
     pub budget: Vec<budget::Share>,
+    /// How the final numbers depend on the named ones, where that was asked for.
+    pub sensitivity: Option<sensitivity::Sensitivity>,
     /// The steady state of the last stretch, if it is recorded.
     pub steady: Option<Steady>,
     /// Counts behind a read-out.
@@ -368,6 +371,7 @@ pub fn conclude(document: &Document, point: &Point, measured: Measured, clock: C
     Outcome {
         counts: counts_of(document, point, &end_state),
         budget: Vec::new(),
+        sensitivity: None,
         times_s: problem.moments.iter().map(|moment| moment.time_s).collect(),
         rows,
         finals,

@@ -25,7 +25,7 @@ const ROOMS: &[&[&str]] = &[
     &["bundle"],
     &["known"],
     &["noise"],
-    &["compare", "matrices", "scan", "design"],
+    &["compare", "matrices", "scan", "sensitivity", "design"],
     &["report"],
     &["cli"],
 ];

@@ -4,9 +4,11 @@ use clap::Args;
 
 use super::{complain, complain_of, not_drawn, point, print, read_config, Common, Results, Status};
 use crate::noise::{compute, Draws};
-use crate::plan::Plan;
+use crate::outcome::sensitivity::Sensitivity;
+use crate::plan::{Plan, Point};
 use crate::report::folder::{default_folder, prepare};
 use crate::report::{result_json, summary, write};
+use crate::sensitivity::sensitivity;
 
 /// Words of the verb.
 #[derive(Args)]
@@ -15,6 +17,32 @@ pub(super) struct Words {
     common: Common,
     #[command(flatten)]
     results: Results,
+    /// Say how every final number depends on every named number, and how tightly each must be held
+    #[arg(long)]
+    sensitivity: bool,
+    /// What a final number may change by, in place of the accuracy asked for
+    #[arg(long, value_name = "SIZE", requires = "sensitivity", value_parser = tolerance)]
+    tolerance: Option<f64>,
+}
+
+/// A tolerance: a number above 0.
+fn tolerance(word: &str) -> Result<f64, String> {
+    match word.trim().parse::<f64>() {
+        Ok(size) if size > 0.0 && size.is_finite() => Ok(size),
+        _ => Err("a number above 0 is needed, such as 1e-4".to_string()),
+    }
+}
+
+/// The sensitivity of a point, or a complaint.
+fn sensitivities(words: &Words, plan: &Plan, point: &Point) -> Result<Option<Sensitivity>, Status> {
+    if !words.sensitivity {
+        return Ok(None);
+    }
+    sensitivity(plan, point, words.tolerance).map(Some).map_err(|refusal| {
+        let (why, write) = refusal.words();
+        complain(&format!("error: {}: no sensitivity: {why}.\n  Write: {write}\n", words.common.config.display()));
+        Status::Refused
+    })
 }
 
 /// Runs the file.
@@ -28,6 +56,7 @@ fn try_run(words: &Words) -> Result<Status, Status> {
     let plan = Plan::new(read_config(&words.common)?);
     let document = plan.document();
     let point = point(&plan)?;
+    let sensitivity = sensitivities(words, &plan, &point)?;
     let folder = words.results.folder.clone().unwrap_or_else(|| default_folder(document));
     let staging = prepare(&folder, document, words.results.replace).map_err(|fault| {
         complain(&format!("{fault}\n"));
@@ -35,10 +64,11 @@ fn try_run(words: &Words) -> Result<Status, Status> {
     })?;
     complain_of(document, &document.warnings);
     complain_of(document, &point.warnings);
-    let outcome = compute(document, &point, &Draws::of(document)).map_err(|mistake| {
+    let mut outcome = compute(document, &point, &Draws::of(document)).map_err(|mistake| {
         complain_of(document, &[mistake]);
         Status::Refused
     })?;
+    outcome.sensitivity = sensitivity;
     complain_of(document, outcome.warnings());
     let written = write::run(staging, document, &point, &outcome).map_err(|error| {
         complain(&format!("error: the results could not be written to {}: {error}.\n", folder.display()));

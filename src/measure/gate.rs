@@ -145,6 +145,26 @@ impl GateJudge {
     pub fn within(&self) -> &[usize] {
         &self.within
     }
+
+    /// The target.
+    pub(super) fn target(&self) -> &Matrix {
+        &self.target
+    }
+
+    /// Diagonals of the free generators.
+    pub(super) fn free(&self) -> &[Vec<f64>] {
+        &self.free
+    }
+
+    /// Of two levels: whether the first is the lower one.
+    pub(super) fn first_is_lower(&self) -> bool {
+        self.first_is_lower
+    }
+
+    /// The same levels with another target and nothing free.
+    pub(super) fn with_target(&self, target: Matrix) -> GateJudge {
+        GateJudge { target, free: Vec::new(), ..self.clone() }
+    }
 }
 
 /// A matrix written with the lower level first, in the order of `within`.

@@ -12,6 +12,7 @@ mod gate;
 mod gate_recorder;
 #[cfg(test)]
 mod gate_tests;
+mod held;
 mod lost;
 mod mean;
 mod outside;

@@ -21,6 +21,8 @@ pub mod scan_files;
 pub mod scan_folder;
 pub mod scan_json;
 pub mod scan_text;
+pub mod sensitivity_json;
+pub mod sensitivity_text;
 pub mod summary;
 pub mod traces_csv;
 pub mod write;

@@ -97,6 +97,9 @@ pub fn result(document: &Document, point: &Point, outcome: &Outcome) -> Value {
     if !outcome.budget.is_empty() {
         put("error_budget", outcome.budget.iter().map(|share| (share.name.to_string(), number(share.value))).collect::<Map<_, _>>().into());
     }
+    if let Some(sensitivity) = &outcome.sensitivity {
+        put("sensitivity", super::sensitivity_json::sensitivity(sensitivity));
+    }
     put("end_state", end_state(document, &outcome.end_state));
     put("ledger", super::frame_json::ledger(document, point));
     put("ledger_by_pair", super::frame_json::by_pair(document, point));

@@ -185,6 +185,9 @@ pub fn summary(document: &Document, point: &Point, outcome: &Outcome, place: Opt
             Err(reason) => format!("cross-check by {} was not made: {reason}\n", check.method),
         });
     }
+    if let Some(sensitivity) = &outcome.sensitivity {
+        text.push_str(&super::sensitivity_text::text(sensitivity));
+    }
     if let Some(place) = place {
         text.push_str(&format!("files: {place}\n"));
     }

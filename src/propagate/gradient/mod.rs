@@ -36,14 +36,18 @@
 //! | `goals.rs` | [`Goal`] and the goals that are at hand |
 //! | `plain.rs` | one set of samples by eigenvectors, for any number of levels |
 //! | `side_by_side.rs` | eight sets at a time, for few levels |
+//! | `carried.rs`, `flow.rs` | by whatever moves a [`Problem`](crate::problem::Problem), drives of any shape, open and closed |
 
+mod carried;
 mod controlled;
+mod flow;
 mod goals;
 mod plain;
 mod side_by_side;
 #[cfg(test)]
 mod tests;
 
+pub use carried::{apart, Apart, Carried, Moved, Seed, TooLarge};
 pub use controlled::{Controlled, GradientFault};
 pub use goals::{AverageGateError, GateOverlap, Goal, Mean};
 pub use plain::plain_gradient;
