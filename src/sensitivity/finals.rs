@@ -43,7 +43,7 @@ impl<'a> Finals<'a> {
     pub fn start(&self) -> Matrix {
         let dim = self.problem.dim();
         let state = match self.problem.start.amplitudes().filter(|_| !self.open) {
-            Some(amplitudes) => Matrix::from_columns(&[amplitudes.clone()]),
+            Some(amplitudes) => Matrix::from_columns(std::slice::from_ref(amplitudes)),
             None => self.problem.start.density(),
         };
         let within = self.within();
