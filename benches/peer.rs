@@ -4,6 +4,8 @@
 //! that `PEER_OUT` names, as one flat JSON list. The clock runs from the numbers of the workload to the finished outputs: the config is
 //! written from them, read, planned and computed, as `nutate scan` does it, all within.
 
+#[path = "peer/gradients.rs"]
+mod gradients;
 #[path = "peer/laboratory.rs"]
 mod laboratory;
 #[path = "peer/numbers.rs"]
@@ -59,7 +61,7 @@ fn main() -> Result<(), Box<dyn Error>> {
         "W3" => laboratory::scan(&numbers, cores),
         "W4" => propagators::propagators(&numbers, cores),
         "W5" => open::smooth(&numbers, cores),
-        // W6, gradients, has its place here
+        "W6" => gradients::gate_error(&numbers, cores),
         "W7" => laboratory::many_levels(&numbers, cores),
         "W8" | "W9" => laboratory::runs(&numbers, cores),
         "W11" => open::slices(&numbers, cores),
