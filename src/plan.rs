@@ -16,7 +16,7 @@ use crate::config::decay::{Decay, Leaves};
 use crate::config::dephasing::{Dephasing, Weights};
 use crate::config::document::{not_finite, Document};
 use crate::config::drives::{Drive, DriveMatrix, Form};
-use crate::config::envelopes::{Samples, SizeWord};
+use crate::config::envelopes::{Derivative, Samples, SizeWord};
 use crate::config::messages::{short_with_unit, Fault, Mistake, OpenFault};
 use crate::config::record::{Cause, Item};
 use crate::config::settings::{Follows, Frame, Rotating};
@@ -118,6 +118,8 @@ struct Touched {
     following: Vec<Register>,
     couplings: bool,
     curves: Vec<bool>,
+    /// Weights of derivative quadratures.
+    quadratures: bool,
     start: bool,
     surroundings: bool,
 }
@@ -328,7 +330,8 @@ impl<'p> Mover<'p> {
     /// The same with every envelope held at 1 all through its pulse, so that the terms of its problem hold the sizes of the drives alone;
     /// nothing where a moved number touches the shape of an envelope, the surroundings or the start.
     pub fn flattened(mut self) -> Result<Option<Mover<'p>>, Mistake> {
-        if self.touched.curves.contains(&true) || self.touched.surroundings || self.touched.start {
+        let touched = &self.touched;
+        if touched.curves.contains(&true) || touched.quadratures || touched.surroundings || touched.start {
             return Ok(None);
         }
         for curve in &mut self.point.curves {
@@ -362,6 +365,7 @@ impl Touched {
                     || matches!(&envelope.samples, Some(Samples::List(list)) if list.iter().any(|register| is(*register)))
             })
             .collect();
+        let quadrature = |derivative: Derivative| is(derivative.factor.register) || is(derivative.against.register);
         // what comes with the system moves with it
         let operator = |index: usize| {
             let entries = document.operators[index].entries();
@@ -396,6 +400,7 @@ impl Touched {
             following,
             couplings: document.drives.iter().any(|drive| drive_registers(document, drive).into_iter().any(is)),
             curves,
+            quadratures: document.envelopes.iter().filter_map(|envelope| envelope.derivative).any(quadrature),
             start,
             surroundings,
             registers,

@@ -9,7 +9,7 @@ use super::order::scattered;
 use super::row::{Checked, Found, Row};
 use super::setup::{Setup, TableColumn};
 use crate::bundle::{Layout, Worker};
-use crate::outcome::FinalColumn;
+use crate::outcome::{compute, FinalColumn};
 use crate::propagate::figure;
 use crate::propagate::lanes::Width;
 
@@ -35,6 +35,31 @@ pub struct Bundled {
     points: u64,
 }
 
+/// Holds a few samples side by side against the same points alone, so that nothing that moves is left out of a layout; the reason,
+/// where they differ by more than their errors.
+fn agree(setup: &Setup, finals: &[FinalColumn], layout: &Layout, samples: &[Vec<f64>]) -> Result<(), String> {
+    let (plan, names) = (setup.plan(), setup.names());
+    let accuracy = setup.document().accuracy.last;
+    let mut worker = Worker::new(plan, &names, layout)?;
+    let last = samples.len().saturating_sub(1);
+    let mut picked = vec![0, last / 3, last];
+    picked.dedup();
+    for sample in picked.into_iter().filter_map(|k| samples.get(k)) {
+        let Ok(mover) = plan.mover_from(&names, sample) else { continue };
+        let alone = compute(plan.document(), mover.point());
+        let found = worker.numbers(layout, std::slice::from_ref(sample), false)?;
+        let apart = alone.finals.iter().zip(finals).zip(&found).map(|((alone, column), found)| {
+            let figure = alone.error / column.scale + accuracy.max(layout.floor());
+            (alone.value / column.scale - found).abs() / figure
+        });
+        // a point alone that is not accurate itself says nothing
+        if alone.reached && !(apart.fold(0.0, f64::max) <= 1.0) {
+            return Err("points alone give other numbers".to_string());
+        }
+    }
+    Ok(())
+}
+
 impl Bundled {
     /// Lays out the points of a scan; the reason, where they must be computed one by one.
     pub fn new(setup: &Setup, finals: &[FinalColumn], width: Width) -> Result<Bundled, String> {
@@ -54,6 +79,7 @@ impl Bundled {
             }
             Layout::own(setup.plan(), &names, &samples, width).map_err(|_| reason)
         })?;
+        agree(setup, finals, &layout, &samples)?;
         let place = |name: &str| finals.iter().position(|last| last.name == name);
         let lost = || "a column is not among the final numbers".to_string();
         let fixed = setup.columns.iter().filter(|column| !column.derived);
