@@ -4,10 +4,12 @@
 //! Energies over h in Hz, operators in SI. Eigenvalues of a static matrix that falls apart into blocks are found block by block,
 //! so that none is rounded on the scale of another.
 
-use nalgebra::SymmetricEigen;
 use num_complex::Complex64;
 
+use crate::config::decay::Leaves;
+use crate::config::dephasing::Weights;
 use crate::config::document::Document;
+use crate::config::drives::DriveMatrix;
 use crate::config::messages::Mistake;
 use crate::config::record::Item;
 use crate::model;
@@ -60,15 +62,28 @@ pub struct Matrices {
     pub commutators: Vec<(String, f64)>,
     /// Where the cut basis breaks [position, momentum] = i (or i hbar): name of the part, level by level the diagonal over i.
     pub canonical: Vec<(String, Vec<f64>)>,
+    /// Operators that lead out of the kept states: name, and for each state n |A n| outside them over |A n|.
+    pub leaving: Vec<(String, Vec<f64>)>,
+    /// Operators of the system that are too many and too large to be kept.
+    pub left_out: usize,
     /// Largest error of a level over the largest level.
     pub error_figure: f64,
 }
+
+/// A share of an image outside the kept states that is more than rounding.
+const LEAVES: f64 = 1e-4;
+/// Bytes that operators may take; beyond these only typed ones and those that the run uses are kept.
+const MOST_BYTES: f64 = 2.56e8;
 
 /// The matrices of a plan with the numbers as written.
 pub fn matrices(plan: &Plan) -> Result<Matrices, Mistake> {
     let document = plan.document();
     let still = plan.still()?;
-    let operators = operators(document, &still);
+    let size = still.built.size() as f64;
+    let all = document.operators.len() as f64 * size * size * 16.0 <= MOST_BYTES;
+    let used = |index: usize| all || document.operators[index].entries().is_some() || is_used(document, index);
+    let operators = operators(document, &still, &used);
+    let left_out = document.operators.len() - operators.len();
     let drives: Vec<Named> = document
         .drives
         .iter()
@@ -83,10 +98,34 @@ pub fn matrices(plan: &Plan) -> Result<Matrices, Mistake> {
     let lines = if small { lines(&still.energies_hz) } else { Vec::new() };
     let commutators = if small { terms_of_the_run(document, &operators, &drives, statics) } else { Vec::new() };
     let canonical = canonical(&operators);
-    Ok(Matrices { eigenvalues_hz, operators, drives, lines, commutators, canonical, error_figure, still })
+    let leaving = if small { leaving(document, &still) } else { Vec::new() };
+    Ok(Matrices { eigenvalues_hz, operators, drives, lines, commutators, canonical, leaving, left_out, error_figure, still })
 }
 
-fn operators(document: &Document, still: &Still) -> Vec<Named> {
+/// Whether a record, a drive, a decay or a dephasing speaks of the operator of this index.
+fn is_used(document: &Document, index: usize) -> bool {
+    let recorded = document.record.items.iter().any(|item| matches!(item, Item::MeanOf(list) if list.contains(&index)));
+    let drives = document.drives.iter().any(|drive| matches!(drive.matrix, DriveMatrix::Operator(of) if of == index));
+    let decays = document.decays.iter().any(|decay| matches!(decay.leaves, Leaves::Operator(of) if of == index));
+    let dephasings = document.dephasings.iter().any(|one| matches!(one.weights, Weights::Operator(of) if of == index));
+    recorded || drives || decays || dephasings
+}
+
+/// Where operators lead out of the kept states: there the product of two matrices is not the matrix of the product.
+fn leaving(document: &Document, still: &Still) -> Vec<(String, Vec<f64>)> {
+    let mut found = Vec::new();
+    for operator in document.operators.iter().filter(|operator| operator.entries().is_none()) {
+        let Some(norms) = still.built.leaving(&operator.name) else { continue };
+        let share = |[outside, all]: &[f64; 2]| if *all > 0.0 { outside / all } else { 0.0 };
+        let shares: Vec<f64> = norms.iter().map(share).map(|share| if share > LEAVES { share } else { 0.0 }).collect();
+        if shares.iter().any(|share| *share > 0.0) {
+            found.push((operator.name.clone(), shares));
+        }
+    }
+    found
+}
+
+fn operators(document: &Document, still: &Still, used: &dyn Fn(usize) -> bool) -> Vec<Named> {
     let one = |(index, operator): (usize, &crate::config::system::Operator)| Named {
         name: operator.name.clone(),
         unit: still.built.unit(&operator.name),
@@ -95,7 +134,8 @@ fn operators(document: &Document, still: &Still) -> Vec<Named> {
     };
     // those that come with the system first, as typed ones are made of them
     let (own, typed): (Vec<Named>, Vec<Named>) = {
-        let all: Vec<(bool, Named)> = document.operators.iter().enumerate().map(|pair| (pair.1.entries().is_none(), one(pair))).collect();
+        let all: Vec<(bool, Named)> =
+            document.operators.iter().enumerate().filter(|pair| used(pair.0)).map(|pair| (pair.1.entries().is_none(), one(pair))).collect();
         let (own, typed): (Vec<_>, Vec<_>) = all.into_iter().partition(|(own, _)| *own);
         (own.into_iter().map(|(_, named)| named).collect(), typed.into_iter().map(|(_, named)| named).collect())
     };
@@ -168,9 +208,9 @@ pub fn eigenvalues(matrix: &Matrix) -> Vec<f64> {
         let real = block.iter().all(|a| block.iter().all(|b| matrix[(*a, *b)].im == 0.0));
         let levels: Vec<f64> = if real {
             let part = nalgebra::DMatrix::from_fn(size, size, |row, column| entry(row, column).re);
-            SymmetricEigen::new(part).eigenvalues.iter().copied().collect()
+            part.symmetric_eigenvalues().iter().copied().collect()
         } else {
-            SymmetricEigen::new(Matrix::from_fn(size, size, entry)).eigenvalues.iter().copied().collect()
+            Matrix::from_fn(size, size, entry).symmetric_eigenvalues().iter().copied().collect()
         };
         found.extend(levels.into_iter().map(|level| level + mean));
     }

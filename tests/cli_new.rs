@@ -28,8 +28,10 @@ fn run_of(kind: &str) -> serde_json::Value {
     let wrote = nutate(folder.path(), &["new", kind]);
     assert_eq!(wrote.status.code(), Some(0), "{}", text(&wrote.stderr));
     let config = format!("{kind}.yaml");
-    assert!(text(&wrote.stdout).ends_with(&format!("then type: nutate run {config}\n")));
-    let ran = nutate(folder.path(), &["run", &config]);
+    // levels alone have no sequence to run
+    let verb = if kind == "levels" { "scan" } else { "run" };
+    assert!(text(&wrote.stdout).ends_with(&format!("then type: nutate {verb} {config}\n")));
+    let ran = nutate(folder.path(), &[verb, &config]);
     assert_eq!(ran.status.code(), Some(0), "{kind}: {}{}", text(&ran.stdout), text(&ran.stderr));
     if kind == "strong-spin" {
         assert!(text(&ran.stderr).starts_with("warning: "), "{kind} drops what it should not, and is told so");
@@ -37,7 +39,11 @@ fn run_of(kind: &str) -> serde_json::Value {
         assert_eq!(text(&ran.stderr), "", "{kind} runs without a warning");
     }
     let results = folder.path().join("outputs").join(kind);
-    for file in ["traces.csv", "traces.png", "traces.svg", "envelopes.png", "spectrum.png", "config.yaml"] {
+    let files = match verb {
+        "scan" => ["scan.csv", "levels.csv", "levels.png", "transitions.csv", "transitions.png", "config.yaml"],
+        _ => ["traces.csv", "traces.png", "traces.svg", "envelopes.png", "spectrum.png", "config.yaml"],
+    };
+    for file in files {
         assert!(results.join(file).is_file(), "{kind} leaves {file}");
     }
     let bytes = fs::read(results.join("result.json")).expect("a run leaves result.json");
@@ -70,6 +76,20 @@ fn cli_every_starter_runs_to_its_accuracy() {
 fn exact_flip_meets_the_formula_of_rabi() {
     let up = number(&run_of("flip"), "/final/populations/up");
     assert!((up - 0.8120212189775531).abs() < 1e-12, "{up}");
+}
+
+// The state 0 lies at -2/3 D, the state -1 at D/3 - 28.03 GHz/T B: they meet at B = D/28.03 GHz/T, 67.8 mT, where half of the
+// transverse moment, sqrt(2) 28.03 GHz/T 2.5 mT / 2, ties them; the third state and the rhombic term move both by a few per cent.
+#[test]
+fn exact_levels_of_a_spin_avoid_each_other() {
+    let followed = &run_of("levels")["followed"];
+    let crossings = followed["crossings"].as_array().expect("a list of crossings");
+    assert_eq!(crossings.len(), 1, "{followed}");
+    assert_eq!(crossings[0]["names"], serde_json::json!(["0", "-1"]));
+    let (at, gap) = (number(&crossings[0], "/at"), number(&crossings[0], "/closest_Hz"));
+    assert!((at - 1.9e3 / 28.03).abs() < 1.0, "{at} mT");
+    let tie = 2.0 * 28.03e9 * 2.5e-3 / 2f64.sqrt();
+    assert!((gap / tie - 1.0).abs() < 0.05 && followed["not_followed"].as_array().is_some_and(Vec::is_empty), "{gap} {tie}");
 }
 
 /// Compares the variants of the config of a kind in an empty folder and returns what was printed and the result.

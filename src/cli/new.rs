@@ -87,5 +87,7 @@ fn written(starter: &Starter, file: &Path, files: &[(PathBuf, &str)]) -> String 
     let names: Vec<String> = files.iter().rev().map(|(path, _)| path.display().to_string()).collect();
     let name = file.display().to_string();
     let quoted = if name.contains(char::is_whitespace) { format!("'{name}'") } else { name };
-    format!("wrote {}: {}\nread it, then type: nutate run {quoted}\n", names.join(" and "), starter.about)
+    // without a sequence there is nothing to run
+    let verb = if starter.text.contains("\nsequence:") { "run" } else { "scan" };
+    format!("wrote {}: {}\nread it, then type: nutate {verb} {quoted}\n", names.join(" and "), starter.about)
 }

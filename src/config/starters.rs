@@ -123,6 +123,12 @@ pub const STARTERS: &[Starter] = &[
         text: include_str!("../../configs/double-well.yaml"),
         beside: &[],
     },
+    Starter {
+        kind: "levels",
+        about: "a spin against the field: its levels and lines followed through an avoided crossing",
+        text: include_str!("../../configs/levels.yaml"),
+        beside: &[],
+    },
 ];
 
 /// The starter of a kind; blanks and underscores count as dashes, large letters as small ones.

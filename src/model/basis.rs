@@ -12,6 +12,7 @@ use nalgebra::SymmetricEigen;
 use num_complex::Complex64;
 
 use super::built::Built;
+use super::product::{adjoint_product, product};
 use crate::config::basis::{judge, Basis, NewState};
 use crate::config::messages::{Fault, Mistake};
 use crate::config::system::functions::Orthogonalise;
@@ -57,7 +58,7 @@ pub fn change(mut built: Built, basis: &Basis, names: &[String], values: &[f64])
             built.weights = columns.column_iter().map(|column| column.iter().map(|z| z.norm_sqr()).fold(0.0, f64::max)).collect();
             built.sum_rule.clear();
             built.lost_hz = lost(&built.statics_hz, &columns);
-            built.statics_hz = hermitian(columns.adjoint() * &built.statics_hz * &columns);
+            built.statics_hz = hermitian(adjoint_product(&columns, &product(&built.statics_hz, &columns)));
             built.energies = built.statics_hz.diagonal().iter().map(|z| Wide { high: z.re, low: 0.0 }).collect();
             built.basis = Some(Arc::new(columns));
         }
@@ -114,23 +115,33 @@ fn eigenstates(matrix: &Matrix, diagonal: &[Wide]) -> Eigen {
                 matrix[(block[i], block[j])]
             }
         });
-        let solved = SymmetricEigen::new(inner.clone());
+        let (values, raw) = solved(&inner);
         let mut order: Vec<usize> = (0..count).collect();
-        order.sort_by(|a, b| solved.eigenvalues[*a].total_cmp(&solved.eigenvalues[*b]));
-        let levels: Vec<f64> = order.iter().map(|k| solved.eigenvalues[*k]).collect();
-        let raw = Matrix::from_fn(count, count, |row, k| solved.eigenvectors[(row, order[k])]);
+        order.sort_by(|a, b| values[*a].total_cmp(&values[*b]));
+        let levels: Vec<f64> = order.iter().map(|k| values[*k]).collect();
+        let raw = Matrix::from_fn(count, count, |row, k| raw[(row, order[k])]);
         let vectors = settled(raw, &levels);
+        let images = product(&inner, &vectors);
         for (k, home) in block.iter().enumerate() {
             for (row, place) in block.iter().enumerate() {
                 eigen.vectors[(*place, *home)] = vectors[(row, k)];
             }
             // the Rayleigh quotient squares what rounding left in the vector
-            let column = vectors.column(k);
-            let level = (column.adjoint() * &inner * column)[(0, 0)].re;
+            let level = vectors.column(k).dotc(&images.column(k)).re;
             eigen.energies[*home] = Wide { high: mean, low: 0.0 }.plus(Wide { high: level, low: 0.0 });
         }
     }
     eigen
+}
+
+/// Eigenvalues and eigenvectors in any order; of a real matrix by real numbers, which is four times as fast.
+fn solved(matrix: &Matrix) -> (Vec<f64>, Matrix) {
+    if matrix.iter().all(|z| z.im == 0.0) {
+        let eigen = SymmetricEigen::new(matrix.map(|z| z.re));
+        return (eigen.eigenvalues.iter().copied().collect(), eigen.eigenvectors.map(Complex64::from));
+    }
+    let eigen = SymmetricEigen::new(matrix.clone());
+    (eigen.eigenvalues.iter().copied().collect(), eigen.eigenvectors)
 }
 
 /// Turns the vectors of levels that coincide to states as built, and gives each its phase.

@@ -5,6 +5,7 @@ use std::sync::Arc;
 use num_complex::Complex64;
 
 use super::mode::displacement;
+use super::product::{adjoint_product, product};
 use crate::config::drives::Light;
 use crate::config::messages::Mistake;
 use crate::config::tape::Wide;
@@ -25,12 +26,14 @@ pub struct Block {
     pub after: usize,
     /// Largest error of an entry (grid, quadrature), in the unit of the entries; 0 where there is none but rounding.
     pub error: f64,
+    /// Scalar products of what it leads to outside the kept states, <A m| (1 - P) |A n>; none where nothing is cut or known.
+    pub beyond: Option<Arc<Matrix>>,
 }
 
 impl Block {
     /// A matrix of a system that is no part.
     pub fn new(name: &str, unit: &'static str, matrix: Matrix) -> Block {
-        Block { name: name.to_string(), unit, matrix: Arc::new(matrix), before: 1, after: 1, error: 0.0 }
+        Block { name: name.to_string(), unit, matrix: Arc::new(matrix), before: 1, after: 1, error: 0.0, beyond: None }
     }
 
     /// The same as a part of a joint system.
@@ -46,6 +49,11 @@ impl Block {
         let mut whole = Matrix::zeros(size, size);
         self.add_to(&mut whole, Complex64::from(1.0));
         whole
+    }
+
+    /// The same matrix beside the others, of what it leads to outside the kept states.
+    pub fn outside(&self) -> Option<Block> {
+        self.beyond.as_ref().map(|beyond| Block { matrix: beyond.clone(), beyond: None, ..self.clone() })
     }
 
     /// Adds `factor` times the whole matrix to `sum`.
@@ -143,7 +151,7 @@ impl Built {
     pub fn to_working(&self, as_built: Matrix) -> Matrix {
         match &self.basis {
             None => as_built,
-            Some(basis) => basis.adjoint() * as_built * basis.as_ref(),
+            Some(basis) => adjoint_product(basis, &product(&as_built, basis)),
         }
     }
 
@@ -160,6 +168,26 @@ impl Built {
     /// Largest error of an entry of the operator of this name, in its unit.
     pub fn operator_error(&self, name: &str) -> f64 {
         self.operators.iter().find(|block| block.name == name).map_or(0.0, |block| block.error)
+    }
+
+    /// For each working state n the norm of what the operator of this name makes of it, |A n|, outside the working states, and in all;
+    /// none for an operator that does not come with the kind.
+    pub fn leaving(&self, name: &str) -> Option<Vec<[f64; 2]>> {
+        let block = self.operators.iter().find(|block| block.name == name)?;
+        let whole = block.dense();
+        let image = match &self.basis {
+            None => whole,
+            Some(basis) => product(&whole, basis),
+        };
+        let inside = self.basis.as_ref().map(|basis| adjoint_product(basis, &image));
+        let outside = block.outside().map(|block| self.to_working(block.dense()));
+        let leaving = |n: usize| {
+            let all = image.column(n).norm_squared();
+            let kept = inside.as_ref().map_or(all, |inside| inside.column(n).norm_squared());
+            let beyond = outside.as_ref().map_or(0.0, |outside| outside[(n, n)].re.max(0.0));
+            [((all - kept).max(0.0) + beyond).sqrt(), (all + beyond).sqrt()]
+        };
+        Some((0..self.size()).map(leaving).collect())
     }
 
     /// lower + raise of a part, in the working basis.

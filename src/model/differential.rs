@@ -91,15 +91,66 @@ pub fn matrix(family: &dyn Family, terms: &[Term]) -> Result<Integrals, Differen
 
 /// Adds the integral from `from` to `to` of w(x) a(x) b(x)^T, 20 points; `at` gives a, b and w.
 pub fn add_products(sum: &mut DMatrix<f64>, from: f64, to: f64, at: &dyn Fn(f64) -> (Vec<f64>, Vec<f64>, f64)) {
+    let half = 0.5 * (to - from);
+    let sides: Vec<(Vec<f64>, Vec<f64>)> = nodes(from, to)
+        .map(|(x, weight)| {
+            let (mut left, right, factor) = at(x);
+            left.iter_mut().for_each(|a| *a *= weight * half * factor);
+            (left, right)
+        })
+        .collect();
+    *sum += outer(&sides);
+}
+
+/// The nodes of the rule between two ends, with their weights.
+fn nodes(from: f64, to: f64) -> impl Iterator<Item = (f64, f64)> {
     let (middle, half) = (0.5 * (from + to), 0.5 * (to - from));
-    for (node, weight) in NODES.iter().flat_map(|(node, weight)| [(-node, weight), (*node, weight)]) {
-        let (left, right, factor) = at(middle + half * node);
-        for (column, b) in right.iter().enumerate() {
-            for (row, a) in left.iter().enumerate() {
-                sum[(row, column)] += weight * half * factor * a * b;
+    NODES.iter().flat_map(|(node, weight)| [(-node, *weight), (*node, *weight)]).map(move |(node, weight)| (middle + half * node, weight))
+}
+
+/// Sum of a b^T over all sides, as one product of matrices.
+fn outer(sides: &[(Vec<f64>, Vec<f64>)]) -> DMatrix<f64> {
+    let rows = sides.first().map_or(0, |side| side.0.len());
+    let columns = sides.first().map_or(0, |side| side.1.len());
+    let left = DMatrix::from_fn(rows, sides.len(), |row, k| sides[k].0[row]);
+    let right = DMatrix::from_fn(sides.len(), columns, |k, column| sides[k].1[column]);
+    left * right
+}
+
+/// Functions kept at most for [`images`]: their products cost the square.
+const MOST_IMAGES: usize = 100;
+
+/// Scalar products of A f_m and A f_n, A the sum of the terms, real and imaginary part: what A makes of each function, whether or not it
+/// lies in their span. None where a derivative meets a step, or where there are very many functions. Good to about 1e-10.
+pub fn images(family: &dyn Family, terms: &[(Term, Option<Profile>)]) -> Option<DMatrix<f64>> {
+    let highest = terms.iter().map(|(term, _)| term.order).max()?;
+    let (size, orders) = (family.count(), highest + 1);
+    if size > MOST_IMAGES || orders > ORDERS || highest > family.continuous().saturating_add(1) {
+        return None;
+    }
+    let mut sum = DMatrix::zeros(size, size);
+    for (panel, [from, to]) in family.panels().into_iter().enumerate() {
+        let middle = 0.5 * (from + to);
+        for (left, right) in [(from, middle), (middle, to)] {
+            for imaginary in [false, true] {
+                if imaginary && terms.iter().all(|(_, other)| other.is_none()) {
+                    continue;
+                }
+                add_products(&mut sum, left, right, &|x| {
+                    let jets = family.jets(panel, x, orders);
+                    let part = |(term, other): &(Term, Option<Profile>)| match (imaginary, other) {
+                        (false, _) => term.coefficient.value(x),
+                        (true, Some(other)) => other.value(x),
+                        (true, None) => 0.0,
+                    };
+                    let image = |jet: &Taylor<ORDERS>| terms.iter().map(|pair| part(pair) * jet.derivative(pair.0.order)).sum();
+                    let images: Vec<f64> = jets.iter().map(image).collect();
+                    (images.clone(), images, 1.0)
+                });
             }
         }
     }
+    Some(sum)
 }
 
 /// How one term is integrated.
@@ -149,20 +200,18 @@ impl Plan<'_> {
 
     /// The rule on one panel, and the integral of the largest modulus.
     fn rule(&self, from: f64, to: f64, panel: usize) -> (DMatrix<f64>, f64) {
-        let size = self.family.count();
-        let (middle, half) = (0.5 * (from + to), 0.5 * (to - from));
-        let (mut sum, mut modulus) = (DMatrix::zeros(size, size), 0.0);
-        for (node, weight) in NODES.iter().flat_map(|(node, weight)| [(-node, weight), (*node, weight)]) {
-            let (left, right) = self.sides(panel, middle + half * node);
-            let largest = |side: &[f64]| side.iter().fold(0.0f64, |most, value| most.max(value.abs()));
-            modulus += weight * half * largest(&left) * largest(&right);
-            for (column, b) in right.iter().enumerate() {
-                for (row, a) in left.iter().enumerate() {
-                    sum[(row, column)] += weight * half * a * b;
-                }
-            }
-        }
-        (sum, modulus)
+        let half = 0.5 * (to - from);
+        let mut modulus = 0.0;
+        let sides: Vec<(Vec<f64>, Vec<f64>)> = nodes(from, to)
+            .map(|(x, weight)| {
+                let (mut left, right) = self.sides(panel, x);
+                let largest = |side: &[f64]| side.iter().fold(0.0f64, |most, value| most.max(value.abs()));
+                modulus += weight * half * largest(&left) * largest(&right);
+                left.iter_mut().for_each(|a| *a *= weight * half);
+                (left, right)
+            })
+            .collect();
+        (outer(&sides), modulus)
     }
 
     /// (-1)^s times the integral, fine and coarse.

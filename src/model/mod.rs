@@ -12,6 +12,7 @@ pub mod gaps;
 pub mod grid;
 mod mode;
 mod parts;
+pub mod product;
 pub mod spin;
 pub mod surroundings;
 mod typed_differential;

@@ -24,7 +24,20 @@ pub fn build(mode: &Mode, values: &[f64]) -> Built {
         }
     });
     let rungs: Vec<f64> = (1..mode.levels).map(|n| (n as f64).sqrt()).collect();
-    with_operators("mode", statics, &rungs)
+    let mut built = with_operators("mode", statics, &rungs);
+    // the next rung leads from the last kept state to the first that is cut
+    let next = mode.levels as f64;
+    for block in &mut built.operators {
+        let share = match block.name.as_str() {
+            "raise" => next,
+            "position" | "momentum" => 0.5 * next,
+            _ => continue,
+        };
+        let mut beyond = Matrix::zeros(mode.levels, mode.levels);
+        beyond[(mode.levels - 1, mode.levels - 1)] = share.into();
+        block.beyond = Some(std::sync::Arc::new(beyond));
+    }
+    built
 }
 
 /// Adds the operators of a ladder to its static matrix, Hz.

@@ -1,5 +1,7 @@
 //! A differential operator as typed, as a matrix between functions.
 
+use std::sync::Arc;
+
 use nalgebra::DMatrix;
 use num_complex::Complex64;
 
@@ -29,6 +31,29 @@ fn profile(formula: &Formula, values: &[f64]) -> Profile {
     } else {
         Profile::Formula(bound)
     }
+}
+
+/// Real and imaginary coefficient of a term.
+fn parts_of(term: &WrittenTerm, values: &[f64]) -> (Term, Option<Profile>) {
+    let real = Term { order: term.order, coefficient: profile(&term.coefficient, values) };
+    (real, term.imaginary.as_ref().map(|imaginary| profile(imaginary, values)))
+}
+
+/// What is smaller than this share of |A n|^2 is rounding of the difference.
+const CANCELS: f64 = 1e-9;
+
+/// <A m| (1 - P) |A n> from the scalar products of the images and the matrix of A in the kept states.
+pub fn beyond(matrix: &Matrix, images: Matrix) -> Option<Arc<Matrix>> {
+    let size: Vec<f64> = (0..images.nrows()).map(|n| images[(n, n)].re.max(0.0).sqrt()).collect();
+    let mut left = images - matrix.adjoint() * matrix;
+    for column in 0..size.len() {
+        for row in 0..size.len() {
+            if left[(row, column)].norm() <= CANCELS * size[row] * size[column] {
+                left[(row, column)] = 0.0.into();
+            }
+        }
+    }
+    left.iter().any(|z| z.norm() > 0.0).then(|| Arc::new(left))
 }
 
 /// The matrix of one term on `family`, at both resolutions of the quadrature, in Hz or SI.
@@ -100,5 +125,11 @@ pub fn block(
     }
     let coarse = found.pop().unwrap_or_default();
     let fine = found.pop().unwrap_or_default();
-    Ok(Some(measured(&operator.name, unit, fine, &coarse)))
+    let mut block = measured(&operator.name, unit, fine, &coarse);
+    let terms: Vec<(Term, Option<Profile>)> = differential.terms.iter().map(|term| parts_of(term, values)).collect();
+    if let Some(images) = differential::images(families[0], &terms) {
+        let images = images.map(Complex64::from) * Complex64::from(factor * factor);
+        block.beyond = beyond(&block.matrix, shares.map_or(images.clone(), |shares| shares[0].adjoint() * images * &shares[0]));
+    }
+    Ok(Some(block))
 }

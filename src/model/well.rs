@@ -164,15 +164,24 @@ fn natural(well: &Well, pieces: &[Piece], functions: &[Eigenfunctions; 2]) -> Re
     let mut blocks = Vec::new();
     if !well.ring {
         let x = Profile::Line { at: 0.0, value: 0.0, slope: 1.0 };
-        let [fine, coarse] = of(&[Term { order: 0, coefficient: x }], 1.0.into(), 1.0)?;
-        blocks.push(measured("position", "m", fine, &coarse));
+        let place = Term { order: 0, coefficient: x };
+        let [fine, coarse] = of(std::slice::from_ref(&place), 1.0.into(), 1.0)?;
+        blocks.push(with_images(measured("position", "m", fine, &coarse), &functions[0], place, 1.0));
     }
     let slope = Term { order: 1, coefficient: Profile::Constant(1.0) };
-    let [fine, coarse] = of(&[slope], Complex64::new(0.0, -HBAR_J_S), -1.0)?;
-    blocks.push(measured("momentum", "kg m/s", fine, &coarse));
+    let [fine, coarse] = of(std::slice::from_ref(&slope), Complex64::new(0.0, -HBAR_J_S), -1.0)?;
+    blocks.push(with_images(measured("momentum", "kg m/s", fine, &coarse), &functions[0], slope, HBAR_J_S));
     let [fine, coarse] = [kinetic(pieces, &functions[0]), kinetic(pieces, &functions[1])];
     blocks.push(measured("kinetic", "J", fine, &coarse));
     Ok(blocks)
+}
+
+/// A block with what its operator, `factor` times `term`, leads to outside the kept states.
+fn with_images(mut block: Block, functions: &Eigenfunctions, term: Term, factor: f64) -> Block {
+    if let Some(images) = differential::images(functions, &[(term, None)]) {
+        block.beyond = typed_differential::beyond(&block.matrix, images.map(|entry| Complex64::from(entry * factor * factor)));
+    }
+    block
 }
 
 /// integral of hbar^2/(2 m) f_a' f_b', J: the form that holds at a step of the mass too.

@@ -78,6 +78,14 @@ pub fn result(document: &Document, found: &Matrices) -> Value {
         (key, diagonal.iter().map(|value| number(*value)).collect::<Value>())
     });
     put("position_momentum", Value::Object(canonical.collect()));
+    let names = &document.system.names;
+    let shares = |shares: &[f64]| -> Value {
+        let hit = names.iter().zip(shares).filter(|(_, share)| **share > 0.0);
+        Value::Object(hit.map(|(name, share)| (name.clone(), number(*share))).collect())
+    };
+    put("leads_out", Value::Object(found.leaving.iter().map(|(name, list)| (name.clone(), shares(list))).collect()));
+    put("lost_Hz", number(built.lost_hz));
+    put("operators_left_out", json!(found.left_out));
     if let Some(overlap) = &built.overlap {
         put("overlap", rows(overlap));
     }

@@ -23,6 +23,7 @@ pub fn summary(document: &Document, found: &Matrices, place: &str) -> String {
         ));
     }
     commutators(found, &mut text);
+    truncation(document, found, &mut text);
     for (part, diagonal) in &found.canonical {
         canonical(document, part, diagonal, &mut text);
     }
@@ -121,6 +122,45 @@ fn commutators(found: &Matrices, text: &mut String) {
         let words = if *size < 1e-14 { "commute".to_string() } else { short(*size) };
         text.push_str(&format!("  {name}: {words}\n"));
     }
+}
+
+/// Says what leads out of the kept states: the static matrix, and operators state by state.
+fn truncation(document: &Document, found: &Matrices, text: &mut String) {
+    let names = &document.system.names;
+    let lost = found.still.built.lost_hz;
+    if lost > 0.0 {
+        text.push_str(&format!(
+            "\nthe static matrix couples the kept states to those left out by {}: levels are off by about its square over their distance\n",
+            with_unit(lost)
+        ));
+    }
+    if found.left_out > 0 {
+        text.push_str(&format!(
+            "\n{} operators of the system that nothing uses are left out, as all would need {:.1} GB; record the mean of one to see it\n",
+            found.left_out,
+            ((found.left_out + found.operators.len()) * names.len() * names.len() * 16) as f64 / 1e9
+        ));
+    }
+    if found.leaving.is_empty() {
+        return;
+    }
+    text.push_str("\noperators that lead out of the kept states (share of what they make of a state that is cut off, in norm)\n");
+    for (operator, shares) in found.leaving.iter().take(SHOWN) {
+        let hit: Vec<usize> = (0..shares.len()).filter(|k| shares[*k] > 0.0).collect();
+        let of = |k: usize| format!("{:.4} on {}", shares[k], names[k]);
+        let words = match hit.as_slice() {
+            list if list.len() <= 4 => list.iter().map(|k| of(*k)).collect::<Vec<_>>().join(", "),
+            list => {
+                let most = list.iter().copied().fold(list[0], |most, k| if shares[k] > shares[most] { k } else { most });
+                format!("{} of {} states, most: {}", list.len(), shares.len(), of(most))
+            }
+        };
+        text.push_str(&format!("  {operator}: {words}\n"));
+    }
+    if found.leaving.len() > SHOWN {
+        text.push_str(&format!("  .. and {} more in result.json\n", found.leaving.len() - SHOWN));
+    }
+    text.push_str("there the product of two matrices is not the matrix of the product\n");
 }
 
 /// Says on which levels the cut basis breaks [position, momentum] = i.

@@ -51,6 +51,18 @@ pub fn mixed(vectors: &Vectors, share: &[f64]) -> Vec<f64> {
     out
 }
 
+/// A symmetric matrix from its entries on and above the diagonal.
+pub fn symmetric(size: usize, entry: &dyn Fn(usize, usize) -> f64) -> DMatrix<f64> {
+    let mut matrix = DMatrix::zeros(size, size);
+    for column in 0..size {
+        for row in 0..=column {
+            matrix[(row, column)] = entry(row, column);
+            matrix[(column, row)] = matrix[(row, column)];
+        }
+    }
+    matrix
+}
+
 /// A stream of numbers on (-1, 1) that is the same in every run (G. Marsaglia, Journal of Statistical Software 8, 14 (2003)).
 struct Stream(u64);
 
@@ -85,7 +97,7 @@ pub fn lowest(size: usize, wanted: usize, invert: &dyn Fn(&mut [f64])) -> Vector
             images.push(image);
         }
         let count = space.len();
-        let raw = DMatrix::from_fn(count, count, |i, j| dot(&space[i.min(j)], &images[i.max(j)]));
+        let raw = symmetric(count, &|i, j| dot(&space[i], &images[j]));
         let eigen = SymmetricEigen::new(raw);
         let mut order: Vec<usize> = (0..count).collect();
         order.sort_by(|a, b| eigen.eigenvalues[*b].total_cmp(&eigen.eigenvalues[*a]));

@@ -12,7 +12,7 @@
 //! The levels are Rayleigh quotients of sums of squares, so they bear the rounding of the levels themselves, not of the largest
 //! entry of the matrix: about 1e-14 of the highest kept level, counted from the bottom of the potential.
 
-use nalgebra::{DMatrix, SymmetricEigen};
+use nalgebra::SymmetricEigen;
 
 use super::krylov::{lowest, mixed, orthonormalise, Vectors};
 use super::lobatto::Lobatto;
@@ -200,7 +200,7 @@ fn quotients(nodal: &Vectors, mesh: &Mesh, rule: &Lobatto, fields: &Fields, shif
         })
         .collect();
     let count = nodal.len();
-    let small = DMatrix::from_fn(count, count, |i, j| super::krylov::dot(&rows[i.min(j)], &rows[i.max(j)]));
+    let small = super::krylov::symmetric(count, &|i, j| super::krylov::dot(&rows[i], &rows[j]));
     let eigen = SymmetricEigen::new(small);
     let mut order: Vec<usize> = (0..count).collect();
     order.sort_by(|a, b| eigen.eigenvalues[*a].total_cmp(&eigen.eigenvalues[*b]));

@@ -24,7 +24,7 @@ pub struct Waves {
 
 /// The lowest `keep` states; elements are halved until each function is carried to 1e-12 by the lower degree.
 pub fn waves(pieces: &[Piece], ring: bool, keep: usize) -> Result<Waves, GridFault> {
-    let mut mesh = Mesh::coarse(pieces, ring);
+    let mut mesh = Mesh::coarse(pieces, ring).carrying(pieces, keep, MOST_ELEMENTS);
     // eight unknowns for each half wave of the highest kept state, were it spread evenly
     while mesh.count() * DEGREES[0] < 8 * keep {
         mesh = mesh.halved(&vec![true; mesh.count()]);

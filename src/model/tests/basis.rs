@@ -71,6 +71,25 @@ fn exact_what_a_cut_loses() {
     assert_eq!(whole.lost_hz, 0.0);
 }
 
+/// What raise, position and momentum make of the last kept state of a mode has n + 1 quanta; nothing else leaves. Of the two kept
+/// states of three, an operator in the basis as built leads to the third by its entry there.
+#[test]
+fn exact_what_leads_out_of_a_cut_basis() {
+    let mode = built("# first: 0\nsystem:\n  mode: {frequency: 1 GHz, levels: 5}\n");
+    let position = mode.leaving("position").expect("an operator of the mode");
+    for (n, [outside, all]) in position.iter().enumerate() {
+        // |x n|^2 = n + 1/2, of which (n + 1)/2 lies above
+        assert!((all * all - (n as f64 + 0.5)).abs() < 1e-14, "{n}");
+        assert!((outside * outside - if n == 4 { 2.5 } else { 0.0 }).abs() < 1e-14, "{n}");
+    }
+    assert!(mode.leaving("lower").is_some_and(|list| list.iter().all(|[outside, _]| *outside == 0.0)));
+    let cut = built(
+        "# first: u\nsystem:\n  spin: {size: 1, gyromagnetic: 1 MHz/T, field: [0 T, 0 T, 1 T]}\nbasis: {u: {\"+1\": 1}, v: {\"0\": 1}}\n",
+    );
+    let left = cut.leaving("spin_x").expect("an operator of the spin");
+    assert!(left[0][0] == 0.0 && (left[1][0] - 0.5f64.sqrt()).abs() < 1e-15 && (left[1][1] - 1.0).abs() < 1e-15, "{left:?}");
+}
+
 /// Vectors that are not orthonormal: refused, or made so; the symmetric choice treats both alike.
 #[test]
 fn exact_expansions_made_orthonormal() {

@@ -57,6 +57,29 @@ fn exact_box() {
     }
 }
 
+/// p n = hbar (n pi/L) cos(n pi x/L) is no sum of five sines: |p n|^2 = (hbar n pi/L)^2, of which the five hold
+/// (hbar 4/L)^2 sum over odd i - n of (i n/(i^2 - n^2))^2; x n: |x n|^2 = L^2 (1/3 - 1/(2 n^2 pi^2)).
+#[test]
+fn exact_what_leads_out_of_five_states_of_a_box() {
+    let built = built("system:\n  well: {mass: 0.067 electron_mass, layers: [{length: 10 nm, potential: 0 eV}], ends: closed, keep: 5}\n");
+    let (pi, length) = (0.5 * RAD_PER_TURN, 10.0 * NM);
+    let momentum = built.leaving("momentum").expect("a well has it");
+    let position = built.leaving("position").expect("a well has it");
+    for n in 1..=5i32 {
+        let (index, number) = (n as usize - 1, f64::from(n));
+        let unit = HBAR_J_S / length;
+        let all = (unit * number * pi).powi(2);
+        let term = |i: i32| 4.0 * f64::from(i) * number / f64::from(i * i - n * n);
+        let kept: f64 = (1..=5).filter(|i| (i - n) % 2 != 0).map(|i| (unit * term(i)).powi(2)).sum();
+        let [outside, whole] = momentum[index];
+        assert!((whole * whole / all - 1.0).abs() < 1e-12, "{n}: {}", whole * whole / all);
+        assert!((outside * outside / (all - kept) - 1.0).abs() < 1e-11, "{n}");
+        let [_, whole] = position[index];
+        let square = length * length * (1.0 / 3.0 - 0.5 / (number * pi).powi(2));
+        assert!((whole * whole / square - 1.0).abs() < 1e-12, "{n}");
+    }
+}
+
 /// Four bound levels of a well 1 eV deep and 2 nm wide: z tan z, -z cot z at 50 digits (shared case of the square well). Walls
 /// 5 nm away change the highest by exp(-2 k 5 nm) = 3e-6 of itself, so the lower three are looked at.
 #[test]

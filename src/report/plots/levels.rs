@@ -344,7 +344,9 @@ fn transitions(
     for arrow in &arrows {
         arrow.draw(scene);
     }
-    let bars: Vec<f64> = groups.iter().flat_map(|group| group.members.iter().map(|k| group.y(energy(*k)))).collect();
+    let mut bars: Vec<f64> = groups.iter().flat_map(|group| group.members.iter().map(|k| group.y(energy(*k)))).collect();
+    // nor may it lie under the label of an axis
+    bars.extend(groups.iter().flat_map(|group| [group.top - 28.0, group.top - 8.0]));
     for arrow in &arrows {
         arrow.write(scene, &bars, &arrows);
     }
