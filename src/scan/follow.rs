@@ -404,8 +404,8 @@ mod tests {
     /// Two levels that pass each other, coupled by half of `gap`, beside a third that nothing couples and that both pass.
     fn crossing(gap: &str, axis: &str) -> String {
         format!(
-            "format: 1\nnumbers: {{x: 0 MHz, gap: {gap}}}\nsystem:\n  hamiltonian:\n    names: [a, b, c]\n    rows:\n      - [x/2, gap/2, 0]\n      - \
-             [gap/2, -x/2, 0]\n      - [0, 0, 0.3 MHz]\nbasis: eigenstates\nrecord: {{levels: all, transitions: [[a, b]]}}\nscan:\n  \
+            "format: 1\nnumbers: {{x: 0 MHz, tie: {gap}}}\nsystem:\n  hamiltonian:\n    names: [a, b, c]\n    unit: MHz\n    rows:\n      - [x/2, tie/2, 0]\n      - \
+             [tie/2, -x/2, 0]\n      - [0, 0, 0.3]\nbasis: eigenstates\nrecord: {{levels: all, transitions: [[a, b]]}}\nscan:\n  \
              axes: [{{number: x, {axis}}}]\n"
         )
     }
