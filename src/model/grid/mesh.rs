@@ -77,7 +77,7 @@ impl Mesh {
                 self.looks(pieces, k).map(move |(depth, kappa)| (depth, kappa, width)).collect::<Vec<_>>()
             })
             .collect();
-        if all.iter().any(|(depth, kappa, _)| !depth.is_finite() || !(*kappa > 0.0 && kappa.is_finite())) {
+        if !all.iter().all(|(depth, kappa, _)| depth.is_finite() && kappa.is_finite() && *kappa > 0.0) {
             return None;
         }
         let wanted = 0.5 * RAD_PER_TURN * (keep as f64 + 1.0);
