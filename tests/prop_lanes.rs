@@ -6,6 +6,8 @@ use std::time::Duration;
 
 use nutate::config::document::read_str;
 use nutate::config::run::OnFailedPoint;
+use nutate::noise::{compute, Draws};
+use nutate::plan::Plan;
 use nutate::propagate::lanes::WIDTHS;
 use nutate::random::Stream;
 use nutate::scan::begin::order;
@@ -198,5 +200,36 @@ fn prop_points_that_are_refused_fail_alone() {
     assert_eq!(failed(&a).len(), 7 * 11, "pulses of no or negative length");
     for (a, b) in a.iter().zip(&b).filter(|(a, _)| !matches!(a.found, Found::Failed(_))) {
         assert!(numbers(a).0.iter().zip(numbers(b).0).take(2).all(|(a, b)| (a - b).abs() < 2e-8), "{a:?} {b:?}");
+    }
+}
+/// Draws and nodes of noise eight at a time against the same ones by themselves (where a method is asked for by name): within twice what was asked.
+#[test]
+fn prop_averages_side_by_side_are_as_right_as_alone() {
+    let random = "{moves: miss, spread: {sigma: 2 MHz}, sampling: {rule: random, draws: 200, seed: 5}}";
+    let nodes = "{moves: miss, spread: {sigma: 1 MHz}, sampling: {rule: gauss, points: 61}}";
+    let wandering = "{moves: miss, spread: {sigma: 1 MHz}, correlated: {time: 200 ns}, sampling: {rule: random, draws: 80, seed: 6}}";
+    let mut stream = Stream::new(44, 0, 0, 0);
+    for (kind, noise) in [(5, random), (5, nodes), (0, wandering)] {
+        let text = config(kind, BELL, "length", &mut || stream.uniform());
+        let text = format!("{}noise: [{noise}]\n", &text[..text.find("scan:").expect("it has one")]);
+        let wait = text.split("wait: ").nth(1).and_then(|rest| rest.lines().next()).expect("it waits");
+        let text = text.replace("populations: all", &format!("at: [2 * length + {wait}], populations: all"));
+        let asked = if noise == wandering { "final: 1e-5" } else { "final: 1e-8" };
+        let text = text.replace("final: 1e-8", asked);
+        let averaged = |text: &str| {
+            let plan = Plan::new(read_str("noise", text, Path::new(""), &[]).map_err(|refusal| refusal.text()).expect("a lawful config"));
+            let point = plan.point().expect("a lawful point");
+            compute(plan.document(), &point, &Draws { threads: 2, family: 0 }).expect("lawful noise")
+        };
+        let (together, alone) = (averaged(&text), averaged(&text.replace(asked, &format!("{asked}, method: geometric"))));
+        assert!(together.resolutions[0].contains("side by side"), "{:?}\n{text}", together.resolutions);
+        assert!(!alone.resolutions[0].contains("side by side"), "{:?}", alone.resolutions);
+        for (a, b) in together.finals.iter().zip(&alone.finals) {
+            let apart = (a.value - b.value).abs();
+            let limit = if noise == wandering { a.error + b.error } else { 2e-8 };
+            assert!(apart <= limit, "{} of {text}: {apart:e}, {limit:e}", a.name);
+            let spread = (a.sampling_error.unwrap_or(0.0) - b.sampling_error.unwrap_or(0.0)).abs();
+            assert!(spread < if noise == wandering { 1e-5 } else { 2e-8 }, "{} of {text}: {spread:e}", a.name);
+        }
     }
 }

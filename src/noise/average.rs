@@ -5,15 +5,19 @@
 //! nodes leaves is measured by a rule of 3n/2 + 1 and added to the error figure: it grows with time. What a random sample leaves is
 //! given by itself, as one standard error of the mean.
 
+mod batch;
+
 use std::collections::BTreeMap;
 use std::sync::atomic::{AtomicBool, AtomicU64, Ordering};
 use std::sync::Mutex;
 use std::time::Instant as Clock;
 
+use self::batch::Batch;
 use super::grid::Grid;
 use super::path::{Paths, Worker};
 use super::source::{sources, Source, Time};
 use super::statistics::{add, Groups, Sample};
+use crate::bundle::Runs;
 use crate::config::document::Document;
 use crate::config::messages::{Fault, Mistake};
 use crate::config::noise::Rule;
@@ -22,7 +26,7 @@ use crate::measure::{observables, Observables, Recorded, Whole};
 use crate::outcome::{self, Average, Measured, Outcome};
 use crate::plan::shaken::Shaken;
 use crate::plan::Point;
-use crate::problem::{Channel, Matrix, Start};
+use crate::problem::{Channel, Matrix, Problem, Start};
 use crate::propagate::{figure, CrossCheck, Resolution, Solved};
 use crate::random::Stream;
 
@@ -36,6 +40,9 @@ const MOST_DRAWS: f64 = 1e6;
 const MOST_CELLS: usize = 200_000;
 /// The error of the coarser cells over the change that their halving makes: their error is of second order, so 4/3 and a fifth more.
 const CELL_FACTOR: f64 = 1.6;
+/// Fewest runs for which the search for a number of steps is worth while, and runs that it looks at.
+const FEWEST_TOGETHER: f64 = 48.0;
+const SAMPLES: u64 = 6;
 /// Most runs of an average.
 const MOST_RUNS: f64 = 1e7;
 
@@ -104,6 +111,8 @@ struct Job<'p> {
     wandering: Vec<usize>,
     /// The cells on which they do, and what they do there; none where nothing wanders.
     paths: Option<Paths>,
+    /// Eight runs at a time, where they can be laid side by side.
+    together: Option<Runs>,
     /// The point without noise.
     calm: Shaken<'p>,
     warnings: Vec<Mistake>,
@@ -117,7 +126,7 @@ impl<'p> Job<'p> {
             (0..sources.len()).partition(|k| matches!(sources[*k].rule, Rule::Gauss { .. } | Rule::Listed));
         let (drawn, wandering) = random.into_iter().partition(|k| sources[*k].time == Time::Slow);
         let calm = Shaken::new(document, point, &numbers);
-        Ok(Job { document, draws: *draws, sources, gridded, drawn, wandering, paths: None, calm, warnings: Vec::new() })
+        Ok(Job { document, draws: *draws, sources, gridded, drawn, wandering, paths: None, together: None, calm, warnings: Vec::new() })
     }
 
     /// Causes that are drawn at random.
@@ -169,6 +178,7 @@ impl<'p> Job<'p> {
             return Err(self.too_many(runs, count > 0));
         }
         let mut parts = self.settle_cells(&grid, count, until)?;
+        self.lay_together(&grid, count)?;
         let mut total = self.pass(&grid, 0..count)?;
         // what the first draws promised need not hold for all
         while self.wants_finer_cells(&total) {
@@ -241,6 +251,55 @@ impl<'p> Job<'p> {
         let largest =
             total.apart.mean[..total.notes.numbers.min(total.apart.mean.len())].iter().map(|apart| apart.abs()).fold(0.0, f64::max);
         CELL_FACTOR * largest > self.document.accuracy.last.max(2.0 * total.notes.floor) && paths.count() < MOST_CELLS && total.notes.sound
+    }
+
+    /// Lays runs side by side, where there are many and they allow it.
+    fn lay_together(&mut self, grid: &Grid, count: u64) -> Result<(), Mistake> {
+        if (grid.len() as f64) * (count.max(1) as f64) < FEWEST_TOGETHER {
+            return Ok(());
+        }
+        // pure states without cells go as fast by themselves (our own measurements: 50 us a run)
+        if self.paths.is_none() && !self.calm.point().problem().is_open() {
+            return Ok(());
+        }
+        let mut worker = Worker::new(&self.calm);
+        let mut samples = Vec::new();
+        for k in 0..SAMPLES {
+            let drawn = self.drawn_of(&mut worker, k);
+            // nodes all over the grid
+            let mut amounts = drawn;
+            grid.node(&self.sources, k * (grid.len() - 1) / (SAMPLES - 1), &mut amounts);
+            let [whole, _] = self.problems(&mut worker, &amounts)?;
+            samples.push(whole);
+        }
+        self.together = Runs::new(self.document, self.calm.point(), &samples).ok();
+        Ok(())
+    }
+
+    /// What the causes drawn once a shot add in a draw; its paths go to the worker.
+    fn drawn_of(&self, worker: &mut Worker<'p>, draw: u64) -> Vec<(u32, f64)> {
+        let mut drawn = Vec::new();
+        for source in self.drawn.iter().map(|k| &self.sources[*k]) {
+            let (Rule::Random { seed, .. } | Rule::UntilAccurate { seed }) = source.rule else { continue };
+            let mut stream = Stream::new(seed, source.kind, self.draws.family, draw);
+            drawn.extend(source.amounts(source.draw(&mut stream)));
+        }
+        worker.paths = self.paths.as_ref().map(|paths| self.path(paths, draw));
+        drawn
+    }
+
+    /// The problems of a run at both resolutions.
+    fn problems(&self, worker: &mut Worker<'p>, amounts: &[(u32, f64)]) -> Result<[Problem; 2], Mistake> {
+        match &self.paths {
+            None => {
+                let problem = worker.shaken.by(amounts)?.problem();
+                Ok([problem.clone(), problem.clone()])
+            }
+            Some(paths) => {
+                let slow = !self.gridded.is_empty() || !self.drawn.is_empty();
+                worker.problems(&self.sources, &self.wandering, paths, slow.then_some(amounts))
+            }
+        }
     }
 
     fn new_paths(&self, parts: u32) -> Result<Paths, Mistake> {
@@ -334,22 +393,23 @@ impl<'p> Job<'p> {
     fn block_of_draws(&self, worker: &mut Worker<'p>, grid: &Grid, draws: std::ops::Range<u64>) -> Result<Total, Mistake> {
         let mut total = Total::default();
         let (mut coarse, mut fine, mut check) = (Vec::new(), Vec::new(), Vec::new());
+        let mut batch = Batch::new(self);
+        let mut weights = Vec::new();
         for draw in draws {
-            let mut drawn = Vec::new();
-            for source in self.drawn.iter().map(|k| &self.sources[*k]) {
-                let (Rule::Random { seed, .. } | Rule::UntilAccurate { seed }) = source.rule else { continue };
-                let mut stream = Stream::new(seed, source.kind, self.draws.family, draw);
-                drawn.extend(source.amounts(source.draw(&mut stream)));
-            }
-            worker.paths = self.paths.as_ref().map(|paths| self.path(paths, draw));
-            [&mut coarse, &mut fine, &mut check].into_iter().for_each(Vec::clear);
+            let drawn = self.drawn_of(worker, draw);
             for node in 0..grid.len() {
                 let mut amounts = drawn.clone();
-                let weight = grid.node(&self.sources, node, &mut amounts);
-                let ran = self.run(worker, &amounts, &mut total.notes)?;
-                add(&mut coarse, &ran.coarse, weight);
-                add(&mut fine, &ran.fine, weight);
-                add(&mut check, &ran.check, weight);
+                weights.push(grid.node(&self.sources, node, &mut amounts));
+                batch.push(worker, &amounts, &mut total.notes)?;
+            }
+        }
+        let ran: Vec<(Ran, f64)> = batch.done(worker, &mut total.notes)?.into_iter().zip(weights).collect();
+        for of_draw in ran.chunks(grid.len() as usize) {
+            [&mut coarse, &mut fine, &mut check].into_iter().for_each(Vec::clear);
+            for (ran, weight) in of_draw {
+                add(&mut coarse, &ran.coarse, *weight);
+                add(&mut fine, &ran.fine, *weight);
+                add(&mut check, &ran.check, *weight);
             }
             total.sample.take(&coarse);
             total.groups.take(&coarse[total.notes.before_channel(&coarse)..]);
@@ -366,11 +426,14 @@ impl<'p> Job<'p> {
 
     fn block_of_nodes(&self, worker: &mut Worker<'p>, grid: &Grid, nodes: std::ops::Range<u64>) -> Result<Total, Mistake> {
         let mut total = Total::default();
-        let mut amounts = Vec::new();
+        let mut batch = Batch::new(self);
+        let mut weights = Vec::new();
         for node in nodes {
-            amounts.clear();
-            let weight = grid.node(&self.sources, node, &mut amounts);
-            let ran = self.run(worker, &amounts, &mut total.notes)?;
+            let mut amounts = Vec::new();
+            weights.push(grid.node(&self.sources, node, &mut amounts));
+            batch.push(worker, &amounts, &mut total.notes)?;
+        }
+        for (ran, weight) in batch.done(worker, &mut total.notes)?.into_iter().zip(weights) {
             add(&mut total.sum, &ran.coarse, weight);
             add(&mut total.sum_fine, &ran.fine, weight);
             add(&mut total.sum_check, &ran.check, weight);
@@ -388,19 +451,21 @@ impl<'p> Job<'p> {
             Some(paths) => {
                 let slow = !self.gridded.is_empty() || !self.drawn.is_empty();
                 let [whole, halves] = worker.problems(&self.sources, &self.wandering, paths, slow.then_some(amounts))?;
-                let point = worker.shaken.point();
-                let solved = outcome::measure(self.document, point, &whole, true);
-                let finer = outcome::measure(self.document, point, &halves, false);
-                notes.take(&finer);
-                Solved { finer: finer.finer, ..solved }
+                return Ok(self.alone(worker.shaken.point(), &whole, &halves, notes));
             }
         };
-        notes.take(&solved);
-        let check = match &solved.cross_check {
-            Some(CrossCheck::Done { recorded, .. }) => recorded.numbers.clone(),
-            _ => Vec::new(),
-        };
-        Ok(Ran { coarse: flat(&solved.recorded), fine: flat(&solved.finer), check })
+        Ok(ran(&solved, notes))
+    }
+
+    /// One run whose problems stand already, the second that of half the cells, if there are any.
+    fn alone(&self, point: &Point, whole: &Problem, halves: &Problem, notes: &mut Notes) -> Ran {
+        let solved = outcome::measure(self.document, point, whole, true);
+        if self.paths.is_none() {
+            return ran(&solved, notes);
+        }
+        let finer = outcome::measure(self.document, point, halves, false);
+        notes.take(&finer);
+        ran(&Solved { finer: finer.finer, ..solved }, notes)
     }
 
     /// The paths of a draw: for each wandering cause its mean in every cell, of halves and of wholes.
@@ -590,6 +655,16 @@ struct Ran {
     check: Vec<f64>,
 }
 
+/// What a run by itself gives.
+fn ran(solved: &Solved<Recorded>, notes: &mut Notes) -> Ran {
+    notes.take(solved);
+    let check = match &solved.cross_check {
+        Some(CrossCheck::Done { recorded, .. }) => recorded.numbers.clone(),
+        _ => Vec::new(),
+    };
+    Ran { coarse: flat(&solved.recorded), fine: flat(&solved.finer), check }
+}
+
 fn flat(recorded: &Recorded) -> Vec<f64> {
     let mut vector = recorded.numbers.clone();
     if let Some(end) = &recorded.end_state {
@@ -667,6 +742,23 @@ impl Notes {
             in_rows: solved.recorded.in_rows,
             within: solved.recorded.channel.as_ref().map_or_else(Vec::new, |channel| channel.within.clone()),
             check,
+        });
+    }
+
+    /// Of a run that was made with others.
+    fn take_together(&mut self, runs: &Runs, recorded: &Recorded) {
+        self.join(&Notes {
+            method: Some(crate::propagate::Method::Geometric),
+            reason: "runs that differ in their numbers alone go eight at a time".to_string(),
+            words: runs.words(),
+            steps: runs.steps(),
+            products: 0,
+            floor: runs.floor(),
+            sound: recorded.numbers.iter().all(|number| number.is_finite()),
+            numbers: recorded.numbers.len(),
+            in_rows: recorded.in_rows,
+            within: recorded.channel.as_ref().map_or_else(Vec::new, |channel| channel.within.clone()),
+            check: None,
         });
     }
 

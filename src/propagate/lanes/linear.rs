@@ -52,6 +52,8 @@ pub(crate) struct Room {
     values: Vec<Eight>,
     old: Vec<Eight>,
     new: Vec<Eight>,
+    /// All of G, row after row, where it is small.
+    dense: Vec<Eight>,
 }
 
 impl Room {
@@ -104,10 +106,54 @@ impl<W: Weights> Linear<'_, W> {
                 if times > 1.0 {
                     self.fill(simd, step, factor, 1.0 / times);
                 }
-                for _ in 0..times as usize {
-                    exponential::<S, C>(simd, self.generator, terms(largest / times), self.room, self.columns);
+                let terms = terms(largest / times);
+                // density matrices of two and of three levels: without an index, all in registers
+                match (C, self.generator.size) {
+                    (1, 4) => self.dense::<S, 4>(simd, times as usize, terms),
+                    (1, 9) => self.dense::<S, 9>(simd, times as usize, terms),
+                    _ => {
+                        for _ in 0..times as usize {
+                            exponential::<S, C>(simd, self.generator, terms, self.room, self.columns);
+                        }
+                    }
                 }
             }
+        }
+    }
+
+    /// columns <- exp(G) columns, `times` times, for one column of N numbers.
+    #[inline(always)]
+    fn dense<S: Simd, const N: usize>(&mut self, simd: S, times: usize, terms: usize) {
+        let generator = self.generator;
+        self.room.dense.clear();
+        self.room.dense.resize(N * N, Eight::all(0.0));
+        for row in 0..N {
+            for entry in generator.rows[row]..generator.rows[row + 1] {
+                self.room.dense[row * N + generator.columns[entry]] = self.room.values[entry];
+            }
+        }
+        let dense = &self.room.dense[..N * N];
+        let mut y = [simd.splat(0.0); N];
+        for k in 0..N {
+            y[k] = simd.load(&self.columns[k]);
+        }
+        for _ in 0..times {
+            let start = y;
+            for n in (1..=terms).rev() {
+                let share = simd.splat(1.0 / n as f64);
+                let mut next = start;
+                for row in 0..N {
+                    let mut sum = simd.load(&dense[row * N]) * y[0];
+                    for column in 1..N {
+                        sum = sum.plus(simd.load(&dense[row * N + column]), y[column]);
+                    }
+                    next[row] = start[row].plus(share, sum);
+                }
+                y = next;
+            }
+        }
+        for k in 0..N {
+            y[k].store(&mut self.columns[k]);
         }
     }
 
