@@ -41,18 +41,17 @@ pub fn gradients_at_width(
     system.check(samples, sets.len(), goal)?;
     let blocks: Vec<&[&[f64]]> = sets.chunks(LANES).collect();
     let share = blocks.len().div_ceil(threads.max(1));
-    let spreads: Vec<f64> = blocks.iter().map(|block| largest_spread(system, block)).collect();
-    let hardest = (0..blocks.len()).fold(0, |most, k| if spreads[k] > spreads[most] { k } else { most });
-    let one = |worker: &mut Worker, block: usize, finer: u32| worker.block(blocks[block], spreads[block], finer);
-    let part = |range: std::ops::Range<usize>| -> Result<Vec<Gradient>, GradientFault> {
+    let part = |range: std::ops::Range<usize>| -> Result<Part, GradientFault> {
         let mut worker = Worker::new(width, system, goal);
-        let mut found = Vec::with_capacity(LANES * range.len());
+        let mut found = Part { gradients: Vec::with_capacity(LANES * range.len()), spreads: Vec::with_capacity(range.len()) };
         for block in range {
-            found.extend(one(&mut worker, block, 0)?);
+            let (gradients, spread) = worker.block(blocks[block], 0)?;
+            found.gradients.extend(gradients);
+            found.spreads.push(spread);
         }
         Ok(found)
     };
-    let parts: Vec<Result<Vec<Gradient>, GradientFault>> = if share >= blocks.len() {
+    let parts: Vec<Result<Part, GradientFault>> = if share >= blocks.len() {
         vec![part(0..blocks.len())]
     } else {
         let part = &part;
@@ -63,16 +62,19 @@ pub fn gradients_at_width(
             running.into_iter().map(|thread| thread.join().unwrap_or(Err(GradientFault::NoSets))).collect()
         })
     };
-    let mut gradients = Vec::with_capacity(sets.len());
+    let (mut gradients, mut spreads) = (Vec::with_capacity(sets.len()), Vec::with_capacity(blocks.len()));
     for part in parts {
-        gradients.extend(part?);
+        let part = part?;
+        gradients.extend(part.gradients);
+        spreads.extend(part.spreads);
     }
+    let hardest = (0..blocks.len()).fold(0, |most, k| if spreads[k] > spreads[most] { k } else { most });
     let (mut value_change, mut derivative_change) = (0.0f64, 0.0f64);
     let mut worker = Worker::new(width, system, goal);
     let mut again = vec![0, hardest];
     again.dedup();
     for block in again {
-        for (fine, coarse) in one(&mut worker, block, 1)?.iter().zip(&gradients[LANES * block..]) {
+        for (fine, coarse) in worker.block(blocks[block], 1)?.0.iter().zip(&gradients[LANES * block..]) {
             value_change = value_change.max((fine.value - coarse.value).abs());
             let apart = fine.by_samples.iter().zip(&coarse.by_samples).map(|(fine, coarse)| (fine - coarse).abs());
             derivative_change = apart.fold(derivative_change, f64::max);
@@ -81,26 +83,42 @@ pub fn gradients_at_width(
     Ok(judged(system, goal, gradients, value_change, derivative_change))
 }
 
-/// An upper bound of the distance of the eigenvalues of H h in any slice of these sets: sqrt(2) times the Frobenius norm of the part
-/// without trace (L. Mirsky, Mathematika 3, 127 (1956)).
-pub(super) fn largest_spread(system: &Controlled, block: &[&[f64]]) -> f64 {
-    let all: Vec<Matrix> = std::iter::once(&system.statics).chain(&system.controls).map(without_trace).collect();
-    // |H|^2 as a form of the samples
-    let form: Vec<Vec<f64>> = all.iter().map(|a| all.iter().map(|b| a.dotc(b).re).collect()).collect();
-    let count = system.controls.len();
-    let mut largest = 0.0f64;
-    for set in block {
-        for (slice, length) in system.lengths_s.iter().enumerate() {
-            let u = &set[slice * count..(slice + 1) * count];
-            let mut square = form[0][0];
-            for (j, u_j) in u.iter().enumerate() {
-                let across: f64 = u.iter().zip(&form[j + 1][1..]).map(|(u_k, f)| u_k * f).sum();
-                square += u_j * (2.0 * form[0][j + 1] + across);
+/// What one thread found: gradients, and how far eigenvalues spread in each block.
+struct Part {
+    gradients: Vec<Gradient>,
+    spreads: Vec<f64>,
+}
+
+/// An upper bound of the distance of the eigenvalues of H h in any slice of a block: sqrt(2) times the Frobenius norm of the part without
+/// trace (L. Mirsky, Mathematika 3, 127 (1956)). `form` is the norm's square as a form of 1 and the samples.
+pub(super) fn largest_spread(form: &[Vec<f64>], lengths_s: &[f64], packed: &[Eight]) -> f64 {
+    let count = form.len() - 1;
+    let mut largest = [0.0f64; LANES];
+    for (slice, length) in lengths_s.iter().enumerate() {
+        let samples = &packed[slice * count..(slice + 1) * count];
+        let mut square = [form[0][0]; LANES];
+        for (sample, row) in samples.iter().zip(&form[1..]) {
+            let mut sum = [2.0 * row[0]; LANES];
+            for (other, factor) in samples.iter().zip(&row[1..]) {
+                for lane in 0..LANES {
+                    sum[lane] += factor * other.0[lane];
+                }
             }
-            largest = largest.max(square * length * length);
+            for lane in 0..LANES {
+                square[lane] += sample.0[lane] * sum[lane];
+            }
+        }
+        for lane in 0..LANES {
+            largest[lane] = largest[lane].max(square[lane] * length * length);
         }
     }
-    (2.0 * largest).sqrt()
+    (2.0 * largest.into_iter().fold(0.0, f64::max)).sqrt()
+}
+
+/// The square of the Frobenius norm of H without its trace, as a form of 1 and the samples.
+pub(super) fn norm_form(system: &Controlled) -> Vec<Vec<f64>> {
+    let all: Vec<Matrix> = std::iter::once(&system.statics).chain(&system.controls).map(without_trace).collect();
+    all.iter().map(|a| all.iter().map(|b| a.dotc(b).re).collect()).collect()
 }
 
 fn without_trace(matrix: &Matrix) -> Matrix {
@@ -118,6 +136,7 @@ struct Worker<'a> {
     start: Matrix,
     phase: Phase,
     kernel: Conjugation,
+    form: Vec<Vec<f64>>,
     packed: Vec<Eight>,
     by_samples: Vec<Eight>,
 }
@@ -133,21 +152,25 @@ impl<'a> Worker<'a> {
             start: goal.start(),
             phase: Phase { statics: mean(&system.statics), controls: system.controls.iter().map(mean).collect() },
             kernel: Conjugation::new(&without_trace(&system.statics), &controls, &system.lengths_s),
-            packed: Vec::new(),
+            form: norm_form(system),
+            packed: vec![Eight::all(0.0); system.samples()],
             by_samples: Vec::new(),
         }
     }
 
-    /// The gradients of up to eight sets whose slices spread by up to `spread`, each slice halved `finer` times more than is needed.
-    fn block(&mut self, sets: &[&[f64]], spread: f64, finer: u32) -> Result<Vec<Gradient>, GradientFault> {
+    /// The gradients of up to eight sets, each slice halved `finer` times more than is needed, and how far their eigenvalues spread.
+    fn block(&mut self, sets: &[&[f64]], finer: u32) -> Result<(Vec<Gradient>, f64), GradientFault> {
+        // missing sets repeat the last one
+        for lane in 0..LANES {
+            for (eight, sample) in self.packed.iter_mut().zip(sets[lane.min(sets.len() - 1)]) {
+                eight.0[lane] = *sample;
+            }
+        }
+        let spread = largest_spread(&self.form, &self.system.lengths_s, &self.packed);
         let needed = self.kernel.halvings(spread);
         if needed > MOST_HALVINGS {
             return Err(GradientFault::TooStrong(spread));
         }
-        // missing sets repeat the last one
-        let of_lane: [&[f64]; LANES] = std::array::from_fn(|lane| sets[lane.min(sets.len() - 1)]);
-        self.packed.clear();
-        self.packed.extend((0..of_lane[0].len()).map(|k| Eight(std::array::from_fn(|lane| of_lane[lane][k]))));
         self.by_samples.resize(self.packed.len(), Eight::all(0.0));
         let (system, goal, phase, start) = (self.system, self.goal, &self.phase, &self.start);
         let ends = self.kernel.forwards(self.width, &self.packed, spread, finer);
@@ -174,7 +197,7 @@ impl<'a> Worker<'a> {
             }
             Gradient { value: values[lane], by_samples }
         };
-        Ok((0..sets.len()).map(gradient).collect())
+        Ok(((0..sets.len()).map(gradient).collect(), spread))
     }
 }
 

@@ -214,7 +214,9 @@ fn prop_error_figure_is_honest() {
     for trial in 0..40 {
         let mut system = draws.system(4, 30);
         // slices just below the limit of the short series
-        let scale = 0.247 / super::side_by_side::largest_spread(&system, &[&[0.0; 60]]);
+        let form = super::side_by_side::norm_form(&system);
+        let still = vec![crate::propagate::lanes::Eight::all(0.0); 60];
+        let scale = 0.247 / super::side_by_side::largest_spread(&form, &system.lengths_s, &still);
         system.lengths_s.iter_mut().for_each(|length| *length *= scale);
         let samples = vec![0.0; 60];
         let goal = GateOverlap::new(draws.unitary(4));
