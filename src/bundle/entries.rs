@@ -6,7 +6,7 @@
 
 /// Most numbers for which all corners are looked at; with more, entries must be sums of single numbers.
 const MOST_CORNERS: usize = 4;
-/// Largest difference between the function and the entry, over the largest entry of its matrix.
+/// Largest difference between the function and the entry, over the largest entry of its matrix at any corner.
 const ROUNDING: f64 = 2e-15;
 
 /// All entries as functions of the numbers.
@@ -18,6 +18,8 @@ pub(super) struct Function {
     sets: Vec<u64>,
     /// Entries that are not zero everywhere: which, and a coefficient for each set.
     rows: Vec<(usize, Vec<f64>)>,
+    /// Largest modulus of each entry at the corners.
+    largest: Vec<f64>,
 }
 
 impl Function {
@@ -49,6 +51,7 @@ impl Function {
             spans: bounds.iter().map(|(low, high)| high - low).collect(),
             sets,
             rows,
+            largest: (0..count).map(|entry| at_corners.iter().fold(0.0f64, |a, at| a.max(at[entry].abs()))).collect(),
         };
         function.forget_rounding();
         function
@@ -84,12 +87,13 @@ impl Function {
         }
     }
 
-    /// Whether it gives these entries at `numbers`, matrices of `size` entries one after another, each to rounding of its largest.
+    /// Whether it gives these entries at `numbers`, matrices of `size` entries one after another, each to rounding of its largest
+    /// anywhere: that is what the phases at the end are told to.
     pub fn agrees(&self, numbers: &[f64], entries: &[f64], size: usize) -> bool {
         let mut found = vec![0.0; entries.len()];
         self.fill(numbers, &mut found, 1);
-        found.chunks(size).zip(entries.chunks(size)).all(|(found, wanted)| {
-            let largest = wanted.iter().fold(0.0f64, |a, b| a.max(b.abs()));
+        found.chunks(size).zip(entries.chunks(size)).zip(self.largest.chunks(size)).all(|((found, wanted), largest)| {
+            let largest = largest.iter().fold(0.0f64, |a, b| a.max(*b));
             found.iter().zip(wanted).all(|(f, w)| (f - w).abs() <= ROUNDING * largest)
         })
     }
