@@ -9,7 +9,7 @@ pub mod sensitivity;
 use std::time::Instant as Clock;
 
 use crate::config::document::Document;
-use crate::config::messages::Mistake;
+use crate::config::messages::{Fault, Mistake};
 use crate::config::record::Item;
 use crate::config::settings::MethodWord;
 use crate::measure::{
@@ -17,7 +17,9 @@ use crate::measure::{
 };
 use crate::plan::Point;
 use crate::problem::{Channel, Matrix, Problem, Start};
-use crate::propagate::{figure, solve, solve_from, solve_once, Asked, CrossCheck, Demand, Method, Recipe, Resolved, Solved, Steady};
+use crate::propagate::{
+    figure, machine_bytes, memory_bytes, solve, solve_from, solve_once, Asked, CrossCheck, Demand, Method, Recipe, Resolved, Solved, Steady,
+};
 use crate::units::rad_s;
 
 /// A final number with its error.
@@ -251,6 +253,24 @@ fn measure_from(document: &Document, point: &Point, problem: &Problem, check: bo
     let mut asked = asked(document);
     asked.cross_check &= check;
     solve_from(problem, &observables.demand, &asked, recipe, || TraceRecorder::new(&observables, problem, &scales)).map(TraceRecorder::done)
+}
+
+/// Estimated memory that a run of a point takes, bytes.
+pub fn run_bytes(document: &Document, point: &Point) -> f64 {
+    let observables = observables(document, &point.built, &point.values, &point.energies_hz, point.problem());
+    memory_bytes(point.problem(), &observables.demand, observables.columns().len())
+}
+
+/// The run of a point refused where it would take more memory than the machine has.
+///
+/// # Errors
+/// The estimate and what there is.
+pub fn room_for(document: &Document, point: &Point) -> Result<(), Mistake> {
+    let bytes = run_bytes(document, point);
+    match machine_bytes().filter(|machine| bytes > *machine) {
+        Some(machine) => Err(Mistake::error(document.system.place, Fault::NeedsMemory { bytes, machine })),
+        None => Ok(()),
+    }
 }
 
 /// Computes a point without noise.

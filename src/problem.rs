@@ -14,6 +14,7 @@
 
 mod channel;
 mod jump;
+mod sparse;
 mod state;
 
 use std::fmt::Debug;
@@ -23,10 +24,11 @@ use std::sync::Arc;
 use nalgebra::{DMatrix, DVector};
 use num_complex::Complex64;
 
-use crate::units::cis_turns;
+use crate::units::{cis_turns, nearest};
 
 pub use channel::Channel;
 pub use jump::{Jump, TurningPart};
+pub use sparse::Sparse;
 pub use state::{Start, State};
 
 /// A dense complex matrix, row and column in the order of the basis.
@@ -158,9 +160,9 @@ impl Instant {
     pub fn turns(self, hz: f64) -> f64 {
         let product = hz * self.high;
         let rest = hz.mul_add(self.high, -product);
-        let whole = product - product.round();
+        let whole = product - nearest(product);
         let turns = whole + (rest + hz * self.low);
-        turns - turns.round()
+        turns - nearest(turns)
     }
 }
 

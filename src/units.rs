@@ -31,14 +31,25 @@ pub fn cis_turns(turns: f64) -> Complex64 {
 
 /// Sine and cosine of an angle in turns, reduced to an eighth of a turn before 2 pi is applied.
 pub fn sin_cos_turns(turns: f64) -> (f64, f64) {
-    let within = turns - turns.round();
-    let quarter = (within * 4.0).round();
+    let within = turns - nearest(turns);
+    let quarter = nearest(within * 4.0);
     let (sin, cos) = ((within - quarter / 4.0) * RAD_PER_TURN).sin_cos();
     match quarter as i32 & 3 {
         0 => (sin, cos),
         1 => (cos, -sin),
         2 => (-sin, -cos),
         _ => (-cos, sin),
+    }
+}
+
+/// The nearest whole number, ties to even; two sums instead of a call, as not every processor of the target has an instruction for it.
+pub fn nearest(number: f64) -> f64 {
+    // beside it the last bit of a double is 1
+    const ONES: f64 = 6_755_399_441_055_744.0;
+    if number.abs() < ONES / 6.0 {
+        (number + ONES) - ONES
+    } else {
+        number.round()
     }
 }
 

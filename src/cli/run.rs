@@ -4,6 +4,7 @@ use clap::Args;
 
 use super::{complain, complain_of, not_drawn, point, print, read_config, Common, Results, Status};
 use crate::noise::{compute, Draws};
+use crate::outcome::room_for;
 use crate::outcome::sensitivity::Sensitivity;
 use crate::plan::{Plan, Point};
 use crate::report::folder::{default_folder, prepare};
@@ -64,6 +65,10 @@ fn try_run(words: &Words) -> Result<Status, Status> {
     })?;
     complain_of(document, &document.warnings);
     complain_of(document, &point.warnings);
+    room_for(document, &point).map_err(|mistake| {
+        complain_of(document, &[mistake]);
+        Status::Refused
+    })?;
     let mut outcome = compute(document, &point, &Draws::of(document)).map_err(|mistake| {
         complain_of(document, &[mistake]);
         Status::Refused

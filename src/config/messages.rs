@@ -124,6 +124,7 @@ pub enum Fault {
     RowCount { found: usize, wanted: usize },
     NotHermitian { row: String, column: String, upper: String, lower: String, lines: [u32; 2], write: String },
     TooManyLevels { levels: f64, bytes: f64, limit: usize },
+    NeedsMemory { bytes: f64, machine: f64 },
     FileContent { path: String, row: usize, reason: String },
     EmptySystem { what: String },
     SameLevel { name: String },
@@ -319,7 +320,8 @@ pub fn short_with_unit(value: f64, unit: &str) -> String {
     format!("{} {prefix}{unit}", short(value / factor))
 }
 
-fn memory(bytes: f64) -> String {
+/// Bytes in words.
+pub fn memory(bytes: f64) -> String {
     if bytes > 1e9 {
         format!("{:.1} GB", bytes / 1e9)
     } else {
@@ -603,6 +605,11 @@ impl Fault {
             TooManyLevels { levels, bytes, limit } => say(format!("{} levels would need {} of memory.", short(*levels), memory(*bytes)))
                 .why(format!("One matrix has levels^2 entries of 16 bytes, and several are needed. At most {limit} levels are accepted."))
                 .write("fewer levels"),
+            NeedsMemory { bytes, machine } => {
+                say(format!("this run would need about {} of memory, and this machine has {}.", memory(*bytes), memory(*machine)))
+                    .why("Matrices have levels^2 entries of 16 bytes; rows of the traces and a propagator come on top.")
+                    .write("fewer levels, fewer rows, or no propagator under record")
+            }
             FileContent { path, row, reason } => say(format!("{path}, line {row}: {reason}.")).write(format!("line {row} of {path} anew")),
             EmptySystem { what } => say(format!("{what} names no level.")).write("levels: {down: 0 MHz, up: 80 MHz}"),
             SameLevel { name } => say(format!("the level \"{name}\" is named twice.")).write("another name for one of them"),

@@ -7,11 +7,11 @@
 
 use num_complex::Complex64;
 
-use crate::problem::Matrix;
+use crate::problem::{Matrix, Sparse};
 
 /// The size for every two of `terms` in order: first, second, size; all terms are square and as large as each other.
 pub fn commutators(terms: &[Matrix]) -> Vec<(usize, usize, f64)> {
-    let unit: Vec<Option<Matrix>> = terms.iter().map(unit_without_trace).collect();
+    let unit: Vec<Option<Sparse>> = terms.iter().map(|term| unit_without_trace(term).as_ref().map(Sparse::of)).collect();
     let count = terms.len();
     let pairs = (0..count).flat_map(|a| (a + 1..count).map(move |b| (a, b)));
     pairs.map(|(a, b)| (a, b, size(unit[a].as_ref(), unit[b].as_ref()))).collect()
@@ -29,9 +29,9 @@ fn unit_without_trace(matrix: &Matrix) -> Option<Matrix> {
     (norm > 2.0 * f64::EPSILON * whole).then(|| rest / Complex64::from(norm))
 }
 
-fn size(a: Option<&Matrix>, b: Option<&Matrix>) -> f64 {
+fn size(a: Option<&Sparse>, b: Option<&Sparse>) -> f64 {
     match (a, b) {
-        (Some(a), Some(b)) => 0.5 * (a * b - b * a).norm(),
+        (Some(a), Some(b)) => 0.5 * a.commutator(b),
         _ => 0.0,
     }
 }

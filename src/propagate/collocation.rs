@@ -34,6 +34,8 @@ const MANY_SWEEPS: usize = 12;
 const TOO_MANY_SWEEPS: usize = 18;
 /// Most amplitudes of all elements together that a run remembers for the next (50 MB).
 const MOST_SOWN: usize = 400_000;
+/// The same in bytes.
+pub(super) const MOST_SOWN_BYTES: f64 = 128.0 * MOST_SOWN as f64;
 
 /// The elements of a run, from which a finer one takes half of each and where it starts its iteration.
 #[derive(Debug, Default)]
@@ -78,21 +80,11 @@ pub(super) fn pass(stretch: &Stretch, follow: bool, limits: &Limits, path: &mut 
         slow_hz: f64::INFINITY,
         threshold: (WAVES_OVER_TOLERANCE * fineness.tolerance * ONE_MORE_HARMONIC.powf(refinements)).max(1e-18),
     };
+    // the run that halves is mostly the last
     let before = if fineness.halved && !path.forgotten { std::mem::take(path) } else { Path::default() };
-    *path = Path::default();
+    *path = Path { forgotten: fineness.halved, ..Path::default() };
     let coupling_rad_s = coupling_rad_s(picture, &sampled.heights);
-    let mut passage = Passage {
-        stretch,
-        limits,
-        cap_s,
-        coupling_rad_s,
-        tau_s: 0.0,
-        next: 0,
-        before,
-        path,
-        fresh: Vec::new(),
-        ends: state.amplitudes.clone(),
-    };
+    let mut passage = Passage { stretch, limits, cap_s, coupling_rad_s, tau_s: 0.0, next: 0, before, path, ends: state.amplitudes.clone() };
     if let Some(waves) = if follow { expand(&wanted, passage.longest_s()) } else { None } {
         if passage.go(&waves, state, eye, work) {
             return;
@@ -122,8 +114,6 @@ struct Passage<'a> {
     next: usize,
     before: Path,
     path: &'a mut Path,
-    /// What the element at hand leaves for a finer run.
-    fresh: Vec<Block>,
     /// Amplitudes at its end.
     ends: Vec<Complex64>,
 }
@@ -272,7 +262,8 @@ impl Passage<'_> {
         element.place(self.stretch.picture, self.stretch.terms, self.tau_s, h, allowed);
         let mut solved = Solved { sweeps: 0, converged: true, error: 0.0, order: 17.0 };
         let mut updates = 0;
-        self.fresh.clear();
+        let laid = self.path.elements.last().map_or(0, |laid| laid.sown);
+        self.path.sown.truncate(laid);
         for (k, (from, end)) in state.amplitudes.chunks_exact(dim).zip(self.ends.chunks_exact_mut(dim)).enumerate().rev() {
             let found = element.solve(from, end, 0.2 * allowed, seed(k));
             updates += found.updates;
@@ -288,7 +279,7 @@ impl Passage<'_> {
                 break;
             }
             if !self.path.forgotten {
-                element.found(&mut self.fresh);
+                element.found(&mut self.path.sown);
             }
         }
         work.step(updates as u64, 20);
@@ -305,7 +296,11 @@ impl Passage<'_> {
             self.next += 1;
         }
         if !self.path.forgotten {
-            self.path.sown.append(&mut self.fresh);
+            if self.path.elements.is_empty() {
+                let more = (self.stretch.length_s / h).ceil().min(1e4) as usize;
+                self.path.elements.reserve(2 * more);
+                self.path.sown.reserve((2 * more * self.path.sown.len()).min(MOST_SOWN));
+            }
             let list = self.path.lists.len() - 1;
             self.path.elements.push(Laid { from_s: self.tau_s, element_s: h, to_s, sown: self.path.sown.len(), list });
             if self.path.sown.len() > MOST_SOWN {

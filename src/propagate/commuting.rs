@@ -11,7 +11,7 @@ use num_complex::Complex64;
 use super::exponential::Flow;
 use super::picture::{Picture, Turning};
 use super::run::{Eye, State, Stretch, Work};
-use crate::problem::{Matrix, Term};
+use crate::problem::{Sparse, Term};
 use crate::quadrature;
 
 /// Moments at which a coefficient is looked at to see whether its phase stands still.
@@ -31,13 +31,12 @@ pub(super) fn commutes(picture: &Picture, terms: &[Term], length_s: f64) -> bool
         return false;
     }
     let n = picture.dim;
-    let mut parts: Vec<Matrix> = Vec::new();
-    let mut constant = Matrix::from_fn(n, n, |j, k| if j == k { Complex64::from(picture.diagonal[j]) } else { Complex64::default() });
+    let mut parts: Vec<Sparse> = Vec::new();
+    let mut constant = Sparse::zero(n);
+    for (j, value) in picture.diagonal.iter().enumerate() {
+        constant.add(j, j, Complex64::from(*value));
+    }
     for turning in &picture.turnings {
-        let mut x = Matrix::zeros(n, n);
-        for part in &turning.parts {
-            x[(part.row, part.column)] += part.value;
-        }
         let factors: Vec<Complex64> =
             (0..=LOOKS).map(|k| Picture::factor(turning, terms, length_s * (f64::from(k) + 0.37) / (f64::from(LOOKS) + 1.0))).collect();
         let largest = factors.iter().copied().fold(Complex64::default(), |a, b| if b.norm() > a.norm() { b } else { a });
@@ -45,25 +44,31 @@ pub(super) fn commutes(picture: &Picture, terms: &[Term], length_s: f64) -> bool
             continue;
         }
         let phase = largest / largest.norm();
-        let turned = |m: &Matrix, z: Complex64| m * z + (m * z).adjoint();
-        let one = turned(&x, phase);
+        let one = hermitian(n, turning, phase);
         if factors.iter().all(|f| (f - largest).norm() <= 1e-15 * largest.norm()) {
-            constant += one * Complex64::from(largest.norm());
+            constant.add_all(&one, largest.norm());
             continue;
         }
         parts.push(one);
         // a coefficient whose phase moves drives two matrices
         if factors.iter().any(|f| (f * phase.conj()).im.abs() > 1e-14 * largest.norm()) {
-            parts.push(turned(&x, phase * Complex64::i()));
+            parts.push(hermitian(n, turning, phase * Complex64::i()));
         }
     }
-    let mean = constant.trace() / Complex64::from(n as f64);
-    for j in 0..n {
-        constant[(j, j)] -= mean;
-    }
+    constant.centre();
     parts.push(constant);
-    let close = |a: &Matrix, b: &Matrix| (a * b - b * a).norm() <= CLOSE * 2.0 * a.norm() * b.norm();
+    let close = |a: &Sparse, b: &Sparse| a.commutator(b) <= CLOSE * 2.0 * a.norm() * b.norm();
     parts.iter().enumerate().all(|(k, a)| parts[..k].iter().all(|b| close(a, b)))
+}
+
+/// z X + adjoint, X the entries of a group.
+fn hermitian(dim: usize, turning: &Turning, z: Complex64) -> Sparse {
+    let mut sparse = Sparse::zero(dim);
+    for part in &turning.parts {
+        sparse.add(part.row, part.column, z * part.value);
+        sparse.add(part.column, part.row, (z * part.value).conj());
+    }
+    sparse
 }
 
 /// Whether a group alone shows that H does not commute: a coefficient whose phase moves drives X + adjoint and i X + adjoint, which

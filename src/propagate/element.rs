@@ -10,12 +10,12 @@
 use num_complex::Complex64;
 
 use super::gauss::{legendre, Table, NODES, RULE};
-use super::lanes::{Eight, Kernel, Lane, Simd, Width};
+use super::lanes::{sin_cos, Eight, Kernel, Lane, Simd, Width};
 use super::picture::{turns, Picture};
 use super::turning::{following, moments_at, Block, Square, Turning};
 use super::waves::Waves;
 use crate::problem::Term;
-use crate::units::{cis_turns, RAD_PER_TURN};
+use crate::units::{cis_turns, rad_s, RAD_PER_TURN};
 
 /// Sweeps after which an element counts as too long.
 const MOST_SWEEPS: usize = 30;
@@ -47,8 +47,12 @@ pub(super) struct Element<'w> {
     /// What these turn by over the length.
     ends: Vec<Complex64>,
     coefficients: Vec<Block>,
+    /// What coefficients turn by themselves at the nodes, for those that do.
+    rests: Vec<Option<Box<Block>>>,
     /// Envelopes of the terms at the nodes.
     envelopes: Vec<Block>,
+    /// Phases of the groups at the start.
+    phases: Vec<Complex64>,
     u: Vec<Block>,
     /// u(0) of the slow waves.
     starts: Vec<Complex64>,
@@ -97,7 +101,9 @@ impl<'w> Element<'w> {
             responses: Vec::new(),
             ends: Vec::new(),
             coefficients: vec![Block::default(); waves.coefficients.len()],
-            envelopes: Vec::new(),
+            rests: waves.coefficients.iter().map(|coefficient| (coefficient.rest_hz != 0.0).then(Box::default)).collect(),
+            envelopes: Vec::with_capacity(picture.turnings.len()),
+            phases: Vec::with_capacity(picture.turnings.len()),
             u: vec![Block::default(); waves.list.len()],
             starts: vec![Complex64::default(); waves.slow],
             from: vec![Complex64::default(); waves.dim],
@@ -128,24 +134,12 @@ impl<'w> Element<'w> {
             }
             self.envelopes.push(block);
         }
-        for (out, coefficient) in self.coefficients.iter_mut().zip(&self.waves.coefficients) {
-            let group = &picture.turnings[coefficient.group];
+        self.phases.clear();
+        for group in &picture.turnings {
             let turned = turns(group.turns_hz, tau_s);
-            let sign = if coefficient.conjugate { -1.0 } else { 1.0 };
-            let (slow, phase) = match group.term {
-                Some(k) => (self.envelopes[k], terms[k].phase_turns + turned),
-                None => (Block { re: Eight::all(length_s), im: Eight::all(0.0) }, turned),
-            };
-            let phase = cis_turns(-sign * phase);
-            for (i, node) in nodes.iter().enumerate() {
-                let value = slow.at(i);
-                let mut value = Complex64::new(value.re, sign * value.im) * phase;
-                if coefficient.rest_hz != 0.0 {
-                    value *= cis_turns(-coefficient.rest_hz * node * length_s);
-                }
-                out.set(i, value);
-            }
+            self.phases.push(cis_turns(-group.term.map_or(turned, |k| terms[k].phase_turns + turned)));
         }
+        self.width.run(Multiply { element: self, picture });
     }
 
     /// Carries `state` (amplitudes in the picture) through the element into `end`, with what is left of the iteration below `tolerance`.
@@ -194,10 +188,9 @@ impl<'w> Element<'w> {
     fn couplings<S: Simd>(&self, simd: S, index: usize) -> (S::V, S::V) {
         let zero = simd.splat(0.0);
         let mut sum = (zero, zero);
-        let mut edges = &self.waves.edges[self.waves.list[index].edges.clone()];
-        while let Some(first) = edges.first() {
+        for bundle in &self.waves.bundles[self.waves.list[index].bundles.clone()] {
             let mut part = (zero, zero);
-            while let Some(edge) = edges.first().filter(|edge| edge.coefficient == first.coefficient) {
+            for edge in &self.waves.edges[bundle.edges.clone()] {
                 let u = &self.u[edge.from];
                 let (re, im) = (simd.load(&u.re), simd.load(&u.im));
                 let value = simd.splat(edge.value.re);
@@ -206,9 +199,8 @@ impl<'w> Element<'w> {
                     let value = simd.splat(edge.value.im);
                     part = (part.0.minus(value, im), part.1.plus(value, re));
                 }
-                edges = &edges[1..];
             }
-            let c = &self.coefficients[first.coefficient];
+            let c = &self.coefficients[bundle.coefficient];
             let (re, im) = (simd.load(&c.re), simd.load(&c.im));
             sum = (sum.0.plus(re, part.0).minus(im, part.1), sum.1.plus(re, part.1).plus(im, part.0));
         }
@@ -368,7 +360,16 @@ impl Kernel for Prepare<'_, '_> {
             element.z[j] = wave.rest_rad_s * element.length_s;
             element.turnings[j].fill(simd, element.z[j]);
         }
+        for (rest, coefficient) in element.rests.iter_mut().zip(&element.waves.coefficients) {
+            if let Some(rest) = rest {
+                let angle = simd.splat(rad_s(coefficient.rest_hz) * element.length_s) * simd.load(&RULE.nodes);
+                let (sine, cosine) = sin_cos(simd, angle);
+                cosine.store(&mut rest.re);
+                (-sine).store(&mut rest.im);
+            }
+        }
         element.squares.clear();
+        element.squares.reserve_exact(fast.len());
         element.responses.clear();
         element.ends.clear();
         for wave in fast {
@@ -388,6 +389,43 @@ impl Kernel for Prepare<'_, '_> {
                 following(simd, z, orders, &mut square);
                 element.squares.push(square);
             }
+        }
+    }
+}
+
+/// The coefficients of an element from its envelopes and phases.
+struct Multiply<'a, 'w> {
+    element: &'a mut Element<'w>,
+    picture: &'a Picture,
+}
+
+impl Kernel for Multiply<'_, '_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<S: Simd>(self, simd: S) {
+        let Multiply { element, picture } = self;
+        let rests = element.rests.iter();
+        for ((out, coefficient), rest) in element.coefficients.iter_mut().zip(&element.waves.coefficients).zip(rests) {
+            let phase = element.phases[coefficient.group];
+            let (a, b) = (simd.splat(phase.re), simd.splat(phase.im));
+            let mut value = match picture.turnings[coefficient.group].term {
+                Some(k) => {
+                    let slow = &element.envelopes[k];
+                    let (re, im) = (simd.load(&slow.re), simd.load(&slow.im));
+                    ((re * a).minus(im, b), (re * b).plus(im, a))
+                }
+                None => (simd.splat(element.length_s) * a, simd.splat(element.length_s) * b),
+            };
+            if coefficient.conjugate {
+                value.1 = -value.1;
+            }
+            if let Some(rest) = rest {
+                let (re, im) = (simd.load(&rest.re), simd.load(&rest.im));
+                value = ((value.0 * re).minus(value.1, im), (value.0 * im).plus(value.1, re));
+            }
+            value.0.store(&mut out.re);
+            value.1.store(&mut out.im);
         }
     }
 }
@@ -514,7 +552,8 @@ fn respond<S: Simd>(simd: S, matrix: &Square, f: (S::V, S::V), start: (S::V, S::
     f.1.store(&mut plain.im);
     let zero = simd.splat(0.0);
     let (mut rr, mut ii, mut ri, mut ir) = (start.0, zero, start.1, zero);
-    for (j, column) in matrix.iter().enumerate() {
+    for j in 0..NODES {
+        let column = &matrix[j];
         let (re, im) = (simd.splat(plain.re.0[j]), simd.splat(plain.im.0[j]));
         let (a, b) = (simd.load(&column.re), simd.load(&column.im));
         rr = rr.plus(a, re);

@@ -15,6 +15,7 @@
 //! | `exponential.rs` | exp(-i H tau) of a constant Hermitian H |
 //! | `jacobi.rs` | eigenvectors that cannot fail |
 //! | `constant.rs` | stretches of constant H |
+//! | `memory.rs` | what a run will hold in memory |
 //! | `sampled.rs` | how high and how often the envelopes of a segment rise |
 //! | `commuting.rs` | stretches whose H commutes with itself |
 //! | `even_steps.rs` | equal steps between moments, shared by the next two |
@@ -48,6 +49,7 @@ pub mod gradient;
 mod jacobi;
 pub mod lanes;
 mod load;
+mod memory;
 mod mixture;
 mod open;
 mod picture;
@@ -67,6 +69,7 @@ mod waves;
 pub use asked::{Asked, Demand, Recorder};
 pub use choose::{Method, Row, METHODS};
 pub use load::Load;
+pub use memory::{machine_bytes, memory_bytes};
 pub use open::{steady, NotSteady, Steady};
 pub use recipe::{solve_once, Recipe, Resolved};
 pub use refine::{figure, solve, solve_from};

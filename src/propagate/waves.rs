@@ -56,7 +56,15 @@ pub(super) struct Wave {
     pub size: f64,
     /// Number of the slow wave of its level.
     pub slow: usize,
-    /// Its entries, as a range of [`Waves::edges`].
+    /// Its entries, as a range of [`Waves::bundles`].
+    pub bundles: Range<usize>,
+}
+
+/// Entries into one wave that share a coefficient.
+#[derive(Debug, Clone)]
+pub(super) struct Bundle {
+    pub coefficient: usize,
+    /// Range of [`Waves::edges`].
     pub edges: Range<usize>,
 }
 
@@ -69,6 +77,8 @@ pub(super) struct Waves {
     pub list: Vec<Wave>,
     /// By target, then by coefficient.
     pub edges: Vec<Edge>,
+    /// By target.
+    pub bundles: Vec<Bundle>,
     pub coefficients: Vec<Coefficient>,
     /// Levels that nothing reaches.
     pub idle: Vec<usize>,
@@ -145,7 +155,8 @@ impl Waves {
             dim,
             slow: 0,
             list: Vec::with_capacity(drafts.len()),
-            edges: Vec::new(),
+            edges: Vec::with_capacity(2 * drafts.len()),
+            bundles: Vec::with_capacity(2 * drafts.len()),
             coefficients: Vec::new(),
             idle: Vec::new(),
             slowest_rad_s: f64::INFINITY,
@@ -168,7 +179,7 @@ impl Waves {
                 rest_rad_s,
                 size: draft.size,
                 slow: place[draft.level],
-                edges: 0..0,
+                bundles: 0..0,
             });
             if index < dim {
                 waves.slow += 1;
@@ -187,13 +198,24 @@ impl Waves {
             }
         }
         waves.edges.sort_unstable_by_key(|edge| (edge.to, edge.coefficient, edge.from));
-        let mut from = 0;
-        for (index, wave) in waves.list.iter_mut().enumerate() {
-            let count = waves.edges[from..].iter().take_while(|edge| edge.to == index).count();
-            wave.edges = from..from + count;
-            from += count;
-        }
+        waves.bundle();
         Some(waves)
+    }
+
+    /// Bundles of the edges, which are sorted.
+    fn bundle(&mut self) {
+        let mut at = 0;
+        for (index, wave) in self.list.iter_mut().enumerate() {
+            let first = self.bundles.len();
+            while let Some(edge) = self.edges.get(at).filter(|edge| edge.to == index) {
+                let from = at;
+                while self.edges.get(at).is_some_and(|other| other.to == index && other.coefficient == edge.coefficient) {
+                    at += 1;
+                }
+                self.bundles.push(Bundle { coefficient: edge.coefficient, edges: from..at });
+            }
+            wave.bundles = first..self.bundles.len();
+        }
     }
 
     fn join(&mut self, from: usize, to: usize, step: &Step, rest_hz: f64, reached_hz: f64) {

@@ -50,6 +50,7 @@ pub fn write(facts: &Facts, out: &mut dyn Write) -> io::Result<()> {
     object.value("noise", &super::noise::json(facts))?;
     object.value("frame", &crate::report::frame_json::frame(document, point))?;
     object.value("ledger", &crate::report::frame_json::ledger(document, point))?;
+    object.value("memory_bytes", &number(crate::outcome::run_bytes(document, point)))?;
     let defaults = document.defaults.iter();
     object.list("defaults", defaults.map(|(name, value)| json!({"name": name, "value": as_written(value)})))?;
     object.list("warnings", facts.warnings.iter().map(|text| json!(text)))?;

@@ -8,6 +8,8 @@ use super::page::{count, digits, prefix, quantity, Page};
 use super::surroundings::surroundings;
 use super::timetable::timetable;
 use super::words;
+use crate::config::messages::memory;
+use crate::outcome::run_bytes;
 
 /// Levels shown.
 const LEVELS: usize = 12;
@@ -145,6 +147,7 @@ fn kept(page: &mut Page, facts: &Facts) {
         page.labelled(if k == 0 { "what" } else { "" }, item);
     }
     page.labelled("accuracy", &words::accuracy(facts.document));
+    page.labelled("memory", &format!("a run takes about {}", memory(run_bytes(facts.document, facts.point))));
 }
 
 fn terms(page: &mut Page, facts: &Facts) {
