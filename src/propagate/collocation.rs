@@ -346,7 +346,8 @@ pub(super) fn followed_turns(picture: &Picture, sampled: &Sampled, length_s: f64
 fn slow_hz(picture: &Picture, mut length_s: f64) -> f64 {
     loop {
         let slow_hz = 2.0 * FOLLOWS_FROM_RAD / RAD_PER_TURN / length_s;
-        let slow = picture.turnings.iter().map(|turning| turning.turns_hz.abs()).filter(|nu| *nu < slow_hz).fold(0.0, f64::max);
+        let all = picture.turnings.iter().flat_map(|turning| turning.parts.iter().map(|part| picture.turns_of_waves_hz(turning, part)));
+        let slow = all.map(f64::abs).filter(|nu| *nu < slow_hz).fold(0.0, f64::max);
         let resolved_s = RESOLVED_TURNS / slow;
         if resolved_s >= length_s {
             return slow_hz;

@@ -162,7 +162,8 @@ impl Load {
                 load.still_turns += tied.fastest_hz * length_s;
                 load.rises += sampled.way;
                 if !demand.time_in && free.fastest_hz * length_s > LEAST_PERIODS {
-                    load.followed_turns += super::collocation::followed_turns(&pictures.of(segment, Kind::Folded), &sampled, length_s);
+                    load.followed_turns +=
+                        super::collocation::followed_turns(&pictures.of(segment, Kind::followed(demand)), &sampled, length_s);
                 }
             }
             load.lab_rad += rad_s * length_s;

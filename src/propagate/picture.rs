@@ -15,6 +15,7 @@ use std::rc::Rc;
 use nalgebra::Complex;
 use num_complex::Complex64;
 
+use super::asked::Demand;
 use super::sampled::Sampled;
 use crate::problem::{Instant, Matrix, Problem, Segment, Term};
 use crate::units::{cis_turns, rad_s, RAD_PER_TURN};
@@ -30,6 +31,19 @@ pub(super) enum Kind {
     Rest,
     /// Tied, but no level further than half a turning from its own frequency.
     Folded,
+    /// The same, or nothing on the diagonal where that is much calmer for all levels.
+    Calm,
+}
+
+impl Kind {
+    /// Where carriers are followed: all levels count where their propagator is wanted, else mostly the lowest of a ladder.
+    pub fn followed(demand: &Demand) -> Kind {
+        if demand.propagator {
+            Kind::Calm
+        } else {
+            Kind::Folded
+        }
+    }
 }
 
 /// An entry (row, column) of a matrix; its adjoint is implied.
@@ -64,10 +78,17 @@ pub(super) struct Picture {
     pub turnings: Vec<Turning>,
     /// Largest |nu|, Hz.
     pub fastest_hz: f64,
+    /// F less that of the tied picture, Hz, where waves are to take their turnings from that one.
+    pub from_tied_hz: Option<Vec<f64>>,
     key: Vec<(usize, u64)>,
 }
 
 impl Picture {
+    /// What an entry turns by for the waves, Hz.
+    pub fn turns_of_waves_hz(&self, turning: &Turning, part: &Part) -> f64 {
+        turning.turns_hz - self.from_tied_hz.as_ref().map_or(0.0, |left| left[part.column] - left[part.row])
+    }
+
     /// Whether H of this picture is constant with these terms.
     pub fn constant(&self, terms: &[Term]) -> bool {
         self.fastest_hz == 0.0 && terms.iter().all(Term::is_constant)
@@ -122,6 +143,7 @@ impl Picture {
             turns_hz: f_hz,
             turnings: Vec::new(),
             fastest_hz: 0.0,
+            from_tied_hz: None,
             key,
         };
         for column in 0..n {
@@ -176,18 +198,30 @@ pub(super) struct Pictures<'a> {
     free: Vec<Rc<Picture>>,
     rest: Vec<Rc<Picture>>,
     folded: Vec<Rc<Picture>>,
+    calm: Vec<Rc<Picture>>,
     samples: HashMap<(usize, u64), Rc<Sampled>>,
     replaced: usize,
 }
 
 const KEPT: usize = 32;
 const MOST_SAMPLED: usize = 65_536;
+/// The interaction picture must be so much calmer than the folded one to be taken, as its couplings turn one by one.
+const CALMER: f64 = 2.0;
 /// H of the tied picture over the fastest turning at rest, below which the tied one is taken although more turns in it.
 const WEAK: f64 = 0.1;
 
 impl<'a> Pictures<'a> {
     pub fn new(problem: &'a Problem) -> Self {
-        Pictures { problem, tied: Vec::new(), free: Vec::new(), rest: Vec::new(), folded: Vec::new(), samples: HashMap::new(), replaced: 0 }
+        Pictures {
+            problem,
+            tied: Vec::new(),
+            free: Vec::new(),
+            rest: Vec::new(),
+            folded: Vec::new(),
+            calm: Vec::new(),
+            samples: HashMap::new(),
+            replaced: 0,
+        }
     }
 
     /// What samples of the envelopes of a segment say.
@@ -212,6 +246,7 @@ impl<'a> Pictures<'a> {
             Kind::Free => &self.free,
             Kind::Rest => &self.rest,
             Kind::Folded => &self.folded,
+            Kind::Calm => &self.calm,
         };
         let same = |picture: &Rc<Picture>| {
             picture.key.len() == terms.len()
@@ -225,6 +260,7 @@ impl<'a> Pictures<'a> {
             Kind::Free => Picture::new(problem, terms, interaction(&problem.statics), key),
             Kind::Rest => Picture::new(problem, terms, vec![0.0; problem.dim()], key),
             Kind::Folded => Picture::new(problem, terms, folded(problem, terms), key),
+            Kind::Calm => calmest(problem, terms, key),
             Kind::Tied => self.stillest(segment, key),
         });
         let kept = match kind {
@@ -232,6 +268,7 @@ impl<'a> Pictures<'a> {
             Kind::Free => &mut self.free,
             Kind::Rest => &mut self.rest,
             Kind::Folded => &mut self.folded,
+            Kind::Calm => &mut self.calm,
         };
         if kept.len() < KEPT {
             kept.push(made.clone());
@@ -282,6 +319,35 @@ fn folded(problem: &Problem, terms: &[Term]) -> Vec<f64> {
         }
     }
     f_hz
+}
+
+/// The folded picture, or the interaction picture where that leaves much less to turn: up a long ladder a small detuning of every step
+/// adds up on the diagonal, while no coupling turns faster than one step.
+fn calmest(problem: &Problem, terms: &[Term], key: Vec<(usize, u64)>) -> Picture {
+    let (free, folded) = (interaction(&problem.statics), folded(problem, terms));
+    let left: Vec<f64> = free.iter().zip(&folded).map(|(energy, f)| energy - f).collect();
+    let (low, high) = left.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), left| (low.min(*left), high.max(*left)));
+    let mut slow: f64 = 0.0;
+    let mut look = |matrix: &Matrix, carrier_hz: f64| {
+        for column in 0..matrix.ncols() {
+            for row in (0..matrix.nrows()).filter(|row| *row != column && matrix[(*row, column)] != Complex64::default()) {
+                let turns_hz = (carrier_hz - (free[row] - free[column])).abs();
+                // what turns like the carrier follows in either picture
+                if carrier_hz == 0.0 || turns_hz < 0.5 * carrier_hz.abs() {
+                    slow = slow.max(turns_hz);
+                }
+            }
+        }
+    };
+    look(&problem.statics, 0.0);
+    terms.iter().for_each(|term| look(&problem.matrices[term.matrix], term.turns_hz));
+    if CALMER * slow < 0.5 * (high - low) {
+        let tied = ties(problem, terms);
+        let left = free.iter().zip(&tied).map(|(energy, f)| energy - f).collect();
+        Picture { from_tied_hz: Some(left), ..Picture::new(problem, terms, free, key) }
+    } else {
+        Picture::new(problem, terms, folded, key)
+    }
 }
 
 /// A wish F_row - F_column = f.

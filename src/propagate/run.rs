@@ -137,7 +137,7 @@ pub(super) fn run(route: &mut Route, fineness: &Fineness, left: f64, recorder: &
         let picture = match method {
             _ if still || commuting => tied,
             Method::Smooth => pictures.of(segment, Kind::Free),
-            Method::Carrier => pictures.of(segment, Kind::Folded),
+            Method::Carrier => pictures.of(segment, Kind::followed(demand)),
             _ => tied,
         };
         let sampled = if still { Rc::default() } else { pictures.sampled(segment) };

@@ -42,6 +42,7 @@ impl Default for Block {
 }
 
 impl Block {
+    #[cfg(test)]
     pub fn at(&self, i: usize) -> Complex64 {
         Complex64::new(self.re.0[i], self.im.0[i])
     }

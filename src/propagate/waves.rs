@@ -114,7 +114,10 @@ struct Step {
     value: Complex64,
     group: usize,
     conjugate: bool,
+    /// What it turns by for the waves.
     turns_hz: f64,
+    /// What it turns by beside that.
+    rest_hz: f64,
     /// Largest coupling, rad/s.
     push: f64,
 }
@@ -220,7 +223,7 @@ impl Waves {
 
     fn join(&mut self, from: usize, to: usize, step: &Step, rest_hz: f64, reached_hz: f64) {
         let grain = 8.0 * f64::EPSILON * reached_hz.abs().max(step.turns_hz.abs());
-        let rest_hz = if rest_hz.abs() <= grain { 0.0 } else { rest_hz };
+        let rest_hz = step.rest_hz + if rest_hz.abs() <= grain { 0.0 } else { rest_hz };
         let coefficient = Coefficient { group: step.group, conjugate: step.conjugate, rest_hz };
         let known = self.coefficients.iter().position(|known| *known == coefficient);
         let index = known.unwrap_or_else(|| {
@@ -247,7 +250,7 @@ fn find(drafts: &[Draft], level: usize, turns_hz: f64, slow_hz: f64) -> Option<u
 /// All waves that may be large enough, the slow one of each level first.
 fn drafts(wanted: &Wanted, starts: &[usize], steps: &[Step]) -> Option<Vec<Draft>> {
     let dim = wanted.picture.dim;
-    let diagonal = &wanted.picture.diagonal;
+    let diagonal = &diagonal_of_waves(wanted.picture);
     let mut drafts: Vec<Draft> = (0..dim)
         .map(|level| {
             let size = wanted.present[level].min(1.0);
@@ -261,8 +264,10 @@ fn drafts(wanted: &Wanted, starts: &[usize], steps: &[Step]) -> Option<Vec<Draft
         for step in &steps[starts[level]..starts[level + 1]] {
             let reached_hz = turns_hz + step.turns_hz;
             let found = find(&drafts, step.to, reached_hz, wanted.slow_hz);
-            let rest_rad_s = diagonal[step.to] - rad_s(found.map_or(reached_hz, |to| drafts[to].turns_hz));
+            let turned_hz = found.map_or(reached_hz, |to| drafts[to].turns_hz);
+            let rest_rad_s = wanted.picture.diagonal[step.to] - rad_s(turned_hz);
             let rate = if found == Some(step.to) {
+                let rest_rad_s = diagonal[step.to] - rad_s(turned_hz);
                 // driven by whatever well filled levels turn by
                 let filled = drafts[..dim].iter().enumerate().filter(|(k, draft)| *k != step.to && draft.size >= WELL_FILLED);
                 let nearest = filled.map(|(k, _)| (diagonal[k] - rest_rad_s).abs()).fold(f64::INFINITY, f64::min);
@@ -302,6 +307,14 @@ fn drafts(wanted: &Wanted, starts: &[usize], steps: &[Step]) -> Option<Vec<Draft
     Some(drafts)
 }
 
+/// What is left on the diagonal of the picture that waves take their turnings from, rad/s.
+fn diagonal_of_waves(picture: &Picture) -> Vec<f64> {
+    match &picture.from_tied_hz {
+        Some(left) => picture.diagonal.iter().zip(left).map(|(rest, left)| rest + rad_s(*left)).collect(),
+        None => picture.diagonal.clone(),
+    }
+}
+
 /// Every entry of the picture and its adjoint, by the level that it starts from.
 fn steps(wanted: &Wanted) -> (Vec<usize>, Vec<Step>) {
     let picture = wanted.picture;
@@ -313,7 +326,7 @@ fn steps(wanted: &Wanted) -> (Vec<usize>, Vec<Step>) {
     for level in 0..picture.dim {
         starts[level + 1] += starts[level];
     }
-    let empty = Step { to: 0, value: Complex64::default(), group: 0, conjugate: false, turns_hz: 0.0, push: 0.0 };
+    let empty = Step { to: 0, value: Complex64::default(), group: 0, conjugate: false, turns_hz: 0.0, rest_hz: 0.0, push: 0.0 };
     let mut steps = vec![empty; starts[picture.dim]];
     let mut next = starts.clone();
     for (group, turning) in picture.turnings.iter().enumerate() {
@@ -321,9 +334,12 @@ fn steps(wanted: &Wanted) -> (Vec<usize>, Vec<Step>) {
         for part in &turning.parts {
             let (nu, value) = (turning.turns_hz, part.value);
             let push = height * value.norm();
-            steps[next[part.column]] = Step { to: part.row, value, group, conjugate: false, turns_hz: nu, push };
+            let turns_hz = picture.turns_of_waves_hz(turning, part);
+            let rest_hz = nu - turns_hz;
+            steps[next[part.column]] = Step { to: part.row, value, group, conjugate: false, turns_hz, rest_hz, push };
             next[part.column] += 1;
-            steps[next[part.row]] = Step { to: part.column, value: value.conj(), group, conjugate: true, turns_hz: -nu, push };
+            let back = Step { to: part.column, value: value.conj(), group, conjugate: true, turns_hz: -turns_hz, rest_hz: -rest_hz, push };
+            steps[next[part.row]] = back;
             next[part.row] += 1;
         }
     }
