@@ -107,14 +107,14 @@ mod tests {
         assert!(dense > 1.0 && (a.commutator(&b) / dense - 1.0).abs() < 1e-14, "{} {dense}", a.commutator(&b));
         assert_eq!(a.commutator(&a), 0.0);
         assert!((Sparse::of(&dense_a).commutator(&Sparse::of(&dense_b)) / dense - 1.0).abs() < 1e-14);
-        let mut centred = dense_a.clone();
-        let mean = dense_a.trace() / Complex64::from(6.0);
+        let mut centred = dense_b.clone();
+        let mean = dense_b.trace() / Complex64::from(6.0);
         (0..6).for_each(|j| centred[(j, j)] -= mean);
-        let mut same = a.clone();
+        let mut same = b.clone();
         same.centre();
-        assert!(mean.norm() > 0.1 && (same.norm() / centred.norm() - 1.0).abs() < 1e-15);
+        assert!(mean.norm() > 0.1 && (same.norm() / centred.norm() - 1.0).abs() < 1e-14);
         let mut sum = a.clone();
         sum.add_all(&b, 0.5);
-        assert!((sum.norm() / (&dense_a + &dense_b * Complex64::from(0.5)).norm() - 1.0).abs() < 1e-15);
+        assert!((sum.norm() / (&dense_a + &dense_b * Complex64::from(0.5)).norm() - 1.0).abs() < 1e-14);
     }
 }
