@@ -28,9 +28,16 @@ pub struct Resolved {
 /// A probe's error may be this share of what is asked for, so that its neighbours have room.
 const ROOM: f64 = 0.2;
 
+/// Tolerance over accuracy of points that nobody looks at again, at most: elements mostly come out far more accurate than their
+/// tolerance, but one of a hundred does not (6400 points at ten times the accuracy: 12 of 13 below 1e-3 of it, the worst 0.23).
+const UNSEEN: f64 = 0.1;
+
 impl Resolved {
-    pub(super) fn new(method: Method, fineness: Fineness, share: f64) -> Resolved {
-        let Fineness { tolerance, pieces, doublings, halved: _ } = fineness;
+    pub(super) fn new(method: Method, fineness: Fineness, share: f64, accuracy: f64) -> Resolved {
+        let Fineness { mut tolerance, pieces, doublings, halved: _ } = fineness;
+        if matches!(method, Method::Collocation | Method::Carrier) {
+            tolerance = tolerance.min(UNSEEN * accuracy);
+        }
         Resolved { method, tolerance, pieces, doublings, share }
     }
 

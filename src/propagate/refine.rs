@@ -185,7 +185,7 @@ pub fn solve_from<R: Recorder>(
         }
     });
     Solved {
-        resolved: Some(Resolved::new(method, coarse.fineness, error_figure / asked.accuracy)),
+        resolved: Some(Resolved::new(method, coarse.fineness, error_figure / asked.accuracy, asked.accuracy)),
         recorded: coarse.recorder,
         finer: fine.recorder,
         method,
