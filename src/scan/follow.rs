@@ -3,7 +3,7 @@
 //! A name belongs to a state as built, and goes over to another line where two lines avoid each other; what is drawn and read is
 //! the line. The eigenvectors of neighbouring places are laid over each other: a state goes on as the one that holds more than
 //! half of it, which can be one only. Where none does, or where lines would pass through each other, the step is halved, up to
-//! [`HALVINGS`] times, so that an avoided crossing narrower than a step is followed too and what still crosses does not avoid. Where
+//! `HALVINGS` times, so that an avoided crossing narrower than a step is followed too and what still crosses does not avoid. Where
 //! the places in between do not settle it either, the order in energy decides, and that is said. Places at which levels coincide are passed over, as their
 //! states are a choice. Energies over h in Hz. Every place is built anew from its numbers, so that nothing depends on threads, on
 //! parts, or on how often the scan was stopped.
