@@ -634,3 +634,32 @@ accuracy: {final: 1e-10}
     }
     assert_eq!(count, 121);
 }
+
+/// The sampling error of each point is that of the same run alone, and the largest is said.
+#[test]
+fn cli_scan_of_random_draws_says_their_sampling_error() {
+    let folder = tempfile::tempdir().unwrap();
+    let config = "format: 1
+numbers: {det: 0 kHz, drift: 0 kHz}
+system: {levels: {g: 0 MHz, e: det + drift}}
+sequence: [{wait: 1 us}]
+noise: [{moves: drift, spread: {sigma: 200 kHz}, sampling: {rule: random, draws: 50, seed: 4}}]
+start: {superposition: {g: [sqrt(1/2), 0 deg], e: [sqrt(1/2), 0 deg]}}
+record: {at: [1 us], coherence: [g, e]}
+scan: {axes: [{number: det, values: [0 kHz, 300 kHz, 1 MHz]}], derived: {twice: 2 * coherence_g_e_re}}
+accuracy: {final: 1e-6}
+";
+    fs::write(folder.path().join("draws.yaml"), config).unwrap();
+    let nutate = |words: &[&str]| Command::new(env!("CARGO_BIN_EXE_nutate")).args(words).current_dir(folder.path()).output().unwrap();
+    let json = |output: &Output| -> Value { serde_json::from_slice(&output.stdout).unwrap() };
+    let scanned = nutate(&["scan", "draws.yaml", "--json"]);
+    let result = json(&scanned);
+    let of = |value: &Value| value["sampling_errors"]["coherence_g_e_re"].as_f64().unwrap();
+    let alone = ["0 kHz", "300 kHz", "1 MHz"]
+        .map(|det| of(&json(&nutate(&["run", "draws.yaml", "--json", "--set", &format!("det={det}"), "--folder", det]))));
+    let largest = alone.into_iter().fold(0.0, f64::max);
+    assert!(largest > 1e-3);
+    assert!((of(&result) - largest).abs() < 1e-15, "{result}");
+    assert!((result["sampling_errors"]["twice"].as_f64().unwrap() - 2.0 * largest).abs() < 1e-14);
+    assert!(said(&scanned).contains("the sampling error of the draws reaches"), "{}", said(&scanned));
+}

@@ -67,6 +67,13 @@ pub fn result(finished: &Finished) -> Map<String, Value> {
     put("accuracy", json!({"final": document.accuracy.last, "reached": reached(setup, summary), "points_beyond": summary.inaccurate}));
     let columns = || setup.columns.iter().enumerate();
     put("errors", columns().map(|(k, column)| (column.name.clone(), number(summary.errors[k]))).collect::<Map<_, _>>().into());
+    if !summary.sampling.is_empty() {
+        put("sampling_error", number(summary.sampling_error(setup)));
+        put(
+            "sampling_errors",
+            columns().map(|(k, column)| (column.name.clone(), number(summary.sampling[k]))).collect::<Map<_, _>>().into(),
+        );
+    }
     put("axes", setup.grid.axes().iter().enumerate().map(|(k, axis)| axis_json(setup, k, axis)).collect());
     put("units", columns().map(|(_, column)| (column.name.clone(), json!(column.unit))).collect::<Map<_, _>>().into());
     put(

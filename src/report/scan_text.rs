@@ -84,8 +84,10 @@ pub fn summary(finished: &Finished, followed: Option<&Followed>, place: &str) ->
     let wide = setup.columns.iter().map(|column| column.name.chars().count()).max().unwrap_or(0);
     for (k, column) in setup.columns.iter().enumerate().take(16) {
         let Some([low, high]) = summary.extremes[k] else { continue };
+        let sampling =
+            summary.sampling.get(k).map_or(String::new(), |error| format!("\n  {:<wide$}  sampling error up to {error:.1e}", ""));
         text.push_str(&format!(
-            "  {:<wide$}  from {} at {}\n  {:<wide$}  to   {} at {}\n",
+            "  {:<wide$}  from {} at {}\n  {:<wide$}  to   {} at {}{sampling}\n",
             column.name,
             value(setup, k, low.0, summary.errors[k]),
             at(setup, low.1),
@@ -164,6 +166,19 @@ pub fn not_reached(finished: &Finished) -> Option<String> {
         short(finished.summary.error_figure),
         short(10f64.powf(finished.summary.error_figure.log10().ceil()))
     ))
+}
+
+/// What to say where the draws of noise leave more than was asked for.
+pub fn rough_average(finished: &Finished) -> Option<String> {
+    let (asked, sampling) = (finished.setup.document().accuracy.last, finished.summary.sampling_error(finished.setup));
+    (sampling > asked).then(|| {
+        format!(
+            "the sampling error of the draws reaches {}, larger than the accuracy of {} that was asked for; it falls with the root of \
+             their number: more draws, or rule: until accurate",
+            short(sampling),
+            short(asked)
+        )
+    })
 }
 
 #[cfg(test)]

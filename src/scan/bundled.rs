@@ -164,7 +164,7 @@ impl Bundled {
                 if !(largest <= setup.document().accuracy.last.max(floor)) {
                     return None;
                 }
-                Some(Checked { figure: largest, errors, alone: None })
+                Some(Checked { figure: largest, errors, sampling: Vec::new(), alone: None })
             }
         };
         Some(Found::Numbers { numbers, checked, trace: None })

@@ -193,10 +193,32 @@ impl<'s> Structure<'s> {
         let scales = setup.columns.iter().map(|column| column.scale);
         let largest = errors.iter().zip(scales).map(|(error, scale)| error / scale).fold(0.0, f64::max);
         errors.extend((errors.len()..numbers.len()).map(|k| figure(numbers[k], finer[k], 0.0)));
+        let sampling = self.sampling(setup, &outcome, &numbers);
         let alone = outcome.resolved.filter(|resolved| !recipe.suffices(resolved));
         match self.trace(setup, outcome.times_s, outcome.rows) {
-            Ok(trace) => Found::Numbers { numbers, checked: Some(Checked { figure: largest, errors, alone }), trace },
+            Ok(trace) => Found::Numbers { numbers, checked: Some(Checked { figure: largest, errors, sampling, alone }), trace },
             Err(reason) => Found::Failed(reason),
         }
+    }
+
+    /// Standard errors of the columns; of a derived one what those of all that it reads make together at most.
+    fn sampling(&self, setup: &Setup, outcome: &Outcome, numbers: &[f64]) -> Vec<f64> {
+        if outcome.sampling_error().is_none() {
+            return Vec::new();
+        }
+        let of = |k: usize| outcome.finals.get(k).and_then(|last| last.sampling_error).unwrap_or(0.0);
+        let value = |k: usize| outcome.finals.get(k).map_or(f64::NAN, |last| last.value);
+        let mut sampling: Vec<f64> = self.finals.iter().map(|place| place.map_or(f64::NAN, of)).collect();
+        let first = sampling.len();
+        sampling.resize(numbers.len(), 0.0);
+        if first < numbers.len() {
+            for moved in (0..outcome.finals.len()).filter(|moved| of(*moved) > 0.0) {
+                let shifted = self.columns(setup, &|k| value(k) + if k == moved { of(k) } else { 0.0 });
+                for k in first..numbers.len() {
+                    sampling[k] += (shifted[k] - numbers[k]).abs();
+                }
+            }
+        }
+        sampling
     }
 }

@@ -3,7 +3,8 @@
 //! Numbers are little end first. A row is: point u64, kind u8, then
 //! for kind 0 its numbers, one f64 for each column; for kind 1 the same, then the error figure and one error for each column; for kind
 //! 3 that of kind 1, then at which resolution it was solved: method u8, tolerance f64, pieces u32, doublings u32, share f64; for
-//! kind 2 the length of the reason u32 and its text. All but kind 2 go on, in a scan that keeps traces, with the number of
+//! kind 2 the length of the reason u32 and its text. Kinds 4 and 6 are 1 and 3 of a point that was averaged over random draws: one
+//! sampling error for each column follows the errors. All but kind 2 go on, in a scan that keeps traces, with the number of
 //! moments u32, their times, and the rows of the traces, all f64. NaN stands for a number that this point does not have.
 
 use std::io::{self, Read};
@@ -33,9 +34,14 @@ pub struct Checked {
     pub figure: f64,
     /// Errors of the numbers.
     pub errors: Vec<f64>,
+    /// One standard error of each number, where it is a mean over random draws; else empty.
+    pub sampling: Vec<f64>,
     /// Where it was solved by itself, or the resolution of the others was not fine enough for it: the one that was.
     pub alone: Option<Resolved>,
 }
+
+/// What the kind of a row with sampling errors is larger by.
+const SAMPLED: u8 = 3;
 
 /// How much a row counts: of several rows of a point the one of the highest rank is used.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
@@ -93,13 +99,13 @@ impl Row {
             Found::Numbers { numbers, checked, trace } => {
                 bytes.push(match checked {
                     None => 0,
-                    Some(Checked { alone: None, .. }) => 1,
-                    Some(_) => 3,
+                    Some(checked) => (if checked.alone.is_some() { 3 } else { 1 }) + if checked.sampling.is_empty() { 0 } else { SAMPLED },
                 });
                 put(numbers, bytes);
-                if let Some(Checked { figure, errors, alone }) = checked {
+                if let Some(Checked { figure, errors, sampling, alone }) = checked {
                     put(&[*figure], bytes);
                     put(errors, bytes);
+                    put(sampling, bytes);
                     if let Some(alone) = alone {
                         bytes.push(METHODS.iter().position(|row| row.method == alone.method).unwrap_or(0) as u8);
                         put(&[alone.tolerance], bytes);
@@ -128,14 +134,15 @@ impl Row {
         let point = u64::from_le_bytes(take(from)?);
         let [kind] = take(from)?;
         let found = match kind {
-            0 | 1 | 3 => {
+            0 | 1 | 3 | 4 | 6 => {
                 let numbers = read_numbers(from, width.columns)?;
                 let checked = match kind {
                     0 => None,
                     _ => {
                         let (figure, errors) = (read_numbers(from, 1)?[0], read_numbers(from, width.columns)?);
-                        let alone = if kind == 3 { Some(read_resolved(from)?) } else { None };
-                        Some(Checked { figure, errors, alone })
+                        let sampling = if kind > SAMPLED { read_numbers(from, width.columns)? } else { Vec::new() };
+                        let alone = if kind % SAMPLED == 0 { Some(read_resolved(from)?) } else { None };
+                        Some(Checked { figure, errors, sampling, alone })
                     }
                 };
                 let trace = if width.traced > 0 {
@@ -204,11 +211,14 @@ mod tests {
         let trace = Some(Trace { times_s: vec![0.0, 1e-9], rows: vec![0.5, f64::MIN_POSITIVE] });
         let numbers = vec![0.1, -0.0];
         let alone = Resolved { method: METHODS[2].method, tolerance: 3e-9, pieces: 3, doublings: 2, share: 0.7 };
-        let checked = |alone| Some(Checked { figure: 1e-9, errors: vec![1e-9, 2e-10], alone });
+        let checked = |alone| Some(Checked { figure: 1e-9, errors: vec![1e-9, 2e-10], sampling: Vec::new(), alone });
+        let sampled = |alone| Some(Checked { figure: 1e-9, errors: vec![1e-9, 2e-10], sampling: vec![0.1, 0.2], alone });
         let rows = [
             Row { point: 7, found: Found::Numbers { numbers: numbers.clone(), checked: None, trace: trace.clone() } },
             Row { point: u64::MAX, found: Found::Numbers { numbers: numbers.clone(), checked: checked(None), trace: trace.clone() } },
-            Row { point: 8, found: Found::Numbers { numbers, checked: checked(Some(alone)), trace } },
+            Row { point: 8, found: Found::Numbers { numbers: numbers.clone(), checked: checked(Some(alone)), trace: trace.clone() } },
+            Row { point: 9, found: Found::Numbers { numbers: numbers.clone(), checked: sampled(None), trace: trace.clone() } },
+            Row { point: 10, found: Found::Numbers { numbers, checked: sampled(Some(alone)), trace } },
             Row { point: 0, found: Found::Failed("a pulse of length zero".to_string()) },
         ];
         let mut bytes = Vec::new();

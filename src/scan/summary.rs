@@ -76,6 +76,8 @@ pub struct Summary {
     pub error_figure: f64,
     /// Largest error of each column.
     pub errors: Vec<f64>,
+    /// Largest standard error of each column over random draws; empty where nothing was drawn.
+    pub sampling: Vec<f64>,
     /// The point with the largest error.
     pub worst: Option<u64>,
     /// Of each column.
@@ -131,7 +133,7 @@ impl Summary {
                         Some([low, high]) => [if here.0 < low.0 { here } else { low }, if here.0 > high.0 { here } else { high }],
                     });
                 }
-                if let Some(Checked { figure, errors, alone }) = checked {
+                if let Some(Checked { figure, errors, sampling, alone }) = checked {
                     self.checked += 1;
                     self.alone += u64::from(alone.is_some());
                     self.inaccurate += u64::from(*figure > asked);
@@ -141,9 +143,19 @@ impl Summary {
                     for (largest, error) in self.errors.iter_mut().zip(errors) {
                         *largest = largest.max(*error);
                     }
+                    self.sampling.resize(self.sampling.len().max(sampling.len()), 0.0);
+                    for (largest, error) in self.sampling.iter_mut().zip(sampling) {
+                        *largest = largest.max(*error);
+                    }
                 }
             }
         }
+    }
+
+    /// The largest standard error of any column that is not derived, over its scale; 0 where nothing was drawn.
+    pub fn sampling_error(&self, setup: &Setup) -> f64 {
+        let fixed = setup.columns.iter().zip(&self.sampling).filter(|(column, _)| !column.derived);
+        fixed.map(|(column, error)| error / column.scale).fold(0.0, f64::max)
     }
 
     /// Points that hold the smallest or the largest value of a column.

@@ -380,6 +380,8 @@ impl Finishing<'_> {
         };
         let short_of = scan_text::not_reached(&finished);
         finished.warnings.extend(short_of.clone());
+        let rough = scan_text::rough_average(&finished);
+        finished.warnings.extend(rough.clone());
         let points = Points::of(setup, shelf, summary.best.clone(), through.unwrap_or_default()).map_err(failed)?;
         let staging = prepare_any(self.folder).map_err(|fault| {
             complain(&format!("{fault}\n"));
@@ -392,7 +394,7 @@ impl Finishing<'_> {
         } else if !self.quiet {
             print(&scan_text::summary(&finished, points.followed.as_ref(), &written.place));
         }
-        if let Some(words) = &short_of {
+        for words in short_of.iter().chain(&rough) {
             complain(&format!("warning: {words}.\n"));
         }
         if self.quiet && summary.failed > 0 {
