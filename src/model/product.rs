@@ -15,7 +15,7 @@ pub fn product(a: &Matrix, b: &Matrix) -> Matrix {
     if a.nrows().min(a.ncols()).min(b.ncols()) < SMALL {
         return a * b;
     }
-    parts(&split(a), &split(b))
+    parts((a.nrows(), b.ncols()), &split(a), &split(b))
 }
 
 /// A^+ B.
@@ -24,7 +24,7 @@ pub fn adjoint_product(a: &Matrix, b: &Matrix) -> Matrix {
         return a.adjoint() * b;
     }
     let [re, im] = split(a);
-    parts(&[re.map(|re| re.transpose()), im.map(|im| -im.transpose())], &split(b))
+    parts((a.ncols(), b.ncols()), &[re.map(|re| re.transpose()), im.map(|im| -im.transpose())], &split(b))
 }
 
 /// Real and imaginary part; none where all of it is 0.
@@ -36,10 +36,8 @@ fn split(matrix: &Matrix) -> [Option<DMatrix<f64>>; 2] {
     [part(|z| z.re), part(|z| z.im)]
 }
 
-fn parts([a, b]: &[Option<DMatrix<f64>>; 2], [c, d]: &[Option<DMatrix<f64>>; 2]) -> Matrix {
+fn parts(shape: (usize, usize), [a, b]: &[Option<DMatrix<f64>>; 2], [c, d]: &[Option<DMatrix<f64>>; 2]) -> Matrix {
     let times = |x: &Option<DMatrix<f64>>, y: &Option<DMatrix<f64>>| Some(x.as_ref()? * y.as_ref()?);
-    let size = |x: &[&Option<DMatrix<f64>>], of: fn(&DMatrix<f64>) -> usize| x.iter().find_map(|m| m.as_ref().map(of)).unwrap_or(0);
-    let shape = (size(&[a, b], DMatrix::nrows), size(&[c, d], DMatrix::ncols));
     let re = sum(times(a, c), times(b, d).map(|m| -m));
     let im = sum(times(a, d), times(b, c));
     match (re, im) {
