@@ -1,4 +1,4 @@
-//! Laboratory-frame pulses of 400 to 300 000 carrier periods, with nothing set by the user, right to 1e-9.
+//! Laboratory-frame pulses of 400 to 300 000 carrier periods, right to the 1e-9 that is asked for, with nothing else set by the user.
 #![allow(clippy::unwrap_used)] // a test may end at the first surprise
 
 mod rig;
@@ -26,6 +26,7 @@ envelopes:
 sequence:
   - pulse: {{drive: tone, envelope: flat}}
 start: down
+accuracy: {{final: 1e-9}}
 "
     );
     last(&run(&text), "population_up")
