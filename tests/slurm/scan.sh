@@ -5,8 +5,8 @@
 set -euo pipefail
 here=$(cd "$(dirname "$0")" && pwd)
 program=$(realpath "$1")
-dir=${2:-$(mktemp -d "${TMPDIR:-/tmp}/slurm.XXXX")}
-work=$(mktemp -d "${TMPDIR:-/tmp}/slurm-scan.XXXX")
+dir=${2:-$(mktemp -dt slurm.XXXX)}
+work=$(mktemp -dt slurm-scan.XXXX)
 finish() { status=$?; "$here/down.sh" "$dir" || status=1; rm -rf "$work"; exit $status; }
 trap finish EXIT
 start=$SECONDS
